@@ -1,0 +1,1 @@
+//! Invented plants with known truth.

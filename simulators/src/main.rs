@@ -1,0 +1,2 @@
+//! The `plant` command.
+fn main() {}

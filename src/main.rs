@@ -1,0 +1,2 @@
+//! The `holdtrue` command.
+fn main() {}

@@ -1,0 +1,30 @@
+//! From an MQTT message to input events: plain numbers, JSON by pointer, SenML packs.
+//!
+//! Nothing here fails: what cannot be used becomes an `Input::Refused` with its reason and what a
+//! person needs to find the fault. Not here: subscriptions and acknowledgements, and any judgement
+//! of values or times beyond "can be held".
+//!
+//! Modules in reading order:
+//! - [`tables`]: what the configuration says about topics
+//! - [`pointer`]: JSON pointers
+//! - [`intake`]: one message in, input events out
+//! - `plain`, `json`, `senml`: the three formats
+//! - `pick`: all wanted values of a JSON text in one pass
+//! - `literal`, `instant`: exact numbers and times from their text
+//! - `fault`: why something was refused
+
+pub mod intake;
+pub mod pointer;
+pub mod tables;
+
+mod fault;
+mod instant;
+mod json;
+mod literal;
+mod pick;
+mod plain;
+mod senml;
+
+pub use intake::Intake;
+pub use pointer::Pointer;
+pub use tables::{Format, JsonPlace, Scalar, SenmlPlace, Status, Tables, Target, TimeUnit, Use};

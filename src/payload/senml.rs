@@ -1,0 +1,427 @@
+//! SenML packs in JSON (RFC 8428), resolved: base fields, relative times, version, records by name.
+//!
+//! Names are compared, not judged: a record with an odd name is nobody's business but its owner's.
+//! A pack is refused as a whole for what makes it unsafe to read on: broken JSON, an unknown label
+//! that must be understood, an unknown version, unreadable base fields. Else faults stay with the
+//! record, as far as it is wanted.
+
+use super::fault::{Fault, excerpt};
+use super::intake::{Reader, Told};
+use super::json::{broken, is_number, number, text_of, wrong_type};
+use super::literal::scaled_integer;
+use super::tables::{Scalar, SenmlPlace, Status, Target};
+use holdtrue_engine::event::RefusedReason;
+use holdtrue_engine::time::Timestamp;
+use serde::de::{Deserialize, Deserializer, IgnoredAny, MapAccess, Visitor};
+use serde_json::value::RawValue;
+use std::borrow::Cow;
+use std::fmt;
+
+/// From here on a time is absolute, below it counts from now (RFC 8428 section 4.5.3): 2²⁸ s, in
+/// nanoseconds.
+const ABSOLUTE_FROM: i128 = (1 << 28) * 1_000_000_000;
+/// Decimal places of a second that are kept.
+const NANOSECOND_DIGITS: i32 = 9;
+/// The version of RFC 8428, and the default.
+const VERSION: i128 = 10;
+/// Version 10 with the one registered feature, secondary units (RFC 9100, from memory); units are
+/// text to us.
+const VERSION_WITH_SECONDARY_UNITS: i128 = 26;
+
+/// Everything that one topic's packs carry.
+#[derive(Clone, Debug, Default)]
+pub(super) struct Pack {
+    uses: Vec<(Target, SenmlPlace)>,
+}
+
+/// The fields of one record as pieces of text, in the order of [`LABELS`].
+#[derive(Clone, Copy, Default)]
+struct Record<'text> {
+    fields: [Option<&'text str>; LABELS.len()],
+    /// An unknown label that must be understood to use the pack.
+    strange: bool,
+}
+
+/// The labels of RFC 8428 section 4 (table 1), without update time, which changes no value.
+const LABELS: [&str; 14] = [
+    "bn", "bt", "bu", "bv", "bs", "bver", "n", "u", "v", "vs", "vb", "vd", "s", "t",
+];
+
+/// Positions in [`LABELS`].
+mod label {
+    pub(super) const BN: usize = 0;
+    pub(super) const BT: usize = 1;
+    pub(super) const BU: usize = 2;
+    pub(super) const BV: usize = 3;
+    pub(super) const BS: usize = 4;
+    pub(super) const BVER: usize = 5;
+    pub(super) const N: usize = 6;
+    pub(super) const U: usize = 7;
+    pub(super) const V: usize = 8;
+    pub(super) const VS: usize = 9;
+    pub(super) const VB: usize = 10;
+    pub(super) const VD: usize = 11;
+    pub(super) const S: usize = 12;
+    pub(super) const T: usize = 13;
+}
+
+/// Base fields in force.
+#[derive(Default)]
+struct Base<'text> {
+    name: Cow<'text, str>,
+    /// Nanoseconds.
+    time: i128,
+    unit: Option<Cow<'text, str>>,
+    value: Option<f64>,
+    sum: Option<f64>,
+}
+
+/// A record with the base fields worked in, as far as that went.
+struct Resolved<'text> {
+    base_name: Cow<'text, str>,
+    name: Cow<'text, str>,
+    time: Result<Timestamp, Fault>,
+    unit: Option<Cow<'text, str>>,
+    base_value: Option<f64>,
+    base_sum: Option<f64>,
+    record: Record<'text>,
+}
+
+impl Pack {
+    pub(super) fn want(&mut self, target: &Target, place: &SenmlPlace) {
+        self.uses.push((target.clone(), place.clone()));
+    }
+
+    /// Reads all wanted records of one pack, in order of their times.
+    pub(super) fn read(&self, reader: &mut Reader<'_>, text: &str) {
+        let resolved = match serde_json::from_str::<Vec<Record<'_>>>(text) {
+            Ok(records) => resolve(&records, reader.received),
+            Err(error) => Err(unsound(text, &error)),
+        };
+        let resolved = match resolved {
+            Ok(resolved) => resolved,
+            Err(fault) => return reader.refuse_message(fault),
+        };
+        let mut told = Vec::new();
+        for (target, place) in &self.uses {
+            let before = told.len();
+            for record in resolved.iter().filter(|record| record.is(&place.name)) {
+                if let Some(result) = record.read(target, place, &resolved) {
+                    let at = record.time.as_ref().map_or(reader.received, |time| *time);
+                    told.push((at, target, result));
+                }
+            }
+            if told.len() == before {
+                let detail = format!("the pack has no record {} with a value", place.name);
+                let fault = Fault::new(RefusedReason::Missing, detail);
+                told.push((reader.received, target, Err(fault)));
+            }
+        }
+        // Resolved records are chronological (RFC 8428 section 4.6); the sort is stable, so that of
+        // one instant gates come first, then references, then indications.
+        told.sort_by_key(|(at, _, _)| *at);
+        for (_, target, result) in told {
+            reader.tell(target, result);
+        }
+    }
+}
+
+/// Works the base fields into every record that follows them (RFC 8428 section 4.6).
+fn resolve<'text>(
+    records: &[Record<'text>],
+    received: Timestamp,
+) -> Result<Vec<Resolved<'text>>, Fault> {
+    let mut base = Base::default();
+    let mut resolved = Vec::with_capacity(records.len());
+    for record in records {
+        base.take(record)?;
+        resolved.push(Resolved {
+            base_name: base.name.clone(),
+            name: record.text(label::N)?.unwrap_or_default(),
+            time: record.time(base.time, received),
+            unit: record.text(label::U)?.or_else(|| base.unit.clone()),
+            base_value: base.value,
+            base_sum: base.sum,
+            record: *record,
+        });
+    }
+    Ok(resolved)
+}
+
+impl<'text> Base<'text> {
+    fn take(&mut self, record: &Record<'text>) -> Result<(), Fault> {
+        if record.strange {
+            let detail = "a label that ends in _ must be understood and is not; \
+                          the whole pack is refused (RFC 8428 section 4.4)";
+            return Err(Fault::new(RefusedReason::Unreadable, detail));
+        }
+        if let Some(version) = record.fields[label::BVER] {
+            let known = |version: i128| {
+                (1..=VERSION).contains(&version) || version == VERSION_WITH_SECONDARY_UNITS
+            };
+            if !scaled_integer(version, 0).is_some_and(known) {
+                let detail = format!("SenML version {} is not understood", excerpt(version));
+                return Err(Fault::new(RefusedReason::Unreadable, detail));
+            }
+        }
+        if let Some(name) = record.text(label::BN)? {
+            self.name = name;
+        }
+        if let Some(unit) = record.text(label::BU)? {
+            self.unit = Some(unit);
+        }
+        if let Some(time) = record.fields[label::BT] {
+            self.time = nanoseconds(time, "bt")?;
+        }
+        self.value = record.number(label::BV)?.or(self.value);
+        self.sum = record.number(label::BS)?.or(self.sum);
+        Ok(())
+    }
+}
+
+impl<'text> Record<'text> {
+    fn text(&self, label: usize) -> Result<Option<Cow<'text, str>>, Fault> {
+        let Some(raw) = self.fields[label] else {
+            return Ok(None);
+        };
+        text_of(raw)
+            .map(Some)
+            .ok_or_else(|| wrong_type(raw, "a text", LABELS[label]))
+    }
+
+    fn number(&self, label: usize) -> Result<Option<f64>, Fault> {
+        self.fields[label]
+            .map(|raw| number(raw, LABELS[label]))
+            .transpose()
+    }
+
+    /// Base time plus time; absolute, or counted from now (RFC 8428 sections 4.5.3 and 4.6).
+    fn time(&self, base: i128, received: Timestamp) -> Result<Timestamp, Fault> {
+        let own = self.fields[label::T].map_or(Ok(0), |raw| nanoseconds(raw, "t"))?;
+        let sum = base + own;
+        let absolute = if sum >= ABSOLUTE_FROM {
+            sum
+        } else {
+            i128::from(received.0) + sum
+        };
+        i64::try_from(absolute).map(Timestamp).map_err(|_| {
+            let detail = format!("{absolute} ns is outside the years 1678 to 2261");
+            Fault::new(RefusedReason::BadTime, detail)
+        })
+    }
+}
+
+impl Resolved<'_> {
+    /// Whether this is the record of that name: base name and name, one behind the other.
+    fn is(&self, name: &str) -> bool {
+        name.strip_prefix(&*self.base_name) == Some(&*self.name)
+    }
+
+    /// What the record tells; `None` if it only sets base fields.
+    fn read(
+        &self,
+        target: &Target,
+        place: &SenmlPlace,
+        pack: &[Resolved<'_>],
+    ) -> Option<Result<Told, Fault>> {
+        const CONTENT: [usize; 5] = [label::V, label::VS, label::VB, label::VD, label::S];
+        const OWN: [usize; 3] = [label::N, label::U, label::T];
+        let has = |label: &usize| self.record.fields[*label].is_some();
+        let content = CONTENT.iter().any(has);
+        if !content && !OWN.iter().any(has) {
+            return None;
+        }
+        Some(self.told(target, place, pack))
+    }
+
+    fn told(
+        &self,
+        target: &Target,
+        place: &SenmlPlace,
+        pack: &[Resolved<'_>],
+    ) -> Result<Told, Fault> {
+        let phenomenon = self.time.clone()?;
+        if let Target::Gate {
+            reference, open, ..
+        } = target
+        {
+            let open = self.holds_one_of(open)?;
+            return Ok(Told::Gate {
+                reference: *reference,
+                phenomenon,
+                open,
+            });
+        }
+        if let (Some(wanted), unit) = (&place.unit, &self.unit)
+            && unit.as_deref() != Some(wanted.as_str())
+        {
+            let found = unit.as_deref().unwrap_or("none");
+            let detail = format!("{}: unit {found}, configured {wanted}", place.name);
+            return Err(Fault::new(RefusedReason::WrongType, detail));
+        }
+        let value = if place.sum {
+            self.sum()?
+        } else {
+            self.value()?
+        };
+        let value = value.ok_or_else(|| {
+            let wanted = if place.sum { "sum" } else { "number" };
+            let detail = format!("the record {} holds no {wanted}", place.name);
+            Fault::new(RefusedReason::WrongType, detail)
+        })?;
+        let excluded = match &place.status {
+            Some(status) => !self.status_is_good(status, pack)?,
+            None => false,
+        };
+        Ok(Told::Reading {
+            phenomenon,
+            value,
+            sequence: None,
+            excluded,
+        })
+    }
+
+    fn value(&self) -> Result<Option<f64>, Fault> {
+        finite_sum(self.base_value, self.record.number(label::V)?, false)
+    }
+
+    fn sum(&self) -> Result<Option<f64>, Fault> {
+        finite_sum(self.base_sum, self.record.number(label::S)?, true)
+    }
+
+    /// Whether the record's text, truth value or number is one of these.
+    fn holds_one_of(&self, wanted: &[Scalar]) -> Result<bool, Fault> {
+        let fields = &self.record.fields;
+        if let Some(raw) = fields[label::VS].or(fields[label::VB]) {
+            return Ok(super::json::holds_one_of(raw, wanted));
+        }
+        let value = self.value()?.ok_or_else(|| {
+            let detail = format!("the record {}{} holds no value", self.base_name, self.name);
+            Fault::new(RefusedReason::WrongType, detail)
+        })?;
+        Ok(wanted.contains(&Scalar::Number(value)))
+    }
+
+    /// Whether the status record in force at this record's time is good: the latest one up to it,
+    /// else the first one of the pack; without any, the reading is excluded.
+    fn status_is_good(
+        &self,
+        status: &Status<String>,
+        pack: &[Resolved<'_>],
+    ) -> Result<bool, Fault> {
+        let here = self.time.clone()?;
+        let told = || {
+            pack.iter()
+                .filter(|record| record.is(&status.place))
+                .filter_map(|record| Some((record.time.clone().ok()?, record)))
+        };
+        let latest = told()
+            .filter(|(at, _)| *at <= here)
+            .max_by_key(|(at, _)| *at);
+        match latest.or_else(|| told().next()) {
+            Some((_, record)) => record.holds_one_of(&status.good),
+            None => Ok(false),
+        }
+    }
+}
+
+/// Base plus own value, where a missing one counts as zero; `None` if the own one is missing and
+/// `base_alone` does not suffice, or both are missing.
+fn finite_sum(base: Option<f64>, own: Option<f64>, base_alone: bool) -> Result<Option<f64>, Fault> {
+    if own.is_none() && !(base_alone && base.is_some()) {
+        return Ok(None);
+    }
+    let sum = base.unwrap_or(0.0) + own.unwrap_or(0.0);
+    if sum.is_finite() {
+        Ok(Some(sum))
+    } else {
+        Err(super::literal::not_finite(&sum.to_string()))
+    }
+}
+
+fn nanoseconds(raw: &str, place: &str) -> Result<i128, Fault> {
+    if !is_number(raw) {
+        return Err(wrong_type(raw, "a number", place));
+    }
+    scaled_integer(raw, NANOSECOND_DIGITS).ok_or_else(|| {
+        Fault::new(
+            RefusedReason::BadTime,
+            format!("{} at {place} is no time", excerpt(raw)),
+        )
+    })
+}
+
+/// Broken JSON, or JSON that is no pack.
+fn unsound(text: &str, error: &serde_json::Error) -> Fault {
+    match error.classify() {
+        serde_json::error::Category::Data => {
+            let detail = format!("{} is no SenML pack: {error}", excerpt(text));
+            Fault::new(RefusedReason::WrongType, detail)
+        }
+        _ => broken(text, error),
+    }
+}
+
+impl<'text> Deserialize<'text> for Record<'text> {
+    fn deserialize<D: Deserializer<'text>>(value: D) -> Result<Self, D::Error> {
+        value.deserialize_map(Fields)
+    }
+}
+
+/// Reads a record's fields as pieces of text.
+struct Fields;
+
+impl<'text> Visitor<'text> for Fields {
+    type Value = Record<'text>;
+
+    fn expecting(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
+        out.write_str("a SenML record (an object)")
+    }
+
+    fn visit_map<A: MapAccess<'text>>(self, mut map: A) -> Result<Record<'text>, A::Error> {
+        let mut record = Record::default();
+        while let Some(label) = map.next_key::<Label>()? {
+            match label {
+                Label::Known(index) => {
+                    record.fields[index] = Some(map.next_value::<&RawValue>()?.get());
+                }
+                Label::Other { essential } => {
+                    record.strange |= essential;
+                    map.next_value::<IgnoredAny>()?;
+                }
+            }
+        }
+        Ok(record)
+    }
+}
+
+/// A label of a record.
+enum Label {
+    /// Position in [`LABELS`].
+    Known(usize),
+    /// An extension; `essential` when it ends in `_`.
+    Other { essential: bool },
+}
+
+impl<'text> Deserialize<'text> for Label {
+    fn deserialize<D: Deserializer<'text>>(key: D) -> Result<Self, D::Error> {
+        struct Name;
+        impl Visitor<'_> for Name {
+            type Value = Label;
+
+            fn expecting(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
+                out.write_str("a label")
+            }
+
+            fn visit_str<E>(self, name: &str) -> Result<Label, E> {
+                Ok(match LABELS.iter().position(|label| *label == name) {
+                    Some(index) => Label::Known(index),
+                    None => Label::Other {
+                        essential: name.ends_with('_'),
+                    },
+                })
+            }
+        }
+        key.deserialize_str(Name)
+    }
+}

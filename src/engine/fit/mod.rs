@@ -1,4 +1,11 @@
 //! Numbers only: what a stream of pairs says about the drift, without names, topics or alarms.
+//!
+//! Modules in reading order:
+//! - [`factor`]: rows of a least-squares problem as one small triangle
+//! - `kernel`: its inner loops
+
+pub mod factor;
+mod kernel;
 
 use crate::event::{CriterionValues, Evidence, WindowSeen};
 use crate::setup::FitSetup;
@@ -63,7 +70,8 @@ pub struct Published {
     pub degree: u8,
     /// Weight of each degree 0 … maximum.
     pub weights: Vec<f64>,
-    /// Coefficients of ê(t), constant first, t in days from `origin`; as many as the highest degree with weight needs.
+    /// Coefficients of ê(t), constant first, t in days from `origin`; as many as the highest degree
+    /// with weight needs.
     pub coefficients: Vec<f64>,
     /// Covariance of the coefficients, between-model spread included: u²(t) = φᵀ C φ.
     pub covariance: Vec<Vec<f64>>,
@@ -89,15 +97,16 @@ impl Fit {
         unimplemented!()
     }
 
-    /// What the plain fit at the announced degree expects at `time`; `None` before there are enough rows.
+    /// What the plain fit at the announced degree expects at `time`; `None` before there are enough
+    /// rows.
     #[must_use]
     pub fn predict(&self, _time: Timestamp) -> Option<Prediction> {
         let _ = self.setup;
         unimplemented!()
     }
 
-    /// Judges the degree after a segment closed. `may_raise` is false while the screen is locked out or the reference
-    /// is suspect. At most one step up or down.
+    /// Judges the degree after a segment closed. `may_raise` is false while the screen is locked
+    /// out or the reference is suspect. At most one step up or down.
     pub fn decide(&mut self, _may_raise: bool) -> Option<Change> {
         unimplemented!()
     }

@@ -12,7 +12,8 @@ use serde::{Deserialize, Serialize};
 /// One thing the engine is told.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub enum Input {
-    /// A configuration takes effect. Channels whose setup and reference are unchanged keep their state.
+    /// A configuration takes effect. Channels whose setup and reference are unchanged keep their state, by name; the
+    /// others start anew. What is said in return bears the positions of the configuration that is replaced.
     Setup(Box<Setup>),
     /// A value arrived.
     Reading(Reading),
@@ -241,7 +242,7 @@ pub struct WindowSeen {
     pub pairs: u64,
     /// Closed segments.
     pub segments: u32,
-    /// n_eff, from the closed segments and their lag-1 correlation.
+    /// `n_eff`, from the closed segments and their lag-1 correlation.
     pub effective_sample_size: f64,
     /// r₁, the lag-1 correlation of the segments' residuals.
     pub lag_one: f64,
@@ -365,7 +366,7 @@ pub struct Evidence {
     pub needed_segments: u32,
     /// Closed segments judged.
     pub segments: u32,
-    /// n_eff.
+    /// `n_eff`.
     pub effective_sample_size: f64,
     /// r₁.
     pub lag_one: f64,

@@ -6,13 +6,49 @@
 //!
 //! Modules in reading order:
 //! - [`time`]: timestamps and durations in integer nanoseconds
-//! - [`math`]: the one door to inexact float functions, and quantiles
+//! - [`math`]: the one door to inexact float functions; `quantile`: Student's t and the normal distribution over it
 //! - [`setup`]: the configuration as the engine sees it, already checked
 //! - [`event`]: `Input` and `Output`, the whole vocabulary
 //! - [`fit`]: numbers only: factors, windows, the degree, the published mean
+//! - `track`, `gate`: what was measured and what held recently, in order of phenomenon time
+//! - `channel`: pairing → screening → fit → judgement → alarms, one file per station
+//! - `alarm`: the state machine of one alarm
+//! - [`fleet`]: routing, references shared by channels, now
+//! - [`engine`]: the value that takes inputs and appends outputs; `report`, `notice`, [`counters`]: how it says things
+//! - [`standing`]: how things stand, for the `state` document
 
+#[allow(
+    dead_code,
+    clippy::unused_self,
+    reason = "the stations of a channel land one after another"
+)]
+mod alarm;
+#[allow(
+    dead_code,
+    clippy::unused_self,
+    reason = "the stations of a channel land one after another"
+)]
+mod channel;
+pub mod counters;
+pub mod engine;
 pub mod event;
 pub mod fit;
+pub mod fleet;
+#[allow(
+    dead_code,
+    clippy::unused_self,
+    reason = "the stations of a channel land one after another"
+)]
+mod gate;
 pub mod math;
+mod notice;
+mod report;
 pub mod setup;
+pub mod standing;
 pub mod time;
+#[allow(
+    dead_code,
+    clippy::unused_self,
+    reason = "the stations of a channel land one after another"
+)]
+mod track;

@@ -33,6 +33,19 @@ pub struct Setup {
     pub channels: Vec<ChannelSetup>,
 }
 
+impl Default for Setup {
+    /// No channels: what an engine has before it is told its configuration.
+    fn default() -> Self {
+        Self {
+            node: String::new(),
+            clock: Clock::Live,
+            fingerprint: String::new(),
+            references: Vec::new(),
+            channels: Vec::new(),
+        }
+    }
+}
+
 /// What "now" is.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
 pub enum Clock {

@@ -1,0 +1,74 @@
+//! The engine: one input event in, output events appended to a list owned by the caller, nothing else.
+//!
+//! Call contract:
+//! - The first input should be a [`Input::Setup`]; before it every reading is refused as unknown.
+//! - Inputs come in the order in which they were received. A received time that goes backwards does no harm: the engine
+//!   goes on with its own now.
+//! - Phenomenon times may come in any order within a channel's `lateness`; the pairs that result are the same. What is
+//!   older than that behind its own source's newest reading is refused, counted, and changes nothing else.
+//! - A refused input changes counters and notices only: [`Engine::state`] compares equal before and after.
+//! - With [`Clock::Live`], send a tick at or after [`Engine::next_tick`]; with [`Clock::Readings`] ticks are ignored.
+
+use crate::counters::Counters;
+use crate::event::{Input, Output};
+use crate::fleet::Fleet;
+use crate::notice::NoticeLimiter;
+use crate::report::Report;
+use crate::setup::Clock;
+use crate::standing::Standing;
+use crate::time::Timestamp;
+use serde::{Deserialize, Serialize};
+
+/// The whole engine, a plain value.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub struct Engine {
+    fleet: Fleet,
+    counters: Counters,
+    notices: NoticeLimiter,
+}
+
+impl Engine {
+    /// An engine without a configuration.
+    #[must_use]
+    pub fn new() -> Self {
+        Self::default()
+    }
+
+    /// Takes one input and appends what follows from it. Cannot fail: bad input is an expected event with a reason.
+    pub fn step(&mut self, input: &Input, outputs: &mut Vec<Output>) {
+        let report = &mut Report {
+            outputs,
+            counters: &mut self.counters,
+            notices: &mut self.notices,
+        };
+        match input {
+            Input::Setup(setup) => self.fleet.adopt(setup, report),
+            Input::Reading(reading) => self.fleet.take_reading(reading, report),
+            Input::Gate(gate) => self.fleet.take_gate(gate, report),
+            Input::Refused(refused) => self.fleet.note_refused(refused, report),
+            Input::Tick { now } => self.fleet.tick(*now, report),
+            Input::Supplied(supplied) => self.fleet.take_supplied(supplied, report),
+        }
+    }
+
+    /// When the engine next wants a tick; `None` when nothing waits for time, and always with [`Clock::Readings`].
+    #[must_use]
+    pub fn next_tick(&self) -> Option<Timestamp> {
+        match self.fleet.clock() {
+            Clock::Live => self.fleet.next_wake(),
+            Clock::Readings => None,
+        }
+    }
+
+    /// How things stand.
+    #[must_use]
+    pub fn standing(&self) -> Standing {
+        self.fleet.standing(&self.counters)
+    }
+
+    /// Everything that a refused input must not change: the state without counters and held-back notices.
+    #[must_use]
+    pub fn state(&self) -> &Fleet {
+        &self.fleet
+    }
+}

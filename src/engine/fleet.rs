@@ -1,0 +1,309 @@
+//! All channels and references of a node: routes each input to what it concerns, keeps what channels share (recent
+//! readings, gates, references' alarms), and says what "now" is.
+//!
+//! Channels never touch each other: they read shared tracks, and only what arrives writes these. Channels joined by a
+//! reference or a group form an island; nothing crosses islands but now.
+
+mod adopt;
+mod door;
+mod pulse;
+mod silence;
+
+use crate::alarm::Alarm;
+use crate::channel::{Channel, Scene};
+use crate::counters::Counters;
+use crate::event::{Gate, Reading, Refused, RefusedReason, Source, Subject, Supplied};
+use crate::gate::GateHistory;
+use crate::report::Report;
+use crate::setup::{ChannelId, Clock, ReferenceId, Setup};
+use crate::standing::{AlarmStanding, ReferenceStanding, Standing};
+use crate::time::{Duration, Timestamp};
+use crate::track::{Sample, Track};
+use adopt::Routes;
+use pulse::Pulse;
+use serde::{Deserialize, Serialize};
+
+/// Everything that a refused input must not change.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub struct Fleet {
+    setup: Setup,
+    routes: Routes,
+    /// Newest time known, as the clock's kind says; `None` before the first accepted input.
+    now: Option<Timestamp>,
+    pulse: Pulse,
+    /// Recent indications, by channel.
+    indications: Vec<Track>,
+    /// By reference.
+    references: Vec<Reference>,
+    /// By channel.
+    channels: Vec<Channel>,
+}
+
+/// What is known of one reference.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+struct Reference {
+    values: Track,
+    gate: GateHistory,
+    stale: Alarm,
+    /// From when on its silence counts while it has said nothing.
+    began: Option<Timestamp>,
+}
+
+impl Fleet {
+    /// What now is.
+    pub(crate) fn clock(&self) -> Clock {
+        self.setup.clock
+    }
+
+    /// Takes a value or refuses it.
+    pub(crate) fn take_reading(&mut self, reading: &Reading, report: &mut Report<'_>) {
+        match self.admit(reading, true) {
+            Ok(now) => {
+                self.advance_to(now);
+                self.pulse
+                    .hear(reading.phenomenon, now, &self.routes, report);
+                self.route(reading, report);
+                self.pass_time(report);
+            }
+            Err(reason) => self.refuse_reading(reading, reason, report),
+        }
+    }
+
+    /// Takes recorded rows that were asked for: like readings, but however late. What is known already counts as a
+    /// duplicate; time does not move.
+    pub(crate) fn take_supplied(&mut self, supplied: &Supplied, report: &mut Report<'_>) {
+        for reading in &supplied.readings {
+            match self.admit(reading, false) {
+                Ok(_) if self.concerns(reading.source, supplied.channel) => {
+                    self.route(reading, report);
+                }
+                Ok(_) => self.refuse_reading(reading, RefusedReason::UnknownTopic, report),
+                Err(reason) => self.refuse_reading(reading, reason, report),
+            }
+        }
+        self.pass_time(report);
+    }
+
+    /// Takes the state of a gate or refuses it.
+    pub(crate) fn take_gate(&mut self, gate: &Gate, report: &mut Report<'_>) {
+        match self.admit_gate(gate) {
+            Ok(now) => {
+                self.advance_to(now);
+                self.pulse.hear(gate.phenomenon, now, &self.routes, report);
+                self.references[gate.reference.0 as usize].gate.insert(gate);
+                self.hear_reference(gate.reference, report);
+                self.pass_time(report);
+            }
+            Err(reason) => {
+                let subject = self.subject(Source::Reference(gate.reference));
+                let at = self.notice_time(gate.received);
+                report.refuse(at, subject, reason, || {
+                    format!("gate of {} at {}", self.name(subject), gate.phenomenon)
+                });
+            }
+        }
+    }
+
+    /// Counts what the shell could not turn into a reading.
+    pub(crate) fn note_refused(&self, refused: &Refused, report: &mut Report<'_>) {
+        let subject = refused
+            .source
+            .map_or(Subject::Node, |source| self.subject(source));
+        let at = self.notice_time(refused.received);
+        report.refuse(at, subject, refused.reason, || {
+            format!("topic {} ({})", refused.topic, refused.detail)
+        });
+    }
+
+    /// Time passed.
+    pub(crate) fn tick(&mut self, now: Timestamp, report: &mut Report<'_>) {
+        if self.setup.clock == Clock::Live {
+            self.advance_to(now);
+            self.pass_time(report);
+        }
+    }
+
+    /// How things stand.
+    pub(crate) fn standing(&self, counters: &Counters) -> Standing {
+        let channels = (0..).zip(&self.channels).zip(&self.indications);
+        let references = (0..).zip(&self.references);
+        Standing {
+            now: self.now,
+            counters: counters.clone(),
+            channels: channels
+                .map(|((id, channel), track)| channel.standing(ChannelId(id), track.newest()))
+                .collect(),
+            references: references
+                .map(|(id, _)| ReferenceStanding {
+                    reference: ReferenceId(id),
+                    last_value: self.last_known(ReferenceId(id)),
+                })
+                .collect(),
+            alarms: self.raised_alarms(),
+        }
+    }
+
+    fn raised_alarms(&self) -> Vec<AlarmStanding> {
+        let node = self.pulse.alarm();
+        let mut alarms = Vec::from_iter(
+            node.is_raised()
+                .then(|| silence::data_gap_standing(Subject::Node, node.state())),
+        );
+        for (id, channel) in (0..).zip(&self.channels) {
+            alarms.extend(channel.raised_alarms(ChannelId(id)));
+        }
+        for (id, reference) in (0..).zip(&self.references) {
+            if reference.stale.is_raised() {
+                let subject = Subject::Reference(ReferenceId(id));
+                alarms.push(silence::stale_standing(subject, reference.stale.state()));
+            }
+        }
+        alarms
+    }
+
+    /// Moves now forward, never back.
+    fn advance_to(&mut self, now: Timestamp) {
+        self.now = self.now.max(Some(now));
+    }
+
+    /// Puts an admitted reading where it belongs and lets those concerned act on it.
+    fn route(&mut self, reading: &Reading, report: &mut Report<'_>) {
+        let Some(now) = self.now else { return };
+        let sample = Sample {
+            time: reading.phenomenon,
+            arrived: match self.setup.clock {
+                Clock::Live => now,
+                Clock::Readings => reading.phenomenon,
+            },
+            value: reading.value,
+            sequence: reading.sequence,
+        };
+        match reading.source {
+            Source::Indication(id) => {
+                let index = id.0 as usize;
+                self.indications[index].insert(sample);
+                self.visit(index, |channel, scene| {
+                    channel.take_indication(&sample, scene, report);
+                });
+                for user in self.routes.group_users(id).to_vec() {
+                    self.visit(user, |channel, scene| channel.pass_time(scene, report));
+                }
+                self.routes
+                    .trim_indications(index, &mut self.indications[index]);
+            }
+            Source::Reference(id) => {
+                let index = id.0 as usize;
+                self.references[index].values.insert(sample);
+                self.hear_reference(id, report);
+                for user in self.routes.reference_users(id).to_vec() {
+                    self.visit(user, |channel, scene| {
+                        channel.take_reference(&sample, scene, report);
+                    });
+                }
+                self.routes
+                    .trim_references(index, &mut self.references[index].values);
+            }
+        }
+    }
+
+    /// Lets one channel act in its surroundings.
+    fn visit(&mut self, index: usize, act: impl FnOnce(&mut Channel, &Scene<'_>)) {
+        let (Some(now), Some(setup)) = (self.now, self.setup.channels.get(index)) else {
+            return;
+        };
+        let reference = setup.reference.0 as usize;
+        let scene = Scene {
+            id: ChannelId(u32::try_from(index).expect("as many channels as a u32 numbers")),
+            setup,
+            reference: &self.setup.references[reference],
+            values: &self.references[reference].values,
+            gate: &self.references[reference].gate,
+            indications: &self.indications,
+            now,
+            live: self.setup.clock == Clock::Live,
+            alive: self.pulse.alive(now, &self.routes),
+            resumed: self.pulse.resumed(),
+        };
+        act(&mut self.channels[index], &scene);
+    }
+
+    /// Lets everything act that waits for time.
+    fn pass_time(&mut self, report: &mut Report<'_>) {
+        let Some(now) = self.now else { return };
+        self.pulse.watch(now, &self.routes, report);
+        for index in 0..self.references.len() {
+            self.watch_reference(index, report);
+        }
+        for index in 0..self.channels.len() {
+            if self.channels[index].wake().is_some_and(|wake| wake <= now) {
+                self.visit(index, |channel, scene| channel.pass_time(scene, report));
+            }
+        }
+    }
+
+    /// The earliest time after now at which something waits.
+    pub(crate) fn next_wake(&self) -> Option<Timestamp> {
+        let channels = self.channels.iter().filter_map(Channel::wake);
+        let references = (0..self.references.len()).filter_map(|index| self.stale_at(index));
+        let node = self.pulse.quiet_at(&self.routes);
+        channels
+            .chain(references)
+            .chain(node)
+            .filter(|&time| self.now.is_none_or(|now| time > now))
+            .min()
+    }
+
+    /// Whose counters a source's refusals go to.
+    fn subject(&self, source: Source) -> Subject {
+        match source {
+            Source::Indication(id) if (id.0 as usize) < self.channels.len() => Subject::Channel(id),
+            Source::Reference(id) if (id.0 as usize) < self.references.len() => {
+                Subject::Reference(id)
+            }
+            _ => Subject::Node,
+        }
+    }
+
+    /// What people call it.
+    fn name(&self, subject: Subject) -> &str {
+        match subject {
+            Subject::Node => &self.setup.node,
+            Subject::Channel(id) => &self.setup.channels[id.0 as usize].name,
+            Subject::Reference(id) => &self.setup.references[id.0 as usize].name,
+        }
+    }
+
+    /// When a notice about something refused is said to be: now, or live the received time if that is newer (it does
+    /// not move now).
+    fn notice_time(&self, received: Timestamp) -> Timestamp {
+        match self.setup.clock {
+            Clock::Live => self.now.map_or(received, |now| now.max(received)),
+            Clock::Readings => self.now.unwrap_or(received),
+        }
+    }
+
+    fn refuse_reading(&self, reading: &Reading, reason: RefusedReason, report: &mut Report<'_>) {
+        let subject = self.subject(reading.source);
+        let at = self.notice_time(reading.received);
+        report.refuse(at, subject, reason, || {
+            let unit = match subject {
+                Subject::Channel(id) => self.setup.channels[id.0 as usize].unit.as_str(),
+                _ => "",
+            };
+            format!(
+                "{} {} {unit} at {}",
+                self.name(subject),
+                reading.value,
+                reading.phenomenon
+            )
+        });
+    }
+}
+
+/// The shortest step of time: what lies one past a limit exceeds it.
+const TICK: Duration = Duration(1);
+
+/// Longest `lateness` among channels, or nothing.
+fn longest(durations: impl Iterator<Item = Duration>) -> Duration {
+    durations.max().unwrap_or(Duration::ZERO)
+}

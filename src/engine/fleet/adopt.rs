@@ -1,0 +1,265 @@
+//! A new configuration takes effect: who listens to whom, who keeps its state, who starts anew.
+
+use super::pulse::Pulse;
+use super::{Fleet, Reference, silence};
+use crate::channel::Channel;
+use crate::event::{Source, Subject};
+use crate::report::Report;
+use crate::setup::{ChannelId, ChannelSetup, ReferenceId, ReferenceKind, ReferenceSetup, Setup};
+use crate::time::{Duration, Timestamp};
+use crate::track::Track;
+use serde::{Deserialize, Serialize};
+
+/// A reference value may become known this much later than its instant (a laboratory's day) and still find the
+/// indications in memory, as far as the memory's size allows.
+const REFERENCE_DELAY: Duration = Duration::from_seconds(86_400);
+
+/// Who listens to whom, derived from the configuration.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub(super) struct Routes {
+    /// By channel: the channels whose group it belongs to.
+    group_users: Vec<Vec<usize>>,
+    /// By reference: the channels judged against it.
+    reference_users: Vec<Vec<usize>>,
+    /// By channel: how long its indications are kept.
+    indication_memory: Vec<Duration>,
+    /// By reference: how long its values are kept.
+    reference_memory: Vec<Duration>,
+    /// The shortest silence that any alarm asks about.
+    pub(super) quiet_after: Option<Duration>,
+    /// Whether more than one thing is expected to report.
+    pub(super) several_sources: bool,
+}
+
+impl Routes {
+    fn of(setup: &Setup) -> Self {
+        let mut routes = Self {
+            group_users: vec![Vec::new(); setup.channels.len()],
+            reference_users: vec![Vec::new(); setup.references.len()],
+            indication_memory: vec![Duration::ZERO; setup.channels.len()],
+            reference_memory: vec![Duration::ZERO; setup.references.len()],
+            quiet_after: None,
+            several_sources: false,
+        };
+        for (index, channel) in setup.channels.iter().enumerate() {
+            let id = channel.reference.0 as usize;
+            let reference = &setup.references[id];
+            routes.reference_users[id].push(index);
+            let memory = memory(channel, reference);
+            let own = &mut routes.indication_memory[index];
+            *own = memory.max(*own);
+            let shared = &mut routes.reference_memory[id];
+            *shared = memory.max(*shared);
+            if let ReferenceKind::Group { members } = &reference.kind {
+                for member in members.iter().filter(|member| member.0 as usize != index) {
+                    let member = member.0 as usize;
+                    routes.group_users[member].push(index);
+                    let kept = &mut routes.indication_memory[member];
+                    *kept = memory.max(*kept);
+                }
+            }
+        }
+        let gaps = setup.channels.iter().filter_map(|c| c.alarms.gap_after);
+        let ages = setup.references.iter().filter_map(|r| r.stale_after);
+        routes.quiet_after = gaps.chain(ages).min();
+        let measured = setup
+            .references
+            .iter()
+            .filter(|reference| reference.kind == ReferenceKind::Measured);
+        routes.several_sources = setup.channels.len() + measured.count() > 1;
+        routes
+    }
+
+    pub(super) fn group_users(&self, id: ChannelId) -> &[usize] {
+        &self.group_users[id.0 as usize]
+    }
+
+    pub(super) fn reference_users(&self, id: ReferenceId) -> &[usize] {
+        &self.reference_users[id.0 as usize]
+    }
+
+    pub(super) fn trim_indications(&self, index: usize, track: &mut Track) {
+        trim(track, self.indication_memory[index]);
+    }
+
+    pub(super) fn trim_references(&self, index: usize, track: &mut Track) {
+        trim(track, self.reference_memory[index]);
+    }
+}
+
+fn trim(track: &mut Track, memory: Duration) {
+    if let Some(newest) = track.newest() {
+        track.forget_before(newest.minus(memory));
+    }
+}
+
+/// How long readings are kept: for duplicates and stragglers at least `lateness`; to serve reference values, also the
+/// interval that one stands for, the widest gap to interpolate across, and the reference's own delay.
+fn memory(channel: &ChannelSetup, reference: &ReferenceSetup) -> Duration {
+    let parts = [
+        channel.lateness.0,
+        channel.lag.0.saturating_abs(),
+        channel.max_gap.0.saturating_mul(2),
+        reference.stands_for.0.saturating_mul(2),
+        REFERENCE_DELAY.0,
+    ];
+    match reference.kind {
+        ReferenceKind::Constant { .. } => channel.lateness,
+        _ => Duration(parts.into_iter().fold(0, i64::saturating_add)),
+    }
+}
+
+impl Fleet {
+    /// Takes a configuration. Channels whose setup and reference are unchanged keep their state, by name; the others
+    /// start anew. Everything said here bears the positions of the configuration that is replaced.
+    pub(crate) fn adopt(&mut self, setup: &Setup, report: &mut Report<'_>) {
+        let old = std::mem::take(self);
+        let same_clock = old.setup.clock == setup.clock;
+        let mut taken = vec![false; old.channels.len()];
+        let mut channels = Vec::with_capacity(setup.channels.len());
+        let mut indications = Vec::with_capacity(setup.channels.len());
+        for channel in &setup.channels {
+            let before = old
+                .setup
+                .channels
+                .iter()
+                .position(|c| c.name == channel.name);
+            let kept = before.filter(|&index| {
+                same_clock && same_channel(&old.setup, &old.setup.channels[index], setup, channel)
+            });
+            if let Some(index) = kept {
+                taken[index] = true;
+                channels.push(old.channels[index].clone());
+                indications.push(old.indications[index].clone());
+            } else {
+                let issued = before.map_or(0, |index| old.channels[index].issued());
+                channels.push(Channel::new(channel, issued));
+                indications.push(Track::default());
+            }
+        }
+        let mut references = Vec::with_capacity(setup.references.len());
+        let mut taken_references = vec![false; old.references.len()];
+        for reference in &setup.references {
+            let kept = old.setup.references.iter().position(|before| {
+                same_clock && same_reference(&old.setup, before, setup, reference)
+            });
+            references.push(kept.map_or_else(Reference::default, |index| {
+                taken_references[index] = true;
+                old.references[index].clone()
+            }));
+        }
+        *self = Self {
+            references,
+            routes: Routes::of(setup),
+            setup: setup.clone(),
+            now: old.now.filter(|_| same_clock),
+            pulse: if same_clock {
+                old.pulse.clone()
+            } else {
+                Pulse::default()
+            },
+            indications,
+            channels,
+        };
+        old.dismiss_channels(&taken, report);
+        old.dismiss_references(&taken_references, report);
+        let new_place = |subject| self.moved(&old.setup, subject);
+        report.counters.renumber(new_place);
+        report.notices.renumber(new_place);
+    }
+
+    /// Withdraws the corrections and clears the alarms of channels that do not stay.
+    fn dismiss_channels(&self, stay: &[bool], report: &mut Report<'_>) {
+        let now = self.now.unwrap_or(Timestamp(0));
+        let channels = (0..).zip(&self.channels).zip(&self.setup.channels);
+        for ((id, channel), setup) in channels.filter(|((id, _), _)| !stay[*id as usize]) {
+            channel.dismiss(ChannelId(id), setup, now, report);
+        }
+    }
+
+    /// Clears the alarms of references that do not stay.
+    fn dismiss_references(&self, stay: &[bool], report: &mut Report<'_>) {
+        let now = self.now.unwrap_or(Timestamp(0));
+        let references = (0..).zip(&self.references).zip(&self.setup.references);
+        for ((id, reference), setup) in references.filter(|((id, _), _)| !stay[*id as usize]) {
+            if reference.stale.is_raised() {
+                report.say(silence::stale_dismissed(ReferenceId(id), &setup.name, now));
+            }
+        }
+    }
+
+    /// Where a subject of the old configuration stands now.
+    fn moved(&self, old: &Setup, subject: Subject) -> Option<Subject> {
+        match subject {
+            Subject::Node => Some(Subject::Node),
+            Subject::Channel(id) => {
+                let name = &old.channels.get(id.0 as usize)?.name;
+                let place = self.setup.channels.iter().position(|c| c.name == *name)?;
+                Some(Subject::Channel(ChannelId(u32::try_from(place).ok()?)))
+            }
+            Subject::Reference(id) => {
+                let name = &old.references.get(id.0 as usize)?.name;
+                let place = self.setup.references.iter().position(|r| r.name == *name)?;
+                Some(Subject::Reference(ReferenceId(u32::try_from(place).ok()?)))
+            }
+        }
+    }
+
+    /// Whether the rows of a source can serve a channel.
+    pub(super) fn concerns(&self, source: Source, channel: ChannelId) -> bool {
+        let Some(setup) = self.setup.channels.get(channel.0 as usize) else {
+            return false;
+        };
+        match source {
+            Source::Indication(id) => {
+                id == channel
+                    || matches!(
+                        &self.setup.references[setup.reference.0 as usize].kind,
+                        ReferenceKind::Group { members } if members.contains(&id)
+                    )
+            }
+            Source::Reference(id) => id == setup.reference,
+        }
+    }
+}
+
+/// Whether a channel means the same in both configurations, wherever it and its reference stand in the lists.
+fn same_channel(old: &Setup, before: &ChannelSetup, new: &Setup, after: &ChannelSetup) -> bool {
+    let placed = ChannelSetup {
+        reference: after.reference,
+        ..before.clone()
+    };
+    placed == *after
+        && same_reference(
+            old,
+            &old.references[before.reference.0 as usize],
+            new,
+            &new.references[after.reference.0 as usize],
+        )
+}
+
+/// Whether a reference means the same in both configurations, its group members compared by name.
+fn same_reference(
+    old: &Setup,
+    before: &ReferenceSetup,
+    new: &Setup,
+    after: &ReferenceSetup,
+) -> bool {
+    if let (ReferenceKind::Group { members: a }, ReferenceKind::Group { members: b }) =
+        (&before.kind, &after.kind)
+    {
+        let rest = ReferenceSetup {
+            kind: after.kind.clone(),
+            ..before.clone()
+        };
+        rest == *after && names(old, a).eq(names(new, b))
+    } else {
+        before == after
+    }
+}
+
+fn names<'a>(setup: &'a Setup, members: &'a [ChannelId]) -> impl Iterator<Item = &'a str> {
+    members
+        .iter()
+        .map(|member| setup.channels[member.0 as usize].name.as_str())
+}

@@ -1,0 +1,121 @@
+//! The door: what may come in. Everything behind it is finite, timely, not seen before and meant to be used.
+
+use super::{Fleet, longest};
+use crate::event::{Gate, Reading, RefusedReason, Source};
+use crate::setup::{Clock, ReferenceKind};
+use crate::time::{Duration, Timestamp};
+
+/// How far sender's and receiver's clocks may differ: a live time further ahead than this is refused.
+const CLOCKS_DIFFER: Duration = Duration::from_seconds(300);
+
+/// 2200-01-01T00:00:00Z: no recording reaches this far, and time arithmetic stays clear of its end (2262).
+const FAR_FUTURE: Timestamp = Timestamp(7_258_118_400_000_000_000);
+
+/// Largest magnitude of a value. No quantity in any unit comes near it, and its square summed over a window stays
+/// finite.
+const LARGEST: f64 = 1e100;
+
+impl Fleet {
+    /// Whether a reading may come in, and what now is once it has. `timely` is false for rows from the record.
+    pub(super) fn admit(
+        &self,
+        reading: &Reading,
+        timely: bool,
+    ) -> Result<Timestamp, RefusedReason> {
+        if !self.is_known(reading.source) {
+            return Err(RefusedReason::UnknownTopic);
+        }
+        if !reading.value.is_finite() || reading.value.abs() > LARGEST {
+            return Err(RefusedReason::NotFinite);
+        }
+        let now = self.admit_time(reading.phenomenon, reading.received)?;
+        let (track, lateness) = match reading.source {
+            Source::Indication(id) => {
+                let index = id.0 as usize;
+                (
+                    &self.indications[index],
+                    self.setup.channels[index].lateness,
+                )
+            }
+            Source::Reference(id) => {
+                let users = self.routes.reference_users(id);
+                (
+                    &self.references[id.0 as usize].values,
+                    longest(users.iter().map(|&user| self.setup.channels[user].lateness)),
+                )
+            }
+        };
+        if timely {
+            track.check(reading, lateness)?;
+        } else if track.holds(reading) {
+            return Err(RefusedReason::Duplicate);
+        }
+        if reading.excluded {
+            return Err(RefusedReason::StatusExcluded);
+        }
+        self.admit_range(reading)?;
+        Ok(now)
+    }
+
+    /// Whether a gate event may come in, and what now is once it has.
+    pub(super) fn admit_gate(&self, gate: &Gate) -> Result<Timestamp, RefusedReason> {
+        let index = gate.reference.0 as usize;
+        let gated = self.setup.references.get(index).is_some_and(|reference| {
+            matches!(reference.kind, ReferenceKind::Constant { gated: true, .. })
+        });
+        if !gated {
+            return Err(RefusedReason::UnknownTopic);
+        }
+        let now = self.admit_time(gate.phenomenon, gate.received)?;
+        let users = self.routes.reference_users(gate.reference);
+        let lateness = longest(users.iter().map(|&user| self.setup.channels[user].lateness));
+        self.references[index].gate.check(gate, lateness)?;
+        Ok(now)
+    }
+
+    fn is_known(&self, source: Source) -> bool {
+        match source {
+            Source::Indication(id) => (id.0 as usize) < self.channels.len(),
+            Source::Reference(id) => self
+                .setup
+                .references
+                .get(id.0 as usize)
+                .is_some_and(|reference| reference.kind == ReferenceKind::Measured),
+        }
+    }
+
+    fn admit_time(
+        &self,
+        phenomenon: Timestamp,
+        received: Timestamp,
+    ) -> Result<Timestamp, RefusedReason> {
+        if phenomenon.0 < 0 {
+            return Err(RefusedReason::NegativeTime);
+        }
+        let moved = match self.setup.clock {
+            Clock::Live => received,
+            Clock::Readings => phenomenon,
+        };
+        let now = self.now.map_or(moved, |now| now.max(moved));
+        let ahead = phenomenon.since(now) > CLOCKS_DIFFER;
+        if ahead || phenomenon > FAR_FUTURE {
+            return Err(RefusedReason::Future);
+        }
+        Ok(now)
+    }
+
+    fn admit_range(&self, reading: &Reading) -> Result<(), RefusedReason> {
+        let Source::Indication(id) = reading.source else {
+            return Ok(());
+        };
+        let screening = &self.setup.channels[id.0 as usize].screening;
+        match screening.range {
+            Some((lowest, highest))
+                if screening.enabled && !(lowest..=highest).contains(&reading.value) =>
+            {
+                Err(RefusedReason::OutOfRange)
+            }
+            _ => Ok(()),
+        }
+    }
+}

@@ -1,0 +1,183 @@
+//! Silence of references and of the node: when the last value is too old, and how the alarms say so.
+
+use super::Fleet;
+use crate::alarm::{Condition, Delays, Move};
+use crate::event::{AlarmChange, AlarmKind, AlarmState, Output, Subject};
+use crate::report::Report;
+use crate::setup::{ReferenceId, ReferenceKind};
+use crate::standing::AlarmStanding;
+use crate::time::{Duration, Timestamp};
+
+/// The timer is the delay: raised when it has run out, cleared by the first value.
+const AT_ONCE: Delays = Delays { on: 1, off: 1 };
+
+impl Fleet {
+    /// The newest instant at which the reference's value was known. A group's is when a channel last got a median from
+    /// it.
+    pub(super) fn last_known(&self, id: ReferenceId) -> Option<Timestamp> {
+        let index = id.0 as usize;
+        let reference = &self.references[index];
+        match self.setup.references[index].kind {
+            ReferenceKind::Measured => reference.values.newest(),
+            ReferenceKind::Constant { gated: false, .. } => None,
+            ReferenceKind::Constant { gated: true, .. } => {
+                self.now.and_then(|now| reference.gate.last_open(now))
+            }
+            ReferenceKind::Group { .. } => self
+                .routes
+                .reference_users(id)
+                .iter()
+                .filter_map(|&user| self.channels[user].last_reference())
+                .max(),
+        }
+    }
+
+    /// A value or gate event of the reference came: its silence starts anew.
+    pub(super) fn hear_reference(&mut self, id: ReferenceId, report: &mut Report<'_>) {
+        self.watch_reference(id.0 as usize, report);
+    }
+
+    /// Since when the reference has been silent, as far as the node was listening.
+    fn silent_since(&self, index: usize) -> Option<Timestamp> {
+        let id = ReferenceId(u32::try_from(index).ok()?);
+        let last = self.last_known(id).or(self.references[index].began)?;
+        Some(self.pulse.resumed().map_or(last, |time| time.max(last)))
+    }
+
+    /// When the reference becomes stale, if nothing comes.
+    pub(super) fn stale_at(&self, index: usize) -> Option<Timestamp> {
+        let limit = self.limit(index)?;
+        Some(self.silent_since(index)?.plus(limit).plus(super::TICK))
+    }
+
+    /// The age limit that applies: a constant without a gate never goes stale.
+    fn limit(&self, index: usize) -> Option<Duration> {
+        let setup = &self.setup.references[index];
+        match setup.kind {
+            ReferenceKind::Constant { gated: false, .. } => None,
+            _ => setup.stale_after,
+        }
+    }
+
+    /// Raises or clears the reference's stale alarm.
+    pub(super) fn watch_reference(&mut self, index: usize, report: &mut Report<'_>) {
+        let (Some(limit), Some(now)) = (self.limit(index), self.now) else {
+            return;
+        };
+        let alive = self.pulse.alive(now, &self.routes);
+        let began = &mut self.references[index].began;
+        began.get_or_insert(alive);
+        let Some(since) = self.silent_since(index) else {
+            return;
+        };
+        let silent = alive.since(since);
+        let stale = silent > limit;
+        let alarm = &mut self.references[index].stale;
+        if stale == alarm.is_raised() {
+            return;
+        }
+        let condition = if stale {
+            Condition::Holds
+        } else {
+            Condition::Gone
+        };
+        if let Some(step) = alarm.evaluate(condition, now, AT_ONCE) {
+            let id =
+                ReferenceId(u32::try_from(index).expect("as many references as a u32 numbers"));
+            let name = &self.setup.references[index].name;
+            report.say(stale_change(id, name, step, now, silent, limit));
+        }
+    }
+}
+
+fn stale_change(
+    id: ReferenceId,
+    name: &str,
+    step: Move,
+    now: Timestamp,
+    silent: Duration,
+    limit: Duration,
+) -> Output {
+    let text = if step.state == AlarmState::Normal {
+        format!("reference {name} gives values again")
+    } else {
+        format!(
+            "reference {name} has given no value for {:.1} h (limit {:.1} h); its channels keep their last correction \
+             until it expires; look at the reference and its link",
+            hours(silent),
+            hours(limit)
+        )
+    };
+    Output::Alarm(AlarmChange {
+        subject: Subject::Reference(id),
+        kind: AlarmKind::ReferenceStale,
+        state: step.state,
+        at: now,
+        since: step.since,
+        value: hours(silent),
+        limit: hours(limit),
+        unit: "h".to_owned(),
+        text,
+    })
+}
+
+/// The alarm change of a reference that is no longer configured.
+pub(super) fn stale_dismissed(id: ReferenceId, name: &str, now: Timestamp) -> Output {
+    Output::Alarm(AlarmChange {
+        subject: Subject::Reference(id),
+        kind: AlarmKind::ReferenceStale,
+        state: AlarmState::Normal,
+        at: now,
+        since: now,
+        value: 0.0,
+        limit: 0.0,
+        unit: "h".to_owned(),
+        text: format!("reference {name} was removed or its configuration changed"),
+    })
+}
+
+/// The alarm change of the whole node's silence.
+pub(super) fn node_gap(step: Move, now: Timestamp, arrival: Timestamp, limit: Duration) -> Output {
+    let silent = now.since(arrival);
+    let text = if step.state == AlarmState::Normal {
+        "readings arrive again".to_owned()
+    } else {
+        format!(
+            "nothing has arrived from any source for {:.2} h; look at the broker and the network first, then at the \
+             sensors",
+            hours(silent)
+        )
+    };
+    Output::Alarm(AlarmChange {
+        subject: Subject::Node,
+        kind: AlarmKind::DataGap,
+        state: step.state,
+        at: now,
+        since: step.since,
+        value: hours(silent),
+        limit: hours(limit),
+        unit: "h".to_owned(),
+        text,
+    })
+}
+
+pub(super) fn data_gap_standing(subject: Subject, state: AlarmState) -> AlarmStanding {
+    AlarmStanding {
+        subject,
+        kind: AlarmKind::DataGap,
+        state,
+    }
+}
+
+pub(super) fn stale_standing(subject: Subject, state: AlarmState) -> AlarmStanding {
+    AlarmStanding {
+        subject,
+        kind: AlarmKind::ReferenceStale,
+        state,
+    }
+}
+
+/// Hours as a float.
+fn hours(duration: Duration) -> f64 {
+    duration.seconds() / 3600.0
+}

@@ -1,0 +1,250 @@
+//! The recent readings of one source in order of their phenomenon time: remembers what came before (duplicates), says what
+//! comes too late, and answers what was measured around an instant.
+//!
+//! Bounded: at most [`CAPACITY`] readings. When it is full the oldest is forgotten, and whatever is not newer than a
+//! forgotten reading counts as late from then on, so that a repeated message can never slip in again.
+
+use crate::event::{Reading, RefusedReason};
+use crate::time::{Duration, Timestamp};
+use serde::{Deserialize, Serialize};
+use std::cmp::Ordering;
+use std::collections::VecDeque;
+
+/// Most readings that one track keeps.
+pub(crate) const CAPACITY: usize = 4096;
+
+/// One remembered reading.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Sample {
+    /// Phenomenon time.
+    pub(crate) time: Timestamp,
+    /// From when on waiting for stragglers counts: live, when it was taken; in recordings, its phenomenon time.
+    pub(crate) arrived: Timestamp,
+    /// The value.
+    pub(crate) value: f64,
+    /// The sender's running number.
+    pub(crate) sequence: Option<i64>,
+}
+
+impl Sample {
+    /// Order by time, then by what tells two readings of one instant apart; the order of arrival plays no part.
+    fn order(&self, other: &Self) -> Ordering {
+        (self.time, self.sequence)
+            .cmp(&(other.time, other.sequence))
+            .then_with(|| self.value.total_cmp(&other.value))
+    }
+
+    /// Whether both are the same message: same time, and same running number, or same value where there is none.
+    fn repeats(&self, time: Timestamp, sequence: Option<i64>, value: f64) -> bool {
+        self.time == time
+            && match (self.sequence, sequence) {
+                (Some(a), Some(b)) => a == b,
+                (None, None) => same_value(self.value, value),
+                _ => false,
+            }
+    }
+}
+
+/// The recent readings of one source.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Track {
+    samples: VecDeque<Sample>,
+    /// Phenomenon time of the newest reading ever taken.
+    newest: Option<Timestamp>,
+    /// Phenomenon time of the newest forgotten reading.
+    forgotten: Option<Timestamp>,
+}
+
+impl Track {
+    /// Phenomenon time of the newest reading ever taken.
+    pub(crate) fn newest(&self) -> Option<Timestamp> {
+        self.newest
+    }
+
+    /// Phenomenon time of the newest reading that was forgotten: nothing is known about this instant and before.
+    pub(crate) fn forgotten(&self) -> Option<Timestamp> {
+        self.forgotten
+    }
+
+    /// Whether the reading may be taken: not later than `lateness` behind this source's own newest reading, and not seen
+    /// before. (Behind its own newest, not behind now: a backlog after an outage is old but in order.)
+    pub(crate) fn check(&self, reading: &Reading, lateness: Duration) -> Result<(), RefusedReason> {
+        let too_old = self
+            .newest
+            .is_some_and(|newest| reading.phenomenon < newest.minus(lateness));
+        let beyond_memory = self
+            .forgotten
+            .is_some_and(|edge| reading.phenomenon <= edge);
+        if self.holds(reading) {
+            return Err(RefusedReason::Duplicate);
+        }
+        if too_old || beyond_memory {
+            return Err(RefusedReason::Late);
+        }
+        Ok(())
+    }
+
+    /// Whether the same message is remembered.
+    pub(crate) fn holds(&self, reading: &Reading) -> bool {
+        self.at(reading.phenomenon)
+            .any(|sample| sample.repeats(reading.phenomenon, reading.sequence, reading.value))
+    }
+
+    /// Takes a reading.
+    pub(crate) fn insert(&mut self, sample: Sample) {
+        let place = self
+            .samples
+            .partition_point(|held| held.order(&sample) != Ordering::Greater);
+        self.samples.insert(place, sample);
+        self.newest = self.newest.max(Some(sample.time));
+        if self.samples.len() > CAPACITY {
+            self.forget_oldest();
+        }
+    }
+
+    /// Forgets what is older than `time`.
+    pub(crate) fn forget_before(&mut self, time: Timestamp) {
+        while self
+            .samples
+            .front()
+            .is_some_and(|oldest| oldest.time < time)
+        {
+            self.forget_oldest();
+        }
+    }
+
+    /// All readings of exactly this instant.
+    pub(crate) fn at(&self, time: Timestamp) -> impl Iterator<Item = &Sample> {
+        self.range(time, time.plus(Duration(1)))
+    }
+
+    /// All readings with `from <= time < to`, in order.
+    pub(crate) fn range(&self, from: Timestamp, to: Timestamp) -> impl Iterator<Item = &Sample> {
+        let start = self.samples.partition_point(|held| held.time < from);
+        let end = self.samples.partition_point(|held| held.time < to);
+        self.samples.range(start..end.max(start))
+    }
+
+    /// The last reading at or before `time`.
+    pub(crate) fn last_until(&self, time: Timestamp) -> Option<&Sample> {
+        let end = self.samples.partition_point(|held| held.time <= time);
+        end.checked_sub(1).map(|index| &self.samples[index])
+    }
+
+    /// The first reading after `time`.
+    pub(crate) fn first_after(&self, time: Timestamp) -> Option<&Sample> {
+        let start = self.samples.partition_point(|held| held.time <= time);
+        self.samples.get(start)
+    }
+
+    fn forget_oldest(&mut self) {
+        if let Some(sample) = self.samples.pop_front() {
+            self.forgotten = self.forgotten.max(Some(sample.time));
+        }
+    }
+}
+
+/// Whether both are the same number: bit by bit, but zero has one sign.
+fn same_value(a: f64, b: f64) -> bool {
+    (a + 0.0).to_bits() == (b + 0.0).to_bits()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::event::Source;
+    use crate::setup::ChannelId;
+
+    fn reading(time: i64, value: f64, sequence: Option<i64>) -> Reading {
+        Reading {
+            source: Source::Indication(ChannelId(0)),
+            received: Timestamp(time),
+            phenomenon: Timestamp(time),
+            value,
+            sequence,
+            excluded: false,
+        }
+    }
+
+    fn take(track: &mut Track, time: i64, value: f64, sequence: Option<i64>) {
+        track.insert(Sample {
+            time: Timestamp(time),
+            arrived: Timestamp(time),
+            value,
+            sequence,
+        });
+    }
+
+    #[test]
+    fn a_duplicate_is_the_same_number_or_else_the_same_value() {
+        let mut track = Track::default();
+        take(&mut track, 10, 1.0, None);
+        take(&mut track, 20, 1.0, Some(7));
+        let cases = [
+            (reading(10, 1.0, None), Err(RefusedReason::Duplicate)),
+            (reading(10, 2.0, None), Ok(())),
+            (reading(20, 9.0, Some(7)), Err(RefusedReason::Duplicate)),
+            (reading(20, 1.0, Some(8)), Ok(())),
+            (reading(21, 1.0, Some(7)), Ok(())),
+        ];
+        for (reading, expected) in cases {
+            assert_eq!(
+                track.check(&reading, Duration(100)),
+                expected,
+                "{reading:?}"
+            );
+        }
+    }
+
+    #[test]
+    fn late_is_measured_behind_the_newest_of_the_same_source() {
+        let mut track = Track::default();
+        take(&mut track, 100, 1.0, None);
+        assert_eq!(track.check(&reading(90, 1.0, None), Duration(10)), Ok(()));
+        assert_eq!(
+            track.check(&reading(89, 1.0, None), Duration(10)),
+            Err(RefusedReason::Late)
+        );
+    }
+
+    #[test]
+    fn a_full_track_forgets_the_oldest_and_calls_it_late() {
+        let mut track = Track::default();
+        for time in (0..).take(CAPACITY + 1) {
+            take(&mut track, time, 0.0, None);
+        }
+        assert_eq!(track.samples.len(), CAPACITY);
+        let far = Duration(i64::MAX);
+        assert_eq!(
+            track.check(&reading(0, 5.0, None), far),
+            Err(RefusedReason::Late)
+        );
+        assert_eq!(track.check(&reading(1, 5.0, None), far), Ok(()));
+    }
+
+    #[test]
+    fn the_order_of_arrival_leaves_no_trace() {
+        let mut one = Track::default();
+        let mut two = Track::default();
+        let rows = [(3, 1.0), (1, 2.0), (2, 3.0), (2, 1.0)];
+        for (time, value) in rows {
+            take(&mut one, time, value, None);
+        }
+        for (time, value) in rows.iter().rev() {
+            take(&mut two, *time, *value, None);
+        }
+        assert_eq!(one, two);
+    }
+
+    #[test]
+    fn neighbours_of_an_instant() {
+        let mut track = Track::default();
+        take(&mut track, 10, 1.0, None);
+        take(&mut track, 20, 2.0, None);
+        let value = |sample: Option<&Sample>| sample.map(|s| s.value);
+        assert_eq!(value(track.last_until(Timestamp(9))), None);
+        assert_eq!(value(track.last_until(Timestamp(10))), Some(1.0));
+        assert_eq!(value(track.first_after(Timestamp(10))), Some(2.0));
+        assert_eq!(value(track.first_after(Timestamp(20))), None);
+    }
+}

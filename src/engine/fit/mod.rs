@@ -3,19 +3,39 @@
 //! Modules in reading order:
 //! - [`factor`]: rows of a least-squares problem as one small triangle
 //! - `kernel`: its inner loops
+//! - [`basis`]: the columns of a row, and scaled time
+//! - [`segment`]: rows that enter and leave together
+//! - [`window`]: the sliding window
+//! - [`criterion`]: information criteria as plain formulas
 
+pub mod basis;
+pub mod criterion;
 pub mod factor;
 mod kernel;
+pub mod segment;
+pub mod window;
 
 use crate::event::{CriterionValues, Evidence, WindowSeen};
-use crate::setup::FitSetup;
+use crate::fit::basis::{Columns, MAX_INFLUENCES, MAX_TIME_DEGREE};
+use crate::fit::window::{Cut, Window, WindowRow};
+use crate::setup::{FitSetup, WindowLength};
 use crate::time::Timestamp;
+use serde::{Deserialize, Serialize};
 
 /// The fit of one stretch of one channel.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Fit {
     setup: FitSetup,
+    window: Window,
+    /// The announced degree.
+    degree: u8,
 }
+
+/// Largest magnitude of an error that the fit takes: its square, times any weight and number of
+/// rows, is still a float.
+const LARGEST_ERROR: f64 = 1e120;
+/// Largest weight of a row, and the smallest one's inverse.
+const LARGEST_WEIGHT: f64 = 1e30;
 
 /// One pair as the fit sees it.
 #[derive(Clone, Copy, Debug)]
@@ -29,12 +49,15 @@ pub struct Row {
 }
 
 /// What an insertion did.
-#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
 pub struct Inserted {
-    /// At least one segment closed: a decision is due.
+    /// At least one segment closed, or a late row changed a closed one: a decision is due.
     pub closed: bool,
     /// The row was older than everything in the window and was left out.
     pub too_old: bool,
+    /// The row can't be computed with and was left out: an error beyond ±1e120 or a weight outside
+    /// 1e-30 … 1e30.
+    pub out_of_range: bool,
 }
 
 /// What the plain fit at the announced degree expects at an instant.
@@ -86,23 +109,62 @@ pub struct Published {
 }
 
 impl Fit {
-    /// An empty fit.
+    /// An empty fit. Degree 0 is announced, or the forced one.
     #[must_use]
     pub fn new(setup: FitSetup) -> Self {
-        Self { setup }
+        let cut = match setup.window {
+            WindowLength::Time(length) => Cut::time(length, setup.segments),
+            WindowLength::Pairs(pairs) => Cut::rows(pairs, setup.segments),
+        };
+        let highest = setup.max_degree.max(setup.forced_degree.unwrap_or(0));
+        let highest = highest.min(MAX_TIME_DEGREE);
+        Self {
+            setup,
+            window: Window::new(Columns::time(highest), cut),
+            degree: setup.forced_degree.map_or(0, |forced| forced.min(highest)),
+        }
+    }
+
+    /// The window that the fit looks at.
+    #[must_use]
+    pub fn window(&self) -> &Window {
+        &self.window
     }
 
     /// Takes one pair.
-    pub fn insert(&mut self, _row: Row) -> Inserted {
-        unimplemented!()
+    pub fn insert(&mut self, row: Row) -> Inserted {
+        let weights = 1.0 / LARGEST_WEIGHT..=LARGEST_WEIGHT;
+        if !(row.error.abs() <= LARGEST_ERROR && weights.contains(&row.weight)) {
+            return Inserted {
+                out_of_range: true,
+                ..Inserted::default()
+            };
+        }
+        let Row {
+            time,
+            error,
+            weight,
+        } = row;
+        let influences = [0.0; MAX_INFLUENCES];
+        let inserted = self.window.insert(&WindowRow {
+            time,
+            error,
+            weight,
+            x: 0.0,
+            influences,
+        });
+        Inserted {
+            closed: inserted.closed,
+            too_old: inserted.too_old,
+            out_of_range: false,
+        }
     }
 
-    /// What the plain fit at the announced degree expects at `time`; `None` before there are enough
-    /// rows.
+    /// What the plain fit at the announced degree expects at `time`; `None` before there are more
+    /// rows than coefficients, at enough different times.
     #[must_use]
-    pub fn predict(&self, _time: Timestamp) -> Option<Prediction> {
-        let _ = self.setup;
-        unimplemented!()
+    pub fn predict(&self, time: Timestamp) -> Option<Prediction> {
+        self.window.predict(usize::from(self.degree), time)
     }
 
     /// Judges the degree after a segment closed. `may_raise` is false while the screen is locked

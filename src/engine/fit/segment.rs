@@ -1,0 +1,59 @@
+//! A slice of the window: the rows that enter and leave together, as one factor with its own level.
+
+use crate::fit::factor::Factor;
+use crate::time::Timestamp;
+use serde::{Deserialize, Serialize};
+
+/// Rows that enter and leave the window together.
+///
+/// Its factor stands in the window's frame and counts errors from the segment's own level, the
+/// error of its first row: however large a constant the errors share, it costs no digits.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Segment {
+    pub(crate) factor: Factor,
+    pub(crate) level: f64,
+    /// Number of its slice on the grid of time; in a row-counted window, counts segments.
+    pub(crate) slice: i64,
+    pub(crate) first: Timestamp,
+    pub(crate) last: Timestamp,
+}
+
+impl Segment {
+    /// Its rows in the window's frame, errors counted from [`Segment::level`]. To merge it with
+    /// others at a common level L: [`Factor::merge_level`] with L − [`Segment::level`].
+    #[must_use]
+    pub fn factor(&self) -> &Factor {
+        &self.factor
+    }
+
+    /// Where its errors count from, in the unit of the error.
+    #[must_use]
+    pub fn level(&self) -> f64 {
+        self.level
+    }
+
+    /// Number of rows, ≥ 1.
+    #[must_use]
+    pub fn rows(&self) -> u64 {
+        self.factor.rows()
+    }
+
+    /// Oldest phenomenon time of a row.
+    #[must_use]
+    pub fn first(&self) -> Timestamp {
+        self.first
+    }
+
+    /// Newest phenomenon time of a row.
+    #[must_use]
+    pub fn last(&self) -> Timestamp {
+        self.last
+    }
+
+    /// Which slice of the absolute grid of time it is; in a row-counted window, segments are
+    /// numbered as they begin.
+    #[must_use]
+    pub fn slice(&self) -> i64 {
+        self.slice
+    }
+}

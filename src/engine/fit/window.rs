@@ -1,0 +1,565 @@
+//! The sliding window: segments in a queue of two stacks, so that sliding never subtracts.
+//!
+//! The *front* stack holds, for the older part of the closed segments, the aggregate of every
+//! suffix of that part; its top is the whole part, and dropping the oldest segment is a pop. The
+//! *back* is one running aggregate of the younger closed segments. When the front is used up, the
+//! stacks *flip*: all closed segments move to the front (Tangwongsan, Hirzel & Schneider, DEBS
+//! 2017; from memory). The *total*, front and back and the rows of the open segment, takes each row
+//! by one insertion and is put together anew only when the front's top changes.
+//!
+//! **Frame.** All factors share one frame of scaled time. A flip moves it to the newest row; so
+//! does a gap that is long against the time the window spans, so that no row is far from the origin
+//! in terms of the spread of the rows around it (powers of far-off times are nearly parallel).
+//!
+//! **Content.** Cut by time: slices of a fixed grid, the newest row's slice open, and the `keep`
+//! slices before it closed; so the window reaches back at least `keep` slices and less than one
+//! more. Cut by rows: the open segment, and the newest `keep` closed ones; the oldest leaves when
+//! the open one closes. With one row per segment that is exactly the last `keep` rows.
+//!
+//! **Late rows.** Cut by time, a row older than the open slice enters its own slice and the
+//! aggregates are rebuilt; one older than all slices kept is refused. Cut by rows, a late row
+//! enters the open segment, unless it is older than the oldest row of a window that has already
+//! dropped some.
+//!
+//! The state is stored whole, aggregates included: their last bits depend on the order in which
+//! rows came, and a restored window must go on with the same bits.
+
+use crate::fit::Prediction;
+use crate::fit::basis::{Columns, Frame, MAX_INFLUENCES};
+use crate::fit::factor::Factor;
+use crate::fit::kernel::MAX_WIDTH;
+use crate::fit::segment::Segment;
+use crate::time::{Duration, Timestamp};
+use serde::{Deserialize, Serialize};
+use std::collections::VecDeque;
+
+/// A row whose gap to the row before exceeds this part of the time that the window spans moves the
+/// frame. A quarter: a row is then at most about a window's spread from the origin until the flip.
+const GAP_DIVISOR: i64 = 4;
+/// A row further than this from the origin, in units of the window, moves the frame.
+const FAR: f64 = 2.0;
+
+/// Where segments close and how many of them are kept.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub enum Cut {
+    /// On an absolute grid of time.
+    Time {
+        /// Length of a slice, > 0.
+        slice: Duration,
+        /// Closed slices kept before the open one, ≥ 1.
+        keep: u32,
+    },
+    /// After a number of rows.
+    Rows {
+        /// Rows of a segment, ≥ 1.
+        per_segment: u32,
+        /// Closed segments kept, ≥ 1.
+        keep: u32,
+    },
+}
+
+impl Cut {
+    /// A window of time in so many slices (rounded down to whole nanoseconds).
+    #[must_use]
+    pub fn time(window: Duration, segments: u32) -> Self {
+        let keep = segments.max(1);
+        Self::Time {
+            slice: Duration((window.0 / i64::from(keep)).max(1)),
+            keep,
+        }
+    }
+
+    /// A window of rows in so many segments. Where the rows don't divide evenly, segments take the
+    /// next whole number of rows, and as many are kept as hold at least the window.
+    #[must_use]
+    pub fn rows(window: u32, segments: u32) -> Self {
+        let per_segment = window.max(1).div_ceil(segments.max(1));
+        Self::Rows {
+            per_segment,
+            keep: window.max(1).div_ceil(per_segment),
+        }
+    }
+}
+
+/// One row of the fit. All numbers are finite.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct WindowRow {
+    /// Phenomenon time.
+    pub time: Timestamp,
+    /// e = indication − reference.
+    pub error: f64,
+    /// Weight, > 0.
+    pub weight: f64,
+    /// Regressor of the span terms; unused without them.
+    pub x: f64,
+    /// Influence quantities; unused beyond the window's columns.
+    pub influences: [f64; MAX_INFLUENCES],
+}
+
+/// What an insertion did.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub struct Inserted {
+    /// At least one segment closed, or a closed one changed: a decision is due.
+    pub closed: bool,
+    /// The row was older than everything in the window and was left out.
+    pub too_old: bool,
+}
+
+/// The window of one stretch; see the module's text.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Window {
+    columns: Columns,
+    cut: Cut,
+    frame: Frame,
+    /// Newest phenomenon time ever inserted; `None` before the first row.
+    newest: Option<Timestamp>,
+    /// Some rows have left.
+    has_dropped: bool,
+    /// Closed segments, oldest first.
+    closed: VecDeque<Segment>,
+    open: Option<Segment>,
+    /// Suffix aggregates of the oldest `front.len()` closed segments, the shortest suffix first.
+    front: Vec<Factor>,
+    front_level: f64,
+    /// Aggregate of the closed segments that are not in the front.
+    back: Factor,
+    back_level: f64,
+    /// Aggregate of everything.
+    total: Factor,
+    total_level: f64,
+    /// Used-up factors, kept so that sliding doesn't allocate.
+    #[serde(skip)]
+    spare: Spare,
+}
+
+/// Memory without meaning: equal to any other.
+#[derive(Clone, Debug, Default)]
+struct Spare(Vec<Factor>);
+
+impl PartialEq for Spare {
+    fn eq(&self, _: &Self) -> bool {
+        true
+    }
+}
+
+impl Window {
+    /// An empty window.
+    #[must_use]
+    pub fn new(columns: Columns, cut: Cut) -> Self {
+        let empty = Factor::new(columns.count());
+        Self {
+            columns,
+            cut,
+            frame: Frame::new(Timestamp(0), Duration(1)),
+            newest: None,
+            has_dropped: false,
+            closed: VecDeque::new(),
+            open: None,
+            front: Vec::new(),
+            front_level: 0.0,
+            back: empty.clone(),
+            back_level: 0.0,
+            total: empty,
+            total_level: 0.0,
+            spare: Spare::default(),
+        }
+    }
+
+    /// The columns of its rows.
+    #[must_use]
+    pub fn columns(&self) -> Columns {
+        self.columns
+    }
+
+    /// Where segments close.
+    #[must_use]
+    pub fn cut(&self) -> Cut {
+        self.cut
+    }
+
+    /// Origin and unit of scaled time of every factor in the window, as of now.
+    #[must_use]
+    pub fn frame(&self) -> Frame {
+        self.frame
+    }
+
+    /// All rows in the window, errors counted from [`Window::level`].
+    #[must_use]
+    pub fn total(&self) -> &Factor {
+        &self.total
+    }
+
+    /// Where the errors of [`Window::total`] count from.
+    #[must_use]
+    pub fn level(&self) -> f64 {
+        self.total_level
+    }
+
+    /// Rows in the window.
+    #[must_use]
+    pub fn rows(&self) -> u64 {
+        self.total.rows()
+    }
+
+    /// Closed segments, oldest first, all in the window's frame, each at its own level.
+    #[must_use]
+    pub fn closed(&self) -> impl ExactSizeIterator<Item = &Segment> + DoubleEndedIterator {
+        self.closed.iter()
+    }
+
+    /// The segment that takes the next row, once it has one.
+    #[must_use]
+    pub fn open(&self) -> Option<&Segment> {
+        self.open.as_ref()
+    }
+
+    /// Oldest phenomenon time in the window.
+    #[must_use]
+    pub fn oldest(&self) -> Option<Timestamp> {
+        self.closed
+            .iter()
+            .chain(&self.open)
+            .map(Segment::first)
+            .min()
+    }
+
+    /// Newest phenomenon time in the window. (In a row-counted window fed with late rows only, that
+    /// row may have left; the time stands.)
+    #[must_use]
+    pub fn newest(&self) -> Option<Timestamp> {
+        self.newest
+    }
+
+    /// Takes one row.
+    pub fn insert(&mut self, row: &WindowRow) -> Inserted {
+        let Some(newest) = self.newest else {
+            self.restart(row.time);
+            return self.insert_newest(row);
+        };
+        if row.time >= newest {
+            return self.insert_newest(row);
+        }
+        match self.cut {
+            Cut::Time { slice, keep } => self.insert_late(row, slice, keep),
+            Cut::Rows { .. } if self.has_dropped && row.time < self.oldest_segment_first() => {
+                Inserted {
+                    closed: false,
+                    too_old: true,
+                }
+            }
+            Cut::Rows { per_segment, keep } => self.insert_counted(row, per_segment, keep),
+        }
+    }
+
+    /// The plain least-squares fit of this degree in time to all rows, evaluated at `time`; `None`
+    /// if there are no more rows than coefficients, or not at enough different times.
+    ///
+    /// # Panics
+    /// If the window has no such degree.
+    #[must_use]
+    pub fn predict(&self, degree: usize, time: Timestamp) -> Option<Prediction> {
+        let columns = degree + 1;
+        assert!(
+            columns <= self.columns.time_degree() + 1,
+            "a degree of this window"
+        );
+        // Counts of rows stay far below 2^53.
+        let degrees_of_freedom = self.rows() as f64 - columns as f64;
+        if degrees_of_freedom < 1.0 {
+            return None;
+        }
+        let coefficients = self.total.solve(columns)?;
+        let phi = Columns::powers(degree, self.frame.scaled(time));
+        let leverage = self.total.leverage(&phi[..columns])?;
+        let relative: f64 = phi.iter().zip(&coefficients).map(|(p, c)| p * c).sum();
+        let rss = self.total.nested_rss()[degree];
+        Some(Prediction {
+            error: self.total_level + relative + 0.0,
+            leverage,
+            residual_sd: (rss / degrees_of_freedom).sqrt(),
+            degrees_of_freedom,
+        })
+    }
+
+    fn insert_newest(&mut self, row: &WindowRow) -> Inserted {
+        match self.cut {
+            Cut::Time { slice, keep } => {
+                let number = row.time.0.div_euclid(slice.0);
+                let closed = self.advance(number, keep);
+                self.follow(row.time);
+                self.insert_open(row, number);
+                Inserted {
+                    closed,
+                    too_old: false,
+                }
+            }
+            Cut::Rows { per_segment, keep } => {
+                self.follow(row.time);
+                self.insert_counted(row, per_segment, keep)
+            }
+        }
+    }
+
+    /// Cut by time: closes the open segment if its slice is over and drops what then is too old.
+    fn advance(&mut self, number: i64, keep: u32) -> bool {
+        if self.open.as_ref().is_none_or(|open| open.slice >= number) {
+            return false;
+        }
+        self.close();
+        let oldest_kept = number.saturating_sub(i64::from(keep));
+        let leaving = self
+            .closed
+            .partition_point(|segment| segment.slice < oldest_kept);
+        self.drop_oldest(leaving);
+        true
+    }
+
+    /// Cut by rows: the row enters the open segment, which closes when it is full.
+    fn insert_counted(&mut self, row: &WindowRow, per_segment: u32, keep: u32) -> Inserted {
+        let rows = self.open.as_ref().map_or(0, Segment::rows);
+        let closes = rows + 1 >= u64::from(per_segment);
+        let drops = closes && self.closed.len() >= keep as usize;
+        let number = match (&self.open, self.closed.back()) {
+            (Some(open), _) => open.slice,
+            (None, Some(last)) => last.slice + 1,
+            (None, None) => 0,
+        };
+        if drops {
+            // The total is put together anew below.
+            self.insert_segment(row, number);
+        } else {
+            self.insert_open(row, number);
+        }
+        if closes {
+            self.close();
+        }
+        if drops {
+            self.drop_oldest(1);
+        }
+        Inserted {
+            closed: closes,
+            too_old: false,
+        }
+    }
+
+    /// Cut by time: a row older than the newest enters its own slice.
+    fn insert_late(&mut self, row: &WindowRow, slice: Duration, keep: u32) -> Inserted {
+        let number = row.time.0.div_euclid(slice.0);
+        let open = self.open.as_ref().map_or(number, |open| open.slice);
+        if number == open {
+            self.insert_open(row, number);
+            return Inserted::default();
+        }
+        if number < open.saturating_sub(i64::from(keep)) {
+            return Inserted {
+                closed: false,
+                too_old: true,
+            };
+        }
+        let place = self
+            .closed
+            .partition_point(|segment| segment.slice < number);
+        if self
+            .closed
+            .get(place)
+            .is_none_or(|segment| segment.slice != number)
+        {
+            let segment = self.new_segment(row, number);
+            self.closed.insert(place, segment);
+        }
+        let (columns, frame) = (self.columns, self.frame);
+        add_row(&mut self.closed[place], columns, frame, row);
+        self.rebuild();
+        Inserted {
+            closed: true,
+            too_old: false,
+        }
+    }
+
+    /// The row enters the open segment and the total.
+    fn insert_open(&mut self, row: &WindowRow, number: i64) {
+        if self.total.rows() == 0 {
+            self.total_level = row.error;
+        }
+        let mut scaled = [0.0; MAX_WIDTH];
+        let width = self.columns.count() + 1;
+        scale_row(self.columns, self.frame, row, self.total_level, &mut scaled);
+        self.total.insert(&mut scaled[..width]);
+        self.insert_segment(row, number);
+    }
+
+    /// The row enters the open segment only.
+    fn insert_segment(&mut self, row: &WindowRow, number: i64) {
+        let mut open = match self.open.take() {
+            Some(open) => open,
+            None => self.new_segment(row, number),
+        };
+        add_row(&mut open, self.columns, self.frame, row);
+        self.open = Some(open);
+        self.newest = self.newest.max(Some(row.time));
+    }
+
+    fn new_segment(&mut self, row: &WindowRow, slice: i64) -> Segment {
+        let factor = self.spare_factor();
+        Segment {
+            factor,
+            level: row.error,
+            slice,
+            first: row.time,
+            last: row.time,
+        }
+    }
+
+    fn spare_factor(&mut self) -> Factor {
+        let mut factor = self
+            .spare
+            .0
+            .pop()
+            .unwrap_or_else(|| Factor::new(self.columns.count()));
+        factor.clear();
+        factor
+    }
+
+    /// The open segment becomes the newest closed one.
+    fn close(&mut self) {
+        let Some(segment) = self.open.take() else {
+            return;
+        };
+        if self.back.rows() == 0 {
+            self.back_level = segment.level;
+        }
+        self.back
+            .merge_level(&segment.factor, self.back_level - segment.level);
+        self.closed.push_back(segment);
+    }
+
+    /// Drops the oldest `count` closed segments. There must be no open segment.
+    fn drop_oldest(&mut self, count: usize) {
+        if count == 0 {
+            return;
+        }
+        self.has_dropped = true;
+        let mut flips = false;
+        for segment in self.closed.drain(..count) {
+            self.spare.0.push(segment.factor);
+            match self.front.pop() {
+                Some(top) => self.spare.0.push(top),
+                None => flips = true,
+            }
+        }
+        if let (true, Some(newest)) = (flips, self.newest) {
+            self.move_frame(newest);
+        } else {
+            self.put_total_together();
+        }
+    }
+
+    /// Moves the frame if the row to come is far from the others.
+    fn follow(&mut self, time: Timestamp) {
+        let Some(newest) = self.newest else { return };
+        if self.total.rows() == 0 {
+            self.restart(time);
+            return;
+        }
+        let gap = time.since(newest).0;
+        let span = newest.since(self.oldest_segment_first()).0;
+        if gap > span / GAP_DIVISOR || self.frame.scaled(time) > FAR {
+            self.move_frame(time);
+        }
+    }
+
+    /// First row of the oldest segment: the oldest row, unless late rows came to a row-counted one.
+    fn oldest_segment_first(&self) -> Timestamp {
+        let oldest = self.closed.front().or(self.open.as_ref());
+        oldest.map_or(Timestamp(i64::MIN), Segment::first)
+    }
+
+    /// Unit of scaled time for a window whose newest row is at `newest`.
+    fn frame_at(&self, newest: Timestamp) -> Frame {
+        let span = match self.cut {
+            Cut::Time { slice, keep } => Duration(slice.0.saturating_mul(i64::from(keep))),
+            Cut::Rows { .. } if self.total.rows() == 0 => Duration(1),
+            Cut::Rows { .. } => newest.since(self.oldest_segment_first()),
+        };
+        Frame::new(newest, span)
+    }
+
+    /// An empty window: the first row sets the frame.
+    fn restart(&mut self, time: Timestamp) {
+        self.frame = self.frame_at(time);
+    }
+
+    /// Moves everything to a new origin and flips the stacks.
+    fn move_frame(&mut self, anchor: Timestamp) {
+        let frame = self.frame_at(anchor);
+        for segment in self.closed.iter_mut().chain(&mut self.open) {
+            self.columns
+                .move_frame(&mut segment.factor, self.frame, frame);
+        }
+        self.frame = frame;
+        self.rebuild();
+    }
+
+    /// Builds all aggregates from the segments: every closed segment goes to the front.
+    fn rebuild(&mut self) {
+        self.spare.0.append(&mut self.front);
+        self.back.clear();
+        let Some(newest) = self.closed.back() else {
+            self.put_total_together();
+            return;
+        };
+        // The newest segment's level: then no suffix counts from a level that only older ones had.
+        self.front_level = newest.level;
+        for place in (0..self.closed.len()).rev() {
+            let mut suffix = self.spare_factor();
+            if let Some(shorter) = self.front.last() {
+                suffix.copy_from(shorter);
+            }
+            let segment = &self.closed[place];
+            suffix.merge_level(&segment.factor, self.front_level - segment.level);
+            self.front.push(suffix);
+        }
+        self.put_total_together();
+    }
+
+    /// Total = front's top, back, open segment.
+    fn put_total_together(&mut self) {
+        let open_level = self.open.as_ref().map(|open| open.level);
+        let back_level = (self.back.rows() > 0).then_some(self.back_level);
+        self.total_level = open_level.or(back_level).unwrap_or(self.front_level);
+        if let Some(top) = self.front.last() {
+            self.total.copy_from(top);
+            self.total.move_level(self.total_level - self.front_level);
+        } else {
+            self.total.clear();
+        }
+        self.total
+            .merge_level(&self.back, self.total_level - self.back_level);
+        if let Some(open) = &self.open {
+            self.total
+                .merge_level(&open.factor, self.total_level - open.level);
+        }
+    }
+}
+
+/// Writes [√w·φ | √w·(e − level)].
+fn scale_row(columns: Columns, frame: Frame, row: &WindowRow, level: f64, scaled: &mut [f64]) {
+    let count = columns.count();
+    columns.fill(frame.scaled(row.time), row.x, row.influences, scaled);
+    scaled[count] = row.error - level;
+    if row.weight.to_bits() != 1.0_f64.to_bits() {
+        let root = row.weight.sqrt();
+        for entry in &mut scaled[..=count] {
+            *entry *= root;
+        }
+    }
+}
+
+/// One row enters a segment.
+fn add_row(segment: &mut Segment, columns: Columns, frame: Frame, row: &WindowRow) {
+    let mut scaled = [0.0; MAX_WIDTH];
+    scale_row(columns, frame, row, segment.level, &mut scaled);
+    segment.factor.insert(&mut scaled[..=columns.count()]);
+    segment.first = segment.first.min(row.time);
+    segment.last = segment.last.max(row.time);
+}

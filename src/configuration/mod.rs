@@ -10,16 +10,30 @@
 //! - `name`: names of nodes, channels and references, topics and wildcard filters
 //! - `place`: where in which payload a value stands
 //! - `service`: the tables `[node]`, `[broker]`, `[record]`, `[page]`
+//! - `draft`: what has been read while entries still refer to each other by name
 //! - `reference`, `channel`: one entry each
 //! - `crosscheck`: what only shows when all entries are known
+//! - `assemble`: a file from top to bottom
 
 pub mod problem;
+
+mod assemble;
+mod channel;
+mod crosscheck;
+mod draft;
+mod name;
+mod place;
+mod quantity;
+mod reader;
+mod reference;
+mod service;
 
 use crate::payload::Tables;
 use holdtrue_engine::setup::Setup;
 use std::path::PathBuf;
 use std::time::Duration;
 
+pub use assemble::{from_text, load, settings};
 pub use problem::{Problem, Problems, Severity};
 
 /// Everything that one configuration file says, checked.

@@ -7,9 +7,9 @@ const EXCERPT_MAX: usize = 60;
 
 /// One refusal, before it is known whose value it would have been.
 #[derive(Clone, Debug, PartialEq)]
-pub(super) struct Fault {
-    pub(super) reason: RefusedReason,
-    pub(super) detail: String,
+pub(crate) struct Fault {
+    pub(crate) reason: RefusedReason,
+    pub(crate) detail: String,
 }
 
 impl Fault {

@@ -21,7 +21,7 @@ const NANOS_PER_SECOND: i64 = 1_000_000_000;
 /// them), or a full date alone, which is midnight UTC. The leap second 23:59:60 UTC counts like the
 /// second after it, as the formula of IEEE Std 1003.1 section 4.16 ("Seconds Since the Epoch") does
 /// (from memory).
-pub(super) fn from_text(text: &str) -> Result<Timestamp, Fault> {
+pub(crate) fn from_text(text: &str) -> Result<Timestamp, Fault> {
     static PARSER: DateTimeParser = DateTimeParser::new();
     let trimmed = text.trim();
     if !has_shape(trimmed) {

@@ -36,7 +36,7 @@ pub(super) fn not_finite(text: &str) -> Fault {
 /// an integer; exact, because it works on the digits.
 ///
 /// `None`: not a decimal number, or more than an `i128` can surely hold (36 digits).
-pub(super) fn scaled_integer(text: &str, shift: i32) -> Option<i128> {
+pub(crate) fn scaled_integer(text: &str, shift: i32) -> Option<i128> {
     let (negative, unsigned) = match text.as_bytes().first()? {
         b'-' => (true, &text[1..]),
         b'+' => (false, &text[1..]),

@@ -18,9 +18,9 @@ pub mod pointer;
 pub mod tables;
 
 mod fault;
-mod instant;
+pub(crate) mod instant;
 mod json;
-mod literal;
+pub(crate) mod literal;
 mod pick;
 mod plain;
 mod senml;

@@ -1,0 +1,189 @@
+//! What only shows when all entries are known: places used twice, loops, references not good enough.
+
+use super::draft::{Draft, Wire};
+use super::name;
+use super::reader::{Found, Section, Source};
+use crate::payload::{Format, Tables, Target, Use};
+use holdtrue_engine::setup::{ChannelSetup, ReferenceKind};
+use std::collections::BTreeMap;
+use std::mem::discriminant;
+
+/// A maximum permissible error should be at least so many times the reference's expanded
+/// uncertainty (test uncertainty ratio, common practice).
+const RATIO_MIN: f64 = 4.0;
+/// Coverage factor of that expanded uncertainty.
+const COVERAGE_FACTOR: f64 = 2.0;
+
+/// Checks all places against each other and turns them into tables.
+pub(super) fn tables(
+    source: &Source<'_>,
+    node: &str,
+    subscribe: &[Found<String>],
+    max_payload: u32,
+    wires: Vec<Wire>,
+) -> Tables {
+    let own = format!("holdtrue/{node}/");
+    refuse_loops(source, &own, subscribe, &wires);
+    refuse_double_use(source, &wires);
+    refuse_mixed_formats(source, &wires);
+    let mut topics: BTreeMap<String, Vec<Use>> = BTreeMap::new();
+    for wire in wires {
+        topics
+            .entry(wire.topic.value)
+            .or_default()
+            .push(wire.wanted);
+    }
+    for uses in topics.values_mut() {
+        uses.sort_by_key(|wanted| match wanted.target {
+            Target::Gate { .. } => 0,
+            Target::Reference(_) => 1,
+            Target::Indication(_) => 2,
+        });
+    }
+    let filters = filters(source, subscribe, topics.keys());
+    Tables {
+        filters,
+        topics,
+        max_payload: usize::try_from(max_payload).unwrap_or(usize::MAX),
+    }
+}
+
+/// What we publish must not come back as something to fit against.
+fn refuse_loops(source: &Source<'_>, own: &str, subscribe: &[Found<String>], wires: &[Wire]) {
+    for wire in wires
+        .iter()
+        .filter(|wire| wire.topic.value.starts_with(own))
+    {
+        let message = format!(
+            "\"{}\" is this daemon's own output: fitting against a corrected value would feed the \
+             correction back into itself; name the sensor's or the reference's own topic",
+            wire.topic.value
+        );
+        source.error(&wire.topic.span, &wire.topic.key, message);
+    }
+    for filter in subscribe
+        .iter()
+        .filter(|filter| name::reaches_below(&filter.value, own))
+    {
+        let message = format!(
+            "\"{}\" matches this daemon's own output {own}…; narrow it to the plant's topics",
+            filter.value
+        );
+        source.error(&filter.span, &filter.key, message);
+    }
+}
+
+/// A place in a payload is one sensor's or one reference's value; only gates may share theirs.
+fn refuse_double_use(source: &Source<'_>, wires: &[Wire]) {
+    let mut first: BTreeMap<(&str, &str), &Wire> = BTreeMap::new();
+    for wire in wires
+        .iter()
+        .filter(|wire| !matches!(wire.wanted.target, Target::Gate { .. }))
+    {
+        let Some(earlier) = first.insert((&wire.topic.value, &wire.address), wire) else {
+            continue;
+        };
+        let indication = |wire: &Wire| matches!(wire.wanted.target, Target::Indication(_));
+        let way_out = match (indication(earlier), indication(wire)) {
+            (true, true) => "two channels can't be one sensor's value; name the other place",
+            (false, false) => "declare it once as a [[reference]] and let both channels name it",
+            _ => {
+                "a sensor that is corrected can't be a reference at the same time (such \
+                  references can run in a circle); use a reference of its own or a group"
+            }
+        };
+        let message = format!(
+            "{} of \"{}\" is already the value of {}; {way_out}",
+            wire.address, wire.topic.value, earlier.owner
+        );
+        source.error(&wire.topic.span, &wire.topic.key, message);
+    }
+}
+
+/// One topic has one format.
+fn refuse_mixed_formats(source: &Source<'_>, wires: &[Wire]) {
+    let mut first: BTreeMap<&str, &Wire> = BTreeMap::new();
+    for wire in wires {
+        let earlier = first.entry(&wire.topic.value).or_insert(wire);
+        if discriminant(&earlier.wanted.format) != discriminant(&wire.wanted.format) {
+            let message = format!(
+                "\"{}\" is read as {} here and as {} by {}; one topic has one format",
+                wire.topic.value,
+                format_name(&wire.wanted.format),
+                format_name(&earlier.wanted.format),
+                earlier.owner
+            );
+            source.error(&wire.topic.span, &wire.topic.key, message);
+        }
+    }
+}
+
+fn format_name(format: &Format) -> &'static str {
+    match format {
+        Format::Plain => "a plain number",
+        Format::Json(_) => "JSON",
+        Format::Senml(_) => "SenML",
+    }
+}
+
+/// The wildcard filters, and the topics that none of them covers.
+fn filters<'topic>(
+    source: &Source<'_>,
+    subscribe: &[Found<String>],
+    topics: impl Iterator<Item = &'topic String> + Clone,
+) -> Vec<String> {
+    for filter in subscribe {
+        if !topics
+            .clone()
+            .any(|topic| name::covers(&filter.value, topic))
+        {
+            let message = format!("\"{}\" covers no topic of this file", filter.value);
+            source.warn(&filter.span, &filter.key, message);
+        }
+    }
+    let uncovered = topics.filter(|topic| {
+        !subscribe
+            .iter()
+            .any(|filter| name::covers(&filter.value, topic))
+    });
+    let mut filters: Vec<String> = subscribe
+        .iter()
+        .map(|filter| filter.value.clone())
+        .chain(uncovered.cloned())
+        .collect();
+    filters.sort();
+    filters.dedup();
+    filters
+}
+
+/// Whether each channel's reference is good enough for its limit.
+pub(super) fn warn_about_references(sections: &[Section<'_>], draft: &Draft) {
+    for (section, channel) in sections.iter().zip(&draft.channels) {
+        let message = reference_is_weak(channel, draft);
+        let place = section.place("max_permissible_error");
+        if let (Some(message), Some(found)) = (message, place) {
+            section.source().warn(&found.span, &found.key, message);
+        }
+    }
+}
+
+fn reference_is_weak(channel: &ChannelSetup, draft: &Draft) -> Option<String> {
+    let limit = channel.max_permissible_error?;
+    let reference = draft.references.get(channel.reference.0 as usize)?;
+    let (each, common) = (reference.uncertainty_each, reference.uncertainty_common);
+    let expanded = COVERAGE_FACTOR * (each * each + common * common).sqrt();
+    if expanded == 0.0 && !matches!(reference.kind, ReferenceKind::Group { .. }) {
+        return Some(format!(
+            "is judged against reference {}, whose uncertainty is not given and counts as zero; \
+             add uncertainty = {{ each = …, common = … }}",
+            reference.name
+        ));
+    }
+    (expanded * RATIO_MIN > limit).then(|| {
+        format!(
+            "is less than {RATIO_MIN} times the expanded uncertainty {expanded} of reference {}: \
+             it can show a trend, hardly conformity",
+            reference.name
+        )
+    })
+}

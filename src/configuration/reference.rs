@@ -1,0 +1,265 @@
+//! A reference: `[[reference]]`, or the inline table of a channel.
+
+use super::draft::{Draft, Wire};
+use super::place::{self, Place};
+use super::reader::{Found, Section};
+use crate::payload::{Target, Use, instant};
+use holdtrue_engine::setup::{ChannelId, ReferenceId, ReferenceKind, ReferenceSetup, Stamped};
+use holdtrue_engine::time::{Duration, Timestamp};
+
+/// A day, which a certificate that names a date lasts through.
+const DAY: Duration = Duration::from_seconds(86_400);
+/// Length of a date without a time of day.
+const DATE_LENGTH: usize = 10;
+/// Fewest other members of a group.
+const OTHERS_MIN: usize = 3;
+
+/// What an inline reference may look at.
+pub(super) struct Beside<'a> {
+    /// The channel that it belongs to.
+    pub(super) channel: ChannelId,
+    pub(super) channel_name: &'a str,
+    /// Where the channel's indication stands.
+    pub(super) indication: Option<&'a Place>,
+}
+
+/// Reads a reference and adds it to the draft; its position is the next free one.
+pub(super) fn read(
+    section: &Section<'_>,
+    name: &str,
+    beside: Option<&Beside<'_>>,
+    draft: &mut Draft,
+) {
+    let id = draft.next_reference();
+    let kind = kind(section, name, id, beside, draft);
+    let (each, common) = uncertainty(section);
+    let (stands_for, stamped) = interval(section);
+    let certificate = section
+        .text("certificate")
+        .map(|found| found.value.to_owned());
+    let expires = expires(section, draft.now);
+    let stale_after = section
+        .positive_duration("stale_after")
+        .map(|found| found.value);
+    section.finish();
+    if !matches!(kind, ReferenceKind::Measured) {
+        for key in ["stands_for", "stamped", "stale_after"] {
+            if let Some(found) = section.place(key) {
+                section.wrong(&found, "belongs to a reference that is measured");
+            }
+        }
+    }
+    draft.references.push(ReferenceSetup {
+        name: name.to_owned(),
+        kind,
+        uncertainty_each: each,
+        uncertainty_common: common,
+        certificate,
+        expires,
+        stale_after,
+        stands_for,
+        stamped,
+    });
+}
+
+/// One of four kinds: values on a topic or in the indication's payload, a constant, a group.
+fn kind(
+    section: &Section<'_>,
+    name: &str,
+    id: ReferenceId,
+    beside: Option<&Beside<'_>>,
+    draft: &mut Draft,
+) -> ReferenceKind {
+    let constant = section.number("constant");
+    let gate = section.section("valid_when");
+    // A named reference stands in no channel, so it cannot tell who is the other members.
+    let group = beside.and_then(|beside| group(section, beside, draft));
+    let place_keys = ["topic", "value", "senml"]
+        .into_iter()
+        .find_map(|key| section.place(key));
+    let chosen = [constant.is_some(), group.is_some(), place_keys.is_some()];
+    if chosen.iter().filter(|chosen| **chosen).count() > 1 {
+        section.error("is of several kinds; keep one of constant, group, or topic and value");
+    }
+    if let (Some(_), None) = (&gate, &constant)
+        && let Some(found) = section.place("valid_when")
+    {
+        section.wrong(
+            &found,
+            "belongs to a constant; a measured reference has `status`",
+        );
+    }
+    if let Some(constant) = constant {
+        known_keys_of_a_place(section);
+        let gated = gate.is_some();
+        if let Some(gate) = gate {
+            self::gate(&gate, name, id, beside, draft);
+        }
+        return ReferenceKind::Constant {
+            value: constant.value + 0.0,
+            gated,
+        };
+    }
+    if let Some(members) = group {
+        known_keys_of_a_place(section);
+        return ReferenceKind::Group { members };
+    }
+    if place_keys.is_none() {
+        let choices = "say where its values come from: topic (and value), or constant";
+        section.error(match beside {
+            Some(_) => format!("{choices}, or group, or value alone for the same payload"),
+            None => choices.to_owned(),
+        });
+        known_keys_of_a_place(section);
+        return ReferenceKind::Measured;
+    }
+    if let Some(place) = place::value(section, beside.and_then(|beside| beside.indication)) {
+        let target = Target::Reference(id);
+        draft.wires.push(Wire {
+            topic: place.topic,
+            address: place.address,
+            owner: format!("reference {name}"),
+            wanted: Use {
+                target,
+                format: place.format,
+            },
+        });
+    }
+    ReferenceKind::Measured
+}
+
+/// A constant's `valid_when`.
+fn gate(
+    section: &Section<'_>,
+    name: &str,
+    id: ReferenceId,
+    beside: Option<&Beside<'_>>,
+    draft: &mut Draft,
+) {
+    let indication = beside.and_then(|beside| beside.indication);
+    let Some(condition) = place::condition(section, indication) else {
+        return;
+    };
+    let target = Target::Gate {
+        reference: id,
+        open: condition.open,
+        own_topic: condition.own_topic,
+    };
+    draft.wires.push(Wire {
+        topic: condition.place.topic,
+        address: condition.place.address,
+        owner: format!("valid_when of reference {name}"),
+        wanted: Use {
+            target,
+            format: condition.place.format,
+        },
+    });
+}
+
+/// The other members of a group; the channel itself may be listed and is left out.
+fn group(section: &Section<'_>, beside: &Beside<'_>, draft: &Draft) -> Option<Vec<ChannelId>> {
+    let found = section.place("group")?;
+    let mut members = Vec::new();
+    for member in section.texts("group") {
+        match draft.channel_ids.get(member.value) {
+            Some(id) if *id == beside.channel => {}
+            Some(id) if members.contains(id) => {
+                section.wrong(&member, format!("\"{}\" is named twice", member.value));
+            }
+            Some(id) => members.push(*id),
+            None => {
+                let nearest = draft.nearest_channel(member.value);
+                section.wrong(&member, format!("no channel \"{}\"{nearest}", member.value));
+            }
+        }
+    }
+    if members.len() < OTHERS_MIN {
+        let message = format!(
+            "{} other members of {}; a median needs at least {OTHERS_MIN}, because with fewer \
+             nobody can tell which one is wrong. Name more channels or another reference",
+            members.len(),
+            beside.channel_name
+        );
+        section.wrong(&found, message);
+    }
+    Some(members)
+}
+
+/// Lets the keys of a place be known, and refuses those that are set: a constant and a group have
+/// no place.
+fn known_keys_of_a_place(section: &Section<'_>) {
+    for key in [
+        "time",
+        "time_unit",
+        "sequence",
+        "status",
+        "sum",
+        "senml_unit",
+    ] {
+        if let Some(found) = section.place(key) {
+            section.wrong(&found, "belongs to a reference that is measured");
+        }
+    }
+}
+
+/// `uncertainty = { each, common }`, standard uncertainties.
+fn uncertainty(section: &Section<'_>) -> (f64, f64) {
+    let Some(table) = section.section("uncertainty") else {
+        return (0.0, 0.0);
+    };
+    let part = |key| {
+        let found = table.number_in(key, |u| u >= 0.0, "a standard uncertainty of zero or more");
+        found.map_or(0.0, |found| found.value + 0.0)
+    };
+    let parts = (part("each"), part("common"));
+    table.finish();
+    parts
+}
+
+/// `stands_for` and `stamped`. A value that stands for an interval must say which instant of it its
+/// time names: half an hour wrong on a daily swing is a false error.
+fn interval(section: &Section<'_>) -> (Duration, Stamped) {
+    let stands_for = section
+        .duration("stands_for")
+        .map_or(Duration::ZERO, |found| found.value);
+    let stamped = section.choice(
+        "stamped",
+        &[
+            ("start", Stamped::Start),
+            ("middle", Stamped::Middle),
+            ("end", Stamped::End),
+        ],
+    );
+    if stands_for > Duration::ZERO && !section.has("stamped") {
+        let advice = "a value that stands for a stretch of time must say which instant its time \
+                      names: \"start\", \"middle\" or \"end\"";
+        section.missing("stamped", advice);
+    }
+    if let Some(found) = stamped.as_ref().filter(|_| !section.has("stands_for")) {
+        section.wrong(found, "says nothing without stands_for");
+    }
+    (
+        stands_for,
+        stamped.map_or(Stamped::Middle, |found| found.value),
+    )
+}
+
+/// `expires`: an instant, or a date that the certificate lasts through.
+fn expires(section: &Section<'_>, now: Timestamp) -> Option<Timestamp> {
+    let found: Found<String> = section.date("expires")?;
+    let Ok(instant) = instant::from_text(&found.value) else {
+        let message = format!("\"{}\" is not a date, as \"2027-06-30\"", found.value);
+        section.wrong(&found, message);
+        return None;
+    };
+    let end = if found.value.len() == DATE_LENGTH {
+        instant.plus(DAY)
+    } else {
+        instant
+    };
+    if end <= now {
+        let message = format!("the certificate expired on {}; renew it", found.value);
+        section.source().warn(&found.span, &found.key, message);
+    }
+    Some(end)
+}

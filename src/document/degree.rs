@@ -1,0 +1,53 @@
+//! Documents about a change of degree, with the numbers that decided it.
+
+use super::correction::Criterion;
+use super::{SCHEMA_VERSION, word};
+use holdtrue_engine::event::DegreeChange;
+use holdtrue_engine::setup::ChannelSetup;
+use serde::Serialize;
+
+/// The newest change of a channel's degree.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct DegreeDocument<'a> {
+    schema_version: u32,
+    channel: &'a str,
+    at: String,
+    from: u8,
+    to: u8,
+    criterion: Criterion<'a>,
+    gain: f64,
+    needed: f64,
+    held_segments: u32,
+    needed_segments: u32,
+    segments: u32,
+    effective_sample_size: f64,
+    lag_one: f64,
+    rss: &'a [f64],
+}
+
+impl<'a> DegreeDocument<'a> {
+    /// Of one change of `channel`.
+    #[must_use]
+    pub fn new(change: &'a DegreeChange, channel: &'a ChannelSetup) -> Self {
+        let evidence = &change.evidence;
+        Self {
+            schema_version: SCHEMA_VERSION,
+            channel: &channel.name,
+            at: word::time(change.at),
+            from: change.from,
+            to: change.to,
+            criterion: Criterion {
+                name: &evidence.criterion.name,
+                values: &evidence.criterion.values,
+            },
+            gain: evidence.gain,
+            needed: evidence.needed,
+            held_segments: evidence.held_segments,
+            needed_segments: evidence.needed_segments,
+            segments: evidence.segments,
+            effective_sample_size: evidence.effective_sample_size,
+            lag_one: evidence.lag_one,
+            rss: &evidence.rss,
+        }
+    }
+}

@@ -1,0 +1,119 @@
+//! The `state` document: whether the daemon lives, what it is doing, and what it had to refuse.
+
+use super::{SCHEMA_VERSION, word};
+use holdtrue_engine::event::{RefusedReason, Subject};
+use holdtrue_engine::time::Timestamp;
+use serde::Serialize;
+
+/// What the daemon is doing.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Doing {
+    /// Taking readings, publishing corrections.
+    Running,
+    /// The record can't be written: nothing is taken or acknowledged until it can; the broker queues.
+    RecordPaused,
+    /// Told to end; published as the last word.
+    Stopped,
+    /// Left with the broker as the will: published when the connection breaks.
+    Lost,
+}
+
+/// The state document.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct StateDocument {
+    schema_version: u32,
+    node: String,
+    state: &'static str,
+    /// When this was written; in a will: when the connection was made that it speaks for.
+    at: String,
+    program: &'static str,
+    configuration: String,
+    /// Why, where the state needs a reason.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    why: Option<String>,
+    /// What was there to say; not in a will.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    standing: Option<Standing>,
+}
+
+/// Figures of a living daemon.
+#[derive(Clone, Debug, Default, PartialEq, Serialize)]
+pub struct Standing {
+    /// Inputs in the record.
+    pub inputs: i64,
+    /// Documents that the broker has not acknowledged.
+    pub outbox: usize,
+    /// Documents that the broker refused (no permission, too large), since the start.
+    pub documents_refused: u64,
+    /// Messages sent without delivery guarantee (quality of service 0) that were dropped while nothing could be
+    /// taken, since the start.
+    pub messages_dropped: u64,
+    /// Connections made since the start.
+    pub connections: u64,
+    /// What came in and was not used, by subject and reason, since the record began.
+    pub refused: Vec<RefusedCount>,
+}
+
+/// How often one thing was not used for one reason.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct RefusedCount {
+    subject: &'static str,
+    name: String,
+    reason: &'static str,
+    count: u64,
+}
+
+impl RefusedCount {
+    /// `count` refusals of what came for `subject`, called `name`.
+    #[must_use]
+    pub fn new(subject: Subject, name: &str, reason: RefusedReason, count: u64) -> Self {
+        Self {
+            subject: word::subject(subject),
+            name: name.to_owned(),
+            reason: word::refused_reason(reason),
+            count,
+        }
+    }
+}
+
+impl StateDocument {
+    /// With the least that every state document says.
+    #[must_use]
+    pub fn new(node: &str, fingerprint: &str, doing: Doing, at: Timestamp) -> Self {
+        Self {
+            schema_version: SCHEMA_VERSION,
+            node: node.to_owned(),
+            state: match doing {
+                Doing::Running => "running",
+                Doing::RecordPaused => "record-paused",
+                Doing::Stopped => "stopped",
+                Doing::Lost => "lost",
+            },
+            at: word::time(at),
+            program: env!("CARGO_PKG_VERSION"),
+            configuration: fingerprint.to_owned(),
+            why: None,
+            standing: None,
+        }
+    }
+
+    /// Says why.
+    #[must_use]
+    pub fn because(mut self, why: Option<String>) -> Self {
+        self.why = why;
+        self
+    }
+
+    /// Adds figures.
+    #[must_use]
+    pub fn with(mut self, standing: Standing) -> Self {
+        self.standing = Some(standing);
+        self
+    }
+
+    /// The payload.
+    #[must_use]
+    pub fn to_json(&self) -> Vec<u8> {
+        super::to_json(self)
+    }
+}

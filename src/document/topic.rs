@@ -1,0 +1,98 @@
+//! Topics under `holdtrue/<node>/`.
+
+use super::word;
+use holdtrue_engine::event::{AlarmKind, Subject};
+use holdtrue_engine::setup::Setup;
+
+/// The topics of one node.
+pub struct Topics<'a> {
+    node: &'a str,
+}
+
+impl<'a> Topics<'a> {
+    /// Of the node with this name.
+    #[must_use]
+    pub fn new(node: &'a str) -> Self {
+        Self { node }
+    }
+
+    /// Whether the daemon lives, and how; retained, and the will.
+    #[must_use]
+    pub fn state(&self) -> String {
+        format!("holdtrue/{}/state", self.node)
+    }
+
+    /// The correction in force of a channel; retained.
+    #[must_use]
+    pub fn correction(&self, channel: &str) -> String {
+        format!("holdtrue/{}/correction/{channel}", self.node)
+    }
+
+    /// Every corrected value of a channel.
+    #[must_use]
+    pub fn corrected(&self, channel: &str) -> String {
+        format!("holdtrue/{}/corrected/{channel}", self.node)
+    }
+
+    /// The newest change of a channel's degree, with its evidence; retained.
+    #[must_use]
+    pub fn degree(&self, channel: &str) -> String {
+        format!("holdtrue/{}/degree/{channel}", self.node)
+    }
+
+    /// An alarm; retained. `name` is the channel's or reference's, and not used for an alarm of the node.
+    #[must_use]
+    pub fn alarm(&self, subject: Subject, name: &str, kind: AlarmKind) -> String {
+        let kind = word::alarm_kind(kind);
+        match subject {
+            Subject::Node => format!("holdtrue/{}/alarm/node/{kind}", self.node),
+            Subject::Channel(_) => format!("holdtrue/{}/alarm/channel/{name}/{kind}", self.node),
+            Subject::Reference(_) => {
+                format!("holdtrue/{}/alarm/reference/{name}/{kind}", self.node)
+            }
+        }
+    }
+
+    /// What a person should be able to read about.
+    #[must_use]
+    pub fn notice(&self) -> String {
+        format!("holdtrue/{}/notice", self.node)
+    }
+
+    /// Whether `topic` carries a retained document about a channel or reference that `setup` no longer has, or about
+    /// another node.
+    #[must_use]
+    pub fn is_orphan(&self, topic: &str, setup: &Setup) -> bool {
+        let Some(rest) = topic.strip_prefix(&format!("holdtrue/{}/", self.node)) else {
+            return true;
+        };
+        let channel = |name: &str| setup.channels.iter().any(|channel| channel.name == name);
+        let reference = |name: &str| setup.references.iter().any(|known| known.name == name);
+        let without_kind = |rest: &'_ str| rest.rsplit_once('/').map(|(name, _)| name.to_owned());
+        if let Some(name) = rest
+            .strip_prefix("correction/")
+            .or(rest.strip_prefix("degree/"))
+        {
+            !channel(name)
+        } else if let Some(rest) = rest.strip_prefix("alarm/channel/") {
+            !without_kind(rest).is_some_and(|name| channel(&name))
+        } else if let Some(rest) = rest.strip_prefix("alarm/reference/") {
+            !without_kind(rest).is_some_and(|name| reference(&name))
+        } else {
+            false
+        }
+    }
+}
+
+/// The name of what an alarm or notice is about; `None` if the setup has no such thing.
+#[must_use]
+pub fn subject_name(subject: Subject, setup: &Setup) -> Option<&str> {
+    match subject {
+        Subject::Node => Some(&setup.node),
+        Subject::Channel(id) => setup.channels.get(id.0 as usize).map(|it| it.name.as_str()),
+        Subject::Reference(id) => setup
+            .references
+            .get(id.0 as usize)
+            .map(|it| it.name.as_str()),
+    }
+}

@@ -1,0 +1,95 @@
+//! The fixed words that machines find in documents, and times as text.
+
+use holdtrue_engine::event::{AlarmKind, AlarmState, RefusedReason, Subject, Zone};
+use holdtrue_engine::time::Timestamp;
+
+/// RFC 3339 in UTC, with as many digits of the second as the instant has.
+pub(super) fn time(instant: Timestamp) -> String {
+    jiff::Timestamp::from_nanosecond(i128::from(instant.0))
+        .expect("64 bits of nanoseconds end in the year 2262, the library's range in 9999")
+        .to_string()
+}
+
+/// An alarm's kind, as in its topic.
+pub(super) fn alarm_kind(kind: AlarmKind) -> &'static str {
+    match kind {
+        AlarmKind::ErrorLimit => "error-limit",
+        AlarmKind::DriftRate => "drift-rate",
+        AlarmKind::ReferenceStale => "reference-stale",
+        AlarmKind::DataGap => "data-gap",
+        AlarmKind::ScreenLockedOut => "screen-locked-out",
+    }
+}
+
+/// An alarm's state.
+pub(super) fn alarm_state(state: AlarmState) -> &'static str {
+    match state {
+        AlarmState::Normal => "normal",
+        AlarmState::Unacknowledged => "unacknowledged",
+    }
+}
+
+/// What an alarm or notice is about.
+pub(super) fn subject(subject: Subject) -> &'static str {
+    match subject {
+        Subject::Node => "node",
+        Subject::Channel(_) => "channel",
+        Subject::Reference(_) => "reference",
+    }
+}
+
+/// A conformity zone.
+pub(super) fn zone(zone: Zone) -> &'static str {
+    match zone {
+        Zone::Pass => "pass",
+        Zone::ConditionalPass => "conditional-pass",
+        Zone::ConditionalFail => "conditional-fail",
+        Zone::Fail => "fail",
+    }
+}
+
+/// Why something was not used.
+pub(super) fn refused_reason(reason: RefusedReason) -> &'static str {
+    match reason {
+        RefusedReason::UnknownTopic => "unknown-topic",
+        RefusedReason::Empty => "empty",
+        RefusedReason::Oversize => "oversize",
+        RefusedReason::Unreadable => "unreadable",
+        RefusedReason::Missing => "missing",
+        RefusedReason::WrongType => "wrong-type",
+        RefusedReason::NotFinite => "not-finite",
+        RefusedReason::BadTime => "bad-time",
+        RefusedReason::Retained => "retained",
+        RefusedReason::NegativeTime => "negative-time",
+        RefusedReason::Future => "future",
+        RefusedReason::Late => "late",
+        RefusedReason::Duplicate => "duplicate",
+        RefusedReason::StatusExcluded => "status-excluded",
+        RefusedReason::OutOfRange => "out-of-range",
+        RefusedReason::InnovationGate => "innovation-gate",
+        RefusedReason::NoPartner => "no-partner",
+        RefusedReason::GroupTooSmall => "group-too-small",
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn times_keep_every_nanosecond_and_show_no_more_than_they_have() {
+        assert_eq!(time(Timestamp(0)), "1970-01-01T00:00:00Z");
+        assert_eq!(
+            time(Timestamp(1_577_836_800_123_456_789)),
+            "2020-01-01T00:00:00.123456789Z"
+        );
+        assert_eq!(
+            time(Timestamp(1_577_836_800_500_000_000)),
+            "2020-01-01T00:00:00.5Z"
+        );
+        assert_eq!(time(Timestamp(-1)), "1969-12-31T23:59:59.999999999Z");
+        // The ends of the range must not panic.
+        assert!(time(Timestamp(i64::MAX)).starts_with("2262-04-11T"));
+        assert!(time(Timestamp(i64::MIN)).starts_with("1677-09-21T"));
+    }
+}

@@ -1,0 +1,183 @@
+//! Inputs and outputs as the text that stands in the record, and back.
+//!
+//! JSON with exact floats: `serde_json` writes the shortest text that reads back to the same bits, and reads it back
+//! exactly with its `float_roundtrip` feature.
+
+use holdtrue_engine::event::{Input, Output, Reading, Source, Supplied};
+use holdtrue_engine::setup::ChannelId;
+use holdtrue_engine::time::Timestamp;
+use serde::{Deserialize, Serialize};
+
+/// Rows handed back to the engine, recorded by their positions and not as copies.
+#[derive(Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub(super) struct SuppliedPositions {
+    /// Whose rows.
+    pub(super) channel: ChannelId,
+    /// Positions of the readings in `inputs`.
+    pub(super) positions: Vec<i64>,
+}
+
+/// The searchable columns of an input.
+pub(super) struct Columns {
+    pub(super) kind: &'static str,
+    pub(super) received: Option<Timestamp>,
+    pub(super) source: Option<String>,
+    pub(super) phenomenon: Option<Timestamp>,
+}
+
+/// The columns of `input`.
+pub(super) fn columns(input: &Input) -> Columns {
+    let (kind, received, source, phenomenon) = match input {
+        Input::Setup(_) => ("setup", None, None, None),
+        Input::Reading(reading) => (
+            "reading",
+            Some(reading.received),
+            Some(source_text(reading.source)),
+            Some(reading.phenomenon),
+        ),
+        Input::Gate(gate) => (
+            "gate",
+            Some(gate.received),
+            Some(source_text(Source::Reference(gate.reference))),
+            Some(gate.phenomenon),
+        ),
+        Input::Refused(refused) => (
+            "refused",
+            Some(refused.received),
+            refused.source.map(source_text),
+            None,
+        ),
+        Input::Tick { now } => ("tick", Some(*now), None, None),
+        Input::Supplied(_) => ("supplied", None, None, None),
+    };
+    Columns {
+        kind,
+        received,
+        source,
+        phenomenon,
+    }
+}
+
+/// The kind column of an output.
+pub(super) fn output_kind(output: &Output) -> &'static str {
+    match output {
+        Output::Correction(_) => "correction",
+        Output::Withdrawn { .. } => "withdrawn",
+        Output::Corrected(_) => "corrected",
+        Output::Alarm(_) => "alarm",
+        Output::Degree(_) => "degree",
+        Output::Pair(_) => "pair",
+        Output::Notice(_) => "notice",
+        Output::Wanted { .. } => "wanted",
+    }
+}
+
+/// How a source is written in the record.
+pub(super) fn source_text(source: Source) -> String {
+    match source {
+        Source::Indication(channel) => format!("indication/{}", channel.0),
+        Source::Reference(reference) => format!("reference/{}", reference.0),
+    }
+}
+
+/// The body column of an input; `positions` are those of the rows that a `Supplied` input carries.
+pub(super) fn input_text(input: &Input, positions: &[i64]) -> Result<String, serde_json::Error> {
+    match input {
+        Input::Supplied(supplied) => serde_json::to_string(&SuppliedPositions {
+            channel: supplied.channel,
+            positions: positions.to_vec(),
+        }),
+        other => serde_json::to_string(other),
+    }
+}
+
+/// The body column of an output.
+pub(super) fn output_text(output: &Output) -> Result<String, serde_json::Error> {
+    serde_json::to_string(output)
+}
+
+/// Reads an input back; `reading_at` fetches the rows of a `supplied` input.
+pub(super) fn input_from_text<E: From<serde_json::Error>>(
+    kind: &str,
+    body: &str,
+    mut reading_at: impl FnMut(i64) -> Result<Reading, E>,
+) -> Result<Input, E> {
+    if kind != "supplied" {
+        return Ok(serde_json::from_str(body)?);
+    }
+    let supplied: SuppliedPositions = serde_json::from_str(body)?;
+    let readings = supplied
+        .positions
+        .iter()
+        .map(|position| reading_at(*position))
+        .collect::<Result<_, E>>()?;
+    Ok(Input::Supplied(Supplied {
+        channel: supplied.channel,
+        readings,
+    }))
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use holdtrue_engine::setup::ReferenceId;
+
+    #[test]
+    fn every_float_reads_back_to_the_same_bits() {
+        for value in [
+            0.1 + 0.2,
+            -0.0,
+            f64::MIN_POSITIVE / 8.0,
+            1.797e308,
+            5e-324,
+            7.053_123_456_789_012,
+        ] {
+            let input = Input::Reading(Reading {
+                source: Source::Reference(ReferenceId(7)),
+                received: Timestamp(i64::MAX),
+                phenomenon: Timestamp(-1),
+                value,
+                sequence: Some(i64::MIN),
+                excluded: false,
+            });
+            let text = input_text(&input, &[]).unwrap();
+            let back = input_from_text("reading", &text, |_| -> Result<_, serde_json::Error> {
+                panic!("a reading refers to no other row")
+            });
+            let Input::Reading(reading) = back.unwrap() else {
+                panic!("kind changed")
+            };
+            assert_eq!(reading.value.to_bits(), value.to_bits(), "{text}");
+            assert_eq!(Input::Reading(reading), input);
+        }
+    }
+
+    #[test]
+    fn supplied_rows_are_recorded_by_position_and_come_back_whole() {
+        let reading = Reading {
+            source: Source::Indication(ChannelId(2)),
+            received: Timestamp(5),
+            phenomenon: Timestamp(4),
+            value: 1.5,
+            sequence: None,
+            excluded: false,
+        };
+        let input = Input::Supplied(Supplied {
+            channel: ChannelId(2),
+            readings: vec![reading.clone(), reading.clone()],
+        });
+        let text = input_text(&input, &[11, 12]).unwrap();
+        assert!(!text.contains("1.5"), "copied: {text}");
+        let mut asked = Vec::new();
+        let back = input_from_text(
+            "supplied",
+            &text,
+            |position| -> Result<_, serde_json::Error> {
+                asked.push(position);
+                Ok(reading.clone())
+            },
+        );
+        assert_eq!(back.unwrap(), input);
+        assert_eq!(asked, [11, 12]);
+    }
+}

@@ -1,4 +1,5 @@
-//! The record keeps inputs, outputs and documents whole, in order, or not at all, for one daemon at a time.
+//! The record keeps inputs, outputs and documents whole, in order, or not at all, for one daemon
+//! at a time.
 
 use holdtrue::document::Document;
 use holdtrue::record::{FORMAT_VERSION, Numbered, Record, RecordError};

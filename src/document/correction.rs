@@ -7,8 +7,9 @@ use serde::Serialize;
 
 /// How to correct a channel's indications, and how sure that is.
 ///
-/// A consumer needs two Horner loops and c = (zero(t) + span(t)·(indication − `span_centre`)) / (1 − span(t)), with t
-/// in `time_unit` from `origin`; without span terms, c = zero(t). The corrected value is indication + c.
+/// A consumer needs two Horner loops and c = (zero(t) + span(t)·(indication − `span_centre`)) / (1
+/// − span(t)), with t in `time_unit` from `origin`; without span terms, c = zero(t). The corrected
+/// value is indication + c.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 pub struct CorrectionDocument<'a> {
     schema_version: u32,
@@ -80,7 +81,8 @@ impl<'a> CorrectionDocument<'a> {
             degree: correction.degree,
             weights: &correction.weights,
             zero: &correction.zero,
-            // Span terms are not fitted yet; the fields stand so that consumers handle them from the first day.
+            // Span terms are not fitted yet; the fields stand so that consumers handle them from
+            // the first day.
             span: [],
             span_centre: 0.0,
             range: [correction.range.0, correction.range.1],

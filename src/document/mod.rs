@@ -1,8 +1,9 @@
 //! What is published: documents rendered from the engine's outputs.
 //!
-//! JSON, UTF-8. Times are RFC 3339 in UTC with all the nanoseconds they have; numbers read back to the same bits;
-//! words for machines are lower case with hyphens. Each document carries `schema_version`; its schema stands in
-//! `config/schemas/`. Modules in reading order: [`topic`], [`correction`], [`alarm`], [`degree`], [`notice`], [`state`].
+//! JSON, UTF-8. Times are RFC 3339 in UTC with all the nanoseconds they have; numbers read back to
+//! the same bits; words for machines are lower case with hyphens. Each document carries
+//! `schema_version`; its schema stands in `config/schemas/`. Modules in reading order: [`topic`],
+//! [`correction`], [`alarm`], [`degree`], [`notice`], [`state`].
 
 pub mod alarm;
 pub mod correction;
@@ -36,15 +37,16 @@ pub struct Document {
 
 /// The document that `output` is published as; `None` for what only the record keeps.
 ///
-/// `setup` is the one in force for the output's names. A withdrawal caused by a change of configuration names its
-/// channel as the setup *before* the change did.
+/// `setup` is the one in force for the output's names. A withdrawal caused by a change of
+/// configuration names its channel as the setup *before* the change did.
 #[must_use]
 pub fn render(output: &Output, setup: &Setup) -> Option<Document> {
     let topics = Topics::new(&setup.node);
     match output {
         Output::Correction(correction) => {
             let channel = setup.channels.get(correction.channel.0 as usize)?;
-            // Recordings run in their own time; an expiry counts the broker's seconds and would mean nothing.
+            // Recordings run in their own time; an expiry counts the broker's seconds and would
+            // mean nothing.
             let expires = (setup.clock == Clock::Live).then_some(correction.valid_until);
             let document = correction::CorrectionDocument::new(correction, channel, setup);
             Some(json(
@@ -96,7 +98,8 @@ pub fn render(output: &Output, setup: &Setup) -> Option<Document> {
     }
 }
 
-/// The document that removes what is retained on a topic (MQTT 5.0, 3.3.1.3: a retained message of zero bytes).
+/// The document that removes what is retained on a topic (MQTT 5.0, 3.3.1.3: a retained message of
+/// zero bytes).
 #[must_use]
 pub fn cleared(topic: String) -> Document {
     Document {

@@ -10,7 +10,8 @@ use serde::Serialize;
 pub enum Doing {
     /// Taking readings, publishing corrections.
     Running,
-    /// The record can't be written: nothing is taken or acknowledged until it can; the broker queues.
+    /// The record can't be written: nothing is taken or acknowledged until it can; the broker
+    /// queues.
     RecordPaused,
     /// Told to end; published as the last word.
     Stopped,
@@ -45,8 +46,8 @@ pub struct Standing {
     pub outbox: usize,
     /// Documents that the broker refused (no permission, too large), since the start.
     pub documents_refused: u64,
-    /// Messages sent without delivery guarantee (quality of service 0) that were dropped while nothing could be
-    /// taken, since the start.
+    /// Messages sent without delivery guarantee (quality of service 0) that were dropped while
+    /// nothing could be taken, since the start.
     pub messages_dropped: u64,
     /// Connections made since the start.
     pub connections: u64,

@@ -40,7 +40,8 @@ impl<'a> Topics<'a> {
         format!("holdtrue/{}/degree/{channel}", self.node)
     }
 
-    /// An alarm; retained. `name` is the channel's or reference's, and not used for an alarm of the node.
+    /// An alarm; retained. `name` is the channel's or reference's, and not used for an alarm of
+    /// the node.
     #[must_use]
     pub fn alarm(&self, subject: Subject, name: &str, kind: AlarmKind) -> String {
         let kind = word::alarm_kind(kind);
@@ -59,8 +60,8 @@ impl<'a> Topics<'a> {
         format!("holdtrue/{}/notice", self.node)
     }
 
-    /// Whether `topic` carries a retained document about a channel or reference that `setup` no longer has, or about
-    /// another node.
+    /// Whether `topic` carries a retained document about a channel or reference that `setup` no
+    /// longer has, or about another node.
     #[must_use]
     pub fn is_orphan(&self, topic: &str, setup: &Setup) -> bool {
         let Some(rest) = topic.strip_prefix(&format!("holdtrue/{}/", self.node)) else {

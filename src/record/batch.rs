@@ -1,4 +1,5 @@
-//! What is written together: inputs, the outputs they caused, the documents these became, and what the broker took.
+//! What is written together: inputs, the outputs they caused, the documents these became, and what
+//! the broker took.
 
 use super::{RecordError, body};
 use crate::document::Document;
@@ -14,8 +15,8 @@ pub struct Numbered {
     pub document: Document,
 }
 
-/// One transaction in the making. Texts are made when something is added, so that a second attempt at a failed commit
-/// costs nothing but the writing.
+/// One transaction in the making. Texts are made when something is added, so that a second attempt
+/// at a failed commit costs nothing but the writing.
 pub struct Batch {
     first_input: i64,
     first_output: i64,
@@ -37,7 +38,8 @@ impl Batch {
         }
     }
 
-    /// Adds an input and what it caused. `positions`: of the rows in a `Supplied` input, else empty.
+    /// Adds an input and what it caused. `positions`: of the rows in a `Supplied` input, else
+    /// empty.
     ///
     /// # Panics
     /// Never: the vocabulary has only types that JSON can hold.
@@ -60,7 +62,8 @@ impl Batch {
         self.documents.push(document);
     }
 
-    /// Removes a document from the outbox: acknowledged, expired, or overtaken by a newer one of its topic.
+    /// Removes a document from the outbox: acknowledged, expired, or overtaken by a newer one of
+    /// its topic.
     pub fn remove_document(&mut self, number: i64) {
         self.taken.push(number);
     }
@@ -94,7 +97,8 @@ impl Batch {
     pub(super) fn write(&self, transaction: &Transaction<'_>) -> Result<(), RecordError> {
         self.write_events(transaction)?;
         let mut insert = transaction.prepare_cached(
-            "INSERT INTO outbox (number, topic, payload, retain, expires) VALUES (?1, ?2, ?3, ?4, ?5)",
+            "INSERT INTO outbox (number, topic, payload, retain, expires)
+             VALUES (?1, ?2, ?3, ?4, ?5)",
         )?;
         let mut stand = transaction.prepare_cached(
             "INSERT INTO standing (topic, payload, expires) VALUES (?1, ?2, ?3)

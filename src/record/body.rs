@@ -1,7 +1,7 @@
 //! Inputs and outputs as the text that stands in the record, and back.
 //!
-//! JSON with exact floats: `serde_json` writes the shortest text that reads back to the same bits, and reads it back
-//! exactly with its `float_roundtrip` feature.
+//! JSON with exact floats: `serde_json` writes the shortest text that reads back to the same bits,
+//! and reads it back exactly with its `float_roundtrip` feature.
 
 use holdtrue_engine::event::{Input, Output, Reading, Source, Supplied};
 use holdtrue_engine::setup::ChannelId;

@@ -7,15 +7,17 @@ use std::path::Path;
 /// Format version that this program writes. A record with a higher one is refused.
 pub const FORMAT_VERSION: i32 = 1;
 
-/// Marks the file as a record of this daemon (SQLite header field `application_id`): the letters H T r u.
+/// Marks the file as a record of this daemon (SQLite header field `application_id`): the letters H
+/// T r u.
 const APPLICATION_ID: i32 = 0x4854_7275;
 
-/// How long a statement waits for another process that reads or copies the file. Short: while it waits, nothing else
-/// runs, and the daemon has an own back-off for a record that can't be written.
+/// How long a statement waits for another process that reads or copies the file. Short: while it
+/// waits, nothing else runs, and the daemon has an own back-off for a record that can't be
+/// written.
 const BUSY_WAIT: std::time::Duration = std::time::Duration::from_millis(250);
 
-/// What an auditor sees when he opens the file. Times are integer nanoseconds since 1970 (UTC); the views show them
-/// as text.
+/// What an auditor sees when he opens the file. Times are integer nanoseconds since 1970 (UTC);
+/// the views show them as text.
 const TABLES: &str = "
 CREATE TABLE inputs (
     position   INTEGER PRIMARY KEY,  -- order in which the engine was told, from 1
@@ -23,12 +25,12 @@ CREATE TABLE inputs (
     received   INTEGER,              -- when the daemon got it
     source     TEXT,                 -- indication/N or reference/N, N as in the setup in force
     phenomenon INTEGER,              -- when it was sampled
-    body       TEXT NOT NULL         -- the whole input as JSON; every number reads back to the same bits
+    body       TEXT NOT NULL         -- the whole input as JSON; numbers read back to the same bits
 ) STRICT;
 CREATE TABLE outputs (
     position INTEGER PRIMARY KEY,    -- order in which the engine said it, from 1
     input    INTEGER NOT NULL,       -- position of the input that caused it
-    kind     TEXT NOT NULL,          -- correction, withdrawn, corrected, alarm, degree, pair, notice, wanted
+    kind     TEXT NOT NULL,          -- correction, withdrawn, alarm, degree, pair, notice …
     body     TEXT NOT NULL
 ) STRICT;
 CREATE TABLE outbox (                -- documents that the broker has not yet acknowledged
@@ -43,7 +45,7 @@ CREATE TABLE standing (              -- the retained documents as they should st
     payload BLOB NOT NULL,
     expires INTEGER
 ) STRICT;
-CREATE TABLE sessions (              -- one row for each start of the daemon that went on with this record
+CREATE TABLE sessions (              -- one row for each start of the daemon
     first_input INTEGER NOT NULL,    -- the next input's position at the start
     started     INTEGER NOT NULL,
     program     TEXT NOT NULL        -- version of the program
@@ -82,8 +84,9 @@ pub(super) fn open_file(path: &Path) -> Result<Connection, RecordError> {
             known: FORMAT_VERSION,
         });
     }
-    // Write-ahead log: readers (an auditor, a copy) do not stop the daemon. FULL: a commit is on the disk when it
-    // returns, also when the power fails right after (SQLite documentation, PRAGMA synchronous).
+    // Write-ahead log: readers (an auditor, a copy) do not stop the daemon. FULL: a commit is on
+    // the disk when it returns, also when the power fails right after (SQLite documentation,
+    // PRAGMA synchronous).
     connection.pragma_update(None, "journal_mode", "WAL")?;
     connection.pragma_update(None, "synchronous", "FULL")?;
     if new {

@@ -1,8 +1,9 @@
-//! The append-only record: what the engine was told, what it said, and which documents the broker still has to get.
+//! The append-only record: what the engine was told, what it said, and which documents the broker
+//! still has to get.
 //!
-//! One SQLite file, written by one daemon at a time. A [`Batch`] is committed whole or not at all; nothing is published
-//! or acknowledged before its batch is committed. Reading in order of reference: [`Batch`], [`Record::commit`],
-//! [`Record::replay`].
+//! One SQLite file, written by one daemon at a time. A [`Batch`] is committed whole or not at all;
+//! nothing is published or acknowledged before its batch is committed. Reading in order of
+//! reference: [`Batch`], [`Record::commit`], [`Record::replay`].
 
 mod batch;
 mod body;
@@ -101,10 +102,12 @@ pub struct Record {
 }
 
 impl Record {
-    /// Opens the record in `folder`, which is made if it does not exist, and locks it against a second daemon.
+    /// Opens the record in `folder`, which is made if it does not exist, and locks it against a
+    /// second daemon.
     ///
     /// # Errors
-    /// When the folder can't be used, another daemon uses it, or the file is not a record that this program reads.
+    /// When the folder can't be used, another daemon uses it, or the file is not a record that
+    /// this program reads.
     pub fn open(folder: &Path) -> Result<Self, RecordError> {
         let lock = lock(folder)?;
         let connection = layout::open_file(&folder.join(FILE_NAME))?;
@@ -168,7 +171,8 @@ impl Record {
     /// Writes a batch in one transaction; when this returns without error it is on the disk.
     ///
     /// # Errors
-    /// When the file can't be written; then nothing of the batch is in the record and the same batch can be tried again.
+    /// When the file can't be written; then nothing of the batch is in the record and the same
+    /// batch can be tried again.
     pub fn commit(&mut self, batch: &Batch) -> Result<(), RecordError> {
         let transaction = self.connection.transaction()?;
         batch.write(&transaction)?;
@@ -244,8 +248,9 @@ impl Record {
         Ok(transaction.commit()?)
     }
 
-    /// Recorded readings of any of `sources` with `from` ≤ phenomenon time < `to`, since the configuration in force,
-    /// with their positions, in the order in which they were taken; at most `limit`.
+    /// Recorded readings of any of `sources` with `from` ≤ phenomenon time < `to`, since the
+    /// configuration in force, with their positions, in the order in which they were taken; at
+    /// most `limit`.
     ///
     /// # Errors
     /// When the file can't be read.
@@ -256,7 +261,8 @@ impl Record {
         to: Timestamp,
         limit: usize,
     ) -> Result<Vec<(i64, Reading)>, RecordError> {
-        // Positions in a setup may name another channel after a change of configuration, hence the last setup only.
+        // Positions in a setup may name another channel after a change of configuration, hence the
+        // last setup only.
         let mut statement = self.connection.prepare(
             "SELECT position, body FROM inputs WHERE kind = 'reading' AND phenomenon >= ?1
              AND phenomenon < ?2 AND source IN (SELECT value FROM json_each(?3))

@@ -3,10 +3,14 @@
 //! Modules in reading order:
 //! - [`configuration`]: one TOML file, or everything that is wrong with it
 //! - [`payload`]: from an MQTT message to input events
+//! - [`broker`]: the MQTT session
 //! - [`record`]: what the engine was told and said, on the disk
 //! - [`document`]: what is published
+//! - [`daemon`]: the loop around the engine
 
+pub mod broker;
 pub mod configuration;
+pub mod daemon;
 pub mod document;
 pub mod payload;
 pub mod record;

@@ -1,6 +1,11 @@
 //! The record keeps inputs, outputs and documents whole, in order, or not at all, for one daemon
 //! at a time.
 
+#![allow(
+    clippy::unwrap_used,
+    reason = "a test says what went wrong by panicking; the lint does not see helpers as tests"
+)]
+
 use holdtrue::document::Document;
 use holdtrue::record::{FORMAT_VERSION, Numbered, Record, RecordError};
 use holdtrue_engine::event::{Input, Notice, Output, Reading, Source, Subject, Supplied};

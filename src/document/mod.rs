@@ -37,8 +37,8 @@ pub struct Document {
 
 /// The document that `output` is published as; `None` for what only the record keeps.
 ///
-/// `setup` is the one in force for the output's names. A withdrawal caused by a change of
-/// configuration names its channel as the setup *before* the change did.
+/// `setup` is the one whose positions the output bears: the one in force, and for what a change of
+/// configuration says, the one that it replaces.
 #[must_use]
 pub fn render(output: &Output, setup: &Setup) -> Option<Document> {
     let topics = Topics::new(&setup.node);

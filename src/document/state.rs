@@ -2,6 +2,7 @@
 
 use super::{SCHEMA_VERSION, word};
 use holdtrue_engine::event::{RefusedReason, Subject};
+use holdtrue_engine::standing::{AlarmStanding, ChannelStanding};
 use holdtrue_engine::time::Timestamp;
 use serde::Serialize;
 
@@ -44,7 +45,8 @@ pub struct Standing {
     pub inputs: i64,
     /// Documents that the broker has not acknowledged.
     pub outbox: usize,
-    /// Documents that the broker refused (no permission, too large), since the start.
+    /// Documents that the broker refused (no permission, too large) or that were dropped since
+    /// the outbox was full, since the start.
     pub documents_refused: u64,
     /// Messages sent without delivery guarantee (quality of service 0) that were dropped while
     /// nothing could be taken, since the start.
@@ -53,6 +55,53 @@ pub struct Standing {
     pub connections: u64,
     /// What came in and was not used, by subject and reason, since the record began.
     pub refused: Vec<RefusedCount>,
+    /// Each channel; left out where the broker takes no document of that size.
+    pub channels: Option<Vec<ChannelState>>,
+}
+
+/// How one channel stands.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct ChannelState {
+    channel: String,
+    last_indication: Option<String>,
+    last_pair: Option<String>,
+    pairs: u64,
+    degree: Option<u8>,
+    correction: Option<f64>,
+    standard_uncertainty: Option<f64>,
+    zone: Option<&'static str>,
+    corrected_zone: Option<&'static str>,
+    issue_number: Option<u64>,
+    valid_until: Option<String>,
+    locked_out: bool,
+    alarms: Vec<&'static str>,
+}
+
+impl ChannelState {
+    /// Of one channel, called `name`, with the alarms among `alarms` that stand on it.
+    #[must_use]
+    pub fn new(channel: &ChannelStanding, name: &str, alarms: &[AlarmStanding]) -> Self {
+        let own = |alarm: &&AlarmStanding| alarm.subject == Subject::Channel(channel.channel);
+        Self {
+            channel: name.to_owned(),
+            last_indication: channel.last_indication.map(word::time),
+            last_pair: channel.last_pair.map(word::time),
+            pairs: channel.pairs,
+            degree: channel.degree,
+            correction: channel.correction,
+            standard_uncertainty: channel.standard_uncertainty,
+            zone: channel.zone.map(word::zone),
+            corrected_zone: channel.corrected_zone.map(word::zone),
+            issue_number: channel.issue_number,
+            valid_until: channel.valid_until.map(word::time),
+            locked_out: channel.locked_out,
+            alarms: alarms
+                .iter()
+                .filter(own)
+                .map(|it| word::alarm_kind(it.kind))
+                .collect(),
+        }
+    }
 }
 
 /// How often one thing was not used for one reason.

@@ -40,18 +40,12 @@ impl Batch {
 
     /// Adds an input and what it caused. `positions`: of the rows in a `Supplied` input, else
     /// empty.
-    ///
-    /// # Panics
-    /// Never: the vocabulary has only types that JSON can hold.
     pub fn add(&mut self, input: &Input, positions: &[i64], outputs: &[Output]) {
-        let text = "strings, integers, floats, lists and structs can always be written as JSON";
         let position = self.next_input();
-        self.inputs.push((
-            body::columns(input),
-            body::input_text(input, positions).expect(text),
-        ));
+        self.inputs
+            .push((body::columns(input), body::input_text(input, positions)));
         for output in outputs {
-            let body = body::output_text(output).expect(text);
+            let body = body::output_text(output);
             self.outputs
                 .push((position, body::output_kind(output), body));
         }
@@ -78,12 +72,6 @@ impl Batch {
     #[must_use]
     pub fn inputs(&self) -> usize {
         self.inputs.len()
-    }
-
-    /// The documents it adds, in order.
-    #[must_use]
-    pub fn into_documents(self) -> Vec<Numbered> {
-        self.documents
     }
 
     pub(super) fn next_input(&self) -> i64 {

@@ -8,6 +8,9 @@ use holdtrue_engine::setup::ChannelId;
 use holdtrue_engine::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
+/// Why writing an event as text can't fail.
+const CAN_BE_TEXT: &str = "events hold strings, numbers, lists and structs; JSON can hold these";
+
 /// Rows handed back to the engine, recorded by their positions and not as copies.
 #[derive(Debug, PartialEq, Eq, Serialize, Deserialize)]
 pub(super) struct SuppliedPositions {
@@ -81,19 +84,24 @@ pub(super) fn source_text(source: Source) -> String {
 }
 
 /// The body column of an input; `positions` are those of the rows that a `Supplied` input carries.
-pub(super) fn input_text(input: &Input, positions: &[i64]) -> Result<String, serde_json::Error> {
-    match input {
+pub(super) fn input_text(input: &Input, positions: &[i64]) -> String {
+    let text = match input {
         Input::Supplied(supplied) => serde_json::to_string(&SuppliedPositions {
             channel: supplied.channel,
             positions: positions.to_vec(),
         }),
         other => serde_json::to_string(other),
-    }
+    };
+    text.expect(CAN_BE_TEXT)
 }
 
 /// The body column of an output.
-pub(super) fn output_text(output: &Output) -> Result<String, serde_json::Error> {
-    serde_json::to_string(output)
+///
+/// # Panics
+/// Never: the vocabulary has only types that JSON can hold.
+#[must_use]
+pub fn output_text(output: &Output) -> String {
+    serde_json::to_string(output).expect(CAN_BE_TEXT)
 }
 
 /// Reads an input back; `reading_at` fetches the rows of a `supplied` input.
@@ -140,7 +148,7 @@ mod tests {
                 sequence: Some(i64::MIN),
                 excluded: false,
             });
-            let text = input_text(&input, &[]).unwrap();
+            let text = input_text(&input, &[]);
             let back = input_from_text("reading", &text, |_| -> Result<_, serde_json::Error> {
                 panic!("a reading refers to no other row")
             });
@@ -166,7 +174,7 @@ mod tests {
             channel: ChannelId(2),
             readings: vec![reading.clone(), reading.clone()],
         });
-        let text = input_text(&input, &[11, 12]).unwrap();
+        let text = input_text(&input, &[11, 12]);
         assert!(!text.contains("1.5"), "copied: {text}");
         let mut asked = Vec::new();
         let back = input_from_text(

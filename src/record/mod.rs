@@ -11,6 +11,7 @@ mod layout;
 mod replay;
 
 pub use batch::{Batch, Numbered};
+pub use body::output_text;
 pub use layout::FORMAT_VERSION;
 pub use replay::Replayed;
 

@@ -1,0 +1,482 @@
+//! One session across connections: messages in, acknowledgements and documents out.
+
+use super::back_off::BackOff;
+use super::client::{self, Client, Full, Poller, Seen};
+use super::tls::{self, TlsError};
+use crate::configuration::{Broker, Protocol};
+use bytes::Bytes;
+use std::collections::{BTreeMap, VecDeque};
+use std::sync::Arc;
+use std::time::Duration;
+use tokio::sync::mpsc;
+use tokio::task::JoinHandle;
+use tokio::time::Instant;
+use tokio_rustls::rustls::ClientConfig;
+
+/// Publishes handed over and not yet answered. Below the library's own limit, so that its queue
+/// never stops on their account.
+const IN_FLIGHT_MAX: usize = 12;
+/// Events between the polling task and us. When full, polling waits, and with it the network: the
+/// broker keeps what does not fit.
+const EVENTS_MAX: usize = 64;
+/// Without an answer to any publish for this long, a new connection is made.
+const ANSWER_LIMIT: Duration = Duration::from_secs(30);
+/// A connection that lived this long was a success: pauses start short again.
+const GOOD_LIFE: Duration = Duration::from_secs(10);
+/// When the library's queue is full, the next attempt comes after this long at the latest.
+const QUEUE_RETRY: Duration = Duration::from_millis(5);
+/// Filters in one subscription packet; keeps it small for brokers with low packet limits.
+const FILTERS_IN_PACKET: usize = 50;
+/// Bytes of a publish packet beside topic and payload, at most (MQTT 5.0, 3.3: header, identifier,
+/// the one property we use).
+const PACKET_OVERHEAD: usize = 32;
+/// What a broker with MQTT 3.1.1 sends without acknowledgement: it can't be told, and 20 is the
+/// default of Mosquitto (`max_inflight_messages`).
+const WINDOW_311: u16 = 20;
+
+/// What the broker publishes when the connection breaks.
+#[derive(Clone, Debug)]
+pub struct Will {
+    /// Where.
+    pub topic: String,
+    /// What.
+    pub payload: Vec<u8>,
+}
+
+/// Names a document on its way.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord)]
+pub enum Token {
+    /// A document with its number in the outbox.
+    Document(i64),
+    /// The state document, which is not in the outbox.
+    State,
+}
+
+/// What is given back to acknowledge a message.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct Ticket {
+    connection: u64,
+    /// Packet identifier; 0: sent without delivery guarantee, nothing to acknowledge.
+    packet: u16,
+}
+
+impl Ticket {
+    /// Whether the broker keeps the message until it is acknowledged.
+    #[must_use]
+    pub fn is_guaranteed(self) -> bool {
+        self.packet != 0
+    }
+
+    /// Of the first connection.
+    #[cfg(test)]
+    pub(crate) fn for_test(packet: u16) -> Self {
+        Self {
+            connection: 1,
+            packet,
+        }
+    }
+}
+
+/// A message that came in.
+#[derive(Clone, Debug)]
+pub struct Message {
+    /// Its topic.
+    pub topic: String,
+    /// Its payload.
+    pub payload: Bytes,
+    /// The broker's memory, not a new message.
+    pub retained: bool,
+    /// To acknowledge it.
+    pub ticket: Ticket,
+}
+
+/// Why and how a connection ended.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Lost {
+    /// What the library or the broker said.
+    pub why: String,
+    /// The broker says that another client with our name took the session.
+    pub taken_over: bool,
+    /// Attempts and short-lived connections in a row.
+    pub failures: u32,
+    /// When the next attempt is made.
+    pub next_try: Duration,
+}
+
+/// What happened on the link.
+#[derive(Clone, Debug)]
+pub enum Event {
+    /// A connection was made. Without a session, the broker has forgotten subscriptions.
+    Connected {
+        /// The broker still had our session.
+        session_present: bool,
+    },
+    /// A message came in.
+    Message(Message),
+    /// The broker answered a document; `Some`: it refused it, and why.
+    Answered(Token, Option<String>),
+    /// The broker answered all subscriptions; filters that it refused, and why.
+    Subscribed {
+        /// Refused filters.
+        refused: Vec<(String, String)>,
+    },
+    /// The connection is over; documents without answer must be handed over again.
+    Lost(Lost),
+}
+
+/// A subscription packet.
+#[derive(Clone, Debug)]
+enum Ask {
+    Subscribe(Vec<String>),
+    Unsubscribe(String),
+}
+
+/// The session.
+pub struct Link {
+    broker: Broker,
+    tls: Option<Arc<ClientConfig>>,
+    will: Box<dyn Fn() -> Will + Send>,
+    /// Counts connections; what belongs to an older one is dropped.
+    connection: u64,
+    client: Option<Client>,
+    polling: Option<JoinHandle<()>>,
+    events: mpsc::Receiver<Seen>,
+    connected: Option<Instant>,
+    max_packet: Option<u32>,
+    back_off: BackOff,
+    next_try: Option<Instant>,
+    /// Packet identifiers to acknowledge, in order of arrival; bounded by what came in.
+    acknowledgements: VecDeque<u16>,
+    /// Handed over, packet identifier not yet known; with `in_flight` at most [`IN_FLIGHT_MAX`].
+    unsent: VecDeque<Token>,
+    in_flight: BTreeMap<u16, Token>,
+    /// When the broker last answered a publish, or had none to answer.
+    answered: Instant,
+    /// Subscription packets to send; bounded by the configuration.
+    asks: VecDeque<Ask>,
+    /// Filters in subscription packets not yet answered, in order.
+    subscribing: VecDeque<Vec<String>>,
+    refused_filters: Vec<(String, String)>,
+    goodbye_said: bool,
+}
+
+impl Link {
+    /// A link that will connect as soon as [`Link::next`] is called. `will` is asked for the will
+    /// at every connection.
+    ///
+    /// # Errors
+    /// When encryption is configured and its files can't be used.
+    pub fn new(broker: Broker, will: impl Fn() -> Will + Send + 'static) -> Result<Self, TlsError> {
+        let tls = broker.tls.as_ref().map(tls::client_config).transpose()?;
+        Ok(Self {
+            broker,
+            tls,
+            will: Box::new(will),
+            connection: 0,
+            client: None,
+            polling: None,
+            events: mpsc::channel(1).1,
+            connected: None,
+            max_packet: None,
+            back_off: BackOff::default(),
+            next_try: Some(Instant::now()),
+            acknowledgements: VecDeque::new(),
+            unsent: VecDeque::new(),
+            in_flight: BTreeMap::new(),
+            answered: Instant::now(),
+            asks: VecDeque::new(),
+            subscribing: VecDeque::new(),
+            refused_filters: Vec::new(),
+            goodbye_said: false,
+        })
+    }
+
+    /// How many messages the broker sends before it waits for acknowledgements.
+    #[must_use]
+    pub fn receive_window(&self) -> u16 {
+        match self.broker.protocol {
+            Protocol::V5 => self.broker.receive_maximum,
+            Protocol::V311 => self.broker.receive_maximum.min(WINDOW_311),
+        }
+    }
+
+    /// Whether there is a connection now.
+    #[must_use]
+    pub fn is_connected(&self) -> bool {
+        self.connected.is_some()
+    }
+
+    /// How many documents can be handed over now.
+    #[must_use]
+    pub fn room(&self) -> usize {
+        if self.connected.is_none() || !self.acknowledgements.is_empty() {
+            return 0;
+        }
+        IN_FLIGHT_MAX.saturating_sub(self.outstanding())
+    }
+
+    /// Documents handed over and not answered.
+    #[must_use]
+    pub fn outstanding(&self) -> usize {
+        self.unsent.len() + self.in_flight.len()
+    }
+
+    /// Whether the broker takes a publish of this size; one above its limit would end the
+    /// connection, again and again.
+    #[must_use]
+    pub fn fits(&self, topic: &str, payload: &[u8]) -> bool {
+        let size = topic.len() + payload.len() + PACKET_OVERHEAD;
+        self.max_packet
+            .is_none_or(|limit| u32::try_from(size).is_ok_and(|size| size <= limit))
+    }
+
+    /// Acknowledges a message. Tickets must be given back in the order of arrival; those of older
+    /// connections are void, since the broker sends their messages again.
+    pub fn acknowledge(&mut self, ticket: Ticket) {
+        if ticket.connection == self.connection && ticket.is_guaranteed() {
+            self.acknowledgements.push_back(ticket.packet);
+        }
+    }
+
+    /// Hands a document over; false when there was no room. `expiry`: seconds until the broker is
+    /// to drop it.
+    pub fn publish(
+        &mut self,
+        token: Token,
+        topic: &str,
+        payload: &[u8],
+        retain: bool,
+        expiry: Option<u32>,
+    ) -> bool {
+        if self.room() == 0 {
+            return false;
+        }
+        let Some(client) = &self.client else {
+            return false;
+        };
+        if client.publish(topic, payload, retain, expiry).is_err() {
+            return false;
+        }
+        if self.outstanding() == 0 {
+            self.answered = Instant::now();
+        }
+        self.unsent.push_back(token);
+        true
+    }
+
+    /// Subscribes to `filters` and ends the subscriptions to `old`.
+    pub fn subscribe(&mut self, filters: &[String], old: &[String]) {
+        if self.connected.is_some() {
+            self.asks.extend(old.iter().cloned().map(Ask::Unsubscribe));
+            self.asks.extend(
+                filters
+                    .chunks(FILTERS_IN_PACKET)
+                    .map(|it| Ask::Subscribe(it.to_vec())),
+            );
+        }
+    }
+
+    /// Gives the connection up and makes a new one.
+    pub fn reconnect(&mut self, why: &str) -> Lost {
+        self.drop_connection();
+        self.fail(why.to_owned(), false)
+    }
+
+    /// Waits for what happens next. Dropping the future loses nothing.
+    pub async fn next(&mut self) -> Event {
+        loop {
+            self.send_waiting();
+            let full = !self.acknowledgements.is_empty() || !self.asks.is_empty();
+            let stalled = self.answered + ANSWER_LIMIT;
+            tokio::select! {
+                seen = self.events.recv(), if self.client.is_some() => {
+                    let seen = seen.unwrap_or(Seen::Broken {
+                        why: "the polling task ended".to_owned(),
+                        taken_over: false,
+                    });
+                    if let Some(event) = self.handle(seen) {
+                        return event;
+                    }
+                }
+                () = sleep_until(self.next_try), if self.client.is_none() => self.connect(),
+                () = tokio::time::sleep(QUEUE_RETRY), if full => {}
+                () = tokio::time::sleep_until(stalled), if self.outstanding() > 0 => {
+                    return Event::Lost(self.reconnect("the broker answers no publish any more"));
+                }
+            }
+        }
+    }
+
+    /// Says goodbye and waits until that is on its way, at most for `limit`. What comes in
+    /// meanwhile is not taken: the broker keeps it.
+    pub async fn goodbye(&mut self, limit: Duration) {
+        self.send_waiting();
+        let said = self
+            .client
+            .as_ref()
+            .is_some_and(|client| client.goodbye().is_ok());
+        if said && self.is_connected() {
+            let _ = tokio::time::timeout(limit, async {
+                while !self.goodbye_said {
+                    match self.events.recv().await {
+                        Some(Seen::SaidGoodbye) => self.goodbye_said = true,
+                        Some(Seen::Broken { .. }) | None => break,
+                        Some(_) => {}
+                    }
+                }
+                // The polling task ends after the goodbye and closes the connection.
+                if let Some(polling) = self.polling.take() {
+                    let _ = polling.await;
+                }
+            })
+            .await;
+        }
+        self.drop_connection();
+    }
+
+    fn connect(&mut self) {
+        self.connection += 1;
+        let (client, poller) = client::new(&self.broker, self.tls.clone(), (self.will)());
+        let (sender, events) = mpsc::channel(EVENTS_MAX);
+        self.client = Some(client);
+        self.events = events;
+        self.polling = Some(tokio::spawn(poll(poller, sender)));
+        self.next_try = None;
+    }
+
+    fn drop_connection(&mut self) {
+        if let Some(polling) = self.polling.take() {
+            polling.abort();
+        }
+        self.client = None;
+        self.acknowledgements.clear();
+        self.unsent.clear();
+        self.in_flight.clear();
+        self.asks.clear();
+        self.subscribing.clear();
+        self.refused_filters.clear();
+    }
+
+    fn fail(&mut self, why: String, taken_over: bool) -> Lost {
+        let lived = self.connected.take().map(|since| since.elapsed());
+        // Two daemons with one client name would otherwise throw each other out five times a
+        // second.
+        if lived.is_some_and(|lived| lived >= GOOD_LIFE) {
+            self.back_off.reset();
+        }
+        let pause = self.back_off.next_pause();
+        self.next_try = Some(Instant::now() + pause);
+        Lost {
+            why,
+            taken_over,
+            failures: self.back_off.failures(),
+            next_try: pause,
+        }
+    }
+
+    /// Hands acknowledgements and subscriptions to the library, as many as its queue takes.
+    fn send_waiting(&mut self) {
+        let Some(client) = &self.client else { return };
+        while let Some(packet) = self.acknowledgements.front() {
+            if client.acknowledge(*packet).is_err() {
+                return;
+            }
+            self.acknowledgements.pop_front();
+        }
+        while let Some(ask) = self.asks.pop_front() {
+            let sent = match &ask {
+                Ask::Subscribe(filters) => client.subscribe(filters),
+                Ask::Unsubscribe(filter) => client.unsubscribe(filter),
+            };
+            match (sent, ask) {
+                (Err(Full), ask) => return self.asks.push_front(ask),
+                (Ok(()), Ask::Subscribe(filters)) => self.subscribing.push_back(filters),
+                (Ok(()), Ask::Unsubscribe(_)) => {}
+            }
+        }
+    }
+
+    fn handle(&mut self, seen: Seen) -> Option<Event> {
+        match seen {
+            Seen::Connected {
+                session_present,
+                max_packet,
+            } => {
+                self.connected = Some(Instant::now());
+                self.max_packet = max_packet;
+                Some(Event::Connected { session_present })
+            }
+            Seen::Message {
+                topic,
+                payload,
+                retained,
+                packet,
+            } => {
+                let ticket = Ticket {
+                    connection: self.connection,
+                    packet,
+                };
+                Some(Event::Message(Message {
+                    topic,
+                    payload,
+                    retained,
+                    ticket,
+                }))
+            }
+            Seen::Sent { packet } => {
+                if let Some(token) = self.unsent.pop_front() {
+                    self.in_flight.insert(packet, token);
+                }
+                None
+            }
+            Seen::Answered { packet, refused } => {
+                self.answered = Instant::now();
+                self.in_flight
+                    .remove(&packet)
+                    .map(|token| Event::Answered(token, refused))
+            }
+            Seen::Subscribed(answers) => self.handle_subscribed(answers),
+            Seen::Broken { why, taken_over } => {
+                self.drop_connection();
+                Some(Event::Lost(self.fail(why, taken_over)))
+            }
+            Seen::SaidGoodbye | Seen::Nothing => None,
+        }
+    }
+
+    fn handle_subscribed(&mut self, answers: Vec<Option<String>>) -> Option<Event> {
+        let filters = self.subscribing.pop_front()?;
+        for (filter, answer) in filters.into_iter().zip(answers) {
+            self.refused_filters.extend(answer.map(|why| (filter, why)));
+        }
+        (self.subscribing.is_empty() && self.asks.is_empty()).then(|| Event::Subscribed {
+            refused: std::mem::take(&mut self.refused_filters),
+        })
+    }
+}
+
+impl Drop for Link {
+    fn drop(&mut self) {
+        self.drop_connection();
+    }
+}
+
+async fn sleep_until(instant: Option<Instant>) {
+    match instant {
+        Some(instant) => tokio::time::sleep_until(instant).await,
+        None => std::future::pending().await,
+    }
+}
+
+/// Polls one connection to its end. A task of its own, since a cancelled poll would start
+/// connecting anew.
+async fn poll(mut poller: Poller, events: mpsc::Sender<Seen>) {
+    loop {
+        let seen = poller.poll().await;
+        let last = matches!(seen, Seen::Broken { .. } | Seen::SaidGoodbye);
+        let matters = !matches!(seen, Seen::Nothing);
+        if (matters && events.send(seen).await.is_err()) || last {
+            return;
+        }
+    }
+}

@@ -1,0 +1,76 @@
+//! The daemon: everything around the engine, in one order that never changes.
+//!
+//! Receive, decode, step the engine, record inputs and outputs together, publish, acknowledge. The
+//! engine decides; nothing here does. One task owns the engine, the record and the outbox; a second
+//! one polls the broker.
+//!
+//! Modules in reading order:
+//! - `shell`: the engine with its record and outbox; one input in
+//! - `outbox`: documents that the broker has not acknowledged
+//! - `restore`: from the record to the engine's state, at the start
+//! - `turn`: the loop that everything happens in
+//! - `held`: messages that wait while nothing can be taken
+//! - `report`: the `state` document
+
+mod held;
+mod outbox;
+mod report;
+mod restore;
+mod shell;
+mod turn;
+
+use crate::broker::TlsError;
+use crate::configuration::Configuration;
+use crate::record::RecordError;
+use holdtrue_engine::time::Timestamp;
+use std::future::Future;
+use std::time::{SystemTime, UNIX_EPOCH};
+
+/// Why the daemon could not start or go on. All of these are the outside's failures.
+#[derive(Debug, thiserror::Error)]
+pub enum Error {
+    /// The record can't be used.
+    #[error(transparent)]
+    Record(#[from] RecordError),
+    /// The engine says something else than it said when the record was written, though the program
+    /// is the same: the record was changed, or the program has a fault. Going on would make the
+    /// record untrue.
+    #[error(
+        "replay of the record differs at input {position}: recorded {recorded}, now {now}. The \
+         record was changed or is damaged. Move the record folder aside to start anew, and keep it"
+    )]
+    ReplayDiffers {
+        /// Position of the input.
+        position: i64,
+        /// What the record says that followed.
+        recorded: String,
+        /// What follows now.
+        now: String,
+    },
+    /// Encryption can't be set up.
+    #[error(transparent)]
+    Tls(#[from] TlsError),
+}
+
+/// Runs the daemon until `shutdown` completes; then it records and publishes what it has, says
+/// goodbye and returns.
+///
+/// # Errors
+/// When the record or the certificates can't be used at the start. A broker that is away and a
+/// record that can't be written later are no errors: the daemon waits for them.
+pub async fn run(
+    configuration: Configuration,
+    shutdown: impl Future<Output = ()>,
+) -> Result<(), Error> {
+    turn::Daemon::start(configuration)?.run(shutdown).await;
+    Ok(())
+}
+
+/// The clock. The only place that reads it.
+fn now() -> Timestamp {
+    let nanos = match SystemTime::now().duration_since(UNIX_EPOCH) {
+        Ok(after) => i64::try_from(after.as_nanos()).unwrap_or(i64::MAX),
+        Err(before) => i64::try_from(before.duration().as_nanos()).map_or(i64::MIN, |it| -it),
+    };
+    Timestamp(nanos)
+}

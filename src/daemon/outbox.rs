@@ -1,0 +1,121 @@
+//! Documents that the broker has not acknowledged, in the order of issue.
+//!
+//! Mirrors the record's outbox: what is added or removed here goes into the batch as well.
+
+use crate::document::Document;
+use crate::record::{Batch, Numbered};
+use std::collections::BTreeMap;
+
+/// How many documents may wait. When full, no message is taken until the broker has taken some;
+/// what time alone causes meanwhile (alarms, notices) then pushes out an older document of its
+/// topic, or the oldest passing one.
+const WAITING_MAX: usize = 4096;
+
+/// The outbox.
+pub(super) struct Outbox {
+    waiting: BTreeMap<i64, Document>,
+    next_number: i64,
+    /// Documents up to this number are on the disk and may go.
+    released: i64,
+    /// Documents up to this number were handed to the present connection.
+    handed: i64,
+    pushed_out: u64,
+}
+
+impl Outbox {
+    /// From what the record holds.
+    pub(super) fn new(recorded: Vec<Numbered>) -> Self {
+        let waiting: BTreeMap<i64, Document> = recorded
+            .into_iter()
+            .map(|it| (it.number, it.document))
+            .collect();
+        let last = waiting.keys().next_back().copied().unwrap_or(0);
+        Self {
+            waiting,
+            next_number: last + 1,
+            released: last,
+            handed: 0,
+            pushed_out: 0,
+        }
+    }
+
+    /// Adds a document, to the batch as well. It may go once [`Outbox::release`] was called.
+    pub(super) fn add(&mut self, document: Document, batch: &mut Batch) {
+        if self.is_full() {
+            self.push_out(&document, batch);
+        }
+        let number = self.next_number;
+        self.next_number += 1;
+        batch.add_document(Numbered {
+            number,
+            document: document.clone(),
+        });
+        self.waiting.insert(number, document);
+    }
+
+    fn push_out(&mut self, newer: &Document, batch: &mut Batch) {
+        let same_topic = |document: &Document| document.retain && document.topic == newer.topic;
+        let older = self
+            .waiting
+            .iter()
+            .find(|(_, document)| same_topic(document))
+            .or_else(|| self.waiting.iter().find(|(_, document)| !document.retain))
+            .map(|(number, _)| *number);
+        if let Some(number) = older {
+            self.pushed_out += 1;
+            self.remove(number, batch);
+        }
+    }
+
+    /// The batch with everything added so far is on the disk.
+    pub(super) fn release(&mut self) {
+        self.released = self.next_number - 1;
+    }
+
+    /// The oldest document that may go and was not handed over.
+    pub(super) fn next_to_hand(&self) -> Option<(i64, &Document)> {
+        let (number, document) = self.waiting.range(self.handed + 1..=self.released).next()?;
+        Some((*number, document))
+    }
+
+    /// Everything up to this one was handed over.
+    pub(super) fn set_handed(&mut self, number: i64) {
+        self.handed = number;
+    }
+
+    /// The connection is gone: all must be handed over again.
+    pub(super) fn hand_again(&mut self) {
+        self.handed = 0;
+    }
+
+    /// Removes a document, from the record as well with the next commit.
+    pub(super) fn remove(&mut self, number: i64, batch: &mut Batch) -> Option<Document> {
+        let removed = self.waiting.remove(&number);
+        if removed.is_some() {
+            batch.remove_document(number);
+        }
+        removed
+    }
+
+    /// Whether a document for this topic waits.
+    pub(super) fn holds_topic(&self, topic: &str) -> bool {
+        self.waiting
+            .values()
+            .any(|document| document.topic == topic)
+    }
+
+    /// Documents waiting.
+    pub(super) fn len(&self) -> usize {
+        self.waiting.len()
+    }
+
+    /// Whether no more should be caused by taking messages.
+    pub(super) fn is_full(&self) -> bool {
+        self.waiting.len() >= WAITING_MAX
+    }
+
+    /// How many were pushed out while it was full.
+    pub(super) fn pushed_out(&self) -> u64 {
+        self.pushed_out
+    }
+}

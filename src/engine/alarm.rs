@@ -7,9 +7,9 @@
 //!            condition gone for `off` evaluations in a row
 //! ```
 //!
-//! Evaluations are counted, not seconds, so that a replay at any speed moves the same way (ISA-18.2 on- and off-delay,
-//! from memory). Acknowledging, latching, shelving and suppression are further moves of this machine: the conditions in
-//! `channel/conditions.rs` need not change for them.
+//! Evaluations are counted, not seconds, so that a replay at any speed moves the same way (ISA-18.2
+//! on- and off-delay, from memory). Acknowledging, latching, shelving and suppression are further
+//! moves of this machine: the conditions in `channel/conditions.rs` need not change for them.
 
 use crate::event::AlarmState;
 use crate::time::Timestamp;
@@ -20,7 +20,8 @@ use serde::{Deserialize, Serialize};
 pub(crate) enum Condition {
     /// Past the limit.
     Holds,
-    /// Inside the deadband, or not decidable: the alarm stays as it is and a run of evaluations ends.
+    /// Inside the deadband, or not decidable: the alarm stays as it is and a run of evaluations
+    /// ends.
     Between,
     /// Clear of limit and deadband.
     Gone,

@@ -1,5 +1,5 @@
-//! How often something was refused, by subject and reason. Kept apart from the engine's state: a refused input changes
-//! these and nothing else.
+//! How often something was refused, by subject and reason. Kept apart from the engine's state: a
+//! refused input changes these and nothing else.
 
 use crate::event::{RefusedReason, Subject};
 use serde::{Deserialize, Serialize};

@@ -1,13 +1,17 @@
-//! The engine: one input event in, output events appended to a list owned by the caller, nothing else.
+//! The engine: one input event in, output events appended to a list owned by the caller, nothing
+//! else.
 //!
 //! Call contract:
 //! - The first input should be a [`Input::Setup`]; before it every reading is refused as unknown.
-//! - Inputs come in the order in which they were received. A received time that goes backwards does no harm: the engine
-//!   goes on with its own now.
-//! - Phenomenon times may come in any order within a channel's `lateness`; the pairs that result are the same. What is
-//!   older than that behind its own source's newest reading is refused, counted, and changes nothing else.
-//! - A refused input changes counters and notices only: [`Engine::state`] compares equal before and after.
-//! - With [`Clock::Live`], send a tick at or after [`Engine::next_tick`]; with [`Clock::Readings`] ticks are ignored.
+//! - Inputs come in the order in which they were received. A received time that goes backwards does
+//!   no harm: the engine goes on with its own now.
+//! - Phenomenon times may come in any order within a channel's `lateness`; the pairs that result
+//!   are the same. What is older than that behind its own source's newest reading is refused,
+//!   counted, and changes nothing else.
+//! - A refused input changes counters and notices only: [`Engine::state`] compares equal before and
+//!   after.
+//! - With [`Clock::Live`], send a tick at or after [`Engine::next_tick`]; with [`Clock::Readings`]
+//!   ticks are ignored.
 
 use crate::counters::Counters;
 use crate::event::{Input, Output};
@@ -34,7 +38,8 @@ impl Engine {
         Self::default()
     }
 
-    /// Takes one input and appends what follows from it. Cannot fail: bad input is an expected event with a reason.
+    /// Takes one input and appends what follows from it. Cannot fail: bad input is an expected
+    /// event with a reason.
     pub fn step(&mut self, input: &Input, outputs: &mut Vec<Output>) {
         let report = &mut Report {
             outputs,
@@ -51,7 +56,8 @@ impl Engine {
         }
     }
 
-    /// When the engine next wants a tick; `None` when nothing waits for time, and always with [`Clock::Readings`].
+    /// When the engine next wants a tick; `None` when nothing waits for time, and always with
+    /// [`Clock::Readings`].
     #[must_use]
     pub fn next_tick(&self) -> Option<Timestamp> {
         match self.fleet.clock() {
@@ -66,9 +72,24 @@ impl Engine {
         self.fleet.standing(&self.counters)
     }
 
-    /// Everything that a refused input must not change: the state without counters and held-back notices.
+    /// Everything that a refused input must not change: the state without counters and held-back
+    /// notices.
     #[must_use]
     pub fn state(&self) -> &Fleet {
         &self.fleet
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn an_engine_without_a_configuration_waits_for_nothing_and_can_be_stored() {
+        let engine = Engine::new();
+        assert_eq!(engine.next_tick(), None);
+        assert!(engine.standing().channels.is_empty());
+        let stored = serde_json::to_string(&engine).unwrap();
+        assert_eq!(serde_json::from_str::<Engine>(&stored).unwrap(), engine);
     }
 }

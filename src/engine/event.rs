@@ -1,9 +1,10 @@
 //! `Input` and `Output`: everything the engine can be told and everything it can say.
 //!
-//! Both are closed sets: a new variant forces every `match` to be looked at. They derive serde so that the record can
-//! store them; what is published outside is rendered from them by the shell.
+//! Both are closed sets: a new variant forces every `match` to be looked at. They derive serde so
+//! that the record can store them; what is published outside is rendered from them by the shell.
 //!
-//! A received time must not go backwards from one input to the next; if one does, the engine goes on with its own now.
+//! A received time must not go backwards from one input to the next; if one does, the engine goes
+//! on with its own now.
 
 use crate::setup::{ChannelId, ReferenceId, Setup};
 use crate::time::Timestamp;
@@ -12,14 +13,16 @@ use serde::{Deserialize, Serialize};
 /// One thing the engine is told.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub enum Input {
-    /// A configuration takes effect. Channels whose setup and reference are unchanged keep their state, by name; the
-    /// others start anew. What is said in return bears the positions of the configuration that is replaced.
+    /// A configuration takes effect. Channels whose setup and reference are unchanged keep their
+    /// state, by name; the others start anew. What is said in return bears the positions of the
+    /// configuration that is replaced.
     Setup(Box<Setup>),
     /// A value arrived.
     Reading(Reading),
     /// A `valid_when` condition was told.
     Gate(Gate),
-    /// The shell got something it could not turn into a reading; counted here so that the record knows.
+    /// The shell got something it could not turn into a reading; counted here so that the record
+    /// knows.
     Refused(Refused),
     /// Time passed.
     Tick {
@@ -167,7 +170,8 @@ pub enum Output {
     Degree(Box<DegreeChange>),
     /// A pair was made, and this became of it.
     Pair(PairFate),
-    /// Something that a person should be able to read about; limited in rate, with a count of what was held back.
+    /// Something that a person should be able to read about; limited in rate, with a count of what
+    /// was held back.
     Notice(Notice),
     /// The engine needs recorded rows of this channel.
     Wanted {
@@ -201,7 +205,8 @@ pub struct Correction {
     pub weights: Vec<f64>,
     /// Coefficients of c(t), constant first, t in days from `origin`.
     pub zero: Vec<f64>,
-    /// Whether the dead zone suppresses the correction: then `zero` is all zeros and |ĉ| is inside U.
+    /// Whether the dead zone suppresses the correction: then `zero` is all zeros and |ĉ| is inside
+    /// U.
     pub suppressed: bool,
     /// c at the newest pair.
     pub correction: f64,
@@ -215,7 +220,8 @@ pub struct Correction {
     pub degrees_of_freedom: f64,
     /// Covariance of `zero` (row by row, unit² per day^(i+j)), of the fit alone.
     pub covariance: Vec<Vec<f64>>,
-    /// Where the uncorrected error stands against the maximum permissible error; `None` without one.
+    /// Where the uncorrected error stands against the maximum permissible error; `None` without
+    /// one.
     pub zone: Option<Zone>,
     /// The same for the corrected value.
     pub corrected_zone: Option<Zone>,
@@ -304,7 +310,8 @@ pub enum AlarmKind {
     ScreenLockedOut,
 }
 
-/// The states of an alarm. A later version adds acknowledgement, latching, shelving and suppression here.
+/// The states of an alarm. A later version adds acknowledgement, latching, shelving and suppression
+/// here.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
 pub enum AlarmState {
     /// The condition does not hold.

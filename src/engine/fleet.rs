@@ -1,8 +1,8 @@
-//! All channels and references of a node: routes each input to what it concerns, keeps what channels share (recent
-//! readings, gates, references' alarms), and says what "now" is.
+//! All channels and references of a node: routes each input to what it concerns, keeps what
+//! channels share (recent readings, gates, references' alarms), and says what "now" is.
 //!
-//! Channels never touch each other: they read shared tracks, and only what arrives writes these. Channels joined by a
-//! reference or a group form an island; nothing crosses islands but now.
+//! Channels never touch each other: they read shared tracks, and only what arrives writes these.
+//! Channels joined by a reference or a group form an island; nothing crosses islands but now.
 
 mod adopt;
 mod door;
@@ -63,14 +63,15 @@ impl Fleet {
                 self.pulse
                     .hear(reading.phenomenon, now, &self.routes, report);
                 self.route(reading, report);
+                self.trim(reading.source);
                 self.pass_time(report);
             }
             Err(reason) => self.refuse_reading(reading, reason, report),
         }
     }
 
-    /// Takes recorded rows that were asked for: like readings, but however late. What is known already counts as a
-    /// duplicate; time does not move.
+    /// Takes recorded rows that were asked for: like readings, but however late. What is known
+    /// already counts as a duplicate; time does not move.
     pub(crate) fn take_supplied(&mut self, supplied: &Supplied, report: &mut Report<'_>) {
         for reading in &supplied.readings {
             match self.admit(reading, false) {
@@ -80,6 +81,12 @@ impl Fleet {
                 Ok(_) => self.refuse_reading(reading, RefusedReason::UnknownTopic, report),
                 Err(reason) => self.refuse_reading(reading, reason, report),
             }
+        }
+        self.visit(supplied.channel.0 as usize, |channel, scene| {
+            channel.take_supplied(scene, report);
+        });
+        for reading in &supplied.readings {
+            self.trim(reading.source);
         }
         self.pass_time(report);
     }
@@ -188,8 +195,6 @@ impl Fleet {
                 for user in self.routes.group_users(id).to_vec() {
                     self.visit(user, |channel, scene| channel.pass_time(scene, report));
                 }
-                self.routes
-                    .trim_indications(index, &mut self.indications[index]);
             }
             Source::Reference(id) => {
                 let index = id.0 as usize;
@@ -200,8 +205,22 @@ impl Fleet {
                         channel.take_reference(&sample, scene, report);
                     });
                 }
-                self.routes
-                    .trim_references(index, &mut self.references[index].values);
+            }
+        }
+    }
+
+    /// Forgets what is too old to matter to anyone.
+    fn trim(&mut self, source: Source) {
+        match source {
+            Source::Indication(id) => {
+                if let Some(track) = self.indications.get_mut(id.0 as usize) {
+                    self.routes.trim_indications(id, track);
+                }
+            }
+            Source::Reference(id) => {
+                if let Some(reference) = self.references.get_mut(id.0 as usize) {
+                    self.routes.trim_references(id, &mut reference.values);
+                }
             }
         }
     }
@@ -220,7 +239,6 @@ impl Fleet {
             gate: &self.references[reference].gate,
             indications: &self.indications,
             now,
-            live: self.setup.clock == Clock::Live,
             alive: self.pulse.alive(now, &self.routes),
             resumed: self.pulse.resumed(),
         };
@@ -273,8 +291,8 @@ impl Fleet {
         }
     }
 
-    /// When a notice about something refused is said to be: now, or live the received time if that is newer (it does
-    /// not move now).
+    /// When a notice about something refused is said to be: now, or live the received time if that
+    /// is newer (it does not move now).
     fn notice_time(&self, received: Timestamp) -> Timestamp {
         match self.setup.clock {
             Clock::Live => self.now.map_or(received, |now| now.max(received)),

@@ -1,6 +1,7 @@
 //! The recent history of a `valid_when` gate: whether it was open at an instant.
 //!
-//! Bounded: at most [`CAPACITY`] changes; when it is full the oldest becomes the state before everything.
+//! Bounded: at most [`CAPACITY`] changes; when it is full the oldest becomes the state before
+//! everything.
 
 use crate::event::{Gate, RefusedReason};
 use crate::time::{Duration, Timestamp};
@@ -38,8 +39,8 @@ impl GateHistory {
         Ok(())
     }
 
-    /// Takes an event. Of two that contradict each other at one instant, shut wins: a wrong pair harms more than a missing
-    /// one, and the order of arrival must not decide.
+    /// Takes an event. Of two that contradict each other at one instant, shut wins: a wrong pair
+    /// harms more than a missing one, and the order of arrival must not decide.
     pub(crate) fn insert(&mut self, gate: &Gate) {
         self.changes
             .entry(gate.phenomenon)

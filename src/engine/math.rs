@@ -1,7 +1,7 @@
 //! The one door to float functions whose last bit differs between platforms.
 //!
-//! Everything here comes from the pure-Rust `libm`, whose results are the same bits on every machine. The package's
-//! lint file bans the platform's own functions.
+//! Everything here comes from the pure-Rust `libm`, whose results are the same bits on every
+//! machine. The package's lint file bans the platform's own functions.
 
 /// Natural logarithm.
 #[must_use]

@@ -1,12 +1,12 @@
-//! Limits notices in rate: of each kind about each subject one goes out, then none until a pause has passed; the next one
-//! says how many were held back.
+//! Limits notices in rate: of each kind about each subject one goes out, then none until a pause
+//! has passed; the next one says how many were held back.
 
 use crate::event::{Notice, Subject};
 use crate::time::{Duration, Timestamp};
 use serde::{Deserialize, Serialize};
 
-/// The pause between two notices of one kind about one subject. Ten minutes: a flood stays readable (six an hour) and
-/// the first of its kind is never delayed.
+/// The pause between two notices of one kind about one subject. Ten minutes: a flood stays readable
+/// (six an hour) and the first of its kind is never delayed.
 const PAUSE: Duration = Duration::from_seconds(600);
 
 /// What was last said about what. Bounded by subjects times kinds.
@@ -39,8 +39,8 @@ impl NoticeLimiter {
         let held_back = match place {
             Ok(index) => {
                 let said = &mut self.said[index];
-                // A time before the last one comes from another clock (a recording after live input): it says nothing
-                // about the pause, so the notice goes out.
+                // A time before the last one comes from another clock (a recording after live
+                // input): it says nothing about the pause, so the notice goes out.
                 if at >= said.last && at.since(said.last) < PAUSE {
                     said.held_back += 1;
                     return None;

@@ -1,4 +1,5 @@
-//! Where everything that one step says goes: outputs, counters, notices. Refusals are worded here, each with its way out.
+//! Where everything that one step says goes: outputs, counters, notices. Refusals are worded here,
+//! each with its way out.
 
 use crate::counters::Counters;
 use crate::event::{Output, RefusedReason, Subject};
@@ -18,7 +19,8 @@ impl Report<'_> {
         self.outputs.push(output);
     }
 
-    /// Counts a refusal and sends a notice about it, if one of its kind is due. `what` names the thing and its value.
+    /// Counts a refusal and sends a notice about it, if one of its kind is due. `what` names the
+    /// thing and its value.
     pub(crate) fn refuse(
         &mut self,
         at: Timestamp,
@@ -77,7 +79,8 @@ impl RefusedReason {
     pub fn advice(self) -> &'static str {
         match self {
             Self::UnknownTopic => {
-                "no channel, reference or gate is configured for it; configure one or narrow the subscription"
+                "no channel, reference or gate is configured for it; configure one or narrow \
+                 the subscription"
             }
             Self::Empty => "the payload was empty; check the sender",
             Self::Oversize => "the payload is larger than the limit; check the sender",

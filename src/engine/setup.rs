@@ -1,8 +1,8 @@
-//! The configuration as the engine sees it: parsed, checked and indexed by the shell, so that nothing here can hold a
-//! bad value and nobody checks again.
+//! The configuration as the engine sees it: parsed, checked and indexed by the shell, so that
+//! nothing here can hold a bad value and nobody checks again.
 //!
-//! Values are in the channel's own unit unless a name says otherwise. Sources and channels are known by their position;
-//! names travel only for documents.
+//! Values are in the channel's own unit unless a name says otherwise. Sources and channels are
+//! known by their position; names travel only for documents.
 
 use crate::time::Duration;
 use crate::time::Timestamp;
@@ -25,7 +25,8 @@ pub struct Setup {
     pub node: String,
     /// Which clock says what "now" is.
     pub clock: Clock,
-    /// SHA-256 of the configuration file's bytes, lower-case hexadecimal; travels in every correction.
+    /// SHA-256 of the configuration file's bytes, lower-case hexadecimal; travels in every
+    /// correction.
     pub fingerprint: String,
     /// All references: named ones, and one for every channel that declares its own inline.
     pub references: Vec<ReferenceSetup>,
@@ -49,7 +50,8 @@ impl Default for Setup {
 /// What "now" is.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
 pub enum Clock {
-    /// Live: received times and ticks move now; a phenomenon time more than 5 min ahead of it is refused.
+    /// Live: received times and ticks move now; a phenomenon time more than 5 min ahead of it is
+    /// refused.
     Live,
     /// Recordings: now is the newest accepted phenomenon time; ticks are not needed.
     Readings,
@@ -58,12 +60,13 @@ pub enum Clock {
 /// A source of reference values.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct ReferenceSetup {
-    /// Name in documents and topics, levels separated by `/`. An inline reference bears its channel's name.
+    /// Name in documents and topics, levels separated by `/`. An inline reference bears its
+    /// channel's name.
     pub name: String,
     /// Where its values come from.
     pub kind: ReferenceKind,
-    /// Standard uncertainty of each value that is independent between values; it enters the weights. Unit of the
-    /// channel.
+    /// Standard uncertainty of each value that is independent between values; it enters the
+    /// weights. Unit of the channel.
     pub uncertainty_each: f64,
     /// Standard uncertainty shared by all values; it does not average down. Unit of the channel.
     pub uncertainty_common: f64,
@@ -73,7 +76,8 @@ pub struct ReferenceSetup {
     pub expires: Option<Timestamp>,
     /// The reference is stale when its newest value is older than this; `None`: never.
     pub stale_after: Option<Duration>,
-    /// How long a stretch of time each value stands for (an hourly mean); zero for a sample at an instant.
+    /// How long a stretch of time each value stands for (an hourly mean); zero for a sample at an
+    /// instant.
     pub stands_for: Duration,
     /// Which instant of that stretch the value's phenomenon time names.
     pub stamped: Stamped,
@@ -93,18 +97,21 @@ pub enum Stamped {
 /// Where reference values come from.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub enum ReferenceKind {
-    /// Values arrive as readings with [`crate::event::Source::Reference`]: from a topic of their own, or from the same
-    /// payload as the indication (then both readings bear one phenomenon time).
+    /// Values arrive as readings with [`crate::event::Source::Reference`]: from a topic of their
+    /// own, or from the same payload as the indication (then both readings bear one phenomenon
+    /// time).
     Measured,
-    /// A known value, such as a buffer solution or a zero gas. When `gated`, it holds only while the gate is open, as
-    /// told by [`crate::event::Input::Gate`]; before the first gate event it is shut.
+    /// A known value, such as a buffer solution or a zero gas. When `gated`, it holds only while
+    /// the gate is open, as told by [`crate::event::Input::Gate`]; before the first gate event it
+    /// is shut.
     Constant {
         /// The value.
         value: f64,
         /// Whether a `valid_when` condition was configured.
         gated: bool,
     },
-    /// The median of at least three of these channels' indications at the instant; never holds the channel itself.
+    /// The median of at least three of these channels' indications at the instant; never holds the
+    /// channel itself.
     Group {
         /// The members other than the channel that uses this reference.
         members: Vec<ChannelId>,
@@ -153,7 +160,8 @@ pub struct ChannelSetup {
     pub unit: String,
     /// The reference it is judged against.
     pub reference: ReferenceId,
-    /// The indication answers this much later than the reference: indication at t + lag belongs to the reference at t.
+    /// The indication answers this much later than the reference: indication at t + lag belongs to
+    /// the reference at t.
     pub lag: Duration,
     /// How late, behind now, a reading may still arrive and be used.
     pub lateness: Duration,
@@ -165,9 +173,11 @@ pub struct ChannelSetup {
     pub screening: ScreeningSetup,
     /// Largest error that the specification permits, either sign; `None`: no conformity statement.
     pub max_permissible_error: Option<f64>,
-    /// Smallest step that the indication can show; enters u as q/√12 (GUM F.2.2.1) and floors the robust scale.
+    /// Smallest step that the indication can show; enters u as q/√12 (GUM F.2.2.1) and floors the
+    /// robust scale.
     pub resolution: f64,
-    /// Declared standard deviation of the indication's noise; floors the robust scale. Zero: not declared.
+    /// Declared standard deviation of the indication's noise; floors the robust scale. Zero: not
+    /// declared.
     pub noise: f64,
     /// Largest drift rate that needs no attention, unit per day; `None`: no such alarm.
     pub max_drift_rate: Option<f64>,
@@ -197,17 +207,19 @@ pub struct ScreeningSetup {
 /// When a new correction document is issued.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct PublishSetup {
-    /// A new document when the correction over the validity would differ by more than this part of u.
+    /// A new document when the correction over the validity would differ by more than this part of
+    /// u.
     pub step: f64,
-    /// A new document at the latest after this time; also how far ahead a document is valid, unless the fit's own
-    /// horizon is nearer.
+    /// A new document at the latest after this time; also how far ahead a document is valid, unless
+    /// the fit's own horizon is nearer.
     pub max_age: Duration,
 }
 
 /// Timing of the alarms.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub struct AlarmSetup {
-    /// Evaluations in a row that a condition must hold before its alarm is raised, and be gone before it clears.
+    /// Evaluations in a row that a condition must hold before its alarm is raised, and be gone
+    /// before it clears.
     pub delay: u32,
     /// A condition on the error clears only this many standard uncertainties inside its limit.
     pub deadband: f64,

@@ -1,4 +1,5 @@
-//! How things stand now, for the `state` document and the summary at the end of a demo. A view: nothing depends on it.
+//! How things stand now, for the `state` document and the summary at the end of a demo. A view:
+//! nothing depends on it.
 
 use crate::counters::Counters;
 use crate::event::{AlarmKind, AlarmState, Subject, Zone};
@@ -55,7 +56,8 @@ pub struct ChannelStanding {
 pub struct ReferenceStanding {
     /// Which reference.
     pub reference: ReferenceId,
-    /// Newest instant at which its value was known; `None` for a constant without a gate and before the first value.
+    /// Newest instant at which its value was known; `None` for a constant without a gate and before
+    /// the first value.
     pub last_value: Option<Timestamp>,
 }
 

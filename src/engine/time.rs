@@ -1,7 +1,9 @@
-//! Timestamps and durations in integer nanoseconds, so that time arithmetic is exact and the same everywhere.
+//! Timestamps and durations in integer nanoseconds, so that time arithmetic is exact and the same
+//! everywhere.
 //!
-//! Three times exist and never share a name: *phenomenon time* (when a quantity was sampled), *received time* (when the
-//! daemon got the message) and *scaled time* (the dimensionless time inside a fit, an `f64`).
+//! Three times exist and never share a name: *phenomenon time* (when a quantity was sampled),
+//! *received time* (when the daemon got the message) and *scaled time* (the dimensionless time
+//! inside a fit, an `f64`).
 
 use serde::{Deserialize, Serialize};
 use std::fmt;
@@ -86,9 +88,10 @@ impl fmt::Display for Timestamp {
     }
 }
 
-/// Year, month and day of the proleptic Gregorian calendar, from days since 1970-01-01. Years are counted from March, so
-/// that the leap day comes last: 400 years are 146 097 days, and months from March on begin at (153 m + 2) / 5 days
-/// (Richards, *Explanatory Supplement to the Astronomical Almanac*, 3rd ed., §15.11, from memory).
+/// Year, month and day of the proleptic Gregorian calendar, from days since 1970-01-01. Years are
+/// counted from March, so that the leap day comes last: 400 years are 146 097 days, and months from
+/// March on begin at (153 m + 2) / 5 days (Richards, *Explanatory Supplement to the Astronomical
+/// Almanac*, 3rd ed., §15.11, from memory).
 fn civil(days: i64) -> (i64, i64, i64) {
     let days_from_march = days + 719_468;
     let era = days_from_march.div_euclid(146_097);

@@ -1,8 +1,9 @@
-//! The recent readings of one source in order of their phenomenon time: remembers what came before (duplicates), says what
-//! comes too late, and answers what was measured around an instant.
+//! The recent readings of one source in order of their phenomenon time: remembers what came before
+//! (duplicates), says what comes too late, and answers what was measured around an instant.
 //!
-//! Bounded: at most [`CAPACITY`] readings. When it is full the oldest is forgotten, and whatever is not newer than a
-//! forgotten reading counts as late from then on, so that a repeated message can never slip in again.
+//! Bounded: at most [`CAPACITY`] readings. When it is full the oldest is forgotten, and whatever is
+//! not newer than a forgotten reading counts as late from then on, so that a repeated message can
+//! never slip in again.
 
 use crate::event::{Reading, RefusedReason};
 use crate::time::{Duration, Timestamp};
@@ -18,7 +19,8 @@ pub(crate) const CAPACITY: usize = 4096;
 pub(crate) struct Sample {
     /// Phenomenon time.
     pub(crate) time: Timestamp,
-    /// From when on waiting for stragglers counts: live, when it was taken; in recordings, its phenomenon time.
+    /// From when on waiting for stragglers counts: live, when it was taken; in recordings, its
+    /// phenomenon time.
     pub(crate) arrived: Timestamp,
     /// The value.
     pub(crate) value: f64,
@@ -27,14 +29,16 @@ pub(crate) struct Sample {
 }
 
 impl Sample {
-    /// Order by time, then by what tells two readings of one instant apart; the order of arrival plays no part.
+    /// Order by time, then by what tells two readings of one instant apart; the order of arrival
+    /// plays no part.
     fn order(&self, other: &Self) -> Ordering {
         (self.time, self.sequence)
             .cmp(&(other.time, other.sequence))
             .then_with(|| self.value.total_cmp(&other.value))
     }
 
-    /// Whether both are the same message: same time, and same running number, or same value where there is none.
+    /// Whether both are the same message: same time, and same running number, or same value where
+    /// there is none.
     fn repeats(&self, time: Timestamp, sequence: Option<i64>, value: f64) -> bool {
         self.time == time
             && match (self.sequence, sequence) {
@@ -61,13 +65,15 @@ impl Track {
         self.newest
     }
 
-    /// Phenomenon time of the newest reading that was forgotten: nothing is known about this instant and before.
+    /// Phenomenon time of the newest reading that was forgotten: nothing is known about this
+    /// instant and before.
     pub(crate) fn forgotten(&self) -> Option<Timestamp> {
         self.forgotten
     }
 
-    /// Whether the reading may be taken: not later than `lateness` behind this source's own newest reading, and not seen
-    /// before. (Behind its own newest, not behind now: a backlog after an outage is old but in order.)
+    /// Whether the reading may be taken: not later than `lateness` behind this source's own newest
+    /// reading, and not seen before. (Behind its own newest, not behind now: a backlog after an
+    /// outage is old but in order.)
     pub(crate) fn check(&self, reading: &Reading, lateness: Duration) -> Result<(), RefusedReason> {
         let too_old = self
             .newest

@@ -1,26 +1,55 @@
-//! One channel: pairing → screening → fit → judgement → alarms, one file per station, and the state that ties them.
+//! One channel: pairing → screening → fit → judgement → publishing → alarms, one file per station,
+//! and the state that ties them.
+//!
+//! ```text
+//!   indication ─┐            ┌─ rejected: told with test and threshold
+//!               ├─ pairing ─▶ screening ─▶ fit ─▶ judgement ─┬─▶ publishing: corrections
+//!   reference ──┘                          │                 └─▶ conditions: alarms
+//!                                          └─▶ degree changes
+//! ```
+//!
+//! What enters a station never comes back from a later one; the only memory shared between them is
+//! in [`Channel`].
 
+mod conditions;
+mod judgement;
+mod pairing;
+mod publishing;
+mod screening;
+#[cfg(test)]
+pub(crate) mod testing;
+
+use crate::event::{DegreeChange, Output, PairFate, RefusedReason, Rejection, Subject};
+use crate::fit::{Change, Fit, Row};
 use crate::gate::GateHistory;
 use crate::report::Report;
 use crate::setup::{ChannelId, ChannelSetup, ReferenceSetup};
 use crate::standing::{AlarmStanding, ChannelStanding};
-use crate::time::Timestamp;
+use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
+use conditions::ChannelAlarms;
+use judgement::{Judgement, Residuals};
+use pairing::{Found, Pair, Pairing};
+use publishing::Publishing;
+use screening::{Innovation, Screen, Verdict};
 use serde::{Deserialize, Serialize};
+
+/// A judgement is due when so small a part of the window is new since the last (one pair in windows
+/// up to this size, and always when a segment closed): merging the window's segments costs more
+/// than a pair's insertion.
+const JUDGED_PART: u64 = 1024;
 
 /// What a channel can see while it acts: its own setup, and what others share with it.
 pub(crate) struct Scene<'a> {
     pub(crate) id: ChannelId,
     pub(crate) setup: &'a ChannelSetup,
     pub(crate) reference: &'a ReferenceSetup,
+    pub(crate) gate: &'a GateHistory,
     /// Recent values of its reference.
     pub(crate) values: &'a Track,
-    pub(crate) gate: &'a GateHistory,
     /// Recent indications of all channels, by position.
     pub(crate) indications: &'a [Track],
     pub(crate) now: Timestamp,
-    /// Whether received times and ticks move now.
-    pub(crate) live: bool,
     /// Up to when the node is known to have been listening.
     pub(crate) alive: Timestamp,
     /// When the node began to listen again after it heard nothing from anywhere.
@@ -30,62 +59,399 @@ pub(crate) struct Scene<'a> {
 /// The state of one channel.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Channel {
-    issued: u64,
+    pairing: Pairing,
+    screen: Screen,
+    fit: Fit,
+    residuals: Residuals,
+    publishing: Publishing,
+    alarms: ChannelAlarms,
+    history: History,
+    wake: Option<Timestamp>,
+}
+
+/// What has happened so far in this stretch.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+struct History {
+    /// From when on the channel's silence counts while it has said nothing.
+    began: Option<Timestamp>,
+    /// Phenomenon time of the newest pair made, whatever its fate.
     last_reference: Option<Timestamp>,
+    /// Phenomenon time of the newest pair in the fit.
+    last_pair: Option<Timestamp>,
+    /// Pairs that entered the fit.
+    pairs: u64,
+    /// Pairs that entered it since the last judgement.
+    unjudged: u64,
+    /// Lowest and highest reference value.
+    range: Option<(f64, f64)>,
+    /// The last judgement in numbers, for the standing.
+    judged: Option<Judged>,
+}
+
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+struct Judged {
+    degree: u8,
+    correction: f64,
+    u: f64,
+    zone: Option<crate::event::Zone>,
 }
 
 impl Channel {
     /// A channel that has seen nothing; its documents are counted on from `issued`.
-    pub(crate) fn new(_setup: &ChannelSetup, issued: u64) -> Self {
+    pub(crate) fn new(setup: &ChannelSetup, issued: u64) -> Self {
         Self {
-            issued,
-            last_reference: None,
+            pairing: Pairing::default(),
+            screen: Screen::default(),
+            fit: Fit::new(setup.fit),
+            residuals: Residuals::default(),
+            publishing: Publishing::new(issued),
+            alarms: ChannelAlarms::default(),
+            history: History::default(),
+            wake: Some(Timestamp(i64::MIN)),
         }
     }
 
+    /// Documents issued so far.
     pub(crate) fn issued(&self) -> u64 {
-        self.issued
+        self.publishing.issued()
     }
 
+    /// Newest instant at which a reference value was at hand for this channel.
     pub(crate) fn last_reference(&self) -> Option<Timestamp> {
-        self.last_reference
+        self.history.last_reference
     }
 
+    /// When it wants to act next, if nothing arrives.
     pub(crate) fn wake(&self) -> Option<Timestamp> {
-        None
+        self.wake
     }
 
-    pub(crate) fn take_indication(&mut self, _: &Sample, _: &Scene<'_>, _: &mut Report<'_>) {}
-
-    pub(crate) fn take_reference(&mut self, _: &Sample, _: &Scene<'_>, _: &mut Report<'_>) {}
-
-    pub(crate) fn pass_time(&mut self, _: &Scene<'_>, _: &mut Report<'_>) {}
-
-    pub(crate) fn dismiss(&self, _: ChannelId, _: &ChannelSetup, _: Timestamp, _: &mut Report<'_>) {
+    /// Its own indication was taken into its track.
+    pub(crate) fn take_indication(
+        &mut self,
+        sample: &Sample,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
+        self.alarms.heard(scene, report);
+        if scene.setup.corrected_values
+            && let Some(corrected) = self.publishing.correct(sample, scene)
+        {
+            report.say(Output::Corrected(corrected));
+        }
+        let mut found = Vec::new();
+        self.pairing.take_indication(sample, scene, &mut found);
+        self.work_through(found, scene, report);
     }
 
-    pub(crate) fn raised_alarms(&self, _: ChannelId) -> Vec<AlarmStanding> {
-        Vec::new()
+    /// A value of its reference was taken into its track.
+    pub(crate) fn take_reference(
+        &mut self,
+        sample: &Sample,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
+        let mut found = Vec::new();
+        self.pairing.take_reference(sample, scene, &mut found);
+        self.work_through(found, scene, report);
     }
 
+    /// Rows asked from the record have come.
+    pub(crate) fn take_supplied(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        let mut found = Vec::new();
+        self.pairing.take_supplied(scene, &mut found);
+        self.work_through(found, scene, report);
+    }
+
+    /// Time passed, or something arrived that may complete a pair.
+    pub(crate) fn pass_time(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        self.history.began.get_or_insert(scene.alive);
+        let mut found = Vec::new();
+        self.pairing.advance(scene, &mut found);
+        self.work_through(found, scene, report);
+    }
+
+    /// Withdraws the correction and clears the alarms of a channel that is no longer configured.
+    pub(crate) fn dismiss(
+        &self,
+        id: ChannelId,
+        setup: &ChannelSetup,
+        now: Timestamp,
+        report: &mut Report<'_>,
+    ) {
+        if self.publishing.correction().is_some() {
+            report.say(Output::Withdrawn {
+                channel: id,
+                at: now,
+                why: format!(
+                    "{}: the channel was removed or its configuration changed",
+                    setup.name
+                ),
+            });
+        }
+        self.alarms.dismiss(id, setup, now, report);
+    }
+
+    /// The alarms that are not normal.
+    pub(crate) fn raised_alarms(&self, id: ChannelId) -> Vec<AlarmStanding> {
+        self.alarms.raised(id)
+    }
+
+    /// How it stands.
     pub(crate) fn standing(
         &self,
         channel: ChannelId,
         last_indication: Option<Timestamp>,
     ) -> ChannelStanding {
+        let judged = self.history.judged;
+        let correction = self.publishing.correction();
         ChannelStanding {
             channel,
             last_indication,
-            last_pair: None,
-            pairs: 0,
-            degree: None,
-            correction: None,
-            standard_uncertainty: None,
-            zone: None,
-            corrected_zone: None,
-            issue_number: None,
-            valid_until: None,
-            locked_out: false,
+            last_pair: self.history.last_pair,
+            pairs: self.history.pairs,
+            degree: judged.map(|judged| judged.degree),
+            correction: judged.map(|judged| judged.correction),
+            standard_uncertainty: judged.map(|judged| judged.u),
+            zone: judged.and_then(|judged| judged.zone),
+            corrected_zone: correction.and_then(|document| document.corrected_zone),
+            issue_number: correction.map(|document| document.issue_number),
+            valid_until: correction.map(|document| document.valid_until),
+            locked_out: self.screen.is_locked_out(),
         }
     }
+
+    /// Sends what pairing found through the stations, then sees to what waits for time.
+    fn work_through(&mut self, found: Vec<Found>, scene: &Scene<'_>, report: &mut Report<'_>) {
+        let subject = Subject::Channel(scene.id);
+        for found in found {
+            match found {
+                Found::Pair(pair) => self.take_pair(&pair, scene, report),
+                Found::Missed { time, reason } => {
+                    report.refuse(scene.now, subject, reason, || {
+                        format!(
+                            "{}: reference {} for {time}",
+                            scene.setup.name, scene.reference.name
+                        )
+                    });
+                }
+                Found::Wanted { from, to } => report.say(Output::Wanted {
+                    channel: scene.id,
+                    from,
+                    to,
+                }),
+            }
+        }
+        if self.publishing.is_due(scene.now) {
+            self.judge(scene, report);
+            self.publishing.expire(scene, report);
+        }
+        let silent = self.silent(scene);
+        self.alarms.silence(silent, scene, report);
+        self.wake = self.next_wake(scene);
+    }
+
+    fn take_pair(&mut self, pair: &Pair, scene: &Scene<'_>, report: &mut Report<'_>) {
+        self.history.last_reference = self.history.last_reference.max(Some(pair.time));
+        let error = pair.indication - pair.reference;
+        let innovation = self.innovation(pair, error);
+        let verdict = match innovation {
+            Some(innovation) if scene.setup.screening.enabled => {
+                let oldest = self.fit.window().oldest();
+                self.screen.judge(innovation, oldest, scene.setup)
+            }
+            _ => Verdict::Pass,
+        };
+        let rejected = if let Verdict::Reject { value, threshold } = verdict {
+            Some(Rejection {
+                reason: RefusedReason::InnovationGate,
+                value,
+                threshold,
+            })
+        } else {
+            self.enter(pair, error, scene, report)
+        };
+        Self::tell_fate(pair, rejected, scene, report);
+        if let Some(innovation) = innovation {
+            let locked_out = self.screen.is_locked_out();
+            self.alarms
+                .screen(locked_out, innovation.value, scene, report);
+        }
+        if self.history.unjudged > self.fit.window().rows() / JUDGED_PART {
+            self.judge(scene, report);
+        }
+    }
+
+    /// How far the pair lies from what the fit expects; `None` while it expects nothing.
+    fn innovation(&self, pair: &Pair, error: f64) -> Option<Innovation> {
+        let expected = self.fit.predict(pair.time)?;
+        let innovation = Innovation {
+            time: pair.time,
+            value: error - expected.error,
+            spread: (1.0 / pair.weight + expected.leverage).sqrt(),
+        };
+        (innovation.value.is_finite() && innovation.spread.is_finite()).then_some(innovation)
+    }
+
+    /// Enters a pair into the fit; the rejection if it is older than the window.
+    fn enter(
+        &mut self,
+        pair: &Pair,
+        error: f64,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) -> Option<Rejection> {
+        let inserted = self.fit.insert(Row {
+            time: pair.time,
+            error,
+            weight: pair.weight,
+        });
+        if inserted.out_of_range {
+            return Some(Rejection {
+                reason: RefusedReason::NotFinite,
+                value: error,
+                threshold: f64::MAX,
+            });
+        }
+        if inserted.too_old {
+            let newest = self.history.last_pair.unwrap_or(pair.time);
+            return Some(Rejection {
+                reason: RefusedReason::Late,
+                value: newest.since(pair.time).seconds(),
+                threshold: window_seconds(scene.setup),
+            });
+        }
+        let history = &mut self.history;
+        history.last_pair = history.last_pair.max(Some(pair.time));
+        history.pairs += 1;
+        history.unjudged += 1;
+        let (lowest, highest) = history.range.unwrap_or((pair.reference, pair.reference));
+        history.range = Some((lowest.min(pair.reference), highest.max(pair.reference)));
+        self.residuals.push(pair.time, error);
+        if inserted.closed {
+            history.unjudged = history.unjudged.max(self.fit.window().rows());
+            if let Some(change) = self.fit.decide(!self.screen.is_locked_out()) {
+                tell_degree(change, scene, report);
+            }
+        }
+        None
+    }
+
+    fn tell_fate(
+        pair: &Pair,
+        rejected: Option<Rejection>,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
+        report.say(Output::Pair(PairFate {
+            channel: scene.id,
+            phenomenon: pair.time,
+            indication: pair.indication + 0.0,
+            reference: pair.reference + 0.0,
+            rejected,
+        }));
+        if let Some(rejection) = rejected {
+            let subject = Subject::Channel(scene.id);
+            report.refuse(scene.now, subject, rejection.reason, || {
+                format!(
+                    "{}: pair at {} with indication {} and reference {} {}",
+                    scene.setup.name, pair.time, pair.indication, pair.reference, scene.setup.unit
+                )
+            });
+        }
+    }
+
+    /// Judges the fit as it is now; publishes and alarms as needed.
+    fn judge(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        let fresh = self.history.unjudged > 0;
+        self.history.unjudged = 0;
+        let Some(published) = self.fit.published() else {
+            return;
+        };
+        let Some(judgement) = Judgement::of(published, &self.residuals, scene) else {
+            report.notice(
+                scene.now,
+                Subject::Channel(scene.id),
+                "fit-not-finite",
+                || {
+                    format!(
+                        "{}: the fit's numbers are too large to hold; look at the indications and \
+                         the reference values",
+                        scene.setup.name
+                    )
+                },
+            );
+            return;
+        };
+        self.history.judged = Some(Judged {
+            degree: judgement.published.degree,
+            correction: 0.0 - judgement.error,
+            u: judgement.u,
+            zone: judgement.zone,
+        });
+        let range = self.history.range.unwrap_or((0.0, 0.0));
+        self.publishing.consider(&judgement, range, scene, report);
+        // A review that only time brought about says nothing new: an alarm's delay counts pairs.
+        if fresh {
+            self.alarms.judge(&judgement, scene, report);
+        }
+    }
+
+    /// How long the channel has been silent while the node was listening.
+    fn silent(&self, scene: &Scene<'_>) -> Duration {
+        scene.alive.since(self.silent_since(scene))
+    }
+
+    fn silent_since(&self, scene: &Scene<'_>) -> Timestamp {
+        let newest = scene.indications[scene.id.0 as usize].newest();
+        let last = newest.or(self.history.began).unwrap_or(scene.alive);
+        scene.resumed.map_or(last, |resumed| resumed.max(last))
+    }
+
+    fn next_wake(&self, scene: &Scene<'_>) -> Option<Timestamp> {
+        let gap = scene
+            .setup
+            .alarms
+            .gap_after
+            .filter(|_| !self.alarms.gap_is_raised())
+            .map(|limit| self.silent_since(scene).plus(limit).plus(Duration(1)));
+        [self.pairing.due(), self.publishing.wake(), gap]
+            .into_iter()
+            .flatten()
+            .min()
+    }
+}
+
+/// Length of a window in time, in seconds; 0 for a window in pairs, which has none.
+fn window_seconds(setup: &ChannelSetup) -> f64 {
+    match setup.fit.window {
+        crate::setup::WindowLength::Time(length) => length.seconds(),
+        crate::setup::WindowLength::Pairs(_) => 0.0,
+    }
+}
+
+/// Says that the announced degree changed, with its evidence; a rise is also told to people.
+fn tell_degree(change: Change, scene: &Scene<'_>, report: &mut Report<'_>) {
+    let Change { from, to, evidence } = change;
+    let (code, word) = if to > from {
+        ("degree-raised", "raised")
+    } else {
+        ("degree-lowered", "lowered")
+    };
+    let (gain, segments) = (evidence.gain, evidence.held_segments);
+    let criterion = evidence.criterion.name.clone();
+    report.say(Output::Degree(Box::new(DegreeChange {
+        channel: scene.id,
+        at: scene.now,
+        from,
+        to,
+        evidence,
+    })));
+    report.notice(scene.now, Subject::Channel(scene.id), code, || {
+        format!(
+            "{}: the degree of the drift was {word} from {from} to {to}: {criterion} differs \
+             by {gain:.1}, held for {segments} segments",
+            scene.setup.name
+        )
+    });
 }

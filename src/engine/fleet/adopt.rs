@@ -10,8 +10,8 @@ use crate::time::{Duration, Timestamp};
 use crate::track::Track;
 use serde::{Deserialize, Serialize};
 
-/// A reference value may become known this much later than its instant (a laboratory's day) and still find the
-/// indications in memory, as far as the memory's size allows.
+/// A reference value may become known this much later than its instant (a laboratory's day) and
+/// still find the indications in memory, as far as the memory's size allows.
 const REFERENCE_DELAY: Duration = Duration::from_seconds(86_400);
 
 /// Who listens to whom, derived from the configuration.
@@ -78,12 +78,12 @@ impl Routes {
         &self.reference_users[id.0 as usize]
     }
 
-    pub(super) fn trim_indications(&self, index: usize, track: &mut Track) {
-        trim(track, self.indication_memory[index]);
+    pub(super) fn trim_indications(&self, id: ChannelId, track: &mut Track) {
+        trim(track, self.indication_memory[id.0 as usize]);
     }
 
-    pub(super) fn trim_references(&self, index: usize, track: &mut Track) {
-        trim(track, self.reference_memory[index]);
+    pub(super) fn trim_references(&self, id: ReferenceId, track: &mut Track) {
+        trim(track, self.reference_memory[id.0 as usize]);
     }
 }
 
@@ -93,8 +93,9 @@ fn trim(track: &mut Track, memory: Duration) {
     }
 }
 
-/// How long readings are kept: for duplicates and stragglers at least `lateness`; to serve reference values, also the
-/// interval that one stands for, the widest gap to interpolate across, and the reference's own delay.
+/// How long readings are kept: for duplicates and stragglers at least `lateness`; to serve
+/// reference values, also the interval that one stands for, the widest gap to interpolate across,
+/// and the reference's own delay.
 fn memory(channel: &ChannelSetup, reference: &ReferenceSetup) -> Duration {
     let parts = [
         channel.lateness.0,
@@ -110,8 +111,9 @@ fn memory(channel: &ChannelSetup, reference: &ReferenceSetup) -> Duration {
 }
 
 impl Fleet {
-    /// Takes a configuration. Channels whose setup and reference are unchanged keep their state, by name; the others
-    /// start anew. Everything said here bears the positions of the configuration that is replaced.
+    /// Takes a configuration. Channels whose setup and reference are unchanged keep their state, by
+    /// name; the others start anew. Everything said here bears the positions of the configuration
+    /// that is replaced.
     pub(crate) fn adopt(&mut self, setup: &Setup, report: &mut Report<'_>) {
         let old = std::mem::take(self);
         let same_clock = old.setup.clock == setup.clock;
@@ -223,7 +225,8 @@ impl Fleet {
     }
 }
 
-/// Whether a channel means the same in both configurations, wherever it and its reference stand in the lists.
+/// Whether a channel means the same in both configurations, wherever it and its reference stand in
+/// the lists.
 fn same_channel(old: &Setup, before: &ChannelSetup, new: &Setup, after: &ChannelSetup) -> bool {
     let placed = ChannelSetup {
         reference: after.reference,

@@ -1,22 +1,26 @@
-//! The door: what may come in. Everything behind it is finite, timely, not seen before and meant to be used.
+//! The door: what may come in. Everything behind it is finite, timely, not seen before and meant to
+//! be used.
 
 use super::{Fleet, longest};
 use crate::event::{Gate, Reading, RefusedReason, Source};
 use crate::setup::{Clock, ReferenceKind};
 use crate::time::{Duration, Timestamp};
 
-/// How far sender's and receiver's clocks may differ: a live time further ahead than this is refused.
+/// How far sender's and receiver's clocks may differ: a live time further ahead than this is
+/// refused.
 const CLOCKS_DIFFER: Duration = Duration::from_seconds(300);
 
-/// 2200-01-01T00:00:00Z: no recording reaches this far, and time arithmetic stays clear of its end (2262).
+/// 2200-01-01T00:00:00Z: no recording reaches this far, and time arithmetic stays clear of its end
+/// (2262).
 const FAR_FUTURE: Timestamp = Timestamp(7_258_118_400_000_000_000);
 
-/// Largest magnitude of a value. No quantity in any unit comes near it, and its square summed over a window stays
-/// finite.
+/// Largest magnitude of a value. No quantity in any unit comes near it, and its square summed over
+/// a window stays finite.
 const LARGEST: f64 = 1e100;
 
 impl Fleet {
-    /// Whether a reading may come in, and what now is once it has. `timely` is false for rows from the record.
+    /// Whether a reading may come in, and what now is once it has. `timely` is false for rows from
+    /// the record.
     pub(super) fn admit(
         &self,
         reading: &Reading,

@@ -1,5 +1,6 @@
-//! The node's pulse: whether anything arrives at all. When everything falls silent it is the link, not the sensors: one
-//! alarm on the node then stands for all, and the silence of each source counts from the resumption.
+//! The node's pulse: whether anything arrives at all. When everything falls silent it is the link,
+//! not the sensors: one alarm on the node then stands for all, and the silence of each source
+//! counts from the resumption.
 
 use super::adopt::Routes;
 use super::silence;
@@ -34,8 +35,8 @@ impl Pulse {
         self.resumed
     }
 
-    /// The time up to which the node is known to have been listening. With a single source its own silence is all there
-    /// is to judge, so now itself.
+    /// The time up to which the node is known to have been listening. With a single source its own
+    /// silence is all there is to judge, so now itself.
     pub(super) fn alive(&self, now: Timestamp, routes: &Routes) -> Timestamp {
         if routes.several_sources {
             self.newest.unwrap_or(now)

@@ -1,4 +1,5 @@
-//! Silence of references and of the node: when the last value is too old, and how the alarms say so.
+//! Silence of references and of the node: when the last value is too old, and how the alarms say
+//! so.
 
 use super::Fleet;
 use crate::alarm::{Condition, Delays, Move};
@@ -12,8 +13,8 @@ use crate::time::{Duration, Timestamp};
 const AT_ONCE: Delays = Delays { on: 1, off: 1 };
 
 impl Fleet {
-    /// The newest instant at which the reference's value was known. A group's is when a channel last got a median from
-    /// it.
+    /// The newest instant at which the reference's value was known. A group's is when a channel
+    /// last got a median from it.
     pub(super) fn last_known(&self, id: ReferenceId) -> Option<Timestamp> {
         let index = id.0 as usize;
         let reference = &self.references[index];
@@ -102,8 +103,8 @@ fn stale_change(
         format!("reference {name} gives values again")
     } else {
         format!(
-            "reference {name} has given no value for {:.1} h (limit {:.1} h); its channels keep their last correction \
-             until it expires; look at the reference and its link",
+            "reference {name} has given no value for {:.1} h (limit {:.1} h); its channels keep \
+             their last correction until it expires; look at the reference and its link",
             hours(silent),
             hours(limit)
         )
@@ -143,8 +144,8 @@ pub(super) fn node_gap(step: Move, now: Timestamp, arrival: Timestamp, limit: Du
         "readings arrive again".to_owned()
     } else {
         format!(
-            "nothing has arrived from any source for {:.2} h; look at the broker and the network first, then at the \
-             sensors",
+            "nothing has arrived from any source for {:.2} h; look at the broker and the \
+             network first, then at the sensors",
             hours(silent)
         )
     };

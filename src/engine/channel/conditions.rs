@@ -1,0 +1,344 @@
+//! Last station: the conditions behind a channel's alarms and what the alarms say. The states are
+//! moved by `alarm`.
+
+use super::Scene;
+use super::judgement::Judgement;
+use crate::alarm::{Alarm, Condition, Delays, Move};
+use crate::event::{AlarmChange, AlarmKind, AlarmState, Output, Subject};
+use crate::report::Report;
+use crate::setup::{ChannelId, ChannelSetup};
+use crate::standing::AlarmStanding;
+use crate::time::{Duration, Timestamp};
+use serde::{Deserialize, Serialize};
+
+/// The alarms of one channel.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub(crate) struct ChannelAlarms {
+    error_limit: Alarm,
+    drift_rate: Alarm,
+    data_gap: Alarm,
+    screen_locked_out: Alarm,
+}
+
+/// What an alarm change says besides its state.
+struct Said {
+    value: f64,
+    limit: f64,
+    unit: String,
+    raised: String,
+    cleared: String,
+}
+
+impl ChannelAlarms {
+    /// Whether the data-gap alarm is raised.
+    pub(crate) fn gap_is_raised(&self) -> bool {
+        self.data_gap.is_raised()
+    }
+
+    /// Evaluates what follows from a judgement: the error against its limit, the drift rate against
+    /// its own.
+    pub(crate) fn judge(
+        &mut self,
+        judgement: &Judgement,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
+        let setup = scene.setup;
+        if let Some(limit) = setup.max_permissible_error {
+            let condition = beyond(judgement.error, limit, setup.alarms.deadband * judgement.u);
+            let said = error_limit(judgement, limit, setup);
+            let step = self
+                .error_limit
+                .evaluate(condition, scene.now, delays(setup));
+            tell(AlarmKind::ErrorLimit, step, said, scene, report);
+        }
+        if let Some(limit) = setup.max_drift_rate {
+            let deadband = setup.alarms.deadband * judgement.slope_u;
+            let significant = judgement.slope.abs() > judgement.k * judgement.slope_u;
+            let condition = match beyond(judgement.slope, limit, deadband) {
+                Condition::Holds if !significant => Condition::Between,
+                other => other,
+            };
+            let said = drift_rate(judgement, limit, setup);
+            let step = self
+                .drift_rate
+                .evaluate(condition, scene.now, delays(setup));
+            tell(AlarmKind::DriftRate, step, said, scene, report);
+        }
+    }
+
+    /// Evaluates whether the screen is locked out, after a pair. Its own count is the delay: raised
+    /// at once.
+    pub(crate) fn screen(
+        &mut self,
+        locked_out: bool,
+        innovation: f64,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
+        let condition = if locked_out {
+            Condition::Holds
+        } else {
+            Condition::Gone
+        };
+        let delays = Delays {
+            on: 1,
+            ..delays(scene.setup)
+        };
+        let step = self
+            .screen_locked_out
+            .evaluate(condition, scene.now, delays);
+        let said = locked(innovation, scene);
+        tell(AlarmKind::ScreenLockedOut, step, said, scene, report);
+    }
+
+    /// Evaluates the silence of the channel as time passes. The timer is the delay: raised at once
+    /// when it has run out.
+    pub(crate) fn silence(&mut self, silent: Duration, scene: &Scene<'_>, report: &mut Report<'_>) {
+        let Some(limit) = scene.setup.alarms.gap_after else {
+            return;
+        };
+        if silent > limit && !self.data_gap.is_raised() {
+            let delays = Delays { on: 1, off: 1 };
+            let step = self.data_gap.evaluate(Condition::Holds, scene.now, delays);
+            let said = data_gap(silent, limit);
+            tell(AlarmKind::DataGap, step, said, scene, report);
+        }
+    }
+
+    /// An indication was accepted.
+    pub(crate) fn heard(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        if let Some(limit) = scene.setup.alarms.gap_after
+            && self.data_gap.is_raised()
+        {
+            let step = self
+                .data_gap
+                .evaluate(Condition::Gone, scene.now, delays(scene.setup));
+            let said = data_gap(Duration::ZERO, limit);
+            tell(AlarmKind::DataGap, step, said, scene, report);
+        }
+    }
+
+    /// All alarms with their kinds.
+    fn all(&self) -> [(AlarmKind, &Alarm); 4] {
+        [
+            (AlarmKind::ErrorLimit, &self.error_limit),
+            (AlarmKind::DriftRate, &self.drift_rate),
+            (AlarmKind::DataGap, &self.data_gap),
+            (AlarmKind::ScreenLockedOut, &self.screen_locked_out),
+        ]
+    }
+
+    /// The alarms that are not normal.
+    pub(crate) fn raised(&self, channel: ChannelId) -> Vec<AlarmStanding> {
+        let raised = self
+            .all()
+            .into_iter()
+            .filter(|(_, alarm)| alarm.is_raised());
+        raised
+            .map(|(kind, alarm)| AlarmStanding {
+                subject: Subject::Channel(channel),
+                kind,
+                state: alarm.state(),
+            })
+            .collect()
+    }
+
+    /// Says that the alarms of a channel that is no longer configured are gone.
+    pub(crate) fn dismiss(
+        &self,
+        channel: ChannelId,
+        setup: &ChannelSetup,
+        now: Timestamp,
+        report: &mut Report<'_>,
+    ) {
+        for standing in self.raised(channel) {
+            report.say(Output::Alarm(AlarmChange {
+                subject: standing.subject,
+                kind: standing.kind,
+                state: AlarmState::Normal,
+                at: now,
+                since: now,
+                value: 0.0,
+                limit: 0.0,
+                unit: String::new(),
+                text: format!(
+                    "{}: the channel was removed or its configuration changed",
+                    setup.name
+                ),
+            }));
+        }
+    }
+}
+
+/// On- and off-delay as configured.
+fn delays(setup: &ChannelSetup) -> Delays {
+    let needed = setup.alarms.delay.max(1);
+    Delays {
+        on: needed,
+        off: needed,
+    }
+}
+
+/// Whether a magnitude is past its limit, or clear of it by the deadband. The deadband is at most
+/// half the limit, so that an alarm can clear however uncertain the value is.
+fn beyond(value: f64, limit: f64, deadband: f64) -> Condition {
+    let size = value.abs();
+    if size > limit {
+        Condition::Holds
+    } else if size <= limit - deadband.min(0.5 * limit) {
+        Condition::Gone
+    } else {
+        Condition::Between
+    }
+}
+
+fn tell(
+    kind: AlarmKind,
+    step: Option<Move>,
+    said: Said,
+    scene: &Scene<'_>,
+    report: &mut Report<'_>,
+) {
+    let Some(step) = step else { return };
+    let text = if step.state == AlarmState::Normal {
+        said.cleared
+    } else {
+        said.raised
+    };
+    report.say(Output::Alarm(AlarmChange {
+        subject: Subject::Channel(scene.id),
+        kind,
+        state: step.state,
+        at: scene.now,
+        since: step.since,
+        value: said.value + 0.0,
+        limit: said.limit,
+        unit: said.unit,
+        text: format!("{}: {text}", scene.setup.name),
+    }));
+}
+
+fn error_limit(judgement: &Judgement, limit: f64, setup: &ChannelSetup) -> Said {
+    let unit = &setup.unit;
+    let error = readable(judgement.error);
+    let expanded = readable(judgement.k * judgement.u);
+    let limit_read = readable(limit);
+    Said {
+        value: judgement.error,
+        limit,
+        unit: unit.clone(),
+        raised: format!(
+            "the error of {error} {unit} (±{expanded} {unit}) exceeds the maximum permissible \
+             error of {limit_read} {unit}; service or recalibrate the sensor"
+        ),
+        cleared: format!(
+            "the error of {error} {unit} (±{expanded} {unit}) is within the maximum \
+             permissible error of {limit_read} {unit} again"
+        ),
+    }
+}
+
+fn drift_rate(judgement: &Judgement, limit: f64, setup: &ChannelSetup) -> Said {
+    let unit = format!("{}/d", setup.unit);
+    let slope = readable(judgement.slope);
+    let slope_u = readable(judgement.k * judgement.slope_u);
+    let limit_read = readable(limit);
+    Said {
+        value: judgement.slope,
+        limit,
+        raised: format!(
+            "drifts by {slope} {unit} (±{slope_u} {unit}), faster than {limit_read} {unit}; find \
+             the cause: fouling, ageing or a failing reference"
+        ),
+        cleared: format!("drifts by {slope} {unit}, within {limit_read} {unit} again"),
+        unit,
+    }
+}
+
+fn locked(innovation: f64, scene: &Scene<'_>) -> Said {
+    let unit = &scene.setup.unit;
+    let count = scene.setup.screening.lock_out_after;
+    let read = readable(innovation);
+    Said {
+        value: innovation,
+        limit: f64::from(count),
+        unit: unit.clone(),
+        raised: format!(
+            "{count} pairs in a row lay off the fit to one side, the last by {read} {unit}: a \
+             step of the sensor or a wrong value of reference {}; the fit follows it, check both",
+            scene.reference.name
+        ),
+        cleared: "pairs fit again".to_owned(),
+    }
+}
+
+fn data_gap(silent: Duration, limit: Duration) -> Said {
+    let hours = |duration: Duration| duration.seconds() / 3600.0;
+    Said {
+        value: hours(silent),
+        limit: hours(limit),
+        unit: "h".to_owned(),
+        raised: format!(
+            "no indication for {} h (limit {} h) while others report; look at the sensor, \
+             its power and its link",
+            readable(hours(silent)),
+            readable(hours(limit))
+        ),
+        cleared: "indications arrive again".to_owned(),
+    }
+}
+
+/// Four significant digits, for texts.
+fn readable(value: f64) -> String {
+    let size = value.abs();
+    if size == 0.0 {
+        return "0".to_owned();
+    }
+    if !(1e-4..1e6).contains(&size) {
+        return format!("{value:.3e}");
+    }
+    let mut decimals = 3;
+    let mut edge = 1.0;
+    while size < edge && decimals < 8 {
+        decimals += 1;
+        edge *= 0.1;
+    }
+    let mut edge = 10.0;
+    while size >= edge && decimals > 0 {
+        decimals -= 1;
+        edge *= 10.0;
+    }
+    format!("{value:.decimals$}")
+}
+
+#[cfg(test)]
+#[allow(clippy::float_cmp, reason = "the expected values are exact in binary")]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn numbers_read_with_four_digits() {
+        let cases = [
+            (0.0, "0"),
+            (0.123_456, "0.1235"),
+            (1.234_56, "1.235"),
+            (-12.345_6, "-12.35"),
+            (123_456.7, "123457"),
+            (0.000_123_456, "0.0001235"),
+            (1.5e-9, "1.500e-9"),
+            (2.5e7, "2.500e7"),
+        ];
+        for (value, text) in cases {
+            assert_eq!(readable(value), text);
+        }
+    }
+
+    #[test]
+    fn the_deadband_keeps_an_alarm_and_never_locks_it() {
+        assert_eq!(beyond(-1.1, 1.0, 0.2), Condition::Holds);
+        assert_eq!(beyond(0.9, 1.0, 0.2), Condition::Between);
+        assert_eq!(beyond(0.8, 1.0, 0.2), Condition::Gone);
+        assert_eq!(beyond(0.4, 1.0, 50.0), Condition::Gone);
+    }
+}

@@ -1,0 +1,332 @@
+//! Fourth station (the third is the fit): what the fit means. The error with its uncertainty,
+//! against the maximum permissible error.
+//!
+//! u² = u²(fit) + common² + q²/12 + lack of fit² (GUM 5.1.2 with H.3.6 for the common part, F.2.2.1
+//! for the resolution q); degrees of freedom by Welch–Satterthwaite (GUM G.2b), k from Student's t
+//! (G.3.2).
+
+use super::Scene;
+use crate::event::Zone;
+use crate::fit::Published;
+use crate::quantile;
+use crate::time::Timestamp;
+use serde::{Deserialize, Serialize};
+use std::collections::VecDeque;
+
+/// Accepted pairs that the lack of fit is judged on.
+const RECENT: usize = 64;
+/// Fewest that say something about it.
+const ENOUGH: usize = 16;
+/// A mean residual within so many of its own standard deviations is noise.
+const SIGNIFICANT: f64 = 2.0;
+/// Effective degrees of freedom are not told finer than this; k is the normal quantile there.
+const MANY: f64 = 1e9;
+
+/// What the fit means at its newest pair.
+#[derive(Clone, Debug)]
+pub(crate) struct Judgement {
+    /// Estimated error ê, in the channel's unit.
+    pub(crate) error: f64,
+    /// Standard uncertainty of ê.
+    pub(crate) u: f64,
+    /// Part of u² that does not come from the fit's covariance; the same at every instant.
+    pub(crate) rest_variance: f64,
+    /// k.
+    pub(crate) k: f64,
+    /// ν behind k.
+    pub(crate) nu: f64,
+    /// dê/dt per day.
+    pub(crate) slope: f64,
+    /// Standard uncertainty of the slope.
+    pub(crate) slope_u: f64,
+    /// Where ê ± U stands; `None` without a maximum permissible error.
+    pub(crate) zone: Option<Zone>,
+    /// The fit.
+    pub(crate) published: Published,
+}
+
+impl Judgement {
+    /// Judges a fit; `None` if its numbers can't be held (overflow of absurd inputs).
+    pub(crate) fn of(
+        published: Published,
+        residuals: &Residuals,
+        scene: &Scene<'_>,
+    ) -> Option<Self> {
+        let error = *published.coefficients.first()? + 0.0;
+        let fit = published.covariance.first()?.first()?.max(0.0);
+        let lack = residuals.lack_of_fit(&published);
+        let common = scene.reference.uncertainty_common;
+        let resolution = scene.setup.resolution;
+        let rest_variance = common * common + resolution * resolution / 12.0 + lack.variance;
+        let u = (fit + rest_variance).sqrt();
+        let nu = effective_degrees_of_freedom(
+            u,
+            &[
+                (fit, published.degrees_of_freedom),
+                (lack.variance, lack.degrees_of_freedom),
+            ],
+        );
+        let k = quantile::student(scene.setup.coverage, nu);
+        let slope = published.coefficients.get(1).copied().unwrap_or(0.0) + 0.0;
+        let slope_u = slope_variance(&published).max(0.0).sqrt();
+        let zone = scene
+            .setup
+            .max_permissible_error
+            .map(|limit| zone(error, k * u, limit));
+        let judgement = Self {
+            error,
+            u,
+            rest_variance,
+            k,
+            nu,
+            slope,
+            slope_u,
+            zone,
+            published,
+        };
+        judgement.is_finite().then_some(judgement)
+    }
+
+    fn is_finite(&self) -> bool {
+        let numbers = [
+            self.error,
+            self.u,
+            self.k,
+            self.nu,
+            self.slope,
+            self.slope_u,
+        ];
+        let published = &self.published;
+        numbers
+            .iter()
+            .chain(&published.coefficients)
+            .chain(&published.weights)
+            .chain(published.covariance.iter().flatten())
+            .chain(&published.criterion.values)
+            .chain([
+                &published.residual_sd,
+                &published.window.effective_sample_size,
+                &published.window.lag_one,
+            ])
+            .all(|number| number.is_finite())
+    }
+}
+
+fn slope_variance(published: &Published) -> f64 {
+    published
+        .covariance
+        .get(1)
+        .and_then(|row| row.get(1))
+        .copied()
+        .unwrap_or(0.0)
+}
+
+/// Where an error with its expanded uncertainty stands against the maximum permissible error
+/// (ILAC-G8:09/2019, 4.2.3).
+pub(crate) fn zone(error: f64, expanded: f64, limit: f64) -> Zone {
+    let error = error.abs();
+    if error + expanded <= limit {
+        Zone::Pass
+    } else if error <= limit {
+        Zone::ConditionalPass
+    } else if error - expanded <= limit {
+        Zone::ConditionalFail
+    } else {
+        Zone::Fail
+    }
+}
+
+/// ν of a sum of variances, each with its own ν; parts not listed are known exactly
+/// (Welch–Satterthwaite, GUM G.2b: `ν = u⁴ / Σ uᵢ⁴/νᵢ`).
+fn effective_degrees_of_freedom(u: f64, parts: &[(f64, f64)]) -> f64 {
+    let whole = u * u;
+    let sum: f64 = parts
+        .iter()
+        .filter(|(variance, _)| *variance > 0.0)
+        .map(|(variance, nu)| {
+            let share = variance / whole;
+            share * share / nu.max(1.0)
+        })
+        .sum();
+    if sum > 0.0 {
+        (1.0 / sum).min(MANY)
+    } else {
+        MANY
+    }
+}
+
+/// Value of a polynomial, constant coefficient first (Horner).
+pub(crate) fn polynomial(coefficients: &[f64], t: f64) -> f64 {
+    coefficients
+        .iter()
+        .rev()
+        .fold(0.0, |value, coefficient| value * t + coefficient)
+}
+
+/// φᵀCφ of a polynomial's covariance at `t`.
+pub(crate) fn variance_at(covariance: &[Vec<f64>], t: f64) -> f64 {
+    let rows: Vec<f64> = covariance.iter().map(|row| polynomial(row, t)).collect();
+    polynomial(&rows, t).max(0.0)
+}
+
+/// The newest accepted errors, to see whether the published curve still goes through them.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Residuals {
+    recent: VecDeque<(Timestamp, f64)>,
+}
+
+/// The part of u that the fit's own covariance does not know.
+#[derive(Clone, Copy, Debug, PartialEq)]
+struct LackOfFit {
+    variance: f64,
+    degrees_of_freedom: f64,
+}
+
+impl Residuals {
+    /// Remembers a pair that entered the fit.
+    pub(crate) fn push(&mut self, time: Timestamp, error: f64) {
+        self.recent.push_back((time, error));
+        if self.recent.len() > RECENT {
+            self.recent.pop_front();
+        }
+    }
+
+    /// The square of the newest residuals' mean beyond what noise explains: `max(0, m² −
+    /// (2·s_m)²)`, where `s_m` is the standard deviation of a mean of correlated values, `s/√n ·
+    /// √((1+ρ)/(1−ρ))` (large-n variance of an AR(1) mean), ρ their lag-1 correlation with
+    /// Kendall's bias added back. Own derivation; a moment estimate cut at zero, as for
+    /// between-group variances.
+    fn lack_of_fit(&self, published: &Published) -> LackOfFit {
+        let count = self.recent.len();
+        if count < ENOUGH {
+            return LackOfFit {
+                variance: 0.0,
+                degrees_of_freedom: 1.0,
+            };
+        }
+        let residuals: Vec<f64> = self
+            .recent
+            .iter()
+            .map(|&(time, error)| {
+                let days = time.since(published.origin).days();
+                error - polynomial(&published.coefficients, days)
+            })
+            .collect();
+        let n = count as f64;
+        let mean = residuals.iter().sum::<f64>() / n;
+        let square = |x: f64| x * x;
+        let about_mean: f64 = residuals.iter().map(|r| square(r - mean)).sum();
+        let lagged: f64 = residuals
+            .windows(2)
+            .map(|two| (two[0] - mean) * (two[1] - mean))
+            .sum();
+        let rho = if about_mean > 0.0 {
+            lagged / about_mean
+        } else {
+            0.0
+        };
+        let rho = (rho + (1.0 + 4.0 * rho) / n).clamp(0.0, 0.95);
+        let of_mean = about_mean / (n - 1.0) / n * (1.0 + rho) / (1.0 - rho);
+        LackOfFit {
+            variance: (square(mean) - square(SIGNIFICANT) * of_mean).max(0.0),
+            degrees_of_freedom: ((n - 1.0) * (1.0 - rho) / (1.0 + rho)).max(1.0),
+        }
+    }
+}
+
+#[cfg(test)]
+#[allow(clippy::float_cmp, reason = "the expected values are exact in binary")]
+mod tests {
+    use super::*;
+    use crate::event::{CriterionValues, WindowSeen};
+
+    fn published(coefficients: &[f64]) -> Published {
+        Published {
+            origin: Timestamp(0),
+            degree: 0,
+            weights: vec![1.0],
+            coefficients: coefficients.to_vec(),
+            covariance: vec![vec![0.0; coefficients.len()]; coefficients.len()],
+            degrees_of_freedom: 10.0,
+            residual_sd: 1.0,
+            criterion: CriterionValues {
+                name: "BIC".to_owned(),
+                values: Vec::new(),
+            },
+            window: WindowSeen {
+                from: Timestamp(0),
+                to: Timestamp(0),
+                pairs: 1,
+                segments: 0,
+                effective_sample_size: 0.0,
+                lag_one: 0.0,
+            },
+        }
+    }
+
+    /// Check value V38: maximum permissible error 1.0, U 0.2.
+    #[test]
+    fn four_zones() {
+        let cases = [
+            (0.7, Zone::Pass),
+            (0.9, Zone::ConditionalPass),
+            (1.1, Zone::ConditionalFail),
+            (1.3, Zone::Fail),
+        ];
+        for (error, expected) in cases {
+            assert_eq!(zone(error, 0.2, 1.0), expected);
+            assert_eq!(zone(-error, 0.2, 1.0), expected);
+        }
+    }
+
+    /// Check value V18 (GUM G.4.1, from memory): relative u 0.25, 0.57, 0.82 % with ν 9, 4, 14 give
+    /// u 1.03 %, ν 19.0, and U95 = 2.2 %.
+    #[test]
+    fn welch_satterthwaite() {
+        let parts = [(0.25, 9.0), (0.57, 4.0), (0.82, 14.0)].map(|(u, nu)| (u * u, nu));
+        let u = parts
+            .iter()
+            .map(|(variance, _)| variance)
+            .sum::<f64>()
+            .sqrt();
+        let nu = effective_degrees_of_freedom(u, &parts);
+        assert!((u - 1.03).abs() < 5e-3, "{u}");
+        assert!((nu - 19.0).abs() < 0.05, "{nu}");
+        assert!((u * quantile::student(0.95, nu.floor()) - 2.2).abs() < 0.05);
+    }
+
+    #[test]
+    fn exactly_known_parts_raise_the_degrees_of_freedom() {
+        let nu = effective_degrees_of_freedom(2.0_f64.sqrt(), &[(1.0, 5.0)]);
+        assert!((nu - 20.0).abs() < 1e-9);
+        assert_eq!(effective_degrees_of_freedom(1.0, &[(0.0, 5.0)]), MANY);
+    }
+
+    #[test]
+    fn variance_of_a_polynomial_is_the_quadratic_form() {
+        let covariance = vec![vec![4.0, 1.0], vec![1.0, 2.0]];
+        assert_eq!(variance_at(&covariance, 0.0), 4.0);
+        assert_eq!(variance_at(&covariance, 3.0), 4.0 + 2.0 * 3.0 + 9.0 * 2.0);
+    }
+
+    #[test]
+    fn noise_around_the_curve_is_no_lack_of_fit_but_an_offset_is() {
+        let mut residuals = Residuals::default();
+        for index in 0..64 {
+            let noise = [1.0, -1.0, -1.0, 1.0][index % 4];
+            residuals.push(Timestamp(0), 5.0 + noise);
+        }
+        assert_eq!(residuals.lack_of_fit(&published(&[5.0])).variance, 0.0);
+        let off = residuals.lack_of_fit(&published(&[8.0])).variance.sqrt();
+        assert!((2.8..3.0).contains(&off), "{off}");
+    }
+
+    #[test]
+    fn few_pairs_claim_no_lack_of_fit() {
+        let mut residuals = Residuals::default();
+        for _ in 0..15 {
+            residuals.push(Timestamp(0), 9.0);
+        }
+        assert_eq!(residuals.lack_of_fit(&published(&[0.0])).variance, 0.0);
+    }
+}

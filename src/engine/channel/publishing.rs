@@ -1,0 +1,320 @@
+//! Fifth station: when a new correction is issued, how long it holds, and when it is withdrawn.
+//!
+//! *Dead zone*: a correction is applied from |ĉ| ≥ 2u and dropped below 1u; while it is suppressed
+//! the document's polynomial is zero and |ĉ| is inside U.
+//!
+//! *Publish step*: a new document when over its validity it would differ from the one in force by
+//! more than `step`·u, when u itself has changed by more than that part, when degree or zones
+//! differ, or when three quarters of the validity have passed and a new one would hold longer.
+//!
+//! *Validity*: `max_age`, but not past the fit's own horizon behind the newest pair: a quarter of
+//! the time that the window covers where a degree above 1 has weight, else half of it. (The
+//! variance of a straight line at the window's end grows by 13/4 half a window ahead, so that u has
+//! not quite doubled; a parabola's by 49/9 a quarter ahead: from `(1/n) Σ (2j+1) P_j(1+2f)²`,
+//! Legendre polynomials `P_j`, f in windows.) Young windows hold at least twice the mean time
+//! between pairs, so that a document outlives the wait for the next pair.
+
+use super::Scene;
+use super::judgement::{Judgement, polynomial, variance_at, zone};
+use crate::event::{Corrected, Correction, Output, WindowSeen};
+use crate::fit::Published;
+use crate::report::Report;
+use crate::time::{Duration, Timestamp};
+use crate::track::Sample;
+use serde::{Deserialize, Serialize};
+
+/// A correction is applied from so many u on …
+const APPLY_FROM: f64 = 2.0;
+/// … and dropped below so many.
+const DROP_BELOW: f64 = 1.0;
+/// A degree above 1 has weight from here on.
+const HAS_WEIGHT: f64 = 0.01;
+/// Instants at which two polynomials are compared over the validity; polynomials of degree ≤ 5
+/// can't hide a difference of note between nine of them.
+const COMPARED: u32 = 8;
+
+/// The state of the station.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Publishing {
+    /// Documents issued so far.
+    issued: u64,
+    /// Whether the dead zone lets the correction through.
+    applied: bool,
+    in_force: Option<InForce>,
+}
+
+/// The correction in force.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+struct InForce {
+    correction: Box<Correction>,
+    /// Part of u² that is the same at every instant.
+    rest_variance: f64,
+    /// What U has on top of k·u: |ĉ| while suppressed.
+    suppressed_size: f64,
+    /// When to see next whether it should be renewed or withdrawn.
+    review: Timestamp,
+}
+
+impl Publishing {
+    /// Nothing in force; documents are counted on from `issued`.
+    pub(crate) fn new(issued: u64) -> Self {
+        Self {
+            issued,
+            applied: false,
+            in_force: None,
+        }
+    }
+
+    /// Documents issued so far.
+    pub(crate) fn issued(&self) -> u64 {
+        self.issued
+    }
+
+    /// The correction in force.
+    pub(crate) fn correction(&self) -> Option<&Correction> {
+        self.in_force.as_ref().map(|held| &*held.correction)
+    }
+
+    /// When to look again.
+    pub(crate) fn wake(&self) -> Option<Timestamp> {
+        self.in_force.as_ref().map(|held| held.review)
+    }
+
+    /// Looks at a judgement and issues a document if one is due.
+    pub(crate) fn consider(
+        &mut self,
+        judgement: &Judgement,
+        range: (f64, f64),
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
+        let size = judgement.error.abs();
+        self.applied = if self.applied {
+            size >= DROP_BELOW * judgement.u
+        } else {
+            size >= APPLY_FROM * judgement.u
+        };
+        let candidate = self.candidate(judgement, range, scene);
+        if candidate.valid_until <= scene.now {
+            return;
+        }
+        if !self.differs(&candidate, scene) {
+            return;
+        }
+        self.issued += 1;
+        let validity = candidate.valid_until.since(candidate.issued).0;
+        self.in_force = Some(InForce {
+            rest_variance: judgement.rest_variance,
+            suppressed_size: if candidate.suppressed { size } else { 0.0 },
+            review: candidate.issued.plus(Duration(validity / 4 * 3)),
+            correction: Box::new(candidate.clone()),
+        });
+        report.say(Output::Correction(Box::new(candidate)));
+    }
+
+    /// Whether it is time to see if the correction in force should be renewed.
+    pub(crate) fn is_due(&self, now: Timestamp) -> bool {
+        self.wake().is_some_and(|review| review <= now)
+    }
+
+    /// After a review that brought no new document: withdraws what has expired, else looks again
+    /// when it does.
+    pub(crate) fn expire(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        let Some(held) = &mut self.in_force else {
+            return;
+        };
+        let end = held.correction.valid_until;
+        if scene.now >= end {
+            self.in_force = None;
+            self.applied = false;
+            report.say(Output::Withdrawn {
+                channel: scene.id,
+                at: scene.now,
+                why: format!(
+                    "{}: the correction expired at {end} and no new pair has come to renew \
+                     it; look at reference {}",
+                    scene.setup.name, scene.reference.name
+                ),
+            });
+        } else if held.review <= scene.now {
+            held.review = end;
+        }
+    }
+
+    /// Applies the correction in force to an indication.
+    pub(crate) fn correct(&self, sample: &Sample, scene: &Scene<'_>) -> Option<Corrected> {
+        let held = self.in_force.as_ref()?;
+        let document = &held.correction;
+        let earliest = document.valid_from.minus(scene.setup.lateness);
+        if sample.time < earliest || sample.time > document.valid_until {
+            return None;
+        }
+        let days = sample.time.since(document.origin).days();
+        let correction = polynomial(&document.zero, days) + 0.0;
+        let variance = variance_at(&document.covariance, days) + held.rest_variance;
+        let expanded = document.coverage_factor * variance.sqrt() + held.suppressed_size;
+        let corrected = sample.value + correction;
+        (corrected.is_finite() && expanded.is_finite()).then_some(Corrected {
+            channel: scene.id,
+            phenomenon: sample.time,
+            indication: sample.value,
+            correction,
+            corrected,
+            expanded_uncertainty: expanded,
+            issue_number: document.issue_number,
+        })
+    }
+
+    fn candidate(&self, judgement: &Judgement, range: (f64, f64), scene: &Scene<'_>) -> Correction {
+        let published = &judgement.published;
+        let suppressed = !self.applied;
+        let zero = published
+            .coefficients
+            .iter()
+            .map(|&coefficient| if suppressed { 0.0 } else { 0.0 - coefficient })
+            .collect();
+        let hidden = if suppressed {
+            judgement.error.abs()
+        } else {
+            0.0
+        };
+        let expanded = judgement.k * judgement.u + hidden;
+        Correction {
+            channel: scene.id,
+            issue_number: self.issued + 1,
+            issued: scene.now,
+            valid_from: scene.now,
+            valid_until: valid_until(published, scene),
+            origin: published.origin,
+            degree: published.degree,
+            weights: published.weights.clone(),
+            zero,
+            suppressed,
+            correction: if suppressed {
+                0.0
+            } else {
+                0.0 - judgement.error
+            },
+            standard_uncertainty: judgement.u,
+            coverage_factor: judgement.k,
+            expanded_uncertainty: expanded,
+            degrees_of_freedom: judgement.nu,
+            covariance: published.covariance.clone(),
+            zone: judgement.zone,
+            corrected_zone: scene
+                .setup
+                .max_permissible_error
+                .map(|limit| zone(0.0, expanded, limit)),
+            window: published.window,
+            criterion: published.criterion.clone(),
+            residual_sd: published.residual_sd,
+            stretch: 1,
+            range,
+        }
+    }
+
+    /// Whether the candidate says something that the document in force does not.
+    fn differs(&self, candidate: &Correction, scene: &Scene<'_>) -> bool {
+        let Some(held) = &self.in_force else {
+            return true;
+        };
+        let held = &held.correction;
+        let said = |document: &Correction| {
+            (
+                document.degree,
+                document.suppressed,
+                document.zone,
+                document.corrected_zone,
+            )
+        };
+        let outlived = scene.now.since(held.issued).0 / 3
+            >= held.valid_until.since(held.issued).0 / 4
+            && candidate.valid_until > held.valid_until;
+        if outlived || said(held) != said(candidate) {
+            return true;
+        }
+        let u = candidate.standard_uncertainty;
+        let step = scene.setup.publish.step * u;
+        (u - held.standard_uncertainty).abs() > step || greatest_difference(held, candidate) > step
+    }
+}
+
+/// Greatest difference of two corrections from the issue of the second to the end of the first.
+fn greatest_difference(held: &Correction, candidate: &Correction) -> f64 {
+    let end = held.valid_until.max(candidate.issued);
+    let length = end.since(candidate.issued).0;
+    (0..=COMPARED)
+        .map(|part| {
+            let offset = Duration(length / i64::from(COMPARED) * i64::from(part));
+            let time = candidate.issued.plus(offset);
+            let at = |document: &Correction| {
+                polynomial(&document.zero, time.since(document.origin).days())
+            };
+            (at(held) - at(candidate)).abs()
+        })
+        .fold(0.0, f64::max)
+}
+
+/// Until when a document issued now may hold.
+fn valid_until(published: &Published, scene: &Scene<'_>) -> Timestamp {
+    let curved: f64 = published.weights.iter().skip(2).sum();
+    let part = if curved >= HAS_WEIGHT || published.degree >= 2 {
+        4
+    } else {
+        2
+    };
+    let horizon = horizon(&published.window, part);
+    let by_age = scene.now.plus(scene.setup.publish.max_age);
+    by_age.min(published.origin.plus(horizon))
+}
+
+/// 1/`part` of the time covered, but at least twice the mean time between pairs.
+fn horizon(window: &WindowSeen, part: i64) -> Duration {
+    let covered = window.to.since(window.from).0;
+    let steps = i64::try_from(window.pairs.saturating_sub(1).max(1)).unwrap_or(i64::MAX);
+    let between = covered / steps;
+    Duration((covered / part).max(between.saturating_mul(2)))
+}
+
+#[cfg(test)]
+#[allow(clippy::float_cmp, reason = "the expected values are exact in binary")]
+mod tests {
+    use super::*;
+
+    fn window(hours: i64, pairs: u64) -> WindowSeen {
+        WindowSeen {
+            from: Timestamp(0),
+            to: Timestamp(0).plus(Duration::from_seconds(hours * 3600)),
+            pairs,
+            segments: 0,
+            effective_sample_size: 0.0,
+            lag_one: 0.0,
+        }
+    }
+
+    #[test]
+    fn the_horizon_is_a_part_of_the_window_but_outlives_the_next_pair() {
+        let hours = |window: &WindowSeen, part| horizon(window, part).seconds() / 3600.0;
+        assert_eq!(hours(&window(80, 81), 4), 20.0);
+        assert_eq!(hours(&window(80, 81), 2), 40.0);
+        assert_eq!(hours(&window(1, 2), 4), 2.0);
+        assert_eq!(hours(&window(0, 1), 4), 0.0);
+    }
+
+    /// The growth of variance that the validity's limits are derived from: `Σ (2j+1) P_j(1+2f)²`
+    /// over `(p+1)²`.
+    #[test]
+    fn the_limits_of_validity_follow_from_the_price_of_degree() {
+        let growth = |degree: usize, ahead: f64| {
+            let x = 1.0 + 2.0 * ahead;
+            let legendre = [1.0, x, 0.5 * (3.0 * x * x - 1.0)];
+            let sum: f64 = (0..=degree)
+                .map(|j| (2 * j + 1) as f64 * legendre[j] * legendre[j])
+                .sum();
+            sum / ((degree + 1) * (degree + 1)) as f64
+        };
+        assert!((growth(1, 0.5) - 13.0 / 4.0).abs() < 1e-12);
+        assert!((growth(2, 0.25) - 49.0 / 9.0).abs() < 0.01);
+        assert!(growth(1, 0.5).sqrt() < 2.0);
+    }
+}

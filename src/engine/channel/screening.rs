@@ -1,0 +1,348 @@
+//! Second station: what may enter the fit.
+//!
+//! The gate looks at innovations (how far a pair is from what the fit expected), never at raw
+//! values, and measures them with a robust scale. Expected is zero, so the scale is 1.4826 · median
+//! |innovation|: about zero, not about the median, so that a fit lagging behind a steady drift
+//! widens the gate instead of throwing the drift away. Rejected pairs count in the scale, so that a
+//! sensor whose noise has grown is not shut out.
+//!
+//! ```text
+//!             `lock_out_after` rejections of one sign in a row
+//!   Watching ──────────────────────────────────────────────────▶ Locked out (lets everything in,
+//!            ◀──────────────────────────────────────────────────              learns anew)
+//!             as many fitting innovations in a row, or the window holds nothing from before
+//! ```
+
+use crate::setup::ChannelSetup;
+use crate::time::Timestamp;
+use serde::{Deserialize, Serialize};
+
+/// 1/Φ⁻¹(¾): makes the median absolute deviation of a normal variable its standard deviation (check
+/// value V26).
+pub(crate) const MAD_TO_SD: f64 = 1.482_602_218_505_602;
+/// Innovations that the scale looks back on.
+const RECENT: usize = 512;
+/// Fewest innovations that make a scale.
+const ENOUGH: usize = 16;
+
+/// The state of the station.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub(crate) struct Screen {
+    /// Latest standardised innovations; a ring once full.
+    recent: Vec<f64>,
+    /// Where the ring goes on.
+    place: usize,
+    /// Rejections in a row, negative for negative innovations.
+    run: i64,
+    locked: Option<Locked>,
+}
+
+/// The screen has stopped rejecting.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+struct Locked {
+    /// Phenomenon time of the pair at which it did.
+    since: Timestamp,
+    /// Fitting innovations in a row since then.
+    fits: u32,
+}
+
+/// What the screen says of a pair.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(crate) enum Verdict {
+    /// It enters.
+    Pass,
+    /// It does not: |innovation| and the threshold it exceeds, both in the channel's unit.
+    Reject { value: f64, threshold: f64 },
+    /// It enters because the screen has just locked out.
+    LocksOut { value: f64, threshold: f64 },
+}
+
+/// How far a pair lies from what the fit expects.
+#[derive(Clone, Copy, Debug)]
+pub(crate) struct Innovation {
+    /// Phenomenon time of the pair.
+    pub(crate) time: Timestamp,
+    /// Error minus expected error.
+    pub(crate) value: f64,
+    /// √(1/weight + leverage): its standard deviation in units of a full row's.
+    pub(crate) spread: f64,
+}
+
+impl Screen {
+    /// Whether it has stopped rejecting.
+    pub(crate) fn is_locked_out(&self) -> bool {
+        self.locked.is_some()
+    }
+
+    /// Judges a pair. `window_from`: oldest pair in the window, where known.
+    pub(crate) fn judge(
+        &mut self,
+        innovation: Innovation,
+        window_from: Option<Timestamp>,
+        setup: &ChannelSetup,
+    ) -> Verdict {
+        let standardised = innovation.value / innovation.spread;
+        let verdict = if self.locked.is_some() {
+            self.learn(standardised);
+            self.try_unlock(standardised, window_from, setup);
+            Verdict::Pass
+        } else {
+            let verdict = self.gate(innovation, setup);
+            self.learn(standardised);
+            verdict
+        };
+        if let Verdict::LocksOut { .. } = verdict {
+            *self = Self {
+                locked: Some(Locked {
+                    since: innovation.time,
+                    fits: 0,
+                }),
+                ..Self::default()
+            };
+        }
+        verdict
+    }
+
+    fn gate(&mut self, innovation: Innovation, setup: &ChannelSetup) -> Verdict {
+        let Some(scale) = self.scale(0.0, setup) else {
+            return Verdict::Pass;
+        };
+        let threshold = setup.screening.gate * scale * innovation.spread;
+        let value = innovation.value.abs();
+        if value <= threshold {
+            self.run = 0;
+            return Verdict::Pass;
+        }
+        let sign: i64 = if innovation.value > 0.0 { 1 } else { -1 };
+        self.run = if self.run.signum() == sign {
+            self.run + sign
+        } else {
+            sign
+        };
+        if self.run.unsigned_abs() >= u64::from(setup.screening.lock_out_after.max(1)) {
+            return Verdict::LocksOut { value, threshold };
+        }
+        Verdict::Reject { value, threshold }
+    }
+
+    /// Counts fitting innovations against the noise alone (the scale about the median): as long as
+    /// the fit is off by more than the noise allows, they do not fit.
+    fn try_unlock(
+        &mut self,
+        standardised: f64,
+        window_from: Option<Timestamp>,
+        setup: &ChannelSetup,
+    ) {
+        let centre = median(&mut self.recent.clone());
+        let scale = self.scale(centre, setup);
+        let Some(locked) = &mut self.locked else {
+            return;
+        };
+        let fits = scale.is_some_and(|scale| standardised.abs() <= setup.screening.gate * scale);
+        locked.fits = if fits { locked.fits + 1 } else { 0 };
+        let forgotten = window_from.is_some_and(|from| from > locked.since);
+        if locked.fits >= setup.screening.lock_out_after.max(1) || forgotten {
+            self.locked = None;
+            self.run = 0;
+        }
+    }
+
+    /// Robust scale of the recent innovations about `centre`, floored by what can't be smaller: the
+    /// resolution's q/√12 (GUM F.2.2.1) and the declared noise. `None` while there are too few, or
+    /// where they are all the same and nothing is declared: then there is no telling.
+    fn scale(&self, centre: f64, setup: &ChannelSetup) -> Option<f64> {
+        if self.recent.len() < ENOUGH {
+            return None;
+        }
+        let mut distances: Vec<f64> = self.recent.iter().map(|z| (z - centre).abs()).collect();
+        let robust = MAD_TO_SD * median(&mut distances);
+        let scale = robust
+            .max(setup.resolution / 12.0_f64.sqrt())
+            .max(setup.noise);
+        (scale > 0.0).then_some(scale)
+    }
+
+    fn learn(&mut self, standardised: f64) {
+        if self.recent.len() < RECENT {
+            self.recent.push(standardised);
+        } else {
+            self.recent[self.place] = standardised;
+            self.place = (self.place + 1) % RECENT;
+        }
+    }
+}
+
+/// Middle value (the upper of two); 0 of nothing.
+fn median(values: &mut [f64]) -> f64 {
+    if values.is_empty() {
+        return 0.0;
+    }
+    let half = values.len() / 2;
+    *values.select_nth_unstable_by(half, f64::total_cmp).1
+}
+
+#[cfg(test)]
+#[allow(clippy::float_cmp, reason = "the expected values are exact in binary")]
+mod tests {
+    use super::*;
+    use crate::channel::testing::channel_setup;
+
+    fn setup() -> ChannelSetup {
+        let mut setup = channel_setup();
+        setup.screening.gate = 5.0;
+        setup.screening.lock_out_after = 5;
+        setup
+    }
+
+    fn judge(screen: &mut Screen, value: f64) -> Verdict {
+        let innovation = Innovation {
+            time: Timestamp(0),
+            value,
+            spread: 1.0,
+        };
+        screen.judge(innovation, None, &setup())
+    }
+
+    /// A screen that has seen `count` innovations of ±1.
+    fn seasoned(count: i32) -> Screen {
+        let mut screen = Screen::default();
+        for index in 0..count {
+            let value = if index % 2 == 0 { 1.0 } else { -1.0 };
+            assert_eq!(judge(&mut screen, value), Verdict::Pass);
+        }
+        screen
+    }
+
+    /// Check value V26: 1/Φ⁻¹(¾).
+    #[test]
+    fn the_constant_of_the_mad_is_the_inverse_quartile() {
+        assert!((MAD_TO_SD * crate::quantile::normal(0.75) - 1.0).abs() < 1e-15);
+    }
+
+    /// Check value V27: median 10.1, MAD 0.1; 14.0 scores 26.3 (Hampel).
+    #[test]
+    fn hampel_score() {
+        let values = [10.1, 10.2, 9.9, 10.0, 10.1, 14.0, 10.2];
+        let centre = median(&mut values.clone());
+        assert_eq!(centre, 10.1);
+        let mut distances = values.map(|value| (value - centre).abs());
+        let scale = MAD_TO_SD * median(&mut distances);
+        assert!((scale / MAD_TO_SD - 0.1).abs() < 1e-12);
+        assert!(((14.0 - centre) / scale - 26.3).abs() < 0.05);
+        assert!((14.0 - centre) / scale > 3.0);
+    }
+
+    #[test]
+    fn nothing_is_rejected_before_there_is_a_scale() {
+        let mut screen = seasoned(15);
+        assert_eq!(judge(&mut screen, 1e6), Verdict::Pass);
+        assert!(matches!(judge(&mut screen, 1e6), Verdict::Reject { .. }));
+    }
+
+    #[test]
+    fn an_outlier_is_rejected_with_value_and_threshold() {
+        let mut screen = seasoned(64);
+        let Verdict::Reject { value, threshold } = judge(&mut screen, -9.0) else {
+            panic!("an outlier of nine scales must not pass");
+        };
+        assert_eq!(value, 9.0);
+        assert!((threshold - 5.0 * MAD_TO_SD).abs() < 1e-12);
+        assert_eq!(judge(&mut screen, 1.0), Verdict::Pass);
+    }
+
+    #[test]
+    fn leverage_and_weight_widen_the_threshold() {
+        let mut screen = seasoned(64);
+        let innovation = Innovation {
+            time: Timestamp(0),
+            value: 9.0,
+            spread: 2.0,
+        };
+        assert_eq!(screen.judge(innovation, None, &setup()), Verdict::Pass);
+    }
+
+    #[test]
+    fn rejections_of_both_signs_never_lock_out_and_the_scale_follows_the_noise() {
+        let mut screen = seasoned(128);
+        let mut rejected = 0;
+        for index in 0..300 {
+            let value = if index % 2 == 0 { 20.0 } else { -20.0 };
+            if matches!(judge(&mut screen, value), Verdict::Reject { .. }) {
+                rejected += 1;
+            }
+            assert!(!screen.is_locked_out());
+        }
+        assert!((120..=135).contains(&rejected), "{rejected}");
+    }
+
+    #[test]
+    fn five_of_one_sign_lock_out_and_fitting_ones_unlock() {
+        let mut screen = seasoned(64);
+        for _ in 0..4 {
+            assert!(matches!(judge(&mut screen, 30.0), Verdict::Reject { .. }));
+        }
+        assert!(matches!(judge(&mut screen, 30.0), Verdict::LocksOut { .. }));
+        // The fit has not followed yet: far off, with the old noise.
+        for index in 0..40 {
+            let noise = if index % 2 == 0 { 1.0 } else { -1.0 };
+            assert_eq!(judge(&mut screen, 28.0 + noise), Verdict::Pass);
+        }
+        assert!(screen.is_locked_out());
+        // Now it has.
+        for index in 0..5 {
+            assert!(screen.is_locked_out(), "{index}");
+            judge(&mut screen, if index % 2 == 0 { 1.0 } else { -1.0 });
+        }
+        assert!(!screen.is_locked_out());
+    }
+
+    #[test]
+    fn a_window_without_anything_from_before_unlocks() {
+        let mut screen = seasoned(64);
+        for _ in 0..5 {
+            judge(&mut screen, 30.0);
+        }
+        let later = Innovation {
+            time: Timestamp(2),
+            value: 30.0,
+            spread: 1.0,
+        };
+        screen.judge(later, Some(Timestamp(0)), &setup());
+        assert!(screen.is_locked_out());
+        screen.judge(later, Some(Timestamp(1)), &setup());
+        assert!(!screen.is_locked_out());
+    }
+
+    #[test]
+    fn a_stuck_sensor_without_declared_noise_is_not_shut_out() {
+        let mut screen = Screen::default();
+        for _ in 0..50 {
+            assert_eq!(judge(&mut screen, 0.0), Verdict::Pass);
+        }
+        assert_eq!(judge(&mut screen, 0.5), Verdict::Pass);
+    }
+
+    #[test]
+    fn resolution_and_noise_floor_the_scale() {
+        let mut with_floor = setup();
+        with_floor.resolution = 0.1;
+        let mut screen = Screen::default();
+        let innovation = |value| Innovation {
+            time: Timestamp(0),
+            value,
+            spread: 1.0,
+        };
+        for _ in 0..50 {
+            screen.judge(innovation(0.0), None, &with_floor);
+        }
+        let threshold = 5.0 * 0.1 / 12.0_f64.sqrt();
+        assert_eq!(
+            screen.judge(innovation(0.9 * threshold), None, &with_floor),
+            Verdict::Pass
+        );
+        assert!(matches!(
+            screen.judge(innovation(1.1 * threshold), None, &with_floor),
+            Verdict::Reject { threshold: told, .. } if (told - threshold).abs() < 1e-15
+        ));
+    }
+}

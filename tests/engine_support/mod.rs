@@ -16,6 +16,8 @@ use holdtrue_engine::setup::{
     ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped, WindowLength,
 };
 use holdtrue_engine::time::{Duration, Timestamp};
+use rand_chacha::rand_core::SeedableRng as _;
+use rand_distr::{Distribution as _, StandardNormal};
 
 /// 2026-01-01T00:00:00Z, the beginning of every test.
 pub const START: Timestamp = Timestamp(1_767_225_600_000_000_000);
@@ -156,4 +158,27 @@ pub fn feed<'a>(engine: &mut Engine, inputs: impl IntoIterator<Item = &'a Input>
         engine.step(input, &mut outputs);
     }
     outputs
+}
+
+/// Normal noise with the lag-1 correlation `rho` and standard deviation 1, from a seed.
+pub struct Noise {
+    random: rand_chacha::ChaCha12Rng,
+    rho: f64,
+    last: f64,
+}
+
+impl Noise {
+    /// White for `rho` = 0.
+    pub fn new(seed: u64, rho: f64) -> Self {
+        let mut random = rand_chacha::ChaCha12Rng::seed_from_u64(seed);
+        let last = StandardNormal.sample(&mut random);
+        Self { random, rho, last }
+    }
+
+    /// The next value.
+    pub fn draw(&mut self) -> f64 {
+        let fresh: f64 = StandardNormal.sample(&mut self.random);
+        self.last = self.rho * self.last + (1.0 - self.rho * self.rho).sqrt() * fresh;
+        self.last
+    }
 }

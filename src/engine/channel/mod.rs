@@ -37,7 +37,7 @@ use serde::{Deserialize, Serialize};
 /// A judgement is due when so small a part of the window is new since the last (one pair in windows
 /// up to this size, and always when a segment closed): merging the window's segments costs more
 /// than a pair's insertion.
-const JUDGED_PART: u64 = 1024;
+const JUDGED_PART: u64 = 2048;
 
 /// What a channel can see while it acts: its own setup, and what others share with it.
 pub(crate) struct Scene<'a> {
@@ -277,7 +277,7 @@ impl Channel {
             self.alarms
                 .screen(locked_out, innovation.value, scene, report);
         }
-        if self.history.unjudged > self.fit.window().rows() / JUDGED_PART {
+        if self.history.unjudged.saturating_mul(JUDGED_PART) >= self.fit.window().rows() {
             self.judge(scene, report);
         }
     }
@@ -289,8 +289,10 @@ impl Channel {
             time: pair.time,
             value: error - expected.error,
             spread: (1.0 / pair.weight + expected.leverage).sqrt(),
+            residual_sd: expected.residual_sd,
         };
-        (innovation.value.is_finite() && innovation.spread.is_finite()).then_some(innovation)
+        let numbers = [innovation.value, innovation.spread, innovation.residual_sd];
+        numbers.iter().all(|n| n.is_finite()).then_some(innovation)
     }
 
     /// Enters a pair into the fit; the rejection if it is older than the window.

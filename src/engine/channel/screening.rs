@@ -25,6 +25,11 @@ const RECENT: usize = 512;
 /// Fewest innovations that make a scale.
 const ENOUGH: usize = 16;
 
+/// The residual standard deviation of the fit may widen the gate to so many times the robust scale.
+/// In strongly correlated noise the latest innovations can all be small for a while; the whole
+/// window knows better. Bounded, since what slipped in before there was a scale inflates it.
+const RESIDUAL_REACH: f64 = 2.0;
+
 /// The state of the station.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Screen {
@@ -66,6 +71,8 @@ pub(crate) struct Innovation {
     pub(crate) value: f64,
     /// √(1/weight + leverage): its standard deviation in units of a full row's.
     pub(crate) spread: f64,
+    /// Residual standard deviation of the fit.
+    pub(crate) residual_sd: f64,
 }
 
 impl Screen {
@@ -104,9 +111,12 @@ impl Screen {
     }
 
     fn gate(&mut self, innovation: Innovation, setup: &ChannelSetup) -> Verdict {
-        let Some(scale) = self.scale(0.0, setup) else {
+        let Some(robust) = self.scale(0.0, setup) else {
             return Verdict::Pass;
         };
+        let scale = innovation
+            .residual_sd
+            .clamp(robust, RESIDUAL_REACH * robust);
         let threshold = setup.screening.gate * scale * innovation.spread;
         let value = innovation.value.abs();
         if value <= threshold {
@@ -199,6 +209,7 @@ mod tests {
             time: Timestamp(0),
             value,
             spread: 1.0,
+            residual_sd: 0.0,
         };
         screen.judge(innovation, None, &setup())
     }
@@ -257,6 +268,7 @@ mod tests {
             time: Timestamp(0),
             value: 9.0,
             spread: 2.0,
+            residual_sd: 0.0,
         };
         assert_eq!(screen.judge(innovation, None, &setup()), Verdict::Pass);
     }
@@ -306,6 +318,7 @@ mod tests {
             time: Timestamp(2),
             value: 30.0,
             spread: 1.0,
+            residual_sd: 0.0,
         };
         screen.judge(later, Some(Timestamp(0)), &setup());
         assert!(screen.is_locked_out());
@@ -331,6 +344,7 @@ mod tests {
             time: Timestamp(0),
             value,
             spread: 1.0,
+            residual_sd: 0.0,
         };
         for _ in 0..50 {
             screen.judge(innovation(0.0), None, &with_floor);

@@ -7,8 +7,10 @@
 //! - [`record`]: what the engine was told and said, on the disk
 //! - [`document`]: what is published
 //! - [`daemon`]: the loop around the engine
+//! - [`command`]: the command line
 
 pub mod broker;
+pub mod command;
 pub mod configuration;
 pub mod daemon;
 pub mod document;

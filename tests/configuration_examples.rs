@@ -37,20 +37,17 @@ fn every_example_is_accepted() {
 fn the_example_of_every_setting_misses_none() {
     let text = std::fs::read_to_string(example("every-setting.toml")).unwrap();
     // A setting that cannot stand beside the others is shown in a comment; take those in as well.
-    let shown: String = text
-        .lines()
-        .map(|line| match line.strip_prefix("# ") {
-            Some(setting)
-                if setting
-                    .split_once(" = ")
-                    .is_some_and(|(key, _)| is_key(key)) =>
-            {
-                setting
-            }
-            _ => line,
-        })
-        .map(|line| format!("{line}\n"))
-        .collect();
+    let uncovered = |line| match str::strip_prefix(line, "# ") {
+        Some(setting)
+            if setting
+                .split_once(" = ")
+                .is_some_and(|(key, _)| is_key(key)) =>
+        {
+            setting
+        }
+        _ => line,
+    };
+    let shown = text.lines().map(uncovered).collect::<Vec<_>>().join("\n");
     let table: toml::de::DeTable<'_> = toml::de::DeTable::parse(&shown).unwrap().into_inner();
     let mut present = std::collections::BTreeSet::new();
     collect("", &table, &mut present);
@@ -147,7 +144,13 @@ fn the_values_arrive_where_they_belong() {
             gated: true
         }
     );
+}
 
+#[test]
+fn the_channels_arrive_as_written() {
+    let text = std::fs::read_to_string(example("every-setting.toml")).unwrap();
+    let read = configuration::from_text(&text, "every-setting.toml", Path::new("x"), NOW).unwrap();
+    let setup = read.setup;
     let ph = &setup.channels[0];
     assert_eq!((ph.name.as_str(), ph.unit.as_str()), ("intake/ph-1", "pH"));
     assert_eq!(ph.reference, ReferenceId(0));

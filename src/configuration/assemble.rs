@@ -2,7 +2,8 @@
 
 use super::draft::{Draft, position};
 use super::problem::{Problem, Problems, Severity};
-use super::reader::{Section, Source};
+use super::reader::Section;
+use super::source::Source;
 use super::{Configuration, channel, crosscheck, name, reference, service};
 use holdtrue_engine::setup::{ChannelId, Clock, ReferenceId, Setup};
 use holdtrue_engine::time::Timestamp;
@@ -33,8 +34,8 @@ pub fn load(path: &Path) -> Result<Configuration, Problems> {
     from_text(text, &file, folder, now())
 }
 
-/// The same for the text of a file: `file` is its name in messages, `folder` where the files that it
-/// names are sought, `now` tells which certificates have expired.
+/// The same for the text of a file: `file` is its name in messages, `folder` where the files that
+/// it names are sought, `now` tells which certificates have expired.
 ///
 /// # Errors
 /// Everything that is wrong with it, warnings included.
@@ -104,7 +105,6 @@ fn read<'source>(
         &mut draft,
     );
     top.finish();
-    let broker = broker?;
     let Draft {
         references,
         channels,
@@ -120,7 +120,7 @@ fn read<'source>(
         channels,
     };
     Some(Configuration {
-        broker: broker.broker,
+        broker: broker.broker?,
         record,
         page,
         setup,

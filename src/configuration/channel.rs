@@ -3,8 +3,9 @@
 use super::draft::{Draft, Wire};
 use super::place::{self, Place};
 use super::quantity;
-use super::reader::{Found, Section};
+use super::reader::Section;
 use super::reference::{self, Beside};
+use super::source::Found;
 use crate::payload::{Format, Target, Use};
 use holdtrue_engine::setup::{
     AlarmSetup, ChannelSetup, Criterion, FitSetup, PublishSetup, ReferenceId, ScreeningSetup,
@@ -47,6 +48,12 @@ const ALARM_DEADBAND: f64 = 1.0;
 pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draft: &mut Draft) {
     let id = draft.next_channel();
     let unit = section.need_text("unit", "the unit of indications, references and limits");
+    if let Some(empty) = unit.as_ref().filter(|unit| unit.value.trim().is_empty()) {
+        section.wrong(
+            empty,
+            "is empty; write the unit, or \"1\" for a pure number",
+        );
+    }
     let indication = indication(section, name, readings_clock, draft);
     let beside = Beside {
         channel: id,

@@ -1,8 +1,9 @@
-//! What only shows when all entries are known: places used twice, loops, references not good enough.
+//! What only shows when all entries are known: places used twice, loops, weak references.
 
 use super::draft::{Draft, Wire};
 use super::name;
-use super::reader::{Found, Section, Source};
+use super::reader::Section;
+use super::source::{Found, Source};
 use crate::payload::{Format, Tables, Target, Use};
 use holdtrue_engine::setup::{ChannelSetup, ReferenceKind};
 use std::collections::BTreeMap;

@@ -1,6 +1,6 @@
 //! What has been read so far, while references and channels still refer to each other by name.
 
-use super::reader::Found;
+use super::source::Found;
 use crate::payload::Use;
 use holdtrue_engine::setup::{ChannelId, ChannelSetup, ReferenceId, ReferenceSetup};
 use holdtrue_engine::time::Timestamp;

@@ -1,10 +1,11 @@
 //! One TOML file becomes one [`Configuration`], or a list of everything that is wrong with it.
 //!
-//! Parsed once into types that cannot hold a bad value; nobody checks again. Not here: what the engine does with a
-//! setup, and how payloads are read.
+//! Parsed once into types that cannot hold a bad value; nobody checks again. Not here: what the
+//! engine does with a setup, and how payloads are read.
 //!
 //! Modules in reading order:
 //! - [`problem`]: what can be wrong, with line and column
+//! - `source`: the file's text and what was noted while it was read
 //! - `reader`: the TOML tree with positions; notices keys that nobody asked for
 //! - `quantity`: durations and window lengths, "30 d" and "1024 pairs"
 //! - `name`: names of nodes, channels and references, topics and wildcard filters
@@ -27,6 +28,7 @@ mod quantity;
 mod reader;
 mod reference;
 mod service;
+mod source;
 
 use crate::payload::Tables;
 use holdtrue_engine::setup::Setup;

@@ -22,7 +22,7 @@ pub(super) fn check_name(name: &str) -> Result<(), String> {
         |letter: char| letter.is_alphanumeric() || matches!(letter, '-' | '_' | '.' | '/');
     match name.chars().find(|letter| !allowed(*letter)) {
         Some(letter) => Err(format!(
-            "\"{name}\" contains {letter:?}; allowed are letters, digits, - _ . and / between levels"
+            "\"{name}\" contains {letter:?}; allowed are letters, digits, - _ . and / for levels"
         )),
         None => Ok(()),
     }

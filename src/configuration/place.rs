@@ -1,7 +1,8 @@
 //! Where a value stands: a topic, and a place in its payload (plain, JSON pointer, SenML name).
 
 use super::name;
-use super::reader::{Found, Section};
+use super::reader::Section;
+use super::source::Found;
 use crate::payload::{Format, JsonPlace, Pointer, Scalar, SenmlPlace, Status, TimeUnit};
 
 /// A topic and a place in its payload.
@@ -170,7 +171,7 @@ fn refuse_strangers(section: &Section<'_>, format: &Format) {
     let (strange, because): (&[&'static str], _) = match format {
         Format::Plain => (
             &["time", "sequence", "status", "sum", "senml_unit"],
-            "needs `value` (a JSON pointer) or `senml` beside it: a plain number carries nothing else",
+            "needs `value` (a JSON pointer) or `senml` beside it: a plain number carries no more",
         ),
         Format::Json(_) => (
             &["sum", "senml_unit"],

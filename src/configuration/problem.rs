@@ -28,7 +28,7 @@ pub struct Problem {
     pub message: String,
 }
 
-/// Everything that is wrong with one file: at least one error, with the warnings among them, in file order.
+/// Everything that is wrong with one file: at least one error, and the warnings, in file order.
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub struct Problems {
     /// The file's name as it was given.

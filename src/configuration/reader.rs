@@ -1,11 +1,12 @@
-//! The TOML tree with positions: typed access that notes every problem and goes on, and notices keys
-//! that nobody asked for.
+//! One table of the TOML tree with positions: typed access that notes every problem and goes on,
+//! and notices keys that nobody asked for.
 //!
 //! A getter that finds something unusable notes the problem and answers as if the key were absent,
 //! so that reading goes on and all problems are found at once. Whoever reads must look at
 //! [`Source::into_problems`] before using what was read.
 
-use super::problem::{Problem, Severity};
+use super::problem::Severity;
+use super::source::{Found, Source};
 use crate::payload::Scalar;
 use holdtrue_engine::time::Duration;
 use std::cell::RefCell;
@@ -16,27 +17,6 @@ use toml::de::{DeTable, DeValue};
 
 /// Two keys at least this much alike (Jaro-Winkler, 0 … 1) are taken for a slip of the pen.
 pub(super) const ALIKE: f64 = 0.82;
-
-/// The text of one file and everything noted while reading it.
-pub(super) struct Source<'text> {
-    text: &'text str,
-    noted: RefCell<Vec<Noted>>,
-    asked: RefCell<BTreeSet<String>>,
-}
-
-/// A problem, and whether it is only that something was not there.
-struct Noted {
-    problem: Problem,
-    missing: bool,
-}
-
-/// A value with the place where it stands.
-#[derive(Clone, Debug)]
-pub(super) struct Found<T> {
-    pub(super) value: T,
-    pub(super) span: Range<usize>,
-    pub(super) key: String,
-}
 
 /// One table of the file.
 pub(super) struct Section<'source> {
@@ -50,66 +30,6 @@ pub(super) struct Section<'source> {
     /// Where to look for a key that this table does not set.
     defaults: Option<&'source Section<'source>>,
     known: RefCell<BTreeSet<&'static str>>,
-}
-
-impl<'text> Source<'text> {
-    pub(super) fn new(text: &'text str) -> Self {
-        Self {
-            text,
-            noted: RefCell::default(),
-            asked: RefCell::default(),
-        }
-    }
-
-    pub(super) fn error(&self, span: &Range<usize>, key: &str, message: impl Into<String>) {
-        self.note(Severity::Error, span, key, message.into(), false);
-    }
-
-    pub(super) fn warn(&self, span: &Range<usize>, key: &str, message: impl Into<String>) {
-        self.note(Severity::Warning, span, key, message.into(), false);
-    }
-
-    fn note(
-        &self,
-        severity: Severity,
-        at: &Range<usize>,
-        key: &str,
-        message: String,
-        missing: bool,
-    ) {
-        let problem = Problem::at(severity, self.text, at, key, message);
-        self.noted.borrow_mut().push(Noted { problem, missing });
-    }
-
-    /// Every key that the parser asked for, without counts: `channel.window`.
-    pub(super) fn asked(&self) -> BTreeSet<String> {
-        self.asked.borrow().clone()
-    }
-
-    /// Everything noted, in file order, each thing once (a default is read by every channel).
-    /// In a file with broken syntax what is missing may stand in the broken part: left out.
-    pub(super) fn into_problems(self, broken: bool) -> Vec<Problem> {
-        let noted = self.noted.into_inner().into_iter();
-        let mut problems: Vec<Problem> = noted
-            .filter(|noted| !(broken && noted.missing))
-            .map(|noted| noted.problem)
-            .collect();
-        problems.sort_by_key(|problem| (problem.line, problem.column));
-        let mut seen = BTreeSet::new();
-        problems.retain(|p| seen.insert((p.line, p.column, p.key.clone(), p.message.clone())));
-        problems
-    }
-}
-
-impl<T> Found<T> {
-    /// The same place with another value.
-    pub(super) fn with<U>(&self, value: U) -> Found<U> {
-        Found {
-            value,
-            span: self.span.clone(),
-            key: self.key.clone(),
-        }
-    }
 }
 
 impl<'source> Section<'source> {
@@ -428,10 +348,7 @@ impl<'source> Section<'source> {
     /// The value of a key, from here or from the defaults.
     fn value(&self, key: &'static str) -> Option<Found<&'source DeValue<'source>>> {
         self.known.borrow_mut().insert(key);
-        self.source
-            .asked
-            .borrow_mut()
-            .insert(joined(&self.kind, key));
+        self.source.ask(joined(&self.kind, key));
         match self.table.get(key) {
             Some(value) => Some(Found {
                 value: value.get_ref(),

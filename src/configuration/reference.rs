@@ -2,7 +2,8 @@
 
 use super::draft::{Draft, Wire};
 use super::place::{self, Place};
-use super::reader::{Found, Section};
+use super::reader::Section;
+use super::source::Found;
 use crate::payload::{Target, Use, instant};
 use holdtrue_engine::setup::{ChannelId, ReferenceId, ReferenceKind, ReferenceSetup, Stamped};
 use holdtrue_engine::time::{Duration, Timestamp};
@@ -70,7 +71,10 @@ fn kind(
     beside: Option<&Beside<'_>>,
     draft: &mut Draft,
 ) -> ReferenceKind {
-    let constant = section.number("constant");
+    let constant = section.place("constant");
+    let value = section
+        .number("constant")
+        .map_or(0.0, |found| found.value + 0.0);
     let gate = section.section("valid_when");
     // A named reference stands in no channel, so it cannot tell who is the other members.
     let group = beside.and_then(|beside| group(section, beside, draft));
@@ -89,16 +93,13 @@ fn kind(
             "belongs to a constant; a measured reference has `status`",
         );
     }
-    if let Some(constant) = constant {
+    if constant.is_some() {
         known_keys_of_a_place(section);
         let gated = gate.is_some();
         if let Some(gate) = gate {
             self::gate(&gate, name, id, beside, draft);
         }
-        return ReferenceKind::Constant {
-            value: constant.value + 0.0,
-            gated,
-        };
+        return ReferenceKind::Constant { value, gated };
     }
     if let Some(members) = group {
         known_keys_of_a_place(section);
@@ -175,8 +176,8 @@ fn group(section: &Section<'_>, beside: &Beside<'_>, draft: &Draft) -> Option<Ve
     }
     if members.len() < OTHERS_MIN {
         let message = format!(
-            "{} other members of {}; a median needs at least {OTHERS_MIN}, because with fewer \
-             nobody can tell which one is wrong. Name more channels or another reference",
+            "{} other than {} itself; a median needs at least {OTHERS_MIN}, because with fewer \
+             nobody can tell which one is wrong; name more channels or another reference",
             members.len(),
             beside.channel_name
         );

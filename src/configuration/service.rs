@@ -1,7 +1,8 @@
 //! The tables about the daemon itself: `[node]`, `[broker]`, `[record]`, `[page]`.
 
 use super::name;
-use super::reader::{Found, Section};
+use super::reader::Section;
+use super::source::Found;
 use super::{Broker, ClientCertificate, Login, Page, Protocol, Record, Tls};
 use holdtrue_engine::setup::Clock;
 use holdtrue_engine::time::Duration;
@@ -22,8 +23,8 @@ const SESSION_EXPIRY: Duration = Duration::from_seconds(7 * 86_400);
 const COMMIT: Duration = Duration::from_seconds(1);
 /// Default of `receive_maximum`.
 const RECEIVE_MAXIMUM: u16 = 200;
-/// Default of `max_packet`, bytes: above a payload of 1 MiB, so that such a one still arrives and is
-/// counted instead of being withheld by the broker.
+/// Default of `max_packet`, bytes: above a payload of 1 MiB, so that such a one still arrives and
+/// is counted instead of being withheld by the broker.
 const MAX_PACKET: u32 = 2 * 1024 * 1024;
 /// Default of `max_payload`, bytes.
 const MAX_PAYLOAD: u32 = 256 * 1024;
@@ -53,19 +54,24 @@ pub(super) fn node(top: &Section<'_>) -> (String, Clock) {
 
 /// `[broker]` with its wildcard filters and the largest payload that is looked at.
 pub(super) struct BrokerTable {
-    pub(super) broker: Broker,
+    /// `None` if it has no usable address.
+    pub(super) broker: Option<Broker>,
     pub(super) subscribe: Vec<Found<String>>,
     pub(super) max_payload: u32,
 }
 
 /// `[broker]`. Files are sought from the configuration's own folder.
-pub(super) fn broker(top: &Section<'_>, node: &str, folder: &Path) -> Option<BrokerTable> {
+pub(super) fn broker(top: &Section<'_>, node: &str, folder: &Path) -> BrokerTable {
     let Some(section) = top.section("broker") else {
         top.missing(
             "broker",
             "name the broker: [broker] url = \"mqtt://127.0.0.1:1883\"",
         );
-        return None;
+        return BrokerTable {
+            broker: None,
+            subscribe: Vec::new(),
+            max_payload: MAX_PAYLOAD,
+        };
     };
     let url = section.need_text("url", "as \"mqtt://127.0.0.1:1883\", or mqtts:// for TLS");
     let address = url.as_ref().and_then(|found| address(&section, found));
@@ -94,8 +100,7 @@ pub(super) fn broker(top: &Section<'_>, node: &str, folder: &Path) -> Option<Bro
             format!("must be below max_packet, which is {max_packet}"),
         );
     }
-    let address = address?;
-    let broker = Broker {
+    let broker = address.map(|address| Broker {
         host: address.host,
         port: address.port,
         tls,
@@ -110,13 +115,13 @@ pub(super) fn broker(top: &Section<'_>, node: &str, folder: &Path) -> Option<Bro
         session_expiry: standard(session_expiry),
         receive_maximum: receive_maximum.map_or(RECEIVE_MAXIMUM, |found| found.value),
         max_packet,
-    };
+    });
     let max_payload = max_payload.map_or(MAX_PAYLOAD.min(max_packet / 2), |found| found.value);
-    Some(BrokerTable {
+    BrokerTable {
         broker,
         subscribe,
         max_payload,
-    })
+    }
 }
 
 /// `[record]`.
@@ -152,17 +157,15 @@ pub(super) fn page(top: &Section<'_>) -> Option<Page> {
         section.source().warn(&found.span, &found.key, message);
     }
     let found = listen?;
-    match found.value.parse() {
-        Ok(listen) => Some(Page { listen }),
-        Err(_) => {
-            let message = format!(
-                "\"{}\" is not an address with port, as \"127.0.0.1:8437\"",
-                found.value
-            );
-            section.wrong(&found, message);
-            None
-        }
-    }
+    let Ok(listen) = found.value.parse() else {
+        let message = format!(
+            "\"{}\" is not an address with port, as \"127.0.0.1:8437\"",
+            found.value
+        );
+        section.wrong(&found, message);
+        return None;
+    };
+    Some(Page { listen })
 }
 
 /// A broker's address.

@@ -5,23 +5,18 @@
 //! that must be understood, an unknown version, unreadable base fields. Else faults stay with the
 //! record, as far as it is wanted.
 
-use super::fault::{Fault, excerpt};
-use super::intake::{Reader, Told};
-use super::json::{broken, is_number, number, text_of, wrong_type};
-use super::literal::scaled_integer;
-use super::tables::{Scalar, SenmlPlace, Status, Target};
+mod record;
+
+use crate::payload::fault::{Fault, excerpt};
+use crate::payload::intake::{Reader, Told};
+use crate::payload::json::{self, broken};
+use crate::payload::literal::{self, scaled_integer};
+use crate::payload::tables::{Scalar, SenmlPlace, Status, Target};
 use holdtrue_engine::event::RefusedReason;
 use holdtrue_engine::time::Timestamp;
-use serde::de::{Deserialize, Deserializer, IgnoredAny, MapAccess, Visitor};
-use serde_json::value::RawValue;
+use record::{Record, label, nanoseconds};
 use std::borrow::Cow;
-use std::fmt;
 
-/// From here on a time is absolute, below it counts from now (RFC 8428 section 4.5.3): 2²⁸ s, in
-/// nanoseconds.
-const ABSOLUTE_FROM: i128 = (1 << 28) * 1_000_000_000;
-/// Decimal places of a second that are kept.
-const NANOSECOND_DIGITS: i32 = 9;
 /// The version of RFC 8428, and the default.
 const VERSION: i128 = 10;
 /// Version 10 with the one registered feature, secondary units (RFC 9100, from memory); units are
@@ -32,37 +27,6 @@ const VERSION_WITH_SECONDARY_UNITS: i128 = 26;
 #[derive(Clone, Debug, Default)]
 pub(super) struct Pack {
     uses: Vec<(Target, SenmlPlace)>,
-}
-
-/// The fields of one record as pieces of text, in the order of [`LABELS`].
-#[derive(Clone, Copy, Default)]
-struct Record<'text> {
-    fields: [Option<&'text str>; LABELS.len()],
-    /// An unknown label that must be understood to use the pack.
-    strange: bool,
-}
-
-/// The labels of RFC 8428 section 4 (table 1), without update time, which changes no value.
-const LABELS: [&str; 14] = [
-    "bn", "bt", "bu", "bv", "bs", "bver", "n", "u", "v", "vs", "vb", "vd", "s", "t",
-];
-
-/// Positions in [`LABELS`].
-mod label {
-    pub(super) const BN: usize = 0;
-    pub(super) const BT: usize = 1;
-    pub(super) const BU: usize = 2;
-    pub(super) const BV: usize = 3;
-    pub(super) const BS: usize = 4;
-    pub(super) const BVER: usize = 5;
-    pub(super) const N: usize = 6;
-    pub(super) const U: usize = 7;
-    pub(super) const V: usize = 8;
-    pub(super) const VS: usize = 9;
-    pub(super) const VB: usize = 10;
-    pub(super) const VD: usize = 11;
-    pub(super) const S: usize = 12;
-    pub(super) const T: usize = 13;
 }
 
 /// Base fields in force.
@@ -179,38 +143,6 @@ impl<'text> Base<'text> {
     }
 }
 
-impl<'text> Record<'text> {
-    fn text(&self, label: usize) -> Result<Option<Cow<'text, str>>, Fault> {
-        let Some(raw) = self.fields[label] else {
-            return Ok(None);
-        };
-        text_of(raw)
-            .map(Some)
-            .ok_or_else(|| wrong_type(raw, "a text", LABELS[label]))
-    }
-
-    fn number(&self, label: usize) -> Result<Option<f64>, Fault> {
-        self.fields[label]
-            .map(|raw| number(raw, LABELS[label]))
-            .transpose()
-    }
-
-    /// Base time plus time; absolute, or counted from now (RFC 8428 sections 4.5.3 and 4.6).
-    fn time(&self, base: i128, received: Timestamp) -> Result<Timestamp, Fault> {
-        let own = self.fields[label::T].map_or(Ok(0), |raw| nanoseconds(raw, "t"))?;
-        let sum = base + own;
-        let absolute = if sum >= ABSOLUTE_FROM {
-            sum
-        } else {
-            i128::from(received.0) + sum
-        };
-        i64::try_from(absolute).map(Timestamp).map_err(|_| {
-            let detail = format!("{absolute} ns is outside the years 1678 to 2261");
-            Fault::new(RefusedReason::BadTime, detail)
-        })
-    }
-}
-
 impl Resolved<'_> {
     /// Whether this is the record of that name: base name and name, one behind the other.
     fn is(&self, name: &str) -> bool {
@@ -293,7 +225,7 @@ impl Resolved<'_> {
     fn holds_one_of(&self, wanted: &[Scalar]) -> Result<bool, Fault> {
         let fields = &self.record.fields;
         if let Some(raw) = fields[label::VS].or(fields[label::VB]) {
-            return Ok(super::json::holds_one_of(raw, wanted));
+            return Ok(json::holds_one_of(raw, wanted));
         }
         let value = self.value()?.ok_or_else(|| {
             let detail = format!("the record {}{} holds no value", self.base_name, self.name);
@@ -335,20 +267,8 @@ fn finite_sum(base: Option<f64>, own: Option<f64>, base_alone: bool) -> Result<O
     if sum.is_finite() {
         Ok(Some(sum))
     } else {
-        Err(super::literal::not_finite(&sum.to_string()))
+        Err(literal::not_finite(&sum.to_string()))
     }
-}
-
-fn nanoseconds(raw: &str, place: &str) -> Result<i128, Fault> {
-    if !is_number(raw) {
-        return Err(wrong_type(raw, "a number", place));
-    }
-    scaled_integer(raw, NANOSECOND_DIGITS).ok_or_else(|| {
-        Fault::new(
-            RefusedReason::BadTime,
-            format!("{} at {place} is no time", excerpt(raw)),
-        )
-    })
 }
 
 /// Broken JSON, or JSON that is no pack.
@@ -359,69 +279,5 @@ fn unsound(text: &str, error: &serde_json::Error) -> Fault {
             Fault::new(RefusedReason::WrongType, detail)
         }
         _ => broken(text, error),
-    }
-}
-
-impl<'text> Deserialize<'text> for Record<'text> {
-    fn deserialize<D: Deserializer<'text>>(value: D) -> Result<Self, D::Error> {
-        value.deserialize_map(Fields)
-    }
-}
-
-/// Reads a record's fields as pieces of text.
-struct Fields;
-
-impl<'text> Visitor<'text> for Fields {
-    type Value = Record<'text>;
-
-    fn expecting(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
-        out.write_str("a SenML record (an object)")
-    }
-
-    fn visit_map<A: MapAccess<'text>>(self, mut map: A) -> Result<Record<'text>, A::Error> {
-        let mut record = Record::default();
-        while let Some(label) = map.next_key::<Label>()? {
-            match label {
-                Label::Known(index) => {
-                    record.fields[index] = Some(map.next_value::<&RawValue>()?.get());
-                }
-                Label::Other { essential } => {
-                    record.strange |= essential;
-                    map.next_value::<IgnoredAny>()?;
-                }
-            }
-        }
-        Ok(record)
-    }
-}
-
-/// A label of a record.
-enum Label {
-    /// Position in [`LABELS`].
-    Known(usize),
-    /// An extension; `essential` when it ends in `_`.
-    Other { essential: bool },
-}
-
-impl<'text> Deserialize<'text> for Label {
-    fn deserialize<D: Deserializer<'text>>(key: D) -> Result<Self, D::Error> {
-        struct Name;
-        impl Visitor<'_> for Name {
-            type Value = Label;
-
-            fn expecting(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
-                out.write_str("a label")
-            }
-
-            fn visit_str<E>(self, name: &str) -> Result<Label, E> {
-                Ok(match LABELS.iter().position(|label| *label == name) {
-                    Some(index) => Label::Known(index),
-                    None => Label::Other {
-                        essential: name.ends_with('_'),
-                    },
-                })
-            }
-        }
-        key.deserialize_str(Name)
     }
 }

@@ -1,0 +1,100 @@
+//! The command line: one file per subcommand.
+//!
+//! Modules in reading order:
+//! - [`check`]: everything that is wrong with a configuration
+//! - `run`: the daemon, until it is told to stop
+//! - `log`: what an operator reads while the daemon runs
+
+pub mod check;
+
+mod log;
+mod run;
+
+use clap::{Parser, Subcommand};
+use std::path::PathBuf;
+use std::process::ExitCode;
+
+/// Help of `--log`.
+const LOG_HELP: &str = "Which log lines are shown: \"debug\", or \"info,holdtrue::broker=debug\" \
+    [default: the variable RUST_LOG, else \"info\"]";
+
+/// How a command ended; each has its exit code.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum Ending {
+    /// 0: done.
+    Done,
+    /// 1: done, but the answer is no.
+    No,
+    /// 2: wrong usage or configuration.
+    Wrong,
+    /// 3: the outside failed: broker, disk.
+    Failed,
+}
+
+impl From<Ending> for ExitCode {
+    fn from(ending: Ending) -> Self {
+        Self::from(match ending {
+            Ending::Done => 0,
+            Ending::No => 1,
+            Ending::Wrong => 2,
+            Ending::Failed => 3,
+        })
+    }
+}
+
+/// Keeps deployed sensors true between calibrations: fits the drift of each sensor against its
+/// reference and publishes corrections with uncertainty, and alarms, over MQTT.
+///
+/// It advises. It is no part of a safety function.
+#[derive(Debug, Parser)]
+#[command(name = "holdtrue", version, arg_required_else_help = true)]
+pub struct Arguments {
+    /// How log lines look on standard error.
+    #[arg(long, global = true, value_name = "FORM", default_value = "text")]
+    log_format: log::Format,
+    // A doc comment would need backticks, which a terminal shows.
+    #[arg(long, global = true, value_name = "FILTER", help = LOG_HELP)]
+    log: Option<String>,
+    #[command(subcommand)]
+    command: Command,
+}
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    /// Run the daemon until it is told to stop (Ctrl-C, SIGTERM).
+    #[command(
+        after_help = "Example:\n  holdtrue run --config /etc/holdtrue/holdtrue.toml\n\n\
+        Exit code: 0 stopped when told to, 2 configuration refused, 3 the outside failed."
+    )]
+    Run {
+        /// The configuration file.
+        #[arg(long, value_name = "FILE")]
+        config: PathBuf,
+    },
+    /// Say everything that is wrong with a configuration, with line and column.
+    #[command(
+        after_help = "Example:\n  holdtrue check --config /etc/holdtrue/holdtrue.toml\n\n\
+        Exit code: 0 sound (warnings may be shown), 2 refused."
+    )]
+    Check {
+        /// The configuration file.
+        #[arg(long, value_name = "FILE")]
+        config: PathBuf,
+        /// One JSON object on standard output instead of text.
+        #[arg(long)]
+        json: bool,
+    },
+}
+
+/// Does what the command line says.
+#[must_use]
+pub fn run(arguments: Arguments) -> Ending {
+    if let Err(message) = log::set_up(arguments.log_format, arguments.log.as_deref()) {
+        eprintln!("error: {message}");
+        return Ending::Wrong;
+    }
+    match arguments.command {
+        Command::Run { config } => run::run(&config),
+        Command::Check { config, json } => check::run(&config, json, &mut std::io::stdout()),
+    }
+}

@@ -7,16 +7,25 @@
 //! - [`segment`]: rows that enter and leave together
 //! - [`window`]: the sliding window
 //! - [`criterion`]: information criteria as plain formulas
+//! - [`correlation`]: what a correlated sample is worth
+//! - `between`: segments of the window, each taken as one row
+//! - `degree`: when the announced degree is raised and lowered
+//! - [`mean`]: the published mean over degrees and its uncertainty
 
 pub mod basis;
+mod between;
+pub mod correlation;
 pub mod criterion;
+mod degree;
 pub mod factor;
 mod kernel;
+pub mod mean;
 pub mod segment;
 pub mod window;
 
 use crate::event::{CriterionValues, Evidence, WindowSeen};
 use crate::fit::basis::{Columns, MAX_INFLUENCES, MAX_TIME_DEGREE};
+use crate::fit::degree::DegreeState;
 use crate::fit::window::{Cut, Window, WindowRow};
 use crate::setup::{FitSetup, WindowLength};
 use crate::time::Timestamp;
@@ -27,8 +36,7 @@ use serde::{Deserialize, Serialize};
 pub struct Fit {
     setup: FitSetup,
     window: Window,
-    /// The announced degree.
-    degree: u8,
+    degree: DegreeState,
 }
 
 /// Largest magnitude of an error that the fit takes: its square, times any weight and number of
@@ -121,7 +129,7 @@ impl Fit {
         Self {
             setup,
             window: Window::new(Columns::time(highest), cut),
-            degree: setup.forced_degree.map_or(0, |forced| forced.min(highest)),
+            degree: DegreeState::new(setup.forced_degree.map_or(0, |forced| forced.min(highest))),
         }
     }
 
@@ -164,18 +172,7 @@ impl Fit {
     /// rows than coefficients, at enough different times.
     #[must_use]
     pub fn predict(&self, time: Timestamp) -> Option<Prediction> {
-        self.window.predict(usize::from(self.degree), time)
-    }
-
-    /// Judges the degree after a segment closed. `may_raise` is false while the screen is locked
-    /// out or the reference is suspect. At most one step up or down.
-    pub fn decide(&mut self, _may_raise: bool) -> Option<Change> {
-        unimplemented!()
-    }
-
-    /// The mean over degrees as of the newest pair; `None` before there are enough rows.
-    #[must_use]
-    pub fn published(&self) -> Option<Published> {
-        unimplemented!()
+        self.window
+            .predict(usize::from(self.degree.announced), time)
     }
 }

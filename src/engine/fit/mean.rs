@@ -1,0 +1,312 @@
+//! What is published: not one degree's curve but the mean over degrees, with its uncertainty.
+//!
+//! While a slow drift waits to be recognised, the curve of the announced degree is wrong and its
+//! band does not say so; and at a change of degree it jumps. The mean over degrees 0 … maximum with
+//! Akaike weights moves over gradually, and the disagreement of the degrees enters its uncertainty
+//! (Buckland, Burnham & Augustin, *Biometrics* 53 (1997) 603; from memory).
+//!
+//! All rows count, those of the open segment too: the newest say most about now. Segments weigh as
+//! in the between-segments problem, so with equal counts this *is* the plain fit of all rows. The
+//! variance comes from the scatter of the segments' means about the largest model, which holds the
+//! correlation inside segments, inflated by the correlation between them.
+//!
+//! **Few rows.** None for fewer than two. With fewer than 8 closed segments the mean is degree 0's.
+//! With fewer than three, the scatter of means says nothing yet and that of all rows stands in,
+//! inflated as for the highest correlation that is ever assumed: wide, but a number.
+
+use crate::event::{CriterionValues, WindowSeen};
+use crate::fit::between::{Between, Groups};
+use crate::fit::correlation::{Caution, cautious, effective_sample_size, variance_inflation};
+use crate::fit::degree::Judged;
+use crate::fit::factor::{Factor, PerColumn};
+use crate::fit::{Fit, Published};
+use crate::math;
+use crate::time::Timestamp;
+use nalgebra::DMatrix;
+
+/// How cautiously r₁ is taken for the uncertainty.
+const PUBLISHING: Caution = Caution {
+    bias: 1.0,
+    spread: 1.0,
+};
+/// Closed segments from which on their scatter is used.
+const LEAST_SEGMENTS: usize = 3;
+/// ln of the largest ratio of two residual sums that enters a weight: a part in 1e300.
+const LARGEST_LN_RATIO: f64 = 690.0;
+
+/// The plain fit of one degree to all rows: ordinary least squares and nothing else.
+///
+/// Its uncertainty takes rows for independent. It is what textbooks and certificates state; the
+/// published mean is what a correction should rest on.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Plain {
+    /// Coefficients of ê(t), constant first, t in days from the chosen origin.
+    pub coefficients: Vec<f64>,
+    /// s²(ΦᵀWΦ)⁻¹, s² = RSS/(n − p) (JCGM 100:2008, H.3.3 for a line).
+    pub covariance: Vec<Vec<f64>>,
+    /// s.
+    pub residual_sd: f64,
+    /// RSS.
+    pub residual_sum_of_squares: f64,
+    /// n − p.
+    pub degrees_of_freedom: f64,
+}
+
+/// The scatter that the uncertainty rests on.
+struct Scatter {
+    /// Variance of a row of weight 1.
+    variance: f64,
+    degrees_of_freedom: f64,
+    /// (1 + r)/(1 − r).
+    inflation: f64,
+    /// n_eff.
+    effective: f64,
+}
+
+/// One degree's share in the mean.
+struct Member {
+    weight: f64,
+    coefficients: PerColumn,
+    /// R⁻¹ of its columns.
+    root: DMatrix<f64>,
+}
+
+impl Fit {
+    /// The plain fit of `degree` to all rows in the window, t counted from `origin`; `None` with no
+    /// more rows than coefficients, with fewer different times, or beyond the window's degree.
+    #[must_use]
+    pub fn plain(&self, degree: u8, origin: Timestamp) -> Option<Plain> {
+        let columns = usize::from(degree) + 1;
+        if columns > self.window.columns().time_degree() + 1 {
+            return None;
+        }
+        let degrees_of_freedom = self.window.rows() as f64 - columns as f64;
+        if degrees_of_freedom < 1.0 {
+            return None;
+        }
+        let mut factor = self.window.total().clone();
+        self.count_days_from(origin, &mut factor);
+        let rss = factor.nested_rss()[columns - 1];
+        let mut coefficients = factor.solve(columns)?;
+        coefficients[0] += self.window.level();
+        let variance = rss / degrees_of_freedom;
+        let root = factor.covariance_factor(columns)?;
+        Some(Plain {
+            coefficients: normalised(&coefficients.as_slice()[..columns]),
+            covariance: rows_of(&(&root * root.transpose() * variance)),
+            residual_sd: variance.sqrt(),
+            residual_sum_of_squares: rss,
+            degrees_of_freedom,
+        })
+    }
+
+    /// The mean over degrees as of the newest pair; `None` before there are two rows.
+    ///
+    /// With a forced degree the mean is that degree's curve alone, or, until there are rows for it,
+    /// the highest one's that they bear.
+    #[must_use]
+    pub fn published(&self) -> Option<Published> {
+        let origin = self.window.newest()?;
+        let from = self.window.oldest()?;
+        if self.window.rows() < 2 {
+            return None;
+        }
+        let forced = self.setup.forced_degree;
+        let highest = usize::from(forced.unwrap_or(self.setup.max_degree))
+            .min(self.window.columns().time_degree());
+        let groups = Groups::of(&self.window);
+        let between = Between::of(&groups.closed, highest, forced.is_some());
+        let (mut factor, level) = reweighted(&groups, between.as_ref())?;
+        self.count_days_from(origin, &mut factor);
+        let judged = between.map(Judged::of);
+        let scatter = self.scatter(judged.as_ref());
+        let largest = match (&judged, forced) {
+            (_, Some(_)) => self.bearable(highest),
+            (Some(judged), None) => judged.between.largest,
+            (None, None) => 0,
+        };
+        let members = members(
+            &factor,
+            largest,
+            forced.is_some(),
+            &scatter,
+            judged.as_ref(),
+        )?;
+        let (mut coefficients, covariance) = mixed(&members, largest + 1, &scatter);
+        coefficients[0] += level;
+        Some(Published {
+            origin,
+            degree: self.degree.announced,
+            weights: members.iter().map(|member| member.weight).collect(),
+            coefficients: normalised(&coefficients.as_slice()[..=largest]),
+            covariance: rows_of(&covariance),
+            degrees_of_freedom: scatter.degrees_of_freedom,
+            residual_sd: self.rows_sd(largest),
+            criterion: match (&judged, forced) {
+                (Some(judged), None) => judged.criterion_values(self.setup.criterion),
+                _ => CriterionValues {
+                    name: String::new(),
+                    values: Vec::new(),
+                },
+            },
+            window: WindowSeen {
+                from,
+                to: origin,
+                pairs: self.window.rows(),
+                segments: u32::try_from(groups.closed.len()).unwrap_or(u32::MAX),
+                effective_sample_size: scatter.effective,
+                lag_one: judged.map_or(0.0, |judged| judged.between.lag_one),
+            },
+        })
+    }
+
+    /// Moves a factor in the window's frame to days from `origin`.
+    fn count_days_from(&self, origin: Timestamp, factor: &mut Factor) {
+        let frame = self.window.frame();
+        let time_columns = self.window.columns().time_degree() + 1;
+        factor.move_origin(0, time_columns, frame.scaled(origin), frame.unit_days());
+    }
+
+    /// The highest degree ≤ `highest` that all rows together bear with a degree of freedom left.
+    fn bearable(&self, highest: usize) -> usize {
+        let rows = usize::try_from(self.window.rows()).unwrap_or(usize::MAX);
+        let columns = self
+            .window
+            .total()
+            .independent()
+            .min(rows.saturating_sub(1));
+        highest.min(columns.saturating_sub(1))
+    }
+
+    /// √(RSS/(n − p)) of the plain fit of this degree, or of the highest one that the rows bear.
+    fn rows_sd(&self, degree: usize) -> f64 {
+        let degree = self.bearable(degree);
+        let freedom = self.window.rows() as f64 - (degree + 1) as f64;
+        (self.window.total().nested_rss()[degree] / freedom.max(1.0)).sqrt()
+    }
+
+    fn scatter(&self, judged: Option<&Judged>) -> Scatter {
+        let segments = judged.map_or(0, |judged| judged.between.segments);
+        if let Some(Judged { between, .. }) = judged
+            && segments >= LEAST_SEGMENTS
+            && between.degrees_of_freedom() >= 1.0
+        {
+            let r = cautious(between.lag_one, between.largest + 1, segments, PUBLISHING);
+            return Scatter {
+                variance: between.variance(),
+                degrees_of_freedom: between.degrees_of_freedom(),
+                inflation: variance_inflation(r),
+                effective: effective_sample_size(segments as f64, r),
+            };
+        }
+        let sd = self.rows_sd(0);
+        let r = cautious(1.0, 1, segments, PUBLISHING);
+        Scatter {
+            variance: sd * sd,
+            degrees_of_freedom: self.window.rows() as f64 - 1.0,
+            inflation: variance_inflation(r),
+            effective: effective_sample_size(segments.max(1) as f64, r),
+        }
+    }
+}
+
+/// All groups merged, each weighted as the between-segments problem says, at the level returned.
+fn reweighted(groups: &Groups<'_>, between: Option<&Between>) -> Option<(Factor, f64)> {
+    let newest = groups.open.as_ref().or(groups.closed.last())?;
+    let level = newest.level;
+    let mut merged = Factor::new(newest.factor.columns());
+    for group in groups.closed.iter().chain(&groups.open) {
+        let weight = group.factor.weight_sum();
+        let multiplier = between.map_or(1.0, |between| between.weighting.multiplier(weight));
+        let mut factor = group.factor.clone().into_owned();
+        factor.multiply(multiplier.sqrt());
+        merged.merge_level(&factor, level - group.level);
+    }
+    Some((merged, level))
+}
+
+/// The degrees 0 … `largest` with their Akaike weights
+/// `w_k ∝ exp(½ Σ_{j≤k} (n_eff ln(RSS_{j−1}/RSS_j) − 2))`, or all weight on `largest` if `forced`;
+/// `None` if the rows are not at enough different times.
+fn members(
+    factor: &Factor,
+    largest: usize,
+    forced: bool,
+    scatter: &Scatter,
+    judged: Option<&Judged>,
+) -> Option<Vec<Member>> {
+    let mut logarithms = vec![0.0; largest + 1];
+    if let (false, Some(Judged { between, .. })) = (forced, judged) {
+        for k in 1..=largest {
+            let (lower, higher) = (between.known_rss(k - 1), between.known_rss(k));
+            let ln_ratio = if higher > 0.0 {
+                math::ln(lower / higher).min(LARGEST_LN_RATIO)
+            } else {
+                0.0
+            };
+            logarithms[k] = logarithms[k - 1] + 0.5 * (scatter.effective * ln_ratio - 2.0);
+        }
+    }
+    let highest = logarithms.iter().copied().fold(f64::MIN, f64::max);
+    let mut weights: Vec<f64> = logarithms
+        .iter()
+        .enumerate()
+        .map(|(k, logarithm)| match forced {
+            true if k < largest => 0.0,
+            true => 1.0,
+            false => math::exp(logarithm - highest),
+        })
+        .collect();
+    let sum: f64 = weights.iter().sum();
+    for weight in &mut weights {
+        *weight /= sum;
+    }
+    weights
+        .into_iter()
+        .enumerate()
+        .map(|(k, weight)| {
+            Some(Member {
+                weight,
+                coefficients: factor.solve(k + 1)?,
+                root: factor.covariance_factor(k + 1)?,
+            })
+        })
+        .collect()
+}
+
+/// `β̄ = Σ w_k β_k` and `C = Σ w_k (C_k + (β_k − β̄)(β_k − β̄)ᵀ)`, so that u²(t) = φᵀCφ is
+/// `Σ w_k (u_k² + (ê_k − ê)²)` at every t (Burnham & Anderson, *Model Selection and Multimodel
+/// Inference*, 2nd ed., §4.3, revised estimator; from memory).
+fn mixed(members: &[Member], columns: usize, scatter: &Scatter) -> (PerColumn, DMatrix<f64>) {
+    let mut mean = PerColumn::zeros();
+    for member in members {
+        mean += member.coefficients * member.weight;
+    }
+    let variance = scatter.variance * scatter.inflation;
+    let mut covariance = DMatrix::zeros(columns, columns);
+    for member in members {
+        let own = &member.root * member.root.transpose() * (variance * member.weight);
+        let size = own.nrows();
+        let apart = member.coefficients - mean;
+        for i in 0..columns {
+            for j in 0..columns {
+                covariance[(i, j)] += member.weight * apart[i] * apart[j];
+                if i < size && j < size {
+                    covariance[(i, j)] += own[(i, j)];
+                }
+            }
+        }
+    }
+    (mean, covariance)
+}
+
+/// The same numbers, −0 as 0.
+fn normalised(values: &[f64]) -> Vec<f64> {
+    values.iter().map(|value| value + 0.0).collect()
+}
+
+fn rows_of(matrix: &DMatrix<f64>) -> Vec<Vec<f64>> {
+    (0..matrix.nrows())
+        .map(|i| (0..matrix.ncols()).map(|j| matrix[(i, j)] + 0.0).collect())
+        .collect()
+}

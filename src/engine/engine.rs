@@ -57,11 +57,12 @@ impl Engine {
     }
 
     /// When the engine next wants a tick; `None` when nothing waits for time, and always with
-    /// [`Clock::Readings`].
+    /// [`Clock::Readings`]. On whole seconds, so that many deadlines cost at most one recorded tick
+    /// a second.
     #[must_use]
     pub fn next_tick(&self) -> Option<Timestamp> {
         match self.fleet.clock() {
-            Clock::Live => self.fleet.next_wake(),
+            Clock::Live => self.fleet.next_wake().map(Timestamp::up_to_second),
             Clock::Readings => None,
         }
     }

@@ -19,6 +19,7 @@ use crate::setup::{ChannelId, Clock, ReferenceId, Setup};
 use crate::standing::{AlarmStanding, ReferenceStanding, Standing};
 use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
+use crate::wording::readable;
 use adopt::Routes;
 use pulse::Pulse;
 use serde::{Deserialize, Serialize};
@@ -301,6 +302,9 @@ impl Fleet {
     }
 
     fn refuse_reading(&self, reading: &Reading, reason: RefusedReason, report: &mut Report<'_>) {
+        if reason == RefusedReason::OutOfRange {
+            report.outputs.extend(self.fate_out_of_range(reading));
+        }
         let subject = self.subject(reading.source);
         let at = self.notice_time(reading.received);
         report.refuse(at, subject, reason, || {
@@ -311,7 +315,7 @@ impl Fleet {
             format!(
                 "{} {} {unit} at {}",
                 self.name(subject),
-                reading.value,
+                readable(reading.value),
                 reading.phenomenon
             )
         });

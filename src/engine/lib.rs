@@ -17,7 +17,7 @@
 //! - `alarm`: the state machine of one alarm
 //! - [`fleet`]: routing, references shared by channels, now
 //! - [`engine`]: the value that takes inputs and appends outputs; `report`, `notice`, [`counters`]:
-//!   how it says things
+//!   how it says things; `wording`: numbers in texts
 //! - [`standing`]: how things stand, for the `state` document
 
 mod alarm;
@@ -36,3 +36,4 @@ pub mod setup;
 pub mod standing;
 pub mod time;
 mod track;
+mod wording;

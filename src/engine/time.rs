@@ -38,6 +38,16 @@ impl Timestamp {
         Self(self.0.saturating_sub(duration.0))
     }
 
+    /// The first whole second at or after this instant; saturates like [`Timestamp::plus`].
+    #[must_use]
+    pub fn up_to_second(self) -> Self {
+        let past = self.0.rem_euclid(NANOS_PER_SECOND);
+        match past {
+            0 => self,
+            _ => Self(self.0.saturating_add(NANOS_PER_SECOND - past)),
+        }
+    }
+
     /// The time from `earlier` to `self`; negative when `self` comes first.
     #[must_use]
     pub fn since(self, earlier: Self) -> Duration {
@@ -109,6 +119,20 @@ fn civil(days: i64) -> (i64, i64, i64) {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn whole_seconds_round_up() {
+        for (time, second) in [
+            (0, 0),
+            (1, 1),
+            (999_999_999, 1),
+            (1_000_000_000, 1),
+            (-1, 0),
+        ] {
+            let rounded = Timestamp(time).up_to_second();
+            assert_eq!(rounded, Timestamp(second * NANOS_PER_SECOND));
+        }
+    }
 
     /// RFC 3339, 5.8 (first and second example, in UTC), and the corners of leap years.
     #[test]

@@ -27,6 +27,7 @@ use crate::setup::{ChannelId, ChannelSetup, ReferenceSetup};
 use crate::standing::{AlarmStanding, ChannelStanding};
 use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
+use crate::wording::readable;
 use conditions::ChannelAlarms;
 use judgement::{Judgement, Residuals};
 use pairing::{Found, Pair, Pairing};
@@ -133,7 +134,10 @@ impl Channel {
         scene: &Scene<'_>,
         report: &mut Report<'_>,
     ) {
-        self.alarms.heard(scene, report);
+        // A row from the record is no sign of life.
+        if scene.indications[scene.id.0 as usize].newest() == Some(sample.time) {
+            self.alarms.heard(scene, report);
+        }
         if scene.setup.corrected_values
             && let Some(corrected) = self.publishing.correct(sample, scene)
         {
@@ -356,8 +360,14 @@ impl Channel {
             let subject = Subject::Channel(scene.id);
             report.refuse(scene.now, subject, rejection.reason, || {
                 format!(
-                    "{}: pair at {} with indication {} and reference {} {}",
-                    scene.setup.name, pair.time, pair.indication, pair.reference, scene.setup.unit
+                    "{}: pair at {} with indication {} and reference {} {} ({} above {})",
+                    scene.setup.name,
+                    pair.time,
+                    readable(pair.indication),
+                    readable(pair.reference),
+                    scene.setup.unit,
+                    readable(rejection.value),
+                    readable(rejection.threshold)
                 )
             });
         }

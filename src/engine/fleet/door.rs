@@ -2,7 +2,7 @@
 //! be used.
 
 use super::{Fleet, longest};
-use crate::event::{Gate, Reading, RefusedReason, Source};
+use crate::event::{Gate, Output, PairFate, Reading, RefusedReason, Rejection, Source};
 use crate::setup::{Clock, ReferenceKind};
 use crate::time::{Duration, Timestamp};
 
@@ -106,6 +106,38 @@ impl Fleet {
             return Err(RefusedReason::Future);
         }
         Ok(now)
+    }
+
+    /// The fate of an indication outside its range, where the reference value is known without
+    /// waiting: a constant that holds at its instant.
+    pub(super) fn fate_out_of_range(&self, reading: &Reading) -> Option<Output> {
+        let Source::Indication(channel) = reading.source else {
+            return None;
+        };
+        let setup = &self.setup.channels[channel.0 as usize];
+        let id = setup.reference.0 as usize;
+        let ReferenceKind::Constant { value, gated } = self.setup.references[id].kind else {
+            return None;
+        };
+        if gated && !self.references[id].gate.is_open(reading.phenomenon) {
+            return None;
+        }
+        let (lowest, highest) = setup.screening.range?;
+        Some(Output::Pair(PairFate {
+            channel,
+            phenomenon: reading.phenomenon,
+            indication: reading.value,
+            reference: value + 0.0,
+            rejected: Some(Rejection {
+                reason: RefusedReason::OutOfRange,
+                value: reading.value,
+                threshold: if reading.value < lowest {
+                    lowest
+                } else {
+                    highest
+                },
+            }),
+        }))
     }
 
     fn admit_range(&self, reading: &Reading) -> Result<(), RefusedReason> {

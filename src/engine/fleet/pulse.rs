@@ -54,13 +54,16 @@ impl Pulse {
         report: &mut Report<'_>,
     ) {
         let phenomenon = phenomenon.min(now);
-        if let (Some(arrival), Some(limit)) = (self.arrival, routes.quiet_after)
-            && routes.several_sources
-            && now.since(arrival) > limit
-        {
+        let beyond = |earlier: Option<Timestamp>, later: Timestamp| {
+            let limit = routes.quiet_after.filter(|_| routes.several_sources)?;
+            earlier.filter(|&earlier| later.since(earlier) > limit)
+        };
+        // Either nothing arrived, or nothing was sampled: a backlog with a hole in it.
+        let silent_from = beyond(self.arrival, now).or(beyond(self.newest, phenomenon));
+        if let Some(from) = silent_from {
             self.resumed = Some(phenomenon);
             report.notice(now, Subject::Node, "resumed", || {
-                format!("nothing arrived from any source between {arrival} and {now}; resumed")
+                format!("nothing from any source between {from} and {now}; resumed")
             });
         }
         self.arrival = Some(now);

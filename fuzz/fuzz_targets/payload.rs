@@ -1,4 +1,4 @@
-//! Any bytes on any kind of topic become inputs with finite values, and every message leaves a trace.
+//! Any bytes on any kind of topic become inputs with finite values; every message leaves a trace.
 
 #![no_main]
 

@@ -6,7 +6,7 @@
 //!
 //! Modules in reading order:
 //! - [`tables`]: what the configuration says about topics
-//! - [`pointer`]: JSON pointers
+//! - [`mod@pointer`]: JSON pointers
 //! - [`intake`]: one message in, input events out
 //! - `plain`, `json`, `senml`: the three formats
 //! - `pick`: all wanted values of a JSON text in one pass

@@ -5,6 +5,7 @@
 use crate::document::Document;
 use crate::record::{Batch, Numbered};
 use std::collections::BTreeMap;
+use std::ops::Bound;
 
 /// How many documents may wait. When full, no message is taken until the broker has taken some;
 /// what time alone causes meanwhile (alarms, notices) then pushes out an older document of its
@@ -74,7 +75,9 @@ impl Outbox {
 
     /// The oldest document that may go and was not handed over.
     pub(super) fn next_to_hand(&self) -> Option<(i64, &Document)> {
-        let (number, document) = self.waiting.range(self.handed + 1..=self.released).next()?;
+        let new = (Bound::Excluded(self.handed), Bound::Included(self.released));
+        let (number, document) =
+            (self.handed < self.released).then(|| self.waiting.range(new).next())??;
         Some((*number, document))
     }
 
@@ -117,5 +120,94 @@ impl Outbox {
     /// How many were pushed out while it was full.
     pub(super) fn pushed_out(&self) -> u64 {
         self.pushed_out
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::record::Record;
+
+    fn document(topic: &str, retain: bool) -> Document {
+        Document {
+            topic: topic.to_owned(),
+            payload: vec![b'1'],
+            retain,
+            expires: None,
+        }
+    }
+
+    fn batch() -> (tempfile::TempDir, Batch) {
+        let folder = tempfile::tempdir().unwrap();
+        let batch = Record::open(folder.path()).unwrap().batch();
+        (folder, batch)
+    }
+
+    #[test]
+    fn nothing_goes_before_its_release_and_all_again_after_a_loss() {
+        let (_folder, mut batch) = batch();
+        let mut outbox = Outbox::new(Vec::new());
+        assert!(outbox.next_to_hand().is_none());
+        outbox.add(document("a", true), &mut batch);
+        assert!(outbox.next_to_hand().is_none(), "not on the disk yet");
+        outbox.release();
+        outbox.add(document("b", true), &mut batch);
+        assert_eq!(outbox.next_to_hand().unwrap().0, 1);
+        outbox.set_handed(1);
+        assert!(outbox.next_to_hand().is_none());
+        outbox.release();
+        assert_eq!(outbox.next_to_hand().unwrap().1.topic, "b");
+        outbox.hand_again();
+        assert_eq!(outbox.next_to_hand().unwrap().0, 1);
+        outbox.remove(1, &mut batch).unwrap();
+        assert_eq!(outbox.next_to_hand().unwrap().0, 2);
+        assert!(outbox.remove(1, &mut batch).is_none());
+    }
+
+    #[test]
+    fn a_full_outbox_pushes_out_the_older_of_the_topic_or_the_oldest_passing_one() {
+        let (_folder, mut batch) = batch();
+        let mut outbox = Outbox::new(Vec::new());
+        outbox.add(document("kept", true), &mut batch);
+        outbox.add(document("alarm", true), &mut batch);
+        for _ in 2..WAITING_MAX {
+            outbox.add(document("notice", false), &mut batch);
+        }
+        assert!(outbox.is_full());
+        outbox.add(document("alarm", true), &mut batch);
+        outbox.add(document("notice", false), &mut batch);
+        assert_eq!((outbox.len(), outbox.pushed_out()), (WAITING_MAX, 2));
+        outbox.release();
+        let first: Vec<i64> = std::iter::from_fn(|| {
+            let number = outbox.next_to_hand()?.0;
+            outbox.set_handed(number);
+            Some(number)
+        })
+        .take(2)
+        .collect();
+        assert_eq!(
+            first,
+            [1, 4],
+            "the old alarm (2) and the oldest notice (3) are gone"
+        );
+    }
+
+    #[test]
+    fn numbers_go_on_after_a_restart() {
+        let (_folder, mut batch) = batch();
+        let kept = Numbered {
+            number: 41,
+            document: document("a", true),
+        };
+        let mut outbox = Outbox::new(vec![kept]);
+        assert_eq!(
+            outbox.next_to_hand().unwrap().0,
+            41,
+            "it is on the disk already"
+        );
+        outbox.add(document("b", true), &mut batch);
+        outbox.release();
+        outbox.set_handed(41);
+        assert_eq!(outbox.next_to_hand().unwrap().0, 42);
     }
 }

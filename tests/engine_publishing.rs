@@ -163,6 +163,21 @@ fn documents_come_by_step_or_by_age() {
     assert!(steady < 200, "{steady} documents for 2000 steady pairs");
 }
 
+/// A stream without any noise leaves u at nothing but rounding; that is no reason to publish.
+#[test]
+fn rounding_is_no_news() {
+    let mut setup = channel("a", 0);
+    setup.publish.max_age = span(86_400.0);
+    let rounded = |index: u32| (f64::from(index) * 0.7 + 0.3) - f64::from(index) * 0.7;
+    let errors: Vec<f64> = (0..1000).map(rounded).collect();
+    let (_, outputs) = run(against_zero(setup), &errors);
+    let documents = corrections(&outputs);
+    // A young window holds a document for a part of its own length only: about twenty renewals.
+    assert!(documents.len() < 40, "{} documents", documents.len());
+    let last = documents.last().expect("one was issued");
+    assert!((last.correction + 0.3).abs() < 1e-12);
+}
+
 /// Each document stays within `step`·u of what the fit says while it is in force: here seen as the
 /// jump between one document and the next, at the moment of change.
 #[test]

@@ -29,6 +29,9 @@ const APPLY_FROM: f64 = 2.0;
 const DROP_BELOW: f64 = 1.0;
 /// A degree above 1 has weight from here on.
 const HAS_WEIGHT: f64 = 0.01;
+/// Part of a correction whose change is rounding, not news: keeps a noiseless stream (u = 0) from
+/// issuing a document per pair.
+const NEGLIGIBLE: f64 = 1e-9;
 /// Instants at which two polynomials are compared over the validity; polynomials of degree ≤ 5
 /// can't hide a difference of note between nine of them.
 const COMPARED: u32 = 8;
@@ -234,7 +237,8 @@ impl Publishing {
             return true;
         }
         let u = candidate.standard_uncertainty;
-        let step = scene.setup.publish.step * u;
+        let size = held.correction.abs().max(candidate.correction.abs());
+        let step = (scene.setup.publish.step * u).max(NEGLIGIBLE * size);
         (u - held.standard_uncertainty).abs() > step || greatest_difference(held, candidate) > step
     }
 }

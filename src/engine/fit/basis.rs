@@ -67,6 +67,7 @@ impl Columns {
     }
 
     /// How many columns Φ has.
+    #[inline]
     #[must_use]
     pub fn count(self) -> usize {
         self.time_degree() + 1 + usize::from(self.span_powers) + usize::from(self.influences)
@@ -74,6 +75,7 @@ impl Columns {
 
     /// Writes φ at scaled time `u` with regressor `x` and influence quantities into the first
     /// [`Columns::count`] places of `row`.
+    #[inline]
     pub fn fill(self, u: f64, x: f64, influences: [f64; MAX_INFLUENCES], row: &mut [f64]) {
         let time_columns = self.time_degree() + 1;
         let span_columns = usize::from(self.span_powers);
@@ -168,6 +170,7 @@ impl Frame {
 
     /// Scaled time of an instant.
     #[must_use]
+    #[inline]
     pub fn scaled(self, time: Timestamp) -> f64 {
         time.since(self.anchor).0 as f64 * power_of_two(-i16::from(self.unit_exponent))
     }

@@ -19,12 +19,6 @@ pub const MAX_COLUMNS: usize = MAX_WIDTH - 1;
 /// One number per column, zero beyond the factor's own.
 pub type PerColumn = SVector<f64, MAX_COLUMNS>;
 
-/// A column whose part not explained by the columns before it is smaller than this share of its
-/// length counts as dependent on them. Rounding leaves about 1e-15 of a dependent column; 1e-12 is
-/// far above that, and a direction known to 1e-12 of its length would bear no digits that anyone
-/// could use.
-const DEPENDENT: f64 = 1e-12;
-
 /// The upper-triangular factor of the augmented matrix [Φ | e] of a set of rows, with the number of
 /// rows.
 ///
@@ -119,6 +113,7 @@ impl Factor {
     }
 
     /// Rows that it summarises.
+    #[inline]
     #[must_use]
     pub fn rows(&self) -> u64 {
         self.rows
@@ -163,10 +158,24 @@ impl Factor {
     ///
     /// # Panics
     /// If the row's length isn't `columns() + 1`.
-    pub fn insert(&mut self, row: &mut [f64]) {
+    pub fn insert(&mut self, row: &[f64]) {
         debug_assert!(row.iter().all(|x| x.is_finite()), "rows are finite");
         with_width!(self.width, insert_slice, self.packed.as_mut_slice(), row);
         self.rows += 1;
+    }
+
+    /// Takes one row like [`Factor::insert`], and so does `other`, but with `other_error` as its
+    /// last entry. The same bits as two insertions, in less time.
+    ///
+    /// # Panics
+    /// If the widths differ, or the row's length isn't `columns() + 1`.
+    #[inline]
+    pub(crate) fn insert_both(&mut self, other: &mut Self, row: &[f64], other_error: f64) {
+        debug_assert!(row.iter().all(|x| x.is_finite()), "rows are finite");
+        let (mine, theirs) = (self.packed.as_mut_slice(), other.packed.as_mut_slice());
+        with_width!(self.width, insert_both, mine, theirs, row, other_error);
+        self.rows += 1;
+        other.rows += 1;
     }
 
     /// Takes all rows of `other`.
@@ -188,12 +197,17 @@ impl Factor {
             return;
         }
         let (mine, theirs) = (self.packed.as_mut_slice(), other.packed.as_slice());
-        if other.rows == 1 {
+        if other.is_one_row() {
             with_width!(self.width, insert_first_row, mine, theirs, level);
         } else {
             with_width!(self.width, merge, mine, theirs, level);
         }
         self.rows += other.rows;
+    }
+
+    /// Whether it is one row, standing in R's first and nothing below.
+    fn is_one_row(&self) -> bool {
+        self.rows == 1 && self.packed[0] > 0.0
     }
 
     /// Counts errors from a level higher by `level`: e becomes e − level. Exact for every residual
@@ -215,28 +229,21 @@ impl Factor {
     /// # Panics
     /// If the columns are not all columns of Φ.
     pub fn move_origin(&mut self, first: usize, count: usize, shift: f64, scale: f64) {
-        let width = usize::from(self.width);
-        assert!(first + count < width, "columns of Φ");
-        let occupied = if self.rows == 1 { 1 } else { first + count };
-        for i in 0..occupied {
-            let from = i.max(first);
-            let start = row_start(width, i) + from - i;
-            let row = &mut self.packed.as_mut_slice()[start..start + first + count - from];
-            // row[n] is column `first + skipped + n`; columns before it are zero in this row.
-            let skipped = from - first;
-            for pass in 1..count {
-                for power in (pass.max(skipped + 1)..count).rev() {
-                    row[power - skipped] -= shift * row[power - skipped - 1];
-                }
-            }
-            let mut power_of_scale = 1.0;
-            for power in 0..count {
-                if power >= skipped {
-                    row[power - skipped] *= power_of_scale;
-                }
-                power_of_scale *= scale;
-            }
-        }
+        assert!(first + count < usize::from(self.width), "columns of Φ");
+        let rows = if self.is_one_row() {
+            1
+        } else {
+            usize::from(self.width)
+        };
+        let packed = self.packed.as_mut_slice();
+        with_width!(
+            self.width,
+            move_origin,
+            packed,
+            rows,
+            (first, count),
+            (shift, scale)
+        );
     }
 
     /// Multiplies every row by `root_weight` = √w > 0.
@@ -274,20 +281,12 @@ impl Factor {
     /// columns are independent, see [`Factor::independent`].
     ///
     /// `RSS_k = Σ_{i>k} R_ie²`, as the last column below row k is what no longer can be explained.
+    #[inline]
     #[must_use]
     pub fn nested_rss(&self) -> PerColumn {
-        let width = usize::from(self.width);
-        let mut rss = PerColumn::zeros();
-        let mut sum = 0.0;
-        for i in (1..width).rev() {
-            let left = self.packed[row_start(width, i) + width - 1 - i];
-            sum += left * left;
-            rss[i - 1] = sum;
-        }
-        for k in width - 1..MAX_COLUMNS {
-            rss[k] = rss[width - 2];
-        }
-        rss
+        let mut rss = [0.0; MAX_COLUMNS];
+        with_width!(self.width, nested_rss, self.packed.as_slice(), &mut rss);
+        PerColumn::from(rss)
     }
 
     /// How many leading columns are independent of one another in these rows: less than `columns()`
@@ -301,13 +300,7 @@ impl Factor {
 
     /// Whether column j keeps a part of its own beside the columns before it.
     fn is_independent(&self, j: usize) -> bool {
-        let width = usize::from(self.width);
-        let mut largest = 0.0_f64;
-        for i in 0..=j {
-            largest = largest.max(self.packed[row_start(width, i) + j - i].abs());
-        }
-        let own = self.packed[row_start(width, j)];
-        own > DEPENDENT * largest
+        with_width!(self.width, independent, self.packed.as_slice(), j)
     }
 
     /// Least-squares coefficients of the model made of the first `columns` columns, in this
@@ -315,22 +308,13 @@ impl Factor {
     ///
     /// # Panics
     /// If the factor has fewer columns.
+    #[inline]
     #[must_use]
     pub fn solve(&self, columns: usize) -> Option<PerColumn> {
         assert!(columns <= self.columns(), "columns of Φ");
-        if !(0..columns).all(|j| self.is_independent(j)) {
-            return None;
-        }
-        let mut x = PerColumn::zeros();
+        let mut x = [0.0; MAX_COLUMNS];
         let packed = self.packed.as_slice();
-        with_width!(
-            self.width,
-            back_substitute,
-            packed,
-            columns,
-            x.as_mut_slice()
-        );
-        Some(x)
+        with_width!(self.width, solve, packed, columns, &mut x).then(|| PerColumn::from(x))
     }
 
     /// φᵀ(RᵀR)⁻¹φ for the model of the first `phi.len()` columns: the variance of the fit at φ in
@@ -388,7 +372,7 @@ impl Factor {
                 row[place] = self.entry(i, j);
             }
             row[chosen.len()] = self.entry(i, self.columns());
-            narrow.insert(&mut row[..=chosen.len()]);
+            narrow.insert(&row[..=chosen.len()]);
         }
         narrow.rows = self.rows;
         narrow
@@ -411,7 +395,7 @@ mod tests {
     fn factor_of(rows: &[[f64; 4]]) -> Factor {
         let mut factor = Factor::new(3);
         for row in rows {
-            factor.insert(&mut row.clone());
+            factor.insert(row);
         }
         factor
     }
@@ -518,7 +502,7 @@ mod tests {
         let even = factor_of(&rows()).choose(&[0, 2]);
         let mut direct = Factor::new(2);
         for row in rows() {
-            direct.insert(&mut [row[0], row[2], row[3]]);
+            direct.insert(&[row[0], row[2], row[3]]);
         }
         assert_close(&even, &direct, 1e-14);
     }

@@ -56,4 +56,10 @@ impl Segment {
     pub fn slice(&self) -> i64 {
         self.slice
     }
+
+    /// Widens its times to a row at `time`.
+    pub(crate) fn reach(&mut self, time: Timestamp) {
+        self.first = self.first.min(time);
+        self.last = self.last.max(time);
+    }
 }

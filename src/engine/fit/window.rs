@@ -382,20 +382,29 @@ impl Window {
             self.total_level = row.error;
         }
         let mut scaled = [0.0; MAX_WIDTH];
-        let width = self.columns.count() + 1;
-        scale_row(self.columns, self.frame, row, self.total_level, &mut scaled);
-        self.total.insert(&mut scaled[..width]);
-        self.insert_segment(row, number);
+        let count = self.columns.count();
+        let root = scale_row(self.columns, self.frame, row, &mut scaled);
+        scaled[count] = (row.error - self.total_level) * root;
+        if self.open.is_none() {
+            self.open = Some(self.new_segment(row, number));
+        }
+        if let Some(open) = &mut self.open {
+            let error = (row.error - open.level) * root;
+            self.total
+                .insert_both(&mut open.factor, &scaled[..=count], error);
+            open.reach(row.time);
+        }
+        self.newest = self.newest.max(Some(row.time));
     }
 
     /// The row enters the open segment only.
     fn insert_segment(&mut self, row: &WindowRow, number: i64) {
-        let mut open = match self.open.take() {
-            Some(open) => open,
-            None => self.new_segment(row, number),
-        };
-        add_row(&mut open, self.columns, self.frame, row);
-        self.open = Some(open);
+        if self.open.is_none() {
+            self.open = Some(self.new_segment(row, number));
+        }
+        if let Some(open) = &mut self.open {
+            add_row(open, self.columns, self.frame, row);
+        }
         self.newest = self.newest.max(Some(row.time));
     }
 
@@ -440,7 +449,10 @@ impl Window {
         }
         self.has_dropped = true;
         let mut flips = false;
-        for segment in self.closed.drain(..count) {
+        for _ in 0..count {
+            let Some(segment) = self.closed.pop_front() else {
+                break;
+            };
             self.spare.0.push(segment.factor);
             match self.front.pop() {
                 Some(top) => self.spare.0.push(top),
@@ -542,24 +554,25 @@ impl Window {
     }
 }
 
-/// Writes [√w·φ | √w·(e − level)].
-fn scale_row(columns: Columns, frame: Frame, row: &WindowRow, level: f64, scaled: &mut [f64]) {
-    let count = columns.count();
+/// Writes √w·φ and returns √w.
+#[inline]
+fn scale_row(columns: Columns, frame: Frame, row: &WindowRow, scaled: &mut [f64]) -> f64 {
     columns.fill(frame.scaled(row.time), row.x, row.influences, scaled);
-    scaled[count] = row.error - level;
-    if row.weight.to_bits() != 1.0_f64.to_bits() {
-        let root = row.weight.sqrt();
-        for entry in &mut scaled[..=count] {
-            *entry *= root;
-        }
+    if row.weight.to_bits() == 1.0_f64.to_bits() {
+        return 1.0;
     }
+    let root = row.weight.sqrt();
+    for entry in &mut scaled[..columns.count()] {
+        *entry *= root;
+    }
+    root
 }
 
 /// One row enters a segment.
 fn add_row(segment: &mut Segment, columns: Columns, frame: Frame, row: &WindowRow) {
     let mut scaled = [0.0; MAX_WIDTH];
-    scale_row(columns, frame, row, segment.level, &mut scaled);
-    segment.factor.insert(&mut scaled[..=columns.count()]);
-    segment.first = segment.first.min(row.time);
-    segment.last = segment.last.max(row.time);
+    let root = scale_row(columns, frame, row, &mut scaled);
+    scaled[columns.count()] = (row.error - segment.level) * root;
+    segment.factor.insert(&scaled[..=columns.count()]);
+    segment.reach(row.time);
 }

@@ -5,6 +5,13 @@
 //! deviations in it. The reference is a batch QR of the window's rows in a basis centred on them,
 //! in double-double numbers.
 
+#![allow(
+    clippy::cast_possible_truncation,
+    clippy::cast_possible_wrap,
+    clippy::cast_sign_loss,
+    reason = "counts and times of invented streams are small"
+)]
+
 mod support;
 
 use holdtrue_engine::fit::basis::Columns;

@@ -69,11 +69,6 @@ impl Batch {
         self.r.len()
     }
 
-    /// Entry (i, j) of the triangle.
-    pub(crate) fn entry(&self, i: usize, j: usize) -> f64 {
-        self.r[i][j].float()
-    }
-
     /// RSS of the model of the first `columns` columns.
     pub(crate) fn rss(&self, columns: usize) -> f64 {
         let last = self.width() - 1;

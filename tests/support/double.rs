@@ -14,6 +14,10 @@ impl Double {
     pub(crate) const ONE: Self = Self(1.0, 0.0);
 
     /// An integer, exactly.
+    #[allow(
+        clippy::cast_possible_truncation,
+        reason = "an integer below 2^64 as it is"
+    )]
     pub(crate) fn from_integer(value: i64) -> Self {
         let high = value as f64;
         // The difference is small; 2^63 itself does not fit an i64, so go through i128.

@@ -298,7 +298,7 @@ fn fitted(rows: &[MeanRow], columns: usize, multiplier: impl Fn(f64) -> f64) -> 
             *to = root * phi;
         }
         scaled[columns] = root * row.error;
-        factor.insert(&mut scaled[..=columns]);
+        factor.insert(&scaled[..=columns]);
     }
     factor
 }

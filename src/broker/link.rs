@@ -120,6 +120,8 @@ pub enum Event {
         /// Refused filters.
         refused: Vec<(String, String)>,
     },
+    /// What waited to be sent has gone; there is room for documents again.
+    Ready,
     /// The connection is over; documents without answer must be handed over again.
     Lost(Lost),
 }
@@ -284,9 +286,14 @@ impl Link {
 
     /// Waits for what happens next. Dropping the future loses nothing.
     pub async fn next(&mut self) -> Event {
+        let mut was_full = false;
         loop {
             self.send_waiting();
             let full = !self.acknowledgements.is_empty() || !self.asks.is_empty();
+            if was_full && !full {
+                return Event::Ready;
+            }
+            was_full = full;
             let stalled = self.answered + ANSWER_LIMIT;
             tokio::select! {
                 seen = self.events.recv(), if self.client.is_some() => {
@@ -374,8 +381,9 @@ impl Link {
         }
     }
 
-    /// Hands acknowledgements and subscriptions to the library, as many as its queue takes.
-    fn send_waiting(&mut self) {
+    /// Hands acknowledgements and subscriptions to the library, as many as its queue takes. Until
+    /// all have gone there is no room for documents.
+    pub fn send_waiting(&mut self) {
         let Some(client) = &self.client else { return };
         while let Some(packet) = self.acknowledgements.front() {
             if client.acknowledge(*packet).is_err() {

@@ -47,6 +47,7 @@ pub(super) struct Daemon {
     pause: Option<Pause>,
     rhythm: StateRhythm,
     figures: LoopFigures,
+    refused_topics: BTreeSet<String>,
     /// When the engine wants a tick, as of the last time it was asked.
     next_tick: Option<Timestamp>,
     tick_asked: Instant,
@@ -88,6 +89,7 @@ impl Daemon {
             pause: None,
             rhythm: StateRhythm::new(),
             figures: LoopFigures::default(),
+            refused_topics: BTreeSet::new(),
             next_tick: None,
             tick_asked: Instant::now(),
             link,
@@ -119,6 +121,8 @@ impl Daemon {
             Event::Connected { session_present } => self.greet(session_present),
             Event::Subscribed { refused } => self.note_subscribed(&refused),
             Event::Lost(lost) => self.note_lost(&lost),
+            // The next turn hands over.
+            Event::Ready => {}
         }
     }
 
@@ -260,6 +264,8 @@ impl Daemon {
 
     /// Hands documents and the state document to the link, as long as it has room.
     fn hand_over(&mut self) {
+        // Acknowledgements first: until they have gone, the link takes no document.
+        self.link.send_waiting();
         // The state goes first: it is the one that must come through when much waits.
         if self.rhythm.due().is_some_and(|due| due <= Instant::now()) {
             self.hand_over_state();
@@ -340,12 +346,17 @@ impl Daemon {
 
     fn refuse(&mut self, number: i64, why: &str) {
         self.figures.documents_refused += 1;
-        if let Some(document) = self.shell.settle(number) {
+        let Some(document) = self.shell.settle(number) else {
+            return;
+        };
+        // Once for each topic: a missing permission concerns every document. Bounded by the
+        // configuration's channels and alarms.
+        if self.refused_topics.insert(document.topic.clone()) {
             tracing::error!(
                 topic = document.topic,
                 why,
-                "the broker refuses a document; it stays in the record only. May this client \
-                 publish there?"
+                "the broker refuses a document; it and those like it stay in the record only. May \
+                 this client publish there?"
             );
         }
     }
@@ -422,7 +433,6 @@ impl Daemon {
 
     /// The orderly end: record, publish, wait for the broker, say goodbye.
     async fn finish(mut self) {
-        tracing::info!("told to end");
         self.commit();
         let limit = Instant::now() + DRAIN_LIMIT;
         self.wait_for(limit, |daemon| {
@@ -451,6 +461,7 @@ impl Daemon {
     /// come in are left with the broker.
     async fn wait_for(&mut self, limit: Instant, done: impl Fn(&Self) -> bool) {
         while self.link.is_connected() && !done(self) {
+            self.link.send_waiting();
             self.hand_over_documents();
             match tokio::time::timeout_at(limit, self.link.next()).await {
                 Ok(Event::Message(_)) => {}

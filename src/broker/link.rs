@@ -22,7 +22,7 @@ const EVENTS_MAX: usize = 64;
 /// Without an answer to any publish for this long, a new connection is made.
 const ANSWER_LIMIT: Duration = Duration::from_secs(30);
 /// A connection that lived this long was a success: pauses start short again.
-const GOOD_LIFE: Duration = Duration::from_secs(60);
+const GOOD_LIFE: Duration = Duration::from_mins(1);
 /// When the library's queue is full, the next attempt comes after this long at the latest.
 const QUEUE_RETRY: Duration = Duration::from_millis(5);
 /// Filters in one subscription packet; keeps it small for brokers with low packet limits.

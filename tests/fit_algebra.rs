@@ -102,6 +102,8 @@ fn assert_same_rss(factor: &Factor, batch: &batch::Batch) {
 }
 
 proptest! {
+    #![proptest_config(support::seeded())]
+
     #[test]
     fn merging_in_any_grouping_is_one_batch(
         rows in rows(30..80_usize),
@@ -211,6 +213,8 @@ fn row(time: i64, error: f64) -> WindowRow {
 }
 
 proptest! {
+    #![proptest_config(support::seeded())]
+
     /// Rows of a time-cut window in any order, within what it keeps, give the fit of the rows in
     /// order.
     #[test]

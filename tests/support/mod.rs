@@ -4,3 +4,13 @@
 
 pub(crate) mod batch;
 pub(crate) mod double;
+
+/// Property tests invent the same cases in every run, so that a failure is a change's and not the
+/// day's.
+pub(crate) fn seeded() -> proptest::test_runner::Config {
+    proptest::test_runner::Config {
+        rng_seed: proptest::test_runner::RngSeed::Fixed(20_260_103),
+        failure_persistence: None,
+        ..proptest::test_runner::Config::default()
+    }
+}

@@ -4,6 +4,8 @@
 //! - [`factor`]: rows of a least-squares problem as one small triangle
 //! - `kernel`: its inner loops
 //! - [`basis`]: the columns of a row, and scaled time
+//! - [`row`]: one row, and its entries
+//! - [`cut`]: where segments close
 //! - [`segment`]: rows that enter and leave together
 //! - [`window`]: the sliding window
 //! - [`criterion`]: information criteria as plain formulas
@@ -16,10 +18,12 @@ pub mod basis;
 mod between;
 pub mod correlation;
 pub mod criterion;
+pub mod cut;
 mod degree;
 pub mod factor;
 mod kernel;
 pub mod mean;
+pub mod row;
 pub mod segment;
 pub mod window;
 

@@ -1,6 +1,9 @@
 //! A slice of the window: the rows that enter and leave together, as one factor with its own level.
 
+use crate::fit::basis::{Columns, Frame};
 use crate::fit::factor::Factor;
+use crate::fit::kernel::MAX_WIDTH;
+use crate::fit::row::{WindowRow, scale_row};
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
@@ -61,5 +64,15 @@ impl Segment {
     pub(crate) fn reach(&mut self, time: Timestamp) {
         self.first = self.first.min(time);
         self.last = self.last.max(time);
+    }
+
+    /// Takes a row; the segment stands in `frame`.
+    pub(crate) fn take(&mut self, row: &WindowRow, columns: Columns, frame: Frame) {
+        let mut scaled = [0.0; MAX_WIDTH];
+        let count = columns.count();
+        let root = scale_row(columns, frame, row, &mut scaled);
+        scaled[count] = (row.error - self.level) * root;
+        self.factor.insert(&scaled[..=count]);
+        self.reach(row.time);
     }
 }

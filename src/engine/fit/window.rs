@@ -25,9 +25,12 @@
 //! rows came, and a restored window must go on with the same bits.
 
 use crate::fit::Prediction;
-use crate::fit::basis::{Columns, Frame, MAX_INFLUENCES};
+use crate::fit::basis::{Columns, Frame};
+pub use crate::fit::cut::Cut;
 use crate::fit::factor::Factor;
 use crate::fit::kernel::MAX_WIDTH;
+pub use crate::fit::row::WindowRow;
+use crate::fit::row::scale_row;
 use crate::fit::segment::Segment;
 use crate::time::{Duration, Timestamp};
 use serde::{Deserialize, Serialize};
@@ -38,63 +41,6 @@ use std::collections::VecDeque;
 const GAP_DIVISOR: i64 = 4;
 /// A row further than this from the origin, in units of the window, moves the frame.
 const FAR: f64 = 2.0;
-
-/// Where segments close and how many of them are kept.
-#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
-pub enum Cut {
-    /// On an absolute grid of time.
-    Time {
-        /// Length of a slice, > 0.
-        slice: Duration,
-        /// Closed slices kept before the open one, ≥ 1.
-        keep: u32,
-    },
-    /// After a number of rows.
-    Rows {
-        /// Rows of a segment, ≥ 1.
-        per_segment: u32,
-        /// Closed segments kept, ≥ 1.
-        keep: u32,
-    },
-}
-
-impl Cut {
-    /// A window of time in so many slices (rounded down to whole nanoseconds).
-    #[must_use]
-    pub fn time(window: Duration, segments: u32) -> Self {
-        let keep = segments.max(1);
-        Self::Time {
-            slice: Duration((window.0 / i64::from(keep)).max(1)),
-            keep,
-        }
-    }
-
-    /// A window of rows in so many segments. Where the rows don't divide evenly, segments take the
-    /// next whole number of rows, and as many are kept as hold at least the window.
-    #[must_use]
-    pub fn rows(window: u32, segments: u32) -> Self {
-        let per_segment = window.max(1).div_ceil(segments.max(1));
-        Self::Rows {
-            per_segment,
-            keep: window.max(1).div_ceil(per_segment),
-        }
-    }
-}
-
-/// One row of the fit. All numbers are finite.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub struct WindowRow {
-    /// Phenomenon time.
-    pub time: Timestamp,
-    /// e = indication − reference.
-    pub error: f64,
-    /// Weight, > 0.
-    pub weight: f64,
-    /// Regressor of the span terms; unused without them.
-    pub x: f64,
-    /// Influence quantities; unused beyond the window's columns.
-    pub influences: [f64; MAX_INFLUENCES],
-}
 
 /// What an insertion did.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
@@ -233,7 +179,7 @@ impl Window {
     /// Takes one row.
     pub fn insert(&mut self, row: &WindowRow) -> Inserted {
         let Some(newest) = self.newest else {
-            self.restart(row.time);
+            self.frame = self.frame_at(row.time);
             return self.insert_newest(row);
         };
         if row.time >= newest {
@@ -368,7 +314,7 @@ impl Window {
             self.closed.insert(place, segment);
         }
         let (columns, frame) = (self.columns, self.frame);
-        add_row(&mut self.closed[place], columns, frame, row);
+        self.closed[place].take(row, columns, frame);
         self.rebuild();
         Inserted {
             closed: true,
@@ -403,7 +349,7 @@ impl Window {
             self.open = Some(self.new_segment(row, number));
         }
         if let Some(open) = &mut self.open {
-            add_row(open, self.columns, self.frame, row);
+            open.take(row, self.columns, self.frame);
         }
         self.newest = self.newest.max(Some(row.time));
     }
@@ -470,7 +416,7 @@ impl Window {
     fn follow(&mut self, time: Timestamp) {
         let Some(newest) = self.newest else { return };
         if self.total.rows() == 0 {
-            self.restart(time);
+            self.frame = self.frame_at(time);
             return;
         }
         let gap = time.since(newest).0;
@@ -494,11 +440,6 @@ impl Window {
             Cut::Rows { .. } => newest.since(self.oldest_segment_first()),
         };
         Frame::new(newest, span)
-    }
-
-    /// An empty window: the first row sets the frame.
-    fn restart(&mut self, time: Timestamp) {
-        self.frame = self.frame_at(time);
     }
 
     /// Moves everything to a new origin and flips the stacks.
@@ -552,27 +493,4 @@ impl Window {
                 .merge_level(&open.factor, self.total_level - open.level);
         }
     }
-}
-
-/// Writes √w·φ and returns √w.
-#[inline]
-fn scale_row(columns: Columns, frame: Frame, row: &WindowRow, scaled: &mut [f64]) -> f64 {
-    columns.fill(frame.scaled(row.time), row.x, row.influences, scaled);
-    if row.weight.to_bits() == 1.0_f64.to_bits() {
-        return 1.0;
-    }
-    let root = row.weight.sqrt();
-    for entry in &mut scaled[..columns.count()] {
-        *entry *= root;
-    }
-    root
-}
-
-/// One row enters a segment.
-fn add_row(segment: &mut Segment, columns: Columns, frame: Frame, row: &WindowRow) {
-    let mut scaled = [0.0; MAX_WIDTH];
-    let root = scale_row(columns, frame, row, &mut scaled);
-    scaled[columns.count()] = (row.error - segment.level) * root;
-    segment.factor.insert(&scaled[..=columns.count()]);
-    segment.reach(row.time);
 }

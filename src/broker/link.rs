@@ -278,9 +278,10 @@ impl Link {
         }
     }
 
-    /// Gives the connection up and makes a new one.
+    /// Gives a working connection up and makes a new one, after the shortest pause: nothing failed.
     pub fn reconnect(&mut self, why: &str) -> Lost {
         self.drop_connection();
+        self.back_off.reset();
         self.fail(why.to_owned(), false)
     }
 
@@ -308,7 +309,9 @@ impl Link {
                 () = sleep_until(self.next_try), if self.client.is_none() => self.connect(),
                 () = tokio::time::sleep(QUEUE_RETRY), if full => {}
                 () = tokio::time::sleep_until(stalled), if self.outstanding() > 0 => {
-                    return Event::Lost(self.reconnect("the broker answers no publish any more"));
+                    self.drop_connection();
+                    let why = "the broker answers no publish any more".to_owned();
+                    return Event::Lost(self.fail(why, false));
                 }
             }
         }

@@ -81,7 +81,7 @@ impl Daemon {
         Ok(Self {
             shell,
             client_id,
-            held: Held::new(window),
+            held: Held::new(),
             tickets: Vec::new(),
             messages_max: usize::from(window / 2).max(1),
             commit_every: configuration.record.commit,

@@ -269,3 +269,44 @@ window = "1 h"
     let correction = newest["Correction"]["correction"].as_f64().unwrap();
     assert!((correction + 0.25).abs() < 0.01, "{newest}");
 }
+
+#[test]
+fn a_flood_that_fills_the_outbox_is_taken_whole_once_and_over_one_connection() {
+    let broker = Mosquitto::start();
+    let channel = r#"
+[[channel]]
+name = "flooded"
+unit = "V"
+indication = { topic = "plant/volt", value = "/i", time = "/t" }
+reference = { value = "/r" }
+window = "1024 pairs"
+"#;
+    let mut daemon = Holdtrue::prepare_with(broker.port, "time = \"readings\"", "", channel);
+    daemon.launch();
+    daemon.wait_log("subscribed");
+    let readings = 15_000;
+    let lines: Vec<String> = (0..readings)
+        .map(|number| {
+            let value = 1.5 + 0.01 * f64::from(number % 5);
+            let time = START_SECONDS + i64::from(number);
+            format!("{{\"i\":{value:?},\"r\":1.0,\"t\":{time}}}")
+        })
+        .collect();
+    broker.publish_lines("plant/volt", &lines);
+    let pairs = "SELECT count(*) FROM outputs WHERE kind = 'pair'";
+    daemon.wait_count(pairs, i64::from(readings));
+    assert!(daemon.stop().success());
+    let inputs = "SELECT count(*) FROM inputs WHERE kind = 'reading'";
+    assert_eq!(
+        daemon.count(inputs),
+        2 * i64::from(readings),
+        "some came twice"
+    );
+    assert_eq!(daemon.count("SELECT count(*) FROM outbox"), 0);
+    let documents = daemon.count("SELECT count(*) FROM outputs WHERE kind = 'correction'");
+    assert!(
+        documents > 4096,
+        "only {documents} documents: the outbox was never full"
+    );
+    assert_eq!(daemon.log().matches("connected to the broker").count(), 1);
+}

@@ -81,6 +81,30 @@ fn equal_counts_and_a_forced_degree_are_the_plain_fit() {
     }
 }
 
+/// The price of a degree: variance of the curve at its newest row in units of the rows' variance,
+/// for n even rows (textbook algebra of orthogonal polynomials; field notes 6.4).
+#[test]
+fn each_degree_costs_what_the_closed_forms_say() {
+    for rows in [10_u32, 64, 100] {
+        let mut fit = Fit::new(setup(WindowLength::Pairs(rows), rows, None));
+        for i in 0..rows {
+            fit.insert(row(i64::from(i) * 3600 * SECOND, jitter(i)));
+        }
+        let n = f64::from(rows);
+        let newest = fit.window().newest().expect("rows");
+        let prices = [
+            1.0 / n,
+            2.0 * (2.0 * n - 1.0) / (n * (n + 1.0)),
+            3.0 * (3.0 * n * n - 3.0 * n + 2.0) / (n * (n + 1.0) * (n + 2.0)),
+        ];
+        for (degree, price) in (0..).zip(prices) {
+            let plain = fit.plain(degree, newest).expect("rows");
+            let found = plain.covariance[0][0] / (plain.residual_sd * plain.residual_sd);
+            assert_close(found / price, 1.0, 1e-11);
+        }
+    }
+}
+
 #[test]
 fn few_rows_give_a_wide_mean_or_nothing() {
     let mut fit = Fit::new(setup(WindowLength::Time(Duration(64 * SECOND)), 64, None));

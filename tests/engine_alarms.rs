@@ -4,7 +4,7 @@
 mod engine_support;
 
 use engine_support::{
-    Noise, channel, constant, engine, feed, indication, node, reference, reference_value, span,
+    Noise, at, channel, constant, engine, feed, indication, node, reference, reference_value, span,
 };
 use holdtrue_engine::event::{AlarmKind, AlarmState, Input, Output, Subject};
 use holdtrue_engine::setup::{ChannelId, Clock, ReferenceKind, Setup, WindowLength};
@@ -256,4 +256,37 @@ fn a_stale_reference_gives_one_alarm_for_twenty_channels() {
         .filter(|output| matches!(output, Output::Alarm(_)))
         .collect();
     assert_eq!(alarms.len(), 1, "{alarms:?}");
+}
+
+/// A sensor that was cut off sends what it kept, in order and all at once: its gap is over when the
+/// newest has come, not raised and cleared again and again on the way.
+#[test]
+fn catching_up_clears_the_gap_once() {
+    let mut channels = vec![channel("a", 0), channel("b", 0)];
+    for channel in &mut channels {
+        channel.alarms.gap_after = Some(span(600.0));
+    }
+    let mut engine = engine(node(
+        Clock::Live,
+        vec![reference("zero", constant(0.0))],
+        channels,
+    ));
+    let mut outputs = Vec::new();
+    for index in 0..300 {
+        let time = 60.0 * f64::from(index);
+        engine.step(&indication(1, time, 0.1), &mut outputs);
+        if index < 10 {
+            engine.step(&indication(0, time, 0.1), &mut outputs);
+        }
+    }
+    assert_eq!(changes(&outputs, AlarmKind::DataGap), [true]);
+    outputs.clear();
+    for index in 10..300 {
+        let mut kept = indication(0, 60.0 * f64::from(index), 0.1);
+        if let Input::Reading(reading) = &mut kept {
+            reading.received = at(60.0 * 299.0 + 1.0);
+        }
+        engine.step(&kept, &mut outputs);
+    }
+    assert_eq!(changes(&outputs, AlarmKind::DataGap), [false]);
 }

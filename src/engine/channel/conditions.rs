@@ -107,14 +107,20 @@ impl ChannelAlarms {
         }
     }
 
-    /// An indication was accepted.
-    pub(crate) fn heard(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+    /// An indication of this phenomenon time was accepted. While a channel catches up with what it
+    /// kept during a silence, its newest is as old as the silence was long: that ends no gap.
+    pub(crate) fn heard(&mut self, time: Timestamp, scene: &Scene<'_>, report: &mut Report<'_>) {
         if let Some(limit) = scene.setup.alarms.gap_after
             && self.data_gap.is_raised()
         {
+            let condition = if scene.alive.since(time) <= limit {
+                Condition::Gone
+            } else {
+                Condition::Between
+            };
             let step = self
                 .data_gap
-                .evaluate(Condition::Gone, scene.now, delays(scene.setup));
+                .evaluate(condition, scene.now, delays(scene.setup));
             let said = data_gap(Duration::ZERO, limit);
             tell(AlarmKind::DataGap, step, said, scene, report);
         }

@@ -136,7 +136,7 @@ impl Channel {
     ) {
         // A row from the record is no sign of life.
         if scene.indications[scene.id.0 as usize].newest() == Some(sample.time) {
-            self.alarms.heard(scene, report);
+            self.alarms.heard(sample.time, scene, report);
         }
         if scene.setup.corrected_values
             && let Some(corrected) = self.publishing.correct(sample, scene)

@@ -1,11 +1,11 @@
 //! Fifth station: when a new correction is issued, how long it holds, and when it is withdrawn.
 //!
 //! *Dead zone*: a correction is applied from |ĉ| ≥ 2u and dropped below 1u; while it is suppressed
-//! the document's polynomial is zero and |ĉ| is inside U.
+//! the document's polynomial is zero and the largest |ĉ(t)| over its validity is inside U.
 //!
 //! *Publish step*: a new document when over its validity it would differ from the one in force by
-//! more than `step`·u, when u itself has changed by more than that part, when degree or zones
-//! differ, or when three quarters of the validity have passed and a new one would hold longer.
+//! more than `step`·u, when u or U (or what is suppressed inside U) has changed by more than that
+//! part, when degree or zones differ, or when three quarters of the validity have passed and a new one would hold longer.
 //!
 //! *Validity*: `max_age`, but not past the fit's own horizon behind the newest pair: a quarter of
 //! the time that the window covers where a degree above 1 has weight, else half of it. (The
@@ -97,18 +97,24 @@ impl Publishing {
         } else {
             size >= APPLY_FROM * judgement.u
         };
-        let candidate = self.candidate(judgement, range, scene);
+        let valid_until = valid_until(&judgement.published, scene);
+        let hidden = if self.applied {
+            0.0
+        } else {
+            largest(&judgement.published, scene.now, valid_until)
+        };
+        let candidate = self.candidate(judgement, (valid_until, hidden), range, scene);
         if candidate.valid_until <= scene.now {
             return;
         }
-        if !self.differs(&candidate, scene) {
+        if !self.differs(&candidate, hidden, scene) {
             return;
         }
         self.issued += 1;
         let validity = candidate.valid_until.since(candidate.issued).0;
         self.in_force = Some(InForce {
             rest_variance: judgement.rest_variance,
-            suppressed_size: if candidate.suppressed { size } else { 0.0 },
+            suppressed_size: hidden,
             review: candidate.issued.plus(Duration(validity / 4 * 3)),
             correction: Box::new(candidate.clone()),
         });
@@ -168,7 +174,13 @@ impl Publishing {
         })
     }
 
-    fn candidate(&self, judgement: &Judgement, range: (f64, f64), scene: &Scene<'_>) -> Correction {
+    fn candidate(
+        &self,
+        judgement: &Judgement,
+        (valid_until, hidden): (Timestamp, f64),
+        range: (f64, f64),
+        scene: &Scene<'_>,
+    ) -> Correction {
         let published = &judgement.published;
         let suppressed = !self.applied;
         let zero = published
@@ -176,18 +188,13 @@ impl Publishing {
             .iter()
             .map(|&coefficient| if suppressed { 0.0 } else { 0.0 - coefficient })
             .collect();
-        let hidden = if suppressed {
-            judgement.error.abs()
-        } else {
-            0.0
-        };
         let expanded = judgement.k * judgement.u + hidden;
         Correction {
             channel: scene.id,
             issue_number: self.issued + 1,
             issued: scene.now,
             valid_from: scene.now,
-            valid_until: valid_until(published, scene),
+            valid_until,
             origin: published.origin,
             degree: published.degree,
             weights: published.weights.clone(),
@@ -216,12 +223,13 @@ impl Publishing {
         }
     }
 
-    /// Whether the candidate says something that the document in force does not.
-    fn differs(&self, candidate: &Correction, scene: &Scene<'_>) -> bool {
-        let Some(held) = &self.in_force else {
+    /// Whether the candidate, with so much suppressed inside its U, says something that the
+    /// document in force does not.
+    fn differs(&self, candidate: &Correction, hidden: f64, scene: &Scene<'_>) -> bool {
+        let Some(in_force) = &self.in_force else {
             return true;
         };
-        let held = &held.correction;
+        let held = &in_force.correction;
         let said = |document: &Correction| {
             (
                 document.degree,
@@ -239,24 +247,42 @@ impl Publishing {
         let u = candidate.standard_uncertainty;
         let size = held.correction.abs().max(candidate.correction.abs());
         let step = (scene.setup.publish.step * u).max(NEGLIGIBLE * size);
-        (u - held.standard_uncertainty).abs() > step || greatest_difference(held, candidate) > step
+        let expanded = candidate.expanded_uncertainty - held.expanded_uncertainty;
+        (u - held.standard_uncertainty).abs() > step
+            || expanded.abs() > candidate.coverage_factor * step
+            || (hidden - in_force.suppressed_size).abs() > step
+            || greatest_difference(held, candidate) > step
     }
 }
 
 /// Greatest difference of two corrections from the issue of the second to the end of the first.
 fn greatest_difference(held: &Correction, candidate: &Correction) -> f64 {
-    let end = held.valid_until.max(candidate.issued);
-    let length = end.since(candidate.issued).0;
-    (0..=COMPARED)
-        .map(|part| {
-            let offset = Duration(length / i64::from(COMPARED) * i64::from(part));
-            let time = candidate.issued.plus(offset);
+    instants(candidate.issued, held.valid_until)
+        .map(|time| {
             let at = |document: &Correction| {
                 polynomial(&document.zero, time.since(document.origin).days())
             };
             (at(held) - at(candidate)).abs()
         })
         .fold(0.0, f64::max)
+}
+
+/// Largest |ê| from `from` to `to`, and at the newest pair.
+fn largest(published: &Published, from: Timestamp, to: Timestamp) -> f64 {
+    instants(from, to)
+        .chain([published.origin])
+        .map(|time| {
+            let days = time.since(published.origin).days();
+            polynomial(&published.coefficients, days).abs()
+        })
+        .fold(0.0, f64::max)
+}
+
+/// Instants evenly spread from `from` to `to`, both included; `from` alone where `to` is earlier.
+fn instants(from: Timestamp, to: Timestamp) -> impl Iterator<Item = Timestamp> {
+    let length = to.max(from).since(from).0;
+    (0..=COMPARED)
+        .map(move |part| from.plus(Duration(length / i64::from(COMPARED) * i64::from(part))))
 }
 
 /// Until when a document issued now may hold.

@@ -3,13 +3,16 @@
 //!
 //! u² = u²(fit) + common² + q²/12 + lack of fit² (GUM 5.1.2 with H.3.6 for the common part, F.2.2.1
 //! for the resolution q); degrees of freedom by Welch–Satterthwaite (GUM G.2b), k from Student's t
-//! (G.3.2).
+//! (G.3.2). u²(fit) is never less than what the declared noise, the reference's own `each` and q²/12
+//! make of the rows; where even so nothing is left (two equal values, nothing declared), u is not
+//! known and no conformity is stated.
 
 use super::Scene;
 use crate::event::Zone;
 use crate::fit::Published;
 use crate::quantile;
-use crate::time::Timestamp;
+use crate::setup::{ChannelSetup, ReferenceSetup};
+use crate::time::{Duration, Timestamp};
 use serde::{Deserialize, Serialize};
 use std::collections::VecDeque;
 
@@ -39,7 +42,7 @@ pub(crate) struct Judgement {
     pub(crate) slope: f64,
     /// Standard uncertainty of the slope.
     pub(crate) slope_u: f64,
-    /// Where ê ± U stands; `None` without a maximum permissible error.
+    /// Where ê ± U stands; `None` without a maximum permissible error, or while u is not known.
     pub(crate) zone: Option<Zone>,
     /// The fit.
     pub(crate) published: Published,
@@ -72,6 +75,7 @@ impl Judgement {
         let zone = scene
             .setup
             .max_permissible_error
+            .filter(|_| u > 0.0)
             .map(|limit| zone(error, k * u, limit));
         let judgement = Self {
             error,
@@ -110,6 +114,16 @@ impl Judgement {
             ])
             .all(|number| number.is_finite())
     }
+}
+
+/// What is declared of the variance of a complete pair: each² + noise² + q²/12. A pair with the mean
+/// of an interval has many indications behind it: there, each² alone.
+pub(crate) fn declared_variance(channel: &ChannelSetup, reference: &ReferenceSetup) -> f64 {
+    let each = reference.uncertainty_each * reference.uncertainty_each;
+    if reference.stands_for > Duration::ZERO {
+        return each;
+    }
+    each + channel.noise * channel.noise + channel.resolution * channel.resolution / 12.0
 }
 
 fn slope_variance(published: &Published) -> f64 {

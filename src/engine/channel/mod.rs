@@ -377,7 +377,8 @@ impl Channel {
     fn judge(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
         let fresh = self.history.unjudged > 0;
         self.history.unjudged = 0;
-        let Some(published) = self.fit.published() else {
+        let declared = judgement::declared_variance(scene.setup, scene.reference);
+        let Some(published) = self.fit.published_at_least(declared) else {
             return;
         };
         let Some(judgement) = Judgement::of(published, &self.residuals, scene) else {

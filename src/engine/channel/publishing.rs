@@ -214,6 +214,7 @@ impl Publishing {
             corrected_zone: scene
                 .setup
                 .max_permissible_error
+                .filter(|_| judgement.u > 0.0)
                 .map(|limit| zone(0.0, expanded, limit)),
             window: published.window,
             criterion: published.criterion.clone(),

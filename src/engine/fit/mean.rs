@@ -31,6 +31,9 @@ const PUBLISHING: Caution = Caution {
 };
 /// Closed segments from which on their scatter is used.
 const LEAST_SEGMENTS: usize = 3;
+/// Degrees of freedom of a declared variance, if the rows' own are fewer: its root known to 25 %
+/// (JCGM 100:2008, G.4.2).
+const DECLARED_FREEDOM: f64 = 8.0;
 /// ln of the largest ratio of two residual sums that enters a weight: a part in 1e300.
 const LARGEST_LN_RATIO: f64 = 690.0;
 
@@ -61,6 +64,22 @@ struct Scatter {
     inflation: f64,
     /// n_eff.
     effective: f64,
+}
+
+impl Scatter {
+    /// The same, but no less than what is known beforehand of a row: values that happen to be equal
+    /// are not known exactly.
+    fn at_least(self, variance: f64) -> Self {
+        if self.variance * self.inflation >= variance {
+            return self;
+        }
+        Self {
+            variance,
+            inflation: 1.0,
+            degrees_of_freedom: self.degrees_of_freedom.max(DECLARED_FREEDOM),
+            ..self
+        }
+    }
 }
 
 /// One degree's share in the mean.
@@ -106,6 +125,13 @@ impl Fit {
     /// the highest one's that they bear.
     #[must_use]
     pub fn published(&self) -> Option<Published> {
+        self.published_at_least(0.0)
+    }
+
+    /// [`Fit::published`], with the variance of a row of weight 1 taken as at least `row_variance`
+    /// (what was declared of noise and reference), in the unit of the errors squared.
+    #[must_use]
+    pub fn published_at_least(&self, row_variance: f64) -> Option<Published> {
         let origin = self.window.newest()?;
         let from = self.window.oldest()?;
         if self.window.rows() < 2 {
@@ -119,7 +145,7 @@ impl Fit {
         let (mut factor, level) = reweighted(&groups, between.as_ref())?;
         self.count_days_from(origin, &mut factor);
         let judged = between.map(Judged::of);
-        let scatter = self.scatter(judged.as_ref());
+        let scatter = self.scatter(judged.as_ref()).at_least(row_variance);
         let largest = match (&judged, forced) {
             (_, Some(_)) => self.bearable(highest),
             (Some(judged), None) => judged.between.largest,

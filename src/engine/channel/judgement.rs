@@ -14,6 +14,7 @@ use crate::quantile;
 use crate::setup::{ChannelSetup, ReferenceSetup};
 use crate::time::{Duration, Timestamp};
 use serde::{Deserialize, Serialize};
+use std::cmp::Ordering;
 use std::collections::VecDeque;
 
 /// Accepted pairs that the lack of fit is judged on.
@@ -197,36 +198,40 @@ struct LackOfFit {
 }
 
 impl Residuals {
-    /// Remembers a pair that entered the fit.
+    /// Remembers a pair that entered the fit, in order of time however it came.
     pub(crate) fn push(&mut self, time: Timestamp, error: f64) {
-        self.recent.push_back((time, error));
+        let place = self.recent.partition_point(|(held_time, held)| {
+            (*held_time, held.total_cmp(&error)) <= (time, Ordering::Equal)
+        });
+        self.recent.insert(place, (time, error));
         if self.recent.len() > RECENT {
             self.recent.pop_front();
         }
     }
 
-    /// The square of the newest residuals' mean beyond what noise explains: `max(0, m² −
+    /// Of those still in the window: the square of their residuals' mean beyond what noise
+    /// explains, `max(0, m² −
     /// (2·s_m)²)`, where `s_m` is the standard deviation of a mean of correlated values, `s/√n ·
     /// √((1+ρ)/(1−ρ))` (large-n variance of an AR(1) mean), ρ their lag-1 correlation with
     /// Kendall's bias added back. Own derivation; a moment estimate cut at zero, as for
     /// between-group variances.
     fn lack_of_fit(&self, published: &Published) -> LackOfFit {
-        let count = self.recent.len();
-        if count < ENOUGH {
-            return LackOfFit {
-                variance: 0.0,
-                degrees_of_freedom: 1.0,
-            };
-        }
         let residuals: Vec<f64> = self
             .recent
             .iter()
+            .filter(|(time, _)| *time >= published.window.from)
             .map(|&(time, error)| {
                 let days = time.since(published.origin).days();
                 error - polynomial(&published.coefficients, days)
             })
             .collect();
-        let n = count as f64;
+        if residuals.len() < ENOUGH {
+            return LackOfFit {
+                variance: 0.0,
+                degrees_of_freedom: 1.0,
+            };
+        }
+        let n = residuals.len() as f64;
         let mean = residuals.iter().sum::<f64>() / n;
         let square = |x: f64| x * x;
         let about_mean: f64 = residuals.iter().map(|r| square(r - mean)).sum();
@@ -326,13 +331,42 @@ mod tests {
     #[test]
     fn noise_around_the_curve_is_no_lack_of_fit_but_an_offset_is() {
         let mut residuals = Residuals::default();
-        for index in 0..64 {
-            let noise = [1.0, -1.0, -1.0, 1.0][index % 4];
-            residuals.push(Timestamp(0), 5.0 + noise);
+        for (time, noise) in (0..64).zip([1.0, -1.0, -1.0, 1.0].into_iter().cycle()) {
+            residuals.push(Timestamp(time), 5.0 + noise);
         }
         assert_eq!(residuals.lack_of_fit(&published(&[5.0])).variance, 0.0);
         let off = residuals.lack_of_fit(&published(&[8.0])).variance.sqrt();
         assert!((2.8..3.0).contains(&off), "{off}");
+    }
+
+    /// A window in time that holds few pairs: what lies before it says nothing about its curve.
+    #[test]
+    fn pairs_that_left_the_window_claim_no_lack_of_fit() {
+        let mut residuals = Residuals::default();
+        for time in 0..64 {
+            let error = if time < 50 { 5.0 } else { 9.0 };
+            residuals.push(Timestamp(time), error);
+        }
+        let mut curve = published(&[9.0]);
+        assert!(residuals.lack_of_fit(&curve).variance > 0.0);
+        curve.window.from = Timestamp(50);
+        assert_eq!(residuals.lack_of_fit(&curve).variance, 0.0);
+        curve.window.from = Timestamp(48);
+        assert_eq!(residuals.lack_of_fit(&curve).variance, 0.0);
+    }
+
+    #[test]
+    fn the_order_in_which_pairs_come_leaves_no_trace() {
+        let rows = [(3, 1.0), (1, 2.0), (2, 3.0), (2, 1.0)];
+        let mut there = Residuals::default();
+        let mut back = Residuals::default();
+        for (time, error) in rows {
+            there.push(Timestamp(time), error);
+        }
+        for (time, error) in rows.into_iter().rev() {
+            back.push(Timestamp(time), error);
+        }
+        assert_eq!(there, back);
     }
 
     #[test]

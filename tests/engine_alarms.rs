@@ -115,13 +115,13 @@ fn the_drift_alarm_needs_a_significant_slope() {
 
 #[test]
 fn a_changed_configuration_keeps_what_is_unchanged_and_clears_what_is_not() {
-    let two = |limit: f64, order: [&str; 2]| {
+    let two = |unit: &str, order: [&str; 2]| {
         let mut channels: Vec<_> = order.iter().map(|name| channel(name, 0)).collect();
         for channel in &mut channels {
             channel.max_permissible_error = Some(2.0);
             channel.screening.enabled = false;
             if channel.name == "b" {
-                channel.max_permissible_error = Some(limit);
+                channel.unit = unit.to_owned();
             }
         }
         node(
@@ -130,7 +130,7 @@ fn a_changed_configuration_keeps_what_is_unchanged_and_clears_what_is_not() {
             channels,
         )
     };
-    let mut engine = engine(two(2.0, ["a", "b"]));
+    let mut engine = engine(two("pH", ["a", "b"]));
     let mut inputs = Vec::new();
     for index in 0..50_u32 {
         for id in 0..2 {
@@ -143,13 +143,16 @@ fn a_changed_configuration_keeps_what_is_unchanged_and_clears_what_is_not() {
     assert_eq!(before.alarms.len(), 2);
 
     // The same once more: nothing is said, nothing changes.
-    let same = Input::Setup(Box::new(two(2.0, ["a", "b"])));
+    let same = Input::Setup(Box::new(two("pH", ["a", "b"])));
     let state = engine.state().clone();
     assert!(feed(&mut engine, &[same]).is_empty());
     assert_eq!(engine.state(), &state);
 
     // b changes, and both change places: a keeps everything at its new place, b starts anew.
-    let said = feed(&mut engine, &[Input::Setup(Box::new(two(9.0, ["b", "a"])))]);
+    let said = feed(
+        &mut engine,
+        &[Input::Setup(Box::new(two("mV", ["b", "a"])))],
+    );
     let old_b = ChannelId(1);
     assert!(matches!(said[0], Output::Withdrawn { channel, .. } if channel == old_b));
     assert!(matches!(
@@ -177,7 +180,7 @@ fn a_changed_configuration_keeps_what_is_unchanged_and_clears_what_is_not() {
     assert_eq!(numbers.first(), Some(&(last + 1)));
 
     // b is removed altogether.
-    let mut only_a = two(9.0, ["b", "a"]);
+    let mut only_a = two("mV", ["b", "a"]);
     only_a.channels.remove(0);
     let said = feed(&mut engine, &[Input::Setup(Box::new(only_a))]);
     assert!(matches!(said[0], Output::Withdrawn { channel, .. } if channel == ChannelId(0)));
@@ -289,4 +292,35 @@ fn catching_up_clears_the_gap_once() {
         engine.step(&kept, &mut outputs);
     }
     assert_eq!(changes(&outputs, AlarmKind::DataGap), [false]);
+}
+
+/// Whether a slope is significant is a matter of the slope alone: how well the reference is known
+/// must not matter.
+#[test]
+fn an_uncertain_reference_does_not_make_a_slope_significant() {
+    let run = |common: f64, seed| {
+        let mut noise = Noise::new(seed, 0.0);
+        let mut setup = setup();
+        setup.references[0].uncertainty_common = common;
+        setup.channels[0].fit.window = WindowLength::Pairs(16);
+        setup.channels[0].fit.segments = 16;
+        setup.channels[0].fit.forced_degree = Some(1);
+        setup.channels[0].max_permissible_error = None;
+        setup.channels[0].max_drift_rate = Some(1e-6);
+        let mut engine = engine(setup);
+        let inputs: Vec<Input> = (0..400).map(|index| minute(index, noise.draw())).collect();
+        let outputs = feed(&mut engine, &inputs);
+        let alarms = outputs.into_iter().filter_map(|output| match output {
+            Output::Alarm(change) => Some((change.at, change.state, change.value)),
+            _ => None,
+        });
+        alarms.collect::<Vec<_>>()
+    };
+    let mut all = 0;
+    for seed in 60..64 {
+        let alarms = run(0.0, seed);
+        assert_eq!(alarms, run(1000.0, seed), "seed {seed}");
+        all += alarms.len();
+    }
+    assert!(all > 0, "no slope was ever significant");
 }

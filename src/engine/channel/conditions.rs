@@ -55,7 +55,7 @@ impl ChannelAlarms {
         }
         if let Some(limit) = setup.max_drift_rate {
             let deadband = setup.alarms.deadband * judgement.slope_u;
-            let significant = judgement.slope.abs() > judgement.k * judgement.slope_u;
+            let significant = judgement.slope.abs() > judgement.slope_k * judgement.slope_u;
             let condition = match beyond(judgement.slope, limit, deadband) {
                 Condition::Holds if !significant => Condition::Between,
                 other => other,
@@ -249,7 +249,7 @@ fn error_limit(judgement: &Judgement, limit: f64, setup: &ChannelSetup) -> Said 
 fn drift_rate(judgement: &Judgement, limit: f64, setup: &ChannelSetup) -> Said {
     let unit = format!("{}/d", setup.unit);
     let slope = readable(judgement.slope);
-    let slope_u = readable(judgement.k * judgement.slope_u);
+    let slope_u = readable(judgement.slope_k * judgement.slope_u);
     let limit_read = readable(limit);
     Said {
         value: judgement.slope,

@@ -43,6 +43,9 @@ pub(crate) struct Judgement {
     pub(crate) slope: f64,
     /// Standard uncertainty of the slope.
     pub(crate) slope_u: f64,
+    /// k of the slope: on the fit's own degrees of freedom, since what is common to all pairs does
+    /// not move it (GUM H.3.6).
+    pub(crate) slope_k: f64,
     /// Where ê ± U stands; `None` without a maximum permissible error, or while u is not known.
     pub(crate) zone: Option<Zone>,
     /// The fit.
@@ -73,6 +76,8 @@ impl Judgement {
         let k = quantile::student(scene.setup.coverage, nu);
         let slope = published.coefficients.get(1).copied().unwrap_or(0.0) + 0.0;
         let slope_u = slope_variance(&published).max(0.0).sqrt();
+        let slope_k =
+            quantile::student(scene.setup.coverage, published.degrees_of_freedom.max(1.0));
         let zone = scene
             .setup
             .max_permissible_error
@@ -86,6 +91,7 @@ impl Judgement {
             nu,
             slope,
             slope_u,
+            slope_k,
             zone,
             published,
         };
@@ -100,6 +106,7 @@ impl Judgement {
             self.nu,
             self.slope,
             self.slope_u,
+            self.slope_k,
         ];
         let published = &self.published;
         numbers

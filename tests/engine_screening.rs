@@ -2,7 +2,7 @@
 
 mod engine_support;
 
-use engine_support::{Noise, channel, constant, engine, indication, node, reference};
+use engine_support::{Noise, channel, constant, engine, indication, node, reference, span};
 use holdtrue_engine::event::{AlarmKind, AlarmState, Output, PairFate, RefusedReason};
 use holdtrue_engine::setup::{ChannelSetup, Clock, WindowLength};
 
@@ -138,4 +138,35 @@ fn screening_off_keeps_nothing_out() {
         .map(|index| if index % 50 == 49 { 1e6 } else { noise.draw() })
         .collect();
     assert!(rejected(&run(open, errors)).is_empty());
+}
+
+/// Pairs older than the window say nothing about it: they are told as late, whatever their value,
+/// and do not lock the screen out.
+#[test]
+fn pairs_from_before_the_window_do_not_drive_the_screen() {
+    let mut channel = channel("a", 0);
+    channel.fit.window = WindowLength::Time(span(86_400.0));
+    channel.lateness = span(30.0 * 86_400.0);
+    let mut engine = engine(setup(channel));
+    let mut noise = Noise::new(17, 0.0);
+    let mut outputs = Vec::new();
+    let start = 10.0 * 86_400.0;
+    for index in 0..200_u32 {
+        let time = start + EVERY * f64::from(index);
+        engine.step(&indication(0, time, noise.draw()), &mut outputs);
+    }
+    outputs.clear();
+    for index in 0..20_u32 {
+        engine.step(&indication(0, EVERY * f64::from(index), 50.0), &mut outputs);
+    }
+    let fates: Vec<_> = outputs
+        .iter()
+        .filter_map(|output| match output {
+            Output::Pair(fate) => Some(fate.rejected.expect("kept out").reason),
+            _ => None,
+        })
+        .collect();
+    assert_eq!(fates, [RefusedReason::Late; 20]);
+    assert!(!outputs.iter().any(|o| matches!(o, Output::Alarm(_))));
+    assert!(!engine.standing().channels[0].locked_out);
 }

@@ -258,7 +258,12 @@ impl Channel {
     fn take_pair(&mut self, pair: &Pair, scene: &Scene<'_>, report: &mut Report<'_>) {
         self.history.last_reference = self.history.last_reference.max(Some(pair.time));
         let error = pair.indication - pair.reference;
-        let innovation = self.innovation(pair, error);
+        // What the window has left behind is no surprise to the fit, however far off.
+        let innovation = if self.fit.window().is_too_old(pair.time) {
+            None
+        } else {
+            self.innovation(pair, error)
+        };
         let verdict = match innovation {
             Some(innovation) if scene.setup.screening.enabled => {
                 let oldest = self.fit.window().oldest();

@@ -176,6 +176,22 @@ impl Window {
         self.newest
     }
 
+    /// Whether a row of this time would be older than everything in the window, and be left out.
+    #[must_use]
+    pub fn is_too_old(&self, time: Timestamp) -> bool {
+        if self.newest.is_none_or(|newest| time >= newest) {
+            return false;
+        }
+        match self.cut {
+            Cut::Time { slice, keep } => {
+                let number = time.0.div_euclid(slice.0);
+                let open = self.open.as_ref().map_or(number, |open| open.slice);
+                number < open.saturating_sub(i64::from(keep))
+            }
+            Cut::Rows { .. } => self.has_dropped && time < self.oldest_segment_first(),
+        }
+    }
+
     /// Takes one row.
     pub fn insert(&mut self, row: &WindowRow) -> Inserted {
         let Some(newest) = self.newest else {
@@ -185,14 +201,14 @@ impl Window {
         if row.time >= newest {
             return self.insert_newest(row);
         }
+        if self.is_too_old(row.time) {
+            return Inserted {
+                closed: false,
+                too_old: true,
+            };
+        }
         match self.cut {
-            Cut::Time { slice, keep } => self.insert_late(row, slice, keep),
-            Cut::Rows { .. } if self.has_dropped && row.time < self.oldest_segment_first() => {
-                Inserted {
-                    closed: false,
-                    too_old: true,
-                }
-            }
+            Cut::Time { slice, .. } => self.insert_late(row, slice),
             Cut::Rows { per_segment, keep } => self.insert_counted(row, per_segment, keep),
         }
     }
@@ -289,18 +305,12 @@ impl Window {
     }
 
     /// Cut by time: a row older than the newest enters its own slice.
-    fn insert_late(&mut self, row: &WindowRow, slice: Duration, keep: u32) -> Inserted {
+    fn insert_late(&mut self, row: &WindowRow, slice: Duration) -> Inserted {
         let number = row.time.0.div_euclid(slice.0);
         let open = self.open.as_ref().map_or(number, |open| open.slice);
         if number == open {
             self.insert_open(row, number);
             return Inserted::default();
-        }
-        if number < open.saturating_sub(i64::from(keep)) {
-            return Inserted {
-                closed: false,
-                too_old: true,
-            };
         }
         let place = self
             .closed

@@ -23,6 +23,7 @@ use crate::wording::readable;
 use adopt::Routes;
 use pulse::Pulse;
 use serde::{Deserialize, Serialize};
+use std::collections::BTreeMap;
 
 /// Everything that a refused input must not change.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
@@ -38,6 +39,8 @@ pub struct Fleet {
     references: Vec<Reference>,
     /// By channel.
     channels: Vec<Channel>,
+    /// Last issue number of channels that were removed, by name: a number is never used twice.
+    retired: BTreeMap<String, u64>,
 }
 
 /// What is known of one reference.

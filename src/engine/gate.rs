@@ -39,6 +39,11 @@ impl GateHistory {
         Ok(())
     }
 
+    /// Instant of the newest event ever taken.
+    pub(crate) fn newest(&self) -> Option<Timestamp> {
+        self.newest
+    }
+
     /// Takes an event. Of two that contradict each other at one instant, shut wins: a wrong pair
     /// harms more than a missing one, and the order of arrival must not decide.
     pub(crate) fn insert(&mut self, gate: &Gate) {

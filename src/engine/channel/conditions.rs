@@ -151,31 +151,78 @@ impl ChannelAlarms {
             .collect()
     }
 
-    /// Says that the alarms of a channel that is no longer configured are gone.
+    /// Says that the alarms of a channel that starts anew or is no more are gone.
     pub(crate) fn dismiss(
         &self,
         channel: ChannelId,
         setup: &ChannelSetup,
         now: Timestamp,
+        why: &str,
         report: &mut Report<'_>,
     ) {
         for standing in self.raised(channel) {
-            report.say(Output::Alarm(AlarmChange {
-                subject: standing.subject,
-                kind: standing.kind,
-                state: AlarmState::Normal,
-                at: now,
-                since: now,
-                value: 0.0,
-                limit: 0.0,
-                unit: String::new(),
-                text: format!(
-                    "{}: the channel was removed or its configuration changed",
-                    setup.name
-                ),
-            }));
+            report.say(dismissed(channel, standing.kind, setup, now, why));
         }
     }
+
+    /// Forgets the alarms whose limits the edited setup no longer has, and says so of raised ones.
+    pub(crate) fn edit(
+        &mut self,
+        channel: ChannelId,
+        after: &ChannelSetup,
+        now: Timestamp,
+        report: &mut Report<'_>,
+    ) {
+        let unasked = [
+            (
+                AlarmKind::ErrorLimit,
+                &mut self.error_limit,
+                after.max_permissible_error.is_none(),
+            ),
+            (
+                AlarmKind::DriftRate,
+                &mut self.drift_rate,
+                after.max_drift_rate.is_none(),
+            ),
+            (
+                AlarmKind::DataGap,
+                &mut self.data_gap,
+                after.alarms.gap_after.is_none(),
+            ),
+            (
+                AlarmKind::ScreenLockedOut,
+                &mut self.screen_locked_out,
+                !after.screening.enabled,
+            ),
+        ];
+        for (kind, alarm, _) in unasked.into_iter().filter(|(_, _, unasked)| *unasked) {
+            if std::mem::take(alarm).is_raised() {
+                let why = "its limit is no longer configured";
+                report.say(dismissed(channel, kind, after, now, why));
+            }
+        }
+    }
+}
+
+/// An alarm that is cleared by a person's or the node's doing, not by its condition.
+fn dismissed(
+    channel: ChannelId,
+    kind: AlarmKind,
+    setup: &ChannelSetup,
+    at: Timestamp,
+    why: &str,
+) -> Output {
+    Output::Alarm(AlarmChange {
+        subject: Subject::Channel(channel),
+        kind,
+        state: AlarmState::Normal,
+        at,
+        since: at,
+        value: 0.0,
+        limit: 0.0,
+        unit: String::new(),
+        text: format!("{}: {why}", setup.name),
+    })
 }
 
 /// On- and off-delay as configured.

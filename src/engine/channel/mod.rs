@@ -175,25 +175,41 @@ impl Channel {
         self.work_through(found, scene, report);
     }
 
-    /// Withdraws the correction and clears the alarms of a channel that is no longer configured.
+    /// Goes on under an edited setup in which its rows mean the same: alarms that nobody asks about
+    /// any more are cleared, a screen that is switched off forgets, and the correction in force is
+    /// reviewed as soon as anything happens.
+    pub(crate) fn edit(
+        &mut self,
+        id: ChannelId,
+        after: &ChannelSetup,
+        now: Timestamp,
+        report: &mut Report<'_>,
+    ) {
+        self.alarms.edit(id, after, now, report);
+        if !after.screening.enabled {
+            self.screen = Screen::default();
+        }
+        self.publishing.review();
+        self.wake = Some(Timestamp(i64::MIN));
+    }
+
+    /// Withdraws the correction and clears the alarms of a channel that starts anew or is no more.
     pub(crate) fn dismiss(
         &self,
         id: ChannelId,
         setup: &ChannelSetup,
         now: Timestamp,
+        why: &str,
         report: &mut Report<'_>,
     ) {
         if self.publishing.correction().is_some() {
             report.say(Output::Withdrawn {
                 channel: id,
                 at: now,
-                why: format!(
-                    "{}: the channel was removed or its configuration changed",
-                    setup.name
-                ),
+                why: format!("{}: {why}", setup.name),
             });
         }
-        self.alarms.dismiss(id, setup, now, report);
+        self.alarms.dismiss(id, setup, now, why, report);
     }
 
     /// The alarms that are not normal.

@@ -83,6 +83,13 @@ impl Publishing {
         self.in_force.as_ref().map(|held| held.review)
     }
 
+    /// Has the correction in force looked at when the channel acts next.
+    pub(crate) fn review(&mut self) {
+        if let Some(held) = &mut self.in_force {
+            held.review = Timestamp(i64::MIN);
+        }
+    }
+
     /// Looks at a judgement and issues a document if one is due.
     pub(crate) fn consider(
         &mut self,

@@ -9,6 +9,11 @@ use crate::setup::{ChannelId, ChannelSetup, ReferenceId, ReferenceKind, Referenc
 use crate::time::{Duration, Timestamp};
 use crate::track::Track;
 use serde::{Deserialize, Serialize};
+use std::collections::BTreeMap;
+
+/// Removed channels whose last issue number is remembered. Beyond that the first by name are
+/// forgotten, and would count from one again.
+const MOST_RETIRED: usize = 10_000;
 
 /// A reference value may become known this much later than its instant (a laboratory's day) and
 /// still find the indications in memory, as far as the memory's size allows.
@@ -111,11 +116,12 @@ fn memory(channel: &ChannelSetup, reference: &ReferenceSetup) -> Duration {
 }
 
 impl Fleet {
-    /// Takes a configuration. Channels whose setup and reference are unchanged keep their state, by
-    /// name; the others start anew. Everything said here bears the positions of the configuration
-    /// that is replaced.
+    /// Takes a configuration. Channels for which pairs and rows mean the same as before keep their
+    /// state, by name, and go on under whatever else was edited (limits, uncertainties, delays,
+    /// certificates …); the others start anew. Everything said here bears the positions of the
+    /// configuration that is replaced.
     pub(crate) fn adopt(&mut self, setup: &Setup, report: &mut Report<'_>) {
-        let old = std::mem::take(self);
+        let mut old = std::mem::take(self);
         let same_clock = old.setup.clock == setup.clock;
         let mut taken = vec![false; old.channels.len()];
         let mut channels = Vec::with_capacity(setup.channels.len());
@@ -131,10 +137,14 @@ impl Fleet {
             });
             if let Some(index) = kept {
                 taken[index] = true;
+                old.edit_channel(index, setup, channel, report);
                 channels.push(old.channels[index].clone());
                 indications.push(old.indications[index].clone());
             } else {
-                let issued = before.map_or(0, |index| old.channels[index].issued());
+                let issued = before.map_or_else(
+                    || old.retired.get(&channel.name).copied().unwrap_or(0),
+                    |index| old.channels[index].issued(),
+                );
                 channels.push(Channel::new(channel, issued));
                 indications.push(Track::default());
             }
@@ -147,6 +157,7 @@ impl Fleet {
             });
             references.push(kept.map_or_else(Reference::default, |index| {
                 taken_references[index] = true;
+                old.edit_reference(index, reference, report);
                 old.references[index].clone()
             }));
         }
@@ -162,12 +173,70 @@ impl Fleet {
             },
             indications,
             channels,
+            retired: old.retire(setup),
         };
         old.dismiss_channels(&taken, report);
         old.dismiss_references(&taken_references, report);
+        let now = self.now.unwrap_or(Timestamp(0));
+        self.pulse.edit(&self.routes, now, report);
         let new_place = |subject| self.moved(&old.setup, subject);
         report.counters.renumber(new_place);
         report.notices.renumber(new_place);
+    }
+
+    /// The numbers to go on from of channels that are not in the new configuration.
+    fn retire(&self, new: &Setup) -> BTreeMap<String, u64> {
+        let mut retired = self.retired.clone();
+        for (setup, channel) in self.setup.channels.iter().zip(&self.channels) {
+            if channel.issued() > 0 {
+                retired.insert(setup.name.clone(), channel.issued());
+            }
+        }
+        for channel in &new.channels {
+            retired.remove(&channel.name);
+        }
+        while retired.len() > MOST_RETIRED {
+            retired.pop_first();
+        }
+        retired
+    }
+
+    /// Prepares a channel that stays for its edited setup.
+    fn edit_channel(
+        &mut self,
+        index: usize,
+        new: &Setup,
+        after: &ChannelSetup,
+        report: &mut Report<'_>,
+    ) {
+        let before = &self.setup.channels[index];
+        let reference_before = &self.setup.references[before.reference.0 as usize];
+        let reference_after = &new.references[after.reference.0 as usize];
+        let placed = placed(before, after);
+        let reference_placed = ReferenceSetup {
+            kind: reference_after.kind.clone(),
+            ..reference_before.clone()
+        };
+        if placed == *after && reference_placed == *reference_after {
+            return;
+        }
+        let id = ChannelId(u32::try_from(index).expect("as many channels as a u32 numbers"));
+        let now = self.now.unwrap_or(Timestamp(0));
+        self.channels[index].edit(id, after, now, report);
+    }
+
+    /// Prepares a reference that stays for its edited setup: an alarm whose limit is gone goes too.
+    fn edit_reference(&mut self, index: usize, after: &ReferenceSetup, report: &mut Report<'_>) {
+        if after.stale_after.is_some() {
+            return;
+        }
+        let stale = std::mem::take(&mut self.references[index].stale);
+        if stale.is_raised() {
+            let now = self.now.unwrap_or(Timestamp(0));
+            let id =
+                ReferenceId(u32::try_from(index).expect("as many references as a u32 numbers"));
+            report.say(silence::stale_dismissed(id, &after.name, now));
+        }
     }
 
     /// Withdraws the corrections and clears the alarms of channels that do not stay.
@@ -175,7 +244,8 @@ impl Fleet {
         let now = self.now.unwrap_or(Timestamp(0));
         let channels = (0..).zip(&self.channels).zip(&self.setup.channels);
         for ((id, channel), setup) in channels.filter(|((id, _), _)| !stay[*id as usize]) {
-            channel.dismiss(ChannelId(id), setup, now, report);
+            let why = "the channel was removed or its configuration changed";
+            channel.dismiss(ChannelId(id), setup, now, why, report);
         }
     }
 
@@ -225,14 +295,14 @@ impl Fleet {
     }
 }
 
-/// Whether a channel means the same in both configurations, wherever it and its reference stand in
-/// the lists.
+/// Whether the rows of a channel mean the same in both configurations, wherever it and its reference
+/// stand in the lists: what was fitted goes on being true. Limits, uncertainties, screening, delays
+/// and the like only say what is made of it from now on.
 fn same_channel(old: &Setup, before: &ChannelSetup, new: &Setup, after: &ChannelSetup) -> bool {
-    let placed = ChannelSetup {
-        reference: after.reference,
-        ..before.clone()
-    };
-    placed == *after
+    before.name == after.name
+        && before.unit == after.unit
+        && before.lag == after.lag
+        && before.fit == after.fit
         && same_reference(
             old,
             &old.references[before.reference.0 as usize],
@@ -241,23 +311,31 @@ fn same_channel(old: &Setup, before: &ChannelSetup, new: &Setup, after: &Channel
         )
 }
 
-/// Whether a reference means the same in both configurations, its group members compared by name.
+/// Whether the values of a reference mean the same in both configurations, its group members
+/// compared by name.
 fn same_reference(
     old: &Setup,
     before: &ReferenceSetup,
     new: &Setup,
     after: &ReferenceSetup,
 ) -> bool {
-    if let (ReferenceKind::Group { members: a }, ReferenceKind::Group { members: b }) =
-        (&before.kind, &after.kind)
-    {
-        let rest = ReferenceSetup {
-            kind: after.kind.clone(),
-            ..before.clone()
-        };
-        rest == *after && names(old, a).eq(names(new, b))
-    } else {
-        before == after
+    let same_kind = match (&before.kind, &after.kind) {
+        (ReferenceKind::Group { members: a }, ReferenceKind::Group { members: b }) => {
+            names(old, a).eq(names(new, b))
+        }
+        (before, after) => before == after,
+    };
+    same_kind
+        && before.name == after.name
+        && before.stands_for == after.stands_for
+        && before.stamped == after.stamped
+}
+
+/// The channel as it was, its reference at the new place.
+fn placed(before: &ChannelSetup, after: &ChannelSetup) -> ChannelSetup {
+    ChannelSetup {
+        reference: after.reference,
+        ..before.clone()
     }
 }
 

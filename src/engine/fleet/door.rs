@@ -50,7 +50,8 @@ impl Fleet {
             }
         };
         if timely {
-            track.check(reading, lateness)?;
+            let ahead = self.ahead(track.newest(), now);
+            track.check(reading, Duration(lateness.0.saturating_add(ahead.0)))?;
         } else if track.holds(reading) {
             return Err(RefusedReason::Duplicate);
         }
@@ -73,8 +74,21 @@ impl Fleet {
         let now = self.admit_time(gate.phenomenon, gate.received)?;
         let users = self.routes.reference_users(gate.reference);
         let lateness = longest(users.iter().map(|&user| self.setup.channels[user].lateness));
-        self.references[index].gate.check(gate, lateness)?;
+        let history = &self.references[index].gate;
+        let ahead = self.ahead(history.newest(), now);
+        history.check(gate, Duration(lateness.0.saturating_add(ahead.0)))?;
         Ok(now)
+    }
+
+    /// How far a source's newest time lies ahead of now. Live, lateness counts from now at most:
+    /// one stamp of a clock some minutes fast must not shut out those that are right.
+    fn ahead(&self, newest: Option<Timestamp>, now: Timestamp) -> Duration {
+        match self.setup.clock {
+            Clock::Live => newest.map_or(Duration::ZERO, |newest| {
+                newest.since(now).max(Duration::ZERO)
+            }),
+            Clock::Readings => Duration::ZERO,
+        }
     }
 
     fn is_known(&self, source: Source) -> bool {

@@ -70,6 +70,16 @@ impl Pulse {
         self.newest = self.newest.max(Some(phenomenon));
     }
 
+    /// A configuration that no longer asks about silence takes effect: the alarm goes, too.
+    pub(super) fn edit(&mut self, routes: &Routes, now: Timestamp, report: &mut Report<'_>) {
+        if routes.several_sources && routes.quiet_after.is_some() {
+            return;
+        }
+        if std::mem::take(&mut self.quiet).is_raised() {
+            report.say(silence::node_gap_dismissed(now));
+        }
+    }
+
     /// When the node counts as silent, if nothing arrives.
     pub(super) fn quiet_at(&self, routes: &Routes) -> Option<Timestamp> {
         if !routes.several_sources {

@@ -162,6 +162,21 @@ pub(super) fn node_gap(step: Move, now: Timestamp, arrival: Timestamp, limit: Du
     })
 }
 
+/// The alarm change of the whole node when nobody asks about its silence any more.
+pub(super) fn node_gap_dismissed(now: Timestamp) -> Output {
+    Output::Alarm(AlarmChange {
+        subject: Subject::Node,
+        kind: AlarmKind::DataGap,
+        state: AlarmState::Normal,
+        at: now,
+        since: now,
+        value: 0.0,
+        limit: 0.0,
+        unit: "h".to_owned(),
+        text: "no channel or reference has a limit on silence any more".to_owned(),
+    })
+}
+
 pub(super) fn data_gap_standing(subject: Subject, state: AlarmState) -> AlarmStanding {
     AlarmStanding {
         subject,

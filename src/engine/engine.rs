@@ -4,18 +4,20 @@
 //! Call contract:
 //! - The first input should be a [`Input::Setup`]; before it every reading is refused as unknown.
 //! - Inputs come in the order in which they were received. A received time that goes backwards does
-//!   no harm: the engine goes on with its own now.
+//!   no harm: the engine goes on with its own now, until ten in a row show that now was wrong; it
+//!   then steps back to them and says so. In a recording, a phenomenon time far ahead of now is
+//!   refused until another reading confirms it.
 //! - Phenomenon times may come in any order within a channel's `lateness`; the pairs that result
 //!   are the same. What is older than that behind its own source's newest reading is refused,
 //!   counted, and changes nothing else.
-//! - A refused input changes counters and notices only: [`Engine::state`] compares equal before and
-//!   after.
+//! - A refused input changes counters, notices and what is counted against a wrong clock only:
+//!   [`Engine::state`] compares equal before and after.
 //! - With [`Clock::Live`], send a tick at or after [`Engine::next_tick`]; with [`Clock::Readings`]
 //!   ticks are ignored.
 
 use crate::counters::Counters;
 use crate::event::{Input, Output};
-use crate::fleet::Fleet;
+use crate::fleet::{Fleet, LeapWatch};
 use crate::notice::NoticeLimiter;
 use crate::report::Report;
 use crate::setup::Clock;
@@ -29,6 +31,7 @@ pub struct Engine {
     fleet: Fleet,
     counters: Counters,
     notices: NoticeLimiter,
+    leaps: LeapWatch,
 }
 
 impl Engine {
@@ -45,6 +48,7 @@ impl Engine {
             outputs,
             counters: &mut self.counters,
             notices: &mut self.notices,
+            leaps: &mut self.leaps,
         };
         match input {
             Input::Setup(setup) => self.fleet.adopt(setup, report),
@@ -73,8 +77,8 @@ impl Engine {
         self.fleet.standing(&self.counters)
     }
 
-    /// Everything that a refused input must not change: the state without counters and held-back
-    /// notices.
+    /// Everything that a refused input must not change: the state without counters, held-back
+    /// notices and doubts about clocks.
     #[must_use]
     pub fn state(&self) -> &Fleet {
         &self.fleet

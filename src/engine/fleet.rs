@@ -6,6 +6,7 @@
 
 mod adopt;
 mod door;
+mod leap;
 mod pulse;
 mod silence;
 
@@ -21,6 +22,7 @@ use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
 use crate::wording::readable;
 use adopt::Routes;
+pub(crate) use leap::LeapWatch;
 use pulse::Pulse;
 use serde::{Deserialize, Serialize};
 use std::collections::BTreeMap;
@@ -61,7 +63,9 @@ impl Fleet {
 
     /// Takes a value or refuses it.
     pub(crate) fn take_reading(&mut self, reading: &Reading, report: &mut Report<'_>) {
-        match self.admit(reading, true) {
+        let (source, phenomenon) = (reading.source, reading.phenomenon);
+        let admit = |fleet: &Self, leap| fleet.admit(reading, true, leap);
+        match self.admit_watching(source, phenomenon, reading.received, report, admit) {
             Ok(now) => {
                 self.advance_to(now);
                 self.pulse
@@ -78,7 +82,7 @@ impl Fleet {
     /// already counts as a duplicate; time does not move.
     pub(crate) fn take_supplied(&mut self, supplied: &Supplied, report: &mut Report<'_>) {
         for reading in &supplied.readings {
-            match self.admit(reading, false) {
+            match self.admit(reading, false, false) {
                 Ok(_) if self.concerns(reading.source, supplied.channel) => {
                     self.route(reading, report);
                 }
@@ -97,7 +101,9 @@ impl Fleet {
 
     /// Takes the state of a gate or refuses it.
     pub(crate) fn take_gate(&mut self, gate: &Gate, report: &mut Report<'_>) {
-        match self.admit_gate(gate) {
+        let source = Source::Reference(gate.reference);
+        let admit = |fleet: &Self, leap| fleet.admit_gate(gate, leap);
+        match self.admit_watching(source, gate.phenomenon, gate.received, report, admit) {
             Ok(now) => {
                 self.advance_to(now);
                 self.pulse.hear(gate.phenomenon, now, &self.routes, report);
@@ -129,6 +135,7 @@ impl Fleet {
     /// Time passed.
     pub(crate) fn tick(&mut self, now: Timestamp, report: &mut Report<'_>) {
         if self.setup.clock == Clock::Live {
+            self.watch_clock(now, report);
             self.advance_to(now);
             self.pass_time(report);
         }

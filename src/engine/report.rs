@@ -3,6 +3,7 @@
 
 use crate::counters::Counters;
 use crate::event::{Output, RefusedReason, Subject};
+use crate::fleet::LeapWatch;
 use crate::notice::NoticeLimiter;
 use crate::time::Timestamp;
 
@@ -11,6 +12,7 @@ pub(crate) struct Report<'a> {
     pub(crate) outputs: &'a mut Vec<Output>,
     pub(crate) counters: &'a mut Counters,
     pub(crate) notices: &'a mut NoticeLimiter,
+    pub(crate) leaps: &'a mut LeapWatch,
 }
 
 impl Report<'_> {

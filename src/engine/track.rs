@@ -119,6 +119,17 @@ impl Track {
         }
     }
 
+    /// Forgets what is newer than `time`, as if it had never come: its clock was wrong.
+    pub(crate) fn forget_after(&mut self, time: Timestamp) {
+        if self.newest.is_none_or(|newest| newest <= time) {
+            return;
+        }
+        let keep = self.samples.partition_point(|held| held.time <= time);
+        self.samples.truncate(keep);
+        self.forgotten = self.forgotten.map(|edge| edge.min(time));
+        self.newest = self.samples.back().map(|held| held.time).or(self.forgotten);
+    }
+
     /// All readings of exactly this instant.
     pub(crate) fn at(&self, time: Timestamp) -> impl Iterator<Item = &Sample> {
         self.range(time, time.plus(Duration(1)))

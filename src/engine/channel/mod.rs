@@ -193,6 +193,33 @@ impl Channel {
         self.wake = Some(Timestamp(i64::MIN));
     }
 
+    /// Whether a pair stamped later than `edge` was found.
+    pub(crate) fn knows_after(&self, edge: Timestamp) -> bool {
+        self.history.last_reference > Some(edge) || self.history.last_pair > Some(edge)
+    }
+
+    /// Now was wrong and steps back: what was issued at a later time is withdrawn.
+    pub(crate) fn step_back(
+        &mut self,
+        id: ChannelId,
+        setup: &ChannelSetup,
+        to: Timestamp,
+        report: &mut Report<'_>,
+    ) {
+        if self.publishing.step_back(to) {
+            report.say(Output::Withdrawn {
+                channel: id,
+                at: to,
+                why: format!(
+                    "{}: it was issued while the host's clock was wrong",
+                    setup.name
+                ),
+            });
+        }
+        self.history.began = self.history.began.map(|began| began.min(to));
+        self.wake = Some(Timestamp(i64::MIN));
+    }
+
     /// Withdraws the correction and clears the alarms of a channel that starts anew or is no more.
     pub(crate) fn dismiss(
         &self,

@@ -90,6 +90,20 @@ impl Publishing {
         }
     }
 
+    /// Now was wrong and steps back: drops what was issued later. Whether there was any.
+    pub(crate) fn step_back(&mut self, to: Timestamp) -> bool {
+        let Some(held) = &mut self.in_force else {
+            return false;
+        };
+        held.review = held.review.min(to);
+        let false_time = held.correction.issued > to;
+        if false_time {
+            self.in_force = None;
+            self.applied = false;
+        }
+        false_time
+    }
+
     /// Looks at a judgement and issues a document if one is due.
     pub(crate) fn consider(
         &mut self,

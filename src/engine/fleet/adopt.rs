@@ -5,7 +5,9 @@ use super::{Fleet, Reference, silence};
 use crate::channel::Channel;
 use crate::event::{Source, Subject};
 use crate::report::Report;
-use crate::setup::{ChannelId, ChannelSetup, ReferenceId, ReferenceKind, ReferenceSetup, Setup};
+use crate::setup::{
+    ChannelId, ChannelSetup, ReferenceId, ReferenceKind, ReferenceSetup, Setup, WindowLength,
+};
 use crate::time::{Duration, Timestamp};
 use crate::track::Track;
 use serde::{Deserialize, Serialize};
@@ -18,6 +20,9 @@ const MOST_RETIRED: usize = 10_000;
 /// A reference value may become known this much later than its instant (a laboratory's day) and
 /// still find the indications in memory, as far as the memory's size allows.
 const REFERENCE_DELAY: Duration = Duration::from_seconds(86_400);
+
+const DAY: Duration = Duration::from_seconds(86_400);
+const YEAR: Duration = Duration::from_seconds(366 * 86_400);
 
 /// Who listens to whom, derived from the configuration.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
@@ -32,6 +37,9 @@ pub(super) struct Routes {
     reference_memory: Vec<Duration>,
     /// The shortest silence that any alarm asks about.
     pub(super) quiet_after: Option<Duration>,
+    /// The longest time that anything here looks back on, at least a day: a recording's time leaps
+    /// if it is further ahead of now than this.
+    pub(super) reach: Duration,
     /// Whether more than one thing is expected to report.
     pub(super) several_sources: bool,
 }
@@ -44,6 +52,7 @@ impl Routes {
             indication_memory: vec![Duration::ZERO; setup.channels.len()],
             reference_memory: vec![Duration::ZERO; setup.references.len()],
             quiet_after: None,
+            reach: reach(setup),
             several_sources: false,
         };
         for (index, channel) in setup.channels.iter().enumerate() {
@@ -96,6 +105,23 @@ fn trim(track: &mut Track, memory: Duration) {
     if let Some(newest) = track.newest() {
         track.forget_before(newest.minus(memory));
     }
+}
+
+/// See [`Routes::reach`]. A window in pairs may hold yearly ones.
+fn reach(setup: &Setup) -> Duration {
+    let channels = setup.channels.iter().flat_map(|channel| {
+        let window = match channel.fit.window {
+            WindowLength::Time(length) => length,
+            WindowLength::Pairs(_) => YEAR,
+        };
+        let gap = channel.alarms.gap_after.unwrap_or(Duration::ZERO);
+        [window, channel.lateness, channel.max_gap, gap]
+    });
+    let references = setup.references.iter().flat_map(|reference| {
+        let age = reference.stale_after.unwrap_or(Duration::ZERO);
+        [age, reference.stands_for]
+    });
+    channels.chain(references).fold(DAY, Duration::max)
 }
 
 /// How long readings are kept: for duplicates and stragglers at least `lateness`; to serve
@@ -175,6 +201,7 @@ impl Fleet {
             channels,
             retired: old.retire(setup),
         };
+        report.leaps.settle();
         old.dismiss_channels(&taken, report);
         old.dismiss_references(&taken_references, report);
         let now = self.now.unwrap_or(Timestamp(0));

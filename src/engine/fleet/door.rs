@@ -8,7 +8,7 @@ use crate::time::{Duration, Timestamp};
 
 /// How far sender's and receiver's clocks may differ: a live time further ahead than this is
 /// refused.
-const CLOCKS_DIFFER: Duration = Duration::from_seconds(300);
+pub(super) const CLOCKS_DIFFER: Duration = Duration::from_seconds(300);
 
 /// 2200-01-01T00:00:00Z: no recording reaches this far, and time arithmetic stays clear of its end
 /// (2262).
@@ -20,11 +20,12 @@ const LARGEST: f64 = 1e100;
 
 impl Fleet {
     /// Whether a reading may come in, and what now is once it has. `timely` is false for rows from
-    /// the record.
+    /// the record; with `leap`, a recording's time may be as far ahead of now as it likes.
     pub(super) fn admit(
         &self,
         reading: &Reading,
         timely: bool,
+        leap: bool,
     ) -> Result<Timestamp, RefusedReason> {
         if !self.is_known(reading.source) {
             return Err(RefusedReason::UnknownTopic);
@@ -32,7 +33,7 @@ impl Fleet {
         if !reading.value.is_finite() || reading.value.abs() > LARGEST {
             return Err(RefusedReason::NotFinite);
         }
-        let now = self.admit_time(reading.phenomenon, reading.received)?;
+        let now = self.admit_time(reading.phenomenon, reading.received, leap)?;
         let (track, lateness) = match reading.source {
             Source::Indication(id) => {
                 let index = id.0 as usize;
@@ -62,8 +63,8 @@ impl Fleet {
         Ok(now)
     }
 
-    /// Whether a gate event may come in, and what now is once it has.
-    pub(super) fn admit_gate(&self, gate: &Gate) -> Result<Timestamp, RefusedReason> {
+    /// Whether a gate event may come in, and what now is once it has; `leap` as for readings.
+    pub(super) fn admit_gate(&self, gate: &Gate, leap: bool) -> Result<Timestamp, RefusedReason> {
         let index = gate.reference.0 as usize;
         let gated = self.setup.references.get(index).is_some_and(|reference| {
             matches!(reference.kind, ReferenceKind::Constant { gated: true, .. })
@@ -71,7 +72,7 @@ impl Fleet {
         if !gated {
             return Err(RefusedReason::UnknownTopic);
         }
-        let now = self.admit_time(gate.phenomenon, gate.received)?;
+        let now = self.admit_time(gate.phenomenon, gate.received, leap)?;
         let users = self.routes.reference_users(gate.reference);
         let lateness = longest(users.iter().map(|&user| self.setup.channels[user].lateness));
         let history = &self.references[index].gate;
@@ -106,6 +107,7 @@ impl Fleet {
         &self,
         phenomenon: Timestamp,
         received: Timestamp,
+        leap: bool,
     ) -> Result<Timestamp, RefusedReason> {
         if phenomenon.0 < 0 {
             return Err(RefusedReason::NegativeTime);
@@ -115,7 +117,13 @@ impl Fleet {
             Clock::Readings => phenomenon,
         };
         let now = self.now.map_or(moved, |now| now.max(moved));
-        let ahead = phenomenon.since(now) > CLOCKS_DIFFER;
+        let ahead = match (self.setup.clock, self.now) {
+            (Clock::Live, _) => phenomenon.since(now) > CLOCKS_DIFFER,
+            (Clock::Readings, Some(before)) => {
+                !leap && phenomenon.since(before) > self.routes.reach
+            }
+            (Clock::Readings, None) => false,
+        };
         if ahead || phenomenon > FAR_FUTURE {
             return Err(RefusedReason::Future);
         }

@@ -70,6 +70,13 @@ impl Pulse {
         self.newest = self.newest.max(Some(phenomenon));
     }
 
+    /// Now was wrong and steps back.
+    pub(super) fn step_back(&mut self, to: Timestamp) {
+        for time in [&mut self.arrival, &mut self.newest, &mut self.resumed] {
+            *time = time.map(|time| time.min(to));
+        }
+    }
+
     /// A configuration that no longer asks about silence takes effect: the alarm goes, too.
     pub(super) fn edit(&mut self, routes: &Routes, now: Timestamp, report: &mut Report<'_>) {
         if routes.several_sources && routes.quiet_after.is_some() {

@@ -70,9 +70,11 @@ fn input() -> impl Strategy<Value = Input> {
             detail: String::new(),
         })),
         2 => time().prop_map(|now| Input::Tick { now }),
-        1 => (0..5_u32, proptest::collection::vec(reading(), 0..4)).prop_map(|(id, readings)| {
-            Input::Supplied(Supplied { channel: ChannelId(id), readings })
-        }),
+        1 => (0..5_u32, time(), time(), proptest::collection::vec(reading(), 0..4)).prop_map(
+            |(id, from, to, readings)| {
+                Input::Supplied(Supplied { channel: ChannelId(id), from, to, readings })
+            }
+        ),
     ]
 }
 

@@ -7,8 +7,8 @@
 //! - `reference NAME measured|constant VALUE|gated VALUE|group A B C … [key value]…`
 //! - `channel NAME REFERENCE [key value]…`
 //! - inputs: `TIME NAME VALUE [received T] [sequence N] [excluded]`, `TIME gate NAME open|shut`,
-//!   `TIME tick`, `TIME refused REASON [NAME]`, `again` (the same setup once more), `supplied NAME`
-//!   with rows `| TIME NAME VALUE`
+//!   `TIME tick`, `TIME refused REASON [NAME]`, `again` (the same setup once more), `supplied NAME
+//!   FROM TO` with rows `| TIME NAME VALUE`
 //! - `=> OUTPUT`: what the input before it says, in order; an input without any says nothing that
 //!   is watched
 //! - `next TIME|never`: when the engine wants its next tick
@@ -77,7 +77,7 @@ fn play(text: &str) -> String {
             ["channel", name, of, rest @ ..] => stage.add_channel(name, of, rest),
             ["next", _] => stage.tell_next(),
             ["again"] => stage.step(&Input::Setup(Box::new(stage.setup.clone()))),
-            ["supplied", name] => {
+            ["supplied", name, from, to] => {
                 let mut readings = Vec::new();
                 while let Some(row) = lines.next_if(|line| line.starts_with('|')) {
                     stage.told.push_str(row);
@@ -86,7 +86,12 @@ fn play(text: &str) -> String {
                     readings.push(stage.reading(words[0], words[1], words[2], &words[3..]));
                 }
                 let channel = stage.channel_id(name);
-                stage.step(&Input::Supplied(Supplied { channel, readings }));
+                stage.step(&Input::Supplied(Supplied {
+                    channel,
+                    from: at(num(from)),
+                    to: at(num(to)),
+                    readings,
+                }));
             }
             words => {
                 let input = stage.input(words);

@@ -272,6 +272,8 @@ fn supplied_rows_come_back_through_their_positions() {
 
     let supplied = Input::Supplied(Supplied {
         channel: ChannelId(0),
+        from: Timestamp(2),
+        to: Timestamp(4),
         readings: found.into_iter().map(|(_, reading)| reading).collect(),
     });
     let mut batch = record.batch();

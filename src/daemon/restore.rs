@@ -68,10 +68,15 @@ pub(super) fn restore(record: &Record) -> Result<Restored, Error> {
 
 /// Keeps the list of what the engine asked for and was not given.
 pub(super) fn note_wanted(input: &Input, outputs: &[Output], wanted: &mut Vec<Wanted>) {
-    if let Input::Supplied(supplied) = input
-        && let Some(first) = wanted.iter().position(|it| it.channel == supplied.channel)
-    {
-        wanted.remove(first);
+    if let Input::Supplied(supplied) = input {
+        let answered = Wanted {
+            channel: supplied.channel,
+            from: supplied.from,
+            to: supplied.to,
+        };
+        if let Some(first) = wanted.iter().position(|it| *it == answered) {
+            wanted.remove(first);
+        }
     }
     // Positions mean other channels after a change of configuration.
     if let Input::Setup(_) = input {

@@ -70,6 +70,9 @@ impl Shell {
             fingerprint = %setup.fingerprint,
             "configuration takes effect"
         );
+        // From here on positions mean other channels: what was asked for by the old ones is
+        // answered first.
+        self.answer_wanted()?;
         self.take(&Input::Setup(Box::new(setup.clone())), &[]);
         self.setup = setup.clone();
         let topics = Topics::new(&self.setup.node);
@@ -129,7 +132,12 @@ impl Shell {
         }
         self.outbox.release();
         // Asked for only now, since the record can be searched only for what is in it.
-        // Only those of this commit: an engine that asks again and again must not stop the daemon.
+        self.answer_wanted()
+    }
+
+    /// Answers what the engine has asked for so far. Only that: an engine that asks again and again
+    /// must not stop the daemon.
+    fn answer_wanted(&mut self) -> Result<(), RecordError> {
         for wanted in self.wanted.clone() {
             self.supply(wanted)?;
         }
@@ -172,7 +180,13 @@ impl Shell {
         sources.extend(setup.map(|setup| Source::Reference(setup.reference)));
         let rows = self.record.readings(&sources, from, to, SUPPLIED_MAX)?;
         let (positions, readings): (Vec<i64>, Vec<_>) = rows.into_iter().unzip();
-        self.take(&Input::Supplied(Supplied { channel, readings }), &positions);
+        let supplied = Supplied {
+            channel,
+            from,
+            to,
+            readings,
+        };
+        self.take(&Input::Supplied(supplied), &positions);
         Ok(())
     }
 }

@@ -140,11 +140,19 @@ pub enum Subject {
     Reference(ReferenceId),
 }
 
-/// Rows from the record, given back.
+/// Rows from the record, given back: the answer to one [`Output::Wanted`]. The shell answers each
+/// once, with whatever the record holds (maybe nothing), and before the next [`Input::Setup`].
+///
+/// They serve the reading on whose behalf they were asked for, however late they are, and nothing
+/// else: time does not move, and what was refused when it first came is passed over.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Supplied {
     /// Whose rows.
     pub channel: ChannelId,
+    /// As it was wanted: from (inclusive).
+    pub from: Timestamp,
+    /// As it was wanted: to (exclusive).
+    pub to: Timestamp,
     /// The readings, in the order in which they were first taken.
     pub readings: Vec<Reading>,
 }

@@ -11,7 +11,7 @@ mod pulse;
 mod silence;
 
 use crate::alarm::Alarm;
-use crate::channel::{Channel, Scene};
+use crate::channel::{Answer, Channel, Rows, Scene};
 use crate::counters::Counters;
 use crate::event::{Gate, Reading, Refused, RefusedReason, Source, Subject, Supplied};
 use crate::gate::GateHistory;
@@ -64,7 +64,7 @@ impl Fleet {
     /// Takes a value or refuses it.
     pub(crate) fn take_reading(&mut self, reading: &Reading, report: &mut Report<'_>) {
         let (source, phenomenon) = (reading.source, reading.phenomenon);
-        let admit = |fleet: &Self, leap| fleet.admit(reading, true, leap);
+        let admit = |fleet: &Self, leap| fleet.admit(reading, leap);
         match self.admit_watching(source, phenomenon, reading.received, report, admit) {
             Ok(now) => {
                 self.advance_to(now);
@@ -78,24 +78,25 @@ impl Fleet {
         }
     }
 
-    /// Takes recorded rows that were asked for: like readings, but however late. What is known
-    /// already counts as a duplicate; time does not move.
+    /// Takes recorded rows that were asked for, however late. What was refused when it first came
+    /// was counted then; time does not move.
     pub(crate) fn take_supplied(&mut self, supplied: &Supplied, report: &mut Report<'_>) {
+        let mut rows = Rows::default();
         for reading in &supplied.readings {
-            match self.admit(reading, false, false) {
-                Ok(_) if self.concerns(reading.source, supplied.channel) => {
-                    self.route(reading, report);
-                }
-                Ok(_) => self.refuse_reading(reading, RefusedReason::UnknownTopic, report),
-                Err(reason) => self.refuse_reading(reading, reason, report),
+            if !self.concerns(reading.source, supplied.channel) {
+                self.refuse_reading(reading, RefusedReason::UnknownTopic, report);
+            } else if self.may_be_supplied(reading) {
+                rows.add(supplied.channel, reading);
             }
         }
+        let answer = Answer {
+            from: supplied.from,
+            to: supplied.to,
+            rows,
+        };
         self.visit(supplied.channel.0 as usize, |channel, scene| {
-            channel.take_supplied(scene, report);
+            channel.take_supplied(&answer, scene, report);
         });
-        for reading in &supplied.readings {
-            self.trim(reading.source);
-        }
         self.pass_time(report);
     }
 
@@ -107,7 +108,9 @@ impl Fleet {
             Ok(now) => {
                 self.advance_to(now);
                 self.pulse.hear(gate.phenomenon, now, &self.routes, report);
-                self.references[gate.reference.0 as usize].gate.insert(gate);
+                let lateness = self.gate_lateness(gate.reference, now);
+                let reference = &mut self.references[gate.reference.0 as usize];
+                reference.gate.insert(gate, lateness);
                 self.hear_reference(gate.reference, report);
                 self.pass_time(report);
             }
@@ -204,7 +207,9 @@ impl Fleet {
                     channel.take_indication(&sample, scene, report);
                 });
                 for user in self.routes.group_users(id).to_vec() {
-                    self.visit(user, |channel, scene| channel.pass_time(scene, report));
+                    self.visit(user, |channel, scene| {
+                        channel.take_member(id, &sample, scene, report);
+                    });
                 }
             }
             Source::Reference(id) => {

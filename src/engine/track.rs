@@ -3,7 +3,8 @@
 //!
 //! Bounded: at most [`CAPACITY`] readings. When it is full the oldest is forgotten, and whatever is
 //! not newer than a forgotten reading counts as late from then on, so that a repeated message can
-//! never slip in again.
+//! never slip in again. Whoever needs more than is kept asks the record and looks at a
+//! [`Track::joined`] one.
 
 use crate::event::{Reading, RefusedReason};
 use crate::time::{Duration, Timestamp};
@@ -130,6 +131,20 @@ impl Track {
         self.newest = self.samples.back().map(|held| held.time).or(self.forgotten);
     }
 
+    /// A track of what is known of `[from, to)` once rows from the record have been added to those
+    /// in memory, each message once. As large as what was supplied.
+    pub(crate) fn joined(&self, rows: &[Sample], from: Timestamp, to: Timestamp) -> Self {
+        let mut samples: Vec<Sample> = self.range(from, to).copied().collect();
+        samples.extend(rows.iter().filter(|row| from <= row.time && row.time < to));
+        samples.sort_by(Sample::order);
+        samples.dedup_by(|next, kept| next.repeats(kept.time, kept.sequence, kept.value));
+        Self {
+            newest: samples.last().map(|newest| newest.time),
+            forgotten: None,
+            samples: samples.into(),
+        }
+    }
+
     /// All readings of exactly this instant.
     pub(crate) fn at(&self, time: Timestamp) -> impl Iterator<Item = &Sample> {
         self.range(time, time.plus(Duration(1)))
@@ -251,6 +266,31 @@ mod tests {
             take(&mut two, *time, *value, None);
         }
         assert_eq!(one, two);
+    }
+
+    #[test]
+    fn rows_from_the_record_join_those_in_memory_once() {
+        let mut track = Track::default();
+        for time in [10, 20, 30] {
+            take(&mut track, time, 1.0, None);
+        }
+        let row = |time, value| Sample {
+            time: Timestamp(time),
+            arrived: Timestamp(0),
+            value,
+            sequence: None,
+        };
+        let rows = [
+            row(20, 1.0),
+            row(5, 2.0),
+            row(20, 3.0),
+            row(4, 9.0),
+            row(30, 9.0),
+        ];
+        let joined = track.joined(&rows, Timestamp(5), Timestamp(30));
+        let seen: Vec<(i64, f64)> = joined.samples.iter().map(|s| (s.time.0, s.value)).collect();
+        assert_eq!(seen, [(5, 2.0), (10, 1.0), (20, 1.0), (20, 3.0)]);
+        assert_eq!(joined.newest(), Some(Timestamp(20)));
     }
 
     #[test]

@@ -16,6 +16,10 @@ const CAN_BE_TEXT: &str = "events hold strings, numbers, lists and structs; JSON
 pub(super) struct SuppliedPositions {
     /// Whose rows.
     pub(super) channel: ChannelId,
+    /// As wanted: from (inclusive).
+    pub(super) from: Timestamp,
+    /// As wanted: to (exclusive).
+    pub(super) to: Timestamp,
     /// Positions of the readings in `inputs`.
     pub(super) positions: Vec<i64>,
 }
@@ -88,6 +92,8 @@ pub(super) fn input_text(input: &Input, positions: &[i64]) -> String {
     let text = match input {
         Input::Supplied(supplied) => serde_json::to_string(&SuppliedPositions {
             channel: supplied.channel,
+            from: supplied.from,
+            to: supplied.to,
             positions: positions.to_vec(),
         }),
         other => serde_json::to_string(other),
@@ -121,6 +127,8 @@ pub(super) fn input_from_text<E: From<serde_json::Error>>(
         .collect::<Result<_, E>>()?;
     Ok(Input::Supplied(Supplied {
         channel: supplied.channel,
+        from: supplied.from,
+        to: supplied.to,
         readings,
     }))
 }
@@ -172,6 +180,8 @@ mod tests {
         };
         let input = Input::Supplied(Supplied {
             channel: ChannelId(2),
+            from: Timestamp(3),
+            to: Timestamp(9),
             readings: vec![reading.clone(), reading.clone()],
         });
         let text = input_text(&input, &[11, 12]);

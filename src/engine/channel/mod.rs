@@ -30,6 +30,7 @@ use crate::track::{Sample, Track};
 use crate::wording::readable;
 use conditions::ChannelAlarms;
 use judgement::{Judgement, Residuals};
+pub(crate) use pairing::{Answer, Rows};
 use pairing::{Found, Pair, Pairing};
 use publishing::Publishing;
 use screening::{Innovation, Screen, Verdict};
@@ -160,10 +161,29 @@ impl Channel {
         self.work_through(found, scene, report);
     }
 
-    /// Rows asked from the record have come.
-    pub(crate) fn take_supplied(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+    /// An indication of another member of its group was taken into that one's track.
+    pub(crate) fn take_member(
+        &mut self,
+        member: ChannelId,
+        sample: &Sample,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
         let mut found = Vec::new();
-        self.pairing.take_supplied(scene, &mut found);
+        let track = &scene.indications[member.0 as usize];
+        self.pairing.take_member(sample, track, scene, &mut found);
+        self.work_through(found, scene, report);
+    }
+
+    /// Rows asked from the record have come.
+    pub(crate) fn take_supplied(
+        &mut self,
+        answer: &Answer,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
+        let mut found = Vec::new();
+        self.pairing.take_supplied(answer, scene, &mut found);
         self.work_through(found, scene, report);
     }
 

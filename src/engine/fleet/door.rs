@@ -3,7 +3,7 @@
 
 use super::{Fleet, longest};
 use crate::event::{Gate, Output, PairFate, Reading, RefusedReason, Rejection, Source};
-use crate::setup::{Clock, ReferenceKind};
+use crate::setup::{Clock, ReferenceId, ReferenceKind};
 use crate::time::{Duration, Timestamp};
 
 /// How far sender's and receiver's clocks may differ: a live time further ahead than this is
@@ -19,20 +19,10 @@ const FAR_FUTURE: Timestamp = Timestamp(7_258_118_400_000_000_000);
 const LARGEST: f64 = 1e100;
 
 impl Fleet {
-    /// Whether a reading may come in, and what now is once it has. `timely` is false for rows from
-    /// the record; with `leap`, a recording's time may be as far ahead of now as it likes.
-    pub(super) fn admit(
-        &self,
-        reading: &Reading,
-        timely: bool,
-        leap: bool,
-    ) -> Result<Timestamp, RefusedReason> {
-        if !self.is_known(reading.source) {
-            return Err(RefusedReason::UnknownTopic);
-        }
-        if !reading.value.is_finite() || reading.value.abs() > LARGEST {
-            return Err(RefusedReason::NotFinite);
-        }
+    /// Whether a reading may come in, and what now is once it has. With `leap`, a recording's time
+    /// may be as far ahead of now as it likes.
+    pub(super) fn admit(&self, reading: &Reading, leap: bool) -> Result<Timestamp, RefusedReason> {
+        self.admit_value(reading)?;
         let now = self.admit_time(reading.phenomenon, reading.received, leap)?;
         let (track, lateness) = match reading.source {
             Source::Indication(id) => {
@@ -42,25 +32,53 @@ impl Fleet {
                     self.setup.channels[index].lateness,
                 )
             }
-            Source::Reference(id) => {
-                let users = self.routes.reference_users(id);
-                (
-                    &self.references[id.0 as usize].values,
-                    longest(users.iter().map(|&user| self.setup.channels[user].lateness)),
-                )
-            }
+            Source::Reference(id) => (
+                &self.references[id.0 as usize].values,
+                self.reference_lateness(id),
+            ),
         };
-        if timely {
-            let ahead = self.ahead(track.newest(), now);
-            track.check(reading, Duration(lateness.0.saturating_add(ahead.0)))?;
-        } else if track.holds(reading) {
-            return Err(RefusedReason::Duplicate);
-        }
+        let ahead = self.ahead(track.newest(), now);
+        track.check(reading, Duration(lateness.0.saturating_add(ahead.0)))?;
         if reading.excluded {
             return Err(RefusedReason::StatusExcluded);
         }
         self.admit_range(reading)?;
         Ok(now)
+    }
+
+    /// Whether a row from the record may be used: as [`Fleet::admit`], but however late, and
+    /// whether or not it is in memory. The record also holds what was refused when it came.
+    pub(super) fn may_be_supplied(&self, reading: &Reading) -> bool {
+        let ahead = reading.phenomenon.since(reading.received) > CLOCKS_DIFFER;
+        let was_ahead = self.setup.clock == Clock::Live && ahead;
+        let in_time = 0 <= reading.phenomenon.0 && reading.phenomenon <= FAR_FUTURE;
+        in_time
+            && !was_ahead
+            && !reading.excluded
+            && self.admit_value(reading).is_ok()
+            && self.admit_range(reading).is_ok()
+    }
+
+    /// How late a value or gate event of a reference may come: as its most patient channel allows.
+    pub(super) fn reference_lateness(&self, id: ReferenceId) -> Duration {
+        let users = self.routes.reference_users(id);
+        longest(users.iter().map(|&user| self.setup.channels[user].lateness))
+    }
+
+    /// The same for a gate event, behind the newest of its gate, at `now`.
+    pub(super) fn gate_lateness(&self, id: ReferenceId, now: Timestamp) -> Duration {
+        let ahead = self.ahead(self.references[id.0 as usize].gate.newest(), now);
+        Duration(self.reference_lateness(id).0.saturating_add(ahead.0))
+    }
+
+    fn admit_value(&self, reading: &Reading) -> Result<(), RefusedReason> {
+        if !self.is_known(reading.source) {
+            return Err(RefusedReason::UnknownTopic);
+        }
+        if !reading.value.is_finite() || reading.value.abs() > LARGEST {
+            return Err(RefusedReason::NotFinite);
+        }
+        Ok(())
     }
 
     /// Whether a gate event may come in, and what now is once it has; `leap` as for readings.
@@ -73,11 +91,8 @@ impl Fleet {
             return Err(RefusedReason::UnknownTopic);
         }
         let now = self.admit_time(gate.phenomenon, gate.received, leap)?;
-        let users = self.routes.reference_users(gate.reference);
-        let lateness = longest(users.iter().map(|&user| self.setup.channels[user].lateness));
-        let history = &self.references[index].gate;
-        let ahead = self.ahead(history.newest(), now);
-        history.check(gate, Duration(lateness.0.saturating_add(ahead.0)))?;
+        let lateness = self.gate_lateness(gate.reference, now);
+        self.references[index].gate.check(gate, lateness)?;
         Ok(now)
     }
 
@@ -141,7 +156,8 @@ impl Fleet {
         let ReferenceKind::Constant { value, gated } = self.setup.references[id].kind else {
             return None;
         };
-        if gated && !self.references[id].gate.is_open(reading.phenomenon) {
+        let instant = reading.phenomenon.minus(setup.lag);
+        if gated && self.references[id].gate.is_open(instant) != Some(true) {
             return None;
         }
         let (lowest, highest) = setup.screening.range?;

@@ -2,8 +2,7 @@
 //! the mean of the indications within it, if they cover enough of it.
 
 use super::look::mean;
-use super::{Fate, Found, Pair, Scene, settles};
-use crate::event::RefusedReason;
+use super::{Fate, Found, Pair, Scene, Sight, missed, settles};
 use crate::setup::Stamped;
 use crate::time::{Duration, Timestamp};
 use crate::track::Sample;
@@ -24,34 +23,44 @@ pub(super) fn span(stamp: Timestamp, scene: &Scene<'_>) -> (Timestamp, Timestamp
     (from, from.plus(length))
 }
 
-pub(super) fn resolve(sample: &Sample, scene: &Scene<'_>, found: &mut Vec<Found>) -> Fate {
+pub(super) fn resolve(
+    sample: &Sample,
+    sight: &Sight<'_>,
+    scene: &Scene<'_>,
+    found: &mut Vec<Found>,
+) -> Fate {
     let (from, to) = span(sample.time, scene);
-    let ready = settles(sample, scene).max(to.plus(scene.setup.lateness));
-    if scene.now < ready {
-        return Fate::Waits(Some(ready));
+    let track = sight.own;
+    if !sight.is_final() {
+        // Until an indication past the end has come, more may be on its way (a backlog).
+        let Some(beyond) = track.first_after(to.minus(Duration(1))) else {
+            return Fate::Waits(None);
+        };
+        let inside = track.range(from, to).map(|held| settles(held, scene)).max();
+        let ready = settles(sample, scene)
+            .max(settles(beyond, scene))
+            .max(inside.unwrap_or(to))
+            .max(to.plus(scene.setup.lateness));
+        if sight.now < ready {
+            return Fate::Waits(Some(ready));
+        }
+        if track.forgotten().is_some_and(|edge| edge >= from) {
+            return Fate::Needs { from, to };
+        }
     }
-    let track = &scene.indications[scene.id.0 as usize];
     let times = track.range(from, to).map(|held| held.time);
     let coverage = coverage(times, from, to, scene.setup.max_gap);
-    if coverage >= LEAST_COVERAGE
-        && let Some((indication, _)) = mean(track.range(from, to).map(|held| held.value))
-    {
-        found.push(Found::Pair(Pair {
+    let mean = mean(track.range(from, to).map(|held| held.value));
+    found.push(match mean {
+        Some((indication, _)) if coverage >= LEAST_COVERAGE => Found::Pair(Pair {
             time: middle(from, to),
             indication,
             reference: sample.value,
             weight: weight(coverage, scene),
-        }));
-        return Fate::Done;
-    }
-    if track.newest().is_some_and(|newest| newest >= to) {
-        found.push(Found::Missed {
-            time: sample.time,
-            reason: RefusedReason::NoPartner,
-        });
-        return Fate::Done;
-    }
-    Fate::Waits(None)
+        }),
+        _ => missed(sample),
+    });
+    Fate::Done
 }
 
 /// Part of `[from, to)` that lies within half a `max_gap` of a reading: an indication stands for

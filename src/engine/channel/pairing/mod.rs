@@ -2,8 +2,8 @@
 //!
 //! The sparser stream makes the pairs (see `instant`). How a pair comes about depends on the
 //! reference:
-//! - a constant: every indication is a pair at once; behind a gate, as soon as no gate event for
-//!   its instant can come;
+//! - a constant: every indication is a pair at once; behind a gate ([`gated`]), as soon as no gate
+//!   event for its instant can come;
 //! - a value that stands for an instant: [`instant`];
 //! - a value that stands for an interval: [`interval`];
 //! - the median of a group: [`group`].
@@ -12,33 +12,41 @@
 //!
 //! Waiting for stragglers: what is known around an instant is *settled* when now is `lateness` past
 //! the reading that bounds it. So readings that arrive within `lateness` of now give the same pairs
-//! in any order.
+//! in any order. A waiting reading is looked at again when its time has come ([`Pending::due`]), or
+//! when something arrives that stands next to its instant.
 //!
 //! One exception: an exact match is made at once, so of several values of one source for one
 //! instant those that came first count.
 //!
+//! What is no longer in memory is asked from the record; the reading then waits among the
+//! [`requests`] until the rows are supplied.
+//!
 //! Bounded: at most [`PENDING_MAX`] readings wait; when it is full the oldest is let go (see
 //! `overflow`).
 
+mod gated;
 mod group;
 mod instant;
 mod interval;
 mod look;
+mod requests;
 
 use super::Scene;
 use crate::event::RefusedReason;
 use crate::setup::ReferenceKind;
 use crate::time::{Duration, Timestamp};
-use crate::track::Sample;
+use crate::track::{Sample, Track};
+pub(crate) use requests::{Answer, Rows};
+use requests::{Asker, Request, Requests};
 use serde::{Deserialize, Serialize};
-use std::collections::VecDeque;
+use std::collections::{BTreeSet, VecDeque};
 
 /// Most readings that wait for their partner.
 const PENDING_MAX: usize = 4096;
-/// How many made pairs are remembered so that an indication does not make a second one.
-const MADE_MAX: usize = 64;
-/// How long to wait for rows asked from the record before going on without them.
-const PATIENCE: Duration = Duration::from_seconds(60);
+/// Most indications remembered for having made a pair, whatever `lateness` asks for.
+const MADE_MAX: usize = 4096;
+/// The due time of a reading that is to be looked at now.
+const AT_ONCE: Timestamp = Timestamp(i64::MIN);
 
 /// One reference value with the indication that belongs to it.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -78,16 +86,35 @@ pub(crate) enum Found {
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 struct Pending {
     sample: Sample,
-    /// When rows from the record were asked for on its behalf.
-    asked: Option<Timestamp>,
+    /// When time alone may end the waiting; `None`: only an arrival can.
+    due: Option<Timestamp>,
 }
 
-/// What became of a waiting reading.
+/// What became of a reading that was looked at.
 enum Fate {
     /// It is dealt with.
     Done,
     /// It waits on; time alone can end that at the given instant.
     Waits(Option<Timestamp>),
+    /// It needs rows of `[from, to)` that are no longer in memory.
+    Needs { from: Timestamp, to: Timestamp },
+}
+
+/// What is known when a reading is looked at.
+struct Sight<'a> {
+    /// The channel's own indications.
+    own: &'a Track,
+    /// The values of its reference.
+    values: &'a Track,
+    /// Now; the end of time where nothing more can come because the record was asked.
+    now: Timestamp,
+}
+
+impl Sight<'_> {
+    /// Whether nothing more can come.
+    fn is_final(&self) -> bool {
+        self.now == Timestamp(i64::MAX)
+    }
 }
 
 /// The state of the station.
@@ -95,8 +122,12 @@ enum Fate {
 pub(crate) struct Pairing {
     /// Ordered by phenomenon time.
     pending: VecDeque<Pending>,
-    /// Phenomenon times of indications that made a pair where the reference is the denser stream.
-    made: VecDeque<Timestamp>,
+    requests: Requests,
+    /// Instants of indications that made a pair of their own, so that they make no second one.
+    made: BTreeSet<Timestamp>,
+    /// Phenomenon time of the newest reference value let go before an indication came for it.
+    let_go: Option<Timestamp>,
+    /// The earliest due time of all that wait.
     due: Option<Timestamp>,
 }
 
@@ -126,11 +157,29 @@ impl Pairing {
                 }));
             }
             ReferenceKind::Constant { gated: true, .. } | ReferenceKind::Group { .. } => {
-                self.wait(sample, None, scene, found);
+                self.wait(sample, scene, found);
                 self.advance(scene, found);
             }
-            ReferenceKind::Measured => self.advance(scene, found),
+            ReferenceKind::Measured => {
+                self.touch_beside(sample.time, own(scene), scene);
+                if let Some(request) = instant::forgotten_values(sample, self.let_go, scene) {
+                    self.requests.ask(request, found);
+                }
+                self.advance(scene, found);
+            }
         }
+    }
+
+    /// An indication of another member of the channel's group was taken into its track.
+    pub(crate) fn take_member(
+        &mut self,
+        sample: &Sample,
+        track: &Track,
+        scene: &Scene<'_>,
+        found: &mut Vec<Found>,
+    ) {
+        self.touch_beside(sample.time, track, scene);
+        self.advance(scene, found);
     }
 
     /// A value of the channel's reference was taken into its track.
@@ -140,145 +189,207 @@ impl Pairing {
         scene: &Scene<'_>,
         found: &mut Vec<Found>,
     ) {
-        let (from, to) = if scene.reference.stands_for > Duration::ZERO {
-            interval::span(sample.time, scene)
-        } else {
-            let instant = sample.time.plus(scene.setup.lag);
-            let half = scene.setup.max_gap;
-            (instant.minus(half), instant.plus(half))
-        };
-        let forgotten = scene.indications[scene.id.0 as usize].forgotten();
-        let asked = forgotten
-            .is_some_and(|edge| edge >= from)
-            .then_some(scene.now);
-        if asked.is_some() {
-            found.push(Found::Wanted { from, to });
+        if is_instant(scene) {
+            let (after, until) = instant::concerned(sample, scene);
+            self.touch(after, until, scene);
         }
-        self.wait(sample, asked, scene, found);
+        self.wait(sample, scene, found);
         self.advance(scene, found);
     }
 
     /// Rows that were asked for have come (or there are none).
-    pub(crate) fn take_supplied(&mut self, scene: &Scene<'_>, found: &mut Vec<Found>) {
-        for pending in &mut self.pending {
-            pending.asked = None;
+    pub(crate) fn take_supplied(
+        &mut self,
+        answer: &Answer,
+        scene: &Scene<'_>,
+        found: &mut Vec<Found>,
+    ) {
+        for request in self.requests.answered(answer) {
+            let (from, to) = (request.from, request.to);
+            let sight = Sight {
+                own: &own(scene).joined(&answer.rows.own, from, to),
+                values: &scene.values.joined(&answer.rows.values, from, to),
+                now: Timestamp(i64::MAX),
+            };
+            let sample = &request.sample;
+            let fate = match request.asker {
+                Asker::Reference => self.resolve(sample, &sight, scene, found),
+                Asker::Indication => {
+                    instant::resolve_indication(sample, &sight, &mut self.made, scene, found)
+                }
+            };
+            if !matches!(fate, Fate::Done) {
+                found.push(missed(sample));
+            }
         }
-        self.advance(scene, found);
     }
 
     /// Makes every pair that can be made now.
     pub(crate) fn advance(&mut self, scene: &Scene<'_>, found: &mut Vec<Found>) {
-        let mut kept = Vec::new();
-        let mut due: Option<Timestamp> = None;
-        while let Some(pending) = self.pending.front().copied() {
-            if cannot_act_yet(&pending.sample, scene) {
-                break;
+        if self.due.is_none_or(|due| scene.now < due) {
+            return;
+        }
+        let sight = Sight {
+            own: own(scene),
+            values: scene.values,
+            now: scene.now,
+        };
+        let mut index = 0;
+        while let Some(pending) = self.pending.get(index).copied() {
+            if pending.due.is_none_or(|due| scene.now < due) {
+                index += 1;
+                continue;
             }
-            self.pending.pop_front();
-            let fate = match pending.asked {
-                Some(at) if scene.now < at.plus(PATIENCE) => Fate::Waits(Some(at.plus(PATIENCE))),
-                _ => self.resolve(&pending.sample, scene, found),
-            };
-            if let Fate::Waits(until) = fate {
-                kept.push(pending);
-                due = [due, until].into_iter().flatten().min();
-                // Gated readings settle in order: the rest would only be looked at in vain.
-                if matches!(scene.reference.kind, ReferenceKind::Constant { .. }) {
-                    break;
+            match self.resolve(&pending.sample, &sight, scene, found) {
+                Fate::Waits(due) => {
+                    self.pending[index].due = due;
+                    index += 1;
+                    continue;
                 }
+                Fate::Needs { from, to } => self.requests.ask(
+                    Request {
+                        sample: pending.sample,
+                        asker: Asker::Reference,
+                        from,
+                        to,
+                    },
+                    found,
+                ),
+                Fate::Done => {}
             }
+            self.pending.remove(index);
         }
-        for pending in kept.into_iter().rev() {
-            self.pending.push_front(pending);
-        }
-        self.due = due;
+        self.due = self.pending.iter().filter_map(|pending| pending.due).min();
+        self.forget_made(scene);
     }
 
-    fn resolve(&mut self, sample: &Sample, scene: &Scene<'_>, found: &mut Vec<Found>) -> Fate {
-        match &scene.reference.kind {
-            ReferenceKind::Constant { value, .. } => gated(sample, *value, scene, found),
-            ReferenceKind::Group { members } => group::resolve(sample, members, scene, found),
-            ReferenceKind::Measured if scene.reference.stands_for > Duration::ZERO => {
-                interval::resolve(sample, scene, found)
-            }
-            ReferenceKind::Measured => instant::resolve(sample, &mut self.made, scene, found),
-        }
-    }
-
-    /// Puts a reading among those that wait.
-    fn wait(
+    fn resolve(
         &mut self,
         sample: &Sample,
-        asked: Option<Timestamp>,
+        sight: &Sight<'_>,
         scene: &Scene<'_>,
         found: &mut Vec<Found>,
-    ) {
+    ) -> Fate {
+        match &scene.reference.kind {
+            ReferenceKind::Constant { value, .. } => gated::resolve(sample, *value, scene, found),
+            ReferenceKind::Group { members } => group::resolve(sample, members, scene, found),
+            ReferenceKind::Measured if is_instant(scene) => {
+                instant::resolve(sample, sight, &mut self.made, scene, found)
+            }
+            ReferenceKind::Measured => interval::resolve(sample, sight, scene, found),
+        }
+    }
+
+    /// Puts a reading among those that wait, to be looked at now.
+    fn wait(&mut self, sample: &Sample, scene: &Scene<'_>, found: &mut Vec<Found>) {
         let place = self
             .pending
             .partition_point(|held| held.sample.time <= sample.time);
         let pending = Pending {
             sample: *sample,
-            asked,
+            due: Some(AT_ONCE),
         };
         self.pending.insert(place, pending);
+        self.due = Some(AT_ONCE);
         if self.pending.len() > PENDING_MAX {
             self.overflow(scene, found);
         }
     }
 
-    /// Lets the oldest go. It counts as missed, except where another one waits for the same
-    /// indication to come: there the reference is the denser stream, the indication will make the
-    /// pair, and nothing is lost.
+    /// Has those looked at again that wait for something beside the instant `time`: a reading came
+    /// there, and `track` holds it. Beyond the next readings on both sides it changes nothing.
+    fn touch_beside(&mut self, time: Timestamp, track: &Track, scene: &Scene<'_>) {
+        let before = track
+            .last_until(time.minus(Duration(1)))
+            .map(|held| held.time);
+        let until = track
+            .first_after(time)
+            .map_or(time, |held| held.time.minus(Duration(1)));
+        self.touch(before, until, scene);
+    }
+
+    /// Has those looked at again whose awaited instant lies in (after, until].
+    fn touch(&mut self, after: Option<Timestamp>, until: Timestamp, scene: &Scene<'_>) {
+        let start = after.map_or(0, |after| {
+            self.pending
+                .partition_point(|held| awaited(&held.sample, scene) <= after)
+        });
+        let touched = self.pending.iter_mut().skip(start);
+        for pending in touched.take_while(|held| awaited(&held.sample, scene) <= until) {
+            pending.due = Some(AT_ONCE);
+            self.due = Some(AT_ONCE);
+        }
+    }
+
+    /// Lets the oldest go. It counts as missed, except a value for an instant from which no
+    /// indication has come yet: should one come after all, it asks the record for the values
+    /// around it, and nothing is lost.
     fn overflow(&mut self, scene: &Scene<'_>, found: &mut Vec<Found>) {
         let Some(oldest) = self.pending.pop_front() else {
             return;
         };
-        let newest = scene.indications[scene.id.0 as usize].newest();
-        let denser = scene.reference.kind == ReferenceKind::Measured
-            && newest.is_none_or(|newest| oldest.sample.time.plus(scene.setup.lag) > newest);
-        if !denser {
-            let reason = match scene.reference.kind {
-                ReferenceKind::Group { .. } => RefusedReason::GroupTooSmall,
-                _ => RefusedReason::NoPartner,
-            };
-            found.push(Found::Missed {
-                time: oldest.sample.time,
-                reason,
-            });
+        let newest = own(scene).newest();
+        let sample = &oldest.sample;
+        if is_instant(scene) && newest.is_none_or(|newest| awaited(sample, scene) > newest) {
+            self.let_go = self.let_go.max(Some(sample.time));
+            return;
+        }
+        found.push(match scene.reference.kind {
+            ReferenceKind::Group { .. } => Found::Missed {
+                time: sample.time,
+                reason: RefusedReason::GroupTooSmall,
+            },
+            _ => missed(sample),
+        });
+    }
+
+    /// Forgets indications that no reference value can name any more: none is waiting from before
+    /// them, and one still to come would be late.
+    fn forget_made(&mut self, scene: &Scene<'_>) {
+        let setup = scene.setup;
+        let Some(newest) = scene.values.newest() else {
+            return;
+        };
+        let oldest = self.pending.front().map(|pending| pending.sample.time);
+        let still_named = newest.minus(setup.lateness).minus(setup.max_gap);
+        let edge = oldest
+            .map_or(still_named, |oldest| oldest.min(still_named))
+            .plus(setup.lag);
+        while self.made.first().is_some_and(|&made| made < edge) || self.made.len() > MADE_MAX {
+            self.made.pop_first();
         }
     }
 }
 
-/// Whether neither this reading nor any later one can do anything yet: they wait for indications
-/// still to come.
-fn cannot_act_yet(sample: &Sample, scene: &Scene<'_>) -> bool {
-    if scene.reference.kind != ReferenceKind::Measured
-        || scene.reference.stands_for > Duration::ZERO
-    {
-        return false;
-    }
-    let newest = scene.indications[scene.id.0 as usize].newest();
-    newest.is_none_or(|newest| sample.time.plus(scene.setup.lag) > newest)
+/// Whether the channel's reference gives values for instants.
+fn is_instant(scene: &Scene<'_>) -> bool {
+    scene.reference.kind == ReferenceKind::Measured && scene.reference.stands_for == Duration::ZERO
 }
 
-/// An indication against a constant that holds only while its gate is open.
-fn gated(sample: &Sample, value: f64, scene: &Scene<'_>, found: &mut Vec<Found>) -> Fate {
-    let settled = settles(sample, scene);
-    if scene.now < settled {
-        return Fate::Waits(Some(settled));
+/// The channel's own indications.
+fn own<'a>(scene: &Scene<'a>) -> &'a Track {
+    &scene.indications[scene.id.0 as usize]
+}
+
+/// The instant around which a waiting reading needs to know more.
+fn awaited(sample: &Sample, scene: &Scene<'_>) -> Timestamp {
+    match scene.reference.kind {
+        ReferenceKind::Measured if is_instant(scene) => sample.time.plus(scene.setup.lag),
+        ReferenceKind::Measured => interval::span(sample.time, scene).1,
+        ReferenceKind::Group { .. } | ReferenceKind::Constant { .. } => {
+            sample.time.minus(scene.setup.lag)
+        }
     }
-    if scene.gate.is_open(sample.time) {
-        found.push(Found::Pair(Pair {
-            time: sample.time,
-            indication: sample.value,
-            reference: value,
-            weight: 1.0,
-        }));
-    }
-    Fate::Done
 }
 
 /// From when on nothing can come any more that belongs before this reading.
 fn settles(sample: &Sample, scene: &Scene<'_>) -> Timestamp {
     sample.time.max(sample.arrived).plus(scene.setup.lateness)
+}
+
+fn missed(sample: &Sample) -> Found {
+    Found::Missed {
+        time: sample.time,
+        reason: RefusedReason::NoPartner,
+    }
 }

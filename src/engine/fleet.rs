@@ -5,6 +5,7 @@
 //! Channels joined by a reference or a group form an island; nothing crosses islands but now.
 
 mod adopt;
+mod agenda;
 mod door;
 mod leap;
 mod pulse;
@@ -22,6 +23,7 @@ use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
 use crate::wording::readable;
 use adopt::Routes;
+use agenda::{Agenda, Waiter};
 pub(crate) use leap::LeapWatch;
 use pulse::Pulse;
 use serde::{Deserialize, Serialize};
@@ -41,6 +43,7 @@ pub struct Fleet {
     references: Vec<Reference>,
     /// By channel.
     channels: Vec<Channel>,
+    agenda: Agenda,
     /// Last issue number of channels that were removed, by name: a number is never used twice.
     retired: BTreeMap<String, u64>,
 }
@@ -258,33 +261,47 @@ impl Fleet {
             alive: self.pulse.alive(now, &self.routes),
             resumed: self.pulse.resumed(),
         };
-        act(&mut self.channels[index], &scene);
+        let channel = &mut self.channels[index];
+        act(channel, &scene);
+        self.agenda.put(Waiter::Channel(index), channel.wake());
     }
 
-    /// Lets everything act that waits for time.
+    /// Lets everything act whose time has come.
     fn pass_time(&mut self, report: &mut Report<'_>) {
         let Some(now) = self.now else { return };
         self.pulse.watch(now, &self.routes, report);
-        for index in 0..self.references.len() {
-            self.watch_reference(index, report);
-        }
-        for index in 0..self.channels.len() {
-            if self.channels[index].wake().is_some_and(|wake| wake <= now) {
-                self.visit(index, |channel, scene| channel.pass_time(scene, report));
+        for waiter in self.agenda.due(now) {
+            match waiter {
+                Waiter::Reference(index) => self.watch_reference(index, report),
+                Waiter::Channel(index) => {
+                    self.visit(index, |channel, scene| channel.pass_time(scene, report));
+                }
             }
         }
     }
 
     /// The earliest time after now at which something waits.
     pub(crate) fn next_wake(&self) -> Option<Timestamp> {
-        let channels = self.channels.iter().filter_map(Channel::wake);
-        let references = (0..self.references.len()).filter_map(|index| self.stale_at(index));
         let node = self.pulse.quiet_at(&self.routes);
-        channels
-            .chain(references)
-            .chain(node)
-            .filter(|&time| self.now.is_none_or(|now| time > now))
-            .min()
+        let node = node.filter(|&time| self.now.is_none_or(|now| time > now));
+        self.agenda.next(self.now).into_iter().chain(node).min()
+    }
+
+    /// Writes everybody into the agenda: another configuration is in force.
+    fn schedule_all(&mut self) {
+        self.agenda = Agenda::default();
+        for (index, channel) in self.channels.iter().enumerate() {
+            self.agenda.put(Waiter::Channel(index), channel.wake());
+        }
+        for index in 0..self.references.len() {
+            self.schedule_reference(index);
+        }
+    }
+
+    /// Writes into the agenda when a reference's silence is next to be looked at.
+    fn schedule_reference(&mut self, index: usize) {
+        let time = self.watched_from(index);
+        self.agenda.put(Waiter::Reference(index), time);
     }
 
     /// Whose counters a source's refusals go to.

@@ -1,5 +1,6 @@
 //! A new configuration takes effect: who listens to whom, who keeps its state, who starts anew.
 
+use super::agenda::Agenda;
 use super::pulse::Pulse;
 use super::{Fleet, Reference, silence};
 use crate::channel::Channel;
@@ -200,8 +201,10 @@ impl Fleet {
             indications,
             channels,
             retired: old.retire(setup),
+            agenda: Agenda::default(),
         };
         report.leaps.settle();
+        self.schedule_all();
         old.dismiss_channels(&taken, report);
         old.dismiss_references(&taken_references, report);
         let now = self.now.unwrap_or(Timestamp(0));

@@ -182,6 +182,7 @@ impl Fleet {
                 channel.step_back(ChannelId(id), setup, to, report);
             }
         }
+        self.schedule_all();
     }
 }
 

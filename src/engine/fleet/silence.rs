@@ -45,10 +45,16 @@ impl Fleet {
         Some(self.pulse.resumed().map_or(last, |time| time.max(last)))
     }
 
-    /// When the reference becomes stale, if nothing comes.
-    pub(super) fn stale_at(&self, index: usize) -> Option<Timestamp> {
+    /// From when on the reference is to be watched: when it becomes stale if nothing comes; now,
+    /// while it is stale or before its silence has begun to count; never without a limit.
+    pub(super) fn watched_from(&self, index: usize) -> Option<Timestamp> {
         let limit = self.limit(index)?;
-        Some(self.silent_since(index)?.plus(limit).plus(super::TICK))
+        let silent_since = self
+            .silent_since(index)
+            .filter(|_| !self.references[index].stale.is_raised());
+        Some(silent_since.map_or(Timestamp(i64::MIN), |since| {
+            since.plus(limit).plus(super::TICK)
+        }))
     }
 
     /// The age limit that applies: a constant without a gate never goes stale.
@@ -62,6 +68,11 @@ impl Fleet {
 
     /// Raises or clears the reference's stale alarm.
     pub(super) fn watch_reference(&mut self, index: usize, report: &mut Report<'_>) {
+        self.judge_silence(index, report);
+        self.schedule_reference(index);
+    }
+
+    fn judge_silence(&mut self, index: usize, report: &mut Report<'_>) {
         let (Some(limit), Some(now)) = (self.limit(index), self.now) else {
             return;
         };

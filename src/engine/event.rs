@@ -372,8 +372,10 @@ pub struct DegreeChange {
 pub struct Evidence {
     /// The criterion per degree.
     pub criterion: CriterionValues,
-    /// By how much the new degree is better (raise) or worse (lower).
+    /// By how much the higher degree is better; the least of those in the run that decided.
     pub gain: f64,
+    /// What the gain was judged by, in words: the configured criterion, or in a small sample more.
+    pub judged_by: String,
     /// How much was needed.
     pub needed: f64,
     /// For how many segments in a row it held.

@@ -520,7 +520,7 @@ fn tell_degree(change: Change, scene: &Scene<'_>, report: &mut Report<'_>) {
         ("degree-lowered", "lowered")
     };
     let (gain, segments) = (evidence.gain, evidence.held_segments);
-    let criterion = evidence.criterion.name.clone();
+    let judged_by = evidence.judged_by.clone();
     report.say(Output::Degree(Box::new(DegreeChange {
         channel: scene.id,
         at: scene.now,
@@ -530,8 +530,8 @@ fn tell_degree(change: Change, scene: &Scene<'_>, report: &mut Report<'_>) {
     })));
     report.notice(scene.now, Subject::Channel(scene.id), code, || {
         format!(
-            "{}: the degree of the drift was {word} from {from} to {to}: {criterion} differs \
-             by {gain:.1}, held for {segments} segments",
+            "{}: the degree of the drift was {word} from {from} to {to}: the higher one gains \
+             {gain:.1} (judged by {judged_by}), held for {segments} segments",
             scene.setup.name
         )
     });

@@ -147,10 +147,26 @@ impl Judged {
         }
     }
 
+    /// What a gain is judged by, in words: see [`Judged::cautious_gain`] and [`aicc_price`].
+    fn judged_by(&self, criterion: Criterion, raises: bool) -> String {
+        if raises && self.effective < SMALL_SAMPLE {
+            return format!(
+                "the smaller gain by BIC and by AICc, whose price is at most {HIGHEST_PRICE} per \
+                 coefficient"
+            );
+        }
+        let name = match criterion {
+            Criterion::Bic => "BIC",
+            Criterion::Aicc => "AICc",
+        };
+        name.to_owned()
+    }
+
     fn evidence(&self, setup: &FitSetup, verdict: Verdict) -> Evidence {
         Evidence {
             criterion: self.criterion_values(setup.criterion),
             gain: verdict.gain + 0.0,
+            judged_by: self.judged_by(setup.criterion, verdict.raises),
             needed: verdict.needed,
             held_segments: verdict.held,
             needed_segments: verdict.needed_held,
@@ -190,6 +206,8 @@ struct Verdict {
     needed: f64,
     held: u32,
     needed_held: u32,
+    /// Up, not down.
+    raises: bool,
 }
 
 /// Whether the run of gains, newest last, has lasted long enough: for some length m of its newest
@@ -208,6 +226,7 @@ fn lasting(gains: &VecDeque<f64>, when_full: f64) -> Option<Verdict> {
                 needed: LEAST_GAIN,
                 held,
                 needed_held: whole_segments(needed_held),
+                raises: true,
             });
         }
     }
@@ -298,6 +317,7 @@ impl Fit {
             needed: AS_GOOD,
             held: self.degree.idle,
             needed_held: whole_segments(needed_held),
+            raises: false,
         })
     }
 
@@ -390,6 +410,11 @@ mod tests {
             assert!(evidence.held_segments >= evidence.needed_segments);
             assert_eq!(evidence.rss.len(), 3);
             assert_eq!(evidence.criterion.name, "BIC");
+            // The evidence names what decided, which in a small sample is not BIC alone.
+            assert_eq!(
+                evidence.judged_by == "BIC",
+                evidence.effective_sample_size >= SMALL_SAMPLE
+            );
             assert!(evidence.effective_sample_size <= f64::from(evidence.segments));
         }
         let last = 2e-4 * 511.0 * 511.0;

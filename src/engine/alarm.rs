@@ -76,6 +76,11 @@ impl Alarm {
         self.state != AlarmState::Normal
     }
 
+    /// Whether it counts evaluations that speak for another state.
+    pub(crate) fn is_moving(&self) -> bool {
+        self.run > 0
+    }
+
     /// Takes one evaluation.
     pub(crate) fn evaluate(
         &mut self,

@@ -36,6 +36,11 @@ impl ChannelAlarms {
         self.data_gap.is_raised()
     }
 
+    /// Whether an alarm that judgements drive has begun to count towards another state.
+    pub(crate) fn are_moving(&self) -> bool {
+        self.error_limit.is_moving() || self.drift_rate.is_moving()
+    }
+
     /// Evaluates what follows from a judgement: the error against its limit, the drift rate against
     /// its own.
     pub(crate) fn judge(

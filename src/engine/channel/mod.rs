@@ -15,6 +15,7 @@ mod conditions;
 mod judgement;
 mod pairing;
 mod publishing;
+mod review;
 mod screening;
 #[cfg(test)]
 pub(crate) mod testing;
@@ -29,17 +30,13 @@ use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
 use crate::wording::readable;
 use conditions::ChannelAlarms;
-use judgement::{Judgement, Residuals};
+use judgement::Residuals;
 pub(crate) use pairing::{Answer, Rows};
 use pairing::{Found, Pair, Pairing};
 use publishing::Publishing;
+use review::Judged;
 use screening::{Innovation, Screen, Verdict};
 use serde::{Deserialize, Serialize};
-
-/// A judgement is due when so small a part of the window is new since the last (one pair in windows
-/// up to this size, and always when a segment closed): merging the window's segments costs more
-/// than a pair's insertion.
-const JUDGED_PART: u64 = 2048;
 
 /// What a channel can see while it acts: its own setup, and what others share with it.
 pub(crate) struct Scene<'a> {
@@ -88,14 +85,6 @@ struct History {
     range: Option<(f64, f64)>,
     /// The last judgement in numbers, for the standing.
     judged: Option<Judged>,
-}
-
-#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
-struct Judged {
-    degree: u8,
-    correction: f64,
-    u: f64,
-    zone: Option<crate::event::Zone>,
 }
 
 impl Channel {
@@ -349,7 +338,7 @@ impl Channel {
             self.alarms
                 .screen(locked_out, innovation.value, scene, report);
         }
-        if self.history.unjudged.saturating_mul(JUDGED_PART) >= self.fit.window().rows() {
+        if self.is_worth_judging(scene) {
             self.judge(scene, report);
         }
     }
@@ -402,11 +391,11 @@ impl Channel {
         let (lowest, highest) = history.range.unwrap_or((pair.reference, pair.reference));
         history.range = Some((lowest.min(pair.reference), highest.max(pair.reference)));
         self.residuals.push(pair.time, error);
-        if inserted.closed {
-            history.unjudged = history.unjudged.max(self.fit.window().rows());
-            if let Some(change) = self.fit.decide(!self.screen.is_locked_out()) {
-                tell_degree(change, scene, report);
-            }
+        if inserted.closed
+            && let Some(change) = self.fit.decide(!self.screen.is_locked_out())
+        {
+            self.history.judged = None;
+            tell_degree(change, scene, report);
         }
         None
     }
@@ -438,43 +427,6 @@ impl Channel {
                     readable(rejection.threshold)
                 )
             });
-        }
-    }
-
-    /// Judges the fit as it is now; publishes and alarms as needed.
-    fn judge(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
-        let fresh = self.history.unjudged > 0;
-        self.history.unjudged = 0;
-        let declared = judgement::declared_variance(scene.setup, scene.reference);
-        let Some(published) = self.fit.published_at_least(declared) else {
-            return;
-        };
-        let Some(judgement) = Judgement::of(published, &self.residuals, scene) else {
-            report.notice(
-                scene.now,
-                Subject::Channel(scene.id),
-                "fit-not-finite",
-                || {
-                    format!(
-                        "{}: the fit's numbers are too large to hold; look at the indications and \
-                         the reference values",
-                        scene.setup.name
-                    )
-                },
-            );
-            return;
-        };
-        self.history.judged = Some(Judged {
-            degree: judgement.published.degree,
-            correction: 0.0 - judgement.error,
-            u: judgement.u,
-            zone: judgement.zone,
-        });
-        let range = self.history.range.unwrap_or((0.0, 0.0));
-        self.publishing.consider(&judgement, range, scene, report);
-        // A review that only time brought about says nothing new: an alarm's delay counts pairs.
-        if fresh {
-            self.alarms.judge(&judgement, scene, report);
         }
     }
 

@@ -16,6 +16,7 @@
 
 use super::Scene;
 use super::judgement::{Judgement, polynomial, variance_at, zone};
+use super::review::MOVED_PART;
 use crate::event::{Corrected, Correction, Output, WindowSeen};
 use crate::fit::Published;
 use crate::report::Report;
@@ -268,7 +269,8 @@ impl Publishing {
         }
         let u = candidate.standard_uncertainty;
         let size = held.correction.abs().max(candidate.correction.abs());
-        let step = (scene.setup.publish.step * u).max(NEGLIGIBLE * size);
+        let seen = 1.0 - MOVED_PART;
+        let step = (seen * scene.setup.publish.step * u).max(NEGLIGIBLE * size);
         let expanded = candidate.expanded_uncertainty - held.expanded_uncertainty;
         (u - held.standard_uncertainty).abs() > step
             || expanded.abs() > candidate.coverage_factor * step

@@ -252,6 +252,13 @@ impl Fit {
         self.degree.announced
     }
 
+    /// Number of the newest group of closed segments that degrees are judged on; grows as groups
+    /// are completed.
+    #[must_use]
+    pub fn newest_group(&self) -> Option<i64> {
+        newest_group(&self.window)
+    }
+
     /// Judges the degree after a segment closed. `may_raise` is false while the screen is locked
     /// out or the reference is suspect; what was gained until then is forgotten. At most one step
     /// up or down. With a forced degree nothing is judged.

@@ -1,0 +1,117 @@
+//! When the fit is judged anew, and what follows from it: judgement → publishing → alarms.
+
+use super::judgement::{self, Judgement};
+use super::{Channel, Scene};
+use crate::event::{Subject, Zone};
+use crate::report::Report;
+use serde::{Deserialize, Serialize};
+
+/// A judgement merges the window's segments and costs a hundred times what a pair's insertion does.
+/// It is due when this part of the window is new since the last (in windows up to this size: every
+/// pair), when segments closed on which the degrees' weights rest, while an alarm is on its way to
+/// another state (its delay counts pairs) …
+const JUDGED_PART: u64 = 64;
+/// … or when the plain fit at its newest pair has moved by this part of a publish step. (The publish
+/// step is shortened by as much. What the mean over degrees moves more than that between two
+/// judgements stays unseen until the next: measured, at most a fifth of a step beyond the step.)
+pub(super) const MOVED_PART: f64 = 0.125;
+
+/// The last judgement in numbers.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub(super) struct Judged {
+    pub(super) degree: u8,
+    pub(super) correction: f64,
+    pub(super) u: f64,
+    pub(super) zone: Option<Zone>,
+    /// What the plain fit said at the newest pair.
+    plain: Option<f64>,
+    /// The degree with the most weight, by which it said so.
+    leading: usize,
+    /// The newest group of segments that the degrees' weights rested on.
+    group: Option<i64>,
+}
+
+impl Channel {
+    /// Whether the pairs since the last judgement may have brought news.
+    pub(super) fn is_worth_judging(&self, scene: &Scene<'_>) -> bool {
+        let unjudged = self.history.unjudged;
+        if unjudged == 0 {
+            return false;
+        }
+        let is_part = unjudged.saturating_mul(JUDGED_PART) >= self.fit.window().rows();
+        if is_part || self.alarms.are_moving() {
+            return true;
+        }
+        let Some(judged) = self.history.judged else {
+            return true;
+        };
+        if judged.group != self.fit.newest_group() {
+            return true;
+        }
+        match (judged.plain, self.plain(judged.leading)) {
+            (Some(before), Some(now)) => {
+                (now - before).abs() > MOVED_PART * scene.setup.publish.step * judged.u
+            }
+            _ => true,
+        }
+    }
+
+    /// What the plain fit of this degree says at the newest pair.
+    fn plain(&self, degree: usize) -> Option<f64> {
+        let window = self.fit.window();
+        let prediction = window.predict(degree, window.newest()?)?;
+        Some(prediction.error)
+    }
+
+    /// Judges the fit as it is now; publishes and alarms as needed.
+    pub(super) fn judge(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        let fresh = self.history.unjudged > 0;
+        self.history.unjudged = 0;
+        let declared = judgement::declared_variance(scene.setup, scene.reference);
+        let Some(published) = self.fit.published_at_least(declared) else {
+            return;
+        };
+        let Some(judgement) = Judgement::of(published, &self.residuals, scene) else {
+            report.notice(
+                scene.now,
+                Subject::Channel(scene.id),
+                "fit-not-finite",
+                || {
+                    format!(
+                        "{}: the fit's numbers are too large to hold; look at the indications and \
+                         the reference values",
+                        scene.setup.name
+                    )
+                },
+            );
+            return;
+        };
+        let leading = leading(&judgement.published.weights);
+        self.history.judged = Some(Judged {
+            degree: judgement.published.degree,
+            correction: 0.0 - judgement.error,
+            u: judgement.u,
+            zone: judgement.zone,
+            plain: self.plain(leading),
+            leading,
+            group: self.fit.newest_group(),
+        });
+        let range = self.history.range.unwrap_or((0.0, 0.0));
+        self.publishing.consider(&judgement, range, scene, report);
+        // A review that only time brought about says nothing new: an alarm's delay counts pairs.
+        if fresh {
+            self.alarms.judge(&judgement, scene, report);
+        }
+    }
+}
+
+/// The place of the largest weight; the first of equal ones.
+fn leading(weights: &[f64]) -> usize {
+    let mut best = 0;
+    for (place, weight) in weights.iter().enumerate() {
+        if *weight > weights[best] {
+            best = place;
+        }
+    }
+    best
+}

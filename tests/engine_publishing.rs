@@ -180,8 +180,8 @@ fn rounding_is_no_news() {
     assert!((last.correction + 0.3).abs() < 1e-12);
 }
 
-/// Each document stays within `step`·u of what the fit says while it is in force, and within a fifth
-/// of a step more at pairs that are not judged: a fit beside the engine is asked at every pair.
+/// Each document stays within `step`·u of what the fit says while it is in force, and within a
+/// fifth of a step more at pairs that are not judged: a fit beside the engine is asked every time.
 #[test]
 fn the_document_in_force_is_never_more_than_a_step_off() {
     let mut noise = Noise::new(24, 0.0);

@@ -13,10 +13,10 @@ use serde::{Deserialize, Serialize};
 /// One thing the engine is told.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub enum Input {
-    /// A configuration takes effect. Channels keep their state, by name, if their pairs and rows mean
-    /// the same as before (unit, lag, fit; the reference's name, kind, interval and members), and go
-    /// on under whatever else was edited; the others start anew. What is said in return bears the
-    /// positions of the configuration that is replaced.
+    /// A configuration takes effect. Channels keep their state, by name, if their pairs and rows
+    /// mean the same as before (unit, lag, fit; the reference's name, kind, interval and members),
+    /// and go on under whatever else was edited; the others start anew. What is said in return
+    /// bears the positions of the configuration that is replaced.
     Setup(Box<Setup>),
     /// A value arrived.
     Reading(Reading),

@@ -5,7 +5,8 @@
 //!
 //! *Publish step*: a new document when over its validity it would differ from the one in force by
 //! more than `step`·u, when u or U (or what is suppressed inside U) has changed by more than that
-//! part, when degree or zones differ, or when three quarters of the validity have passed and a new one would hold longer.
+//! part, when degree or zones differ, or when three quarters of the validity have passed and a new
+//! one would hold longer.
 //!
 //! *Validity*: `max_age`, but not past the fit's own horizon behind the newest pair: a quarter of
 //! the time that the window covers where a degree above 1 has weight, else half of it. (The

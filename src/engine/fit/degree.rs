@@ -307,7 +307,8 @@ impl Fit {
 
     /// Takes note of whether the next lower degree is as good; tells when it has been so for long
     /// enough. Doubts about the sample count for the announced degree here: a drift that has been
-    /// seen is not taken back because its noise became harder to judge. A degree that the window's segments can no longer bear counts as not needed.
+    /// seen is not taken back because its noise became harder to judge. A degree that the window's
+    /// segments can no longer bear counts as not needed.
     fn falling(&mut self, judged: &Judged, when_full: f64) -> Option<Verdict> {
         let lower = usize::from(self.degree.announced).checked_sub(1)?;
         let gain = judged

@@ -234,15 +234,23 @@ impl Pairing {
             values: scene.values,
             now: scene.now,
         };
+        // Gated readings settle in order: the rest would only be looked at in vain.
+        let in_order = matches!(scene.reference.kind, ReferenceKind::Constant { .. });
         let mut index = 0;
         while let Some(pending) = self.pending.get(index).copied() {
             if pending.due.is_none_or(|due| scene.now < due) {
+                if in_order {
+                    break;
+                }
                 index += 1;
                 continue;
             }
             match self.resolve(&pending.sample, &sight, scene, found) {
                 Fate::Waits(due) => {
                     self.pending[index].due = due;
+                    if in_order {
+                        break;
+                    }
                     index += 1;
                     continue;
                 }
@@ -259,7 +267,12 @@ impl Pairing {
             }
             self.pending.remove(index);
         }
-        self.due = self.pending.iter().filter_map(|pending| pending.due).min();
+        let dues = self.pending.iter().filter_map(|pending| pending.due);
+        self.due = if in_order {
+            dues.take(1).min()
+        } else {
+            dues.min()
+        };
         self.forget_made(scene);
     }
 

@@ -39,6 +39,17 @@ pub(super) enum Poller {
     V311(Box<rumqttc::EventLoop>),
 }
 
+/// The broker's answer to a publish.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub enum Answer {
+    /// It has it.
+    Taken,
+    /// It can't take it at present, and why.
+    NotNow(String),
+    /// It will not take it however often it is sent, and why.
+    Never(String),
+}
+
 /// What polling brings.
 #[derive(Debug)]
 pub(super) enum Seen {
@@ -55,10 +66,7 @@ pub(super) enum Seen {
         packet: u16,
     },
     /// The broker acknowledged or refused a publish.
-    Answered {
-        packet: u16,
-        refused: Option<String>,
-    },
+    Answered { packet: u16, answer: Answer },
     /// The broker answered a subscription, one entry for each filter; `Some`: why it refused.
     Subscribed(Vec<Option<String>>),
     /// The oldest unsent publish went out under this identifier.
@@ -198,9 +206,12 @@ impl Client {
         let sent = match self {
             Self::V5(client) => {
                 let qos = v5::mqttbytes::QoS::AtLeastOnce;
-                let filters = filters
-                    .iter()
-                    .map(|filter| packet5::Filter::new(filter, qos));
+                let filters = filters.iter().map(|filter| {
+                    let mut filter = packet5::Filter::new(filter, qos);
+                    // We subscribe at each start; what is retained is no news then.
+                    filter.retain_forward_rule = packet5::RetainForwardRule::OnNewSubscribe;
+                    filter
+                });
                 client.try_subscribe_many(filters).is_ok()
             }
             Self::V311(client) => {
@@ -263,7 +274,7 @@ fn seen_outgoing(sent: &rumqttc::Outgoing) -> Seen {
 }
 
 fn seen5(packet: v5::Incoming) -> Seen {
-    use packet5::{PubAckReason, SubscribeReasonCode};
+    use packet5::SubscribeReasonCode;
     match packet {
         v5::Incoming::ConnAck(accepted) => Seen::Connected {
             session_present: accepted.session_present,
@@ -277,10 +288,7 @@ fn seen5(packet: v5::Incoming) -> Seen {
         },
         v5::Incoming::PubAck(answer) => Seen::Answered {
             packet: answer.pkid,
-            refused: match answer.reason {
-                PubAckReason::Success | PubAckReason::NoMatchingSubscribers => None,
-                reason => Some(format!("{reason:?}")),
-            },
+            answer: answer5(answer.reason),
         },
         v5::Incoming::SubAck(answer) => Seen::Subscribed(
             answer
@@ -293,6 +301,24 @@ fn seen5(packet: v5::Incoming) -> Seen {
                 .collect(),
         ),
         _ => Seen::Nothing,
+    }
+}
+
+/// MQTT 5.0, 3.4.2.1: which refusals concern the publish itself (permission, topic, format) and
+/// which the broker's present condition.
+fn answer5(reason: packet5::PubAckReason) -> Answer {
+    use packet5::PubAckReason::{
+        ImplementationSpecificError, NoMatchingSubscribers, NotAuthorized, PacketIdentifierInUse,
+        PayloadFormatInvalid, QuotaExceeded, Success, TopicNameInvalid, UnspecifiedError,
+    };
+    match reason {
+        Success | NoMatchingSubscribers => Answer::Taken,
+        NotAuthorized | TopicNameInvalid | PayloadFormatInvalid => {
+            Answer::Never(format!("{reason:?}"))
+        }
+        UnspecifiedError | ImplementationSpecificError | PacketIdentifierInUse | QuotaExceeded => {
+            Answer::NotNow(format!("{reason:?}"))
+        }
     }
 }
 
@@ -324,7 +350,7 @@ fn seen311(packet: rumqttc::Incoming) -> Seen {
         },
         rumqttc::Incoming::PubAck(answer) => Seen::Answered {
             packet: answer.pkid,
-            refused: None,
+            answer: Answer::Taken,
         },
         rumqttc::Incoming::SubAck(answer) => Seen::Subscribed(
             answer

@@ -1,7 +1,7 @@
 //! One session across connections: messages in, acknowledgements and documents out.
 
 use super::back_off::BackOff;
-use super::client::{self, Client, Full, Poller, Seen};
+use super::client::{self, Answer, Client, Full, Poller, Seen};
 use super::tls::{self, TlsError};
 use crate::configuration::{Broker, Protocol};
 use bytes::Bytes;
@@ -113,8 +113,8 @@ pub enum Event {
     },
     /// A message came in.
     Message(Message),
-    /// The broker answered a document; `Some`: it refused it, and why.
-    Answered(Token, Option<String>),
+    /// The broker answered a document.
+    Answered(Token, Answer),
     /// The broker answered all subscriptions; filters that it refused, and why.
     Subscribed {
         /// Refused filters.
@@ -221,6 +221,12 @@ impl Link {
     #[must_use]
     pub fn outstanding(&self) -> usize {
         self.unsent.len() + self.in_flight.len()
+    }
+
+    /// Whether everything handed over has gone, and every document was answered.
+    #[must_use]
+    pub fn is_quiet(&self) -> bool {
+        self.acknowledgements.is_empty() && self.asks.is_empty() && self.outstanding() == 0
     }
 
     /// Whether the broker takes a publish of this size; one above its limit would end the
@@ -344,6 +350,12 @@ impl Link {
         self.drop_connection();
     }
 
+    /// Cuts the connection without a goodbye: the broker publishes the will.
+    pub fn cut(&mut self) {
+        self.drop_connection();
+        self.connected = None;
+    }
+
     fn connect(&mut self) {
         self.connection += 1;
         let (client, poller) = client::new(&self.broker, self.tls.clone(), (self.will)());
@@ -435,16 +447,19 @@ impl Link {
                 }))
             }
             Seen::Sent { packet } => {
-                if let Some(token) = self.unsent.pop_front() {
-                    self.in_flight.insert(packet, token);
-                }
-                None
+                let token = self.unsent.pop_front()?;
+                self.in_flight.insert(packet, token)?;
+                // The library holds the older publish back and sends this one in its place; whose
+                // answer comes next can't be told any more.
+                self.drop_connection();
+                let why = format!("packet identifier {packet} was used twice");
+                Some(Event::Lost(self.fail(why, false)))
             }
-            Seen::Answered { packet, refused } => {
+            Seen::Answered { packet, answer } => {
                 self.answered = Instant::now();
                 self.in_flight
                     .remove(&packet)
-                    .map(|token| Event::Answered(token, refused))
+                    .map(|token| Event::Answered(token, answer))
             }
             Seen::Subscribed(answers) => self.handle_subscribed(answers),
             Seen::Broken { why, taken_over } => {

@@ -17,5 +17,6 @@ mod link;
 mod tls;
 
 pub use back_off::BackOff;
+pub use client::Answer;
 pub use link::{Event, Link, Lost, Message, Ticket, Token, Will};
 pub use tls::TlsError;

@@ -3,6 +3,10 @@
 use std::io::IsTerminal;
 use tracing_subscriber::EnvFilter;
 
+/// What is shown by default. The MQTT library's warnings are left out: what they tell is told by the
+/// daemon, once and with what to do.
+const DEFAULT: &str = "info,rumqttc=error";
+
 /// How log lines look.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, clap::ValueEnum)]
 pub(super) enum Format {
@@ -12,7 +16,7 @@ pub(super) enum Format {
     Json,
 }
 
-/// Starts logging. `filter` as in `RUST_LOG`; without, that variable counts, else "info".
+/// Starts logging. `filter` as in `RUST_LOG`; without, that variable counts, else [`DEFAULT`].
 ///
 /// # Errors
 /// What is wrong with the filter.
@@ -22,7 +26,7 @@ pub(super) fn set_up(format: Format, filter: Option<&str>) -> Result<(), String>
         .or_else(|| std::env::var("RUST_LOG").ok());
     let told = told
         .filter(|told| !told.trim().is_empty())
-        .unwrap_or_else(|| "info".to_owned());
+        .unwrap_or_else(|| DEFAULT.to_owned());
     let filter = EnvFilter::try_new(&told)
         .map_err(|error| format!("the log filter \"{told}\" can't be read: {error}"))?;
     let lines = tracing_subscriber::fmt()

@@ -16,7 +16,7 @@ use std::process::ExitCode;
 
 /// Help of `--log`.
 const LOG_HELP: &str = "Which log lines are shown: \"debug\", or \"info,holdtrue::broker=debug\" \
-    [default: the variable RUST_LOG, else \"info\"]";
+    [default: the variable RUST_LOG, else \"info,rumqttc=error\"]";
 
 /// How a command ended; each has its exit code.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -64,7 +64,8 @@ enum Command {
     /// Run the daemon until it is told to stop (Ctrl-C, SIGTERM).
     #[command(
         after_help = "Example:\n  holdtrue run --config /etc/holdtrue/holdtrue.toml\n\n\
-        Exit code: 0 stopped when told to, 2 configuration refused, 3 the outside failed."
+        Exit code: 0 stopped when told to, 1 the record says otherwise than this program would,\n\
+        2 configuration refused, 3 the outside failed (broker, disk)."
     )]
     Run {
         /// The configuration file.

@@ -30,6 +30,10 @@ pub(super) fn run(path: &Path) -> Ending {
     });
     match ended {
         Ok(Ok(())) => Ending::Done,
+        Ok(Err(error @ daemon::Error::ReplayDiffers { .. })) => {
+            tracing::error!("{error}");
+            Ending::No
+        }
         Ok(Err(error)) => failed(&error),
         Err(error) => failed(&error),
     }

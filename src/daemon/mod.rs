@@ -9,13 +9,21 @@
 //! - `outbox`: documents that the broker has not acknowledged
 //! - `restore`: from the record to the engine's state, at the start
 //! - `turn`: the loop that everything happens in
+//! - `session`, `memory`: connections that come and go, and what a broker may have forgotten
+//! - `handing`, `refusals`: documents on their way, and what the broker says to them
+//! - `ending`: the orderly end
 //! - `held`: messages that wait while nothing can be taken
 //! - `report`: the `state` document
 
+mod ending;
+mod handing;
 mod held;
+mod memory;
 mod outbox;
+mod refusals;
 mod report;
 mod restore;
+mod session;
 mod shell;
 mod turn;
 
@@ -32,12 +40,12 @@ pub enum Error {
     /// The record can't be used.
     #[error(transparent)]
     Record(#[from] RecordError),
-    /// The engine says something else than it said when the record was written, though the program
-    /// is the same: the record was changed, or the program has a fault. Going on would make the
-    /// record untrue.
+    /// The engine says something else than it said when the record was written, though the version
+    /// is the same. Going on would make the record untrue.
     #[error(
-        "replay of the record differs at input {position}: recorded {recorded}, now {now}. The \
-         record was changed or is damaged. Move the record folder aside to start anew, and keep it"
+        "replay of the record differs at input {position}: recorded {recorded}, now {now}. Another \
+         build of the same version wrote the record, or the record was changed or is damaged. \
+         Start the build that wrote it, or move the record folder aside to start anew, and keep it"
     )]
     ReplayDiffers {
         /// Position of the input.

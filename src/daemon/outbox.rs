@@ -7,9 +7,10 @@ use crate::record::{Batch, Numbered};
 use std::collections::BTreeMap;
 use std::ops::Bound;
 
-/// How many documents may wait. When full, no message is taken until the broker has taken some;
-/// what time alone causes meanwhile (alarms, notices) then pushes out an older document of its
-/// topic, or the oldest passing one.
+/// How many documents may wait before no message is taken until the broker has taken some. The one
+/// message that fills it may go beyond, by what it causes. While the broker is away, what time
+/// alone causes (alarms, notices) then pushes out an older document of its topic, or the oldest
+/// passing one; with a broker that takes documents nothing is ever pushed out.
 const WAITING_MAX: usize = 4096;
 
 /// The outbox.
@@ -20,6 +21,8 @@ pub(super) struct Outbox {
     released: i64,
     /// Documents up to this number were handed to the present connection.
     handed: i64,
+    /// There is no connection to the broker.
+    away: bool,
     pushed_out: u64,
 }
 
@@ -36,15 +39,20 @@ impl Outbox {
             next_number: last + 1,
             released: last,
             handed: 0,
+            away: true,
             pushed_out: 0,
+        }
+    }
+
+    /// Makes room for a document that time alone caused, if there is none and the broker is away.
+    pub(super) fn make_room_for(&mut self, document: &Document, batch: &mut Batch) {
+        if self.is_full() && self.away {
+            self.push_out(document, batch);
         }
     }
 
     /// Adds a document, to the batch as well. It may go once [`Outbox::release`] was called.
     pub(super) fn add(&mut self, document: Document, batch: &mut Batch) {
-        if self.is_full() {
-            self.push_out(&document, batch);
-        }
         let number = self.next_number;
         self.next_number += 1;
         batch.add_document(Numbered {
@@ -86,9 +94,37 @@ impl Outbox {
         self.handed = number;
     }
 
+    /// There is a connection.
+    pub(super) fn note_here(&mut self) {
+        self.away = false;
+    }
+
     /// The connection is gone: all must be handed over again.
-    pub(super) fn hand_again(&mut self) {
+    pub(super) fn note_away(&mut self) {
         self.handed = 0;
+        self.away = true;
+    }
+
+    /// This one and all after it must be handed over again; all, so that an older document of a
+    /// topic does not overtake a newer one.
+    pub(super) fn hand_again_from(&mut self, number: i64) {
+        self.handed = self.handed.min(number - 1);
+    }
+
+    /// The broker has this document; older ones that it would replace there are worth nothing now.
+    pub(super) fn accepted(&mut self, number: i64, batch: &mut Batch) {
+        let Some(accepted) = self.remove(number, batch).filter(|it| it.retain) else {
+            return;
+        };
+        let older: Vec<i64> = self
+            .waiting
+            .range(..number)
+            .filter(|(_, it)| it.retain && it.topic == accepted.topic)
+            .map(|(number, _)| *number)
+            .collect();
+        for number in older {
+            self.remove(number, batch);
+        }
     }
 
     /// Removes a document, from the record as well with the next commit.
@@ -157,7 +193,7 @@ mod tests {
         assert!(outbox.next_to_hand().is_none());
         outbox.release();
         assert_eq!(outbox.next_to_hand().unwrap().1.topic, "b");
-        outbox.hand_again();
+        outbox.note_away();
         assert_eq!(outbox.next_to_hand().unwrap().0, 1);
         outbox.remove(1, &mut batch).unwrap();
         assert_eq!(outbox.next_to_hand().unwrap().0, 2);
@@ -165,7 +201,8 @@ mod tests {
     }
 
     #[test]
-    fn a_full_outbox_pushes_out_the_older_of_the_topic_or_the_oldest_passing_one() {
+    fn a_full_outbox_without_a_broker_pushes_out_the_older_of_the_topic_or_the_oldest_passing_one()
+    {
         let (_folder, mut batch) = batch();
         let mut outbox = Outbox::new(Vec::new());
         outbox.add(document("kept", true), &mut batch);
@@ -174,8 +211,10 @@ mod tests {
             outbox.add(document("notice", false), &mut batch);
         }
         assert!(outbox.is_full());
-        outbox.add(document("alarm", true), &mut batch);
-        outbox.add(document("notice", false), &mut batch);
+        for newer in [document("alarm", true), document("notice", false)] {
+            outbox.make_room_for(&newer, &mut batch);
+            outbox.add(newer, &mut batch);
+        }
         assert_eq!((outbox.len(), outbox.pushed_out()), (WAITING_MAX, 2));
         outbox.release();
         let first: Vec<i64> = std::iter::from_fn(|| {
@@ -190,6 +229,39 @@ mod tests {
             [1, 4],
             "the old alarm (2) and the oldest notice (3) are gone"
         );
+    }
+
+    #[test]
+    fn nothing_is_pushed_out_by_a_message_or_while_the_broker_is_here() {
+        let (_folder, mut batch) = batch();
+        let mut outbox = Outbox::new(Vec::new());
+        for _ in 0..WAITING_MAX + 5000 {
+            outbox.add(document("corrected", false), &mut batch);
+        }
+        outbox.note_here();
+        let notice = document("notice", false);
+        outbox.make_room_for(&notice, &mut batch);
+        assert_eq!((outbox.len(), outbox.pushed_out()), (WAITING_MAX + 5000, 0));
+        outbox.note_away();
+        outbox.make_room_for(&notice, &mut batch);
+        assert_eq!(outbox.pushed_out(), 1);
+    }
+
+    #[test]
+    fn what_the_broker_could_not_take_goes_again_in_order_unless_a_newer_one_arrived() {
+        let (_folder, mut batch) = batch();
+        let mut outbox = Outbox::new(Vec::new());
+        for topic in ["a", "b", "a"] {
+            outbox.add(document(topic, true), &mut batch);
+        }
+        outbox.release();
+        outbox.set_handed(3);
+        outbox.hand_again_from(1);
+        assert_eq!(outbox.next_to_hand().unwrap().0, 1);
+        // The answer to the third comes in; the first would replace it by something older.
+        outbox.accepted(3, &mut batch);
+        assert_eq!(outbox.next_to_hand().unwrap().0, 2);
+        assert_eq!(outbox.len(), 1);
     }
 
     #[test]

@@ -97,6 +97,7 @@ pub(super) fn state_document(
         documents_refused: figures.documents_refused + shell.outbox.pushed_out(),
         messages_dropped: figures.messages_dropped,
         connections: figures.connections,
+        subscriptions_refused: Vec::new(),
         refused,
         channels: Some(channels),
     };

@@ -126,13 +126,11 @@ fn compare(
             .get(place)
             .map_or("nothing".to_owned(), |text| shorten(text))
     };
-    let error = Error::ReplayDiffers {
+    Err(Error::ReplayDiffers {
         position,
         recorded: show(recorded),
         now: show(&now),
-    };
-    tracing::error!("{error}");
-    Err(error)
+    })
 }
 
 fn shorten(text: &str) -> String {

@@ -59,6 +59,7 @@ impl Shell {
             shell.adopt(&configuration.setup)?;
         }
         shell.commit()?;
+        shell.answer_wanted()?;
         Ok(shell)
     }
 
@@ -117,6 +118,9 @@ impl Shell {
         note_wanted(input, &outputs, &mut self.wanted);
         for output in &outputs {
             if let Some(document) = document::render(output, &self.setup) {
+                if matches!(input, Input::Tick { .. }) {
+                    self.outbox.make_room_for(&document, &mut self.batch);
+                }
                 self.outbox.add(document, &mut self.batch);
             }
         }
@@ -131,13 +135,13 @@ impl Shell {
             self.batch = self.record.batch();
         }
         self.outbox.release();
-        // Asked for only now, since the record can be searched only for what is in it.
-        self.answer_wanted()
+        Ok(())
     }
 
     /// Answers what the engine has asked for so far. Only that: an engine that asks again and again
-    /// must not stop the daemon.
-    fn answer_wanted(&mut self) -> Result<(), RecordError> {
+    /// must not stop the daemon. To be called right after a commit: the record can be searched only
+    /// for what is in it.
+    pub(super) fn answer_wanted(&mut self) -> Result<(), RecordError> {
         for wanted in self.wanted.clone() {
             self.supply(wanted)?;
         }
@@ -154,7 +158,12 @@ impl Shell {
         !self.batch.is_empty()
     }
 
-    /// The broker has, or will never take, a document.
+    /// The broker has a document.
+    pub(super) fn accepted(&mut self, number: i64) {
+        self.outbox.accepted(number, &mut self.batch);
+    }
+
+    /// The broker will never take a document, or it is no longer worth sending.
     pub(super) fn settle(&mut self, number: i64) -> Option<Document> {
         self.outbox.remove(number, &mut self.batch)
     }

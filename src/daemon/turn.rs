@@ -5,17 +5,18 @@
 //! survives a disk that is slow for a few seconds.
 
 use super::held::Held;
-use super::report::{LoopFigures, StateRhythm, state_document};
+use super::memory::Memory;
+use super::refusals::Refusals;
+use super::report::{LoopFigures, StateRhythm};
 use super::shell::Shell;
 use super::{Error, now};
-use crate::broker::{BackOff, Event, Link, Lost, Message, Ticket, Token, Will};
+use crate::broker::{BackOff, Event, Link, Message, Ticket, Will};
 use crate::configuration::Configuration;
 use crate::document::state::{Doing, StateDocument};
 use crate::document::topic::Topics;
 use crate::record::RecordError;
 use holdtrue_engine::event::Input;
 use holdtrue_engine::time::Timestamp;
-use std::collections::BTreeSet;
 use std::future::Future;
 use std::time::Duration;
 use tokio::time::Instant;
@@ -24,38 +25,36 @@ use tokio::time::Instant;
 const BATCH_INPUTS_MAX: usize = 10_000;
 /// The engine is asked at most this often when it wants its next tick: asking walks all channels.
 const TICK_ASK_EVERY: Duration = Duration::from_millis(250);
-/// How long the goodbye waits for the broker to take what waits in the outbox, for the last state
-/// document, and for the goodbye itself.
-const DRAIN_LIMIT: Duration = Duration::from_secs(5);
-const LAST_STATE_LIMIT: Duration = Duration::from_secs(2);
-const GOODBYE_LIMIT: Duration = Duration::from_secs(2);
-/// Short-lived connections in a row after which a shared client name is suspected.
-const SUSPICIOUS_FAILURES: u32 = 4;
-
 /// The daemon at work.
 pub(super) struct Daemon {
-    shell: Shell,
-    link: Link,
-    client_id: String,
-    held: Held,
+    pub(super) shell: Shell,
+    pub(super) link: Link,
+    pub(super) client_id: String,
+    pub(super) held: Held,
     /// Messages taken since the last commit; their acknowledgements wait for it.
-    tickets: Vec<Ticket>,
-    messages_max: usize,
-    commit_every: Duration,
+    pub(super) tickets: Vec<Ticket>,
+    pub(super) messages_max: usize,
+    pub(super) commit_every: Duration,
     /// When the oldest thing came that the next commit will write.
-    news_since: Option<Instant>,
-    pause: Option<Pause>,
-    rhythm: StateRhythm,
-    figures: LoopFigures,
-    refused_topics: BTreeSet<String>,
+    pub(super) news_since: Option<Instant>,
+    pub(super) pause: Option<Pause>,
+    pub(super) rhythm: StateRhythm,
+    pub(super) figures: LoopFigures,
+    pub(super) refusals: Refusals,
+    /// What the broker said when it last refused the state document.
+    pub(super) state_refused: Option<String>,
+    pub(super) memory: Memory,
+    /// The broker could not take a document; not before this instant again.
+    pub(super) hand_again: Option<Instant>,
+    pub(super) hand_again_back_off: BackOff,
     /// When the engine wants a tick, as of the last time it was asked.
-    next_tick: Option<Timestamp>,
-    tick_asked: Instant,
+    pub(super) next_tick: Option<Timestamp>,
+    pub(super) tick_asked: Instant,
 }
 
 /// The record can't be written.
-struct Pause {
-    why: String,
+pub(super) struct Pause {
+    pub(super) why: String,
     back_off: BackOff,
     retry: Instant,
 }
@@ -78,6 +77,7 @@ impl Daemon {
             payload: StateDocument::new(&node, &fingerprint, Doing::Lost, now()).to_json(),
         })?;
         let window = link.receive_window();
+        let remembered = !shell.record.subscriptions()?.is_empty();
         Ok(Self {
             shell,
             client_id,
@@ -89,7 +89,11 @@ impl Daemon {
             pause: None,
             rhythm: StateRhythm::new(),
             figures: LoopFigures::default(),
-            refused_topics: BTreeSet::new(),
+            refusals: Refusals::default(),
+            state_refused: None,
+            memory: Memory::new(remembered),
+            hand_again: None,
+            hand_again_back_off: BackOff::default(),
             next_tick: None,
             tick_asked: Instant::now(),
             link,
@@ -114,10 +118,10 @@ impl Daemon {
         self.finish().await;
     }
 
-    fn handle(&mut self, event: Event) {
+    pub(super) fn handle(&mut self, event: Event) {
         match event {
             Event::Message(message) => self.take_or_hold(message),
-            Event::Answered(token, refused) => self.settle(token, refused),
+            Event::Answered(token, answer) => self.settle(token, answer),
             Event::Connected { session_present } => self.greet(session_present),
             Event::Subscribed { refused } => self.note_subscribed(&refused),
             Event::Lost(lost) => self.note_lost(&lost),
@@ -176,6 +180,7 @@ impl Daemon {
                 .reconnect("to get again what had to stay with the broker");
             self.note_lost(&lost);
         }
+        self.restore_memory();
         if self.shell.has_news() {
             self.news_since.get_or_insert(clock);
         }
@@ -215,6 +220,8 @@ impl Daemon {
             // New readings change what the engine wants; they are news, so a turn comes anyway.
             self.news_since.map(|_| asked).filter(|_| working),
             self.rhythm.due().filter(|_| self.link.room() > 0),
+            self.memory.due().filter(|_| working),
+            self.hand_again.filter(|after| *after > clock),
         ];
         times
             .into_iter()
@@ -224,10 +231,11 @@ impl Daemon {
     }
 
     /// Writes the batch; then its messages are acknowledged and its documents may go.
-    fn commit(&mut self) {
+    pub(super) fn commit(&mut self) {
         match self.shell.commit() {
             Ok(()) => {
                 self.news_since = None;
+                self.memory.committed();
                 for ticket in self.tickets.drain(..) {
                     self.link.acknowledge(ticket);
                 }
@@ -235,9 +243,18 @@ impl Daemon {
                     tracing::info!(cause = pause.why, "record can be written again; going on");
                     self.rhythm.change();
                 }
+                self.answer_wanted();
                 self.ask_tick();
             }
             Err(error) => self.pause_for(&error),
+        }
+    }
+
+    /// Gives the engine what it asked for; after acknowledging, since searching takes time.
+    fn answer_wanted(&mut self) {
+        // Unanswered wants stay; the next commit is the next attempt.
+        if let Err(error) = self.shell.answer_wanted() {
+            tracing::warn!(%error, "recorded rows can't be read for the engine; trying again");
         }
     }
 
@@ -261,221 +278,4 @@ impl Daemon {
         pause.retry = Instant::now() + wait;
         tracing::debug!(next_try = ?wait, "record still can't be written");
     }
-
-    /// Hands documents and the state document to the link, as long as it has room.
-    fn hand_over(&mut self) {
-        // Acknowledgements first: until they have gone, the link takes no document.
-        self.link.send_waiting();
-        // The state goes first: it is the one that must come through when much waits.
-        if self.rhythm.due().is_some_and(|due| due <= Instant::now()) {
-            self.hand_over_state();
-        }
-        self.hand_over_documents();
-    }
-
-    fn hand_over_documents(&mut self) {
-        while self.link.room() > 0 {
-            let Some((number, document)) = self.shell.outbox.next_to_hand() else {
-                return;
-            };
-            let expiry = match document.expires.map(seconds_until) {
-                Some(None) => {
-                    self.shell.settle(number);
-                    continue;
-                }
-                Some(seconds) => seconds,
-                None => None,
-            };
-            if !self.link.fits(&document.topic, &document.payload) {
-                self.refuse(number, "larger than the broker's packet limit");
-                continue;
-            }
-            let token = Token::Document(number);
-            let (topic, payload) = (&document.topic, &document.payload);
-            if !self
-                .link
-                .publish(token, topic, payload, document.retain, expiry)
-            {
-                return;
-            }
-            self.shell.outbox.set_handed(number);
-        }
-    }
-
-    fn hand_over_state(&mut self) {
-        let (doing, why) = match &self.pause {
-            Some(pause) => (Doing::RecordPaused, Some(pause.why.clone())),
-            None => (Doing::Running, None),
-        };
-        if self.publish_state(doing, why) {
-            self.rhythm.handed();
-        }
-    }
-
-    fn publish_state(&mut self, doing: Doing, why: Option<String>) -> bool {
-        if self.link.room() == 0 {
-            return false;
-        }
-        let figures = LoopFigures {
-            messages_dropped: self.held.dropped(),
-            ..self.figures
-        };
-        let (document, mut standing) = state_document(&self.shell, doing, why, figures, now());
-        let topic = Topics::new(&self.shell.setup.node).state();
-        let mut payload = document.clone().with(standing.clone()).to_json();
-        if !self.link.fits(&topic, &payload) {
-            standing.channels = None;
-            payload = document.with(standing).to_json();
-        }
-        self.link
-            .publish(Token::State, &topic, &payload, true, None)
-    }
-
-    fn settle(&mut self, token: Token, refused: Option<String>) {
-        match (token, refused) {
-            (Token::State, refused) => {
-                self.rhythm.answered();
-                if let Some(why) = refused {
-                    tracing::error!(why, "the broker refuses the state document");
-                }
-            }
-            (Token::Document(number), None) => drop(self.shell.settle(number)),
-            (Token::Document(number), Some(why)) => self.refuse(number, &why),
-        }
-    }
-
-    fn refuse(&mut self, number: i64, why: &str) {
-        self.figures.documents_refused += 1;
-        let Some(document) = self.shell.settle(number) else {
-            return;
-        };
-        // Once for each topic: a missing permission concerns every document. Bounded by the
-        // configuration's channels and alarms.
-        if self.refused_topics.insert(document.topic.clone()) {
-            tracing::error!(
-                topic = document.topic,
-                why,
-                "the broker refuses a document; it and those like it stay in the record only. May \
-                 this client publish there?"
-            );
-        }
-    }
-
-    fn greet(&mut self, session_present: bool) {
-        self.figures.connections += 1;
-        tracing::info!(session_present, "connected to the broker");
-        let filters = self.shell.filters().to_vec();
-        let confirmed = self.shell.record.subscriptions().unwrap_or_else(|error| {
-            tracing::warn!(%error, "subscribing anew");
-            BTreeSet::new()
-        });
-        let wanted: BTreeSet<String> = filters.iter().cloned().collect();
-        if !session_present {
-            self.link.subscribe(&filters, &[]);
-        } else if wanted != confirmed {
-            let old: Vec<String> = confirmed.difference(&wanted).cloned().collect();
-            self.link.subscribe(&filters, &old);
-        }
-        if !session_present && self.pause.is_none() {
-            match self.shell.publish_standing(now()) {
-                Ok(0) => {}
-                Ok(documents) => tracing::info!(
-                    documents,
-                    "the broker has lost our session; publishing all retained documents again"
-                ),
-                Err(error) => tracing::warn!(%error, "retained documents not published again"),
-            }
-        }
-        self.rhythm.change();
-    }
-
-    fn note_subscribed(&mut self, refused: &[(String, String)]) {
-        for (filter, why) in refused {
-            tracing::error!(filter, why, "the broker refuses this subscription");
-        }
-        let without = |filter: &&String| !refused.iter().any(|(refused, _)| refused == *filter);
-        let confirmed: BTreeSet<String> = self
-            .shell
-            .filters()
-            .iter()
-            .filter(without)
-            .cloned()
-            .collect();
-        tracing::info!(filters = confirmed.len(), "subscribed");
-        if let Err(error) = self.shell.record.set_subscriptions(&confirmed) {
-            tracing::warn!(%error, "subscriptions not noted; the next start subscribes again");
-        }
-    }
-
-    fn note_lost(&mut self, lost: &Lost) {
-        self.shell.outbox.hand_again();
-        self.held.forget_guaranteed();
-        self.rhythm.answered();
-        let next_try = lost.next_try;
-        if lost.taken_over {
-            tracing::error!(
-                client_id = self.client_id,
-                ?next_try,
-                "another client with our client_id took the session: two daemons must not share \
-                 one; give each its own [broker] client_id"
-            );
-        } else {
-            tracing::warn!(why = lost.why, ?next_try, "no connection to the broker");
-        }
-        if !lost.taken_over && lost.failures == SUSPICIOUS_FAILURES && self.figures.connections > 1
-        {
-            tracing::warn!(
-                client_id = self.client_id,
-                "connections break again and again; does another client use our client_id?"
-            );
-        }
-    }
-
-    /// The orderly end: record, publish, wait for the broker, say goodbye.
-    async fn finish(mut self) {
-        self.commit();
-        let limit = Instant::now() + DRAIN_LIMIT;
-        self.wait_for(limit, |daemon| {
-            daemon.shell.outbox.len() == 0 && daemon.link.outstanding() == 0
-        })
-        .await;
-        let why = self.pause.as_ref().map(|pause| pause.why.clone());
-        if self.publish_state(Doing::Stopped, why) {
-            self.rhythm.handed();
-            let limit = Instant::now() + LAST_STATE_LIMIT;
-            self.wait_for(limit, |daemon| !daemon.rhythm.is_on_its_way())
-                .await;
-        }
-        self.link.goodbye(GOODBYE_LIMIT).await;
-        self.commit();
-        if self.pause.is_some() {
-            tracing::error!(
-                messages = self.tickets.len(),
-                "ending without a record of the last messages; the broker still has them"
-            );
-        }
-        tracing::info!(outbox = self.shell.outbox.len(), "goodbye");
-    }
-
-    /// Lets the link work until `done` or `limit`, or until there is no connection. Messages that
-    /// come in are left with the broker.
-    async fn wait_for(&mut self, limit: Instant, done: impl Fn(&Self) -> bool) {
-        while self.link.is_connected() && !done(self) {
-            self.link.send_waiting();
-            self.hand_over_documents();
-            match tokio::time::timeout_at(limit, self.link.next()).await {
-                Ok(Event::Message(_)) => {}
-                Ok(event) => self.handle(event),
-                Err(_) => return,
-            }
-        }
-    }
-}
-
-/// Whole seconds until `instant`, rounded up; `None` when it has passed.
-fn seconds_until(instant: Timestamp) -> Option<u32> {
-    let left = u64::try_from(instant.since(now()).0)
-        .ok()
-        .filter(|left| *left > 0)?;
-    Some(u32::try_from(left.div_ceil(1_000_000_000)).unwrap_or(u32::MAX))
 }

@@ -53,10 +53,21 @@ pub struct Standing {
     pub messages_dropped: u64,
     /// Connections made since the start.
     pub connections: u64,
+    /// Subscriptions that the broker refuses: nothing comes in from there.
+    pub subscriptions_refused: Vec<RefusedSubscription>,
     /// What came in and was not used, by subject and reason, since the record began.
     pub refused: Vec<RefusedCount>,
     /// Each channel; left out where the broker takes no document of that size.
     pub channels: Option<Vec<ChannelState>>,
+}
+
+/// A subscription that the broker refuses.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize)]
+pub struct RefusedSubscription {
+    /// The topic filter.
+    pub filter: String,
+    /// What the broker said.
+    pub why: String,
 }
 
 /// How one channel stands.

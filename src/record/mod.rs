@@ -29,6 +29,13 @@ const FILE_NAME: &str = "holdtrue.sqlite";
 /// Name of the file whose lock says that a daemon uses the folder.
 const LOCK_NAME: &str = "holdtrue.lock";
 
+/// See [`Record::readings`].
+const READINGS: &str = "
+SELECT position, body FROM inputs WHERE kind = 'reading' AND phenomenon >= ?1
+    AND phenomenon < ?2 AND source IN (SELECT value FROM json_each(?3))
+    AND position > (SELECT coalesce(max(position), 0) FROM inputs WHERE kind = 'setup')
+    ORDER BY position LIMIT ?4";
+
 /// What can be wrong with a record.
 #[derive(Debug, thiserror::Error)]
 pub enum RecordError {
@@ -264,12 +271,7 @@ impl Record {
     ) -> Result<Vec<(i64, Reading)>, RecordError> {
         // Positions in a setup may name another channel after a change of configuration, hence the
         // last setup only.
-        let mut statement = self.connection.prepare(
-            "SELECT position, body FROM inputs WHERE kind = 'reading' AND phenomenon >= ?1
-             AND phenomenon < ?2 AND source IN (SELECT value FROM json_each(?3))
-             AND position > (SELECT coalesce(max(position), 0) FROM inputs WHERE kind = 'setup')
-             ORDER BY position LIMIT ?4",
-        )?;
+        let mut statement = self.connection.prepare(READINGS)?;
         let names: Vec<String> = sources
             .iter()
             .map(|source| body::source_text(*source))
@@ -317,4 +319,31 @@ fn lock(folder: &Path) -> Result<File, RecordError> {
         .and_then(|()| writeln!(file, "{}", std::process::id()))
         .map_err(failed)?;
     Ok(file)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn readings_are_found_without_walking_through_the_record() {
+        let folder = tempfile::tempdir().unwrap();
+        let record = Record::open(folder.path()).unwrap();
+        let mut statement = record
+            .connection
+            .prepare(&format!("EXPLAIN QUERY PLAN {READINGS}"))
+            .unwrap();
+        let plan: Vec<String> = statement
+            .query_map(params![0, 1, "[]", 1], |row| row.get(3))
+            .unwrap()
+            .map(Result::unwrap)
+            .collect();
+        let plan = plan.join("\n");
+        assert!(
+            plan.contains("INDEX readings_by_source (source=? AND phenomenon>? AND phenomenon<?)"),
+            "{plan}"
+        );
+        assert!(plan.contains("INDEX setups"), "{plan}");
+        assert!(!plan.contains("SCAN inputs"), "{plan}");
+    }
 }

@@ -82,6 +82,36 @@ fn a_broker_that_lost_its_memory_gets_every_retained_document_again() {
 }
 
 #[test]
+fn a_lost_session_is_made_good_even_if_the_record_can_not_be_written_just_then() {
+    let mut broker = Mosquitto::start();
+    let mut daemon = Holdtrue::start(broker.port, CHANNEL);
+    daemon.wait_log("subscribed");
+    broker.publish("plant/one", b"1.25");
+    daemon.wait_count(GAP, 1);
+    wait_for("the alarm is retained", || {
+        broker.all_retained("holdtrue/test/alarm/#").pop()
+    });
+    wait_for("the outbox is empty", || {
+        (daemon.count(OUTBOX) == 0).then_some(())
+    });
+    let lock = daemon.sqlite();
+    lock.execute_batch("BEGIN IMMEDIATE").unwrap();
+    broker.stop();
+    broker.forget();
+    broker.launch();
+    daemon.wait_log("has to wait");
+    assert!(broker.all_retained("holdtrue/test/alarm/#").is_empty());
+    lock.execute_batch("ROLLBACK").unwrap();
+    wait_for("the alarm is retained again", || {
+        broker.all_retained("holdtrue/test/alarm/#").pop()
+    });
+    broker.publish("plant/one", b"1.25");
+    daemon.wait_count("SELECT count(*) FROM outputs WHERE kind = 'pair'", 2);
+    daemon.wait_count("SELECT count(*) FROM subscriptions", 1);
+    assert!(daemon.stop().success());
+}
+
+#[test]
 fn a_correction_expires_at_the_broker_with_its_validity() {
     let broker = Mosquitto::start();
     let channel = r#"

@@ -227,3 +227,18 @@ fn what_was_not_committed_when_told_to_end_is_committed_and_acknowledged() {
         "20 indications and 20 references; more would have come twice"
     );
 }
+
+#[test]
+fn told_to_end_with_messages_at_hand_it_still_says_that_it_stops() {
+    let broker = Mosquitto::start();
+    let mut daemon = Holdtrue::prepare_with(broker.port, READINGS, "", CHANNEL);
+    for round in 0..8 {
+        daemon.launch();
+        daemon.wait_log("subscribed");
+        broker.publish_lines("plant/one", &payloads((round + 1) * 20));
+        assert!(daemon.stop().success());
+        let state = broker.retained("holdtrue/test/state").unwrap();
+        let state: serde_json::Value = serde_json::from_slice(&state).unwrap();
+        assert_eq!(state["state"], "stopped", "round {round}");
+    }
+}

@@ -66,6 +66,12 @@ impl Mosquitto {
         process.wait().unwrap();
     }
 
+    /// Loses everything that it kept; to be called while it does not run.
+    pub(crate) fn forget(&self) {
+        assert!(self.process.is_none(), "it runs");
+        std::fs::remove_file(self.folder.path().join("mosquitto.db")).unwrap();
+    }
+
     /// Publishes one message with `mosquitto_pub`, quality of service 1.
     pub(crate) fn publish(&self, topic: &str, payload: &[u8]) {
         self.publish_with(topic, payload, &[]);

@@ -1,0 +1,120 @@
+//! What the loop does when connections come and go: subscriptions, and documents that the broker
+//! has lost.
+
+use super::memory::Step;
+use super::now;
+use super::turn::Daemon;
+use crate::broker::Lost;
+use std::collections::BTreeSet;
+use tokio::time::Instant;
+
+/// Short-lived connections in a row after which a shared client name is suspected.
+const SUSPICIOUS_FAILURES: u32 = 4;
+
+impl Daemon {
+    pub(super) fn greet(&mut self, session_present: bool) {
+        self.figures.connections += 1;
+        self.shell.outbox.note_here();
+        tracing::info!(session_present, "connected to the broker");
+        if !session_present {
+            self.memory.session_lost();
+        }
+        // Read before they become void: what is no longer wanted has to end.
+        let remembered = self.shell.record.subscriptions().unwrap_or_else(|error| {
+            tracing::warn!(%error, "earlier subscriptions unknown; none will be ended");
+            BTreeSet::new()
+        });
+        // Before subscribing, so that a crash in between does not leave them standing.
+        self.restore_memory();
+        // Also at each start: whose session the broker kept is not certain (another broker at the
+        // same address, a client name that was used before), and asking twice does no harm.
+        if self.memory.must_subscribe() {
+            let filters = self.shell.filters();
+            let old: Vec<String> = remembered
+                .into_iter()
+                .filter(|filter| session_present && !filters.contains(filter))
+                .collect();
+            self.link.subscribe(filters, &old);
+        }
+        self.rhythm.change();
+    }
+
+    pub(super) fn note_subscribed(&mut self, refused: &[(String, String)]) {
+        let filters = self.shell.filters();
+        let (new, changed) = self.memory.subscribed(filters, refused);
+        for (filter, why) in new {
+            tracing::error!(
+                filter,
+                why,
+                "the broker refuses this subscription: nothing comes in from there. May this \
+                 client read it? Asking again every few minutes"
+            );
+        }
+        if changed {
+            let confirmed = filters.len() - self.memory.refused().len();
+            tracing::info!(filters = confirmed, "subscribed");
+            self.rhythm.change();
+        }
+    }
+
+    /// Does what is owed to the broker's session and can be done now.
+    pub(super) fn restore_memory(&mut self) {
+        let clock = Instant::now();
+        // Without a connection this does nothing.
+        let again = self.memory.ask_again(clock);
+        self.link.subscribe(&again, &[]);
+        while self.pause.is_none()
+            && let Some(step) = self.memory.step(clock)
+        {
+            let record = &mut self.shell.record;
+            let done = match &step {
+                Step::Forget => record.set_subscriptions(&BTreeSet::new()),
+                Step::Note(filters) => record.set_subscriptions(filters),
+                Step::PublishStanding => self.shell.publish_standing(now()).map(|documents| {
+                    if documents > 0 {
+                        tracing::info!(
+                            documents,
+                            "the broker has lost our session; publishing all retained documents \
+                             again"
+                        );
+                    }
+                }),
+            };
+            match done {
+                Ok(()) => self.memory.done(&step),
+                Err(error) => {
+                    tracing::warn!(%error, "what the broker's session is owed has to wait");
+                    self.memory.failed(clock);
+                }
+            }
+            // With nothing to write there will be no commit.
+            if step == Step::PublishStanding && !self.shell.has_news() {
+                self.memory.committed();
+            }
+        }
+    }
+
+    pub(super) fn note_lost(&mut self, lost: &Lost) {
+        self.shell.outbox.note_away();
+        self.held.forget_guaranteed();
+        self.rhythm.answered();
+        let next_try = lost.next_try;
+        if lost.taken_over {
+            tracing::error!(
+                client_id = self.client_id,
+                ?next_try,
+                "another client with our client_id took the session: two daemons must not share \
+                 one; give each its own [broker] client_id"
+            );
+        } else {
+            tracing::warn!(why = lost.why, ?next_try, "no connection to the broker");
+        }
+        if !lost.taken_over && lost.failures == SUSPICIOUS_FAILURES && self.figures.connections > 1
+        {
+            tracing::warn!(
+                client_id = self.client_id,
+                "connections break again and again; does another client use our client_id?"
+            );
+        }
+    }
+}

@@ -7,12 +7,15 @@
 //! - [`record`]: what the engine was told and said, on the disk
 //! - [`document`]: what is published
 //! - [`daemon`]: the loop around the engine
+//! - `demo`: an invented plant held true on one machine
 //! - [`command`]: the command line
 
 pub mod broker;
 pub mod command;
 pub mod configuration;
 pub mod daemon;
+#[cfg(feature = "demo")]
+pub mod demo;
 pub mod document;
 pub mod payload;
 pub mod record;

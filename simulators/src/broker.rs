@@ -1,4 +1,5 @@
-//! Delivery to an MQTT broker: quality of service 1, bounded in flight, every message counted once it is acknowledged.
+//! Delivery to an MQTT broker: quality of service 1, bounded in flight, every message counted once
+//! it is acknowledged.
 
 use crate::message::Message;
 use holdtrue_engine::time::Timestamp;
@@ -12,8 +13,8 @@ use std::pin::pin;
 use std::time::Duration;
 use tokio::time::{Instant, sleep, sleep_until};
 
-/// Messages under way at once, sent or about to be. Small on purpose: some brokers lower the permitted number, and the
-/// client library goes wrong above that.
+/// Messages under way at once, sent or about to be. Small on purpose: some brokers lower the
+/// permitted number, and the client library goes wrong above that.
 const UNDER_WAY: usize = 16;
 /// First and longest pause between two attempts to connect.
 const BACK_OFF: (Duration, Duration) = (Duration::from_millis(200), Duration::from_secs(5));
@@ -50,7 +51,8 @@ impl fmt::Display for BadUrl {
 impl std::error::Error for BadUrl {}
 
 impl Link {
-    /// A link from a URL `mqtt://HOST[:PORT]`; the port is 1883 by default, an IPv6 address stands in brackets.
+    /// A link from a URL `mqtt://HOST[:PORT]`; the port is 1883 by default, an IPv6 address stands
+    /// in brackets.
     ///
     /// # Errors
     /// Another scheme, no host, or a port that is none.
@@ -126,8 +128,9 @@ impl fmt::Display for Lost {
 
 impl std::error::Error for Lost {}
 
-/// Sends `messages` in order and waits for every acknowledgement. When `stop` completes, no further message is taken,
-/// and what is under way is still waited for. `progress` is told of every acknowledgement.
+/// Sends `messages` in order and waits for every acknowledgement. When `stop` completes, no further
+/// message is taken, and what is under way is still waited for. `progress` is told of every
+/// acknowledgement.
 ///
 /// # Errors
 /// When the broker can't be reached for as long as the link's patience.
@@ -162,7 +165,8 @@ pub async fn deliver(
             break;
         }
         tokio::select! {
-            // A pause is only waited for while connected: giving up a poll would begin connecting anew.
+            // A pause is only waited for while connected: giving up a poll would begin connecting
+            // anew.
             () = wake_at(due), if delivery.connected && due.is_some() => {}
             () = &mut stop, if !stopped => stopped = true,
             event = delivery.events.poll() => match event {
@@ -283,8 +287,8 @@ impl<P: FnMut(&Delivered)> Delivery<P> {
         }
     }
 
-    /// Ends the connection properly; a broker that does not listen any more is no failure, since everything is
-    /// acknowledged.
+    /// Ends the connection properly; a broker that does not listen any more is no failure, since
+    /// everything is acknowledged.
     async fn say_goodbye(&mut self) {
         if self.client.try_disconnect().is_err() {
             return;

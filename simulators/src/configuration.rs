@@ -12,6 +12,10 @@ pub struct Surroundings {
     pub broker_url: String,
     /// Where the record goes.
     pub record_folder: String,
+    /// Longest time between two commits of the record, as the configuration writes it.
+    pub commit: &'static str,
+    /// Channel of which every corrected value is published as well.
+    pub corrected: Option<&'static str>,
 }
 
 impl Default for Surroundings {
@@ -19,6 +23,8 @@ impl Default for Surroundings {
         Self {
             broker_url: "mqtt://127.0.0.1:1883".to_owned(),
             record_folder: "record".to_owned(),
+            commit: "1 s",
+            corrected: None,
         }
     }
 }
@@ -31,14 +37,18 @@ pub fn text(scenario: &Scenario, days: f64, surroundings: &Surroundings) -> Stri
          # The readings bear times of their own, so now is the newest reading's time.\n\n\
          [node]\nname = \"{PLANT}\"\ntime = \"readings\"\n\n\
          [broker]\nurl = {}\n\n\
-         [record]\nfolder = {}\n",
+         [record]\nfolder = {}\ncommit = {}\n",
         scenario.name,
         quoted(&surroundings.broker_url),
         quoted(&surroundings.record_folder),
+        quoted(surroundings.commit),
     );
     for kit in &scenario.kits {
         reference(&mut toml, kit);
         channel(&mut toml, kit, days);
+        if surroundings.corrected == Some(kit.instrument.name) {
+            toml.push_str("corrected_values = true\n");
+        }
     }
     toml
 }
@@ -53,7 +63,8 @@ fn reference(toml: &mut String, kit: &Kit) {
     let _ = write!(
         toml,
         "\n[[reference]]\nname = {}\ntopic = {}\nvalue = \"/value\"\ntime = \"/at\"\n\
-         uncertainty = {{ each = {each}, common = {common} }}\nstale_after = \"{STALE_AFTER_HOURS} h\"\n",
+         uncertainty = {{ each = {each}, common = {common} }}\n\
+         stale_after = \"{STALE_AFTER_HOURS} h\"\n",
         quoted(&instrument.reference()),
         quoted(&instrument.reference_topic()),
     );
@@ -66,7 +77,8 @@ fn channel(toml: &mut String, kit: &Kit, days: f64) {
     let _ = write!(
         toml,
         "\n[[channel]]\nname = {name}\nunit = {unit}\n\
-         indication = {{ topic = {topic}, value = \"/value\", time = \"/at\", sequence = \"/seq\" }}\n\
+         indication = {{ topic = {topic}, value = \"/value\", \
+         time = \"/at\", sequence = \"/seq\" }}\n\
          reference = {reference}\nlateness = \"1 min\"\nmax_gap = \"1 h\"\n\
          window = \"{window} d\"\nresolution = {resolution}\nnoise = {noise}\n\
          max_permissible_error = {limit}\n",
@@ -89,7 +101,8 @@ fn channel(toml: &mut String, kit: &Kit, days: f64) {
     );
 }
 
-/// A float with at most six significant digits, so that products of table values read as a person would write them.
+/// A float with at most six significant digits, so that products of table values read as a person
+/// would write them.
 fn short(value: f64) -> f64 {
     format!("{value:.5e}").parse().unwrap_or(value)
 }

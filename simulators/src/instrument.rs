@@ -1,6 +1,7 @@
 //! The instruments of Harrow Mere, an invented small lakeside water works.
 //!
-//! Levels, noises and limits are plausible orders of magnitude, not data of any real plant or product.
+//! Levels, noises and limits are plausible orders of magnitude, not data of any real plant or
+//! product.
 
 use serde::Serialize;
 
@@ -72,141 +73,30 @@ impl Instrument {
 }
 
 /// All instruments. Their order decides their random numbers: append, never insert.
+#[rustfmt::skip]
 pub const INSTRUMENTS: [Instrument; 13] = [
-    with(
-        "intake/ph-1",
-        "pH",
-        (7.4, 0.08, 0.05),
-        (0.02, 0.6),
-        3,
-        (0.0, 14.0),
-        0.2,
-        5.0,
-    ),
-    with(
-        "intake/oxygen-1",
-        "mg/L",
-        (9.0, 0.6, 0.1),
-        (0.04, 0.6),
-        2,
-        (0.0, 25.0),
-        2.0,
-        3.0,
-    ),
-    with(
-        "intake/turbidity-1",
-        "NTU",
-        (6.0, 0.3, 0.4),
-        (0.1, 0.5),
-        2,
-        (0.0, 40.0),
-        2.5,
-        2.0,
-    ),
-    with(
-        "intake/temperature-1",
-        "Cel",
-        (11.0, 0.8, 0.4),
-        (0.04, 0.7),
-        2,
-        (-5.0, 50.0),
-        0.5,
-        7.0,
-    ),
-    with(
-        "filter-hall/turbidity-2",
-        "NTU",
-        (0.4, 0.02, 0.02),
-        (0.01, 0.5),
-        3,
-        (0.0, 10.0),
-        0.2,
-        5.0,
-    ),
-    with(
-        "contact-tank/chlorine-1",
-        "mg/L",
-        (0.9, 0.05, 0.05),
-        (0.02, 0.6),
-        3,
-        (0.0, 5.0),
-        0.8,
-        5.0,
-    ),
-    with(
-        "contact-tank/ph-2",
-        "pH",
-        (7.6, 0.03, 0.03),
-        (0.02, 0.8),
-        3,
-        (0.0, 14.0),
-        0.2,
-        5.0,
-    ),
-    with(
-        "clearwell/conductivity-1",
-        "uS/cm",
-        (420.0, 4.0, 6.0),
-        (1.5, 0.6),
-        1,
-        (0.0, 2000.0),
-        80.0,
-        5.0,
-    ),
-    with(
-        "clearwell/level-1",
-        "m",
-        (3.5, 0.5, 0.1),
-        (0.004, 0.3),
-        3,
-        (0.0, 6.0),
-        0.05,
-        5.0,
-    ),
-    with(
-        "pump-house/pressure-1",
-        "bar",
-        (5.2, 0.2, 0.1),
-        (0.01, 0.5),
-        3,
-        (0.0, 16.0),
-        0.35,
-        2.0,
-    ),
-    with(
-        "pump-house/flow-1",
-        "m3/h",
-        (310.0, 40.0, 10.0),
-        (1.5, 0.5),
-        1,
-        (0.0, 800.0),
-        15.0,
-        5.0,
-    ),
-    with(
-        "weather-mast/pressure-1",
-        "hPa",
-        (1008.0, 1.0, 5.0),
-        (0.15, 0.9),
-        2,
-        (800.0, 1100.0),
-        2.0,
-        5.0,
-    ),
-    with(
-        "weather-mast/humidity-1",
-        "%RH",
-        (72.0, 10.0, 4.0),
-        (0.8, 0.7),
-        1,
-        (0.0, 110.0),
-        40.0,
-        5.0,
-    ),
+    with("intake/ph-1", "pH", (7.4, 0.08, 0.05), (0.02, 0.6), 3, (0.0, 14.0), 0.2, 5.0),
+    with("intake/oxygen-1", "mg/L", (9.0, 0.6, 0.1), (0.04, 0.6), 2, (0.0, 25.0), 2.0, 3.0),
+    with("intake/turbidity-1", "NTU", (6.0, 0.3, 0.4), (0.1, 0.5), 2, (0.0, 40.0), 2.5, 2.0),
+    with("intake/temperature-1", "Cel", (11.0, 0.8, 0.4), (0.04, 0.7), 2, (-5.0, 50.0), 0.5, 7.0),
+    with("filter-hall/turbidity-2", "NTU",
+        (0.4, 0.02, 0.02), (0.01, 0.5), 3, (0.0, 10.0), 0.2, 5.0),
+    with("contact-tank/chlorine-1", "mg/L",
+        (0.9, 0.05, 0.05), (0.02, 0.6), 3, (0.0, 5.0), 0.8, 5.0),
+    with("contact-tank/ph-2", "pH", (7.6, 0.03, 0.03), (0.02, 0.8), 3, (0.0, 14.0), 0.2, 5.0),
+    with("clearwell/conductivity-1", "uS/cm",
+        (420.0, 4.0, 6.0), (1.5, 0.6), 1, (0.0, 2000.0), 80.0, 5.0),
+    with("clearwell/level-1", "m", (3.5, 0.5, 0.1), (0.004, 0.3), 3, (0.0, 6.0), 0.05, 5.0),
+    with("pump-house/pressure-1", "bar", (5.2, 0.2, 0.1), (0.01, 0.5), 3, (0.0, 16.0), 0.35, 2.0),
+    with("pump-house/flow-1", "m3/h", (310.0, 40.0, 10.0), (1.5, 0.5), 1, (0.0, 800.0), 15.0, 5.0),
+    with("weather-mast/pressure-1", "hPa",
+        (1008.0, 1.0, 5.0), (0.15, 0.9), 2, (800.0, 1100.0), 2.0, 5.0),
+    with("weather-mast/humidity-1", "%RH",
+        (72.0, 10.0, 4.0), (0.8, 0.7), 1, (0.0, 110.0), 40.0, 10.0),
 ];
 
-/// An instrument with an hourly reference: `truth` is level, swing and wander; `noise` its standard deviation and
-/// memory.
+/// An instrument with an hourly reference: `truth` is level, swing and wander; `noise` its standard
+/// deviation and memory.
 #[allow(
     clippy::too_many_arguments,
     reason = "one line per instrument keeps the table readable"

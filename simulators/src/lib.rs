@@ -1,11 +1,13 @@
 //! Invented plants with known truth.
 //!
-//! Everything a scenario does follows from its table entry and one seed: the true value, the sensor's error, the noise,
-//! the faults and the alarms that each fault must raise. The same seed gives the same bytes.
+//! Everything a scenario does follows from its table entry and one seed: the true value, the
+//! sensor's error, the noise, the faults and the alarms that each fault must raise. The same seed
+//! gives the same bytes.
 //!
-//! Reading order: what exists ([`instrument`], [`behaviour`], [`scenario`]), how it runs ([`noise`], [`process`],
-//! [`sensor`], [`plant`]), what is said about it ([`truth`], [`configuration`], [`message`]), and where it goes
-//! ([`write`], [`feed`], [`broker`]).
+//! Reading order: what exists ([`instrument`], [`behaviour`], [`scenario`]), how it runs
+//! ([`noise`], [`process`], [`sensor`], [`plant`]), what is said about it ([`truth`],
+//! [`configuration`], [`message`]), and where it goes ([`write`], [`feed`], [`broker`]);
+//! [`command`] is the command line over all of it.
 
 pub mod instrument;
 pub mod range;
@@ -25,3 +27,5 @@ pub mod truth;
 pub mod broker;
 pub mod feed;
 pub mod write;
+
+pub mod command;

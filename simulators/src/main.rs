@@ -1,13 +1,11 @@
 //! The `plant` command: invented plants and recordings, to files or to a broker.
 
-mod command;
-
 use clap::Parser;
+use holdtrue_simulators::command;
 use std::process::ExitCode;
 
 fn main() -> ExitCode {
-    let arguments = command::Arguments::parse();
-    match command::run(arguments) {
+    match command::run(command::Arguments::parse()) {
         Ok(()) => ExitCode::SUCCESS,
         Err(failure) => {
             eprintln!("plant: {failure}");

@@ -35,6 +35,16 @@ impl Topics {
         }
     }
 
+    /// All topics.
+    #[must_use]
+    pub fn all(&self) -> Vec<&str> {
+        self.indications
+            .iter()
+            .chain(&self.references)
+            .map(String::as_str)
+            .collect()
+    }
+
     /// The topic of `sample`.
     #[must_use]
     pub fn of(&self, sample: &Sample) -> &str {

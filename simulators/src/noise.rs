@@ -2,8 +2,8 @@
 
 use crate::range::Draw;
 
-/// First-order autoregressive noise, `x_t = ρ·x_{t−1} + √(1 − ρ²)·σ·z_t`, stationary from its first value
-/// (Box & Jenkins, *Time Series Analysis*, §3.2.3; from memory).
+/// First-order autoregressive noise, `x_t = ρ·x_{t−1} + √(1 − ρ²)·σ·z_t`, stationary from its first
+/// value (Box & Jenkins, *Time Series Analysis*, §3.2.3; from memory).
 #[derive(Clone, Debug)]
 pub struct Autoregressive {
     memory: f64,

@@ -5,8 +5,8 @@ use crate::scenario::Scenario;
 use crate::sensor::{START, Sample, Sensor};
 use holdtrue_engine::time::{Duration, Timestamp};
 
-/// A scenario with everything drawn. Iterating gives samples in order of time; at one instant in the order of sensors,
-/// indication before reference.
+/// A scenario with everything drawn. Iterating gives samples in order of time; at one instant in
+/// the order of sensors, indication before reference.
 #[derive(Clone, Debug)]
 pub struct Plant {
     /// The scenario.

@@ -30,8 +30,8 @@ impl Range {
 
 /// A seeded source of random numbers.
 ///
-/// Every sensor has one for each of its duties, so that a change to one part of a scenario leaves all other numbers as
-/// they were.
+/// Every sensor has one for each of its duties, so that a change to one part of a scenario leaves
+/// all other numbers as they were.
 #[derive(Clone, Debug)]
 pub struct Draw(ChaCha8Rng);
 

@@ -14,12 +14,14 @@ pub struct Kit {
     pub instrument: Instrument,
     /// What it does.
     pub behaviour: Behaviour,
-    /// Whether its drift rate is watched: then the planted drift is at least twice as fast as permitted.
+    /// Whether its drift rate is watched: then the planted drift is at least twice as fast as
+    /// permitted.
     pub rate_watched: bool,
 }
 
 impl Kit {
-    /// The drift rate that is permitted in a run of `days` days, unit per day: half of the slowest that can be drawn;
+    /// The drift rate that is permitted in a run of `days` days, unit per day: half of the slowest
+    /// that can be drawn;
     /// `None` if the rate is not watched.
     #[must_use]
     pub fn permitted_rate(&self, days: f64) -> Option<f64> {

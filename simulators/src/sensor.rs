@@ -31,8 +31,8 @@ pub struct Sample {
     pub sequence: u64,
     /// The true value at that instant.
     pub true_value: f64,
-    /// The part of the error that a correction can be expected to remove, or stuck and daily errors: everything but
-    /// noise, rounding and spikes.
+    /// The part of the error that a correction can be expected to remove, or stuck and daily
+    /// errors: everything but noise, rounding and spikes.
     pub systematic_error: f64,
 }
 
@@ -149,8 +149,8 @@ impl Sensor {
         });
     }
 
-    /// Sends the reference value that belongs to grid step `step`, if one is due; `next_true` is the true value at the
-    /// end of the step that it falls into.
+    /// Sends the reference value that belongs to grid step `step`, if one is due; `next_true` is
+    /// the true value at the end of the step that it falls into.
     fn refer(&mut self, step: u32, next_true: f64) {
         if !step.is_multiple_of(self.instrument.reference_every) {
             return;
@@ -182,7 +182,8 @@ impl Sensor {
     }
 }
 
-/// `value` rounded to `decimals`, as the nearest float to the decimal number, so that it prints short.
+/// `value` rounded to `decimals`, as the nearest float to the decimal number, so that it prints
+/// short.
 fn rounded(value: f64, decimals: usize) -> f64 {
     let rounded: f64 = format!("{value:.decimals$}").parse().unwrap_or(value);
     // No minus before a zero.

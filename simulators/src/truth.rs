@@ -1,7 +1,9 @@
-//! What is true about a run: drawn parameters, planted faults, and the alarm that each fault must raise.
+//! What is true about a run: drawn parameters, planted faults, and the alarm that each fault must
+//! raise.
 //!
-//! Only alarms of the first set are expected: error limit, drift rate, stale reference, data gap, screen locked out.
-//! The rules are derived from the planted error alone, never from what a fit makes of it.
+//! Only alarms of the first set are expected: error limit, drift rate, stale reference, data gap,
+//! screen locked out. The rules are derived from the planted error alone, never from what a fit
+//! makes of it.
 
 use crate::behaviour::disturbance::{DYING_DAYS, Disturbance};
 use crate::behaviour::{Behaviour, Drawn, Planted, curve::Curve};
@@ -16,13 +18,18 @@ pub const GAP_AFTER_HOURS: f64 = 3.0;
 /// Hours without a value after which a reference counts as stale.
 pub const STALE_AFTER_HOURS: f64 = 8.0;
 
+/// A drift whose rate is watched must be noticed by the time it has grown to so many standard
+/// deviations of the noise.
+const DRIFT_PLAIN: f64 = 8.0;
+
 /// What can be asked of a correction for this sensor.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize)]
 #[serde(rename_all = "kebab-case")]
 pub enum Expectation {
     /// It drifts in a way that pairs with a reference show: the true RMS error must at least halve.
     Halve,
-    /// Nothing that a polynomial in time could remove: the true RMS error must not grow by more than 0.05σ.
+    /// Nothing that a polynomial in time could remove: the true RMS error must not grow by more
+    /// than 0.05σ.
     LeaveAlone,
     /// Broken: only the alarm matters.
     AlarmOnly,
@@ -191,7 +198,8 @@ fn alarms(sensor: usize, kit: &Kit, planted: &Planted, end: f64) -> Vec<Expected
     limit_alarms(&mut expected, &planted.curve);
     let window = kit.instrument.window_days;
     for jump in planted.curve.jumps(end) {
-        // The old level leaves the window one window later; until then the fit may contradict the readings.
+        // The old level leaves the window one window later; until then the fit may contradict the
+        // readings.
         let window = (jump, jump + 1.0, jump + window + 1.0);
         expected.add(Subject::Channel, "screen-locked-out", jump, window);
     }
@@ -234,10 +242,11 @@ fn limit_alarms(expected: &mut Expected, curve: &Curve) {
             (earliest, due, f64::MAX),
         );
     }
-    if let Curve::Linear { onset, .. } = *curve
+    if let Curve::Linear { onset, rate } = *curve
         && expected.kit.rate_watched
     {
-        let due = onset + 2.0 * expected.kit.instrument.window_days;
+        // By then the drift stands far out of the noise, whatever the length of the run.
+        let due = onset + DRIFT_PLAIN * expected.kit.instrument.noise / rate.abs();
         expected.add(
             Subject::Channel,
             "drift-rate",

@@ -59,8 +59,10 @@ pub struct Written {
     pub files: Vec<PathBuf>,
 }
 
-/// Writes the run of `plant` into `folder` (made if missing): readings, `truth.csv` (the truth at each indication),
-/// `truth.json` (parameters, faults, expected alarms) and `holdtrue.toml`. `progress` is told of every value.
+/// Writes the run of `plant` into `folder` (made if missing): readings, `truth.csv` (the truth at
+/// each indication),
+/// `truth.json` (parameters, faults, expected alarms) and `holdtrue.toml`. `progress` is told of
+/// every value.
 ///
 /// # Errors
 /// The first file that can't be written, with the reason.

@@ -3,9 +3,9 @@
 use std::io::IsTerminal;
 use tracing_subscriber::EnvFilter;
 
-/// What is shown by default. The MQTT library's warnings are left out: what they tell is told by the
+/// What is shown unless a command has a default of its own. The MQTT library's warnings are left out: what they tell is told by the
 /// daemon, once and with what to do.
-const DEFAULT: &str = "info,rumqttc=error";
+pub(super) const DEFAULT: &str = "info,rumqttc=error";
 
 /// How log lines look.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, clap::ValueEnum)]
@@ -16,17 +16,17 @@ pub(super) enum Format {
     Json,
 }
 
-/// Starts logging. `filter` as in `RUST_LOG`; without, that variable counts, else [`DEFAULT`].
+/// Starts logging. `filter` as in `RUST_LOG`; without, that variable counts, else `usual`.
 ///
 /// # Errors
 /// What is wrong with the filter.
-pub(super) fn set_up(format: Format, filter: Option<&str>) -> Result<(), String> {
+pub(super) fn set_up(format: Format, filter: Option<&str>, usual: &str) -> Result<(), String> {
     let told = filter
         .map(str::to_owned)
         .or_else(|| std::env::var("RUST_LOG").ok());
     let told = told
         .filter(|told| !told.trim().is_empty())
-        .unwrap_or_else(|| DEFAULT.to_owned());
+        .unwrap_or_else(|| usual.to_owned());
     let filter = EnvFilter::try_new(&told)
         .map_err(|error| format!("the log filter \"{told}\" can't be read: {error}"))?;
     let lines = tracing_subscriber::fmt()

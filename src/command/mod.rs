@@ -3,9 +3,13 @@
 //! Modules in reading order:
 //! - [`check`]: everything that is wrong with a configuration
 //! - `run`: the daemon, until it is told to stop
+//! - `demo`: an invented plant held true on this machine
 //! - `log`: what an operator reads while the daemon runs
 
 pub mod check;
+
+#[cfg(feature = "demo")]
+mod demo;
 
 mod log;
 mod run;
@@ -61,6 +65,13 @@ pub struct Arguments {
 
 #[derive(Debug, Subcommand)]
 enum Command {
+    /// Hold an invented plant true on this machine: broker, plant and daemon in one, no
+    /// configuration needed.
+    #[cfg(feature = "demo")]
+    #[command(after_help = "Example:\n  holdtrue demo --days 60\n\n\
+        Exit code: 0 held true (or ended by Ctrl-C), 1 not held true, 2 wrong usage, 3 a part \
+        failed.")]
+    Demo(demo::Demo),
     /// Run the daemon until it is told to stop (Ctrl-C, SIGTERM).
     #[command(
         after_help = "Example:\n  holdtrue run --config /etc/holdtrue/holdtrue.toml\n\n\
@@ -87,14 +98,29 @@ enum Command {
     },
 }
 
+impl Command {
+    /// Which log lines are shown when nobody says which.
+    fn usual_log(&self) -> &'static str {
+        match self {
+            // The demo plants faults; its table tells what became of them.
+            #[cfg(feature = "demo")]
+            Self::Demo(_) => "error",
+            _ => log::DEFAULT,
+        }
+    }
+}
+
 /// Does what the command line says.
 #[must_use]
 pub fn run(arguments: Arguments) -> Ending {
-    if let Err(message) = log::set_up(arguments.log_format, arguments.log.as_deref()) {
+    let usual = arguments.command.usual_log();
+    if let Err(message) = log::set_up(arguments.log_format, arguments.log.as_deref(), usual) {
         eprintln!("error: {message}");
         return Ending::Wrong;
     }
     match arguments.command {
+        #[cfg(feature = "demo")]
+        Command::Demo(demo) => demo.run(),
         Command::Run { config } => run::run(&config),
         Command::Check { config, json } => check::run(&config, json, &mut std::io::stdout()),
     }

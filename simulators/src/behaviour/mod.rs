@@ -1,8 +1,8 @@
 //! What can be wrong with a sensor: each kind with the ranges that its parameters are drawn from.
 //!
-//! Sizes are in standard deviations of the sensor's noise (σ), instants in parts of the run, so that one table serves
-//! every instrument and every length of run. [`curve`] holds the drifts, [`disturbance`] what happens to single
-//! readings and whole streams.
+//! Sizes are in standard deviations of the sensor's noise (σ), instants in parts of the run, so
+//! that one table serves every instrument and every length of run. [`curve`] holds the drifts,
+//! [`disturbance`] what happens to single readings and whole streams.
 
 pub mod curve;
 pub mod disturbance;

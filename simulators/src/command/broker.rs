@@ -1,9 +1,9 @@
 //! Arguments that say where the broker is and how fast to publish, and the delivery itself.
 
 use super::{Failure, progress, say, say_json};
+use crate::broker::{Delivered, Link, Pace, deliver};
+use crate::message::Message;
 use clap::Args;
-use holdtrue_simulators::broker::{Delivered, Link, Pace, deliver};
-use holdtrue_simulators::message::Message;
 use std::path::PathBuf;
 
 /// Where to, how fast.

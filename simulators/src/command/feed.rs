@@ -2,12 +2,12 @@
 
 use super::Failure;
 use super::broker::Target;
+use crate::feed::FeedError;
+use crate::feed::field::{Constant, Field, Kind};
+use crate::feed::instant::TimeForm;
+use crate::feed::rows::{Mapping, Rows};
+use crate::feed::table::{FileForm, Table};
 use clap::Args;
-use holdtrue_simulators::feed::FeedError;
-use holdtrue_simulators::feed::field::{Constant, Field, Kind};
-use holdtrue_simulators::feed::instant::TimeForm;
-use holdtrue_simulators::feed::rows::{Mapping, Rows};
-use holdtrue_simulators::feed::table::{FileForm, Table};
 use std::path::PathBuf;
 
 /// Feeds a recording.

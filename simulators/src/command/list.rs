@@ -1,8 +1,8 @@
 //! `plant list`: the scenarios with their ranges.
 
 use super::{Failure, say, say_json};
+use crate::scenario::{self, Kit, Scenario};
 use clap::Args;
-use holdtrue_simulators::scenario::{self, Kit, Scenario};
 use std::fmt::Write;
 
 /// Lists scenarios.

@@ -1,7 +1,7 @@
 //! The command line of `plant`: one file per command.
 //!
-//! Exit codes: 0 done; 1 done, but rows were left out or messages refused; 2 wrong usage; 3 the outside (broker, disk)
-//! failed.
+//! Exit codes: 0 done; 1 done, but rows were left out or messages refused; 2 wrong usage; 3 the
+//! outside (broker, disk) failed.
 
 mod broker;
 mod feed;
@@ -18,7 +18,7 @@ use std::process::ExitCode;
 /// Invented plants with known truth, and recordings, to files or to an MQTT broker.
 #[derive(Debug, Parser)]
 #[command(version, about, long_about = None, arg_required_else_help = true)]
-pub(crate) struct Arguments {
+pub struct Arguments {
     #[command(subcommand)]
     command: Command,
 }
@@ -46,7 +46,7 @@ enum Command {
 
 /// Why a command did not end well.
 #[derive(Debug)]
-pub(crate) enum Failure {
+pub enum Failure {
     /// Done, but not all of it.
     Incomplete(String),
     /// The request makes no sense.
@@ -56,7 +56,9 @@ pub(crate) enum Failure {
 }
 
 impl Failure {
-    pub(crate) fn exit_code(&self) -> ExitCode {
+    /// The process's exit code.
+    #[must_use]
+    pub fn exit_code(&self) -> ExitCode {
         ExitCode::from(match self {
             Self::Incomplete(_) => 1,
             Self::Usage(_) => 2,
@@ -85,7 +87,10 @@ impl fmt::Display for Failure {
 }
 
 /// Carries out a command.
-pub(crate) fn run(arguments: Arguments) -> Result<(), Failure> {
+///
+/// # Errors
+/// With the exit code that fits, and a sentence for the user.
+pub fn run(arguments: Arguments) -> Result<(), Failure> {
     match arguments.command {
         Command::List(list) => list.carry_out(),
         Command::Write(write) => write.carry_out(),

@@ -3,8 +3,8 @@
 use super::Failure;
 use super::broker::Target;
 use super::run::Run;
+use crate::message::Topics;
 use clap::Args;
-use holdtrue_simulators::message::Topics;
 
 /// Publishes a run.
 #[derive(Debug, Args)]

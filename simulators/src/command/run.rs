@@ -1,9 +1,9 @@
 //! Arguments that choose a run: scenario, seed, length.
 
 use super::Failure;
+use crate::plant::Plant;
+use crate::scenario;
 use clap::Args;
-use holdtrue_simulators::plant::Plant;
-use holdtrue_simulators::scenario;
 
 /// Longest run, days.
 const DAYS_MAX: f64 = 3650.0;

@@ -2,8 +2,8 @@
 
 use super::run::Run;
 use super::{Failure, progress, say, say_json};
+use crate::write::{self, Form};
 use clap::Args;
-use holdtrue_simulators::write::{self, Form};
 use std::path::PathBuf;
 
 /// Writes a run.

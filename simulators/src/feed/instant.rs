@@ -29,7 +29,8 @@ impl FromStr for TimeForm {
             "epoch-ms" => Ok(Self::EpochMilliseconds),
             pattern if pattern.contains('%') => Ok(Self::Pattern(pattern.to_owned())),
             other => Err(format!(
-                "{other:?} is not a time format: rfc3339, date, epoch, epoch-ms or a pattern such as %d.%m.%Y %H:%M"
+                "{other:?} is not a time format: rfc3339, date, epoch, epoch-ms or a \
+                 pattern such as %d.%m.%Y %H:%M"
             )),
         }
     }
@@ -105,7 +106,8 @@ mod tests {
 
     #[test]
     fn each_form_reads_its_own() {
-        let day = Timestamp(318_556_800_000_000_000); // 1980-02-05, as `date -ud 1980-02-05 +%s` says
+        // As `date -ud 1980-02-05 +%s` says.
+        let day = Timestamp(318_556_800_000_000_000);
         let cases = [
             ("date", "1980-02-05", Some(day)),
             ("date", "05.02.1980", None),

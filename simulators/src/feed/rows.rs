@@ -16,7 +16,8 @@ const REASONS_MAX: usize = 10;
 pub struct Mapping {
     /// Topic; `{column}` stands for a cell of the row.
     pub topic: String,
-    /// Columns that become members; empty: all that the topic does not use, numbers where they read as numbers.
+    /// Columns that become members; empty: all that the topic does not use, numbers where they read
+    /// as numbers.
     pub fields: Vec<Field>,
     /// Members that every payload gets.
     pub constants: Vec<Constant>,

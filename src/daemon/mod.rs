@@ -12,6 +12,7 @@
 //! - `session`, `memory`: connections that come and go, and what a broker may have forgotten
 //! - `handing`, `refusals`: documents on their way, and what the broker says to them
 //! - `ending`: the orderly end
+//! - `settling`: no ticks before the broker has sent what it kept
 //! - `held`: messages that wait while nothing can be taken
 //! - `report`: the `state` document
 
@@ -24,6 +25,7 @@ mod refusals;
 mod report;
 mod restore;
 mod session;
+mod settling;
 mod shell;
 mod turn;
 
@@ -31,7 +33,10 @@ use crate::broker::TlsError;
 use crate::configuration::Configuration;
 use crate::record::RecordError;
 use holdtrue_engine::time::Timestamp;
+use shell::Shell;
 use std::future::Future;
+use std::sync::Arc;
+use std::sync::atomic::{AtomicBool, Ordering};
 use std::time::{SystemTime, UNIX_EPOCH};
 
 /// Why the daemon could not start or go on. All of these are the outside's failures.
@@ -70,7 +75,28 @@ pub async fn run(
     configuration: Configuration,
     shutdown: impl Future<Output = ()>,
 ) -> Result<(), Error> {
-    turn::Daemon::start(configuration)?.run(shutdown).await;
+    tokio::pin!(shutdown);
+    let stop = Arc::new(AtomicBool::new(false));
+    let stopped = Arc::clone(&stop);
+    // A thread of its own: reading a long record takes minutes, and being told to stop must work.
+    let mut opening = tokio::task::spawn_blocking(move || {
+        let shell = Shell::start(&configuration, now(), &stopped)?;
+        Ok::<_, Error>(shell.map(|shell| (configuration, shell)))
+    });
+    let opened = tokio::select! {
+        opened = &mut opening => opened,
+        () = &mut shutdown => {
+            stop.store(true, Ordering::Relaxed);
+            tracing::info!("stopping before the record was read");
+            opening.await.map(|opened| opened.map(|_| None))
+        }
+    };
+    let opened = opened.unwrap_or_else(|ended| std::panic::resume_unwind(ended.into_panic()))?;
+    if let Some((configuration, shell)) = opened {
+        turn::Daemon::start(configuration, shell)?
+            .run(shutdown)
+            .await;
+    }
     Ok(())
 }
 

@@ -1,14 +1,21 @@
 //! From the record to the engine's state, at the start.
 
 use super::Error;
-use crate::record::Record;
+use crate::record::{Record, RecordError};
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Input, Output};
 use holdtrue_engine::setup::{ChannelId, Setup};
-use holdtrue_engine::time::Timestamp;
+use holdtrue_engine::time::{self, Timestamp};
+use std::path::Path;
+use std::sync::atomic::{AtomicBool, Ordering};
+use std::time::{Duration, Instant};
 
-/// Progress is logged after so many inputs.
-const PROGRESS_EVERY: i64 = 500_000;
+/// Progress is logged this often.
+const PROGRESS_EVERY: Duration = Duration::from_secs(5);
+/// After so many inputs it is looked whether to stop or to log.
+const LOOK_EVERY: i64 = 1000;
+/// A clock that is earlier than the newest recorded received time by more than this is told of.
+const CLOCK_BEHIND: time::Duration = time::Duration(120_000_000_000);
 /// So much of a differing text is shown.
 const SHOWN_CHARACTERS: usize = 300;
 
@@ -22,6 +29,20 @@ pub(super) struct Restored {
     pub(super) wanted: Vec<Wanted>,
     /// Inputs after which another version of the program had said something else.
     pub(super) differing: u64,
+    /// The newest received time.
+    newest: Option<Timestamp>,
+}
+
+/// Why a replay did not come to its end.
+enum Ended {
+    Stopped,
+    Failed(Error),
+}
+
+impl From<RecordError> for Ended {
+    fn from(error: RecordError) -> Self {
+        Self::Failed(error.into())
+    }
 }
 
 /// Rows that the engine asked for.
@@ -32,38 +53,71 @@ pub(super) struct Wanted {
     pub(super) to: Timestamp,
 }
 
-/// Replays the record. Nothing is published.
+/// Replays the record. Nothing is published. `None` when `stop` was set meanwhile.
 ///
 /// # Errors
 /// When the record can't be read, or when this same program once said something else.
-pub(super) fn restore(record: &Record) -> Result<Restored, Error> {
+fn restore(record: &Record, stop: &AtomicBool) -> Result<Option<Restored>, Error> {
     let mut restored = Restored {
         engine: Engine::new(),
         setup: None,
         wanted: Vec::new(),
         differing: 0,
+        newest: None,
     };
     let mut outputs = Vec::new();
-    record.replay::<Error>(|row| {
+    let of = record.next_input() - 1;
+    let mut told = Instant::now();
+    let ended = record.replay::<Ended>(|row| {
+        if row.position % LOOK_EVERY == 0 {
+            if stop.load(Ordering::Relaxed) {
+                return Err(Ended::Stopped);
+            }
+            if told.elapsed() >= PROGRESS_EVERY {
+                told = Instant::now();
+                tracing::info!("reading the record: input {} of {of}", row.position);
+            }
+        }
         outputs.clear();
         restored.engine.step(&row.input, &mut outputs);
-        compare(
-            record,
-            row.position,
-            &row.outputs,
-            &outputs,
-            &mut restored.differing,
-        )?;
+        let differing = &mut restored.differing;
+        compare(record, row.position, &row.outputs, &outputs, differing).map_err(Ended::Failed)?;
         note_wanted(&row.input, &outputs, &mut restored.wanted);
+        restored.newest = restored.newest.max(received(&row.input));
         if let Input::Setup(setup) = row.input {
             restored.setup = Some(*setup);
         }
-        if row.position % PROGRESS_EVERY == 0 {
-            tracing::info!(inputs = row.position, "reading the record");
-        }
         Ok(())
-    })?;
-    Ok(restored)
+    });
+    match ended {
+        Ok(()) => Ok(Some(restored)),
+        Err(Ended::Stopped) => Ok(None),
+        Err(Ended::Failed(error)) => Err(error),
+    }
+}
+
+/// When an input was received; `None` for those that do not come from outside.
+fn received(input: &Input) -> Option<Timestamp> {
+    match input {
+        Input::Reading(reading) => Some(reading.received),
+        Input::Gate(gate) => Some(gate.received),
+        Input::Refused(refused) => Some(refused.received),
+        Input::Tick { now } => Some(*now),
+        Input::Setup(_) | Input::Supplied(_) => None,
+    }
+}
+
+/// Tells of a clock that went backwards while we were away.
+fn check_clock(now: Timestamp, newest: Option<Timestamp>) {
+    let behind = newest.map(|newest| newest.since(now));
+    if let Some(behind) = behind.filter(|behind| *behind > CLOCK_BEHIND) {
+        tracing::error!(
+            seconds = behind.0 / 1_000_000_000,
+            "the clock of this machine is earlier than the newest entry of the record: it is \
+             wrong now, or was wrong then. Readings may be refused until it is set; is the time \
+             service running?"
+        );
+    }
 }
 
 /// Keeps the list of what the engine asked for and was not given.
@@ -140,10 +194,17 @@ fn shorten(text: &str) -> String {
     }
 }
 
-/// Opens the record and restores the engine from it.
-pub(super) fn open(folder: &std::path::Path) -> Result<(Record, Restored), Error> {
+/// Opens the record and restores the engine from it. `None` when `stop` was set meanwhile.
+pub(super) fn open(
+    folder: &Path,
+    now: Timestamp,
+    stop: &AtomicBool,
+) -> Result<Option<(Record, Restored)>, Error> {
     let record = Record::open(folder)?;
-    let restored = restore(&record)?;
+    let Some(restored) = restore(&record, stop)? else {
+        return Ok(None);
+    };
+    check_clock(now, restored.newest);
     if restored.differing > 0 {
         tracing::warn!(
             inputs = restored.differing,
@@ -152,5 +213,5 @@ pub(super) fn open(folder: &std::path::Path) -> Result<(Record, Restored), Error
     }
     let inputs = record.next_input() - 1;
     tracing::info!(inputs, folder = %folder.display(), "record read, state restored");
-    Ok((record, restored))
+    Ok(Some((record, restored)))
 }

@@ -13,6 +13,7 @@ use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Input, Output, Source, Supplied};
 use holdtrue_engine::setup::Setup;
 use holdtrue_engine::time::Timestamp;
+use std::sync::atomic::AtomicBool;
 
 /// Recorded rows given back to the engine at once, at most; the newest are left out.
 const SUPPLIED_MAX: usize = 100_000;
@@ -33,8 +34,16 @@ pub(super) struct Shell {
 
 impl Shell {
     /// Opens the record, restores the engine, and lets the configuration take effect if it is new.
-    pub(super) fn start(configuration: &Configuration, now: Timestamp) -> Result<Self, Error> {
-        let (mut record, restored) = restore::open(&configuration.record.folder)?;
+    /// `None` when `stop` was set meanwhile.
+    pub(super) fn start(
+        configuration: &Configuration,
+        now: Timestamp,
+        stop: &AtomicBool,
+    ) -> Result<Option<Self>, Error> {
+        let folder = &configuration.record.folder;
+        let Some((mut record, restored)) = restore::open(folder, now, stop)? else {
+            return Ok(None);
+        };
         record.begin_session(now, env!("CARGO_PKG_VERSION"))?;
         let Restored {
             engine,
@@ -60,7 +69,7 @@ impl Shell {
         }
         shell.commit()?;
         shell.answer_wanted()?;
-        Ok(shell)
+        Ok(Some(shell))
     }
 
     /// Lets a configuration take effect. What this says bears the old one's positions.

@@ -8,6 +8,7 @@ use super::held::Held;
 use super::memory::Memory;
 use super::refusals::Refusals;
 use super::report::{LoopFigures, StateRhythm};
+use super::settling::Settling;
 use super::shell::Shell;
 use super::{Error, now};
 use crate::broker::{BackOff, Event, Link, Message, Ticket, Will};
@@ -44,6 +45,7 @@ pub(super) struct Daemon {
     /// What the broker said when it last refused the state document.
     pub(super) state_refused: Option<String>,
     pub(super) memory: Memory,
+    pub(super) settling: Settling,
     /// The broker could not take a document; not before this instant again.
     pub(super) hand_again: Option<Instant>,
     pub(super) hand_again_back_off: BackOff,
@@ -60,9 +62,8 @@ pub(super) struct Pause {
 }
 
 impl Daemon {
-    /// Opens the record, restores the engine, prepares the link.
-    pub(super) fn start(configuration: Configuration) -> Result<Self, Error> {
-        let shell = Shell::start(&configuration, now())?;
+    /// Prepares the link for a restored engine.
+    pub(super) fn start(configuration: Configuration, shell: Shell) -> Result<Self, Error> {
         let (node, fingerprint) = (shell.setup.node.clone(), shell.setup.fingerprint.clone());
         let client_id = configuration.broker.client_id.clone();
         tracing::info!(
@@ -92,6 +93,7 @@ impl Daemon {
             refusals: Refusals::default(),
             state_refused: None,
             memory: Memory::new(remembered),
+            settling: Settling::new(Instant::now()),
             hand_again: None,
             hand_again_back_off: BackOff::default(),
             next_tick: None,
@@ -122,7 +124,10 @@ impl Daemon {
         match event {
             Event::Message(message) => self.take_or_hold(message),
             Event::Answered(token, answer) => self.settle(token, answer),
-            Event::Connected { session_present } => self.greet(session_present),
+            Event::Connected { session_present } => {
+                self.settling.hear(Instant::now());
+                self.greet(session_present);
+            }
             Event::Subscribed { refused } => self.note_subscribed(&refused),
             Event::Lost(lost) => self.note_lost(&lost),
             // The next turn hands over.
@@ -135,6 +140,7 @@ impl Daemon {
     }
 
     fn take_or_hold(&mut self, message: Message) {
+        self.settling.hear(Instant::now());
         let received = now();
         if self.may_take() && self.held.is_empty() && !self.held.is_overrun() {
             self.take(&message, received);
@@ -187,6 +193,9 @@ impl Daemon {
     }
 
     fn tick(&mut self) {
+        if self.settling.holds(Instant::now()) {
+            return;
+        }
         if self.tick_asked.elapsed() >= TICK_ASK_EVERY {
             self.ask_tick();
         }
@@ -207,7 +216,8 @@ impl Daemon {
         let tick = self.next_tick.map(|wanted| {
             let wait = u64::try_from(wanted.since(now()).0).unwrap_or(0);
             // A tick that was just taken may want the next one at once; that is no reason to spin.
-            clock + Duration::from_nanos(wait).max(Duration::from_millis(1))
+            let wanted = clock + Duration::from_nanos(wait).max(Duration::from_millis(1));
+            wanted.max(self.settling.until())
         });
         let asked = self.tick_asked + TICK_ASK_EVERY;
         let working = self.pause.is_none();

@@ -1,4 +1,5 @@
-//! House rules that a machine can check: what stands at the top of a file, how long lines are, what must not be left.
+//! House rules that a machine can check: what stands at the top of a file, how long lines are, what
+//! must not be left.
 
 use std::path::{Path, PathBuf};
 

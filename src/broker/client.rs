@@ -4,7 +4,7 @@
 //! (queued acknowledgements, packet identifiers, events read before the loss) can reach a newer
 //! one. The session itself is the broker's, under our client name.
 
-use super::link::Will;
+use super::traffic::Will;
 use crate::configuration::{Broker, Protocol};
 use bytes::Bytes;
 use rumqttc::v5;

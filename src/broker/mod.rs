@@ -6,6 +6,7 @@
 //! loss, since only the record knows.
 //!
 //! Modules in reading order:
+//! - `traffic`: what passes over the link
 //! - `link`: the session across connections
 //! - `client`: the differences between MQTT 5.0 and 3.1.1
 //! - `back_off`: pauses between attempts
@@ -15,8 +16,10 @@ mod back_off;
 mod client;
 mod link;
 mod tls;
+mod traffic;
 
 pub use back_off::BackOff;
 pub use client::Answer;
-pub use link::{Event, Link, Lost, Message, Ticket, Token, Will};
+pub use link::Link;
 pub use tls::TlsError;
+pub use traffic::{Event, Lost, Message, Ticket, Token, Will};

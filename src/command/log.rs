@@ -3,8 +3,8 @@
 use std::io::IsTerminal;
 use tracing_subscriber::EnvFilter;
 
-/// What is shown unless a command has a default of its own. The MQTT library's warnings are left out: what they tell is told by the
-/// daemon, once and with what to do.
+/// What is shown unless a command has a default of its own. The MQTT library's warnings are left
+/// out: what they tell is told by the daemon, once and with what to do.
 pub(super) const DEFAULT: &str = "info,rumqttc=error";
 
 /// How log lines look.

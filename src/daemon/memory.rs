@@ -7,7 +7,8 @@ use std::collections::{BTreeMap, BTreeSet};
 use std::time::Duration;
 use tokio::time::Instant;
 
-/// A refused subscription is asked for again this often: a permission may have been given meanwhile.
+/// A refused subscription is asked for again this often: a permission may have been given
+/// meanwhile.
 const ASK_AGAIN_EVERY: Duration = Duration::from_mins(3);
 /// After the record failed, what is owed is tried again after this long.
 const RECORD_AGAIN_AFTER: Duration = Duration::from_secs(5);

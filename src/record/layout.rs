@@ -59,7 +59,8 @@ CREATE VIEW outputs_readable AS
            outputs.kind, outputs.body FROM outputs JOIN inputs ON inputs.position = outputs.input;
 ";
 
-/// Indexes, also made in files that an earlier build began. The first finds what the engine asks for
+/// Indexes, also made in files that an earlier build began. The first finds what the engine asks
+/// for
 /// (`Record::readings`) without walking through the whole record; every reading pays for it with
 /// about 40 bytes. The second finds the last configuration.
 const INDEXES: &str = "

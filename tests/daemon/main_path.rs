@@ -254,8 +254,8 @@ window = "1 h"
     broker.publish_lines("plant/plain", &lines);
     daemon.wait_count("SELECT count(*) FROM outputs WHERE kind = 'pair'", 40);
     assert!(daemon.stop().success());
-    // Forty values within milliseconds reach only milliseconds ahead: by now the document has expired
-    // and been withdrawn, as it must. What it said stands in the record.
+    // Forty values within milliseconds reach only milliseconds ahead: by now the document has
+    // expired and been withdrawn, as it must. What it said stands in the record.
     assert_eq!(broker.retained("holdtrue/test/correction/hall/plain"), None);
     let newest: String = daemon
         .sqlite()

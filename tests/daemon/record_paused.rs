@@ -15,7 +15,8 @@ segments = 16
 "#;
 
 const PAIRS: &str = "SELECT count(*) FROM outputs WHERE kind = 'pair'";
-const DISTINCT_PAIRS: &str = "SELECT count(DISTINCT json_extract(body, '$.Pair.phenomenon')) FROM outputs WHERE kind = 'pair'";
+const DISTINCT_PAIRS: &str = "SELECT count(DISTINCT json_extract(body, '$.Pair.phenomenon'))
+                              FROM outputs WHERE kind = 'pair'";
 
 fn readings(from: u32, to: u32) -> Vec<String> {
     (from..to)

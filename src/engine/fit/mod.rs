@@ -7,6 +7,7 @@
 //! - [`row`]: one row, and its entries
 //! - [`cut`]: where segments close
 //! - [`segment`]: rows that enter and leave together
+//! - `spare`: used-up factors
 //! - [`window`]: the sliding window
 //! - [`criterion`]: information criteria as plain formulas
 //! - [`correlation`]: what a correlated sample is worth
@@ -25,6 +26,7 @@ mod kernel;
 pub mod mean;
 pub mod row;
 pub mod segment;
+mod spare;
 pub mod window;
 
 use crate::event::{CriterionValues, Evidence, WindowSeen};

@@ -32,6 +32,7 @@ use crate::fit::kernel::MAX_WIDTH;
 pub use crate::fit::row::WindowRow;
 use crate::fit::row::scale_row;
 use crate::fit::segment::Segment;
+use crate::fit::spare::Spare;
 use crate::time::{Duration, Timestamp};
 use serde::{Deserialize, Serialize};
 use std::collections::VecDeque;
@@ -73,19 +74,8 @@ pub struct Window {
     /// Aggregate of everything.
     total: Factor,
     total_level: f64,
-    /// Used-up factors, kept so that sliding doesn't allocate.
     #[serde(skip)]
     spare: Spare,
-}
-
-/// Memory without meaning: equal to any other.
-#[derive(Clone, Debug, Default)]
-struct Spare(Vec<Factor>);
-
-impl PartialEq for Spare {
-    fn eq(&self, _: &Self) -> bool {
-        true
-    }
 }
 
 impl Window {
@@ -365,7 +355,7 @@ impl Window {
     }
 
     fn new_segment(&mut self, row: &WindowRow, slice: i64) -> Segment {
-        let factor = self.spare_factor();
+        let factor = self.spare.take(self.columns.count());
         Segment {
             factor,
             level: row.error,
@@ -373,16 +363,6 @@ impl Window {
             first: row.time,
             last: row.time,
         }
-    }
-
-    fn spare_factor(&mut self) -> Factor {
-        let mut factor = self
-            .spare
-            .0
-            .pop()
-            .unwrap_or_else(|| Factor::new(self.columns.count()));
-        factor.clear();
-        factor
     }
 
     /// The open segment becomes the newest closed one.
@@ -409,9 +389,9 @@ impl Window {
             let Some(segment) = self.closed.pop_front() else {
                 break;
             };
-            self.spare.0.push(segment.factor);
+            self.spare.keep(segment.factor);
             match self.front.pop() {
-                Some(top) => self.spare.0.push(top),
+                Some(top) => self.spare.keep(top),
                 None => flips = true,
             }
         }
@@ -465,7 +445,7 @@ impl Window {
 
     /// Builds all aggregates from the segments: every closed segment goes to the front.
     fn rebuild(&mut self) {
-        self.spare.0.append(&mut self.front);
+        self.spare.keep_all(&mut self.front);
         self.back.clear();
         let Some(newest) = self.closed.back() else {
             self.put_total_together();
@@ -474,7 +454,7 @@ impl Window {
         // The newest segment's level: then no suffix counts from a level that only older ones had.
         self.front_level = newest.level;
         for place in (0..self.closed.len()).rev() {
-            let mut suffix = self.spare_factor();
+            let mut suffix = self.spare.take(self.columns.count());
             if let Some(shorter) = self.front.last() {
                 suffix.copy_from(shorter);
             }

@@ -1,7 +1,8 @@
 //! Wrong clocks: whether a time that makes now leap is believed, and how now gets back after it was
 //! wrong.
 //!
-//! *Recordings.* A reading further ahead of now than anything here looks back on ([`Routes::reach`])
+//! *Recordings.* A reading further ahead of now than anything here looks back on
+//! ([`Routes::reach`])
 //! is refused as `Future` until another one confirms it: one of another source within that reach of
 //! it, or, where no other source says anything in between, the second of its own source (the 16th
 //! where several sources are expected, so that one wrong clock does not confirm itself). So a real

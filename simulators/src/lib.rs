@@ -6,7 +6,7 @@
 //!
 //! Reading order: what exists ([`instrument`], [`behaviour`], [`scenario`]), how it runs
 //! ([`noise`], [`process`], [`sensor`], [`plant`]), what is said about it ([`truth`],
-//! [`configuration`], [`message`]), and where it goes ([`write`], [`feed`], [`broker`]);
+//! [`configuration`], [`message`]), and where it goes ([`mod@write`], [`feed`], [`broker`]);
 //! [`command`] is the command line over all of it.
 
 pub mod instrument;

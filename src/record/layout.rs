@@ -60,9 +60,8 @@ CREATE VIEW outputs_readable AS
 ";
 
 /// Indexes, also made in files that an earlier build began. The first finds what the engine asks
-/// for
-/// (`Record::readings`) without walking through the whole record; every reading pays for it with
-/// about 30 bytes. The second finds the last configuration.
+/// for (`Record::readings`) without walking through the whole record; every reading pays for it
+/// with about 30 bytes. The second finds the last configuration.
 const INDEXES: &str = "
 CREATE INDEX IF NOT EXISTS readings_by_source ON inputs (source, phenomenon) WHERE kind = 'reading';
 CREATE INDEX IF NOT EXISTS setups ON inputs (position) WHERE kind = 'setup';

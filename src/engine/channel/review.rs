@@ -12,9 +12,9 @@ use serde::{Deserialize, Serialize};
 /// another state (its delay counts pairs) …
 const JUDGED_PART: u64 = 64;
 /// … or when the plain fit at its newest pair has moved by this part of a publish step. (The
-/// publish
-/// step is shortened by as much. What the mean over degrees moves more than that between two
-/// judgements stays unseen until the next: measured, at most a fifth of a step beyond the step.)
+/// publish step is shortened by as much. What the mean over degrees moves more than that between
+/// two judgements stays unseen until the next: measured, at most a fifth of a step beyond the
+/// step.)
 pub(super) const MOVED_PART: f64 = 0.125;
 
 /// The last judgement in numbers.

@@ -326,9 +326,8 @@ impl Fleet {
 }
 
 /// Whether the rows of a channel mean the same in both configurations, wherever it and its
-/// reference
-/// stand in the lists: what was fitted goes on being true. Limits, uncertainties, screening, delays
-/// and the like only say what is made of it from now on.
+/// reference stand in the lists: what was fitted goes on being true. Limits, uncertainties,
+/// screening, delays and the like only say what is made of it from now on.
 fn same_channel(old: &Setup, before: &ChannelSetup, new: &Setup, after: &ChannelSetup) -> bool {
     before.name == after.name
         && before.unit == after.unit

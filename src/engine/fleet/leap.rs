@@ -2,12 +2,11 @@
 //! wrong.
 //!
 //! *Recordings.* A reading further ahead of now than anything here looks back on
-//! ([`Routes::reach`])
-//! is refused as `Future` until another one confirms it: one of another source within that reach of
-//! it, or, where no other source says anything in between, the second of its own source (the 16th
-//! where several sources are expected, so that one wrong clock does not confirm itself). So a real
-//! gap costs a reading or a few, counted, and a wrong stamp moves nothing. The first reading of all
-//! has nothing to be measured by and is believed.
+//! ([`Routes::reach`]) is refused as `Future` until another one confirms it: one of another source
+//! within that reach of it, or, where no other source says anything in between, the second of its
+//! own source (the 16th where several sources are expected, so that one wrong clock does not
+//! confirm itself). So a real gap costs a reading or a few, counted, and a wrong stamp moves
+//! nothing. The first reading of all has nothing to be measured by and is believed.
 //!
 //! *Live.* Now is moved by the host's clock. When ten inputs in a row bear received times more than
 //! 5 min behind now, that clock was wrong: now steps back to the last of them, and what was stamped

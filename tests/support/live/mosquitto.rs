@@ -72,6 +72,15 @@ impl Mosquitto {
         std::fs::remove_file(self.folder.path().join("mosquitto.db")).unwrap();
     }
 
+    /// One of the broker's own clients, pointed at this broker and a topic, quality of service 1.
+    fn client(&self, program: &str, topic: &str) -> Command {
+        let mut command = Command::new(program);
+        command
+            .args(["-h", "127.0.0.1", "-p", &self.port.to_string()])
+            .args(["-q", "1", "-t", topic]);
+        command
+    }
+
     /// Publishes one message with `mosquitto_pub`, quality of service 1.
     pub(crate) fn publish(&self, topic: &str, payload: &[u8]) {
         self.publish_with(topic, payload, &[]);
@@ -79,18 +88,9 @@ impl Mosquitto {
 
     /// The same with more arguments, such as `-r`.
     pub(crate) fn publish_with(&self, topic: &str, payload: &[u8], arguments: &[&str]) {
-        let mut process = Command::new("mosquitto_pub")
-            .args([
-                "-h",
-                "127.0.0.1",
-                "-p",
-                &self.port.to_string(),
-                "-q",
-                "1",
-                "-t",
-                topic,
-                if payload.is_empty() { "-n" } else { "-s" },
-            ])
+        let mut process = self
+            .client("mosquitto_pub", topic)
+            .arg(if payload.is_empty() { "-n" } else { "-s" })
             .args(arguments)
             .stdin(Stdio::piped())
             .spawn()
@@ -104,18 +104,9 @@ impl Mosquitto {
 
     /// Publishes each line as a message of its own, in order, with one `mosquitto_pub`.
     pub(crate) fn publish_lines(&self, topic: &str, lines: &[String]) {
-        let mut process = Command::new("mosquitto_pub")
-            .args([
-                "-h",
-                "127.0.0.1",
-                "-p",
-                &self.port.to_string(),
-                "-q",
-                "1",
-                "-t",
-                topic,
-                "-l",
-            ])
+        let mut process = self
+            .client("mosquitto_pub", topic)
+            .arg("-l")
             .stdin(Stdio::piped())
             .spawn()
             .unwrap();
@@ -132,17 +123,8 @@ impl Mosquitto {
 
     /// The retained message on a topic, read with `mosquitto_sub`; `None` if there is none.
     pub(crate) fn retained(&self, topic: &str) -> Option<Vec<u8>> {
-        let output = Command::new("mosquitto_sub")
-            .args([
-                "-h",
-                "127.0.0.1",
-                "-p",
-                &self.port.to_string(),
-                "-q",
-                "1",
-                "-t",
-                topic,
-            ])
+        let output = self
+            .client("mosquitto_sub", topic)
             .args(["--retained-only", "-C", "1", "-W", "1", "-N"])
             .output()
             .unwrap();
@@ -151,17 +133,8 @@ impl Mosquitto {
 
     /// All retained messages below a topic, sorted: topic and payload.
     pub(crate) fn all_retained(&self, filter: &str) -> Vec<(String, String)> {
-        let output = Command::new("mosquitto_sub")
-            .args([
-                "-h",
-                "127.0.0.1",
-                "-p",
-                &self.port.to_string(),
-                "-q",
-                "1",
-                "-t",
-                filter,
-            ])
+        let output = self
+            .client("mosquitto_sub", filter)
             .args(["--retained-only", "-W", "2", "-F", "%t %p"])
             .output()
             .unwrap();

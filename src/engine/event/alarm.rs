@@ -1,0 +1,53 @@
+//! Alarms: what about, in which state, and what is said when one changes.
+
+use crate::event::Subject;
+use crate::time::Timestamp;
+use serde::{Deserialize, Serialize};
+
+/// What an alarm is about.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
+pub enum AlarmKind {
+    /// The uncorrected error is in conditional fail or fail.
+    ErrorLimit,
+    /// The drift is faster than permitted.
+    DriftRate,
+    /// No reference value for too long.
+    ReferenceStale,
+    /// No indication for too long.
+    DataGap,
+    /// The screen rejected so many in a row that it stopped: a step or a bad reference.
+    ScreenLockedOut,
+}
+
+/// The states of an alarm. A later version adds acknowledgement, latching, shelving and suppression
+/// here.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
+pub enum AlarmState {
+    /// The condition does not hold.
+    Normal,
+    /// The condition holds and nobody has acknowledged it.
+    Unacknowledged,
+}
+
+/// An alarm changed its state.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct AlarmChange {
+    /// What it stands on.
+    pub subject: Subject,
+    /// Its kind.
+    pub kind: AlarmKind,
+    /// The new state.
+    pub state: AlarmState,
+    /// When the engine changed it.
+    pub at: Timestamp,
+    /// When the condition first held (or first was gone).
+    pub since: Timestamp,
+    /// The value that was judged; unit as `unit` says.
+    pub value: f64,
+    /// The limit that it was judged against.
+    pub limit: f64,
+    /// Unit of both.
+    pub unit: String,
+    /// One sentence for a technician: what, how much, what to do.
+    pub text: String,
+}

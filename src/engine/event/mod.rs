@@ -1,0 +1,96 @@
+//! `Input` and `Output`: everything the engine can be told and everything it can say.
+//!
+//! Both are closed sets: a new variant forces every `match` to be looked at. They derive serde so
+//! that the record can store them; what is published outside is rendered from them by the shell.
+//!
+//! A received time must not go backwards from one input to the next; if one does, the engine goes
+//! on with its own now.
+
+mod alarm;
+mod correction;
+mod degree;
+mod input;
+mod notice;
+mod pair;
+
+pub use alarm::{AlarmChange, AlarmKind, AlarmState};
+pub use correction::{Corrected, Correction, CriterionValues, WindowSeen, Zone};
+pub use degree::{DegreeChange, Evidence};
+pub use input::{Gate, Reading, Refused, RefusedReason, Source, Supplied};
+pub use notice::Notice;
+pub use pair::{PairFate, Rejection};
+
+use crate::setup::{ChannelId, ReferenceId, Setup};
+use crate::time::Timestamp;
+use serde::{Deserialize, Serialize};
+
+/// One thing the engine is told.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub enum Input {
+    /// A configuration takes effect. Channels keep their state, by name, if their pairs and rows
+    /// mean the same as before (unit, lag, fit; the reference's name, kind, interval and members),
+    /// and go on under whatever else was edited; the others start anew. What is said in return
+    /// bears the positions of the configuration that is replaced.
+    Setup(Box<Setup>),
+    /// A value arrived.
+    Reading(Reading),
+    /// A `valid_when` condition was told.
+    Gate(Gate),
+    /// The shell got something it could not turn into a reading; counted here so that the record
+    /// knows.
+    Refused(Refused),
+    /// Time passed.
+    Tick {
+        /// The clock's reading.
+        now: Timestamp,
+    },
+    /// Recorded rows that the engine asked for with [`Output::Wanted`].
+    Supplied(Supplied),
+}
+
+/// One thing the engine says.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub enum Output {
+    /// A new correction is in force.
+    Correction(Box<Correction>),
+    /// The channel's correction no longer holds; the retained document is to be cleared.
+    Withdrawn {
+        /// Which channel.
+        channel: ChannelId,
+        /// When.
+        at: Timestamp,
+        /// Why, in words.
+        why: String,
+    },
+    /// A corrected value (only where configured).
+    Corrected(Corrected),
+    /// An alarm changed its state.
+    Alarm(AlarmChange),
+    /// The announced degree changed, with the evidence.
+    Degree(Box<DegreeChange>),
+    /// A pair was made, and this became of it.
+    Pair(PairFate),
+    /// Something that a person should be able to read about; limited in rate, with a count of what
+    /// was held back.
+    Notice(Notice),
+    /// The engine needs recorded rows of this channel.
+    Wanted {
+        /// Whose rows.
+        channel: ChannelId,
+        /// From (inclusive).
+        from: Timestamp,
+        /// To (exclusive).
+        to: Timestamp,
+    },
+}
+
+/// What every refusal is about, what every alarm and notice is about.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
+pub enum Subject {
+    /// The whole node.
+    Node,
+    /// A channel.
+    Channel(ChannelId),
+    /// A reference.
+    Reference(ReferenceId),
+}

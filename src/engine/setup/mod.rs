@@ -1,0 +1,64 @@
+//! The configuration as the engine sees it: parsed, checked and indexed by the shell, so that
+//! nothing here can hold a bad value and nobody checks again.
+//!
+//! Values are in the channel's own unit unless a name says otherwise. Sources and channels are
+//! known by their position; names travel only for documents.
+
+mod channel;
+mod fit;
+mod reference;
+
+pub use channel::{AlarmSetup, ChannelSetup, PublishSetup, ScreeningSetup};
+pub use fit::{Criterion, FitSetup, WindowLength};
+pub use reference::{ReferenceKind, ReferenceSetup, Stamped};
+
+use serde::{Deserialize, Serialize};
+
+/// Position of a channel in [`Setup::channels`].
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
+#[serde(transparent)]
+pub struct ChannelId(pub u32);
+
+/// Position of a reference in [`Setup::references`].
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
+#[serde(transparent)]
+pub struct ReferenceId(pub u32);
+
+/// One whole configuration of a node.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub struct Setup {
+    /// The node's name, as in its topics.
+    pub node: String,
+    /// Which clock says what "now" is.
+    pub clock: Clock,
+    /// SHA-256 of the configuration file's bytes, lower-case hexadecimal; travels in every
+    /// correction.
+    pub fingerprint: String,
+    /// All references: named ones, and one for every channel that declares its own inline.
+    pub references: Vec<ReferenceSetup>,
+    /// All channels.
+    pub channels: Vec<ChannelSetup>,
+}
+
+impl Default for Setup {
+    /// No channels: what an engine has before it is told its configuration.
+    fn default() -> Self {
+        Self {
+            node: String::new(),
+            clock: Clock::Live,
+            fingerprint: String::new(),
+            references: Vec::new(),
+            channels: Vec::new(),
+        }
+    }
+}
+
+/// What "now" is.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub enum Clock {
+    /// Live: received times and ticks move now; a phenomenon time more than 5 min ahead of it is
+    /// refused.
+    Live,
+    /// Recordings: now is the newest accepted phenomenon time; ticks are not needed.
+    Readings,
+}

@@ -17,26 +17,24 @@ mod pairing;
 mod publishing;
 mod review;
 mod screening;
+mod stretch;
+mod telling;
 #[cfg(test)]
 pub(crate) mod testing;
 
-use crate::event::{DegreeChange, Output, PairFate, RefusedReason, Rejection, Subject};
-use crate::fit::{Change, Fit, Row};
+use crate::event::{Output, Subject};
 use crate::gate::GateHistory;
 use crate::report::Report;
 use crate::setup::{ChannelId, ChannelSetup, ReferenceSetup};
 use crate::standing::{AlarmStanding, ChannelStanding};
 use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
-use crate::wording::readable;
 use conditions::ChannelAlarms;
-use judgement::Residuals;
 pub(crate) use pairing::{Answer, Rows};
 use pairing::{Found, Pair, Pairing};
 use publishing::Publishing;
-use review::Judged;
-use screening::{Innovation, Screen, Verdict};
 use serde::{Deserialize, Serialize};
+use stretch::Stretch;
 
 /// What a channel can see while it acts: its own setup, and what others share with it.
 pub(crate) struct Scene<'a> {
@@ -59,32 +57,14 @@ pub(crate) struct Scene<'a> {
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Channel {
     pairing: Pairing,
-    screen: Screen,
-    fit: Fit,
-    residuals: Residuals,
+    stretch: Stretch,
     publishing: Publishing,
     alarms: ChannelAlarms,
-    history: History,
-    wake: Option<Timestamp>,
-}
-
-/// What has happened so far in this stretch.
-#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
-struct History {
     /// From when on the channel's silence counts while it has said nothing.
     began: Option<Timestamp>,
     /// Phenomenon time of the newest pair made, whatever its fate.
     last_reference: Option<Timestamp>,
-    /// Phenomenon time of the newest pair in the fit.
-    last_pair: Option<Timestamp>,
-    /// Pairs that entered the fit.
-    pairs: u64,
-    /// Pairs that entered it since the last judgement.
-    unjudged: u64,
-    /// Lowest and highest reference value.
-    range: Option<(f64, f64)>,
-    /// The last judgement in numbers, for the standing.
-    judged: Option<Judged>,
+    wake: Option<Timestamp>,
 }
 
 impl Channel {
@@ -92,12 +72,11 @@ impl Channel {
     pub(crate) fn new(setup: &ChannelSetup, issued: u64) -> Self {
         Self {
             pairing: Pairing::default(),
-            screen: Screen::default(),
-            fit: Fit::new(setup.fit),
-            residuals: Residuals::default(),
+            stretch: Stretch::new(1, setup),
             publishing: Publishing::new(issued),
             alarms: ChannelAlarms::default(),
-            history: History::default(),
+            began: None,
+            last_reference: None,
             wake: Some(Timestamp(i64::MIN)),
         }
     }
@@ -109,7 +88,7 @@ impl Channel {
 
     /// Newest instant at which a reference value was at hand for this channel.
     pub(crate) fn last_reference(&self) -> Option<Timestamp> {
-        self.history.last_reference
+        self.last_reference
     }
 
     /// When it wants to act next, if nothing arrives.
@@ -178,7 +157,7 @@ impl Channel {
 
     /// Time passed, or something arrived that may complete a pair.
     pub(crate) fn pass_time(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
-        self.history.began.get_or_insert(scene.alive);
+        self.began.get_or_insert(scene.alive);
         let mut found = Vec::new();
         self.pairing.advance(scene, &mut found);
         self.work_through(found, scene, report);
@@ -196,7 +175,7 @@ impl Channel {
     ) {
         self.alarms.edit(id, after, now, report);
         if !after.screening.enabled {
-            self.screen = Screen::default();
+            self.stretch.forget_screen();
         }
         self.publishing.review();
         self.wake = Some(Timestamp(i64::MIN));
@@ -204,7 +183,7 @@ impl Channel {
 
     /// Whether a pair stamped later than `edge` was found.
     pub(crate) fn knows_after(&self, edge: Timestamp) -> bool {
-        self.history.last_reference > Some(edge) || self.history.last_pair > Some(edge)
+        self.last_reference > Some(edge) || self.stretch.last_pair() > Some(edge)
     }
 
     /// Now was wrong and steps back: what was issued at a later time is withdrawn.
@@ -225,7 +204,7 @@ impl Channel {
                 ),
             });
         }
-        self.history.began = self.history.began.map(|began| began.min(to));
+        self.began = self.began.map(|began| began.min(to));
         self.wake = Some(Timestamp(i64::MIN));
     }
 
@@ -259,13 +238,13 @@ impl Channel {
         channel: ChannelId,
         last_indication: Option<Timestamp>,
     ) -> ChannelStanding {
-        let judged = self.history.judged;
+        let judged = self.stretch.judged();
         let correction = self.publishing.correction();
         ChannelStanding {
             channel,
             last_indication,
-            last_pair: self.history.last_pair,
-            pairs: self.history.pairs,
+            last_pair: self.stretch.last_pair(),
+            pairs: self.stretch.pairs(),
             degree: judged.map(|judged| judged.degree),
             correction: judged.map(|judged| judged.correction),
             standard_uncertainty: judged.map(|judged| judged.u),
@@ -273,7 +252,7 @@ impl Channel {
             corrected_zone: correction.and_then(|document| document.corrected_zone),
             issue_number: correction.map(|document| document.issue_number),
             valid_until: correction.map(|document| document.valid_until),
-            locked_out: self.screen.is_locked_out(),
+            locked_out: self.stretch.is_locked_out(),
         }
     }
 
@@ -308,125 +287,19 @@ impl Channel {
     }
 
     fn take_pair(&mut self, pair: &Pair, scene: &Scene<'_>, report: &mut Report<'_>) {
-        self.history.last_reference = self.history.last_reference.max(Some(pair.time));
-        let error = pair.indication - pair.reference;
-        // What the window has left behind is no surprise to the fit, however far off.
-        let innovation = if self.fit.window().is_too_old(pair.time) {
-            None
-        } else {
-            self.innovation(pair, error)
-        };
-        let verdict = match innovation {
-            Some(innovation) if scene.setup.screening.enabled => {
-                let oldest = self.fit.window().oldest();
-                self.screen.judge(innovation, oldest, scene.setup)
-            }
-            _ => Verdict::Pass,
-        };
-        let rejected = if let Verdict::Reject { value, threshold } = verdict {
-            Some(Rejection {
-                reason: RefusedReason::InnovationGate,
-                value,
-                threshold,
-            })
-        } else {
-            self.enter(pair, error, scene, report)
-        };
-        Self::tell_fate(pair, rejected, scene, report);
-        if let Some(innovation) = innovation {
-            let locked_out = self.screen.is_locked_out();
+        self.last_reference = self.last_reference.max(Some(pair.time));
+        let taken = self.stretch.take(pair, scene.setup);
+        telling::tell_fate(pair, taken.rejected, scene, report);
+        if let Some(change) = taken.change {
+            telling::tell_degree(change, scene, report);
+        }
+        if let Some(innovation) = taken.innovation {
+            let locked_out = self.stretch.is_locked_out();
             self.alarms
                 .screen(locked_out, innovation.value, scene, report);
         }
         if self.is_worth_judging(scene) {
             self.judge(scene, report);
-        }
-    }
-
-    /// How far the pair lies from what the fit expects; `None` while it expects nothing.
-    fn innovation(&self, pair: &Pair, error: f64) -> Option<Innovation> {
-        let expected = self.fit.predict(pair.time)?;
-        let innovation = Innovation {
-            time: pair.time,
-            value: error - expected.error,
-            spread: (1.0 / pair.weight + expected.leverage).sqrt(),
-            residual_sd: expected.residual_sd,
-        };
-        let numbers = [innovation.value, innovation.spread, innovation.residual_sd];
-        numbers.iter().all(|n| n.is_finite()).then_some(innovation)
-    }
-
-    /// Enters a pair into the fit; the rejection if it is older than the window.
-    fn enter(
-        &mut self,
-        pair: &Pair,
-        error: f64,
-        scene: &Scene<'_>,
-        report: &mut Report<'_>,
-    ) -> Option<Rejection> {
-        let inserted = self.fit.insert(Row {
-            time: pair.time,
-            error,
-            weight: pair.weight,
-        });
-        if inserted.out_of_range {
-            return Some(Rejection {
-                reason: RefusedReason::NotFinite,
-                value: error,
-                threshold: f64::MAX,
-            });
-        }
-        if inserted.too_old {
-            let newest = self.history.last_pair.unwrap_or(pair.time);
-            return Some(Rejection {
-                reason: RefusedReason::Late,
-                value: newest.since(pair.time).seconds(),
-                threshold: window_seconds(scene.setup),
-            });
-        }
-        let history = &mut self.history;
-        history.last_pair = history.last_pair.max(Some(pair.time));
-        history.pairs += 1;
-        history.unjudged += 1;
-        let (lowest, highest) = history.range.unwrap_or((pair.reference, pair.reference));
-        history.range = Some((lowest.min(pair.reference), highest.max(pair.reference)));
-        self.residuals.push(pair.time, error);
-        if inserted.closed
-            && let Some(change) = self.fit.decide(!self.screen.is_locked_out())
-        {
-            self.history.judged = None;
-            tell_degree(change, scene, report);
-        }
-        None
-    }
-
-    fn tell_fate(
-        pair: &Pair,
-        rejected: Option<Rejection>,
-        scene: &Scene<'_>,
-        report: &mut Report<'_>,
-    ) {
-        report.say(Output::Pair(PairFate {
-            channel: scene.id,
-            phenomenon: pair.time,
-            indication: pair.indication + 0.0,
-            reference: pair.reference + 0.0,
-            rejected,
-        }));
-        if let Some(rejection) = rejected {
-            let subject = Subject::Channel(scene.id);
-            report.refuse(scene.now, subject, rejection.reason, || {
-                format!(
-                    "{}: pair at {} with indication {} and reference {} {} ({} above {})",
-                    scene.setup.name,
-                    pair.time,
-                    readable(pair.indication),
-                    readable(pair.reference),
-                    scene.setup.unit,
-                    readable(rejection.value),
-                    readable(rejection.threshold)
-                )
-            });
         }
     }
 
@@ -437,7 +310,7 @@ impl Channel {
 
     fn silent_since(&self, scene: &Scene<'_>) -> Timestamp {
         let newest = scene.indications[scene.id.0 as usize].newest();
-        let last = newest.or(self.history.began).unwrap_or(scene.alive);
+        let last = newest.or(self.began).unwrap_or(scene.alive);
         scene.resumed.map_or(last, |resumed| resumed.max(last))
     }
 
@@ -453,38 +326,4 @@ impl Channel {
             .flatten()
             .min()
     }
-}
-
-/// Length of a window in time, in seconds; 0 for a window in pairs, which has none.
-fn window_seconds(setup: &ChannelSetup) -> f64 {
-    match setup.fit.window {
-        crate::setup::WindowLength::Time(length) => length.seconds(),
-        crate::setup::WindowLength::Pairs(_) => 0.0,
-    }
-}
-
-/// Says that the announced degree changed, with its evidence; a rise is also told to people.
-fn tell_degree(change: Change, scene: &Scene<'_>, report: &mut Report<'_>) {
-    let Change { from, to, evidence } = change;
-    let (code, word) = if to > from {
-        ("degree-raised", "raised")
-    } else {
-        ("degree-lowered", "lowered")
-    };
-    let (gain, segments) = (evidence.gain, evidence.held_segments);
-    let judged_by = evidence.judged_by.clone();
-    report.say(Output::Degree(Box::new(DegreeChange {
-        channel: scene.id,
-        at: scene.now,
-        from,
-        to,
-        evidence,
-    })));
-    report.notice(scene.now, Subject::Channel(scene.id), code, || {
-        format!(
-            "{}: the degree of the drift was {word} from {from} to {to}: the higher one gains \
-             {gain:.1} (judged by {judged_by}), held for {segments} segments",
-            scene.setup.name
-        )
-    });
 }

@@ -18,6 +18,7 @@
 use super::Scene;
 use super::judgement::{Judgement, polynomial, variance_at, zone};
 use super::review::MOVED_PART;
+use super::stretch::Learned;
 use crate::event::{Corrected, Correction, Output, WindowSeen};
 use crate::fit::Published;
 use crate::report::Report;
@@ -110,7 +111,7 @@ impl Publishing {
     pub(crate) fn consider(
         &mut self,
         judgement: &Judgement,
-        range: (f64, f64),
+        learned: Learned,
         scene: &Scene<'_>,
         report: &mut Report<'_>,
     ) {
@@ -126,7 +127,7 @@ impl Publishing {
         } else {
             largest(&judgement.published, scene.now, valid_until)
         };
-        let candidate = self.candidate(judgement, (valid_until, hidden), range, scene);
+        let candidate = self.candidate(judgement, (valid_until, hidden), learned, scene);
         if candidate.valid_until <= scene.now {
             return;
         }
@@ -201,7 +202,7 @@ impl Publishing {
         &self,
         judgement: &Judgement,
         (valid_until, hidden): (Timestamp, f64),
-        range: (f64, f64),
+        learned: Learned,
         scene: &Scene<'_>,
     ) -> Correction {
         let published = &judgement.published;
@@ -242,8 +243,8 @@ impl Publishing {
             window: published.window,
             criterion: published.criterion.clone(),
             residual_sd: published.residual_sd,
-            stretch: 1,
-            range,
+            stretch: learned.stretch,
+            range: learned.range,
         }
     }
 

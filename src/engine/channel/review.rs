@@ -35,18 +35,18 @@ pub(super) struct Judged {
 impl Channel {
     /// Whether the pairs since the last judgement may have brought news.
     pub(super) fn is_worth_judging(&self, scene: &Scene<'_>) -> bool {
-        let unjudged = self.history.unjudged;
+        let unjudged = self.stretch.unjudged();
         if unjudged == 0 {
             return false;
         }
-        let is_part = unjudged.saturating_mul(JUDGED_PART) >= self.fit.window().rows();
+        let is_part = unjudged.saturating_mul(JUDGED_PART) >= self.stretch.fit().window().rows();
         if is_part || self.alarms.are_moving() {
             return true;
         }
-        let Some(judged) = self.history.judged else {
+        let Some(judged) = self.stretch.judged() else {
             return true;
         };
-        if judged.group != self.fit.newest_group() {
+        if judged.group != self.stretch.fit().newest_group() {
             return true;
         }
         match (judged.plain, self.plain(judged.leading)) {
@@ -59,20 +59,19 @@ impl Channel {
 
     /// What the plain fit of this degree says at the newest pair.
     fn plain(&self, degree: usize) -> Option<f64> {
-        let window = self.fit.window();
+        let window = self.stretch.fit().window();
         let prediction = window.predict(degree, window.newest()?)?;
         Some(prediction.error)
     }
 
     /// Judges the fit as it is now; publishes and alarms as needed.
     pub(super) fn judge(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
-        let fresh = self.history.unjudged > 0;
-        self.history.unjudged = 0;
+        let fresh = self.stretch.begin_judgement();
         let declared = judgement::declared_variance(scene.setup, scene.reference);
-        let Some(published) = self.fit.published_at_least(declared) else {
+        let Some(published) = self.stretch.fit().published_at_least(declared) else {
             return;
         };
-        let Some(judgement) = Judgement::of(published, &self.residuals, scene) else {
+        let Some(judgement) = Judgement::of(published, self.stretch.residuals(), scene) else {
             report.notice(
                 scene.now,
                 Subject::Channel(scene.id),
@@ -88,17 +87,17 @@ impl Channel {
             return;
         };
         let leading = leading(&judgement.published.weights);
-        self.history.judged = Some(Judged {
+        self.stretch.note_judged(Judged {
             degree: judgement.published.degree,
             correction: 0.0 - judgement.error,
             u: judgement.u,
             zone: judgement.zone,
             plain: self.plain(leading),
             leading,
-            group: self.fit.newest_group(),
+            group: self.stretch.fit().newest_group(),
         });
-        let range = self.history.range.unwrap_or((0.0, 0.0));
-        self.publishing.consider(&judgement, range, scene, report);
+        let learned = self.stretch.learned();
+        self.publishing.consider(&judgement, learned, scene, report);
         // A review that only time brought about says nothing new: an alarm's delay counts pairs.
         if fresh {
             self.alarms.judge(&judgement, scene, report);

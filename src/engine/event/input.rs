@@ -99,8 +99,9 @@ pub enum RefusedReason {
     GroupTooSmall,
 }
 
-/// Rows from the record, given back: the answer to one [`Output::Wanted`]. The shell answers each
-/// once, with whatever the record holds (maybe nothing), and before the next [`Input::Setup`].
+/// Rows from the record, given back: the answer to one
+/// [`Output::Wanted`](crate::event::Output::Wanted). The shell answers each once, with whatever the
+/// record holds (maybe nothing), and before the next [`Input::Setup`](crate::event::Input::Setup).
 ///
 /// They serve the reading on whose behalf they were asked for, however late they are, and nothing
 /// else: time does not move, and what was refused when it first came is passed over.

@@ -1,0 +1,225 @@
+//! One stretch: unbroken history between two service events or steps. Screen, fit and what the
+//! judgement looks back on live here, so that closing a stretch forgets all of it at once and a fit
+//! cannot reach across its ends.
+
+use super::judgement::Residuals;
+use super::pairing::Pair;
+use super::review::Judged;
+use super::screening::{Innovation, Screen, Verdict};
+use crate::event::{RefusedReason, Rejection};
+use crate::fit::{Change, Fit, Row};
+use crate::setup::{ChannelSetup, WindowLength};
+use crate::time::Timestamp;
+use serde::{Deserialize, Serialize};
+
+/// The state of one stretch.
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+pub(super) struct Stretch {
+    /// Counts the channel's stretches from 1.
+    number: u32,
+    screen: Screen,
+    fit: Fit,
+    residuals: Residuals,
+    /// Phenomenon time of the newest pair in the fit.
+    last_pair: Option<Timestamp>,
+    /// Pairs that entered the fit.
+    pairs: u64,
+    /// Pairs that entered it since the last judgement.
+    unjudged: u64,
+    /// Lowest and highest reference value.
+    range: Option<(f64, f64)>,
+    /// The last judgement in numbers, for the standing.
+    judged: Option<Judged>,
+}
+
+/// What a document says of its stretch.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(super) struct Learned {
+    /// Counts the channel's stretches from 1.
+    pub(super) stretch: u32,
+    /// Lowest and highest reference value seen in it.
+    pub(super) range: (f64, f64),
+}
+
+/// What became of a pair.
+#[derive(Debug)]
+pub(super) struct Taken {
+    /// What kept it out of the fit; `None`: it entered.
+    pub(super) rejected: Option<Rejection>,
+    /// How far it lies from what the fit expected; `None` while it expects nothing.
+    pub(super) innovation: Option<Innovation>,
+    /// The announced degree changed with it.
+    pub(super) change: Option<Change>,
+}
+
+impl Stretch {
+    /// A stretch that has seen nothing.
+    pub(super) fn new(number: u32, setup: &ChannelSetup) -> Self {
+        Self {
+            number,
+            screen: Screen::default(),
+            fit: Fit::new(setup.fit),
+            residuals: Residuals::default(),
+            last_pair: None,
+            pairs: 0,
+            unjudged: 0,
+            range: None,
+            judged: None,
+        }
+    }
+
+    /// The fit.
+    pub(super) fn fit(&self) -> &Fit {
+        &self.fit
+    }
+
+    /// The newest accepted errors.
+    pub(super) fn residuals(&self) -> &Residuals {
+        &self.residuals
+    }
+
+    /// Phenomenon time of the newest pair in the fit.
+    pub(super) fn last_pair(&self) -> Option<Timestamp> {
+        self.last_pair
+    }
+
+    /// Pairs that entered the fit.
+    pub(super) fn pairs(&self) -> u64 {
+        self.pairs
+    }
+
+    /// Pairs that entered it since the last judgement.
+    pub(super) fn unjudged(&self) -> u64 {
+        self.unjudged
+    }
+
+    /// What a document says of the stretch.
+    pub(super) fn learned(&self) -> Learned {
+        Learned {
+            stretch: self.number,
+            range: self.range.unwrap_or((0.0, 0.0)),
+        }
+    }
+
+    /// The last judgement in numbers.
+    pub(super) fn judged(&self) -> Option<Judged> {
+        self.judged
+    }
+
+    /// Takes note of a judgement.
+    pub(super) fn note_judged(&mut self, judged: Judged) {
+        self.judged = Some(judged);
+    }
+
+    /// A judgement begins: whether anything is new since the last.
+    pub(super) fn begin_judgement(&mut self) -> bool {
+        std::mem::take(&mut self.unjudged) > 0
+    }
+
+    /// Whether the screen has stopped rejecting.
+    pub(super) fn is_locked_out(&self) -> bool {
+        self.screen.is_locked_out()
+    }
+
+    /// The screen was switched off.
+    pub(super) fn forget_screen(&mut self) {
+        self.screen = Screen::default();
+    }
+
+    /// Screens a pair and enters it into the fit.
+    pub(super) fn take(&mut self, pair: &Pair, setup: &ChannelSetup) -> Taken {
+        let error = pair.indication - pair.reference;
+        // What the window has left behind is no surprise to the fit, however far off.
+        let innovation = if self.fit.window().is_too_old(pair.time) {
+            None
+        } else {
+            self.innovation(pair, error)
+        };
+        let verdict = match innovation {
+            Some(innovation) if setup.screening.enabled => {
+                let oldest = self.fit.window().oldest();
+                self.screen.judge(innovation, oldest, setup)
+            }
+            _ => Verdict::Pass,
+        };
+        let mut change = None;
+        let rejected = if let Verdict::Reject { value, threshold } = verdict {
+            Some(Rejection {
+                reason: RefusedReason::InnovationGate,
+                value,
+                threshold,
+            })
+        } else {
+            self.enter(pair, error, setup, &mut change)
+        };
+        Taken {
+            rejected,
+            innovation,
+            change,
+        }
+    }
+
+    /// How far the pair lies from what the fit expects; `None` while it expects nothing.
+    fn innovation(&self, pair: &Pair, error: f64) -> Option<Innovation> {
+        let expected = self.fit.predict(pair.time)?;
+        let innovation = Innovation {
+            time: pair.time,
+            value: error - expected.error,
+            spread: (1.0 / pair.weight + expected.leverage).sqrt(),
+            residual_sd: expected.residual_sd,
+        };
+        let numbers = [innovation.value, innovation.spread, innovation.residual_sd];
+        numbers.iter().all(|n| n.is_finite()).then_some(innovation)
+    }
+
+    /// Enters a pair into the fit; the rejection if it is older than the window.
+    fn enter(
+        &mut self,
+        pair: &Pair,
+        error: f64,
+        setup: &ChannelSetup,
+        change: &mut Option<Change>,
+    ) -> Option<Rejection> {
+        let inserted = self.fit.insert(Row {
+            time: pair.time,
+            error,
+            weight: pair.weight,
+        });
+        if inserted.out_of_range {
+            return Some(Rejection {
+                reason: RefusedReason::NotFinite,
+                value: error,
+                threshold: f64::MAX,
+            });
+        }
+        if inserted.too_old {
+            let newest = self.last_pair.unwrap_or(pair.time);
+            return Some(Rejection {
+                reason: RefusedReason::Late,
+                value: newest.since(pair.time).seconds(),
+                threshold: window_seconds(setup),
+            });
+        }
+        self.last_pair = self.last_pair.max(Some(pair.time));
+        self.pairs += 1;
+        self.unjudged += 1;
+        let (lowest, highest) = self.range.unwrap_or((pair.reference, pair.reference));
+        self.range = Some((lowest.min(pair.reference), highest.max(pair.reference)));
+        self.residuals.push(pair.time, error);
+        if inserted.closed {
+            *change = self.fit.decide(!self.screen.is_locked_out());
+            if change.is_some() {
+                self.judged = None;
+            }
+        }
+        None
+    }
+}
+
+/// Length of a window in time, in seconds; 0 for a window in pairs, which has none.
+fn window_seconds(setup: &ChannelSetup) -> f64 {
+    match setup.fit.window {
+        WindowLength::Time(length) => length.seconds(),
+        WindowLength::Pairs(_) => 0.0,
+    }
+}

@@ -1,0 +1,65 @@
+//! What a channel says of its pairs and of its degree.
+
+use super::Scene;
+use super::pairing::Pair;
+use crate::event::{DegreeChange, Output, PairFate, Rejection, Subject};
+use crate::fit::Change;
+use crate::report::Report;
+use crate::wording::readable;
+
+/// Says what became of a pair; a rejection is counted and told to people as well.
+pub(super) fn tell_fate(
+    pair: &Pair,
+    rejected: Option<Rejection>,
+    scene: &Scene<'_>,
+    report: &mut Report<'_>,
+) {
+    report.say(Output::Pair(PairFate {
+        channel: scene.id,
+        phenomenon: pair.time,
+        indication: pair.indication + 0.0,
+        reference: pair.reference + 0.0,
+        rejected,
+    }));
+    if let Some(rejection) = rejected {
+        let subject = Subject::Channel(scene.id);
+        report.refuse(scene.now, subject, rejection.reason, || {
+            format!(
+                "{}: pair at {} with indication {} and reference {} {} ({} above {})",
+                scene.setup.name,
+                pair.time,
+                readable(pair.indication),
+                readable(pair.reference),
+                scene.setup.unit,
+                readable(rejection.value),
+                readable(rejection.threshold)
+            )
+        });
+    }
+}
+
+/// Says that the announced degree changed, with its evidence; a rise is also told to people.
+pub(super) fn tell_degree(change: Change, scene: &Scene<'_>, report: &mut Report<'_>) {
+    let Change { from, to, evidence } = change;
+    let (code, word) = if to > from {
+        ("degree-raised", "raised")
+    } else {
+        ("degree-lowered", "lowered")
+    };
+    let (gain, segments) = (evidence.gain, evidence.held_segments);
+    let judged_by = evidence.judged_by.clone();
+    report.say(Output::Degree(Box::new(DegreeChange {
+        channel: scene.id,
+        at: scene.now,
+        from,
+        to,
+        evidence,
+    })));
+    report.notice(scene.now, Subject::Channel(scene.id), code, || {
+        format!(
+            "{}: the degree of the drift was {word} from {from} to {to}: the higher one gains \
+             {gain:.1} (judged by {judged_by}), held for {segments} segments",
+            scene.setup.name
+        )
+    });
+}

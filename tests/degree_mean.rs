@@ -2,7 +2,7 @@
 
 use holdtrue_engine::fit::mean::Plain;
 use holdtrue_engine::fit::{Fit, Published, Row};
-use holdtrue_engine::setup::{Criterion, FitSetup, WindowLength};
+use holdtrue_engine::setup::{Criterion, FitSetup, PairNoise, WindowLength};
 use holdtrue_engine::time::{Duration, Timestamp};
 use proptest::prelude::*;
 
@@ -16,6 +16,9 @@ fn setup(window: WindowLength, segments: u32, forced_degree: Option<u8>) -> FitS
         max_degree: 2,
         forced_degree,
         criterion: Criterion::Bic,
+        max_span_degree: None,
+        influences: 0,
+        noise: PairNoise::default(),
     }
 }
 
@@ -24,6 +27,8 @@ fn row(time: i64, error: f64) -> Row {
         time: Timestamp(time),
         error,
         weight: 1.0,
+        x: 0.0,
+        influences: [0.0; 2],
     }
 }
 

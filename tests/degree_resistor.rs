@@ -2,7 +2,7 @@
 
 use holdtrue_engine::fit::mean::Plain;
 use holdtrue_engine::fit::{Fit, Row};
-use holdtrue_engine::setup::{Criterion, FitSetup, WindowLength};
+use holdtrue_engine::setup::{Criterion, FitSetup, PairNoise, WindowLength};
 use holdtrue_engine::time::{Duration, Timestamp};
 use jiff::civil::Date;
 
@@ -41,6 +41,9 @@ fn fit(window: WindowLength, max_degree: u8, forced_degree: Option<u8>) -> Fit {
         max_degree,
         forced_degree,
         criterion: Criterion::Bic,
+        max_span_degree: None,
+        influences: 0,
+        noise: PairNoise::default(),
     })
 }
 
@@ -49,6 +52,8 @@ fn row(day: i64, ohm: f64) -> Row {
         time: Timestamp(day * DAY),
         error: ohm,
         weight: 1.0,
+        x: 0.0,
+        influences: [0.0; 2],
     }
 }
 

@@ -34,6 +34,8 @@ fn a_dense_stream_is_not_judged_at_every_pair() {
             time: at(f64::from(second)),
             error,
             weight: 1.0,
+            x: 0.0,
+            influences: [0.0; 2],
         });
     }
     let rounds = 500_u32;

@@ -199,6 +199,8 @@ fn the_document_in_force_is_never_more_than_a_step_off() {
             time: at(time),
             error: *error,
             weight: 1.0,
+            x: 0.0,
+            influences: [0.0; 2],
         });
         if inserted.closed {
             fit.decide(true);

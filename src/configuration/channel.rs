@@ -8,8 +8,8 @@ use super::reference::{self, Beside};
 use super::source::Found;
 use crate::payload::{Format, Target, Use};
 use holdtrue_engine::setup::{
-    AlarmSetup, ChannelSetup, Criterion, FitSetup, PublishSetup, ReferenceId, ScreeningSetup,
-    WindowLength,
+    AlarmSetup, ChannelSetup, Criterion, FitSetup, PairNoise, PublishSetup, ReferenceId,
+    ScreeningSetup, WindowLength,
 };
 use holdtrue_engine::time::Duration;
 
@@ -235,6 +235,9 @@ fn fit(section: &Section<'_>) -> FitSetup {
         }),
         forced_degree,
         criterion: criterion.map_or(Criterion::Bic, |found| found.value),
+        max_span_degree: None,
+        influences: 0,
+        noise: PairNoise::default(),
     }
 }
 

@@ -12,8 +12,8 @@
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Gate, Input, Output, Reading, Source};
 use holdtrue_engine::setup::{
-    AlarmSetup, ChannelId, ChannelSetup, Clock, Criterion, FitSetup, PublishSetup, ReferenceId,
-    ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped, WindowLength,
+    AlarmSetup, ChannelId, ChannelSetup, Clock, Criterion, FitSetup, PairNoise, PublishSetup,
+    ReferenceId, ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped, WindowLength,
 };
 use holdtrue_engine::time::{Duration, Timestamp};
 use rand_chacha::rand_core::SeedableRng as _;
@@ -79,6 +79,9 @@ pub fn channel(name: &str, reference: u32) -> ChannelSetup {
             max_degree: 2,
             forced_degree: None,
             criterion: Criterion::Bic,
+            max_span_degree: None,
+            influences: 0,
+            noise: PairNoise::default(),
         },
         screening: ScreeningSetup {
             enabled: true,

@@ -1,7 +1,7 @@
 //! Invented noise and sampling for the tests of the degree: seeded, of known kind.
 
 use holdtrue_engine::fit::Row;
-use holdtrue_engine::setup::{Criterion, FitSetup, WindowLength};
+use holdtrue_engine::setup::{Criterion, FitSetup, PairNoise, WindowLength};
 use holdtrue_engine::time::{Duration, Timestamp};
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
@@ -26,6 +26,9 @@ pub(crate) fn default_setup() -> FitSetup {
         max_degree: 2,
         forced_degree: None,
         criterion: Criterion::Bic,
+        max_span_degree: None,
+        influences: 0,
+        noise: PairNoise::default(),
     }
 }
 
@@ -135,6 +138,8 @@ impl Stream {
                     time: instant(seconds),
                     error: drift(at) + self.next(at, steps),
                     weight: 1.0,
+                    x: 0.0,
+                    influences: [0.0; 2],
                 }
             })
             .collect()

@@ -177,6 +177,7 @@ impl Channel {
         if !after.screening.enabled {
             self.stretch.forget_screen();
         }
+        self.stretch.edit(after);
         self.publishing.review();
         self.wake = Some(Timestamp(i64::MIN));
     }

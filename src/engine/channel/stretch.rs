@@ -7,8 +7,9 @@ use super::pairing::Pair;
 use super::review::Judged;
 use super::screening::{Innovation, Screen, Verdict};
 use crate::event::{RefusedReason, Rejection};
+use crate::fit::basis::MAX_INFLUENCES;
 use crate::fit::{Change, Fit, Row};
-use crate::setup::{ChannelSetup, WindowLength};
+use crate::setup::{ChannelSetup, SpanSide, WindowLength};
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
@@ -121,6 +122,11 @@ impl Stretch {
         self.screen.is_locked_out()
     }
 
+    /// Goes on under an edited setup in which its rows mean the same.
+    pub(super) fn edit(&mut self, after: &ChannelSetup) {
+        self.fit.edit(after.fit);
+    }
+
     /// The screen was switched off.
     pub(super) fn forget_screen(&mut self) {
         self.screen = Screen::default();
@@ -133,7 +139,7 @@ impl Stretch {
         let innovation = if self.fit.window().is_too_old(pair.time) {
             None
         } else {
-            self.innovation(pair, error)
+            self.innovation(pair, error, setup)
         };
         let verdict = match innovation {
             Some(innovation) if setup.screening.enabled => {
@@ -160,8 +166,9 @@ impl Stretch {
     }
 
     /// How far the pair lies from what the fit expects; `None` while it expects nothing.
-    fn innovation(&self, pair: &Pair, error: f64) -> Option<Innovation> {
-        let expected = self.fit.predict(pair.time)?;
+    fn innovation(&self, pair: &Pair, error: f64, setup: &ChannelSetup) -> Option<Innovation> {
+        let x = span_regressor(pair, setup);
+        let expected = self.fit.predict(pair.time, x, [0.0; MAX_INFLUENCES])?;
         let innovation = Innovation {
             time: pair.time,
             value: error - expected.error,
@@ -184,6 +191,8 @@ impl Stretch {
             time: pair.time,
             error,
             weight: pair.weight,
+            x: span_regressor(pair, setup),
+            influences: [0.0; MAX_INFLUENCES],
         });
         if inserted.out_of_range {
             return Some(Rejection {
@@ -213,6 +222,14 @@ impl Stretch {
             }
         }
         None
+    }
+}
+
+/// What the span terms of a pair's row are a function of.
+fn span_regressor(pair: &Pair, setup: &ChannelSetup) -> f64 {
+    match setup.fit.span_side() {
+        SpanSide::Reference => pair.reference,
+        SpanSide::Indication => pair.indication,
     }
 }
 

@@ -1,8 +1,8 @@
 //! Setups for the stations' unit tests.
 
 use crate::setup::{
-    AlarmSetup, ChannelSetup, Criterion, FitSetup, PublishSetup, ReferenceId, ScreeningSetup,
-    WindowLength,
+    AlarmSetup, ChannelSetup, Criterion, FitSetup, PairNoise, PublishSetup, ReferenceId,
+    ScreeningSetup, WindowLength,
 };
 use crate::time::Duration;
 
@@ -21,6 +21,9 @@ pub(crate) fn channel_setup() -> ChannelSetup {
             max_degree: 2,
             forced_degree: None,
             criterion: Criterion::Bic,
+            max_span_degree: None,
+            influences: 0,
+            noise: PairNoise::default(),
         },
         screening: ScreeningSetup {
             enabled: true,

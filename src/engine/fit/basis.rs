@@ -11,10 +11,14 @@ use serde::{Deserialize, Serialize};
 
 /// Highest degree in time.
 pub const MAX_TIME_DEGREE: u8 = 5;
+/// Highest degree in time of the span terms.
+pub const MAX_SPAN_DEGREE: u8 = 2;
 /// Most span columns x·u^j, j = 0 … 2.
-pub const MAX_SPAN_COLUMNS: usize = 3;
+pub const MAX_SPAN_COLUMNS: usize = MAX_SPAN_DEGREE as usize + 1;
+/// Most influence quantities.
+pub const MOST_INFLUENCES: u8 = 2;
 /// Most influence columns.
-pub const MAX_INFLUENCES: usize = 2;
+pub const MAX_INFLUENCES: usize = MOST_INFLUENCES as usize;
 
 /// The columns of Φ, in this order: 1, u, …, u^D; x, x·u, …, x·u^M; influences. Time comes first so
 /// that every lower degree is a prefix.
@@ -38,7 +42,8 @@ impl Columns {
         Self::new(degree, 0, 0)
     }
 
-    /// All kinds of columns: degree in time 0 … 5, span columns 0 … 3, influences 0 … 2.
+    /// All kinds of columns: degree in time 0 … 5, span columns 0 … 3 (no more than there are powers
+    /// of time, so that their centre can be moved), influences 0 … 2.
     ///
     /// # Panics
     /// Beyond these limits.
@@ -48,6 +53,10 @@ impl Columns {
         assert!(
             usize::from(span_columns) <= MAX_SPAN_COLUMNS,
             "0 to 3 span columns"
+        );
+        assert!(
+            span_columns <= time_degree + 1,
+            "a power of time for every span column"
         );
         assert!(
             usize::from(influences) <= MAX_INFLUENCES,
@@ -64,6 +73,37 @@ impl Columns {
     #[must_use]
     pub fn time_degree(self) -> usize {
         usize::from(self.highest_power)
+    }
+
+    /// Whether there are neither span nor influence columns.
+    #[inline]
+    #[must_use]
+    pub fn is_time_only(self) -> bool {
+        self.span_powers == 0 && self.influences == 0
+    }
+
+    /// How many span columns there are.
+    #[must_use]
+    pub fn span_columns(self) -> usize {
+        usize::from(self.span_powers)
+    }
+
+    /// How many influence columns there are.
+    #[must_use]
+    pub fn influence_columns(self) -> usize {
+        usize::from(self.influences)
+    }
+
+    /// Where column x·u^power stands.
+    #[must_use]
+    pub fn span_place(self, power: usize) -> usize {
+        self.time_degree() + 1 + power
+    }
+
+    /// Where the column of an influence quantity stands.
+    #[must_use]
+    pub fn influence_place(self, influence: usize) -> usize {
+        self.span_place(self.span_columns()) + influence
     }
 
     /// How many columns Φ has.
@@ -124,6 +164,37 @@ impl Columns {
             factor.move_origin(time_columns, usize::from(self.span_powers), shift, scale);
         }
     }
+
+    /// Moves a factor of these columns to days from an instant that is `u` in its frame.
+    pub(crate) fn count_days_from(self, factor: &mut Factor, frame: Frame, u: f64) {
+        let days = frame.unit_days();
+        let time_columns = self.time_degree() + 1;
+        factor.move_origin(0, time_columns, u, days);
+        if self.span_powers > 0 {
+            factor.move_origin(time_columns, usize::from(self.span_powers), u, days);
+        }
+    }
+
+    /// Moves where a factor's level x and influence quantities count from by `shift`. Needs a power
+    /// of time for every span column.
+    pub(crate) fn move_centre(self, factor: &mut Factor, shift: Centre) {
+        for power in 0..self.span_columns() {
+            factor.move_centre(self.span_place(power), power, shift.x);
+        }
+        for (influence, by) in (0..self.influence_columns()).zip(shift.influences) {
+            factor.move_centre(self.influence_place(influence), 0, by);
+        }
+    }
+}
+
+/// Where the regressor of the span terms and the influence quantities count from: however far from
+/// zero they are, it costs no digits.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub struct Centre {
+    /// Of x.
+    pub x: f64,
+    /// Of the influence quantities.
+    pub influences: [f64; MAX_INFLUENCES],
 }
 
 /// Origin and unit of scaled time.

@@ -346,7 +346,7 @@ impl Fit {
 mod tests {
     use super::*;
     use crate::fit::Row;
-    use crate::setup::WindowLength;
+    use crate::setup::{PairNoise, WindowLength};
     use crate::time::Timestamp;
     use approx::assert_relative_eq;
 
@@ -359,6 +359,9 @@ mod tests {
             max_degree,
             forced_degree,
             criterion: Criterion::Bic,
+            max_span_degree: None,
+            influences: 0,
+            noise: PairNoise::default(),
         })
     }
 
@@ -377,6 +380,8 @@ mod tests {
                 time: Timestamp(i64::from(i) * DAY),
                 error: error(f64::from(i)) + noise,
                 weight: 1.0,
+                x: 0.0,
+                influences: [0.0; 2],
             });
             if inserted.closed {
                 changes.extend(fit.decide(may_raise).map(|change| (i, change)));
@@ -460,6 +465,8 @@ mod tests {
                     time,
                     error,
                     weight: 1.0,
+                    x: 0.0,
+                    influences: [0.0; 2],
                 };
                 if fit.insert(row).closed {
                     fit.decide(true);
@@ -480,6 +487,9 @@ mod tests {
                 max_degree: 2,
                 forced_degree: None,
                 criterion: Criterion::Bic,
+                max_span_degree: None,
+                influences: 0,
+                noise: PairNoise::default(),
             });
             let changes = feed(&mut fit, 0..2048, true, |i| 1e-6 * i * i);
             changes

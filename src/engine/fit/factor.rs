@@ -246,6 +246,20 @@ impl Factor {
         );
     }
 
+    /// Replaces column `column`, which holds a product x·p, by (x − shift)·p, where column `of`
+    /// holds p: R ← R·S, S the identity with −shift at (`of`, `column`).
+    ///
+    /// # Panics
+    /// Unless `of` < `column` < `columns()`.
+    pub(crate) fn move_centre(&mut self, column: usize, of: usize, shift: f64) {
+        assert!(of < column && column < self.columns(), "columns of Φ");
+        let width = usize::from(self.width);
+        for i in 0..=of {
+            let row = row_start(width, i);
+            self.packed[row + column - i] -= shift * self.packed[row + of - i];
+        }
+    }
+
     /// Multiplies every row by `root_weight` = √w > 0.
     pub fn multiply(&mut self, root_weight: f64) {
         debug_assert!(

@@ -189,8 +189,8 @@ impl Fit {
     /// Moves a factor in the window's frame to days from `origin`.
     fn count_days_from(&self, origin: Timestamp, factor: &mut Factor) {
         let frame = self.window.frame();
-        let time_columns = self.window.columns().time_degree() + 1;
-        factor.move_origin(0, time_columns, frame.scaled(origin), frame.unit_days());
+        let columns = self.window.columns();
+        columns.count_days_from(factor, frame, frame.scaled(origin));
     }
 
     /// The highest degree ≤ `highest` that all rows together bear with a degree of freedom left.

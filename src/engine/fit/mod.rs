@@ -30,7 +30,9 @@ mod spare;
 pub mod window;
 
 use crate::event::{CriterionValues, Evidence, WindowSeen};
-use crate::fit::basis::{Columns, MAX_INFLUENCES, MAX_TIME_DEGREE};
+use crate::fit::basis::{
+    Columns, MAX_INFLUENCES, MAX_SPAN_DEGREE, MAX_TIME_DEGREE, MOST_INFLUENCES,
+};
 use crate::fit::degree::DegreeState;
 use crate::fit::window::{Cut, Window, WindowRow};
 use crate::setup::{FitSetup, WindowLength};
@@ -43,13 +45,23 @@ pub struct Fit {
     setup: FitSetup,
     window: Window,
     degree: DegreeState,
+    seen: Seen,
 }
 
-/// Largest magnitude of an error that the fit takes: its square, times any weight and number of
+/// Largest magnitude of an error or a regressor that the fit takes: its square, times any weight and number of
 /// rows, is still a float.
-const LARGEST_ERROR: f64 = 1e120;
+const LARGEST_VALUE: f64 = 1e120;
 /// Largest weight of a row, and the smallest one's inverse.
 const LARGEST_WEIGHT: f64 = 1e30;
+
+/// Lowest and highest regressors that entered a stretch; `None` before the first row.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub struct Seen {
+    /// Of x.
+    pub x: Option<(f64, f64)>,
+    /// Of each influence quantity.
+    pub influences: [Option<(f64, f64)>; MAX_INFLUENCES],
+}
 
 /// One pair as the fit sees it.
 #[derive(Clone, Copy, Debug)]
@@ -60,6 +72,11 @@ pub struct Row {
     pub error: f64,
     /// Relative weight of the row, > 0; 1 for equal rows.
     pub weight: f64,
+    /// What the span terms are a function of: the reference value or the indication, as
+    /// [`FitSetup::span_side`] says.
+    pub x: f64,
+    /// The influence quantities, as many as the setup says; the rest is not looked at.
+    pub influences: [f64; MAX_INFLUENCES],
 }
 
 /// What an insertion did.
@@ -69,8 +86,8 @@ pub struct Inserted {
     pub closed: bool,
     /// The row was older than everything in the window and was left out.
     pub too_old: bool,
-    /// The row can't be computed with and was left out: an error beyond ±1e120 or a weight outside
-    /// 1e-30 … 1e30.
+    /// The row can't be computed with and was left out: an error or a regressor in use beyond
+    /// ±1e120, or a weight outside 1e-30 … 1e30.
     pub out_of_range: bool,
 }
 
@@ -132,11 +149,23 @@ impl Fit {
         };
         let highest = setup.max_degree.max(setup.forced_degree.unwrap_or(0));
         let highest = highest.min(MAX_TIME_DEGREE);
+        let span_columns = setup
+            .max_span_degree
+            .map_or(0, |degree| degree.min(MAX_SPAN_DEGREE).min(highest) + 1);
+        let influences = setup.influences.min(MOST_INFLUENCES);
+        let columns = Columns::new(highest, span_columns, influences);
         Self {
             setup,
-            window: Window::new(Columns::time(highest), cut),
+            window: Window::new(columns, cut),
             degree: DegreeState::new(setup.forced_degree.map_or(0, |forced| forced.min(highest))),
+            seen: Seen::default(),
         }
+    }
+
+    /// Goes on under an edited setup that [has the same rows](FitSetup::has_same_rows).
+    pub fn edit(&mut self, setup: FitSetup) {
+        debug_assert!(self.setup.has_same_rows(&setup), "rows that mean the same");
+        self.setup = setup;
     }
 
     /// The window that the fit looks at.
@@ -147,8 +176,7 @@ impl Fit {
 
     /// Takes one pair.
     pub fn insert(&mut self, row: Row) -> Inserted {
-        let weights = 1.0 / LARGEST_WEIGHT..=LARGEST_WEIGHT;
-        if !(row.error.abs() <= LARGEST_ERROR && weights.contains(&row.weight)) {
+        if !self.can_hold(&row) {
             return Inserted {
                 out_of_range: true,
                 ..Inserted::default()
@@ -158,15 +186,19 @@ impl Fit {
             time,
             error,
             weight,
+            x,
+            influences,
         } = row;
-        let influences = [0.0; MAX_INFLUENCES];
         let inserted = self.window.insert(&WindowRow {
             time,
             error,
             weight,
-            x: 0.0,
+            x,
             influences,
         });
+        if !inserted.too_old {
+            self.seen.take(&row, self.window.columns());
+        }
         Inserted {
             closed: inserted.closed,
             too_old: inserted.too_old,
@@ -174,11 +206,44 @@ impl Fit {
         }
     }
 
-    /// What the plain fit at the announced degree expects at `time`; `None` before there are more
+    /// Whether the row can be computed with.
+    fn can_hold(&self, row: &Row) -> bool {
+        let weights = 1.0 / LARGEST_WEIGHT..=LARGEST_WEIGHT;
+        let columns = self.window.columns();
+        let x = (columns.span_columns() > 0).then_some(row.x);
+        let influences = row.influences.into_iter().take(columns.influence_columns());
+        let mut values = [row.error].into_iter().chain(x).chain(influences);
+        values.all(|value| value.abs() <= LARGEST_VALUE) && weights.contains(&row.weight)
+    }
+
+    /// What the plain fit of the announced model expects at `time`; `None` before there are more
     /// rows than coefficients, at enough different times.
     #[must_use]
-    pub fn predict(&self, time: Timestamp) -> Option<Prediction> {
+    pub fn predict(
+        &self,
+        time: Timestamp,
+        _x: f64,
+        _influences: [f64; MAX_INFLUENCES],
+    ) -> Option<Prediction> {
         self.window
             .predict(usize::from(self.degree.announced), time)
+    }
+}
+
+impl Seen {
+    /// Takes a row that entered.
+    fn take(&mut self, row: &Row, columns: Columns) {
+        widen(&mut self.x, row.x);
+        let influences = self.influences.iter_mut().zip(row.influences);
+        for (range, value) in influences.take(columns.influence_columns()) {
+            widen(range, value);
+        }
+    }
+}
+
+fn widen(range: &mut Option<(f64, f64)>, value: f64) {
+    if value.is_finite() {
+        let (lowest, highest) = range.unwrap_or((value, value));
+        *range = Some((lowest.min(value) + 0.0, highest.max(value) + 0.0));
     }
 }

@@ -1,6 +1,6 @@
 //! One row of the fit, and its entries in a frame.
 
-use crate::fit::basis::{Columns, Frame, MAX_INFLUENCES};
+use crate::fit::basis::{Centre, Columns, Frame, MAX_INFLUENCES};
 use crate::time::Timestamp;
 
 /// One row of the fit. All numbers are finite.
@@ -16,6 +16,18 @@ pub struct WindowRow {
     pub x: f64,
     /// Influence quantities; unused beyond the window's columns.
     pub influences: [f64; MAX_INFLUENCES],
+}
+
+impl WindowRow {
+    /// The same row, its regressors counted from a centre.
+    pub(crate) fn counted_from(&self, centre: Centre) -> Self {
+        let [first, second] = self.influences;
+        Self {
+            x: self.x - centre.x,
+            influences: [first - centre.influences[0], second - centre.influences[1]],
+            ..*self
+        }
+    }
 }
 
 /// Writes √w·φ and returns √w.

@@ -21,11 +21,16 @@
 //! enters the open segment, unless it is older than the oldest row of a window that has already
 //! dropped some.
 //!
+//! **Centre.** The regressor of the span terms and the influence quantities count from a common
+//! centre: the first row's, then, once there are [`SETTLED`] segments, the mean of the rows so far.
+//! It stays there for the life of the window, unless the rows are so far off that their spread would
+//! lose digits beside their distance.
+//!
 //! The state is stored whole, aggregates included: their last bits depend on the order in which
 //! rows came, and a restored window must go on with the same bits.
 
 use crate::fit::Prediction;
-use crate::fit::basis::{Columns, Frame};
+use crate::fit::basis::{Centre, Columns, Frame};
 pub use crate::fit::cut::Cut;
 use crate::fit::factor::Factor;
 use crate::fit::kernel::MAX_WIDTH;
@@ -43,6 +48,12 @@ const GAP_DIVISOR: i64 = 4;
 /// A row further than this from the origin, in units of the window, moves the frame.
 const FAR: f64 = 2.0;
 
+/// Closed segments of which the centre is the mean.
+const SETTLED: usize = 8;
+/// A centre so many standard deviations from the mean of the rows is moved there. A distance of d
+/// of them costs about 2·log₁₀(d) of sixteen digits.
+const FAR_OFF: f64 = 30.0;
+
 /// What an insertion did.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
 pub struct Inserted {
@@ -58,6 +69,9 @@ pub struct Window {
     columns: Columns,
     cut: Cut,
     frame: Frame,
+    centre: Centre,
+    /// The centre is a mean of rows, no longer the first row's.
+    has_settled: bool,
     /// Newest phenomenon time ever inserted; `None` before the first row.
     newest: Option<Timestamp>,
     /// Some rows have left.
@@ -87,6 +101,8 @@ impl Window {
             columns,
             cut,
             frame: Frame::new(Timestamp(0), Duration(1)),
+            centre: Centre::default(),
+            has_settled: false,
             newest: None,
             has_dropped: false,
             closed: VecDeque::new(),
@@ -117,6 +133,12 @@ impl Window {
     #[must_use]
     pub fn frame(&self) -> Frame {
         self.frame
+    }
+
+    /// Where x and the influence quantities of every factor in the window count from, as of now.
+    #[must_use]
+    pub fn centre(&self) -> Centre {
+        self.centre
     }
 
     /// All rows in the window, errors counted from [`Window::level`].
@@ -184,6 +206,27 @@ impl Window {
 
     /// Takes one row.
     pub fn insert(&mut self, row: &WindowRow) -> Inserted {
+        if self.columns.is_time_only() {
+            return self.insert_centred(row);
+        }
+        if self.newest.is_none() {
+            self.centre = Centre {
+                x: row.x,
+                influences: row.influences,
+            };
+        }
+        let frame = self.frame;
+        let inserted = self.insert_centred(&row.counted_from(self.centre));
+        if !self.has_settled && self.closed.len() >= SETTLED {
+            self.has_settled = true;
+            self.move_centre(0.0);
+        } else if self.has_settled && frame != self.frame {
+            self.move_centre(FAR_OFF);
+        }
+        inserted
+    }
+
+    fn insert_centred(&mut self, row: &WindowRow) -> Inserted {
         let Some(newest) = self.newest else {
             self.frame = self.frame_at(row.time);
             return self.insert_newest(row);
@@ -440,6 +483,41 @@ impl Window {
                 .move_frame(&mut segment.factor, self.frame, frame);
         }
         self.frame = frame;
+        self.rebuild();
+    }
+
+    /// Moves the centre of each regressor to the mean of the rows if that is more than so many
+    /// standard deviations away.
+    fn move_centre(&mut self, tolerated: f64) {
+        let shift_of = |place: usize| {
+            let mean = self.total.mean_row().map_or(0.0, |mean| mean[place]);
+            let about_mean: f64 = (1..=place)
+                .map(|i| self.total.entry(i, place) * self.total.entry(i, place))
+                .sum();
+            let spread = (about_mean / self.total.weight_sum()).sqrt();
+            if mean.is_finite() && mean.abs() > tolerated * spread {
+                mean
+            } else {
+                0.0
+            }
+        };
+        let mut shift = Centre::default();
+        if self.columns.span_columns() > 0 {
+            shift.x = shift_of(self.columns.span_place(0));
+        }
+        for influence in 0..self.columns.influence_columns() {
+            shift.influences[influence] = shift_of(self.columns.influence_place(influence));
+        }
+        if shift == Centre::default() {
+            return;
+        }
+        for segment in self.closed.iter_mut().chain(&mut self.open) {
+            self.columns.move_centre(&mut segment.factor, shift);
+        }
+        self.centre.x += shift.x;
+        for (centre, by) in self.centre.influences.iter_mut().zip(shift.influences) {
+            *centre += by;
+        }
         self.rebuild();
     }
 

@@ -332,7 +332,7 @@ fn same_channel(old: &Setup, before: &ChannelSetup, new: &Setup, after: &Channel
     before.name == after.name
         && before.unit == after.unit
         && before.lag == after.lag
-        && before.fit == after.fit
+        && before.fit.has_same_rows(&after.fit)
         && same_reference(
             old,
             &old.references[before.reference.0 as usize],

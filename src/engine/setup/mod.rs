@@ -9,7 +9,7 @@ mod fit;
 mod reference;
 
 pub use channel::{AlarmSetup, ChannelSetup, PublishSetup, ScreeningSetup};
-pub use fit::{Criterion, FitSetup, WindowLength};
+pub use fit::{Criterion, FitSetup, PairNoise, SpanSide, WindowLength};
 pub use reference::{ReferenceKind, ReferenceSetup, Stamped};
 
 use serde::{Deserialize, Serialize};

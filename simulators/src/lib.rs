@@ -7,7 +7,8 @@
 //! Reading order: what exists ([`instrument`], [`behaviour`], [`scenario`]), how it runs
 //! ([`noise`], [`process`], [`sensor`], [`plant`]), what is said about it ([`truth`],
 //! [`configuration`], [`message`]), and where it goes ([`mod@write`], [`feed`], [`broker`]);
-//! [`command`] is the command line over all of it.
+//! [`score`] drives the engine through a library of invented faults and measures it against their
+//! truth; [`command`] is the command line over all of it.
 
 pub mod instrument;
 pub mod range;
@@ -27,5 +28,7 @@ pub mod truth;
 pub mod broker;
 pub mod feed;
 pub mod write;
+
+pub mod score;
 
 pub mod command;

@@ -19,16 +19,29 @@ impl Process {
     /// The process that `instrument`, the one at `position`, measures.
     #[must_use]
     pub fn new(instrument: &Instrument, seed: u64, position: usize) -> Self {
-        let mut draw = Draw::new(seed, position, Duty::Process);
+        Self::of(
+            (instrument.level, instrument.swing, instrument.wander),
+            CADENCE_SECONDS,
+            Draw::new(seed, position, Duty::Process),
+        )
+    }
+
+    /// A process with this level, amplitude of its daily cycle and standard deviation of its
+    /// wander, asked for its value every `cadence_seconds`.
+    #[must_use]
+    pub fn of(
+        (level, swing, wander): (f64, f64, f64),
+        cadence_seconds: i64,
+        mut draw: Draw,
+    ) -> Self {
         let phase = TAU * draw.unit();
         // Correlated over a day: ρ = exp(−cadence / 1 d).
-        let memory = libm::exp(-(CADENCE_SECONDS as f64) / 86_400.0);
-        let wander = Autoregressive::new(instrument.wander, memory);
+        let memory = libm::exp(-(cadence_seconds as f64) / 86_400.0);
         Self {
-            level: instrument.level,
-            swing: instrument.swing,
+            level,
+            swing,
             phase,
-            wander,
+            wander: Autoregressive::new(wander, memory),
             draw,
         }
     }

@@ -48,6 +48,8 @@ pub enum Duty {
     Reference = 3,
     /// Single disturbed readings.
     Disturbance = 4,
+    /// How readings travel.
+    Delivery = 5,
 }
 
 impl Draw {

@@ -30,6 +30,16 @@ pub enum Curve {
         /// Change per day².
         factor: f64,
     },
+    /// Growth that feeds itself, as of a biofilm: `change·(exp(t/time_constant) − 1)/(exp(end/
+    /// time_constant) − 1)`.
+    Growth {
+        /// Error at `end`.
+        change: f64,
+        /// Days in which it grows e-fold.
+        time_constant: f64,
+        /// When `change` is reached.
+        end: f64,
+    },
     /// Grows evenly to `height` within `period`, then falls to zero (cleaning).
     SawTooth {
         /// Days between cleanings.
@@ -69,6 +79,11 @@ impl Curve {
                 let run = (day - onset).max(0.0);
                 factor * run * run
             }
+            Self::Growth {
+                change,
+                time_constant,
+                end,
+            } => change * libm::expm1(day / time_constant) / libm::expm1(end / time_constant),
             Self::SawTooth { period, height } => {
                 let turn = day / period;
                 height * (turn - libm::floor(turn))
@@ -134,7 +149,16 @@ mod tests {
             change: 10.0,
             time_constant: 2.0,
         };
+        let growth = Curve::Growth {
+            change: 3.0,
+            time_constant: 2.0,
+            end: 8.0,
+        };
         let cases = [
+            (growth, 0.0, 0.0),
+            (growth, 8.0, 3.0),
+            // 3·(e¹ − 1)/(e⁴ − 1)
+            (growth, 2.0, 0.096_175_809_840_255),
             (Curve::None, 3.0, 0.0),
             (linear, 1.0, 0.0),
             (linear, 4.0, 1.0),

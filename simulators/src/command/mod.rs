@@ -1,7 +1,7 @@
 //! The command line of `plant`: one file per command.
 //!
-//! Exit codes: 0 done; 1 done, but rows were left out or messages refused; 2 wrong usage; 3 the
-//! outside (broker, disk) failed.
+//! Exit codes: 0 done; 1 done, but rows were left out, messages refused or limits broken; 2 wrong
+//! usage; 3 the outside (broker, disk) failed.
 
 mod broker;
 mod feed;
@@ -9,6 +9,7 @@ mod list;
 mod progress;
 mod publish;
 mod run;
+mod score;
 mod write;
 
 use clap::{Parser, Subcommand};
@@ -42,6 +43,13 @@ enum Command {
         --field value=ohm --field seq=seq --constant reference=0"
     )]
     Feed(feed::Feed),
+    /// Drives the engine, without a broker, through faults with known truth and holds it to limits
+    #[command(
+        after_help = "Example:\n  plant score --short\n  plant score --scenario step stuck \
+        --seeds 100 --seed-base 5000 --json\n\nExit code: 0 all limits hold, 1 a limit is broken, \
+        2 wrong usage"
+    )]
+    Score(score::Score),
 }
 
 /// Why a command did not end well.
@@ -96,6 +104,7 @@ pub fn run(arguments: Arguments) -> Result<(), Failure> {
         Command::Write(write) => write.carry_out(),
         Command::Publish(publish) => publish.carry_out(),
         Command::Feed(feed) => feed.carry_out(),
+        Command::Score(score) => score.carry_out(),
     }
 }
 

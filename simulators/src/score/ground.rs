@@ -1,0 +1,194 @@
+//! The plain world that every scenario starts from: one or more sensors without a fault, each
+//! beside its reference, and the configuration that an operator would write for them.
+
+use super::chooser::Chooser;
+use super::world::{Delivery, Noise, Quantity, Reference, Sensor, World};
+use crate::behaviour::disturbance::Disturbance;
+use holdtrue_engine::setup::{
+    AlarmSetup, ChannelSetup, Clock, Criterion, FitSetup, PairNoise, PublishSetup, ReferenceId,
+    ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped, WindowLength,
+};
+use holdtrue_engine::time::Duration;
+
+/// Ten minutes between two indications.
+pub const CADENCE_SECONDS: i64 = 600;
+/// A window of a week: 1008 pairs, in which a day comes seven times.
+pub const WINDOW_DAYS: f64 = 7.0;
+/// Noise of a reference value as a part of the sensor's: a reference clearly better than the sensor,
+/// 4 to 1 (common practice).
+const REFERENCE_NOISE: f64 = 0.25;
+/// Six windows: one to fill, five to judge.
+pub const RUN_DAYS: f64 = 42.0;
+
+/// A world with one sensor whose noise has these parts: shares of the variance with their lag-1
+/// correlations.
+#[must_use]
+pub fn one(chooser: Chooser, noise: &[(f64, f64)]) -> World {
+    many(chooser, 1, 1, noise)
+}
+
+/// White noise alone.
+pub const WHITE: &[(f64, f64)] = &[(1.0, 0.0)];
+
+/// `sensors` sensors on each of `references` references. Each reference measures a quantity of its
+/// own; all values are of one order.
+#[must_use]
+pub fn many(
+    mut chooser: Chooser,
+    references: usize,
+    sensors: usize,
+    noise: &[(f64, f64)],
+) -> World {
+    // Orders of magnitude from pH units to millibars.
+    let deviation = chooser.value("noise", "unit", 0.01, 1.0);
+    let level = deviation * chooser.value("level", "sigma", 50.0, 500.0);
+    let swing = deviation * chooser.value("swing", "sigma", 0.0, 5.0);
+    let wander = deviation * chooser.value("wander", "sigma", 0.0, 2.0);
+    let quantity = Quantity {
+        level,
+        swing,
+        wander,
+    };
+    let noise = Noise {
+        parts: noise
+            .iter()
+            .map(|&(share, memory)| (deviation * libm::sqrt(share), memory))
+            .collect(),
+        grows: None,
+    };
+    let mut world = World {
+        quantities: vec![quantity; references],
+        references: Vec::new(),
+        sensors: Vec::new(),
+        faults: Vec::new(),
+        degrees: None,
+        tolerated: Vec::new(),
+        setup: Setup {
+            node: "scorecard".to_owned(),
+            clock: Clock::Readings,
+            ..Setup::default()
+        },
+        cadence_seconds: CADENCE_SECONDS,
+        days: RUN_DAYS,
+        chooser,
+    };
+    for reference in 0..references {
+        world.references.push(Reference {
+            quantity: Some(reference),
+            every: 1,
+            each: REFERENCE_NOISE * deviation,
+            error: Vec::new(),
+            silent_from: None,
+            late: (0.0, 0.0),
+        });
+        let name = format!("reference-{reference}");
+        let setup = reference_setup(name, REFERENCE_NOISE * deviation);
+        world.setup.references.push(setup);
+        for _ in 0..sensors {
+            world.sensors.push(sensor(reference, noise.clone()));
+            let name = format!("sensor-{}", world.setup.channels.len());
+            let setup = channel_setup(name, reference, deviation);
+            world.setup.channels.push(setup);
+        }
+    }
+    world
+}
+
+fn sensor(quantity: usize, noise: Noise) -> Sensor {
+    Sensor {
+        quantity,
+        lag: 0,
+        noise,
+        zero: Vec::new(),
+        span: Vec::new(),
+        influence: None,
+        resolution: 0.0,
+        disturbance: Disturbance::None,
+        other_unit: None,
+        delivery: Delivery::default(),
+        cleaned: Vec::new(),
+    }
+}
+
+fn reference_setup(name: String, each: f64) -> ReferenceSetup {
+    ReferenceSetup {
+        name,
+        kind: ReferenceKind::Measured,
+        uncertainty_each: each,
+        uncertainty_common: 0.0,
+        certificate: None,
+        expires: None,
+        stale_after: None,
+        stands_for: Duration::ZERO,
+        stamped: Stamped::End,
+    }
+}
+
+/// A channel with the configuration's defaults, a window of a week, and a permissible error of ten
+/// standard deviations of the noise.
+fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup {
+    ChannelSetup {
+        name,
+        unit: "unit".to_owned(),
+        reference: reference_id(reference),
+        lag: Duration::ZERO,
+        lateness: Duration::from_seconds(10),
+        max_gap: Duration::from_seconds(900),
+        fit: FitSetup {
+            window: WindowLength::Time(days(WINDOW_DAYS)),
+            segments: 64,
+            max_degree: 2,
+            forced_degree: None,
+            criterion: Criterion::Bic,
+            max_span_degree: None,
+            influences: 0,
+            noise: PairNoise {
+                reference: REFERENCE_NOISE * deviation,
+                indication: 0.0,
+            },
+        },
+        screening: ScreeningSetup {
+            enabled: true,
+            range: None,
+            gate: 5.0,
+            lock_out_after: 5,
+        },
+        max_permissible_error: Some(10.0 * deviation),
+        resolution: 0.0,
+        noise: 0.0,
+        max_drift_rate: None,
+        coverage: 0.95,
+        publish: PublishSetup {
+            step: 0.25,
+            max_age: Duration::from_seconds(86_400),
+        },
+        alarms: AlarmSetup {
+            delay: 3,
+            deadband: 1.0,
+            gap_after: None,
+        },
+        corrected_values: false,
+    }
+}
+
+/// The engine's name for the reference at `position`.
+#[must_use]
+pub fn reference_id(position: usize) -> ReferenceId {
+    #[allow(
+        clippy::cast_possible_truncation,
+        reason = "a world has a few references"
+    )]
+    let id = ReferenceId(position as u32);
+    id
+}
+
+/// A length in days, to the nanosecond.
+#[must_use]
+pub fn days(length: f64) -> Duration {
+    #[allow(
+        clippy::cast_possible_truncation,
+        reason = "runs of weeks are far below 2^63 ns"
+    )]
+    let nanoseconds = libm::round(length * 86_400e9) as i64;
+    Duration(nanoseconds)
+}

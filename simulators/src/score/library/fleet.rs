@@ -1,0 +1,55 @@
+//! Many channels on shared references: one bad reference is one fault.
+
+use super::{Class, Scenario};
+use crate::behaviour::curve::Curve;
+use crate::score::chooser::Chooser;
+use crate::score::ground::{WHITE, days, many};
+use crate::score::world::{Fault, Place, World};
+use holdtrue_engine::setup::WindowLength;
+
+/// The scenarios of this file.
+pub(super) const SCENARIOS: &[Scenario] = &[Scenario {
+    name: "fleet-one-bad-reference",
+    purpose: "200 channels on 20 references, one of which jumps: one alarm, no correction follows",
+    class: Class::Detection,
+    build: fleet,
+    twin: Some(heal),
+    large: true,
+}];
+
+/// References of the fleet.
+const REFERENCES: usize = 20;
+/// Channels on each.
+const CHILDREN: usize = 10;
+
+fn fleet(chooser: Chooser) -> World {
+    let mut world = many(chooser, REFERENCES, CHILDREN, WHITE);
+    // 144 pairs a window keep 200 channels affordable; the run goes on for two windows after the
+    // fault at the least.
+    world.days = 8.0;
+    world.cadence_seconds = 1200;
+    for channel in &mut world.setup.channels {
+        channel.fit.window = WindowLength::Time(days(2.0));
+        channel.fit.segments = 32;
+        channel.max_gap = days(1.0 / 24.0);
+    }
+    let noise = world.sensors[0].noise.deviation();
+    let at = world.chooser.value("at", "d", 3.0, 4.0);
+    let size = noise * world.chooser.signed("size", "sigma", 6.0, 15.0);
+    world.references[BAD].error = vec![Curve::Step { at, size }];
+    world.faults.push(Fault {
+        answers: vec!["reference-stepped", "reference-suspect"],
+        place: Place::Reference(BAD),
+        at,
+        due: at + 0.25,
+        until: world.days,
+    });
+    world
+}
+
+/// Which reference goes bad.
+const BAD: usize = 7;
+
+fn heal(world: &mut World) {
+    world.references[BAD].error.clear();
+}

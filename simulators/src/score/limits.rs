@@ -1,0 +1,231 @@
+//! The limits that the scorecard holds the engine to, each with its reason.
+
+use super::library::{Class, Scenario};
+use super::summary::{Figure, Summary};
+use serde::Serialize;
+
+/// For which scenarios a limit is meant.
+#[derive(Clone, Copy, Debug)]
+enum Meant {
+    /// For all of a class, except these.
+    Class(Class, &'static [&'static str]),
+    /// For these.
+    Only(&'static [&'static str]),
+    /// For all, except these.
+    All(&'static [&'static str]),
+}
+
+/// How a figure is bounded.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize)]
+#[serde(rename_all = "kebab-case")]
+pub enum Bound {
+    /// It must not be more.
+    AtMost(f64),
+    /// It must not be less.
+    AtLeast(f64),
+}
+
+impl Bound {
+    /// Whether `value` is within.
+    #[must_use]
+    pub fn holds(self, value: f64) -> bool {
+        match self {
+            Self::AtMost(most) => value <= most,
+            Self::AtLeast(least) => value >= least,
+        }
+    }
+}
+
+/// One row of the table of limits.
+struct Limit {
+    meant: Meant,
+    figure: Figure,
+    bound: Bound,
+    reason: &'static str,
+}
+
+const fn limit(meant: Meant, figure: Figure, bound: Bound, reason: &'static str) -> Limit {
+    Limit {
+        meant,
+        figure,
+        bound,
+        reason,
+    }
+}
+
+/// Scenarios whose noise has memory.
+const CORRELATED: &[&str] = &["ar-0.5", "ar-0.8", "ar-0.9", "white-and-slow"];
+
+/// Scenarios in which sensors jump by three sigma or more in white noise.
+const JUMPING: &[&str] = &["step", "auto-baseline", "saw-tooth-undeclared"];
+
+/// The table.
+const LIMITS: &[Limit] = &[
+    limit(
+        Meant::Class(Class::Correctable, &[]),
+        Figure::Remaining,
+        Bound::AtMost(0.25),
+        "a drift that pairs show must be gone to three quarters at the newest instant",
+    ),
+    limit(
+        Meant::Class(Class::Correctable, &[]),
+        Figure::MissedRaises,
+        Bound::AtMost(0.0),
+        "drifts of many sigma must be named as drift",
+    ),
+    limit(
+        Meant::Class(Class::Correctable, &[]),
+        Figure::Claimed,
+        Bound::AtLeast(0.9),
+        "coverage must not be bought by withdrawing",
+    ),
+    limit(
+        Meant::Class(Class::Stationary, &[]),
+        Figure::Worsened,
+        Bound::AtMost(1.0),
+        "what does not drift may be worsened by 0.05 sigma or 0.6 of the correction's own u",
+    ),
+    limit(
+        Meant::Class(Class::Stationary, &[]),
+        Figure::FalseRaises,
+        Bound::AtMost(0.05),
+        "noise is no drift: one sensor in twenty over six windows at most",
+    ),
+    limit(
+        Meant::Class(Class::Stationary, &["temperature-undeclared"]),
+        Figure::Coverage,
+        Bound::AtLeast(0.93),
+        "a 95 % interval, degree free, averaged over time (an undeclared influence is outside it)",
+    ),
+    limit(
+        Meant::Only(&["references-disagree"]),
+        Figure::Coverage,
+        Bound::AtLeast(0.93),
+        "a 95 % interval holds the declared common error of the reference",
+    ),
+    limit(
+        Meant::Class(Class::Correctable, &[]),
+        Figure::Coverage,
+        Bound::AtLeast(0.93),
+        "a 95 % interval, degree free, averaged over time",
+    ),
+    limit(
+        Meant::All(CORRELATED),
+        Figure::FalseSteps,
+        Bound::AtMost(1.0),
+        "a step closes the history: one false one in 100 000 readings at most",
+    ),
+    limit(
+        Meant::Only(CORRELATED),
+        Figure::FalseSteps,
+        Bound::AtMost(3.0),
+        "correlated noise looks like steps: the chart widens itself, but not without end",
+    ),
+    limit(
+        Meant::All(&[]),
+        Figure::FalseLimits,
+        Bound::AtMost(0.0),
+        "the limit is ten sigma away: no honest estimate crosses it by chance",
+    ),
+    limit(
+        Meant::All(&[]),
+        Figure::FalseAlarms,
+        Bound::AtMost(0.0),
+        "an alarm without a fault teaches people to ignore alarms",
+    ),
+    limit(
+        Meant::Class(Class::Detection, &[]),
+        Figure::Missed,
+        Bound::AtMost(0.0),
+        "what breaks must be noticed in the time that the scenario states",
+    ),
+    limit(
+        Meant::Only(JUMPING),
+        Figure::DelayMedian,
+        Bound::AtMost(12.0),
+        "a jump of three sigma in white noise is found within a dozen readings",
+    ),
+    limit(
+        Meant::Only(JUMPING),
+        Figure::Delay95,
+        Bound::AtMost(30.0),
+        "a jump of three sigma in white noise is found within 30 readings, 95 times in 100",
+    ),
+    limit(
+        Meant::Only(&["fleet-one-bad-reference"]),
+        Figure::Moved,
+        Bound::AtMost(1.0),
+        "a reference known to be bad moves no correction by more than its own u",
+    ),
+];
+
+/// A limit held against a scenario's figures.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct Verdict {
+    /// The figure.
+    pub figure: Figure,
+    /// Its value; `None` if the runs say nothing about it, which breaks the limit.
+    pub value: Option<f64>,
+    /// The bound.
+    pub bound: Bound,
+    /// Whether it holds.
+    pub holds: bool,
+    /// Why this bound.
+    pub reason: &'static str,
+}
+
+/// Holds a scenario's figures against its limits.
+#[must_use]
+pub fn judge(scenario: &Scenario, summary: &Summary) -> Vec<Verdict> {
+    LIMITS
+        .iter()
+        .filter(|limit| is_meant(limit.meant, scenario))
+        .map(|limit| {
+            let value = summary.figures.get(&limit.figure).copied();
+            Verdict {
+                figure: limit.figure,
+                value,
+                bound: limit.bound,
+                holds: value.is_some_and(|value| limit.bound.holds(value)),
+                reason: limit.reason,
+            }
+        })
+        .collect()
+}
+
+fn is_meant(meant: Meant, scenario: &Scenario) -> bool {
+    match meant {
+        Meant::Class(class, except) => class == scenario.class && !except.contains(&scenario.name),
+        Meant::Only(names) => names.contains(&scenario.name),
+        Meant::All(except) => !except.contains(&scenario.name),
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::score::library;
+
+    #[test]
+    fn names_in_the_table_exist_and_every_scenario_has_limits_of_its_class() {
+        for limit in LIMITS {
+            let (Meant::Class(_, names) | Meant::Only(names) | Meant::All(names)) = limit.meant;
+            for name in names {
+                assert!(library::find(name).is_some(), "{name}");
+            }
+        }
+        for scenario in library::all() {
+            let own = |limit: &&Limit| {
+                !matches!(limit.meant, Meant::All(_)) && is_meant(limit.meant, &scenario)
+            };
+            assert!(LIMITS.iter().any(|limit| own(&limit)), "{}", scenario.name);
+        }
+    }
+
+    #[test]
+    fn bounds_include_their_ends_and_refuse_what_is_no_number() {
+        assert!(Bound::AtMost(0.25).holds(0.25) && !Bound::AtMost(0.25).holds(0.26));
+        assert!(Bound::AtLeast(0.93).holds(0.93) && !Bound::AtLeast(0.93).holds(0.92));
+        assert!(!Bound::AtMost(1.0).holds(f64::NAN) && !Bound::AtLeast(1.0).holds(f64::NAN));
+    }
+}

@@ -1,0 +1,122 @@
+//! The engine's outputs as facts: the documents in force, and what was said when and about whom.
+//!
+//! The one place that knows the engine's vocabulary. A fact bears a word: an alarm's kind as in its
+//! topic, or one of the words below. Whatever else the engine learns to say gets its word here.
+
+use super::world::Place;
+use holdtrue_engine::event::{AlarmState, Correction, Output, Subject};
+use holdtrue_engine::setup::ChannelId;
+
+/// The announced degree rose.
+pub const DEGREE_RAISED: &str = "degree-raised";
+
+/// A fact.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Said {
+    /// Its word.
+    pub word: String,
+    /// About whom; `None`: the node.
+    pub place: Option<Place>,
+    /// When, in days from the start of the run.
+    pub day: f64,
+    /// The new degree, if it is about that.
+    pub degree: Option<u8>,
+}
+
+/// Collects facts.
+#[derive(Clone, Debug)]
+pub struct Observer {
+    documents: Vec<Option<Box<Correction>>>,
+    /// All facts, in the order in which they were said.
+    pub said: Vec<Said>,
+    /// Documents issued.
+    pub issued: u64,
+}
+
+impl Observer {
+    /// One that has heard nothing of `sensors` sensors.
+    #[must_use]
+    pub fn new(sensors: usize) -> Self {
+        Self {
+            documents: vec![None; sensors],
+            said: Vec::new(),
+            issued: 0,
+        }
+    }
+
+    /// The document in force for a sensor.
+    #[must_use]
+    pub fn document(&self, sensor: usize) -> Option<&Correction> {
+        self.documents[sensor].as_deref()
+    }
+
+    /// Takes what the engine said at `day`.
+    pub fn take(&mut self, output: Output, day: f64) {
+        match output {
+            Output::Correction(document) => {
+                self.issued += 1;
+                let place = index(document.channel);
+                self.documents[place] = Some(document);
+            }
+            Output::Withdrawn { channel, .. } => self.documents[index(channel)] = None,
+            Output::Alarm(change) if change.state != AlarmState::Normal => {
+                let word = kebab(&format!("{:?}", change.kind));
+                self.say(word, place(change.subject), day);
+            }
+            Output::Degree(change) if change.to > change.from => {
+                let sensor = Place::Sensor(index(change.channel));
+                self.say(DEGREE_RAISED.to_owned(), Some(sensor), day);
+                if let Some(said) = self.said.last_mut() {
+                    said.degree = Some(change.to);
+                }
+            }
+            _ => {}
+        }
+    }
+
+    fn say(&mut self, word: String, place: Option<Place>, day: f64) {
+        self.said.push(Said {
+            word,
+            place,
+            day,
+            degree: None,
+        });
+    }
+}
+
+/// Position of a channel.
+fn index(channel: ChannelId) -> usize {
+    channel.0 as usize
+}
+
+/// Whom an alarm is about.
+fn place(subject: Subject) -> Option<Place> {
+    match subject {
+        Subject::Node => None,
+        Subject::Channel(channel) => Some(Place::Sensor(index(channel))),
+        Subject::Reference(reference) => Some(Place::Reference(reference.0 as usize)),
+    }
+}
+
+/// `ErrorLimit` as `error-limit`: how topics spell an alarm's kind.
+fn kebab(name: &str) -> String {
+    let mut word = String::new();
+    for (position, letter) in name.chars().enumerate() {
+        if letter.is_uppercase() && position > 0 {
+            word.push('-');
+        }
+        word.extend(letter.to_lowercase());
+    }
+    word
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn kinds_are_spelt_as_in_topics() {
+        assert_eq!(kebab("ErrorLimit"), "error-limit");
+        assert_eq!(kebab("ScreenLockedOut"), "screen-locked-out");
+    }
+}

@@ -1,0 +1,199 @@
+//! The runs of one scenario taken together: every figure that a limit can be set on.
+
+use super::contest::Timed;
+use super::tally::Tally;
+use serde::Serialize;
+use std::collections::BTreeMap;
+
+/// A figure of a scenario.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize)]
+#[serde(rename_all = "kebab-case")]
+pub enum Figure {
+    /// RMS of the systematic error at the newest instant: after correction, as a part of before.
+    Remaining,
+    /// By how much that RMS has grown, as a part of the larger of 0.05σ and 0.6 of the correction's
+    /// own u.
+    Worsened,
+    /// Part of the instants with a document in force at which its U held the error left.
+    Coverage,
+    /// Part of all instants at which a document was in force.
+    Claimed,
+    /// Sensors with a raise beyond the true degree, as a part of the runs.
+    FalseRaises,
+    /// Sensors whose drift was never recognised, as a part of the runs.
+    MissedRaises,
+    /// Steps where none was planted, per 100 000 indications.
+    FalseSteps,
+    /// Planted faults not noticed in time, as a part of those planted.
+    Missed,
+    /// Readings from a fault to the word about it: median.
+    DelayMedian,
+    /// The same: 95 % of them are not longer.
+    Delay95,
+    /// Limit alarms while the true error was well inside its limit, in all runs.
+    FalseLimits,
+    /// Other alarms without a planted fault, in all runs.
+    FalseAlarms,
+    /// Days by which a time-to-limit alarm came before the limit was passed: median.
+    Lead,
+    /// Passings of the limit that no time-to-limit alarm foretold, as a part of all.
+    Unforetold,
+    /// The most that a fault moved a correction, in u of the correction without the fault.
+    Moved,
+}
+
+/// The runs of one scenario.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+pub struct Summary {
+    /// How many.
+    pub runs: usize,
+    /// Readings that the engine was given.
+    pub readings: u64,
+    /// Mean error of what a consumer sees without and with the correction, in σ.
+    pub bias: (Option<f64>, Option<f64>),
+    /// Its RMS, noise included.
+    pub seen: (Option<f64>, Option<f64>),
+    /// RMS of the systematic error at the newest instant, before and after, in σ.
+    pub newest: (Option<f64>, Option<f64>),
+    /// RMS of u, in σ.
+    pub uncertainty: Option<f64>,
+    /// Correction documents issued.
+    pub documents: u64,
+    /// Figures that limits can be set on; those that the runs say nothing about are missing.
+    pub figures: BTreeMap<Figure, f64>,
+    /// False alarms by kind.
+    pub false_alarms: BTreeMap<String, u32>,
+    /// Seconds of one core.
+    pub seconds: f64,
+}
+
+/// Takes runs together.
+#[must_use]
+pub fn of(runs: &[Timed]) -> Summary {
+    let mut tally = Tally::default();
+    for run in runs {
+        tally.merge(&run.trial.tally);
+    }
+    let mut false_alarms = BTreeMap::new();
+    for (kind, count) in runs.iter().flat_map(|run| &run.trial.findings.false_alarms) {
+        *false_alarms.entry(kind.clone()).or_default() += count;
+    }
+    Summary {
+        runs: runs.len(),
+        readings: tally.readings,
+        bias: (tally.seen_before.mean(), tally.seen_after.mean()),
+        seen: (tally.seen_before.rms(), tally.seen_after.rms()),
+        newest: (tally.newest_before.rms(), tally.newest_after.rms()),
+        uncertainty: tally.uncertainty.rms(),
+        documents: runs.iter().map(|run| run.trial.documents).sum(),
+        figures: figures(runs, &tally, &false_alarms),
+        false_alarms,
+        seconds: runs.iter().map(|run| run.seconds).sum(),
+    }
+}
+
+fn figures(
+    runs: &[Timed],
+    tally: &Tally,
+    false_alarms: &BTreeMap<String, u32>,
+) -> BTreeMap<Figure, f64> {
+    let count = |of: fn(&Timed) -> u32| f64::from(runs.iter().map(of).sum::<u32>());
+    let trials = runs.len() as f64;
+    let before = tally.newest_before.rms();
+    let after = tally.newest_after.rms();
+    let own = tally.uncertainty.rms().unwrap_or(0.0);
+    let both = before.zip(after);
+    let delays = sorted(runs, |run| &run.trial.findings.delays);
+    let leads = sorted(runs, |run| &run.trial.findings.leads);
+    let planted = count(|run| run.trial.findings.planted);
+    let crossings = count(|run| run.trial.findings.crossings);
+    let indications = tally.newest_before.count;
+    let moved = runs.iter().filter_map(|run| run.trial.moved);
+    let part = |of: f64, all: f64| (all > 0.0).then(|| of / all);
+    [
+        (
+            Figure::Remaining,
+            both.and_then(|(before, after)| part(after, before)),
+        ),
+        (
+            Figure::Worsened,
+            both.map(|(before, after)| (after - before) / (0.6 * own).max(0.05)),
+        ),
+        (
+            Figure::Coverage,
+            part(tally.covered as f64, tally.claimed as f64),
+        ),
+        (Figure::Claimed, part(tally.claimed as f64, indications)),
+        (
+            Figure::FalseRaises,
+            part(count(|run| run.trial.findings.false_raises), trials),
+        ),
+        (
+            Figure::MissedRaises,
+            part(count(|run| run.trial.findings.missed_raises), trials),
+        ),
+        (
+            Figure::FalseSteps,
+            part(
+                1e5 * count(|run| run.trial.findings.false_steps),
+                indications,
+            ),
+        ),
+        (
+            Figure::Missed,
+            part(count(|run| run.trial.findings.missed), planted),
+        ),
+        (Figure::DelayMedian, quantile(&delays, 0.5)),
+        (Figure::Delay95, quantile(&delays, 0.95)),
+        (
+            Figure::FalseLimits,
+            Some(count(|run| run.trial.findings.false_limits)),
+        ),
+        (
+            Figure::FalseAlarms,
+            Some(f64::from(false_alarms.values().sum::<u32>())),
+        ),
+        (Figure::Lead, quantile(&leads, 0.5)),
+        (
+            Figure::Unforetold,
+            part(crossings - leads.len() as f64, crossings),
+        ),
+        (Figure::Moved, moved.reduce(f64::max)),
+    ]
+    .into_iter()
+    .filter_map(|(figure, value)| Some((figure, value?)))
+    .collect()
+}
+
+/// Values of all runs, smallest first.
+fn sorted(runs: &[Timed], of: fn(&Timed) -> &Vec<f64>) -> Vec<f64> {
+    let mut values: Vec<f64> = runs.iter().flat_map(of).copied().collect();
+    values.sort_by(f64::total_cmp);
+    values
+}
+
+/// The smallest of the sorted values that at least `part` of them do not exceed.
+fn quantile(sorted: &[f64], part: f64) -> Option<f64> {
+    let rank = libm::ceil(part * sorted.len() as f64).max(1.0);
+    #[allow(
+        clippy::cast_possible_truncation,
+        clippy::cast_sign_loss,
+        reason = "a rank from 1 to the number of values"
+    )]
+    let index = rank as usize - 1;
+    sorted.get(index).copied()
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn quantiles_are_values_that_occurred() {
+        let values: Vec<f64> = (1..=20).map(f64::from).collect();
+        assert_eq!(quantile(&values, 0.5), Some(10.0));
+        assert_eq!(quantile(&values, 0.95), Some(19.0));
+        assert_eq!(quantile(&values[..1], 0.95), Some(1.0));
+        assert_eq!(quantile(&[], 0.5), None);
+    }
+}

@@ -388,6 +388,8 @@ fn kind(kind: AlarmKind) -> &'static str {
         AlarmKind::ReferenceStale => "reference-stale",
         AlarmKind::DataGap => "data-gap",
         AlarmKind::ScreenLockedOut => "screen-locked-out",
+        AlarmKind::Stuck => "stuck",
+        AlarmKind::NoiseGrowth => "noise-growth",
     }
 }
 

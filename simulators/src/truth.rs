@@ -206,12 +206,7 @@ fn alarms(sensor: usize, kit: &Kit, planted: &Planted, end: f64) -> Vec<Expected
     match planted.disturbance {
         // Within two days the true value has moved far enough away for long enough.
         Disturbance::Stuck { at } => {
-            expected.add(
-                Subject::Channel,
-                "screen-locked-out",
-                at,
-                (at, at + 2.0, f64::MAX),
-            );
+            expected.add(Subject::Channel, "stuck", at, (at, at + 2.0, f64::MAX));
         }
         Disturbance::ReferenceDying { at } => {
             let due = at + (STALE_AFTER_HOURS + 2.0) / 24.0;

@@ -5,11 +5,11 @@ use super::place::{self, Place};
 use super::quantity;
 use super::reader::Section;
 use super::reference::{self, Beside};
-use super::source::Found;
+use super::screening;
 use crate::payload::{Format, Target, Use};
 use holdtrue_engine::setup::{
     AlarmSetup, ChannelSetup, Criterion, FitSetup, PairNoise, PublishSetup, ReferenceId,
-    ScreeningSetup, WindowLength,
+    WindowLength,
 };
 use holdtrue_engine::time::Duration;
 
@@ -33,10 +33,6 @@ const MAX_DEGREE: u8 = 2;
 const DEGREE_LIMIT: u8 = 5;
 /// Default of `coverage`.
 const COVERAGE: f64 = 0.95;
-/// Defaults of `screening`: width of the gate in robust standard deviations (common practice: 3.5
-/// to 5; white noise fails at 5 once in two million), and rejections in a row.
-const GATE: f64 = 5.0;
-const LOCK_OUT_AFTER: u32 = 5;
 /// Defaults of `publish`.
 const PUBLISH_STEP: f64 = 0.25;
 const PUBLISH_MAX_AGE: Duration = DAY;
@@ -92,7 +88,7 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
             .duration("max_gap")
             .map_or(MAX_GAP, |found| found.value),
         fit,
-        screening: screening(section),
+        screening: screening::read(section),
         max_permissible_error: positive("max_permissible_error"),
         resolution: not_negative("resolution"),
         noise: not_negative("noise"),
@@ -259,49 +255,6 @@ fn warn_about_window(section: &Section<'_>, fit: &FitSetup, lateness: Duration) 
     }
     if lateness > length {
         warn("is shorter than `lateness`: the latest readings would find their window gone");
-    }
-}
-
-/// `screening`: "off", or a table.
-fn screening(section: &Section<'_>) -> ScreeningSetup {
-    let standard = ScreeningSetup {
-        enabled: true,
-        range: None,
-        gate: GATE,
-        lock_out_after: LOCK_OUT_AFTER,
-    };
-    if section.is_text("screening") {
-        let off = section.choice("screening", &[("off", false), ("on", true)]);
-        return ScreeningSetup {
-            enabled: off.is_none_or(|found| found.value),
-            ..standard
-        };
-    }
-    let Some(table) = section.section("screening") else {
-        return standard;
-    };
-    let gate = table.number_in("gate", |gate| gate >= 1.0, "at least 1 standard deviation");
-    let lock_out_after = table.integer_in("lock_out_after", 2..=1000);
-    let range = range(&table);
-    table.finish();
-    ScreeningSetup {
-        enabled: true,
-        range,
-        gate: gate.map_or(GATE, |found| found.value),
-        lock_out_after: lock_out_after.map_or(LOCK_OUT_AFTER, |found| found.value),
-    }
-}
-
-/// `range = [lowest, highest]`.
-fn range(table: &Section<'_>) -> Option<(f64, f64)> {
-    let place = table.place("range")?;
-    let ends: Vec<Found<f64>> = table.numbers("range");
-    match ends.as_slice() {
-        [low, high] if low.value < high.value => Some((low.value + 0.0, high.value + 0.0)),
-        _ => {
-            table.wrong(&place, "must be two numbers, [lowest, highest]");
-            None
-        }
     }
 }
 

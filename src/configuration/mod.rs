@@ -27,6 +27,7 @@ mod place;
 mod quantity;
 mod reader;
 mod reference;
+mod screening;
 mod service;
 mod source;
 

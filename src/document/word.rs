@@ -18,6 +18,8 @@ pub(super) fn alarm_kind(kind: AlarmKind) -> &'static str {
         AlarmKind::ReferenceStale => "reference-stale",
         AlarmKind::DataGap => "data-gap",
         AlarmKind::ScreenLockedOut => "screen-locked-out",
+        AlarmKind::Stuck => "stuck",
+        AlarmKind::NoiseGrowth => "noise-growth",
     }
 }
 
@@ -69,6 +71,8 @@ pub(super) fn refused_reason(reason: RefusedReason) -> &'static str {
         RefusedReason::InnovationGate => "innovation-gate",
         RefusedReason::NoPartner => "no-partner",
         RefusedReason::GroupTooSmall => "group-too-small",
+        RefusedReason::Stuck => "stuck",
+        RefusedReason::TooFast => "too-fast",
     }
 }
 

@@ -14,7 +14,7 @@ mod silence;
 use crate::alarm::Alarm;
 use crate::channel::{Answer, Channel, Rows, Scene};
 use crate::counters::Counters;
-use crate::event::{Gate, Reading, Refused, RefusedReason, Source, Subject, Supplied};
+use crate::event::{Flag, Gate, Reading, Refused, RefusedReason, Source, Subject, Supplied};
 use crate::gate::GateHistory;
 use crate::report::Report;
 use crate::setup::{ChannelId, Clock, ReferenceId, Setup};
@@ -205,6 +205,12 @@ impl Fleet {
         match reading.source {
             Source::Indication(id) => {
                 let index = id.0 as usize;
+                let setup = &self.setup.channels[index];
+                if self.channels[index].check_indication(&sample, setup) != Flag::Pass {
+                    self.visit(index, |channel, scene| channel.keep_out(scene, report));
+                    self.refuse_reading(reading, RefusedReason::Stuck, report);
+                    return;
+                }
                 self.indications[index].insert(sample);
                 self.visit(index, |channel, scene| {
                     channel.take_indication(&sample, scene, report);

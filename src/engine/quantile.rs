@@ -10,6 +10,12 @@ const PRACTICALLY_NORMAL: f64 = 1e6;
 /// reserve.
 const STEPS_MAX: usize = 60;
 
+/// Φ(x), the probability that a standard normal variable lies below x.
+#[must_use]
+pub fn normal_below(x: f64) -> f64 {
+    0.5 * libm::erfc(-x * std::f64::consts::FRAC_1_SQRT_2)
+}
+
 /// The value that a standard normal variable stays below with probability `p`; `p` inside (0, 1).
 ///
 /// Newton's method on Φ(x) = ½ erfc(−x/√2) (Abramowitz & Stegun 7.1.2, 26.2.29), started with the
@@ -29,7 +35,7 @@ fn lower_normal(p: f64) -> f64 {
     let denominator = 1.0 + t * (1.432_788 + t * (0.189_269 + t * 0.001_308));
     let mut x = numerator / denominator - t;
     for _ in 0..STEPS_MAX {
-        let below = 0.5 * libm::erfc(-x * std::f64::consts::FRAC_1_SQRT_2);
+        let below = normal_below(x);
         let density = exp(-0.5 * x * x) / (2.0 * std::f64::consts::PI).sqrt();
         let step = (below - p) / density;
         x -= step;

@@ -73,6 +73,8 @@ impl RefusedReason {
             Self::InnovationGate => "innovation-gate",
             Self::NoPartner => "no-partner",
             Self::GroupTooSmall => "group-too-small",
+            Self::Stuck => "stuck",
+            Self::TooFast => "too-fast",
         }
     }
 
@@ -110,6 +112,10 @@ impl RefusedReason {
             }
             Self::GroupTooSmall => {
                 "fewer than three other members had a value; bring members back or add some"
+            }
+            Self::Stuck => "the sensor repeats itself and is not believed; look at the sensor",
+            Self::TooFast => {
+                "changed faster than `max_rate` allows; look at the sensor, or raise the limit"
             }
         }
     }

@@ -88,6 +88,8 @@ pub fn channel(name: &str, reference: u32) -> ChannelSetup {
             range: None,
             gate: 5.0,
             lock_out_after: 5,
+            stuck: None,
+            max_rate: None,
         },
         max_permissible_error: None,
         resolution: 0.0,

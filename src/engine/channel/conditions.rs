@@ -1,6 +1,8 @@
 //! Last station: the conditions behind a channel's alarms and what the alarms say. The states are
 //! moved by `alarm`.
 
+mod health;
+
 use super::Scene;
 use super::judgement::Judgement;
 use crate::alarm::{Alarm, Condition, Delays, Move};
@@ -19,6 +21,8 @@ pub(crate) struct ChannelAlarms {
     drift_rate: Alarm,
     data_gap: Alarm,
     screen_locked_out: Alarm,
+    stuck: Alarm,
+    noise_growth: Alarm,
 }
 
 /// What an alarm change says besides its state.
@@ -107,7 +111,8 @@ impl ChannelAlarms {
         let Some(limit) = scene.setup.alarms.gap_after else {
             return;
         };
-        if silent > limit && !self.data_gap.is_raised() {
+        // What repeats itself is kept out, not silent: one fault, one alarm.
+        if silent > limit && !self.data_gap.is_raised() && !self.stuck.is_raised() {
             let delays = Delays { on: 1, off: 1 };
             let step = self.data_gap.evaluate(Condition::Holds, scene.now, delays);
             let said = data_gap(silent, limit);
@@ -135,12 +140,14 @@ impl ChannelAlarms {
     }
 
     /// All alarms with their kinds.
-    fn all(&self) -> [(AlarmKind, &Alarm); 4] {
+    fn all(&self) -> [(AlarmKind, &Alarm); 6] {
         [
             (AlarmKind::ErrorLimit, &self.error_limit),
             (AlarmKind::DriftRate, &self.drift_rate),
             (AlarmKind::DataGap, &self.data_gap),
             (AlarmKind::ScreenLockedOut, &self.screen_locked_out),
+            (AlarmKind::Stuck, &self.stuck),
+            (AlarmKind::NoiseGrowth, &self.noise_growth),
         ]
     }
 
@@ -202,6 +209,7 @@ impl ChannelAlarms {
                 &mut self.screen_locked_out,
                 !after.screening.enabled,
             ),
+            (AlarmKind::Stuck, &mut self.stuck, !after.screening.enabled),
         ];
         for (kind, alarm, _) in unasked.into_iter().filter(|(_, _, unasked)| *unasked) {
             if std::mem::take(alarm).is_raised() {

@@ -11,6 +11,7 @@
 //! What enters a station never comes back from a later one; the only memory shared between them is
 //! in [`Channel`].
 
+mod checks;
 mod conditions;
 mod judgement;
 mod pairing;
@@ -22,13 +23,15 @@ mod telling;
 #[cfg(test)]
 pub(crate) mod testing;
 
-use crate::event::{Output, Subject};
+use crate::event::{Flag, Output, Subject};
 use crate::gate::GateHistory;
 use crate::report::Report;
 use crate::setup::{ChannelId, ChannelSetup, ReferenceSetup};
 use crate::standing::{AlarmStanding, ChannelStanding};
 use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
+use checks::Checks;
+pub(crate) use checks::jumps;
 use conditions::ChannelAlarms;
 pub(crate) use pairing::{Answer, Rows};
 use pairing::{Found, Pair, Pairing};
@@ -57,6 +60,7 @@ pub(crate) struct Scene<'a> {
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Channel {
     pairing: Pairing,
+    checks: Checks,
     stretch: Stretch,
     publishing: Publishing,
     alarms: ChannelAlarms,
@@ -72,6 +76,7 @@ impl Channel {
     pub(crate) fn new(setup: &ChannelSetup, issued: u64) -> Self {
         Self {
             pairing: Pairing::default(),
+            checks: Checks::default(),
             stretch: Stretch::new(1, setup),
             publishing: Publishing::new(issued),
             alarms: ChannelAlarms::default(),
@@ -94,6 +99,24 @@ impl Channel {
     /// When it wants to act next, if nothing arrives.
     pub(crate) fn wake(&self) -> Option<Timestamp> {
         self.wake
+    }
+
+    /// Whether an indication only repeats what is kept out as stuck already.
+    pub(crate) fn is_stuck_at(&self, value: f64, setup: &ChannelSetup) -> bool {
+        self.checks.is_stuck_at(value, setup)
+    }
+
+    /// Counts an indication that came in, before it is taken into its track; what does not pass is
+    /// not taken.
+    pub(crate) fn check_indication(&mut self, sample: &Sample, setup: &ChannelSetup) -> Flag {
+        self.checks
+            .take_indication(sample.time, sample.value, setup)
+    }
+
+    /// Its own indication was kept out as stuck.
+    pub(crate) fn keep_out(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        let stuck = self.checks.stuck(scene.setup);
+        self.alarms.stuck(stuck, scene, report);
     }
 
     /// Its own indication was taken into its track.
@@ -176,6 +199,7 @@ impl Channel {
         self.alarms.edit(id, after, now, report);
         if !after.screening.enabled {
             self.stretch.forget_screen();
+            self.checks.forget_screens();
         }
         self.stretch.edit(after);
         self.publishing.review();
@@ -289,6 +313,14 @@ impl Channel {
 
     fn take_pair(&mut self, pair: &Pair, scene: &Scene<'_>, report: &mut Report<'_>) {
         self.last_reference = self.last_reference.max(Some(pair.time));
+        let scatter = self.stretch.scatter();
+        let stuck = self.checks.take_pair(pair, scatter, scene.setup);
+        self.alarms
+            .stuck(self.checks.stuck(scene.setup), scene, report);
+        if stuck.is_some() {
+            telling::tell_fate(pair, stuck, scene, report);
+            return;
+        }
         let taken = self.stretch.take(pair, scene.setup);
         telling::tell_fate(pair, taken.rejected, scene, report);
         if let Some(change) = taken.change {
@@ -298,6 +330,9 @@ impl Channel {
             let locked_out = self.stretch.is_locked_out();
             self.alarms
                 .screen(locked_out, innovation.value, scene, report);
+            self.checks.take_innovation(innovation, scene.setup);
+            self.alarms
+                .precision(self.checks.precision(), scene, report);
         }
         if self.is_worth_judging(scene) {
             self.judge(scene, report);

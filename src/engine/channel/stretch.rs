@@ -29,6 +29,8 @@ pub(super) struct Stretch {
     unjudged: u64,
     /// Lowest and highest reference value.
     range: Option<(f64, f64)>,
+    /// Residual standard deviation of the plain fit before the newest pair.
+    scatter: Option<f64>,
     /// The last judgement in numbers, for the standing.
     judged: Option<Judged>,
 }
@@ -65,6 +67,7 @@ impl Stretch {
             pairs: 0,
             unjudged: 0,
             range: None,
+            scatter: None,
             judged: None,
         }
     }
@@ -100,6 +103,11 @@ impl Stretch {
             stretch: self.number,
             range: self.range.unwrap_or((0.0, 0.0)),
         }
+    }
+
+    /// Residual standard deviation of the plain fit before the newest pair.
+    pub(super) fn scatter(&self) -> Option<f64> {
+        self.scatter
     }
 
     /// The last judgement in numbers.
@@ -141,6 +149,9 @@ impl Stretch {
         } else {
             self.innovation(pair, error, setup)
         };
+        if let Some(innovation) = innovation {
+            self.scatter = Some(innovation.residual_sd);
+        }
         let verdict = match innovation {
             Some(innovation) if setup.screening.enabled => {
                 let oldest = self.fit.window().oldest();

@@ -2,7 +2,7 @@
 
 use super::Scene;
 use super::pairing::Pair;
-use crate::event::{DegreeChange, Output, PairFate, Rejection, Subject};
+use crate::event::{DegreeChange, Flag, Output, PairFate, Rejection, Subject};
 use crate::fit::Change;
 use crate::report::Report;
 use crate::wording::readable;
@@ -19,6 +19,7 @@ pub(super) fn tell_fate(
         phenomenon: pair.time,
         indication: pair.indication + 0.0,
         reference: pair.reference + 0.0,
+        flag: Flag::of_fate(rejected),
         rejected,
     }));
     if let Some(rejection) = rejected {

@@ -30,6 +30,8 @@ pub(crate) fn channel_setup() -> ChannelSetup {
             range: None,
             gate: 5.0,
             lock_out_after: 5,
+            stuck: None,
+            max_rate: None,
         },
         max_permissible_error: None,
         resolution: 0.0,

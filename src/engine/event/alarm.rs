@@ -17,6 +17,10 @@ pub enum AlarmKind {
     DataGap,
     /// The screen rejected so many in a row that it stopped: a step or a bad reference.
     ScreenLockedOut,
+    /// The sensor repeats one value, or does not follow its reference.
+    Stuck,
+    /// The noise has grown while the mean stayed.
+    NoiseGrowth,
 }
 
 /// The states of an alarm. A later version adds acknowledgement, latching, shelving and suppression

@@ -1,4 +1,4 @@
-//! What the engine is told, piece by piece: readings, gates, what was refused, rows from the record.
+//! What the engine is told, piece by piece: readings, gates, what was refused, recorded rows.
 
 use crate::setup::{ChannelId, ReferenceId};
 use crate::time::Timestamp;
@@ -97,6 +97,10 @@ pub enum RefusedReason {
     NoPartner,
     /// Fewer than three other members of the group had a value.
     GroupTooSmall,
+    /// The sensor repeats one value, or does not follow its reference.
+    Stuck,
+    /// The value has changed faster than the measurand can.
+    TooFast,
 }
 
 /// Rows from the record, given back: the answer to one

@@ -18,7 +18,7 @@ pub use correction::{Corrected, Correction, CriterionValues, WindowSeen, Zone};
 pub use degree::{DegreeChange, Evidence};
 pub use input::{Gate, Reading, Refused, RefusedReason, Source, Supplied};
 pub use notice::Notice;
-pub use pair::{PairFate, Rejection};
+pub use pair::{Flag, PairFate, Rejection, SPIKE_FAILS};
 
 use crate::setup::{ChannelId, ReferenceId, Setup};
 use crate::time::Timestamp;

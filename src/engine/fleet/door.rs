@@ -2,7 +2,8 @@
 //! be used.
 
 use super::{Fleet, longest};
-use crate::event::{Gate, Output, PairFate, Reading, RefusedReason, Rejection, Source};
+use crate::channel::jumps;
+use crate::event::{Flag, Gate, Output, PairFate, Reading, RefusedReason, Rejection, Source};
 use crate::setup::{Clock, ReferenceId, ReferenceKind};
 use crate::time::{Duration, Timestamp};
 
@@ -43,6 +44,7 @@ impl Fleet {
             return Err(RefusedReason::StatusExcluded);
         }
         self.admit_range(reading)?;
+        self.admit_alive(reading)?;
         Ok(now)
     }
 
@@ -166,6 +168,7 @@ impl Fleet {
             phenomenon: reading.phenomenon,
             indication: reading.value,
             reference: value + 0.0,
+            flag: Flag::Fail,
             rejected: Some(Rejection {
                 reason: RefusedReason::OutOfRange,
                 value: reading.value,
@@ -176,6 +179,28 @@ impl Fleet {
                 },
             }),
         }))
+    }
+
+    /// Whether an indication can be true: not a repetition of what counts as stuck, and no change
+    /// faster than the measurand makes.
+    fn admit_alive(&self, reading: &Reading) -> Result<(), RefusedReason> {
+        let Source::Indication(id) = reading.source else {
+            return Ok(());
+        };
+        let index = id.0 as usize;
+        let setup = &self.setup.channels[index];
+        if self.channels[index].is_stuck_at(reading.value, setup) {
+            return Err(RefusedReason::Stuck);
+        }
+        let limit = setup.screening.max_rate.filter(|_| setup.screening.enabled);
+        let jumps = limit.and_then(|limit| {
+            let track = &self.indications[index];
+            jumps(track, reading.phenomenon, reading.value, limit)
+        });
+        match jumps {
+            Some(_) => Err(RefusedReason::TooFast),
+            None => Ok(()),
+        }
     }
 
     fn admit_range(&self, reading: &Reading) -> Result<(), RefusedReason> {

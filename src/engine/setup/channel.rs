@@ -55,6 +55,29 @@ pub struct ScreeningSetup {
     pub gate: f64,
     /// After so many rejections of one sign in a row the gate stops rejecting and locks out.
     pub lock_out_after: u32,
+    /// How many repeats of one value mean that the sensor is stuck; `None`: as follows from noise
+    /// and resolution, where both are declared.
+    pub stuck: Option<Repeats>,
+    /// How fast the measurand can change; `None`: not said.
+    pub max_rate: Option<RateLimit>,
+}
+
+/// Equal values after a first one.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Repeats {
+    /// From so many repeats on a value is suspect; at least 1.
+    pub suspect: u32,
+    /// From so many it fails and the sensor counts as stuck; at least `suspect`.
+    pub fail: u32,
+}
+
+/// A largest change in a time.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct RateLimit {
+    /// Largest change, in the channel's unit, > 0.
+    pub change: f64,
+    /// The time that it needs, > 0.
+    pub within: Duration,
 }
 
 /// When a new correction document is issued.

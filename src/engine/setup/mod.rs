@@ -8,7 +8,7 @@ mod channel;
 mod fit;
 mod reference;
 
-pub use channel::{AlarmSetup, ChannelSetup, PublishSetup, ScreeningSetup};
+pub use channel::{AlarmSetup, ChannelSetup, PublishSetup, RateLimit, Repeats, ScreeningSetup};
 pub use fit::{Criterion, FitSetup, PairNoise, SpanSide, WindowLength};
 pub use reference::{ReferenceKind, ReferenceSetup, Stamped};
 

@@ -152,6 +152,8 @@ fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup
             range: None,
             gate: 5.0,
             lock_out_after: 5,
+            stuck: None,
+            max_rate: None,
         },
         max_permissible_error: Some(10.0 * deviation),
         resolution: 0.0,

@@ -155,12 +155,13 @@ fn a_changed_configuration_keeps_what_is_unchanged_and_clears_what_is_not() {
     );
     let old_b = ChannelId(1);
     assert!(matches!(said[0], Output::Withdrawn { channel, .. } if channel == old_b));
+    assert!(matches!(said[1], Output::OutlookWithdrawn { channel, .. } if channel == old_b));
     assert!(matches!(
-        &said[1],
+        &said[2],
         Output::Alarm(change) if change.subject == Subject::Channel(old_b)
             && change.state == AlarmState::Normal
     ));
-    assert_eq!(said.len(), 2, "{said:?}");
+    assert_eq!(said.len(), 3, "{said:?}");
     let after = engine.standing();
     assert_eq!(after.alarms.len(), 1);
     assert_eq!(after.channels[1].pairs, before.channels[0].pairs);

@@ -307,6 +307,15 @@ impl Stage {
                 short(value.indication),
                 short(value.corrected)
             ),
+            Output::Outlook(outlook) => format!(
+                "outlook {} error {} U {}",
+                channel(outlook.channel),
+                short(outlook.error),
+                short(outlook.expanded_uncertainty)
+            ),
+            Output::OutlookWithdrawn { channel: id, .. } => {
+                format!("outlook withdrawn {}", channel(*id))
+            }
             Output::Alarm(change) => format!(
                 "alarm {} {} {} since {} value {} limit {}",
                 self.name(change.subject),
@@ -385,6 +394,7 @@ fn kind(kind: AlarmKind) -> &'static str {
     match kind {
         AlarmKind::ErrorLimit => "error-limit",
         AlarmKind::DriftRate => "drift-rate",
+        AlarmKind::TimeToLimit => "time-to-limit",
         AlarmKind::ReferenceStale => "reference-stale",
         AlarmKind::DataGap => "data-gap",
         AlarmKind::ScreenLockedOut => "screen-locked-out",

@@ -8,8 +8,8 @@ use super::reference::{self, Beside};
 use super::screening;
 use crate::payload::{Format, Target, Use};
 use holdtrue_engine::setup::{
-    AlarmSetup, ChannelSetup, Criterion, FitSetup, PairNoise, PublishSetup, ReferenceId,
-    WindowLength,
+    AlarmSetup, ChannelSetup, Criterion, DecisionRule, FitSetup, PairNoise, PublishSetup,
+    ReferenceId, WindowLength,
 };
 use holdtrue_engine::time::Duration;
 
@@ -31,6 +31,10 @@ const SEGMENT_MIN: Duration = Duration(1_000_000);
 const MAX_DEGREE: u8 = 2;
 /// Highest degree.
 const DEGREE_LIMIT: u8 = 5;
+/// Default of `decision_rule`: guard band w = U, the cautious one.
+const DECISION_RULE: DecisionRule = DecisionRule::GuardBand { multiple: 1.0 };
+/// Default of `service_horizon`: two weekly rounds of a technician (common practice).
+const SERVICE_HORIZON: Duration = Duration::from_seconds(14 * 86_400);
 /// Default of `coverage`.
 const COVERAGE: f64 = 0.95;
 /// Defaults of `publish`.
@@ -90,6 +94,10 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
         fit,
         screening: screening::read(section),
         max_permissible_error: positive("max_permissible_error"),
+        decision_rule: decision_rule(section),
+        service_horizon: section
+            .positive_duration("service_horizon")
+            .map_or(SERVICE_HORIZON, |found| found.value),
         resolution: not_negative("resolution"),
         noise: not_negative("noise"),
         max_drift_rate: positive("max_drift_rate"),
@@ -235,6 +243,29 @@ fn fit(section: &Section<'_>) -> FitSetup {
         influences: 0,
         noise: PairNoise::default(),
     }
+}
+
+/// `decision_rule`: "simple", or `{ guard_band = r }`.
+fn decision_rule(section: &Section<'_>) -> DecisionRule {
+    if section.is_text("decision_rule") {
+        let simple = section.choice("decision_rule", &[("simple", DecisionRule::Simple)]);
+        return simple.map_or(DECISION_RULE, |found| found.value);
+    }
+    let Some(table) = section.section("decision_rule") else {
+        return DECISION_RULE;
+    };
+    let wanted = "a multiple of U above 0 and at most 10, as 1.0";
+    let multiple = table.number_in("guard_band", |r| r > 0.0 && r <= 10.0, wanted);
+    if !table.has("guard_band") {
+        table.missing(
+            "guard_band",
+            "the guard band in multiples of U: { guard_band = 1.0 }",
+        );
+    }
+    table.finish();
+    multiple.map_or(DECISION_RULE, |found| DecisionRule::GuardBand {
+        multiple: found.value,
+    })
 }
 
 /// What a window makes hard to see. A cycle needs three periods in the window, or it is taken for

@@ -5,15 +5,9 @@ use super::name;
 use super::reader::Section;
 use super::source::{Found, Source};
 use crate::payload::{Format, Tables, Target, Use};
-use holdtrue_engine::setup::{ChannelSetup, ReferenceKind};
+use holdtrue_engine::setup::{ChannelSetup, ReferenceKind, UNCERTAINTY_RATIO_MIN};
 use std::collections::BTreeMap;
 use std::mem::discriminant;
-
-/// A maximum permissible error should be at least so many times the reference's expanded
-/// uncertainty (test uncertainty ratio, common practice).
-const RATIO_MIN: f64 = 4.0;
-/// Coverage factor of that expanded uncertainty.
-const COVERAGE_FACTOR: f64 = 2.0;
 
 /// Checks all places against each other and turns them into tables.
 pub(super) fn tables(
@@ -171,8 +165,7 @@ pub(super) fn warn_about_references(sections: &[Section<'_>], draft: &Draft) {
 fn reference_is_weak(channel: &ChannelSetup, draft: &Draft) -> Option<String> {
     let limit = channel.max_permissible_error?;
     let reference = draft.references.get(channel.reference.0 as usize)?;
-    let (each, common) = (reference.uncertainty_each, reference.uncertainty_common);
-    let expanded = COVERAGE_FACTOR * (each * each + common * common).sqrt();
+    let expanded = reference.expanded_uncertainty();
     if expanded == 0.0 && !matches!(reference.kind, ReferenceKind::Group { .. }) {
         return Some(format!(
             "is judged against reference {}, whose uncertainty is not given and counts as zero; \
@@ -180,10 +173,10 @@ fn reference_is_weak(channel: &ChannelSetup, draft: &Draft) -> Option<String> {
             reference.name
         ));
     }
-    (expanded * RATIO_MIN > limit).then(|| {
+    (!reference.is_good_enough_for(limit)).then(|| {
         format!(
-            "is less than {RATIO_MIN} times the expanded uncertainty {expanded} of reference {}: \
-             it can show a trend, hardly conformity",
+            "is less than {UNCERTAINTY_RATIO_MIN} times the expanded uncertainty {expanded} of \
+             reference {}: trends are shown, but no conformity is stated",
             reference.name
         )
     })

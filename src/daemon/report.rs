@@ -88,7 +88,7 @@ pub(super) fn state_document(
         .iter()
         .filter_map(|channel| {
             let setup = shell.setup.channels.get(channel.channel.0 as usize)?;
-            Some(ChannelState::new(channel, &setup.name, &engine.alarms))
+            Some(ChannelState::new(channel, setup, &engine.alarms))
         })
         .collect();
     let standing = Standing {

@@ -35,6 +35,8 @@ pub struct CorrectionDocument<'a> {
     degrees_of_freedom: f64,
     covariance: &'a [Vec<f64>],
     zone: Option<&'static str>,
+    decision_rule: Option<String>,
+    accepted: Option<bool>,
     corrected_zone: Option<&'static str>,
     window: Window,
     criterion: Criterion<'a>,
@@ -94,6 +96,10 @@ impl<'a> CorrectionDocument<'a> {
             degrees_of_freedom: correction.degrees_of_freedom,
             covariance: &correction.covariance,
             zone: correction.zone.map(word::zone),
+            decision_rule: correction
+                .zone
+                .map(|_| word::decision_rule(correction.rule)),
+            accepted: correction.accepted,
             corrected_zone: correction.corrected_zone.map(word::zone),
             window: Window::new(&correction.window),
             criterion: Criterion {

@@ -3,12 +3,13 @@
 //! JSON, UTF-8. Times are RFC 3339 in UTC with all the nanoseconds they have; numbers read back to
 //! the same bits; words for machines are lower case with hyphens. Each document carries
 //! `schema_version`; its schema stands in `config/schemas/`. Modules in reading order: [`topic`],
-//! [`correction`], [`alarm`], [`degree`], [`notice`], [`state`].
+//! [`correction`], [`outlook`], [`alarm`], [`degree`], [`notice`], [`state`].
 
 pub mod alarm;
 pub mod correction;
 pub mod degree;
 pub mod notice;
+pub mod outlook;
 pub mod state;
 pub mod topic;
 mod word;
@@ -69,6 +70,21 @@ pub fn render(output: &Output, setup: &Setup) -> Option<Document> {
                 false,
                 None,
             ))
+        }
+        Output::Outlook(outlook) => {
+            let channel = setup.channels.get(outlook.channel.0 as usize)?;
+            let expires = (setup.clock == Clock::Live).then_some(outlook.valid_until);
+            let document = outlook::OutlookDocument::new(outlook, channel);
+            Some(json(
+                topics.outlook(&channel.name),
+                &document,
+                true,
+                expires,
+            ))
+        }
+        Output::OutlookWithdrawn { channel, .. } => {
+            let channel = setup.channels.get(channel.0 as usize)?;
+            Some(cleared(topics.outlook(&channel.name)))
         }
         Output::Alarm(change) => {
             let name = topic::subject_name(change.subject, setup)?;

@@ -2,6 +2,7 @@
 
 use super::{SCHEMA_VERSION, word};
 use holdtrue_engine::event::{RefusedReason, Subject};
+use holdtrue_engine::setup::ChannelSetup;
 use holdtrue_engine::standing::{AlarmStanding, ChannelStanding};
 use holdtrue_engine::time::Timestamp;
 use serde::Serialize;
@@ -81,7 +82,10 @@ pub struct ChannelState {
     correction: Option<f64>,
     standard_uncertainty: Option<f64>,
     zone: Option<&'static str>,
+    decision_rule: Option<String>,
+    accepted: Option<bool>,
     corrected_zone: Option<&'static str>,
+    limit_not_before: Option<String>,
     issue_number: Option<u64>,
     valid_until: Option<String>,
     locked_out: bool,
@@ -89,12 +93,12 @@ pub struct ChannelState {
 }
 
 impl ChannelState {
-    /// Of one channel, called `name`, with the alarms among `alarms` that stand on it.
+    /// Of one channel, set up so, with the alarms among `alarms` that stand on it.
     #[must_use]
-    pub fn new(channel: &ChannelStanding, name: &str, alarms: &[AlarmStanding]) -> Self {
+    pub fn new(channel: &ChannelStanding, setup: &ChannelSetup, alarms: &[AlarmStanding]) -> Self {
         let own = |alarm: &&AlarmStanding| alarm.subject == Subject::Channel(channel.channel);
         Self {
-            channel: name.to_owned(),
+            channel: setup.name.clone(),
             last_indication: channel.last_indication.map(word::time),
             last_pair: channel.last_pair.map(word::time),
             pairs: channel.pairs,
@@ -102,7 +106,12 @@ impl ChannelState {
             correction: channel.correction,
             standard_uncertainty: channel.standard_uncertainty,
             zone: channel.zone.map(word::zone),
+            decision_rule: channel
+                .zone
+                .map(|_| word::decision_rule(setup.decision_rule)),
+            accepted: channel.accepted,
             corrected_zone: channel.corrected_zone.map(word::zone),
+            limit_not_before: channel.limit_not_before.map(word::time),
             issue_number: channel.issue_number,
             valid_until: channel.valid_until.map(word::time),
             locked_out: channel.locked_out,

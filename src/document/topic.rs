@@ -34,6 +34,12 @@ impl<'a> Topics<'a> {
         format!("holdtrue/{}/corrected/{channel}", self.node)
     }
 
+    /// What lies ahead of a channel; retained.
+    #[must_use]
+    pub fn outlook(&self, channel: &str) -> String {
+        format!("holdtrue/{}/outlook/{channel}", self.node)
+    }
+
     /// The newest change of a channel's degree, with its evidence; retained.
     #[must_use]
     pub fn degree(&self, channel: &str) -> String {
@@ -73,6 +79,7 @@ impl<'a> Topics<'a> {
         if let Some(name) = rest
             .strip_prefix("correction/")
             .or(rest.strip_prefix("degree/"))
+            .or(rest.strip_prefix("outlook/"))
         {
             !channel(name)
         } else if let Some(rest) = rest.strip_prefix("alarm/channel/") {

@@ -1,6 +1,7 @@
 //! The fixed words that machines find in documents, and times as text.
 
 use holdtrue_engine::event::{AlarmKind, AlarmState, RefusedReason, Subject, Zone};
+use holdtrue_engine::setup::DecisionRule;
 use holdtrue_engine::time::Timestamp;
 
 /// RFC 3339 in UTC, with as many digits of the second as the instant has.
@@ -15,6 +16,7 @@ pub(super) fn alarm_kind(kind: AlarmKind) -> &'static str {
     match kind {
         AlarmKind::ErrorLimit => "error-limit",
         AlarmKind::DriftRate => "drift-rate",
+        AlarmKind::TimeToLimit => "time-to-limit",
         AlarmKind::ReferenceStale => "reference-stale",
         AlarmKind::DataGap => "data-gap",
         AlarmKind::ScreenLockedOut => "screen-locked-out",
@@ -47,6 +49,20 @@ pub(super) fn zone(zone: Zone) -> &'static str {
         Zone::ConditionalPass => "conditional-pass",
         Zone::ConditionalFail => "conditional-fail",
         Zone::Fail => "fail",
+    }
+}
+
+/// A decision rule in words, with its source.
+pub(super) fn decision_rule(rule: DecisionRule) -> String {
+    match rule {
+        DecisionRule::Simple => {
+            "simple acceptance: accepted if |e| ≤ MPE (guard band w = 0; ILAC-G8:09/2019, 4.2.2)"
+                .to_owned()
+        }
+        DecisionRule::GuardBand { multiple } => format!(
+            "guard band w = {multiple}·U: accepted if |e| ≤ MPE − w (ILAC-G8:09/2019, 4.2.2; \
+             JCGM 106:2012, 8.3)"
+        ),
     }
 }
 

@@ -41,6 +41,8 @@ pub struct ChannelStanding {
     pub standard_uncertainty: Option<f64>,
     /// Where the uncorrected error stands.
     pub zone: Option<Zone>,
+    /// Whether it is accepted under the channel's decision rule.
+    pub accepted: Option<bool>,
     /// Where the corrected value stands.
     pub corrected_zone: Option<Zone>,
     /// Number of the correction in force; `None` when none is.
@@ -49,6 +51,9 @@ pub struct ChannelStanding {
     pub valid_until: Option<Timestamp>,
     /// Whether the screen is locked out.
     pub locked_out: bool,
+    /// The uncorrected error does not reach its limit before this instant, as the outlook in force
+    /// says: what service is planned by. `None` where nothing can be said.
+    pub limit_not_before: Option<Timestamp>,
 }
 
 /// How one reference stands.

@@ -71,6 +71,8 @@ pub(super) fn output_kind(output: &Output) -> &'static str {
         Output::Correction(_) => "correction",
         Output::Withdrawn { .. } => "withdrawn",
         Output::Corrected(_) => "corrected",
+        Output::Outlook(_) => "outlook",
+        Output::OutlookWithdrawn { .. } => "outlook-withdrawn",
         Output::Alarm(_) => "alarm",
         Output::Degree(_) => "degree",
         Output::Pair(_) => "pair",

@@ -12,8 +12,9 @@
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Gate, Input, Output, Reading, Source};
 use holdtrue_engine::setup::{
-    AlarmSetup, ChannelId, ChannelSetup, Clock, Criterion, FitSetup, PairNoise, PublishSetup,
-    ReferenceId, ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped, WindowLength,
+    AlarmSetup, ChannelId, ChannelSetup, Clock, Criterion, DecisionRule, FitSetup, PairNoise,
+    PublishSetup, ReferenceId, ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped,
+    WindowLength,
 };
 use holdtrue_engine::time::{Duration, Timestamp};
 use rand_chacha::rand_core::SeedableRng as _;
@@ -92,6 +93,8 @@ pub fn channel(name: &str, reference: u32) -> ChannelSetup {
             max_rate: None,
         },
         max_permissible_error: None,
+        decision_rule: DecisionRule::GuardBand { multiple: 1.0 },
+        service_horizon: span(14.0 * 86_400.0),
         resolution: 0.0,
         noise: 0.0,
         max_drift_rate: None,

@@ -6,7 +6,7 @@ mod health;
 use super::Scene;
 use super::judgement::Judgement;
 use crate::alarm::{Alarm, Condition, Delays, Move};
-use crate::event::{AlarmChange, AlarmKind, AlarmState, Output, Subject};
+use crate::event::{AlarmChange, AlarmKind, AlarmState, Output, Subject, TimeToLimit};
 use crate::report::Report;
 use crate::setup::{ChannelId, ChannelSetup};
 use crate::standing::AlarmStanding;
@@ -19,6 +19,7 @@ use serde::{Deserialize, Serialize};
 pub(crate) struct ChannelAlarms {
     error_limit: Alarm,
     drift_rate: Alarm,
+    time_to_limit: Alarm,
     data_gap: Alarm,
     screen_locked_out: Alarm,
     stuck: Alarm,
@@ -61,6 +62,7 @@ impl ChannelAlarms {
                 .error_limit
                 .evaluate(condition, scene.now, delays(setup));
             tell(AlarmKind::ErrorLimit, step, said, scene, report);
+            self.supersede(scene, report);
         }
         if let Some(limit) = setup.max_drift_rate {
             let deadband = setup.alarms.deadband * judgement.slope_u;
@@ -78,6 +80,47 @@ impl ChannelAlarms {
                 .evaluate(condition, scene.now, delays(setup));
             tell(AlarmKind::DriftRate, step, said, scene, report);
         }
+    }
+
+    /// One condition, one alarm: what the time-to-limit alarm foretold has come, and the error-limit
+    /// alarm speaks from now on.
+    fn supersede(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        if self.error_limit.is_raised() {
+            let at_once = Delays { on: 1, off: 1 };
+            let step = self
+                .time_to_limit
+                .evaluate(Condition::Gone, scene.now, at_once);
+            let said = limit_ahead(TimeToLimit::Reached, scene);
+            tell(AlarmKind::TimeToLimit, step, said, scene, report);
+        }
+    }
+
+    /// Evaluates a forecast, made when segments closed: whether the error may reach its limit within
+    /// the service horizon. As with the drift rate, only a drift that the degree has been raised
+    /// for is one.
+    pub(crate) fn forecast(
+        &mut self,
+        forecast: TimeToLimit,
+        drifts: bool,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
+        if self.error_limit.is_raised() {
+            return;
+        }
+        let condition = match forecast {
+            TimeToLimit::Forecast { earliest, .. } => {
+                within_horizon(earliest.since(scene.now), drifts, scene.setup)
+            }
+            // At the limit, but not yet for long enough: the error-limit alarm is about to speak.
+            TimeToLimit::Reached => Condition::Between,
+            _ => Condition::Gone,
+        };
+        let step = self
+            .time_to_limit
+            .evaluate(condition, scene.now, delays(scene.setup));
+        let said = limit_ahead(forecast, scene);
+        tell(AlarmKind::TimeToLimit, step, said, scene, report);
     }
 
     /// Evaluates whether the screen is locked out, after a pair. Its own count is the delay: raised
@@ -140,10 +183,11 @@ impl ChannelAlarms {
     }
 
     /// All alarms with their kinds.
-    fn all(&self) -> [(AlarmKind, &Alarm); 6] {
+    fn all(&self) -> [(AlarmKind, &Alarm); 7] {
         [
             (AlarmKind::ErrorLimit, &self.error_limit),
             (AlarmKind::DriftRate, &self.drift_rate),
+            (AlarmKind::TimeToLimit, &self.time_to_limit),
             (AlarmKind::DataGap, &self.data_gap),
             (AlarmKind::ScreenLockedOut, &self.screen_locked_out),
             (AlarmKind::Stuck, &self.stuck),
@@ -198,6 +242,11 @@ impl ChannelAlarms {
                 AlarmKind::DriftRate,
                 &mut self.drift_rate,
                 after.max_drift_rate.is_none(),
+            ),
+            (
+                AlarmKind::TimeToLimit,
+                &mut self.time_to_limit,
+                after.max_permissible_error.is_none(),
             ),
             (
                 AlarmKind::DataGap,
@@ -263,6 +312,19 @@ fn beyond(value: f64, limit: f64, deadband: f64) -> Condition {
     }
 }
 
+/// Whether an instant so far ahead is within the service horizon, or clear of it by a quarter. A
+/// drift that is not announced raises nothing, but keeps what is raised.
+fn within_horizon(ahead: Duration, drifts: bool, setup: &ChannelSetup) -> Condition {
+    let horizon = setup.service_horizon;
+    if ahead <= horizon && drifts {
+        Condition::Holds
+    } else if ahead.0 <= horizon.0.saturating_add(horizon.0 / 4) {
+        Condition::Between
+    } else {
+        Condition::Gone
+    }
+}
+
 fn tell(
     kind: AlarmKind,
     step: Option<Move>,
@@ -323,6 +385,50 @@ fn drift_rate(judgement: &Judgement, limit: f64, setup: &ChannelSetup) -> Said {
         ),
         cleared: format!("drifts by {slope} {unit}, within {limit_read} {unit} again"),
         unit,
+    }
+}
+
+fn limit_ahead(forecast: TimeToLimit, scene: &Scene<'_>) -> Said {
+    let setup = scene.setup;
+    let unit = &setup.unit;
+    let limit = readable(setup.max_permissible_error.unwrap_or(0.0));
+    let horizon = setup.service_horizon.days();
+    let (value, raised) = match forecast {
+        TimeToLimit::Forecast {
+            earliest,
+            central,
+            latest,
+            ..
+        } => {
+            let when = |instant: Option<Timestamp>| {
+                instant.map_or("beyond the horizon".to_owned(), |it| {
+                    it.up_to_second().to_string()
+                })
+            };
+            let text = format!(
+                "the error reaches the maximum permissible error of {limit} {unit} at the earliest                  {} (most likely {}, at the latest {}); plan service before the earliest",
+                earliest.up_to_second(),
+                when(central),
+                when(latest)
+            );
+            (earliest.since(scene.now).days(), text)
+        }
+        _ => (0.0, String::new()),
+    };
+    let cleared = if forecast == TimeToLimit::Reached {
+        format!("the limit of {limit} {unit} is reached: see the error-limit alarm")
+    } else {
+        format!(
+            "no longer expected to reach {limit} {unit} within {} d",
+            readable(horizon)
+        )
+    };
+    Said {
+        value,
+        limit: horizon,
+        unit: "d".to_owned(),
+        raised,
+        cleared,
     }
 }
 

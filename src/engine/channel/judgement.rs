@@ -7,8 +7,8 @@
 //! q²/12 make of the rows; where even so nothing is left (two equal values, nothing declared), u is
 //! not known and no conformity is stated.
 
-use super::Scene;
-use crate::event::Zone;
+use super::{Scene, conformity};
+use crate::event::Conformity;
 use crate::fit::Published;
 use crate::quantile;
 use crate::setup::{ChannelSetup, ReferenceSetup};
@@ -46,8 +46,8 @@ pub(crate) struct Judgement {
     /// k of the slope: on the fit's own degrees of freedom, since what is common to all pairs does
     /// not move it (GUM H.3.6).
     pub(crate) slope_k: f64,
-    /// Where ê ± U stands; `None` without a maximum permissible error, or while u is not known.
-    pub(crate) zone: Option<Zone>,
+    /// Where ê ± U stands against the maximum permissible error.
+    pub(crate) conformity: Conformity,
     /// The fit.
     pub(crate) published: Published,
 }
@@ -78,11 +78,6 @@ impl Judgement {
         let slope_u = slope_variance(&published).max(0.0).sqrt();
         let slope_k =
             quantile::student(scene.setup.coverage, published.degrees_of_freedom.max(1.0));
-        let zone = scene
-            .setup
-            .max_permissible_error
-            .filter(|_| u > 0.0)
-            .map(|limit| zone(error, k * u, limit));
         let judgement = Self {
             error,
             u,
@@ -92,7 +87,7 @@ impl Judgement {
             slope,
             slope_u,
             slope_k,
-            zone,
+            conformity: conformity::state(error, u, k * u, scene),
             published,
         };
         judgement.is_finite().then_some(judgement)
@@ -141,21 +136,6 @@ fn slope_variance(published: &Published) -> f64 {
         .and_then(|row| row.get(1))
         .copied()
         .unwrap_or(0.0)
-}
-
-/// Where an error with its expanded uncertainty stands against the maximum permissible error
-/// (ILAC-G8:09/2019, 4.2.3).
-pub(crate) fn zone(error: f64, expanded: f64, limit: f64) -> Zone {
-    let error = error.abs();
-    if error + expanded <= limit {
-        Zone::Pass
-    } else if error <= limit {
-        Zone::ConditionalPass
-    } else if error - expanded <= limit {
-        Zone::ConditionalFail
-    } else {
-        Zone::Fail
-    }
 }
 
 /// ν of a sum of variances, each with its own ν; parts not listed are known exactly
@@ -287,21 +267,6 @@ mod tests {
                 effective_sample_size: 0.0,
                 lag_one: 0.0,
             },
-        }
-    }
-
-    /// Check value V38: maximum permissible error 1.0, U 0.2.
-    #[test]
-    fn four_zones() {
-        let cases = [
-            (0.7, Zone::Pass),
-            (0.9, Zone::ConditionalPass),
-            (1.1, Zone::ConditionalFail),
-            (1.3, Zone::Fail),
-        ];
-        for (error, expected) in cases {
-            assert_eq!(zone(error, 0.2, 1.0), expected);
-            assert_eq!(zone(-error, 0.2, 1.0), expected);
         }
     }
 

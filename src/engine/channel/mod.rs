@@ -4,7 +4,8 @@
 //! ```text
 //!   indication ─┐            ┌─ rejected: told with test and threshold
 //!               ├─ pairing ─▶ screening ─▶ fit ─▶ judgement ─┬─▶ publishing: corrections
-//!   reference ──┘                          │                 └─▶ conditions: alarms
+//!   reference ──┘                          │                 ├─▶ outlook: what lies ahead
+//!                                          │                 └─▶ conditions: alarms
 //!                                          └─▶ degree changes
 //! ```
 //!
@@ -13,7 +14,10 @@
 
 mod checks;
 mod conditions;
+mod conformity;
+mod forecast;
 mod judgement;
+mod outlook;
 mod pairing;
 mod publishing;
 mod review;
@@ -33,6 +37,7 @@ use crate::track::{Sample, Track};
 use checks::Checks;
 pub(crate) use checks::jumps;
 use conditions::ChannelAlarms;
+use outlook::OutlookStation;
 pub(crate) use pairing::{Answer, Rows};
 use pairing::{Found, Pair, Pairing};
 use publishing::Publishing;
@@ -63,6 +68,7 @@ pub(crate) struct Channel {
     checks: Checks,
     stretch: Stretch,
     publishing: Publishing,
+    outlook: OutlookStation,
     alarms: ChannelAlarms,
     /// From when on the channel's silence counts while it has said nothing.
     began: Option<Timestamp>,
@@ -79,6 +85,7 @@ impl Channel {
             checks: Checks::default(),
             stretch: Stretch::new(1, setup),
             publishing: Publishing::new(issued),
+            outlook: OutlookStation::default(),
             alarms: ChannelAlarms::default(),
             began: None,
             last_reference: None,
@@ -203,6 +210,7 @@ impl Channel {
         }
         self.stretch.edit(after);
         self.publishing.review();
+        self.outlook.edit(id, after, now, report);
         self.wake = Some(Timestamp(i64::MIN));
     }
 
@@ -229,6 +237,7 @@ impl Channel {
                 ),
             });
         }
+        self.outlook.step_back(id, to, report);
         self.began = self.began.map(|began| began.min(to));
         self.wake = Some(Timestamp(i64::MIN));
     }
@@ -247,6 +256,12 @@ impl Channel {
                 channel: id,
                 at: now,
                 why: format!("{}: {why}", setup.name),
+            });
+        }
+        if self.outlook.outlook().is_some() {
+            report.say(Output::OutlookWithdrawn {
+                channel: id,
+                at: now,
             });
         }
         self.alarms.dismiss(id, setup, now, why, report);
@@ -273,11 +288,13 @@ impl Channel {
             degree: judged.map(|judged| judged.degree),
             correction: judged.map(|judged| judged.correction),
             standard_uncertainty: judged.map(|judged| judged.u),
-            zone: judged.and_then(|judged| judged.zone),
+            zone: judged.and_then(|judged| judged.conformity.zone()),
+            accepted: judged.and_then(|judged| judged.conformity.accepted()),
             corrected_zone: correction.and_then(|document| document.corrected_zone),
             issue_number: correction.map(|document| document.issue_number),
             valid_until: correction.map(|document| document.valid_until),
             locked_out: self.stretch.is_locked_out(),
+            limit_not_before: self.outlook.outlook().and_then(|it| it.recalibration.by),
         }
     }
 
@@ -302,9 +319,10 @@ impl Channel {
                 }),
             }
         }
-        if self.publishing.is_due(scene.now) {
+        if self.publishing.is_due(scene.now) || self.outlook.is_due(scene.now) {
             self.judge(scene, report);
             self.publishing.expire(scene, report);
+            self.outlook.expire(scene, report);
         }
         let silent = self.silent(scene);
         self.alarms.silence(silent, scene, report);
@@ -357,9 +375,14 @@ impl Channel {
             .gap_after
             .filter(|_| !self.alarms.gap_is_raised())
             .map(|limit| self.silent_since(scene).plus(limit).plus(Duration(1)));
-        [self.pairing.due(), self.publishing.wake(), gap]
-            .into_iter()
-            .flatten()
-            .min()
+        [
+            self.pairing.due(),
+            self.publishing.wake(),
+            self.outlook.wake(),
+            gap,
+        ]
+        .into_iter()
+        .flatten()
+        .min()
     }
 }

@@ -15,10 +15,10 @@
 //! Legendre polynomials `P_j`, f in windows.) Young windows hold at least twice the mean time
 //! between pairs, so that a document outlives the wait for the next pair.
 
-use super::Scene;
-use super::judgement::{Judgement, polynomial, variance_at, zone};
+use super::judgement::{Judgement, polynomial, variance_at};
 use super::review::MOVED_PART;
 use super::stretch::Learned;
+use super::{Scene, conformity};
 use crate::event::{Corrected, Correction, Output, WindowSeen};
 use crate::fit::Published;
 use crate::report::Report;
@@ -213,6 +213,7 @@ impl Publishing {
             .map(|&coefficient| if suppressed { 0.0 } else { 0.0 - coefficient })
             .collect();
         let expanded = judgement.k * judgement.u + hidden;
+        let corrected = conformity::state(0.0, judgement.u, expanded, scene);
         Correction {
             channel: scene.id,
             issue_number: self.issued + 1,
@@ -234,12 +235,10 @@ impl Publishing {
             expanded_uncertainty: expanded,
             degrees_of_freedom: judgement.nu,
             covariance: published.covariance.clone(),
-            zone: judgement.zone,
-            corrected_zone: scene
-                .setup
-                .max_permissible_error
-                .filter(|_| judgement.u > 0.0)
-                .map(|limit| zone(0.0, expanded, limit)),
+            rule: scene.setup.decision_rule,
+            zone: judgement.conformity.zone(),
+            accepted: judgement.conformity.accepted(),
+            corrected_zone: corrected.zone(),
             window: published.window,
             criterion: published.criterion.clone(),
             residual_sd: published.residual_sd,
@@ -260,6 +259,8 @@ impl Publishing {
                 document.degree,
                 document.suppressed,
                 document.zone,
+                document.accepted,
+                document.rule,
                 document.corrected_zone,
             )
         };
@@ -312,7 +313,7 @@ fn instants(from: Timestamp, to: Timestamp) -> impl Iterator<Item = Timestamp> {
 }
 
 /// Until when a document issued now may hold.
-fn valid_until(published: &Published, scene: &Scene<'_>) -> Timestamp {
+pub(super) fn valid_until(published: &Published, scene: &Scene<'_>) -> Timestamp {
     let curved: f64 = published.weights.iter().skip(2).sum();
     let part = if curved >= HAS_WEIGHT || published.degree >= 2 {
         4

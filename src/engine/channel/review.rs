@@ -2,7 +2,7 @@
 
 use super::judgement::{self, Judgement};
 use super::{Channel, Scene};
-use crate::event::{Subject, Zone};
+use crate::event::{Conformity, Subject};
 use crate::report::Report;
 use serde::{Deserialize, Serialize};
 
@@ -23,7 +23,7 @@ pub(super) struct Judged {
     pub(super) degree: u8,
     pub(super) correction: f64,
     pub(super) u: f64,
-    pub(super) zone: Option<Zone>,
+    pub(super) conformity: Conformity,
     /// What the plain fit said at the newest pair.
     plain: Option<f64>,
     /// The degree with the most weight, by which it said so.
@@ -91,16 +91,30 @@ impl Channel {
             degree: judgement.published.degree,
             correction: 0.0 - judgement.error,
             u: judgement.u,
-            zone: judgement.zone,
+            conformity: judgement.conformity,
             plain: self.plain(leading),
             leading,
             group: self.stretch.fit().newest_group(),
         });
         let learned = self.stretch.learned();
         self.publishing.consider(&judgement, learned, scene, report);
-        // A review that only time brought about says nothing new: an alarm's delay counts pairs.
+        let correction = self.publishing.correction();
+        let corrected_zone = correction.and_then(|document| document.corrected_zone);
+        let forecast = self.outlook.consider(
+            &judgement,
+            (self.stretch.fit(), declared),
+            corrected_zone,
+            scene,
+            report,
+        );
+        // A review that only time brought about says nothing new: an alarm's delay counts pairs,
+        // that of a forecast the segments that it rests on.
         if fresh {
             self.alarms.judge(&judgement, scene, report);
+        }
+        if let Some(forecast) = forecast {
+            let drifts = judgement.published.degree > 0;
+            self.alarms.forecast(forecast, drifts, scene, report);
         }
     }
 }

@@ -1,8 +1,8 @@
 //! Setups for the stations' unit tests.
 
 use crate::setup::{
-    AlarmSetup, ChannelSetup, Criterion, FitSetup, PairNoise, PublishSetup, ReferenceId,
-    ScreeningSetup, WindowLength,
+    AlarmSetup, ChannelSetup, Criterion, DecisionRule, FitSetup, PairNoise, PublishSetup,
+    ReferenceId, ScreeningSetup, WindowLength,
 };
 use crate::time::Duration;
 
@@ -34,6 +34,8 @@ pub(crate) fn channel_setup() -> ChannelSetup {
             max_rate: None,
         },
         max_permissible_error: None,
+        decision_rule: DecisionRule::GuardBand { multiple: 1.0 },
+        service_horizon: Duration::from_seconds(14 * 86_400),
         resolution: 0.0,
         noise: 0.0,
         max_drift_rate: None,

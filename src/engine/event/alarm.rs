@@ -11,6 +11,8 @@ pub enum AlarmKind {
     ErrorLimit,
     /// The drift is faster than permitted.
     DriftRate,
+    /// The uncorrected error may reach its limit within the service horizon.
+    TimeToLimit,
     /// No reference value for too long.
     ReferenceStale,
     /// No indication for too long.

@@ -1,6 +1,6 @@
 //! A correction and what it rests on.
 
-use crate::setup::ChannelId;
+use crate::setup::{ChannelId, DecisionRule};
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
@@ -40,9 +40,13 @@ pub struct Correction {
     pub degrees_of_freedom: f64,
     /// Covariance of `zero` (row by row, unit² per day^(i+j)), of the fit alone.
     pub covariance: Vec<Vec<f64>>,
-    /// Where the uncorrected error stands against the maximum permissible error; `None` without
-    /// one.
+    /// By what rule the error is accepted or not.
+    pub rule: DecisionRule,
+    /// Where the uncorrected error stands against the maximum permissible error; `None` where no
+    /// conformity can be stated (see [`Conformity`](crate::event::Conformity)).
     pub zone: Option<Zone>,
+    /// Whether the uncorrected error is accepted under the rule; `None` like the zone.
+    pub accepted: Option<bool>,
     /// The same for the corrected value.
     pub corrected_zone: Option<Zone>,
     /// What the fit looked at.

@@ -11,6 +11,7 @@ mod correction;
 mod degree;
 mod input;
 mod notice;
+mod outlook;
 mod pair;
 
 pub use alarm::{AlarmChange, AlarmKind, AlarmState};
@@ -18,6 +19,10 @@ pub use correction::{Corrected, Correction, CriterionValues, WindowSeen, Zone};
 pub use degree::{DegreeChange, Evidence};
 pub use input::{Gate, Reading, Refused, RefusedReason, Source, Supplied};
 pub use notice::Notice;
+pub use outlook::{
+    AsFound, Cadence, Conformity, Drift, NoStatement, Outlook, Recalibration, Staircase,
+    TimeToLimit,
+};
 pub use pair::{Flag, PairFate, Rejection, SPIKE_FAILS};
 
 use crate::setup::{ChannelId, ReferenceId, Setup};
@@ -64,6 +69,15 @@ pub enum Output {
     },
     /// A corrected value (only where configured).
     Corrected(Corrected),
+    /// What lies ahead of a channel changed notably.
+    Outlook(Box<Outlook>),
+    /// The channel's outlook no longer holds; the retained document is to be cleared.
+    OutlookWithdrawn {
+        /// Which channel.
+        channel: ChannelId,
+        /// When.
+        at: Timestamp,
+    },
     /// An alarm changed its state.
     Alarm(AlarmChange),
     /// The announced degree changed, with the evidence.

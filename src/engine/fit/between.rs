@@ -12,6 +12,7 @@ use crate::fit::factor::{Factor, MAX_COLUMNS};
 use crate::fit::kernel::MAX_WIDTH;
 use crate::fit::segment::Segment;
 use crate::fit::window::{Cut, Window};
+use crate::time::Timestamp;
 use std::borrow::Cow;
 
 /// A window cut finer than this is judged on so many groups of its segments. More would cost time
@@ -28,6 +29,8 @@ pub(crate) struct Group<'a> {
     pub(crate) factor: Cow<'a, Factor>,
     /// Where its errors count from.
     pub(crate) level: f64,
+    /// Oldest phenomenon time of a row.
+    pub(crate) first: Timestamp,
 }
 
 /// The segments of a window, as they are judged.
@@ -126,12 +129,14 @@ impl<'a> Group<'a> {
         Self {
             factor: Cow::Borrowed(segment.factor()),
             level: segment.level(),
+            first: segment.first(),
         }
     }
 
     fn take(&mut self, segment: &Segment) {
         let level = self.level - segment.level();
         self.factor.to_mut().merge_level(segment.factor(), level);
+        self.first = self.first.min(segment.first());
     }
 }
 

@@ -56,20 +56,36 @@ pub struct Plain {
 }
 
 /// The scatter that the uncertainty rests on.
-struct Scatter {
+pub(super) struct Scatter {
     /// Variance of a row of weight 1.
-    variance: f64,
-    degrees_of_freedom: f64,
+    pub(super) variance: f64,
+    pub(super) degrees_of_freedom: f64,
     /// (1 + r)/(1 − r).
-    inflation: f64,
+    pub(super) inflation: f64,
     /// n_eff.
     effective: f64,
 }
 
 impl Scatter {
+    /// What the segments show, with the correlation to count with; `None` if they leave no degree of
+    /// freedom.
+    pub(super) fn of(between: &Between) -> Option<Self> {
+        let segments = between.segments;
+        if segments < LEAST_SEGMENTS || between.degrees_of_freedom() < 1.0 {
+            return None;
+        }
+        let r = cautious(between.lag_one, between.largest + 1, segments, PUBLISHING);
+        Some(Self {
+            variance: between.variance(),
+            degrees_of_freedom: between.degrees_of_freedom(),
+            inflation: variance_inflation(r),
+            effective: effective_sample_size(segments as f64, r),
+        })
+    }
+
     /// The same, but no less than what is known beforehand of a row: values that happen to be equal
     /// are not known exactly.
-    fn at_least(self, variance: f64) -> Self {
+    pub(super) fn at_least(self, variance: f64) -> Self {
         if self.variance * self.inflation >= variance {
             return self;
         }
@@ -187,7 +203,7 @@ impl Fit {
     }
 
     /// Moves a factor in the window's frame to days from `origin`.
-    fn count_days_from(&self, origin: Timestamp, factor: &mut Factor) {
+    pub(super) fn count_days_from(&self, origin: Timestamp, factor: &mut Factor) {
         let frame = self.window.frame();
         let columns = self.window.columns();
         columns.count_days_from(factor, frame, frame.scaled(origin));
@@ -213,17 +229,8 @@ impl Fit {
 
     fn scatter(&self, judged: Option<&Judged>) -> Scatter {
         let segments = judged.map_or(0, |judged| judged.between.segments);
-        if let Some(Judged { between, .. }) = judged
-            && segments >= LEAST_SEGMENTS
-            && between.degrees_of_freedom() >= 1.0
-        {
-            let r = cautious(between.lag_one, between.largest + 1, segments, PUBLISHING);
-            return Scatter {
-                variance: between.variance(),
-                degrees_of_freedom: between.degrees_of_freedom(),
-                inflation: variance_inflation(r),
-                effective: effective_sample_size(segments as f64, r),
-            };
+        if let Some(scatter) = judged.and_then(|judged| Scatter::of(&judged.between)) {
+            return scatter;
         }
         let sd = self.rows_sd(0);
         let r = cautious(1.0, 1, segments, PUBLISHING);
@@ -237,7 +244,7 @@ impl Fit {
 }
 
 /// All groups merged, each weighted as the between-segments problem says, at the level returned.
-fn reweighted(groups: &Groups<'_>, between: Option<&Between>) -> Option<(Factor, f64)> {
+pub(super) fn reweighted(groups: &Groups<'_>, between: Option<&Between>) -> Option<(Factor, f64)> {
     let newest = groups.open.as_ref().or(groups.closed.last())?;
     let level = newest.level;
     let mut merged = Factor::new(newest.factor.columns());

@@ -14,15 +14,21 @@
 //! - `between`: segments of the window, each taken as one row
 //! - `degree`: when the announced degree is raised and lowered
 //! - [`mean`]: the published mean over degrees and its uncertainty
+//! - [`line`]: the straight line of recent pairs that forecasts rest on
+//! - [`forecast`]: where a line with its band meets a limit
+//! - [`cadence`]: how long a drift takes to be seen
 
 pub mod basis;
 mod between;
+pub mod cadence;
 pub mod correlation;
 pub mod criterion;
 pub mod cut;
 mod degree;
 pub mod factor;
+pub mod forecast;
 mod kernel;
+pub mod line;
 pub mod mean;
 pub mod row;
 pub mod segment;

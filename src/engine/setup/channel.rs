@@ -26,6 +26,10 @@ pub struct ChannelSetup {
     pub screening: ScreeningSetup,
     /// Largest error that the specification permits, either sign; `None`: no conformity statement.
     pub max_permissible_error: Option<f64>,
+    /// How an error with its uncertainty is accepted or not.
+    pub decision_rule: DecisionRule,
+    /// How far ahead service is planned: an error that may reach its limit sooner raises an alarm.
+    pub service_horizon: Duration,
     /// Smallest step that the indication can show; enters u as q/√12 (GUM F.2.2.1) and floors the
     /// robust scale.
     pub resolution: f64,
@@ -42,6 +46,37 @@ pub struct ChannelSetup {
     pub alarms: AlarmSetup,
     /// Publish every corrected value as well.
     pub corrected_values: bool,
+}
+
+/// How an error with its expanded uncertainty U is accepted or not (ILAC-G8:09/2019, 4.2.2;
+/// JCGM 106:2012, 8.3, from memory): accepted when |e| ≤ MPE − w, w the guard band.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub enum DecisionRule {
+    /// w = 0: an error at the limit is accepted wrongly half of the time.
+    Simple,
+    /// w = r·U. With U at 95 %, fewer than 2.5 % are accepted wrongly at r = 1, 5 % at r = 0.83 and
+    /// 0.16 % at r = 1.5 (the last two from memory).
+    GuardBand {
+        /// r, greater than zero.
+        multiple: f64,
+    },
+}
+
+impl DecisionRule {
+    /// w for an expanded uncertainty, in the unit of the error.
+    #[must_use]
+    pub fn guard_band(self, expanded: f64) -> f64 {
+        match self {
+            Self::Simple => 0.0,
+            Self::GuardBand { multiple } => multiple * expanded,
+        }
+    }
+
+    /// Whether an error is accepted against a maximum permissible error.
+    #[must_use]
+    pub fn accepts(self, error: f64, expanded: f64, limit: f64) -> bool {
+        error.abs() <= limit - self.guard_band(expanded)
+    }
 }
 
 /// What may enter the fit (design: screening).
@@ -101,4 +136,34 @@ pub struct AlarmSetup {
     pub deadband: f64,
     /// No accepted indication for this long raises the data-gap alarm; `None`: never.
     pub gap_after: Option<Duration>,
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// ILAC-G8:09/2019, 4.2.2: AL = TL − w; limit 1.0, U 0.2.
+    #[test]
+    fn a_guard_band_moves_the_acceptance_limit() {
+        let rules = [
+            (DecisionRule::Simple, 1.0),
+            (DecisionRule::GuardBand { multiple: 0.83 }, 0.834),
+            (DecisionRule::GuardBand { multiple: 1.0 }, 0.8),
+            (DecisionRule::GuardBand { multiple: 1.5 }, 0.7),
+        ];
+        for (rule, acceptance) in rules {
+            for sign in [-1.0, 1.0] {
+                assert!(
+                    rule.accepts(sign * (acceptance - 1e-9), 0.2, 1.0),
+                    "{rule:?}"
+                );
+                assert!(
+                    !rule.accepts(sign * (acceptance + 1e-9), 0.2, 1.0),
+                    "{rule:?}"
+                );
+            }
+        }
+        // U beyond the limit: nothing can be accepted.
+        assert!(!DecisionRule::GuardBand { multiple: 1.0 }.accepts(0.0, 1.1, 1.0));
+    }
 }

@@ -8,9 +8,11 @@ mod channel;
 mod fit;
 mod reference;
 
-pub use channel::{AlarmSetup, ChannelSetup, PublishSetup, RateLimit, Repeats, ScreeningSetup};
+pub use channel::{
+    AlarmSetup, ChannelSetup, DecisionRule, PublishSetup, RateLimit, Repeats, ScreeningSetup,
+};
 pub use fit::{Criterion, FitSetup, PairNoise, SpanSide, WindowLength};
-pub use reference::{ReferenceKind, ReferenceSetup, Stamped};
+pub use reference::{ReferenceKind, ReferenceSetup, Stamped, UNCERTAINTY_RATIO_MIN};
 
 use serde::{Deserialize, Serialize};
 

@@ -30,6 +30,28 @@ pub struct ReferenceSetup {
     pub stamped: Stamped,
 }
 
+/// A maximum permissible error should be at least so many times the reference's expanded
+/// uncertainty (test uncertainty ratio 4:1, common practice).
+pub const UNCERTAINTY_RATIO_MIN: f64 = 4.0;
+/// Coverage factor of that expanded uncertainty.
+const RATIO_COVERAGE_FACTOR: f64 = 2.0;
+
+impl ReferenceSetup {
+    /// U of one value as declared, k = 2; 0 if nothing is declared.
+    #[must_use]
+    pub fn expanded_uncertainty(&self) -> f64 {
+        let (each, common) = (self.uncertainty_each, self.uncertainty_common);
+        RATIO_COVERAGE_FACTOR * (each * each + common * common).sqrt()
+    }
+
+    /// Whether it is good enough to state conformity with a maximum permissible error. One that is
+    /// not can still show a trend.
+    #[must_use]
+    pub fn is_good_enough_for(&self, limit: f64) -> bool {
+        self.expanded_uncertainty() * UNCERTAINTY_RATIO_MIN <= limit
+    }
+}
+
 /// Which instant of its interval a value's phenomenon time names.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
 pub enum Stamped {

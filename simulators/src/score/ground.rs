@@ -5,8 +5,8 @@ use super::chooser::Chooser;
 use super::world::{Delivery, Noise, Quantity, Reference, Sensor, World};
 use crate::behaviour::disturbance::Disturbance;
 use holdtrue_engine::setup::{
-    AlarmSetup, ChannelSetup, Clock, Criterion, FitSetup, PairNoise, PublishSetup, ReferenceId,
-    ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped, WindowLength,
+    AlarmSetup, ChannelSetup, Clock, Criterion, DecisionRule, FitSetup, PairNoise, PublishSetup,
+    ReferenceId, ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped, WindowLength,
 };
 use holdtrue_engine::time::Duration;
 
@@ -156,6 +156,8 @@ fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup
             max_rate: None,
         },
         max_permissible_error: Some(10.0 * deviation),
+        decision_rule: DecisionRule::GuardBand { multiple: 1.0 },
+        service_horizon: days(14.0),
         resolution: 0.0,
         noise: 0.0,
         max_drift_rate: None,

@@ -67,10 +67,24 @@ impl Line {
             return Some(from);
         }
         let square = edge * edge;
+        let Self {
+            level_variance: v00,
+            covariance: v01,
+            slope_variance: v11,
+            ..
+        } = self;
+        // A quarter of the discriminant is k²·(m²V₀₀ + 2dmV₀₁ + d²V₁₁ − k²·det V), d the distance
+        // and m the rate: so written, a narrow band does not cancel it away.
+        let form = rate * rate * v00 + 2.0 * distance * rate * v01 + distance * distance * v11;
+        let spread = square * (form - square * (v00 * v11 - v01 * v01));
+        if spread.is_nan() || spread < 0.0 {
+            return None;
+        }
         let roots = quadratic_roots(
-            rate * rate - square * self.slope_variance,
-            -2.0 * (distance * rate + square * self.covariance),
-            distance * distance - square * self.level_variance,
+            rate * rate - square * v11,
+            -(distance * rate + square * v01),
+            distance * distance - square * v00,
+            spread.sqrt(),
         );
         // Squaring has mixed in where the other edge meets the limit: each root belongs to the edge
         // that is nearer there.
@@ -80,31 +94,23 @@ impl Line {
         };
         roots
             .into_iter()
-            .flatten()
             .find(|&t| t > from && t.is_finite() && is_own(t))
     }
 }
 
-/// Real roots of a·t² + b·t + c, the smaller first; of a linear equation its one root, in the first
-/// place.
+/// The real roots of a·t² + 2h·t + c, the smaller first, from `root` = √(h² − ac); what is no root
+/// is not finite.
 ///
 /// The root of larger size is found without cancellation, the other from the product c/a (Press et
 /// al., *Numerical Recipes*, 3rd ed., §5.6; from memory).
-#[must_use]
-pub fn quadratic_roots(a: f64, b: f64, c: f64) -> [Option<f64>; 2] {
-    if a == 0.0 {
-        return [(b != 0.0).then(|| -c / b), None];
-    }
-    let discriminant = b * b - 4.0 * a * c;
-    if discriminant.is_nan() || discriminant < 0.0 {
-        return [None, None];
-    }
-    let q = -0.5 * (b + discriminant.sqrt().copysign(b));
-    if q == 0.0 {
-        return [Some(0.0), None];
-    }
+fn quadratic_roots(a: f64, h: f64, c: f64, root: f64) -> [f64; 2] {
+    let q = -(h + root.copysign(h));
     let (one, other) = (q / a, c / q);
-    [Some(one.min(other)), Some(one.max(other))]
+    if one < other {
+        [one, other]
+    } else {
+        [other, one]
+    }
 }
 
 #[cfg(test)]
@@ -200,27 +206,50 @@ mod tests {
         );
     }
 
+    /// Without noise the band is the line; a rounding of the discriminant must not lose the root.
+    #[test]
+    fn a_band_without_width_is_the_line() {
+        for variance in [0.0, 1e-40, 1e-18] {
+            let line = Line {
+                level: 0.1,
+                slope: 0.007,
+                level_variance: variance,
+                covariance: 0.3 * variance,
+                slope_variance: variance,
+            };
+            for edge in [-2.0, 0.0, 2.0] {
+                let t = line.reaches(1.0, edge, 3.0).expect("it drifts there");
+                let tolerance = 1e-14 + 1e3 * variance.sqrt();
+                assert_relative_eq!(t, 0.9 / 0.007, max_relative = tolerance);
+            }
+        }
+    }
+
     /// Check value V32: 0.1 + 0.01·t + 0.001·t² = 1 is first met after now at t = 25.414.
     #[test]
     fn a_parabola_meets_a_limit_at_its_first_root() {
-        let [before, after] = quadratic_roots(0.001, 0.01, 0.1 - 1.0);
-        let after = after.expect("it rises");
+        let (a, h, c): (f64, f64, f64) = (0.001, 0.005, 0.1 - 1.0);
+        let [before, after] = quadratic_roots(a, h, c, (h * h - a * c).sqrt());
         assert!((after - 25.414).abs() < 5e-4, "{after}");
-        assert!(before.expect("and once fell") < 0.0);
+        assert!(before < 0.0);
     }
 
     #[test]
     fn roots_survive_their_corners() {
-        assert_eq!(quadratic_roots(0.0, 2.0, -4.0), [Some(2.0), None]);
-        assert_eq!(quadratic_roots(0.0, 0.0, 1.0), [None, None]);
-        assert_eq!(quadratic_roots(1.0, 0.0, 1.0), [None, None]);
-        assert_eq!(quadratic_roots(1.0, 0.0, 0.0), [Some(0.0), None]);
-        assert_eq!(quadratic_roots(1.0, 0.0, -4.0), [Some(-2.0), Some(2.0)]);
-        assert_eq!(quadratic_roots(f64::MAX, f64::MAX, f64::MAX), [None, None]);
-        // Naively −b + √(b² − 4ac) loses all digits of the small root.
-        let [_, large] = quadratic_roots(1.0, -1e9, 1.0);
-        let [small, _] = quadratic_roots(1.0, -1e9, 1.0);
-        assert_relative_eq!(large.expect("two"), 1e9, max_relative = 1e-15);
-        assert_relative_eq!(small.expect("two"), 1e-9, max_relative = 1e-15);
+        let roots = |a: f64, h: f64, c: f64| quadratic_roots(a, h, c, (h * h - a * c).sqrt());
+        assert_eq!(roots(1.0, 0.0, -4.0), [-2.0, 2.0]);
+        // A linear equation: one root is finite.
+        let finite = |two: [f64; 2]| {
+            two.into_iter()
+                .filter(|t| t.is_finite())
+                .collect::<Vec<_>>()
+        };
+        assert_eq!(finite(roots(0.0, 1.0, -4.0)), [2.0]);
+        assert_eq!(finite(roots(0.0, 0.0, 0.0)), [0.0; 0]);
+        assert_eq!(finite(roots(f64::MAX, f64::MAX, f64::MAX)), [0.0; 0]);
+        // Naively −h + √(h² − ac) loses all digits of the small root.
+        let [small, large] = roots(1.0, -5e8, 1.0);
+        assert_relative_eq!(large, 1e9, max_relative = 1e-15);
+        assert_relative_eq!(small, 1e-9, max_relative = 1e-15);
     }
 }

@@ -41,7 +41,7 @@ impl Score {
             for scenario in &scenarios {
                 let class = scenario.class.name();
                 say(&format!(
-                    "{:<26} {class:<11} {}",
+                    "{:<28} {class:<11} {}",
                     scenario.name, scenario.purpose
                 ));
             }

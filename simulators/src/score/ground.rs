@@ -5,8 +5,9 @@ use super::chooser::Chooser;
 use super::world::{Delivery, Noise, Quantity, Reference, Sensor, World};
 use crate::behaviour::disturbance::Disturbance;
 use holdtrue_engine::setup::{
-    AlarmSetup, ChannelSetup, Clock, Criterion, DecisionRule, FitSetup, PairNoise, PublishSetup,
-    ReferenceId, ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped, WindowLength,
+    AlarmSetup, ChannelId, ChannelSetup, Clock, Criterion, DecisionRule, FitSetup, PairNoise,
+    PublishSetup, ReferenceId, ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped,
+    WindowLength,
 };
 use holdtrue_engine::time::Duration;
 
@@ -94,6 +95,41 @@ pub fn many(
     world
 }
 
+/// A world of `members` sensors of one quantity, each judged against the median of the others.
+#[must_use]
+pub fn group(chooser: Chooser, members: usize, noise: &[(f64, f64)]) -> World {
+    let mut world = many(chooser, 1, members, noise);
+    let deviation = world.sensors[0].noise.deviation();
+    let post = Reference {
+        quantity: None,
+        ..world.references[0].clone()
+    };
+    // The median of four: its own noise, and half a sigma that it is off by while one of the four
+    // is (the middle of the other three then is the mean of their larger two: 0.42 σ).
+    let setup = ReferenceSetup {
+        uncertainty_each: 0.55 * deviation,
+        uncertainty_common: 0.5 * deviation,
+        ..world.setup.references[0].clone()
+    };
+    world.references = vec![post; members];
+    world.setup.references = (0..members)
+        .map(|own| ReferenceSetup {
+            name: format!("group-of-{own}"),
+            kind: ReferenceKind::Group {
+                members: (0..members)
+                    .filter(|other| *other != own)
+                    .map(channel_id)
+                    .collect(),
+            },
+            ..setup.clone()
+        })
+        .collect();
+    for (own, channel) in world.setup.channels.iter_mut().enumerate() {
+        channel.reference = reference_id(own);
+    }
+    world
+}
+
 fn sensor(quantity: usize, noise: Noise) -> Sensor {
     Sensor {
         quantity,
@@ -144,7 +180,7 @@ fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup
             influences: 0,
             noise: PairNoise {
                 reference: REFERENCE_NOISE * deviation,
-                indication: 0.0,
+                indication: deviation,
             },
         },
         screening: ScreeningSetup {
@@ -159,7 +195,7 @@ fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup
         decision_rule: DecisionRule::GuardBand { multiple: 1.0 },
         service_horizon: days(14.0),
         resolution: 0.0,
-        noise: 0.0,
+        noise: deviation,
         max_drift_rate: None,
         coverage: 0.95,
         publish: PublishSetup {
@@ -183,6 +219,17 @@ pub fn reference_id(position: usize) -> ReferenceId {
         reason = "a world has a few references"
     )]
     let id = ReferenceId(position as u32);
+    id
+}
+
+/// The engine's name for the sensor at `position`.
+#[must_use]
+pub fn channel_id(position: usize) -> ChannelId {
+    #[allow(
+        clippy::cast_possible_truncation,
+        reason = "a world has a few hundred sensors"
+    )]
+    let id = ChannelId(position as u32);
     id
 }
 

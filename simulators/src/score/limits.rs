@@ -59,6 +59,9 @@ const CORRELATED: &[&str] = &["ar-0.5", "ar-0.8", "ar-0.9", "white-and-slow"];
 /// Scenarios in which sensors jump by three sigma or more in white noise.
 const JUMPING: &[&str] = &["step", "auto-baseline", "saw-tooth-undeclared"];
 
+/// Scenarios in which a reference goes bad, and nothing else does.
+const ONE_ALARM: &[&str] = &["fleet-one-bad-reference", "reference-step"];
+
 /// The table.
 const LIMITS: &[Limit] = &[
     limit(
@@ -98,10 +101,28 @@ const LIMITS: &[Limit] = &[
         "a 95 % interval, degree free, averaged over time (an undeclared influence is outside it)",
     ),
     limit(
-        Meant::Only(&["references-disagree"]),
+        Meant::Only(&["references-disagree", "reference-drift"]),
         Figure::Coverage,
         Bound::AtLeast(0.93),
         "a 95 % interval holds the declared common error of the reference",
+    ),
+    limit(
+        Meant::Only(&["span-ramp-constant-level"]),
+        Figure::Remaining,
+        Bound::AtMost(0.25),
+        "near the one level that is seen, a fading span is an offset that can be corrected",
+    ),
+    limit(
+        Meant::Only(&["span-steady-noisy-reference", "clock-step"]),
+        Figure::Worsened,
+        Bound::AtMost(1.0),
+        "what does not drift is left alone, whatever the other side of the pair does",
+    ),
+    limit(
+        Meant::Only(&["span-steady-noisy-reference", "group-common-mode"]),
+        Figure::FalseRaises,
+        Bound::AtMost(0.05),
+        "nothing drifts in what can be seen: one sensor in twenty over six windows at most",
     ),
     limit(
         Meant::Class(Class::Correctable, &[]),
@@ -128,10 +149,16 @@ const LIMITS: &[Limit] = &[
         "the limit is ten sigma away: no honest estimate crosses it by chance",
     ),
     limit(
-        Meant::All(&[]),
+        Meant::All(ONE_ALARM),
+        Figure::FalseAlarms,
+        Bound::AtMost(1.0),
+        "an alarm without a fault teaches people to ignore alarms: one in 100 000 readings at most",
+    ),
+    limit(
+        Meant::Only(ONE_ALARM),
         Figure::FalseAlarms,
         Bound::AtMost(0.0),
-        "an alarm without a fault teaches people to ignore alarms",
+        "one bad reference is one alarm, not one for each of its channels",
     ),
     limit(
         Meant::Class(Class::Detection, &[]),
@@ -152,10 +179,16 @@ const LIMITS: &[Limit] = &[
         "a jump of three sigma in white noise is found within 30 readings, 95 times in 100",
     ),
     limit(
-        Meant::Only(&["fleet-one-bad-reference"]),
+        Meant::Only(ONE_ALARM),
         Figure::Moved,
         Bound::AtMost(1.0),
         "a reference known to be bad moves no correction by more than its own u",
+    ),
+    limit(
+        Meant::Only(&["group-common-mode"]),
+        Figure::Moved,
+        Bound::AtMost(1.0),
+        "what all members share cancels: a correction from a group can't know of it",
     ),
 ];
 

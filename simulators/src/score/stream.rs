@@ -1,6 +1,6 @@
 //! A world at work: its readings in the order in which they arrive, each indication with its truth.
 
-use super::ground::{days, reference_id};
+use super::ground::{channel_id, days, reference_id};
 use super::world::{Delivery, Quantity, World};
 use crate::behaviour::disturbance::Disturber;
 use crate::noise::Autoregressive;
@@ -8,7 +8,6 @@ use crate::process::Process;
 use crate::range::{Draw, Duty};
 use crate::sensor::START;
 use holdtrue_engine::event::{Input, Reading, Source};
-use holdtrue_engine::setup::ChannelId;
 use holdtrue_engine::time::{Duration, Timestamp};
 use std::collections::VecDeque;
 
@@ -259,17 +258,6 @@ impl Post {
             truth: None,
         });
     }
-}
-
-/// The engine's name for the sensor at `position`.
-#[must_use]
-pub fn channel_id(position: usize) -> ChannelId {
-    #[allow(
-        clippy::cast_possible_truncation,
-        reason = "a world has a few hundred sensors"
-    )]
-    let id = ChannelId(position as u32);
-    id
 }
 
 /// `value` as a display with this smallest step shows it.

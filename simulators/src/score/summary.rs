@@ -32,7 +32,7 @@ pub enum Figure {
     Delay95,
     /// Limit alarms while the true error was well inside its limit, in all runs.
     FalseLimits,
-    /// Other alarms without a planted fault, in all runs.
+    /// Other alarms without a planted fault, per 100 000 indications.
     FalseAlarms,
     /// Days by which a time-to-limit alarm came before the limit was passed: median.
     Lead,
@@ -86,17 +86,13 @@ pub fn of(runs: &[Timed]) -> Summary {
         newest: (tally.newest_before.rms(), tally.newest_after.rms()),
         uncertainty: tally.uncertainty.rms(),
         documents: runs.iter().map(|run| run.trial.documents).sum(),
-        figures: figures(runs, &tally, &false_alarms),
+        figures: figures(runs, &tally, f64::from(false_alarms.values().sum::<u32>())),
         false_alarms,
         seconds: runs.iter().map(|run| run.seconds).sum(),
     }
 }
 
-fn figures(
-    runs: &[Timed],
-    tally: &Tally,
-    false_alarms: &BTreeMap<String, u32>,
-) -> BTreeMap<Figure, f64> {
+fn figures(runs: &[Timed], tally: &Tally, false_alarms: f64) -> BTreeMap<Figure, f64> {
     let count = |of: fn(&Timed) -> u32| f64::from(runs.iter().map(of).sum::<u32>());
     let trials = runs.len() as f64;
     let before = tally.newest_before.rms();
@@ -149,10 +145,7 @@ fn figures(
             Figure::FalseLimits,
             Some(count(|run| run.trial.findings.false_limits)),
         ),
-        (
-            Figure::FalseAlarms,
-            Some(f64::from(false_alarms.values().sum::<u32>())),
-        ),
+        (Figure::FalseAlarms, part(1e5 * false_alarms, indications)),
         (Figure::Lead, quantile(&leads, 0.5)),
         (
             Figure::Unforetold,

@@ -99,7 +99,7 @@ lead: days from the time-to-limit alarm to the limit. s: seconds of one core.\n"
 
 fn heading() -> String {
     format!(
-        "{:<26} {:<11} {:>4} {:>8} {:>15} {:>6} {:>6} {:>8} {:>9} {:>11} {:>6} {:>7} {:>5} {:>6}\n",
+        "{:<28} {:<11} {:>4} {:>8} {:>15} {:>6} {:>6} {:>8} {:>9} {:>11} {:>6} {:>7} {:>5} {:>6}\n",
         "scenario",
         "class",
         "runs",
@@ -143,13 +143,13 @@ fn line(text: &mut String, row: &Row) {
     let alarms = format!(
         "{}+{}",
         number(figure(Figure::FalseLimits), 0),
-        number(figure(Figure::FalseAlarms), 0)
+        row.summary.false_alarms.values().sum::<u32>(),
     );
     let broken = row.limits.iter().filter(|verdict| !verdict.holds).count();
     let mark = if broken > 0 { " BROKEN" } else { "" };
     let _ = writeln!(
         text,
-        "{:<26} {:<11} {runs:>4} {readings:>8} {rms:>15} {:>6} {cover:>6} {raises:>8} {:>9} \
+        "{:<28} {:<11} {runs:>4} {readings:>8} {rms:>15} {:>6} {cover:>6} {raises:>8} {:>9} \
          {delay:>11} {:>6} {alarms:>7} {:>5} {seconds:>6.1}{mark}",
         row.name,
         row.class.name(),

@@ -2,8 +2,9 @@
 
 use super::drifting::offset_ramp;
 use super::{Class, Scenario};
+use crate::behaviour::disturbance::Disturbance;
 use crate::score::chooser::Chooser;
-use crate::score::ground::days;
+use crate::score::ground::{WHITE, days, one};
 use crate::score::world::{Delivery, World};
 
 /// The scenarios of this file.
@@ -20,6 +21,12 @@ pub(super) const SCENARIOS: &[Scenario] = &[
         "the zero creeps, and reference values come days after they were sampled",
         late_laboratory,
     ),
+    Scenario::new(
+        Class::MustRefuse,
+        "clock-step",
+        "the sensor's clock is an hour off for some days: its pairs say nothing of its drift",
+        clock_step,
+    ),
 ];
 
 fn bad_delivery(chooser: Chooser) -> World {
@@ -30,6 +37,9 @@ fn bad_delivery(chooser: Chooser) -> World {
         delay: world.chooser.value("delay", "steps", 1.0, 4.0),
         clock_off: None,
     };
+    let from = world.chooser.value("gap", "d", 15.0, 30.0);
+    let to = from + world.chooser.value("gap_length", "d", 0.5, 2.0);
+    world.sensors[0].disturbance = Disturbance::DataGap { from, to };
     // Longer than the longest delay of 40 min.
     world.setup.channels[0].lateness = days(1.0 / 24.0);
     world
@@ -43,5 +53,21 @@ fn late_laboratory(chooser: Chooser) -> World {
         world.chooser.value("latest", "d", 0.6, 1.5),
     );
     world.setup.channels[0].lateness = days(2.0);
+    world
+}
+
+/// An hour at a daily swing of so many σ is a false error of up to 2π/24 of the swing.
+fn clock_step(chooser: Chooser) -> World {
+    let mut world = one(chooser, WHITE);
+    let noise = world.sensors[0].noise.deviation();
+    world.quantities[0].swing = noise * world.chooser.value("daily", "sigma", 2.0, 6.0);
+    world.quantities[0].wander = 0.0;
+    let from = world.chooser.value("from", "d", 12.0, 24.0);
+    let to = from + world.chooser.value("length", "d", 1.0, 4.0);
+    #[allow(clippy::cast_possible_truncation, reason = "an hour in seconds")]
+    let seconds = world.chooser.signed("hours", "h", 1.0, 1.0) as i64 * 3600;
+    world.sensors[0].delivery.clock_off = Some((from, to, seconds));
+    // The pairs do step when the clock does.
+    world.tolerated = vec!["step", "screen-locked-out", "noise-growth"];
     world
 }

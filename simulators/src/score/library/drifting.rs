@@ -3,7 +3,7 @@
 use super::{Class, Scenario};
 use crate::behaviour::curve::Curve;
 use crate::score::chooser::Chooser;
-use crate::score::ground::{RUN_DAYS, WHITE, one};
+use crate::score::ground::{RUN_DAYS, WHITE, group, one};
 use crate::score::world::World;
 use holdtrue_engine::time::Duration;
 
@@ -22,6 +22,37 @@ pub(super) const SCENARIOS: &[Scenario] = &[
         "the zero creeps, the true value ramps, and the sensor answers late by its declared lag",
         lagged,
     ),
+    scenario(
+        "span-ramp",
+        "the span fades while the level varies: zero and span must be told apart",
+        span_ramp,
+    ),
+    scenario(
+        "group-one-drifts",
+        "one of five redundant sensors drifts, each judged against the median of the others",
+        one_drifts,
+    ),
+    Scenario::new(
+        Class::MustRefuse,
+        "span-ramp-constant-level",
+        "the span fades at one level: an offset near it may be corrected, a span not be claimed",
+        span_ramp_at_one_level,
+    ),
+    Scenario::new(
+        Class::MustRefuse,
+        "span-steady-noisy-reference",
+        "no drift, and a reference so noisy against the level's spread that a span is made up",
+        noisy_reference,
+    ),
+    Scenario {
+        twin: Some(stop_drifting),
+        ..Scenario::new(
+            Class::MustRefuse,
+            "group-common-mode",
+            "all five redundant sensors drift alike: invisible, so nothing may be said",
+            all_drift,
+        )
+    },
 ];
 
 const fn scenario(
@@ -32,16 +63,22 @@ const fn scenario(
     Scenario::new(Class::Correctable, name, purpose, build)
 }
 
-/// A zero that creeps by 15 to 25 σ, from a day of the first week on.
-pub(super) fn offset_ramp(chooser: Chooser) -> World {
-    let mut world = one(chooser, WHITE);
+/// Draws a creep of 15 to 25 σ from a day of the first week on.
+fn ramp(world: &mut World) -> Curve {
     let noise = world.sensors[0].noise.deviation();
     let onset = world.chooser.value("onset", "d", 3.0, 8.0);
     let change = noise * world.chooser.signed("change", "sigma", 15.0, 25.0);
-    world.sensors[0].zero.push(Curve::Linear {
+    Curve::Linear {
         onset,
         rate: change / (RUN_DAYS - onset),
-    });
+    }
+}
+
+/// A zero that creeps.
+pub(super) fn offset_ramp(chooser: Chooser) -> World {
+    let mut world = one(chooser, WHITE);
+    let drift = ramp(&mut world);
+    world.sensors[0].zero.push(drift);
     // Where the beginning lies inside a window, the error has a bend that a parabola fits better.
     world.degrees = Some((1, 2));
     world
@@ -101,4 +138,71 @@ fn lagged(chooser: Chooser) -> World {
     world.sensors[0].lag = lag;
     world.setup.channels[0].lag = Duration::from_seconds(lag * world.cadence_seconds);
     world
+}
+
+/// Lets the span fade by 5 to 10 % over the run. The level varies by so many σ over a day.
+fn fading(chooser: Chooser, swing: (f64, f64)) -> World {
+    let mut world = one(chooser, WHITE);
+    let noise = world.sensors[0].noise.deviation();
+    world.quantities[0].swing = noise * world.chooser.value("varies", "sigma", swing.0, swing.1);
+    world.quantities[0].wander = 0.0;
+    let onset = world.chooser.value("onset", "d", 3.0, 8.0);
+    let fade = world.chooser.value("fade", "1", 0.05, 0.1);
+    world.sensors[0].span.push(Curve::Linear {
+        onset,
+        rate: -fade / (RUN_DAYS - onset),
+    });
+    world.setup.channels[0].fit.max_span_degree = Some(1);
+    world
+}
+
+fn span_ramp(chooser: Chooser) -> World {
+    fading(chooser, (20.0, 40.0))
+}
+
+fn span_ramp_at_one_level(chooser: Chooser) -> World {
+    fading(chooser, (0.0, 0.0))
+}
+
+/// Noise over spread of the regressor from 0.1 to 0.2, where a plain fit claims nearly every
+/// constant span.
+fn noisy_reference(chooser: Chooser) -> World {
+    let mut world = one(chooser, WHITE);
+    let noise = world.sensors[0].noise.deviation();
+    let share = world.chooser.value("noise/spread", "1", 0.1, 0.2);
+    // A sine's standard deviation is its amplitude over √2.
+    world.quantities[0].swing = noise / share * std::f64::consts::SQRT_2;
+    world.quantities[0].wander = 0.0;
+    world.references[0].each = noise;
+    world.setup.references[0].uncertainty_each = noise;
+    world.setup.channels[0].fit.noise.reference = noise;
+    world.setup.channels[0].fit.max_span_degree = Some(1);
+    world.degrees = Some((0, 0));
+    world
+}
+
+/// Five redundant sensors.
+const MEMBERS: usize = 5;
+
+fn one_drifts(chooser: Chooser) -> World {
+    let mut world = group(chooser, MEMBERS, WHITE);
+    let drift = ramp(&mut world);
+    world.sensors[0].zero.push(drift);
+    world
+}
+
+fn all_drift(chooser: Chooser) -> World {
+    let mut world = group(chooser, MEMBERS, WHITE);
+    let drift = ramp(&mut world);
+    for sensor in &mut world.sensors {
+        sensor.zero.push(drift);
+    }
+    world.degrees = Some((0, 0));
+    world
+}
+
+fn stop_drifting(world: &mut World) {
+    for sensor in &mut world.sensors {
+        sensor.zero.clear();
+    }
 }

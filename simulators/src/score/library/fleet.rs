@@ -35,10 +35,10 @@ fn fleet(chooser: Chooser) -> World {
     }
     let noise = world.sensors[0].noise.deviation();
     let at = world.chooser.value("at", "d", 3.0, 4.0);
-    let size = noise * world.chooser.signed("size", "sigma", 6.0, 15.0);
+    let size = noise * world.chooser.signed("size", "sigma", 4.0, 20.0);
     world.references[BAD].error = vec![Curve::Step { at, size }];
     world.faults.push(Fault {
-        answers: vec!["reference-stepped", "reference-suspect"],
+        answers: vec!["reference-step"],
         place: Place::Reference(BAD),
         at,
         due: at + 0.25,

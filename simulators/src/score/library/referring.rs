@@ -20,6 +20,21 @@ pub(super) const SCENARIOS: &[Scenario] = &[
         "references disagree by what each declares as common to its values: U must hold it",
         disagree,
     ),
+    Scenario::new(
+        Class::MustRefuse,
+        "reference-drift",
+        "the reference drifts by no more than it declares as common to its values: U must hold it",
+        drift,
+    ),
+    Scenario {
+        twin: Some(heal),
+        ..Scenario::new(
+            Class::Detection,
+            "reference-step",
+            "the reference of six sensors jumps: one alarm, no correction follows",
+            step,
+        )
+    },
 ];
 
 fn stale(chooser: Chooser) -> World {
@@ -37,6 +52,45 @@ fn stale(chooser: Chooser) -> World {
     world.degrees = Some((0, 0));
     world
 }
+
+/// Six sensors on a reference that drifts to 0.5 … 1.5 of its declared common uncertainty. With
+/// nothing else to compare with, such a drift shows as one of every sensor.
+fn drift(chooser: Chooser) -> World {
+    let mut world = many(chooser, 1, CHILDREN, WHITE);
+    let noise = world.sensors[0].noise.deviation();
+    let common = noise * world.chooser.value("common", "sigma", 1.0, 3.0);
+    let change = common * world.chooser.signed("change", "common", 0.5, 1.5);
+    let onset = world.chooser.value("onset", "d", 3.0, 8.0);
+    world.references[0].error.push(Curve::Linear {
+        onset,
+        rate: change / (world.days - onset),
+    });
+    world.setup.references[0].uncertainty_common = common;
+    world
+}
+
+fn step(chooser: Chooser) -> World {
+    let mut world = many(chooser, 1, CHILDREN, WHITE);
+    let noise = world.sensors[0].noise.deviation();
+    let at = world.chooser.value("at", "d", 12.0, 30.0);
+    let size = noise * world.chooser.signed("size", "sigma", 3.0, 12.0);
+    world.references[0].error.push(Curve::Step { at, size });
+    world.faults.push(Fault {
+        answers: vec!["reference-step"],
+        place: Place::Reference(0),
+        at,
+        due: at + 0.25,
+        until: world.days,
+    });
+    world
+}
+
+fn heal(world: &mut World) {
+    world.references[0].error.clear();
+}
+
+/// Sensors on one reference.
+const CHILDREN: usize = 6;
 
 /// Ten references with one sensor each; each reference is off by a deviate of its declared common
 /// uncertainty. Nothing in the readings shows it, but U must hold it.

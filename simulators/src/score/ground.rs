@@ -15,8 +15,8 @@ use holdtrue_engine::time::Duration;
 pub const CADENCE_SECONDS: i64 = 600;
 /// A window of a week: 1008 pairs, in which a day comes seven times.
 pub const WINDOW_DAYS: f64 = 7.0;
-/// Noise of a reference value as a part of the sensor's: a reference clearly better than the sensor,
-/// 4 to 1 (common practice).
+/// Noise of a reference value as a part of the sensor's: a reference clearly better than the
+/// sensor, 4 to 1 (common practice).
 const REFERENCE_NOISE: f64 = 0.25;
 /// Six windows: one to fill, five to judge.
 pub const RUN_DAYS: f64 = 42.0;

@@ -185,6 +185,12 @@ const LIMITS: &[Limit] = &[
         "a reference known to be bad moves no correction by more than its own u",
     ),
     limit(
+        Meant::Only(&["offset-ramp", "biofouling", "bad-delivery"]),
+        Figure::Unforetold,
+        Bound::AtMost(0.05),
+        "that a drift will pass its limit is told before it does",
+    ),
+    limit(
         Meant::Only(&["group-common-mode"]),
         Figure::Moved,
         Bound::AtMost(1.0),

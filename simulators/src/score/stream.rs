@@ -268,3 +268,173 @@ fn quantised(value: f64, resolution: f64) -> f64 {
         value
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::behaviour::curve::Curve;
+    use crate::score::chooser::Chooser;
+    use crate::score::ground::{WHITE, one};
+    use crate::score::world::OtherUnit;
+
+    /// A small world: a day of ten-minute readings.
+    fn world() -> World {
+        let mut world = one(Chooser::new("test", 3), WHITE);
+        world.days = 1.0;
+        world
+    }
+
+    fn indications(events: &[Event]) -> Vec<(&Reading, Option<Truth>)> {
+        events
+            .iter()
+            .filter_map(|event| match &event.input {
+                Input::Reading(reading) => match reading.source {
+                    Source::Indication(_) => Some((reading, event.truth)),
+                    _ => None,
+                },
+                _ => None,
+            })
+            .collect()
+    }
+
+    fn close(left: f64, right: f64) -> bool {
+        (left - right).abs() < 1e-9
+    }
+
+    #[test]
+    fn an_indication_is_the_true_value_with_its_errors_and_noise() {
+        let mut world = world();
+        world.sensors[0].zero = vec![Curve::Step { at: 0.5, size: 7.0 }];
+        world.sensors[0].span = vec![Curve::Step { at: 0.5, size: 0.1 }];
+        let quiet = events(&self::world());
+        let moved = events(&world);
+        assert_eq!(quiet.len(), 2 * 144);
+        assert_eq!(moved.len(), quiet.len());
+        for ((before, truth), (after, moved)) in
+            indications(&quiet).into_iter().zip(indications(&moved))
+        {
+            let (truth, moved) = (truth.unwrap(), moved.unwrap());
+            assert_eq!(truth.systematic.to_bits(), 0.0_f64.to_bits());
+            let error = if truth.day < 0.5 {
+                0.0
+            } else {
+                7.0 + 0.1 * truth.true_value
+            };
+            assert!(close(moved.systematic, error));
+            assert!(close(after.value - before.value, error));
+        }
+    }
+
+    #[test]
+    fn a_lag_shows_old_true_values_from_its_own_length_on() {
+        let mut world = world();
+        let plain = events(&world);
+        world.sensors[0].lag = 3;
+        let lagged = events(&world);
+        let values = |events: &[Event]| -> Vec<u64> {
+            events
+                .iter()
+                .filter_map(|event| event.truth)
+                .map(|truth| truth.true_value.to_bits())
+                .collect()
+        };
+        let (plain, lagged) = (values(&plain), values(&lagged));
+        assert_eq!(lagged, plain[..plain.len() - 3]);
+    }
+
+    #[test]
+    fn bad_delivery_loses_repeats_and_reorders_without_touching_values() {
+        let mut world = world();
+        world.days = 10.0;
+        let sent = events(&world);
+        world.sensors[0].delivery = Delivery {
+            lost: 0.1,
+            twice: 0.2,
+            delay: 3.0,
+            clock_off: None,
+        };
+        let arrived = events(&world);
+        let (sent, arrived) = (indications(&sent), indications(&arrived));
+        let firsts = arrived.iter().filter(|(_, truth)| truth.is_some()).count();
+        // 1440 sent: four standard deviations about 10 % lost, 20 % of the rest twice.
+        assert!((1250..1342).contains(&firsts), "{firsts}");
+        let seconds = arrived.len() - firsts;
+        assert!((200..320).contains(&seconds), "{seconds}");
+        let overtaken = arrived
+            .windows(2)
+            .filter(|pair| pair[1].0.phenomenon < pair[0].0.phenomenon)
+            .count();
+        assert!(overtaken > 100, "{overtaken}");
+        for (reading, _) in &arrived {
+            let delay = reading.received.since(reading.phenomenon).seconds();
+            assert!((0.0..1800.0).contains(&delay), "{delay}");
+            let same = sent
+                .iter()
+                .find(|(it, _)| it.phenomenon == reading.phenomenon);
+            assert_eq!(
+                same.map(|(it, _)| it.value.to_bits()),
+                Some(reading.value.to_bits())
+            );
+        }
+    }
+
+    #[test]
+    fn clocks_units_and_displays_go_wrong_as_stated() {
+        let mut world = world();
+        world.sensors[0].delivery.clock_off = Some((0.25, 0.5, -3600));
+        world.sensors[0].other_unit = Some(OtherUnit {
+            from: 0.75,
+            factor: 1.8,
+            offset: 32.0,
+        });
+        let plain = events(&self::world());
+        let wrong = events(&world);
+        for ((before, _), (after, truth)) in
+            indications(&plain).into_iter().zip(indications(&wrong))
+        {
+            let truth = truth.unwrap();
+            let off = if truth.day >= 0.25 && truth.day < 0.5 {
+                -3600.0
+            } else {
+                0.0
+            };
+            assert!(close(
+                after.phenomenon.since(before.phenomenon).seconds(),
+                off
+            ));
+            assert_eq!(truth.judged, truth.day < 0.75);
+            let shown = if truth.judged {
+                before.value
+            } else {
+                1.8 * before.value + 32.0
+            };
+            assert!(close(after.value, shown));
+        }
+        for (value, shown) in [(0.74, 0.5), (0.76, 1.0), (-0.2, 0.0)] {
+            assert!(close(quantised(value, 0.5), shown), "{value}");
+        }
+    }
+
+    #[test]
+    fn a_reference_is_sparse_late_and_silent_as_stated() {
+        let mut world = world();
+        world.references[0].every = 6;
+        world.references[0].late = (0.1, 0.2);
+        world.references[0].silent_from = Some(0.5);
+        world.references[0].error = vec![Curve::Step { at: 0.0, size: 3.0 }];
+        let arrived = events(&world);
+        let mut count = 0;
+        for event in &arrived {
+            let Input::Reading(reading) = &event.input else {
+                panic!("{event:?}");
+            };
+            if let Source::Reference(_) = reading.source {
+                count += 1;
+                let delay = reading.received.since(reading.phenomenon).days();
+                assert!((0.1..0.2).contains(&delay), "{delay}");
+                assert!(reading.phenomenon.since(START).days() < 0.5);
+            }
+        }
+        assert_eq!(count, 12);
+    }
+}

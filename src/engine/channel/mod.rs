@@ -13,6 +13,7 @@
 //! in [`Channel`].
 
 mod checks;
+mod closing;
 mod conditions;
 mod conformity;
 mod forecast;
@@ -20,6 +21,7 @@ mod judgement;
 mod outlook;
 mod pairing;
 mod publishing;
+mod recent;
 mod review;
 mod screening;
 mod stretch;
@@ -41,6 +43,7 @@ use outlook::OutlookStation;
 pub(crate) use pairing::{Answer, Rows};
 use pairing::{Found, Pair, Pairing};
 use publishing::Publishing;
+use recent::{Recent, Remembered};
 use serde::{Deserialize, Serialize};
 use stretch::Stretch;
 
@@ -67,6 +70,7 @@ pub(crate) struct Channel {
     pairing: Pairing,
     checks: Checks,
     stretch: Stretch,
+    recent: Recent,
     publishing: Publishing,
     outlook: OutlookStation,
     alarms: ChannelAlarms,
@@ -84,6 +88,7 @@ impl Channel {
             pairing: Pairing::default(),
             checks: Checks::default(),
             stretch: Stretch::new(1, setup),
+            recent: Recent::default(),
             publishing: Publishing::new(issued),
             outlook: OutlookStation::default(),
             alarms: ChannelAlarms::default(),
@@ -341,6 +346,11 @@ impl Channel {
         }
         let taken = self.stretch.take(pair, scene.setup);
         telling::tell_fate(pair, taken.rejected, scene, report);
+        self.recent.push(Remembered {
+            pair: *pair,
+            stretch: self.stretch.number(),
+            rejected: taken.rejected,
+        });
         if let Some(change) = taken.change {
             telling::tell_degree(change, scene, report);
         }

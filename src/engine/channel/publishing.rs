@@ -5,8 +5,8 @@
 //!
 //! *Publish step*: a new document when over its validity it would differ from the one in force by
 //! more than `step`·u, when u or U (or what is suppressed inside U) has changed by more than that
-//! part, when degree or zones differ, or when three quarters of the validity have passed and a new
-//! one would hold longer.
+//! part, when stretch, degree or zones differ, or when three quarters of the validity have passed
+//! and a new one would hold longer.
 //!
 //! *Validity*: `max_age`, but not past the fit's own horizon behind the newest pair: a quarter of
 //! the time that the window covers where a degree above 1 has weight, else half of it. (The
@@ -91,6 +91,23 @@ impl Publishing {
         if let Some(held) = &mut self.in_force {
             held.review = Timestamp(i64::MIN);
         }
+    }
+
+    /// A new stretch begins: the dead zone has not let its correction through yet.
+    pub(crate) fn leave_stretch(&mut self) {
+        self.applied = false;
+    }
+
+    /// Whether what is in force, if anything, rests on this stretch.
+    pub(crate) fn is_of(&self, stretch: u32) -> bool {
+        self.correction()
+            .is_none_or(|document| document.stretch == stretch)
+    }
+
+    /// Drops what is in force. Whether there was anything.
+    pub(crate) fn forget(&mut self) -> bool {
+        self.applied = false;
+        self.in_force.take().is_some()
     }
 
     /// Now was wrong and steps back: drops what was issued later. Whether there was any.
@@ -256,6 +273,7 @@ impl Publishing {
         let held = &in_force.correction;
         let said = |document: &Correction| {
             (
+                document.stretch,
                 document.degree,
                 document.suppressed,
                 document.zone,

@@ -33,22 +33,30 @@ const RESIDUAL_REACH: f64 = 2.0;
 /// The state of the station.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Screen {
-    /// Latest standardised innovations; a ring once full.
-    recent: Vec<f64>,
-    /// Where the ring goes on.
-    place: usize,
+    noise: Noise,
     /// Rejections in a row, negative for negative innovations.
     run: i64,
     locked: Option<Locked>,
 }
 
+/// What is known of the noise.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+struct Noise {
+    /// Latest standardised innovations; a ring once full.
+    recent: Vec<f64>,
+    /// Where the ring goes on.
+    place: usize,
+}
+
 /// The screen has stopped rejecting.
-#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 struct Locked {
     /// Phenomenon time of the pair at which it did.
     since: Timestamp,
     /// Fitting innovations in a row since then.
     fits: u32,
+    /// What was known of the noise until then.
+    noise: Noise,
 }
 
 /// What the screen says of a pair.
@@ -90,12 +98,12 @@ impl Screen {
     ) -> Verdict {
         let standardised = innovation.value / innovation.spread;
         let verdict = if self.locked.is_some() {
-            self.learn(standardised);
+            self.noise.learn(standardised);
             self.try_unlock(standardised, window_from, setup);
             Verdict::Pass
         } else {
             let verdict = self.gate(innovation, setup);
-            self.learn(standardised);
+            self.noise.learn(standardised);
             verdict
         };
         if let Verdict::LocksOut { .. } = verdict {
@@ -103,11 +111,26 @@ impl Screen {
                 locked: Some(Locked {
                     since: innovation.time,
                     fits: 0,
+                    noise: std::mem::take(&mut self.noise),
                 }),
                 ..Self::default()
             };
         }
         verdict
+    }
+
+    /// A screen that watches, with the noise as this one knows it without the last `latest`
+    /// innovations, which a step pulled away. If it has locked out, what it knew before.
+    pub(crate) fn carried_on(&self, latest: usize) -> Self {
+        let mut noise = match &self.locked {
+            Some(locked) => locked.noise.clone(),
+            None => self.noise.clone(),
+        };
+        noise.forget(latest);
+        Self {
+            noise,
+            ..Self::default()
+        }
     }
 
     fn gate(&mut self, innovation: Innovation, setup: &ChannelSetup) -> Verdict {
@@ -143,7 +166,7 @@ impl Screen {
         window_from: Option<Timestamp>,
         setup: &ChannelSetup,
     ) {
-        let centre = median(&mut self.recent.clone());
+        let centre = median(&mut self.noise.recent.clone());
         let scale = self.scale(centre, setup);
         let Some(locked) = &mut self.locked else {
             return;
@@ -161,17 +184,20 @@ impl Screen {
     /// resolution's q/√12 (GUM F.2.2.1) and the declared noise. `None` while there are too few, or
     /// where they are all the same and nothing is declared: then there is no telling.
     fn scale(&self, centre: f64, setup: &ChannelSetup) -> Option<f64> {
-        if self.recent.len() < ENOUGH {
+        if self.noise.recent.len() < ENOUGH {
             return None;
         }
-        let mut distances: Vec<f64> = self.recent.iter().map(|z| (z - centre).abs()).collect();
+        let recent = &self.noise.recent;
+        let mut distances: Vec<f64> = recent.iter().map(|z| (z - centre).abs()).collect();
         let robust = MAD_TO_SD * median(&mut distances);
         let scale = robust
             .max(setup.resolution / 12.0_f64.sqrt())
             .max(setup.noise);
         (scale > 0.0).then_some(scale)
     }
+}
 
+impl Noise {
     fn learn(&mut self, standardised: f64) {
         if self.recent.len() < RECENT {
             self.recent.push(standardised);
@@ -179,6 +205,14 @@ impl Screen {
             self.recent[self.place] = standardised;
             self.place = (self.place + 1) % RECENT;
         }
+    }
+
+    /// Forgets the latest so many.
+    fn forget(&mut self, latest: usize) {
+        let kept = self.recent.len().saturating_sub(latest);
+        self.recent.rotate_left(self.place);
+        self.recent.truncate(kept);
+        self.place = 0;
     }
 }
 
@@ -324,6 +358,36 @@ mod tests {
         assert!(screen.is_locked_out());
         screen.judge(later, Some(Timestamp(1)), &setup());
         assert!(!screen.is_locked_out());
+    }
+
+    #[test]
+    fn carried_on_it_knows_the_noise_from_before_the_step() {
+        let mut screen = seasoned(64);
+        for _ in 0..3 {
+            judge(&mut screen, 30.0);
+        }
+        assert_eq!(screen.carried_on(3), seasoned(64));
+        for _ in 0..20 {
+            judge(&mut screen, 30.0);
+        }
+        assert!(screen.is_locked_out());
+        let carried = screen.carried_on(5);
+        assert!(!carried.is_locked_out());
+        assert_eq!(carried, seasoned(64));
+    }
+
+    /// A full ring has begun to overwrite its oldest.
+    #[test]
+    fn the_latest_of_a_full_ring_are_forgotten() {
+        let mut noise = Noise::default();
+        for value in 0..700 {
+            noise.learn(f64::from(value));
+        }
+        noise.forget(10);
+        let expected: Vec<f64> = (188..690).map(f64::from).collect();
+        assert_eq!(noise.recent, expected);
+        noise.forget(1000);
+        assert!(noise.recent.is_empty());
     }
 
     #[test]

@@ -4,10 +4,12 @@
 
 use super::judgement::Residuals;
 use super::pairing::Pair;
+use super::recent::{Recent, Remembered};
 use super::review::Judged;
 use super::screening::{Innovation, Screen, Verdict};
 use crate::event::{RefusedReason, Rejection};
 use crate::fit::basis::MAX_INFLUENCES;
+use crate::fit::before::Gone;
 use crate::fit::{Change, Fit, Row};
 use crate::setup::{ChannelSetup, SpanSide, WindowLength};
 use crate::time::Timestamp;
@@ -44,6 +46,19 @@ pub(super) struct Learned {
     pub(super) range: (f64, f64),
 }
 
+/// What the next stretch knows from the one before.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+#[allow(dead_code, reason = "whoever ends a stretch chooses")]
+pub(crate) enum Carries {
+    /// The noise of the sensor, as it was before the latest so many pairs: the sensor is the same.
+    Noise {
+        /// Pairs that what ends the stretch pulled away.
+        latest: usize,
+    },
+    /// Nothing: the sensor is another one.
+    Nothing,
+}
+
 /// What became of a pair.
 #[derive(Debug)]
 pub(super) struct Taken {
@@ -70,6 +85,24 @@ impl Stretch {
             scatter: None,
             judged: None,
         }
+    }
+
+    /// The one that follows on this, with nothing in it. `carries` so much of what is known of the
+    /// noise; see [`Carries`].
+    pub(super) fn next(&self, carries: Carries, setup: &ChannelSetup) -> Self {
+        let screen = match carries {
+            Carries::Noise { latest } => self.screen.carried_on(latest),
+            Carries::Nothing => Screen::default(),
+        };
+        Self {
+            screen,
+            ..Self::new(self.number.saturating_add(1), setup)
+        }
+    }
+
+    /// Counts the channel's stretches from 1.
+    pub(super) fn number(&self) -> u32 {
+        self.number
     }
 
     /// The fit.
@@ -176,6 +209,45 @@ impl Stretch {
         }
     }
 
+    /// The fit as it was before `instant`, as far as `recent` remembers: in a window whose segments
+    /// hold more rows than that, rows of the segment around the instant are missing.
+    pub(super) fn fit_before(
+        &self,
+        instant: Timestamp,
+        recent: &Recent,
+        setup: &ChannelSetup,
+    ) -> Fit {
+        let (mut fit, gone) = self.fit.before(instant);
+        for remembered in put_back(gone, recent.entered(self.number)) {
+            let pair = &remembered.pair;
+            if pair.time < instant {
+                fit.insert(row(pair, pair.indication - pair.reference, setup));
+            }
+        }
+        fit
+    }
+
+    /// Takes all pairs from `instant` on out of the fit again. (Rows that left the window meanwhile
+    /// do not come back.) What was learned of the noise and of the range stays: a bad reference
+    /// says nothing about the sensor's.
+    #[allow(dead_code, reason = "a suspect reference takes its rows back out")]
+    pub(super) fn rewind(&mut self, instant: Timestamp, recent: &Recent, setup: &ChannelSetup) {
+        let before = self.fit.window().rows();
+        self.fit = self.fit_before(instant, recent, setup);
+        let left = before.saturating_sub(self.fit.window().rows());
+        self.pairs = self.pairs.saturating_sub(left);
+        self.residuals = Residuals::default();
+        for Remembered { pair, .. } in recent.entered(self.number) {
+            if pair.time < instant {
+                self.residuals
+                    .push(pair.time, pair.indication - pair.reference);
+            }
+        }
+        self.last_pair = self.fit.window().newest();
+        self.unjudged += left;
+        self.judged = None;
+    }
+
     /// How far the pair lies from what the fit expects; `None` while it expects nothing.
     fn innovation(&self, pair: &Pair, error: f64, setup: &ChannelSetup) -> Option<Innovation> {
         let x = span_regressor(pair, setup);
@@ -198,13 +270,7 @@ impl Stretch {
         setup: &ChannelSetup,
         change: &mut Option<Change>,
     ) -> Option<Rejection> {
-        let inserted = self.fit.insert(Row {
-            time: pair.time,
-            error,
-            weight: pair.weight,
-            x: span_regressor(pair, setup),
-            influences: [0.0; MAX_INFLUENCES],
-        });
+        let inserted = self.fit.insert(row(pair, error, setup));
         if inserted.out_of_range {
             return Some(Rejection {
                 reason: RefusedReason::NotFinite,
@@ -241,6 +307,33 @@ fn span_regressor(pair: &Pair, setup: &ChannelSetup) -> f64 {
     match setup.fit.span_side() {
         SpanSide::Reference => pair.reference,
         SpanSide::Indication => pair.indication,
+    }
+}
+
+/// A pair as the fit takes it.
+fn row(pair: &Pair, error: f64, setup: &ChannelSetup) -> Row {
+    Row {
+        time: pair.time,
+        error,
+        weight: pair.weight,
+        x: span_regressor(pair, setup),
+        influences: [0.0; MAX_INFLUENCES],
+    }
+}
+
+/// Those of the pairs entered that went with their segments.
+fn put_back<'a>(
+    gone: Gone,
+    entered: impl DoubleEndedIterator<Item = &'a Remembered> + Clone,
+) -> Vec<&'a Remembered> {
+    match gone {
+        Gone::Since(from) => entered.filter(|held| held.pair.time >= from).collect(),
+        Gone::Last(count) => {
+            let count = usize::try_from(count).unwrap_or(usize::MAX);
+            let mut last: Vec<_> = entered.rev().take(count).collect();
+            last.reverse();
+            last
+        }
     }
 }
 

@@ -1,10 +1,88 @@
-//! Setups for the stations' unit tests.
+//! Setups for the stations' unit tests, and a stage on which one channel acts alone.
 
+use super::Scene;
+use crate::counters::Counters;
+use crate::event::Output;
+use crate::fleet::LeapWatch;
+use crate::gate::GateHistory;
+use crate::notice::NoticeLimiter;
+use crate::report::Report;
 use crate::setup::{
-    AlarmSetup, ChannelSetup, Criterion, DecisionRule, FitSetup, PairNoise, PublishSetup,
-    ReferenceId, ScreeningSetup, WindowLength,
+    AlarmSetup, ChannelId, ChannelSetup, Criterion, DecisionRule, FitSetup, PairNoise,
+    PublishSetup, ReferenceId, ReferenceKind, ReferenceSetup, ScreeningSetup, Stamped,
+    WindowLength,
 };
-use crate::time::Duration;
+use crate::time::{Duration, Timestamp};
+use crate::track::Track;
+
+/// Everything that one channel can see, with nothing in it.
+pub(crate) struct Stage {
+    pub(crate) setup: ChannelSetup,
+    reference: ReferenceSetup,
+    gate: GateHistory,
+    values: Track,
+    indications: Vec<Track>,
+    counters: Counters,
+    notices: NoticeLimiter,
+    leaps: LeapWatch,
+}
+
+impl Stage {
+    /// A stage for this channel, against a constant.
+    pub(crate) fn new(setup: ChannelSetup) -> Self {
+        Self {
+            setup,
+            reference: ReferenceSetup {
+                name: "hall/buffer".to_owned(),
+                kind: ReferenceKind::Constant {
+                    value: 7.0,
+                    gated: false,
+                },
+                uncertainty_each: 0.0,
+                uncertainty_common: 0.0,
+                certificate: None,
+                expires: None,
+                stale_after: None,
+                stands_for: Duration::ZERO,
+                stamped: Stamped::End,
+            },
+            gate: GateHistory::default(),
+            values: Track::default(),
+            indications: vec![Track::default()],
+            counters: Counters::default(),
+            notices: NoticeLimiter::default(),
+            leaps: LeapWatch::default(),
+        }
+    }
+
+    /// Lets the channel act at an instant; what was said.
+    pub(crate) fn act(
+        &mut self,
+        now: Timestamp,
+        acts: impl FnOnce(&Scene<'_>, &mut Report<'_>),
+    ) -> Vec<Output> {
+        let mut outputs = Vec::new();
+        let scene = Scene {
+            id: ChannelId(0),
+            setup: &self.setup,
+            reference: &self.reference,
+            gate: &self.gate,
+            values: &self.values,
+            indications: &self.indications,
+            now,
+            alive: now,
+            resumed: None,
+        };
+        let mut report = Report {
+            outputs: &mut outputs,
+            counters: &mut self.counters,
+            notices: &mut self.notices,
+            leaps: &mut self.leaps,
+        };
+        acts(&scene, &mut report);
+        outputs
+    }
+}
 
 /// A channel with nothing declared that is not needed.
 pub(crate) fn channel_setup() -> ChannelSetup {

@@ -9,6 +9,7 @@
 //! - [`segment`]: rows that enter and leave together
 //! - `spare`: used-up factors
 //! - [`window`]: the sliding window
+//! - [`before`]: the window as it was before an instant
 //! - [`criterion`]: information criteria as plain formulas
 //! - [`correlation`]: what a correlated sample is worth
 //! - `between`: segments of the window, each taken as one row
@@ -19,6 +20,7 @@
 //! - [`cadence`]: how long a drift takes to be seen
 
 pub mod basis;
+pub mod before;
 mod between;
 pub mod cadence;
 pub mod correlation;

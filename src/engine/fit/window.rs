@@ -67,18 +67,18 @@ pub struct Inserted {
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Window {
     columns: Columns,
-    cut: Cut,
+    pub(super) cut: Cut,
     frame: Frame,
     centre: Centre,
     /// The centre is a mean of rows, no longer the first row's.
     has_settled: bool,
     /// Newest phenomenon time ever inserted; `None` before the first row.
-    newest: Option<Timestamp>,
+    pub(super) newest: Option<Timestamp>,
     /// Some rows have left.
     has_dropped: bool,
     /// Closed segments, oldest first.
-    closed: VecDeque<Segment>,
-    open: Option<Segment>,
+    pub(super) closed: VecDeque<Segment>,
+    pub(super) open: Option<Segment>,
     /// Suffix aggregates of the oldest `front.len()` closed segments, the shortest suffix first.
     front: Vec<Factor>,
     front_level: f64,
@@ -522,7 +522,7 @@ impl Window {
     }
 
     /// Builds all aggregates from the segments: every closed segment goes to the front.
-    fn rebuild(&mut self) {
+    pub(super) fn rebuild(&mut self) {
         self.spare.keep_all(&mut self.front);
         self.back.clear();
         let Some(newest) = self.closed.back() else {

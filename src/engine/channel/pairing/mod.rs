@@ -49,7 +49,7 @@ const MADE_MAX: usize = 4096;
 const AT_ONCE: Timestamp = Timestamp(i64::MIN);
 
 /// One reference value with the indication that belongs to it.
-#[derive(Clone, Copy, Debug, PartialEq)]
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Pair {
     /// When the sensor showed it.
     pub(crate) time: Timestamp,

@@ -1,0 +1,208 @@
+//! The end of a stretch at an instant that has passed, and the beginning of the next.
+//!
+//! What entered since that instant, and what was kept out since because it did not fit the old
+//! stretch, is offered to the new one in the order in which it came. A pair whose fate changes is
+//! told again. The correction in force rests on the old stretch: it is replaced by the new one's
+//! where that has enough pairs, and withdrawn where not.
+
+use super::stretch::Carries;
+use super::{Channel, Scene};
+use crate::event::Output;
+use crate::report::Report;
+use crate::time::Timestamp;
+
+/// What the pairs since the end of the old stretch have become.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
+pub(crate) struct Reentered {
+    /// Pairs that entered the new stretch.
+    pub(crate) pairs: u32,
+    /// Of these, those that had been kept out of the old one.
+    pub(crate) taken_back: u32,
+}
+
+impl Channel {
+    /// Ends the stretch at `at`: the pairs from `at` on begin the next one. `why` ends the sentence
+    /// "the correction no longer holds: …" where the new stretch cannot replace it yet.
+    #[allow(dead_code, reason = "steps and service events end stretches")]
+    pub(crate) fn close_stretch(
+        &mut self,
+        at: Timestamp,
+        carries: Carries,
+        why: &str,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) -> Reentered {
+        self.stretch = self.stretch.next(carries, scene.setup);
+        let mut reentered = Reentered::default();
+        for mut held in self.recent.take_since(at) {
+            let taken = self.stretch.take(&held.pair, scene.setup);
+            if taken.rejected.is_none() {
+                reentered.pairs += 1;
+                reentered.taken_back += u32::from(held.rejected.is_some());
+            }
+            if taken.rejected.is_none() != held.rejected.is_none() {
+                super::telling::tell_fate(&held.pair, taken.rejected, scene, report);
+            }
+            if let Some(change) = taken.change {
+                super::telling::tell_degree(change, scene, report);
+            }
+            held.stretch = self.stretch.number();
+            held.rejected = taken.rejected;
+            self.recent.push(held);
+        }
+        self.publishing.leave_stretch();
+        self.judge(scene, report);
+        if !self.publishing.is_of(self.stretch.number()) {
+            self.withdraw(why, scene, report);
+        }
+        reentered
+    }
+
+    /// Withdraws the correction in force, if there is one.
+    fn withdraw(&mut self, why: &str, scene: &Scene<'_>, report: &mut Report<'_>) {
+        if self.publishing.forget() {
+            report.say(Output::Withdrawn {
+                channel: scene.id,
+                at: scene.now,
+                why: format!(
+                    "{}: the correction no longer holds: {why}",
+                    scene.setup.name
+                ),
+            });
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::channel::pairing::Pair;
+    use crate::channel::testing::{Stage, channel_setup};
+    use crate::event::PairFate;
+    use crate::setup::WindowLength;
+    use crate::time::Duration;
+
+    fn pair(minute: i64, error: f64) -> Pair {
+        Pair {
+            time: minute_of(minute),
+            indication: 7.0 + error,
+            reference: 7.0,
+            weight: 1.0,
+        }
+    }
+
+    fn minute_of(minute: i64) -> Timestamp {
+        Timestamp(0).plus(Duration::from_seconds(60 * minute))
+    }
+
+    /// Noise of ±1, around `level`.
+    fn error(minute: i64, level: f64) -> f64 {
+        level + if minute % 2 == 0 { 1.0 } else { -1.0 }
+    }
+
+    /// A channel that has seen 60 pairs about zero and then `after` about 50. With 5 of them the
+    /// screen locks out.
+    fn stepped(stage: &mut Stage, after: i64) -> Channel {
+        let mut channel = Channel::new(&stage.setup, 0);
+        for minute in 0..60 + after {
+            let level = if minute < 60 { 0.0 } else { 50.0 };
+            stage.act(minute_of(minute), |scene, report| {
+                channel.take_pair(&pair(minute, error(minute, level)), scene, report);
+            });
+        }
+        channel
+    }
+
+    #[test]
+    fn pairs_since_then_begin_the_next_stretch_and_rejected_ones_are_taken_back() {
+        let mut stage = Stage::new(channel_setup());
+        let mut channel = stepped(&mut stage, 4);
+        assert_eq!(channel.stretch.pairs(), 60, "the gate keeps the others out");
+        let carries = Carries::Noise { latest: 4 };
+        let mut reentered = Reentered::default();
+        let said = stage.act(minute_of(63), |scene, report| {
+            reentered = channel.close_stretch(minute_of(60), carries, "it stepped", scene, report);
+        });
+        let expected = Reentered {
+            pairs: 4,
+            taken_back: 4,
+        };
+        assert_eq!(reentered, expected);
+        assert_eq!((channel.stretch.number(), channel.stretch.pairs()), (2, 4));
+        let told: Vec<&PairFate> = said
+            .iter()
+            .filter_map(|output| match output {
+                Output::Pair(fate) => Some(fate),
+                _ => None,
+            })
+            .collect();
+        assert_eq!(told.len(), 4);
+        assert!(told.iter().all(|fate| fate.rejected.is_none()));
+        let corrections: Vec<f64> = said
+            .iter()
+            .filter_map(|output| match output {
+                Output::Correction(document) if document.stretch == 2 => Some(document.correction),
+                _ => None,
+            })
+            .collect();
+        assert!(matches!(corrections[..], [correction] if (correction + 50.0).abs() < 1.0));
+        assert!(
+            !said
+                .iter()
+                .any(|output| matches!(output, Output::Withdrawn { .. }))
+        );
+    }
+
+    #[test]
+    fn with_nothing_since_then_the_correction_is_withdrawn() {
+        let mut stage = Stage::new(channel_setup());
+        let mut channel = stepped(&mut stage, 0);
+        assert!(channel.publishing.correction().is_some());
+        let said = stage.act(minute_of(60), |scene, report| {
+            channel.close_stretch(minute_of(60), Carries::Nothing, "replaced", scene, report);
+        });
+        assert!(matches!(
+            &said[..],
+            [Output::Withdrawn { why, .. }] if why.ends_with("no longer holds: replaced")
+        ));
+        assert!(channel.publishing.correction().is_none());
+        assert_eq!((channel.stretch.number(), channel.stretch.pairs()), (2, 0));
+    }
+
+    /// What entered before the end of the stretch is not offered again, nor told again.
+    #[test]
+    fn older_pairs_stay_behind() {
+        let mut stage = Stage::new(channel_setup());
+        let mut channel = stepped(&mut stage, 0);
+        let carries = Carries::Noise { latest: 10 };
+        let said = stage.act(minute_of(60), |scene, report| {
+            channel.close_stretch(minute_of(50), carries, "cleaned", scene, report);
+        });
+        assert_eq!(channel.stretch.pairs(), 10);
+        assert_eq!(channel.stretch.fit().window().oldest(), Some(minute_of(50)));
+        assert!(!said.iter().any(|output| matches!(output, Output::Pair(_))));
+    }
+
+    #[test]
+    fn rewound_the_fit_is_as_if_the_rows_had_never_come() {
+        let mut setup = channel_setup();
+        setup.fit.window = WindowLength::Pairs(128);
+        let mut stage = Stage::new(setup);
+        let mut channel = stepped(&mut stage, 30);
+        let fresh = stepped(&mut stage, 0);
+        channel
+            .stretch
+            .rewind(minute_of(60), &channel.recent, &stage.setup);
+        assert_eq!(channel.stretch.pairs(), 60);
+        assert_eq!(channel.stretch.last_pair(), Some(minute_of(59)));
+        let expects = |channel: &Channel| {
+            let fit = channel.stretch.fit();
+            let prediction = fit.predict(minute_of(61), 7.0, [0.0; 2]).expect("rows");
+            (prediction.error, prediction.leverage)
+        };
+        let ((error, leverage), expected) = (expects(&channel), expects(&fresh));
+        assert!((error - expected.0).abs() < 1e-12, "{error}");
+        assert!((leverage / expected.1 - 1.0).abs() < 1e-12);
+        assert_eq!(channel.stretch.residuals(), fresh.stretch.residuals());
+    }
+}

@@ -192,7 +192,6 @@ impl Target {
     pub(super) fn source(&self) -> Source {
         match self {
             Self::Indication(channel) => Source::Indication(*channel),
-            Self::Influence(influence) => Source::Influence(*influence),
             Self::Reference(reference) | Self::Gate { reference, .. } => {
                 Source::Reference(*reference)
             }

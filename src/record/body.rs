@@ -86,7 +86,6 @@ pub(super) fn source_text(source: Source) -> String {
     match source {
         Source::Indication(channel) => format!("indication/{}", channel.0),
         Source::Reference(reference) => format!("reference/{}", reference.0),
-        Source::Influence(influence) => format!("influence/{}", influence.0),
     }
 }
 

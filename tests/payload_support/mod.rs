@@ -94,7 +94,6 @@ fn source(source: Source) -> &'static str {
     match source {
         Source::Indication(_) => "indication",
         Source::Reference(_) => "reference",
-        Source::Influence(_) => "influence",
     }
 }
 

@@ -245,13 +245,19 @@ impl Residuals {
 mod tests {
     use super::*;
     use crate::event::{CriterionValues, WindowSeen};
+    use crate::fit::Centre;
+    use crate::fit::{Model, Seen, Terms};
+    use crate::setup::SpanSide;
 
     fn published(coefficients: &[f64]) -> Published {
         Published {
             origin: Timestamp(0),
             degree: 0,
             weights: vec![1.0],
+            models: Vec::new(),
             coefficients: coefficients.to_vec(),
+            span: Vec::new(),
+            influences: Vec::new(),
             covariance: vec![vec![0.0; coefficients.len()]; coefficients.len()],
             degrees_of_freedom: 10.0,
             residual_sd: 1.0,
@@ -266,6 +272,17 @@ mod tests {
                 segments: 0,
                 effective_sample_size: 0.0,
                 lag_one: 0.0,
+            },
+            terms: Terms {
+                announced: Model {
+                    degree: 0,
+                    span: None,
+                    influences: [false; 2],
+                },
+                span_side: SpanSide::Reference,
+                centre: Centre::default(),
+                learned: Seen::default(),
+                span_refused: None,
             },
         }
     }

@@ -251,7 +251,7 @@ impl Publishing {
             coverage_factor: judgement.k,
             expanded_uncertainty: expanded,
             degrees_of_freedom: judgement.nu,
-            covariance: published.covariance.clone(),
+            covariance: published.zero_covariance(),
             rule: scene.setup.decision_rule,
             zone: judgement.conformity.zone(),
             accepted: judgement.conformity.accepted(),

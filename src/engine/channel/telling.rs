@@ -3,7 +3,7 @@
 use super::Scene;
 use super::pairing::Pair;
 use crate::event::{DegreeChange, Flag, Output, PairFate, Rejection, Subject};
-use crate::fit::Change;
+use crate::fit::{Change, Term};
 use crate::report::Report;
 use crate::wording::readable;
 
@@ -14,7 +14,14 @@ pub(super) fn tell_fate(
     scene: &Scene<'_>,
     report: &mut Report<'_>,
 ) {
-    report.say(fate(pair, rejected, scene));
+    report.say(Output::Pair(PairFate {
+        channel: scene.id,
+        phenomenon: pair.time,
+        indication: pair.indication + 0.0,
+        reference: pair.reference + 0.0,
+        flag: Flag::of_fate(rejected),
+        rejected,
+    }));
     if let Some(rejection) = rejected {
         let subject = Subject::Channel(scene.id);
         report.refuse(scene.now, subject, rejection.reason, || {
@@ -32,38 +39,19 @@ pub(super) fn tell_fate(
     }
 }
 
-/// Says that a pair stays out of the fit because an influence quantity was not told beside it.
-pub(super) fn tell_unattached(
-    pair: &Pair,
-    influence: usize,
-    rejection: Rejection,
-    scene: &Scene<'_>,
-    report: &mut Report<'_>,
-) {
-    report.say(fate(pair, Some(rejection), scene));
-    let subject = Subject::Channel(scene.id);
-    report.refuse(scene.now, subject, rejection.reason, || {
-        format!(
-            "{}: pair at {} has no {} beside it and stays out of the fit",
-            scene.setup.name, pair.time, scene.setup.influences[influence].name
-        )
-    });
-}
-
-fn fate(pair: &Pair, rejected: Option<Rejection>, scene: &Scene<'_>) -> Output {
-    Output::Pair(PairFate {
-        channel: scene.id,
-        phenomenon: pair.time,
-        indication: pair.indication + 0.0,
-        reference: pair.reference + 0.0,
-        flag: Flag::of_fate(rejected),
-        rejected,
-    })
-}
-
 /// Says that the announced degree changed, with its evidence; a rise is also told to people.
 pub(super) fn tell_degree(change: Change, scene: &Scene<'_>, report: &mut Report<'_>) {
-    let Change { from, to, evidence } = change;
+    let Change {
+        term,
+        from,
+        to,
+        evidence,
+        ..
+    } = change;
+    if term != Term::Zero {
+        tell_term(term, (from, to), scene, report);
+        return;
+    }
     let (code, word) = if to > from {
         ("degree-raised", "raised")
     } else {
@@ -82,6 +70,21 @@ pub(super) fn tell_degree(change: Change, scene: &Scene<'_>, report: &mut Report
         format!(
             "{}: the degree of the drift was {word} from {from} to {to}: the higher one gains \
              {gain:.1} (judged by {judged_by}), held for {segments} segments",
+            scene.setup.name
+        )
+    });
+}
+
+/// Says that span terms or an influence quantity came into use or went out of it.
+fn tell_term(term: Term, (from, to): (u8, u8), scene: &Scene<'_>, report: &mut Report<'_>) {
+    let what = match term {
+        Term::Zero => "zero".to_owned(),
+        Term::Span => "span".to_owned(),
+        Term::Influence(place) => format!("influence quantity {}", place + 1),
+    };
+    report.notice(scene.now, Subject::Channel(scene.id), "model-changed", || {
+        format!(
+            "{}: the model of the error now has {to} coefficients for the {what}, before {from}",
             scene.setup.name
         )
     });

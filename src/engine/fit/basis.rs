@@ -5,6 +5,7 @@
 //! number of nanoseconds (as long as the difference fits 53 bits, 104 days; beyond, it is rounded
 //! once).
 
+use crate::fit::centre::Centre;
 use crate::fit::factor::{Factor, MAX_COLUMNS};
 use crate::time::{Duration, Timestamp};
 use serde::{Deserialize, Serialize};
@@ -185,16 +186,6 @@ impl Columns {
             factor.move_centre(self.influence_place(influence), 0, by);
         }
     }
-}
-
-/// Where the regressor of the span terms and the influence quantities count from: however far from
-/// zero they are, it costs no digits.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
-pub struct Centre {
-    /// Of x.
-    pub x: f64,
-    /// Of the influence quantities.
-    pub influences: [f64; MAX_INFLUENCES],
 }
 
 /// Origin and unit of scaled time.

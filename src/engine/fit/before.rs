@@ -58,14 +58,14 @@ impl Window {
 }
 
 impl Fit {
-    /// The fit on [`Window::before`], with the degree announced and the ranges seen as of now.
+    /// The fit on [`Window::before`], with the model announced and the ranges seen as of now.
     #[must_use]
     pub fn before(&self, instant: Timestamp) -> (Self, Gone) {
         let (window, gone) = self.window.before(instant);
         let fit = Self {
             setup: self.setup,
             window,
-            degree: self.degree.clone(),
+            announced: self.announced.clone(),
             seen: self.seen,
         };
         (fit, gone)

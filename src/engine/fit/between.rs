@@ -9,6 +9,7 @@
 
 use crate::fit::correlation::lag_one;
 use crate::fit::factor::{Factor, MAX_COLUMNS};
+use crate::fit::gain::Rungs;
 use crate::fit::kernel::MAX_WIDTH;
 use crate::fit::segment::Segment;
 use crate::fit::window::{Cut, Window};
@@ -141,13 +142,13 @@ impl<'a> Group<'a> {
 }
 
 /// The mean row of a group.
-struct MeanRow {
+pub(crate) struct MeanRow {
     /// Sum of its rows' weights.
-    weight: f64,
+    pub(crate) weight: f64,
     /// φ̄; zero beyond the factor's columns.
-    phi: [f64; MAX_COLUMNS],
+    pub(crate) phi: [f64; MAX_COLUMNS],
     /// ē, counted from the problem's common level.
-    error: f64,
+    pub(crate) error: f64,
 }
 
 /// The variance of a group's mean, by which groups are weighted.
@@ -163,7 +164,7 @@ pub(crate) struct Weighting {
 
 impl Weighting {
     /// No weighting: every row counts with its own weight.
-    const PLAIN: Self = Self {
+    pub(crate) const PLAIN: Self = Self {
         within: None,
         between: 0.0,
         scale: 1.0,
@@ -187,9 +188,7 @@ pub(crate) struct Between {
     /// How groups weigh.
     pub(crate) weighting: Weighting,
     /// Residual sums of squares for degrees 0 … `largest`.
-    pub(crate) rss: Vec<f64>,
-    /// What of each residual sum may be rounding.
-    pub(crate) rounding: f64,
+    pub(crate) rungs: Rungs,
     /// r₁ of the residuals of degree `largest` (raw).
     pub(crate) lag_one: f64,
 }
@@ -209,7 +208,7 @@ impl Between {
         let largest = (0..=highest)
             .rev()
             .find(|&k| k < independent && can_bear(segments, k, forced))?;
-        let weighting = weighting(groups, &rows, &counted, largest);
+        let weighting = plain_weighting(groups, &rows, &counted, largest);
         let factor = fitted(&rows, columns, |weight| weighting.multiplier(weight));
         let coefficients = factor.solve(largest + 1)?;
         let residuals: Vec<f64> = rows
@@ -220,25 +219,17 @@ impl Between {
             })
             .collect();
         let nested = factor.nested_rss();
-        let largest_error = rows
-            .iter()
-            .map(|row| row.error.abs())
-            .fold(level.abs() * f64::EPSILON, f64::max);
-        let unit = ROUNDING_UNITS * f64::EPSILON * (largest_error + level.abs());
         Some(Self {
             segments,
             largest,
             weighting,
-            rss: nested.as_slice()[..=largest].to_vec(),
-            rounding: factor.weight_sum() * unit * unit,
+            rungs: Rungs {
+                rss: nested.as_slice()[..=largest].to_vec(),
+                rounding: factor.weight_sum() * rounding(&rows, level),
+                least: 1,
+            },
             lag_one: lag_one(&residuals) + 0.0,
         })
-    }
-
-    /// Residual sum of squares of degree k with its possible rounding: never says that less is left
-    /// than can be known.
-    pub(crate) fn known_rss(&self, degree: usize) -> f64 {
-        self.rss[degree] + self.rounding
     }
 
     /// σ̂² = RSS/(S − p) of the largest model: variance of a row of weight 1 as groups show it, so
@@ -246,7 +237,7 @@ impl Between {
     pub(crate) fn variance(&self) -> f64 {
         let freedom = self.degrees_of_freedom();
         if freedom > 0.0 {
-            self.rss[self.largest] / freedom
+            self.rungs.rss[self.largest] / freedom
         } else {
             0.0
         }
@@ -258,8 +249,18 @@ impl Between {
     }
 }
 
+/// What may be rounding in the square of one row's residual.
+pub(crate) fn rounding(rows: &[MeanRow], level: f64) -> f64 {
+    let largest_error = rows
+        .iter()
+        .map(|row| row.error.abs())
+        .fold(level.abs() * f64::EPSILON, f64::max);
+    let unit = ROUNDING_UNITS * f64::EPSILON * (largest_error + level.abs());
+    unit * unit
+}
+
 /// Whether so many segments can bear a degree.
-fn can_bear(segments: usize, degree: usize, forced: bool) -> bool {
+pub(crate) fn can_bear(segments: usize, degree: usize, forced: bool) -> bool {
     if degree == 0 {
         return true;
     }
@@ -271,7 +272,7 @@ fn can_bear(segments: usize, degree: usize, forced: bool) -> bool {
     segments >= needed
 }
 
-fn mean_row(group: &Group<'_>, level: f64) -> Option<MeanRow> {
+pub(crate) fn mean_row(group: &Group<'_>, level: f64) -> Option<MeanRow> {
     let mean = group.factor.mean_row()?;
     let columns = group.factor.columns();
     let mut phi = [0.0; MAX_COLUMNS];
@@ -285,7 +286,7 @@ fn mean_row(group: &Group<'_>, level: f64) -> Option<MeanRow> {
 
 impl MeanRow {
     /// ē − φ̄ᵀβ for the first columns.
-    fn residual(&self, coefficients: &[f64]) -> f64 {
+    pub(crate) fn residual(&self, coefficients: &[f64]) -> f64 {
         coefficients
             .iter()
             .zip(&self.phi)
@@ -308,37 +309,68 @@ fn fitted(rows: &[MeanRow], columns: usize, multiplier: impl Fn(f64) -> f64) -> 
     factor
 }
 
-/// s² within groups and τ² between them, by moments, about the count-weighted fit of degree
-/// `largest`.
-///
-/// `τ² = (Q − (S − p)s²)/(ΣW − ΣW²h)`, at least 0: Q the weighted residual sum of squares, h the
-/// leverage of a mean row (`DerSimonian` & Laird, *Controlled Clinical Trials* 7 (1986) 177, in the
-/// form for a regression; from memory).
-fn weighting(
+/// How groups weigh about the count-weighted fit of degree `largest`.
+fn plain_weighting(
     groups: &[Group<'_>],
     rows: &[MeanRow],
     counted: &Factor,
     largest: usize,
 ) -> Weighting {
+    let Some(coefficients) = counted.solve(largest + 1) else {
+        return Weighting::PLAIN;
+    };
+    let leverage = |row: &MeanRow| counted.leverage(&row.phi[..=largest]).unwrap_or(0.0);
+    let about = About {
+        beta: coefficients.as_slice()[..=largest].to_vec(),
+        leverages: rows.iter().map(leverage).collect(),
+        rss: counted.nested_rss()[largest],
+        freedom: rows.len() as f64 - (largest + 1) as f64,
+    };
+    weighting(groups, rows, &about)
+}
+
+/// A count-weighted fit, about which the variances are taken.
+pub(crate) struct About {
+    /// Coefficients of the leading columns of the groups' factors.
+    pub(crate) beta: Vec<f64>,
+    /// h of each mean row.
+    pub(crate) leverages: Vec<f64>,
+    /// Weighted residual sum of squares of the mean rows.
+    pub(crate) rss: f64,
+    /// Degrees of freedom of `rss`.
+    pub(crate) freedom: f64,
+}
+
+/// Sum of squares within groups about β, and its degrees of freedom.
+pub(crate) fn inside(groups: &[Group<'_>], beta: &[f64]) -> (f64, f64) {
     let mut members = 0;
     for group in groups {
         members += group.factor.rows();
     }
     let freedom = members as f64 - groups.len() as f64;
-    let Some(coefficients) = counted.solve(largest + 1).filter(|_| freedom > 0.0) else {
+    (
+        groups.iter().map(|g| inside_rss(&g.factor, beta)).sum(),
+        freedom,
+    )
+}
+
+/// s² within groups and τ² between them, by moments, about a count-weighted fit.
+///
+/// `τ² = (Q − (S − p)s²)/(ΣW − ΣW²h)`, at least 0: Q the weighted residual sum of squares, h the
+/// leverage of a mean row (`DerSimonian` & Laird, *Controlled Clinical Trials* 7 (1986) 177, in the
+/// form for a regression; from memory).
+pub(crate) fn weighting(groups: &[Group<'_>], rows: &[MeanRow], about: &About) -> Weighting {
+    let (inside, freedom) = inside(groups, &about.beta);
+    if freedom <= 0.0 {
         return Weighting::PLAIN;
-    };
-    let beta = &coefficients.as_slice()[..=largest];
-    let inside: f64 = groups.iter().map(|g| inside_rss(&g.factor, beta)).sum();
+    }
     let within = inside / freedom;
     let (mut total, mut taken) = (0.0, 0.0);
-    for row in rows {
-        let leverage = counted.leverage(&row.phi[..=largest]).unwrap_or(0.0);
+    for (row, leverage) in rows.iter().zip(&about.leverages) {
         total += row.weight;
         taken += row.weight * row.weight * leverage;
     }
-    let spare = rows.len() as f64 - (largest + 1) as f64;
-    let excess = counted.nested_rss()[largest] - spare * within;
+    let excess = about.rss - about.freedom * within;
     let between = if total > taken {
         (excess / (total - taken)).max(0.0)
     } else {

@@ -94,7 +94,7 @@ impl Fit {
         let origin = self.window.newest()?;
         let mut groups = Groups::of(&self.window);
         let when_full = groups.when_full;
-        let basis = if self.degree.announced < 2 {
+        let basis = if self.degree() < 2 {
             Basis::Window
         } else {
             let count = groups.closed.len();

@@ -15,17 +15,19 @@
 //! inflated as for the highest correlation that is ever assumed: wide, but a number.
 
 use crate::event::{CriterionValues, WindowSeen};
+use crate::fit::basis::MAX_INFLUENCES;
 use crate::fit::between::{Between, Groups};
 use crate::fit::correlation::{Caution, cautious, effective_sample_size, variance_inflation};
-use crate::fit::degree::Judged;
 use crate::fit::factor::{Factor, PerColumn};
-use crate::fit::{Fit, Published};
+use crate::fit::gain::Contest;
+use crate::fit::model::Model;
+use crate::fit::{Fit, ModelWeight, Published};
 use crate::math;
 use crate::time::Timestamp;
 use nalgebra::DMatrix;
 
 /// How cautiously r₁ is taken for the uncertainty.
-const PUBLISHING: Caution = Caution {
+pub(crate) const PUBLISHING: Caution = Caution {
     bias: 1.0,
     spread: 1.0,
 };
@@ -35,7 +37,7 @@ const LEAST_SEGMENTS: usize = 3;
 /// (JCGM 100:2008, G.4.2).
 const DECLARED_FREEDOM: f64 = 8.0;
 /// ln of the largest ratio of two residual sums that enters a weight: a part in 1e300.
-const LARGEST_LN_RATIO: f64 = 690.0;
+pub(crate) const LARGEST_LN_RATIO: f64 = 690.0;
 
 /// The plain fit of one degree to all rows: ordinary least squares and nothing else.
 ///
@@ -63,7 +65,7 @@ pub(super) struct Scatter {
     /// (1 + r)/(1 − r).
     pub(super) inflation: f64,
     /// n_eff.
-    effective: f64,
+    pub(crate) effective: f64,
 }
 
 impl Scatter {
@@ -157,14 +159,18 @@ impl Fit {
         let highest = usize::from(forced.unwrap_or(self.setup.max_degree))
             .min(self.window.columns().time_degree());
         let groups = Groups::of(&self.window);
-        let between = Between::of(&groups.closed, highest, forced.is_some());
-        let (mut factor, level) = reweighted(&groups, between.as_ref())?;
+        if !self.model().is_zero_only()
+            && let Some(blended) = self.blended(&groups, row_variance)
+        {
+            return Some(blended);
+        }
+        let judged = Between::of(&groups.closed, highest, forced.is_some());
+        let (mut factor, level) = reweighted(&groups, judged.as_ref())?;
         self.count_days_from(origin, &mut factor);
-        let judged = between.map(Judged::of);
         let scatter = self.scatter(judged.as_ref()).at_least(row_variance);
         let largest = match (&judged, forced) {
             (_, Some(_)) => self.bearable(highest),
-            (Some(judged), None) => judged.between.largest,
+            (Some(judged), None) => judged.largest,
             (None, None) => 0,
         };
         let members = members(
@@ -178,14 +184,15 @@ impl Fit {
         coefficients[0] += level;
         Some(Published {
             origin,
-            degree: self.degree.announced,
+            degree: self.degree(),
+            models: zero_only(&members),
             weights: members.iter().map(|member| member.weight).collect(),
             coefficients: normalised(&coefficients.as_slice()[..=largest]),
             covariance: rows_of(&covariance),
             degrees_of_freedom: scatter.degrees_of_freedom,
             residual_sd: self.rows_sd(largest),
             criterion: match (&judged, forced) {
-                (Some(judged), None) => judged.criterion_values(self.setup.criterion),
+                (Some(judged), None) => Contest::of(judged).criterion_values(self.setup.criterion),
                 _ => CriterionValues {
                     name: String::new(),
                     values: Vec::new(),
@@ -197,8 +204,11 @@ impl Fit {
                 pairs: self.window.rows(),
                 segments: u32::try_from(groups.closed.len()).unwrap_or(u32::MAX),
                 effective_sample_size: scatter.effective,
-                lag_one: judged.map_or(0.0, |judged| judged.between.lag_one),
+                lag_one: judged.map_or(0.0, |judged| judged.lag_one),
             },
+            span: Vec::new(),
+            influences: Vec::new(),
+            terms: self.terms(),
         })
     }
 
@@ -227,9 +237,9 @@ impl Fit {
         (self.window.total().nested_rss()[degree] / freedom.max(1.0)).sqrt()
     }
 
-    fn scatter(&self, judged: Option<&Judged>) -> Scatter {
-        let segments = judged.map_or(0, |judged| judged.between.segments);
-        if let Some(scatter) = judged.and_then(|judged| Scatter::of(&judged.between)) {
+    fn scatter(&self, judged: Option<&Between>) -> Scatter {
+        let segments = judged.map_or(0, |judged| judged.segments);
+        if let Some(scatter) = judged.and_then(Scatter::of) {
             return scatter;
         }
         let sd = self.rows_sd(0);
@@ -266,12 +276,12 @@ fn members(
     largest: usize,
     forced: bool,
     scatter: &Scatter,
-    judged: Option<&Judged>,
+    judged: Option<&Between>,
 ) -> Option<Vec<Member>> {
     let mut logarithms = vec![0.0; largest + 1];
-    if let (false, Some(Judged { between, .. })) = (forced, judged) {
+    if let (false, Some(between)) = (forced, judged) {
         for k in 1..=largest {
-            let (lower, higher) = (between.known_rss(k - 1), between.known_rss(k));
+            let (lower, higher) = (between.rungs.known(k - 1), between.rungs.known(k));
             let ln_ratio = if higher > 0.0 {
                 math::ln(lower / higher).min(LARGEST_LN_RATIO)
             } else {
@@ -307,6 +317,21 @@ fn members(
         .collect()
 }
 
+/// The weights by model.
+fn zero_only(members: &[Member]) -> Vec<ModelWeight> {
+    (0_u8..)
+        .zip(members)
+        .map(|(degree, member)| ModelWeight {
+            model: Model {
+                degree,
+                span: None,
+                influences: [false; MAX_INFLUENCES],
+            },
+            weight: member.weight,
+        })
+        .collect()
+}
+
 /// `β̄ = Σ w_k β_k` and `C = Σ w_k (C_k + (β_k − β̄)(β_k − β̄)ᵀ)`, so that u²(t) = φᵀCφ is
 /// `Σ w_k (u_k² + (ê_k − ê)²)` at every t (Burnham & Anderson, *Model Selection and Multimodel
 /// Inference*, 2nd ed., §4.3, revised estimator; from memory).
@@ -334,11 +359,11 @@ fn mixed(members: &[Member], columns: usize, scatter: &Scatter) -> (PerColumn, D
 }
 
 /// The same numbers, −0 as 0.
-fn normalised(values: &[f64]) -> Vec<f64> {
+pub(crate) fn normalised(values: &[f64]) -> Vec<f64> {
     values.iter().map(|value| value + 0.0).collect()
 }
 
-fn rows_of(matrix: &DMatrix<f64>) -> Vec<Vec<f64>> {
+pub(crate) fn rows_of(matrix: &DMatrix<f64>) -> Vec<Vec<f64>> {
     (0..matrix.nrows())
         .map(|i| (0..matrix.ncols()).map(|j| matrix[(i, j)] + 0.0).collect())
         .collect()

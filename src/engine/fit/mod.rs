@@ -4,6 +4,7 @@
 //! - [`factor`]: rows of a least-squares problem as one small triangle
 //! - `kernel`: its inner loops
 //! - [`basis`]: the columns of a row, and scaled time
+//! - `centre`: where the regressors of a row count from
 //! - [`row`]: one row, and its entries
 //! - [`cut`]: where segments close
 //! - [`segment`]: rows that enter and leave together
@@ -13,35 +14,62 @@
 //! - [`criterion`]: information criteria as plain formulas
 //! - [`correlation`]: what a correlated sample is worth
 //! - `between`: segments of the window, each taken as one row
-//! - `degree`: when the announced degree is raised and lowered
+//! - `gain`: how much better the richer of nested models is
+//! - `ladder`: when a term of the announced model is raised and lowered
+//! - `degree`: when the announced model changes
+//! - [`published`]: the form of what is published
 //! - [`mean`]: the published mean over degrees and its uncertainty
 //! - [`line`]: the straight line of recent pairs that forecasts rest on
 //! - [`forecast`]: where a line with its band meets a limit
 //! - [`cadence`]: how long a drift takes to be seen
+//!
+//! and where the error depends on more than time:
+//! - [`seen`]: the levels and influence quantities that a stretch has seen
+//! - [`model`]: which terms a model has
+//! - `contrast`: what a group of rows says about a regressor beyond its mean row
+//! - `joint`: segments judged by their mean rows and their contrast rows
+//! - `level_noise`: how much of what varies in the level is noise
+//! - `claim`: when span terms and influence quantities are announced, and when refused
+//! - `blend`: the published mean over all these models
 
 pub mod basis;
 pub mod before;
 mod between;
+mod blend;
 pub mod cadence;
+mod centre;
+mod claim;
+mod contrast;
 pub mod correlation;
 pub mod criterion;
 pub mod cut;
 mod degree;
 pub mod factor;
 pub mod forecast;
+mod gain;
+mod joint;
 mod kernel;
+mod ladder;
+mod level_noise;
 pub mod line;
 pub mod mean;
+pub mod model;
+pub mod published;
 pub mod row;
+pub mod seen;
 pub mod segment;
 mod spare;
 pub mod window;
 
-use crate::event::{CriterionValues, Evidence, WindowSeen};
+use crate::event::Evidence;
 use crate::fit::basis::{
     Columns, MAX_INFLUENCES, MAX_SPAN_DEGREE, MAX_TIME_DEGREE, MOST_INFLUENCES,
 };
-use crate::fit::degree::DegreeState;
+pub use crate::fit::centre::Centre;
+use crate::fit::degree::Announced;
+pub use crate::fit::model::Model;
+pub use crate::fit::published::{ModelWeight, Published, SpanRefusal, Terms};
+pub use crate::fit::seen::Seen;
 use crate::fit::window::{Cut, Window, WindowRow};
 use crate::setup::{FitSetup, WindowLength};
 use crate::time::Timestamp;
@@ -52,7 +80,7 @@ use serde::{Deserialize, Serialize};
 pub struct Fit {
     setup: FitSetup,
     window: Window,
-    degree: DegreeState,
+    announced: Announced,
     seen: Seen,
 }
 
@@ -61,15 +89,6 @@ pub struct Fit {
 const LARGEST_VALUE: f64 = 1e120;
 /// Largest weight of a row, and the smallest one's inverse.
 const LARGEST_WEIGHT: f64 = 1e30;
-
-/// Lowest and highest regressors that entered a stretch; `None` before the first row.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
-pub struct Seen {
-    /// Of x.
-    pub x: Option<(f64, f64)>,
-    /// Of each influence quantity.
-    pub influences: [Option<(f64, f64)>; MAX_INFLUENCES],
-}
 
 /// One pair as the fit sees it.
 #[derive(Clone, Copy, Debug)]
@@ -112,39 +131,31 @@ pub struct Prediction {
     pub degrees_of_freedom: f64,
 }
 
-/// The announced degree changed.
+/// One term of the announced model.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
+pub enum Term {
+    /// The degree of the zero in time.
+    Zero,
+    /// The span.
+    Span,
+    /// The influence quantity at this place.
+    Influence(u8),
+}
+
+/// The announced model changed in one term.
 #[derive(Clone, Debug)]
 pub struct Change {
-    /// Before.
+    /// Which.
+    pub term: Term,
+    /// Before: the degree of the zero; how many span coefficients (none, or degree + 1); whether (1)
+    /// or not (0) an influence quantity is in use.
     pub from: u8,
     /// After.
     pub to: u8,
-    /// The numbers that decided it.
+    /// The numbers that decided it; values per rung of the term.
     pub evidence: Evidence,
-}
-
-/// The mean over degrees: ê(t) with its covariance.
-#[derive(Clone, Debug)]
-pub struct Published {
-    /// Zero of the polynomial's time: the newest pair.
-    pub origin: Timestamp,
-    /// The announced degree.
-    pub degree: u8,
-    /// Weight of each degree 0 … maximum.
-    pub weights: Vec<f64>,
-    /// Coefficients of ê(t), constant first, t in days from `origin`; as many as the highest degree
-    /// with weight needs.
-    pub coefficients: Vec<f64>,
-    /// Covariance of the coefficients, between-model spread included: u²(t) = φᵀ C φ.
-    pub covariance: Vec<Vec<f64>>,
-    /// Degrees of freedom of the fit's part of u.
-    pub degrees_of_freedom: f64,
-    /// Residual standard deviation of the rows under the largest model.
-    pub residual_sd: f64,
-    /// Criterion per degree.
-    pub criterion: CriterionValues,
-    /// What it looked at.
-    pub window: WindowSeen,
+    /// A span was withdrawn because it can no longer be told from other things.
+    pub refused: Option<SpanRefusal>,
 }
 
 impl Fit {
@@ -165,7 +176,7 @@ impl Fit {
         Self {
             setup,
             window: Window::new(columns, cut),
-            degree: DegreeState::new(setup.forced_degree.map_or(0, |forced| forced.min(highest))),
+            announced: Announced::new(setup.forced_degree.map_or(0, |forced| forced.min(highest))),
             seen: Seen::default(),
         }
     }
@@ -230,28 +241,32 @@ impl Fit {
     pub fn predict(
         &self,
         time: Timestamp,
-        _x: f64,
-        _influences: [f64; MAX_INFLUENCES],
+        x: f64,
+        influences: [f64; MAX_INFLUENCES],
     ) -> Option<Prediction> {
-        self.window
-            .predict(usize::from(self.degree.announced), time)
-    }
-}
-
-impl Seen {
-    /// Takes a row that entered.
-    fn take(&mut self, row: &Row, columns: Columns) {
-        widen(&mut self.x, row.x);
-        let influences = self.influences.iter_mut().zip(row.influences);
-        for (range, value) in influences.take(columns.influence_columns()) {
-            widen(range, value);
+        let model = self.model();
+        let zero = || self.window.predict(usize::from(model.degree), time);
+        if model.is_zero_only() {
+            return zero();
         }
+        let row = WindowRow {
+            time,
+            error: 0.0,
+            weight: 1.0,
+            x,
+            influences,
+        };
+        model.predict(&self.window, &row).or_else(zero)
     }
-}
 
-fn widen(range: &mut Option<(f64, f64)>, value: f64) {
-    if value.is_finite() {
-        let (lowest, highest) = range.unwrap_or((value, value));
-        *range = Some((lowest.min(value) + 0.0, highest.max(value) + 0.0));
+    /// What is known of the terms beside the numbers of the mean.
+    fn terms(&self) -> Terms {
+        Terms {
+            announced: self.model(),
+            span_side: self.setup.span_side(),
+            centre: self.window.centre(),
+            learned: self.seen,
+            span_refused: self.announced.claims.refused,
+        }
     }
 }

@@ -1,6 +1,7 @@
 //! One row of the fit, and its entries in a frame.
 
-use crate::fit::basis::{Centre, Columns, Frame, MAX_INFLUENCES};
+use crate::fit::basis::{Columns, Frame, MAX_INFLUENCES};
+use crate::fit::centre::Centre;
 use crate::time::Timestamp;
 
 /// One row of the fit. All numbers are finite.
@@ -19,6 +20,14 @@ pub struct WindowRow {
 }
 
 impl WindowRow {
+    /// The centre that its own regressors are.
+    pub(crate) fn centre(&self) -> Centre {
+        Centre {
+            x: self.x,
+            influences: self.influences,
+        }
+    }
+
     /// The same row, its regressors counted from a centre.
     pub(crate) fn counted_from(&self, centre: Centre) -> Self {
         let [first, second] = self.influences;

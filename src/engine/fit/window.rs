@@ -21,16 +21,13 @@
 //! enters the open segment, unless it is older than the oldest row of a window that has already
 //! dropped some.
 //!
-//! **Centre.** The regressor of the span terms and the influence quantities count from a common
-//! centre: the first row's, then, once there are [`SETTLED`] segments, the mean of the rows so far.
-//! It stays there for the life of the window, unless the rows are so far off that their spread would
-//! lose digits beside their distance.
+//! **Centre.** Regressors of span and influence terms count from a common centre; see `centre`.
 //!
 //! The state is stored whole, aggregates included: their last bits depend on the order in which
 //! rows came, and a restored window must go on with the same bits.
 
-use crate::fit::Prediction;
-use crate::fit::basis::{Centre, Columns, Frame};
+use crate::fit::basis::{Columns, Frame};
+use crate::fit::centre::{Centre, FAR_OFF, SETTLED, shift_to_mean};
 pub use crate::fit::cut::Cut;
 use crate::fit::factor::Factor;
 use crate::fit::kernel::MAX_WIDTH;
@@ -47,12 +44,6 @@ use std::collections::VecDeque;
 const GAP_DIVISOR: i64 = 4;
 /// A row further than this from the origin, in units of the window, moves the frame.
 const FAR: f64 = 2.0;
-
-/// Closed segments of which the centre is the mean.
-const SETTLED: usize = 8;
-/// A centre so many standard deviations from the mean of the rows is moved there. A distance of d
-/// of them costs about 2·log₁₀(d) of sixteen digits.
-const FAR_OFF: f64 = 30.0;
 
 /// What an insertion did.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
@@ -210,10 +201,7 @@ impl Window {
             return self.insert_centred(row);
         }
         if self.newest.is_none() {
-            self.centre = Centre {
-                x: row.x,
-                influences: row.influences,
-            };
+            self.centre = row.centre();
         }
         let frame = self.frame;
         let inserted = self.insert_centred(&row.counted_from(self.centre));
@@ -244,36 +232,6 @@ impl Window {
             Cut::Time { slice, .. } => self.insert_late(row, slice),
             Cut::Rows { per_segment, keep } => self.insert_counted(row, per_segment, keep),
         }
-    }
-
-    /// The plain least-squares fit of this degree in time to all rows, evaluated at `time`; `None`
-    /// if there are no more rows than coefficients, or not at enough different times.
-    ///
-    /// # Panics
-    /// If the window has no such degree.
-    #[must_use]
-    pub fn predict(&self, degree: usize, time: Timestamp) -> Option<Prediction> {
-        let columns = degree + 1;
-        assert!(
-            columns <= self.columns.time_degree() + 1,
-            "a degree of this window"
-        );
-        // Counts of rows stay far below 2^53.
-        let degrees_of_freedom = self.rows() as f64 - columns as f64;
-        if degrees_of_freedom < 1.0 {
-            return None;
-        }
-        let coefficients = self.total.solve(columns)?;
-        let phi = Columns::powers(degree, self.frame.scaled(time));
-        let leverage = self.total.leverage(&phi[..columns])?;
-        let relative: f64 = phi.iter().zip(&coefficients).map(|(p, c)| p * c).sum();
-        let rss = self.total.nested_rss()[degree];
-        Some(Prediction {
-            error: self.total_level + relative + 0.0,
-            leverage,
-            residual_sd: (rss / degrees_of_freedom).sqrt(),
-            degrees_of_freedom,
-        })
     }
 
     fn insert_newest(&mut self, row: &WindowRow) -> Inserted {
@@ -486,39 +444,16 @@ impl Window {
         self.rebuild();
     }
 
-    /// Moves the centre of each regressor to the mean of the rows if that is more than so many
-    /// standard deviations away.
+    /// Moves the centre of regressors whose mean is further from it than is tolerated.
     fn move_centre(&mut self, tolerated: f64) {
-        let shift_of = |place: usize| {
-            let mean = self.total.mean_row().map_or(0.0, |mean| mean[place]);
-            let about_mean: f64 = (1..=place)
-                .map(|i| self.total.entry(i, place) * self.total.entry(i, place))
-                .sum();
-            let spread = (about_mean / self.total.weight_sum()).sqrt();
-            if mean.is_finite() && mean.abs() > tolerated * spread {
-                mean
-            } else {
-                0.0
+        let shift = shift_to_mean(&self.total, self.columns, tolerated);
+        if shift != Centre::default() {
+            for segment in self.closed.iter_mut().chain(&mut self.open) {
+                self.columns.move_centre(&mut segment.factor, shift);
             }
-        };
-        let mut shift = Centre::default();
-        if self.columns.span_columns() > 0 {
-            shift.x = shift_of(self.columns.span_place(0));
+            self.centre = self.centre.moved(shift);
+            self.rebuild();
         }
-        for influence in 0..self.columns.influence_columns() {
-            shift.influences[influence] = shift_of(self.columns.influence_place(influence));
-        }
-        if shift == Centre::default() {
-            return;
-        }
-        for segment in self.closed.iter_mut().chain(&mut self.open) {
-            self.columns.move_centre(&mut segment.factor, shift);
-        }
-        self.centre.x += shift.x;
-        for (centre, by) in self.centre.influences.iter_mut().zip(shift.influences) {
-            *centre += by;
-        }
-        self.rebuild();
     }
 
     /// Builds all aggregates from the segments: every closed segment goes to the front.

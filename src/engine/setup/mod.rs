@@ -6,14 +6,12 @@
 
 mod channel;
 mod fit;
-mod influence;
 mod reference;
 
 pub use channel::{
     AlarmSetup, ChannelSetup, DecisionRule, PublishSetup, RateLimit, Repeats, ScreeningSetup,
 };
 pub use fit::{Criterion, FitSetup, PairNoise, SpanSide, WindowLength};
-pub use influence::{ChannelInfluence, InfluenceSetup};
 pub use reference::{ReferenceKind, ReferenceSetup, Stamped, UNCERTAINTY_RATIO_MIN};
 
 use serde::{Deserialize, Serialize};
@@ -28,11 +26,6 @@ pub struct ChannelId(pub u32);
 #[serde(transparent)]
 pub struct ReferenceId(pub u32);
 
-/// Position of an influence quantity's source in [`Setup::influences`].
-#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
-#[serde(transparent)]
-pub struct InfluenceId(pub u32);
-
 /// One whole configuration of a node.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Setup {
@@ -45,8 +38,6 @@ pub struct Setup {
     pub fingerprint: String,
     /// All references: named ones, and one for every channel that declares its own inline.
     pub references: Vec<ReferenceSetup>,
-    /// All sources of influence quantities.
-    pub influences: Vec<InfluenceSetup>,
     /// All channels.
     pub channels: Vec<ChannelSetup>,
 }
@@ -59,7 +50,6 @@ impl Default for Setup {
             clock: Clock::Live,
             fingerprint: String::new(),
             references: Vec::new(),
-            influences: Vec::new(),
             channels: Vec::new(),
         }
     }

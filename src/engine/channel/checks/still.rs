@@ -103,7 +103,12 @@ mod tests {
     use crate::channel::testing::channel_setup;
 
     fn pair(time: i64, indication: f64, reference: f64) -> Pair {
-        Pair::at(Timestamp(time), indication, reference)
+        Pair {
+            time: Timestamp(time),
+            indication,
+            reference,
+            weight: 1.0,
+        }
     }
 
     #[test]

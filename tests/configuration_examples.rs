@@ -56,12 +56,16 @@ fn the_example_of_every_setting_misses_none() {
         known.len() > 60,
         "the parser asked for too little to mean anything: {known:?}"
     );
-    // A channel's own reference has the settings of a [[reference]], shown there.
+    // A channel's own reference has the settings of a [[reference]], and an influence quantity's
+    // place those of an indication's, shown there.
     let shown = |key: &str| {
         present.contains(key)
             || key
                 .strip_prefix("channel.")
                 .is_some_and(|key| present.contains(key))
+            || key
+                .strip_prefix("channel.influences.")
+                .is_some_and(|key| present.contains(&format!("channel.indication.{key}")))
     };
     let missing: Vec<_> = known
         .iter()
@@ -165,7 +169,19 @@ fn the_channels_arrive_as_written() {
     assert_eq!(ph.fit.criterion, Criterion::Bic);
     assert_eq!(ph.screening.range, Some((0.0, 14.0)));
     assert_eq!(ph.alarms.gap_after, Some(Duration::from_seconds(7200)));
-    assert!(ph.corrected_values);
+    assert!(ph.corrected_values && !ph.monitor_only);
+    let influences: Vec<_> = ph.influences.iter().map(|it| it.name.as_str()).collect();
+    assert_eq!(influences, ["temperature", "flow"]);
+    assert_eq!(ph.influences[0].unit.as_deref(), Some("Cel"));
+    assert_eq!(setup.influences[0].name, "works/intake/t1 \"/t\"");
+    assert_eq!(setup.influences[1].name, "works/intake/ph1 \"/flow\"");
+    let checked = &setup.channels[8];
+    assert_eq!(
+        setup.references[checked.reference.0 as usize].kind,
+        ReferenceKind::Checks {
+            points: vec![ReferenceId(2), ReferenceId(3)]
+        }
+    );
 
     let levels = &setup.channels[4..8];
     let members: Vec<_> = levels

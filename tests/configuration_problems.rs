@@ -730,10 +730,13 @@ fn names_and_places_are_used_once() {
         &["reference a", "[[reference]]"],
     );
     let named = "[[reference]]\nname = \"a\"\ntopic = \"c\"\n";
-    one(
-        &format!("{HEAD}{CHANNEL}{named}"),
-        "f:10:13: error: channel[1].reference",
-        &["rename"],
+    let found = problems(&format!("{HEAD}{CHANNEL}{named}"));
+    assert!(
+        found.len() == 2
+            && found[0].starts_with("f:10:13: error: channel[1].reference")
+            && found[0].contains("rename")
+            && found[1].contains("warning: reference[1].name: no channel is judged"),
+        "{found:?}"
     );
 }
 

@@ -274,7 +274,7 @@ impl Stage {
     fn channel_id(&self, name: &str) -> ChannelId {
         match self.source(name) {
             Source::Indication(id) => id,
-            Source::Reference(_) => panic!("{name} is no channel"),
+            Source::Reference(_) | Source::Influence(_) => panic!("{name} is no channel"),
         }
     }
 
@@ -289,6 +289,7 @@ impl Stage {
             Subject::Node => "node",
             Subject::Channel(id) => &self.setup.channels[id.0 as usize].name,
             Subject::Reference(id) => &self.setup.references[id.0 as usize].name,
+            Subject::Influence(id) => &self.setup.influences[id.0 as usize].name,
         }
     }
 

@@ -134,6 +134,12 @@ fn write_sound(file: &str, configuration: &Configuration, out: &mut impl Write) 
         writeln!(out, "          against {}", reference(channel, setup))?;
         writeln!(out, "          {}", fit(channel))?;
         writeln!(out, "          {}", limits(channel))?;
+        for line in influences(channel, setup) {
+            writeln!(out, "          {line}")?;
+        }
+        if channel.monitor_only {
+            writeln!(out, "          monitored only: no correction is published")?;
+        }
     }
     let warnings = counted(configuration.warnings.len(), "warning");
     writeln!(
@@ -164,6 +170,13 @@ fn reference(channel: &ChannelSetup, setup: &Setup) -> String {
                 ""
             };
             format!("the known value {value} {}{gated}", channel.unit)
+        }
+        ReferenceKind::Checks { points } => {
+            let points = points
+                .iter()
+                .filter_map(|id| setup.references.get(id.0 as usize));
+            let names: Vec<&str> = points.map(|point| point.name.as_str()).collect();
+            format!("{} while their valid_when holds", names.join(", "))
         }
         ReferenceKind::Group { members } => {
             let members = members
@@ -205,6 +218,15 @@ fn limits(channel: &ChannelSetup) -> String {
         limit(channel.max_drift_rate, &format!("{unit}/d")),
         channel.alarms.gap_after.map_or("none".to_owned(), shown),
     )
+}
+
+/// What acts on the channel, one line each.
+fn influences(channel: &ChannelSetup, setup: &Setup) -> Vec<String> {
+    let named = channel.influences.iter().filter_map(|influence| {
+        let source = setup.influences.get(influence.source.0 as usize)?;
+        Some(format!("influence {} from {}", influence.name, source.name))
+    });
+    named.collect()
 }
 
 /// A length of time in the largest unit that shows it without fractions.

@@ -107,6 +107,7 @@ fn read<'source>(
     top.finish();
     let Draft {
         references,
+        influences,
         channels,
         wires,
         ..
@@ -117,6 +118,7 @@ fn read<'source>(
         clock,
         fingerprint: String::new(),
         references,
+        influences,
         channels,
     };
     Some(Configuration {
@@ -177,7 +179,9 @@ fn read_entries<'source>(
         }
         channel::read(section, name, readings_clock, draft);
     }
+    crosscheck::refuse_influence_on_itself(top.source(), draft);
     crosscheck::warn_about_references(&channels, draft);
+    crosscheck::warn_about_unused(&references, draft);
     if let Some(defaults) = defaults.filter(|_| !channels.is_empty()) {
         for found in ["name", "indication"]
             .into_iter()

@@ -1,15 +1,17 @@
 //! A channel: `[[channel]]`, with what `[defaults]` says for all.
 
 use super::draft::{Draft, Wire};
+use super::fit;
+use super::influence;
 use super::place::{self, Place};
-use super::quantity;
 use super::reader::Section;
 use super::reference::{self, Beside};
 use super::screening;
+use super::source::Found;
 use crate::payload::{Format, Target, Use};
 use holdtrue_engine::setup::{
-    AlarmSetup, ChannelSetup, Criterion, DecisionRule, FitSetup, PairNoise, PublishSetup,
-    ReferenceId, WindowLength,
+    AlarmSetup, ChannelSetup, DecisionRule, PairNoise, PublishSetup, ReferenceId, ReferenceKind,
+    ReferenceSetup,
 };
 use holdtrue_engine::time::Duration;
 
@@ -19,18 +21,6 @@ const DAY: Duration = Duration::from_seconds(86_400);
 const LATENESS: Duration = Duration::from_seconds(10);
 /// Default of `max_gap`.
 const MAX_GAP: Duration = Duration::from_seconds(15 * 60);
-/// Default of `window`.
-const WINDOW: WindowLength = WindowLength::Time(Duration::from_seconds(30 * 86_400));
-/// Default of `segments`; with fewer pairs as many as there are pairs.
-const SEGMENTS: u32 = 64;
-/// Most segments.
-const SEGMENTS_MAX: u32 = 1024;
-/// Shortest slice of time that a window is cut into.
-const SEGMENT_MIN: Duration = Duration(1_000_000);
-/// Default of `max_degree`.
-const MAX_DEGREE: u8 = 2;
-/// Highest degree.
-const DEGREE_LIMIT: u8 = 5;
 /// Default of `decision_rule`: guard band w = U, the cautious one.
 const DECISION_RULE: DecisionRule = DecisionRule::GuardBand { multiple: 1.0 };
 /// Default of `service_horizon`: two weekly rounds of a technician (common practice).
@@ -61,19 +51,34 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
         indication: indication.as_ref(),
     };
     let reference = reference(section, &beside, draft);
+    let influences = influence::read(section, name, indication.as_ref(), draft);
+    let corrected_values = section.truth("corrected_values");
+    let monitor_only = section
+        .truth("monitor_only")
+        .is_some_and(|found| found.value);
+    if monitor_only {
+        refuse_with_monitor_only(section, reference, corrected_values.as_ref(), draft);
+    }
     let lateness = section
         .duration("lateness")
         .map_or(LATENESS, |found| found.value);
-    let fit = fit(section);
-    warn_about_window(section, &fit, lateness);
+    let not_negative = |key| {
+        let found = section.number_in(key, |x| x >= 0.0, "zero or more");
+        found.map_or(0.0, |found| found.value + 0.0)
+    };
+    let noise = not_negative("noise");
+    let resolution = not_negative("resolution");
+    let told = draft.references.get(reference.0 as usize);
+    let fit = fit::read(
+        section,
+        pair_noise(told, noise, resolution),
+        influences.len(),
+    );
+    fit::warn_about_window(section, &fit, lateness);
     let positive = |key| {
         section
             .number_in(key, |x| x > 0.0, "greater than zero")
             .map(|found| found.value)
-    };
-    let not_negative = |key| {
-        let found = section.number_in(key, |x| x >= 0.0, "zero or more");
-        found.map_or(0.0, |found| found.value + 0.0)
     };
     let coverage = section.number_in(
         "coverage",
@@ -84,6 +89,7 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
         name: name.to_owned(),
         unit: unit.map(|found| found.value.to_owned()).unwrap_or_default(),
         reference,
+        influences,
         lag: section
             .signed_duration("lag")
             .map_or(Duration::ZERO, |found| found.value),
@@ -98,15 +104,14 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
         service_horizon: section
             .positive_duration("service_horizon")
             .map_or(SERVICE_HORIZON, |found| found.value),
-        resolution: not_negative("resolution"),
-        noise: not_negative("noise"),
+        resolution,
+        noise,
         max_drift_rate: positive("max_drift_rate"),
         coverage: coverage.map_or(COVERAGE, |found| found.value),
         publish: publish(section),
         alarms: alarms(section),
-        corrected_values: section
-            .truth("corrected_values")
-            .is_some_and(|found| found.value),
+        corrected_values: corrected_values.is_some_and(|found| found.value),
+        monitor_only,
     };
     section.finish();
     draft.channels.push(channel);
@@ -182,66 +187,17 @@ fn reference(section: &Section<'_>, beside: &Beside<'_>, draft: &mut Draft) -> R
     id
 }
 
-/// `window`, `segments`, `max_degree`, `degree`, `criterion`.
-fn fit(section: &Section<'_>) -> FitSetup {
-    let window = section
-        .text("window")
-        .and_then(|found| match quantity::window(found.value) {
-            Ok(window) => Some(window),
-            Err(message) => {
-                section.wrong(&found, message);
-                None
-            }
-        });
-    let window = window.unwrap_or(WINDOW);
-    let told = section.integer_in("segments", 1..=SEGMENTS_MAX);
-    let segments = told.as_ref().map_or(SEGMENTS, |found| found.value);
-    let segments = match window {
-        WindowLength::Pairs(pairs) if pairs < segments => {
-            if let Some(found) = &told {
-                let message =
-                    format!("more segments than the window's {pairs} pairs; write at most {pairs}");
-                section.wrong(found, message);
-            }
-            pairs
-        }
-        WindowLength::Time(length) if length.0 / i64::from(segments) < SEGMENT_MIN.0 => {
-            let at = section
-                .place("window")
-                .or_else(|| section.place("segments"));
-            if let Some(found) = at {
-                section.wrong(&found, "its segments would be shorter than 1 ms");
-            }
-            segments
-        }
-        _ => segments,
-    };
-    let max_degree = section.integer_in("max_degree", 0..=DEGREE_LIMIT);
-    let forced = section.integer_in("degree", 0..=DEGREE_LIMIT);
-    let forced_degree = forced.as_ref().map(|found| found.value);
-    if let (Some(found), Some(max)) = (&forced, &max_degree)
-        && found.value > max.value
-    {
-        section.wrong(
-            found,
-            format!("is above max_degree, which is {}", max.value),
-        );
-    }
-    let criterion = section.choice(
-        "criterion",
-        &[("bic", Criterion::Bic), ("aicc", Criterion::Aicc)],
-    );
-    FitSetup {
-        window,
-        segments,
-        max_degree: max_degree.map_or(MAX_DEGREE.max(forced_degree.unwrap_or(0)), |found| {
-            found.value
-        }),
-        forced_degree,
-        criterion: criterion.map_or(Criterion::Bic, |found| found.value),
-        max_span_degree: None,
-        influences: 0,
-        noise: PairNoise::default(),
+/// What is declared of the random part of both sides of a pair. The resolution alone says nothing
+/// about an indication's noise, and its noise nothing about the mean over an interval.
+fn pair_noise(reference: Option<&ReferenceSetup>, noise: f64, resolution: f64) -> PairNoise {
+    let single = reference.is_none_or(|reference| reference.stands_for == Duration::ZERO);
+    PairNoise {
+        reference: reference.map_or(0.0, |reference| reference.uncertainty_each),
+        indication: if noise > 0.0 && single {
+            (noise * noise + resolution * resolution / 12.0).sqrt()
+        } else {
+            0.0
+        },
     }
 }
 
@@ -268,24 +224,28 @@ fn decision_rule(section: &Section<'_>) -> DecisionRule {
     })
 }
 
-/// What a window makes hard to see. A cycle needs three periods in the window, or it is taken for
-/// drift: with one period every run of a trial raised the degree.
-fn warn_about_window(section: &Section<'_>, fit: &FitSetup, lateness: Duration) {
-    let WindowLength::Time(length) = fit.window else {
-        return;
-    };
-    let Some(found) = section.place("window") else {
-        return;
-    };
-    let warn = |message: &str| section.source().warn(&found.span, &found.key, message);
-    if length.0 < 3 * DAY.0 && fit.forced_degree.is_none() && fit.max_degree > 0 {
-        warn(
-            "holds fewer than three days: a daily cycle (temperature, sun) would be taken for \
-             drift; lengthen it, unless the sensor has no such cycle",
-        );
+/// What a safety, legal or custody measurement may not have: a value made of its correction, and
+/// the median of its neighbours as its judge (field-notes §3: such a member of a group may not be
+/// corrected from the group).
+fn refuse_with_monitor_only(
+    section: &Section<'_>,
+    reference: ReferenceId,
+    corrected_values: Option<&Found<bool>>,
+    draft: &Draft,
+) {
+    if let Some(found) = corrected_values.filter(|found| found.value) {
+        let message = "can't be with monitor_only = true: no correction of this channel is ever \
+                       published; remove one of both";
+        section.wrong(found, message);
     }
-    if lateness > length {
-        warn("is shorter than `lateness`: the latest readings would find their window gone");
+    let setup = draft.references.get(reference.0 as usize);
+    if matches!(setup.map(|it| &it.kind), Some(ReferenceKind::Group { .. }))
+        && let Some(found) = section.place("reference")
+    {
+        let message = "is a group, but monitor_only = true says that this is a safety, legal or \
+                       custody measurement: it may not be judged by the median of its neighbours; \
+                       give it a reference of its own (it may be a member of others' groups)";
+        section.wrong(&found, message);
     }
 }
 

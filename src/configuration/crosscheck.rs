@@ -5,7 +5,7 @@ use super::name;
 use super::reader::Section;
 use super::source::{Found, Source};
 use crate::payload::{Format, Tables, Target, Use};
-use holdtrue_engine::setup::{ChannelSetup, ReferenceKind, UNCERTAINTY_RATIO_MIN};
+use holdtrue_engine::setup::{ChannelSetup, ReferenceId, ReferenceKind, UNCERTAINTY_RATIO_MIN};
 use std::collections::BTreeMap;
 use std::mem::discriminant;
 
@@ -32,7 +32,8 @@ pub(super) fn tables(
         uses.sort_by_key(|wanted| match wanted.target {
             Target::Gate { .. } => 0,
             Target::Reference(_) => 1,
-            Target::Indication(_) => 2,
+            Target::Influence(_) => 2,
+            Target::Indication(_) => 3,
         });
     }
     let filters = filters(source, subscribe, topics.keys());
@@ -56,6 +57,24 @@ fn refuse_loops(source: &Source<'_>, own: &str, subscribe: &[Found<String>], wir
         );
         source.error(&wire.topic.span, &wire.topic.key, message);
     }
+    // Another node's corrected value bears a correction all the same, maybe one that rests on us.
+    let corrected = |topic: &str| {
+        let mut levels = topic.split('/').skip(2);
+        topic.starts_with("holdtrue/")
+            && !topic.starts_with(own)
+            && levels.next() == Some("corrected")
+    };
+    for wire in wires
+        .iter()
+        .filter(|wire| wire.is_judged() && corrected(&wire.topic.value))
+    {
+        let message = format!(
+            "\"{}\" is a corrected value of another node: fitting against it would take its \
+             correction for the truth; name the sensor's or the reference's own topic",
+            wire.topic.value
+        );
+        source.error(&wire.topic.span, &wire.topic.key, message);
+    }
     for filter in subscribe
         .iter()
         .filter(|filter| name::reaches_below(&filter.value, own))
@@ -68,13 +87,11 @@ fn refuse_loops(source: &Source<'_>, own: &str, subscribe: &[Found<String>], wir
     }
 }
 
-/// A place in a payload is one sensor's or one reference's value; only gates may share theirs.
+/// A place in a payload is one sensor's or one reference's value; only gates may share theirs, and
+/// what is measured for its own sake may also act on another sensor.
 fn refuse_double_use(source: &Source<'_>, wires: &[Wire]) {
     let mut first: BTreeMap<(&str, &str), &Wire> = BTreeMap::new();
-    for wire in wires
-        .iter()
-        .filter(|wire| !matches!(wire.wanted.target, Target::Gate { .. }))
-    {
+    for wire in wires.iter().filter(|wire| wire.is_judged()) {
         let Some(earlier) = first.insert((&wire.topic.value, &wire.address), wire) else {
             continue;
         };
@@ -149,6 +166,61 @@ fn filters<'topic>(
     filters.sort();
     filters.dedup();
     filters
+}
+
+/// What a channel measures, and what it is judged against, can't be told apart from what acts on
+/// it.
+pub(super) fn refuse_influence_on_itself(source: &Source<'_>, draft: &Draft) {
+    for wire in &draft.wires {
+        let Target::Influence(influence) = wire.wanted.target else {
+            continue;
+        };
+        let mut same = draft
+            .wires
+            .iter()
+            .filter(|other| other.topic.value == wire.topic.value && other.address == wire.address);
+        let acts_on =
+            |channel: &ChannelSetup| channel.influences.iter().any(|it| it.source == influence);
+        let clash = same.find(|other| match other.wanted.target {
+            Target::Indication(id) => draft.channels.get(id.0 as usize).is_some_and(acts_on),
+            Target::Reference(id) => draft
+                .channels
+                .iter()
+                .any(|channel| channel.reference == id && acts_on(channel)),
+            Target::Influence(_) | Target::Gate { .. } => false,
+        });
+        if let Some(clash) = clash {
+            let message = format!(
+                "{} of \"{}\" is the value of {}: an error that depends on it is span drift, not \
+                 an influence; leave it out and set max_span_degree",
+                wire.address, wire.topic.value, clash.owner
+            );
+            source.error(&wire.topic.span, &wire.topic.key, message);
+        }
+    }
+}
+
+/// A named reference that nobody is judged against.
+pub(super) fn warn_about_unused(sections: &[Section<'_>], draft: &Draft) {
+    let used = |id: ReferenceId| {
+        draft.channels.iter().any(|channel| {
+            let reference = draft.references.get(channel.reference.0 as usize);
+            channel.reference == id
+                || matches!(
+                    reference.map(|it| &it.kind),
+                    Some(ReferenceKind::Checks { points }) if points.contains(&id)
+                )
+        })
+    };
+    for (section, id) in sections.iter().zip(0..) {
+        if !used(ReferenceId(id))
+            && let Some(found) = section.place("name")
+        {
+            let message =
+                "no channel is judged against this reference; name it in one, or remove it";
+            section.source().warn(&found.span, &found.key, message);
+        }
+    }
 }
 
 /// Whether each channel's reference is good enough for its limit.

@@ -1,8 +1,10 @@
 //! What has been read so far, while references and channels still refer to each other by name.
 
 use super::source::Found;
-use crate::payload::Use;
-use holdtrue_engine::setup::{ChannelId, ChannelSetup, ReferenceId, ReferenceSetup};
+use crate::payload::{Target, Use};
+use holdtrue_engine::setup::{
+    ChannelId, ChannelSetup, InfluenceId, InfluenceSetup, ReferenceId, ReferenceSetup,
+};
 use holdtrue_engine::time::Timestamp;
 use std::collections::BTreeMap;
 
@@ -11,6 +13,8 @@ pub(super) struct Draft {
     /// When the file is read; tells which certificates have expired.
     pub(super) now: Timestamp,
     pub(super) references: Vec<ReferenceSetup>,
+    /// Sources of influence quantities, each place once.
+    pub(super) influences: Vec<InfluenceSetup>,
     pub(super) channels: Vec<ChannelSetup>,
     /// All channel names, before the channels are read: a group may name a later one.
     pub(super) channel_ids: BTreeMap<String, ChannelId>,
@@ -30,11 +34,22 @@ pub(super) struct Wire {
     pub(super) wanted: Use,
 }
 
+impl Wire {
+    /// Whether it is a side of pairs: an indication or a reference value.
+    pub(super) fn is_judged(&self) -> bool {
+        matches!(
+            self.wanted.target,
+            Target::Indication(_) | Target::Reference(_)
+        )
+    }
+}
+
 impl Draft {
     pub(super) fn new(now: Timestamp) -> Self {
         Self {
             now,
             references: Vec::new(),
+            influences: Vec::new(),
             channels: Vec::new(),
             channel_ids: BTreeMap::new(),
             reference_ids: BTreeMap::new(),
@@ -50,6 +65,12 @@ impl Draft {
     /// The position that the next channel will have.
     pub(super) fn next_channel(&self) -> ChannelId {
         ChannelId(position(self.channels.len()))
+    }
+
+    /// Adds a source of an influence quantity.
+    pub(super) fn add_influence(&mut self, name: String) -> InfluenceId {
+        self.influences.push(InfluenceSetup { name });
+        InfluenceId(position(self.influences.len() - 1))
     }
 
     /// "; did you mean …?" for a channel name that does not exist.

@@ -12,7 +12,7 @@
 //! - `place`: where in which payload a value stands
 //! - `service`: the tables `[node]`, `[broker]`, `[record]`, `[page]`
 //! - `draft`: what has been read while entries still refer to each other by name
-//! - `reference`, `channel`: one entry each
+//! - `reference`, `influence`, `fit`, `screening`, `channel`: one entry each
 //! - `crosscheck`: what only shows when all entries are known
 //! - `assemble`: a file from top to bottom
 
@@ -22,6 +22,8 @@ mod assemble;
 mod channel;
 mod crosscheck;
 mod draft;
+mod fit;
+mod influence;
 mod name;
 mod place;
 mod quantity;

@@ -65,6 +65,7 @@ pub(super) fn value(section: &Section<'_>, beside: Option<&Place>) -> Option<Pla
     if matches!(format, Format::Plain) && !section.has("topic") && beside.is_some() {
         let advice = "name the JSON pointer of the value in the indication's payload, or a topic";
         section.missing("value", advice);
+        return None;
     }
     Some(Place {
         topic: topic?,

@@ -12,6 +12,8 @@ use holdtrue_engine::time::{Duration, Timestamp};
 const DAY: Duration = Duration::from_seconds(86_400);
 /// Length of a date without a time of day.
 const DATE_LENGTH: usize = 10;
+/// Fewest known values of a reference that is made of several.
+const POINTS_MIN: usize = 2;
 /// Fewest other members of a group.
 const OTHERS_MIN: usize = 3;
 
@@ -33,7 +35,10 @@ pub(super) fn read(
 ) {
     let id = draft.next_reference();
     let kind = kind(section, name, id, beside, draft);
-    let (each, common) = uncertainty(section);
+    let (each, common) = match &kind {
+        ReferenceKind::Checks { points } => largest_uncertainty(points, draft),
+        _ => uncertainty(section),
+    };
     let (stands_for, stamped) = interval(section);
     let certificate = section
         .text("certificate")
@@ -63,7 +68,8 @@ pub(super) fn read(
     });
 }
 
-/// One of four kinds: values on a topic or in the indication's payload, a constant, a group.
+/// One of five kinds: values on a topic or in the indication's payload, a constant, several of
+/// them, a group.
 fn kind(
     section: &Section<'_>,
     name: &str,
@@ -78,12 +84,20 @@ fn kind(
     let gate = section.section("valid_when");
     // A named reference stands in no channel, so it cannot tell who is the other members.
     let group = beside.and_then(|beside| group(section, beside, draft));
+    let checks = beside.and_then(|_| checks(section, draft));
     let place_keys = ["topic", "value", "senml"]
         .into_iter()
         .find_map(|key| section.place(key));
-    let chosen = [constant.is_some(), group.is_some(), place_keys.is_some()];
+    let chosen = [
+        constant.is_some(),
+        group.is_some(),
+        checks.is_some(),
+        place_keys.is_some(),
+    ];
     if chosen.iter().filter(|chosen| **chosen).count() > 1 {
-        section.error("is of several kinds; keep one of constant, group, or topic and value");
+        let message =
+            "is of several kinds; keep one of constant, checks, group, or topic and value";
+        section.error(message);
     }
     if let (Some(_), None) = (&gate, &constant)
         && let Some(found) = section.place("valid_when")
@@ -105,10 +119,14 @@ fn kind(
         known_keys_of_a_place(section);
         return ReferenceKind::Group { members };
     }
+    if let Some(points) = checks {
+        known_keys_of_a_place(section);
+        return ReferenceKind::Checks { points };
+    }
     if place_keys.is_none() {
         let choices = "say where its values come from: topic (and value), or constant";
         section.error(match beside {
-            Some(_) => format!("{choices}, or group, or value alone for the same payload"),
+            Some(_) => format!("{choices}, checks, or group, or value alone for the same payload"),
             None => choices.to_owned(),
         });
         known_keys_of_a_place(section);
@@ -184,6 +202,56 @@ fn group(section: &Section<'_>, beside: &Beside<'_>, draft: &Draft) -> Option<Ve
         section.wrong(&found, message);
     }
     Some(members)
+}
+
+/// Several known values of which one holds at a time, as zero gas and span gas: the names of
+/// constants with `valid_when`.
+fn checks(section: &Section<'_>, draft: &Draft) -> Option<Vec<ReferenceId>> {
+    let found = section.place("checks")?;
+    let mut points = Vec::new();
+    for point in section.texts("checks") {
+        let Some(&id) = draft.reference_ids.get(point.value) else {
+            let nearest = draft.nearest_reference(point.value);
+            section.wrong(&point, format!("no reference \"{}\"{nearest}", point.value));
+            continue;
+        };
+        let known = draft.references.get(id.0 as usize).map(|it| &it.kind);
+        if !matches!(known, Some(ReferenceKind::Constant { gated: true, .. })) {
+            let message = format!(
+                "\"{}\" is no constant with valid_when, so nothing tells when it holds; check \
+                 points are such constants",
+                point.value
+            );
+            section.wrong(&point, message);
+        }
+        if points.contains(&id) {
+            section.wrong(&point, format!("\"{}\" is named twice", point.value));
+        }
+        points.push(id);
+    }
+    if points.len() < POINTS_MIN {
+        let message = "needs at least two known values, as [\"zero-gas\", \"span-gas\"]; for a \
+                       single one name that reference itself";
+        section.wrong(&found, message);
+    }
+    for key in ["uncertainty", "certificate", "expires"] {
+        if let Some(found) = section.place(key) {
+            section.wrong(&found, "belongs to each of the references named in checks");
+        }
+    }
+    Some(points)
+}
+
+/// The largest uncertainties among known values: what is said of an error holds at each of them.
+fn largest_uncertainty(points: &[ReferenceId], draft: &Draft) -> (f64, f64) {
+    let points = points.iter();
+    let known = points.filter_map(|id| draft.references.get(id.0 as usize));
+    known.fold((0.0, 0.0), |(each, common), point| {
+        (
+            point.uncertainty_each.max(each),
+            point.uncertainty_common.max(common),
+        )
+    })
 }
 
 /// Lets the keys of a place be known, and refuses those that are set: a constant and a group have

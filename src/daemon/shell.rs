@@ -195,7 +195,11 @@ impl Shell {
         let Wanted { channel, from, to } = wanted;
         let mut sources = vec![Source::Indication(channel)];
         let setup = self.setup.channels.get(channel.0 as usize);
-        sources.extend(setup.map(|setup| Source::Reference(setup.reference)));
+        if let Some(setup) = setup {
+            sources.push(Source::Reference(setup.reference));
+            let influences = setup.influences.iter();
+            sources.extend(influences.map(|influence| Source::Influence(influence.source)));
+        }
         let rows = self.record.readings(&sources, from, to, SUPPLIED_MAX)?;
         let (positions, readings): (Vec<i64>, Vec<_>) = rows.into_iter().unzip();
         let supplied = Supplied {

@@ -47,7 +47,7 @@ impl<'a> Topics<'a> {
     }
 
     /// An alarm; retained. `name` is the channel's or reference's, and not used for an alarm of
-    /// the node.
+    /// the node. (None stands on an influence quantity today.)
     #[must_use]
     pub fn alarm(&self, subject: Subject, name: &str, kind: AlarmKind) -> String {
         let kind = word::alarm_kind(kind);
@@ -56,6 +56,9 @@ impl<'a> Topics<'a> {
             Subject::Channel(_) => format!("holdtrue/{}/alarm/channel/{name}/{kind}", self.node),
             Subject::Reference(_) => {
                 format!("holdtrue/{}/alarm/reference/{name}/{kind}", self.node)
+            }
+            Subject::Influence(_) => {
+                format!("holdtrue/{}/alarm/influence/{name}/{kind}", self.node)
             }
         }
     }
@@ -100,6 +103,10 @@ pub fn subject_name(subject: Subject, setup: &Setup) -> Option<&str> {
         Subject::Channel(id) => setup.channels.get(id.0 as usize).map(|it| it.name.as_str()),
         Subject::Reference(id) => setup
             .references
+            .get(id.0 as usize)
+            .map(|it| it.name.as_str()),
+        Subject::Influence(id) => setup
+            .influences
             .get(id.0 as usize)
             .map(|it| it.name.as_str()),
     }

@@ -39,6 +39,7 @@ pub(super) fn subject(subject: Subject) -> &'static str {
         Subject::Node => "node",
         Subject::Channel(_) => "channel",
         Subject::Reference(_) => "reference",
+        Subject::Influence(_) => "influence",
     }
 }
 
@@ -89,6 +90,7 @@ pub(super) fn refused_reason(reason: RefusedReason) -> &'static str {
         RefusedReason::GroupTooSmall => "group-too-small",
         RefusedReason::Stuck => "stuck",
         RefusedReason::TooFast => "too-fast",
+        RefusedReason::NoInfluence => "no-influence",
     }
 }
 

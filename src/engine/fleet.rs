@@ -7,6 +7,7 @@
 mod adopt;
 mod agenda;
 mod door;
+mod known;
 mod leap;
 mod pulse;
 mod silence;
@@ -17,13 +18,14 @@ use crate::counters::Counters;
 use crate::event::{Flag, Gate, Reading, Refused, RefusedReason, Source, Subject, Supplied};
 use crate::gate::GateHistory;
 use crate::report::Report;
-use crate::setup::{ChannelId, Clock, ReferenceId, Setup};
+use crate::setup::{ChannelId, Clock, InfluenceId, ReferenceId, Setup};
 use crate::standing::{AlarmStanding, ReferenceStanding, Standing};
 use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
 use crate::wording::readable;
 use adopt::Routes;
 use agenda::{Agenda, Waiter};
+use known::known_values;
 pub(crate) use leap::LeapWatch;
 use pulse::Pulse;
 use serde::{Deserialize, Serialize};
@@ -41,6 +43,8 @@ pub struct Fleet {
     indications: Vec<Track>,
     /// By reference.
     references: Vec<Reference>,
+    /// Recent values of influence quantities, by source.
+    influences: Vec<Track>,
     /// By channel.
     channels: Vec<Channel>,
     agenda: Agenda,
@@ -149,13 +153,16 @@ impl Fleet {
 
     /// How things stand.
     pub(crate) fn standing(&self, counters: &Counters) -> Standing {
-        let channels = (0..).zip(&self.channels).zip(&self.indications);
+        let channels = self.channels.iter().zip(&self.setup.channels);
+        let channels = (0..).zip(channels).zip(&self.indications);
         let references = (0..).zip(&self.references);
         Standing {
             now: self.now,
             counters: counters.clone(),
             channels: channels
-                .map(|((id, channel), track)| channel.standing(ChannelId(id), track.newest()))
+                .map(|((id, (channel, setup)), track)| {
+                    channel.standing(ChannelId(id), setup, track.newest())
+                })
                 .collect(),
             references: references
                 .map(|(id, _)| ReferenceStanding {
@@ -231,6 +238,14 @@ impl Fleet {
                     });
                 }
             }
+            Source::Influence(id) => {
+                self.influences[id.0 as usize].insert(sample);
+                for user in self.routes.influence_users(id).to_vec() {
+                    self.visit(user, |channel, scene| {
+                        channel.take_influence(scene, report);
+                    });
+                }
+            }
         }
     }
 
@@ -247,6 +262,11 @@ impl Fleet {
                     self.routes.trim_references(id, &mut reference.values);
                 }
             }
+            Source::Influence(id) => {
+                if let Some(track) = self.influences.get_mut(id.0 as usize) {
+                    self.routes.trim_influences(id, track);
+                }
+            }
         }
     }
 
@@ -261,8 +281,9 @@ impl Fleet {
             setup,
             reference: &self.setup.references[reference],
             values: &self.references[reference].values,
-            gate: &self.references[reference].gate,
+            checks: known_values(&self.setup, &self.references, setup.reference),
             indications: &self.indications,
+            influences: &self.influences,
             now,
             alive: self.pulse.alive(now, &self.routes),
             resumed: self.pulse.resumed(),
@@ -317,6 +338,9 @@ impl Fleet {
             Source::Reference(id) if (id.0 as usize) < self.references.len() => {
                 Subject::Reference(id)
             }
+            Source::Influence(id) if (id.0 as usize) < self.influences.len() => {
+                Subject::Influence(id)
+            }
             _ => Subject::Node,
         }
     }
@@ -327,6 +351,7 @@ impl Fleet {
             Subject::Node => &self.setup.node,
             Subject::Channel(id) => &self.setup.channels[id.0 as usize].name,
             Subject::Reference(id) => &self.setup.references[id.0 as usize].name,
+            Subject::Influence(InfluenceId(id)) => &self.setup.influences[id as usize].name,
         }
     }
 

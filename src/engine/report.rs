@@ -75,6 +75,7 @@ impl RefusedReason {
             Self::GroupTooSmall => "group-too-small",
             Self::Stuck => "stuck",
             Self::TooFast => "too-fast",
+            Self::NoInfluence => "no-influence",
         }
     }
 
@@ -116,6 +117,10 @@ impl RefusedReason {
             Self::Stuck => "the sensor repeats itself and is not believed; look at the sensor",
             Self::TooFast => {
                 "changed faster than `max_rate` allows; look at the sensor, or raise the limit"
+            }
+            Self::NoInfluence => {
+                "no value of the influence quantity near enough in time; check its source and \
+                 `max_gap`"
             }
         }
     }

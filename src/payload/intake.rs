@@ -192,6 +192,7 @@ impl Target {
     pub(super) fn source(&self) -> Source {
         match self {
             Self::Indication(channel) => Source::Indication(*channel),
+            Self::Influence(influence) => Source::Influence(*influence),
             Self::Reference(reference) | Self::Gate { reference, .. } => {
                 Source::Reference(*reference)
             }

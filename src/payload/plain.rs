@@ -17,7 +17,9 @@ pub(super) fn read(reader: &mut Reader<'_>, targets: &[Target], text: &str) {
                 phenomenon: reader.received,
                 open: open.iter().any(|wanted| says(wanted, text)),
             }),
-            Target::Indication(_) | Target::Reference(_) => value(reader, text),
+            Target::Indication(_) | Target::Reference(_) | Target::Influence(_) => {
+                value(reader, text)
+            }
         };
         reader.tell(target, told);
     }

@@ -1,7 +1,7 @@
 //! What the configuration says about topics: which of them are wanted and what each carries.
 
 use crate::payload::Pointer;
-use holdtrue_engine::setup::{ChannelId, ReferenceId};
+use holdtrue_engine::setup::{ChannelId, InfluenceId, ReferenceId};
 use std::collections::BTreeMap;
 
 /// Everything that [`crate::payload::Intake`] is built from.
@@ -10,8 +10,8 @@ pub struct Tables {
     /// What to subscribe to, sorted: topics, or the wildcard filters that cover them.
     pub filters: Vec<String>,
     /// What each topic carries. All uses of one topic have the same [`Format`] variant; gates stand
-    /// first, then references, then indications, so that a payload which tells all three opens its
-    /// gate before its values arrive.
+    /// first, then references, influence quantities and indications, so that a payload which tells
+    /// them all opens its gate before its values arrive, and an indication finds what belongs to it.
     pub topics: BTreeMap<String, Vec<Use>>,
     /// Largest payload that is looked at, bytes.
     pub max_payload: usize,
@@ -33,6 +33,8 @@ pub enum Target {
     Indication(ChannelId),
     /// A reference's value.
     Reference(ReferenceId),
+    /// A value of an influence quantity.
+    Influence(InfluenceId),
     /// A `valid_when` condition.
     Gate {
         /// The reference that it opens and shuts.

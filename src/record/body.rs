@@ -86,6 +86,7 @@ pub(super) fn source_text(source: Source) -> String {
     match source {
         Source::Indication(channel) => format!("indication/{}", channel.0),
         Source::Reference(reference) => format!("reference/{}", reference.0),
+        Source::Influence(influence) => format!("influence/{}", influence.0),
     }
 }
 

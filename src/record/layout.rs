@@ -23,7 +23,7 @@ CREATE TABLE inputs (
     position   INTEGER PRIMARY KEY,  -- order in which the engine was told, from 1
     kind       TEXT NOT NULL,        -- setup, reading, gate, refused, tick, supplied
     received   INTEGER,              -- when the daemon got it
-    source     TEXT,                 -- indication/N or reference/N, N as in the setup in force
+    source     TEXT,                 -- indication/N, reference/N or influence/N, N as in the setup in force
     phenomenon INTEGER,              -- when it was sampled
     body       TEXT NOT NULL         -- the whole input as JSON; numbers read back to the same bits
 ) STRICT;

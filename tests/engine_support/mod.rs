@@ -45,6 +45,7 @@ pub fn node(clock: Clock, references: Vec<ReferenceSetup>, channels: Vec<Channel
         clock,
         fingerprint: "00".repeat(32),
         references,
+        influences: Vec::new(),
         channels,
     }
 }
@@ -71,6 +72,7 @@ pub fn channel(name: &str, reference: u32) -> ChannelSetup {
         name: name.to_owned(),
         unit: "pH".to_owned(),
         reference: ReferenceId(reference),
+        influences: Vec::new(),
         lag: Duration::ZERO,
         lateness: span(10.0),
         max_gap: span(120.0),
@@ -109,6 +111,7 @@ pub fn channel(name: &str, reference: u32) -> ChannelSetup {
             gap_after: None,
         },
         corrected_values: false,
+        monitor_only: false,
     }
 }
 

@@ -94,6 +94,7 @@ fn source(source: Source) -> &'static str {
     match source {
         Source::Indication(_) => "indication",
         Source::Reference(_) => "reference",
+        Source::Influence(_) => "influence",
     }
 }
 

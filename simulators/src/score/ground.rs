@@ -167,6 +167,7 @@ fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup
         name,
         unit: "unit".to_owned(),
         reference: reference_id(reference),
+        influences: Vec::new(),
         lag: Duration::ZERO,
         lateness: Duration::from_seconds(10),
         max_gap: Duration::from_seconds(900),
@@ -208,6 +209,7 @@ fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup
             gap_after: None,
         },
         corrected_values: false,
+        monitor_only: false,
     }
 }
 

@@ -92,7 +92,7 @@ fn index(channel: ChannelId) -> usize {
 /// Whom an alarm is about.
 fn place(subject: Subject) -> Option<Place> {
     match subject {
-        Subject::Node => None,
+        Subject::Node | Subject::Influence(_) => None,
         Subject::Channel(channel) => Some(Place::Sensor(index(channel))),
         Subject::Reference(reference) => Some(Place::Reference(reference.0 as usize)),
     }

@@ -83,12 +83,7 @@ mod tests {
     use crate::time::Duration;
 
     fn pair(minute: i64, error: f64) -> Pair {
-        Pair {
-            time: minute_of(minute),
-            indication: 7.0 + error,
-            reference: 7.0,
-            weight: 1.0,
-        }
+        Pair::at(minute_of(minute), 7.0 + error, 7.0)
     }
 
     fn minute_of(minute: i64) -> Timestamp {

@@ -30,7 +30,6 @@ mod telling;
 pub(crate) mod testing;
 
 use crate::event::{Flag, Output, Subject};
-use crate::gate::GateHistory;
 use crate::report::Report;
 use crate::setup::{ChannelId, ChannelSetup, ReferenceSetup};
 use crate::standing::{AlarmStanding, ChannelStanding};
@@ -40,7 +39,7 @@ use checks::Checks;
 pub(crate) use checks::jumps;
 use conditions::ChannelAlarms;
 use outlook::OutlookStation;
-pub(crate) use pairing::{Answer, Rows};
+pub(crate) use pairing::{Answer, Check, Holding, Rows, holding};
 use pairing::{Found, Pair, Pairing};
 use publishing::Publishing;
 use recent::{Recent, Remembered};
@@ -52,11 +51,14 @@ pub(crate) struct Scene<'a> {
     pub(crate) id: ChannelId,
     pub(crate) setup: &'a ChannelSetup,
     pub(crate) reference: &'a ReferenceSetup,
-    pub(crate) gate: &'a GateHistory,
+    /// The known values that its reference stands for while their gates are open.
+    pub(crate) checks: Vec<Check<'a>>,
     /// Recent values of its reference.
     pub(crate) values: &'a Track,
     /// Recent indications of all channels, by position.
     pub(crate) indications: &'a [Track],
+    /// Recent values of all influence quantities, by source.
+    pub(crate) influences: &'a [Track],
     pub(crate) now: Timestamp,
     /// Up to when the node is known to have been listening.
     pub(crate) alive: Timestamp,
@@ -178,6 +180,12 @@ impl Channel {
         self.work_through(found, scene, report);
     }
 
+    /// A value of one of its influence quantities was taken into its track.
+    pub(crate) fn take_influence(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        self.pairing.touch_influences();
+        self.work_through(Vec::new(), scene, report);
+    }
+
     /// Rows asked from the record have come.
     pub(crate) fn take_supplied(
         &mut self,
@@ -199,8 +207,8 @@ impl Channel {
     }
 
     /// Goes on under an edited setup in which its rows mean the same: alarms that nobody asks about
-    /// any more are cleared, a screen that is switched off forgets, and the correction in force is
-    /// reviewed as soon as anything happens.
+    /// any more are cleared, a screen that is switched off forgets, a correction that may no longer
+    /// be published is withdrawn, and one in force is reviewed as soon as anything happens.
     pub(crate) fn edit(
         &mut self,
         id: ChannelId,
@@ -214,6 +222,13 @@ impl Channel {
             self.checks.forget_screens();
         }
         self.stretch.edit(after);
+        if after.monitor_only && self.publishing.forget() {
+            report.say(Output::Withdrawn {
+                channel: id,
+                at: now,
+                why: format!("{}: the channel is now monitored only", after.name),
+            });
+        }
         self.publishing.review();
         self.outlook.edit(id, after, now, report);
         self.wake = Some(Timestamp(i64::MIN));
@@ -281,9 +296,11 @@ impl Channel {
     pub(crate) fn standing(
         &self,
         channel: ChannelId,
+        setup: &ChannelSetup,
         last_indication: Option<Timestamp>,
     ) -> ChannelStanding {
         let judged = self.stretch.judged();
+        let offered = judged.filter(|_| !setup.monitor_only);
         let correction = self.publishing.correction();
         ChannelStanding {
             channel,
@@ -291,7 +308,7 @@ impl Channel {
             last_pair: self.stretch.last_pair(),
             pairs: self.stretch.pairs(),
             degree: judged.map(|judged| judged.degree),
-            correction: judged.map(|judged| judged.correction),
+            correction: offered.map(|judged| judged.correction),
             standard_uncertainty: judged.map(|judged| judged.u),
             zone: judged.and_then(|judged| judged.conformity.zone()),
             accepted: judged.and_then(|judged| judged.conformity.accepted()),
@@ -304,7 +321,8 @@ impl Channel {
     }
 
     /// Sends what pairing found through the stations, then sees to what waits for time.
-    fn work_through(&mut self, found: Vec<Found>, scene: &Scene<'_>, report: &mut Report<'_>) {
+    fn work_through(&mut self, mut found: Vec<Found>, scene: &Scene<'_>, report: &mut Report<'_>) {
+        self.pairing.attach(&mut found, scene);
         let subject = Subject::Channel(scene.id);
         for found in found {
             match found {
@@ -316,6 +334,14 @@ impl Channel {
                             scene.setup.name, scene.reference.name
                         )
                     });
+                }
+                Found::Unattached {
+                    pair,
+                    influence,
+                    rejection,
+                } => {
+                    self.last_reference = self.last_reference.max(Some(pair.time));
+                    telling::tell_unattached(&pair, influence, rejection, scene, report);
                 }
                 Found::Wanted { from, to } => report.say(Output::Wanted {
                     channel: scene.id,

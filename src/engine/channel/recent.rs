@@ -74,12 +74,7 @@ mod tests {
 
     fn remembered(time: i64, stretch: u32) -> Remembered {
         Remembered {
-            pair: Pair {
-                time: Timestamp(time),
-                indication: 1.0,
-                reference: 0.0,
-                weight: 1.0,
-            },
+            pair: Pair::at(Timestamp(time), 1.0, 0.0),
             stretch,
             rejected: None,
         }

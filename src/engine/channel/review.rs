@@ -96,8 +96,10 @@ impl Channel {
             leading,
             group: self.stretch.fit().newest_group(),
         });
-        let learned = self.stretch.learned();
-        self.publishing.consider(&judgement, learned, scene, report);
+        if !scene.setup.monitor_only {
+            let learned = self.stretch.learned();
+            self.publishing.consider(&judgement, learned, scene, report);
+        }
         let correction = self.publishing.correction();
         let corrected_zone = correction.and_then(|document| document.corrected_zone);
         let forecast = self.outlook.consider(

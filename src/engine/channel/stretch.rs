@@ -8,7 +8,6 @@ use super::recent::{Recent, Remembered};
 use super::review::Judged;
 use super::screening::{Innovation, Screen, Verdict};
 use crate::event::{RefusedReason, Rejection};
-use crate::fit::basis::MAX_INFLUENCES;
 use crate::fit::before::Gone;
 use crate::fit::{Change, Fit, Row};
 use crate::setup::{ChannelSetup, SpanSide, WindowLength};
@@ -251,7 +250,7 @@ impl Stretch {
     /// How far the pair lies from what the fit expects; `None` while it expects nothing.
     fn innovation(&self, pair: &Pair, error: f64, setup: &ChannelSetup) -> Option<Innovation> {
         let x = span_regressor(pair, setup);
-        let expected = self.fit.predict(pair.time, x, [0.0; MAX_INFLUENCES])?;
+        let expected = self.fit.predict(pair.time, x, pair.influences)?;
         let innovation = Innovation {
             time: pair.time,
             value: error - expected.error,
@@ -317,7 +316,7 @@ fn row(pair: &Pair, error: f64, setup: &ChannelSetup) -> Row {
         error,
         weight: pair.weight,
         x: span_regressor(pair, setup),
-        influences: [0.0; MAX_INFLUENCES],
+        influences: pair.influences,
     }
 }
 

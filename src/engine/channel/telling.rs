@@ -14,14 +14,7 @@ pub(super) fn tell_fate(
     scene: &Scene<'_>,
     report: &mut Report<'_>,
 ) {
-    report.say(Output::Pair(PairFate {
-        channel: scene.id,
-        phenomenon: pair.time,
-        indication: pair.indication + 0.0,
-        reference: pair.reference + 0.0,
-        flag: Flag::of_fate(rejected),
-        rejected,
-    }));
+    report.say(fate(pair, rejected, scene));
     if let Some(rejection) = rejected {
         let subject = Subject::Channel(scene.id);
         report.refuse(scene.now, subject, rejection.reason, || {
@@ -37,6 +30,35 @@ pub(super) fn tell_fate(
             )
         });
     }
+}
+
+/// Says that a pair stays out of the fit because an influence quantity was not told beside it.
+pub(super) fn tell_unattached(
+    pair: &Pair,
+    influence: usize,
+    rejection: Rejection,
+    scene: &Scene<'_>,
+    report: &mut Report<'_>,
+) {
+    report.say(fate(pair, Some(rejection), scene));
+    let subject = Subject::Channel(scene.id);
+    report.refuse(scene.now, subject, rejection.reason, || {
+        format!(
+            "{}: pair at {} has no {} beside it and stays out of the fit",
+            scene.setup.name, pair.time, scene.setup.influences[influence].name
+        )
+    });
+}
+
+fn fate(pair: &Pair, rejected: Option<Rejection>, scene: &Scene<'_>) -> Output {
+    Output::Pair(PairFate {
+        channel: scene.id,
+        phenomenon: pair.time,
+        indication: pair.indication + 0.0,
+        reference: pair.reference + 0.0,
+        flag: Flag::of_fate(rejected),
+        rejected,
+    })
 }
 
 /// Says that the announced degree changed, with its evidence; a rise is also told to people.

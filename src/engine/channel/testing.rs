@@ -4,7 +4,6 @@ use super::Scene;
 use crate::counters::Counters;
 use crate::event::Output;
 use crate::fleet::LeapWatch;
-use crate::gate::GateHistory;
 use crate::notice::NoticeLimiter;
 use crate::report::Report;
 use crate::setup::{
@@ -19,9 +18,10 @@ use crate::track::Track;
 pub(crate) struct Stage {
     pub(crate) setup: ChannelSetup,
     reference: ReferenceSetup,
-    gate: GateHistory,
     values: Track,
     indications: Vec<Track>,
+    /// Recent values of the influence quantities.
+    pub(crate) influences: Vec<Track>,
     counters: Counters,
     notices: NoticeLimiter,
     leaps: LeapWatch,
@@ -46,9 +46,9 @@ impl Stage {
                 stands_for: Duration::ZERO,
                 stamped: Stamped::End,
             },
-            gate: GateHistory::default(),
             values: Track::default(),
             indications: vec![Track::default()],
+            influences: Vec::new(),
             counters: Counters::default(),
             notices: NoticeLimiter::default(),
             leaps: LeapWatch::default(),
@@ -66,9 +66,10 @@ impl Stage {
             id: ChannelId(0),
             setup: &self.setup,
             reference: &self.reference,
-            gate: &self.gate,
+            checks: Vec::new(),
             values: &self.values,
             indications: &self.indications,
+            influences: &self.influences,
             now,
             alive: now,
             resumed: None,
@@ -90,6 +91,7 @@ pub(crate) fn channel_setup() -> ChannelSetup {
         name: "hall/ph-1".to_owned(),
         unit: "pH".to_owned(),
         reference: ReferenceId(0),
+        influences: Vec::new(),
         lag: Duration::ZERO,
         lateness: Duration::ZERO,
         max_gap: Duration::from_seconds(600),
@@ -128,5 +130,6 @@ pub(crate) fn channel_setup() -> ChannelSetup {
             gap_after: None,
         },
         corrected_values: false,
+        monitor_only: false,
     }
 }

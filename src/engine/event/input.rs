@@ -1,6 +1,6 @@
 //! What the engine is told, piece by piece: readings, gates, what was refused, recorded rows.
 
-use crate::setup::{ChannelId, ReferenceId};
+use crate::setup::{ChannelId, InfluenceId, ReferenceId};
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
@@ -11,6 +11,8 @@ pub enum Source {
     Indication(ChannelId),
     /// A reference's value.
     Reference(ReferenceId),
+    /// A value of an influence quantity.
+    Influence(InfluenceId),
 }
 
 /// A value with its times. Every number is finite.
@@ -22,7 +24,7 @@ pub struct Reading {
     pub received: Timestamp,
     /// When it was sampled; the received time if the payload told none.
     pub phenomenon: Timestamp,
-    /// The value, in the channel's unit.
+    /// The value, in the channel's unit, or in the influence quantity's own.
     pub value: f64,
     /// The sender's running number, where configured; part of what makes a duplicate.
     pub sequence: Option<i64>,
@@ -101,6 +103,8 @@ pub enum RefusedReason {
     Stuck,
     /// The value has changed faster than the measurand can.
     TooFast,
+    /// No value of an influence quantity near enough in time to enter the fit with the pair.
+    NoInfluence,
 }
 
 /// Rows from the record, given back: the answer to one

@@ -25,7 +25,7 @@ pub use outlook::{
 };
 pub use pair::{Flag, PairFate, Rejection, SPIKE_FAILS};
 
-use crate::setup::{ChannelId, ReferenceId, Setup};
+use crate::setup::{ChannelId, InfluenceId, ReferenceId, Setup};
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
@@ -33,7 +33,8 @@ use serde::{Deserialize, Serialize};
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub enum Input {
     /// A configuration takes effect. Channels keep their state, by name, if their pairs and rows
-    /// mean the same as before (unit, lag, fit; the reference's name, kind, interval and members),
+    /// mean the same as before (unit, lag, fit; the reference's name, kind, interval and members;
+    /// where influence quantities come from),
     /// and go on under whatever else was edited; the others start anew. What is said in return
     /// bears the positions of the configuration that is replaced.
     Setup(Box<Setup>),
@@ -107,4 +108,6 @@ pub enum Subject {
     Channel(ChannelId),
     /// A reference.
     Reference(ReferenceId),
+    /// A source of an influence quantity.
+    Influence(InfluenceId),
 }

@@ -30,6 +30,7 @@ pub struct PairFate {
 ///   fails above [`SPIKE_FAILS`] times it.
 /// - *Flat line*: the n-th repeat of one value is suspect from n = `suspect` on and fails from n =
 ///   `fail` on; the value itself counts as none.
+/// - A pair without its influence quantities is suspect: nothing tells what it means.
 /// - Every other test knows pass and fail only.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
 #[serde(into = "u8", try_from = "u8")]
@@ -68,6 +69,10 @@ impl Flag {
                 value,
                 threshold,
             }) => Self::of_deviation(value, threshold, SPIKE_FAILS * threshold),
+            Some(Rejection {
+                reason: RefusedReason::NoInfluence,
+                ..
+            }) => Self::Suspect,
             Some(_) => Self::Fail,
         }
     }

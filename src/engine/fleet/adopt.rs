@@ -7,7 +7,8 @@ use crate::channel::Channel;
 use crate::event::{Source, Subject};
 use crate::report::Report;
 use crate::setup::{
-    ChannelId, ChannelSetup, ReferenceId, ReferenceKind, ReferenceSetup, Setup, WindowLength,
+    ChannelId, ChannelSetup, InfluenceId, InfluenceSetup, ReferenceId, ReferenceKind,
+    ReferenceSetup, Setup, WindowLength,
 };
 use crate::time::{Duration, Timestamp};
 use crate::track::Track;
@@ -32,10 +33,14 @@ pub(super) struct Routes {
     group_users: Vec<Vec<usize>>,
     /// By reference: the channels judged against it.
     reference_users: Vec<Vec<usize>>,
+    /// By source of an influence quantity: the channels that it acts on.
+    influence_users: Vec<Vec<usize>>,
     /// By channel: how long its indications are kept.
     indication_memory: Vec<Duration>,
     /// By reference: how long its values are kept.
     reference_memory: Vec<Duration>,
+    /// By source of an influence quantity: how long its values are kept.
+    influence_memory: Vec<Duration>,
     /// The shortest silence that any alarm asks about.
     pub(super) quiet_after: Option<Duration>,
     /// The longest time that anything here looks back on, at least a day: a recording's time leaps
@@ -50,8 +55,10 @@ impl Routes {
         let mut routes = Self {
             group_users: vec![Vec::new(); setup.channels.len()],
             reference_users: vec![Vec::new(); setup.references.len()],
+            influence_users: vec![Vec::new(); setup.influences.len()],
             indication_memory: vec![Duration::ZERO; setup.channels.len()],
             reference_memory: vec![Duration::ZERO; setup.references.len()],
+            influence_memory: vec![Duration::ZERO; setup.influences.len()],
             quiet_after: None,
             reach: reach(setup),
             several_sources: false,
@@ -65,13 +72,27 @@ impl Routes {
             *own = memory.max(*own);
             let shared = &mut routes.reference_memory[id];
             *shared = memory.max(*shared);
-            if let ReferenceKind::Group { members } = &reference.kind {
-                for member in members.iter().filter(|member| member.0 as usize != index) {
-                    let member = member.0 as usize;
-                    routes.group_users[member].push(index);
-                    let kept = &mut routes.indication_memory[member];
-                    *kept = memory.max(*kept);
+            match &reference.kind {
+                ReferenceKind::Group { members } => {
+                    for member in members.iter().filter(|member| member.0 as usize != index) {
+                        let member = member.0 as usize;
+                        routes.group_users[member].push(index);
+                        let kept = &mut routes.indication_memory[member];
+                        *kept = memory.max(*kept);
+                    }
                 }
+                ReferenceKind::Checks { points } => {
+                    for point in points {
+                        routes.reference_users[point.0 as usize].push(index);
+                    }
+                }
+                ReferenceKind::Measured | ReferenceKind::Constant { .. } => {}
+            }
+            for influence in &channel.influences {
+                let source = influence.source.0 as usize;
+                routes.influence_users[source].push(index);
+                let kept = &mut routes.influence_memory[source];
+                *kept = influence_memory(memory, channel).max(*kept);
             }
         }
         let gaps = setup.channels.iter().filter_map(|c| c.alarms.gap_after);
@@ -81,7 +102,8 @@ impl Routes {
             .references
             .iter()
             .filter(|reference| reference.kind == ReferenceKind::Measured);
-        routes.several_sources = setup.channels.len() + measured.count() > 1;
+        routes.several_sources =
+            setup.channels.len() + measured.count() + setup.influences.len() > 1;
         routes
     }
 
@@ -93,12 +115,20 @@ impl Routes {
         &self.reference_users[id.0 as usize]
     }
 
+    pub(super) fn influence_users(&self, id: InfluenceId) -> &[usize] {
+        &self.influence_users[id.0 as usize]
+    }
+
     pub(super) fn trim_indications(&self, id: ChannelId, track: &mut Track) {
         trim(track, self.indication_memory[id.0 as usize]);
     }
 
     pub(super) fn trim_references(&self, id: ReferenceId, track: &mut Track) {
         trim(track, self.reference_memory[id.0 as usize]);
+    }
+
+    pub(super) fn trim_influences(&self, id: InfluenceId, track: &mut Track) {
+        trim(track, self.influence_memory[id.0 as usize]);
     }
 }
 
@@ -137,9 +167,24 @@ fn memory(channel: &ChannelSetup, reference: &ReferenceSetup) -> Duration {
         REFERENCE_DELAY.0,
     ];
     match reference.kind {
-        ReferenceKind::Constant { .. } => channel.lateness,
-        _ => Duration(parts.into_iter().fold(0, i64::saturating_add)),
+        ReferenceKind::Constant { .. } | ReferenceKind::Checks { .. } => channel.lateness,
+        ReferenceKind::Measured | ReferenceKind::Group { .. } => {
+            Duration(parts.into_iter().fold(0, i64::saturating_add))
+        }
     }
+}
+
+/// How long values of an influence quantity are kept: pairs come about as late as `memory` says, and
+/// then look at the values beside their instant.
+fn influence_memory(memory: Duration, channel: &ChannelSetup) -> Duration {
+    let parts = [channel.lag.0.saturating_abs(), channel.lateness.0];
+    let beside = channel.max_gap.0.saturating_mul(2);
+    Duration(
+        parts
+            .into_iter()
+            .chain([beside])
+            .fold(memory.0, i64::saturating_add),
+    )
 }
 
 impl Fleet {
@@ -162,6 +207,9 @@ impl Fleet {
             let kept = before.filter(|&index| {
                 same_clock && same_channel(&old.setup, &old.setup.channels[index], setup, channel)
             });
+            if let Some(index) = before {
+                old.tell_monitoring(index, channel, report);
+            }
             if let Some(index) = kept {
                 taken[index] = true;
                 old.edit_channel(index, setup, channel, report);
@@ -188,7 +236,13 @@ impl Fleet {
                 old.references[index].clone()
             }));
         }
+        let influences = setup.influences.iter().map(|influence| {
+            let mut before = old.setup.influences.iter();
+            let kept = before.position(|before| same_clock && before == influence);
+            kept.map_or_else(Track::default, |index| old.influences[index].clone())
+        });
         *self = Self {
+            influences: influences.collect(),
             references,
             routes: Routes::of(setup),
             setup: setup.clone(),
@@ -229,6 +283,28 @@ impl Fleet {
             retired.pop_first();
         }
         retired
+    }
+
+    /// Says that a channel's corrections may be published from now on, or no longer: whoever takes
+    /// a safety or legal measurement out of protection must be able to find out when.
+    fn tell_monitoring(&self, index: usize, after: &ChannelSetup, report: &mut Report<'_>) {
+        if self.setup.channels[index].monitor_only == after.monitor_only {
+            return;
+        }
+        let id = ChannelId(u32::try_from(index).expect("as many channels as a u32 numbers"));
+        let now = self.now.unwrap_or(Timestamp(0));
+        let (code, text) = if after.monitor_only {
+            ("monitor-only-on", "no correction is published any more")
+        } else {
+            (
+                "monitor-only-off",
+                "monitor_only was taken away: corrections are published from now on; whoever did \
+                 not mean that must put it back",
+            )
+        };
+        report.notice(now, Subject::Channel(id), code, || {
+            format!("{}: {text}", after.name)
+        });
     }
 
     /// Prepares a channel that stays for its edited setup.
@@ -304,6 +380,11 @@ impl Fleet {
                 let place = self.setup.references.iter().position(|r| r.name == *name)?;
                 Some(Subject::Reference(ReferenceId(u32::try_from(place).ok()?)))
             }
+            Subject::Influence(id) => {
+                let before = old.influences.get(id.0 as usize)?;
+                let place = self.setup.influences.iter().position(|it| it == before)?;
+                Some(Subject::Influence(InfluenceId(u32::try_from(place).ok()?)))
+            }
         }
     }
 
@@ -321,6 +402,7 @@ impl Fleet {
                     )
             }
             Source::Reference(id) => id == setup.reference,
+            Source::Influence(id) => setup.influences.iter().any(|it| it.source == id),
         }
     }
 }
@@ -333,6 +415,7 @@ fn same_channel(old: &Setup, before: &ChannelSetup, new: &Setup, after: &Channel
         && before.unit == after.unit
         && before.lag == after.lag
         && before.fit.has_same_rows(&after.fit)
+        && influence_sources(old, before).eq(influence_sources(new, after))
         && same_reference(
             old,
             &old.references[before.reference.0 as usize],
@@ -353,6 +436,13 @@ fn same_reference(
         (ReferenceKind::Group { members: a }, ReferenceKind::Group { members: b }) => {
             names(old, a).eq(names(new, b))
         }
+        (ReferenceKind::Checks { points: a }, ReferenceKind::Checks { points: b }) => {
+            a.len() == b.len()
+                && a.iter().zip(b).all(|(a, b)| {
+                    let (a, b) = (a.0 as usize, b.0 as usize);
+                    same_reference(old, &old.references[a], new, &new.references[b])
+                })
+        }
         (before, after) => before == after,
     };
     same_kind
@@ -361,10 +451,20 @@ fn same_reference(
         && before.stamped == after.stamped
 }
 
-/// The channel as it was, its reference at the new place.
+/// Where a channel's influence quantities come from, in order.
+fn influence_sources<'a>(
+    setup: &'a Setup,
+    channel: &'a ChannelSetup,
+) -> impl Iterator<Item = &'a InfluenceSetup> {
+    let sources = channel.influences.iter();
+    sources.map(|influence| &setup.influences[influence.source.0 as usize])
+}
+
+/// The channel as it was, its reference and its influence quantities at their new places.
 fn placed(before: &ChannelSetup, after: &ChannelSetup) -> ChannelSetup {
     ChannelSetup {
         reference: after.reference,
+        influences: after.influences.clone(),
         ..before.clone()
     }
 }

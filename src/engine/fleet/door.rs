@@ -1,8 +1,9 @@
 //! The door: what may come in. Everything behind it is finite, timely, not seen before and meant to
 //! be used.
 
+use super::known::known_values;
 use super::{Fleet, longest};
-use crate::channel::jumps;
+use crate::channel::{Holding, holding, jumps};
 use crate::event::{Flag, Gate, Output, PairFate, Reading, RefusedReason, Rejection, Source};
 use crate::setup::{Clock, ReferenceId, ReferenceKind};
 use crate::time::{Duration, Timestamp};
@@ -37,6 +38,11 @@ impl Fleet {
                 &self.references[id.0 as usize].values,
                 self.reference_lateness(id),
             ),
+            Source::Influence(id) => {
+                let users = self.routes.influence_users(id);
+                let lateness = users.iter().map(|&user| self.setup.channels[user].lateness);
+                (&self.influences[id.0 as usize], longest(lateness))
+            }
         };
         let ahead = self.ahead(track.newest(), now);
         track.check(reading, Duration(lateness.0.saturating_add(ahead.0)))?;
@@ -117,6 +123,7 @@ impl Fleet {
                 .references
                 .get(id.0 as usize)
                 .is_some_and(|reference| reference.kind == ReferenceKind::Measured),
+            Source::Influence(id) => (id.0 as usize) < self.influences.len(),
         }
     }
 
@@ -154,14 +161,20 @@ impl Fleet {
             return None;
         };
         let setup = &self.setup.channels[channel.0 as usize];
-        let id = setup.reference.0 as usize;
-        let ReferenceKind::Constant { value, gated } = self.setup.references[id].kind else {
-            return None;
-        };
         let instant = reading.phenomenon.minus(setup.lag);
-        if gated && self.references[id].gate.is_open(instant) != Some(true) {
-            return None;
-        }
+        let value = match self.setup.references[setup.reference.0 as usize].kind {
+            ReferenceKind::Constant {
+                value,
+                gated: false,
+            } => value,
+            _ => match holding(
+                &known_values(&self.setup, &self.references, setup.reference),
+                instant,
+            ) {
+                Holding::One(value) => value,
+                Holding::None | Holding::Unknown => return None,
+            },
+        };
         let (lowest, highest) = setup.screening.range?;
         Some(Output::Pair(PairFate {
             channel,

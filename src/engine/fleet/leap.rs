@@ -162,7 +162,7 @@ impl Fleet {
         let edge = to.plus(CLOCKS_DIFFER);
         self.now = Some(to);
         self.pulse.step_back(to);
-        for track in &mut self.indications {
+        for track in self.indications.iter_mut().chain(&mut self.influences) {
             track.forget_after(edge);
         }
         for reference in &mut self.references {

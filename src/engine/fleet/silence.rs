@@ -14,7 +14,7 @@ const AT_ONCE: Delays = Delays { on: 1, off: 1 };
 
 impl Fleet {
     /// The newest instant at which the reference's value was known. A group's is when a channel
-    /// last got a median from it.
+    /// last got a median from it, that of several known values when a channel last met one.
     pub(super) fn last_known(&self, id: ReferenceId) -> Option<Timestamp> {
         let index = id.0 as usize;
         let reference = &self.references[index];
@@ -24,7 +24,7 @@ impl Fleet {
             ReferenceKind::Constant { gated: true, .. } => {
                 self.now.and_then(|now| reference.gate.last_open(now))
             }
-            ReferenceKind::Group { .. } => self
+            ReferenceKind::Checks { .. } | ReferenceKind::Group { .. } => self
                 .routes
                 .reference_users(id)
                 .iter()

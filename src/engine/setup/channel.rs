@@ -1,6 +1,6 @@
 //! One quantity measured by one sensor, as configured.
 
-use crate::setup::{FitSetup, ReferenceId};
+use crate::setup::{ChannelInfluence, FitSetup, ReferenceId};
 use crate::time::Duration;
 use serde::{Deserialize, Serialize};
 
@@ -13,6 +13,9 @@ pub struct ChannelSetup {
     pub unit: String,
     /// The reference it is judged against.
     pub reference: ReferenceId,
+    /// What acts on its error without being what it measures, at most
+    /// [`MAX_INFLUENCES`](crate::fit::basis::MAX_INFLUENCES).
+    pub influences: Vec<ChannelInfluence>,
     /// The indication answers this much later than the reference: indication at t + lag belongs to
     /// the reference at t.
     pub lag: Duration,
@@ -46,6 +49,9 @@ pub struct ChannelSetup {
     pub alarms: AlarmSetup,
     /// Publish every corrected value as well.
     pub corrected_values: bool,
+    /// Safety, legal or custody measurement: everything is judged, but no correction is ever
+    /// published.
+    pub monitor_only: bool,
 }
 
 /// How an error with its expanded uncertainty U is accepted or not (ILAC-G8:09/2019, 4.2.2;

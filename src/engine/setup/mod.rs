@@ -6,12 +6,14 @@
 
 mod channel;
 mod fit;
+mod influence;
 mod reference;
 
 pub use channel::{
     AlarmSetup, ChannelSetup, DecisionRule, PublishSetup, RateLimit, Repeats, ScreeningSetup,
 };
 pub use fit::{Criterion, FitSetup, PairNoise, SpanSide, WindowLength};
+pub use influence::{ChannelInfluence, InfluenceSetup};
 pub use reference::{ReferenceKind, ReferenceSetup, Stamped, UNCERTAINTY_RATIO_MIN};
 
 use serde::{Deserialize, Serialize};
@@ -26,6 +28,11 @@ pub struct ChannelId(pub u32);
 #[serde(transparent)]
 pub struct ReferenceId(pub u32);
 
+/// Position of an influence quantity's source in [`Setup::influences`].
+#[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
+#[serde(transparent)]
+pub struct InfluenceId(pub u32);
+
 /// One whole configuration of a node.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Setup {
@@ -38,6 +45,8 @@ pub struct Setup {
     pub fingerprint: String,
     /// All references: named ones, and one for every channel that declares its own inline.
     pub references: Vec<ReferenceSetup>,
+    /// All sources of influence quantities.
+    pub influences: Vec<InfluenceSetup>,
     /// All channels.
     pub channels: Vec<ChannelSetup>,
 }
@@ -50,6 +59,7 @@ impl Default for Setup {
             clock: Clock::Live,
             fingerprint: String::new(),
             references: Vec::new(),
+            influences: Vec::new(),
             channels: Vec::new(),
         }
     }

@@ -1,6 +1,6 @@
 //! A source of reference values, as configured.
 
-use crate::setup::ChannelId;
+use crate::setup::{ChannelId, ReferenceId};
 use crate::time::{Duration, Timestamp};
 use serde::{Deserialize, Serialize};
 
@@ -78,6 +78,12 @@ pub enum ReferenceKind {
         value: f64,
         /// Whether a `valid_when` condition was configured.
         gated: bool,
+    },
+    /// Several known values, such as zero gas and span gas: each is a gated
+    /// [`ReferenceKind::Constant`] of its own, and the one whose gate alone is open holds.
+    Checks {
+        /// The known values.
+        points: Vec<ReferenceId>,
     },
     /// The median of at least three of these channels' indications at the instant; never holds the
     /// channel itself.

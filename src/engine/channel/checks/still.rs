@@ -103,12 +103,7 @@ mod tests {
     use crate::channel::testing::channel_setup;
 
     fn pair(time: i64, indication: f64, reference: f64) -> Pair {
-        Pair {
-            time: Timestamp(time),
-            indication,
-            reference,
-            weight: 1.0,
-        }
+        Pair::at(Timestamp(time), indication, reference)
     }
 
     #[test]

@@ -56,12 +56,9 @@ pub(super) fn resolve(
             reason: RefusedReason::GroupTooSmall,
         }
     } else {
-        Found::Pair(Pair {
-            time: sample.time,
-            indication: sample.value,
-            weight: weight(values.len(), asked),
-            reference: median(&mut values),
-        })
+        let weight = weight(values.len(), asked);
+        let pair = Pair::at(sample.time, sample.value, median(&mut values));
+        Found::Pair(pair.weighing(weight))
     });
     Fate::Done
 }

@@ -40,7 +40,7 @@ pub(super) fn resolve(
     }
     let (after, interpolated) = match look(track, instant, max_gap) {
         Look::Exact(indication) => {
-            make_once(made, pair(instant, indication, sample.value), found);
+            make_once(made, Pair::at(instant, indication, sample.value), found);
             return Fate::Done;
         }
         Look::Open => return Fate::Waits(None),
@@ -74,12 +74,12 @@ pub(super) fn resolve(
         if let (Look::Between { value, .. }, Look::Exact(indication)) =
             (shown, look(track, after.time, max_gap))
         {
-            make_once(made, pair(after.time, indication, value), found);
+            make_once(made, Pair::at(after.time, indication, value), found);
             return Fate::Done;
         }
     }
     found.push(match interpolated {
-        Some(indication) => Found::Pair(pair(instant, indication, sample.value)),
+        Some(indication) => Found::Pair(Pair::at(instant, indication, sample.value)),
         None => missed(sample),
     });
     Fate::Done
@@ -97,7 +97,7 @@ pub(super) fn resolve_indication(
     let anchor = sample.time.minus(scene.setup.lag);
     match look(sight.values, anchor, scene.setup.max_gap) {
         Look::Exact(value) | Look::Between { value, .. } => {
-            make_once(made, pair(sample.time, sample.value, value), found);
+            make_once(made, Pair::at(sample.time, sample.value, value), found);
         }
         Look::Apart { .. } | Look::Open => found.push(missed(sample)),
     }
@@ -142,15 +142,6 @@ pub(super) fn concerned(sample: &Sample, scene: &Scene<'_>) -> (Option<Timestamp
         .and_then(|value| track.first_after(value.time.plus(lag)))
         .map_or(newest, |held| held.time);
     (after, until)
-}
-
-fn pair(time: Timestamp, indication: f64, reference: f64) -> Pair {
-    Pair {
-        time,
-        indication,
-        reference,
-        weight: 1.0,
-    }
 }
 
 /// Whether other instants of the reference lie between the same two indications.

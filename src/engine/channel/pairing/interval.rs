@@ -9,7 +9,7 @@ use crate::track::Sample;
 
 /// Least part of the interval that the indications must cover. Three quarters is the usual
 /// data-capture rule for hourly means of air-quality networks (common practice, from memory).
-const LEAST_COVERAGE: f64 = 0.75;
+pub(super) const LEAST_COVERAGE: f64 = 0.75;
 
 /// The interval `[from, to)` that a value stands for, as the sensor saw it: shifted by `lag`.
 pub(super) fn span(stamp: Timestamp, scene: &Scene<'_>) -> (Timestamp, Timestamp) {
@@ -52,12 +52,10 @@ pub(super) fn resolve(
     let coverage = coverage(times, from, to, scene.setup.max_gap);
     let mean = mean(track.range(from, to).map(|held| held.value));
     found.push(match mean {
-        Some((indication, _)) if coverage >= LEAST_COVERAGE => Found::Pair(Pair {
-            time: middle(from, to),
-            indication,
-            reference: sample.value,
-            weight: weight(coverage, scene),
-        }),
+        Some((indication, _)) if coverage >= LEAST_COVERAGE => {
+            let pair = Pair::over((from, to), indication, sample.value);
+            Found::Pair(pair.weighing(weight(coverage, scene)))
+        }
         _ => missed(sample),
     });
     Fate::Done
@@ -66,7 +64,7 @@ pub(super) fn resolve(
 /// Part of `[from, to)` that lies within half a `max_gap` of a reading: an indication stands for
 /// its surroundings as far as interpolation between two of them would be allowed. `times` are in
 /// order and inside.
-fn coverage(
+pub(super) fn coverage(
     times: impl Iterator<Item = Timestamp>,
     from: Timestamp,
     to: Timestamp,
@@ -96,10 +94,6 @@ fn weight(coverage: f64, scene: &Scene<'_>) -> f64 {
     } else {
         1.0
     }
-}
-
-fn middle(from: Timestamp, to: Timestamp) -> Timestamp {
-    from.plus(Duration(to.since(from).0 / 2))
 }
 
 #[cfg(test)]

@@ -2,8 +2,8 @@
 //!
 //! The sparser stream makes the pairs (see `instant`). How a pair comes about depends on the
 //! reference:
-//! - a constant: every indication is a pair at once; behind a gate ([`gated`]), as soon as no gate
-//!   event for its instant can come;
+//! - a constant: every indication is a pair at once; one or several behind gates ([`gated`]), as
+//!   soon as no gate event for its instant can come;
 //! - a value that stands for an instant: [`instant`];
 //! - a value that stands for an interval: [`interval`];
 //! - the median of a group: [`group`].
@@ -18,24 +18,31 @@
 //! One exception: an exact match is made at once, so of several values of one source for one
 //! instant those that came first count.
 //!
+//! Where influence quantities act on the sensor, a pair then waits for their values ([`attaching`]).
+//!
 //! What is no longer in memory is asked from the record; the reading then waits among the
 //! [`requests`] until the rows are supplied.
 //!
 //! Bounded: at most [`PENDING_MAX`] readings wait; when it is full the oldest is let go (see
 //! `overflow`).
 
+mod attaching;
 mod gated;
 mod group;
 mod instant;
 mod interval;
 mod look;
+mod pair;
 mod requests;
 
 use super::Scene;
-use crate::event::RefusedReason;
+use crate::event::{RefusedReason, Rejection};
 use crate::setup::ReferenceKind;
 use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
+use attaching::Attaching;
+pub(crate) use gated::{Check, Holding, holding};
+pub(crate) use pair::Pair;
 pub(crate) use requests::{Answer, Rows};
 use requests::{Asker, Request, Requests};
 use serde::{Deserialize, Serialize};
@@ -48,19 +55,6 @@ const MADE_MAX: usize = 4096;
 /// The due time of a reading that is to be looked at now.
 const AT_ONCE: Timestamp = Timestamp(i64::MIN);
 
-/// One reference value with the indication that belongs to it.
-#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
-pub(crate) struct Pair {
-    /// When the sensor showed it.
-    pub(crate) time: Timestamp,
-    /// Indication, mean of indications, or interpolated indication.
-    pub(crate) indication: f64,
-    /// Reference value.
-    pub(crate) reference: f64,
-    /// Relative weight; 1 for a complete pair.
-    pub(crate) weight: f64,
-}
-
 /// What pairing found.
 #[derive(Clone, Copy, Debug, PartialEq)]
 pub(crate) enum Found {
@@ -72,6 +66,15 @@ pub(crate) enum Found {
         time: Timestamp,
         /// Why.
         reason: RefusedReason,
+    },
+    /// A pair without a value of an influence quantity: it must stay out of the fit.
+    Unattached {
+        /// The pair.
+        pair: Pair,
+        /// Place of the influence quantity among the channel's.
+        influence: usize,
+        /// Seconds to its nearest value, against `max_gap`.
+        rejection: Rejection,
     },
     /// Rows that are no longer in memory are needed from the record.
     Wanted {
@@ -123,6 +126,7 @@ pub(crate) struct Pairing {
     /// Ordered by phenomenon time.
     pending: VecDeque<Pending>,
     requests: Requests,
+    attaching: Attaching,
     /// Instants of indications that made a pair of their own, so that they make no second one.
     made: BTreeSet<Timestamp>,
     /// Phenomenon time of the newest reference value let go before an indication came for it.
@@ -134,7 +138,20 @@ pub(crate) struct Pairing {
 impl Pairing {
     /// When time alone may bring a pair about.
     pub(crate) fn due(&self) -> Option<Timestamp> {
-        self.due
+        self.due.into_iter().chain(self.attaching.due()).min()
+    }
+
+    /// Has the pairs among what was found wait for their influence quantities, and lets those out
+    /// that have them.
+    pub(crate) fn attach(&mut self, found: &mut Vec<Found>, scene: &Scene<'_>) {
+        if !scene.setup.influences.is_empty() {
+            self.attaching.take(found, scene);
+        }
+    }
+
+    /// A value of an influence quantity was taken into its track.
+    pub(crate) fn touch_influences(&mut self) {
+        self.attaching.touch();
     }
 
     /// The channel's own indication was taken into its track.
@@ -149,14 +166,12 @@ impl Pairing {
                 value,
                 gated: false,
             } => {
-                found.push(Found::Pair(Pair {
-                    time: sample.time,
-                    indication: sample.value,
-                    reference: *value,
-                    weight: 1.0,
-                }));
+                let pair = Pair::at(sample.time, sample.value, *value);
+                found.push(Found::Pair(pair));
             }
-            ReferenceKind::Constant { gated: true, .. } | ReferenceKind::Group { .. } => {
+            ReferenceKind::Constant { gated: true, .. }
+            | ReferenceKind::Checks { .. }
+            | ReferenceKind::Group { .. } => {
                 self.wait(sample, scene, found);
                 self.advance(scene, found);
             }
@@ -204,6 +219,7 @@ impl Pairing {
         scene: &Scene<'_>,
         found: &mut Vec<Found>,
     ) {
+        self.attaching.take_supplied(answer, scene, found);
         for request in self.requests.answered(answer) {
             let (from, to) = (request.from, request.to);
             let sight = Sight {
@@ -235,7 +251,10 @@ impl Pairing {
             now: scene.now,
         };
         // Gated readings settle in order: the rest would only be looked at in vain.
-        let in_order = matches!(scene.reference.kind, ReferenceKind::Constant { .. });
+        let in_order = matches!(
+            scene.reference.kind,
+            ReferenceKind::Constant { .. } | ReferenceKind::Checks { .. }
+        );
         let mut index = 0;
         while let Some(pending) = self.pending.get(index).copied() {
             if pending.due.is_none_or(|due| scene.now < due) {
@@ -284,7 +303,9 @@ impl Pairing {
         found: &mut Vec<Found>,
     ) -> Fate {
         match &scene.reference.kind {
-            ReferenceKind::Constant { value, .. } => gated::resolve(sample, *value, scene, found),
+            ReferenceKind::Constant { .. } | ReferenceKind::Checks { .. } => {
+                gated::resolve(sample, scene, found)
+            }
             ReferenceKind::Group { members } => group::resolve(sample, members, scene, found),
             ReferenceKind::Measured if is_instant(scene) => {
                 instant::resolve(sample, sight, &mut self.made, scene, found)
@@ -389,9 +410,9 @@ fn awaited(sample: &Sample, scene: &Scene<'_>) -> Timestamp {
     match scene.reference.kind {
         ReferenceKind::Measured if is_instant(scene) => sample.time.plus(scene.setup.lag),
         ReferenceKind::Measured => interval::span(sample.time, scene).1,
-        ReferenceKind::Group { .. } | ReferenceKind::Constant { .. } => {
-            sample.time.minus(scene.setup.lag)
-        }
+        ReferenceKind::Group { .. }
+        | ReferenceKind::Constant { .. }
+        | ReferenceKind::Checks { .. } => sample.time.minus(scene.setup.lag),
     }
 }
 

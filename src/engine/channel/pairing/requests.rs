@@ -8,11 +8,11 @@
 
 use super::{Found, missed};
 use crate::event::{Reading, Source};
-use crate::setup::ChannelId;
+use crate::setup::{ChannelId, InfluenceId};
 use crate::time::Timestamp;
 use crate::track::Sample;
 use serde::{Deserialize, Serialize};
-use std::collections::VecDeque;
+use std::collections::{BTreeMap, VecDeque};
 
 /// Most readings that wait for the record.
 const REQUESTS_MAX: usize = 256;
@@ -51,6 +51,8 @@ pub(crate) struct Rows {
     pub(super) own: Vec<Sample>,
     /// The values of its reference.
     pub(super) values: Vec<Sample>,
+    /// The values of its influence quantities, by their source.
+    pub(super) influences: BTreeMap<InfluenceId, Vec<Sample>>,
 }
 
 /// Rows supplied in answer to a request.
@@ -65,7 +67,7 @@ pub(crate) struct Answer {
 }
 
 impl Rows {
-    /// Adds a row of this channel or of its reference; others (members of its group) serve no
+    /// Adds a row of this channel, of its reference or of an influence quantity; others (members of its group) serve no
     /// request.
     pub(crate) fn add(&mut self, channel: ChannelId, reading: &Reading) {
         let sample = Sample {
@@ -78,6 +80,7 @@ impl Rows {
             Source::Indication(id) if id == channel => self.own.push(sample),
             Source::Indication(_) => {}
             Source::Reference(_) => self.values.push(sample),
+            Source::Influence(id) => self.influences.entry(id).or_default().push(sample),
         }
     }
 }

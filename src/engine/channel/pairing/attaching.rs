@@ -1,0 +1,278 @@
+//! Attaches influence quantities to pairs: interpolated to the pair's instant, or the mean over its
+//! interval, by the same rules as indications.
+//!
+//! A pair waits until what is known of every quantity around it is settled, at most until a value
+//! still to come would be too far away. Without one of its values it stays out of the fit, since a
+//! fit must not mix rows that mean different things. Pairs leave in order of their time, so that
+//! one whose values came at once does not overtake those before it.
+//!
+//! Bounded: at most [`WAITING_MAX`] pairs wait, and as many for the record; when it is full the
+//! oldest stays out.
+
+use super::interval::{self, LEAST_COVERAGE};
+use super::look::{Look, look, mean};
+use super::{AT_ONCE, Answer, Found, Pair, Scene, settles};
+use crate::event::{RefusedReason, Rejection};
+use crate::fit::basis::MAX_INFLUENCES;
+use crate::time::{Duration, Timestamp};
+use crate::track::Track;
+use serde::{Deserialize, Serialize};
+use std::collections::VecDeque;
+
+/// Most pairs that wait for their influence quantities.
+const WAITING_MAX: usize = 4096;
+/// Most pairs that wait for rows from the record.
+const ASKED_MAX: usize = 256;
+
+/// The pairs that wait.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub(super) struct Attaching {
+    /// Ordered by the pair's time.
+    waiting: VecDeque<Waiting>,
+    /// Those that wait for rows from the record, in the order in which they asked.
+    asked: VecDeque<Waiting>,
+    /// When time alone may let the first one out.
+    due: Option<Timestamp>,
+}
+
+/// A pair that waits.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+struct Waiting {
+    pair: Pair,
+    /// Now when it was found.
+    found: Timestamp,
+}
+
+/// What is known of an influence quantity beside a pair.
+#[derive(Clone, Copy, Debug, PartialEq)]
+enum Beside {
+    Value(f64),
+    /// It may still come, or change, until then.
+    Open(Timestamp),
+    /// It will never be known.
+    Missing,
+    /// It is no longer in memory.
+    Forgotten,
+}
+
+impl Attaching {
+    /// When time alone may let a pair out.
+    pub(super) fn due(&self) -> Option<Timestamp> {
+        self.due
+    }
+
+    /// Something that may let a pair out has come.
+    pub(super) fn touch(&mut self) {
+        if !self.waiting.is_empty() {
+            self.due = Some(AT_ONCE);
+        }
+    }
+
+    /// Takes the pairs out of what was found, and adds those that have all they wait for.
+    pub(super) fn take(&mut self, found: &mut Vec<Found>, scene: &Scene<'_>) {
+        let mut rest = Vec::with_capacity(found.len());
+        for found in found.drain(..) {
+            match found {
+                Found::Pair(pair) => self.wait(pair, scene),
+                other => rest.push(other),
+            }
+        }
+        *found = rest;
+        while self.waiting.len() > WAITING_MAX
+            && let Some(oldest) = self.waiting.pop_front()
+        {
+            let missing = first_missing(&oldest, scene);
+            found.push(unattached(&oldest.pair, missing, scene));
+        }
+        self.advance(scene, found);
+    }
+
+    /// Rows that were asked for have come (or there are none).
+    pub(super) fn take_supplied(
+        &mut self,
+        answer: &Answer,
+        scene: &Scene<'_>,
+        found: &mut Vec<Found>,
+    ) {
+        let (answered, asked): (VecDeque<Waiting>, _) = std::mem::take(&mut self.asked)
+            .into_iter()
+            .partition(|waiting| {
+                around(&waiting.pair, scene.setup.max_gap) == (answer.from, answer.to)
+            });
+        self.asked = asked;
+        for waiting in answered {
+            let tracks = scene.setup.influences.iter().map(|influence| {
+                let track = &scene.influences[influence.source.0 as usize];
+                let rows = answer.rows.influences.get(&influence.source);
+                track.joined(rows.map_or(&[], Vec::as_slice), answer.from, answer.to)
+            });
+            let mut values = [0.0; MAX_INFLUENCES];
+            let mut missing = None;
+            for (index, track) in tracks.enumerate() {
+                match beside(&track, &waiting, Timestamp(i64::MAX), scene) {
+                    Beside::Value(value) => values[index] = value,
+                    _ => missing = missing.or(Some(index)),
+                }
+            }
+            found.push(match missing {
+                None => attached(&waiting.pair, values),
+                Some(influence) => unattached(&waiting.pair, influence, scene),
+            });
+        }
+    }
+
+    fn wait(&mut self, pair: Pair, scene: &Scene<'_>) {
+        let place = self
+            .waiting
+            .partition_point(|held| held.pair.time <= pair.time);
+        let waiting = Waiting {
+            pair,
+            found: scene.now,
+        };
+        self.waiting.insert(place, waiting);
+        self.due = Some(AT_ONCE);
+    }
+
+    /// Lets out, in order, the pairs that wait no longer.
+    fn advance(&mut self, scene: &Scene<'_>, found: &mut Vec<Found>) {
+        if self.due.is_none_or(|due| scene.now < due) {
+            return;
+        }
+        self.due = None;
+        while let Some(first) = self.waiting.front() {
+            match resolve(first, scene) {
+                Ok(values) => found.push(attached(&first.pair, values)),
+                Err((_, Beside::Open(due))) => {
+                    self.due = Some(due);
+                    return;
+                }
+                Err((_, Beside::Forgotten)) => {
+                    let (from, to) = around(&first.pair, scene.setup.max_gap);
+                    found.push(Found::Wanted { from, to });
+                    self.asked.push_back(*first);
+                }
+                Err((influence, _)) => found.push(unattached(&first.pair, influence, scene)),
+            }
+            self.waiting.pop_front();
+            if self.asked.len() > ASKED_MAX
+                && let Some(oldest) = self.asked.pop_front()
+            {
+                let missing = first_missing(&oldest, scene);
+                found.push(unattached(&oldest.pair, missing, scene));
+            }
+        }
+    }
+}
+
+/// The values of all influence quantities, or the place of the one that decides what becomes of the
+/// pair: one that is missing before one that is forgotten before one that is awaited longest.
+fn resolve(waiting: &Waiting, scene: &Scene<'_>) -> Result<[f64; MAX_INFLUENCES], (usize, Beside)> {
+    let mut values = [0.0; MAX_INFLUENCES];
+    let mut worst: Option<(usize, Beside)> = None;
+    for (index, influence) in scene.setup.influences.iter().enumerate() {
+        let track = &scene.influences[influence.source.0 as usize];
+        let seen = beside(track, waiting, scene.now, scene);
+        match (seen, worst) {
+            (Beside::Value(value), _) => values[index] = value,
+            (Beside::Missing, _) => return Err((index, seen)),
+            (Beside::Open(due), Some((_, Beside::Open(before)))) if due <= before => {}
+            (Beside::Open(_), Some((_, Beside::Forgotten))) => {}
+            _ => worst = Some((index, seen)),
+        }
+    }
+    worst.map_or(Ok(values), Err)
+}
+
+/// What is known at `now` of one influence quantity beside a pair.
+fn beside(track: &Track, waiting: &Waiting, now: Timestamp, scene: &Scene<'_>) -> Beside {
+    let (from, to) = waiting.pair.interval;
+    let setup = scene.setup;
+    // Past this, any value still to come would be too far away.
+    let latest = to
+        .max(waiting.found)
+        .plus(setup.lateness)
+        .plus(setup.max_gap);
+    let (value, settled) = if from == to {
+        at(track, from, scene)
+    } else {
+        over(track, (from, to), scene)
+    };
+    let settled = settled.map_or(latest, |settled| settled.min(latest));
+    if now < settled {
+        return Beside::Open(settled);
+    }
+    let edge = from.minus(setup.max_gap);
+    let forgotten = track.forgotten().is_some_and(|newest| newest >= edge);
+    match value {
+        Some(value) => Beside::Value(value),
+        None if forgotten && track.last_until(from).is_none() => Beside::Forgotten,
+        None => Beside::Missing,
+    }
+}
+
+/// The value at an instant, and when it is settled; `None` while only time can tell.
+fn at(track: &Track, instant: Timestamp, scene: &Scene<'_>) -> (Option<f64>, Option<Timestamp>) {
+    match look(track, instant, scene.setup.max_gap) {
+        Look::Exact(value) => (Some(value), Some(AT_ONCE)),
+        Look::Between { value, after } => (Some(value), Some(settles(&after, scene))),
+        Look::Apart { after } => (None, Some(settles(&after, scene))),
+        Look::Open => (None, None),
+    }
+}
+
+/// The same for the mean over an interval, if its values cover enough of it.
+fn over(
+    track: &Track,
+    (from, to): (Timestamp, Timestamp),
+    scene: &Scene<'_>,
+) -> (Option<f64>, Option<Timestamp>) {
+    let beyond = track.first_after(to.minus(Duration(1)));
+    let settled = beyond.map(|beyond| {
+        let inside = track.range(from, to).map(|held| settles(held, scene)).max();
+        settles(beyond, scene)
+            .max(inside.unwrap_or(to))
+            .max(to.plus(scene.setup.lateness))
+    });
+    let times = track.range(from, to).map(|held| held.time);
+    let coverage = interval::coverage(times, from, to, scene.setup.max_gap);
+    let mean = mean(track.range(from, to).map(|held| held.value));
+    let value = mean.filter(|_| coverage >= LEAST_COVERAGE);
+    (value.map(|(mean, _)| mean), settled)
+}
+
+/// The rows `[from, to)` that tell what acted on a pair.
+fn around(pair: &Pair, max_gap: Duration) -> (Timestamp, Timestamp) {
+    let (from, to) = pair.interval;
+    (from.minus(max_gap), to.plus(max_gap).plus(Duration(1)))
+}
+
+fn attached(pair: &Pair, influences: [f64; MAX_INFLUENCES]) -> Found {
+    Found::Pair(Pair {
+        influences,
+        ..*pair
+    })
+}
+
+/// The first influence quantity that is not known beside a pair; the first of all if each is.
+fn first_missing(waiting: &Waiting, scene: &Scene<'_>) -> usize {
+    resolve(waiting, scene).map_or_else(|(influence, _)| influence, |_| 0)
+}
+
+fn unattached(pair: &Pair, influence: usize, scene: &Scene<'_>) -> Found {
+    let source = scene.setup.influences[influence].source;
+    let track = &scene.influences[source.0 as usize];
+    let before = track.last_until(pair.time);
+    let before = before.map(|held| pair.time.since(held.time).seconds());
+    let after = track.first_after(pair.time);
+    let after = after.map(|held| held.time.since(pair.time).seconds());
+    Found::Unattached {
+        pair: *pair,
+        influence,
+        rejection: Rejection {
+            reason: RefusedReason::NoInfluence,
+            // Where there is no value at all, none is near.
+            value: before.into_iter().chain(after).fold(f64::MAX, f64::min),
+            threshold: scene.setup.max_gap.seconds(),
+        },
+    }
+}

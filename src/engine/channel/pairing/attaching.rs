@@ -276,3 +276,195 @@ fn unattached(pair: &Pair, influence: usize, scene: &Scene<'_>) -> Found {
         },
     }
 }
+
+#[cfg(test)]
+#[allow(clippy::float_cmp, reason = "the expected values are exact in binary")]
+mod tests {
+    use super::*;
+    use crate::channel::Rows;
+    use crate::channel::testing::{Stage, channel_setup};
+    use crate::setup::{ChannelInfluence, InfluenceId};
+    use crate::track::Sample;
+
+    /// A stage whose channel waits 10 s for stragglers, interpolates across 60 s, and has these
+    /// influence quantities: (second, value).
+    fn stage(tracks: &[&[(i64, f64)]]) -> Stage {
+        let mut setup = channel_setup();
+        setup.lateness = Duration::from_seconds(10);
+        setup.max_gap = Duration::from_seconds(60);
+        setup.influences = (0..)
+            .zip(tracks)
+            .map(|(id, _)| ChannelInfluence {
+                source: InfluenceId(id),
+                name: format!("quantity-{id}"),
+                unit: None,
+            })
+            .collect();
+        let mut stage = Stage::new(setup);
+        stage.influences = tracks.iter().map(|rows| track(rows)).collect();
+        stage
+    }
+
+    fn track(rows: &[(i64, f64)]) -> Track {
+        let mut track = Track::default();
+        for &(second, value) in rows {
+            track.insert(sample(second, value));
+        }
+        track
+    }
+
+    fn sample(second: i64, value: f64) -> Sample {
+        Sample {
+            time: at(second),
+            arrived: at(second),
+            value,
+            sequence: None,
+        }
+    }
+
+    fn at(second: i64) -> Timestamp {
+        Timestamp(0).plus(Duration::from_seconds(second))
+    }
+
+    fn pair(second: i64) -> Pair {
+        Pair::at(at(second), 1.0, 2.0)
+    }
+
+    /// What comes out at this second when these pairs go in.
+    fn take(
+        attaching: &mut Attaching,
+        stage: &mut Stage,
+        now: i64,
+        pairs: impl IntoIterator<Item = Pair>,
+    ) -> Vec<Found> {
+        let mut found: Vec<Found> = pairs.into_iter().map(Found::Pair).collect();
+        stage.act(at(now), |scene, _| attaching.take(&mut found, scene));
+        found
+    }
+
+    fn with(pair: Pair, influences: [f64; MAX_INFLUENCES]) -> Found {
+        attached(&pair, influences)
+    }
+
+    #[test]
+    fn a_value_beside_an_instant_is_interpolated_once_it_is_settled() {
+        let mut stage = stage(&[&[(0, 10.0), (40, 30.0)]]);
+        let mut attaching = Attaching::default();
+        assert_eq!(take(&mut attaching, &mut stage, 49, [pair(30)]), []);
+        assert_eq!(
+            attaching.due(),
+            Some(at(50)),
+            "ten seconds behind the later value"
+        );
+        let found = take(&mut attaching, &mut stage, 50, []);
+        assert_eq!(found, [with(pair(30), [25.0, 0.0])]);
+        assert_eq!(attaching.due(), None);
+    }
+
+    #[test]
+    fn an_exact_value_counts_at_once_but_overtakes_nobody() {
+        let mut stage = stage(&[&[(0, 10.0), (40, 30.0)]]);
+        let mut attaching = Attaching::default();
+        let found = take(&mut attaching, &mut stage, 40, [pair(40)]);
+        assert_eq!(found, [with(pair(40), [30.0, 0.0])]);
+        assert_eq!(
+            take(&mut attaching, &mut stage, 40, [pair(40), pair(20)]),
+            []
+        );
+        let found = take(&mut attaching, &mut stage, 50, []);
+        assert_eq!(
+            found,
+            [with(pair(20), [20.0, 0.0]), with(pair(40), [30.0, 0.0])]
+        );
+    }
+
+    #[test]
+    fn an_interval_has_the_mean_over_it_if_enough_is_covered() {
+        let mut stage = stage(&[&[(0, 1.0), (40, 3.0), (80, 5.0), (120, 100.0)]]);
+        let mut attaching = Attaching::default();
+        let hour = Pair::over((at(0), at(120)), 1.0, 2.0);
+        assert_eq!(take(&mut attaching, &mut stage, 129, [hour]), []);
+        let found = take(&mut attaching, &mut stage, 130, []);
+        assert_eq!(
+            found,
+            [with(hour, [3.0, 0.0])],
+            "what begins the next interval stays out"
+        );
+        let thin = Pair::over((at(40), at(320)), 1.0, 2.0);
+        assert_eq!(take(&mut attaching, &mut stage, 130, [thin]), []);
+        assert_eq!(attaching.due(), Some(at(390)));
+        let [Found::Unattached { rejection, .. }] = take(&mut attaching, &mut stage, 390, [])[..]
+        else {
+            panic!("three values cover half of it");
+        };
+        assert_eq!(rejection.reason, RefusedReason::NoInfluence);
+    }
+
+    #[test]
+    fn without_a_value_near_enough_a_pair_stays_out() {
+        let mut stage = stage(&[&[(0, 1.0), (100, 2.0), (200, 3.0)], &[(0, 7.0)]]);
+        let mut attaching = Attaching::default();
+        // 100 s lie between the neighbours: known as soon as the later one has settled.
+        let found = take(&mut attaching, &mut stage, 110, [pair(30)]);
+        let expected = Found::Unattached {
+            pair: pair(30),
+            influence: 0,
+            rejection: Rejection {
+                reason: RefusedReason::NoInfluence,
+                value: 30.0,
+                threshold: 60.0,
+            },
+        };
+        assert_eq!(found, [expected]);
+        // The second quantity fell silent: until 60 s and the lateness have passed it may come.
+        assert_eq!(take(&mut attaching, &mut stage, 210, [pair(200)]), []);
+        assert_eq!(attaching.due(), Some(at(280)));
+        let [
+            Found::Unattached {
+                influence,
+                rejection,
+                ..
+            },
+        ] = take(&mut attaching, &mut stage, 280, [])[..]
+        else {
+            panic!("nothing came");
+        };
+        assert_eq!((influence, rejection.value), (1, 200.0));
+    }
+
+    #[test]
+    fn values_no_longer_in_memory_are_asked_from_the_record() {
+        let mut stage = stage(&[&[(0, 1.0), (40, 3.0), (500, 5.0)]]);
+        stage.influences[0].forget_before(at(400));
+        let mut attaching = Attaching::default();
+        let found = take(&mut attaching, &mut stage, 510, [pair(20)]);
+        let (from, to) = (at(-40), at(80).plus(Duration(1)));
+        assert_eq!(found, [Found::Wanted { from, to }]);
+        let mut found = Vec::new();
+        let mut rows = Rows::default();
+        rows.influences
+            .insert(InfluenceId(0), vec![sample(0, 1.0), sample(40, 3.0)]);
+        let answer = Answer { from, to, rows };
+        stage.act(at(510), |scene, _| {
+            attaching.take_supplied(&answer, scene, &mut found)
+        });
+        assert_eq!(found, [with(pair(20), [2.0, 0.0])]);
+        found.clear();
+        stage.act(at(510), |scene, _| {
+            attaching.take_supplied(&answer, scene, &mut found)
+        });
+        assert_eq!(found, [], "answered once");
+    }
+
+    #[test]
+    fn a_pair_too_many_costs_the_oldest() {
+        let mut stage = stage(&[&[]]);
+        let mut attaching = Attaching::default();
+        let pairs = (0..).take(WAITING_MAX + 1).map(pair);
+        let found = take(&mut attaching, &mut stage, 0, pairs);
+        assert!(
+            matches!(found[..], [Found::Unattached { pair: oldest, .. }] if oldest == pair(0)),
+            "{found:?}"
+        );
+    }
+}

@@ -14,6 +14,8 @@ const TIME_TO_LIMIT: &str = "time-to-limit";
 
 /// Between this part of the limit and the limit itself an honest estimate may fall on either side.
 const NEAR_LIMIT: f64 = 0.9;
+/// From this part of the limit on, a drift is on its way to it.
+const HALF_WAY: f64 = 0.5;
 /// An error-limit alarm may come so many days after the error was last near its limit: the fit
 /// looks back.
 const LIMIT_ECHO_DAYS: f64 = 2.0;
@@ -50,12 +52,16 @@ pub struct Limits {
     near: Vec<f64>,
     /// When it first passed it.
     crossing: Option<f64>,
+    /// Whether it ever went half of the way: then telling that it would pass was no false alarm,
+    /// even if the run or a cleaning ended the drift before.
+    halfway: bool,
 }
 
 impl Limits {
     /// Takes the systematic error at `day`.
     pub fn see(&mut self, day: f64, systematic: f64, limit: Option<f64>) {
         let Some(limit) = limit else { return };
+        self.halfway |= systematic.abs() >= HALF_WAY * limit;
         if systematic.abs() >= NEAR_LIMIT * limit {
             self.near.push(day);
         }
@@ -125,7 +131,7 @@ fn judge_word(world: &World, said: &Said, limits: &[Limits], findings: &mut Find
                 findings.false_limits += 1;
             }
         }
-        TIME_TO_LIMIT if of_sensor.is_some_and(|limits| limits.crossing.is_some()) => {}
+        TIME_TO_LIMIT if of_sensor.is_some_and(|limits| limits.halfway) => {}
         word => *findings.false_alarms.entry(word.to_owned()).or_default() += 1,
     }
 }

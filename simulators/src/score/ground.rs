@@ -5,9 +5,9 @@ use super::chooser::Chooser;
 use super::world::{Delivery, Noise, Quantity, Reference, Sensor, World};
 use crate::behaviour::disturbance::Disturbance;
 use holdtrue_engine::setup::{
-    AlarmSetup, ChannelId, ChannelSetup, Clock, Criterion, DecisionRule, FitSetup, PairNoise,
-    PublishSetup, ReferenceId, ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped,
-    WindowLength,
+    AlarmSetup, ChannelId, ChannelInfluence, ChannelSetup, Clock, Criterion, DecisionRule,
+    FitSetup, InfluenceId, InfluenceSetup, PairNoise, PublishSetup, ReferenceId, ReferenceKind,
+    ReferenceSetup, ScreeningSetup, Setup, Stamped, WindowLength,
 };
 use holdtrue_engine::time::Duration;
 
@@ -128,6 +128,23 @@ pub fn group(chooser: Chooser, members: usize, noise: &[(f64, f64)]) -> World {
         channel.reference = reference_id(own);
     }
     world
+}
+
+/// Has the influence on the first sensor measured with this noise, and tells the engine of it.
+pub fn declare_influence(world: &mut World, noise: f64) {
+    if let Some(influence) = &mut world.sensors[0].influence {
+        influence.measured = Some(noise);
+    }
+    world.setup.influences.push(InfluenceSetup {
+        name: "temperature".to_owned(),
+    });
+    let channel = &mut world.setup.channels[0];
+    channel.influences.push(ChannelInfluence {
+        source: InfluenceId(0),
+        name: "temperature".to_owned(),
+        unit: Some("degC".to_owned()),
+    });
+    channel.fit.influences = 1;
 }
 
 fn sensor(quantity: usize, noise: Noise) -> Sensor {

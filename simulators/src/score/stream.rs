@@ -87,6 +87,7 @@ struct Line {
     delivery_draw: Draw,
     disturber: Disturber,
     influence: Option<Process>,
+    influence_draw: Draw,
     /// True values that it has not answered yet.
     behind: VecDeque<f64>,
 }
@@ -112,6 +113,7 @@ impl Line {
                 let shape = (it.mean, it.swing, it.wander);
                 Process::of(shape, world.cadence_seconds, influence_draw)
             }),
+            influence_draw: world.chooser.stream(900 + sensor % 100, Duty::Noise),
             behind: VecDeque::new(),
         }
     }
@@ -138,6 +140,7 @@ impl Line {
             noise *= factor;
         }
         let influence = self.influence.as_mut().map_or(0.0, |it| it.next(day));
+        self.tell_influence(world, day, influence, events);
         if step < plan.lag {
             return;
         }
@@ -169,6 +172,23 @@ impl Line {
         self.deliver(&plan.delivery, &truth, world.cadence_seconds, events);
     }
 
+    /// Sends the influence quantity, where it is measured.
+    fn tell_influence(&mut self, world: &World, day: f64, value: f64, events: &mut Vec<Event>) {
+        let plan = world.sensors[self.sensor].influence;
+        let configured = world.setup.channels[self.sensor].influences.first();
+        if let Some(noise) = plan.and_then(|it| it.measured)
+            && let Some(configured) = configured
+        {
+            let value = value + noise * self.influence_draw.normal();
+            let at = START.plus(days(day));
+            events.push(Event {
+                arrival: at,
+                input: reading(Source::Influence(configured.source), at, at, value),
+                truth: None,
+            });
+        }
+    }
+
     /// Puts a reading on its way.
     fn deliver(&mut self, way: &Delivery, truth: &Truth, cadence: i64, events: &mut Vec<Event>) {
         let at = START.plus(days(truth.day));
@@ -191,14 +211,12 @@ impl Line {
             let arrival = at.plus(days(steps * cadence as f64 / 86_400.0));
             events.push(Event {
                 arrival,
-                input: Input::Reading(Reading {
-                    source: Source::Indication(channel_id(self.sensor)),
-                    received: arrival,
-                    phenomenon: stamped,
-                    value: truth.indication,
-                    sequence: None,
-                    excluded: false,
-                }),
+                input: reading(
+                    Source::Indication(channel_id(self.sensor)),
+                    arrival,
+                    stamped,
+                    truth.indication,
+                ),
                 // The second copy is the same indication, not one more to be judged.
                 truth: (copy == 0).then_some(*truth),
             });
@@ -247,17 +265,27 @@ impl Post {
         let arrival = at.plus(days(way));
         events.push(Event {
             arrival,
-            input: Input::Reading(Reading {
-                source: Source::Reference(reference_id(self.reference)),
-                received: arrival,
-                phenomenon: at,
-                value: values[quantity] + error + noise,
-                sequence: None,
-                excluded: false,
-            }),
+            input: reading(
+                Source::Reference(reference_id(self.reference)),
+                arrival,
+                at,
+                values[quantity] + error + noise,
+            ),
             truth: None,
         });
     }
+}
+
+/// A reading as the engine takes it.
+fn reading(source: Source, received: Timestamp, phenomenon: Timestamp, value: f64) -> Input {
+    Input::Reading(Reading {
+        source,
+        received,
+        phenomenon,
+        value,
+        sequence: None,
+        excluded: false,
+    })
 }
 
 /// `value` as a display with this smallest step shows it.

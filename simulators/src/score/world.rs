@@ -151,8 +151,8 @@ pub struct Influence {
     pub wander: f64,
     /// Error per unit of it.
     pub sensitivity: f64,
-    /// Whether it is measured and configured.
-    pub declared: bool,
+    /// Standard deviation of its readings' noise; `None`: nobody measures it.
+    pub measured: Option<f64>,
 }
 
 /// Readings in another unit.

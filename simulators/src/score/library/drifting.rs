@@ -1,9 +1,10 @@
 //! Drifts that pairs with a reference show.
 
+use super::stationary::feel_temperature;
 use super::{Class, Scenario};
 use crate::behaviour::curve::Curve;
 use crate::score::chooser::Chooser;
-use crate::score::ground::{RUN_DAYS, WHITE, group, one};
+use crate::score::ground::{RUN_DAYS, WHITE, declare_influence, group, one};
 use crate::score::world::World;
 use holdtrue_engine::time::Duration;
 
@@ -31,6 +32,11 @@ pub(super) const SCENARIOS: &[Scenario] = &[
         "group-one-drifts",
         "one of five redundant sensors drifts, each judged against the median of the others",
         one_drifts,
+    ),
+    scenario(
+        "temperature-declared",
+        "the sensor feels the daily temperature, which is measured beside it",
+        temperature,
     ),
     Scenario::new(
         Class::MustRefuse,
@@ -162,6 +168,16 @@ fn span_ramp(chooser: Chooser) -> World {
 
 fn span_ramp_at_one_level(chooser: Chooser) -> World {
     fading(chooser, (0.0, 0.0))
+}
+
+fn temperature(chooser: Chooser) -> World {
+    let mut world = one(chooser, WHITE);
+    feel_temperature(&mut world, 3.0, 6.0);
+    // A thermometer that is good to a tenth of a kelvin.
+    declare_influence(&mut world, 0.1);
+    // What moves the error is the temperature, not time.
+    world.degrees = Some((0, 0));
+    world
 }
 
 /// Noise over spread of the regressor from 0.1 to 0.2, where a plain fit claims nearly every

@@ -86,14 +86,20 @@ fn spikes(chooser: Chooser, longest: u32) -> World {
 
 fn temperature(chooser: Chooser) -> World {
     let mut world = steady(chooser, WHITE);
+    feel_temperature(&mut world, 1.0, 2.0);
+    world
+}
+
+/// Lets the sensor feel a daily temperature cycle of 8 K that nobody measures; the amplitude of the
+/// error that it makes is drawn from this range, in σ.
+pub(super) fn feel_temperature(world: &mut World, low: f64, high: f64) {
     let noise = world.sensors[0].noise.deviation();
-    let felt = noise * world.chooser.signed("amplitude", "sigma", 1.0, 2.0);
+    let felt = noise * world.chooser.signed("amplitude", "sigma", low, high);
     world.sensors[0].influence = Some(Influence {
         mean: 15.0,
         swing: 8.0,
         wander: 0.0,
         sensitivity: felt / 8.0,
-        declared: false,
+        measured: None,
     });
-    world
 }

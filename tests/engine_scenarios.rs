@@ -343,6 +343,13 @@ impl Stage {
                 notice.code,
                 notice.held_back
             ),
+            Output::Answer(answer) => {
+                let verdict = if answer.accepted { "done" } else { "refused" };
+                format!("answer {} {verdict}", answer.id)
+            }
+            Output::Validation(validation) => {
+                format!("validation {}", channel(validation.channel))
+            }
             Output::Wanted {
                 channel: id,
                 from,

@@ -40,6 +40,7 @@ fn document(topic: &str, payload: &str, retain: bool) -> Document {
         payload: payload.as_bytes().to_vec(),
         retain,
         expires: None,
+        correlation: None,
     }
 }
 

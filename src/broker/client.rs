@@ -4,9 +4,10 @@
 //! (queued acknowledgements, packet identifiers, events read before the loss) can reach a newer
 //! one. The session itself is the broker's, under our client name.
 
-use super::traffic::Will;
+use super::traffic::{Publish, Will};
 use crate::configuration::{Broker, Protocol};
 use bytes::Bytes;
+use holdtrue_engine::event::ReplyTo;
 use rumqttc::v5;
 use rumqttc::v5::mqttbytes::v5 as packet5;
 use rumqttc::{QoS, TlsConfiguration, Transport};
@@ -63,6 +64,7 @@ pub(super) enum Seen {
         topic: String,
         payload: Bytes,
         retained: bool,
+        reply_to: Option<ReplyTo>,
         packet: u16,
     },
     /// The broker acknowledged or refused a publish.
@@ -84,7 +86,11 @@ pub(super) enum Seen {
 pub(super) struct Full;
 
 /// Makes a client for one connection.
-pub(super) fn new(broker: &Broker, tls: Option<Arc<ClientConfig>>, will: Will) -> (Client, Poller) {
+pub(super) fn new(
+    broker: &Broker,
+    tls: Option<Arc<ClientConfig>>,
+    will: Option<Will>,
+) -> (Client, Poller) {
     let queue = usize::from(broker.receive_maximum) + QUEUE_EXTRA;
     let transport = tls.map(|config| Transport::tls_with_config(TlsConfiguration::Rustls(config)));
     match broker.protocol {
@@ -103,7 +109,7 @@ pub(super) fn new(broker: &Broker, tls: Option<Arc<ClientConfig>>, will: Will) -
     }
 }
 
-fn options5(broker: &Broker, transport: Option<Transport>, will: Will) -> v5::MqttOptions {
+fn options5(broker: &Broker, transport: Option<Transport>, will: Option<Will>) -> v5::MqttOptions {
     let mut options = v5::MqttOptions::new(&broker.client_id, &broker.host, broker.port);
     let expiry = u32::try_from(broker.session_expiry.as_secs()).unwrap_or(u32::MAX);
     options
@@ -114,14 +120,16 @@ fn options5(broker: &Broker, transport: Option<Transport>, will: Will) -> v5::Mq
         .set_manual_acks(true)
         .set_outgoing_inflight_upper_limit(LIBRARY_IN_FLIGHT)
         .set_connection_timeout(CONNECT_LIMIT.as_secs())
-        .set_keep_alive(broker.keep_alive)
-        .set_last_will(packet5::LastWill::new(
+        .set_keep_alive(broker.keep_alive);
+    if let Some(will) = will {
+        options.set_last_will(packet5::LastWill::new(
             will.topic,
             will.payload,
             v5::mqttbytes::QoS::AtLeastOnce,
             true,
             None,
         ));
+    }
     if let Some(login) = &broker.login {
         options.set_credentials(&login.username, &login.password);
     }
@@ -131,20 +139,27 @@ fn options5(broker: &Broker, transport: Option<Transport>, will: Will) -> v5::Mq
     options
 }
 
-fn options311(broker: &Broker, transport: Option<Transport>, will: Will) -> rumqttc::MqttOptions {
+fn options311(
+    broker: &Broker,
+    transport: Option<Transport>,
+    will: Option<Will>,
+) -> rumqttc::MqttOptions {
     let mut options = rumqttc::MqttOptions::new(&broker.client_id, &broker.host, broker.port);
     options
-        .set_clean_session(false)
+        // A session that is not to outlive the connection can't be told otherwise in 3.1.1.
+        .set_clean_session(broker.session_expiry.is_zero())
         .set_max_packet_size(LARGEST_PACKET_311, LARGEST_PACKET_311)
         .set_manual_acks(true)
         .set_inflight(LIBRARY_IN_FLIGHT)
-        .set_keep_alive(broker.keep_alive)
-        .set_last_will(rumqttc::LastWill::new(
+        .set_keep_alive(broker.keep_alive);
+    if let Some(will) = will {
+        options.set_last_will(rumqttc::LastWill::new(
             will.topic,
             will.payload,
             QoS::AtLeastOnce,
             true,
         ));
+    }
     if let Some(login) = &broker.login {
         options.set_credentials(&login.username, &login.password);
     }
@@ -173,20 +188,16 @@ impl Client {
         if sent { Ok(()) } else { Err(Full) }
     }
 
-    /// Publishes with quality of service 1. `expiry`: seconds after which the broker drops it;
-    /// MQTT 3.1.1 has no such thing.
-    pub(super) fn publish(
-        &self,
-        topic: &str,
-        payload: &[u8],
-        retain: bool,
-        expiry: Option<u32>,
-    ) -> Result<(), Full> {
-        let payload = payload.to_vec();
+    /// Publishes.
+    pub(super) fn publish(&self, publish: &Publish<'_>) -> Result<(), Full> {
+        let Publish { topic, retain, .. } = *publish;
+        let payload = publish.payload.to_vec();
         let sent = match self {
             Self::V5(client) => {
                 let properties = packet5::PublishProperties {
-                    message_expiry_interval: expiry,
+                    message_expiry_interval: publish.expiry,
+                    response_topic: publish.response_topic.map(str::to_owned),
+                    correlation_data: publish.correlation.map(Bytes::copy_from_slice),
                     ..packet5::PublishProperties::default()
                 };
                 let qos = v5::mqttbytes::QoS::AtLeastOnce;
@@ -201,13 +212,19 @@ impl Client {
         if sent { Ok(()) } else { Err(Full) }
     }
 
-    /// Subscribes to all filters with quality of service 1, in one packet.
-    pub(super) fn subscribe(&self, filters: &[String]) -> Result<(), Full> {
+    /// Subscribes to all filters with quality of service 1, in one packet. Of `as_published`,
+    /// messages keep the retain flag that their sender gave them (MQTT 3.1.1 can't do that).
+    pub(super) fn subscribe(
+        &self,
+        filters: &[String],
+        as_published: Option<&str>,
+    ) -> Result<(), Full> {
         let sent = match self {
             Self::V5(client) => {
                 let qos = v5::mqttbytes::QoS::AtLeastOnce;
-                let filters = filters.iter().map(|filter| {
-                    let mut filter = packet5::Filter::new(filter, qos);
+                let filters = filters.iter().map(|path| {
+                    let mut filter = packet5::Filter::new(path, qos);
+                    filter.preserve_retain = as_published == Some(path);
                     // We subscribe at each start; what is retained is no news then.
                     filter.retain_forward_rule = packet5::RetainForwardRule::OnNewSubscribe;
                     filter
@@ -284,6 +301,7 @@ fn seen5(packet: v5::Incoming) -> Seen {
             topic: String::from_utf8_lossy(&publish.topic).into_owned(),
             payload: publish.payload,
             retained: publish.retain,
+            reply_to: publish.properties.and_then(reply_to),
             packet: publish.pkid,
         },
         v5::Incoming::PubAck(answer) => Seen::Answered {
@@ -302,6 +320,14 @@ fn seen5(packet: v5::Incoming) -> Seen {
         ),
         _ => Seen::Nothing,
     }
+}
+
+/// Where a message wants its answer.
+fn reply_to(properties: packet5::PublishProperties) -> Option<ReplyTo> {
+    Some(ReplyTo {
+        topic: properties.response_topic?,
+        correlation: properties.correlation_data.map(Vec::from),
+    })
 }
 
 /// MQTT 5.0, 3.4.2.1: which refusals concern the publish itself (permission, topic, format) and
@@ -346,6 +372,7 @@ fn seen311(packet: rumqttc::Incoming) -> Seen {
             topic: publish.topic,
             payload: publish.payload,
             retained: publish.retain,
+            reply_to: None,
             packet: publish.pkid,
         },
         rumqttc::Incoming::PubAck(answer) => Seen::Answered {

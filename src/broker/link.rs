@@ -3,7 +3,7 @@
 use super::back_off::BackOff;
 use super::client::{self, Client, Full, Poller, Seen};
 use super::tls::{self, TlsError};
-use super::traffic::{Event, Lost, Message, Ticket, Token, Will};
+use super::traffic::{Event, Lost, Message, Publish, Ticket, Token, Will};
 use crate::configuration::{Broker, Protocol};
 use std::collections::{BTreeMap, VecDeque};
 use std::sync::Arc;
@@ -27,8 +27,8 @@ const GOOD_LIFE: Duration = Duration::from_mins(1);
 const QUEUE_RETRY: Duration = Duration::from_millis(5);
 /// Filters in one subscription packet; keeps it small for brokers with low packet limits.
 const FILTERS_IN_PACKET: usize = 50;
-/// Bytes of a publish packet beside topic and payload, at most (MQTT 5.0, 3.3: header, identifier,
-/// the one property we use).
+/// Bytes of a publish packet beside topic, payload and what belongs to requests, at most (MQTT 5.0,
+/// 3.3: header, identifier, the properties we use).
 const PACKET_OVERHEAD: usize = 32;
 /// What a broker with MQTT 3.1.1 sends without acknowledgement: it can't be told, and 20 is the
 /// default of Mosquitto (`max_inflight_messages`).
@@ -45,7 +45,9 @@ enum Ask {
 pub struct Link {
     broker: Broker,
     tls: Option<Arc<ClientConfig>>,
-    will: Box<dyn Fn() -> Will + Send>,
+    will: Option<Box<dyn Fn() -> Will + Send>>,
+    /// The filter whose messages keep the retain flag that they were published with.
+    as_published: Option<String>,
     /// Counts connections; what belongs to an older one is dropped.
     connection: u64,
     client: Option<Client>,
@@ -71,17 +73,17 @@ pub struct Link {
 }
 
 impl Link {
-    /// A link that will connect as soon as [`Link::next`] is called. `will` is asked for the will
-    /// at every connection.
+    /// A link that will connect as soon as [`Link::next`] is called.
     ///
     /// # Errors
     /// When encryption is configured and its files can't be used.
-    pub fn new(broker: Broker, will: impl Fn() -> Will + Send + 'static) -> Result<Self, TlsError> {
+    pub fn new(broker: Broker) -> Result<Self, TlsError> {
         let tls = broker.tls.as_ref().map(tls::client_config).transpose()?;
         Ok(Self {
             broker,
             tls,
-            will: Box::new(will),
+            will: None,
+            as_published: None,
             connection: 0,
             client: None,
             polling: None,
@@ -99,6 +101,22 @@ impl Link {
             refused_filters: Vec::new(),
             goodbye_said: false,
         })
+    }
+
+    /// Has the broker publish a will when the connection breaks; it is asked for at every
+    /// connection.
+    #[must_use]
+    pub fn with_will(mut self, will: impl Fn() -> Will + Send + 'static) -> Self {
+        self.will = Some(Box::new(will));
+        self
+    }
+
+    /// Has messages that match `filter` bear the retain flag with which they were published, also
+    /// those that come while we are subscribed. (MQTT 5.0, 3.8.3.1, *retain as published*.)
+    #[must_use]
+    pub fn with_retain_as_published(mut self, filter: String) -> Self {
+        self.as_published = Some(filter);
+        self
     }
 
     /// How many messages the broker sends before it waits for acknowledgements.
@@ -140,8 +158,11 @@ impl Link {
     /// Whether the broker takes a publish of this size; one above its limit would end the
     /// connection, again and again.
     #[must_use]
-    pub fn fits(&self, topic: &str, payload: &[u8]) -> bool {
-        let size = topic.len() + payload.len() + PACKET_OVERHEAD;
+    pub fn fits(&self, publish: &Publish<'_>) -> bool {
+        let request = publish.response_topic.map_or(0, str::len);
+        let correlation = publish.correlation.map_or(0, <[u8]>::len);
+        let size =
+            publish.topic.len() + publish.payload.len() + request + correlation + PACKET_OVERHEAD;
         self.max_packet
             .is_none_or(|limit| u32::try_from(size).is_ok_and(|size| size <= limit))
     }
@@ -154,23 +175,15 @@ impl Link {
         }
     }
 
-    /// Hands a document over; false when there was no room. `expiry`: seconds until the broker is
-    /// to drop it.
-    pub fn publish(
-        &mut self,
-        token: Token,
-        topic: &str,
-        payload: &[u8],
-        retain: bool,
-        expiry: Option<u32>,
-    ) -> bool {
+    /// Hands a document over; false when there was no room.
+    pub fn publish(&mut self, token: Token, publish: &Publish<'_>) -> bool {
         if self.room() == 0 {
             return false;
         }
         let Some(client) = &self.client else {
             return false;
         };
-        if client.publish(topic, payload, retain, expiry).is_err() {
+        if client.publish(publish).is_err() {
             return false;
         }
         if self.outstanding() == 0 {
@@ -266,7 +279,8 @@ impl Link {
 
     fn connect(&mut self) {
         self.connection += 1;
-        let (client, poller) = client::new(&self.broker, self.tls.clone(), (self.will)());
+        let will = self.will.as_ref().map(|will| will());
+        let (client, poller) = client::new(&self.broker, self.tls.clone(), will);
         let (sender, events) = mpsc::channel(EVENTS_MAX);
         self.client = Some(client);
         self.events = events;
@@ -316,7 +330,7 @@ impl Link {
         }
         while let Some(ask) = self.asks.pop_front() {
             let sent = match &ask {
-                Ask::Subscribe(filters) => client.subscribe(filters),
+                Ask::Subscribe(filters) => client.subscribe(filters, self.as_published.as_deref()),
                 Ask::Unsubscribe(filter) => client.unsubscribe(filter),
             };
             match (sent, ask) {
@@ -341,6 +355,7 @@ impl Link {
                 topic,
                 payload,
                 retained,
+                reply_to,
                 packet,
             } => {
                 let ticket = Ticket {
@@ -351,6 +366,7 @@ impl Link {
                     topic,
                     payload,
                     retained,
+                    reply_to,
                     ticket,
                 }))
             }

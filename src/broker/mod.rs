@@ -22,4 +22,4 @@ pub use back_off::BackOff;
 pub use client::Answer;
 pub use link::Link;
 pub use tls::TlsError;
-pub use traffic::{Event, Lost, Message, Ticket, Token, Will};
+pub use traffic::{Event, Lost, Message, Publish, Ticket, Token, Will};

@@ -2,6 +2,7 @@
 
 use super::client::Answer;
 use bytes::Bytes;
+use holdtrue_engine::event::ReplyTo;
 use std::time::Duration;
 
 /// What the broker publishes when the connection breaks.
@@ -11,6 +12,23 @@ pub struct Will {
     pub topic: String,
     /// What.
     pub payload: Vec<u8>,
+}
+
+/// What is published, with quality of service 1.
+#[derive(Clone, Copy, Debug, Default)]
+pub struct Publish<'a> {
+    /// Where.
+    pub topic: &'a str,
+    /// What.
+    pub payload: &'a [u8],
+    /// Whether the broker keeps it for later subscribers.
+    pub retain: bool,
+    /// Seconds after which the broker drops it. MQTT 3.1.1 has no such thing, nor the following.
+    pub expiry: Option<u32>,
+    /// Where an answer is wanted.
+    pub response_topic: Option<&'a str>,
+    /// What its receiver knows it by: of an answer, what the question bore.
+    pub correlation: Option<&'a [u8]>,
 }
 
 /// Names a document on its way.
@@ -56,6 +74,8 @@ pub struct Message {
     pub payload: Bytes,
     /// The broker's memory, not a new message.
     pub retained: bool,
+    /// Where its sender wants an answer, if it does.
+    pub reply_to: Option<ReplyTo>,
     /// To acknowledge it.
     pub ticket: Ticket,
 }

@@ -4,6 +4,7 @@
 //! - [`check`]: everything that is wrong with a configuration
 //! - `run`: the daemon, until it is told to stop
 //! - `demo`: an invented plant held true on this machine
+//! - `tell`: an order to a running daemon
 //! - `log`: what an operator reads while the daemon runs
 
 pub mod check;
@@ -13,6 +14,7 @@ mod demo;
 
 mod log;
 mod run;
+mod tell;
 
 use clap::{Parser, Subcommand};
 use std::path::PathBuf;
@@ -96,6 +98,8 @@ enum Command {
         #[arg(long)]
         json: bool,
     },
+    /// Give a running daemon an order over the broker, and wait for its answer.
+    Tell(tell::Tell),
 }
 
 impl Command {
@@ -123,5 +127,6 @@ pub fn run(arguments: Arguments) -> Ending {
         Command::Demo(demo) => demo.run(),
         Command::Run { config } => run::run(&config),
         Command::Check { config, json } => check::run(&config, json, &mut std::io::stdout()),
+        Command::Tell(tell) => tell.run(),
     }
 }

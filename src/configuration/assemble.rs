@@ -4,7 +4,7 @@ use super::draft::{Draft, position};
 use super::problem::{Problem, Problems, Severity};
 use super::reader::Section;
 use super::source::Source;
-use super::{Configuration, channel, crosscheck, name, reference, service};
+use super::{Broker, Configuration, channel, crosscheck, name, reference, service};
 use holdtrue_engine::setup::{ChannelId, Clock, ReferenceId, Setup};
 use holdtrue_engine::time::Timestamp;
 use sha2::{Digest, Sha256};
@@ -62,6 +62,28 @@ pub fn from_text(
             file: file.to_owned(),
             list,
         }),
+    }
+}
+
+/// A broker that is known by its address alone, everything else by default.
+///
+/// # Errors
+/// What is wrong with the address or the node's name.
+pub fn broker_at(url: &str, node: &str) -> Result<Broker, String> {
+    let text = format!("[node]\nname = {node:?}\n[broker]\nurl = {url:?}\n");
+    let source = Source::new(&text);
+    let (table, broken) = parse(&source, &text);
+    let top = Section::top(&source, &table);
+    let (node, _) = service::node(&top);
+    let found = service::broker(&top, &node, Path::new("")).broker;
+    let problems = source.into_problems(broken);
+    let errors = problems
+        .iter()
+        .filter(|problem| problem.severity == Severity::Error);
+    let messages: Vec<&str> = errors.map(|problem| problem.message.as_str()).collect();
+    match found {
+        Some(broker) if messages.is_empty() => Ok(broker),
+        _ => Err(format!("error: {}", messages.join("; "))),
     }
 }
 

@@ -38,7 +38,7 @@ use holdtrue_engine::setup::Setup;
 use std::path::PathBuf;
 use std::time::Duration;
 
-pub use assemble::{from_text, load, settings};
+pub use assemble::{broker_at, from_text, load, settings};
 pub use problem::{Problem, Problems, Severity};
 
 /// Everything that one configuration file says, checked.

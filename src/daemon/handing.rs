@@ -3,7 +3,7 @@
 use super::now;
 use super::report::{LoopFigures, state_document};
 use super::turn::Daemon;
-use crate::broker::{Answer, Token};
+use crate::broker::{Answer, Publish, Token};
 use crate::document::state::{Doing, RefusedSubscription};
 use crate::document::topic::Topics;
 use holdtrue_engine::time::Timestamp;
@@ -37,7 +37,15 @@ impl Daemon {
                 Some(seconds) => seconds,
                 None => None,
             };
-            if !self.link.fits(&document.topic, &document.payload) {
+            let publish = Publish {
+                topic: &document.topic,
+                payload: &document.payload,
+                retain: document.retain,
+                expiry,
+                response_topic: None,
+                correlation: document.correlation.as_deref(),
+            };
+            if !self.link.fits(&publish) {
                 self.refuse(
                     number,
                     "larger than the broker's packet limit",
@@ -46,11 +54,7 @@ impl Daemon {
                 continue;
             }
             let token = Token::Document(number);
-            let (topic, payload) = (&document.topic, &document.payload);
-            if !self
-                .link
-                .publish(token, topic, payload, document.retain, expiry)
-            {
+            if !self.link.publish(token, &publish) {
                 return;
             }
             self.shell.outbox.set_handed(number);
@@ -79,12 +83,12 @@ impl Daemon {
         standing.subscriptions_refused = self.refused_subscriptions();
         let topic = Topics::new(&self.shell.setup.node).state();
         let mut payload = document.clone().with(standing.clone()).to_json();
-        if !self.link.fits(&topic, &payload) {
+        if !self.link.fits(&state_publish(&topic, &payload)) {
             standing.channels = None;
             payload = document.with(standing).to_json();
         }
         self.link
-            .publish(Token::State, &topic, &payload, true, None)
+            .publish(Token::State, &state_publish(&topic, &payload))
     }
 
     fn refused_subscriptions(&self) -> Vec<RefusedSubscription> {
@@ -139,6 +143,15 @@ impl Daemon {
         if let Some(document) = self.shell.settle(number) {
             self.refusals.tell(&document.topic, why, hint);
         }
+    }
+}
+
+fn state_publish<'a>(topic: &'a str, payload: &'a [u8]) -> Publish<'a> {
+    Publish {
+        topic,
+        payload,
+        retain: true,
+        ..Publish::default()
     }
 }
 

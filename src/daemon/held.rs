@@ -97,6 +97,7 @@ mod tests {
             topic: String::new(),
             payload: Bytes::from(vec![0; size]),
             retained: false,
+            reply_to: None,
             ticket: Ticket::for_test(packet),
         }
     }

@@ -170,6 +170,7 @@ mod tests {
             payload: vec![b'1'],
             retain,
             expires: None,
+            correlation: None,
         }
     }
 

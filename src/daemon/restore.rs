@@ -103,6 +103,7 @@ fn received(input: &Input) -> Option<Timestamp> {
         Input::Gate(gate) => Some(gate.received),
         Input::Refused(refused) => Some(refused.received),
         Input::Tick { now } => Some(*now),
+        Input::Order(order) => Some(order.received),
         Input::Setup(_) | Input::Supplied(_) => None,
     }
 }

@@ -4,10 +4,11 @@
 use super::Error;
 use super::outbox::Outbox;
 use super::restore::{self, Restored, Wanted, note_wanted};
+use crate::broker::Message;
 use crate::configuration::Configuration;
 use crate::document::topic::Topics;
 use crate::document::{self, Document};
-use crate::payload::Intake;
+use crate::payload::{Intake, OrderIntake, OrderMessage};
 use crate::record::{Batch, Record, RecordError};
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Input, Output, Source, Supplied};
@@ -25,6 +26,8 @@ pub(super) struct Shell {
     pub(super) record: Record,
     pub(super) outbox: Outbox,
     intake: Intake,
+    orders: OrderIntake,
+    filters: Vec<String>,
     batch: Batch,
     wanted: Vec<Wanted>,
     /// Kept to save allocations.
@@ -59,7 +62,9 @@ impl Shell {
             batch: record.batch(),
             record,
             outbox,
+            filters: filters(configuration),
             intake: Intake::new(&configuration.intake),
+            orders: OrderIntake::new(&configuration.setup.node),
             wanted,
             inputs: Vec::new(),
             outputs: Vec::new(),
@@ -95,23 +100,33 @@ impl Shell {
         Ok(())
     }
 
-    /// What to subscribe to.
+    /// What to subscribe to: the sources' topics, and orders.
     pub(super) fn filters(&self) -> &[String] {
-        self.intake.filters()
+        &self.filters
     }
 
     /// Decodes a message and takes what it holds.
-    pub(super) fn take_message(
-        &mut self,
-        topic: &str,
-        payload: &[u8],
-        retained: bool,
-        received: Timestamp,
-    ) {
+    pub(super) fn take_message(&mut self, message: &Message, received: Timestamp) {
         let mut inputs = std::mem::take(&mut self.inputs);
         inputs.clear();
-        self.intake
-            .take(topic, payload, retained, received, &mut inputs);
+        let Message {
+            topic,
+            payload,
+            retained,
+            ..
+        } = message;
+        if let Some(verb) = self.orders.verb(topic) {
+            let order = OrderMessage {
+                verb,
+                payload,
+                retained: *retained,
+                reply_to: message.reply_to.as_ref(),
+            };
+            inputs.extend(self.orders.take(&order, received));
+        } else {
+            self.intake
+                .take(topic, payload, *retained, received, &mut inputs);
+        }
         for input in &inputs {
             self.take(input, &[]);
         }
@@ -211,4 +226,11 @@ impl Shell {
         self.take(&Input::Supplied(supplied), &positions);
         Ok(())
     }
+}
+
+/// The sources' topics, and orders.
+fn filters(configuration: &Configuration) -> Vec<String> {
+    let orders = Topics::new(&configuration.setup.node).orders();
+    let sources = configuration.intake.filters.iter().cloned();
+    sources.chain([orders]).collect()
 }

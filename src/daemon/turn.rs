@@ -73,10 +73,12 @@ impl Daemon {
             "holdtrue {} starts",
             env!("CARGO_PKG_VERSION")
         );
-        let link = Link::new(configuration.broker, move || Will {
-            topic: Topics::new(&node).state(),
-            payload: StateDocument::new(&node, &fingerprint, Doing::Lost, now()).to_json(),
-        })?;
+        let link = Link::new(configuration.broker)?
+            .with_retain_as_published(Topics::new(&node).orders())
+            .with_will(move || Will {
+                topic: Topics::new(&node).state(),
+                payload: StateDocument::new(&node, &fingerprint, Doing::Lost, now()).to_json(),
+            });
         let window = link.receive_window();
         let remembered = !shell.record.subscriptions()?.is_empty();
         Ok(Self {
@@ -150,8 +152,7 @@ impl Daemon {
     }
 
     fn take(&mut self, message: &Message, received: Timestamp) {
-        self.shell
-            .take_message(&message.topic, &message.payload, message.retained, received);
+        self.shell.take_message(message, received);
         self.tickets.push(message.ticket);
         self.news_since.get_or_insert_with(Instant::now);
         if self.tickets.len() >= self.messages_max || self.shell.uncommitted() >= BATCH_INPUTS_MAX {

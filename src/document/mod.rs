@@ -3,15 +3,18 @@
 //! JSON, UTF-8. Times are RFC 3339 in UTC with all the nanoseconds they have; numbers read back to
 //! the same bits; words for machines are lower case with hyphens. Each document carries
 //! `schema_version`; its schema stands in `config/schemas/`. Modules in reading order: [`topic`],
-//! [`correction`], [`outlook`], [`alarm`], [`degree`], [`notice`], [`state`].
+//! [`correction`], [`outlook`], [`alarm`], [`degree`], [`notice`], [`answer`], [`validation`],
+//! [`state`].
 
 pub mod alarm;
+pub mod answer;
 pub mod correction;
 pub mod degree;
 pub mod notice;
 pub mod outlook;
 pub mod state;
 pub mod topic;
+pub mod validation;
 mod word;
 
 use holdtrue_engine::event::Output;
@@ -34,6 +37,8 @@ pub struct Document {
     pub retain: bool,
     /// After this instant it must no longer be sent, and the broker must drop it.
     pub expires: Option<Timestamp>,
+    /// What the asker of an answer knows it by (MQTT 5.0, 3.3.2.3.6).
+    pub correlation: Option<Vec<u8>>,
 }
 
 /// The document that `output` is published as; `None` for what only the record keeps.
@@ -110,6 +115,23 @@ pub fn render(output: &Output, setup: &Setup) -> Option<Document> {
                 None,
             ))
         }
+        Output::Answer(answer) => {
+            let (topic, correlation) = match &answer.reply_to {
+                Some(reply) => (reply.topic.clone(), reply.correlation.clone()),
+                None => (topics.answer(), None),
+            };
+            let document = answer::AnswerDocument::new(answer, &setup.node);
+            Some(Document {
+                correlation,
+                ..json(topic, &document, false, None)
+            })
+        }
+        Output::Validation(validation) => {
+            let channel = setup.channels.get(validation.channel.0 as usize)?;
+            let document = validation::ValidationDocument::new(validation, channel);
+            let topic = topics.validation(&channel.name);
+            Some(json(topic, &document, true, None))
+        }
         Output::Pair(_) | Output::Wanted { .. } => None,
     }
 }
@@ -123,6 +145,7 @@ pub fn cleared(topic: String) -> Document {
         payload: Vec::new(),
         retain: true,
         expires: None,
+        correlation: None,
     }
 }
 
@@ -138,6 +161,7 @@ fn json(
         payload: to_json(body),
         retain,
         expires,
+        correlation: None,
     }
 }
 

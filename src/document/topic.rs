@@ -63,6 +63,30 @@ impl<'a> Topics<'a> {
         }
     }
 
+    /// The newest comparison of a channel's model with what a service found; retained.
+    #[must_use]
+    pub fn validation(&self, channel: &str) -> String {
+        format!("holdtrue/{}/validation/{channel}", self.node)
+    }
+
+    /// Where an order of this verb goes.
+    #[must_use]
+    pub fn order(&self, verb: &str) -> String {
+        format!("holdtrue/{}/order/{verb}", self.node)
+    }
+
+    /// What to subscribe to for all orders.
+    #[must_use]
+    pub fn orders(&self) -> String {
+        self.order("#")
+    }
+
+    /// Answers to orders that name no other topic.
+    #[must_use]
+    pub fn answer(&self) -> String {
+        format!("holdtrue/{}/answer", self.node)
+    }
+
     /// What a person should be able to read about.
     #[must_use]
     pub fn notice(&self) -> String {
@@ -83,6 +107,7 @@ impl<'a> Topics<'a> {
             .strip_prefix("correction/")
             .or(rest.strip_prefix("degree/"))
             .or(rest.strip_prefix("outlook/"))
+            .or(rest.strip_prefix("validation/"))
         {
             !channel(name)
         } else if let Some(rest) = rest.strip_prefix("alarm/channel/") {

@@ -57,6 +57,7 @@ impl Engine {
             Input::Refused(refused) => self.fleet.note_refused(refused, report),
             Input::Tick { now } => self.fleet.tick(*now, report),
             Input::Supplied(supplied) => self.fleet.take_supplied(supplied, report),
+            Input::Order(order) => self.fleet.take_order(order, report),
         }
     }
 

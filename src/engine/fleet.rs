@@ -9,6 +9,7 @@ mod agenda;
 mod door;
 mod known;
 mod leap;
+mod orders;
 mod pulse;
 mod silence;
 
@@ -27,6 +28,7 @@ use adopt::Routes;
 use agenda::{Agenda, Waiter};
 use known::known_values;
 pub(crate) use leap::LeapWatch;
+use orders::OrderBook;
 use pulse::Pulse;
 use serde::{Deserialize, Serialize};
 use std::collections::BTreeMap;
@@ -48,6 +50,7 @@ pub struct Fleet {
     /// By channel.
     channels: Vec<Channel>,
     agenda: Agenda,
+    orders: OrderBook,
     /// Last issue number of channels that were removed, by name: a number is never used twice.
     retired: BTreeMap<String, u64>,
 }

@@ -12,8 +12,10 @@
 //! - `pick`: all wanted values of a JSON text in one pass
 //! - `literal`, `instant`: exact numbers and times from their text
 //! - `fault`: why something was refused
+//! - [`order`]: what a person tells the daemon
 
 pub mod intake;
+pub mod order;
 pub mod pointer;
 pub mod tables;
 
@@ -26,5 +28,6 @@ mod plain;
 mod senml;
 
 pub use intake::Intake;
+pub use order::{OrderIntake, OrderMessage};
 pub use pointer::Pointer;
 pub use tables::{Format, JsonPlace, Scalar, SenmlPlace, Status, Tables, Target, TimeUnit, Use};

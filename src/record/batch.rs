@@ -85,8 +85,8 @@ impl Batch {
     pub(super) fn write(&self, transaction: &Transaction<'_>) -> Result<(), RecordError> {
         self.write_events(transaction)?;
         let mut insert = transaction.prepare_cached(
-            "INSERT INTO outbox (number, topic, payload, retain, expires)
-             VALUES (?1, ?2, ?3, ?4, ?5)",
+            "INSERT INTO outbox (number, topic, payload, retain, expires, correlation)
+             VALUES (?1, ?2, ?3, ?4, ?5, ?6)",
         )?;
         let mut stand = transaction.prepare_cached(
             "INSERT INTO standing (topic, payload, expires) VALUES (?1, ?2, ?3)
@@ -99,9 +99,17 @@ impl Batch {
                 payload,
                 retain,
                 expires,
+                correlation,
             } = document;
             let expires = expires.map(|time| time.0);
-            insert.execute(params![number, topic, payload, retain, expires])?;
+            insert.execute(params![
+                number,
+                topic,
+                payload,
+                retain,
+                expires,
+                correlation
+            ])?;
             if *retain && payload.is_empty() {
                 clear.execute([topic])?;
             } else if *retain {

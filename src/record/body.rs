@@ -3,7 +3,7 @@
 //! JSON with exact floats: `serde_json` writes the shortest text that reads back to the same bits,
 //! and reads it back exactly with its `float_roundtrip` feature.
 
-use holdtrue_engine::event::{Input, Output, Reading, Source, Supplied};
+use holdtrue_engine::event::{Input, Output, Reading, Source, Supplied, Wish};
 use holdtrue_engine::setup::ChannelId;
 use holdtrue_engine::time::Timestamp;
 use serde::{Deserialize, Serialize};
@@ -56,6 +56,13 @@ pub(super) fn columns(input: &Input) -> Columns {
         ),
         Input::Tick { now } => ("tick", Some(*now), None, None),
         Input::Supplied(_) => ("supplied", None, None, None),
+        Input::Order(order) => {
+            let performed = match &order.wish {
+                Wish::Service(event) => event.at,
+                Wish::Unusable(_) => None,
+            };
+            ("order", Some(order.received), None, performed)
+        }
     };
     Columns {
         kind,
@@ -77,6 +84,8 @@ pub(super) fn output_kind(output: &Output) -> &'static str {
         Output::Degree(_) => "degree",
         Output::Pair(_) => "pair",
         Output::Notice(_) => "notice",
+        Output::Answer(_) => "answer",
+        Output::Validation(_) => "validation",
         Output::Wanted { .. } => "wanted",
     }
 }

@@ -21,16 +21,16 @@ const BUSY_WAIT: std::time::Duration = std::time::Duration::from_millis(250);
 const TABLES: &str = "
 CREATE TABLE inputs (
     position   INTEGER PRIMARY KEY,  -- order in which the engine was told, from 1
-    kind       TEXT NOT NULL,        -- setup, reading, gate, refused, tick, supplied
+    kind       TEXT NOT NULL,        -- setup, reading, gate, refused, tick, supplied, order
     received   INTEGER,              -- when the daemon got it
     source     TEXT,                 -- indication/N, reference/N or influence/N, N as in the setup in force
-    phenomenon INTEGER,              -- when it was sampled
+    phenomenon INTEGER,              -- when it was sampled, or what an order tells was done
     body       TEXT NOT NULL         -- the whole input as JSON; numbers read back to the same bits
 ) STRICT;
 CREATE TABLE outputs (
     position INTEGER PRIMARY KEY,    -- order in which the engine said it, from 1
     input    INTEGER NOT NULL,       -- position of the input that caused it
-    kind     TEXT NOT NULL,          -- correction, withdrawn, alarm, degree, pair, notice …
+    kind     TEXT NOT NULL,          -- correction, withdrawn, alarm, degree, pair, answer …
     body     TEXT NOT NULL
 ) STRICT;
 CREATE TABLE outbox (                -- documents that the broker has not yet acknowledged
@@ -38,7 +38,8 @@ CREATE TABLE outbox (                -- documents that the broker has not yet ac
     topic   TEXT NOT NULL,
     payload BLOB NOT NULL,
     retain  INTEGER NOT NULL,
-    expires INTEGER                  -- after this instant it is no longer worth sending
+    expires INTEGER,                 -- after this instant it is no longer worth sending
+    correlation BLOB                 -- of an answer: what its asker knows it by
 ) STRICT;
 CREATE TABLE standing (              -- the retained documents as they should stand at the broker
     topic   TEXT PRIMARY KEY,
@@ -66,6 +67,12 @@ const INDEXES: &str = "
 CREATE INDEX IF NOT EXISTS readings_by_source ON inputs (source, phenomenon) WHERE kind = 'reading';
 CREATE INDEX IF NOT EXISTS setups ON inputs (position) WHERE kind = 'setup';
 ";
+
+/// A column that the outbox of earlier builds lacks.
+const CORRELATION: (&str, &str) = (
+    "SELECT count(*) FROM pragma_table_info('outbox') WHERE name = 'correlation'",
+    "ALTER TABLE outbox ADD COLUMN correlation BLOB",
+);
 
 /// Opens the file, makes the tables if it is new, and refuses what this program can't read.
 ///
@@ -103,6 +110,10 @@ pub(super) fn open_file(path: &Path) -> Result<Connection, RecordError> {
         transaction.pragma_update(None, "application_id", APPLICATION_ID)?;
         transaction.pragma_update(None, "user_version", FORMAT_VERSION)?;
         transaction.commit()?;
+    }
+    let known: i64 = connection.query_row(CORRELATION.0, [], |row| row.get(0))?;
+    if known == 0 {
+        connection.execute_batch(CORRELATION.1)?;
     }
     connection.execute_batch(INDEXES)?;
     Ok(connection)

@@ -196,7 +196,8 @@ impl Record {
     /// When the file can't be read.
     pub fn outbox(&self) -> Result<Vec<Numbered>, RecordError> {
         let mut statement = self.connection.prepare(
-            "SELECT number, topic, payload, retain, expires FROM outbox ORDER BY number",
+            "SELECT number, topic, payload, retain, expires, correlation FROM outbox
+             ORDER BY number",
         )?;
         let rows = statement.query_map([], |row| {
             Ok(Numbered {
@@ -206,6 +207,7 @@ impl Record {
                     payload: row.get(2)?,
                     retain: row.get(3)?,
                     expires: row.get::<_, Option<i64>>(4)?.map(Timestamp),
+                    correlation: row.get(5)?,
                 },
             })
         })?;
@@ -226,6 +228,7 @@ impl Record {
                 payload: row.get(1)?,
                 retain: true,
                 expires: row.get::<_, Option<i64>>(2)?.map(Timestamp),
+                correlation: None,
             })
         })?;
         Ok(rows.collect::<Result<_, _>>()?)

@@ -11,6 +11,7 @@ mod live;
 
 mod bad_input;
 mod main_path;
+mod orders;
 mod outbox;
 mod record_paused;
 mod restarts;

@@ -6,7 +6,7 @@
 //! where that has enough pairs, and withdrawn where not.
 
 use super::stretch::Carries;
-use super::{Channel, Scene};
+use super::{Channel, Pair, Remembered, Scene};
 use crate::event::Output;
 use crate::report::Report;
 use crate::time::Timestamp;
@@ -32,9 +32,34 @@ impl Channel {
         scene: &Scene<'_>,
         report: &mut Report<'_>,
     ) -> Reentered {
+        self.close_stretch_with(at, carries, &[], why, scene, report)
+    }
+
+    /// The same, where the next stretch begins with pairs that nobody had made before: as-left
+    /// readings.
+    pub(crate) fn close_stretch_with(
+        &mut self,
+        at: Timestamp,
+        carries: Carries,
+        opening: &[Pair],
+        why: &str,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) -> Reentered {
+        let since = self.recent.take_since(at);
         self.stretch = self.stretch.next(carries, scene.setup);
+        self.stretch.begin_at(at);
+        for pair in opening {
+            let taken = self.stretch.take(pair, scene.setup);
+            super::telling::tell_fate(pair, taken.rejected, scene, report);
+            self.recent.push(Remembered {
+                pair: *pair,
+                stretch: self.stretch.number(),
+                rejected: taken.rejected,
+            });
+        }
         let mut reentered = Reentered::default();
-        for mut held in self.recent.take_since(at) {
+        for mut held in since {
             let taken = self.stretch.take(&held.pair, scene.setup);
             if taken.rejected.is_none() {
                 reentered.pairs += 1;
@@ -51,6 +76,7 @@ impl Channel {
             self.recent.push(held);
         }
         self.publishing.leave_stretch();
+        self.outlook.leave_stretch(scene, report);
         self.judge(scene, report);
         if !self.publishing.is_of(self.stretch.number()) {
             self.withdraw(why, scene, report);

@@ -224,6 +224,40 @@ impl ChannelAlarms {
         }
     }
 
+    /// The sensor was served: what the service explains is cleared, and what lay ahead of the old
+    /// stretch. Whether its error is within limits again, pairs must show. The alarms of a sensor
+    /// that was `replaced` were about another one; only the channel's silence goes on.
+    pub(crate) fn serve(
+        &mut self,
+        replaced: bool,
+        why: &str,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
+        for standing in self.raised(scene.id) {
+            let kinds = [AlarmKind::ScreenLockedOut, AlarmKind::TimeToLimit];
+            let explained = kinds.contains(&standing.kind);
+            let others = replaced && standing.kind != AlarmKind::DataGap;
+            if explained || others {
+                report.say(dismissed(
+                    scene.id,
+                    standing.kind,
+                    scene.setup,
+                    scene.now,
+                    why,
+                ));
+            }
+        }
+        self.screen_locked_out = Alarm::default();
+        self.time_to_limit = Alarm::default();
+        if replaced {
+            *self = Self {
+                data_gap: std::mem::take(&mut self.data_gap),
+                ..Self::default()
+            };
+        }
+    }
+
     /// Forgets the alarms whose limits the edited setup no longer has, and says so of raised ones.
     pub(crate) fn edit(
         &mut self,

@@ -24,6 +24,7 @@ mod publishing;
 mod recent;
 mod review;
 mod screening;
+mod service;
 mod stretch;
 mod telling;
 #[cfg(test)]
@@ -44,6 +45,8 @@ use pairing::{Found, Pair, Pairing};
 use publishing::Publishing;
 use recent::{Recent, Remembered};
 use serde::{Deserialize, Serialize};
+use service::ServiceBook;
+pub(crate) use service::{Effect, Service};
 use stretch::Stretch;
 
 /// What a channel can see while it acts: its own setup, and what others share with it.
@@ -76,6 +79,7 @@ pub(crate) struct Channel {
     publishing: Publishing,
     outlook: OutlookStation,
     alarms: ChannelAlarms,
+    service: ServiceBook,
     /// From when on the channel's silence counts while it has said nothing.
     began: Option<Timestamp>,
     /// Phenomenon time of the newest pair made, whatever its fate.
@@ -94,10 +98,22 @@ impl Channel {
             publishing: Publishing::new(issued),
             outlook: OutlookStation::default(),
             alarms: ChannelAlarms::default(),
+            service: ServiceBook::default(),
             began: None,
             last_reference: None,
             wake: Some(Timestamp(i64::MIN)),
         }
+    }
+
+    /// This channel, to begin anew under `setup` because its pairs mean something else now. The
+    /// sensor is the same, so its service history stays, unless its errors are told in another
+    /// `unit`.
+    pub(crate) fn anew(&self, setup: &ChannelSetup, same_unit: bool) -> Self {
+        let mut fresh = Self::new(setup, self.issued());
+        if same_unit {
+            fresh.service = self.service.clone();
+        }
+        fresh
     }
 
     /// Documents issued so far.

@@ -46,6 +46,11 @@ impl OutlookStation {
         self.in_force.as_deref()
     }
 
+    /// A service found this. Of another sensor than the last one nothing is known.
+    pub(crate) fn note_as_found(&mut self, as_found: Option<AsFound>) {
+        self.as_found = as_found;
+    }
+
     /// When to look again.
     pub(crate) fn wake(&self) -> Option<Timestamp> {
         self.review
@@ -107,6 +112,13 @@ impl OutlookStation {
         if self.in_force.take().is_some() {
             report.say(Output::OutlookWithdrawn { channel, at });
         }
+    }
+
+    /// A new stretch begins: what lay ahead of the old one does not lie ahead of this.
+    pub(crate) fn leave_stretch(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        self.line = None;
+        self.group = None;
+        self.withdraw(scene.id, scene.now, report);
     }
 
     /// The configuration was edited: looks again when the channel acts next, or withdraws what

@@ -19,6 +19,8 @@ use serde::{Deserialize, Serialize};
 pub(super) struct Stretch {
     /// Counts the channel's stretches from 1.
     number: u32,
+    /// When it began, if it follows on another: nothing older belongs to it.
+    began: Option<Timestamp>,
     screen: Screen,
     fit: Fit,
     residuals: Residuals,
@@ -74,6 +76,7 @@ impl Stretch {
     pub(super) fn new(number: u32, setup: &ChannelSetup) -> Self {
         Self {
             number,
+            began: None,
             screen: Screen::default(),
             fit: Fit::new(setup.fit),
             residuals: Residuals::default(),
@@ -97,6 +100,16 @@ impl Stretch {
             screen,
             ..Self::new(self.number.saturating_add(1), setup)
         }
+    }
+
+    /// Nothing older than this belongs to it.
+    pub(super) fn begin_at(&mut self, at: Timestamp) {
+        self.began = Some(at);
+    }
+
+    /// When it began; `None` for a channel's first.
+    pub(super) fn began(&self) -> Option<Timestamp> {
+        self.began
     }
 
     /// Counts the channel's stretches from 1.
@@ -174,6 +187,13 @@ impl Stretch {
 
     /// Screens a pair and enters it into the fit.
     pub(super) fn take(&mut self, pair: &Pair, setup: &ChannelSetup) -> Taken {
+        if let Some(rejected) = self.before_it_began(pair) {
+            return Taken {
+                rejected: Some(rejected),
+                innovation: None,
+                change: None,
+            };
+        }
         let error = pair.indication - pair.reference;
         // What the window has left behind is no surprise to the fit, however far off.
         let innovation = if self.fit.window().is_too_old(pair.time) {
@@ -226,6 +246,17 @@ impl Stretch {
         fit
     }
 
+    /// The newest accepted errors as they were before `instant`, as far as `recent` remembers.
+    pub(super) fn residuals_before(&self, instant: Timestamp, recent: &Recent) -> Residuals {
+        let mut residuals = Residuals::default();
+        for Remembered { pair, .. } in recent.entered(self.number) {
+            if pair.time < instant {
+                residuals.push(pair.time, pair.indication - pair.reference);
+            }
+        }
+        residuals
+    }
+
     /// Takes all pairs from `instant` on out of the fit again. (Rows that left the window meanwhile
     /// do not come back.) What was learned of the noise and of the range stays: a bad reference
     /// says nothing about the sensor's.
@@ -235,16 +266,20 @@ impl Stretch {
         self.fit = self.fit_before(instant, recent, setup);
         let left = before.saturating_sub(self.fit.window().rows());
         self.pairs = self.pairs.saturating_sub(left);
-        self.residuals = Residuals::default();
-        for Remembered { pair, .. } in recent.entered(self.number) {
-            if pair.time < instant {
-                self.residuals
-                    .push(pair.time, pair.indication - pair.reference);
-            }
-        }
+        self.residuals = self.residuals_before(instant, recent);
         self.last_pair = self.fit.window().newest();
         self.unjudged += left;
         self.judged = None;
+    }
+
+    /// What keeps a pair out that came late and belongs to the stretch before.
+    fn before_it_began(&self, pair: &Pair) -> Option<Rejection> {
+        let began = self.began.filter(|began| pair.time < *began)?;
+        Some(Rejection {
+            reason: RefusedReason::Late,
+            value: began.since(pair.time).seconds(),
+            threshold: 0.0,
+        })
     }
 
     /// How far the pair lies from what the fit expects; `None` while it expects nothing.

@@ -7,23 +7,29 @@
 //! on with its own now.
 
 mod alarm;
+mod answer;
 mod correction;
 mod degree;
 mod input;
 mod notice;
+mod order;
 mod outlook;
 mod pair;
+mod validation;
 
 pub use alarm::{AlarmChange, AlarmKind, AlarmState};
+pub use answer::{ComparedPoint, Comparison, Fouling, OrderAnswer, SawTooth, Serviced};
 pub use correction::{Corrected, Correction, CriterionValues, WindowSeen, Zone};
 pub use degree::{DegreeChange, Evidence};
 pub use input::{Gate, Reading, Refused, RefusedReason, Source, Supplied};
 pub use notice::Notice;
+pub use order::{About, Act, CheckPoint, Order, Problem, ReplyTo, ServiceEvent, Wish};
 pub use outlook::{
     AsFound, Cadence, Conformity, Drift, NoStatement, Outlook, Recalibration, Staircase,
     TimeToLimit,
 };
 pub use pair::{Flag, PairFate, Rejection, SPIKE_FAILS};
+pub use validation::Validation;
 
 use crate::setup::{ChannelId, InfluenceId, ReferenceId, Setup};
 use crate::time::Timestamp;
@@ -52,6 +58,8 @@ pub enum Input {
     },
     /// Recorded rows that the engine asked for with [`Output::Wanted`].
     Supplied(Supplied),
+    /// A person told the daemon something.
+    Order(Box<Order>),
 }
 
 /// One thing the engine says.
@@ -88,6 +96,10 @@ pub enum Output {
     /// Something that a person should be able to read about; limited in rate, with a count of what
     /// was held back.
     Notice(Notice),
+    /// What became of an order.
+    Answer(Box<OrderAnswer>),
+    /// A service found what the model had expected, or something else.
+    Validation(Box<Validation>),
     /// The engine needs recorded rows of this channel.
     Wanted {
         /// Whose rows.

@@ -216,11 +216,16 @@ impl Fleet {
                 channels.push(old.channels[index].clone());
                 indications.push(old.indications[index].clone());
             } else {
-                let issued = before.map_or_else(
-                    || old.retired.get(&channel.name).copied().unwrap_or(0),
-                    |index| old.channels[index].issued(),
-                );
-                channels.push(Channel::new(channel, issued));
+                channels.push(match before {
+                    Some(index) => {
+                        let same_unit = old.setup.channels[index].unit == channel.unit;
+                        old.channels[index].anew(channel, same_unit)
+                    }
+                    None => {
+                        let issued = old.retired.get(&channel.name).copied().unwrap_or(0);
+                        Channel::new(channel, issued)
+                    }
+                });
                 indications.push(Track::default());
             }
         }
@@ -256,6 +261,7 @@ impl Fleet {
             channels,
             retired: old.retire(setup),
             agenda: Agenda::default(),
+            orders: old.orders.clone(),
         };
         report.leaps.settle();
         self.schedule_all();

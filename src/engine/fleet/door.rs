@@ -18,7 +18,7 @@ const FAR_FUTURE: Timestamp = Timestamp(7_258_118_400_000_000_000);
 
 /// Largest magnitude of a value. No quantity in any unit comes near it, and its square summed over
 /// a window stays finite.
-const LARGEST: f64 = 1e100;
+pub(super) const LARGEST: f64 = 1e100;
 
 impl Fleet {
     /// Whether a reading may come in, and what now is once it has. With `leap`, a recording's time

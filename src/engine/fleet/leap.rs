@@ -18,7 +18,6 @@
 
 use super::Fleet;
 use super::door::CLOCKS_DIFFER;
-use crate::channel::Channel;
 use crate::event::{RefusedReason, Source, Subject};
 use crate::gate::GateHistory;
 use crate::report::Report;
@@ -177,7 +176,7 @@ impl Fleet {
             if channel.knows_after(edge) {
                 let why = "the host's clock was wrong while the last pairs came";
                 channel.dismiss(ChannelId(id), setup, to, why, report);
-                *channel = Channel::new(setup, channel.issued());
+                *channel = channel.anew(setup, true);
             } else {
                 channel.step_back(ChannelId(id), setup, to, report);
             }

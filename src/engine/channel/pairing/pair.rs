@@ -49,7 +49,7 @@ impl Pair {
     }
 
     /// The same with another relative weight.
-    pub(super) fn weighing(self, weight: f64) -> Self {
+    pub(crate) fn weighing(self, weight: f64) -> Self {
         Self { weight, ..self }
     }
 }

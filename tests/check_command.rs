@@ -62,6 +62,40 @@ fn warnings_are_shown_and_do_not_refuse() {
     assert!(out.ends_with("sound: 1 channel, 1 warning\n"), "{out}");
 }
 
+/// From what is declared: noise 0.02 and a limit of 0.08 in 30 days, σ/ω = 7.5 d. The widest spacing
+/// is T³(ω/3.3σ)²/12 = 30·(0.08/(3.3·0.02))²/12 = 3.67 d (Weatherhead et al. 1998, solved for it).
+#[test]
+fn whether_the_cadence_can_show_the_drift_is_said_before_the_first_pair() {
+    let limited = format!("{SOUND}max_permissible_error = 0.08\n");
+    let (_, out, _) = check(&limited, &[]);
+    assert!(
+        out.contains("cadence: can't be judged: declare noise"),
+        "{out}"
+    );
+    assert!(
+        out.contains("error 0.08 pH with a guard band of 1·U"),
+        "{out}"
+    );
+    let (_, out, _) = check(&format!("{limited}noise = 0.02\n"), &[]);
+    assert!(out.contains("pairs come at least every 3.7 d"), "{out}");
+    // Six times the noise: 36 times as often.
+    let simple = "noise = 0.12\ndecision_rule = \"simple\"\n";
+    let (_, out, _) = check(&format!("{limited}{simple}"), &["--json"]);
+    let answer: serde_json::Value = serde_json::from_str(&out).unwrap();
+    let text = answer["cadence"][0]["text"].as_str().unwrap();
+    assert!(text.contains("at least every 2.4 h"), "{text}");
+    // In pairs: (3.3·0.02·√12·1000/0.08)^⅔ = 201.4 of them.
+    let pairs = "noise = 0.02\nwindow = \"1000 pairs\"\n";
+    let (_, out, _) = check(&format!("{limited}{pairs}"), &[]);
+    assert!(
+        out.contains("shows after 202 pairs: within the window"),
+        "{out}"
+    );
+    // Nothing to see without limits.
+    let (_, out, _) = check(SOUND, &[]);
+    assert!(!out.contains("cadence"), "{out}");
+}
+
 #[test]
 fn a_wrong_file_ends_with_2_and_says_everything() {
     let (code, out, _) = check(&format!("{SOUND}windw = \"1 d\"\nsegments = 0\n"), &[]);

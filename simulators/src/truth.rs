@@ -1,9 +1,9 @@
 //! What is true about a run: drawn parameters, planted faults, and the alarm that each fault must
 //! raise.
 //!
-//! Only alarms of the first set are expected: error limit, drift rate, stale reference, data gap,
-//! screen locked out. The rules are derived from the planted error alone, never from what a fit
-//! makes of it.
+//! Only these alarms are expected: error limit, time to limit, drift rate, stale reference, data
+//! gap, screen locked out. The rules are derived from the planted error alone, never from what a
+//! fit makes of it.
 
 use crate::behaviour::disturbance::{DYING_DAYS, Disturbance};
 use crate::behaviour::{Behaviour, Drawn, Planted, curve::Curve};
@@ -21,6 +21,12 @@ pub const STALE_AFTER_HOURS: f64 = 8.0;
 /// A drift whose rate is watched must be noticed by the time it has grown to so many standard
 /// deviations of the noise.
 const DRIFT_PLAIN: f64 = 8.0;
+
+/// How far ahead of its limit an error may raise the time-to-limit alarm: twice the service horizon
+/// of 14 days, since the band of an honest forecast gets there before the error does.
+const FORETOLD_DAYS: f64 = 28.0;
+/// An even drift that takes so many windows from its onset to its limit must be foretold.
+const FORETELLING_WINDOWS: f64 = 1.5;
 
 /// What can be asked of a correction for this sensor.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize)]
@@ -196,6 +202,7 @@ fn alarms(sensor: usize, kit: &Kit, planted: &Planted, end: f64) -> Vec<Expected
         alarms: Vec::new(),
     };
     limit_alarms(&mut expected, &planted.curve);
+    foretelling_alarms(&mut expected, &planted.curve);
     let window = kit.instrument.window_days;
     for jump in planted.curve.jumps(end) {
         // The old level leaves the window one window later; until then the fit may contradict the
@@ -248,6 +255,55 @@ fn limit_alarms(expected: &mut Expected, curve: &Curve) {
             onset,
             (onset, due, f64::MAX),
         );
+    }
+}
+
+/// When a drift begins.
+fn onset(curve: &Curve) -> f64 {
+    match *curve {
+        Curve::Linear { onset, .. }
+        | Curve::Exponential { onset, .. }
+        | Curve::Quadratic { onset, .. } => onset,
+        _ => 0.0,
+    }
+}
+
+/// Alarms that foretell the limit. One is right where the error, left alone, would pass the limit
+/// soon; delays from the passing are negative and say by how much it came ahead.
+fn foretelling_alarms(expected: &mut Expected, curve: &Curve) {
+    let (instrument, end) = (expected.kit.instrument, expected.end);
+    let (limit, window) = (instrument.max_permissible_error, instrument.window_days);
+    let mut foretell = |passing: f64, onset: f64, due: f64, ends: f64| {
+        let earliest = onset.max(passing - FORETOLD_DAYS);
+        let instants = (earliest, due, ends);
+        expected.add(Subject::Channel, "time-to-limit", passing, instants);
+    };
+    match *curve {
+        Curve::SawTooth { period, height } => {
+            let run_up = period * limit / height;
+            let mut cleaned = 0.0;
+            // Each ramp would go on if nobody cleaned; what the window still holds of it may be said
+            // until that has left.
+            while run_up - period <= 2.0 * window && cleaned < end {
+                let ends = cleaned + period + window;
+                foretell(cleaned + run_up, cleaned, f64::MAX, ends);
+                cleaned += period;
+            }
+        }
+        Curve::Linear { .. }
+        | Curve::Exponential { .. }
+        | Curve::Quadratic { .. }
+        | Curve::Growth { .. } => {
+            let onset = onset(curve);
+            let passed = |share: f64| first_passing(curve, share * limit, end + FORETOLD_DAYS);
+            let Some(passing) = passed(1.0) else { return };
+            let even = matches!(curve, Curve::Linear { .. });
+            let slow = passing - onset >= FORETELLING_WINDOWS * window;
+            let due = if even && slow { passing } else { f64::MAX };
+            let ends = passed(1.1).map_or(f64::MAX, |sure| sure + 1.0);
+            foretell(passing, onset, due, ends);
+        }
+        Curve::None | Curve::Step { .. } | Curve::DailyCycle { .. } => {}
     }
 }
 

@@ -1,9 +1,9 @@
 //! `holdtrue check`: everything that is wrong with a configuration, or what it would do.
 
-use super::Ending;
+use super::{Ending, commissioning};
 use crate::configuration::{self, Configuration, Problem, Problems, Protocol};
 use holdtrue_engine::setup::{
-    ChannelSetup, Clock, ReferenceKind, ReferenceSetup, Setup, WindowLength,
+    ChannelSetup, Clock, DecisionRule, ReferenceKind, ReferenceSetup, Setup, WindowLength,
 };
 use holdtrue_engine::time::Duration;
 use serde::Serialize;
@@ -22,7 +22,16 @@ struct Answer<'a> {
     channels: usize,
     references: usize,
     subscriptions: &'a [String],
+    /// Channel by channel, for those with limits.
+    cadence: Vec<Cadence<'a>>,
     problems: &'a [Problem],
+}
+
+/// Whether a channel's pairs can show the drift that matters.
+#[derive(Serialize)]
+struct Cadence<'a> {
+    channel: &'a str,
+    text: String,
 }
 
 /// Checks a file and writes the answer.
@@ -60,6 +69,7 @@ fn write_json(
             channels: configuration.setup.channels.len(),
             references: configuration.setup.references.len(),
             subscriptions: &configuration.intake.filters,
+            cadence: cadences(&configuration.setup),
             problems: &configuration.warnings,
         },
         Err(problems) => Answer {
@@ -70,11 +80,25 @@ fn write_json(
             channels: 0,
             references: 0,
             subscriptions: &[],
+            cadence: Vec::new(),
             problems: &problems.list,
         },
     };
     serde_json::to_writer_pretty(&mut *out, &answer)?;
     writeln!(out)
+}
+
+fn cadences(setup: &Setup) -> Vec<Cadence<'_>> {
+    let channels = setup.channels.iter();
+    channels
+        .filter_map(|channel| {
+            let text = cadence(channel, setup)?;
+            Some(Cadence {
+                channel: &channel.name,
+                text,
+            })
+        })
+        .collect()
 }
 
 fn write_refused(problems: &Problems, out: &mut impl Write) -> io::Result<()> {
@@ -140,6 +164,9 @@ fn write_sound(file: &str, configuration: &Configuration, out: &mut impl Write) 
         if channel.monitor_only {
             writeln!(out, "          monitored only: no correction is published")?;
         }
+        if let Some(cadence) = cadence(channel, setup) {
+            writeln!(out, "          cadence: {cadence}")?;
+        }
     }
     let warnings = counted(configuration.warnings.len(), "warning");
     writeln!(
@@ -189,6 +216,12 @@ fn reference(channel: &ChannelSetup, setup: &Setup) -> String {
     format!("{what}, u {each} each and {common} common")
 }
 
+/// Whether its pairs can show the drift that matters.
+fn cadence(channel: &ChannelSetup, setup: &Setup) -> Option<String> {
+    let reference = setup.references.get(channel.reference.0 as usize)?;
+    commissioning::cadence(channel, reference)
+}
+
 fn fit(channel: &ChannelSetup) -> String {
     let window = match channel.fit.window {
         WindowLength::Time(length) => shown(length),
@@ -212,8 +245,13 @@ fn limits(channel: &ChannelSetup) -> String {
     let limit = |value: Option<f64>, unit: &str| {
         value.map_or("none".to_owned(), |value| format!("{value} {unit}"))
     };
+    let rule = match channel.decision_rule {
+        _ if channel.max_permissible_error.is_none() => String::new(),
+        DecisionRule::Simple => " by simple acceptance".to_owned(),
+        DecisionRule::GuardBand { multiple } => format!(" with a guard band of {multiple}·U"),
+    };
     format!(
-        "limits: error {}, drift rate {}, gap {}",
+        "limits: error {}{rule}, drift rate {}, gap {}",
         limit(channel.max_permissible_error, unit),
         limit(channel.max_drift_rate, &format!("{unit}/d")),
         channel.alarms.gap_after.map_or("none".to_owned(), shown),

@@ -8,6 +8,7 @@
 //! - `log`: what an operator reads while the daemon runs
 
 pub mod check;
+mod commissioning;
 
 #[cfg(feature = "demo")]
 mod demo;

@@ -120,7 +120,14 @@ fn json_in_and_a_retained_correction_out_that_makes_the_sensor_true() {
     let schemas = Schemas::read();
     let all = listener.all();
     let kinds: std::collections::BTreeSet<&str> = all.iter().map(|it| schemas.check(it)).collect();
-    for kind in ["correction", "corrected", "state", "alarm", "degree"] {
+    for kind in [
+        "correction",
+        "corrected",
+        "outlook",
+        "state",
+        "alarm",
+        "degree",
+    ] {
         assert!(kinds.contains(kind), "no {kind} among {kinds:?}");
     }
     check_order(&listener);

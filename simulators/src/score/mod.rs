@@ -21,6 +21,8 @@ pub mod stream;
 pub mod tally;
 pub mod trial;
 
+pub mod foresight;
+
 pub mod contest;
 pub mod limits;
 pub mod summary;

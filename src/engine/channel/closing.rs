@@ -77,6 +77,7 @@ impl Channel {
         }
         self.publishing.leave_stretch();
         self.outlook.leave_stretch(scene, report);
+        self.alarms.end_forecast(scene, report);
         self.judge(scene, report);
         if !self.publishing.is_of(self.stretch.number()) {
             self.withdraw(why, scene, report);

@@ -86,18 +86,27 @@ impl ChannelAlarms {
     /// alarm speaks from now on.
     fn supersede(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
         if self.error_limit.is_raised() {
-            let at_once = Delays { on: 1, off: 1 };
-            let step = self
-                .time_to_limit
-                .evaluate(Condition::Gone, scene.now, at_once);
-            let said = limit_ahead(TimeToLimit::Reached, scene);
-            tell(AlarmKind::TimeToLimit, step, said, scene, report);
+            self.clear_forecast(TimeToLimit::Reached, scene, report);
         }
     }
 
+    /// The stretch has ended, and with it what its line foretold.
+    pub(crate) fn end_forecast(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        self.clear_forecast(TimeToLimit::NoLine, scene, report);
+    }
+
+    /// Clears the time-to-limit alarm at once.
+    fn clear_forecast(&mut self, why: TimeToLimit, scene: &Scene<'_>, report: &mut Report<'_>) {
+        let at_once = Delays { on: 1, off: 1 };
+        let step = self
+            .time_to_limit
+            .evaluate(Condition::Gone, scene.now, at_once);
+        let said = limit_ahead(why, scene);
+        tell(AlarmKind::TimeToLimit, step, said, scene, report);
+    }
+
     /// Evaluates a forecast, made when segments closed: whether the error may reach its limit within
-    /// the service horizon. As with the drift rate, only a drift that the degree has been raised
-    /// for is one.
+    /// the service horizon. `drifts`: whether there is good evidence of a drift at all.
     pub(crate) fn forecast(
         &mut self,
         forecast: TimeToLimit,
@@ -346,8 +355,8 @@ fn beyond(value: f64, limit: f64, deadband: f64) -> Condition {
     }
 }
 
-/// Whether an instant so far ahead is within the service horizon, or clear of it by a quarter. A
-/// drift that is not announced raises nothing, but keeps what is raised.
+/// Whether an instant so far ahead is within the service horizon, or clear of it by a quarter.
+/// Without good evidence of a drift nothing is raised, but what is raised stays.
 fn within_horizon(ahead: Duration, drifts: bool, setup: &ChannelSetup) -> Condition {
     let horizon = setup.service_horizon;
     if ahead <= horizon && drifts {
@@ -449,13 +458,15 @@ fn limit_ahead(forecast: TimeToLimit, scene: &Scene<'_>) -> Said {
         }
         _ => (0.0, String::new()),
     };
-    let cleared = if forecast == TimeToLimit::Reached {
-        format!("the limit of {limit} {unit} is reached: see the error-limit alarm")
-    } else {
-        format!(
+    let cleared = match forecast {
+        TimeToLimit::Reached => {
+            format!("the limit of {limit} {unit} is reached: see the error-limit alarm")
+        }
+        TimeToLimit::NoLine => "its history begins anew, nothing can be forecast yet".to_owned(),
+        _ => format!(
             "no longer expected to reach {limit} {unit} within {} d",
             readable(horizon)
-        )
+        ),
     };
     Said {
         value,

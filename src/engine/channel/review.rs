@@ -17,6 +17,11 @@ const JUDGED_PART: u64 = 64;
 /// step.)
 pub(super) const MOVED_PART: f64 = 0.125;
 
+/// A forecast raises its alarm from this weight of the degrees above 0 in the mean on: evidence of 9
+/// to 1 that there is a drift at all. The announced degree comes too late for it: a drift that has
+/// begun within the window is a curve to it, with correlated residuals.
+const DRIFT_WEIGHT: f64 = 0.9;
+
 /// The last judgement in numbers.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub(super) struct Judged {
@@ -115,7 +120,8 @@ impl Channel {
             self.alarms.judge(&judgement, scene, report);
         }
         if let Some(forecast) = forecast {
-            let drifts = judgement.published.degree > 0;
+            let steady = judgement.published.weights.first().copied().unwrap_or(1.0);
+            let drifts = 1.0 - steady >= DRIFT_WEIGHT;
             self.alarms.forecast(forecast, drifts, scene, report);
         }
     }

@@ -5,6 +5,7 @@
 //! at a limit are roots of one quadratic equation, (L − ê(t))² = k²u²(t) (Fieller's construction,
 //! *Journal of the Royal Statistical Society B* 16 (1954) 175; from memory).
 
+use crate::fit::factor::Factor;
 use serde::{Deserialize, Serialize};
 
 /// ê(t) = `level` + `slope`·t with its covariance; t in a unit and from an origin that the owner
@@ -24,6 +25,25 @@ pub struct Line {
 }
 
 impl Line {
+    /// The least-squares line of a factor whose first two columns are 1 and t, with `variance` that
+    /// of a row of weight 1; `None` if its rows stand at one time.
+    ///
+    /// # Panics
+    /// If the factor has a single column.
+    #[must_use]
+    pub fn through(factor: &Factor, variance: f64) -> Option<Self> {
+        let coefficients = factor.solve(2)?;
+        let root = factor.covariance_factor(2)?;
+        let covariance = &root * root.transpose() * variance;
+        Some(Self {
+            level: coefficients[0] + 0.0,
+            slope: coefficients[1] + 0.0,
+            level_variance: covariance[(0, 0)],
+            covariance: covariance[(0, 1)] + 0.0,
+            slope_variance: covariance[(1, 1)],
+        })
+    }
+
     /// ê(t).
     #[must_use]
     pub fn at(self, t: f64) -> f64 {

@@ -108,21 +108,13 @@ impl Fit {
         let weight: f64 = groups.closed.iter().map(|it| it.factor.weight_sum()).sum();
         let (mut factor, level) = reweighted(&groups, Some(&between))?;
         self.count_days_from(origin, &mut factor);
-        let coefficients = factor.solve(2)?;
-        let root = factor.covariance_factor(2)?;
-        let variance = scatter.variance * scatter.inflation;
-        let covariance = &root * root.transpose() * variance;
+        let mut line = Line::through(&factor, scatter.variance * scatter.inflation)?;
+        line.level += level;
         let segments = between.segments;
         Some(RecentLine {
             origin,
             from,
-            line: Line {
-                level: coefficients[0] + level + 0.0,
-                slope: coefficients[1] + 0.0,
-                level_variance: covariance[(0, 0)],
-                covariance: covariance[(0, 1)] + 0.0,
-                slope_variance: covariance[(1, 1)],
-            },
+            line,
             degrees_of_freedom: scatter.degrees_of_freedom,
             basis,
             segments: u32::try_from(segments).unwrap_or(u32::MAX),

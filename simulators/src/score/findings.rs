@@ -29,6 +29,10 @@ pub struct Findings {
     pub missed: u32,
     /// Readings of the sensor from fault to word, for those that were.
     pub delays: Vec<f64>,
+    /// Readings between a jump and the time that was told for it.
+    pub jump_times: Vec<f64>,
+    /// Error of the size that was told for it, in the u that was told with it.
+    pub jump_sizes: Vec<f64>,
     /// Raises beyond the true degree.
     pub false_raises: u32,
     /// Sensors whose drift never raised the degree.
@@ -82,13 +86,21 @@ impl Limits {
 pub fn judge(world: &World, said: &[Said], limits: &[Limits]) -> Findings {
     let mut findings = Findings::default();
     let cadence_days = world.cadence_seconds as f64 / 86_400.0;
-    for fault in &world.faults {
+    for fault in world.faults.iter().filter(|fault| fault.required) {
         findings.planted += 1;
         let answer = said
             .iter()
             .find(|it| answers(it, fault) && it.day >= fault.at && it.day <= fault.due);
         match answer {
-            Some(answer) => findings.delays.push((answer.day - fault.at) / cadence_days),
+            Some(answer) => {
+                let readings = |days: f64| days / cadence_days;
+                findings.delays.push(readings(answer.day - fault.at));
+                if let (Some(jump), Some(size)) = (answer.jump, fault.size) {
+                    let off = readings((jump.day - fault.at).abs());
+                    findings.jump_times.push(off);
+                    findings.jump_sizes.push((jump.size - size).abs() / jump.u);
+                }
+            }
             None => findings.missed += 1,
         }
     }
@@ -174,6 +186,7 @@ mod tests {
     use super::*;
     use crate::score::chooser::Chooser;
     use crate::score::ground::{WHITE, one};
+    use crate::score::observe::Jump;
 
     fn said(word: &str, day: f64, degree: Option<u8>) -> Said {
         Said {
@@ -181,6 +194,7 @@ mod tests {
             place: Some(Place::Sensor(0)),
             day,
             degree,
+            jump: None,
         }
     }
 
@@ -192,6 +206,8 @@ mod tests {
             at: 10.0,
             due: 12.0,
             until: 14.0,
+            size: Some(2.0),
+            required: true,
         });
         world.degrees = Some((1, 1));
         world
@@ -211,6 +227,19 @@ mod tests {
             let elsewhere = judge(&world(), &[said(STEP, day, None)], &[]);
             assert_eq!((elsewhere.missed, elsewhere.false_steps), (1, 1), "{day}");
         }
+    }
+
+    #[test]
+    fn a_found_jump_is_held_against_its_time_and_size() {
+        let mut found = said(STEP, 10.5, None);
+        found.jump = Some(Jump {
+            day: 9.75,
+            size: 1.5,
+            u: 0.25,
+        });
+        let findings = judge(&world(), &[found], &[]);
+        assert_eq!(findings.jump_times, [36.0]);
+        assert_eq!(findings.jump_sizes, [2.0]);
     }
 
     #[test]

@@ -155,6 +155,12 @@ const LIMITS: &[Limit] = &[
         "an alarm without a fault teaches people to ignore alarms: one in 100 000 readings at most",
     ),
     limit(
+        Meant::Only(JUMPING),
+        Figure::JumpTime,
+        Bound::AtMost(5.0),
+        "the time of a jump is told within five readings, half of the time",
+    ),
+    limit(
         Meant::Only(ONE_ALARM),
         Figure::FalseAlarms,
         Bound::AtMost(0.0),

@@ -21,6 +21,19 @@ pub struct Said {
     pub day: f64,
     /// The new degree, if it is about that.
     pub degree: Option<u8>,
+    /// The jump, if it is about one.
+    pub jump: Option<Jump>,
+}
+
+/// A jump of the error, as the engine sees it.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub struct Jump {
+    /// When it happened, in days from the start of the run.
+    pub day: f64,
+    /// By how much, in the channel's unit …
+    pub size: f64,
+    /// … and the standard uncertainty of that.
+    pub u: f64,
 }
 
 /// Collects facts.
@@ -80,6 +93,7 @@ impl Observer {
             place,
             day,
             degree: None,
+            jump: None,
         });
     }
 }

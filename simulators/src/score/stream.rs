@@ -7,7 +7,7 @@ use crate::noise::Autoregressive;
 use crate::process::Process;
 use crate::range::{Draw, Duty};
 use crate::sensor::START;
-use holdtrue_engine::event::{Input, Reading, Source};
+use holdtrue_engine::event::{About, Act, Input, Order, Reading, ServiceEvent, Source, Wish};
 use holdtrue_engine::time::{Duration, Timestamp};
 use std::collections::VecDeque;
 
@@ -67,9 +67,43 @@ pub fn events(world: &World) -> Vec<Event> {
             post.send(world, step, day, &values, &mut events);
         }
     }
+    events.extend(orders(world));
     // Stable: what arrives together stays in the order of sending.
     events.sort_by_key(|event| event.arrival);
     events
+}
+
+/// The orders that report cleanings.
+fn orders(world: &World) -> Vec<Event> {
+    let mut orders = Vec::new();
+    for (sensor, plan) in world.sensors.iter().enumerate() {
+        let channel = &world.setup.channels[sensor].name;
+        for (number, cleaning) in plan.cleaned.iter().enumerate() {
+            let arrival = START.plus(days(cleaning.told));
+            let event = ServiceEvent {
+                by: "technician".to_owned(),
+                about: About::Channel(channel.clone()),
+                at: Some(START.plus(days(cleaning.at))),
+                act: Act::Cleaned,
+                as_found: Vec::new(),
+                as_left: Vec::new(),
+                serial: None,
+                certificate: None,
+                note: String::new(),
+            };
+            orders.push(Event {
+                arrival,
+                input: Input::Order(Box::new(Order {
+                    received: arrival,
+                    id: format!("{channel}/cleaning-{number}"),
+                    reply_to: None,
+                    wish: Wish::Service(event),
+                })),
+                truth: None,
+            });
+        }
+    }
+    orders
 }
 
 /// The true value of the quantity at `index`.

@@ -30,6 +30,10 @@ pub enum Figure {
     DelayMedian,
     /// The same: 95 % of them are not longer.
     Delay95,
+    /// Readings between a jump and the time told for it: median.
+    JumpTime,
+    /// Part of the jumps whose told size is within 2u.
+    JumpSize,
     /// Limit alarms while the true error was well inside its limit, in all runs.
     FalseLimits,
     /// Other alarms without a planted fault, per 100 000 indications.
@@ -100,6 +104,9 @@ fn figures(runs: &[Timed], tally: &Tally, false_alarms: f64) -> BTreeMap<Figure,
     let own = tally.uncertainty.rms().unwrap_or(0.0);
     let both = before.zip(after);
     let delays = sorted(runs, |run| &run.trial.findings.delays);
+    let times = sorted(runs, |run| &run.trial.findings.jump_times);
+    let sizes = sorted(runs, |run| &run.trial.findings.jump_sizes);
+    let within = sizes.partition_point(|size| *size <= 2.0) as f64;
     let leads = sorted(runs, |run| &run.trial.findings.leads);
     let planted = count(|run| run.trial.findings.planted);
     let crossings = count(|run| run.trial.findings.crossings);
@@ -141,6 +148,8 @@ fn figures(runs: &[Timed], tally: &Tally, false_alarms: f64) -> BTreeMap<Figure,
         ),
         (Figure::DelayMedian, quantile(&delays, 0.5)),
         (Figure::Delay95, quantile(&delays, 0.95)),
+        (Figure::JumpTime, quantile(&times, 0.5)),
+        (Figure::JumpSize, part(within, sizes.len() as f64)),
         (
             Figure::FalseLimits,
             Some(count(|run| run.trial.findings.false_limits)),

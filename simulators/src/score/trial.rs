@@ -67,6 +67,7 @@ pub fn run(scenario: &Scenario, seed: u64) -> Trial {
         expected: world
             .faults
             .iter()
+            .filter(|fault| fault.required)
             .map(|fault| expected(&world, fault))
             .collect(),
         findings: findings::judge(&world, &pass.observer.said, &pass.limits),

@@ -106,8 +106,8 @@ pub struct Sensor {
     pub other_unit: Option<OtherUnit>,
     /// How its readings travel.
     pub delivery: Delivery,
-    /// When it is cleaned, with an order that says so.
-    pub cleaned: Vec<f64>,
+    /// When it is cleaned, and when an order says so.
+    pub cleaned: Vec<Cleaning>,
 }
 
 impl Sensor {
@@ -120,6 +120,15 @@ impl Sensor {
         });
         sum(&self.zero) + sum(&self.span) * x + felt + 0.0
     }
+}
+
+/// A cleaning that somebody reports.
+#[derive(Clone, Copy, Debug)]
+pub struct Cleaning {
+    /// When it happens.
+    pub at: f64,
+    /// When the order arrives.
+    pub told: f64,
 }
 
 /// A sensor's noise: a sum of first-order autoregressive parts, which may grow.
@@ -192,6 +201,10 @@ pub struct Fault {
     pub due: f64,
     /// A word of this kind said from `at` until here is about this fault, and no false one.
     pub until: f64,
+    /// By how much the error jumps, if it does.
+    pub size: Option<f64>,
+    /// Whether it must be noticed; otherwise it explains what is said, and no more.
+    pub required: bool,
 }
 
 /// Whose fault.

@@ -4,8 +4,9 @@ use super::stationary::feel_temperature;
 use super::{Class, Scenario};
 use crate::behaviour::curve::Curve;
 use crate::score::chooser::Chooser;
+use crate::score::findings::STEP;
 use crate::score::ground::{RUN_DAYS, WHITE, declare_influence, group, one};
-use crate::score::world::World;
+use crate::score::world::{Cleaning, Fault, Place, World};
 use holdtrue_engine::time::Duration;
 
 /// The scenarios of this file.
@@ -22,6 +23,11 @@ pub(super) const SCENARIOS: &[Scenario] = &[
         "lagged-on-ramps",
         "the zero creeps, the true value ramps, and the sensor answers late by its declared lag",
         lagged,
+    ),
+    scenario(
+        "saw-tooth-ordered",
+        "fouling and cleanings, each reported by an order within hours",
+        saw_tooth,
     ),
     scenario(
         "span-ramp",
@@ -143,6 +149,31 @@ fn lagged(chooser: Chooser) -> World {
     let lag = libm::round(world.chooser.value("lag", "steps", 2.0, 6.0)) as i64;
     world.sensors[0].lag = lag;
     world.setup.channels[0].lag = Duration::from_seconds(lag * world.cadence_seconds);
+    world
+}
+
+fn saw_tooth(chooser: Chooser) -> World {
+    let mut world = one(chooser, WHITE);
+    let noise = world.sensors[0].noise.deviation();
+    let period = world.chooser.value("period", "d", 5.0, 10.0);
+    let height = noise * world.chooser.signed("height", "sigma", 8.0, 15.0);
+    let curve = Curve::SawTooth { period, height };
+    for at in curve.jumps(world.days - 0.5) {
+        let told = at + world.chooser.value("told_after", "d", 0.01, 0.1);
+        world.sensors[0].cleaned.push(Cleaning { at, told });
+        // Until the order comes, the readings do jump.
+        world.faults.push(Fault {
+            answers: vec![STEP, "screen-locked-out"],
+            place: Place::Sensor(0),
+            at,
+            due: told,
+            until: told + 0.25,
+            size: None,
+            required: false,
+        });
+    }
+    world.sensors[0].zero.push(curve);
+    world.degrees = Some((1, 1));
     world
 }
 

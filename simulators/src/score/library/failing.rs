@@ -52,14 +52,16 @@ const fn scenario(
     Scenario::new(Class::Detection, name, purpose, build)
 }
 
-/// A jump of the only sensor at `at`, to be confirmed within `within` days.
-fn jump(at: f64, within: f64) -> Fault {
+/// A jump of the only sensor at `at` by `size`, to be confirmed within a day.
+fn jump(at: f64, size: f64) -> Fault {
     Fault {
         answers: vec![STEP],
         place: Place::Sensor(0),
         at,
-        due: at + within,
+        due: at + 1.0,
         until: at + WINDOW_DAYS,
+        size: Some(size),
+        required: true,
     }
 }
 
@@ -71,7 +73,7 @@ fn step(chooser: Chooser) -> World {
     let size = noise * world.chooser.signed("size", "sigma", 3.0, 12.0);
     for (at, size) in [(up, size), (down, -size)] {
         world.sensors[0].zero.push(Curve::Step { at, size });
-        world.faults.push(jump(at, 1.0));
+        world.faults.push(jump(at, size));
     }
     // Five rejections in a row are a large step seen by the screen.
     world.tolerated = vec!["screen-locked-out"];
@@ -96,6 +98,8 @@ fn knee(chooser: Chooser) -> World {
         at: knee,
         due: knee + 5.0,
         until: world.days,
+        size: None,
+        required: true,
     });
     // A bend this sharp may well be taken for the beginning of something else.
     world.tolerated = vec!["screen-locked-out"];
@@ -110,7 +114,7 @@ fn saw_tooth(chooser: Chooser) -> World {
     let curve = Curve::SawTooth { period, height };
     let last = world.days - 1.5;
     for at in curve.jumps(last) {
-        world.faults.push(jump(at, 1.0));
+        world.faults.push(jump(at, -height));
     }
     world.sensors[0].zero.push(curve);
     world.tolerated = vec!["screen-locked-out"];
@@ -124,7 +128,7 @@ fn baseline(chooser: Chooser) -> World {
     while at < world.days - 1.5 {
         let size = noise * world.chooser.signed("size", "sigma", 4.0, 8.0);
         world.sensors[0].zero.push(Curve::Step { at, size });
-        world.faults.push(jump(at, 1.0));
+        world.faults.push(jump(at, size));
         at += world.chooser.value("pause", "d", 6.5, 8.5);
     }
     world.tolerated = vec!["screen-locked-out"];
@@ -144,6 +148,8 @@ fn stuck(chooser: Chooser) -> World {
         at,
         due: at + 1.0,
         until: world.days,
+        size: None,
+        required: true,
     });
     world.tolerated = vec![STEP, "screen-locked-out"];
     world
@@ -160,6 +166,8 @@ fn noise_growth(chooser: Chooser) -> World {
         at,
         due: at + 3.0,
         until: world.days,
+        size: None,
+        required: true,
     });
     world.degrees = Some((0, 0));
     world
@@ -193,6 +201,8 @@ fn wrong_from(world: &mut World, from: f64, factor: f64, offset: f64) {
         at: from,
         due: from + 0.25,
         until: world.days,
+        size: None,
+        required: true,
     });
     // Noise and what the true value does come with the wrong size, too.
     world.tolerated = vec!["noise-growth"];

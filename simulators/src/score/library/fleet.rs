@@ -43,6 +43,8 @@ fn fleet(chooser: Chooser) -> World {
         at,
         due: at + 0.25,
         until: world.days,
+        size: None,
+        required: true,
     });
     world
 }

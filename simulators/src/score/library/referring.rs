@@ -48,6 +48,8 @@ fn stale(chooser: Chooser) -> World {
         at,
         due: at + 0.5,
         until: world.days,
+        size: None,
+        required: true,
     });
     world.degrees = Some((0, 0));
     world
@@ -81,6 +83,8 @@ fn step(chooser: Chooser) -> World {
         at,
         due: at + 0.25,
         until: world.days,
+        size: None,
+        required: true,
     });
     world
 }

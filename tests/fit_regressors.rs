@@ -72,3 +72,35 @@ fn the_centre_stays_until_the_rows_are_far_off() {
     let [slope, effect] = misses(&moved);
     assert!(slope < 1e-9 && effect < 3e-9, "{slope} {effect}");
 }
+
+/// What a consumer makes of an indication after zero and span checks, given as (reference value,
+/// indication): the fit of zero and span to the checks, applied as `SpanSide::Reference` says.
+fn corrected(checks: &[(f64, f64)], indication: f64) -> f64 {
+    let mut window = Window::new(Columns::new(0, 1, 0), Cut::rows(64, 64));
+    for (day, &(reference, shown)) in (0..).zip(checks) {
+        window.insert(&WindowRow {
+            time: Timestamp(START + day * DAY),
+            error: shown - reference,
+            weight: 1.0,
+            x: reference,
+            influences: [0.0; 2],
+        });
+    }
+    let solved = window.total().solve(2).expect("two levels");
+    let (zero, slope) = (solved[0] + window.level(), solved[1]);
+    let distance = indication - window.centre().x;
+    indication + (-zero - slope * distance) / (1.0 + slope)
+}
+
+/// Zero and span checks are pairs at two levels, and the fit makes of them what the prescribed
+/// two-point drift corrections do.
+#[test]
+fn zero_and_span_checks_are_corrected_as_prescribed() {
+    // 40 CFR 1065.672, example (from memory): before and after, reference gases 0 and 1800.
+    let checks = [(0.0, 0.6), (1800.0, 1800.5), (0.0, -5.2), (1800.0, 1695.8)];
+    let found = corrected(&checks, 435.5);
+    assert!((found - 450.1928).abs() < 5e-5, "{found}");
+    // 40 CFR 60, Appendix A-4, Method 7E, Eq. 7E-5B (from memory): C_0 0.5, C_m 49 at C_ma 50.
+    let found = corrected(&[(0.0, 0.5), (50.0, 49.0)], 50.0);
+    assert!((found - 51.0309).abs() < 5e-5, "{found}");
+}

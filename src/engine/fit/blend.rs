@@ -105,9 +105,6 @@ impl Fit {
         for degree in (least..=joint.largest).filter_map(|k| u8::try_from(k).ok()) {
             for span in (0..=spans).filter_map(|count| u8::try_from(count).ok()) {
                 let span = span.checked_sub(1);
-                if span.is_some_and(|span| span > degree) {
-                    continue;
-                }
                 for &first in choices(0) {
                     for &second in choices(1) {
                         models.push(Model {

@@ -25,6 +25,7 @@ use crate::fit::basis::Columns;
 use crate::fit::between::{
     About, Group, MeanRow, Weighting, can_bear, inside, mean_row, rounding, weighting,
 };
+use crate::fit::centre::Centre;
 use crate::fit::contrast::{Apart, Contrast, KINDS};
 use crate::fit::correlation::{
     Caution, cautious, effective_sample_size, lag_one, variance_inflation,
@@ -469,9 +470,15 @@ impl Joint {
         }
     }
 
-    /// Residual sums of squares of models with their possible rounding.
+    /// Residual sums of squares of models with their possible rounding; x counts from the window's
+    /// centre, as the published coefficients do.
     pub(crate) fn known_rss(&self, models: &[Model], worth: Worth) -> Vec<f64> {
-        let factor = self.factor(worth);
+        let mut factor = self.factor(worth);
+        let back = Centre {
+            x: 0.0 - self.x_mean,
+            ..Centre::default()
+        };
+        self.columns.move_centre(&mut factor, back);
         models
             .iter()
             .map(|model| {

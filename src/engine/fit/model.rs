@@ -2,8 +2,8 @@
 //!
 //! `e = zero(t) + span(t)·(x − centre) + Σ g_j·(q_j − centre_j)`: zero and span are polynomials in
 //! time, x is the level (see [`crate::setup::FitSetup::span_side`]), the `q_j` are influence
-//! quantities. A span of degree m brings the powers of time up to m along in the zero: a model with
-//! x·u but without u would say something else for every centre of x.
+//! quantities. Zero and span have their degrees for themselves, so "a zero that stays while the span
+//! fades" is a model; it means the zero at the centre.
 
 use crate::fit::Prediction;
 use crate::fit::basis::{Columns, MAX_INFLUENCES};
@@ -33,8 +33,7 @@ impl Model {
 
     /// Places of its columns, in ascending order.
     pub(crate) fn places(self, columns: Columns) -> Vec<usize> {
-        let highest = self.degree.max(self.span.unwrap_or(0));
-        let time = 0..=usize::from(highest).min(columns.time_degree());
+        let time = 0..=usize::from(self.degree).min(columns.time_degree());
         let powers = self.span.map_or(0, |degree| usize::from(degree) + 1);
         let span = (0..powers.min(columns.span_columns())).map(|j| columns.span_place(j));
         let influences = (0..columns.influence_columns())

@@ -1,6 +1,6 @@
 //! The straight line of recent pairs that forecasts rest on.
 //!
-//! u² of a polynomial grows ahead of its window as (1/n) Σ (2j+1) P_j(1+2f)², f in windows: one
+//! u² of a polynomial grows ahead of its window as `(1/n) Σ (2j+1) P_j(1+2f)²`, f in windows: one
 //! window ahead 7-fold for a line, 97-fold for a parabola. So a forecast takes degree 1 whatever is
 //! published: over the whole window where at most a line is announced, over its newest quarter where
 //! a curve is. The covariance is made as that of the published mean: from the scatter of segment

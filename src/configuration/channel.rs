@@ -37,13 +37,6 @@ const ALARM_DEADBAND: f64 = 1.0;
 /// Reads a channel and adds it, and its inline reference, to the draft.
 pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draft: &mut Draft) {
     let id = draft.next_channel();
-    let unit = section.need_text("unit", "the unit of indications, references and limits");
-    if let Some(empty) = unit.as_ref().filter(|unit| unit.value.trim().is_empty()) {
-        section.wrong(
-            empty,
-            "is empty; write the unit, or \"1\" for a pure number",
-        );
-    }
     let indication = indication(section, name, readings_clock, draft);
     let beside = Beside {
         channel: id,
@@ -80,14 +73,9 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
             .number_in(key, |x| x > 0.0, "greater than zero")
             .map(|found| found.value)
     };
-    let coverage = section.number_in(
-        "coverage",
-        |p| (0.5..1.0).contains(&p),
-        "a probability from 0.5 to below 1, as 0.95",
-    );
     let channel = ChannelSetup {
         name: name.to_owned(),
-        unit: unit.map(|found| found.value.to_owned()).unwrap_or_default(),
+        unit: unit(section),
         reference,
         influences,
         lag: section
@@ -107,7 +95,7 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
         resolution,
         noise,
         max_drift_rate: positive("max_drift_rate"),
-        coverage: coverage.map_or(COVERAGE, |found| found.value),
+        coverage: coverage(section),
         publish: publish(section),
         alarms: alarms(section),
         corrected_values: corrected_values.is_some_and(|found| found.value),
@@ -115,6 +103,28 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
     };
     section.finish();
     draft.channels.push(channel);
+}
+
+/// `unit`: any text but an empty one.
+fn unit(section: &Section<'_>) -> String {
+    let unit = section.need_text("unit", "the unit of indications, references and limits");
+    if let Some(empty) = unit.as_ref().filter(|unit| unit.value.trim().is_empty()) {
+        section.wrong(
+            empty,
+            "is empty; write the unit, or \"1\" for a pure number",
+        );
+    }
+    unit.map(|found| found.value.to_owned()).unwrap_or_default()
+}
+
+/// `coverage`: the probability that U is to have.
+fn coverage(section: &Section<'_>) -> f64 {
+    let coverage = section.number_in(
+        "coverage",
+        |p| (0.5..1.0).contains(&p),
+        "a probability from 0.5 to below 1, as 0.95",
+    );
+    coverage.map_or(COVERAGE, |found| found.value)
 }
 
 /// `indication`: where the sensor's values come in.

@@ -18,7 +18,7 @@ pub mod validation;
 mod word;
 
 use holdtrue_engine::event::Output;
-use holdtrue_engine::setup::{Clock, Setup};
+use holdtrue_engine::setup::{ChannelId, Clock, Setup};
 use holdtrue_engine::time::Timestamp;
 use serde::Serialize;
 use topic::Topics;
@@ -48,72 +48,49 @@ pub struct Document {
 #[must_use]
 pub fn render(output: &Output, setup: &Setup) -> Option<Document> {
     let topics = Topics::new(&setup.node);
+    let channel = |id: &ChannelId| setup.channels.get(id.0 as usize);
     match output {
         Output::Correction(correction) => {
-            let channel = setup.channels.get(correction.channel.0 as usize)?;
-            // Recordings run in their own time; an expiry counts the broker's seconds and would
-            // mean nothing.
-            let expires = (setup.clock == Clock::Live).then_some(correction.valid_until);
+            let channel = channel(&correction.channel)?;
             let document = correction::CorrectionDocument::new(correction, channel, setup);
-            Some(json(
-                topics.correction(&channel.name),
-                &document,
-                true,
-                expires,
-            ))
+            let expires = expiry(correction.valid_until, setup.clock);
+            let topic = topics.correction(&channel.name);
+            Some(json(topic, &document, true, expires))
         }
-        Output::Withdrawn { channel, .. } => {
-            let channel = setup.channels.get(channel.0 as usize)?;
-            Some(cleared(topics.correction(&channel.name)))
+        Output::Withdrawn { channel: id, .. } => {
+            Some(cleared(topics.correction(&channel(id)?.name)))
         }
         Output::Corrected(corrected) => {
-            let channel = setup.channels.get(corrected.channel.0 as usize)?;
+            let channel = channel(&corrected.channel)?;
             let document = correction::CorrectedDocument::new(corrected, channel);
-            Some(json(
-                topics.corrected(&channel.name),
-                &document,
-                false,
-                None,
-            ))
+            let topic = topics.corrected(&channel.name);
+            Some(json(topic, &document, false, None))
         }
         Output::Outlook(outlook) => {
-            let channel = setup.channels.get(outlook.channel.0 as usize)?;
-            let expires = (setup.clock == Clock::Live).then_some(outlook.valid_until);
+            let channel = channel(&outlook.channel)?;
             let document = outlook::OutlookDocument::new(outlook, channel);
-            Some(json(
-                topics.outlook(&channel.name),
-                &document,
-                true,
-                expires,
-            ))
+            let expires = expiry(outlook.valid_until, setup.clock);
+            let topic = topics.outlook(&channel.name);
+            Some(json(topic, &document, true, expires))
         }
-        Output::OutlookWithdrawn { channel, .. } => {
-            let channel = setup.channels.get(channel.0 as usize)?;
-            Some(cleared(topics.outlook(&channel.name)))
+        Output::OutlookWithdrawn { channel: id, .. } => {
+            Some(cleared(topics.outlook(&channel(id)?.name)))
         }
         Output::Alarm(change) => {
             let name = topic::subject_name(change.subject, setup)?;
             let document = alarm::AlarmDocument::new(change, name);
-            Some(json(
-                topics.alarm(change.subject, name, change.kind),
-                &document,
-                true,
-                None,
-            ))
+            let topic = topics.alarm(change.subject, name, change.kind);
+            Some(json(topic, &document, true, None))
         }
         Output::Degree(change) => {
-            let channel = setup.channels.get(change.channel.0 as usize)?;
+            let channel = channel(&change.channel)?;
             let document = degree::DegreeDocument::new(change, channel);
             Some(json(topics.degree(&channel.name), &document, true, None))
         }
         Output::Notice(notice) => {
             let name = topic::subject_name(notice.subject, setup)?;
-            Some(json(
-                topics.notice(),
-                &notice::NoticeDocument::new(notice, name),
-                false,
-                None,
-            ))
+            let document = notice::NoticeDocument::new(notice, name);
+            Some(json(topics.notice(), &document, false, None))
         }
         Output::Answer(answer) => {
             let (topic, correlation) = match &answer.reply_to {
@@ -127,13 +104,19 @@ pub fn render(output: &Output, setup: &Setup) -> Option<Document> {
             })
         }
         Output::Validation(validation) => {
-            let channel = setup.channels.get(validation.channel.0 as usize)?;
+            let channel = channel(&validation.channel)?;
             let document = validation::ValidationDocument::new(validation, channel);
             let topic = topics.validation(&channel.name);
             Some(json(topic, &document, true, None))
         }
         Output::Pair(_) | Output::Wanted { .. } => None,
     }
+}
+
+/// When the broker is to drop a document that holds until then. Recordings run in their own time; an
+/// expiry counts the broker's seconds and would mean nothing.
+fn expiry(valid_until: Timestamp, clock: Clock) -> Option<Timestamp> {
+    (clock == Clock::Live).then_some(valid_until)
 }
 
 /// The document that removes what is retained on a topic (MQTT 5.0, 3.3.1.3: a retained message of

@@ -119,6 +119,7 @@ fn a_changed_configuration_keeps_what_is_unchanged_and_clears_what_is_not() {
         let mut channels: Vec<_> = order.iter().map(|name| channel(name, 0)).collect();
         for channel in &mut channels {
             channel.max_permissible_error = Some(2.0);
+            channel.max_correction = Some(9.0);
             channel.screening.enabled = false;
             if channel.name == "b" {
                 channel.unit = unit.to_owned();

@@ -62,6 +62,7 @@ fn documents_are_numbered_valid_and_consistent() {
         .collect();
     let mut setup = channel("a", 0);
     setup.max_permissible_error = Some(5.0);
+    setup.max_correction = Some(20.0);
     let (_, outputs) = run(against_zero(setup), &errors);
     let documents = corrections(&outputs);
     assert!(documents.len() > 10);

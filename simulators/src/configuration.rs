@@ -81,7 +81,7 @@ fn channel(toml: &mut String, kit: &Kit, days: f64) {
          time = \"/at\", sequence = \"/seq\" }}\n\
          reference = {reference}\nlateness = \"1 min\"\nmax_gap = \"1 h\"\n\
          window = \"{window} d\"\nresolution = {resolution}\nnoise = {noise}\n\
-         max_permissible_error = {limit}\n",
+         max_permissible_error = {limit}\nmax_correction = {most}\n",
         name = quoted(instrument.name),
         unit = quoted(instrument.unit),
         topic = quoted(&instrument.topic()),
@@ -90,6 +90,8 @@ fn channel(toml: &mut String, kit: &Kit, days: f64) {
         resolution = short(instrument.resolution()),
         noise = instrument.noise,
         limit = instrument.max_permissible_error,
+        // Planted errors are let run past their limit, to see the correction follow them.
+        most = short(20.0 * instrument.max_permissible_error),
     );
     if let Some(rate) = kit.permitted_rate(days) {
         let _ = writeln!(toml, "max_drift_rate = {}", short(rate));

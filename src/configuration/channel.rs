@@ -95,6 +95,11 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
         resolution,
         noise,
         max_drift_rate: positive("max_drift_rate"),
+        max_correction: positive("max_correction"),
+        max_correction_rate: positive("max_correction_rate"),
+        hold_limit: section
+            .positive_duration("hold_limit")
+            .map(|found| found.value),
         coverage: coverage(section),
         publish: publish(section),
         alarms: alarms(section),

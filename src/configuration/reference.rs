@@ -14,6 +14,8 @@ const DAY: Duration = Duration::from_seconds(86_400);
 const DATE_LENGTH: usize = 10;
 /// Fewest known values of a reference that is made of several.
 const POINTS_MIN: usize = 2;
+/// Default of `expiry_notice` (common practice: time to send a reference away).
+const EXPIRY_NOTICE: Duration = Duration::from_seconds(30 * 86_400);
 /// Fewest other members of a group.
 const OTHERS_MIN: usize = 3;
 
@@ -44,6 +46,10 @@ pub(super) fn read(
         .text("certificate")
         .map(|found| found.value.to_owned());
     let expires = expires(section, draft.now);
+    let expiry_notice = section.duration("expiry_notice");
+    if let Some(found) = expiry_notice.as_ref().filter(|_| !section.has("expires")) {
+        section.wrong(found, "says nothing without expires");
+    }
     let stale_after = section
         .positive_duration("stale_after")
         .map(|found| found.value);
@@ -62,6 +68,7 @@ pub(super) fn read(
         uncertainty_common: common,
         certificate,
         expires,
+        expiry_notice: expiry_notice.map_or(EXPIRY_NOTICE, |found| found.value),
         stale_after,
         stands_for,
         stamped,

@@ -2,7 +2,7 @@
 
 use super::{SCHEMA_VERSION, word};
 use holdtrue_engine::event::{Corrected, Correction, WindowSeen};
-use holdtrue_engine::setup::{ChannelSetup, Setup};
+use holdtrue_engine::setup::{ChannelSetup, ReferenceKind, ReferenceSetup, Setup};
 use serde::Serialize;
 
 /// How to correct a channel's indications, and how sure that is.
@@ -19,6 +19,9 @@ pub struct CorrectionDocument<'a> {
     issued: String,
     valid_from: String,
     valid_until: String,
+    state: &'static str,
+    because: Option<&'static str>,
+    caution: Option<&'static str>,
     origin: String,
     time_unit: &'static str,
     degree: u8,
@@ -45,6 +48,20 @@ pub struct CorrectionDocument<'a> {
     stretch: u32,
     reference: &'a str,
     certificate: Option<&'a str>,
+    certificate_expires: Option<String>,
+    certificate_expired: bool,
+}
+
+/// What whoever uses a document must know about this kind of reference.
+pub(super) fn caution(reference: &ReferenceSetup) -> Option<&'static str> {
+    match reference.kind {
+        ReferenceKind::Group { .. } => Some(
+            "judged against the median of its group: drift that all members share is invisible",
+        ),
+        ReferenceKind::Measured | ReferenceKind::Constant { .. } | ReferenceKind::Checks { .. } => {
+            None
+        }
+    }
 }
 
 /// What the fit looked at.
@@ -70,6 +87,7 @@ impl<'a> CorrectionDocument<'a> {
     #[must_use]
     pub fn new(correction: &'a Correction, channel: &'a ChannelSetup, setup: &'a Setup) -> Self {
         let reference = setup.references.get(channel.reference.0 as usize);
+        let expires = reference.and_then(|it| it.expires);
         Self {
             schema_version: SCHEMA_VERSION,
             channel: &channel.name,
@@ -78,6 +96,9 @@ impl<'a> CorrectionDocument<'a> {
             issued: word::time(correction.issued),
             valid_from: word::time(correction.valid_from),
             valid_until: word::time(correction.valid_until),
+            state: word::rung(correction.rung),
+            because: correction.because.map(word::cause),
+            caution: reference.and_then(caution),
             origin: word::time(correction.origin),
             time_unit: "d",
             degree: correction.degree,
@@ -111,6 +132,8 @@ impl<'a> CorrectionDocument<'a> {
             stretch: correction.stretch,
             reference: reference.map_or("", |it| it.name.as_str()),
             certificate: reference.and_then(|it| it.certificate.as_deref()),
+            certificate_expires: expires.map(word::time),
+            certificate_expired: expires.is_some_and(|expires| expires <= correction.issued),
         }
     }
 }

@@ -89,6 +89,10 @@ pub struct ChannelState {
     issue_number: Option<u64>,
     valid_until: Option<String>,
     locked_out: bool,
+    ladder: &'static str,
+    because: Option<&'static str>,
+    status: &'static str,
+    statuses: Vec<&'static str>,
     alarms: Vec<&'static str>,
 }
 
@@ -115,6 +119,10 @@ impl ChannelState {
             issue_number: channel.issue_number,
             valid_until: channel.valid_until.map(word::time),
             locked_out: channel.locked_out,
+            ladder: word::rung(channel.rung),
+            because: channel.because.map(word::cause),
+            status: word::status(channel.status()),
+            statuses: channel.statuses.iter().copied().map(word::status).collect(),
             alarms: alarms
                 .iter()
                 .filter(own)

@@ -1,6 +1,8 @@
 //! The fixed words that machines find in documents, and times as text.
 
-use holdtrue_engine::event::{AlarmKind, AlarmState, RefusedReason, Subject, Zone};
+use holdtrue_engine::event::{
+    AlarmKind, AlarmState, Cause, RefusedReason, Rung, Status, Subject, Zone,
+};
 use holdtrue_engine::setup::DecisionRule;
 use holdtrue_engine::time::Timestamp;
 
@@ -18,6 +20,10 @@ pub(super) fn alarm_kind(kind: AlarmKind) -> &'static str {
         AlarmKind::DriftRate => "drift-rate",
         AlarmKind::TimeToLimit => "time-to-limit",
         AlarmKind::ReferenceStale => "reference-stale",
+        AlarmKind::ReferenceStep => "reference-step",
+        AlarmKind::ReferenceStuck => "reference-stuck",
+        AlarmKind::CertificateExpiry => "certificate-expiry",
+        AlarmKind::CorrectionLimit => "correction-limit",
         AlarmKind::DataGap => "data-gap",
         AlarmKind::ScreenLockedOut => "screen-locked-out",
         AlarmKind::Stuck => "stuck",
@@ -67,6 +73,43 @@ pub(super) fn decision_rule(rule: DecisionRule) -> String {
     }
 }
 
+/// A rung of the fail-safe ladder.
+pub(super) fn rung(rung: Rung) -> &'static str {
+    match rung {
+        Rung::Advise => "advise",
+        Rung::Hold => "hold",
+        Rung::Withdrawn => "withdrawn",
+        Rung::RawOnly => "raw-only",
+    }
+}
+
+/// Why a channel does not stand on the first rung.
+pub(super) fn cause(cause: Cause) -> &'static str {
+    match cause {
+        Cause::ReferenceStep => "reference-step",
+        Cause::ReferenceStuck => "reference-stuck",
+        Cause::ReferenceStale => "reference-stale",
+        Cause::ScreenLockedOut => "screen-locked-out",
+        Cause::CorrectionSize => "correction-size",
+        Cause::CorrectionRate => "correction-rate",
+        Cause::NotRenewed => "not-renewed",
+        Cause::StretchEnded => "stretch-ended",
+        Cause::MonitorOnly => "monitor-only",
+        Cause::NothingLearned => "nothing-learned",
+    }
+}
+
+/// A status signal after NAMUR NE 107.
+pub(super) fn status(status: Status) -> &'static str {
+    match status {
+        Status::Failure => "failure",
+        Status::FunctionCheck => "function-check",
+        Status::OutOfSpecification => "out-of-specification",
+        Status::MaintenanceRequired => "maintenance-required",
+        Status::Good => "good",
+    }
+}
+
 /// Why something was not used.
 pub(super) fn refused_reason(reason: RefusedReason) -> &'static str {
     match reason {
@@ -91,6 +134,7 @@ pub(super) fn refused_reason(reason: RefusedReason) -> &'static str {
         RefusedReason::Stuck => "stuck",
         RefusedReason::TooFast => "too-fast",
         RefusedReason::NoInfluence => "no-influence",
+        RefusedReason::ReferenceDoubted => "reference-doubted",
     }
 }
 

@@ -6,20 +6,22 @@
 
 mod adopt;
 mod agenda;
+mod certificate;
 mod door;
 mod known;
 mod leap;
 mod orders;
 mod pulse;
+mod reference;
+mod reference_watch;
 mod silence;
+mod trust;
 
-use crate::alarm::Alarm;
 use crate::channel::{Answer, Channel, Rows, Scene};
 use crate::counters::Counters;
 use crate::event::{Flag, Gate, Reading, Refused, RefusedReason, Source, Subject, Supplied};
-use crate::gate::GateHistory;
 use crate::report::Report;
-use crate::setup::{ChannelId, Clock, InfluenceId, ReferenceId, Setup};
+use crate::setup::{ChannelId, Clock, InfluenceId, ReferenceId, ReferenceKind, Setup};
 use crate::standing::{AlarmStanding, ReferenceStanding, Standing};
 use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
@@ -30,8 +32,11 @@ use known::known_values;
 pub(crate) use leap::LeapWatch;
 use orders::OrderBook;
 use pulse::Pulse;
+use reference::Reference;
+use reference_watch::QUORUM;
+pub(crate) use reference_watch::{Ruling, Vote};
 use serde::{Deserialize, Serialize};
-use std::collections::BTreeMap;
+use std::collections::{BTreeMap, BTreeSet};
 
 /// Everything that a refused input must not change.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
@@ -51,18 +56,10 @@ pub struct Fleet {
     channels: Vec<Channel>,
     agenda: Agenda,
     orders: OrderBook,
+    /// References whose channels' votes came with the input at hand; none between two inputs.
+    heard: BTreeSet<usize>,
     /// Last issue number of channels that were removed, by name: a number is never used twice.
     retired: BTreeMap<String, u64>,
-}
-
-/// What is known of one reference.
-#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
-struct Reference {
-    values: Track,
-    gate: GateHistory,
-    stale: Alarm,
-    /// From when on its silence counts while it has said nothing.
-    began: Option<Timestamp>,
 }
 
 impl Fleet {
@@ -164,16 +161,40 @@ impl Fleet {
             counters: counters.clone(),
             channels: channels
                 .map(|((id, (channel, setup)), track)| {
-                    channel.standing(ChannelId(id), setup, track.newest())
+                    let id = ChannelId(id);
+                    channel.standing(id, setup, track.newest(), self.is_in_check(id))
                 })
                 .collect(),
             references: references
-                .map(|(id, _)| ReferenceStanding {
+                .map(|(id, reference)| ReferenceStanding {
                     reference: ReferenceId(id),
                     last_value: self.last_known(ReferenceId(id)),
+                    trouble: reference.trouble(),
                 })
                 .collect(),
             alarms: self.raised_alarms(),
+        }
+    }
+
+    /// Whether a gated reference is being shown to the channel just now.
+    fn is_in_check(&self, id: ChannelId) -> bool {
+        let reference = self.setup.channels[id.0 as usize].reference;
+        let is_open = |id: &ReferenceId| {
+            let open = |now| self.references[id.0 as usize].gate.is_open(now);
+            self.now.and_then(open) == Some(true)
+        };
+        match &self.setup.references[reference.0 as usize].kind {
+            ReferenceKind::Constant { gated: true, .. } => is_open(&reference),
+            ReferenceKind::Checks { points } => points.iter().any(is_open),
+            _ => false,
+        }
+    }
+
+    /// Has the channels of a reference heed what has changed about it.
+    fn tell_channels(&mut self, index: usize, report: &mut Report<'_>) {
+        let id = ReferenceId(u32::try_from(index).expect("as many references as a u32 numbers"));
+        for user in self.routes.reference_users(id).to_vec() {
+            self.visit(user, |channel, scene| channel.heed_reference(scene, report));
         }
     }
 
@@ -187,10 +208,7 @@ impl Fleet {
             alarms.extend(channel.raised_alarms(ChannelId(id)));
         }
         for (id, reference) in (0..).zip(&self.references) {
-            if reference.stale.is_raised() {
-                let subject = Subject::Reference(ReferenceId(id));
-                alarms.push(silence::stale_standing(subject, reference.stale.state()));
-            }
+            alarms.extend(reference.raised(ReferenceId(id)));
         }
         alarms
     }
@@ -233,7 +251,9 @@ impl Fleet {
             }
             Source::Reference(id) => {
                 let index = id.0 as usize;
-                self.references[index].values.insert(sample);
+                let reference = &mut self.references[index];
+                reference.values.insert(sample);
+                reference.watch.take_value(sample.time, sample.value);
                 self.hear_reference(id, report);
                 for user in self.routes.reference_users(id).to_vec() {
                     self.visit(user, |channel, scene| {
@@ -290,16 +310,22 @@ impl Fleet {
             now,
             alive: self.pulse.alive(now, &self.routes),
             resumed: self.pulse.resumed(),
+            trouble: self.references[reference].trouble(),
+            watched: self.routes.is_watched(reference),
         };
         let channel = &mut self.channels[index];
         act(channel, &scene);
         self.agenda.put(Waiter::Channel(index), channel.wake());
+        if channel.has_votes() {
+            self.hear_votes(index, now);
+        }
     }
 
     /// Lets everything act whose time has come.
     fn pass_time(&mut self, report: &mut Report<'_>) {
         let Some(now) = self.now else { return };
         self.pulse.watch(now, &self.routes, report);
+        self.carry_out(report);
         for waiter in self.agenda.due(now) {
             match waiter {
                 Waiter::Reference(index) => self.watch_reference(index, report),
@@ -308,6 +334,7 @@ impl Fleet {
                 }
             }
         }
+        self.carry_out(report);
     }
 
     /// The earliest time after now at which something waits.
@@ -328,7 +355,7 @@ impl Fleet {
         }
     }
 
-    /// Writes into the agenda when a reference's silence is next to be looked at.
+    /// Writes into the agenda when a reference is next to be looked at.
     fn schedule_reference(&mut self, index: usize) {
         let time = self.watched_from(index);
         self.agenda.put(Waiter::Reference(index), time);

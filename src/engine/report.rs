@@ -76,6 +76,7 @@ impl RefusedReason {
             Self::Stuck => "stuck",
             Self::TooFast => "too-fast",
             Self::NoInfluence => "no-influence",
+            Self::ReferenceDoubted => "reference-doubted",
         }
     }
 
@@ -121,6 +122,9 @@ impl RefusedReason {
             Self::NoInfluence => {
                 "no value of the influence quantity near enough in time; check its source and \
                  `max_gap`"
+            }
+            Self::ReferenceDoubted => {
+                "all channels of its reference disagree with that value; look at the reference"
             }
         }
     }

@@ -2,7 +2,7 @@
 //! nothing depends on it.
 
 use crate::counters::Counters;
-use crate::event::{AlarmKind, AlarmState, Subject, Zone};
+use crate::event::{AlarmKind, AlarmState, Cause, Rung, Status, Subject, Zone};
 use crate::setup::{ChannelId, ReferenceId};
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
@@ -54,6 +54,20 @@ pub struct ChannelStanding {
     /// The uncorrected error does not reach its limit before this instant, as the outlook in force
     /// says: what service is planned by. `None` where nothing can be said.
     pub limit_not_before: Option<Timestamp>,
+    /// Where it stands on the fail-safe ladder.
+    pub rung: Rung,
+    /// Why not on the first rung.
+    pub because: Option<Cause>,
+    /// All status signals that apply, the most urgent first; empty: good.
+    pub statuses: Vec<Status>,
+}
+
+impl ChannelStanding {
+    /// The one status signal to show.
+    #[must_use]
+    pub fn status(&self) -> Status {
+        self.statuses.first().copied().unwrap_or(Status::Good)
+    }
 }
 
 /// How one reference stands.
@@ -64,6 +78,8 @@ pub struct ReferenceStanding {
     /// Newest instant at which its value was known; `None` for a constant without a gate and before
     /// the first value.
     pub last_value: Option<Timestamp>,
+    /// What is wrong with it, so that its channels hold.
+    pub trouble: Option<Cause>,
 }
 
 /// An alarm that is not normal.

@@ -59,6 +59,7 @@ pub fn reference(name: &str, kind: ReferenceKind) -> ReferenceSetup {
         uncertainty_common: 0.0,
         certificate: None,
         expires: None,
+        expiry_notice: Duration::ZERO,
         stale_after: None,
         stands_for: Duration::ZERO,
         stamped: Stamped::End,
@@ -100,6 +101,9 @@ pub fn channel(name: &str, reference: u32) -> ChannelSetup {
         resolution: 0.0,
         noise: 0.0,
         max_drift_rate: None,
+        max_correction: None,
+        max_correction_rate: None,
+        hold_limit: None,
         coverage: 0.95,
         publish: PublishSetup {
             step: 0.5,

@@ -171,6 +171,7 @@ fn reference_setup(name: String, each: f64) -> ReferenceSetup {
         uncertainty_common: 0.0,
         certificate: None,
         expires: None,
+        expiry_notice: Duration::ZERO,
         stale_after: None,
         stands_for: Duration::ZERO,
         stamped: Stamped::End,
@@ -215,6 +216,10 @@ fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup
         resolution: 0.0,
         noise: deviation,
         max_drift_rate: None,
+        // Planted errors run past the permissible one, to see the correction follow them.
+        max_correction: Some(f64::MAX),
+        max_correction_rate: None,
+        hold_limit: None,
         coverage: 0.95,
         publish: PublishSetup {
             step: 0.25,

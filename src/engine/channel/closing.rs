@@ -5,9 +5,10 @@
 //! told again. The correction in force rests on the old stretch: it is replaced by the new one's
 //! where that has enough pairs, and withdrawn where not.
 
+use super::ladder::Ladder;
 use super::stretch::Carries;
 use super::{Channel, Pair, Remembered, Scene};
-use crate::event::Output;
+use crate::event::{Cause, Output};
 use crate::report::Report;
 use crate::time::Timestamp;
 
@@ -87,6 +88,9 @@ impl Channel {
 
     /// Withdraws the correction in force, if there is one.
     fn withdraw(&mut self, why: &str, scene: &Scene<'_>, report: &mut Report<'_>) {
+        self.ladder = Ladder::Withdrawn {
+            because: Cause::StretchEnded,
+        };
         if self.publishing.forget() {
             report.say(Output::Withdrawn {
                 channel: scene.id,

@@ -24,15 +24,16 @@ pub(crate) struct ChannelAlarms {
     screen_locked_out: Alarm,
     stuck: Alarm,
     noise_growth: Alarm,
+    pub(super) correction_limit: Alarm,
 }
 
 /// What an alarm change says besides its state.
-struct Said {
-    value: f64,
-    limit: f64,
-    unit: String,
-    raised: String,
-    cleared: String,
+pub(super) struct Said {
+    pub(super) value: f64,
+    pub(super) limit: f64,
+    pub(super) unit: String,
+    pub(super) raised: String,
+    pub(super) cleared: String,
 }
 
 impl ChannelAlarms {
@@ -43,7 +44,9 @@ impl ChannelAlarms {
 
     /// Whether an alarm that judgements drive has begun to count towards another state.
     pub(crate) fn are_moving(&self) -> bool {
-        self.error_limit.is_moving() || self.drift_rate.is_moving()
+        self.error_limit.is_moving()
+            || self.drift_rate.is_moving()
+            || self.correction_limit.is_moving()
     }
 
     /// Evaluates what follows from a judgement: the error against its limit, the drift rate against
@@ -80,6 +83,7 @@ impl ChannelAlarms {
                 .evaluate(condition, scene.now, delays(setup));
             tell(AlarmKind::DriftRate, step, said, scene, report);
         }
+        self.judge_correction(judgement, scene, report);
     }
 
     /// One condition, one alarm: what the time-to-limit alarm foretold has come, and the error-limit
@@ -192,7 +196,7 @@ impl ChannelAlarms {
     }
 
     /// All alarms with their kinds.
-    fn all(&self) -> [(AlarmKind, &Alarm); 7] {
+    fn all(&self) -> [(AlarmKind, &Alarm); 8] {
         [
             (AlarmKind::ErrorLimit, &self.error_limit),
             (AlarmKind::DriftRate, &self.drift_rate),
@@ -201,6 +205,7 @@ impl ChannelAlarms {
             (AlarmKind::ScreenLockedOut, &self.screen_locked_out),
             (AlarmKind::Stuck, &self.stuck),
             (AlarmKind::NoiseGrowth, &self.noise_growth),
+            (AlarmKind::CorrectionLimit, &self.correction_limit),
         ]
     }
 
@@ -302,6 +307,11 @@ impl ChannelAlarms {
                 !after.screening.enabled,
             ),
             (AlarmKind::Stuck, &mut self.stuck, !after.screening.enabled),
+            (
+                AlarmKind::CorrectionLimit,
+                &mut self.correction_limit,
+                after.max_correction.is_none() && after.max_correction_rate.is_none(),
+            ),
         ];
         for (kind, alarm, _) in unasked.into_iter().filter(|(_, _, unasked)| *unasked) {
             if std::mem::take(alarm).is_raised() {
@@ -334,7 +344,7 @@ fn dismissed(
 }
 
 /// On- and off-delay as configured.
-fn delays(setup: &ChannelSetup) -> Delays {
+pub(super) fn delays(setup: &ChannelSetup) -> Delays {
     let needed = setup.alarms.delay.max(1);
     Delays {
         on: needed,
@@ -344,7 +354,7 @@ fn delays(setup: &ChannelSetup) -> Delays {
 
 /// Whether a magnitude is past its limit, or clear of it by the deadband. The deadband is at most
 /// half the limit, so that an alarm can clear however uncertain the value is.
-fn beyond(value: f64, limit: f64, deadband: f64) -> Condition {
+pub(super) fn beyond(value: f64, limit: f64, deadband: f64) -> Condition {
     let size = value.abs();
     if size > limit {
         Condition::Holds
@@ -368,7 +378,7 @@ fn within_horizon(ahead: Duration, drifts: bool, setup: &ChannelSetup) -> Condit
     }
 }
 
-fn tell(
+pub(super) fn tell(
     kind: AlarmKind,
     step: Option<Move>,
     said: Said,

@@ -18,6 +18,8 @@ mod conditions;
 mod conformity;
 mod forecast;
 mod judgement;
+mod ladder;
+mod limits;
 mod outlook;
 mod pairing;
 mod publishing;
@@ -25,12 +27,14 @@ mod recent;
 mod review;
 mod screening;
 mod service;
+mod status;
 mod stretch;
 mod telling;
 #[cfg(test)]
 pub(crate) mod testing;
+mod waiting;
 
-use crate::event::{Flag, Output, Subject};
+use crate::event::{Cause, Flag, Output, Subject};
 use crate::report::Report;
 use crate::setup::{ChannelId, ChannelSetup, ReferenceSetup};
 use crate::standing::{AlarmStanding, ChannelStanding};
@@ -39,15 +43,18 @@ use crate::track::{Sample, Track};
 use checks::Checks;
 pub(crate) use checks::jumps;
 use conditions::ChannelAlarms;
+use ladder::Ladder;
 use outlook::OutlookStation;
 pub(crate) use pairing::{Answer, Check, Holding, Rows, holding};
 use pairing::{Found, Pair, Pairing};
 use publishing::Publishing;
 use recent::{Recent, Remembered};
+pub(crate) use screening::MAD_TO_SD;
 use serde::{Deserialize, Serialize};
 use service::ServiceBook;
 pub(crate) use service::{Effect, Service};
 use stretch::Stretch;
+use waiting::Waiting;
 
 /// What a channel can see while it acts: its own setup, and what others share with it.
 pub(crate) struct Scene<'a> {
@@ -67,6 +74,10 @@ pub(crate) struct Scene<'a> {
     pub(crate) alive: Timestamp,
     /// When the node began to listen again after it heard nothing from anywhere.
     pub(crate) resumed: Option<Timestamp>,
+    /// What is wrong with its reference, if anything is.
+    pub(crate) trouble: Option<Cause>,
+    /// Whether its reference is judged by its channels before they take its values.
+    pub(crate) watched: bool,
 }
 
 /// The state of one channel.
@@ -74,10 +85,12 @@ pub(crate) struct Scene<'a> {
 pub(crate) struct Channel {
     pairing: Pairing,
     checks: Checks,
+    waiting: Waiting,
     stretch: Stretch,
     recent: Recent,
     publishing: Publishing,
     outlook: OutlookStation,
+    ladder: Ladder,
     alarms: ChannelAlarms,
     service: ServiceBook,
     /// From when on the channel's silence counts while it has said nothing.
@@ -93,10 +106,12 @@ impl Channel {
         Self {
             pairing: Pairing::default(),
             checks: Checks::default(),
+            waiting: Waiting::default(),
             stretch: Stretch::new(1, setup),
             recent: Recent::default(),
             publishing: Publishing::new(issued),
             outlook: OutlookStation::default(),
+            ladder: Ladder::default(),
             alarms: ChannelAlarms::default(),
             service: ServiceBook::default(),
             began: None,
@@ -222,6 +237,28 @@ impl Channel {
         self.work_through(found, scene, report);
     }
 
+    /// Its reference is under suspicion since this instant: what came from it since then counts for
+    /// nothing, and the correction is held.
+    pub(crate) fn distrust(
+        &mut self,
+        since: Timestamp,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
+        let since = since.plus(scene.setup.lag);
+        if self.stretch.last_pair() >= Some(since) {
+            self.stretch.rewind(since, &self.recent, scene.setup);
+            self.renew(scene, report);
+        }
+        self.heed_reference(scene, report);
+    }
+
+    /// Something changed about its reference's state.
+    pub(crate) fn heed_reference(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        self.judge(scene, report);
+        self.wake = self.next_wake(scene);
+    }
+
     /// Goes on under an edited setup in which its rows mean the same: alarms that nobody asks about
     /// any more are cleared, a screen that is switched off forgets, a correction that may no longer
     /// be published is withdrawn, and one in force is reviewed as soon as anything happens.
@@ -274,6 +311,7 @@ impl Channel {
             });
         }
         self.outlook.step_back(id, to, report);
+        self.ladder.step_back(to);
         self.began = self.began.map(|began| began.min(to));
         self.wake = Some(Timestamp(i64::MIN));
     }
@@ -308,12 +346,13 @@ impl Channel {
         self.alarms.raised(id)
     }
 
-    /// How it stands.
+    /// How it stands. `in_check`: whether its reference is being shown to it just now.
     pub(crate) fn standing(
         &self,
         channel: ChannelId,
         setup: &ChannelSetup,
         last_indication: Option<Timestamp>,
+        in_check: bool,
     ) -> ChannelStanding {
         let judged = self.stretch.judged();
         let offered = judged.filter(|_| !setup.monitor_only);
@@ -333,6 +372,13 @@ impl Channel {
             valid_until: correction.map(|document| document.valid_until),
             locked_out: self.stretch.is_locked_out(),
             limit_not_before: self.outlook.outlook().and_then(|it| it.recalibration.by),
+            rung: self.ladder.rung(),
+            because: if setup.monitor_only {
+                Some(Cause::MonitorOnly)
+            } else {
+                self.ladder.because()
+            },
+            statuses: self.statuses(channel, in_check),
         }
     }
 
@@ -342,7 +388,7 @@ impl Channel {
         let subject = Subject::Channel(scene.id);
         for found in found {
             match found {
-                Found::Pair(pair) => self.take_pair(&pair, scene, report),
+                Found::Pair(pair) => self.offer(&pair, scene, report),
                 Found::Missed { time, reason } => {
                     report.refuse(scene.now, subject, reason, || {
                         format!(
@@ -368,7 +414,6 @@ impl Channel {
         }
         if self.publishing.is_due(scene.now) || self.outlook.is_due(scene.now) {
             self.judge(scene, report);
-            self.publishing.expire(scene, report);
             self.outlook.expire(scene, report);
         }
         let silent = self.silent(scene);

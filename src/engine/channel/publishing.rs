@@ -1,4 +1,5 @@
-//! Fifth station: when a new correction is issued, how long it holds, and when it is withdrawn.
+//! Fifth station: when a new correction is issued and how long it holds. Whether it is issued at
+//! all, held or taken back is the ladder's to decide.
 //!
 //! *Dead zone*: a correction is applied from |ĉ| ≥ 2u and dropped below 1u; while it is suppressed
 //! the document's polynomial is zero and the largest |ĉ(t)| over its validity is inside U.
@@ -19,9 +20,10 @@ use super::judgement::{Judgement, polynomial, variance_at};
 use super::review::MOVED_PART;
 use super::stretch::Learned;
 use super::{Scene, conformity};
-use crate::event::{Corrected, Correction, Output, WindowSeen};
+use crate::event::{Cause, Corrected, Correction, Output, Rung, WindowSeen};
 use crate::fit::Published;
 use crate::report::Report;
+use crate::setup::ChannelSetup;
 use crate::time::{Duration, Timestamp};
 use crate::track::Sample;
 use serde::{Deserialize, Serialize};
@@ -38,6 +40,9 @@ const NEGLIGIBLE: f64 = 1e-9;
 /// Instants at which two polynomials are compared over the validity; polynomials of degree ≤ 5
 /// can't hide a difference of note between nine of them.
 const COMPARED: u32 = 8;
+
+/// While a correction is held, its u is looked at in as many parts of the time that is left.
+const HOLD_LOOKS: i64 = 16;
 
 /// The state of the station.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -152,11 +157,10 @@ impl Publishing {
             return;
         }
         self.issued += 1;
-        let validity = candidate.valid_until.since(candidate.issued).0;
         self.in_force = Some(InForce {
             rest_variance: judgement.rest_variance,
             suppressed_size: hidden,
-            review: candidate.issued.plus(Duration(validity / 4 * 3)),
+            review: renewal(&candidate),
             correction: Box::new(candidate.clone()),
         });
         report.say(Output::Correction(Box::new(candidate)));
@@ -167,28 +171,61 @@ impl Publishing {
         self.wake().is_some_and(|review| review <= now)
     }
 
-    /// After a review that brought no new document: withdraws what has expired, else looks again
-    /// when it does.
-    pub(crate) fn expire(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+    /// Whether the correction in force no longer holds; else it is looked at again when it ends.
+    pub(crate) fn has_expired(&mut self, now: Timestamp) -> bool {
+        let Some(held) = &mut self.in_force else {
+            return false;
+        };
+        let end = held.correction.valid_until;
+        if held.review <= now {
+            held.review = end;
+        }
+        now >= end
+    }
+
+    /// How long the correction in force may be held.
+    pub(crate) fn hold_limit(&self, setup: &ChannelSetup) -> Duration {
+        setup.hold_limit.unwrap_or_else(|| {
+            self.correction()
+                .map_or(Duration::ZERO, |document| horizon(&document.window, 4))
+        })
+    }
+
+    /// Holds the correction in force until `until`: a document is issued when this begins, when its
+    /// cause changes, and each time that u has grown by a publish step.
+    pub(crate) fn hold(
+        &mut self,
+        until: Timestamp,
+        because: Cause,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
         let Some(held) = &mut self.in_force else {
             return;
         };
-        let end = held.correction.valid_until;
-        if scene.now >= end {
-            self.in_force = None;
-            self.applied = false;
-            report.say(Output::Withdrawn {
-                channel: scene.id,
-                at: scene.now,
-                why: format!(
-                    "{}: the correction expired at {end} and no new pair has come to renew \
-                     it; look at reference {}",
-                    scene.setup.name, scene.reference.name
-                ),
-            });
-        } else if held.review <= scene.now {
-            held.review = end;
+        let candidate = held_correction(held, until, because, scene);
+        let before = &held.correction;
+        let u = candidate.standard_uncertainty;
+        let grown = u - before.standard_uncertainty > scene.setup.publish.step * u;
+        let outlived = scene.now >= renewal(before) && candidate.valid_until > before.valid_until;
+        let said = |document: &Correction| (document.rung, document.because);
+        let news = said(before) != said(&candidate) || grown || outlived;
+        if news && u.is_finite() {
+            self.issued += 1;
+            *held.correction = Correction {
+                issue_number: self.issued,
+                ..candidate
+            };
+            report.say(Output::Correction(held.correction.clone()));
         }
+        let look = Duration(until.since(scene.now).0 / HOLD_LOOKS + 1);
+        let next = scene.now.plus(look).min(until);
+        let renewal = renewal(&held.correction);
+        held.review = if renewal > scene.now {
+            next.min(renewal)
+        } else {
+            next
+        };
     }
 
     /// Applies the correction in force to an indication.
@@ -237,6 +274,8 @@ impl Publishing {
             issued: scene.now,
             valid_from: scene.now,
             valid_until,
+            rung: Rung::Advise,
+            because: None,
             origin: published.origin,
             degree: published.degree,
             weights: published.weights.clone(),
@@ -274,6 +313,7 @@ impl Publishing {
         let said = |document: &Correction| {
             (
                 document.stretch,
+                document.rung,
                 document.degree,
                 document.suppressed,
                 document.zone,
@@ -297,6 +337,56 @@ impl Publishing {
             || expanded.abs() > candidate.coverage_factor * step
             || (hidden - in_force.suppressed_size).abs() > step
             || greatest_difference(held, candidate) > step
+    }
+}
+
+/// When three quarters of a document's validity have passed.
+fn renewal(document: &Correction) -> Timestamp {
+    let validity = document.valid_until.since(document.issued).0;
+    document.issued.plus(Duration(validity / 4 * 3))
+}
+
+/// The correction in force as it is to be said while it is held: the same polynomial, with the
+/// uncertainty that it has by now. A polynomial's covariance grows with the distance from its
+/// pairs. A constant's does not; a slope of zero joins it, as uncertain as that of a straight line
+/// through the same window (12 u²/T², from the variance of evenly spread times).
+fn held_correction(
+    held: &InForce,
+    until: Timestamp,
+    because: Cause,
+    scene: &Scene<'_>,
+) -> Correction {
+    let mut document = (*held.correction).clone();
+    let covered = document.window.to.since(document.window.from).days();
+    if let [row] = document.covariance.as_slice()
+        && let [variance] = row[..]
+        && covered > 0.0
+    {
+        document.zero.push(0.0);
+        let slope = 12.0 * variance / (covered * covered);
+        document.covariance = vec![vec![variance, 0.0], vec![0.0, slope]];
+    }
+    let days = scene.now.since(document.origin).days();
+    let correction = polynomial(&document.zero, days) + 0.0;
+    let u = (variance_at(&document.covariance, days) + held.rest_variance).sqrt();
+    let expanded = document.coverage_factor * u + held.suppressed_size;
+    if !document.suppressed {
+        let conformity = conformity::state(correction, u, document.coverage_factor * u, scene);
+        document.zone = conformity.zone();
+        document.accepted = conformity.accepted();
+    }
+    Correction {
+        issued: scene.now,
+        valid_from: scene.now,
+        // A consumer that misses the next one must not hold it longer than permitted.
+        valid_until: until.min(scene.now.plus(scene.setup.publish.max_age)),
+        rung: Rung::Hold,
+        because: Some(because),
+        correction,
+        standard_uncertainty: u,
+        expanded_uncertainty: expanded,
+        corrected_zone: conformity::state(0.0, u, expanded, scene).zone(),
+        ..document
     }
 }
 

@@ -1,4 +1,5 @@
-//! When the fit is judged anew, and what follows from it: judgement → publishing → alarms.
+//! When the fit is judged anew, and what follows from it: judgement → ladder and publishing →
+//! alarms.
 
 use super::judgement::{self, Judgement};
 use super::{Channel, Scene};
@@ -72,41 +73,15 @@ impl Channel {
     /// Judges the fit as it is now; publishes and alarms as needed.
     pub(super) fn judge(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
         let fresh = self.stretch.begin_judgement();
-        let declared = judgement::declared_variance(scene.setup, scene.reference);
-        let Some(published) = self.stretch.fit().published_at_least(declared) else {
-            return;
-        };
-        let Some(judgement) = Judgement::of(published, self.stretch.residuals(), scene) else {
-            report.notice(
-                scene.now,
-                Subject::Channel(scene.id),
-                "fit-not-finite",
-                || {
-                    format!(
-                        "{}: the fit's numbers are too large to hold; look at the indications and \
-                         the reference values",
-                        scene.setup.name
-                    )
-                },
-            );
-            return;
-        };
-        let leading = leading(&judgement.published.weights);
-        self.stretch.note_judged(Judged {
-            degree: judgement.published.degree,
-            correction: 0.0 - judgement.error,
-            u: judgement.u,
-            conformity: judgement.conformity,
-            plain: self.plain(leading),
-            leading,
-            group: self.stretch.fit().newest_group(),
-        });
-        if !scene.setup.monitor_only {
-            let learned = self.stretch.learned();
-            self.publishing.consider(&judgement, learned, scene, report);
+        let judgement = self.judgement(scene, report);
+        if let Some(judgement) = &judgement {
+            self.note_judged(judgement);
         }
+        self.climb(judgement.as_ref(), scene, report);
+        let Some(judgement) = judgement else { return };
         let correction = self.publishing.correction();
         let corrected_zone = correction.and_then(|document| document.corrected_zone);
+        let declared = judgement::declared_variance(scene.setup, scene.reference);
         let forecast = self.outlook.consider(
             &judgement,
             (self.stretch.fit(), declared),
@@ -124,6 +99,45 @@ impl Channel {
             let drifts = 1.0 - steady >= DRIFT_WEIGHT;
             self.alarms.forecast(forecast, drifts, scene, report);
         }
+    }
+
+    /// What the fit means now; `None` while there is none, or where its numbers can't be held.
+    pub(super) fn judgement(
+        &self,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) -> Option<Judgement> {
+        let declared = judgement::declared_variance(scene.setup, scene.reference);
+        let published = self.stretch.fit().published_at_least(declared)?;
+        let judgement = Judgement::of(published, self.stretch.residuals(), scene);
+        if judgement.is_none() {
+            report.notice(
+                scene.now,
+                Subject::Channel(scene.id),
+                "fit-not-finite",
+                || {
+                    format!(
+                        "{}: the fit's numbers are too large to hold; look at the indications and \
+                         the reference values",
+                        scene.setup.name
+                    )
+                },
+            );
+        }
+        judgement
+    }
+
+    fn note_judged(&mut self, judgement: &Judgement) {
+        let leading = leading(&judgement.published.weights);
+        self.stretch.note_judged(Judged {
+            degree: judgement.published.degree,
+            correction: 0.0 - judgement.error,
+            u: judgement.u,
+            conformity: judgement.conformity,
+            plain: self.plain(leading),
+            leading,
+            group: self.stretch.fit().newest_group(),
+        });
     }
 }
 

@@ -10,6 +10,7 @@ use super::screening::{Innovation, Screen, Verdict};
 use crate::event::{RefusedReason, Rejection};
 use crate::fit::before::Gone;
 use crate::fit::{Change, Fit, Row};
+use crate::fleet::Vote;
 use crate::setup::{ChannelSetup, SpanSide, WindowLength};
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
@@ -260,7 +261,6 @@ impl Stretch {
     /// Takes all pairs from `instant` on out of the fit again. (Rows that left the window meanwhile
     /// do not come back.) What was learned of the noise and of the range stays: a bad reference
     /// says nothing about the sensor's.
-    #[allow(dead_code, reason = "a suspect reference takes its rows back out")]
     pub(super) fn rewind(&mut self, instant: Timestamp, recent: &Recent, setup: &ChannelSetup) {
         let before = self.fit.window().rows();
         self.fit = self.fit_before(instant, recent, setup);
@@ -279,6 +279,23 @@ impl Stretch {
             reason: RefusedReason::Late,
             value: began.since(pair.time).seconds(),
             threshold: 0.0,
+        })
+    }
+
+    /// What a pair says about its reference; `None` while the fit expects nothing, or can't be
+    /// relied on.
+    pub(super) fn vote(&self, pair: &Pair, setup: &ChannelSetup) -> Option<Vote> {
+        if self.is_locked_out() || self.fit.window().is_too_old(pair.time) {
+            return None;
+        }
+        let innovation = self.innovation(pair, pair.indication - pair.reference, setup)?;
+        let least = setup.noise.max(setup.resolution / 12.0_f64.sqrt());
+        let sd = innovation.residual_sd.max(least) * innovation.spread;
+        (sd > 0.0 && sd.is_finite()).then_some(Vote {
+            time: pair.time.minus(setup.lag),
+            innovation: innovation.value,
+            sd,
+            indication: pair.indication,
         })
     }
 

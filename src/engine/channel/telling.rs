@@ -50,6 +50,19 @@ pub(super) fn tell_unattached(
     });
 }
 
+/// Says that a pair was kept out because of its reference. It is counted, but people are told once,
+/// on the reference.
+pub(super) fn tell_struck(
+    pair: &Pair,
+    rejection: Rejection,
+    scene: &Scene<'_>,
+    report: &mut Report<'_>,
+) {
+    let subject = Subject::Channel(scene.id);
+    report.counters.add(subject, rejection.reason);
+    report.say(fate(pair, Some(rejection), scene));
+}
+
 fn fate(pair: &Pair, rejected: Option<Rejection>, scene: &Scene<'_>) -> Output {
     Output::Pair(PairFate {
         channel: scene.id,

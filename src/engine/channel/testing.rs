@@ -42,6 +42,7 @@ impl Stage {
                 uncertainty_common: 0.0,
                 certificate: None,
                 expires: None,
+                expiry_notice: Duration::ZERO,
                 stale_after: None,
                 stands_for: Duration::ZERO,
                 stamped: Stamped::End,
@@ -73,6 +74,8 @@ impl Stage {
             now,
             alive: now,
             resumed: None,
+            trouble: None,
+            watched: false,
         };
         let mut report = Report {
             outputs: &mut outputs,
@@ -119,6 +122,9 @@ pub(crate) fn channel_setup() -> ChannelSetup {
         resolution: 0.0,
         noise: 0.0,
         max_drift_rate: None,
+        max_correction: None,
+        max_correction_rate: None,
+        hold_limit: None,
         coverage: 0.95,
         publish: PublishSetup {
             step: 0.5,

@@ -15,6 +15,14 @@ pub enum AlarmKind {
     TimeToLimit,
     /// No reference value for too long.
     ReferenceStale,
+    /// A reference stepped against all its channels at once.
+    ReferenceStep,
+    /// A reference repeats one value while its channels move.
+    ReferenceStuck,
+    /// A reference's certificate expires soon, or has expired.
+    CertificateExpiry,
+    /// The correction needed is larger, or changes faster, than permitted.
+    CorrectionLimit,
     /// No indication for too long.
     DataGap,
     /// The screen rejected so many in a row that it stopped: a step or a bad reference.

@@ -1,5 +1,6 @@
 //! A correction and what it rests on.
 
+use crate::event::{Cause, Rung};
 use crate::setup::{ChannelId, DecisionRule};
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
@@ -17,6 +18,10 @@ pub struct Correction {
     pub valid_from: Timestamp,
     /// Until when it holds.
     pub valid_until: Timestamp,
+    /// Where on the fail-safe ladder it was issued: [`Rung::Advise`] or [`Rung::Hold`].
+    pub rung: Rung,
+    /// Why it is not [`Rung::Advise`].
+    pub because: Option<Cause>,
     /// Zero of the polynomial's time.
     pub origin: Timestamp,
     /// The announced degree.
@@ -28,9 +33,10 @@ pub struct Correction {
     /// Whether the dead zone suppresses the correction: then `zero` is all zeros and |ĉ| is inside
     /// U.
     pub suppressed: bool,
-    /// c at the newest pair.
+    /// c at the newest pair; while held, at issue.
     pub correction: f64,
-    /// Standard uncertainty of the corrected value's systematic part at the newest pair.
+    /// Standard uncertainty of the corrected value's systematic part at the newest pair; while
+    /// held, at issue.
     pub standard_uncertainty: f64,
     /// k.
     pub coverage_factor: f64,

@@ -105,6 +105,8 @@ pub enum RefusedReason {
     TooFast,
     /// No value of an influence quantity near enough in time to enter the fit with the pair.
     NoInfluence,
+    /// Its reference value is not to be trusted: all channels of the reference disagree with it.
+    ReferenceDoubted,
 }
 
 /// Rows from the record, given back: the answer to one

@@ -11,6 +11,7 @@ mod answer;
 mod correction;
 mod degree;
 mod input;
+mod ladder;
 mod notice;
 mod order;
 mod outlook;
@@ -22,6 +23,7 @@ pub use answer::{ComparedPoint, Comparison, Fouling, OrderAnswer, SawTooth, Serv
 pub use correction::{Corrected, Correction, CriterionValues, WindowSeen, Zone};
 pub use degree::{DegreeChange, Evidence};
 pub use input::{Gate, Reading, Refused, RefusedReason, Source, Supplied};
+pub use ladder::{Cause, Rung, Status};
 pub use notice::Notice;
 pub use order::{About, Act, CheckPoint, Order, Problem, ReplyTo, ServiceEvent, Wish};
 pub use outlook::{

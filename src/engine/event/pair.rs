@@ -31,6 +31,7 @@ pub struct PairFate {
 /// - *Flat line*: the n-th repeat of one value is suspect from n = `suspect` on and fails from n =
 ///   `fail` on; the value itself counts as none.
 /// - A pair without its influence quantities is suspect: nothing tells what it means.
+/// - *Reference*: a value that all channels of its reference disagree with is suspect.
 /// - Every other test knows pass and fail only.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
 #[serde(into = "u8", try_from = "u8")]
@@ -70,7 +71,7 @@ impl Flag {
                 threshold,
             }) => Self::of_deviation(value, threshold, SPIKE_FAILS * threshold),
             Some(Rejection {
-                reason: RefusedReason::NoInfluence,
+                reason: RefusedReason::NoInfluence | RefusedReason::ReferenceDoubted,
                 ..
             }) => Self::Suspect,
             Some(_) => Self::Fail,

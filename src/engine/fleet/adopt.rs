@@ -2,7 +2,8 @@
 
 use super::agenda::Agenda;
 use super::pulse::Pulse;
-use super::{Fleet, Reference, silence};
+use super::reference::Reference;
+use super::{Fleet, trust};
 use crate::channel::Channel;
 use crate::event::{Source, Subject};
 use crate::report::Report;
@@ -13,7 +14,7 @@ use crate::setup::{
 use crate::time::{Duration, Timestamp};
 use crate::track::Track;
 use serde::{Deserialize, Serialize};
-use std::collections::BTreeMap;
+use std::collections::{BTreeMap, BTreeSet};
 
 /// Removed channels whose last issue number is remembered. Beyond that the first by name are
 /// forgotten, and would count from one again.
@@ -41,6 +42,9 @@ pub(super) struct Routes {
     reference_memory: Vec<Duration>,
     /// By source of an influence quantity: how long its values are kept.
     influence_memory: Vec<Duration>,
+    /// By reference: whether its channels judge it before they take its values, and how long their
+    /// votes may then lie apart.
+    watched: Vec<Option<Duration>>,
     /// The shortest silence that any alarm asks about.
     pub(super) quiet_after: Option<Duration>,
     /// The longest time that anything here looks back on, at least a day: a recording's time leaps
@@ -59,6 +63,7 @@ impl Routes {
             indication_memory: vec![Duration::ZERO; setup.channels.len()],
             reference_memory: vec![Duration::ZERO; setup.references.len()],
             influence_memory: vec![Duration::ZERO; setup.influences.len()],
+            watched: Vec::new(),
             quiet_after: None,
             reach: reach(setup),
             several_sources: false,
@@ -95,6 +100,12 @@ impl Routes {
                 *kept = influence_memory(memory, channel).max(*kept);
             }
         }
+        routes.watched = (0..setup.references.len())
+            .map(|index| {
+                let users = &routes.reference_users[index];
+                trust::is_watched(setup, index, users).then(|| trust::patience(setup, users))
+            })
+            .collect();
         let gaps = setup.channels.iter().filter_map(|c| c.alarms.gap_after);
         let ages = setup.references.iter().filter_map(|r| r.stale_after);
         routes.quiet_after = gaps.chain(ages).min();
@@ -105,6 +116,16 @@ impl Routes {
         routes.several_sources =
             setup.channels.len() + measured.count() + setup.influences.len() > 1;
         routes
+    }
+
+    /// Whether the reference of this position is judged by its channels.
+    pub(super) fn is_watched(&self, reference: usize) -> bool {
+        self.watched[reference].is_some()
+    }
+
+    /// How long the votes about it may lie apart.
+    pub(super) fn patience(&self, reference: usize) -> Duration {
+        self.watched[reference].unwrap_or(Duration::ZERO)
     }
 
     pub(super) fn group_users(&self, id: ChannelId) -> &[usize] {
@@ -193,6 +214,7 @@ impl Fleet {
     /// certificates …); the others start anew. Everything said here bears the positions of the
     /// configuration that is replaced.
     pub(crate) fn adopt(&mut self, setup: &Setup, report: &mut Report<'_>) {
+        self.settle_references(report);
         let mut old = std::mem::take(self);
         let same_clock = old.setup.clock == setup.clock;
         let mut taken = vec![false; old.channels.len()];
@@ -229,18 +251,7 @@ impl Fleet {
                 indications.push(Track::default());
             }
         }
-        let mut references = Vec::with_capacity(setup.references.len());
-        let mut taken_references = vec![false; old.references.len()];
-        for reference in &setup.references {
-            let kept = old.setup.references.iter().position(|before| {
-                same_clock && same_reference(&old.setup, before, setup, reference)
-            });
-            references.push(kept.map_or_else(Reference::default, |index| {
-                taken_references[index] = true;
-                old.edit_reference(index, reference, report);
-                old.references[index].clone()
-            }));
-        }
+        let (references, taken_references) = old.carry_references(setup, same_clock, report);
         let influences = setup.influences.iter().map(|influence| {
             let mut before = old.setup.influences.iter();
             let kept = before.position(|before| same_clock && before == influence);
@@ -262,6 +273,7 @@ impl Fleet {
             retired: old.retire(setup),
             agenda: Agenda::default(),
             orders: old.orders.clone(),
+            heard: BTreeSet::new(),
         };
         report.leaps.settle();
         self.schedule_all();
@@ -272,6 +284,29 @@ impl Fleet {
         let new_place = |subject| self.moved(&old.setup, subject);
         report.counters.renumber(new_place);
         report.notices.renumber(new_place);
+    }
+
+    /// The references of a new configuration, with the state of those that mean the same as before;
+    /// and which of the old ones those are.
+    fn carry_references(
+        &mut self,
+        setup: &Setup,
+        same_clock: bool,
+        report: &mut Report<'_>,
+    ) -> (Vec<Reference>, Vec<bool>) {
+        let mut references = Vec::with_capacity(setup.references.len());
+        let mut taken_references = vec![false; self.references.len()];
+        for reference in &setup.references {
+            let kept = self.setup.references.iter().position(|before| {
+                same_clock && same_reference(&self.setup, before, setup, reference)
+            });
+            references.push(kept.map_or_else(Reference::default, |index| {
+                taken_references[index] = true;
+                self.edit_reference(index, setup, reference, report);
+                self.references[index].clone()
+            }));
+        }
+        (references, taken_references)
     }
 
     /// The numbers to go on from of channels that are not in the new configuration.
@@ -337,20 +372,6 @@ impl Fleet {
         self.channels[index].edit(id, after, now, report);
     }
 
-    /// Prepares a reference that stays for its edited setup: an alarm whose limit is gone goes too.
-    fn edit_reference(&mut self, index: usize, after: &ReferenceSetup, report: &mut Report<'_>) {
-        if after.stale_after.is_some() {
-            return;
-        }
-        let stale = std::mem::take(&mut self.references[index].stale);
-        if stale.is_raised() {
-            let now = self.now.unwrap_or(Timestamp(0));
-            let id =
-                ReferenceId(u32::try_from(index).expect("as many references as a u32 numbers"));
-            report.say(silence::stale_dismissed(id, &after.name, now));
-        }
-    }
-
     /// Withdraws the corrections and clears the alarms of channels that do not stay.
     fn dismiss_channels(&self, stay: &[bool], report: &mut Report<'_>) {
         let now = self.now.unwrap_or(Timestamp(0));
@@ -358,17 +379,6 @@ impl Fleet {
         for ((id, channel), setup) in channels.filter(|((id, _), _)| !stay[*id as usize]) {
             let why = "the channel was removed or its configuration changed";
             channel.dismiss(ChannelId(id), setup, now, why, report);
-        }
-    }
-
-    /// Clears the alarms of references that do not stay.
-    fn dismiss_references(&self, stay: &[bool], report: &mut Report<'_>) {
-        let now = self.now.unwrap_or(Timestamp(0));
-        let references = (0..).zip(&self.references).zip(&self.setup.references);
-        for ((id, reference), setup) in references.filter(|((id, _), _)| !stay[*id as usize]) {
-            if reference.stale.is_raised() {
-                report.say(silence::stale_dismissed(ReferenceId(id), &setup.name, now));
-            }
         }
     }
 

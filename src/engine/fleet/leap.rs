@@ -158,6 +158,7 @@ impl Fleet {
                  up, channels with such pairs start anew; look at the host's time service"
             )
         });
+        self.settle_references(report);
         let edge = to.plus(CLOCKS_DIFFER);
         self.now = Some(to);
         self.pulse.step_back(to);

@@ -45,9 +45,16 @@ impl Fleet {
         Some(self.pulse.resumed().map_or(last, |time| time.max(last)))
     }
 
-    /// From when on the reference is to be watched: when it becomes stale if nothing comes; now,
-    /// while it is stale or before its silence has begun to count; never without a limit.
+    /// From when on the reference is to be watched.
     pub(super) fn watched_from(&self, index: usize) -> Option<Timestamp> {
+        let round = self.references[index].watch.deadline();
+        let due = [self.silence_due(index), self.certificate_due(index), round];
+        due.into_iter().flatten().min()
+    }
+
+    /// When it becomes stale if nothing comes; now, while it is stale or before its silence has
+    /// begun to count; never without a limit.
+    fn silence_due(&self, index: usize) -> Option<Timestamp> {
         let limit = self.limit(index)?;
         let silent_since = self
             .silent_since(index)
@@ -66,9 +73,11 @@ impl Fleet {
         }
     }
 
-    /// Raises or clears the reference's stale alarm.
+    /// Looks at all that time may bring about for a reference.
     pub(super) fn watch_reference(&mut self, index: usize, report: &mut Report<'_>) {
         self.judge_silence(index, report);
+        self.watch_certificate(index, report);
+        self.watch_round(index, report);
         self.schedule_reference(index);
     }
 
@@ -98,6 +107,7 @@ impl Fleet {
                 ReferenceId(u32::try_from(index).expect("as many references as a u32 numbers"));
             let name = &self.setup.references[index].name;
             report.say(stale_change(id, name, step, now, silent, limit));
+            self.tell_channels(index, report);
         }
     }
 }
@@ -114,8 +124,8 @@ fn stale_change(
         format!("reference {name} gives values again")
     } else {
         format!(
-            "reference {name} has given no value for {:.1} h (limit {:.1} h); its channels keep \
-             their last correction until it expires; look at the reference and its link",
+            "reference {name} has given no value for {:.1} h (limit {:.1} h); its channels hold \
+             their last correction for a limited time; look at the reference and its link",
             hours(silent),
             hours(limit)
         )
@@ -130,21 +140,6 @@ fn stale_change(
         limit: hours(limit),
         unit: "h".to_owned(),
         text,
-    })
-}
-
-/// The alarm change of a reference that is no longer configured.
-pub(super) fn stale_dismissed(id: ReferenceId, name: &str, now: Timestamp) -> Output {
-    Output::Alarm(AlarmChange {
-        subject: Subject::Reference(id),
-        kind: AlarmKind::ReferenceStale,
-        state: AlarmState::Normal,
-        at: now,
-        since: now,
-        value: 0.0,
-        limit: 0.0,
-        unit: "h".to_owned(),
-        text: format!("reference {name} was removed or its configuration changed"),
     })
 }
 
@@ -192,14 +187,6 @@ pub(super) fn data_gap_standing(subject: Subject, state: AlarmState) -> AlarmSta
     AlarmStanding {
         subject,
         kind: AlarmKind::DataGap,
-        state,
-    }
-}
-
-pub(super) fn stale_standing(subject: Subject, state: AlarmState) -> AlarmStanding {
-    AlarmStanding {
-        subject,
-        kind: AlarmKind::ReferenceStale,
         state,
     }
 }

@@ -41,6 +41,14 @@ pub struct ChannelSetup {
     pub noise: f64,
     /// Largest drift rate that needs no attention, unit per day; `None`: no such alarm.
     pub max_drift_rate: Option<f64>,
+    /// Largest correction that may be advised, either sign; `None`: the maximum permissible error,
+    /// where there is one. (A sensor that needs more is to be serviced, not corrected.)
+    pub max_correction: Option<f64>,
+    /// Fastest change of the correction that may be advised, unit per day; `None`: any.
+    pub max_correction_rate: Option<f64>,
+    /// How long the last correction may stand while it can't be kept up to date; `None`: a quarter
+    /// of the time that the fit's window covers.
+    pub hold_limit: Option<Duration>,
     /// Probability that the coverage interval is to have, e.g. 0.95.
     pub coverage: f64,
     /// When a new correction document is issued.

@@ -21,6 +21,8 @@ pub struct ReferenceSetup {
     pub certificate: Option<String>,
     /// When the certificate expires.
     pub expires: Option<Timestamp>,
+    /// So long before that, somebody is told.
+    pub expiry_notice: Duration,
     /// The reference is stale when its newest value is older than this; `None`: never.
     pub stale_after: Option<Duration>,
     /// How long a stretch of time each value stands for (an hourly mean); zero for a sample at an

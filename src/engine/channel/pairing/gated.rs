@@ -33,7 +33,7 @@ pub(crate) fn holding(checks: &[Check<'_>], instant: Timestamp) -> Holding {
         holding = match (check.gate.is_open(instant), holding) {
             (Some(false), before) => before,
             (Some(true), Holding::None) => Holding::One(check.value),
-            (Some(true), _) | (None, _) => return Holding::Unknown,
+            (Some(true) | None, _) => return Holding::Unknown,
         };
     }
     holding

@@ -203,6 +203,7 @@ impl Fleet {
         service: Service<'_>,
         report: &mut Report<'_>,
     ) -> Serviced {
+        self.trust_reference(id, report);
         let mut stretches = Vec::new();
         for user in self.routes.reference_users(id).to_vec() {
             let mut stretch = None;

@@ -1,0 +1,286 @@
+//! The fail-safe ladder: whether a correction is kept up to date, held, taken back, or not there at
+//! all. It is the only place that decides about that; publishing only carries it out.
+//!
+//! ```text
+//!             first correction               trouble
+//!   Raw only ─────────────────▶ Advise ─────────────────────▶ Hold
+//!                                ▲  │ ◀──────────────────────  │
+//!                  trouble gone, │  │       trouble gone       │ held as long as permitted
+//!                  a new one     │  │                          │
+//!                                │  └──────▶ Withdrawn ◀───────┘
+//!                                │             │  no pair for as long as the fit reaches, or
+//!                                └─────────────┘  trouble while there is nothing to hold
+//! ```
+//!
+//! Trouble is whatever makes the newest correction doubtful: its reference, a screen that is locked
+//! out, a correction too large or too fast ([`Cause`]). While it lasts the last correction stands,
+//! its uncertainty growing with that of the drift rate.
+
+use super::conditions::beyond;
+use super::judgement::Judgement;
+use super::limits::Bounds;
+use super::{Channel, Scene};
+use crate::alarm::Condition;
+use crate::event::{Cause, Output, Rung};
+use crate::report::Report;
+use crate::time::{Duration, Timestamp};
+use serde::{Deserialize, Serialize};
+
+/// Where a channel stands.
+#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub(super) enum Ladder {
+    /// No correction was ever issued, or none may be.
+    #[default]
+    RawOnly,
+    /// Corrections are kept up to date.
+    Advise,
+    /// The last one stands.
+    Hold {
+        /// From when on.
+        since: Timestamp,
+        /// The gravest reason of now.
+        because: Cause,
+    },
+    /// It was taken back.
+    Withdrawn {
+        /// The gravest reason of now, or of then if none is left.
+        because: Cause,
+    },
+}
+
+impl Ladder {
+    /// The rung.
+    pub(super) fn rung(self) -> Rung {
+        match self {
+            Self::RawOnly => Rung::RawOnly,
+            Self::Advise => Rung::Advise,
+            Self::Hold { .. } => Rung::Hold,
+            Self::Withdrawn { .. } => Rung::Withdrawn,
+        }
+    }
+
+    /// Why it is not the first one.
+    pub(super) fn because(self) -> Option<Cause> {
+        match self {
+            Self::RawOnly => Some(Cause::NothingLearned),
+            Self::Advise => None,
+            Self::Hold { because, .. } | Self::Withdrawn { because } => Some(because),
+        }
+    }
+
+    /// Trouble stands at `now`, with or without a correction in force that could be held for
+    /// `limit`.
+    fn suffer(self, because: Cause, in_force: bool, now: Timestamp, limit: Duration) -> Self {
+        let since = match self {
+            Self::RawOnly if !in_force => return self,
+            Self::Hold { since, .. } => since,
+            Self::RawOnly | Self::Advise | Self::Withdrawn { .. } => now,
+        };
+        if in_force && now < since.plus(limit) {
+            Self::Hold { since, because }
+        } else {
+            Self::Withdrawn { because }
+        }
+    }
+
+    /// No trouble stands.
+    fn recover(self, in_force: bool) -> Self {
+        match self {
+            _ if in_force => Self::Advise,
+            Self::Advise | Self::Hold { .. } => Self::Withdrawn {
+                because: Cause::NotRenewed,
+            },
+            Self::RawOnly | Self::Withdrawn { .. } => self,
+        }
+    }
+
+    /// Now was wrong and steps back.
+    pub(super) fn step_back(&mut self, to: Timestamp) {
+        if let Self::Hold { since, .. } = self {
+            *since = (*since).min(to);
+        }
+    }
+}
+
+impl Channel {
+    /// Moves the channel to the rung where it belongs, and carries out what follows for its
+    /// correction. `judgement`: what its fit means now; `None` while it means nothing.
+    pub(super) fn climb(
+        &mut self,
+        judgement: Option<&Judgement>,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) {
+        if scene.setup.monitor_only {
+            self.ladder = Ladder::RawOnly;
+            return;
+        }
+        if let Some(because) = self.trouble(judgement, scene) {
+            let in_force = self.publishing.correction().is_some();
+            let limit = self.publishing.hold_limit(scene.setup);
+            self.ladder = self.ladder.suffer(because, in_force, scene.now, limit);
+            match self.ladder {
+                Ladder::Hold { since, because } => {
+                    let until = since.plus(limit);
+                    self.publishing.hold(until, because, scene, report);
+                }
+                _ => self.take_back(because, scene, report),
+            }
+            return;
+        }
+        if let Some(judgement) = judgement {
+            let learned = self.stretch.learned();
+            self.publishing.consider(judgement, learned, scene, report);
+        }
+        if self.publishing.has_expired(scene.now) {
+            self.take_back(Cause::NotRenewed, scene, report);
+        }
+        let in_force = self.publishing.correction().is_some();
+        self.ladder = self.ladder.recover(in_force);
+    }
+
+    /// Rows were taken back out of the fit: what is held from now on is to rest on the others.
+    pub(super) fn renew(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
+        if self.ladder != Ladder::Advise {
+            return;
+        }
+        if let Some(judgement) = self.judgement(scene, report) {
+            let learned = self.stretch.learned();
+            self.publishing.consider(&judgement, learned, scene, report);
+        }
+    }
+
+    /// Takes the correction in force back, if there is one.
+    fn take_back(&mut self, because: Cause, scene: &Scene<'_>, report: &mut Report<'_>) {
+        if self.publishing.forget() {
+            let why = why(because, &scene.reference.name);
+            report.say(Output::Withdrawn {
+                channel: scene.id,
+                at: scene.now,
+                why: format!("{}: {why}", scene.setup.name),
+            });
+        }
+    }
+
+    /// The gravest trouble that stands.
+    fn trouble(&self, judgement: Option<&Judgement>, scene: &Scene<'_>) -> Option<Cause> {
+        let locked_out = self
+            .stretch
+            .is_locked_out()
+            .then_some(Cause::ScreenLockedOut);
+        let bounds = Bounds::of(scene.setup);
+        let size = judgement.and_then(|judgement| {
+            let deadband = scene.setup.alarms.deadband * judgement.u;
+            self.past(
+                Cause::CorrectionSize,
+                judgement.error,
+                bounds.size?,
+                deadband,
+            )
+        });
+        let rate = judgement.and_then(|judgement| {
+            let deadband = scene.setup.alarms.deadband * judgement.slope_u;
+            self.past(
+                Cause::CorrectionRate,
+                judgement.slope,
+                bounds.rate?,
+                deadband,
+            )
+        });
+        scene.trouble.or(locked_out).or(size).or(rate)
+    }
+
+    /// Whether a value is past its limit, or was and is not yet clear of it by the deadband.
+    fn past(&self, cause: Cause, value: f64, limit: f64, deadband: f64) -> Option<Cause> {
+        let stands = match beyond(value, limit, deadband) {
+            Condition::Holds => true,
+            Condition::Between => self.ladder.because() == Some(cause),
+            Condition::Gone => false,
+        };
+        stands.then_some(cause)
+    }
+}
+
+/// Why a correction was taken back, and what to do.
+fn why(because: Cause, reference: &str) -> String {
+    match because {
+        Cause::ReferenceStep | Cause::ReferenceStuck => format!(
+            "the correction was held as long as permitted and reference {reference} is still not \
+             to be trusted; look at the reference"
+        ),
+        Cause::ReferenceStale => format!(
+            "the correction was held as long as permitted and reference {reference} still gives \
+             no value; look at the reference and its link"
+        ),
+        Cause::ScreenLockedOut => format!(
+            "the readings do not fit what was learned; look at the sensor and at reference \
+             {reference}"
+        ),
+        Cause::CorrectionSize => {
+            "the correction would be larger than permitted; service or recalibrate the sensor"
+                .to_owned()
+        }
+        Cause::CorrectionRate => {
+            "the correction would change faster than permitted; look at the sensor".to_owned()
+        }
+        Cause::NotRenewed | Cause::NothingLearned | Cause::StretchEnded | Cause::MonitorOnly => {
+            format!(
+                "the correction expired and no new pair has come to renew it; look at reference \
+             {reference}"
+            )
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    const LIMIT: Duration = Duration(100);
+    const STALE: Cause = Cause::ReferenceStale;
+
+    #[test]
+    fn a_correction_is_held_for_as_long_as_permitted_and_no_longer() {
+        let held = Ladder::Advise.suffer(STALE, true, Timestamp(10), LIMIT);
+        let since = Timestamp(10);
+        assert_eq!(
+            held,
+            Ladder::Hold {
+                since,
+                because: STALE
+            }
+        );
+        // Another reason does not start the time anew.
+        let because = Cause::ReferenceStep;
+        let still = held.suffer(because, true, Timestamp(109), LIMIT);
+        assert_eq!(still, Ladder::Hold { since, because });
+        let ended = still.suffer(STALE, true, Timestamp(110), LIMIT);
+        assert_eq!(ended, Ladder::Withdrawn { because: STALE });
+        // Trouble that goes on does not climb; only a new correction does.
+        let later = ended.suffer(STALE, false, Timestamp(500), LIMIT);
+        assert_eq!(later.rung(), Rung::Withdrawn);
+        assert_eq!(later.recover(false), later);
+        assert_eq!(later.recover(true), Ladder::Advise);
+    }
+
+    #[test]
+    fn without_a_correction_there_is_nothing_to_hold() {
+        let raw = Ladder::RawOnly.suffer(STALE, false, Timestamp(10), LIMIT);
+        assert_eq!(raw, Ladder::RawOnly);
+        assert_eq!(raw.because(), Some(Cause::NothingLearned));
+        let fallen = Ladder::Advise.suffer(STALE, false, Timestamp(10), LIMIT);
+        assert_eq!(fallen, Ladder::Withdrawn { because: STALE });
+        assert_eq!(
+            Ladder::Advise.recover(false).because(),
+            Some(Cause::NotRenewed)
+        );
+    }
+
+    #[test]
+    fn a_clock_that_steps_back_does_not_prolong_the_hold() {
+        let mut held = Ladder::Advise.suffer(STALE, true, Timestamp(1000), LIMIT);
+        held.step_back(Timestamp(50));
+        let ended = held.suffer(STALE, true, Timestamp(150), LIMIT);
+        assert_eq!(ended.rung(), Rung::Withdrawn);
+    }
+}

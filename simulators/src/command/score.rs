@@ -50,7 +50,7 @@ impl Score {
         let seeds = self
             .seeds
             .unwrap_or(if self.short { SEEDS_SHORT } else { SEEDS });
-        let jobs: Vec<(Scenario, u64)> = scenarios
+        let mut jobs: Vec<(Scenario, u64)> = scenarios
             .iter()
             .flat_map(|scenario| {
                 let one = self.short && self.seeds.is_none() && scenario.large;
@@ -58,6 +58,8 @@ impl Score {
                 (0..seeds).map(|seed| (*scenario, self.seed_base.wrapping_add(seed)))
             })
             .collect();
+        // The longest first, so that no core waits for one of them in the end.
+        jobs.sort_by_key(|(scenario, _)| !scenario.large);
         let bar = progress::bar(Some(jobs.len() as u64), "runs");
         let runs = contest::run(&jobs, contest::cores(), &|| bar.inc(1));
         bar.finish_and_clear();

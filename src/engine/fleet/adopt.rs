@@ -238,16 +238,7 @@ impl Fleet {
                 channels.push(old.channels[index].clone());
                 indications.push(old.indications[index].clone());
             } else {
-                channels.push(match before {
-                    Some(index) => {
-                        let same_unit = old.setup.channels[index].unit == channel.unit;
-                        old.channels[index].anew(channel, same_unit)
-                    }
-                    None => {
-                        let issued = old.retired.get(&channel.name).copied().unwrap_or(0);
-                        Channel::new(channel, issued)
-                    }
-                });
+                channels.push(old.begin_anew(before, channel));
                 indications.push(Track::default());
             }
         }
@@ -307,6 +298,16 @@ impl Fleet {
             }));
         }
         (references, taken_references)
+    }
+
+    /// A channel that begins, with what stays of the one of its name, which stands at `before`.
+    fn begin_anew(&self, before: Option<usize>, after: &ChannelSetup) -> Channel {
+        if let Some(index) = before {
+            let same_unit = self.setup.channels[index].unit == after.unit;
+            return self.channels[index].anew(after, same_unit);
+        }
+        let issued = self.retired.get(&after.name).copied().unwrap_or(0);
+        Channel::new(after, issued)
     }
 
     /// The numbers to go on from of channels that are not in the new configuration.

@@ -24,7 +24,7 @@ struct Done {
 /// What the book knows of an order's id.
 pub(super) enum Known {
     /// It was done; this is the answer.
-    Done(OrderAnswer),
+    Done(Box<OrderAnswer>),
     /// Another order bore it.
     Taken(Problem),
     /// Nothing.
@@ -38,10 +38,10 @@ impl OrderBook {
             return Known::New;
         };
         if done.event == *event {
-            return Known::Done(OrderAnswer {
+            return Known::Done(Box::new(OrderAnswer {
                 reply_to: order.reply_to.clone(),
                 ..done.answer.clone()
-            });
+            }));
         }
         Known::Taken(Problem {
             field: "id".to_owned(),

@@ -25,7 +25,7 @@ impl Fleet {
             Wish::Unusable(problems) => return self.refuse_order(order, problems.clone(), report),
         };
         match self.orders.look_up(order, event) {
-            Known::Done(answer) => return report.say(Output::Answer(Box::new(answer))),
+            Known::Done(answer) => return report.say(Output::Answer(answer)),
             Known::Taken(problem) => return self.refuse_order(order, vec![problem], report),
             Known::New => {}
         }

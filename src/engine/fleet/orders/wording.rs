@@ -26,18 +26,17 @@ pub(super) fn done(serviced: &Serviced, unit: &str) -> String {
 
 /// Why an order was refused.
 pub(super) fn refused(problems: &[Problem]) -> String {
-    let lines: Vec<String> = problems
-        .iter()
-        .map(|problem| {
-            let place = [problem.field.as_str(), problem.value.as_str()];
-            let place: Vec<&str> = place.into_iter().filter(|part| !part.is_empty()).collect();
-            match place.is_empty() {
-                true => problem.way_out.clone(),
-                false => format!("{}: {}", place.join(" "), problem.way_out),
-            }
-        })
-        .collect();
+    let lines: Vec<String> = problems.iter().map(line).collect();
     format!("refused, nothing was changed. {}", lines.join("; "))
+}
+
+/// Field and value, as far as they are known, and the way out.
+fn line(problem: &Problem) -> String {
+    let place = format!("{} {}", problem.field, problem.value);
+    match place.trim() {
+        "" => problem.way_out.clone(),
+        place => format!("{place}: {}", problem.way_out),
+    }
 }
 
 fn stretches(serviced: &Serviced) -> String {
@@ -80,13 +79,11 @@ fn split(fouling: Fouling, unit: &str) -> String {
 }
 
 fn teeth(saw_tooth: SawTooth, unit: &str) -> String {
-    let mut text = format!(" {} cleanings so far", saw_tooth.cleanings);
-    if let Some(days) = saw_tooth.mean_interval_days {
-        text.push_str(&format!(", {} d apart", readable(days)));
-    }
-    if let Some(fouling) = saw_tooth.mean_fouling {
-        text.push_str(&format!(", mean fouling {} {unit}", readable(fouling)));
-    }
-    text.push('.');
-    text
+    let apart = saw_tooth
+        .mean_interval_days
+        .map_or_else(String::new, |days| format!(", {} d apart", readable(days)));
+    let fouling = saw_tooth.mean_fouling.map_or_else(String::new, |mean| {
+        format!(", mean fouling {} {unit}", readable(mean))
+    });
+    format!(" {} cleanings so far{apart}{fouling}.", saw_tooth.cleanings)
 }

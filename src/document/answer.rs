@@ -60,6 +60,8 @@ struct PointPart {
     reference: f64,
     error: f64,
     uncertainty: f64,
+    predicted_error: f64,
+    predicted_uncertainty: f64,
     en: f64,
 }
 
@@ -143,6 +145,8 @@ impl ComparisonPart {
             reference: point.reference,
             error: point.error,
             uncertainty: point.uncertainty,
+            predicted_error: point.predicted_error,
+            predicted_uncertainty: point.predicted_uncertainty,
             en: point.en,
         });
         Self {

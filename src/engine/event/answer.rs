@@ -45,13 +45,13 @@ pub struct Serviced {
 /// As-found readings beside what the model expected (field check of the model).
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Comparison {
-    /// Error that the model expected at the instant, in the channel's unit.
+    /// Error that the model expected of the deciding reading, in the channel's unit.
     pub predicted_error: f64,
-    /// Its expanded uncertainty.
+    /// Its expanded uncertainty (95 %).
     pub predicted_uncertainty: f64,
     /// One entry for each as-found reading.
     pub points: Vec<ComparedPoint>,
-    /// Eₙ of the point with the largest |Eₙ|.
+    /// Eₙ of the deciding reading: the one with the largest |Eₙ|.
     pub en: f64,
     /// |Eₙ| ≤ 1 at every point.
     pub satisfactory: bool,
@@ -68,6 +68,10 @@ pub struct ComparedPoint {
     pub error: f64,
     /// Expanded uncertainty (k = 2) of the as-found error.
     pub uncertainty: f64,
+    /// Error that the model expected at this instant and level.
+    pub predicted_error: f64,
+    /// Its expanded uncertainty (95 %).
+    pub predicted_uncertainty: f64,
     /// Eₙ = (predicted − found) / √(U² + Uᵣ²) (ISO 13528, from memory).
     pub en: f64,
 }

@@ -29,7 +29,6 @@ use crate::time::Timestamp;
 use fouling::Cleanings;
 use serde::{Deserialize, Serialize};
 use std::collections::VecDeque;
-use validation::Expected;
 
 /// Services remembered of one sensor; the oldest of more is forgotten (the record has it).
 const HISTORY: usize = 32;
@@ -190,10 +189,9 @@ impl Channel {
         // A step at that very time may have ended the stretch before the service was told.
         let ends = self.stretch.began() <= Some(performed);
         let before = self.model_before(performed, scene).filter(|_| ends);
-        let comparison = before
-            .as_ref()
-            .and_then(|judgement| Expected::at(performed, judgement))
-            .and_then(|expected| validation::compare(expected, &event.as_found, scene));
+        let comparison = before.as_ref().and_then(|judgement| {
+            validation::compare(judgement, performed, &event.as_found, scene)
+        });
         if let Some(comparison) = &comparison {
             self.tell_validation(service, comparison, scene, report);
         }

@@ -1,10 +1,11 @@
 //! As-found readings against what the model expected: a validation that costs nothing.
 
 use crate::channel::Scene;
-use crate::channel::judgement::{Judgement, polynomial, variance_at};
+use crate::channel::judgement::Judgement;
 use crate::event::{CheckPoint, ComparedPoint, Comparison};
+use crate::fit::basis::MAX_INFLUENCES;
 use crate::quantile;
-use crate::setup::{ChannelSetup, ReferenceSetup};
+use crate::setup::{ChannelSetup, ReferenceSetup, SpanSide};
 use crate::time::Timestamp;
 
 /// Coverage of the uncertainties in Eₙ, whatever the channel's own (ISO 13528: U at k = 2, about
@@ -13,60 +14,58 @@ const COVERAGE: f64 = 0.95;
 /// k of the uncertainties that people state.
 pub(super) const STATED_FACTOR: f64 = 2.0;
 
-/// What the model expected at an instant.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub(super) struct Expected {
-    /// Error, in the channel's unit.
-    pub(super) error: f64,
-    /// Its expanded uncertainty.
-    pub(super) uncertainty: f64,
-}
-
-impl Expected {
-    /// From the fit as it was before the instant. `None` if its numbers can't be held.
-    pub(super) fn at(instant: Timestamp, judgement: &Judgement) -> Option<Self> {
-        let published = &judgement.published;
-        let days = instant.since(published.origin).days();
-        let error = polynomial(&published.coefficients, days) + 0.0;
-        let variance = variance_at(&published.covariance, days) + judgement.rest_variance;
-        let uncertainty = quantile::student(COVERAGE, judgement.nu) * variance.sqrt();
-        (error.is_finite() && uncertainty.is_finite()).then_some(Self { error, uncertainty })
-    }
-}
-
-/// Compares as-found readings with what was expected; `None` without readings, or where neither
-/// side has any uncertainty, so that nothing could be said.
+/// Compares as-found readings with what the model expected of each. `None` without readings; where
+/// neither side has any uncertainty or the numbers can't be held, so that nothing could be said; and
+/// where influence quantities are in the model, since what acted during the check nobody told.
 pub(super) fn compare(
-    expected: Expected,
+    judgement: &Judgement,
+    instant: Timestamp,
     as_found: &[CheckPoint],
     scene: &Scene<'_>,
 ) -> Option<Comparison> {
+    if !judgement.published.influences.is_empty() {
+        return None;
+    }
     let mut points = Vec::with_capacity(as_found.len());
     for point in as_found {
-        let uncertainty = uncertainty_of(point, scene.setup, scene.reference);
-        points.push(ComparedPoint {
-            indication: point.indication,
-            reference: point.reference,
-            error: point.error(),
-            uncertainty,
-            en: en(
-                expected.error,
-                point.error(),
-                expected.uncertainty,
-                uncertainty,
-            )?,
-        });
+        points.push(compare_one(judgement, instant, point, scene)?);
     }
-    let worst = points
+    let worst = *points
         .iter()
-        .map(|point| point.en)
-        .max_by(|a, b| a.abs().total_cmp(&b.abs()))?;
+        .max_by(|a, b| a.en.abs().total_cmp(&b.en.abs()))?;
     Some(Comparison {
-        predicted_error: expected.error,
-        predicted_uncertainty: expected.uncertainty,
+        predicted_error: worst.predicted_error,
+        predicted_uncertainty: worst.predicted_uncertainty,
         points,
-        en: worst,
-        satisfactory: worst.abs() <= 1.0,
+        en: worst.en,
+        satisfactory: worst.en.abs() <= 1.0,
+    })
+}
+
+fn compare_one(
+    judgement: &Judgement,
+    instant: Timestamp,
+    point: &CheckPoint,
+    scene: &Scene<'_>,
+) -> Option<ComparedPoint> {
+    let published = &judgement.published;
+    let level = match published.terms.span_side {
+        SpanSide::Reference => point.reference,
+        SpanSide::Indication => point.indication,
+    };
+    let (predicted_error, fit) = published.evaluate(instant, level, [0.0; MAX_INFLUENCES]);
+    let variance = fit + judgement.rest_variance;
+    let predicted_uncertainty = quantile::student(COVERAGE, judgement.nu) * variance.sqrt();
+    let uncertainty = uncertainty_of(point, scene.setup, scene.reference);
+    let error = point.error();
+    Some(ComparedPoint {
+        indication: point.indication,
+        reference: point.reference,
+        error,
+        uncertainty,
+        predicted_error,
+        predicted_uncertainty,
+        en: en(predicted_error, error, predicted_uncertainty, uncertainty)?,
     })
 }
 
@@ -81,11 +80,10 @@ fn en(value: f64, reference: f64, expanded: f64, expanded_reference: f64) -> Opt
 /// Expanded uncertainty of an as-found error: of the reference value as told, else as the channel's
 /// reference has it declared, and of one reading of the sensor (declared noise, resolution q/√12).
 fn uncertainty_of(point: &CheckPoint, setup: &ChannelSetup, reference: &ReferenceSetup) -> f64 {
-    let common = reference.uncertainty_common;
     let of_value = standard_uncertainty(point, reference);
     let common = match point.expanded_uncertainty {
         Some(_) => 0.0,
-        None => common,
+        None => reference.uncertainty_common,
     };
     let variance = of_value * of_value + common * common + reading_variance(setup);
     STATED_FACTOR * variance.sqrt()

@@ -280,7 +280,7 @@ fn foretelling_alarms(expected: &mut Expected, curve: &Curve) {
     };
     match *curve {
         Curve::SawTooth { period, height } => {
-            let run_up = period * limit / height;
+            let run_up = period * limit / height.abs();
             let mut cleaned = 0.0;
             // Each ramp would go on if nobody cleaned; what the window still holds of it may be said
             // until that has left.

@@ -218,6 +218,7 @@ fn alarm(expected: &ExpectedAlarm, heard: &Heard) -> AlarmScore {
         .alarms
         .iter()
         .filter(|alarm| is_of(alarm, expected) && alarm.is_raised())
+        .filter(|alarm| expected.ends.is_none_or(|ends| alarm.at <= ends))
         .find(|alarm| alarm.at >= expected.earliest && alarm.at <= expected.due);
     AlarmScore {
         expected: expected.clone(),

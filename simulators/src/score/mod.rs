@@ -21,6 +21,7 @@ pub mod stream;
 pub mod tally;
 pub mod trial;
 
+pub mod coverage;
 pub mod foresight;
 
 pub mod contest;

@@ -48,7 +48,7 @@ pub(crate) fn time_to_limit(
         return TimeToLimit::NoLine;
     };
     let k = coverage_factor(recent, setup.coverage);
-    let line = recent.line.with_common(judgement.rest_variance);
+    let line = recent.line.with_common(judgement.common_variance);
     let horizon = horizon(recent);
     let from = now.since(recent.origin).days().max(0.0);
     if line.at(from).abs() >= limit {

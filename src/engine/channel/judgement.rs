@@ -2,8 +2,9 @@
 //! against the maximum permissible error.
 //!
 //! u² = u²(fit) + common² + q²/12 + lack of fit² (GUM 5.1.2 with H.3.6 for the common part, F.2.2.1
-//! for the resolution q); degrees of freedom by Welch–Satterthwaite (GUM G.2b), k from Student's t
-//! (G.3.2). u²(fit) is never less than what the declared noise, the reference's own `each` and
+//! for the resolution q; lack of fit as the newest residuals show it, or as a drift that turned
+//! within the window would make it, whichever is more); degrees of freedom by Welch–Satterthwaite
+//! (GUM G.2b), k from Student's t (G.3.2). u²(fit) is never less than what the declared noise, the reference's own `each` and
 //! q²/12 make of the rows; where even so nothing is left (two equal values, nothing declared), u is
 //! not known and no conformity is stated.
 
@@ -35,6 +36,9 @@ pub(crate) struct Judgement {
     pub(crate) u: f64,
     /// Part of u² that does not come from the fit's covariance; the same at every instant.
     pub(crate) rest_variance: f64,
+    /// That part without what a turn of the drift adds: what a curve of its own through the newest
+    /// pairs has beside its covariance.
+    pub(crate) common_variance: f64,
     /// k.
     pub(crate) k: f64,
     /// ν behind k.
@@ -64,12 +68,15 @@ impl Judgement {
         let lack = residuals.lack_of_fit(&published);
         let common = scene.reference.uncertainty_common;
         let resolution = scene.setup.resolution;
-        let rest_variance = common * common + resolution * resolution / 12.0 + lack.variance;
+        let common_variance = common * common + resolution * resolution / 12.0 + lack.variance;
+        // Both say that the curve misses the newest pairs: the larger counts.
+        let turn = (published.turn_variance - lack.variance).max(0.0);
+        let rest_variance = common_variance + turn;
         let u = (fit + rest_variance).sqrt();
         let nu = effective_degrees_of_freedom(
             u,
             &[
-                (fit, published.degrees_of_freedom),
+                (fit + turn, published.degrees_of_freedom),
                 (lack.variance, lack.degrees_of_freedom),
             ],
         );
@@ -82,6 +89,7 @@ impl Judgement {
             error,
             u,
             rest_variance,
+            common_variance,
             k,
             nu,
             slope,
@@ -242,14 +250,14 @@ impl Residuals {
 
 #[cfg(test)]
 #[allow(clippy::float_cmp, reason = "the expected values are exact in binary")]
-mod tests {
+pub(super) mod tests {
     use super::*;
     use crate::event::{CriterionValues, WindowSeen};
     use crate::fit::Centre;
     use crate::fit::{Model, Seen, Terms};
     use crate::setup::SpanSide;
 
-    fn published(coefficients: &[f64]) -> Published {
+    pub(in super::super) fn published(coefficients: &[f64]) -> Published {
         Published {
             origin: Timestamp(0),
             degree: 0,
@@ -259,6 +267,7 @@ mod tests {
             span: Vec::new(),
             influences: Vec::new(),
             covariance: vec![vec![0.0; coefficients.len()]; coefficients.len()],
+            turn_variance: 0.0,
             degrees_of_freedom: 10.0,
             residual_sd: 1.0,
             criterion: CriterionValues {

@@ -13,8 +13,10 @@
 //! the time that the window covers where a degree above 1 has weight, else half of it. (The
 //! variance of a straight line at the window's end grows by 13/4 half a window ahead, so that u has
 //! not quite doubled; a parabola's by 49/9 a quarter ahead: from `(1/n) Σ (2j+1) P_j(1+2f)²`,
-//! Legendre polynomials `P_j`, f in windows.) Young windows hold at least twice the mean time
-//! between pairs, so that a document outlives the wait for the next pair.
+//! Legendre polynomials `P_j`, f in windows.) Weight on degrees above the announced one shortens
+//! that in proportion, down to a quarter: a curve that may yet prove to be noise is not held for
+//! long when pairs stop. Young windows hold at least twice the mean time between pairs, so that a
+//! document outlives the wait for the next pair.
 
 use super::judgement::{Judgement, polynomial, variance_at};
 use super::review::MOVED_PART;
@@ -32,6 +34,8 @@ use serde::{Deserialize, Serialize};
 const APPLY_FROM: f64 = 2.0;
 /// … and dropped below so many.
 const DROP_BELOW: f64 = 1.0;
+/// Least part of the horizon that weight on unannounced degrees leaves.
+const LEAST_SHARE: f64 = 0.25;
 /// A degree above 1 has weight from here on.
 const HAS_WEIGHT: f64 = 0.01;
 /// Part of a correction whose change is rounding, not news: keeps a noiseless stream (u = 0) from
@@ -428,17 +432,29 @@ pub(super) fn valid_until(published: &Published, scene: &Scene<'_>) -> Timestamp
     } else {
         2
     };
-    let horizon = horizon(&published.window, part);
+    let horizon = horizon(&published.window, part, announced_share(published));
     let by_age = scene.now.plus(scene.setup.publish.max_age);
     by_age.min(published.origin.plus(horizon))
 }
 
-/// 1/`part` of the time covered, but at least twice the mean time between pairs.
-fn horizon(window: &WindowSeen, part: i64) -> Duration {
+/// The weight of the announced degree and those below it, but at least [`LEAST_SHARE`].
+fn announced_share(published: &Published) -> f64 {
+    let announced = usize::from(published.degree) + 1;
+    let share: f64 = published.weights.iter().take(announced).sum();
+    share.clamp(LEAST_SHARE, 1.0)
+}
+
+/// `share` of 1/`part` of the time covered, but at least twice the mean time between pairs.
+fn horizon(window: &WindowSeen, part: i64, share: f64) -> Duration {
     let covered = window.to.since(window.from).0;
     let steps = i64::try_from(window.pairs.saturating_sub(1).max(1)).unwrap_or(i64::MAX);
     let between = covered / steps;
-    Duration((covered / part).max(between.saturating_mul(2)))
+    #[allow(
+        clippy::cast_possible_truncation,
+        reason = "a part of a length of time, in nanoseconds"
+    )]
+    let ahead = (share * (covered / part) as f64) as i64;
+    Duration(ahead.max(between.saturating_mul(2)))
 }
 
 #[cfg(test)]
@@ -459,11 +475,28 @@ mod tests {
 
     #[test]
     fn the_horizon_is_a_part_of_the_window_but_outlives_the_next_pair() {
-        let hours = |window: &WindowSeen, part| horizon(window, part).seconds() / 3600.0;
+        let hours = |window: &WindowSeen, part| horizon(window, part, 1.0).seconds() / 3600.0;
         assert_eq!(hours(&window(80, 81), 4), 20.0);
         assert_eq!(hours(&window(80, 81), 2), 40.0);
         assert_eq!(hours(&window(1, 2), 4), 2.0);
         assert_eq!(hours(&window(0, 1), 4), 0.0);
+    }
+
+    /// A parabola that has most of the weight without being announced is held a quarter as long.
+    #[test]
+    fn what_is_not_announced_is_not_held_for_long() {
+        let share = |degree, weights: [f64; 3]| {
+            let mut published = super::super::judgement::tests::published(&[0.0]);
+            published.degree = degree;
+            published.weights = weights.to_vec();
+            announced_share(&published)
+        };
+        assert_eq!(share(0, [0.125, 0.0, 0.875]), 0.25);
+        assert_eq!(share(0, [0.5, 0.25, 0.25]), 0.5);
+        assert_eq!(share(1, [0.5, 0.25, 0.25]), 0.75);
+        assert_eq!(share(2, [0.0, 0.25, 0.75]), 1.0);
+        let hours = horizon(&window(80, 81), 4, 0.25).seconds() / 3600.0;
+        assert_eq!(hours, 5.0);
     }
 
     /// The growth of variance that the validity's limits are derived from: `Σ (2j+1) P_j(1+2f)²`

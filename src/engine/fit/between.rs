@@ -13,6 +13,7 @@ use crate::fit::gain::Rungs;
 use crate::fit::kernel::MAX_WIDTH;
 use crate::fit::segment::Segment;
 use crate::fit::window::{Cut, Window};
+use crate::math;
 use crate::time::Timestamp;
 use std::borrow::Cow;
 
@@ -22,6 +23,8 @@ pub(crate) const MOST_GROUPS: usize = 64;
 /// Closed segments that a degree k ≥ 1 must have per coefficient before it is looked at: 8 for a
 /// line, 12 for a parabola.
 const SEGMENTS_PER_COEFFICIENT: usize = 4;
+/// ln of the largest ratio of two residual sums that is told: a part in 1e300.
+pub(crate) const LARGEST_LN_RATIO: f64 = 690.0;
 /// Residuals below so many units in the last place of the errors are rounding, not noise.
 const ROUNDING_UNITS: f64 = 4.0;
 
@@ -191,6 +194,14 @@ pub(crate) struct Between {
     pub(crate) rungs: Rungs,
     /// r₁ of the residuals of degree `largest` (raw).
     pub(crate) lag_one: f64,
+    /// The rows, oldest first.
+    pub(crate) rows: Vec<MeanRow>,
+    /// √weight of each, as it counts here.
+    pub(crate) roots: Vec<f64>,
+    /// What degree `largest` leaves of each, times its root.
+    pub(crate) residuals: Vec<f64>,
+    /// The rows' factor, as they count here.
+    pub(crate) factor: Factor,
 }
 
 impl Between {
@@ -211,12 +222,14 @@ impl Between {
         let weighting = plain_weighting(groups, &rows, &counted, largest);
         let factor = fitted(&rows, columns, |weight| weighting.multiplier(weight));
         let coefficients = factor.solve(largest + 1)?;
+        let roots: Vec<f64> = rows
+            .iter()
+            .map(|row| (row.weight * weighting.multiplier(row.weight)).sqrt())
+            .collect();
         let residuals: Vec<f64> = rows
             .iter()
-            .map(|row| {
-                let root = (row.weight * weighting.multiplier(row.weight)).sqrt();
-                root * row.residual(&coefficients.as_slice()[..=largest])
-            })
+            .zip(&roots)
+            .map(|(row, root)| root * row.residual(&coefficients.as_slice()[..=largest]))
             .collect();
         let nested = factor.nested_rss();
         Some(Self {
@@ -229,7 +242,22 @@ impl Between {
                 least: 1,
             },
             lag_one: lag_one(&residuals) + 0.0,
+            rows,
+            roots,
+            residuals,
+            factor,
         })
+    }
+
+    /// `ln(RSS_{k−1}/RSS_k)`, both with their possible rounding; 0 where nothing is left to compare.
+    pub(crate) fn ln_ratio_of(&self, degree: usize) -> f64 {
+        let higher = self.rungs.known(degree);
+        self.ln_ratio(degree - 1, higher).unwrap_or_default()
+    }
+
+    /// ln(`RSS_k`/`rss`), `rss` with its possible rounding; `None` where nothing is left to compare.
+    pub(crate) fn ln_ratio(&self, degree: usize, rss: f64) -> Option<f64> {
+        (rss > 0.0).then(|| math::ln(self.rungs.known(degree) / rss).min(LARGEST_LN_RATIO))
     }
 
     /// σ̂² = RSS/(S − p) of the largest model: variance of a row of weight 1 as groups show it, so
@@ -285,6 +313,11 @@ pub(crate) fn mean_row(group: &Group<'_>, level: f64) -> Option<MeanRow> {
 }
 
 impl MeanRow {
+    /// Scaled time, in a problem with a degree above 0.
+    pub(crate) fn time(&self) -> f64 {
+        self.phi[1]
+    }
+
     /// ē − φ̄ᵀβ for the first columns.
     pub(crate) fn residual(&self, coefficients: &[f64]) -> f64 {
         coefficients

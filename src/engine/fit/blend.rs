@@ -12,12 +12,12 @@
 
 use crate::event::{CriterionValues, WindowSeen};
 use crate::fit::basis::Columns;
-use crate::fit::between::{Group, Groups};
+use crate::fit::between::{Group, Groups, LARGEST_LN_RATIO};
 use crate::fit::contrast::Apart;
 use crate::fit::factor::Factor;
 use crate::fit::joint::{Joint, Worth};
 use crate::fit::kernel::MAX_WIDTH;
-use crate::fit::mean::{LARGEST_LN_RATIO, PUBLISHING, Scatter, normalised, rows_of};
+use crate::fit::mean::{PUBLISHING, Scatter, normalised, rows_of};
 use crate::fit::model::Model;
 use crate::fit::{Fit, ModelWeight, Published};
 use crate::math;
@@ -176,6 +176,7 @@ impl Fit {
             span: pick(&span),
             influences: pick(&influence),
             covariance: rows_of(&covariance),
+            turn_variance: 0.0,
             degrees_of_freedom: scatter.degrees_of_freedom,
             residual_sd: joint.rows_sd(),
             criterion,

@@ -17,6 +17,12 @@ pub struct Caution {
     /// about −(p + …·ρ)/S: one multiple is right in white noise, three or so in strong correlation
     /// (Marriott & Pope, *Biometrika* 41 (1954) 390; from memory).
     pub bias: f64,
+    /// Multiples of that bias's growth with ρ: it is about −(p + (p + 3)ρ)/S in all (each of p
+    /// fitted coefficients takes (1 + ρ)/S, the quotient of two sums 3ρ/S more; for p = 1 it is
+    /// Kendall's −(1 + 4ρ)/S, *Biometrika* 41 (1954) 403; from memory). What is found beyond zero
+    /// is multiplied by 1 + x + x², x = (p + 3)/S, the first orders of its inverse; and the standard
+    /// error below is taken as √((1 − ρ²)/S).
+    pub growth: f64,
     /// Multiples of 1/√S, the standard error of r₁ in white noise (Bartlett, *Supplement to the
     /// Journal of the Royal Statistical Society* 8 (1946) 27; from memory).
     pub spread: f64,
@@ -38,8 +44,12 @@ pub fn lag_one(residuals: &[f64]) -> f64 {
 pub fn cautious(lag_one: f64, coefficients: usize, segments: usize, caution: Caution) -> f64 {
     let count = segments.max(1) as f64;
     let bias = caution.bias * coefficients as f64 / count;
-    let spread = caution.spread / count.sqrt();
-    (lag_one + bias + spread).clamp(0.0, HIGHEST)
+    let found = lag_one + bias;
+    let lost = (coefficients as f64 + 3.0) / count;
+    let grown = caution.growth * (lost + lost * lost) * found.max(0.0);
+    let narrowed = (1.0 - caution.growth * found * found).max(0.0).sqrt();
+    let spread = caution.spread * narrowed / count.sqrt();
+    (found + grown + spread).clamp(0.0, HIGHEST)
 }
 
 /// n_eff = n(1 − r)/(1 + r): how many independent values a mean of `count` values with lag-1
@@ -92,6 +102,7 @@ mod tests {
     fn caution_stays_within_its_limits_and_fades_with_the_sample() {
         let caution = Caution {
             bias: 1.0,
+            growth: 0.0,
             spread: 1.0,
         };
         let few = cautious(0.3, 3, 16, caution);
@@ -99,6 +110,15 @@ mod tests {
         assert_relative_eq!(few, 0.3 + 3.0 / 16.0 + 0.25);
         assert!(0.3 < many && many < few);
         assert_relative_eq!(cautious(-1.0, 3, 64, caution), 0.0);
+        let grown = Caution {
+            growth: 1.0,
+            ..caution
+        };
+        let (found, lost): (f64, f64) = (0.2 + 3.0 / 64.0, 6.0 / 64.0);
+        let expected = found * (1.0 + lost + lost * lost) + 0.125 * (1.0 - found * found).sqrt();
+        assert_relative_eq!(cautious(0.2, 3, 64, grown), expected, max_relative = 1e-14);
+        // Where no correlation was found, nothing grows.
+        assert!(cautious(-0.1, 3, 64, grown) <= cautious(-0.1, 3, 64, caution));
         assert_relative_eq!(cautious(0.0, 3, 0, caution), HIGHEST);
     }
 }

@@ -339,9 +339,20 @@ impl Factor {
     /// If the factor has fewer columns than `phi`.
     #[must_use]
     pub fn leverage(&self, phi: &[f64]) -> Option<f64> {
+        let v = self.whitened(phi)?;
+        Some(v.iter().fold(0.0, |sum, entry| sum + entry * entry))
+    }
+
+    /// R⁻ᵀφ for the model of the first `phi.len()` columns, zero beyond: the row of Q = ΦR⁻¹, an
+    /// orthonormal basis of the model, that belongs to φ. `None` if the columns are not
+    /// independent.
+    ///
+    /// # Panics
+    /// If the factor has fewer columns than `phi`.
+    #[must_use]
+    pub fn whitened(&self, phi: &[f64]) -> Option<PerColumn> {
         assert!(phi.len() <= self.columns(), "columns of Φ");
         let mut v = PerColumn::zeros();
-        let mut sum = 0.0;
         for j in 0..phi.len() {
             if !self.is_independent(j) {
                 return None;
@@ -351,9 +362,8 @@ impl Factor {
                 rest -= self.entry(i, j) * v[i];
             }
             v[j] = rest / self.entry(j, j);
-            sum += v[j] * v[j];
         }
-        Some(sum)
+        Some(v)
     }
 
     /// R⁻¹ of the first `columns` columns, the factor of their covariance: (ΦᵀΦ)⁻¹ = R⁻¹R⁻ᵀ in

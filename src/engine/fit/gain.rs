@@ -22,11 +22,13 @@ const HIGHEST_PRICE: f64 = 5.0;
 /// How cautiously r₁ is taken when a degree is judged.
 pub(crate) const JUDGING: Caution = Caution {
     bias: 4.0,
+    growth: 0.0,
     spread: 0.5,
 };
 /// How r₁ is taken when a degree is to be lowered.
 pub(crate) const PLAIN: Caution = Caution {
     bias: 0.0,
+    growth: 0.0,
     spread: 0.0,
 };
 

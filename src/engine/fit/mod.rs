@@ -19,6 +19,7 @@
 //! - `degree`: when the announced model changes
 //! - [`published`]: the form of what is published
 //! - [`mean`]: the published mean over degrees and its uncertainty
+//! - `turn`: what a drift that turned within the window would change
 //! - [`line`]: the straight line of recent pairs that forecasts rest on
 //! - [`forecast`]: where a line with its band meets a limit
 //! - [`cadence`]: how long a drift takes to be seen
@@ -59,6 +60,7 @@ pub mod row;
 pub mod seen;
 pub mod segment;
 mod spare;
+mod turn;
 pub mod window;
 
 use crate::event::Evidence;

@@ -70,6 +70,9 @@ pub struct Published {
     /// Covariance of `coefficients`, `span` and `influences`, in this order, between-model spread
     /// included: u² = φᵀ C φ.
     pub covariance: Vec<Vec<f64>>,
+    /// What a drift that turned within the window adds to u² at the newest pair, beyond φᵀCφ: see
+    /// `turn`. Zero with a forced degree, and where span terms or influence quantities are claimed.
+    pub turn_variance: f64,
     /// Degrees of freedom of the fit's part of u.
     pub degrees_of_freedom: f64,
     /// Residual standard deviation of the rows under the largest model.

@@ -6,7 +6,8 @@
 //!
 //! Reading order: what a run consists of ([`world`], [`chooser`], [`ground`]), which runs there are
 //! ([`library`]), how one goes ([`stream`], [`consumer`], [`observe`], [`tally`], [`findings`],
-//! [`trial`]), what many say ([`contest`], [`summary`], [`limits`], [`table`]).
+//! [`trial`]), what many say ([`contest`], [`summary`], [`limits`], [`table`]). [`coverage`] drives
+//! the fit alone: is its U honest?
 
 pub mod chooser;
 pub mod ground;

@@ -90,6 +90,15 @@ impl Publishing {
         self.in_force.as_ref().map(|held| &*held.correction)
     }
 
+    /// By how much the correction in force changes from one time to another; 0 where there is none.
+    pub(crate) fn moved(&self, from: Timestamp, to: Timestamp) -> f64 {
+        self.correction().map_or(0.0, |document| {
+            let at =
+                |time: Timestamp| polynomial(&document.zero, time.since(document.origin).days());
+            at(to) - at(from)
+        })
+    }
+
     /// When to look again.
     pub(crate) fn wake(&self) -> Option<Timestamp> {
         self.in_force.as_ref().map(|held| held.review)
@@ -191,7 +200,7 @@ impl Publishing {
     pub(crate) fn hold_limit(&self, setup: &ChannelSetup) -> Duration {
         setup.hold_limit.unwrap_or_else(|| {
             self.correction()
-                .map_or(Duration::ZERO, |document| horizon(&document.window, 4))
+                .map_or(Duration::ZERO, |document| horizon(&document.window, 4, 1.0))
         })
     }
 

@@ -5,6 +5,7 @@ use super::judgement::{self, Judgement};
 use super::{Channel, Scene};
 use crate::event::{Conformity, Subject};
 use crate::report::Report;
+use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
 /// A judgement merges the window's segments and costs a hundred times what a pair's insertion does.
@@ -12,7 +13,8 @@ use serde::{Deserialize, Serialize};
 /// pair), when segments closed on which the degrees' weights rest, while an alarm is on its way to
 /// another state (its delay counts pairs) …
 const JUDGED_PART: u64 = 64;
-/// … or when the plain fit at its newest pair has moved by this part of a publish step. (The
+/// … or when the plain fit at its newest pair has moved by this part of a publish step, or away
+/// from where the correction in force went meanwhile. (The
 /// publish step is shortened by as much. What the mean over degrees moves more than that between
 /// two judgements stays unseen until the next: measured, at most a fifth of a step beyond the
 /// step.)
@@ -30,7 +32,9 @@ pub(super) struct Judged {
     pub(super) correction: f64,
     pub(super) u: f64,
     pub(super) conformity: Conformity,
-    /// What the plain fit said at the newest pair.
+    /// The newest pair's phenomenon time, if there was one.
+    newest: Option<Timestamp>,
+    /// What the plain fit said there.
     plain: Option<f64>,
     /// The degree with the most weight, by which it said so.
     leading: usize,
@@ -57,7 +61,15 @@ impl Channel {
         }
         match (judged.plain, self.plain(judged.leading)) {
             (Some(before), Some(now)) => {
-                (now - before).abs() > MOVED_PART * scene.setup.publish.step * judged.u
+                let moved = now - before;
+                let newest = self.stretch.fit().window().newest();
+                let foreseen = match (judged.newest, newest) {
+                    (Some(then), Some(newest)) => self.publishing.moved(then, newest),
+                    _ => 0.0,
+                };
+                let news = MOVED_PART * scene.setup.publish.step * judged.u;
+                // A correction moves against its error.
+                moved.abs() > news || (moved + foreseen).abs() > news
             }
             _ => true,
         }
@@ -134,6 +146,7 @@ impl Channel {
             correction: 0.0 - judgement.error,
             u: judgement.u,
             conformity: judgement.conformity,
+            newest: self.stretch.fit().window().newest(),
             plain: self.plain(leading),
             leading,
             group: self.stretch.fit().newest_group(),

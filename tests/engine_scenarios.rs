@@ -337,6 +337,12 @@ impl Stage {
                     change.to
                 )
             }
+            Output::Step(step) => format!(
+                "step {} {} before {}",
+                channel(step.channel),
+                short(step.size),
+                short(since_start(step.first_after))
+            ),
             Output::Notice(notice) => format!(
                 "notice {} {} held {}",
                 self.name(notice.subject),
@@ -409,6 +415,7 @@ fn kind(kind: AlarmKind) -> &'static str {
         AlarmKind::CertificateExpiry => "certificate-expiry",
         AlarmKind::CorrectionLimit => "correction-limit",
         AlarmKind::DataGap => "data-gap",
+        AlarmKind::Step => "step",
         AlarmKind::ScreenLockedOut => "screen-locked-out",
         AlarmKind::Stuck => "stuck",
         AlarmKind::NoiseGrowth => "noise-growth",

@@ -6,8 +6,8 @@ use super::influence;
 use super::place::{self, Place};
 use super::reader::Section;
 use super::reference::{self, Beside};
-use super::screening;
 use super::source::Found;
+use super::{screening, steps};
 use crate::payload::{Format, Target, Use};
 use holdtrue_engine::setup::{
     AlarmSetup, ChannelSetup, DecisionRule, PairNoise, PublishSetup, ReferenceId, ReferenceKind,
@@ -87,6 +87,7 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
             .map_or(MAX_GAP, |found| found.value),
         fit,
         screening: screening::read(section),
+        steps: steps::read(section),
         max_permissible_error: positive("max_permissible_error"),
         decision_rule: decision_rule(section),
         service_horizon: section

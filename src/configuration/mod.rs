@@ -12,7 +12,7 @@
 //! - `place`: where in which payload a value stands
 //! - `service`: the tables `[node]`, `[broker]`, `[record]`, `[page]`
 //! - `draft`: what has been read while entries still refer to each other by name
-//! - `reference`, `influence`, `fit`, `screening`, `channel`: one entry each
+//! - `reference`, `influence`, `fit`, `screening`, `steps`, `channel`: one entry each
 //! - `crosscheck`: what only shows when all entries are known
 //! - `assemble`: a file from top to bottom
 
@@ -32,6 +32,7 @@ mod reference;
 mod screening;
 mod service;
 mod source;
+mod steps;
 
 use crate::payload::Tables;
 use holdtrue_engine::setup::Setup;

@@ -3,7 +3,7 @@
 //! JSON, UTF-8. Times are RFC 3339 in UTC with all the nanoseconds they have; numbers read back to
 //! the same bits; words for machines are lower case with hyphens. Each document carries
 //! `schema_version`; its schema stands in `config/schemas/`. Modules in reading order: [`topic`],
-//! [`correction`], [`outlook`], [`alarm`], [`degree`], [`notice`], [`answer`], [`validation`],
+//! [`correction`], [`outlook`], [`alarm`], [`degree`], [`step`], [`notice`], [`answer`], [`validation`],
 //! [`state`].
 
 pub mod alarm;
@@ -13,6 +13,7 @@ pub mod degree;
 pub mod notice;
 pub mod outlook;
 pub mod state;
+pub mod step;
 pub mod topic;
 pub mod validation;
 mod word;
@@ -86,6 +87,11 @@ pub fn render(output: &Output, setup: &Setup) -> Option<Document> {
             let channel = channel(&change.channel)?;
             let document = degree::DegreeDocument::new(change, channel);
             Some(json(topics.degree(&channel.name), &document, true, None))
+        }
+        Output::Step(step) => {
+            let channel = setup.channels.get(step.channel.0 as usize)?;
+            let document = step::StepDocument::new(step, channel);
+            Some(json(topics.step(&channel.name), &document, true, None))
         }
         Output::Notice(notice) => {
             let name = topic::subject_name(notice.subject, setup)?;

@@ -46,6 +46,12 @@ impl<'a> Topics<'a> {
         format!("holdtrue/{}/degree/{channel}", self.node)
     }
 
+    /// The newest step of a channel, with its evidence; retained.
+    #[must_use]
+    pub fn step(&self, channel: &str) -> String {
+        format!("holdtrue/{}/step/{channel}", self.node)
+    }
+
     /// An alarm; retained. `name` is the channel's or reference's, and not used for an alarm of
     /// the node. (None stands on an influence quantity today.)
     #[must_use]
@@ -106,6 +112,7 @@ impl<'a> Topics<'a> {
         if let Some(name) = rest
             .strip_prefix("correction/")
             .or(rest.strip_prefix("degree/"))
+            .or(rest.strip_prefix("step/"))
             .or(rest.strip_prefix("outlook/"))
             .or(rest.strip_prefix("validation/"))
         {

@@ -25,6 +25,7 @@ pub(super) fn alarm_kind(kind: AlarmKind) -> &'static str {
         AlarmKind::CertificateExpiry => "certificate-expiry",
         AlarmKind::CorrectionLimit => "correction-limit",
         AlarmKind::DataGap => "data-gap",
+        AlarmKind::Step => "step",
         AlarmKind::ScreenLockedOut => "screen-locked-out",
         AlarmKind::Stuck => "stuck",
         AlarmKind::NoiseGrowth => "noise-growth",

@@ -82,6 +82,7 @@ pub(super) fn output_kind(output: &Output) -> &'static str {
         Output::OutlookWithdrawn { .. } => "outlook-withdrawn",
         Output::Alarm(_) => "alarm",
         Output::Degree(_) => "degree",
+        Output::Step(_) => "step",
         Output::Pair(_) => "pair",
         Output::Notice(_) => "notice",
         Output::Answer(_) => "answer",

@@ -163,7 +163,7 @@ fn sensor(quantity: usize, noise: Noise) -> Sensor {
     }
 }
 
-fn reference_setup(name: String, each: f64) -> ReferenceSetup {
+pub(super) fn reference_setup(name: String, each: f64) -> ReferenceSetup {
     ReferenceSetup {
         name,
         kind: ReferenceKind::Measured,
@@ -180,7 +180,7 @@ fn reference_setup(name: String, each: f64) -> ReferenceSetup {
 
 /// A channel with the configuration's defaults, a window of a week, and a permissible error of ten
 /// standard deviations of the noise.
-fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup {
+pub(super) fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup {
     ChannelSetup {
         name,
         unit: "unit".to_owned(),
@@ -210,6 +210,7 @@ fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup
             stuck: None,
             max_rate: None,
         },
+        steps: Some(4.0),
         max_permissible_error: Some(10.0 * deviation),
         decision_rule: DecisionRule::GuardBand { multiple: 1.0 },
         service_horizon: days(14.0),

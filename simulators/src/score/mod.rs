@@ -29,3 +29,5 @@ pub mod contest;
 pub mod limits;
 pub mod summary;
 pub mod table;
+
+pub mod steps;

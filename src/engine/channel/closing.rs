@@ -24,7 +24,6 @@ pub(crate) struct Reentered {
 impl Channel {
     /// Ends the stretch at `at`: the pairs from `at` on begin the next one. `why` ends the sentence
     /// "the correction no longer holds: …" where the new stretch cannot replace it yet.
-    #[allow(dead_code, reason = "steps and service events end stretches")]
     pub(crate) fn close_stretch(
         &mut self,
         at: Timestamp,
@@ -49,6 +48,10 @@ impl Channel {
     ) -> Reentered {
         let since = self.recent.take_since(at);
         self.stretch = self.stretch.next(carries, scene.setup);
+        self.breaks.begin_stretch(match carries {
+            Carries::Noise { latest } => Some(latest),
+            Carries::Nothing => None,
+        });
         self.stretch.begin_at(at);
         for pair in opening {
             let taken = self.stretch.take(pair, scene.setup);
@@ -79,6 +82,8 @@ impl Channel {
         self.publishing.leave_stretch();
         self.outlook.leave_stretch(scene, report);
         self.alarms.end_forecast(scene, report);
+        self.alarms
+            .step_is_past("a new stretch has begun", scene, report);
         self.judge(scene, report);
         if !self.publishing.is_of(self.stretch.number()) {
             self.withdraw(why, scene, report);
@@ -213,6 +218,7 @@ mod tests {
     fn rewound_the_fit_is_as_if_the_rows_had_never_come() {
         let mut setup = channel_setup();
         setup.fit.window = WindowLength::Pairs(128);
+        setup.steps = None;
         let mut stage = Stage::new(setup);
         let mut channel = stepped(&mut stage, 30);
         let fresh = stepped(&mut stage, 0);

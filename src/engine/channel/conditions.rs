@@ -2,6 +2,7 @@
 //! moved by `alarm`.
 
 mod health;
+mod stepped;
 
 use super::Scene;
 use super::judgement::Judgement;
@@ -21,6 +22,7 @@ pub(crate) struct ChannelAlarms {
     drift_rate: Alarm,
     time_to_limit: Alarm,
     data_gap: Alarm,
+    step: Alarm,
     screen_locked_out: Alarm,
     stuck: Alarm,
     noise_growth: Alarm,
@@ -196,12 +198,13 @@ impl ChannelAlarms {
     }
 
     /// All alarms with their kinds.
-    fn all(&self) -> [(AlarmKind, &Alarm); 8] {
+    fn all(&self) -> [(AlarmKind, &Alarm); 9] {
         [
             (AlarmKind::ErrorLimit, &self.error_limit),
             (AlarmKind::DriftRate, &self.drift_rate),
             (AlarmKind::TimeToLimit, &self.time_to_limit),
             (AlarmKind::DataGap, &self.data_gap),
+            (AlarmKind::Step, &self.step),
             (AlarmKind::ScreenLockedOut, &self.screen_locked_out),
             (AlarmKind::Stuck, &self.stuck),
             (AlarmKind::NoiseGrowth, &self.noise_growth),
@@ -301,6 +304,7 @@ impl ChannelAlarms {
                 &mut self.data_gap,
                 after.alarms.gap_after.is_none(),
             ),
+            (AlarmKind::Step, &mut self.step, after.steps.is_none()),
             (
                 AlarmKind::ScreenLockedOut,
                 &mut self.screen_locked_out,

@@ -12,6 +12,7 @@
 //! What enters a station never comes back from a later one; the only memory shared between them is
 //! in [`Channel`].
 
+mod breaks;
 mod checks;
 mod closing;
 mod conditions;
@@ -28,6 +29,7 @@ mod review;
 mod screening;
 mod service;
 mod status;
+mod stepping;
 mod stretch;
 mod telling;
 #[cfg(test)]
@@ -40,6 +42,7 @@ use crate::setup::{ChannelId, ChannelSetup, ReferenceSetup};
 use crate::standing::{AlarmStanding, ChannelStanding};
 use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
+use breaks::Breaks;
 use checks::Checks;
 pub(crate) use checks::jumps;
 use conditions::ChannelAlarms;
@@ -88,6 +91,7 @@ pub(crate) struct Channel {
     waiting: Waiting,
     stretch: Stretch,
     recent: Recent,
+    breaks: Breaks,
     publishing: Publishing,
     outlook: OutlookStation,
     ladder: Ladder,
@@ -109,6 +113,7 @@ impl Channel {
             waiting: Waiting::default(),
             stretch: Stretch::new(1, setup),
             recent: Recent::default(),
+            breaks: Breaks::default(),
             publishing: Publishing::new(issued),
             outlook: OutlookStation::default(),
             ladder: Ladder::default(),
@@ -442,6 +447,7 @@ impl Channel {
             telling::tell_degree(change, scene, report);
         }
         if let Some(innovation) = taken.innovation {
+            self.watch_for_step(innovation, taken.locks_out, scene, report);
             let locked_out = self.stretch.is_locked_out();
             self.alarms
                 .screen(locked_out, innovation.value, scene, report);

@@ -41,7 +41,6 @@ impl Recent {
     }
 
     /// All of them, in the order in which they came.
-    #[allow(dead_code, reason = "the time of a step is looked for among them")]
     pub(super) fn iter(
         &self,
     ) -> impl DoubleEndedIterator<Item = &Remembered> + ExactSizeIterator + Clone {

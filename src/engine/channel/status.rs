@@ -51,6 +51,7 @@ fn of_alarm(kind: AlarmKind) -> Status {
         | AlarmKind::DriftRate
         | AlarmKind::TimeToLimit
         | AlarmKind::NoiseGrowth
+        | AlarmKind::Step
         | AlarmKind::ReferenceStale
         | AlarmKind::ReferenceStep
         | AlarmKind::ReferenceStuck

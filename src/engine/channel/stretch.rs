@@ -68,6 +68,8 @@ pub(super) struct Taken {
     pub(super) rejected: Option<Rejection>,
     /// How far it lies from what the fit expected; `None` while it expects nothing.
     pub(super) innovation: Option<Innovation>,
+    /// The screen stopped rejecting with it.
+    pub(super) locks_out: bool,
     /// The announced degree changed with it.
     pub(super) change: Option<Change>,
 }
@@ -126,6 +128,11 @@ impl Stretch {
     /// The newest accepted errors.
     pub(super) fn residuals(&self) -> &Residuals {
         &self.residuals
+    }
+
+    /// Whether the window has left its beginning behind.
+    pub(super) fn fills_its_window(&self) -> bool {
+        self.fit.window().has_dropped()
     }
 
     /// Phenomenon time of the newest pair in the fit.
@@ -193,6 +200,7 @@ impl Stretch {
                 rejected: Some(rejected),
                 innovation: None,
                 change: None,
+                locks_out: false,
             };
         }
         let error = pair.indication - pair.reference;
@@ -225,6 +233,7 @@ impl Stretch {
         Taken {
             rejected,
             innovation,
+            locks_out: matches!(verdict, Verdict::LocksOut { .. }),
             change,
         }
     }
@@ -241,7 +250,7 @@ impl Stretch {
         for remembered in put_back(gone, recent.entered(self.number)) {
             let pair = &remembered.pair;
             if pair.time < instant {
-                fit.insert(row(pair, pair.indication - pair.reference, setup));
+                fit.insert(row(pair, setup));
             }
         }
         fit
@@ -321,7 +330,7 @@ impl Stretch {
         setup: &ChannelSetup,
         change: &mut Option<Change>,
     ) -> Option<Rejection> {
-        let inserted = self.fit.insert(row(pair, error, setup));
+        let inserted = self.fit.insert(row(pair, setup));
         if inserted.out_of_range {
             return Some(Rejection {
                 reason: RefusedReason::NotFinite,
@@ -362,10 +371,10 @@ fn span_regressor(pair: &Pair, setup: &ChannelSetup) -> f64 {
 }
 
 /// A pair as the fit takes it.
-fn row(pair: &Pair, error: f64, setup: &ChannelSetup) -> Row {
+pub(super) fn row(pair: &Pair, setup: &ChannelSetup) -> Row {
     Row {
         time: pair.time,
-        error,
+        error: pair.indication - pair.reference,
         weight: pair.weight,
         x: span_regressor(pair, setup),
         influences: pair.influences,

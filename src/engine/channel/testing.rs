@@ -116,6 +116,7 @@ pub(crate) fn channel_setup() -> ChannelSetup {
             stuck: None,
             max_rate: None,
         },
+        steps: Some(4.0),
         max_permissible_error: None,
         decision_rule: DecisionRule::GuardBand { multiple: 1.0 },
         service_horizon: Duration::from_seconds(14 * 86_400),

@@ -25,6 +25,8 @@ pub enum AlarmKind {
     CorrectionLimit,
     /// No indication for too long.
     DataGap,
+    /// The sensor stepped.
+    Step,
     /// The screen rejected so many in a row that it stopped: a step or a bad reference.
     ScreenLockedOut,
     /// The sensor repeats one value, or does not follow its reference.

@@ -16,6 +16,7 @@ mod notice;
 mod order;
 mod outlook;
 mod pair;
+mod step;
 mod validation;
 
 pub use alarm::{AlarmChange, AlarmKind, AlarmState};
@@ -31,6 +32,7 @@ pub use outlook::{
     TimeToLimit,
 };
 pub use pair::{Flag, PairFate, Rejection, SPIKE_FAILS};
+pub use step::Step;
 pub use validation::Validation;
 
 use crate::setup::{ChannelId, InfluenceId, ReferenceId, Setup};
@@ -93,6 +95,8 @@ pub enum Output {
     Alarm(AlarmChange),
     /// The announced degree changed, with the evidence.
     Degree(Box<DegreeChange>),
+    /// The sensor stepped: its stretch is closed and a new one begins.
+    Step(Box<Step>),
     /// A pair was made, and this became of it.
     Pair(PairFate),
     /// Something that a person should be able to read about; limited in rate, with a count of what

@@ -11,6 +11,7 @@
 //! - `spare`: used-up factors
 //! - [`window`]: the sliding window
 //! - [`before`]: the window as it was before an instant
+//! - [`ahead`]: its largest model carried on past it
 //! - [`criterion`]: information criteria as plain formulas
 //! - [`correlation`]: what a correlated sample is worth
 //! - `between`: segments of the window, each taken as one row
@@ -33,6 +34,7 @@
 //! - `claim`: when span terms and influence quantities are announced, and when refused
 //! - `blend`: the published mean over all these models
 
+pub mod ahead;
 pub mod basis;
 pub mod before;
 mod between;

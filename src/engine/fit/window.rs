@@ -162,6 +162,12 @@ impl Window {
         self.open.as_ref()
     }
 
+    /// Whether rows have left it.
+    #[must_use]
+    pub fn has_dropped(&self) -> bool {
+        self.has_dropped
+    }
+
     /// Oldest phenomenon time in the window.
     #[must_use]
     pub fn oldest(&self) -> Option<Timestamp> {

@@ -27,6 +27,9 @@ pub struct ChannelSetup {
     pub fit: FitSetup,
     /// What may enter the fit.
     pub screening: ScreeningSetup,
+    /// Steps of the sensor end the stretch. One is told when it differs by so many standard
+    /// uncertainties from what the pairs before it let expect; `None`: steps aren't looked for.
+    pub steps: Option<f64>,
     /// Largest error that the specification permits, either sign; `None`: no conformity statement.
     pub max_permissible_error: Option<f64>,
     /// How an error with its uncertainty is accepted or not.

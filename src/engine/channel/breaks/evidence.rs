@@ -1,0 +1,173 @@
+//! Whether the pairs since a signal are a step: against the extrapolation of the largest model
+//! fitted to the pairs before it, and against a bend.
+
+use super::bend::Series;
+use super::noise::Known;
+use crate::channel::recent::{Recent, Remembered};
+use crate::channel::stretch::{Stretch, row};
+use crate::fit::Row;
+use crate::fit::ahead::Ahead;
+use crate::quantile;
+use crate::setup::ChannelSetup;
+use crate::time::Timestamp;
+
+/// Pairs before the change that the place of the step is looked for among.
+const BEFORE: usize = 64;
+/// What a pair can contribute to the mean after the change, in standard deviations about their
+/// median: an outlier among them makes no step.
+const REACH: f64 = 4.0;
+/// A step must explain the pairs better than any bend by so much of twice the log likelihood:
+/// strong evidence, as for a degree (Kass & Raftery 1995, p. 777).
+pub(super) const BEND_MARGIN: f64 = 6.0;
+
+/// A step.
+#[derive(Clone, Copy, Debug, PartialEq)]
+pub(crate) struct Finding {
+    /// The last pair before the change, and the first after it.
+    pub(crate) last_before: Option<Timestamp>,
+    pub(crate) first_after: Timestamp,
+    /// The earliest and latest pair that may have been the first after it.
+    pub(crate) earliest: Timestamp,
+    pub(crate) latest: Timestamp,
+    /// Mean of the pairs after the change beyond the extrapolation, and its standard uncertainty.
+    pub(crate) size: f64,
+    pub(crate) u: f64,
+    /// How many u are needed.
+    pub(crate) needed: f64,
+    /// The extrapolation at the first pair after the change.
+    pub(crate) before: f64,
+    /// Pairs after the change.
+    pub(crate) pairs: usize,
+    /// By how much the step explains the pairs better than a bend.
+    pub(crate) gain: f64,
+}
+
+/// What is looked at.
+pub(super) struct Question<'a> {
+    pub(super) stretch: &'a Stretch,
+    pub(super) recent: &'a Recent,
+    pub(super) setup: &'a ChannelSetup,
+    pub(super) known: Known,
+    pub(super) up: bool,
+    /// Fewest pairs that make a step.
+    pub(super) least: usize,
+    /// So many u must a step have, with the noise known exactly.
+    pub(super) confirmation: f64,
+}
+
+/// A pair with the model before the change taken off.
+#[derive(Clone, Copy)]
+struct Rest {
+    row: Row,
+    residual: f64,
+}
+
+impl Question<'_> {
+    /// Looks for a step that began about `began`; `None` if there is none, or no model from before
+    /// it.
+    pub(super) fn look(&self, began: Timestamp) -> Option<Finding> {
+        let mut pairs: Vec<&Remembered> = self
+            .recent
+            .iter()
+            .filter(|held| held.stretch == self.stretch.number())
+            .collect();
+        pairs.sort_by_key(|held| held.pair.time);
+        let first = self.place(&pairs, began)?;
+        self.find(&pairs, first)
+    }
+
+    /// When the step most likely happened, with the model from before the signal's beginning.
+    fn place(&self, pairs: &[&Remembered], began: Timestamp) -> Option<Timestamp> {
+        let fit = self.stretch.fit_before(began, self.recent, self.setup);
+        let rests = self.rests(pairs, &fit.ahead()?, began);
+        let place = self.series(&rests).step(self.up)?;
+        Some(rests.get(place.first)?.row.time)
+    }
+
+    fn find(&self, pairs: &[&Remembered], first_after: Timestamp) -> Option<Finding> {
+        let fit = self
+            .stretch
+            .fit_before(first_after, self.recent, self.setup);
+        let ahead = fit.ahead()?;
+        let rests = self.rests(pairs, &ahead, first_after);
+        let series = self.series(&rests);
+        let place = series.step(self.up)?;
+        let split = rests.partition_point(|rest| rest.row.time < first_after);
+        let (before, after) = rests.split_at(split);
+        let first = after.first()?;
+        let n = after.len() as f64;
+        let rows: Vec<Row> = after.iter().map(|rest| rest.row).collect();
+        let sd = self.known.sd.max(ahead.residual_sd);
+        let thin = rows.iter().map(|row| 1.0 / row.weight).sum::<f64>() / n;
+        let variance = self.known.inflation * ahead.leverage(&rows)? + self.known.of_mean(n) * thin;
+        let u = sd * variance.sqrt();
+        let size = after.iter().map(|rest| rest.residual).sum::<f64>() / n;
+        let outside = 2.0 * quantile::normal_below(-self.confirmation);
+        let needed = quantile::student(1.0 - outside, self.known.degrees_of_freedom);
+        if after.len() < self.least || size.abs() < needed * u {
+            return None;
+        }
+        let gain = place.gain - series.bend();
+        (gain >= BEND_MARGIN).then_some(Finding {
+            last_before: before.last().map(|rest| rest.row.time),
+            first_after,
+            earliest: rests.get(place.earliest)?.row.time.min(first_after),
+            latest: rests.get(place.latest)?.row.time.max(first_after),
+            size,
+            u,
+            needed,
+            before: ahead.expected(&first.row),
+            pairs: after.len(),
+            gain,
+        })
+    }
+
+    /// The last [`BEFORE`] pairs that entered before `from`, and all since then, less the model.
+    fn rests(&self, pairs: &[&Remembered], ahead: &Ahead<'_>, from: Timestamp) -> Vec<Rest> {
+        let rest = |held: &&Remembered| {
+            let row = row(&held.pair, self.setup);
+            Rest {
+                row,
+                residual: ahead.residual(&row),
+            }
+        };
+        let split = pairs.partition_point(|held| held.pair.time < from);
+        let (before, after) = pairs.split_at(split);
+        let entered = before.iter().filter(|held| held.rejected.is_none());
+        let mut rests: Vec<Rest> = entered.rev().take(BEFORE).map(rest).collect();
+        rests.reverse();
+        let mut after: Vec<Rest> = after.iter().map(rest).collect();
+        let reach = REACH * self.known.sd.max(ahead.residual_sd);
+        let centre = median(&after);
+        for rest in &mut after {
+            rest.residual = rest.residual.clamp(centre - reach, centre + reach);
+        }
+        rests.append(&mut after);
+        rests
+    }
+
+    fn series(&self, rests: &[Rest]) -> Series {
+        let first = rests.first().map_or(Timestamp(0), |rest| rest.row.time);
+        let last = rests.last().map_or(first, |rest| rest.row.time);
+        let length = (last.since(first).0 as f64).max(1.0);
+        let times = rests
+            .iter()
+            .map(|rest| rest.row.time.since(first).0 as f64 / length)
+            .collect();
+        let residuals: Vec<f64> = rests
+            .iter()
+            .map(|rest| rest.residual * rest.row.weight.sqrt())
+            .collect();
+        Series::new(times, &residuals, self.known.phi, self.known.unit)
+    }
+}
+
+/// Middle value (the upper of two); 0 of nothing.
+fn median(rests: &[Rest]) -> f64 {
+    let mut values: Vec<f64> = rests.iter().map(|rest| rest.residual).collect();
+    if values.is_empty() {
+        return 0.0;
+    }
+    let half = values.len() / 2;
+    *values.select_nth_unstable_by(half, f64::total_cmp).1
+}

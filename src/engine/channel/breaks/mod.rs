@@ -1,0 +1,159 @@
+//! Beside the screen: whether the sensor stepped.
+//!
+//! ```text
+//!   innovations, rejected ones too ─▶ whitened (noise) ─▶ chart ─▶ signal ─┐   lock-out ─▶ signal
+//!                                                                          ▼
+//!         ┌───────────────────── look (evidence): mean after the change against what the largest
+//!         │                      model from before it expects, and against a bend
+//!         ▼                               │
+//!   a step: the stretch is closed         ├─▶ not yet: look again when a fifth more pairs have come
+//!   at the change time                    └─▶ no: evidence of drift; the chart starts anew
+//! ```
+//!
+//! The chart costs the same for every pair; looks happen at signals only.
+
+mod bend;
+mod chart;
+mod evidence;
+mod noise;
+
+use super::recent::Recent;
+use super::screening::Innovation;
+use super::stretch::Stretch;
+use crate::setup::ChannelSetup;
+use crate::time::Timestamp;
+use chart::{Chart, DECISION_INTERVAL, REFERENCE_VALUE};
+pub(crate) use evidence::Finding;
+use evidence::Question;
+use noise::Noise;
+use serde::{Deserialize, Serialize};
+use std::collections::VecDeque;
+
+/// Pairs after a change beyond which a signal is given up as evidence of drift.
+const PATIENCE: u32 = 64;
+/// A look is repeated when the pairs since the last zero have grown by one and this part.
+const MORE: u32 = 5;
+/// Fewest pairs that make a step: as many rejections as lock the screen out, within these bounds.
+const FEWEST: u32 = 3;
+const MOST: u32 = 16;
+
+/// The state of the station.
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+pub(super) struct Breaks {
+    noise: Noise,
+    chart: Chart,
+    /// The newest standardised innovation.
+    before: Option<f64>,
+    /// Times of the newest pairs that the chart took, to know where an arm left zero.
+    times: VecDeque<Timestamp>,
+    pending: Option<Pending>,
+    /// Signals that turned out to be drift, in this stretch.
+    drifts: u64,
+}
+
+/// A signal that waits for more pairs.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+struct Pending {
+    up: bool,
+    /// First pair after the change, as the chart has it.
+    began: Timestamp,
+    /// Pairs since then.
+    pairs: u32,
+    /// Pairs at which to look next.
+    next_look: u32,
+}
+
+impl Breaks {
+    /// Takes a pair's innovation; what was found, if that is a step. `recent` holds the pair.
+    pub(super) fn take(
+        &mut self,
+        innovation: Innovation,
+        locks_out: bool,
+        (stretch, recent): (&Stretch, &Recent),
+        confirmation: f64,
+        setup: &ChannelSetup,
+    ) -> Option<Finding> {
+        let newest = self.times.back();
+        if newest.is_some_and(|newest| innovation.time < *newest) {
+            return None;
+        }
+        let standardised = innovation.value / innovation.spread;
+        let before = self.before.replace(standardised);
+        if self.times.len() == PATIENCE as usize {
+            self.times.pop_front();
+        }
+        self.times.push_back(innovation.time);
+        let known = self.noise.known();
+        self.noise.take(standardised);
+        let known = known?;
+        self.chart
+            .take(known.whiten(standardised, before), REFERENCE_VALUE);
+        let least = setup.screening.lock_out_after.clamp(FEWEST, MOST);
+        let up = innovation.value > 0.0;
+        let pending = self.follow(locks_out.then_some((up, least)))?;
+        if pending.pairs < pending.next_look.max(least) {
+            return None;
+        }
+        let question = Question {
+            stretch,
+            recent,
+            setup,
+            known,
+            up: pending.up,
+            least: least as usize,
+            confirmation,
+        };
+        let found = question.look(pending.began);
+        if found.is_none() {
+            self.look_again();
+        }
+        found
+    }
+
+    /// The signal that waits, with the newest pair counted; a new one if none does.
+    fn follow(&mut self, locks_out: Option<(bool, u32)>) -> Option<Pending> {
+        if let Some(pending) = &mut self.pending {
+            pending.pairs += 1;
+        } else {
+            let signal = self.chart.signal(DECISION_INTERVAL);
+            let (up, pairs) = match (signal, locks_out) {
+                (Some(signal), _) => (signal.up, signal.readings.min(PATIENCE)),
+                (None, Some(run)) => run,
+                (None, None) => return None,
+            };
+            let place = self.times.len().saturating_sub(pairs as usize);
+            self.pending = Some(Pending {
+                up,
+                began: *self.times.get(place)?,
+                pairs,
+                next_look: pairs,
+            });
+        }
+        self.pending
+    }
+
+    /// The signal was not confirmed: waits for more pairs, or gives it up as drift.
+    fn look_again(&mut self) {
+        let Some(pending) = &mut self.pending else {
+            return;
+        };
+        if pending.pairs >= PATIENCE {
+            self.pending = None;
+            self.chart = Chart::default();
+            self.drifts += 1;
+        } else {
+            pending.next_look = pending.pairs + 1 + pending.pairs / MORE;
+        }
+    }
+
+    /// A new stretch begins. Of its noise the latest `latest` innovations are forgotten, which what
+    /// ended the old one pulled away; `None`: everything is.
+    pub(super) fn begin_stretch(&mut self, latest: Option<usize>) {
+        let mut noise = latest.map_or_else(Noise::default, |_| std::mem::take(&mut self.noise));
+        noise.forget(latest.unwrap_or(0));
+        *self = Self {
+            noise,
+            ..Self::default()
+        };
+    }
+}

@@ -47,6 +47,7 @@ reference = { value = "/r", certificate = "C-1" }
 window = "12 d"
 segments = 48
 max_permissible_error = 0.6
+max_correction = 9.0
 corrected_values = true
 "#;
 

@@ -1,12 +1,10 @@
 //! What was said, held against what was planted: found, missed, false.
 
-use super::observe::{DEGREE_RAISED, Said};
+use super::observe::{DEGREE_RAISED, STEP, Said};
 use super::world::{Fault, Place, World};
 use serde::Serialize;
 use std::collections::BTreeMap;
 
-/// The word of a confirmed step.
-pub const STEP: &str = "step";
 /// The word of the error-limit alarm.
 const ERROR_LIMIT: &str = "error-limit";
 /// The word of the time-to-limit alarm.

@@ -4,9 +4,12 @@
 //! topic, or one of the words below. Whatever else the engine learns to say gets its word here.
 
 use super::world::Place;
-use holdtrue_engine::event::{AlarmState, Correction, Output, Subject};
+use crate::sensor::START;
+use holdtrue_engine::event::{AlarmKind, AlarmState, Correction, Output, Subject};
 use holdtrue_engine::setup::ChannelId;
 
+/// A step was confirmed.
+pub const STEP: &str = "step";
 /// The announced degree rose.
 pub const DEGREE_RAISED: &str = "degree-raised";
 
@@ -72,9 +75,23 @@ impl Observer {
                 self.documents[place] = Some(document);
             }
             Output::Withdrawn { channel, .. } => self.documents[index(channel)] = None,
+            // The alarm about a step says what the step itself has said, and only about the first of
+            // several.
+            Output::Alarm(change) if change.kind == AlarmKind::Step => {}
             Output::Alarm(change) if change.state != AlarmState::Normal => {
                 let word = kebab(&format!("{:?}", change.kind));
                 self.say(word, place(change.subject), day);
+            }
+            Output::Step(step) => {
+                let sensor = Place::Sensor(index(step.channel));
+                self.say(STEP.to_owned(), Some(sensor), day);
+                if let Some(said) = self.said.last_mut() {
+                    said.jump = Some(Jump {
+                        day: step.first_after.since(START).days(),
+                        size: step.size,
+                        u: step.size_u,
+                    });
+                }
             }
             Output::Degree(change) if change.to > change.from => {
                 let sensor = Place::Sensor(index(change.channel));

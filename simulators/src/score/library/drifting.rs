@@ -4,8 +4,8 @@ use super::stationary::feel_temperature;
 use super::{Class, Scenario};
 use crate::behaviour::curve::Curve;
 use crate::score::chooser::Chooser;
-use crate::score::findings::STEP;
 use crate::score::ground::{RUN_DAYS, WHITE, declare_influence, group, one};
+use crate::score::observe::STEP;
 use crate::score::world::{Cleaning, Fault, Place, World};
 use holdtrue_engine::time::Duration;
 

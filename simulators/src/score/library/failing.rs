@@ -4,8 +4,8 @@ use super::{Class, Scenario};
 use crate::behaviour::curve::Curve;
 use crate::behaviour::disturbance::Disturbance;
 use crate::score::chooser::Chooser;
-use crate::score::findings::STEP;
 use crate::score::ground::{WHITE, WINDOW_DAYS, one};
+use crate::score::observe::STEP;
 use crate::score::world::{Fault, OtherUnit, Place, World};
 
 /// The scenarios of this file.

@@ -470,7 +470,9 @@ fn live_the_future_is_refused() {
 #[test]
 fn another_sensor_inherits_nothing_but_the_counts() {
     let mut noise = Noise::new(26, 0.0);
-    let mut engine = engine(setup(ph()));
+    let mut far_off = ph();
+    far_off.max_correction = Some(10.0);
+    let mut engine = engine(setup(far_off));
     let said = feed(
         &mut engine,
         &readings(0, 200, |_| 0.7 + 0.002 * noise.draw()),

@@ -296,3 +296,34 @@ fn the_program_that_wrote_a_row_is_known() {
     assert_eq!(record.program_at(1).unwrap().as_deref(), Some("0.1.0"));
     assert_eq!(record.program_at(2).unwrap().as_deref(), Some("0.2.0"));
 }
+
+/// Earlier builds wrote an outbox without the answers' correlation data.
+#[test]
+fn an_outbox_of_an_earlier_build_is_read_and_takes_answers() {
+    let folder = tempfile::tempdir().unwrap();
+    let mut record = Record::open(folder.path()).unwrap();
+    let mut batch = record.batch();
+    let waiting = Numbered {
+        number: 1,
+        document: document("a", "1", true),
+    };
+    batch.add_document(waiting.clone());
+    record.commit(&batch).unwrap();
+    drop(record);
+    let file = folder.path().join("holdtrue.sqlite");
+    let connection = rusqlite::Connection::open(file).unwrap();
+    connection
+        .execute_batch("ALTER TABLE outbox DROP COLUMN correlation")
+        .unwrap();
+    drop(connection);
+    let mut record = Record::open(folder.path()).unwrap();
+    let mut batch = record.batch();
+    let mut answer = Numbered {
+        number: 2,
+        document: document("tool/answers", "2", false),
+    };
+    answer.document.correlation = Some(vec![0, 255]);
+    batch.add_document(answer.clone());
+    record.commit(&batch).unwrap();
+    assert_eq!(record.outbox().unwrap(), [waiting, answer]);
+}

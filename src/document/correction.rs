@@ -1,15 +1,18 @@
 //! Correction and corrected-value documents.
 
 use super::{SCHEMA_VERSION, word};
-use holdtrue_engine::event::{Corrected, Correction, WindowSeen};
-use holdtrue_engine::setup::{ChannelSetup, ReferenceKind, ReferenceSetup, Setup};
+use holdtrue_engine::event::{Corrected, Correction, InfluenceTerm, WindowSeen};
+use holdtrue_engine::setup::{
+    ChannelInfluence, ChannelSetup, ReferenceId, ReferenceKind, ReferenceSetup, Setup,
+};
 use serde::Serialize;
 
 /// How to correct a channel's indications, and how sure that is.
 ///
-/// A consumer needs two Horner loops and c = (zero(t) + span(t)·(indication − `span_centre`)) / (1
-/// − span(t)), with t in `time_unit` from `origin`; without span terms, c = zero(t). The corrected
-/// value is indication + c.
+/// A consumer needs two Horner loops, with t in `time_unit` from `origin`, and Z = zero(t) + Σ
+/// coefficient·(value − centre) over `influences`: c = (Z + span(t)·(indication − `span_centre`)) /
+/// (1 − span(t)) where `span_side` is "reference", without the division where it is "indication";
+/// without span terms, c = Z. The corrected value is indication + c.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 pub struct CorrectionDocument<'a> {
     schema_version: u32,
@@ -27,10 +30,15 @@ pub struct CorrectionDocument<'a> {
     degree: u8,
     weights: &'a [f64],
     zero: &'a [f64],
-    span: [f64; 0],
+    span: &'a [f64],
     span_centre: f64,
+    span_side: &'static str,
+    claim: String,
+    span_refused: Option<&'static str>,
+    influences: Vec<Influence<'a>>,
     range: [f64; 2],
     suppressed: bool,
+    judged_at: f64,
     correction: f64,
     standard_uncertainty: f64,
     coverage_factor: f64,
@@ -46,8 +54,8 @@ pub struct CorrectionDocument<'a> {
     residual_sd: f64,
     configuration: &'a str,
     stretch: u32,
-    reference: &'a str,
-    certificate: Option<&'a str>,
+    reference: String,
+    certificate: Option<String>,
     certificate_expires: Option<String>,
     certificate_expired: bool,
 }
@@ -62,6 +70,17 @@ pub(super) fn caution(reference: &ReferenceSetup) -> Option<&'static str> {
             None
         }
     }
+}
+
+/// What an influence quantity does to the correction.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+struct Influence<'a> {
+    name: &'a str,
+    unit: Option<&'a str>,
+    in_force: bool,
+    coefficient: f64,
+    centre: f64,
+    range: [f64; 2],
 }
 
 /// What the fit looked at.
@@ -86,8 +105,9 @@ impl<'a> CorrectionDocument<'a> {
     /// Of one correction of `channel`, one of the channels in `setup`.
     #[must_use]
     pub fn new(correction: &'a Correction, channel: &'a ChannelSetup, setup: &'a Setup) -> Self {
-        let reference = setup.references.get(channel.reference.0 as usize);
-        let expires = reference.and_then(|it| it.expires);
+        let references = judged_against(channel, setup);
+        // Of several known values the certificate that ends first.
+        let expires = references.iter().filter_map(|it| it.expires).min();
         Self {
             schema_version: SCHEMA_VERSION,
             channel: &channel.name,
@@ -98,18 +118,26 @@ impl<'a> CorrectionDocument<'a> {
             valid_until: word::time(correction.valid_until),
             state: word::rung(correction.rung),
             because: correction.because.map(word::cause),
-            caution: reference.and_then(caution),
+            caution: references.iter().find_map(|it| caution(it)),
             origin: word::time(correction.origin),
             time_unit: "d",
             degree: correction.degree,
             weights: &correction.weights,
             zero: &correction.zero,
-            // Span terms are not fitted yet; the fields stand so that consumers handle them from
-            // the first day.
-            span: [],
-            span_centre: 0.0,
+            span: &correction.span,
+            span_centre: correction.span_centre,
+            span_side: word::span_side(correction.span_side),
+            claim: claim(correction, channel),
+            span_refused: correction.span_refused.map(word::span_refusal),
+            influences: channel
+                .influences
+                .iter()
+                .zip(&correction.influences)
+                .map(|(influence, term)| Influence::new(influence, term))
+                .collect(),
             range: [correction.range.0, correction.range.1],
             suppressed: correction.suppressed,
+            judged_at: correction.judged_at,
             correction: correction.correction,
             standard_uncertainty: correction.standard_uncertainty,
             coverage_factor: correction.coverage_factor,
@@ -130,12 +158,57 @@ impl<'a> CorrectionDocument<'a> {
             residual_sd: correction.residual_sd,
             configuration: &setup.fingerprint,
             stretch: correction.stretch,
-            reference: reference.map_or("", |it| it.name.as_str()),
-            certificate: reference.and_then(|it| it.certificate.as_deref()),
+            reference: joined(&references, |it| Some(&it.name)).unwrap_or_default(),
+            certificate: joined(&references, |it| it.certificate.as_deref()),
             certificate_expires: expires.map(word::time),
             certificate_expired: expires.is_some_and(|expires| expires <= correction.issued),
         }
     }
+}
+
+impl<'a> Influence<'a> {
+    fn new(influence: &'a ChannelInfluence, term: &InfluenceTerm) -> Self {
+        Self {
+            name: &influence.name,
+            unit: influence.unit.as_deref(),
+            in_force: term.in_force,
+            coefficient: term.coefficient,
+            centre: term.centre,
+            range: [term.range.0, term.range.1],
+        }
+    }
+}
+
+/// What the correction claims to know, and where.
+fn claim(correction: &Correction, channel: &ChannelSetup) -> String {
+    let (lowest, highest) = correction.range;
+    let unit = &channel.unit;
+    if correction.span.is_empty() {
+        format!("zero only, valid near {lowest} to {highest} {unit}")
+    } else {
+        format!("zero and span, valid from {lowest} to {highest} {unit}")
+    }
+}
+
+/// What a channel is judged against: its reference, or each of the known values that it names.
+fn judged_against<'a>(channel: &ChannelSetup, setup: &'a Setup) -> Vec<&'a ReferenceSetup> {
+    let of = |id: ReferenceId| setup.references.get(id.0 as usize);
+    match of(channel.reference) {
+        Some(ReferenceSetup {
+            kind: ReferenceKind::Checks { points },
+            ..
+        }) => points.iter().filter_map(|&point| of(point)).collect(),
+        reference => Vec::from_iter(reference),
+    }
+}
+
+/// What the references say, one after the other; `None` if none says anything.
+fn joined<'a>(
+    references: &[&'a ReferenceSetup],
+    what: impl Fn(&'a ReferenceSetup) -> Option<&'a str>,
+) -> Option<String> {
+    let told: Vec<&str> = references.iter().filter_map(|it| what(it)).collect();
+    (!told.is_empty()).then(|| told.join(", "))
 }
 
 impl Window {
@@ -162,6 +235,8 @@ pub struct CorrectedDocument<'a> {
     correction: f64,
     corrected: f64,
     expanded_uncertainty: f64,
+    beyond_range: bool,
+    influences_assumed: Vec<&'a str>,
     issue_number: u64,
 }
 
@@ -178,6 +253,13 @@ impl<'a> CorrectedDocument<'a> {
             correction: corrected.correction,
             corrected: corrected.corrected,
             expanded_uncertainty: corrected.expanded_uncertainty,
+            beyond_range: corrected.beyond_range,
+            influences_assumed: corrected
+                .influences_assumed
+                .iter()
+                .filter_map(|&place| channel.influences.get(usize::from(place)))
+                .map(|influence| influence.name.as_str())
+                .collect(),
             issue_number: corrected.issue_number,
         }
     }

@@ -3,7 +3,9 @@
 use holdtrue_engine::event::{
     AlarmKind, AlarmState, Cause, RefusedReason, Rung, Status, Subject, Zone,
 };
+use holdtrue_engine::fit::SpanRefusal;
 use holdtrue_engine::setup::DecisionRule;
+use holdtrue_engine::setup::SpanSide;
 use holdtrue_engine::time::Timestamp;
 
 /// RFC 3339 in UTC, with as many digits of the second as the instant has.
@@ -47,6 +49,23 @@ pub(super) fn subject(subject: Subject) -> &'static str {
         Subject::Channel(_) => "channel",
         Subject::Reference(_) => "reference",
         Subject::Influence(_) => "influence",
+    }
+}
+
+/// Which side of a pair the span is a function of.
+pub(super) fn span_side(side: SpanSide) -> &'static str {
+    match side {
+        SpanSide::Reference => "reference",
+        SpanSide::Indication => "indication",
+    }
+}
+
+/// Why no span is claimed.
+pub(super) fn span_refusal(refusal: SpanRefusal) -> &'static str {
+    match refusal {
+        SpanRefusal::FewSegments => "few-segments",
+        SpanRefusal::NoSpread => "no-spread",
+        SpanRefusal::RegressorNoise => "regressor-noise",
     }
 }
 

@@ -8,9 +8,10 @@
 //! q²/12 make of the rows; where even so nothing is left (two equal values, nothing declared), u is
 //! not known and no conformity is stated.
 
-use super::{Scene, conformity};
+use super::{Scene, conformity, levels};
 use crate::event::Conformity;
-use crate::fit::Published;
+use crate::fit::basis::MAX_INFLUENCES;
+use crate::fit::{Curve, Published, Row};
 use crate::quantile;
 use crate::setup::{ChannelSetup, ReferenceSetup};
 use crate::time::{Duration, Timestamp};
@@ -30,7 +31,9 @@ const MANY: f64 = 1e9;
 /// What the fit means at its newest pair.
 #[derive(Clone, Debug)]
 pub(crate) struct Judgement {
-    /// Estimated error ê, in the channel's unit.
+    /// The level at which the error is judged.
+    pub(crate) level: f64,
+    /// Estimated error ê there, in the channel's unit.
     pub(crate) error: f64,
     /// Standard uncertainty of ê.
     pub(crate) u: f64,
@@ -63,8 +66,6 @@ impl Judgement {
         residuals: &Residuals,
         scene: &Scene<'_>,
     ) -> Option<Self> {
-        let error = *published.coefficients.first()? + 0.0;
-        let fit = published.covariance.first()?.first()?.max(0.0);
         let lack = residuals.lack_of_fit(&published);
         let common = scene.reference.uncertainty_common;
         let resolution = scene.setup.resolution;
@@ -72,6 +73,9 @@ impl Judgement {
         // Both say that the curve misses the newest pairs: the larger counts.
         let turn = (published.turn_variance - lack.variance).max(0.0);
         let rest_variance = common_variance + turn;
+        let (level, curve) = levels::judged(&published, rest_variance);
+        let error = *curve.coefficients.first()? + 0.0;
+        let fit = curve.covariance.first()?.first()?.max(0.0);
         let u = (fit + rest_variance).sqrt();
         let nu = effective_degrees_of_freedom(
             u,
@@ -81,11 +85,12 @@ impl Judgement {
             ],
         );
         let k = quantile::student(scene.setup.coverage, nu);
-        let slope = published.coefficients.get(1).copied().unwrap_or(0.0) + 0.0;
-        let slope_u = slope_variance(&published).max(0.0).sqrt();
+        let slope = curve.coefficients.get(1).copied().unwrap_or(0.0) + 0.0;
+        let slope_u = slope_variance(&curve).max(0.0).sqrt();
         let slope_k =
             quantile::student(scene.setup.coverage, published.degrees_of_freedom.max(1.0));
         let judgement = Self {
+            level,
             error,
             u,
             rest_variance,
@@ -103,6 +108,7 @@ impl Judgement {
 
     fn is_finite(&self) -> bool {
         let numbers = [
+            self.level,
             self.error,
             self.u,
             self.k,
@@ -115,6 +121,8 @@ impl Judgement {
         numbers
             .iter()
             .chain(&published.coefficients)
+            .chain(&published.span)
+            .chain(&published.influences)
             .chain(&published.weights)
             .chain(published.covariance.iter().flatten())
             .chain(&published.criterion.values)
@@ -137,8 +145,8 @@ pub(crate) fn declared_variance(channel: &ChannelSetup, reference: &ReferenceSet
     each + channel.noise * channel.noise + channel.resolution * channel.resolution / 12.0
 }
 
-fn slope_variance(published: &Published) -> f64 {
-    published
+fn slope_variance(curve: &Curve) -> f64 {
+    curve
         .covariance
         .get(1)
         .and_then(|row| row.get(1))
@@ -173,16 +181,20 @@ pub(crate) fn polynomial(coefficients: &[f64], t: f64) -> f64 {
         .fold(0.0, |value, coefficient| value * t + coefficient)
 }
 
-/// φᵀCφ of a polynomial's covariance at `t`.
-pub(crate) fn variance_at(covariance: &[Vec<f64>], t: f64) -> f64 {
-    let rows: Vec<f64> = covariance.iter().map(|row| polynomial(row, t)).collect();
-    polynomial(&rows, t).max(0.0)
-}
-
 /// The newest accepted errors, to see whether the published curve still goes through them.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Residuals {
-    recent: VecDeque<(Timestamp, f64)>,
+    recent: VecDeque<Accepted>,
+}
+
+/// An accepted error.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+struct Accepted {
+    time: Timestamp,
+    error: f64,
+    /// The level and the influence quantities with it.
+    x: f64,
+    influences: [f64; MAX_INFLUENCES],
 }
 
 /// The part of u that the fit's own covariance does not know.
@@ -192,13 +204,28 @@ struct LackOfFit {
     degrees_of_freedom: f64,
 }
 
+/// What the mean says of a pair.
+fn expected(published: &Published, held: &Accepted) -> f64 {
+    if published.span.is_empty() && published.influences.is_empty() {
+        let days = held.time.since(published.origin).days();
+        return polynomial(&published.coefficients, days);
+    }
+    published.evaluate(held.time, held.x, held.influences).0
+}
+
 impl Residuals {
     /// Remembers a pair that entered the fit, in order of time however it came.
-    pub(crate) fn push(&mut self, time: Timestamp, error: f64) {
-        let place = self.recent.partition_point(|(held_time, held)| {
-            (*held_time, held.total_cmp(&error)) <= (time, Ordering::Equal)
+    pub(crate) fn push(&mut self, row: &Row) {
+        let place = self.recent.partition_point(|held| {
+            (held.time, held.error.total_cmp(&row.error)) <= (row.time, Ordering::Equal)
         });
-        self.recent.insert(place, (time, error));
+        let accepted = Accepted {
+            time: row.time,
+            error: row.error,
+            x: row.x,
+            influences: row.influences,
+        };
+        self.recent.insert(place, accepted);
         if self.recent.len() > RECENT {
             self.recent.pop_front();
         }
@@ -214,11 +241,8 @@ impl Residuals {
         let residuals: Vec<f64> = self
             .recent
             .iter()
-            .filter(|(time, _)| *time >= published.window.from)
-            .map(|&(time, error)| {
-                let days = time.since(published.origin).days();
-                error - polynomial(&published.coefficients, days)
-            })
+            .filter(|held| held.time >= published.window.from)
+            .map(|held| held.error - expected(published, held))
             .collect();
         if residuals.len() < ENOUGH {
             return LackOfFit {
@@ -296,6 +320,16 @@ pub(super) mod tests {
         }
     }
 
+    fn row(time: i64, error: f64) -> Row {
+        Row {
+            time: Timestamp(time),
+            error,
+            weight: 1.0,
+            x: 0.0,
+            influences: [0.0; MAX_INFLUENCES],
+        }
+    }
+
     /// Check value V18 (GUM G.4.1, from memory): relative u 0.25, 0.57, 0.82 % with ν 9, 4, 14 give
     /// u 1.03 %, ν 19.0, and U95 = 2.2 %.
     #[test]
@@ -320,17 +354,10 @@ pub(super) mod tests {
     }
 
     #[test]
-    fn variance_of_a_polynomial_is_the_quadratic_form() {
-        let covariance = vec![vec![4.0, 1.0], vec![1.0, 2.0]];
-        assert_eq!(variance_at(&covariance, 0.0), 4.0);
-        assert_eq!(variance_at(&covariance, 3.0), 4.0 + 2.0 * 3.0 + 9.0 * 2.0);
-    }
-
-    #[test]
     fn noise_around_the_curve_is_no_lack_of_fit_but_an_offset_is() {
         let mut residuals = Residuals::default();
         for (time, noise) in (0..64).zip([1.0, -1.0, -1.0, 1.0].into_iter().cycle()) {
-            residuals.push(Timestamp(time), 5.0 + noise);
+            residuals.push(&row(time, 5.0 + noise));
         }
         assert_eq!(residuals.lack_of_fit(&published(&[5.0])).variance, 0.0);
         let off = residuals.lack_of_fit(&published(&[8.0])).variance.sqrt();
@@ -343,7 +370,7 @@ pub(super) mod tests {
         let mut residuals = Residuals::default();
         for time in 0..64 {
             let error = if time < 50 { 5.0 } else { 9.0 };
-            residuals.push(Timestamp(time), error);
+            residuals.push(&row(time, error));
         }
         let mut curve = published(&[9.0]);
         assert!(residuals.lack_of_fit(&curve).variance > 0.0);
@@ -359,10 +386,10 @@ pub(super) mod tests {
         let mut there = Residuals::default();
         let mut back = Residuals::default();
         for (time, error) in rows {
-            there.push(Timestamp(time), error);
+            there.push(&row(time, error));
         }
         for (time, error) in rows.into_iter().rev() {
-            back.push(Timestamp(time), error);
+            back.push(&row(time, error));
         }
         assert_eq!(there, back);
     }
@@ -371,7 +398,7 @@ pub(super) mod tests {
     fn few_pairs_claim_no_lack_of_fit() {
         let mut residuals = Residuals::default();
         for _ in 0..15 {
-            residuals.push(Timestamp(0), 9.0);
+            residuals.push(&row(0, 9.0));
         }
         assert_eq!(residuals.lack_of_fit(&published(&[0.0])).variance, 0.0);
     }

@@ -129,8 +129,8 @@ impl Channel {
             return;
         }
         if let Some(judgement) = judgement {
-            let learned = self.stretch.learned();
-            self.publishing.consider(judgement, learned, scene, report);
+            let stretch = self.stretch.number();
+            self.publishing.consider(judgement, stretch, scene, report);
         }
         if self.publishing.has_expired(scene.now) {
             self.take_back(Cause::NotRenewed, scene, report);
@@ -145,8 +145,8 @@ impl Channel {
             return;
         }
         if let Some(judgement) = self.judgement(scene, report) {
-            let learned = self.stretch.learned();
-            self.publishing.consider(&judgement, learned, scene, report);
+            let stretch = self.stretch.number();
+            self.publishing.consider(&judgement, stretch, scene, report);
         }
     }
 

@@ -12,14 +12,17 @@
 //! What enters a station never comes back from a later one; the only memory shared between them is
 //! in [`Channel`].
 
+mod applying;
 mod breaks;
 mod checks;
 mod closing;
 mod conditions;
 mod conformity;
+mod drafting;
 mod forecast;
 mod judgement;
 mod ladder;
+mod levels;
 mod limits;
 mod outlook;
 mod pairing;

@@ -18,12 +18,14 @@
 //! long when pairs stop. Young windows hold at least twice the mean time between pairs, so that a
 //! document outlives the wait for the next pair.
 
-use super::judgement::{Judgement, polynomial, variance_at};
+use super::applying::{Acting, apply, at_level, judged_again};
+use super::drafting::Draft;
+use super::judgement::{Judgement, polynomial};
 use super::review::MOVED_PART;
-use super::stretch::Learned;
-use super::{Scene, conformity};
+use super::{Scene, conformity, levels};
 use crate::event::{Cause, Corrected, Correction, Output, Rung, WindowSeen};
 use crate::fit::Published;
+use crate::fit::basis::MAX_INFLUENCES;
 use crate::report::Report;
 use crate::setup::ChannelSetup;
 use crate::time::{Duration, Timestamp};
@@ -146,27 +148,31 @@ impl Publishing {
     pub(crate) fn consider(
         &mut self,
         judgement: &Judgement,
-        learned: Learned,
+        stretch: u32,
         scene: &Scene<'_>,
         report: &mut Report<'_>,
     ) {
-        let size = judgement.error.abs();
-        self.applied = if self.applied {
-            size >= DROP_BELOW * judgement.u
-        } else {
-            size >= APPLY_FROM * judgement.u
-        };
+        let size = levels::largest_significance(&judgement.published, judgement.rest_variance);
+        self.applied = size >= if self.applied { DROP_BELOW } else { APPLY_FROM };
         let valid_until = valid_until(&judgement.published, scene);
         let hidden = if self.applied {
             0.0
         } else {
             largest(&judgement.published, scene.now, valid_until)
         };
-        let candidate = self.candidate(judgement, (valid_until, hidden), learned, scene);
+        let candidate = Draft {
+            issue_number: self.issued + 1,
+            suppressed: !self.applied,
+            valid_until,
+            hidden,
+            stretch,
+        }
+        .of(judgement, scene);
         if candidate.valid_until <= scene.now {
             return;
         }
-        if !self.differs(&candidate, hidden, scene) {
+        let corners = levels::corners(&judgement.published);
+        if !self.differs(&candidate, hidden, &corners, scene) {
             return;
         }
         self.issued += 1;
@@ -249,10 +255,12 @@ impl Publishing {
         if sample.time < earliest || sample.time > document.valid_until {
             return None;
         }
-        let days = sample.time.since(document.origin).days();
-        let correction = polynomial(&document.zero, days) + 0.0;
-        let variance = variance_at(&document.covariance, days) + held.rest_variance;
+        let acting = Acting::of(document, sample.time, scene);
+        let applied = apply(document, sample.time, sample.value, acting.values)?;
+        let correction = applied.correction;
+        let variance = applied.variance + held.rest_variance;
         let expanded = document.coverage_factor * variance.sqrt() + held.suppressed_size;
+        let expanded = expanded + acting.assumed_effect;
         let corrected = sample.value + correction;
         (corrected.is_finite() && expanded.is_finite()).then_some(Corrected {
             channel: scene.id,
@@ -261,64 +269,21 @@ impl Publishing {
             correction,
             corrected,
             expanded_uncertainty: expanded,
+            beyond_range: applied.beyond || acting.beyond,
+            influences_assumed: acting.assumed,
             issue_number: document.issue_number,
         })
     }
 
-    fn candidate(
-        &self,
-        judgement: &Judgement,
-        (valid_until, hidden): (Timestamp, f64),
-        learned: Learned,
-        scene: &Scene<'_>,
-    ) -> Correction {
-        let published = &judgement.published;
-        let suppressed = !self.applied;
-        let zero = published
-            .coefficients
-            .iter()
-            .map(|&coefficient| if suppressed { 0.0 } else { 0.0 - coefficient })
-            .collect();
-        let expanded = judgement.k * judgement.u + hidden;
-        let corrected = conformity::state(0.0, judgement.u, expanded, scene);
-        Correction {
-            channel: scene.id,
-            issue_number: self.issued + 1,
-            issued: scene.now,
-            valid_from: scene.now,
-            valid_until,
-            rung: Rung::Advise,
-            because: None,
-            origin: published.origin,
-            degree: published.degree,
-            weights: published.weights.clone(),
-            zero,
-            suppressed,
-            correction: if suppressed {
-                0.0
-            } else {
-                0.0 - judgement.error
-            },
-            standard_uncertainty: judgement.u,
-            coverage_factor: judgement.k,
-            expanded_uncertainty: expanded,
-            degrees_of_freedom: judgement.nu,
-            covariance: published.zero_covariance(),
-            rule: scene.setup.decision_rule,
-            zone: judgement.conformity.zone(),
-            accepted: judgement.conformity.accepted(),
-            corrected_zone: corrected.zone(),
-            window: published.window,
-            criterion: published.criterion.clone(),
-            residual_sd: published.residual_sd,
-            stretch: learned.stretch,
-            range: learned.range,
-        }
-    }
-
     /// Whether the candidate, with so much suppressed inside its U, says something that the
     /// document in force does not.
-    fn differs(&self, candidate: &Correction, hidden: f64, scene: &Scene<'_>) -> bool {
+    fn differs(
+        &self,
+        candidate: &Correction,
+        hidden: f64,
+        corners: &[(f64, [f64; MAX_INFLUENCES])],
+        scene: &Scene<'_>,
+    ) -> bool {
         let Some(in_force) = &self.in_force else {
             return true;
         };
@@ -333,6 +298,8 @@ impl Publishing {
                 document.accepted,
                 document.rule,
                 document.corrected_zone,
+                document.span.len(),
+                claimed(document),
             )
         };
         let outlived = scene.now.since(held.issued).0 / 3
@@ -349,7 +316,7 @@ impl Publishing {
         (u - held.standard_uncertainty).abs() > step
             || expanded.abs() > candidate.coverage_factor * step
             || (hidden - in_force.suppressed_size).abs() > step
-            || greatest_difference(held, candidate) > step
+            || greatest_difference(held, candidate, corners) > step
     }
 }
 
@@ -371,17 +338,21 @@ fn held_correction(
 ) -> Correction {
     let mut document = (*held.correction).clone();
     let covered = document.window.to.since(document.window.from).days();
-    if let [row] = document.covariance.as_slice()
-        && let [variance] = row[..]
+    if document.zero.len() == 1
         && covered > 0.0
+        && let Some(variance) = document.covariance.first().and_then(|row| row.first())
     {
-        document.zero.push(0.0);
         let slope = 12.0 * variance / (covered * covered);
-        document.covariance = vec![vec![variance, 0.0], vec![0.0, slope]];
+        document.zero.push(0.0);
+        for row in &mut document.covariance {
+            row.insert(1, 0.0);
+        }
+        let mut row = vec![0.0; document.covariance.len() + 1];
+        row[1] = slope;
+        document.covariance.insert(1, row);
     }
-    let days = scene.now.since(document.origin).days();
-    let correction = polynomial(&document.zero, days) + 0.0;
-    let u = (variance_at(&document.covariance, days) + held.rest_variance).sqrt();
+    let (correction, variance) = judged_again(&document, scene.now);
+    let u = (variance + held.rest_variance).sqrt();
     let expanded = document.coverage_factor * u + held.suppressed_size;
     if !document.suppressed {
         let conformity = conformity::state(correction, u, document.coverage_factor * u, scene);
@@ -403,25 +374,46 @@ fn held_correction(
     }
 }
 
-/// Greatest difference of two corrections from the issue of the second to the end of the first.
-fn greatest_difference(held: &Correction, candidate: &Correction) -> f64 {
+/// Which influence quantities are in a correction.
+fn claimed(document: &Correction) -> Vec<bool> {
+    document
+        .influences
+        .iter()
+        .map(|term| term.in_force)
+        .collect()
+}
+
+/// Greatest difference of two corrections, from the issue of the second to the end of the first, at
+/// the ends and the centres of what the second has seen.
+fn greatest_difference(
+    held: &Correction,
+    candidate: &Correction,
+    corners: &[(f64, [f64; MAX_INFLUENCES])],
+) -> f64 {
     instants(candidate.issued, held.valid_until)
-        .map(|time| {
-            let at = |document: &Correction| {
-                polynomial(&document.zero, time.since(document.origin).days())
-            };
-            (at(held) - at(candidate)).abs()
+        .flat_map(|time| {
+            corners.iter().map(move |&(level, influences)| {
+                let at = |document| at_level(document, time, level, influences);
+                (at(held) - at(candidate)).abs()
+            })
         })
         .fold(0.0, f64::max)
 }
 
-/// Largest |ê| from `from` to `to`, and at the newest pair.
+/// Largest |ê| from `from` to `to`, and at the newest pair, at the ends and the centres of what the
+/// fit has seen.
 fn largest(published: &Published, from: Timestamp, to: Timestamp) -> f64 {
-    instants(from, to)
-        .chain([published.origin])
-        .map(|time| {
-            let days = time.since(published.origin).days();
-            polynomial(&published.coefficients, days).abs()
+    let corners = levels::corners(published);
+    corners
+        .into_iter()
+        .map(|(level, influences)| published.at_level(level, influences))
+        .flat_map(|curve| {
+            instants(from, to)
+                .chain([published.origin])
+                .map(move |time| {
+                    let days = time.since(published.origin).days();
+                    polynomial(&curve.coefficients, days).abs()
+                })
         })
         .fold(0.0, f64::max)
 }

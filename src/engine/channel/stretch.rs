@@ -31,21 +31,10 @@ pub(super) struct Stretch {
     pairs: u64,
     /// Pairs that entered it since the last judgement.
     unjudged: u64,
-    /// Lowest and highest reference value.
-    range: Option<(f64, f64)>,
     /// Residual standard deviation of the plain fit before the newest pair.
     scatter: Option<f64>,
     /// The last judgement in numbers, for the standing.
     judged: Option<Judged>,
-}
-
-/// What a document says of its stretch.
-#[derive(Clone, Copy, Debug, PartialEq)]
-pub(super) struct Learned {
-    /// Counts the channel's stretches from 1.
-    pub(super) stretch: u32,
-    /// Lowest and highest reference value seen in it.
-    pub(super) range: (f64, f64),
 }
 
 /// What the next stretch knows from the one before.
@@ -86,7 +75,6 @@ impl Stretch {
             last_pair: None,
             pairs: 0,
             unjudged: 0,
-            range: None,
             scatter: None,
             judged: None,
         }
@@ -148,14 +136,6 @@ impl Stretch {
     /// Pairs that entered it since the last judgement.
     pub(super) fn unjudged(&self) -> u64 {
         self.unjudged
-    }
-
-    /// What a document says of the stretch.
-    pub(super) fn learned(&self) -> Learned {
-        Learned {
-            stretch: self.number,
-            range: self.range.unwrap_or((0.0, 0.0)),
-        }
     }
 
     /// Residual standard deviation of the plain fit before the newest pair.
@@ -257,25 +237,30 @@ impl Stretch {
     }
 
     /// The newest accepted errors as they were before `instant`, as far as `recent` remembers.
-    pub(super) fn residuals_before(&self, instant: Timestamp, recent: &Recent) -> Residuals {
+    pub(super) fn residuals_before(
+        &self,
+        instant: Timestamp,
+        recent: &Recent,
+        setup: &ChannelSetup,
+    ) -> Residuals {
         let mut residuals = Residuals::default();
         for Remembered { pair, .. } in recent.entered(self.number) {
             if pair.time < instant {
-                residuals.push(pair.time, pair.indication - pair.reference);
+                residuals.push(&row(pair, setup));
             }
         }
         residuals
     }
 
     /// Takes all pairs from `instant` on out of the fit again. (Rows that left the window meanwhile
-    /// do not come back.) What was learned of the noise and of the range stays: a bad reference
+    /// do not come back.) What was learned of the noise stays: a bad reference
     /// says nothing about the sensor's.
     pub(super) fn rewind(&mut self, instant: Timestamp, recent: &Recent, setup: &ChannelSetup) {
         let before = self.fit.window().rows();
         self.fit = self.fit_before(instant, recent, setup);
         let left = before.saturating_sub(self.fit.window().rows());
         self.pairs = self.pairs.saturating_sub(left);
-        self.residuals = self.residuals_before(instant, recent);
+        self.residuals = self.residuals_before(instant, recent, setup);
         self.last_pair = self.fit.window().newest();
         self.unjudged += left;
         self.judged = None;
@@ -330,7 +315,8 @@ impl Stretch {
         setup: &ChannelSetup,
         change: &mut Option<Change>,
     ) -> Option<Rejection> {
-        let inserted = self.fit.insert(row(pair, setup));
+        let row = row(pair, setup);
+        let inserted = self.fit.insert(row);
         if inserted.out_of_range {
             return Some(Rejection {
                 reason: RefusedReason::NotFinite,
@@ -349,9 +335,7 @@ impl Stretch {
         self.last_pair = self.last_pair.max(Some(pair.time));
         self.pairs += 1;
         self.unjudged += 1;
-        let (lowest, highest) = self.range.unwrap_or((pair.reference, pair.reference));
-        self.range = Some((lowest.min(pair.reference), highest.max(pair.reference)));
-        self.residuals.push(pair.time, error);
+        self.residuals.push(&row);
         if inserted.closed {
             *change = self.fit.decide(!self.screen.is_locked_out());
             if change.is_some() {

@@ -115,7 +115,10 @@ fn tell_term(term: Term, (from, to): (u8, u8), scene: &Scene<'_>, report: &mut R
     let what = match term {
         Term::Zero => "zero".to_owned(),
         Term::Span => "span".to_owned(),
-        Term::Influence(place) => format!("influence quantity {}", place + 1),
+        Term::Influence(place) => {
+            let named = scene.setup.influences.get(usize::from(place));
+            named.map_or_else(String::new, |it| format!("influence of {}", it.name))
+        }
     };
     report.notice(scene.now, Subject::Channel(scene.id), "model-changed", || {
         format!(

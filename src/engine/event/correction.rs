@@ -1,11 +1,16 @@
 //! A correction and what it rests on.
 
 use crate::event::{Cause, Rung};
-use crate::setup::{ChannelId, DecisionRule};
+use crate::fit::SpanRefusal;
+use crate::setup::{ChannelId, DecisionRule, SpanSide};
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
-/// A correction: c(t) = −ê(t) as a polynomial with its uncertainty (VIM 2.53; sign as in VIM 2.16).
+/// A correction: c = −ê as polynomials in time with its uncertainty (VIM 2.53; sign as in VIM 2.16).
+///
+/// Where the span is a function of the reference value, an indication i is corrected by c = (zero(t)
+/// + Σ influences + span(t)·(i − centre)) / (1 − span(t)); where it is one of the indication, without
+/// the division.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Correction {
     /// Which channel.
@@ -28,11 +33,25 @@ pub struct Correction {
     pub degree: u8,
     /// Weight of each degree 0 … maximum in the mean; they sum to 1.
     pub weights: Vec<f64>,
-    /// Coefficients of c(t), constant first, t in days from `origin`.
+    /// Coefficients of c at the span's centre, constant first, t in days from `origin`.
     pub zero: Vec<f64>,
-    /// Whether the dead zone suppresses the correction: then `zero` is all zeros and |ĉ| is inside
-    /// U.
+    /// Coefficients of −span(t), constant first; empty where no span is claimed.
+    pub span: Vec<f64>,
+    /// The level at which the span terms vanish.
+    pub span_centre: f64,
+    /// Which side of a pair the span is a function of.
+    pub span_side: SpanSide,
+    /// Why no span is claimed; `None` where one is, where none is configured, and where one could be
+    /// but the evidence has not lasted yet.
+    pub span_refused: Option<SpanRefusal>,
+    /// What acts on the error, in the order of the channel's influences.
+    pub influences: Vec<InfluenceTerm>,
+    /// Whether the dead zone suppresses the correction: then `zero`, `span` and the influences'
+    /// coefficients are all zeros and |ĉ| is inside U.
     pub suppressed: bool,
+    /// The level at which the error is judged and to which what follows belongs: the worst of those
+    /// seen where a span is claimed, else the middle.
+    pub judged_at: f64,
     /// c at the newest pair; while held, at issue.
     pub correction: f64,
     /// Standard uncertainty of the corrected value's systematic part at the newest pair; while
@@ -44,7 +63,8 @@ pub struct Correction {
     pub expanded_uncertainty: f64,
     /// Effective degrees of freedom behind k.
     pub degrees_of_freedom: f64,
-    /// Covariance of `zero` (row by row, unit² per day^(i+j)), of the fit alone.
+    /// Covariance of `zero`, `span` and the influences' coefficients, in this order, row by row; of
+    /// the fit alone. Without influences in force it ends before them.
     pub covariance: Vec<Vec<f64>>,
     /// By what rule the error is accepted or not.
     pub rule: DecisionRule,
@@ -63,7 +83,21 @@ pub struct Correction {
     pub residual_sd: f64,
     /// Counts the channel's stretches from 1.
     pub stretch: u32,
-    /// Lowest and highest reference value in the stretch.
+    /// Lowest and highest level in the stretch, on the side of the span: the correction was learned
+    /// there.
+    pub range: (f64, f64),
+}
+
+/// What an influence quantity does to the correction.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub struct InfluenceTerm {
+    /// Whether it is claimed: told from drift and level, and so in the correction.
+    pub in_force: bool,
+    /// Correction per unit of the quantity; 0 while it is not in force or suppressed.
+    pub coefficient: f64,
+    /// Where the quantity counts from.
+    pub centre: f64,
+    /// Lowest and highest value in the stretch.
     pub range: (f64, f64),
 }
 
@@ -121,6 +155,12 @@ pub struct Corrected {
     pub corrected: f64,
     /// Its expanded uncertainty.
     pub expanded_uncertainty: f64,
+    /// The level or an influence quantity lies beyond what the fit has seen: nothing was learned
+    /// about the error there.
+    pub beyond_range: bool,
+    /// Influence quantities in force that were not told near this time, by their places: each was
+    /// taken at its centre, and what it may do is inside U.
+    pub influences_assumed: Vec<u8>,
     /// The correction's issue number.
     pub issue_number: u64,
 }

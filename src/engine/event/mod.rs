@@ -21,7 +21,7 @@ mod validation;
 
 pub use alarm::{AlarmChange, AlarmKind, AlarmState};
 pub use answer::{ComparedPoint, Comparison, Fouling, OrderAnswer, SawTooth, Serviced};
-pub use correction::{Corrected, Correction, CriterionValues, WindowSeen, Zone};
+pub use correction::{Corrected, Correction, CriterionValues, InfluenceTerm, WindowSeen, Zone};
 pub use degree::{DegreeChange, Evidence};
 pub use input::{Gate, Reading, Refused, RefusedReason, Source, Supplied};
 pub use ladder::{Cause, Rung, Status};

@@ -19,6 +19,7 @@
 //! - `ladder`: when a term of the announced model is raised and lowered
 //! - `degree`: when the announced model changes
 //! - [`published`]: the form of what is published
+//! - `curve`: the same at one level
 //! - [`mean`]: the published mean over degrees and its uncertainty
 //! - `turn`: what a drift that turned within the window would change
 //! - [`line`]: the straight line of recent pairs that forecasts rest on
@@ -45,6 +46,7 @@ mod claim;
 mod contrast;
 pub mod correlation;
 pub mod criterion;
+mod curve;
 pub mod cut;
 mod degree;
 pub mod factor;
@@ -70,6 +72,7 @@ use crate::fit::basis::{
     Columns, MAX_INFLUENCES, MAX_SPAN_DEGREE, MAX_TIME_DEGREE, MOST_INFLUENCES,
 };
 pub use crate::fit::centre::Centre;
+pub use crate::fit::curve::Curve;
 use crate::fit::degree::Announced;
 pub use crate::fit::model::Model;
 pub use crate::fit::published::{ModelWeight, Published, SpanRefusal, Terms};

@@ -118,13 +118,4 @@ impl Published {
             .sum();
         (error + 0.0, variance.max(0.0))
     }
-
-    /// The part of [`Published::covariance`] that is the zero's.
-    #[must_use]
-    pub fn zero_covariance(&self) -> Vec<Vec<f64>> {
-        let size = self.coefficients.len();
-        let rows = self.covariance.iter().take(size);
-        rows.map(|row| row.iter().take(size).copied().collect())
-            .collect()
-    }
 }

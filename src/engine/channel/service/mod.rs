@@ -283,7 +283,9 @@ impl Channel {
     /// The judgement of what was known before an instant.
     fn model_before(&self, instant: Timestamp, scene: &Scene<'_>) -> Option<Judgement> {
         let fit = self.stretch.fit_before(instant, &self.recent, scene.setup);
-        let residuals = self.stretch.residuals_before(instant, &self.recent);
+        let residuals = self
+            .stretch
+            .residuals_before(instant, &self.recent, scene.setup);
         let declared = judgement::declared_variance(scene.setup, scene.reference);
         Judgement::of(fit.published_at_least(declared)?, &residuals, scene)
     }

@@ -289,7 +289,7 @@ fn beyond_what_was_seen_a_corrected_value_is_flagged() {
 #[test]
 fn a_pair_without_its_temperature_stays_out_and_is_counted() {
     let setup = setup(PairNoise::default(), |channel| {
-        channel.max_gap = span(120.0)
+        channel.max_gap = span(120.0);
     });
     let mut engine = engine(setup);
     let mut outputs = feed(
@@ -472,7 +472,7 @@ fn a_monitored_channel_is_judged_and_never_corrected() {
 #[test]
 fn monitor_only_is_told_when_it_changes() {
     let open = setup(PairNoise::default(), |channel| {
-        channel.corrected_values = false
+        channel.corrected_values = false;
     });
     let mut shut = open.clone();
     shut.channels[0].monitor_only = true;

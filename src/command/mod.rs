@@ -100,7 +100,7 @@ enum Command {
         json: bool,
     },
     /// Give a running daemon an order over the broker, and wait for its answer.
-    Tell(tell::Tell),
+    Tell(Box<tell::Tell>),
 }
 
 impl Command {

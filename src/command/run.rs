@@ -25,7 +25,8 @@ pub(super) fn run(path: &Path) -> Ending {
     let ended = runtime.and_then(|runtime| {
         runtime.block_on(async {
             let shutdown = told_to_stop()?;
-            Ok(daemon::run(configuration, shutdown).await)
+            // On the heap: the daemon's whole state is in this future.
+            Ok(Box::pin(daemon::run(configuration, shutdown)).await)
         })
     });
     match ended {

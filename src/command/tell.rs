@@ -216,7 +216,7 @@ impl Service {
         optional("note", &self.note);
         for (name, readings) in [("as_found", &self.as_found), ("as_left", &self.as_left)] {
             if !readings.is_empty() {
-                let list: Vec<Value> = readings.iter().map(Reading::to_json).collect();
+                let list: Vec<Value> = readings.iter().copied().map(Reading::to_json).collect();
                 fields.insert(name.to_owned(), json!(list));
             }
         }
@@ -225,7 +225,7 @@ impl Service {
 }
 
 impl Reading {
-    fn to_json(&self) -> Value {
+    fn to_json(self) -> Value {
         match self.uncertainty {
             None => json!({ "indication": self.indication, "reference": self.reference }),
             Some(uncertainty) => json!({

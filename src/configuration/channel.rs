@@ -55,12 +55,8 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
     let lateness = section
         .duration("lateness")
         .map_or(LATENESS, |found| found.value);
-    let not_negative = |key| {
-        let found = section.number_in(key, |x| x >= 0.0, "zero or more");
-        found.map_or(0.0, |found| found.value + 0.0)
-    };
-    let noise = not_negative("noise");
-    let resolution = not_negative("resolution");
+    let noise = not_negative(section, "noise");
+    let resolution = not_negative(section, "resolution");
     let told = draft.references.get(reference.0 as usize);
     let fit = fit::read(
         section,
@@ -68,11 +64,7 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
         influences.len(),
     );
     fit::warn_about_window(section, &fit, lateness);
-    let positive = |key| {
-        section
-            .number_in(key, |x| x > 0.0, "greater than zero")
-            .map(|found| found.value)
-    };
+    let positive = |key| positive(section, key);
     let channel = ChannelSetup {
         name: name.to_owned(),
         unit: unit(section),
@@ -109,6 +101,18 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
     };
     section.finish();
     draft.channels.push(channel);
+}
+
+/// A number that is zero or more; zero if it is not told.
+fn not_negative(section: &Section<'_>, key: &'static str) -> f64 {
+    let found = section.number_in(key, |x| x >= 0.0, "zero or more");
+    found.map_or(0.0, |found| found.value + 0.0)
+}
+
+/// A number above zero.
+fn positive(section: &Section<'_>, key: &'static str) -> Option<f64> {
+    let found = section.number_in(key, |x| x > 0.0, "greater than zero");
+    found.map(|found| found.value)
 }
 
 /// `unit`: any text but an empty one.

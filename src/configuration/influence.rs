@@ -71,8 +71,8 @@ fn source(section: &Section<'_>, channel: &str, place: Place, draft: &mut Draft)
         return id;
     }
     // Without a topic of its own, what is wrong with the place is told where its value is named.
-    let named = ["topic", "value", "senml"].into_iter();
-    let named = named.filter_map(|key| section.place(key)).next();
+    let mut keys = ["topic", "value", "senml"].into_iter();
+    let named = keys.find_map(|key| section.place(key));
     let topic = named.map_or(place.topic.clone(), |it| it.with(place.topic.value));
     let name = format!("{} {}", topic.value, place.address);
     let id = draft.add_influence(name);

@@ -314,18 +314,17 @@ impl<'a> Fields<'a> {
         let indication = self.number(place, entry, "indication");
         let reference = self.number(place, entry, "reference");
         let uncertainty = entry.get("uncertainty").filter(|value| !value.is_null());
-        let expanded_uncertainty = match uncertainty {
-            None => None,
-            Some(_) => {
-                let value = self.number(place, entry, "uncertainty")?;
-                if value < 0.0 {
-                    let field = format!("{place}.uncertainty");
-                    let way_out = "an expanded uncertainty (k = 2) is not negative";
-                    self.problem(&field, &value.to_string(), way_out);
-                    return None;
-                }
-                Some(value)
+        let expanded_uncertainty = if uncertainty.is_some() {
+            let value = self.number(place, entry, "uncertainty")?;
+            if value < 0.0 {
+                let field = format!("{place}.uncertainty");
+                let way_out = "an expanded uncertainty (k = 2) is not negative";
+                self.problem(&field, &value.to_string(), way_out);
+                return None;
             }
+            Some(value)
+        } else {
+            None
         };
         Some(CheckPoint {
             indication: indication?,

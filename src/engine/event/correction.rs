@@ -8,9 +8,9 @@ use serde::{Deserialize, Serialize};
 
 /// A correction: c = −ê as polynomials in time with its uncertainty (VIM 2.53; sign as in VIM 2.16).
 ///
-/// Where the span is a function of the reference value, an indication i is corrected by c = (zero(t)
-/// + Σ influences + span(t)·(i − centre)) / (1 − span(t)); where it is one of the indication, without
-/// the division.
+/// Where the span is a function of the reference value, an indication i is corrected by
+/// `c = (zero(t) + Σ influences + span(t)·(i − centre)) / (1 − span(t))`; where it is one of the
+/// indication, without the division.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Correction {
     /// Which channel.

@@ -95,6 +95,9 @@ mod tests {
         readings as f64 / f64::from(runs)
     }
 
+    /// Whether a chart signals at a decision interval.
+    type Signals = fn(&Chart, f64) -> bool;
+
     fn either(chart: &Chart, h: f64) -> bool {
         chart.signal(h).is_some()
     }
@@ -107,7 +110,7 @@ mod tests {
     /// are nearly geometric, so 20 000 runs give the mean to 0.7 %; tolerated are four times that.
     #[test]
     fn run_lengths_are_those_of_the_tables() {
-        let cases: [(f64, f64, fn(&Chart, f64) -> bool, f64); 6] = [
+        let cases: [(f64, f64, Signals, f64); 6] = [
             (4.0, 0.0, either, 167.68),
             (4.0, 1.0, either, 8.38),
             (5.0, 0.0, either, 465.44),

@@ -446,12 +446,12 @@ mod tests {
             .insert(InfluenceId(0), vec![sample(0, 1.0), sample(40, 3.0)]);
         let answer = Answer { from, to, rows };
         stage.act(at(510), |scene, _| {
-            attaching.take_supplied(&answer, scene, &mut found)
+            attaching.take_supplied(&answer, scene, &mut found);
         });
         assert_eq!(found, [with(pair(20), [2.0, 0.0])]);
         found.clear();
         stage.act(at(510), |scene, _| {
-            attaching.take_supplied(&answer, scene, &mut found)
+            attaching.take_supplied(&answer, scene, &mut found);
         });
         assert_eq!(found, [], "answered once");
     }

@@ -413,11 +413,12 @@ fn what_is_suppressed_is_inside_u_until_the_end_of_the_validity() {
 fn equal_errors_are_not_known_exactly() {
     let judged = |noise: f64, each: f64| {
         let mut setup = channel("a", 0);
-        setup.max_permissible_error = Some(0.5);
+        // Four times the reference's expanded uncertainty fits into it.
+        setup.max_permissible_error = Some(1.0);
         setup.noise = noise;
         let mut setup = against_zero(setup);
         setup.references[0].uncertainty_each = each;
-        let (engine, outputs) = run(setup, &[0.45, 0.45]);
+        let (engine, outputs) = run(setup, &[0.95, 0.95]);
         let last = corrections(&outputs).last().map(|d| (*d).clone());
         let standing = engine.standing().channels[0].clone();
         (standing.standard_uncertainty, standing.zone, last)

@@ -20,8 +20,8 @@ mod engine_support;
 use engine_support::{START, at, channel, node, reference, since_start, span};
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{
-    AlarmKind, AlarmState, Correction, Gate, Input, Output, PairFate, Reading, Refused,
-    RefusedReason, Source, Subject, Supplied,
+    AlarmChange, AlarmKind, AlarmState, Correction, Gate, Input, Output, PairFate, Reading,
+    Refused, RefusedReason, Source, Subject, Supplied,
 };
 use holdtrue_engine::setup::{
     ChannelId, ChannelSetup, Clock, ReferenceId, ReferenceKind, ReferenceSetup, Setup, Stamped,
@@ -317,18 +317,7 @@ impl Stage {
             Output::OutlookWithdrawn { channel: id, .. } => {
                 format!("outlook withdrawn {}", channel(*id))
             }
-            Output::Alarm(change) => format!(
-                "alarm {} {} {} since {} value {} limit {}",
-                self.name(change.subject),
-                kind(change.kind),
-                match change.state {
-                    AlarmState::Normal => "cleared",
-                    AlarmState::Unacknowledged => "raised",
-                },
-                short(since_start(change.since)),
-                short(change.value),
-                short(change.limit)
-            ),
+            Output::Alarm(change) => describe_alarm(self.name(change.subject), change),
             Output::Degree(change) => {
                 format!(
                     "degree {} {} {}",
@@ -368,6 +357,20 @@ impl Stage {
             ),
         }
     }
+}
+
+fn describe_alarm(subject: &str, change: &AlarmChange) -> String {
+    format!(
+        "alarm {subject} {} {} since {} value {} limit {}",
+        kind(change.kind),
+        match change.state {
+            AlarmState::Normal => "cleared",
+            AlarmState::Unacknowledged => "raised",
+        },
+        short(since_start(change.since)),
+        short(change.value),
+        short(change.limit)
+    )
 }
 
 fn describe_pair(channel: &str, fate: &PairFate) -> String {

@@ -386,9 +386,9 @@ fn each_planted_fault_has_its_alarm_and_nothing_else_has_one() {
                     assert_eq!(found, [("error-limit", 1), ("time-to-limit", 1)], "{seed}");
                 }
                 "fast-drift" => assert_eq!(found, [("drift-rate", 1)]),
-                "step" => assert_eq!(found, [("screen-locked-out", 1)]),
+                "step" => assert_eq!(found, [("step", 1)]),
                 "stuck" => assert_eq!(found, [("stuck", 1)]),
-                "saw-tooth" => assert!(matches!(found[..], [("screen-locked-out", 6..)])),
+                "saw-tooth" => assert!(matches!(found[..], [("step", 6..)])),
                 "reference-dying" => assert_eq!(found, [("reference-stale", 1)]),
                 "data-gap" => assert_eq!(found, [("data-gap", 1)]),
                 _ => assert_eq!(found, [], "{name} {seed}"),

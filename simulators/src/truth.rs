@@ -208,7 +208,7 @@ fn alarms(sensor: usize, kit: &Kit, planted: &Planted, end: f64) -> Vec<Expected
         // The old level leaves the window one window later; until then the fit may contradict the
         // readings.
         let window = (jump, jump + 1.0, jump + window + 1.0);
-        expected.add(Subject::Channel, "screen-locked-out", jump, window);
+        expected.add(Subject::Channel, "step", jump, window);
     }
     match planted.disturbance {
         // Within two days the true value has moved far enough away for long enough.

@@ -37,6 +37,7 @@ const ALARM_DEADBAND: f64 = 1.0;
 /// Reads a channel and adds it, and its inline reference, to the draft.
 pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draft: &mut Draft) {
     let id = draft.next_channel();
+    let unit = unit(section);
     let indication = indication(section, name, readings_clock, draft);
     let beside = Beside {
         channel: id,
@@ -67,7 +68,7 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
     let positive = |key| positive(section, key);
     let channel = ChannelSetup {
         name: name.to_owned(),
-        unit: unit(section),
+        unit,
         reference,
         influences,
         lag: section

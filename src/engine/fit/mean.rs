@@ -308,7 +308,8 @@ fn members(
 ) -> Option<Vec<Member>> {
     let logarithms = |price: f64| -> Vec<f64> {
         let mut logarithms = vec![0.0; largest + 1];
-        if let Some(between) = judged {
+        // With a forced degree the segments may bear fewer degrees than the rows: nothing is weighed.
+        if let Some(between) = judged.filter(|_| !forced) {
             for k in 1..=largest {
                 let step = 0.5 * (scatter.effective * between.ln_ratio_of(k) - price);
                 logarithms[k] = logarithms[k - 1] + step;

@@ -36,8 +36,8 @@ pub fn run(jobs: &[(Scenario, u64)], threads: usize, done: &(dyn Fn() + Sync)) -
                     let begin = Instant::now();
                     let trial = trial::run(scenario, *seed);
                     let seconds = begin.elapsed().as_secs_f64();
-                    // A thread that panicked ends the whole scope with its panic, so what a poisoned
-                    // lock holds is never read.
+                    // A thread that panicked ends the whole scope with its panic, so what a
+                    // poisoned lock holds is never read.
                     if let Ok(mut ended) = ended.lock() {
                         ended.push((index, Timed { trial, seconds }));
                     }

@@ -73,11 +73,13 @@ fn single_spikes_are_kept_out_and_nothing_else() {
     assert!(lock_outs(&said).is_empty());
 }
 
+/// Where nobody looks for steps.
 #[test]
 fn a_step_locks_out_at_the_fifth_pair_and_unlocks_when_the_fit_has_followed() {
     let mut noise = Noise::new(12, 0.0);
     let mut small = channel("a", 0);
     small.fit.window = WindowLength::Pairs(256);
+    small.steps = None;
     let errors: Vec<f64> = (0..1500)
         .map(|index| noise.draw() + if index >= 600 { 20.0 } else { 0.0 })
         .collect();

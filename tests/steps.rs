@@ -1,7 +1,6 @@
 //! Steps of a sensor: how seldom noise and drift are called one, and how soon and where a real one
 //! is found. A sample of the study in `simulators/src/score/steps.rs`; the seeds here are not those
-//! on which the constants were chosen (1000 … 100 000). Figures of the whole study stand in
-//! DEVELOPERS.md.
+//! on which the constants were tried (from 1000 on).
 
 use holdtrue_simulators::score::steps::{Drift, FalseSteps, Kind, Run, false_steps, found};
 
@@ -19,9 +18,9 @@ const PLAIN: Run = Run {
     seed: 0,
 };
 
-/// The limits per 100 000 readings are 1 and 3; from samples this small a rate can only be
-/// told from a multiple of them, so at most this many are permitted in 51 200 readings: a true rate
-/// at the limit fails a test with probability below 2 % (Poisson), ten times the limit always.
+/// The limits per 100 000 readings are 1, and 3 in correlated noise; samples this small tell only a
+/// multiple of them. A true rate at the limit fails a test with a probability below 2 % (Poisson);
+/// ten times the limit fails 51 200 readings nine times in ten, and 25 600 about every second time.
 fn permits(name: &str, found: FalseSteps, most: u64) {
     println!(
         "{name}: {} steps in {} readings",
@@ -117,5 +116,6 @@ fn a_step_of_six_sigma_in_correlated_noise_is_found() {
     let found = found(run, SEED, 41);
     println!("{:?}, off {:?}", found.delays, found.off);
     assert!(found.delay(0.95) <= 40.0, "{:?}", found.delays);
-    assert_eq!(found.early, 0);
+    // In 61 500 readings before the steps: a rate of 3 per 100 000 gives more in 4 % of samples.
+    assert!(found.early <= 4, "{}", found.early);
 }

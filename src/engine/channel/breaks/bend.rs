@@ -30,8 +30,8 @@ pub(super) struct Place {
 }
 
 /// Places that are behind the best by no more than this are not told from it: the 95 % point of
-/// χ² with one degree of freedom, as for a regular parameter. (A place is none; measured, the
-/// interval holds the true place in more than that.)
+/// χ² with one degree of freedom, as for a regular parameter. (A place is none, so the level of the
+/// interval is nominal.)
 const INDISTINCT: f64 = 3.84;
 
 impl Series {

@@ -59,6 +59,9 @@ pub(super) struct Question<'a> {
 #[derive(Clone, Copy)]
 struct Rest {
     row: Row,
+    /// As it is.
+    raw: f64,
+    /// As far as it counts.
     residual: f64,
 }
 
@@ -104,7 +107,7 @@ impl Question<'_> {
         let size = after.iter().map(|rest| rest.residual).sum::<f64>() / n;
         let outside = 2.0 * quantile::normal_below(-self.confirmation);
         let needed = quantile::student(1.0 - outside, self.known.degrees_of_freedom);
-        if after.len() < self.least || size.abs() < needed * u {
+        if after.len() < self.least || size.abs() < needed * u || !lasts(after, size) {
             return None;
         }
         let gain = place.gain - series.bend();
@@ -126,9 +129,11 @@ impl Question<'_> {
     fn rests(&self, pairs: &[&Remembered], ahead: &Ahead<'_>, from: Timestamp) -> Vec<Rest> {
         let rest = |held: &&Remembered| {
             let row = row(&held.pair, self.setup);
+            let residual = ahead.residual(&row);
             Rest {
                 row,
-                residual: ahead.residual(&row),
+                raw: residual,
+                residual,
             }
         };
         let split = pairs.partition_point(|held| held.pair.time < from);
@@ -160,6 +165,14 @@ impl Question<'_> {
             .collect();
         Series::new(times, &residuals, self.known.phi, self.known.unit)
     }
+}
+
+/// Whether the error stayed where it stepped to: two thirds of the pairs and the newest are nearer
+/// to the new level than to the old one. Outliers in a row come back.
+fn lasts(after: &[Rest], size: f64) -> bool {
+    let is_there = |rest: &&Rest| rest.raw / size > 0.5;
+    let there = after.iter().filter(is_there).count();
+    3 * there >= 2 * after.len() && after.last().is_some_and(|newest| is_there(&newest))
 }
 
 /// Middle value (the upper of two); 0 of nothing.

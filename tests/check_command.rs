@@ -62,8 +62,9 @@ fn warnings_are_shown_and_do_not_refuse() {
     assert!(out.ends_with("sound: 1 channel, 1 warning\n"), "{out}");
 }
 
-/// From what is declared: noise 0.02 and a limit of 0.08 in 30 days, σ/ω = 7.5 d. The widest spacing
-/// is T³(ω/3.3σ)²/12 = 30·(0.08/(3.3·0.02))²/12 = 3.67 d (Weatherhead et al. 1998, solved for it).
+/// From what is declared: noise 0.02 and a limit of 0.08 in 30 days, σ/ω = 7.5 d. The widest
+/// spacing is T³(ω/3.3σ)²/12 = 30·(0.08/(3.3·0.02))²/12 = 3.67 d (Weatherhead et al. 1998, solved
+/// for it).
 #[test]
 fn whether_the_cadence_can_show_the_drift_is_said_before_the_first_pair() {
     let limited = format!("{SOUND}max_permissible_error = 0.08\n");

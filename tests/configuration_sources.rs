@@ -1,5 +1,5 @@
-//! What a channel may rest on is checked when the configuration is read: influence quantities, known
-//! values, groups, and what must not be corrected.
+//! What a channel may rest on is checked when the configuration is read: influence quantities,
+//! known values, groups, and what must not be corrected.
 
 use holdtrue::configuration::{self, Configuration, Problems};
 use holdtrue::payload::Target;
@@ -127,7 +127,8 @@ const INFLUENCES: &[(&str, &str, &[&str])] = &[
         &["time?"],
     ),
     (
-        "[{ name = \"t\", topic = \"h\" }, { name = \"u\", topic = \"i\" }, { name = \"v\", topic = \"j\" }]",
+        "[{ name = \"t\", topic = \"h\" }, { name = \"u\", topic = \"i\" }, \
+         { name = \"v\", topic = \"j\" }]",
         "f:10:14: error: channel[1].influences",
         &["3 influence", "at most 2"],
     ),

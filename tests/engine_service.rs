@@ -1,5 +1,5 @@
-//! Service events: the stretch ends when the work was done, what was found validates the model, what
-//! was left begins the next stretch, and an order is done once however often it comes.
+//! Service events: the stretch ends when the work was done, what was found validates the model,
+//! what was left begins the next stretch, and an order is done once however often it comes.
 
 mod engine_support;
 
@@ -43,7 +43,7 @@ fn readings(from: u32, to: u32, mut error: impl FnMut(u32) -> f64) -> Vec<Input>
 /// An event of the channel `ph`, `hours` after the beginning.
 fn event(act: Act, hours: f64) -> ServiceEvent {
     ServiceEvent {
-        by: "M. Reyes".to_owned(),
+        by: "night shift".to_owned(),
         about: About::Channel("ph".to_owned()),
         at: Some(at(EVERY * hours)),
         act,
@@ -536,8 +536,8 @@ fn another_sensor_inherits_nothing_but_the_counts() {
     assert!(problems[0].way_out.contains("is B-2"), "{problems:?}");
 }
 
-/// A service keeps what is known of the noise of the same sensor: an outlier right after it is still
-/// one.
+/// A service keeps what is known of the noise of the same sensor: an outlier right after it is
+/// still one.
 #[test]
 fn the_same_sensor_keeps_its_noise() {
     let mut noise = Noise::new(27, 0.0);

@@ -1,6 +1,6 @@
-//! The fail-safe ladder: a correction that can't be kept up to date is held with a growing uncertainty,
-//! for a limited time, then withdrawn; trouble gone leads back; limits on size and rate count as
-//! trouble.
+//! The fail-safe ladder: a correction that can't be kept up to date is held with a growing
+//! uncertainty, for a limited time, then withdrawn; trouble gone leads back; limits on size and
+//! rate count as trouble.
 
 mod engine_support;
 

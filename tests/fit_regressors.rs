@@ -1,5 +1,5 @@
-//! The regressors of span and influence terms: however far from zero they are, and wherever they go,
-//! they cost no digits.
+//! The regressors of span and influence terms: however far from zero they are, and wherever they
+//! go, they cost no digits.
 
 use holdtrue_engine::fit::basis::Columns;
 use holdtrue_engine::fit::window::{Cut, Window, WindowRow};
@@ -58,8 +58,8 @@ fn a_level_of_a_million_costs_no_digits() {
     assert!(slope < 1e-9 && effect < 3e-9, "{slope} {effect}");
 }
 
-/// The centre is the first rows', and stays: a coefficient means the same from document to document.
-/// It follows where staying would cost digits.
+/// The centre is the first rows', and stays: a coefficient means the same from document to
+/// document. It follows where staying would cost digits.
 #[test]
 fn the_centre_stays_until_the_rows_are_far_off() {
     let near = |rows| window(rows, |at| 20.0 + wave(at) + 0.005 * at, |at| wave(2.3 * at));

@@ -365,7 +365,8 @@ fn each_planted_fault_has_its_alarm_and_nothing_else_has_one() {
             .sensors
             .iter()
             .fold(Vec::new(), |mut all, sensor| {
-                // A limit beyond the run's end, or cleaned away in time, may be foretold but need not.
+                // A limit beyond the run's end, or cleaned away in time, may be foretold but need
+                // not.
                 let must = |alarm: &&ExpectedAlarm| alarm.required || alarm.kind != "time-to-limit";
                 for alarm in sensor.alarms.iter().filter(must) {
                     match all.iter_mut().find(|(kind, _)| *kind == alarm.kind) {

@@ -1,5 +1,5 @@
-//! One bad reference, one alarm: a fleet of 200 channels on 10 references, one of which steps, sticks
-//! or falls silent. Nobody else says anything, and no correction is moved by it.
+//! One bad reference, one alarm: a fleet of 200 channels on 10 references, one of which steps,
+//! sticks or falls silent. Nobody else says anything, and no correction is moved by it.
 
 mod engine_support;
 

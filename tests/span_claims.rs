@@ -150,8 +150,8 @@ fn configured(reference: f64, indication: f64) -> FitSetup {
     setup(Some(1), 1, (reference, indication))
 }
 
-/// Noise of a tenth and a fifth of the level's spread on the side that the span is regressed on, with
-/// no fade: one run in a hundred may claim one.
+/// Noise of a tenth and a fifth of the level's spread on the side that the span is regressed on,
+/// with no fade: one run in a hundred may claim one.
 #[test]
 fn noise_in_the_level_makes_up_no_span() {
     let noisy = |reference, indication, kind| Plant {
@@ -278,8 +278,8 @@ fn a_declared_temperature_is_no_drift() {
     }
 }
 
-/// RMS error at the newest instant of the published mean over the last two windows, and of an oracle:
-/// the plain fit of the true model to the same rows.
+/// RMS error at the newest instant of the published mean over the last two windows, and of an
+/// oracle: the plain fit of the true model to the same rows.
 fn against_oracle(plant: &Plant, setup: FitSetup, seed: u64) -> [f64; 2] {
     let mut fit = Fit::new(setup);
     let mut sums = [0.0; 2];

@@ -123,7 +123,8 @@ fn follows(document: &str, schema: &str) -> Value {
     read
 }
 
-/// What a consumer makes of a document and an indication, from the JSON alone: the README's formula.
+/// What a consumer makes of a document and an indication, from the JSON alone: the README's
+/// formula.
 fn consume(document: &Value, days: f64, indication: f64, influences: &[f64]) -> f64 {
     let horner = |key: &str| {
         let coefficients = document[key].as_array().expect("an array");
@@ -316,9 +317,10 @@ fn a_pair_without_its_temperature_stays_out_and_is_counted() {
     // The one at 700 s may still get its temperature.
     let expected = [(50.0, None), (300.0, Some(RefusedReason::NoInfluence))];
     assert_eq!(fates, expected);
-    let told = outputs.iter().any(
-        |output| matches!(output, Output::Notice(notice) if notice.code == "no-influence" && notice.text.contains("temperature")),
-    );
+    let told = outputs.iter().any(|output| {
+        matches!(output, Output::Notice(notice)
+            if notice.code == "no-influence" && notice.text.contains("temperature"))
+    });
     assert!(told, "{outputs:?}");
 }
 

@@ -282,8 +282,8 @@ fn foretelling_alarms(expected: &mut Expected, curve: &Curve) {
         Curve::SawTooth { period, height } => {
             let run_up = period * limit / height.abs();
             let mut cleaned = 0.0;
-            // Each ramp would go on if nobody cleaned; what the window still holds of it may be said
-            // until that has left.
+            // Each ramp would go on if nobody cleaned; what the window still holds of it may be
+            // said until that has left.
             while run_up - period <= 2.0 * window && cleaned < end {
                 let ends = cleaned + period + window;
                 foretell(cleaned + run_up, cleaned, f64::MAX, ends);

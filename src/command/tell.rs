@@ -25,7 +25,8 @@ enum What {
     /// Something was done to a sensor or a reference: its history before and after is kept apart.
     #[command(after_help = "Example:\n  \
         holdtrue tell service --config /etc/holdtrue/holdtrue.toml intake/ph-1 cleaned \\\n    \
-        --by \"M. Reyes\" --at 2026-03-01T10:15:00Z --as-found 7.12=7.00 --as-left 7.01=7.00:0.02\n\n\
+        --by \"night shift\" --at 2026-03-01T10:15:00Z --as-found 7.12=7.00 \
+        --as-left 7.01=7.00:0.02\n\n\
         A reading is INDICATION=REFERENCE or INDICATION=REFERENCE:U, U the expanded uncertainty\n\
         (k = 2) of the reference value; give the option again for further readings.\n\n\
         Exit code: 0 done, 1 refused, 2 wrong usage, 3 no broker or no answer.")]

@@ -21,8 +21,8 @@ const MAX_DEGREE: u8 = 2;
 /// Highest degree.
 const DEGREE_LIMIT: u8 = 5;
 
-/// Reads `window`, `segments`, `max_degree`, `max_span_degree`, `degree` and `criterion`; `noise` and
-/// the number of influence quantities come from elsewhere.
+/// Reads `window`, `segments`, `max_degree`, `max_span_degree`, `degree` and `criterion`; `noise`
+/// and the number of influence quantities come from elsewhere.
 pub(super) fn read(section: &Section<'_>, noise: PairNoise, influences: usize) -> FitSetup {
     let (window, segments) = window(section);
     let (max_degree, forced_degree) = degrees(section);

@@ -3,7 +3,8 @@
 //! JSON, UTF-8. Times are RFC 3339 in UTC with all the nanoseconds they have; numbers read back to
 //! the same bits; words for machines are lower case with hyphens. Each document carries
 //! `schema_version`; its schema stands in `config/schemas/`. Modules in reading order: [`topic`],
-//! [`correction`], [`outlook`], [`alarm`], [`degree`], [`step`], [`notice`], [`answer`], [`validation`],
+//! [`correction`], [`outlook`], [`alarm`], [`degree`], [`step`], [`notice`], [`answer`],
+//! [`validation`],
 //! [`state`].
 
 pub mod alarm;
@@ -119,8 +120,8 @@ pub fn render(output: &Output, setup: &Setup) -> Option<Document> {
     }
 }
 
-/// When the broker is to drop a document that holds until then. Recordings run in their own time; an
-/// expiry counts the broker's seconds and would mean nothing.
+/// When the broker is to drop a document that holds until then. Recordings run in their own time;
+/// an expiry counts the broker's seconds and would mean nothing.
 fn expiry(valid_until: Timestamp, clock: Clock) -> Option<Timestamp> {
     (clock == Clock::Live).then_some(valid_until)
 }

@@ -423,7 +423,7 @@ mod tests {
         let order = take(
             "service",
             r#"{"id":"v-7","channel":"intake/ph-1","act":"cleaned","at":"2026-03-01T10:00:00Z",
-                "by":"M. Reyes","as_found":[{"indication":7.1200000000000001,"reference":7,
+                "by":"night shift","as_found":[{"indication":7.1200000000000001,"reference":7,
                 "uncertainty":0.02}],"as_left":[{"indication":-0.0,"reference":7.0}],
                 "serial":"A-12","certificate":"C-114","note":"film on the glass"}"#,
         );
@@ -449,7 +449,7 @@ mod tests {
         assert_eq!(event.certificate.as_deref(), Some("C-114"));
         assert_eq!(
             (event.by.as_str(), event.note.as_str()),
-            ("M. Reyes", "film on the glass")
+            ("night shift", "film on the glass")
         );
     }
 

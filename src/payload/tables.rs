@@ -11,7 +11,8 @@ pub struct Tables {
     pub filters: Vec<String>,
     /// What each topic carries. All uses of one topic have the same [`Format`] variant; gates stand
     /// first, then references, influence quantities and indications, so that a payload which tells
-    /// them all opens its gate before its values arrive, and an indication finds what belongs to it.
+    /// them all opens its gate before its values arrive, and an indication finds what belongs to
+    /// it.
     pub topics: BTreeMap<String, Vec<Use>>,
     /// Largest payload that is looked at, bytes.
     pub max_payload: usize,

@@ -23,7 +23,7 @@ CREATE TABLE inputs (
     position   INTEGER PRIMARY KEY,  -- order in which the engine was told, from 1
     kind       TEXT NOT NULL,        -- setup, reading, gate, refused, tick, supplied, order
     received   INTEGER,              -- when the daemon got it
-    source     TEXT,                 -- indication/N, reference/N or influence/N, N as in the setup in force
+    source     TEXT,                 -- indication/N, reference/N, influence/N; N as in the setup
     phenomenon INTEGER,              -- when it was sampled, or what an order tells was done
     body       TEXT NOT NULL         -- the whole input as JSON; numbers read back to the same bits
 ) STRICT;

@@ -113,7 +113,7 @@ fn a_service_is_told_with_the_command_and_validates_the_model() {
         "--at",
         &at,
         "--by",
-        "M. Reyes",
+        "night shift",
         "--as-found",
         "7.12=7.00:0.02",
         "--as-left",
@@ -133,7 +133,7 @@ fn a_service_is_told_with_the_command_and_validates_the_model() {
     assert_eq!(validation["satisfactory"], true);
     assert_eq!(
         (validation["stretch"].as_u64(), validation["by"].as_str()),
-        (Some(1), Some("M. Reyes"))
+        (Some(1), Some("night shift"))
     );
     let predicted = validation["predicted_error"].as_f64().unwrap();
     assert!((predicted - 0.12).abs() < 0.02, "{validation}");
@@ -181,7 +181,8 @@ fn plain_messages_are_answered_and_repeated_ones_are_not_done_twice() {
     let mut hall = Hall::open("");
     let at = text_of(hall.last + 30);
     let order = format!(
-        "{{\"id\":\"v-1\",\"channel\":\"hall/ph-1\",\"act\":\"cleaned\",\"by\":\"x\",\"at\":\"{at}\",\
+        "{{\"id\":\"v-1\",\"channel\":\"hall/ph-1\",\"act\":\"cleaned\",\"by\":\"x\",\
+         \"at\":\"{at}\",\
          \"as_found\":[{{\"indication\":7.12,\"reference\":7.0}}]}}"
     );
     hall.order(&order);

@@ -75,8 +75,8 @@ impl Observer {
                 self.documents[place] = Some(document);
             }
             Output::Withdrawn { channel, .. } => self.documents[index(channel)] = None,
-            // The alarm about a step says what the step itself has said, and only about the first of
-            // several.
+            // The alarm about a step says what the step itself has said, and only about the first
+            // of several.
             Output::Alarm(change) if change.kind == AlarmKind::Step => {}
             Output::Alarm(change) if change.state != AlarmState::Normal => {
                 let word = kebab(&format!("{:?}", change.kind));

@@ -1,9 +1,9 @@
 //! Applies a correction as a consumer does, and says where it was learned.
 //!
-//! With Z and S the document's zero and span at the indication's time and G the sum of its influence
-//! terms there: c = (Z + G + S·(i − centre)) / (1 − S) where the span is a function of the reference
-//! value (solved for the unknown true level x = i + c), and c = Z + G + S·(i − centre) where it is
-//! one of the indication.
+//! With Z and S the document's zero and span at the indication's time and G the sum of its
+//! influence terms there: c = (Z + G + S·(i − centre)) / (1 − S) where the span is a function of
+//! the reference value (solved for the unknown true level x = i + c), and c = Z + G + S·(i −
+//! centre) where it is one of the indication.
 
 use super::judgement::polynomial;
 use super::{Scene, levels};

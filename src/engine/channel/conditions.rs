@@ -88,8 +88,8 @@ impl ChannelAlarms {
         self.judge_correction(judgement, scene, report);
     }
 
-    /// One condition, one alarm: what the time-to-limit alarm foretold has come, and the error-limit
-    /// alarm speaks from now on.
+    /// One condition, one alarm: what the time-to-limit alarm foretold has come, and the
+    /// error-limit alarm speaks from now on.
     fn supersede(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
         if self.error_limit.is_raised() {
             self.clear_forecast(TimeToLimit::Reached, scene, report);
@@ -111,8 +111,8 @@ impl ChannelAlarms {
         tell(AlarmKind::TimeToLimit, step, said, scene, report);
     }
 
-    /// Evaluates a forecast, made when segments closed: whether the error may reach its limit within
-    /// the service horizon. `drifts`: whether there is good evidence of a drift at all.
+    /// Evaluates a forecast, made when segments closed: whether the error may reach its limit
+    /// within the service horizon. `drifts`: whether there is good evidence of a drift at all.
     pub(crate) fn forecast(
         &mut self,
         forecast: TimeToLimit,
@@ -463,7 +463,9 @@ fn limit_ahead(forecast: TimeToLimit, scene: &Scene<'_>) -> Said {
                 })
             };
             let text = format!(
-                "the error reaches the maximum permissible error of {limit} {unit} at the earliest                  {} (most likely {}, at the latest {}); plan service before the earliest",
+                "the error reaches the maximum permissible error of {limit} {unit} at the earliest \
+                 {} (most likely {}, at the latest {}); plan service \
+                 before the earliest",
                 earliest.up_to_second(),
                 when(central),
                 when(latest)

@@ -79,8 +79,8 @@ mod tests {
         }
     }
 
-    /// Check value V19: JCGM 106, clause 7 (from memory): one limit −5.40 V, y = −5.47 V, u = 0.05 V
-    /// gives Φ(1.4) = 0.919; limits ±1 with y = 0.8, u = 0.1 give 0.97725.
+    /// Check value V19: JCGM 106, clause 7 (from memory): one limit −5.40 V, y = −5.47 V, u = 0.05
+    /// V gives Φ(1.4) = 0.919; limits ±1 with y = 0.8, u = 0.1 give 0.97725.
     #[test]
     fn probability_of_conformance() {
         // One limit: the other stands so far off that it does not count, both moved to ±T.

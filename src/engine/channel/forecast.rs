@@ -1,5 +1,5 @@
-//! When the uncorrected error reaches its limit, from the line of recent pairs; and what follows for
-//! recalibration and for the cadence of pairs.
+//! When the uncorrected error reaches its limit, from the line of recent pairs; and what follows
+//! for recalibration and for the cadence of pairs.
 //!
 //! Nothing is forecast farther ahead than the line reaches back: a line that has held for so long
 //! may hold for as long again, and nobody has seen more of it. Where the drift differs from zero by

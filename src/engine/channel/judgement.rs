@@ -4,9 +4,9 @@
 //! u² = u²(fit) + common² + q²/12 + lack of fit² (GUM 5.1.2 with H.3.6 for the common part, F.2.2.1
 //! for the resolution q; lack of fit as the newest residuals show it, or as a drift that turned
 //! within the window would make it, whichever is more); degrees of freedom by Welch–Satterthwaite
-//! (GUM G.2b), k from Student's t (G.3.2). u²(fit) is never less than what the declared noise, the reference's own `each` and
-//! q²/12 make of the rows; where even so nothing is left (two equal values, nothing declared), u is
-//! not known and no conformity is stated.
+//! (GUM G.2b), k from Student's t (G.3.2). u²(fit) is never less than what the declared noise, the
+//! reference's own `each` and q²/12 make of the rows; where even so nothing is left (two equal
+//! values, nothing declared), u is not known and no conformity is stated.
 
 use super::{Scene, conformity, levels};
 use crate::event::Conformity;

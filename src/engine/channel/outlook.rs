@@ -93,8 +93,8 @@ impl OutlookStation {
         fresh
     }
 
-    /// After a review that brought no new outlook: withdraws what has expired, else looks again when
-    /// it does.
+    /// After a review that brought no new outlook: withdraws what has expired, else looks again
+    /// when it does.
     pub(crate) fn expire(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
         let Some(end) = self.in_force.as_ref().map(|held| held.valid_until) else {
             return;

@@ -20,9 +20,9 @@ const JUDGED_PART: u64 = 64;
 /// step.)
 pub(super) const MOVED_PART: f64 = 0.125;
 
-/// A forecast raises its alarm from this weight of the degrees above 0 in the mean on: evidence of 9
-/// to 1 that there is a drift at all. The announced degree comes too late for it: a drift that has
-/// begun within the window is a curve to it, with correlated residuals.
+/// A forecast raises its alarm from this weight of the degrees above 0 in the mean on: evidence of
+/// 9 to 1 that there is a drift at all. The announced degree comes too late for it: a drift that
+/// has begun within the window is a curve to it, with correlated residuals.
 const DRIFT_WEIGHT: f64 = 0.9;
 
 /// The last judgement in numbers.

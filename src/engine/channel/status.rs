@@ -4,8 +4,8 @@
 //! |---|---|
 //! | no indication for too long; a sensor that is stuck | failure |
 //! | its reference is being shown to it (an open gate) | function check |
-//! | the corrected value fails its limit; correction limit hit; screen locked out; correction taken back | out of specification |
-//! | conditional pass; the uncorrected error fails, or is about to; drift too fast; noise grown; correction held for want of a good reference | maintenance required |
+//! | corrected value fails; correction limit hit; locked out; correction taken back | out of specification |
+//! | error fails or will; fast drift; step; noise grown; reference not good | maintenance required |
 
 use super::Channel;
 use super::ladder::Ladder;

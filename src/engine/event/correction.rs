@@ -6,7 +6,8 @@ use crate::setup::{ChannelId, DecisionRule, SpanSide};
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
-/// A correction: c = −ê as polynomials in time with its uncertainty (VIM 2.53; sign as in VIM 2.16).
+/// A correction: c = −ê as polynomials in time with its uncertainty (VIM 2.53; sign as in VIM
+/// 2.16).
 ///
 /// Where the span is a function of the reference value, an indication i is corrected by
 /// `c = (zero(t) + Σ influences + span(t)·(i − centre)) / (1 − span(t))`; where it is one of the
@@ -41,8 +42,8 @@ pub struct Correction {
     pub span_centre: f64,
     /// Which side of a pair the span is a function of.
     pub span_side: SpanSide,
-    /// Why no span is claimed; `None` where one is, where none is configured, and where one could be
-    /// but the evidence has not lasted yet.
+    /// Why no span is claimed; `None` where one is, where none is configured, and where one could
+    /// be but the evidence has not lasted yet.
     pub span_refused: Option<SpanRefusal>,
     /// What acts on the error, in the order of the channel's influences.
     pub influences: Vec<InfluenceTerm>,

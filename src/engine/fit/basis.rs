@@ -43,8 +43,8 @@ impl Columns {
         Self::new(degree, 0, 0)
     }
 
-    /// All kinds of columns: degree in time 0 … 5, span columns 0 … 3 (no more than there are powers
-    /// of time, so that their centre can be moved), influences 0 … 2.
+    /// All kinds of columns: degree in time 0 … 5, span columns 0 … 3 (no more than there are
+    /// powers of time, so that their centre can be moved), influences 0 … 2.
     ///
     /// # Panics
     /// Beyond these limits.

@@ -249,13 +249,15 @@ impl Between {
         })
     }
 
-    /// `ln(RSS_{k−1}/RSS_k)`, both with their possible rounding; 0 where nothing is left to compare.
+    /// `ln(RSS_{k−1}/RSS_k)`, both with their possible rounding; 0 where nothing is left to
+    /// compare.
     pub(crate) fn ln_ratio_of(&self, degree: usize) -> f64 {
         let higher = self.rungs.known(degree);
         self.ln_ratio(degree - 1, higher).unwrap_or_default()
     }
 
-    /// ln(`RSS_k`/`rss`), `rss` with its possible rounding; `None` where nothing is left to compare.
+    /// ln(`RSS_k`/`rss`), `rss` with its possible rounding; `None` where nothing is left to
+    /// compare.
     pub(crate) fn ln_ratio(&self, degree: usize, rss: f64) -> Option<f64> {
         (rss > 0.0).then(|| math::ln(self.rungs.known(degree) / rss).min(LARGEST_LN_RATIO))
     }

@@ -2,8 +2,8 @@
 //!
 //! The level and the influence quantities count from a common centre: the first row's, then, once
 //! there are [`SETTLED`] segments, the mean of the rows so far. It stays there for the life of the
-//! window, so that a coefficient means the same from document to document, unless the rows are so far
-//! off that their spread would lose digits beside their distance.
+//! window, so that a coefficient means the same from document to document, unless the rows are so
+//! far off that their spread would lose digits beside their distance.
 
 use crate::fit::basis::{Columns, MAX_INFLUENCES};
 use crate::fit::factor::Factor;

@@ -3,8 +3,8 @@
 //! A term is *claimed* once its gain, given everything else that can be told apart, has lasted (see
 //! `ladder`). Until then the correction is one of the zero only, valid near the levels that were
 //! seen. The span is *refused*, and withdrawn if it was claimed, where the level does not vary, or
-//! where noise in the regressor would move its slope by more than half of the slope's uncertainty: a
-//! noisy reference that is taken from the indication and put on the axis as well makes a slope of
+//! where noise in the regressor would move its slope by more than half of the slope's uncertainty:
+//! a noisy reference that is taken from the indication and put on the axis as well makes a slope of
 //! nothing.
 
 use crate::fit::basis::MAX_INFLUENCES;

@@ -20,8 +20,8 @@ pub struct Caution {
     /// Multiples of that bias's growth with ρ: it is about −(p + (p + 3)ρ)/S in all (each of p
     /// fitted coefficients takes (1 + ρ)/S, the quotient of two sums 3ρ/S more; for p = 1 it is
     /// Kendall's −(1 + 4ρ)/S, *Biometrika* 41 (1954) 403; from memory). What is found beyond zero
-    /// is multiplied by 1 + x + x², x = (p + 3)/S, the first orders of its inverse; and the standard
-    /// error below is taken as √((1 − ρ²)/S).
+    /// is multiplied by 1 + x + x², x = (p + 3)/S, the first orders of its inverse; and the
+    /// standard error below is taken as √((1 − ρ²)/S).
     pub growth: f64,
     /// Multiples of 1/√S, the standard error of r₁ in white noise (Bartlett, *Supplement to the
     /// Journal of the Royal Statistical Society* 8 (1946) 27; from memory).

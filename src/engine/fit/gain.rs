@@ -1,10 +1,10 @@
 //! How much better the richer of nested models is: the gain that changes of the announced model are
 //! judged by.
 //!
-//! Nested models of one term stand on *rungs*: degrees 0, 1, 2 of the zero; no span terms, one, two;
-//! without and with an influence quantity. A gain is what a criterion says for a higher rung on the
-//! effective sample size: with all doubts when it is to be announced, without them when a lower rung
-//! is to be as good.
+//! Nested models of one term stand on *rungs*: degrees 0, 1, 2 of the zero; no span terms, one,
+//! two; without and with an influence quantity. A gain is what a criterion says for a higher rung
+//! on the effective sample size: with all doubts when it is to be announced, without them when a
+//! lower rung is to be as good.
 
 use crate::event::{CriterionValues, Evidence};
 use crate::fit::between::Between;

@@ -18,9 +18,9 @@ impl Joint {
     ///
     /// Noise of variance s² in every row's regressor adds N = s²·(rows) to the sum of squares about
     /// the other columns, x⊥² (itself included in what is found there). Where it is the error's own
-    /// noise with the sign turned, as the reference's is, the slope b reads b − λ(1 + b), λ = N/x⊥²;
-    /// the indication's reads b + λ(1 − b) to first order. (Fuller, *Measurement Error Models*,
-    /// §1.1; from memory.)
+    /// noise with the sign turned, as the reference's is, the slope b reads b − λ(1 + b), λ =
+    /// N/x⊥²; the indication's reads b + λ(1 − b) to first order. (Fuller, *Measurement Error
+    /// Models*, §1.1; from memory.)
     pub(crate) fn span_noise(&self, worth: Worth, noise: f64) -> Option<SpanNoise> {
         let x = self.columns.span_place(0);
         let is_span = |place: &usize| (x..self.columns.influence_place(0)).contains(place);
@@ -50,9 +50,9 @@ impl Joint {
         })
     }
 
-    /// Variance of the noise in the regressor of the span terms. The reference's is what it declares
-    /// for each value, or, if nothing, all that rows scatter; the indication's is what it declares,
-    /// or what rows scatter beyond the reference's, whichever is more.
+    /// Variance of the noise in the regressor of the span terms. The reference's is what it
+    /// declares for each value, or, if nothing, all that rows scatter; the indication's is what it
+    /// declares, or what rows scatter beyond the reference's, whichever is more.
     pub(crate) fn regressor_noise(&self, side: SpanSide, declared: PairNoise) -> f64 {
         let each = declared.reference * declared.reference;
         match side {

@@ -2,10 +2,10 @@
 //!
 //! u² of a polynomial grows ahead of its window as `(1/n) Σ (2j+1) P_j(1+2f)²`, f in windows: one
 //! window ahead 7-fold for a line, 97-fold for a parabola. So a forecast takes degree 1 whatever is
-//! published: over the whole window where at most a line is announced, over its newest quarter where
-//! a curve is. The covariance is made as that of the published mean: from the scatter of segment
-//! means about the line, inflated by their correlation. A curve that the line does not follow widens
-//! both.
+//! published: over the whole window where at most a line is announced, over its newest quarter
+//! where a curve is. The covariance is made as that of the published mean: from the scatter of
+//! segment means about the line, inflated by their correlation. A curve that the line does not
+//! follow widens both.
 
 use crate::fit::Fit;
 use crate::fit::between::{Between, Groups};

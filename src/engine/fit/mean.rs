@@ -1,9 +1,9 @@
 //! What is published: not one degree's curve but the mean over degrees, with its uncertainty.
 //!
 //! While a slow drift waits to be recognised, the curve of the announced degree is wrong and its
-//! band does not say so; and at a change of degree it jumps. The mean over degrees 0 … maximum moves
-//! over gradually, and the disagreement of the degrees enters its uncertainty (Buckland, Burnham &
-//! Augustin, *Biometrics* 53 (1997) 603; from memory).
+//! band does not say so; and at a change of degree it jumps. The mean over degrees 0 … maximum
+//! moves over gradually, and the disagreement of the degrees enters its uncertainty (Buckland,
+//! Burnham & Augustin, *Biometrics* 53 (1997) 603; from memory).
 //!
 //! **Two weights.** A degree that may be wrong costs the mean its noise, but leaving it out of the
 //! uncertainty costs an interval that misses the truth. So ê is the mean by weights that charge a
@@ -85,8 +85,8 @@ pub(super) struct Scatter {
 }
 
 impl Scatter {
-    /// What the segments show, with the correlation to count with; `None` if they leave no degree of
-    /// freedom.
+    /// What the segments show, with the correlation to count with; `None` if they leave no degree
+    /// of freedom.
     pub(super) fn of(between: &Between) -> Option<Self> {
         let segments = between.segments;
         if segments < LEAST_SEGMENTS || between.degrees_of_freedom() < 1.0 {
@@ -297,8 +297,8 @@ pub(super) fn reweighted(groups: &Groups<'_>, between: Option<&Between>) -> Opti
     Some((merged, level))
 }
 
-/// The degrees 0 … `largest` with their weights `w_k ∝ exp(½ (n_eff ln(RSS_0/RSS_k) − price·k))`, or
-/// all weight on `largest` if `forced`; `None` if the rows are not at enough different times.
+/// The degrees 0 … `largest` with their weights `w_k ∝ exp(½ (n_eff ln(RSS_0/RSS_k) − price·k))`,
+/// or all weight on `largest` if `forced`; `None` if the rows are not at enough different times.
 fn members(
     factor: &Factor,
     largest: usize,
@@ -308,7 +308,8 @@ fn members(
 ) -> Option<Vec<Member>> {
     let logarithms = |price: f64| -> Vec<f64> {
         let mut logarithms = vec![0.0; largest + 1];
-        // With a forced degree the segments may bear fewer degrees than the rows: nothing is weighed.
+        // With a forced degree the segments may bear fewer degrees than the rows: nothing is
+        // weighed.
         if let Some(between) = judged.filter(|_| !forced) {
             for k in 1..=largest {
                 let step = 0.5 * (scatter.effective * between.ln_ratio_of(k) - price);

@@ -91,8 +91,8 @@ pub struct Fit {
     seen: Seen,
 }
 
-/// Largest magnitude of an error or a regressor that the fit takes: its square, times any weight and number of
-/// rows, is still a float.
+/// Largest magnitude of an error or a regressor that the fit takes: its square, times any weight
+/// and number of rows, is still a float.
 const LARGEST_VALUE: f64 = 1e120;
 /// Largest weight of a row, and the smallest one's inverse.
 const LARGEST_WEIGHT: f64 = 1e30;
@@ -154,8 +154,8 @@ pub enum Term {
 pub struct Change {
     /// Which.
     pub term: Term,
-    /// Before: the degree of the zero; how many span coefficients (none, or degree + 1); whether (1)
-    /// or not (0) an influence quantity is in use.
+    /// Before: the degree of the zero; how many span coefficients (none, or degree + 1); whether
+    /// (1) or not (0) an influence quantity is in use.
     pub from: u8,
     /// After.
     pub to: u8,

@@ -2,8 +2,8 @@
 //!
 //! `e = zero(t) + span(t)·(x − centre) + Σ g_j·(q_j − centre_j)`: zero and span are polynomials in
 //! time, x is the level (see [`crate::setup::FitSetup::span_side`]), the `q_j` are influence
-//! quantities. Zero and span have their degrees for themselves, so "a zero that stays while the span
-//! fades" is a model; it means the zero at the centre.
+//! quantities. Zero and span have their degrees for themselves, so "a zero that stays while the
+//! span fades" is a model; it means the zero at the centre.
 
 use crate::fit::Prediction;
 use crate::fit::basis::{Columns, MAX_INFLUENCES};

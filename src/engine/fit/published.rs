@@ -1,4 +1,5 @@
-//! What the fit publishes: the mean over models with its covariance, and what is known of its terms.
+//! What the fit publishes: the mean over models with its covariance, and what is known of its
+//! terms.
 
 use crate::event::{CriterionValues, WindowSeen};
 use crate::fit::basis::MAX_INFLUENCES;
@@ -48,8 +49,8 @@ pub struct Terms {
 /// The mean over models: ê(t, x, q) with its covariance.
 ///
 /// `ê = Σ_k coefficients_k·t^k + (x − centre)·Σ_k span_k·t^k + Σ_j influences_j·(q_j − centre_j)`.
-/// Until span terms or influence quantities are claimed, it is a mean over degrees of the zero, with
-/// no `span` and no `influences`.
+/// Until span terms or influence quantities are claimed, it is a mean over degrees of the zero,
+/// with no `span` and no `influences`.
 #[derive(Clone, Debug)]
 pub struct Published {
     /// Zero of the polynomials' time: the newest pair.

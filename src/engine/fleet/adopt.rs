@@ -195,8 +195,8 @@ fn memory(channel: &ChannelSetup, reference: &ReferenceSetup) -> Duration {
     }
 }
 
-/// How long values of an influence quantity are kept: pairs come about as late as `memory` says, and
-/// then look at the values beside their instant.
+/// How long values of an influence quantity are kept: pairs come about as late as `memory` says,
+/// and then look at the values beside their instant.
 fn influence_memory(memory: Duration, channel: &ChannelSetup) -> Duration {
     let parts = [channel.lag.0.saturating_abs(), channel.lateness.0];
     let beside = channel.max_gap.0.saturating_mul(2);

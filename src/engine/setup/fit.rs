@@ -34,8 +34,8 @@ pub struct FitSetup {
     pub forced_degree: Option<u8>,
     /// The criterion.
     pub criterion: Criterion,
-    /// Highest degree in time of the span terms, 0 … 2 and no more than that of the zero; `None`: the
-    /// error is taken not to depend on the level.
+    /// Highest degree in time of the span terms, 0 … 2 and no more than that of the zero; `None`:
+    /// the error is taken not to depend on the level.
     pub max_span_degree: Option<u8>,
     /// Influence quantities that every row brings, 0 … 2.
     pub influences: u8,

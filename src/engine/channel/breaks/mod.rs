@@ -6,7 +6,7 @@
 //!         ┌───────────────────── look (evidence): mean after the change against what the largest
 //!         │                      model from before it expects, and against a bend
 //!         ▼                               │
-//!   a step: the stretch is closed         ├─▶ not yet: look again when a fifth more pairs have come
+//!   a step: the stretch is closed         ├─▶ not yet: look again with a fifth more pairs
 //!   at the change time                    └─▶ no: evidence of drift; the chart starts anew
 //! ```
 //!

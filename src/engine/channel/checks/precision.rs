@@ -8,11 +8,11 @@
 //! *k*: the reference value that tells r² from 1 soonest is r² ln r² / (r² − 1) (log-likelihood
 //! ratio of two variances); 1.85 for a doubled standard deviation, as EN 14181:2004 has it. *h*:
 //! sized for a fleet. The time between false signals grows as exp(h(1 − 1/r²)/2); by simulation on
-//! other seeds than the tests', with a baseline known well, 2,000,000 pairs brought 14 false signals
-//! at h = 20, one at 24 and none at 28 (five and none in AR(1) noise of 0.9). *Baseline*: the mean
-//! of v; it goes on slowly, and not while the chart stands high. While it is young, k counts from
-//! two of its standard deviations up. One v counts at most as much as a spike may, so that outliers
-//! alone signal nothing unless they come in flocks.
+//! other seeds than the tests', with a baseline known well, 2,000,000 pairs brought 14 false
+//! signals at h = 20, one at 24 and none at 28 (five and none in AR(1) noise of 0.9). *Baseline*:
+//! the mean of v; it goes on slowly, and not while the chart stands high. While it is young, k
+//! counts from two of its standard deviations up. One v counts at most as much as a spike may, so
+//! that outliers alone signal nothing unless they come in flocks.
 
 use super::super::screening::Innovation;
 use crate::setup::ChannelSetup;

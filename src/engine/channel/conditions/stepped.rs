@@ -1,5 +1,5 @@
-//! The alarm of a step. A step is an event that a person should look at, not a state that passes: it
-//! stays raised until the next stretch begins (a service event, or another step, which is raised
+//! The alarm of a step. A step is an event that a person should look at, not a state that passes:
+//! it stays raised until the next stretch begins (a service event, or another step, which is raised
 //! anew) or until the window holds nothing from the stretch's beginning any more.
 
 use super::super::Scene;

@@ -18,7 +18,8 @@
 //! One exception: an exact match is made at once, so of several values of one source for one
 //! instant those that came first count.
 //!
-//! Where influence quantities act on the sensor, a pair then waits for their values ([`attaching`]).
+//! Where influence quantities act on the sensor, a pair then waits for their values
+//! ([`attaching`]).
 //!
 //! What is no longer in memory is asked from the record; the reading then waits among the
 //! [`requests`] until the rows are supplied.

@@ -67,8 +67,8 @@ pub(crate) struct Answer {
 }
 
 impl Rows {
-    /// Adds a row of this channel, of its reference or of an influence quantity; others (members of its group) serve no
-    /// request.
+    /// Adds a row of this channel, of its reference or of an influence quantity; others (members of
+    /// its group) serve no request.
     pub(crate) fn add(&mut self, channel: ChannelId, reading: &Reading) {
         let sample = Sample {
             time: reading.phenomenon,

@@ -228,8 +228,8 @@ impl Channel {
         }
     }
 
-    /// What was found at a calibration or adjustment says whether the interval may be longer. (Before
-    /// a cleaning it tells of fouling, which has an interval of its own.)
+    /// What was found at a calibration or adjustment says whether the interval may be longer.
+    /// (Before a cleaning it tells of fouling, which has an interval of its own.)
     fn propose_interval(&mut self, service: Service<'_>, scene: &Scene<'_>) {
         let ServiceEvent { act, as_found, .. } = service.event;
         let found = largest(as_found).zip(scene.setup.max_permissible_error);

@@ -15,8 +15,8 @@ const COVERAGE: f64 = 0.95;
 pub(super) const STATED_FACTOR: f64 = 2.0;
 
 /// Compares as-found readings with what the model expected of each. `None` without readings; where
-/// neither side has any uncertainty or the numbers can't be held, so that nothing could be said; and
-/// where influence quantities are in the model, since what acted during the check nobody told.
+/// neither side has any uncertainty or the numbers can't be held, so that nothing could be said;
+/// and where influence quantities are in the model, since what acted during the check nobody told.
 pub(super) fn compare(
     judgement: &Judgement,
     instant: Timestamp,

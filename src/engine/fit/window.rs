@@ -28,7 +28,7 @@
 
 use crate::fit::basis::{Columns, Frame};
 use crate::fit::centre::{Centre, FAR_OFF, SETTLED, shift_to_mean};
-pub use crate::fit::cut::Cut;
+pub use crate::fit::cut::{Cut, Inserted};
 use crate::fit::factor::Factor;
 use crate::fit::kernel::MAX_WIDTH;
 pub use crate::fit::row::WindowRow;
@@ -44,15 +44,6 @@ use std::collections::VecDeque;
 const GAP_DIVISOR: i64 = 4;
 /// A row further than this from the origin, in units of the window, moves the frame.
 const FAR: f64 = 2.0;
-
-/// What an insertion did.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
-pub struct Inserted {
-    /// At least one segment closed, or a closed one changed: a decision is due.
-    pub closed: bool,
-    /// The row was older than everything in the window and was left out.
-    pub too_old: bool,
-}
 
 /// The window of one stretch; see the module's text.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]

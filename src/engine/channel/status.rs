@@ -1,11 +1,11 @@
 //! The status signals of a channel after NAMUR NE 107: what a maintenance system shows of it.
 //!
 //! | condition | signal |
-//! |---|---|
+//! | --- | --- |
 //! | no indication for too long; a sensor that is stuck | failure |
 //! | its reference is being shown to it (an open gate) | function check |
-//! | corrected value fails; correction limit hit; locked out; correction taken back | out of specification |
-//! | error fails or will; fast drift; step; noise grown; reference not good | maintenance required |
+//! | corrected value fails; correction limit hit; locked out; taken back | out of specification |
+//! | error fails; fast drift; step; noise grown; reference not good | maintenance required |
 
 use super::Channel;
 use super::ladder::Ladder;

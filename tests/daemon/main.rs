@@ -6,7 +6,6 @@
     reason = "a test says what went wrong by panicking; the lint does not see helpers as tests"
 )]
 
-#[path = "../support/live/mod.rs"]
 mod live;
 
 mod bad_input;
@@ -14,5 +13,6 @@ mod main_path;
 mod orders;
 mod outbox;
 mod record_paused;
+mod resistor_feed;
 mod restarts;
 mod sessions;

@@ -5,7 +5,7 @@
 //! and a plain drift is announced soon. Doubts about the sample always count for what is announced.
 //!
 //! The constants were chosen by simulation, on other seeds than those of the tests:
-//! `tests/false_raises.rs` and `tests/degree_power.rs` state what they achieve.
+//! `tests/statistics/` (`false_raises`, `degree_power`) state what they achieve.
 
 use crate::fit::gain::Contest;
 use crate::setup::Criterion;

@@ -7,7 +7,7 @@
 //!
 //! **Two weights.** A degree that may be wrong costs the mean its noise, but leaving it out of the
 //! uncertainty costs an interval that misses the truth. So ê is the mean by weights that charge a
-//! coefficient [`PRICE`], and u² gathers the disagreement with ê by Akaike's weights, which charge
+//! coefficient `PRICE`, and u² gathers the disagreement with ê by Akaike's weights, which charge
 //! 2 and give the higher degrees their due sooner. What no degree can follow, a drift that turned
 //! within the window, is looked for besides (see `turn`).
 //!
@@ -34,7 +34,7 @@ use crate::time::Timestamp;
 use nalgebra::DMatrix;
 
 /// How cautiously r₁ is taken for the uncertainty: free of bias, and then its upper 90 % limit (the
-/// normal quantile 1.28). Simulated on other seeds than those of `tests/coverage.rs`: with one
+/// normal quantile 1.28). Simulated on other seeds than those of `tests/statistics/`: with one
 /// standard error in its place, eight pairs of correlation 0.8 were covered in 80 %.
 pub(crate) const PUBLISHING: Caution = Caution {
     bias: 1.0,

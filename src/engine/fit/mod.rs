@@ -22,7 +22,7 @@
 //! - `curve`: the same at one level
 //! - [`mean`]: the published mean over degrees and its uncertainty
 //! - `turn`: what a drift that turned within the window would change
-//! - [`line`]: the straight line of recent pairs that forecasts rest on
+//! - [`mod@line`]: the straight line of recent pairs that forecasts rest on
 //! - [`forecast`]: where a line with its band meets a limit
 //! - [`cadence`]: how long a drift takes to be seen
 //!

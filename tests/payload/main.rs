@@ -1,0 +1,6 @@
+//! What reaches the intake from outside: every payload format, and what is refused.
+
+mod formats;
+mod refused;
+mod senml;
+mod support;

@@ -1,0 +1,3 @@
+//! The record on disk.
+
+mod keeps;

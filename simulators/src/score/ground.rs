@@ -49,6 +49,7 @@ pub fn many(
         level,
         swing,
         wander,
+        moves: None,
     };
     let noise = Noise {
         parts: noise
@@ -63,6 +64,7 @@ pub fn many(
         sensors: Vec::new(),
         faults: Vec::new(),
         degrees: None,
+        beyond_from: None,
         tolerated: Vec::new(),
         setup: Setup {
             node: "scorecard".to_owned(),

@@ -113,6 +113,30 @@ const LIMITS: &[Limit] = &[
         "near the one level that is seen, a fading span is an offset that can be corrected",
     ),
     limit(
+        Meant::Only(&["span-ramp-constant-level"]),
+        Figure::SpanClaims,
+        Bound::AtMost(0.0),
+        "at one level a span can't be told from a zero",
+    ),
+    limit(
+        Meant::Only(&["span-steady-noisy-reference"]),
+        Figure::SpanClaims,
+        Bound::AtMost(0.01),
+        "noise in the regressor makes up a slope: it must not be claimed",
+    ),
+    limit(
+        Meant::Only(&["span-ramp"]),
+        Figure::SpanClaims,
+        Bound::AtLeast(0.95),
+        "a span that fades by 5 % and more while the level varies can be seen",
+    ),
+    limit(
+        Meant::Only(&["beyond-learned-range"]),
+        Figure::Unflagged,
+        Bound::AtMost(0.0),
+        "beyond what the fit has seen nothing is known, and every corrected value must say so",
+    ),
+    limit(
         Meant::Only(&["span-steady-noisy-reference", "clock-step"]),
         Figure::Worsened,
         Bound::AtMost(1.0),

@@ -47,6 +47,11 @@ pub struct Observer {
     pub said: Vec<Said>,
     /// Documents issued.
     pub issued: u64,
+    /// Sensors for which a document claimed a span.
+    pub span_claimed: Vec<bool>,
+    /// Corrected values: the sensor, the day of the indication, whether they were flagged as beyond
+    /// what the fit has seen.
+    pub corrected: Vec<(usize, f64, bool)>,
 }
 
 impl Observer {
@@ -57,6 +62,8 @@ impl Observer {
             documents: vec![None; sensors],
             said: Vec::new(),
             issued: 0,
+            span_claimed: vec![false; sensors],
+            corrected: Vec::new(),
         }
     }
 
@@ -72,7 +79,13 @@ impl Observer {
             Output::Correction(document) => {
                 self.issued += 1;
                 let place = index(document.channel);
+                self.span_claimed[place] |= !document.span.is_empty();
                 self.documents[place] = Some(document);
+            }
+            Output::Corrected(value) => {
+                let day = value.phenomenon.since(START).days();
+                let sensor = index(value.channel);
+                self.corrected.push((sensor, day, value.beyond_range));
             }
             Output::Withdrawn { channel, .. } => self.documents[index(channel)] = None,
             // The alarm about a step says what the step itself has said, and only about the first

@@ -59,7 +59,11 @@ pub fn events(world: &World) -> Vec<Event> {
     let mut events = Vec::new();
     for step in 0..world.steps() {
         let day = step as f64 * world.cadence_seconds as f64 / 86_400.0;
-        let values: Vec<f64> = processes.iter_mut().map(|p| p.next(day)).collect();
+        let values: Vec<f64> = processes
+            .iter_mut()
+            .zip(&world.quantities)
+            .map(|(process, quantity)| process.next(day) + moved(quantity, day))
+            .collect();
         for line in &mut lines {
             line.send(world, step, day, &values, &mut events);
         }
@@ -111,6 +115,14 @@ fn process(world: &World, quantity: &Quantity, index: usize) -> Process {
     let draw = world.chooser.stream(index, Duty::Process);
     let shape = (quantity.level, quantity.swing, quantity.wander);
     Process::of(shape, world.cadence_seconds, draw)
+}
+
+/// By how much the quantity has moved at `day`.
+fn moved(quantity: &Quantity, day: f64) -> f64 {
+    match quantity.moves {
+        Some((from, by)) if day >= from => by,
+        _ => 0.0,
+    }
 }
 
 /// One sensor's readings.

@@ -42,6 +42,10 @@ pub enum Figure {
     Lead,
     /// Passings of the limit that no time-to-limit alarm foretold, as a part of all.
     Unforetold,
+    /// Part of the runs in which a document claimed a span.
+    SpanClaims,
+    /// Part of the corrected values beyond all that was learned that do not say so.
+    Unflagged,
     /// The most that a fault moved a correction, in u of the correction without the fault.
     Moved,
 }
@@ -111,6 +115,9 @@ fn figures(runs: &[Timed], tally: &Tally, false_alarms: f64) -> BTreeMap<Figure,
     let planted = count(|run| run.trial.findings.planted);
     let crossings = count(|run| run.trial.findings.crossings);
     let indications = tally.newest_before.count;
+    let claims = count(|run| u32::from(run.trial.span_claimed));
+    let beyond = runs.iter().map(|run| run.trial.beyond).sum::<u64>() as f64;
+    let unflagged = runs.iter().map(|run| run.trial.unflagged).sum::<u64>() as f64;
     let moved = runs.iter().filter_map(|run| run.trial.moved);
     let part = |of: f64, all: f64| (all > 0.0).then(|| of / all);
     [
@@ -160,6 +167,8 @@ fn figures(runs: &[Timed], tally: &Tally, false_alarms: f64) -> BTreeMap<Figure,
             Figure::Unforetold,
             part(crossings - leads.len() as f64, crossings),
         ),
+        (Figure::SpanClaims, part(claims, trials)),
+        (Figure::Unflagged, part(unflagged, beyond)),
         (Figure::Moved, moved.reduce(f64::max)),
     ]
     .into_iter()

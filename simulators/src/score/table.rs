@@ -91,73 +91,83 @@ impl Scorecard {
 
 /// What the columns mean.
 const LEGEND: &str = "\
-RMS: systematic error at the newest instant, before and after correction, in sigma of the noise; \
-u: RMS of its\n  standard uncertainty. cover: part of the time in which U held it. raises: false + \
-missed, % of runs. steps/1e5: false\n  steps per 100 000 indications. delay: readings from fault \
-to word, median and 95 %. missed: faults, %. alarms: false\n  limit alarms + other false alarms. \
-lead: days from the time-to-limit alarm to the limit. s: seconds of one core.\n";
+bias: mean error that a consumer sees. RMS: of the systematic error at the newest instant. Both:
+  before and after correction, in sigma of the noise. u: RMS of its standard uncertainty.
+cover: part of the time in which U held the error. raises: false + missed, % of the sensors.
+steps: false ones per 100 000 indications. missed: faults, %. delay: readings from fault to word,
+  median and 95 %. jump: readings by which its time is off (median), % of its sizes within 2 u.
+alarms: false limit alarms + other false alarms. lead: days from the time-to-limit alarm to the
+  limit. span: % of the runs that claim one. silent: % of the corrected values beyond the learned
+  range that do not say so. s: seconds of one core.
+";
+
+/// A column: its heading, its width, and what stands in it.
+type Column = (&'static str, usize, fn(&Row) -> String);
+
+/// The columns after the scenario's name and class.
+const COLUMNS: &[Column] = &[
+    ("runs", 4, |row| row.summary.runs.to_string()),
+    ("readings", 8, |row| row.summary.readings.to_string()),
+    ("bias", 14, |row| change(row.summary.bias)),
+    ("RMS", 14, |row| change(row.summary.newest)),
+    ("u", 5, |row| number(row.summary.uncertainty, 2)),
+    ("cover", 5, |row| number(figure(row, Figure::Coverage), 3)),
+    ("raises", 7, |row| {
+        let [wrong, missed] = [Figure::FalseRaises, Figure::MissedRaises];
+        format!("{}+{}", percent(row, wrong), percent(row, missed))
+    }),
+    ("steps", 5, |row| number(figure(row, Figure::FalseSteps), 2)),
+    ("delay", 8, |row| {
+        let delay = |of| number(figure(row, of), 0);
+        format!("{} {}", delay(Figure::DelayMedian), delay(Figure::Delay95))
+    }),
+    ("jump", 6, |row| {
+        let time = number(figure(row, Figure::JumpTime), 0);
+        format!("{time} {}", percent(row, Figure::JumpSize))
+    }),
+    ("missed", 6, |row| percent(row, Figure::Missed)),
+    ("alarms", 6, |row| {
+        let others = row.summary.false_alarms.values().sum::<u32>();
+        format!("{}+{others}", number(figure(row, Figure::FalseLimits), 0))
+    }),
+    ("lead", 5, |row| number(figure(row, Figure::Lead), 1)),
+    ("span", 4, |row| percent(row, Figure::SpanClaims)),
+    ("silent", 6, |row| percent(row, Figure::Unflagged)),
+    ("s", 6, |row| format!("{:.1}", row.summary.seconds)),
+];
 
 fn heading() -> String {
-    format!(
-        "{:<28} {:<11} {:>4} {:>8} {:>15} {:>6} {:>6} {:>8} {:>9} {:>11} {:>6} {:>7} {:>5} {:>6}\n",
-        "scenario",
-        "class",
-        "runs",
-        "readings",
-        "RMS",
-        "u",
-        "cover",
-        "raises",
-        "steps/1e5",
-        "delay",
-        "missed",
-        "alarms",
-        "lead",
-        "s",
-    )
+    let mut text = format!("{:<28} {:<11}", "scenario", "class");
+    for (heading, width, _) in COLUMNS {
+        let _ = write!(text, " {heading:>width$}");
+    }
+    text.push('\n');
+    text
 }
 
 fn line(text: &mut String, row: &Row) {
-    let Summary {
-        runs,
-        readings,
-        newest,
-        uncertainty,
-        seconds,
-        ..
-    } = &row.summary;
-    let figure = |figure| row.summary.figures.get(&figure).copied();
-    let percent = |value: Option<f64>| number(value.map(|part| 100.0 * part), 0);
-    let rms = format!("{} > {}", number(newest.0, 3), number(newest.1, 3));
-    let cover = number(figure(Figure::Coverage), 3);
-    let raises = format!(
-        "{}+{}",
-        percent(figure(Figure::FalseRaises)),
-        percent(figure(Figure::MissedRaises))
-    );
-    let delay = format!(
-        "{} {}",
-        number(figure(Figure::DelayMedian), 0),
-        number(figure(Figure::Delay95), 0)
-    );
-    let alarms = format!(
-        "{}+{}",
-        number(figure(Figure::FalseLimits), 0),
-        row.summary.false_alarms.values().sum::<u32>(),
-    );
-    let broken = row.limits.iter().filter(|verdict| !verdict.holds).count();
-    let mark = if broken > 0 { " BROKEN" } else { "" };
-    let _ = writeln!(
-        text,
-        "{:<28} {:<11} {runs:>4} {readings:>8} {rms:>15} {:>6} {cover:>6} {raises:>8} {:>9} \
-         {delay:>11} {:>6} {alarms:>7} {:>5} {seconds:>6.1}{mark}",
-        row.name,
-        row.class.name(),
-        number(*uncertainty, 3),
-        number(figure(Figure::FalseSteps), 2),
-        percent(figure(Figure::Missed)),
-        number(figure(Figure::Lead), 1),
-    );
+    let _ = write!(text, "{:<28} {:<11}", row.name, row.class.name());
+    for (_, width, cell) in COLUMNS {
+        let _ = write!(text, " {:>width$}", cell(row));
+    }
+    if row.limits.iter().any(|verdict| !verdict.holds) {
+        text.push_str(" BROKEN");
+    }
+    text.push('\n');
+}
+
+fn figure(row: &Row, figure: Figure) -> Option<f64> {
+    row.summary.figures.get(&figure).copied()
+}
+
+/// A part of 1 in per cent.
+fn percent(row: &Row, of: Figure) -> String {
+    number(figure(row, of).map(|part| 100.0 * part), 0)
+}
+
+/// A figure before and after correction.
+fn change((before, after): (Option<f64>, Option<f64>)) -> String {
+    format!("{} > {}", number(before, 2), number(after, 2))
 }
 
 /// A number with so many decimals, or a dash.

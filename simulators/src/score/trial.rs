@@ -1,7 +1,7 @@
 //! One run: a scenario with one seed through the engine, measured against its truth.
 
 use super::chooser::Chooser;
-use super::consumer::{self, Applied};
+use super::consumer::{self, Applied, Indicated};
 use super::findings::{self, Findings, Limits};
 use super::library::Scenario;
 use super::observe::Observer;
@@ -32,6 +32,12 @@ pub struct Trial {
     pub findings: Findings,
     /// Correction documents issued.
     pub documents: u64,
+    /// Whether a document claimed a span.
+    pub span_claimed: bool,
+    /// Corrected values of indications beyond all that pairs have shown …
+    pub beyond: u64,
+    /// … and those that were not flagged so.
+    pub unflagged: u64,
     /// Where there is a twin without the fault: the most that a correction differs from its twin's,
     /// in its twin's u.
     pub moved: Option<f64>,
@@ -60,6 +66,11 @@ pub fn run(scenario: &Scenario, seed: u64) -> Trial {
         remove_fault(&mut twin);
         most_moved(&pass.trace, &self::pass(&twin, true).trace)
     });
+    let beyond = || {
+        let from = world.beyond_from.unwrap_or(f64::INFINITY);
+        let corrected = pass.observer.corrected.iter();
+        corrected.filter(move |(_, day, _)| *day >= from)
+    };
     Trial {
         scenario: scenario.name,
         seed,
@@ -73,6 +84,9 @@ pub fn run(scenario: &Scenario, seed: u64) -> Trial {
         findings: findings::judge(&world, &pass.observer.said, &pass.limits),
         tally: pass.tally,
         documents: pass.observer.issued,
+        span_claimed: pass.observer.span_claimed.contains(&true),
+        beyond: beyond().count() as u64,
+        unflagged: beyond().filter(|(_, _, flagged)| !flagged).count() as u64,
         moved,
     }
 }
@@ -117,7 +131,7 @@ fn pass(world: &World, traced: bool) -> Pass {
             arrival = event.arrival;
         }
         if let Some(truth) = event.truth {
-            let applied = pass.applied(&truth);
+            let applied = pass.applied(world, &truth);
             let noise = world.sensors[truth.sensor].noise.deviation();
             pass.tally.see(&truth, applied, noise);
             waiting.push(truth);
@@ -137,7 +151,7 @@ impl Pass {
     /// Judges the instants whose readings the engine has taken in.
     fn settle(&mut self, world: &World, waiting: &mut Vec<Truth>, traced: bool) {
         for truth in waiting.drain(..) {
-            let applied = self.applied(&truth);
+            let applied = self.applied(world, &truth);
             let noise = world.sensors[truth.sensor].noise.deviation();
             self.tally.judge(&truth, applied, noise);
             let limit = world.setup.channels[truth.sensor].max_permissible_error;
@@ -149,9 +163,15 @@ impl Pass {
     }
 
     /// The document in force, applied to an indication.
-    fn applied(&self, truth: &Truth) -> Option<Applied> {
-        let at = START.plus(super::ground::days(truth.day));
-        consumer::apply(self.observer.document(truth.sensor)?, at)
+    fn applied(&self, world: &World, truth: &Truth) -> Option<Applied> {
+        let document = self.observer.document(truth.sensor)?;
+        let lateness = world.setup.channels[truth.sensor].lateness;
+        let indicated = Indicated {
+            at: START.plus(super::ground::days(truth.day)),
+            value: truth.indication,
+            influence: truth.influence,
+        };
+        consumer::apply(document, lateness, indicated)
     }
 }
 

@@ -26,6 +26,8 @@ pub struct World {
     pub degrees: Option<(u8, u8)>,
     /// Words that nothing is held against, because the fault makes them plausible.
     pub tolerated: Vec<&'static str>,
+    /// From this day on every true value lies beyond all that pairs have shown.
+    pub beyond_from: Option<f64>,
     /// The engine's configuration.
     pub setup: Setup,
     /// Seconds from one indication to the next.
@@ -64,6 +66,8 @@ pub struct Quantity {
     pub swing: f64,
     /// Standard deviation of its slow wander.
     pub wander: f64,
+    /// From this day on it is higher by so much.
+    pub moves: Option<(f64, f64)>,
 }
 
 /// A source of reference values.

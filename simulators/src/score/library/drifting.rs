@@ -56,6 +56,12 @@ pub(super) const SCENARIOS: &[Scenario] = &[
         "no drift, and a reference so noisy against the level's spread that a span is made up",
         noisy_reference,
     ),
+    Scenario::new(
+        Class::MustRefuse,
+        "beyond-learned-range",
+        "the true value moves beyond all that pairs have shown, and no pair comes any more",
+        beyond,
+    ),
     Scenario {
         twin: Some(stop_drifting),
         ..Scenario::new(
@@ -208,6 +214,20 @@ fn temperature(chooser: Chooser) -> World {
     declare_influence(&mut world, 0.1);
     // What moves the error is the temperature, not time.
     world.degrees = Some((0, 0));
+    world
+}
+
+fn beyond(chooser: Chooser) -> World {
+    let mut world = fading(chooser, (20.0, 40.0));
+    let at = world.chooser.value("at", "d", 28.0, 38.0);
+    let swing = world.quantities[0].swing;
+    let by = swing * world.chooser.signed("moves", "swing", 4.0, 6.0);
+    world.quantities[0].moves = Some((at, by));
+    world.references[0].silent_from = Some(at);
+    world.beyond_from = Some(at);
+    world.setup.channels[0].corrected_values = true;
+    // Pairs without a partner come to an end where the reference does.
+    world.days = at + 1.0;
     world
 }
 

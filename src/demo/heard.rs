@@ -4,6 +4,7 @@
 
 use holdtrue_engine::time::Timestamp;
 use serde::Deserialize;
+use serde::de::IgnoredAny;
 use std::collections::BTreeMap;
 
 /// A correction document, as far as a consumer needs it.
@@ -29,28 +30,51 @@ pub struct Correction {
     pub zero: Vec<f64>,
     /// Coefficients of minus the span, constant first; empty without one.
     pub span: Vec<f64>,
-    /// The reference value at which `zero` holds.
+    /// The level at which `zero` holds.
     pub span_centre: f64,
+    /// What the span is a function of.
+    pub span_side: SpanSide,
+    /// What else acts on the error.
+    influences: Vec<IgnoredAny>,
     /// U.
     pub expanded_uncertainty: f64,
     /// Where the uncorrected error stands.
     pub zone: Option<String>,
+    /// When its retained document was cleared, if it was.
+    #[serde(skip)]
+    pub withdrawn: Option<Timestamp>,
+}
+
+/// Which side of a pair a span is a function of.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Deserialize)]
+#[serde(rename_all = "lowercase")]
+pub enum SpanSide {
+    /// The reference value.
+    Reference,
+    /// The indication.
+    Indication,
 }
 
 impl Correction {
     /// Whether it holds at `at`.
     #[must_use]
     pub fn holds(&self, at: Timestamp) -> bool {
-        self.valid_from <= at && at < self.valid_until
+        let in_force = self.withdrawn.is_none_or(|withdrawn| at < withdrawn);
+        in_force && self.valid_from <= at && at < self.valid_until
     }
 
-    /// The correction of `indication` at `at`: (zero(t) + span(t)·(indication − `span_centre`)) /
-    /// (1 − span(t)).
+    /// The correction of `indication` at `at`: zero(t) + span(t)·(indication − `span_centre`),
+    /// divided by 1 − span(t) where the span is a function of the reference value. (The invented
+    /// plant has no influence quantities, so that their terms are none.)
     #[must_use]
     pub fn of(&self, indication: f64, at: Timestamp) -> f64 {
         let days = at.since(self.origin).days();
         let span = horner(&self.span, days);
-        (horner(&self.zero, days) + span * (indication - self.span_centre)) / (1.0 - span)
+        let scale = match self.span_side {
+            SpanSide::Reference => 1.0 - span,
+            SpanSide::Indication => 1.0,
+        };
+        (horner(&self.zero, days) + span * (indication - self.span_centre)) / scale
     }
 }
 
@@ -136,11 +160,18 @@ impl Heard {
     pub fn take(&mut self, rest: &str, payload: &[u8]) {
         // An empty payload clears a retained document.
         if payload.is_empty() {
+            if let Some(channel) = rest.strip_prefix("correction/") {
+                self.withdraw(channel);
+            }
             return;
         }
         if let Some(channel) = rest.strip_prefix("correction/") {
             if let Some(correction) = self.read::<Correction>(rest, payload) {
                 self.come_to(correction.issued);
+                if !correction.influences.is_empty() {
+                    let text = format!("{rest}: influence quantities that the plant does not have");
+                    self.contradictions.push(text);
+                }
                 self.corrections
                     .entry(channel.to_owned())
                     .or_default()
@@ -159,6 +190,15 @@ impl Heard {
             }
         } else if rest == "state" {
             self.state = self.read(rest, payload).or(self.state.take());
+        }
+    }
+
+    /// The channel's correction in force no longer holds. No time comes with it: it is that of the
+    /// newest document before.
+    fn withdraw(&mut self, channel: &str) {
+        let newest = self.corrections.get_mut(channel);
+        if let Some(correction) = newest.and_then(|corrections| corrections.last_mut()) {
+            correction.withdrawn = correction.withdrawn.or(self.newest);
         }
     }
 
@@ -244,23 +284,27 @@ fn instant<'de, D: serde::Deserializer<'de>>(text: D) -> Result<Timestamp, D::Er
 mod tests {
     use super::*;
 
-    fn document(zero: &str, span: &str) -> String {
+    fn document(zero: &str, span: &str, side: &str) -> String {
         format!(
             r#"{{"channel":"a/b","issue_number":1,"issued":"2026-03-02T00:00:00Z",
             "valid_from":"2026-03-02T00:00:00Z",
             "valid_until":"2026-03-03T00:00:00Z","origin":"2026-03-02T00:00:00Z",
             "degree":1,"zero":{zero},
-            "span":{span},"span_centre":10.0,"expanded_uncertainty":0.1,"zone":null,"more":[1]}}"#
+            "span":{span},"span_centre":10.0,"span_side":"{side}","influences":[],"expanded_uncertainty":0.1,"zone":null,"more":[1]}}"#
         )
     }
 
     #[test]
     fn corrections_are_applied_as_the_document_says() {
         let mut heard = Heard::default();
-        heard.take("correction/a/b", document("[-0.3, 0.1]", "[]").as_bytes());
-        heard.take("correction/a/b", document("[-0.3]", "[0.05]").as_bytes());
-        let [straight, spanned] = &heard.corrections["a/b"][..] else {
-            panic!("two documents")
+        let mut take = |zero, span, side| {
+            heard.take("correction/a/b", document(zero, span, side).as_bytes());
+        };
+        take("[-0.3, 0.1]", "[]", "reference");
+        take("[-0.3]", "[0.05]", "reference");
+        take("[-0.3]", "[0.05]", "indication");
+        let [straight, spanned, plain] = &heard.corrections["a/b"][..] else {
+            panic!("three documents")
         };
         let start = straight.origin;
         let noon = start.plus(holdtrue_engine::time::Duration::from_seconds(43_200));
@@ -271,7 +315,53 @@ mod tests {
         assert!((straight.of(10.3, noon) + 0.25).abs() < 1e-12);
         // With span: x = 10 gives i = 10.3 + … ; c = (−0.3 + 0.05·(12 − 10)) / 0.95.
         assert!((spanned.of(12.0, start) + 0.2 / 0.95).abs() < 1e-12);
+        // As a function of the indication it is not divided.
+        assert!((plain.of(12.0, start) + 0.2).abs() < 1e-12);
         assert!(straight.holds(start) && straight.holds(noon) && !straight.holds(next));
+    }
+
+    #[test]
+    fn a_withdrawn_correction_is_applied_no_longer_until_the_next() {
+        let mut heard = Heard::default();
+        let text = document("[-0.3]", "[]", "reference");
+        let corrected = |time: &str| {
+            format!(r#"{{"time":"{time}","indication":1,"corrected":0.7,"issue_number":1}}"#)
+        };
+        let hour = |hours: i64| {
+            let seconds = holdtrue_engine::time::Duration::from_seconds(3600 * hours);
+            heard_start().plus(seconds)
+        };
+        heard.take("correction/a/b", text.as_bytes());
+        heard.take(
+            "corrected/a/b",
+            corrected("2026-03-02T05:00:00Z").as_bytes(),
+        );
+        heard.take("correction/a/b", b"");
+        heard.take("corrected/c", corrected("2026-03-02T07:00:00Z").as_bytes());
+        // Cleared once more: it was withdrawn at the first.
+        heard.take("correction/a/b", b"");
+        heard.take("correction/c", b"");
+        let [withdrawn] = &heard.corrections["a/b"][..] else {
+            panic!("one document")
+        };
+        assert!(withdrawn.holds(hour(4)) && !withdrawn.holds(hour(5)) && !withdrawn.holds(hour(6)));
+        heard.take("correction/a/b", text.as_bytes());
+        let latest = heard.corrections["a/b"].last().unwrap();
+        assert!(latest.holds(hour(6)));
+    }
+
+    /// When the document of these tests begins to hold.
+    fn heard_start() -> Timestamp {
+        instant(serde_json::json!("2026-03-02T00:00:00Z")).unwrap()
+    }
+
+    #[test]
+    fn influence_quantities_that_the_plant_does_not_have_are_a_contradiction() {
+        let mut heard = Heard::default();
+        let named = r#""influences":[{"name":"t"}]"#;
+        let text = document("[0]", "[]", "reference").replace(r#""influences":[]"#, named);
+        heard.take("correction/a/b", text.as_bytes());
+        assert_eq!(heard.contradictions.len(), 1);
     }
 
     #[test]

@@ -28,7 +28,7 @@ impl<'a> AlarmDocument<'a> {
             schema_version: SCHEMA_VERSION,
             subject: word::subject(change.subject),
             name,
-            kind: word::alarm_kind(change.kind),
+            kind: change.kind.code(),
             state: word::alarm_state(change.state),
             at: word::time(change.at),
             since: word::time(change.since),

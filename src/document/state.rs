@@ -123,11 +123,7 @@ impl ChannelState {
             because: channel.because.map(word::cause),
             status: word::status(channel.status()),
             statuses: channel.statuses.iter().copied().map(word::status).collect(),
-            alarms: alarms
-                .iter()
-                .filter(own)
-                .map(|it| word::alarm_kind(it.kind))
-                .collect(),
+            alarms: alarms.iter().filter(own).map(|it| it.kind.code()).collect(),
         }
     }
 }

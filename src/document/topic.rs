@@ -1,6 +1,5 @@
 //! Topics under `holdtrue/<node>/`.
 
-use super::word;
 use holdtrue_engine::event::{AlarmKind, Subject};
 use holdtrue_engine::setup::Setup;
 
@@ -56,7 +55,7 @@ impl<'a> Topics<'a> {
     /// the node. (None stands on an influence quantity today.)
     #[must_use]
     pub fn alarm(&self, subject: Subject, name: &str, kind: AlarmKind) -> String {
-        let kind = word::alarm_kind(kind);
+        let kind = kind.code();
         match subject {
             Subject::Node => format!("holdtrue/{}/alarm/node/{kind}", self.node),
             Subject::Channel(_) => format!("holdtrue/{}/alarm/channel/{name}/{kind}", self.node),

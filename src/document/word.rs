@@ -1,8 +1,6 @@
 //! The fixed words that machines find in documents, and times as text.
 
-use holdtrue_engine::event::{
-    AlarmKind, AlarmState, Cause, RefusedReason, Rung, Status, Subject, Zone,
-};
+use holdtrue_engine::event::{AlarmState, Cause, RefusedReason, Rung, Status, Subject, Zone};
 use holdtrue_engine::fit::SpanRefusal;
 use holdtrue_engine::setup::DecisionRule;
 use holdtrue_engine::setup::SpanSide;
@@ -13,25 +11,6 @@ pub(super) fn time(instant: Timestamp) -> String {
     jiff::Timestamp::from_nanosecond(i128::from(instant.0))
         .expect("64 bits of nanoseconds end in the year 2262, the library's range in 9999")
         .to_string()
-}
-
-/// An alarm's kind, as in its topic.
-pub(super) fn alarm_kind(kind: AlarmKind) -> &'static str {
-    match kind {
-        AlarmKind::ErrorLimit => "error-limit",
-        AlarmKind::DriftRate => "drift-rate",
-        AlarmKind::TimeToLimit => "time-to-limit",
-        AlarmKind::ReferenceStale => "reference-stale",
-        AlarmKind::ReferenceStep => "reference-step",
-        AlarmKind::ReferenceStuck => "reference-stuck",
-        AlarmKind::CertificateExpiry => "certificate-expiry",
-        AlarmKind::CorrectionLimit => "correction-limit",
-        AlarmKind::DataGap => "data-gap",
-        AlarmKind::Step => "step",
-        AlarmKind::ScreenLockedOut => "screen-locked-out",
-        AlarmKind::Stuck => "stuck",
-        AlarmKind::NoiseGrowth => "noise-growth",
-    }
 }
 
 /// An alarm's state.

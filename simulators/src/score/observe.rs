@@ -92,8 +92,7 @@ impl Observer {
             // of several.
             Output::Alarm(change) if change.kind == AlarmKind::Step => {}
             Output::Alarm(change) if change.state != AlarmState::Normal => {
-                let word = kebab(&format!("{:?}", change.kind));
-                self.say(word, place(change.subject), day);
+                self.say(change.kind.code().to_owned(), place(change.subject), day);
             }
             Output::Step(step) => {
                 let sensor = Place::Sensor(index(step.channel));
@@ -139,28 +138,5 @@ fn place(subject: Subject) -> Option<Place> {
         Subject::Node | Subject::Influence(_) => None,
         Subject::Channel(channel) => Some(Place::Sensor(index(channel))),
         Subject::Reference(reference) => Some(Place::Reference(reference.0 as usize)),
-    }
-}
-
-/// `ErrorLimit` as `error-limit`: how topics spell an alarm's kind.
-fn kebab(name: &str) -> String {
-    let mut word = String::new();
-    for (position, letter) in name.chars().enumerate() {
-        if letter.is_uppercase() && position > 0 {
-            word.push('-');
-        }
-        word.extend(letter.to_lowercase());
-    }
-    word
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-
-    #[test]
-    fn kinds_are_spelt_as_in_topics() {
-        assert_eq!(kebab("ErrorLimit"), "error-limit");
-        assert_eq!(kebab("ScreenLockedOut"), "screen-locked-out");
     }
 }

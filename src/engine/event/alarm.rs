@@ -35,6 +35,28 @@ pub enum AlarmKind {
     NoiseGrowth,
 }
 
+impl AlarmKind {
+    /// A short fixed word for machines.
+    #[must_use]
+    pub fn code(self) -> &'static str {
+        match self {
+            Self::ErrorLimit => "error-limit",
+            Self::DriftRate => "drift-rate",
+            Self::TimeToLimit => "time-to-limit",
+            Self::ReferenceStale => "reference-stale",
+            Self::ReferenceStep => "reference-step",
+            Self::ReferenceStuck => "reference-stuck",
+            Self::CertificateExpiry => "certificate-expiry",
+            Self::CorrectionLimit => "correction-limit",
+            Self::DataGap => "data-gap",
+            Self::Step => "step",
+            Self::ScreenLockedOut => "screen-locked-out",
+            Self::Stuck => "stuck",
+            Self::NoiseGrowth => "noise-growth",
+        }
+    }
+}
+
 /// The states of an alarm. A later version adds acknowledgement, latching, shelving and suppression
 /// here.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]

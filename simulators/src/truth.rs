@@ -1,8 +1,8 @@
 //! What is true about a run: drawn parameters, planted faults, and the alarm that each fault must
 //! raise.
 //!
-//! Only these alarms are expected: error limit, time to limit, drift rate, stale reference, data
-//! gap, screen locked out. The rules are derived from the planted error alone, never from what a
+//! Only these alarms are expected: error limit, time to limit, drift rate, step, stuck, stale
+//! reference, data gap. The rules are derived from the planted error alone, never from what a
 //! fit makes of it.
 
 use crate::behaviour::disturbance::{DYING_DAYS, Disturbance};
@@ -203,11 +203,9 @@ fn alarms(sensor: usize, kit: &Kit, planted: &Planted, end: f64) -> Vec<Expected
     };
     limit_alarms(&mut expected, &planted.curve);
     foretelling_alarms(&mut expected, &planted.curve);
-    let window = kit.instrument.window_days;
     for jump in planted.curve.jumps(end) {
-        // The old level leaves the window one window later; until then the fit may contradict the
-        // readings.
-        let window = (jump, jump + 1.0, jump + window + 1.0);
+        // A step told later than two days after it is about something else.
+        let window = (jump, jump + 1.0, jump + 2.0);
         expected.add(Subject::Channel, "step", jump, window);
     }
     match planted.disturbance {

@@ -53,7 +53,12 @@ fn an_engine_that_does_nothing_breaks_the_limits() {
         ..scenario("offset-ramp")
     };
     let runs = contest::run(&[(ramp, 1)], 1, &|| {});
-    let row = &Scorecard::new(1, &[ramp], &runs).scenarios[0];
+    let scorecard = Scorecard::new(1, &[ramp], &runs);
+    let ending = command::ending(&scorecard.broken());
+    assert!(
+        matches!(&ending, Err(Failure::Incomplete(text)) if text.contains("offset-ramp: Remaining"))
+    );
+    let row = &scorecard.scenarios[0];
     assert_eq!(row.class, Class::Correctable);
     let broken: Vec<Figure> = row
         .limits
@@ -72,7 +77,9 @@ fn an_engine_that_does_nothing_breaks_the_limits() {
     // And the same scenario with its reference keeps them.
     let sound = scenario("offset-ramp");
     let runs = contest::run(&[(sound, 1)], 1, &|| {});
-    let summary = &Scorecard::new(1, &[sound], &runs).scenarios[0].summary;
+    let scorecard = Scorecard::new(1, &[sound], &runs);
+    assert!(command::ending(&scorecard.broken()).is_ok());
+    let summary = &scorecard.scenarios[0].summary;
     for verdict in limits::judge(&sound, summary) {
         assert!(verdict.holds, "{verdict:?}");
     }

@@ -64,6 +64,15 @@ pub enum Curve {
 }
 
 impl Curve {
+    /// An even change from `onset` on, of `change` by `end`.
+    #[must_use]
+    pub fn creeping(onset: f64, change: f64, end: f64) -> Self {
+        Self::Linear {
+            onset,
+            rate: change / (end - onset),
+        }
+    }
+
     /// The systematic error `day` days from the start.
     #[must_use]
     pub fn error(&self, day: f64) -> f64 {

@@ -12,6 +12,8 @@ mod run;
 mod score;
 mod write;
 
+pub use score::ending;
+
 use clap::{Parser, Subcommand};
 use std::fmt;
 use std::process::ExitCode;

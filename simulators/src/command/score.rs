@@ -69,28 +69,59 @@ impl Score {
         } else {
             say(scorecard.text().trim_end());
         }
-        match scorecard.broken() {
-            broken if broken.is_empty() => Ok(()),
-            broken => Err(Failure::Incomplete(format!(
-                "{} limits are broken:\n{}",
-                broken.len(),
-                broken.join("\n")
-            ))),
-        }
+        ending(&scorecard.broken())
     }
 
-    /// The scenarios asked for, all without a word.
+    /// The scenarios asked for, each once; all without a word.
     fn chosen(&self) -> Result<Vec<Scenario>, Failure> {
         if self.scenarios.is_empty() {
             return Ok(library::all());
         }
-        self.scenarios
-            .iter()
-            .map(|name| {
-                library::find(name).ok_or_else(|| {
-                    Failure::Usage(format!("no scenario {name:?}; see plant score --list"))
-                })
-            })
-            .collect()
+        let mut chosen: Vec<Scenario> = Vec::new();
+        for name in &self.scenarios {
+            let scenario = library::find(name).ok_or_else(|| {
+                Failure::Usage(format!("no scenario {name:?}; see plant score --list"))
+            })?;
+            if !chosen.iter().any(|known| known.name == scenario.name) {
+                chosen.push(scenario);
+            }
+        }
+        Ok(chosen)
+    }
+}
+
+/// How the command ends with these limits broken, one sentence each.
+///
+/// # Errors
+/// The exit code 1 with all of them, if there is any.
+pub fn ending(broken: &[String]) -> Result<(), Failure> {
+    if broken.is_empty() {
+        return Ok(());
+    }
+    let list = broken.join("\n");
+    let count = broken.len();
+    Err(Failure::Incomplete(format!(
+        "{count} limits are broken:\n{list}"
+    )))
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn a_scenario_asked_for_twice_runs_once() {
+        let score = |names: &[&str]| Score {
+            scenarios: names.iter().map(|name| (*name).to_owned()).collect(),
+            seeds: None,
+            seed_base: 1,
+            json: false,
+            short: false,
+            list: false,
+        };
+        let chosen = score(&["step", "stuck", "step"]).chosen().unwrap();
+        let names: Vec<&str> = chosen.iter().map(|scenario| scenario.name).collect();
+        assert_eq!(names, ["step", "stuck"]);
+        assert_eq!(score(&[]).chosen().unwrap().len(), library::all().len());
     }
 }

@@ -125,8 +125,14 @@ fn variance(covariance: &[Vec<f64>], row: &[f64]) -> f64 {
 #[allow(clippy::cast_possible_truncation, reason = "a few days in nanoseconds")]
 mod tests {
     use super::*;
-    use holdtrue_engine::event::{CriterionValues, InfluenceTerm, WindowSeen};
+    use crate::score::chooser::Chooser;
+    use crate::score::{library, stream};
+    use holdtrue_engine::engine::Engine;
+    use holdtrue_engine::event::{
+        CriterionValues, InfluenceTerm, Input, Output, Source, WindowSeen,
+    };
     use holdtrue_engine::setup::{ChannelId, DecisionRule};
+    use std::collections::BTreeMap;
 
     #[test]
     fn polynomial_and_variance_take_their_values_by_hand() {
@@ -248,6 +254,60 @@ mod tests {
         };
         let applied = apply(&held, Duration::ZERO, indicated());
         assert_close(applied, 6.4, 0.25 - 0.09 + 0.45, 0.3);
+    }
+
+    /// What a consumer makes of a document is what the engine itself says in corrected values, with a
+    /// span, an influence quantity, and while a correction is held.
+    #[test]
+    fn a_consumer_and_the_engine_agree() {
+        for name in ["span-ramp", "temperature-declared", "reference-stale"] {
+            let scenario = library::find(name).unwrap();
+            let mut world = (scenario.build)(Chooser::new(name, 5));
+            world.setup.channels[0].corrected_values = true;
+            let mut engine = Engine::new();
+            let mut outputs = Vec::new();
+            engine.step(&Input::Setup(Box::new(world.setup.clone())), &mut outputs);
+            let mut documents = BTreeMap::new();
+            let (mut influence, mut compared, mut held) = (0.0, 0, 0);
+            for event in stream::events(&world) {
+                if let Input::Reading(reading) = &event.input
+                    && let Source::Influence(_) = reading.source
+                {
+                    influence = reading.value;
+                }
+                engine.step(&event.input, &mut outputs);
+                for output in outputs.drain(..) {
+                    match output {
+                        Output::Correction(document) => {
+                            documents.insert(document.issue_number, document);
+                        }
+                        Output::Corrected(value) => {
+                            let document = &documents[&value.issue_number];
+                            let indicated = Indicated {
+                                at: value.phenomenon,
+                                value: value.indication,
+                                influence,
+                            };
+                            let lateness = world.setup.channels[0].lateness;
+                            let ours = apply(document, lateness, indicated).unwrap();
+                            let close = |left: f64, right: f64| {
+                                (left - right).abs() <= 1e-9 * value.expanded_uncertainty
+                            };
+                            assert!(
+                                close(ours.correction, value.correction)
+                                    && close(ours.expanded, value.expanded_uncertainty),
+                                "{name}: {ours:?} {value:?} {document:?}"
+                            );
+                            compared += 1;
+                            held += u32::from(document.rung == Rung::Hold);
+                        }
+                        _ => {}
+                    }
+                }
+            }
+            assert!(compared > 1000, "{name}: {compared}");
+            assert_eq!(held > 0, name == "reference-stale", "{name}: {held}");
+        }
     }
 
     #[test]

@@ -31,12 +31,16 @@ pub struct Findings {
     pub jump_times: Vec<f64>,
     /// Error of the size that was told for it, in the u that was told with it.
     pub jump_sizes: Vec<f64>,
-    /// Raises beyond the true degree.
+    /// Sensors whose drift has a degree …
+    pub graded: u32,
+    /// … those that were raised beyond it …
     pub false_raises: u32,
-    /// Sensors whose drift never raised the degree.
+    /// … and those that never reached it.
     pub missed_raises: u32,
-    /// Steps where none was planted.
+    /// Steps where none was planted, or told once more.
     pub false_steps: u32,
+    /// Other words about a planted fault after the first.
+    pub repeated: u32,
     /// Limit alarms while the true error was well inside.
     pub false_limits: u32,
     /// Other alarms that no planted fault explains, by kind.
@@ -60,22 +64,22 @@ pub struct Limits {
 }
 
 impl Limits {
-    /// Takes the systematic error at `day`.
+    /// Takes the systematic error at `day`. Readings may come in any order.
     pub fn see(&mut self, day: f64, systematic: f64, limit: Option<f64>) {
         let Some(limit) = limit else { return };
         self.halfway |= systematic.abs() >= HALF_WAY * limit;
         if systematic.abs() >= NEAR_LIMIT * limit {
             self.near.push(day);
         }
-        if systematic.abs() >= limit && self.crossing.is_none() {
-            self.crossing = Some(day);
+        if systematic.abs() >= limit {
+            self.crossing = Some(self.crossing.map_or(day, |first| first.min(day)));
         }
     }
 
     /// Whether an alarm at `day` that the limit is passed has a reason.
     fn explains(&self, day: f64) -> bool {
-        let reached = self.near.partition_point(|near| *near <= day);
-        reached > 0 && day - self.near[reached - 1] <= LIMIT_ECHO_DAYS
+        let echoes = day - LIMIT_ECHO_DAYS..=day;
+        self.near.iter().any(|near| echoes.contains(near))
     }
 }
 
@@ -102,8 +106,14 @@ pub fn judge(world: &World, said: &[Said], limits: &[Limits]) -> Findings {
             None => findings.missed += 1,
         }
     }
+    let mut told = vec![Vec::new(); world.faults.len()];
     for it in said {
-        judge_word(world, it, limits, &mut findings);
+        match explain(world, it, &mut told) {
+            Explained::First => {}
+            Explained::Again if it.word == STEP => findings.false_steps += 1,
+            Explained::Again => findings.repeated += 1,
+            Explained::Not => judge_word(it, limits, &mut findings),
+        }
     }
     judge_raises(world, said, &mut findings);
     judge_leads(said, limits, &mut findings);
@@ -115,26 +125,41 @@ fn answers(said: &Said, fault: &Fault) -> bool {
     said.place == Some(fault.place) && fault.answers.iter().any(|word| *word == said.word)
 }
 
-/// Counts a word that nothing planted explains.
-fn judge_word(world: &World, said: &Said, limits: &[Limits], findings: &mut Findings) {
-    let planted = world
-        .faults
-        .iter()
-        .any(|fault| answers(said, fault) && said.day >= fault.at && said.day <= fault.until);
-    if planted || world.tolerated.iter().any(|word| *word == said.word) {
-        return;
+/// Whether something planted explains a word.
+enum Explained {
+    /// The fault had not been told in this word.
+    First,
+    /// All that might explain it had been told before.
+    Again,
+    /// Nothing does.
+    Not,
+}
+
+/// Finds the fault that explains a word. `told`: in which words each has been told.
+fn explain<'a>(world: &World, said: &'a Said, told: &mut [Vec<&'a str>]) -> Explained {
+    let mut explained = Explained::Not;
+    for (fault, told) in world.faults.iter().zip(told) {
+        if !answers(said, fault) || said.day < fault.at || said.day > fault.until {
+            continue;
+        }
+        if !told.contains(&said.word.as_str()) {
+            told.push(&said.word);
+            return Explained::First;
+        }
+        explained = Explained::Again;
     }
+    explained
+}
+
+/// Counts a word that nothing planted explains.
+fn judge_word(said: &Said, limits: &[Limits], findings: &mut Findings) {
     let of_sensor = match said.place {
         Some(Place::Sensor(sensor)) => limits.get(sensor),
         _ => None,
     };
     match said.word.as_str() {
-        DEGREE_RAISED => {
-            let degree = said.degree.unwrap_or_default();
-            if world.degrees.is_some_and(|(_, most)| degree > most) {
-                findings.false_raises += 1;
-            }
-        }
+        // A raise is judged with all others of its sensor.
+        DEGREE_RAISED => {}
         STEP => findings.false_steps += 1,
         ERROR_LIMIT => {
             if !of_sensor.is_some_and(|limits| limits.explains(said.day)) {
@@ -146,20 +171,21 @@ fn judge_word(world: &World, said: &Said, limits: &[Limits], findings: &mut Find
     }
 }
 
-/// Counts sensors that never reached the degree that their drift has.
+/// Counts sensors that went beyond the degree that their drift has, or never reached it.
 fn judge_raises(world: &World, said: &[Said], findings: &mut Findings) {
-    let Some((least, _)) = world.degrees else {
-        return;
-    };
-    for sensor in 0..world.sensors.len() {
+    for (index, sensor) in world.sensors.iter().enumerate() {
+        let Some((least, most)) = sensor.degrees else {
+            continue;
+        };
         let reached = said
             .iter()
-            .filter(|it| it.place == Some(Place::Sensor(sensor)))
+            .filter(|it| it.place == Some(Place::Sensor(index)))
             .filter_map(|it| it.degree)
-            .max();
-        if reached.unwrap_or(0) < least {
-            findings.missed_raises += 1;
-        }
+            .max()
+            .unwrap_or(0);
+        findings.graded += 1;
+        findings.false_raises += u32::from(reached > most);
+        findings.missed_raises += u32::from(reached < least);
     }
 }
 
@@ -196,18 +222,11 @@ mod tests {
         }
     }
 
+    /// A drift of degree 1, and a jump of 1 on day 10.
     fn world() -> World {
         let mut world = one(Chooser::new("test", 1), WHITE);
-        world.faults.push(Fault {
-            answers: vec![STEP],
-            place: Place::Sensor(0),
-            at: 10.0,
-            due: 12.0,
-            until: 14.0,
-            size: Some(2.0),
-            required: true,
-        });
-        world.degrees = Some((1, 1));
+        world.faults.push(Fault::jump(0, 10.0, 1.0));
+        world.expect_degrees(1, 1);
         world
     }
 
@@ -219,12 +238,32 @@ mod tests {
         assert_eq!(in_time.delays.len(), 1);
         assert!((in_time.delays[0] - 144.0).abs() < 1e-9);
         // Too late to count as found, but about this fault all the same.
-        let late = judge(&world(), &[said(STEP, 13.0, None)], &[]);
+        let late = judge(&world(), &[said(STEP, 12.0, None)], &[]);
         assert_eq!((late.missed, late.false_steps), (1, 0));
-        for day in [9.0, 15.0] {
+        for day in [9.0, 12.5] {
             let elsewhere = judge(&world(), &[said(STEP, day, None)], &[]);
             assert_eq!((elsewhere.missed, elsewhere.false_steps), (1, 1), "{day}");
         }
+    }
+
+    #[test]
+    fn a_fault_explains_one_word_of_each_kind() {
+        let twice = [said(STEP, 10.5, None), said(STEP, 10.8, None)];
+        let found = judge(&world(), &twice, &[]);
+        assert_eq!((found.missed, found.false_steps), (0, 1));
+        assert_eq!((found.delays.len(), found.repeated), (1, 0));
+        // Two jumps close to each other explain two steps.
+        let mut world = world();
+        world.faults.push(Fault::jump(0, 10.7, 1.0));
+        assert_eq!(judge(&world, &twice, &[]).false_steps, 0);
+        let excuse = Fault::excuse(Place::Sensor(0), 10.0, 11.0, &["stuck", "noise-growth"]);
+        world.faults.push(excuse);
+        let words = ["stuck", "noise-growth", "stuck"].map(|word| said(word, 10.5, None));
+        let found = judge(&world, &words, &[]);
+        assert!(found.false_alarms.is_empty());
+        assert_eq!((found.planted, found.repeated), (2, 1));
+        let later = judge(&world, &[said("stuck", 11.5, None)], &[]);
+        assert_eq!(later.false_alarms.get("stuck"), Some(&1));
     }
 
     #[test]
@@ -242,21 +281,39 @@ mod tests {
 
     #[test]
     fn raises_beyond_the_true_degree_are_false_and_none_at_all_is_a_miss() {
-        let none = judge(&world(), &[], &[]);
-        assert_eq!((none.false_raises, none.missed_raises), (0, 1));
-        let right = judge(&world(), &[said(DEGREE_RAISED, 5.0, Some(1))], &[]);
-        assert_eq!((right.false_raises, right.missed_raises), (0, 0));
-        let far = judge(&world(), &[said(DEGREE_RAISED, 5.0, Some(2))], &[]);
-        assert_eq!((far.false_raises, far.missed_raises), (1, 0));
+        let raises = |degrees: &[u8]| {
+            let said: Vec<Said> = degrees
+                .iter()
+                .map(|degree| said(DEGREE_RAISED, 5.0, Some(*degree)))
+                .collect();
+            let found = judge(&world(), &said, &[]);
+            assert_eq!(found.graded, 1);
+            (found.false_raises, found.missed_raises)
+        };
+        assert_eq!(raises(&[]), (0, 1));
+        assert_eq!(raises(&[1]), (0, 0));
+        assert_eq!(raises(&[1, 2]), (1, 0));
+        // One sensor, however often.
+        assert_eq!(raises(&[1, 2, 2]), (1, 0));
+        let mut world = world();
+        world.sensors[0].degrees = None;
+        assert_eq!(judge(&world, &[], &[]).graded, 0);
     }
 
     #[test]
     fn limit_alarms_need_an_error_near_the_limit() {
         let mut limits = Limits::default();
-        for (day, error) in [(1.0, 0.5), (2.0, -0.95), (3.0, 1.05), (4.0, 0.2)] {
+        // Out of order, as readings that overtake each other come.
+        for (day, error) in [
+            (1.0, 0.5),
+            (3.5, 1.1),
+            (2.0, -0.95),
+            (3.0, 1.05),
+            (4.0, 0.2),
+        ] {
             limits.see(day, error, Some(1.0));
         }
-        for (day, explained) in [(1.5, false), (2.0, true), (4.5, true), (5.5, false)] {
+        for (day, explained) in [(1.5, false), (2.0, true), (5.5, true), (5.6, false)] {
             let found = judge(
                 &world(),
                 &[said(ERROR_LIMIT, day, None)],

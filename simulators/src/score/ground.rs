@@ -63,9 +63,7 @@ pub fn many(
         references: Vec::new(),
         sensors: Vec::new(),
         faults: Vec::new(),
-        degrees: None,
         beyond_from: None,
-        tolerated: Vec::new(),
         setup: Setup {
             node: "scorecard".to_owned(),
             clock: Clock::Readings,
@@ -82,6 +80,7 @@ pub fn many(
             each: REFERENCE_NOISE * deviation,
             error: Vec::new(),
             silent_from: None,
+            stuck_from: None,
             late: (0.0, 0.0),
         });
         let name = format!("reference-{reference}");
@@ -162,6 +161,7 @@ fn sensor(quantity: usize, noise: Noise) -> Sensor {
         other_unit: None,
         delivery: Delivery::default(),
         cleaned: Vec::new(),
+        degrees: None,
     }
 }
 

@@ -60,7 +60,14 @@ const CORRELATED: &[&str] = &["ar-0.5", "ar-0.8", "ar-0.9", "white-and-slow"];
 const JUMPING: &[&str] = &["step", "auto-baseline", "saw-tooth-undeclared"];
 
 /// Scenarios in which a reference goes bad, and nothing else does.
-const ONE_ALARM: &[&str] = &["fleet-one-bad-reference", "reference-step"];
+const ONE_ALARM: &[&str] = &[
+    "fleet-one-bad-reference",
+    "reference-step",
+    "reference-stuck",
+];
+
+/// Scenarios without a drift that can be seen, outside the class of those.
+const STEADY: &[&str] = &["span-steady-noisy-reference", "clock-step"];
 
 /// The table.
 const LIMITS: &[Limit] = &[
@@ -107,6 +114,12 @@ const LIMITS: &[Limit] = &[
         "a 95 % interval holds the declared common error of the reference",
     ),
     limit(
+        Meant::Only(&["references-disagree", "reference-drift"]),
+        Figure::Claimed,
+        Bound::AtLeast(0.9),
+        "coverage must not be bought by withdrawing",
+    ),
+    limit(
         Meant::Only(&["span-ramp-constant-level"]),
         Figure::Remaining,
         Bound::AtMost(0.25),
@@ -137,16 +150,33 @@ const LIMITS: &[Limit] = &[
         "beyond what the fit has seen nothing is known, and every corrected value must say so",
     ),
     limit(
-        Meant::Only(&["span-steady-noisy-reference", "clock-step"]),
+        Meant::Only(STEADY),
         Figure::Worsened,
         Bound::AtMost(1.0),
         "what does not drift is left alone, whatever the other side of the pair does",
     ),
     limit(
-        Meant::Only(&["span-steady-noisy-reference", "group-common-mode"]),
+        Meant::Class(Class::Stationary, &[]),
+        Figure::Claimed,
+        Bound::AtLeast(0.9),
+        "to leave alone is to say so: withdrawing worsens nothing and covers everything",
+    ),
+    limit(
+        Meant::Only(STEADY),
+        Figure::Claimed,
+        Bound::AtLeast(0.9),
+        "to leave alone is to say so: withdrawing worsens nothing",
+    ),
+    limit(
+        Meant::Only(&[
+            "span-steady-noisy-reference",
+            "group-common-mode",
+            "temperature-declared",
+            "saw-tooth-ordered",
+        ]),
         Figure::FalseRaises,
         Bound::AtMost(0.05),
-        "nothing drifts in what can be seen: one sensor in twenty over six windows at most",
+        "time explains no more of it: one sensor in twenty over six windows at most",
     ),
     limit(
         Meant::Class(Class::Correctable, &[]),
@@ -191,6 +221,12 @@ const LIMITS: &[Limit] = &[
         "one bad reference is one alarm, not one for each of its channels",
     ),
     limit(
+        Meant::Only(ONE_ALARM),
+        Figure::Repeated,
+        Bound::AtMost(0.0),
+        "one bad reference is one alarm, not one each time that it is looked at",
+    ),
+    limit(
         Meant::Class(Class::Detection, &[]),
         Figure::Missed,
         Bound::AtMost(0.0),
@@ -213,6 +249,12 @@ const LIMITS: &[Limit] = &[
         Figure::Moved,
         Bound::AtMost(1.0),
         "a reference known to be bad moves no correction by more than its own u",
+    ),
+    limit(
+        Meant::Only(&["fleet-one-bad-reference", "group-common-mode"]),
+        Figure::Claimed,
+        Bound::AtLeast(0.9),
+        "nothing is moved where nothing is claimed: the sound sensors go on",
     ),
     limit(
         Meant::Only(&["offset-ramp", "biofouling", "bad-delivery"]),

@@ -274,6 +274,8 @@ impl Line {
 struct Post {
     reference: usize,
     draw: Draw,
+    /// The value that it repeats.
+    held: Option<f64>,
 }
 
 impl Post {
@@ -281,6 +283,7 @@ impl Post {
         Self {
             reference,
             draw: world.chooser.stream(reference, Duty::Reference),
+            held: None,
         }
     }
 
@@ -307,6 +310,10 @@ impl Post {
             return;
         }
         let error: f64 = plan.error.iter().map(|curve| curve.error(day)).sum();
+        let mut value = values[quantity] + error + noise;
+        if plan.stuck_from.is_some_and(|from| day >= from) {
+            value = *self.held.get_or_insert(value);
+        }
         let at = START.plus(days(day));
         let arrival = at.plus(days(way));
         events.push(Event {
@@ -315,7 +322,7 @@ impl Post {
                 Source::Reference(reference_id(self.reference)),
                 arrival,
                 at,
-                values[quantity] + error + noise,
+                value,
             ),
             truth: None,
         });
@@ -510,5 +517,26 @@ mod tests {
             }
         }
         assert_eq!(count, 12);
+    }
+
+    #[test]
+    fn a_stuck_reference_repeats_its_first_value_from_then_on() {
+        let mut world = world();
+        world.references[0].stuck_from = Some(0.5);
+        let values = |world: &World| -> Vec<f64> {
+            events(world)
+                .iter()
+                .filter_map(|event| match &event.input {
+                    Input::Reading(reading) => match reading.source {
+                        Source::Reference(_) => Some(reading.value),
+                        _ => None,
+                    },
+                    _ => None,
+                })
+                .collect()
+        };
+        let (stuck, sound) = (values(&world), values(&self::world()));
+        assert_eq!(stuck[..73], sound[..73]);
+        assert!(stuck[73..].iter().all(|value| close(*value, sound[72])));
     }
 }

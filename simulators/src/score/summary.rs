@@ -1,7 +1,9 @@
 //! The runs of one scenario taken together: every figure that a limit can be set on.
 
 use super::contest::Timed;
+use super::findings::Findings;
 use super::tally::Tally;
+use super::trial::Trial;
 use serde::Serialize;
 use std::collections::BTreeMap;
 
@@ -18,12 +20,14 @@ pub enum Figure {
     Coverage,
     /// Part of all instants at which a document was in force.
     Claimed,
-    /// Sensors with a raise beyond the true degree, as a part of the runs.
+    /// Sensors with a raise beyond the true degree, as a part of those whose drift has a degree.
     FalseRaises,
-    /// Sensors whose drift was never recognised, as a part of the runs.
+    /// Sensors whose drift was never recognised, as a part of the same.
     MissedRaises,
-    /// Steps where none was planted, per 100 000 indications.
+    /// Steps where none was planted, or told once more, per 100 000 indications.
     FalseSteps,
+    /// Other words about a planted fault after the first, in all runs.
+    Repeated,
     /// Planted faults not noticed in time, as a part of those planted.
     Missed,
     /// Readings from a fault to the word about it: median.
@@ -46,7 +50,8 @@ pub enum Figure {
     SpanClaims,
     /// Part of the corrected values beyond all that was learned that do not say so.
     Unflagged,
-    /// The most that a fault moved a correction, in u of the correction without the fault.
+    /// The most that a fault moved a correction, in u of the correction without the fault; missing
+    /// if in any run nothing was claimed once the fault was there.
     Moved,
 }
 
@@ -101,25 +106,23 @@ pub fn of(runs: &[Timed]) -> Summary {
 }
 
 fn figures(runs: &[Timed], tally: &Tally, false_alarms: f64) -> BTreeMap<Figure, f64> {
-    let count = |of: fn(&Timed) -> u32| f64::from(runs.iter().map(of).sum::<u32>());
-    let trials = runs.len() as f64;
-    let before = tally.newest_before.rms();
-    let after = tally.newest_after.rms();
-    let own = tally.uncertainty.rms().unwrap_or(0.0);
-    let both = before.zip(after);
-    let delays = sorted(runs, |run| &run.trial.findings.delays);
-    let times = sorted(runs, |run| &run.trial.findings.jump_times);
-    let sizes = sorted(runs, |run| &run.trial.findings.jump_sizes);
-    let within = sizes.partition_point(|size| *size <= 2.0) as f64;
-    let leads = sorted(runs, |run| &run.trial.findings.leads);
-    let planted = count(|run| run.trial.findings.planted);
-    let crossings = count(|run| run.trial.findings.crossings);
     let indications = tally.newest_before.count;
-    let claims = count(|run| u32::from(run.trial.span_claimed));
-    let beyond = runs.iter().map(|run| run.trial.beyond).sum::<u64>() as f64;
-    let unflagged = runs.iter().map(|run| run.trial.unflagged).sum::<u64>() as f64;
-    let moved = runs.iter().filter_map(|run| run.trial.moved);
-    let part = |of: f64, all: f64| (all > 0.0).then(|| of / all);
+    let false_alarms = part(1e5 * false_alarms, indications);
+    corrected(tally)
+        .into_iter()
+        .chain(words(runs, indications))
+        .chain(found(runs))
+        .chain(claims(runs))
+        .chain([(Figure::FalseAlarms, false_alarms)])
+        .filter_map(|(figure, value)| Some((figure, value?)))
+        .collect()
+}
+
+/// What corrections did to the error.
+fn corrected(tally: &Tally) -> [(Figure, Option<f64>); 4] {
+    let both = tally.newest_before.rms().zip(tally.newest_after.rms());
+    let own = tally.uncertainty.rms().unwrap_or(0.0);
+    let (covered, claimed) = (tally.covered as f64, tally.claimed as f64);
     [
         (
             Figure::Remaining,
@@ -129,56 +132,92 @@ fn figures(runs: &[Timed], tally: &Tally, false_alarms: f64) -> BTreeMap<Figure,
             Figure::Worsened,
             both.map(|(before, after)| (after - before) / (0.6 * own).max(0.05)),
         ),
-        (
-            Figure::Coverage,
-            part(tally.covered as f64, tally.claimed as f64),
-        ),
-        (Figure::Claimed, part(tally.claimed as f64, indications)),
+        (Figure::Coverage, part(covered, claimed)),
+        (Figure::Claimed, part(claimed, tally.newest_before.count)),
+    ]
+}
+
+/// What was said for nothing, or not said.
+fn words(runs: &[Timed], indications: f64) -> [(Figure, Option<f64>); 6] {
+    let graded = count(runs, |found| found.graded);
+    let crossings = count(runs, |found| found.crossings);
+    let foretold = sorted(runs, |found| &found.leads).len() as f64;
+    let false_steps = 1e5 * count(runs, |found| found.false_steps);
+    [
         (
             Figure::FalseRaises,
-            part(count(|run| run.trial.findings.false_raises), trials),
+            part(count(runs, |found| found.false_raises), graded),
         ),
         (
             Figure::MissedRaises,
-            part(count(|run| run.trial.findings.missed_raises), trials),
+            part(count(runs, |found| found.missed_raises), graded),
         ),
+        (Figure::FalseSteps, part(false_steps, indications)),
+        (Figure::Repeated, Some(count(runs, |found| found.repeated))),
         (
-            Figure::FalseSteps,
-            part(
-                1e5 * count(|run| run.trial.findings.false_steps),
-                indications,
-            ),
+            Figure::FalseLimits,
+            Some(count(runs, |found| found.false_limits)),
         ),
+        (Figure::Unforetold, part(crossings - foretold, crossings)),
+    ]
+}
+
+/// How soon and how well faults were found.
+fn found(runs: &[Timed]) -> [(Figure, Option<f64>); 6] {
+    let delays = sorted(runs, |found| &found.delays);
+    let times = sorted(runs, |found| &found.jump_times);
+    let sizes = sorted(runs, |found| &found.jump_sizes);
+    let within = sizes.partition_point(|size| *size <= 2.0) as f64;
+    let planted = count(runs, |found| found.planted);
+    [
         (
             Figure::Missed,
-            part(count(|run| run.trial.findings.missed), planted),
+            part(count(runs, |found| found.missed), planted),
         ),
         (Figure::DelayMedian, quantile(&delays, 0.5)),
         (Figure::Delay95, quantile(&delays, 0.95)),
         (Figure::JumpTime, quantile(&times, 0.5)),
         (Figure::JumpSize, part(within, sizes.len() as f64)),
         (
-            Figure::FalseLimits,
-            Some(count(|run| run.trial.findings.false_limits)),
+            Figure::Lead,
+            quantile(&sorted(runs, |found| &found.leads), 0.5),
         ),
-        (Figure::FalseAlarms, part(1e5 * false_alarms, indications)),
-        (Figure::Lead, quantile(&leads, 0.5)),
-        (
-            Figure::Unforetold,
-            part(crossings - leads.len() as f64, crossings),
-        ),
-        (Figure::SpanClaims, part(claims, trials)),
-        (Figure::Unflagged, part(unflagged, beyond)),
-        (Figure::Moved, moved.reduce(f64::max)),
     ]
-    .into_iter()
-    .filter_map(|(figure, value)| Some((figure, value?)))
-    .collect()
+}
+
+/// What was claimed that can't be known.
+fn claims(runs: &[Timed]) -> [(Figure, Option<f64>); 3] {
+    let sum = |of: fn(&Trial) -> u64| runs.iter().map(|run| of(&run.trial)).sum::<u64>() as f64;
+    let claims = sum(|trial| u64::from(trial.span_claimed));
+    let beyond = sum(|trial| trial.beyond);
+    let moved = runs
+        .iter()
+        .map(|run| run.trial.moved)
+        .reduce(|most, moved| Some(most?.max(moved?)));
+    [
+        (Figure::SpanClaims, part(claims, runs.len() as f64)),
+        (
+            Figure::Unflagged,
+            part(sum(|trial| trial.unflagged), beyond),
+        ),
+        (Figure::Moved, moved.flatten()),
+    ]
+}
+
+/// `of` as a part of `all`; `None` of nothing.
+fn part(of: f64, all: f64) -> Option<f64> {
+    (all > 0.0).then(|| of / all)
+}
+
+/// A count of all runs together.
+fn count(runs: &[Timed], of: fn(&Findings) -> u32) -> f64 {
+    f64::from(runs.iter().map(|run| of(&run.trial.findings)).sum::<u32>())
 }
 
 /// Values of all runs, smallest first.
-fn sorted(runs: &[Timed], of: fn(&Timed) -> &Vec<f64>) -> Vec<f64> {
-    let mut values: Vec<f64> = runs.iter().flat_map(of).copied().collect();
+fn sorted(runs: &[Timed], of: fn(&Findings) -> &Vec<f64>) -> Vec<f64> {
+    let findings = runs.iter().map(|run| &run.trial.findings);
+    let mut values: Vec<f64> = findings.flat_map(of).copied().collect();
     values.sort_by(f64::total_cmp);
     values
 }

@@ -96,9 +96,9 @@ bias: mean error that a consumer sees. RMS: of the systematic error at the newes
 cover: part of the time in which U held the error. raises: false + missed, % of the sensors.
 steps: false ones per 100 000 indications. missed: faults, %. delay: readings from fault to word,
   median and 95 %. jump: readings by which its time is off (median), % of its sizes within 2 u.
-alarms: false limit alarms + other false alarms. lead: days from the time-to-limit alarm to the
-  limit. span: % of the runs that claim one. silent: % of the corrected values beyond the learned
-  range that do not say so. s: seconds of one core.
+alarms: false limit alarms + other false alarms. again: words about a fault that had been told.
+lead: days from the time-to-limit alarm to the limit. span: % of the runs that claim one. silent: %
+  of the corrected values beyond the learned range that do not say so. s: seconds of one core.
 ";
 
 /// A column: its heading, its width, and what stands in it.
@@ -130,6 +130,7 @@ const COLUMNS: &[Column] = &[
         let others = row.summary.false_alarms.values().sum::<u32>();
         format!("{}+{others}", number(figure(row, Figure::FalseLimits), 0))
     }),
+    ("again", 5, |row| number(figure(row, Figure::Repeated), 0)),
     ("lead", 5, |row| number(figure(row, Figure::Lead), 1)),
     ("span", 4, |row| percent(row, Figure::SpanClaims)),
     ("silent", 6, |row| percent(row, Figure::Unflagged)),

@@ -38,8 +38,8 @@ pub struct Trial {
     pub beyond: u64,
     /// … and those that were not flagged so.
     pub unflagged: u64,
-    /// Where there is a twin without the fault: the most that a correction differs from its twin's,
-    /// in its twin's u.
+    /// Where there is a twin without the fault: the most that a correction differs from its twin's
+    /// once the fault is there, in its twin's u; `None` as well where nothing was claimed then.
     pub moved: Option<f64>,
 }
 
@@ -61,10 +61,11 @@ pub struct Expected {
 pub fn run(scenario: &Scenario, seed: u64) -> Trial {
     let world = (scenario.build)(Chooser::new(scenario.name, seed));
     let pass = pass(&world, scenario.twin.is_some());
-    let moved = scenario.twin.map(|remove_fault| {
+    let moved = scenario.twin.and_then(|remove_fault| {
         let mut twin = world.clone();
         remove_fault(&mut twin);
-        most_moved(&pass.trace, &self::pass(&twin, true).trace)
+        let from = world.faults.first().map_or(0.0, |fault| fault.at);
+        most_moved(from, &pass.trace, &self::pass(&twin, true).trace)
     });
     let beyond = || {
         let from = world.beyond_from.unwrap_or(f64::INFINITY);
@@ -109,8 +110,8 @@ struct Pass {
     tally: Tally,
     observer: Observer,
     limits: Vec<Limits>,
-    /// What was applied at each judged instant, if that was asked for.
-    trace: Vec<Option<Applied>>,
+    /// What was applied at each judged instant (in days), if that was asked for.
+    trace: Vec<(f64, Option<Applied>)>,
 }
 
 fn pass(world: &World, traced: bool) -> Pass {
@@ -157,7 +158,7 @@ impl Pass {
             let limit = world.setup.channels[truth.sensor].max_permissible_error;
             self.limits[truth.sensor].see(truth.day, truth.systematic, limit);
             if traced {
-                self.trace.push(applied);
+                self.trace.push((truth.day, applied));
             }
         }
     }
@@ -175,15 +176,45 @@ impl Pass {
     }
 }
 
-/// The most by which corrections differ from those of the twin, in the twin's u; instants at which
-/// either makes no claim do not count.
-fn most_moved(trace: &[Option<Applied>], twin: &[Option<Applied>]) -> f64 {
+/// The most by which corrections from a day on differ from those of the twin, in the twin's u;
+/// instants at which either makes no claim do not count.
+fn most_moved(
+    from: f64,
+    trace: &[(f64, Option<Applied>)],
+    twin: &[(f64, Option<Applied>)],
+) -> Option<f64> {
     trace
         .iter()
         .zip(twin)
-        .filter_map(|(ours, twin)| {
+        .filter(|((day, _), _)| *day >= from)
+        .filter_map(|((_, ours), (_, twin))| {
             let (ours, twin) = ((*ours)?, (*twin)?);
             Some((ours.correction - twin.correction).abs() / twin.u)
         })
-        .fold(0.0, f64::max)
+        .reduce(f64::max)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn corrections_are_compared_where_both_are_claimed_after_the_fault() {
+        let applied = |correction| {
+            Some(Applied {
+                correction,
+                u: 0.5,
+                expanded: 1.0,
+            })
+        };
+        let ours = [(1.0, applied(9.0)), (2.0, applied(1.0)), (3.0, None)];
+        let twin = [
+            (1.0, applied(0.0)),
+            (2.0, applied(0.0)),
+            (3.0, applied(0.0)),
+        ];
+        assert_eq!(most_moved(2.0, &ours, &twin), Some(2.0));
+        // Nothing claimed is nothing known, not nothing moved.
+        assert_eq!(most_moved(3.0, &ours, &twin), None);
+    }
 }

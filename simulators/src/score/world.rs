@@ -5,6 +5,7 @@
 //! serves all: a step every [`World::cadence_seconds`].
 
 use super::chooser::Chooser;
+use super::observe::STEP;
 use crate::behaviour::Drawn;
 use crate::behaviour::curve::Curve;
 use crate::behaviour::disturbance::Disturbance;
@@ -21,11 +22,6 @@ pub struct World {
     pub sensors: Vec<Sensor>,
     /// What must be noticed.
     pub faults: Vec<Fault>,
-    /// The least degree that the drift must bring, and the highest that it can justify; `None`
-    /// where the notion fails (steps, resets).
-    pub degrees: Option<(u8, u8)>,
-    /// Words that nothing is held against, because the fault makes them plausible.
-    pub tolerated: Vec<&'static str>,
     /// From this day on every true value lies beyond all that pairs have shown.
     pub beyond_from: Option<f64>,
     /// The engine's configuration.
@@ -43,6 +39,13 @@ impl World {
     #[must_use]
     pub fn drawn(&self) -> &[Drawn] {
         self.chooser.drawn()
+    }
+
+    /// Has every sensor's drift bring at least one degree and justify no more than another.
+    pub fn expect_degrees(&mut self, least: u8, most: u8) {
+        for sensor in &mut self.sensors {
+            sensor.degrees = Some((least, most));
+        }
     }
 
     /// Grid steps of the run.
@@ -83,6 +86,8 @@ pub struct Reference {
     pub error: Vec<Curve>,
     /// From when on it says nothing.
     pub silent_from: Option<f64>,
+    /// From when on it repeats one value.
+    pub stuck_from: Option<f64>,
     /// How long, in days, each value takes to arrive: shortest and longest.
     pub late: (f64, f64),
 }
@@ -112,6 +117,9 @@ pub struct Sensor {
     pub delivery: Delivery,
     /// When it is cleaned, and when an order says so.
     pub cleaned: Vec<Cleaning>,
+    /// The least degree that its drift must bring, and the highest that it can justify; `None`
+    /// where the notion fails (steps, resets).
+    pub degrees: Option<(u8, u8)>,
 }
 
 impl Sensor {
@@ -192,7 +200,10 @@ pub struct Delivery {
     pub clock_off: Option<(f64, f64, i64)>,
 }
 
-/// Something planted that must be noticed.
+/// Something planted: it must be noticed, or makes words plausible that would be false without it.
+///
+/// It explains one word of each of its kinds. A second step would close the history for nothing; any
+/// other second word is counted as a repetition.
 #[derive(Clone, Debug)]
 pub struct Fault {
     /// Any of these words answers it: an alarm's kind, `step`, or `degree-raised`.
@@ -209,6 +220,49 @@ pub struct Fault {
     pub size: Option<f64>,
     /// Whether it must be noticed; otherwise it explains what is said, and no more.
     pub required: bool,
+}
+
+impl Fault {
+    /// What lasts until the end of the run, and must be answered by one of these words within so
+    /// many days.
+    #[must_use]
+    pub fn lasting(place: Place, at: f64, within: f64, words: &[&'static str]) -> Self {
+        Self {
+            answers: words.to_vec(),
+            place,
+            at,
+            due: at + within,
+            until: f64::INFINITY,
+            size: None,
+            required: true,
+        }
+    }
+
+    /// A jump of a sensor's error, to be confirmed within a day; a step told later than two days
+    /// after it is about something else.
+    #[must_use]
+    pub fn jump(sensor: usize, at: f64, size: f64) -> Self {
+        Self {
+            answers: vec![STEP],
+            place: Place::Sensor(sensor),
+            at,
+            due: at + 1.0,
+            until: at + 2.0,
+            size: Some(size),
+            required: true,
+        }
+    }
+
+    /// What may make somebody say these words from `at` to `until`, and need not.
+    #[must_use]
+    pub fn excuse(place: Place, at: f64, until: f64, words: &[&'static str]) -> Self {
+        Self {
+            due: until,
+            until,
+            required: false,
+            ..Self::lasting(place, at, 0.0, words)
+        }
+    }
 }
 
 /// Whose fault.

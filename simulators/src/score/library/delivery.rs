@@ -5,7 +5,8 @@ use super::{Class, Scenario};
 use crate::behaviour::disturbance::Disturbance;
 use crate::score::chooser::Chooser;
 use crate::score::ground::{WHITE, days, one};
-use crate::score::world::{Delivery, World};
+use crate::score::observe::STEP;
+use crate::score::world::{Delivery, Fault, Place, World};
 
 /// The scenarios of this file.
 pub(super) const SCENARIOS: &[Scenario] = &[
@@ -20,6 +21,12 @@ pub(super) const SCENARIOS: &[Scenario] = &[
         "late-laboratory",
         "the zero creeps, and reference values come days after they were sampled",
         late_laboratory,
+    ),
+    Scenario::new(
+        Class::Correctable,
+        "leap-second",
+        "the zero creeps, and the sensor's clock misses a leap second: a second is no fault",
+        leap_second,
     ),
     Scenario::new(
         Class::MustRefuse,
@@ -67,7 +74,24 @@ fn clock_step(chooser: Chooser) -> World {
     #[allow(clippy::cast_possible_truncation, reason = "an hour in seconds")]
     let seconds = world.chooser.signed("hours", "h", 1.0, 1.0) as i64 * 3600;
     world.sensors[0].delivery.clock_off = Some((from, to, seconds));
-    // The pairs do step when the clock does.
-    world.tolerated = vec!["step", "screen-locked-out", "noise-growth"];
+    // The pairs do step when the clock does, and their errors swing in between.
+    let place = Place::Sensor(0);
+    for at in [from, to] {
+        let words = &[STEP, "screen-locked-out"];
+        world.faults.push(Fault::excuse(place, at, at + 1.0, words));
+    }
+    world
+        .faults
+        .push(Fault::excuse(place, from, to + 1.0, &["noise-growth"]));
+    world
+}
+
+/// A clock that knows nothing of the leap second at midnight runs a second ahead until somebody
+/// sets it: each of its readings stands beside a reference value of the second before.
+fn leap_second(chooser: Chooser) -> World {
+    let mut world = offset_ramp(chooser);
+    let midnight = libm::floor(world.chooser.value("midnight", "d", 12.0, 24.0));
+    let set = midnight + world.chooser.value("set_after", "d", 0.5, 10.0);
+    world.sensors[0].delivery.clock_off = Some((midnight, set, 1));
     world
 }

@@ -86,10 +86,7 @@ fn ramp(world: &mut World) -> Curve {
     let noise = world.sensors[0].noise.deviation();
     let onset = world.chooser.value("onset", "d", 3.0, 8.0);
     let change = noise * world.chooser.signed("change", "sigma", 15.0, 25.0);
-    Curve::Linear {
-        onset,
-        rate: change / (RUN_DAYS - onset),
-    }
+    Curve::creeping(onset, change, RUN_DAYS)
 }
 
 /// A zero that creeps.
@@ -98,7 +95,7 @@ pub(super) fn offset_ramp(chooser: Chooser) -> World {
     let drift = ramp(&mut world);
     world.sensors[0].zero.push(drift);
     // Where the beginning lies inside a window, the error has a bend that a parabola fits better.
-    world.degrees = Some((1, 2));
+    world.expect_degrees(1, 2);
     world
 }
 
@@ -112,7 +109,7 @@ fn quadratic(chooser: Chooser) -> World {
         onset,
         factor: change / (run * run),
     });
-    world.degrees = Some((1, 2));
+    world.expect_degrees(1, 2);
     world
 }
 
@@ -127,7 +124,7 @@ fn exponential(chooser: Chooser) -> World {
         change,
         time_constant,
     });
-    world.degrees = Some((1, 2));
+    world.expect_degrees(1, 2);
     world
 }
 
@@ -141,7 +138,7 @@ fn growth(chooser: Chooser) -> World {
         time_constant,
         end: RUN_DAYS,
     });
-    world.degrees = Some((1, 2));
+    world.expect_degrees(1, 2);
     world
 }
 
@@ -158,28 +155,29 @@ fn lagged(chooser: Chooser) -> World {
     world
 }
 
-fn saw_tooth(chooser: Chooser) -> World {
-    let mut world = one(chooser, WHITE);
+/// Lets the first sensor foul and be cleaned again and again, each time after a period of so many
+/// days to 10: the curve, and its height.
+pub(super) fn foul(world: &mut World, shortest: f64) -> (Curve, f64) {
     let noise = world.sensors[0].noise.deviation();
-    let period = world.chooser.value("period", "d", 5.0, 10.0);
+    let period = world.chooser.value("period", "d", shortest, 10.0);
     let height = noise * world.chooser.signed("height", "sigma", 8.0, 15.0);
     let curve = Curve::SawTooth { period, height };
+    world.sensors[0].zero.push(curve);
+    (curve, height)
+}
+
+fn saw_tooth(chooser: Chooser) -> World {
+    let mut world = one(chooser, WHITE);
+    let (curve, _) = foul(&mut world, 5.0);
     for at in curve.jumps(world.days - 0.5) {
         let told = at + world.chooser.value("told_after", "d", 0.01, 0.1);
         world.sensors[0].cleaned.push(Cleaning { at, told });
         // Until the order comes, the readings do jump.
-        world.faults.push(Fault {
-            answers: vec![STEP, "screen-locked-out"],
-            place: Place::Sensor(0),
-            at,
-            due: told,
-            until: told + 0.25,
-            size: None,
-            required: false,
-        });
+        let words = &[STEP, "screen-locked-out"];
+        let excuse = Fault::excuse(Place::Sensor(0), at, told + 0.25, words);
+        world.faults.push(excuse);
     }
-    world.sensors[0].zero.push(curve);
-    world.degrees = Some((1, 1));
+    world.expect_degrees(1, 1);
     world
 }
 
@@ -191,16 +189,17 @@ fn fading(chooser: Chooser, swing: (f64, f64)) -> World {
     world.quantities[0].wander = 0.0;
     let onset = world.chooser.value("onset", "d", 3.0, 8.0);
     let fade = world.chooser.value("fade", "1", 0.05, 0.1);
-    world.sensors[0].span.push(Curve::Linear {
-        onset,
-        rate: -fade / (RUN_DAYS - onset),
-    });
+    let fade = Curve::creeping(onset, -fade, RUN_DAYS);
+    world.sensors[0].span.push(fade);
     world.setup.channels[0].fit.max_span_degree = Some(1);
     world
 }
 
 fn span_ramp(chooser: Chooser) -> World {
-    fading(chooser, (20.0, 40.0))
+    let mut world = fading(chooser, (20.0, 40.0));
+    // At the level from which the span counts, its fading is a drift of the zero.
+    world.expect_degrees(1, 2);
+    world
 }
 
 fn span_ramp_at_one_level(chooser: Chooser) -> World {
@@ -213,7 +212,7 @@ fn temperature(chooser: Chooser) -> World {
     // A thermometer that is good to a tenth of a kelvin.
     declare_influence(&mut world, 0.1);
     // What moves the error is the temperature, not time.
-    world.degrees = Some((0, 0));
+    world.expect_degrees(0, 0);
     world
 }
 
@@ -244,7 +243,7 @@ fn noisy_reference(chooser: Chooser) -> World {
     world.setup.references[0].uncertainty_each = noise;
     world.setup.channels[0].fit.noise.reference = noise;
     world.setup.channels[0].fit.max_span_degree = Some(1);
-    world.degrees = Some((0, 0));
+    world.expect_degrees(0, 0);
     world
 }
 
@@ -255,6 +254,8 @@ fn one_drifts(chooser: Chooser) -> World {
     let mut world = group(chooser, MEMBERS, WHITE);
     let drift = ramp(&mut world);
     world.sensors[0].zero.push(drift);
+    // The others see their median move by a part of a σ, which is no drift of theirs, but seen.
+    world.sensors[0].degrees = Some((1, 2));
     world
 }
 
@@ -264,7 +265,7 @@ fn all_drift(chooser: Chooser) -> World {
     for sensor in &mut world.sensors {
         sensor.zero.push(drift);
     }
-    world.degrees = Some((0, 0));
+    world.expect_degrees(0, 0);
     world
 }
 

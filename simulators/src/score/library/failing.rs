@@ -1,10 +1,11 @@
 //! Sensors that break: what happened must be noticed, and nothing else be said.
 
+use super::drifting::foul;
 use super::{Class, Scenario};
 use crate::behaviour::curve::Curve;
 use crate::behaviour::disturbance::Disturbance;
 use crate::score::chooser::Chooser;
-use crate::score::ground::{WHITE, WINDOW_DAYS, one};
+use crate::score::ground::{WHITE, one};
 use crate::score::observe::STEP;
 use crate::score::world::{Fault, OtherUnit, Place, World};
 
@@ -52,17 +53,14 @@ const fn scenario(
     Scenario::new(Class::Detection, name, purpose, build)
 }
 
-/// A jump of the only sensor at `at` by `size`, to be confirmed within a day.
-fn jump(at: f64, size: f64) -> Fault {
-    Fault {
-        answers: vec![STEP],
-        place: Place::Sensor(0),
-        at,
-        due: at + 1.0,
-        until: at + WINDOW_DAYS,
-        size: Some(size),
-        required: true,
-    }
+/// The only sensor.
+const SENSOR: Place = Place::Sensor(0);
+
+/// Plants a jump of the only sensor. Five rejections in a row are a large step seen by the screen.
+fn plant_jump(world: &mut World, at: f64, size: f64) {
+    world.faults.push(Fault::jump(0, at, size));
+    let excuse = Fault::excuse(SENSOR, at, at + 1.0, &["screen-locked-out"]);
+    world.faults.push(excuse);
 }
 
 fn step(chooser: Chooser) -> World {
@@ -73,10 +71,8 @@ fn step(chooser: Chooser) -> World {
     let size = noise * world.chooser.signed("size", "sigma", 3.0, 12.0);
     for (at, size) in [(up, size), (down, -size)] {
         world.sensors[0].zero.push(Curve::Step { at, size });
-        world.faults.push(jump(at, size));
+        plant_jump(&mut world, at, size);
     }
-    // Five rejections in a row are a large step seen by the screen.
-    world.tolerated = vec!["screen-locked-out"];
     world
 }
 
@@ -92,32 +88,21 @@ fn knee(chooser: Chooser) -> World {
     zero.push(down(knee, a_day));
     world.setup.channels[0].max_drift_rate = Some(0.5 * a_day);
     // At such a rate the error has left its limit of 10 σ within five days.
-    world.faults.push(Fault {
-        answers: vec!["drift-rate"],
-        place: Place::Sensor(0),
-        at: knee,
-        due: knee + 5.0,
-        until: world.days,
-        size: None,
-        required: true,
-    });
-    // A bend this sharp may well be taken for the beginning of something else.
-    world.tolerated = vec!["screen-locked-out"];
+    world
+        .faults
+        .push(Fault::lasting(SENSOR, knee, 5.0, &["drift-rate"]));
+    // Until then a bend this sharp may well be taken for the beginning of something else.
+    let excuse = Fault::excuse(SENSOR, knee, knee + 5.0, &["screen-locked-out"]);
+    world.faults.push(excuse);
     world
 }
 
 fn saw_tooth(chooser: Chooser) -> World {
     let mut world = one(chooser, WHITE);
-    let noise = world.sensors[0].noise.deviation();
-    let period = world.chooser.value("period", "d", 7.0, 10.0);
-    let height = noise * world.chooser.signed("height", "sigma", 8.0, 15.0);
-    let curve = Curve::SawTooth { period, height };
-    let last = world.days - 1.5;
-    for at in curve.jumps(last) {
-        world.faults.push(jump(at, -height));
+    let (curve, height) = foul(&mut world, 7.0);
+    for at in curve.jumps(world.days - 1.5) {
+        plant_jump(&mut world, at, -height);
     }
-    world.sensors[0].zero.push(curve);
-    world.tolerated = vec!["screen-locked-out"];
     world
 }
 
@@ -128,10 +113,9 @@ fn baseline(chooser: Chooser) -> World {
     while at < world.days - 1.5 {
         let size = noise * world.chooser.signed("size", "sigma", 4.0, 8.0);
         world.sensors[0].zero.push(Curve::Step { at, size });
-        world.faults.push(jump(at, size));
+        plant_jump(&mut world, at, size);
         at += world.chooser.value("pause", "d", 6.5, 8.5);
     }
-    world.tolerated = vec!["screen-locked-out"];
     world
 }
 
@@ -142,16 +126,12 @@ fn stuck(chooser: Chooser) -> World {
     world.quantities[0].swing = noise * world.chooser.value("moves", "sigma", 4.0, 8.0);
     let at = world.chooser.value("at", "d", 12.0, 30.0);
     world.sensors[0].disturbance = Disturbance::Stuck { at };
-    world.faults.push(Fault {
-        answers: vec!["stuck"],
-        place: Place::Sensor(0),
-        at,
-        due: at + 1.0,
-        until: world.days,
-        size: None,
-        required: true,
-    });
-    world.tolerated = vec![STEP, "screen-locked-out"];
+    world
+        .faults
+        .push(Fault::lasting(SENSOR, at, 1.0, &["stuck"]));
+    // Until it is noticed the true value moves away from the sensor.
+    let excuse = Fault::excuse(SENSOR, at, at + 1.0, &[STEP, "screen-locked-out"]);
+    world.faults.push(excuse);
     world
 }
 
@@ -160,16 +140,10 @@ fn noise_growth(chooser: Chooser) -> World {
     let at = world.chooser.value("at", "d", 12.0, 30.0);
     let factor = world.chooser.value("factor", "1", 2.5, 4.0);
     world.sensors[0].noise.grows = Some((at, factor));
-    world.faults.push(Fault {
-        answers: vec!["noise-growth"],
-        place: Place::Sensor(0),
-        at,
-        due: at + 3.0,
-        until: world.days,
-        size: None,
-        required: true,
-    });
-    world.degrees = Some((0, 0));
+    world
+        .faults
+        .push(Fault::lasting(SENSOR, at, 3.0, &["noise-growth"]));
+    world.expect_degrees(0, 0);
     world
 }
 
@@ -195,15 +169,9 @@ fn wrong_from(world: &mut World, from: f64, factor: f64, offset: f64) {
         factor,
         offset,
     });
-    world.faults.push(Fault {
-        answers: vec![STEP, "screen-locked-out", "error-limit"],
-        place: Place::Sensor(0),
-        at: from,
-        due: from + 0.25,
-        until: world.days,
-        size: None,
-        required: true,
-    });
+    let words = &[STEP, "screen-locked-out", "error-limit"];
+    world.faults.push(Fault::lasting(SENSOR, from, 0.25, words));
     // Noise and what the true value does come with the wrong size, too.
-    world.tolerated = vec!["noise-growth"];
+    let excuse = Fault::excuse(SENSOR, from, f64::INFINITY, &["noise-growth"]);
+    world.faults.push(excuse);
 }

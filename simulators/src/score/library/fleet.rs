@@ -37,15 +37,8 @@ fn fleet(chooser: Chooser) -> World {
     let at = world.chooser.value("at", "d", 3.0, 4.0);
     let size = noise * world.chooser.signed("size", "sigma", 4.0, 20.0);
     world.references[BAD].error = vec![Curve::Step { at, size }];
-    world.faults.push(Fault {
-        answers: vec!["reference-step"],
-        place: Place::Reference(BAD),
-        at,
-        due: at + 0.25,
-        until: world.days,
-        size: None,
-        required: true,
-    });
+    let jumped = Fault::lasting(Place::Reference(BAD), at, 0.25, &["reference-step"]);
+    world.faults.push(jumped);
     world
 }
 

@@ -35,6 +35,15 @@ pub(super) const SCENARIOS: &[Scenario] = &[
             step,
         )
     },
+    Scenario {
+        twin: Some(heal),
+        ..Scenario::new(
+            Class::Detection,
+            "reference-stuck",
+            "the reference of six sensors repeats one value: one alarm, no correction follows",
+            stuck,
+        )
+    },
 ];
 
 fn stale(chooser: Chooser) -> World {
@@ -42,16 +51,9 @@ fn stale(chooser: Chooser) -> World {
     let at = world.chooser.value("at", "d", 12.0, 30.0);
     world.references[0].silent_from = Some(at);
     world.setup.references[0].stale_after = Some(days(0.25));
-    world.faults.push(Fault {
-        answers: vec!["reference-stale"],
-        place: Place::Reference(0),
-        at,
-        due: at + 0.5,
-        until: world.days,
-        size: None,
-        required: true,
-    });
-    world.degrees = Some((0, 0));
+    let stale = Fault::lasting(Place::Reference(0), at, 0.5, &["reference-stale"]);
+    world.faults.push(stale);
+    world.expect_degrees(0, 0);
     world
 }
 
@@ -63,10 +65,8 @@ fn drift(chooser: Chooser) -> World {
     let common = noise * world.chooser.value("common", "sigma", 1.0, 3.0);
     let change = common * world.chooser.signed("change", "common", 0.5, 1.5);
     let onset = world.chooser.value("onset", "d", 3.0, 8.0);
-    world.references[0].error.push(Curve::Linear {
-        onset,
-        rate: change / (world.days - onset),
-    });
+    let creep = Curve::creeping(onset, change, world.days);
+    world.references[0].error.push(creep);
     world.setup.references[0].uncertainty_common = common;
     world
 }
@@ -77,20 +77,27 @@ fn step(chooser: Chooser) -> World {
     let at = world.chooser.value("at", "d", 12.0, 30.0);
     let size = noise * world.chooser.signed("size", "sigma", 3.0, 12.0);
     world.references[0].error.push(Curve::Step { at, size });
-    world.faults.push(Fault {
-        answers: vec!["reference-step"],
-        place: Place::Reference(0),
-        at,
-        due: at + 0.25,
-        until: world.days,
-        size: None,
-        required: true,
-    });
+    let jumped = Fault::lasting(Place::Reference(0), at, 0.25, &["reference-step"]);
+    world.faults.push(jumped);
+    world
+}
+
+/// Six sensors on a reference that repeats one value. It shows once the true value has moved by a
+/// few σ, which takes some hours where its daily cycle turns.
+fn stuck(chooser: Chooser) -> World {
+    let mut world = many(chooser, 1, CHILDREN, WHITE);
+    let noise = world.sensors[0].noise.deviation();
+    world.quantities[0].swing = noise * world.chooser.value("moves", "sigma", 8.0, 16.0);
+    let at = world.chooser.value("at", "d", 12.0, 30.0);
+    world.references[0].stuck_from = Some(at);
+    let stuck = Fault::lasting(Place::Reference(0), at, 0.5, &["reference-stuck"]);
+    world.faults.push(stuck);
     world
 }
 
 fn heal(world: &mut World) {
     world.references[0].error.clear();
+    world.references[0].stuck_from = None;
 }
 
 /// Sensors on one reference.

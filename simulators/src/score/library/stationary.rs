@@ -57,7 +57,7 @@ const fn scenario(
 /// Noise with these parts, nothing else.
 fn steady(chooser: Chooser, noise: &[(f64, f64)]) -> World {
     let mut world = one(chooser, noise);
-    world.degrees = Some((0, 0));
+    world.expect_degrees(0, 0);
     world
 }
 

@@ -1,14 +1,12 @@
 //! What can be said of a channel before its first pair: whether the cadence of its pairs can ever
 //! show the drift that matters, from what is declared; and what is missing to say so.
 
-use holdtrue_engine::fit::cadence::{days_needed, units_needed, widest_spacing};
+use holdtrue_engine::fit::cadence::{VALUES_PER_UNIT, days_needed, units_needed, widest_spacing};
 use holdtrue_engine::setup::{ChannelSetup, ReferenceSetup, WindowLength};
 use holdtrue_engine::time::Duration;
 
 /// A line needs so many segments, whatever the noise.
 const LEAST_SEGMENTS: f64 = 8.0;
-/// Values in the unit of time of the formula in `fit::cadence`.
-const VALUES_PER_UNIT: f64 = 12.0;
 
 /// One sentence for a channel with limits; `None` without. Noise is taken as uncorrelated: nothing
 /// is known yet, and correlated noise needs more pairs.
@@ -16,7 +14,7 @@ pub(super) fn cadence(channel: &ChannelSetup, reference: &ReferenceSetup) -> Opt
     if channel.max_permissible_error.is_none() && channel.max_drift_rate.is_none() {
         return None;
     }
-    let noise = pair_noise(channel, reference);
+    let noise = channel.declared_variance(reference).sqrt();
     if noise <= 0.0 {
         return Some(
             "can't be judged: declare noise (and the reference's uncertainty `each`)".to_owned(),
@@ -75,16 +73,6 @@ fn in_pairs(channel: &ChannelSetup, reference: &ReferenceSetup, noise: f64, pair
         "the window is too short"
     };
     format!("a drift of {drift:.3e} {unit} a pair shows after {needed} pairs: {verdict}")
-}
-
-/// Standard deviation of one pair's error as declared.
-fn pair_noise(channel: &ChannelSetup, reference: &ReferenceSetup) -> f64 {
-    let (each, noise, step) = (
-        reference.uncertainty_each,
-        channel.noise,
-        channel.resolution,
-    );
-    (each * each + noise * noise + step * step / 12.0).sqrt()
 }
 
 /// Days between pairs, where the configuration tells: a reference that stands for an interval has

@@ -4,6 +4,7 @@ use super::Ending;
 use crate::broker::{Answer, Event, Link, Message, Publish, Token};
 use crate::configuration::{self, Broker, Login, Protocol};
 use crate::document::topic::Topics;
+use crate::payload::order::WORD_MAX;
 use clap::{Args, Subcommand, ValueEnum};
 use serde_json::{Map, Value, json};
 use std::io::{self, Write};
@@ -68,7 +69,7 @@ struct Service {
     #[arg(long, value_name = "TEXT")]
     note: Option<String>,
     /// The order's id, to tell it again without doing it twice [default: made from the time].
-    #[arg(long, value_name = "TEXT")]
+    #[arg(long, value_name = "TEXT", value_parser = order_id)]
     id: Option<String>,
 }
 
@@ -118,6 +119,15 @@ struct Reading {
     indication: f64,
     reference: f64,
     uncertainty: Option<f64>,
+}
+
+/// The daemon takes no longer ids, and none of blanks.
+fn order_id(text: &str) -> Result<String, String> {
+    let id = text.trim();
+    if id.is_empty() || id.chars().count() > WORD_MAX {
+        return Err(format!("write 1 to {WORD_MAX} characters"));
+    }
+    Ok(id.to_owned())
 }
 
 fn reading(text: &str) -> Result<Reading, String> {
@@ -411,6 +421,15 @@ mod tests {
         for text in ["7.12", "7,12=7", "7.1=", "=7", "7=7:", "7=inf", "7=7:x"] {
             let message = reading(text).expect_err(text);
             assert!(message.contains("7.12=7.00"), "{message}");
+        }
+    }
+
+    #[test]
+    fn an_id_is_what_the_daemon_takes() {
+        assert_eq!(order_id(" v-7 "), Ok("v-7".to_owned()));
+        assert!(order_id(&"a".repeat(WORD_MAX)).is_ok());
+        for text in ["", "  ", &"a".repeat(WORD_MAX + 1)] {
+            assert!(order_id(text).is_err(), "{text:?}");
         }
     }
 }

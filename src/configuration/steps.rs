@@ -14,7 +14,12 @@ pub(super) fn read(section: &Section<'_>) -> Option<f64> {
         |multiple| (2.0..=8.0).contains(&multiple),
         "2 to 8 standard uncertainties",
     );
-    wanted
-        .is_none_or(|found| found.value)
-        .then(|| confirmation.map_or(CONFIRMATION, |found| found.value))
+    let wanted = wanted.is_none_or(|found| found.value);
+    if let (false, Some(found)) = (wanted, &confirmation) {
+        section.wrong(
+            found,
+            "says nothing with steps = false; leave one of them out",
+        );
+    }
+    wanted.then(|| confirmation.map_or(CONFIRMATION, |found| found.value))
 }

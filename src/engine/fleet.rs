@@ -192,7 +192,7 @@ impl Fleet {
 
     /// Has the channels of a reference heed what has changed about it.
     fn tell_channels(&mut self, index: usize, report: &mut Report<'_>) {
-        let id = ReferenceId(u32::try_from(index).expect("as many references as a u32 numbers"));
+        let id = ReferenceId::at(index);
         for user in self.routes.reference_users(id).to_vec() {
             self.visit(user, |channel, scene| channel.heed_reference(scene, report));
         }
@@ -253,7 +253,10 @@ impl Fleet {
                 let index = id.0 as usize;
                 let reference = &mut self.references[index];
                 reference.values.insert(sample);
-                reference.watch.take_value(sample.time, sample.value);
+                if self.routes.is_watched(index) {
+                    reference.watch.take_value(sample.time, sample.value);
+                    self.heard.insert(index);
+                }
                 self.hear_reference(id, report);
                 for user in self.routes.reference_users(id).to_vec() {
                     self.visit(user, |channel, scene| {
@@ -300,7 +303,7 @@ impl Fleet {
         };
         let reference = setup.reference.0 as usize;
         let scene = Scene {
-            id: ChannelId(u32::try_from(index).expect("as many channels as a u32 numbers")),
+            id: ChannelId::at(index),
             setup,
             reference: &self.setup.references[reference],
             values: &self.references[reference].values,

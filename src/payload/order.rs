@@ -14,7 +14,7 @@ use serde_json::{Map, Value};
 /// Largest order that is looked at, bytes.
 const PAYLOAD_MAX: usize = 65_536;
 /// Longest id, name, serial number or certificate, in characters.
-const WORD_MAX: usize = 200;
+pub(crate) const WORD_MAX: usize = 200;
 /// Longest note, in characters.
 const NOTE_MAX: usize = 2000;
 /// Most readings in `as_found` or `as_left`.
@@ -237,7 +237,7 @@ impl<'a> Fields<'a> {
     }
 
     fn has(&self, name: &str) -> bool {
-        self.object.contains_key(name)
+        self.object.get(name).is_some_and(|value| !value.is_null())
     }
 
     /// What stands in a field; `null` counts as nothing.
@@ -568,5 +568,15 @@ mod tests {
             });
             assert_eq!(order.reply_to.is_some(), stands, "{topic}");
         }
+    }
+
+    /// `null` counts as nothing, so that somebody must still say what was served.
+    #[test]
+    fn an_order_about_null_misses_its_channel() {
+        let order = take(
+            "service",
+            r#"{"id":"v-7","channel":null,"act":"cleaned","by":"night shift"}"#,
+        );
+        assert_eq!(problems(&order), [("channel", "")]);
     }
 }

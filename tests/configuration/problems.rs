@@ -207,6 +207,11 @@ const SETTINGS: &[Case] = &[
         &["range?"],
     ),
     (
+        "steps = false\nstep_confirmation = 4.0",
+        "f:12:21: error: channel[1].step_confirmation",
+        &["steps = false"],
+    ),
+    (
         "screening = 3",
         "f:11:13: error: channel[1].screening",
         &["3 is not a table"],

@@ -2,7 +2,7 @@
 //! sticks or falls silent. Nobody else says anything, and no correction is moved by it.
 
 use crate::support::{
-    Noise, at, channel, engine, feed, indication, node, reference, reference_value, span,
+    Noise, at, channel, constant, engine, feed, indication, node, reference, reference_value, span,
 };
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{
@@ -387,4 +387,64 @@ fn a_certificate_is_told_before_and_at_its_end_and_the_channels_go_on() {
     ));
     let states: Vec<_> = alarms(&said).iter().map(|alarm| alarm.state).collect();
     assert_eq!(states, [AlarmState::Normal]);
+}
+
+/// A constant has no values that could show the time: whatever comes does.
+#[test]
+fn a_renewed_certificate_of_a_constant_ends_its_alarm() {
+    let mut buffer = reference("buffer", constant(1.0));
+    buffer.expires = Some(at(100.0 * EVERY));
+    buffer.expiry_notice = span(20.0 * EVERY);
+    let setup = |buffer: &ReferenceSetup| {
+        node(Clock::Readings, vec![buffer.clone()], vec![channel("a", 0)])
+    };
+    let mut engine = engine(setup(&buffer));
+    let hours = |from: u32, to: u32| -> Vec<Input> {
+        (from..to)
+            .map(|hour| indication(0, EVERY * f64::from(hour), f64::from(hour % 3)))
+            .collect()
+    };
+    let told = feed(&mut engine, &hours(0, 110));
+    assert_eq!(alarms(&told).len(), 2, "near its end, and at it");
+    buffer.expires = Some(at(9000.0 * EVERY));
+    let mut said = feed(&mut engine, &[Input::Setup(Box::new(setup(&buffer)))]);
+    said.extend(feed(&mut engine, &hours(110, 120)));
+    let states: Vec<_> = alarms(&said).iter().map(|alarm| alarm.state).collect();
+    assert_eq!(states, [AlarmState::Normal]);
+}
+
+/// Two channels can't outvote a reference. What five had said against it ends when three of them
+/// are silent: the other two would otherwise hold for ever.
+#[test]
+fn a_suspicion_that_nobody_can_judge_any_more_ends() {
+    let (mut engine, mut outputs) = small(761, 140, |hour, who| {
+        if hour >= 120 && who.is_none() {
+            8.0
+        } else {
+            0.0
+        }
+    });
+    let cause = |engine: &Engine| engine.standing().references[0].trouble;
+    assert_eq!(cause(&engine), Some(Cause::ReferenceStep));
+    let mut noise = Noise::new(762, 0.0);
+    let mut ended = None;
+    for hour in 140..300 {
+        let time = EVERY * f64::from(hour);
+        let level = process(0, hour);
+        for id in 0..2 {
+            engine.step(&indication(id, time, level + noise.draw()), &mut outputs);
+        }
+        engine.step(&reference_value(0, time, level + 8.0), &mut outputs);
+        if ended.is_none() && cause(&engine).is_none() {
+            ended = Some(hour);
+        }
+    }
+    assert!((170..180).contains(&ended.expect("it ends")), "{ended:?}");
+    let of_reference = alarms(&outputs).into_iter();
+    let of_reference = of_reference.filter(|it| it.kind == AlarmKind::ReferenceStep);
+    let states: Vec<_> = of_reference.map(|alarm| alarm.state).collect();
+    assert_eq!(states, [AlarmState::Unacknowledged, AlarmState::Normal]);
+    for channel in &engine.standing().channels[..2] {
+        assert_eq!((channel.rung, channel.because), (Rung::Advise, None));
+    }
 }

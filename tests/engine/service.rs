@@ -239,7 +239,8 @@ fn a_model_that_is_wrong_is_told_so() {
 #[test]
 fn without_a_model_or_readings_nothing_is_validated() {
     let mut engine = engine(setup(ph()));
-    let mut calibrated = event(Act::Calibrated, 0.0);
+    feed(&mut engine, &readings(0, 1, |_| 0.1));
+    let mut calibrated = event(Act::Calibrated, 0.5);
     calibrated.as_found = vec![point(7.0, 7.0, 0.02)];
     let (serviced, said) = done(&mut engine, &order("c-1", calibrated));
     assert_eq!(serviced.comparison, None);
@@ -692,4 +693,33 @@ fn stored_and_read_back_the_engine_goes_on_alike() {
     rest.push(cleaned);
     rest.push(order("2", event(Act::Adjusted, 260.5)));
     assert_eq!(feed(&mut restored, &rest), feed(&mut whole, &rest));
+}
+
+/// An order's own arrival is the host's time; a recording's comes from its readings.
+#[test]
+fn an_order_before_a_recordings_first_reading_is_refused() {
+    let mut engine = engine(setup(ph()));
+    let early = order("s-1", event(Act::Cleaned, 5.0));
+    let problems = refused(&mut engine, &early);
+    assert_eq!(problems.len(), 1, "{problems:?}");
+    assert!(problems[0].way_out.contains("once readings flow"));
+    feed(&mut engine, &readings(0, 10, |_| 0.0));
+    done(&mut engine, &early);
+}
+
+/// What was read and which serial number was put in are a sensor's.
+#[test]
+fn readings_and_a_serial_number_of_a_reference_are_refused() {
+    let mut engine = engine(setup(ph()));
+    feed(&mut engine, &readings(0, 10, |_| 0.0));
+    let mut told = event(Act::Calibrated, 5.0);
+    told.about = About::Reference("buffer".to_owned());
+    told.as_found = vec![point(7.1, 7.0, 0.01)];
+    told.serial = Some("A-12".to_owned());
+    let problems = refused(&mut engine, &order("s-1", told.clone()));
+    let fields: Vec<_> = problems.iter().map(|it| it.field.as_str()).collect();
+    assert_eq!(fields, ["as_found", "serial"]);
+    told.as_found.clear();
+    told.serial = None;
+    done(&mut engine, &order("s-1", told));
 }

@@ -13,8 +13,7 @@ use crate::event::Conformity;
 use crate::fit::basis::MAX_INFLUENCES;
 use crate::fit::{Curve, Published, Row};
 use crate::quantile;
-use crate::setup::{ChannelSetup, ReferenceSetup};
-use crate::time::{Duration, Timestamp};
+use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 use std::cmp::Ordering;
 use std::collections::VecDeque;
@@ -133,16 +132,6 @@ impl Judgement {
             ])
             .all(|number| number.is_finite())
     }
-}
-
-/// What is declared of the variance of a complete pair: each² + noise² + q²/12. A pair with the
-/// mean of an interval has many indications behind it: there, each² alone.
-pub(crate) fn declared_variance(channel: &ChannelSetup, reference: &ReferenceSetup) -> f64 {
-    let each = reference.uncertainty_each * reference.uncertainty_each;
-    if reference.stands_for > Duration::ZERO {
-        return each;
-    }
-    each + channel.noise * channel.noise + channel.resolution * channel.resolution / 12.0
 }
 
 fn slope_variance(curve: &Curve) -> f64 {

@@ -1,7 +1,7 @@
 //! When the fit is judged anew, and what follows from it: judgement → ladder and publishing →
 //! alarms.
 
-use super::judgement::{self, Judgement};
+use super::judgement::Judgement;
 use super::{Channel, Scene};
 use crate::event::{Conformity, Subject};
 use crate::report::Report;
@@ -93,7 +93,7 @@ impl Channel {
         let Some(judgement) = judgement else { return };
         let correction = self.publishing.correction();
         let corrected_zone = correction.and_then(|document| document.corrected_zone);
-        let declared = judgement::declared_variance(scene.setup, scene.reference);
+        let declared = scene.setup.declared_variance(scene.reference);
         let forecast = self.outlook.consider(
             &judgement,
             (self.stretch.fit(), declared),
@@ -119,7 +119,7 @@ impl Channel {
         scene: &Scene<'_>,
         report: &mut Report<'_>,
     ) -> Option<Judgement> {
-        let declared = judgement::declared_variance(scene.setup, scene.reference);
+        let declared = scene.setup.declared_variance(scene.reference);
         let published = self.stretch.fit().published_at_least(declared)?;
         let judgement = Judgement::of(published, self.stretch.residuals(), scene);
         if judgement.is_none() {

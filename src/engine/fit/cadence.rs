@@ -12,7 +12,7 @@ use crate::math;
 /// 2 for the 95 % level and 1.3 for the probability of 90 %, as published.
 const SEEN: f64 = 3.3;
 /// Values in the unit of time that the formula is stated for.
-const VALUES_PER_UNIT: f64 = 12.0;
+pub const VALUES_PER_UNIT: f64 = 12.0;
 
 /// n*, the units of time (of twelve values each) needed to see a drift of `drift` per unit in noise
 /// of standard deviation `noise` with lag-1 correlation `phi` (below 1) between values; infinite

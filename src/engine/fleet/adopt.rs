@@ -333,7 +333,7 @@ impl Fleet {
         if self.setup.channels[index].monitor_only == after.monitor_only {
             return;
         }
-        let id = ChannelId(u32::try_from(index).expect("as many channels as a u32 numbers"));
+        let id = ChannelId::at(index);
         let now = self.now.unwrap_or(Timestamp(0));
         let (code, text) = if after.monitor_only {
             ("monitor-only-on", "no correction is published any more")
@@ -368,7 +368,7 @@ impl Fleet {
         if placed == *after && reference_placed == *reference_after {
             return;
         }
-        let id = ChannelId(u32::try_from(index).expect("as many channels as a u32 numbers"));
+        let id = ChannelId::at(index);
         let now = self.now.unwrap_or(Timestamp(0));
         self.channels[index].edit(id, after, now, report);
     }

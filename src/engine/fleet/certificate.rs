@@ -17,6 +17,11 @@ impl Fleet {
     pub(super) fn certificate_due(&self, index: usize) -> Option<Timestamp> {
         let setup = &self.setup.references[index];
         let reference = &self.references[index];
+        let near = setup.expires.map(|at| at.minus(setup.expiry_notice));
+        if reference.certificate.is_raised() && near.is_none_or(|near| self.now < Some(near)) {
+            // It was renewed, or time stepped back: the alarm is to go.
+            return Some(Timestamp(i64::MIN));
+        }
         let expires = setup.expires?;
         if !reference.certificate.is_raised() {
             return Some(expires.minus(setup.expiry_notice));
@@ -24,19 +29,19 @@ impl Fleet {
         (!reference.end_told).then_some(expires)
     }
 
-    /// Says that the certificate expires soon, has expired, or was renewed.
+    /// Says that the certificate expires soon, has expired, or no longer does.
     pub(super) fn watch_certificate(&mut self, index: usize, report: &mut Report<'_>) {
         let Some(now) = self.now else { return };
         let setup = &self.setup.references[index];
         let known = &mut self.references[index];
-        let id = ReferenceId(u32::try_from(index).expect("as many references as a u32 numbers"));
+        let id = ReferenceId::at(index);
         let near = |expires: &Timestamp| now >= expires.minus(setup.expiry_notice);
         let Some(expires) = setup.expires.filter(near) else {
             known.end_told = false;
             if known.certificate.is_raised() {
                 known.certificate = crate::alarm::Alarm::default();
                 let kind = AlarmKind::CertificateExpiry;
-                let why = "its certificate was renewed";
+                let why = "its certificate does not expire soon";
                 report.say(reference::dismissed(id, &setup.name, kind, now, why));
             }
             return;

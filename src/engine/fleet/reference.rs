@@ -92,7 +92,7 @@ impl Fleet {
             self.references[index].watch = ReferenceWatch::default();
         }
         let now = self.now.unwrap_or(Timestamp(0));
-        let id = ReferenceId(u32::try_from(index).expect("as many references as a u32 numbers"));
+        let id = ReferenceId::at(index);
         for kind in unasked {
             let Some(alarm) = self.references[index].alarm(kind) else {
                 continue;

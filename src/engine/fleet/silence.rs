@@ -103,8 +103,7 @@ impl Fleet {
             Condition::Gone
         };
         if let Some(step) = alarm.evaluate(condition, now, AT_ONCE) {
-            let id =
-                ReferenceId(u32::try_from(index).expect("as many references as a u32 numbers"));
+            let id = ReferenceId::at(index);
             let name = &self.setup.references[index].name;
             report.say(stale_change(id, name, step, now, silent, limit));
             self.tell_channels(index, report);

@@ -80,7 +80,7 @@ impl Fleet {
         if !self.references[index].watch.has_decided() {
             return;
         }
-        let id = ReferenceId(u32::try_from(index).expect("as many references as a u32 numbers"));
+        let id = ReferenceId::at(index);
         let (turns, rulings) = self.references[index].watch.decided();
         for turn in &turns {
             self.tell_turn(id, turn, report);

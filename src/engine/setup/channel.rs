@@ -1,6 +1,6 @@
 //! One quantity measured by one sensor, as configured.
 
-use crate::setup::{ChannelInfluence, FitSetup, ReferenceId};
+use crate::setup::{ChannelInfluence, FitSetup, ReferenceId, ReferenceSetup};
 use crate::time::Duration;
 use serde::{Deserialize, Serialize};
 
@@ -63,6 +63,20 @@ pub struct ChannelSetup {
     /// Safety, legal or custody measurement: everything is judged, but no correction is ever
     /// published.
     pub monitor_only: bool,
+}
+
+impl ChannelSetup {
+    /// What is declared of the variance of a complete pair with `reference`, unit squared: each² +
+    /// noise² + q²/12. A pair with the mean of an interval has many indications behind it: there,
+    /// each² alone.
+    #[must_use]
+    pub fn declared_variance(&self, reference: &ReferenceSetup) -> f64 {
+        let each = reference.uncertainty_each * reference.uncertainty_each;
+        if reference.stands_for > Duration::ZERO {
+            return each;
+        }
+        each + self.noise * self.noise + self.resolution * self.resolution / 12.0
+    }
 }
 
 /// How an error with its expanded uncertainty U is accepted or not (ILAC-G8:09/2019, 4.2.2;

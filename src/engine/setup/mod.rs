@@ -28,6 +28,28 @@ pub struct ChannelId(pub u32);
 #[serde(transparent)]
 pub struct ReferenceId(pub u32);
 
+impl ChannelId {
+    /// The channel at an index.
+    ///
+    /// # Panics
+    /// Beyond what a u32 numbers, which no configuration reaches.
+    #[must_use]
+    pub fn at(index: usize) -> Self {
+        Self(u32::try_from(index).expect("as many channels as a u32 numbers"))
+    }
+}
+
+impl ReferenceId {
+    /// The reference at an index.
+    ///
+    /// # Panics
+    /// Beyond what a u32 numbers, which no configuration reaches.
+    #[must_use]
+    pub fn at(index: usize) -> Self {
+        Self(u32::try_from(index).expect("as many references as a u32 numbers"))
+    }
+}
+
 /// Position of an influence quantity's source in [`Setup::influences`].
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord, Hash, Serialize, Deserialize)]
 #[serde(transparent)]

@@ -15,7 +15,7 @@ mod fouling;
 mod validation;
 
 use super::checks::Checks;
-use super::judgement::{self, Judgement};
+use super::judgement::Judgement;
 use super::pairing::Pair;
 use super::stretch::Carries;
 use super::{Channel, Scene};
@@ -286,7 +286,7 @@ impl Channel {
         let residuals = self
             .stretch
             .residuals_before(instant, &self.recent, scene.setup);
-        let declared = judgement::declared_variance(scene.setup, scene.reference);
+        let declared = scene.setup.declared_variance(scene.reference);
         Judgement::of(fit.published_at_least(declared)?, &residuals, scene)
     }
 
@@ -333,7 +333,7 @@ fn opening(service: Service<'_>, before: Option<&Judgement>, scene: &Scene<'_>) 
         return Vec::new();
     }
     let each = scene.reference.uncertainty_each;
-    let declared = judgement::declared_variance(scene.setup, scene.reference);
+    let declared = scene.setup.declared_variance(scene.reference);
     let seen = before.map_or(0.0, |judgement| judgement.published.residual_sd);
     let row = declared.max(seen * seen);
     let sensor = (row - each * each).max(validation::reading_variance(scene.setup));

@@ -1,5 +1,6 @@
 //! Orders: what people tell the node. Each is answered: done, or refused with everything that
-//! speaks against it and the way out. A refused order changes nothing.
+//! speaks against it and the way out. A refused order changes nothing, but that like any input it
+//! may show that the clock was wrong (see `leap`).
 
 mod book;
 mod wording;
@@ -7,7 +8,9 @@ mod wording;
 use super::Fleet;
 use super::door::{CLOCKS_DIFFER, LARGEST};
 use crate::channel::{Effect, Service};
-use crate::event::{About, CheckPoint, Order, OrderAnswer, Output, Problem, Serviced, Wish};
+use crate::event::{
+    About, CheckPoint, Order, OrderAnswer, Output, Problem, ServiceEvent, Serviced, Wish,
+};
 use crate::report::Report;
 use crate::setup::{ChannelId, Clock, ReferenceId};
 use crate::time::Timestamp;
@@ -66,13 +69,9 @@ impl Fleet {
 
     /// What now is once the order has been taken. It does not move a recording's time.
     fn order_time(&self, order: &Order) -> Timestamp {
-        match (self.setup.clock, self.now) {
-            (Clock::Live, now) => now.map_or(order.received, |now| now.max(order.received)),
-            (Clock::Readings, Some(now)) => now,
-            (Clock::Readings, None) => match &order.wish {
-                Wish::Service(event) => event.at.unwrap_or(order.received),
-                Wish::Unusable(_) => order.received,
-            },
+        match self.setup.clock {
+            Clock::Live => self.notice_time(order.received),
+            Clock::Readings => self.now.unwrap_or(order.received),
         }
     }
 
@@ -91,6 +90,12 @@ impl Fleet {
     /// Whom a service event concerns, or everything that speaks against it.
     fn check_order(&self, service: Service<'_>, now: Timestamp) -> Result<Target, Vec<Problem>> {
         let event = service.event;
+        if self.setup.clock == Clock::Readings && self.now.is_none() {
+            // Its own arrival is no instant of the recording, and nothing can be checked by it.
+            let way_out = "no reading has come yet, so that a recording's time is not known; tell \
+                           it again once readings flow";
+            return Err(vec![problem("at", "", way_out)]);
+        }
         let mut problems = Vec::new();
         if service.order.is_empty() {
             problems.push(problem(
@@ -109,6 +114,9 @@ impl Fleet {
         problems.extend(self.check_time(service.performed, now));
         for (name, points) in [("as_found", &event.as_found), ("as_left", &event.as_left)] {
             problems.extend(check_points(name, points));
+        }
+        if let Some(Target::Reference(_)) = target {
+            problems.extend(what_a_reference_has_not(event));
         }
         if let Some(Target::Channel(id)) = target {
             let index = id.0 as usize;
@@ -271,6 +279,18 @@ fn names<'a>(names: impl ExactSizeIterator<Item = &'a String>) -> String {
         (false, _) => list.push(&rest),
     }
     list.join(", ")
+}
+
+/// Readings and serial numbers are a sensor's: told of a reference they would be lost.
+fn what_a_reference_has_not(event: &ServiceEvent) -> Vec<Problem> {
+    let told = [
+        ("as_found", !event.as_found.is_empty()),
+        ("as_left", !event.as_left.is_empty()),
+        ("serial", event.serial.is_some()),
+    ];
+    let told = told.into_iter().filter(|(_, is_told)| *is_told);
+    told.map(|(field, _)| problem(field, "", "said of a sensor only; name the channel"))
+        .collect()
 }
 
 /// Readings must be numbers that can be computed with.

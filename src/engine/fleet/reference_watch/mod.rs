@@ -10,7 +10,8 @@
 //!           ◀──────────────────                                   │
 //!            fits again: an outlier's pairs are kept out          │
 //!           ◀─────────────────────────────────────────────────────┘
-//!            three rounds in a row agree, or somebody says that it is right
+//!            three rounds in a row agree, somebody says that it is right, or nobody can judge
+//!            it any more
 //! ```
 //!
 //! While doubted, pairs wait; while suspect, none enters a fit. What all channels have in common
@@ -36,6 +37,9 @@ const AGREES: f64 = 3.0;
 const AGREE_AGAIN: usize = 3;
 /// Most rounds that wait in doubt; the oldest of more is let go.
 const WAITING: usize = 16;
+/// Values of a suspect reference without a round that could judge them, after which nobody is left
+/// to speak against it.
+const UNHEARD: u32 = 2 * WAITING as u32;
 
 /// How far a pair lies from what its channel expected.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
@@ -92,6 +96,8 @@ pub(super) struct ReferenceWatch {
     chart: Chart,
     repetition: Repetition,
     trust: Trust,
+    /// Values since the last round that could be judged, while suspect.
+    unheard: u32,
     /// Rounds that wait, in order: in doubt, or agreeing again.
     waiting: Vec<Closed>,
     rulings: Vec<Ruling>,
@@ -112,7 +118,8 @@ enum Trust {
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 struct Closed {
     number: u64,
-    score: f64,
+    /// `None`: too few voted to say.
+    score: Option<f64>,
     /// The score in scales.
     size: f64,
     shift: f64,
@@ -147,9 +154,17 @@ impl ReferenceWatch {
         !(self.turns.is_empty() && self.rulings.is_empty())
     }
 
-    /// A value of the reference came.
+    /// A value of the reference came. Channels that have lost their fits cannot vote: a suspicion
+    /// that nobody is left to end ends by itself, and the channels begin to learn again.
     pub(super) fn take_value(&mut self, time: Timestamp, value: f64) {
         self.repetition.take(time, value);
+        if self.trouble().is_some() {
+            self.unheard = self.unheard.saturating_add(1);
+            if self.unheard > UNHEARD {
+                self.strike_waiting();
+                self.recover();
+            }
+        }
     }
 
     /// A channel's vote; the number of the round that its pair waits for.
@@ -170,7 +185,12 @@ impl ReferenceWatch {
         }
         let number = self.number;
         self.round.take(channel, vote, now, patience);
-        if self.round.votes.len() >= self.expected.max(QUORUM) {
+        let awaited = if self.expected == 0 {
+            QUORUM
+        } else {
+            self.expected
+        };
+        if self.round.votes.len() >= awaited {
             self.close();
         }
         number
@@ -193,6 +213,9 @@ impl ReferenceWatch {
         self.chart.settle();
         self.repetition = Repetition::default();
         self.expected = 0;
+        // Times may be about to step back: what was decided of later ones says nothing.
+        self.closed_through = None;
+        self.last_struck = None;
     }
 
     /// Somebody answers for the reference: it is trusted from now on.
@@ -228,18 +251,18 @@ impl ReferenceWatch {
             self.close_unjudged(number, &tally);
             return;
         }
-        let limit = AGREES * self.chart.scale(tally.channels);
+        let scale = self.chart.scale(tally.channels);
         let closed = Closed {
             number,
-            score: tally.score,
-            size: tally.score.abs() / self.chart.scale(tally.channels),
+            score: Some(tally.score),
+            size: tally.score.abs() / scale,
             shift: tally.shift,
-            limit: limit * tally.sd,
+            limit: AGREES * scale * tally.sd,
             from: tally.from,
         };
         let stuck = self.repetition.judge(&round.votes);
         match self.trust {
-            Trust::Trusted => self.judge(closed, stuck, tally.channels),
+            Trust::Trusted => self.judge(closed, tally.score, stuck, tally.channels),
             Trust::Suspect { .. } => self.judge_suspect(closed, stuck.is_some()),
         }
     }
@@ -250,7 +273,7 @@ impl ReferenceWatch {
             Trust::Trusted if self.waiting.is_empty() => self.rule(number, None),
             Trust::Trusted => self.wait(Closed {
                 number,
-                score: 0.0,
+                score: None,
                 size: 0.0,
                 shift: 0.0,
                 limit: 0.0,
@@ -262,13 +285,9 @@ impl ReferenceWatch {
         }
     }
 
-    fn judge(&mut self, closed: Closed, stuck: Option<Timestamp>, channels: usize) {
-        let said = self.chart.judge(
-            closed.number,
-            closed.score,
-            channels,
-            !self.repetition.is_odd(),
-        );
+    fn judge(&mut self, closed: Closed, score: f64, stuck: Option<Timestamp>, channels: usize) {
+        let may_drift = !self.repetition.is_odd();
+        let said = self.chart.judge(closed.number, score, channels, may_drift);
         self.wait(closed);
         let stepped = match said {
             Said::Stepped(began) => {
@@ -303,6 +322,7 @@ impl ReferenceWatch {
     }
 
     fn judge_suspect(&mut self, closed: Closed, stuck: bool) {
+        self.unheard = 0;
         self.wait(closed);
         if stuck || closed.size > AGREES {
             self.strike_waiting();
@@ -325,6 +345,7 @@ impl ReferenceWatch {
             });
         }
         self.trust = Trust::Trusted;
+        self.unheard = 0;
         self.chart.settle();
     }
 
@@ -341,8 +362,8 @@ impl ReferenceWatch {
         for round in std::mem::take(&mut self.waiting) {
             let is_outlier = round.size > OUTLIER;
             let struck = is_outlier.then_some((round.shift.abs(), round.limit));
-            if !is_outlier {
-                self.chart.learn(round.score);
+            if let Some(score) = round.score.filter(|_| !is_outlier) {
+                self.chart.learn(score);
             }
             self.rule(round.number, struck);
         }

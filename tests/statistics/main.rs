@@ -7,3 +7,4 @@ mod forecast_coverage;
 mod noise;
 mod span_claims;
 mod steps;
+mod studies;

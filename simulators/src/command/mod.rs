@@ -48,7 +48,8 @@ enum Command {
     /// Drives the engine, without a broker, through faults with known truth and holds it to limits
     #[command(
         after_help = "Example:\n  plant score --short\n  plant score --scenario step stuck \
-        --seeds 100 --seed-base 5000 --json\n\nExit code: 0 all limits hold, 1 a limit is broken, \
+        --seeds 100 --seed-base 5000 --json\n  \
+        plant score --study steps --seeds 100\n\nExit code: 0 all limits hold, 1 a limit is broken, \
         2 wrong usage"
     )]
     Score(score::Score),

@@ -3,6 +3,7 @@
 use super::{Failure, progress, say, say_json};
 use crate::score::contest;
 use crate::score::library::{self, Scenario};
+use crate::score::study::{self, Study};
 use crate::score::table::Scorecard;
 use clap::Args;
 
@@ -14,10 +15,14 @@ const SEEDS_SHORT: u64 = 4;
 /// Scores the engine.
 #[derive(Debug, Args)]
 pub(super) struct Score {
+    /// A study instead of scenarios: what only many seeded streams can show
+    #[arg(long, value_enum, conflicts_with_all = ["scenarios", "short", "list"])]
+    study: Option<Study>,
     /// Only these scenarios
     #[arg(long = "scenario", value_name = "NAME", num_args = 1..)]
     scenarios: Vec<String>,
-    /// Runs of each scenario [default: 20; with --short 4]
+    /// Runs of each scenario [default: 20; with --short 4] or of each case of the study [default:
+    /// the case's own]
     #[arg(long, value_parser = clap::value_parser!(u64).range(1..=100_000))]
     seeds: Option<u64>,
     /// The first seed; another base tries seeds that nobody has seen
@@ -36,6 +41,9 @@ pub(super) struct Score {
 
 impl Score {
     pub(super) fn carry_out(self) -> Result<(), Failure> {
+        if let Some(study) = self.study {
+            return self.carry_out_study(study);
+        }
         let scenarios = self.chosen()?;
         if self.list {
             for scenario in &scenarios {
@@ -70,6 +78,20 @@ impl Score {
             say(scorecard.text().trim_end());
         }
         ending(&scorecard.broken())
+    }
+
+    fn carry_out_study(&self, study: Study) -> Result<(), Failure> {
+        let cases = study.cases();
+        let bar = progress::bar(Some(cases.len() as u64), "cases");
+        let cores = contest::cores();
+        let report = study::run(&cases, self.seeds, self.seed_base, cores, &|| bar.inc(1));
+        bar.finish_and_clear();
+        if self.json {
+            say_json(&report)?;
+        } else {
+            say(report.text().trim_end());
+        }
+        ending(&report.broken())
     }
 
     /// The scenarios asked for, each once; all without a word.
@@ -112,6 +134,7 @@ mod tests {
     #[test]
     fn a_scenario_asked_for_twice_runs_once() {
         let score = |names: &[&str]| Score {
+            study: None,
             scenarios: names.iter().map(|name| (*name).to_owned()).collect(),
             seeds: None,
             seed_base: 1,

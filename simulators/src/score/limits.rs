@@ -3,6 +3,7 @@
 use super::library::{Class, Scenario};
 use super::summary::{Figure, Summary};
 use serde::Serialize;
+use std::fmt;
 
 /// For which scenarios a limit is meant.
 #[derive(Clone, Copy, Debug)]
@@ -23,6 +24,8 @@ pub enum Bound {
     AtMost(f64),
     /// It must not be less.
     AtLeast(f64),
+    /// It must be from one to the other.
+    Within(f64, f64),
 }
 
 impl Bound {
@@ -32,6 +35,17 @@ impl Bound {
         match self {
             Self::AtMost(most) => value <= most,
             Self::AtLeast(least) => value >= least,
+            Self::Within(least, most) => (least..=most).contains(&value),
+        }
+    }
+}
+
+impl fmt::Display for Bound {
+    fn fmt(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match self {
+            Self::AtMost(most) => write!(out, "at most {most}"),
+            Self::AtLeast(least) => write!(out, "at least {least}"),
+            Self::Within(least, most) => write!(out, "from {least} to {most}"),
         }
     }
 }
@@ -337,6 +351,11 @@ mod tests {
     fn bounds_include_their_ends_and_refuse_what_is_no_number() {
         assert!(Bound::AtMost(0.25).holds(0.25) && !Bound::AtMost(0.25).holds(0.26));
         assert!(Bound::AtLeast(0.93).holds(0.93) && !Bound::AtLeast(0.93).holds(0.92));
-        assert!(!Bound::AtMost(1.0).holds(f64::NAN) && !Bound::AtLeast(1.0).holds(f64::NAN));
+        let within = Bound::Within(0.93, 0.99);
+        assert!(within.holds(0.93) && within.holds(0.99));
+        assert!(!within.holds(0.92) && !within.holds(1.0));
+        for bound in [Bound::AtMost(1.0), Bound::AtLeast(1.0), within] {
+            assert!(!bound.holds(f64::NAN), "{bound}");
+        }
     }
 }

@@ -6,8 +6,9 @@
 //!
 //! Reading order: what a run consists of ([`world`], [`chooser`], [`ground`]), which runs there are
 //! ([`library`]), how one goes ([`stream`], [`consumer`], [`observe`], [`tally`], [`findings`],
-//! [`trial`]), what many say ([`contest`], [`summary`], [`limits`], [`table`]). [`coverage`] drives
-//! the fit alone: is its U honest?
+//! [`trial`]), what many say ([`contest`], [`summary`], [`limits`], [`table`]). Beside them
+//! stand studies of one thing each ([`study`]), over streams of their own ([`coverage`], [`steps`],
+//! [`foresight`]).
 
 pub mod chooser;
 pub mod ground;
@@ -22,12 +23,12 @@ pub mod stream;
 pub mod tally;
 pub mod trial;
 
-pub mod coverage;
-pub mod foresight;
-
 pub mod contest;
 pub mod limits;
 pub mod summary;
 pub mod table;
 
+pub mod coverage;
+pub mod foresight;
 pub mod steps;
+pub mod study;

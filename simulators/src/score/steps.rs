@@ -83,8 +83,7 @@ pub struct Run {
 }
 
 /// The steps that the engine tells, each with the number of readings at which it does.
-#[must_use]
-pub fn told(run: &Run) -> Vec<(u32, Step)> {
+fn told(run: &Run) -> Vec<(u32, Step)> {
     let mut engine = Engine::new();
     let mut outputs = Vec::new();
     engine.step(&Input::Setup(Box::new(setup(run))), &mut outputs);
@@ -120,14 +119,12 @@ pub fn told(run: &Run) -> Vec<(u32, Step)> {
 }
 
 /// When a reading was sampled.
-#[must_use]
-pub fn time_of(reading: u32) -> Timestamp {
+fn time_of(reading: u32) -> Timestamp {
     START.plus(Duration(PERIOD.0 * i64::from(reading)))
 }
 
 /// How many readings an instant lies after another one.
-#[must_use]
-pub fn readings_between(from: Timestamp, to: Timestamp) -> f64 {
+fn readings_between(from: Timestamp, to: Timestamp) -> f64 {
     to.since(from).seconds() / PERIOD.seconds()
 }
 
@@ -164,15 +161,15 @@ pub fn false_steps(run: Run, first_seed: u64, runs: u64) -> FalseSteps {
 #[derive(Clone, Debug, Default, PartialEq)]
 pub struct Found {
     /// Readings from the step to its being told, sorted; infinite if it never was.
-    pub delays: Vec<f64>,
+    delays: Vec<f64>,
     /// Readings by which the time told is off, sorted by size; of those found.
-    pub off: Vec<f64>,
+    off: Vec<f64>,
     /// Error of the size told, in its own u.
-    pub size_errors: Vec<f64>,
+    size_errors: Vec<f64>,
     /// Share of those found whose interval of time holds the truth.
     pub held: f64,
-    /// Steps told before there was one.
-    pub early: u64,
+    /// Steps told before there was one, in the readings until then.
+    pub early: FalseSteps,
 }
 
 impl Found {
@@ -186,6 +183,19 @@ impl Found {
     #[must_use]
     pub fn off(&self, share: f64) -> f64 {
         part(&self.off, share)
+    }
+
+    /// The share of the runs in which it was found.
+    #[must_use]
+    pub fn found(&self) -> f64 {
+        self.off.len() as f64 / self.delays.len().max(1) as f64
+    }
+
+    /// Mean square of the error of the size told, in its own u.
+    #[must_use]
+    pub fn size_square(&self) -> f64 {
+        let squares: f64 = self.size_errors.iter().map(|error| error * error).sum();
+        squares / self.size_errors.len().max(1) as f64
     }
 }
 
@@ -218,7 +228,8 @@ pub fn found(run: Run, first_seed: u64, runs: u64) -> Found {
             ..run
         };
         let steps = told(&run);
-        all.early += steps.iter().filter(|(reading, _)| *reading <= at).count() as u64;
+        all.early.steps += steps.iter().filter(|(reading, _)| *reading <= at).count() as u64;
+        all.early.readings += u64::from(at);
         let Some((reading, step)) = steps.iter().find(|(reading, _)| *reading > at) else {
             all.delays.push(f64::INFINITY);
             continue;

@@ -2,7 +2,7 @@
 
 use super::contest::Timed;
 use super::library::{Class, Scenario};
-use super::limits::{self, Bound, Verdict};
+use super::limits::{self, Verdict};
 use super::summary::{self, Figure, Summary};
 use super::trial::Trial;
 use serde::Serialize;
@@ -177,18 +177,16 @@ fn number(value: Option<f64>, decimals: usize) -> String {
 }
 
 fn sentence(row: &Row, verdict: &Verdict) -> String {
-    let (word, bound) = match verdict.bound {
-        Bound::AtMost(bound) => ("at most", bound),
-        Bound::AtLeast(bound) => ("at least", bound),
-    };
+    let Verdict {
+        figure,
+        bound,
+        reason,
+        ..
+    } = verdict;
     let value = number(verdict.value, 4);
-    format!(
-        "{}: {:?} is {value}, must be {word} {bound}: {}{}",
-        row.name,
-        verdict.figure,
-        verdict.reason,
-        kinds(row, verdict.figure),
-    )
+    let kinds = kinds(row, *figure);
+    let name = row.name;
+    format!("{name}: {figure:?} is {value}, must be {bound}: {reason}{kinds}")
 }
 
 /// Which kinds of alarm were false, where that is the figure.

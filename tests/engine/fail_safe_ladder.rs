@@ -3,11 +3,12 @@
 //! rate count as trouble.
 
 use crate::support::{
-    Noise, at, channel, constant, engine, indication, node, reference, reference_value, span,
+    Noise, at, channel, constant, engine, feed, indication, node, reference, reference_value, span,
 };
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{
-    AlarmKind, AlarmState, Cause, Correction, Input, Output, Rung, Status,
+    About, Act, AlarmKind, AlarmState, Cause, Correction, Input, Order, Output, Rung, ServiceEvent,
+    Status, Wish,
 };
 use holdtrue_engine::setup::{ChannelSetup, Clock, ReferenceKind, WindowLength};
 
@@ -109,6 +110,47 @@ fn a_channel_without_a_fit_has_nothing_but_its_indications() {
     let standing = &engine.standing().channels[0];
     assert_eq!(standing.rung, Rung::RawOnly);
     assert_eq!(standing.because, Some(Cause::NothingLearned));
+}
+
+/// A stretch that ends while the reference is silent: what rested on it is taken back, once, and is
+/// not said again as if it could still be held.
+#[test]
+fn a_stretch_that_ends_in_trouble_holds_nothing() {
+    let (mut engine, before) = run(setup(), 120, |_| 2.0, |hour| hour < 100);
+    assert!(!held(&before).is_empty());
+    let cleaned = Input::Order(Box::new(Order {
+        received: at(120.0 * EVERY),
+        id: "1".to_owned(),
+        reply_to: None,
+        wish: Wish::Service(ServiceEvent {
+            by: "night shift".to_owned(),
+            about: About::Channel("a".to_owned()),
+            at: Some(at(118.5 * EVERY)),
+            act: Act::Cleaned,
+            as_found: Vec::new(),
+            as_left: Vec::new(),
+            serial: None,
+            certificate: None,
+            note: String::new(),
+        }),
+    }));
+    let said = feed(&mut engine, [&cleaned]);
+    assert!(!said.iter().any(|it| matches!(it, Output::Correction(_))));
+    let why: Vec<&str> = said
+        .iter()
+        .filter_map(|output| match output {
+            Output::Withdrawn { why, .. } => Some(why.as_str()),
+            _ => None,
+        })
+        .collect();
+    assert!(
+        matches!(why[..], [why] if why.contains("no longer holds: the sensor was cleaned")),
+        "{why:?}"
+    );
+    let standing = &engine.standing().channels[0];
+    assert_eq!(standing.rung, Rung::Withdrawn);
+    assert_eq!(standing.because, Some(Cause::ReferenceStale), "the gravest");
+    assert_eq!(standing.issue_number, None);
 }
 
 /// A sensor that needs more correction than permitted: no document exceeds the limit, the last one

@@ -1,12 +1,16 @@
 //! What is no longer in memory: fast sensors, slow references and gates that repeat themselves.
 
 use crate::support::{
-    at, channel, engine, feed, gate, indication, node, reference, reference_value, since_start,
-    span,
+    at, channel, engine, feed, gate, indication, node, reading, reference, reference_value,
+    since_start, span,
 };
 use holdtrue_engine::engine::Engine;
-use holdtrue_engine::event::{Input, Output, PairFate, Reading, RefusedReason, Subject, Supplied};
-use holdtrue_engine::setup::{ChannelId, Clock, ReferenceKind, Setup};
+use holdtrue_engine::event::{
+    Input, Output, PairFate, Reading, RefusedReason, Source, Subject, Supplied,
+};
+use holdtrue_engine::setup::{
+    ChannelId, ChannelInfluence, Clock, InfluenceId, InfluenceSetup, ReferenceKind, Setup,
+};
 
 /// One channel, lateness 0, against one measured reference whose values stand for so many seconds.
 fn setup(stands_for: f64, max_gap: f64) -> Setup {
@@ -72,6 +76,52 @@ fn a_laboratory_result_of_a_fast_sensor_is_paired_from_the_record() {
     assert_eq!(made[0].phenomenon, at(1000.5));
     assert!((made[0].indication - 1000.5).abs() < 1e-9);
     assert_eq!(counted(&engine), 0, "what is known twice is no refusal");
+}
+
+/// What acted on the sensor is known from the record only: it is asked for, and its answer is used
+/// once and for all.
+#[test]
+fn a_pair_whose_influence_is_in_the_record_is_made_of_it_once() {
+    let mut setup = setup(0.0, 60.0);
+    setup.channels[0].fit.influences = 1;
+    setup.channels[0].influences = vec![ChannelInfluence {
+        source: InfluenceId(0),
+        name: "temperature".to_owned(),
+        unit: None,
+    }];
+    setup.influences = vec![InfluenceSetup {
+        name: "hall/t".to_owned(),
+    }];
+    let mut engine = engine(setup);
+    let mut fed: Vec<Input> = (0..10_800_u32)
+        .flat_map(|second| {
+            let seconds = f64::from(second);
+            let temperature = Source::Influence(InfluenceId(0));
+            [
+                reading(temperature, seconds, 20.0),
+                indication(0, seconds, seconds),
+            ]
+        })
+        .collect();
+    fed.push(reference_value(0, 1000.5, 0.0));
+    let mut said = feed(&mut engine, &fed);
+    let mut asked = 0;
+    let mut fates: Vec<PairFate> = Vec::new();
+    // For the indications, then for the temperatures beside them.
+    for _ in 0..2 {
+        asked += said.iter().filter(|it| is_wanted(it)).count();
+        said = answer(&mut engine, &said, &fed);
+        fates.extend(pairs(&said).into_iter().cloned());
+    }
+    assert_eq!(asked, 2);
+    assert!(!said.iter().any(is_wanted), "{said:?}");
+    assert_eq!(fates.len(), 1, "{fates:?}");
+    assert_eq!((fates[0].phenomenon, fates[0].rejected), (at(1000.5), None));
+    assert_eq!(engine.standing().channels[0].pairs, 1);
+}
+
+fn is_wanted(output: &Output) -> bool {
+    matches!(output, Output::Wanted { .. })
 }
 
 #[test]

@@ -214,6 +214,160 @@ fn told_late_the_stretch_still_ends_when_the_work_was_done() {
     assert_eq!(withdrawn(&said), 0);
 }
 
+/// Steps of 0.3 at hour 400 that were found before anybody told: the channel with one, and what was
+/// said until hour 448.
+fn stepped(seed: u64) -> (Engine, Vec<Output>, Noise) {
+    let mut noise = Noise::new(seed, 0.0);
+    let mut engine = engine(setup(ph()));
+    let level = |hour: u32| if hour < 400 { 0.3 } else { 0.0 };
+    let said = feed(
+        &mut engine,
+        &readings(0, 448, |hour| level(hour) + 0.005 * noise.draw()),
+    );
+    let steps = said.iter().filter(|it| matches!(it, Output::Step(_)));
+    assert_eq!(steps.count(), 1);
+    (engine, said, noise)
+}
+
+/// Whose alarms of a step are raised and cleared, with what they say.
+fn step_alarms(said: &[Output]) -> Vec<(AlarmState, &str)> {
+    said.iter()
+        .filter_map(|output| match output {
+            Output::Alarm(change) if change.kind == AlarmKind::Step => {
+                Some((change.state, change.text.as_str()))
+            }
+            _ => None,
+        })
+        .collect()
+}
+
+/// Told at the hour before, at the step, or an hour or half a day early by a bad watch: the service
+/// takes the step over, with its model, its as-left readings and its alarm.
+#[test]
+fn a_service_explains_the_step_that_was_found_before_it_was_told() {
+    for hours in [388.5, 398.5, 399.5, 400.0] {
+        let (mut engine, _, mut noise) = stepped(31);
+        assert_eq!(engine.standing().channels[0].pairs, 48);
+        let mut adjusted = event(Act::Adjusted, hours);
+        adjusted.as_found = vec![point(7.3, 7.0, 0.02)];
+        adjusted.as_left = vec![point(7.001, 7.0, 0.02)];
+        let (serviced, said) = done(&mut engine, &order("a-1", adjusted));
+        assert_eq!(serviced.stretches, [("ph".to_owned(), 2)], "{hours}");
+        let comparison = serviced.comparison.expect("the model of before the step");
+        assert!((comparison.predicted_error - 0.3).abs() < 0.01);
+        assert!(comparison.satisfactory, "{comparison:?}");
+        assert_eq!(validations(&said)[0].stretch, 1);
+        let cleared = step_alarms(&said);
+        assert!(
+            matches!(cleared[..], [(AlarmState::Normal, text)] if text.contains("adjusted at")),
+            "{cleared:?}"
+        );
+        assert_eq!(engine.standing().alarms, []);
+        assert_eq!(
+            withdrawn(&said),
+            0,
+            "the pairs since then carry the correction"
+        );
+        // The as-left reading, what came since the step, and what lay between the two.
+        let between = (0..400).filter(|hour| f64::from(*hour) >= hours).count() as u64;
+        let pairs = engine.standing().channels[0].pairs;
+        assert_eq!(pairs, 1 + 48 + between, "{hours}");
+        // The stretch goes on as any other does.
+        let said = feed(&mut engine, &readings(448, 500, |_| 0.005 * noise.draw()));
+        assert!(step_alarms(&said).is_empty());
+        let last = corrections(&said).last().copied();
+        assert!(last.is_none_or(|last| last.stretch == 2));
+    }
+}
+
+/// A service of the day before, or one that followed the alarm, is not what made the step.
+#[test]
+fn a_service_at_another_time_explains_no_step() {
+    let (mut engine, _, _) = stepped(32);
+    let before = engine.standing();
+    let mut earlier = event(Act::Adjusted, 387.0);
+    earlier.as_found = vec![point(7.3, 7.0, 0.02)];
+    let (serviced, said) = done(&mut engine, &order("a-1", earlier));
+    assert_eq!((serviced.stretches.len(), serviced.comparison), (0, None));
+    assert_eq!(said.len(), 1, "{said:?}");
+    assert_eq!(engine.standing(), before, "the step's alarm stands");
+
+    let mut later = event(Act::Calibrated, 440.5);
+    later.as_found = vec![point(7.001, 7.0, 0.02)];
+    let (serviced, said) = done(&mut engine, &order("a-2", later));
+    assert_eq!(serviced.stretches, [("ph".to_owned(), 3)]);
+    assert_eq!(validations(&said)[0].stretch, 2);
+    assert!(serviced.comparison.expect("a model").satisfactory);
+}
+
+/// Another sensor in place made the step: nothing of the old one is left, and what came since the
+/// step is the new one's.
+#[test]
+fn an_exchange_explains_a_step_as_well() {
+    let (mut engine, _, _) = stepped(33);
+    let mut replaced = event(Act::Replaced, 399.5);
+    replaced.serial = Some("B-2".to_owned());
+    let (serviced, said) = done(&mut engine, &order("a-1", replaced));
+    assert_eq!(serviced.stretches, [("ph".to_owned(), 2)]);
+    assert_eq!(step_alarms(&said).len(), 1);
+    assert_eq!(engine.standing().alarms, []);
+    assert_eq!(engine.standing().channels[0].pairs, 48);
+}
+
+/// The reference was set right; both channels saw that as their own step.
+#[test]
+fn a_service_of_the_reference_explains_the_steps_of_its_channels() {
+    let mut noise = Noise::new(34, 0.0);
+    let lab = reference("lab", ReferenceKind::Measured);
+    let channels = ["a", "b"].map(|name| ChannelSetup {
+        name: name.to_owned(),
+        ..ph()
+    });
+    let mut engine = engine(node(Clock::Readings, vec![lab], channels.to_vec()));
+    let mut said = Vec::new();
+    for hour in 0..448_u32 {
+        let time = EVERY * f64::from(hour);
+        for channel in 0..2 {
+            let value = 7.0 + 0.005 * noise.draw();
+            said.extend(feed(&mut engine, [&indication(channel, time, value)]));
+        }
+        let value = if hour < 400 { 6.7 } else { 7.0 };
+        said.extend(feed(&mut engine, [&reference_value(0, time, value)]));
+    }
+    assert_eq!(step_alarms(&said).len(), 2);
+    let mut adjusted = event(Act::Adjusted, 399.5);
+    adjusted.about = About::Reference("lab".to_owned());
+    let (serviced, said) = done(&mut engine, &order("1", adjusted));
+    let ended = [("a".to_owned(), 2), ("b".to_owned(), 2)];
+    assert_eq!(serviced.stretches, ended);
+    assert_eq!(step_alarms(&said).len(), 2);
+    assert_eq!(engine.standing().alarms, []);
+    assert_eq!(withdrawn(&said), 0);
+}
+
+/// An exchange told after what was done to the new sensor: the newer number and result stay.
+#[test]
+fn what_is_told_late_overwrites_nothing_newer() {
+    let mut engine = engine(setup(ph()));
+    feed(&mut engine, &readings(0, 200, |_| 0.1));
+    let mut newer = event(Act::Calibrated, 150.5);
+    newer.serial = Some("B-2".to_owned());
+    newer.as_found = vec![point(7.3, 7.0, 0.02)];
+    done(&mut engine, &order("1", newer));
+    let mut older = event(Act::Calibrated, 50.5);
+    older.serial = Some("B-2".to_owned());
+    older.as_found = vec![point(7.001, 7.0, 0.02)];
+    done(&mut engine, &order("2", older));
+    let said = feed(&mut engine, &readings(200, 300, |_| 0.1));
+    let found = said.iter().rev().find_map(|output| match output {
+        Output::Outlook(outlook) => outlook.recalibration.staircase,
+        _ => None,
+    });
+    let found = found.expect("a result as found");
+    assert_eq!(found.at, at(150.5 * EVERY));
+    assert!((found.error - 0.3).abs() < 1e-9);
+}
+
 #[test]
 fn a_model_that_is_wrong_is_told_so() {
     let mut noise = Noise::new(23, 0.0);

@@ -35,7 +35,6 @@ fn stepping(size: f64, readings: usize) -> Vec<f64> {
 
 fn small() -> ChannelSetup {
     let mut small = channel("a", 0);
-    small.steps = Some(4.0);
     small.fit.window = WindowLength::Pairs(256);
     small
 }

@@ -95,7 +95,7 @@ pub fn channel(name: &str, reference: u32) -> ChannelSetup {
             stuck: None,
             max_rate: None,
         },
-        steps: None,
+        steps: Some(4.0),
         max_permissible_error: None,
         decision_rule: DecisionRule::GuardBand { multiple: 1.0 },
         service_horizon: span(14.0 * 86_400.0),

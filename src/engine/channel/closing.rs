@@ -6,9 +6,9 @@
 //! where that has enough pairs, and withdrawn where not.
 
 use super::ladder::Ladder;
-use super::stretch::Carries;
-use super::{Channel, Pair, Remembered, Scene};
-use crate::event::{Cause, Output};
+use super::stretch::{Carries, Taken};
+use super::{Channel, Pair, Remembered, Scene, telling};
+use crate::event::Cause;
 use crate::report::Report;
 use crate::time::Timestamp;
 
@@ -46,66 +46,70 @@ impl Channel {
         scene: &Scene<'_>,
         report: &mut Report<'_>,
     ) -> Reentered {
-        let since = self.recent.take_since(at);
+        let since = self.recent.take_for_next(at, self.stretch.number());
         self.stretch = self.stretch.next(carries, scene.setup);
+        self.stepped = None;
         self.breaks.begin_stretch(match carries {
             Carries::Noise { latest } => Some(latest),
             Carries::Nothing => None,
         });
         self.stretch.begin_at(at);
         for pair in opening {
-            let taken = self.stretch.take(pair, scene.setup);
-            super::telling::tell_fate(pair, taken.rejected, scene, report);
-            self.recent.push(Remembered {
-                pair: *pair,
-                stretch: self.stretch.number(),
-                rejected: taken.rejected,
-            });
+            self.offer_to_stretch(pair, None, scene, report);
         }
         let mut reentered = Reentered::default();
-        for mut held in since {
-            let taken = self.stretch.take(&held.pair, scene.setup);
+        for held in since {
+            let entered = held.rejected.is_none();
+            let taken = self.offer_to_stretch(&held.pair, Some(entered), scene, report);
             if taken.rejected.is_none() {
                 reentered.pairs += 1;
-                reentered.taken_back += u32::from(held.rejected.is_some());
+                reentered.taken_back += u32::from(!entered);
             }
-            if taken.rejected.is_none() != held.rejected.is_none() {
-                super::telling::tell_fate(&held.pair, taken.rejected, scene, report);
-            }
-            if let Some(change) = taken.change {
-                super::telling::tell_degree(change, scene, report);
-            }
-            held.stretch = self.stretch.number();
-            held.rejected = taken.rejected;
-            self.recent.push(held);
         }
         self.publishing.leave_stretch();
         self.outlook.leave_stretch(scene, report);
         self.alarms.end_forecast(scene, report);
-        self.alarms
-            .step_is_past("a new stretch has begun", scene, report);
+        self.alarms.step_is_past(why, scene, report);
+        if !self.rests_on_present_stretch() {
+            self.ladder = Ladder::Withdrawn {
+                because: Cause::StretchEnded,
+            };
+        }
         self.judge(scene, report);
-        if !self.publishing.is_of(self.stretch.number()) {
-            self.withdraw(why, scene, report);
+        if !self.rests_on_present_stretch() {
+            let why = format!("the correction no longer holds: {why}");
+            self.withdraw(&why, scene, report);
         }
         reentered
     }
 
-    /// Withdraws the correction in force, if there is one.
-    fn withdraw(&mut self, why: &str, scene: &Scene<'_>, report: &mut Report<'_>) {
-        self.ladder = Ladder::Withdrawn {
-            because: Cause::StretchEnded,
-        };
-        if self.publishing.forget() {
-            report.say(Output::Withdrawn {
-                channel: scene.id,
-                at: scene.now,
-                why: format!(
-                    "{}: the correction no longer holds: {why}",
-                    scene.setup.name
-                ),
-            });
+    /// Offers a pair to the present stretch and remembers it. Its fate is told, unless `entered` says
+    /// that it has been told already whether it entered, and that is still so.
+    pub(super) fn offer_to_stretch(
+        &mut self,
+        pair: &Pair,
+        entered: Option<bool>,
+        scene: &Scene<'_>,
+        report: &mut Report<'_>,
+    ) -> Taken {
+        let mut taken = self.stretch.take(pair, scene.setup);
+        if entered != Some(taken.rejected.is_none()) {
+            telling::tell_fate(pair, taken.rejected, scene, report);
         }
+        self.recent.push(Remembered {
+            pair: *pair,
+            stretch: self.stretch.number(),
+            rejected: taken.rejected,
+        });
+        if let Some(change) = taken.change.take() {
+            telling::tell_degree(change, scene, report);
+        }
+        taken
+    }
+
+    /// Whether the correction in force, if there is one, rests on the present stretch.
+    pub(super) fn rests_on_present_stretch(&self) -> bool {
+        self.publishing.is_of(self.stretch.number())
     }
 }
 
@@ -114,7 +118,7 @@ mod tests {
     use super::*;
     use crate::channel::pairing::Pair;
     use crate::channel::testing::{Stage, channel_setup};
-    use crate::event::PairFate;
+    use crate::event::{Output, PairFate};
     use crate::setup::WindowLength;
     use crate::time::Duration;
 

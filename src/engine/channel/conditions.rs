@@ -315,7 +315,8 @@ impl ChannelAlarms {
             (
                 AlarmKind::CorrectionLimit,
                 &mut self.correction_limit,
-                after.max_correction.is_none() && after.max_correction_rate.is_none(),
+                after.monitor_only
+                    || after.max_correction.is_none() && after.max_correction_rate.is_none(),
             ),
         ];
         for (kind, alarm, _) in unasked.into_iter().filter(|(_, _, unasked)| *unasked) {

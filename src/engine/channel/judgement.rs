@@ -72,18 +72,24 @@ impl Judgement {
         // Both say that the curve misses the newest pairs: the larger counts.
         let turn = (published.turn_variance - lack.variance).max(0.0);
         let rest_variance = common_variance + turn;
-        let (level, curve) = levels::judged(&published, rest_variance);
-        let error = *curve.coefficients.first()? + 0.0;
-        let fit = curve.covariance.first()?.first()?.max(0.0);
-        let u = (fit + rest_variance).sqrt();
-        let nu = effective_degrees_of_freedom(
-            u,
-            &[
+        // What is known of the error at one level: u, ν and k.
+        let sure = |curve: &Curve| {
+            let fit = curve.covariance.first().and_then(|row| row.first());
+            let fit = fit.map_or(0.0, |variance| variance.max(0.0));
+            let u = (fit + rest_variance).sqrt();
+            let parts = [
                 (fit + turn, published.degrees_of_freedom),
                 (lack.variance, lack.degrees_of_freedom),
-            ],
-        );
-        let k = quantile::student(scene.setup.coverage, nu);
+            ];
+            let nu = effective_degrees_of_freedom(u, &parts);
+            (u, nu, quantile::student(scene.setup.coverage, nu))
+        };
+        let (level, curve) = levels::judged(&published, |curve| {
+            let (u, _, k) = sure(curve);
+            curve.coefficients.first().map_or(0.0, |error| error.abs()) + k * u
+        });
+        let error = *curve.coefficients.first()? + 0.0;
+        let (u, nu, k) = sure(&curve);
         let slope = curve.coefficients.get(1).copied().unwrap_or(0.0) + 0.0;
         let slope_u = slope_variance(&curve).max(0.0).sqrt();
         let slope_k =

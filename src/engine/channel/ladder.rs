@@ -23,15 +23,18 @@ use super::{Channel, Scene};
 use crate::alarm::Condition;
 use crate::event::{Cause, Output, Rung};
 use crate::report::Report;
+use crate::setup::{ChannelId, ChannelSetup};
 use crate::time::{Duration, Timestamp};
 use serde::{Deserialize, Serialize};
 
 /// Where a channel stands.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 pub(super) enum Ladder {
     /// No correction was ever issued, or none may be.
-    #[default]
-    RawOnly,
+    RawOnly {
+        /// The gravest reason of now.
+        because: Cause,
+    },
     /// Corrections are kept up to date.
     Advise,
     /// The last one stands.
@@ -49,10 +52,21 @@ pub(super) enum Ladder {
 }
 
 impl Ladder {
+    /// Where a channel begins.
+    pub(super) fn new(setup: &ChannelSetup) -> Self {
+        Self::RawOnly {
+            because: if setup.monitor_only {
+                Cause::MonitorOnly
+            } else {
+                Cause::NothingLearned
+            },
+        }
+    }
+
     /// The rung.
     pub(super) fn rung(self) -> Rung {
         match self {
-            Self::RawOnly => Rung::RawOnly,
+            Self::RawOnly { .. } => Rung::RawOnly,
             Self::Advise => Rung::Advise,
             Self::Hold { .. } => Rung::Hold,
             Self::Withdrawn { .. } => Rung::Withdrawn,
@@ -62,9 +76,10 @@ impl Ladder {
     /// Why it is not the first one.
     pub(super) fn because(self) -> Option<Cause> {
         match self {
-            Self::RawOnly => Some(Cause::NothingLearned),
             Self::Advise => None,
-            Self::Hold { because, .. } | Self::Withdrawn { because } => Some(because),
+            Self::RawOnly { because }
+            | Self::Hold { because, .. }
+            | Self::Withdrawn { because } => Some(because),
         }
     }
 
@@ -72,9 +87,9 @@ impl Ladder {
     /// `limit`.
     fn suffer(self, because: Cause, in_force: bool, now: Timestamp, limit: Duration) -> Self {
         let since = match self {
-            Self::RawOnly if !in_force => return self,
+            Self::RawOnly { .. } if !in_force => return Self::RawOnly { because },
             Self::Hold { since, .. } => since,
-            Self::RawOnly | Self::Advise | Self::Withdrawn { .. } => now,
+            Self::RawOnly { .. } | Self::Advise | Self::Withdrawn { .. } => now,
         };
         if in_force && now < since.plus(limit) {
             Self::Hold { since, because }
@@ -90,8 +105,18 @@ impl Ladder {
             Self::Advise | Self::Hold { .. } => Self::Withdrawn {
                 because: Cause::NotRenewed,
             },
-            Self::RawOnly | Self::Withdrawn { .. } => self,
+            Self::RawOnly { .. } => Self::RawOnly {
+                because: Cause::NothingLearned,
+            },
+            Self::Withdrawn { .. } => self,
         }
+    }
+
+    /// The correction in force was dropped for a reason that is no trouble; a new one may follow.
+    pub(super) fn drop_correction(&mut self) {
+        *self = Self::Withdrawn {
+            because: Cause::NotRenewed,
+        };
     }
 
     /// Now was wrong and steps back.
@@ -112,11 +137,13 @@ impl Channel {
         report: &mut Report<'_>,
     ) {
         if scene.setup.monitor_only {
-            self.ladder = Ladder::RawOnly;
+            self.ladder = Ladder::new(scene.setup);
             return;
         }
+        // What rests on an earlier stretch is not held: whoever ended that stretch takes it back.
+        let present = self.rests_on_present_stretch();
         if let Some(because) = self.trouble(judgement, scene) {
-            let in_force = self.publishing.correction().is_some();
+            let in_force = present && self.publishing.correction().is_some();
             let limit = self.publishing.hold_limit(scene.setup);
             self.ladder = self.ladder.suffer(because, in_force, scene.now, limit);
             match self.ladder {
@@ -124,7 +151,8 @@ impl Channel {
                     let until = since.plus(limit);
                     self.publishing.hold(until, because, scene, report);
                 }
-                _ => self.take_back(because, scene, report),
+                _ if present => self.take_back(because, scene, report),
+                _ => {}
             }
             return;
         }
@@ -136,7 +164,9 @@ impl Channel {
             self.take_back(Cause::NotRenewed, scene, report);
         }
         let in_force = self.publishing.correction().is_some();
-        self.ladder = self.ladder.recover(in_force);
+        self.ladder = self
+            .ladder
+            .recover(in_force && self.rests_on_present_stretch());
     }
 
     /// Rows were taken back out of the fit: what is held from now on is to rest on the others.
@@ -152,13 +182,14 @@ impl Channel {
 
     /// Takes the correction in force back, if there is one.
     fn take_back(&mut self, because: Cause, scene: &Scene<'_>, report: &mut Report<'_>) {
+        let why = why(because, &scene.reference.name);
+        self.withdraw(&why, scene, report);
+    }
+
+    /// Takes the correction in force back, if there is one, and says why.
+    pub(super) fn withdraw(&mut self, why: &str, scene: &Scene<'_>, report: &mut Report<'_>) {
         if self.publishing.forget() {
-            let why = why(because, &scene.reference.name);
-            report.say(Output::Withdrawn {
-                channel: scene.id,
-                at: scene.now,
-                why: format!("{}: {why}", scene.setup.name),
-            });
+            tell_withdrawn(scene.id, scene.setup, scene.now, why, report);
         }
     }
 
@@ -201,6 +232,21 @@ impl Channel {
     }
 }
 
+/// Says that a channel's correction was taken back.
+pub(super) fn tell_withdrawn(
+    channel: ChannelId,
+    setup: &ChannelSetup,
+    at: Timestamp,
+    why: &str,
+    report: &mut Report<'_>,
+) {
+    report.say(Output::Withdrawn {
+        channel,
+        at,
+        why: format!("{}: {why}", setup.name),
+    });
+}
+
 /// Why a correction was taken back, and what to do.
 fn why(because: Cause, reference: &str) -> String {
     match because {
@@ -235,6 +281,7 @@ fn why(because: Cause, reference: &str) -> String {
 #[cfg(test)]
 mod tests {
     use super::*;
+    use crate::channel::testing::channel_setup;
 
     const LIMIT: Duration = Duration(100);
     const STALE: Cause = Cause::ReferenceStale;
@@ -265,9 +312,11 @@ mod tests {
 
     #[test]
     fn without_a_correction_there_is_nothing_to_hold() {
-        let raw = Ladder::RawOnly.suffer(STALE, false, Timestamp(10), LIMIT);
-        assert_eq!(raw, Ladder::RawOnly);
-        assert_eq!(raw.because(), Some(Cause::NothingLearned));
+        let fresh = Ladder::new(&channel_setup());
+        assert_eq!(fresh.because(), Some(Cause::NothingLearned));
+        let raw = fresh.suffer(STALE, false, Timestamp(10), LIMIT);
+        assert_eq!((raw.rung(), raw.because()), (Rung::RawOnly, Some(STALE)));
+        assert_eq!(raw.recover(false), fresh);
         let fallen = Ladder::Advise.suffer(STALE, false, Timestamp(10), LIMIT);
         assert_eq!(fallen, Ladder::Withdrawn { because: STALE });
         assert_eq!(

@@ -1,40 +1,44 @@
 //! At which levels an error that depends on the level is judged.
 //!
 //! Where no span is claimed, the error is one polynomial in time, valid near the levels seen. Where
-//! one is, the error differs from level to level, and the worst counts: of the lowest, the middle
-//! (the span's centre) and the highest level that the fit has seen, the one where |ê| is largest in
-//! units of its own u. Influence quantities are taken at their centres.
+//! one is, the error differs from level to level, and the worst counts: of the middle (the span's
+//! centre), the lowest and the highest level that the fit has seen, the one where |ê| + U is
+//! largest, which is what zones and acceptance compare with the limit. Influence quantities are
+//! taken at their centres.
 
 use crate::fit::basis::MAX_INFLUENCES;
 use crate::fit::{Curve, Published, Seen};
 use crate::setup::SpanSide;
 
-/// Levels at which a claimed span is judged, lowest first; the centre alone without one.
+/// Levels at which a claimed span is judged, the centre first; the centre alone without one.
 fn levels(published: &Published) -> Vec<f64> {
     let centre = published.terms.centre.x;
     match published.terms.learned.x {
         Some((lowest, highest)) if !published.span.is_empty() => {
-            vec![lowest, centre.clamp(lowest, highest), highest]
+            vec![centre.clamp(lowest, highest), lowest, highest]
         }
         _ => vec![centre],
     }
 }
 
-/// The level at which the mean is judged, and the mean there. `rest`: the part of u² that is the
-/// same at every level.
-pub(super) fn judged(published: &Published, rest: f64) -> (f64, Curve) {
+/// The level at which the mean is judged, and the mean there. `reach`: |ê| + U of a mean.
+pub(super) fn judged(published: &Published, reach: impl Fn(&Curve) -> f64) -> (f64, Curve) {
     let centres = published.terms.centre.influences;
-    let mut worst: Option<(f64, f64, Curve)> = None;
-    for level in levels(published) {
-        let curve = published.at_level(level, centres);
-        let ratio = significance(&curve, rest);
+    let at = |level| (level, published.at_level(level, centres));
+    let mut levels = levels(published).into_iter().map(at);
+    let first = levels.next().expect("there is at least one level");
+    if levels.len() == 0 {
+        return first;
+    }
+    let mut worst = (reach(&first.1), first);
+    for next in levels {
+        let its = reach(&next.1);
         // Of equals the middle counts, then the lowest: more is known there.
-        if worst.as_ref().is_none_or(|(most, _, _)| ratio > *most) {
-            worst = Some((ratio, level, curve));
+        if its > worst.0 {
+            worst = (its, next);
         }
     }
-    let (_, level, curve) = worst.expect("there is at least one level");
-    (level, curve)
+    worst.1
 }
 
 /// Largest |ê|/u at the newest pair over all corners of what the fit has seen: a correction that
@@ -84,5 +88,33 @@ pub(super) fn regressor(side: SpanSide, indication: f64, corrected: f64) -> f64 
     match side {
         SpanSide::Reference => corrected,
         SpanSide::Indication => indication,
+    }
+}
+
+#[cfg(test)]
+#[allow(clippy::float_cmp, reason = "the expected values are exact in binary")]
+mod tests {
+    use super::*;
+    use crate::channel::judgement::tests::published;
+
+    /// In the middle the error is known best, and so the most significant; at the upper end it is
+    /// nearest to its limit with what is not known of it, and that is what a zone is about.
+    #[test]
+    fn the_level_nearest_to_the_limit_is_judged() {
+        let mut published = published(&[0.5]);
+        published.span = vec![0.05];
+        published.covariance = vec![vec![1e-4, 0.0], vec![0.0, 1e-4]];
+        published.terms.centre.x = 20.0;
+        published.terms.learned.x = Some((10.0, 28.0));
+        let reach =
+            |curve: &Curve| curve.coefficients[0].abs() + 2.0 * curve.covariance[0][0].sqrt();
+        // |ê| + U: 0.52 at 20, 0.00 + 0.20 at 10, 0.90 + 0.16 at 28; |ê|/u: 50, 0, 11.
+        let (level, curve) = judged(&published, reach);
+        assert_eq!(level, 28.0);
+        assert!((curve.coefficients[0] - 0.9).abs() < 1e-12);
+        assert!((largest_significance(&published, 0.0) - 50.0).abs() < 1e-9);
+        // Of equals the middle.
+        published.span = vec![0.0];
+        assert_eq!(judged(&published, |_| 1.0).0, 20.0);
     }
 }

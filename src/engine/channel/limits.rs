@@ -30,7 +30,8 @@ impl Bounds {
 
 impl ChannelAlarms {
     /// Evaluates the limits that the channel's correction itself has. (Where its size has none of
-    /// its own, the maximum permissible error bounds it, and that alarm says so already.)
+    /// its own, the maximum permissible error bounds it, and that alarm says so already. A channel
+    /// that is monitored only has no correction.)
     pub(super) fn judge_correction(
         &mut self,
         judgement: &Judgement,
@@ -38,6 +39,9 @@ impl ChannelAlarms {
         report: &mut Report<'_>,
     ) {
         let setup = scene.setup;
+        if setup.monitor_only {
+            return;
+        }
         let size = setup.max_correction.map(|limit| {
             let deadband = setup.alarms.deadband * judgement.u;
             let said = correction_size(judgement, limit, &setup.unit);

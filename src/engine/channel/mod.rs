@@ -18,6 +18,7 @@ mod checks;
 mod closing;
 mod conditions;
 mod conformity;
+mod distrust;
 mod drafting;
 mod forecast;
 mod judgement;
@@ -49,7 +50,7 @@ use breaks::Breaks;
 use checks::Checks;
 pub(crate) use checks::jumps;
 use conditions::ChannelAlarms;
-use ladder::Ladder;
+use ladder::{Ladder, tell_withdrawn};
 use outlook::OutlookStation;
 pub(crate) use pairing::{Answer, Check, Holding, Rows, holding};
 use pairing::{Found, Pair, Pairing};
@@ -59,6 +60,7 @@ pub(crate) use screening::MAD_TO_SD;
 use serde::{Deserialize, Serialize};
 use service::ServiceBook;
 pub(crate) use service::{Effect, Service};
+use stepping::Stepped;
 use stretch::Stretch;
 use waiting::Waiting;
 
@@ -93,6 +95,9 @@ pub(crate) struct Channel {
     checks: Checks,
     waiting: Waiting,
     stretch: Stretch,
+    /// The stretch that a step ended, while the step's alarm stands: a service told later may have
+    /// been its cause, and then it is this one that it ended.
+    stepped: Option<Box<Stepped>>,
     recent: Recent,
     breaks: Breaks,
     publishing: Publishing,
@@ -115,11 +120,12 @@ impl Channel {
             checks: Checks::default(),
             waiting: Waiting::default(),
             stretch: Stretch::new(1, setup),
+            stepped: None,
             recent: Recent::default(),
             breaks: Breaks::default(),
             publishing: Publishing::new(issued),
             outlook: OutlookStation::default(),
-            ladder: Ladder::default(),
+            ladder: Ladder::new(setup),
             alarms: ChannelAlarms::default(),
             service: ServiceBook::default(),
             began: None,
@@ -135,6 +141,7 @@ impl Channel {
         let mut fresh = Self::new(setup, self.issued());
         if same_unit {
             fresh.service = self.service.clone();
+            fresh.outlook = self.outlook.anew();
         }
         fresh
     }
@@ -234,7 +241,7 @@ impl Channel {
     ) {
         let mut found = Vec::new();
         self.pairing.take_supplied(answer, scene, &mut found);
-        self.work_through(found, scene, report);
+        self.act_on(found, scene, report);
     }
 
     /// Time passed, or something arrived that may complete a pair.
@@ -243,22 +250,6 @@ impl Channel {
         let mut found = Vec::new();
         self.pairing.advance(scene, &mut found);
         self.work_through(found, scene, report);
-    }
-
-    /// Its reference is under suspicion since this instant: what came from it since then counts for
-    /// nothing, and the correction is held.
-    pub(crate) fn distrust(
-        &mut self,
-        since: Timestamp,
-        scene: &Scene<'_>,
-        report: &mut Report<'_>,
-    ) {
-        let since = since.plus(scene.setup.lag);
-        if self.stretch.last_pair() >= Some(since) {
-            self.stretch.rewind(since, &self.recent, scene.setup);
-            self.renew(scene, report);
-        }
-        self.heed_reference(scene, report);
     }
 
     /// Something changed about its reference's state.
@@ -283,12 +274,21 @@ impl Channel {
             self.checks.forget_screens();
         }
         self.stretch.edit(after);
-        if after.monitor_only && self.publishing.forget() {
-            report.say(Output::Withdrawn {
-                channel: id,
-                at: now,
-                why: format!("{}: the channel is now monitored only", after.name),
-            });
+        if after.steps.is_none() {
+            self.breaks = Breaks::default();
+            self.stepped = None;
+        }
+        if let Some(step) = &mut self.stepped {
+            step.edit(after);
+        }
+        if after.monitor_only {
+            if self.publishing.forget() {
+                let why = "the channel is now monitored only";
+                tell_withdrawn(id, after, now, why, report);
+            }
+            self.ladder = Ladder::new(after);
+        } else if self.ladder.because() == Some(Cause::MonitorOnly) {
+            self.ladder = Ladder::new(after);
         }
         self.publishing.review();
         self.outlook.edit(id, after, now, report);
@@ -308,18 +308,13 @@ impl Channel {
         to: Timestamp,
         report: &mut Report<'_>,
     ) {
+        self.ladder.step_back(to);
         if self.publishing.step_back(to) {
-            report.say(Output::Withdrawn {
-                channel: id,
-                at: to,
-                why: format!(
-                    "{}: it was issued while the host's clock was wrong",
-                    setup.name
-                ),
-            });
+            let why = "it was issued while the host's clock was wrong";
+            tell_withdrawn(id, setup, to, why, report);
+            self.ladder.drop_correction();
         }
         self.outlook.step_back(id, to, report);
-        self.ladder.step_back(to);
         self.began = self.began.map(|began| began.min(to));
         self.wake = Some(Timestamp(i64::MIN));
     }
@@ -334,11 +329,7 @@ impl Channel {
         report: &mut Report<'_>,
     ) {
         if self.publishing.correction().is_some() {
-            report.say(Output::Withdrawn {
-                channel: id,
-                at: now,
-                why: format!("{}: {why}", setup.name),
-            });
+            tell_withdrawn(id, setup, now, why, report);
         }
         if self.outlook.outlook().is_some() {
             report.say(Output::OutlookWithdrawn {
@@ -381,18 +372,19 @@ impl Channel {
             locked_out: self.stretch.is_locked_out(),
             limit_not_before: self.outlook.outlook().and_then(|it| it.recalibration.by),
             rung: self.ladder.rung(),
-            because: if setup.monitor_only {
-                Some(Cause::MonitorOnly)
-            } else {
-                self.ladder.because()
-            },
+            because: self.ladder.because(),
             statuses: self.statuses(channel, in_check),
         }
     }
 
-    /// Sends what pairing found through the stations, then sees to what waits for time.
+    /// Attaches influence quantities to what pairing found, and acts on what has them.
     fn work_through(&mut self, mut found: Vec<Found>, scene: &Scene<'_>, report: &mut Report<'_>) {
         self.pairing.attach(&mut found, scene);
+        self.act_on(found, scene, report);
+    }
+
+    /// Sends what was found through the stations, then sees to what waits for time.
+    fn act_on(&mut self, found: Vec<Found>, scene: &Scene<'_>, report: &mut Report<'_>) {
         let subject = Subject::Channel(scene.id);
         for found in found {
             match found {
@@ -439,16 +431,7 @@ impl Channel {
             telling::tell_fate(pair, stuck, scene, report);
             return;
         }
-        let taken = self.stretch.take(pair, scene.setup);
-        telling::tell_fate(pair, taken.rejected, scene, report);
-        self.recent.push(Remembered {
-            pair: *pair,
-            stretch: self.stretch.number(),
-            rejected: taken.rejected,
-        });
-        if let Some(change) = taken.change {
-            telling::tell_degree(change, scene, report);
-        }
+        let taken = self.offer_to_stretch(pair, None, scene, report);
         if let Some(innovation) = taken.innovation {
             self.watch_for_step(innovation, taken.locks_out, scene, report);
             let locked_out = self.stretch.is_locked_out();

@@ -46,9 +46,24 @@ impl OutlookStation {
         self.in_force.as_deref()
     }
 
-    /// A service found this. Of another sensor than the last one nothing is known.
-    pub(crate) fn note_as_found(&mut self, as_found: Option<AsFound>) {
-        self.as_found = as_found;
+    /// An outlook that begins anew, of the same sensor.
+    pub(crate) fn anew(&self) -> Self {
+        Self {
+            as_found: self.as_found,
+            ..Self::default()
+        }
+    }
+
+    /// A service found this. The newest found counts, in whatever order people tell.
+    pub(crate) fn note_as_found(&mut self, as_found: AsFound) {
+        if self.as_found.is_none_or(|held| held.at <= as_found.at) {
+            self.as_found = Some(as_found);
+        }
+    }
+
+    /// Another sensor is in place: nothing is known of it.
+    pub(crate) fn forget_as_found(&mut self) {
+        self.as_found = None;
     }
 
     /// When to look again.

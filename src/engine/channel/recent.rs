@@ -59,11 +59,21 @@ impl Recent {
 
     /// Takes out those that are not older than `at`, in the order in which they came.
     pub(super) fn take_since(&mut self, at: Timestamp) -> Vec<Remembered> {
-        let (since, before) = std::mem::take(&mut self.pairs)
+        self.take(|held| held.pair.time >= at)
+    }
+
+    /// The same for what is offered to the stretch after `ended`, and with it what a stretch was
+    /// offered that was none: one begun by a step that a service explains.
+    pub(super) fn take_for_next(&mut self, at: Timestamp, ended: u32) -> Vec<Remembered> {
+        self.take(|held| held.pair.time >= at || held.stretch > ended)
+    }
+
+    fn take(&mut self, wanted: impl Fn(&Remembered) -> bool) -> Vec<Remembered> {
+        let (taken, left) = std::mem::take(&mut self.pairs)
             .into_iter()
-            .partition(|remembered: &Remembered| remembered.pair.time >= at);
-        self.pairs = before;
-        Vec::from(since)
+            .partition(wanted);
+        self.pairs = left;
+        Vec::from(taken)
     }
 }
 

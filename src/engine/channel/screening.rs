@@ -120,16 +120,33 @@ impl Screen {
     }
 
     /// A screen that watches, with the noise as this one knows it without the last `latest`
-    /// innovations, which a step pulled away. If it has locked out, what it knew before.
+    /// innovations, which a step pulled away. If it has locked out, what it knew before, without
+    /// those of them that came until then.
     pub(crate) fn carried_on(&self, latest: usize) -> Self {
-        let mut noise = match &self.locked {
-            Some(locked) => locked.noise.clone(),
-            None => self.noise.clone(),
+        let (mut noise, latest) = match &self.locked {
+            Some(locked) => {
+                let since = self.noise.recent.len();
+                (locked.noise.clone(), latest.saturating_sub(since))
+            }
+            None => (self.noise.clone(), latest),
         };
         noise.forget(latest);
         Self {
             noise,
             ..Self::default()
+        }
+    }
+
+    /// Forgets the latest innovations, those of pairs of these times, which were struck; with them
+    /// goes a lock-out that they brought about.
+    pub(crate) fn forget_latest(&mut self, times: &[Timestamp]) {
+        let oldest = times.iter().min();
+        match &self.locked {
+            Some(locked) if Some(&locked.since) >= oldest => *self = self.carried_on(times.len()),
+            _ => {
+                self.noise.forget(times.len());
+                self.run = 0;
+            }
         }
     }
 
@@ -371,7 +388,7 @@ mod tests {
             judge(&mut screen, 30.0);
         }
         assert!(screen.is_locked_out());
-        let carried = screen.carried_on(5);
+        let carried = screen.carried_on(23);
         assert!(!carried.is_locked_out());
         assert_eq!(carried, seasoned(64));
     }

@@ -61,7 +61,7 @@ fn of_alarm(kind: AlarmKind) -> Status {
 
 fn of_ladder(ladder: Ladder) -> Option<Status> {
     match ladder {
-        Ladder::RawOnly | Ladder::Advise => None,
+        Ladder::RawOnly { .. } | Ladder::Advise => None,
         Ladder::Withdrawn { .. } => Some(Status::OutOfSpecification),
         Ladder::Hold { because, .. } => Some(match because {
             Cause::ScreenLockedOut | Cause::CorrectionSize | Cause::CorrectionRate => {

@@ -39,7 +39,6 @@ pub(super) struct Stretch {
 
 /// What the next stretch knows from the one before.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
-#[allow(dead_code, reason = "whoever ends a stretch chooses")]
 pub(crate) enum Carries {
     /// The noise of the sensor, as it was before the latest so many pairs: the sensor is the same.
     Noise {
@@ -90,6 +89,15 @@ impl Stretch {
         Self {
             screen,
             ..Self::new(self.number.saturating_add(1), setup)
+        }
+    }
+
+    /// The stretch before this one, `ended`, as if it had gone on until now; of the noise it knows
+    /// what has been learned meanwhile.
+    pub(super) fn taken_over_by(&self, ended: Self) -> Self {
+        Self {
+            screen: self.screen.clone(),
+            ..ended
         }
     }
 
@@ -253,8 +261,7 @@ impl Stretch {
     }
 
     /// Takes all pairs from `instant` on out of the fit again. (Rows that left the window meanwhile
-    /// do not come back.) What was learned of the noise stays: a bad reference
-    /// says nothing about the sensor's.
+    /// do not come back.)
     pub(super) fn rewind(&mut self, instant: Timestamp, recent: &Recent, setup: &ChannelSetup) {
         let before = self.fit.window().rows();
         self.fit = self.fit_before(instant, recent, setup);
@@ -264,6 +271,12 @@ impl Stretch {
         self.last_pair = self.fit.window().newest();
         self.unjudged += left;
         self.judged = None;
+    }
+
+    /// Forgets what the latest pairs, which were struck, said of the noise.
+    pub(super) fn forget_latest(&mut self, struck: &[Remembered]) {
+        let times: Vec<Timestamp> = struck.iter().map(|held| held.pair.time).collect();
+        self.screen.forget_latest(&times);
     }
 
     /// What keeps a pair out that came late and belongs to the stretch before.

@@ -2,7 +2,7 @@
 
 use super::Scene;
 use super::pairing::Pair;
-use crate::event::{DegreeChange, Flag, Output, PairFate, Rejection, Subject};
+use crate::event::{DegreeChange, Flag, Output, PairFate, RefusedReason, Rejection, Subject};
 use crate::fit::{Change, Term};
 use crate::report::Report;
 use crate::wording::readable;
@@ -50,14 +50,19 @@ pub(super) fn tell_unattached(
     });
 }
 
-/// Says that a pair was kept out because of its reference. It is counted, but people are told once,
-/// on the reference.
+/// Says that a pair is kept out because of its reference: its channels shifted together by so much,
+/// and so much is permitted. It is counted, but people are told once, on the reference.
 pub(super) fn tell_struck(
     pair: &Pair,
-    rejection: Rejection,
+    (value, threshold): (f64, f64),
     scene: &Scene<'_>,
     report: &mut Report<'_>,
 ) {
+    let rejection = Rejection {
+        reason: RefusedReason::ReferenceDoubted,
+        value,
+        threshold,
+    };
     let subject = Subject::Channel(scene.id);
     report.counters.add(subject, rejection.reason);
     report.say(fate(pair, Some(rejection), scene));

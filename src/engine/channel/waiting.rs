@@ -1,11 +1,12 @@
 //! Pairs that wait until their reference has been judged by all its channels (`reference_watch`).
 //!
 //! A pair that the fit expects something of is a vote about its reference, and waits. What has no
-//! expectation yet has no vote: it goes on at once, unless the reference is under suspicion.
+//! expectation yet has no vote: it goes on as soon as none waits before it, unless the reference is
+//! under suspicion.
 
 use super::pairing::Pair;
 use super::{Channel, Scene, telling};
-use crate::event::{Cause, RefusedReason, Rejection};
+use crate::event::Cause;
 use crate::fleet::{Ruling, Vote};
 use crate::report::Report;
 use serde::{Deserialize, Serialize};
@@ -22,7 +23,7 @@ pub(super) struct Waiting {
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
 struct Waiter {
     pair: Pair,
-    vote: Vote,
+    vote: Option<Vote>,
     /// The round that it waits for; `None` before it was heard.
     round: Option<u64>,
 }
@@ -35,36 +36,44 @@ impl Channel {
             return;
         }
         self.last_reference = self.last_reference.max(Some(pair.time));
+        self.waiting.pairs.push(Waiter {
+            pair: *pair,
+            vote: self.stretch.vote(pair, scene.setup),
+            round: None,
+        });
+        if self.waiting.pairs.len() > MOST {
+            let oldest = self.waiting.pairs.remove(0);
+            self.release(&oldest.pair, None, scene, report);
+        }
+        self.release_voteless(scene, report);
+    }
+
+    /// Lets those go on, or keeps them out, that have no vote and nobody waiting before them.
+    fn release_voteless(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
         let suspect = matches!(
             scene.trouble,
             Some(Cause::ReferenceStep | Cause::ReferenceStuck)
         );
-        if let Some(vote) = self.stretch.vote(pair, scene.setup) {
-            self.waiting.pairs.push(Waiter {
-                pair: *pair,
-                vote,
-                round: None,
-            });
-            if self.waiting.pairs.len() > MOST {
-                let oldest = self.waiting.pairs.remove(0);
-                self.release(&oldest.pair, None, scene, report);
-            }
-        } else {
-            self.release(pair, suspect.then_some((0.0, 0.0)), scene, report);
+        while let Some(first) = self.waiting.pairs.first()
+            && first.vote.is_none()
+        {
+            let pair = self.waiting.pairs.remove(0).pair;
+            self.release(&pair, suspect.then_some((0.0, 0.0)), scene, report);
         }
     }
 
-    /// Whether a pair has found no hearing yet.
+    /// Whether a vote has found no hearing yet.
     pub(crate) fn has_votes(&self) -> bool {
-        let newest = self.waiting.pairs.last();
-        newest.is_some_and(|waiter| waiter.round.is_none())
+        let newest = self.waiting.pairs.iter().rev();
+        let mut unheard = newest.take_while(|waiter| waiter.round.is_none());
+        unheard.any(|waiter| waiter.vote.is_some())
     }
 
     /// Gives its votes a hearing, which says for which round each is to wait.
     pub(crate) fn cast_votes(&mut self, mut hear: impl FnMut(Vote) -> u64) {
         for waiter in &mut self.waiting.pairs {
             if waiter.round.is_none() {
-                waiter.round = Some(hear(waiter.vote));
+                waiter.round = waiter.vote.map(&mut hear);
             }
         }
     }
@@ -81,6 +90,7 @@ impl Channel {
         for waiter in ruled {
             self.release(&waiter.pair, ruling.struck, scene, report);
         }
+        self.release_voteless(scene, report);
         self.wake = self.next_wake(scene);
     }
 
@@ -94,14 +104,7 @@ impl Channel {
     ) {
         match struck {
             None => self.take_pair(pair, scene, report),
-            Some((value, threshold)) => {
-                let rejection = Rejection {
-                    reason: RefusedReason::ReferenceDoubted,
-                    value,
-                    threshold,
-                };
-                telling::tell_struck(pair, rejection, scene, report);
-            }
+            Some(shift) => telling::tell_struck(pair, shift, scene, report),
         }
     }
 }

@@ -94,7 +94,10 @@ impl Fleet {
         for turn in &turns {
             for &user in &users {
                 self.visit(user, |channel, scene| match turn.since {
-                    Some(since) => channel.distrust(since, scene, report),
+                    Some(since) => {
+                        let shift = (turn.shift.abs(), turn.limit);
+                        channel.distrust(since, shift, scene, report);
+                    }
                     None => channel.heed_reference(scene, report),
                 });
             }

@@ -146,6 +146,12 @@ impl Breaks {
         }
     }
 
+    /// The latest so many pairs were struck: what the chart made of them is forgotten, and what is
+    /// known of the noise stays as it was before them.
+    pub(super) fn forget_latest(&mut self, latest: usize) {
+        self.begin_stretch(Some(latest));
+    }
+
     /// A new stretch begins. Of its noise the latest `latest` innovations are forgotten, which what
     /// ended the old one pulled away; `None`: everything is.
     pub(super) fn begin_stretch(&mut self, latest: Option<usize>) {

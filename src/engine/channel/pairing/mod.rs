@@ -213,14 +213,16 @@ impl Pairing {
         self.advance(scene, found);
     }
 
-    /// Rows that were asked for have come (or there are none).
+    /// Rows that were asked for have come (or there are none). What is found has its influence
+    /// quantities: what the record says of them must not be looked for in memory again.
     pub(crate) fn take_supplied(
         &mut self,
         answer: &Answer,
         scene: &Scene<'_>,
         found: &mut Vec<Found>,
     ) {
-        self.attaching.take_supplied(answer, scene, found);
+        let mut attached = Vec::new();
+        self.attaching.take_supplied(answer, scene, &mut attached);
         for request in self.requests.answered(answer) {
             let (from, to) = (request.from, request.to);
             let sight = Sight {
@@ -239,6 +241,8 @@ impl Pairing {
                 found.push(missed(sample));
             }
         }
+        self.attach(found, scene);
+        found.append(&mut attached);
     }
 
     /// Makes every pair that can be made now.

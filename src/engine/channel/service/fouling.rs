@@ -3,12 +3,10 @@
 //! Readings before and after a cleaning tell fouling; what remains in a standard after it, at the
 //! same visit, tells drift (two errors, as in USGS Techniques and Methods 1-D3, from memory).
 
+use crate::channel::stepping::VISIT;
 use crate::event::{CheckPoint, Fouling, SawTooth};
 use crate::time::{Duration, Timestamp};
 use serde::{Deserialize, Serialize};
-
-/// A check this long after a cleaning still belongs to the same visit: a working day.
-const VISIT: Duration = Duration::from_seconds(12 * 3600);
 
 /// What the cleanings of one sensor have in common.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]

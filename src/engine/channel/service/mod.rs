@@ -28,10 +28,7 @@ use crate::setup::{ChannelSetup, WindowLength};
 use crate::time::Timestamp;
 use fouling::Cleanings;
 use serde::{Deserialize, Serialize};
-use std::collections::VecDeque;
 
-/// Services remembered of one sensor; the oldest of more is forgotten (the record has it).
-const HISTORY: usize = 32;
 /// An as-left reading counts at most as so many rows, and at least as its inverse: how sure it is,
 /// is a person's word.
 const HEAVIEST: f64 = 16.0;
@@ -39,25 +36,11 @@ const HEAVIEST: f64 = 16.0;
 /// What is known of the sensor in place.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub(crate) struct ServiceBook {
-    serial: Option<String>,
-    /// Newest last.
-    history: VecDeque<ServiceEntry>,
+    /// When it came in place, if that was told: what was done earlier was done to another one.
+    since: Option<Timestamp>,
+    /// The serial number of the newest service that told one, and when that was performed.
+    serial: Option<(String, Timestamp)>,
     cleanings: Cleanings,
-}
-
-/// One service.
-#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
-struct ServiceEntry {
-    order: String,
-    by: String,
-    act: Act,
-    performed: Timestamp,
-    /// Of the as-found readings, the error of largest size.
-    as_found: Option<f64>,
-    /// The same of the as-left readings.
-    as_left: Option<f64>,
-    en: Option<f64>,
-    certificate: Option<String>,
 }
 
 /// A service event on its way, with what belongs to its order.
@@ -80,8 +63,25 @@ pub(crate) struct Effect {
 }
 
 impl ServiceBook {
+    /// The book of a sensor that came in place then.
+    fn of_sensor_since(performed: Timestamp) -> Self {
+        Self {
+            since: Some(performed),
+            ..Self::default()
+        }
+    }
+
+    /// Whether what was performed then was done to this sensor.
+    fn is_about(&self, performed: Timestamp) -> bool {
+        self.since <= Some(performed)
+    }
+
     /// The problems of an event with the sensor that is known to be in place.
-    fn check_serial(&self, event: &ServiceEvent, problems: &mut Vec<Problem>) {
+    fn check_serial(&self, service: Service<'_>, problems: &mut Vec<Problem>) {
+        if !self.is_about(service.performed) {
+            return;
+        }
+        let event = service.event;
         let mut refuse = |value: &str, way_out: String| {
             problems.push(Problem {
                 field: "serial".to_owned(),
@@ -89,7 +89,8 @@ impl ServiceBook {
                 way_out,
             });
         };
-        match (event.act, &event.serial, &self.serial) {
+        let known = self.serial.as_ref().map(|(serial, _)| serial);
+        match (event.act, &event.serial, known) {
             (Act::Replaced, None, _) => refuse(
                 "",
                 "missing; the serial number of the sensor that is in place now".to_owned(),
@@ -112,24 +113,28 @@ impl ServiceBook {
         }
     }
 
-    fn note(&mut self, service: Service<'_>, comparison: Option<&Comparison>) {
-        let event = service.event;
-        if event.serial.is_some() {
-            self.serial.clone_from(&event.serial);
+    fn note_serial(&mut self, service: Service<'_>) {
+        let newest = self.serial.as_ref().map(|(_, performed)| *performed);
+        if let Some(serial) = &service.event.serial
+            && newest <= Some(service.performed)
+        {
+            self.serial = Some((serial.clone(), service.performed));
         }
-        if self.history.len() == HISTORY {
-            self.history.pop_front();
+    }
+
+    /// Takes note of a service of this sensor; fouling and drift apart, where its readings tell.
+    fn note(&mut self, service: Service<'_>) -> Option<Fouling> {
+        let Service {
+            event, performed, ..
+        } = service;
+        self.note_serial(service);
+        match event.act {
+            Act::Cleaned => self
+                .cleanings
+                .note(performed, &event.as_found, &event.as_left),
+            Act::Adjusted | Act::Calibrated => self.cleanings.check(performed, &event.as_found),
+            Act::Replaced => None,
         }
-        self.history.push_back(ServiceEntry {
-            order: service.order.to_owned(),
-            by: event.by.clone(),
-            act: event.act,
-            performed: service.performed,
-            as_found: largest(&event.as_found),
-            as_left: largest(&event.as_left),
-            en: comparison.map(|comparison| comparison.en),
-            certificate: event.certificate.clone(),
-        });
     }
 }
 
@@ -150,7 +155,7 @@ impl Channel {
         now: Timestamp,
     ) -> Vec<Problem> {
         let mut problems = Vec::new();
-        self.service.check_serial(service.event, &mut problems);
+        self.service.check_serial(service, &mut problems);
         if self.is_beyond_window(service.performed, setup, now) {
             problems.push(Problem {
                 field: "at".to_owned(),
@@ -186,8 +191,7 @@ impl Channel {
         let Service {
             event, performed, ..
         } = service;
-        // A step at that very time may have ended the stretch before the service was told.
-        let ends = self.stretch.began() <= Some(performed);
+        let ends = self.is_ended_by(performed);
         let before = self.model_before(performed, scene).filter(|_| ends);
         let comparison = before.as_ref().and_then(|judgement| {
             validation::compare(judgement, performed, &event.as_found, scene)
@@ -197,29 +201,23 @@ impl Channel {
         }
         let opening = opening(service, before.as_ref(), scene);
         let replaced = event.act == Act::Replaced;
-        if replaced {
-            self.service = ServiceBook::default();
+        if replaced && ends {
+            self.service = ServiceBook::of_sensor_since(performed);
             self.checks = Checks::default();
+            self.outlook.forget_as_found();
         }
-        let fouling = match event.act {
-            Act::Cleaned => {
-                let cleanings = &mut self.service.cleanings;
-                cleanings.note(performed, &event.as_found, &event.as_left)
-            }
-            Act::Adjusted | Act::Calibrated => {
-                self.service.cleanings.check(performed, &event.as_found)
-            }
-            Act::Replaced => None,
-        };
-        self.service.note(service, comparison.as_ref());
-        self.propose_interval(service, scene);
+        let mut fouling = None;
+        if self.service.is_about(performed) {
+            fouling = self.service.note(service);
+            self.propose_interval(service, scene);
+        }
         if ends {
             let carries = self.carries(replaced, performed);
             let why = format!("the sensor was {} at {performed}", event.act.word());
             self.close_stretch_with(performed, carries, &opening, &why, scene, report);
+            self.alarms
+                .serve(replaced, &why_cleared(service), scene, report);
         }
-        self.alarms
-            .serve(replaced, &why_cleared(service), scene, report);
         Effect {
             stretch: ends.then(|| self.stretch.number()),
             comparison,
@@ -233,16 +231,12 @@ impl Channel {
     fn propose_interval(&mut self, service: Service<'_>, scene: &Scene<'_>) {
         let ServiceEvent { act, as_found, .. } = service.event;
         let found = largest(as_found).zip(scene.setup.max_permissible_error);
-        match (act, found) {
-            (Act::Replaced, _) => self.outlook.note_as_found(None),
-            (Act::Adjusted | Act::Calibrated, Some((error, limit))) => {
-                self.outlook.note_as_found(Some(AsFound {
-                    at: service.performed,
-                    error,
-                    interval: Staircase::of(error, limit),
-                }));
-            }
-            (Act::Cleaned | Act::Adjusted | Act::Calibrated, _) => {}
+        if let (Act::Adjusted | Act::Calibrated, Some((error, limit))) = (act, found) {
+            self.outlook.note_as_found(AsFound {
+                at: service.performed,
+                error,
+                interval: Staircase::of(error, limit),
+            });
         }
     }
 
@@ -255,8 +249,8 @@ impl Channel {
         report: &mut Report<'_>,
     ) -> Option<u32> {
         let performed = service.performed;
-        let ends = self.stretch.began() <= Some(performed);
-        if !ends || self.is_beyond_window(performed, scene.setup, scene.now) {
+        if self.is_beyond_window(performed, scene.setup, scene.now) || !self.is_ended_by(performed)
+        {
             return None;
         }
         let carries = self.carries(false, performed);
@@ -267,6 +261,16 @@ impl Channel {
         );
         self.close_stretch_with(performed, carries, &[], &why, scene, report);
         Some(self.stretch.number())
+    }
+
+    /// Whether a service performed then ends the present stretch, rather than an earlier one. Where a
+    /// step that it caused was found before anybody told, the step is taken back first: the stretch
+    /// before it is the one that the service ends, and validates.
+    fn is_ended_by(&mut self, performed: Timestamp) -> bool {
+        if self.explains_step(performed) {
+            self.take_back_step();
+        }
+        self.stretch.began() <= Some(performed)
     }
 
     /// What the next stretch may know: of another sensor nothing, of the same one its noise, as it

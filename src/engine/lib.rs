@@ -8,7 +8,7 @@
 //! Modules in reading order:
 //! - [`time`]: timestamps and durations in integer nanoseconds
 //! - [`math`]: the one door to inexact float functions; [`quantile`]: Student's t and the normal
-//!   distribution over it
+//!   distribution over it; `median`
 //! - [`setup`]: the configuration as the engine sees it, already checked
 //! - [`event`]: `Input` and `Output`, the whole vocabulary
 //! - [`fit`]: numbers only: factors, windows, the degree, the published mean
@@ -29,6 +29,7 @@ pub mod fit;
 pub mod fleet;
 mod gate;
 pub mod math;
+mod median;
 mod notice;
 pub mod quantile;
 mod report;

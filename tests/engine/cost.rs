@@ -13,7 +13,10 @@ fn a_dense_stream_is_not_judged_at_every_pair() {
     let pairs = 8000_u32;
     let mut noise = Noise::new(71, 0.0);
     let errors: Vec<f64> = (0..pairs).map(|_| 10.0 + noise.draw()).collect();
-    let setup = channel("a", 0);
+    let mut setup = channel("a", 0);
+    // With both declared, every reading could be stuck.
+    setup.noise = 1.0;
+    setup.resolution = 0.1;
     let mut fit = Fit::new(setup.fit);
     let mut engine = engine(node(
         Clock::Readings,

@@ -109,6 +109,10 @@ fn a_channel_without_a_fit_has_nothing_but_its_indications() {
     assert!(!outputs.iter().any(|it| matches!(it, Output::Correction(_))));
     let standing = &engine.standing().channels[0];
     assert_eq!(standing.rung, Rung::RawOnly);
+    // Not only that nothing is known: why not.
+    assert_eq!(standing.because, Some(Cause::ReferenceStale));
+    let (engine, _) = run(setup(), 3, |_| 2.0, |_| false);
+    let standing = &engine.standing().channels[0];
     assert_eq!(standing.because, Some(Cause::NothingLearned));
 }
 
@@ -116,16 +120,16 @@ fn a_channel_without_a_fit_has_nothing_but_its_indications() {
 /// not said again as if it could still be held.
 #[test]
 fn a_stretch_that_ends_in_trouble_holds_nothing() {
-    let (mut engine, before) = run(setup(), 120, |_| 2.0, |hour| hour < 100);
+    let (mut engine, before) = run(setup(), 110, |_| 2.0, |hour| hour < 100);
     assert!(!held(&before).is_empty());
     let cleaned = Input::Order(Box::new(Order {
-        received: at(120.0 * EVERY),
+        received: at(110.0 * EVERY),
         id: "1".to_owned(),
         reply_to: None,
         wish: Wish::Service(ServiceEvent {
             by: "night shift".to_owned(),
             about: About::Channel("a".to_owned()),
-            at: Some(at(118.5 * EVERY)),
+            at: Some(at(108.5 * EVERY)),
             act: Act::Cleaned,
             as_found: Vec::new(),
             as_left: Vec::new(),
@@ -197,6 +201,7 @@ fn a_correction_is_never_larger_than_permitted() {
 #[test]
 fn a_locked_out_screen_holds_the_correction() {
     let mut channel = setup();
+    channel.steps = None;
     channel.fit.window = WindowLength::Pairs(512);
     let mut engine = engine(node(
         Clock::Readings,

@@ -21,32 +21,37 @@ pub(crate) struct Reentered {
     pub(crate) taken_back: u32,
 }
 
+/// How a stretch ends, and what the next one begins with.
+#[derive(Clone, Copy)]
+pub(crate) struct Closing<'a> {
+    /// When the next one begins.
+    pub(crate) at: Timestamp,
+    /// From when on it takes pairs that have come; not earlier than that.
+    pub(crate) from: Timestamp,
+    pub(crate) carries: Carries,
+    /// Pairs that nobody had made before: as-left readings.
+    pub(crate) opening: &'a [Pair],
+    /// Ends the sentence "the correction no longer holds: …" where the next one cannot replace it
+    /// yet.
+    pub(crate) why: &'a str,
+}
+
 impl Channel {
-    /// Ends the stretch at `at`: the pairs from `at` on begin the next one. `why` ends the sentence
-    /// "the correction no longer holds: …" where the new stretch cannot replace it yet.
+    /// Ends the stretch.
     pub(crate) fn close_stretch(
         &mut self,
-        at: Timestamp,
-        carries: Carries,
-        why: &str,
+        closing: &Closing<'_>,
         scene: &Scene<'_>,
         report: &mut Report<'_>,
     ) -> Reentered {
-        self.close_stretch_with(at, carries, &[], why, scene, report)
-    }
-
-    /// The same, where the next stretch begins with pairs that nobody had made before: as-left
-    /// readings.
-    pub(crate) fn close_stretch_with(
-        &mut self,
-        at: Timestamp,
-        carries: Carries,
-        opening: &[Pair],
-        why: &str,
-        scene: &Scene<'_>,
-        report: &mut Report<'_>,
-    ) -> Reentered {
-        let since = self.recent.take_for_next(at, self.stretch.number());
+        let &Closing {
+            at,
+            from,
+            carries,
+            opening,
+            why,
+        } = closing;
+        let since = self.recent.take_for_next(from, self.stretch.number());
         self.stretch = self.stretch.next(carries, scene.setup);
         self.stepped = None;
         self.breaks.begin_stretch(match carries {
@@ -135,6 +140,28 @@ mod tests {
         level + if minute % 2 == 0 { 1.0 } else { -1.0 }
     }
 
+    /// A stretch ends at a minute, and the next one takes all that came since.
+    fn close(
+        channel: &mut Channel,
+        stage: &mut Stage,
+        minute: i64,
+        carries: Carries,
+        why: &str,
+    ) -> (Reentered, Vec<Output>) {
+        let mut reentered = Reentered::default();
+        let said = stage.act(minute_of(63), |scene, report| {
+            let closing = Closing {
+                at: minute_of(minute),
+                from: minute_of(minute),
+                carries,
+                opening: &[],
+                why,
+            };
+            reentered = channel.close_stretch(&closing, scene, report);
+        });
+        (reentered, said)
+    }
+
     /// A channel that has seen 60 pairs about zero and then `after` about 50. With 5 of them the
     /// screen locks out.
     fn stepped(stage: &mut Stage, after: i64) -> Channel {
@@ -154,10 +181,7 @@ mod tests {
         let mut channel = stepped(&mut stage, 4);
         assert_eq!(channel.stretch.pairs(), 60, "the gate keeps the others out");
         let carries = Carries::Noise { latest: 4 };
-        let mut reentered = Reentered::default();
-        let said = stage.act(minute_of(63), |scene, report| {
-            reentered = channel.close_stretch(minute_of(60), carries, "it stepped", scene, report);
-        });
+        let (reentered, said) = close(&mut channel, &mut stage, 60, carries, "it stepped");
         let expected = Reentered {
             pairs: 4,
             taken_back: 4,
@@ -193,9 +217,7 @@ mod tests {
         let mut stage = Stage::new(channel_setup());
         let mut channel = stepped(&mut stage, 0);
         assert!(channel.publishing.correction().is_some());
-        let said = stage.act(minute_of(60), |scene, report| {
-            channel.close_stretch(minute_of(60), Carries::Nothing, "replaced", scene, report);
-        });
+        let (_, said) = close(&mut channel, &mut stage, 60, Carries::Nothing, "replaced");
         assert!(matches!(
             &said[..],
             [Output::Withdrawn { why, .. }] if why.ends_with("no longer holds: replaced")
@@ -210,9 +232,7 @@ mod tests {
         let mut stage = Stage::new(channel_setup());
         let mut channel = stepped(&mut stage, 0);
         let carries = Carries::Noise { latest: 10 };
-        let said = stage.act(minute_of(60), |scene, report| {
-            channel.close_stretch(minute_of(50), carries, "cleaned", scene, report);
-        });
+        let (_, said) = close(&mut channel, &mut stage, 50, carries, "cleaned");
         assert_eq!(channel.stretch.pairs(), 10);
         assert_eq!(channel.stretch.fit().window().oldest(), Some(minute_of(50)));
         assert!(!said.iter().any(|output| matches!(output, Output::Pair(_))));

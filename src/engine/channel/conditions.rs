@@ -63,7 +63,7 @@ impl ChannelAlarms {
         let setup = scene.setup;
         if let Some(limit) = setup.max_permissible_error {
             let condition = beyond(judgement.error, limit, setup.alarms.deadband * judgement.u);
-            let said = error_limit(judgement, limit, setup);
+            let said = || error_limit(judgement, limit, setup);
             let step = self
                 .error_limit
                 .evaluate(condition, scene.now, delays(setup));
@@ -80,7 +80,7 @@ impl ChannelAlarms {
                 Condition::Holds if !significant => Condition::Between,
                 other => other,
             };
-            let said = drift_rate(judgement, limit, setup);
+            let said = || drift_rate(judgement, limit, setup);
             let step = self
                 .drift_rate
                 .evaluate(condition, scene.now, delays(setup));
@@ -108,7 +108,7 @@ impl ChannelAlarms {
         let step = self
             .time_to_limit
             .evaluate(Condition::Gone, scene.now, at_once);
-        let said = limit_ahead(why, scene);
+        let said = || limit_ahead(why, scene);
         tell(AlarmKind::TimeToLimit, step, said, scene, report);
     }
 
@@ -135,7 +135,7 @@ impl ChannelAlarms {
         let step = self
             .time_to_limit
             .evaluate(condition, scene.now, delays(scene.setup));
-        let said = limit_ahead(forecast, scene);
+        let said = || limit_ahead(forecast, scene);
         tell(AlarmKind::TimeToLimit, step, said, scene, report);
     }
 
@@ -160,7 +160,7 @@ impl ChannelAlarms {
         let step = self
             .screen_locked_out
             .evaluate(condition, scene.now, delays);
-        let said = locked(innovation, scene);
+        let said = || locked(innovation, scene);
         tell(AlarmKind::ScreenLockedOut, step, said, scene, report);
     }
 
@@ -174,7 +174,7 @@ impl ChannelAlarms {
         if silent > limit && !self.data_gap.is_raised() && !self.stuck.is_raised() {
             let delays = Delays { on: 1, off: 1 };
             let step = self.data_gap.evaluate(Condition::Holds, scene.now, delays);
-            let said = data_gap(silent, limit);
+            let said = || data_gap(silent, limit);
             tell(AlarmKind::DataGap, step, said, scene, report);
         }
     }
@@ -193,7 +193,7 @@ impl ChannelAlarms {
             let step = self
                 .data_gap
                 .evaluate(condition, scene.now, delays(scene.setup));
-            let said = data_gap(Duration::ZERO, limit);
+            let said = || data_gap(Duration::ZERO, limit);
             tell(AlarmKind::DataGap, step, said, scene, report);
         }
     }
@@ -384,14 +384,17 @@ fn within_horizon(ahead: Duration, drifts: bool, setup: &ChannelSetup) -> Condit
     }
 }
 
+/// Says that an alarm moved, if it did. `said` is asked for only then: most evaluations move
+/// nothing.
 pub(super) fn tell(
     kind: AlarmKind,
     step: Option<Move>,
-    said: Said,
+    said: impl FnOnce() -> Said,
     scene: &Scene<'_>,
     report: &mut Report<'_>,
 ) {
     let Some(step) = step else { return };
+    let said = said();
     let text = if step.state == AlarmState::Normal {
         said.cleared
     } else {

@@ -39,6 +39,7 @@ impl Channel {
 mod tests {
     use super::*;
     use crate::channel::Pair;
+    use crate::channel::closing::Closing;
     use crate::channel::stretch::Carries;
     use crate::channel::testing::{Stage, channel_setup};
     use crate::event::{Output, RefusedReason};
@@ -153,8 +154,14 @@ mod tests {
             distrust(&mut channel, &mut stage, 70, 74);
             take(&mut channel, &mut stage, 74..80, 0.0);
             let said = stage.act(minute_of(80), |scene, report| {
-                let carries = Carries::Noise { latest: 16 };
-                channel.close_stretch(minute_of(60), carries, "cleaned", scene, report);
+                let closing = Closing {
+                    at: minute_of(60),
+                    from: minute_of(60),
+                    carries: Carries::Noise { latest: 16 },
+                    opening: &[],
+                    why: "cleaned",
+                };
+                channel.close_stretch(&closing, scene, report);
             });
             assert_eq!((channel.stretch.number(), channel.stretch.pairs()), (2, 16));
             assert_eq!(struck(&said), []);

@@ -43,17 +43,20 @@ pub(super) fn judged(published: &Published, reach: impl Fn(&Curve) -> f64) -> (f
 
 /// Largest |ê|/u at the newest pair over all corners of what the fit has seen: a correction that
 /// is small in the middle may be large at an end.
-pub(super) fn largest_significance(published: &Published, rest: f64) -> f64 {
-    corners(published)
-        .into_iter()
-        .map(|(level, influences)| significance(&published.at_level(level, influences), rest))
+pub(super) fn largest_significance(published: &Published, corners: &[Corner], rest: f64) -> f64 {
+    corners
+        .iter()
+        .map(|&(level, influences)| significance(&published.at_level(level, influences), rest))
         .fold(0.0, f64::max)
 }
 
+/// A level and the influence quantities with it.
+pub(super) type Corner = (f64, [f64; MAX_INFLUENCES]);
+
 /// The ends and the centres of what the fit has seen, as far as the mean depends on it.
-pub(super) fn corners(published: &Published) -> Vec<(f64, [f64; MAX_INFLUENCES])> {
+pub(super) fn corners(published: &Published) -> Vec<Corner> {
     let centre = published.terms.centre;
-    let mut corners: Vec<(f64, [f64; MAX_INFLUENCES])> = levels(published)
+    let mut corners: Vec<Corner> = levels(published)
         .into_iter()
         .map(|level| (level, centre.influences))
         .collect();
@@ -62,7 +65,7 @@ pub(super) fn corners(published: &Published) -> Vec<(f64, [f64; MAX_INFLUENCES])
         let Some((lowest, highest)) = influences[place] else {
             continue;
         };
-        let moved = |&(level, mut at): &(f64, [f64; MAX_INFLUENCES]), value| {
+        let moved = |&(level, mut at): &Corner, value| {
             at[place] = value;
             (level, at)
         };
@@ -112,7 +115,8 @@ mod tests {
         let (level, curve) = judged(&published, reach);
         assert_eq!(level, 28.0);
         assert!((curve.coefficients[0] - 0.9).abs() < 1e-12);
-        assert!((largest_significance(&published, 0.0) - 50.0).abs() < 1e-9);
+        let most = largest_significance(&published, &corners(&published), 0.0);
+        assert!((most - 50.0).abs() < 1e-9);
         // Of equals the middle.
         published.span = vec![0.0];
         assert_eq!(judged(&published, |_| 1.0).0, 20.0);

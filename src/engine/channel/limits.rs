@@ -44,13 +44,13 @@ impl ChannelAlarms {
         }
         let size = setup.max_correction.map(|limit| {
             let deadband = setup.alarms.deadband * judgement.u;
-            let said = correction_size(judgement, limit, &setup.unit);
-            (beyond(judgement.error, limit, deadband), said)
+            let said: Wording = correction_size;
+            (beyond(judgement.error, limit, deadband), limit, said)
         });
         let rate = setup.max_correction_rate.map(|limit| {
             let deadband = setup.alarms.deadband * judgement.slope_u;
-            let said = correction_rate(judgement, limit, &setup.unit);
-            (beyond(judgement.slope, limit, deadband), said)
+            let said: Wording = correction_rate;
+            (beyond(judgement.slope, limit, deadband), limit, said)
         });
         // Of both the one that speaks louder for the alarm.
         let loudness = |condition: Condition| match condition {
@@ -59,7 +59,9 @@ impl ChannelAlarms {
             Condition::Gone => 0,
         };
         let both = [size, rate].into_iter().flatten().rev();
-        if let Some((condition, said)) = both.max_by_key(|(condition, _)| loudness(*condition)) {
+        let louder = both.max_by_key(|(condition, ..)| loudness(*condition));
+        if let Some((condition, limit, said)) = louder {
+            let said = || said(judgement, limit, &setup.unit);
             let step = self
                 .correction_limit
                 .evaluate(condition, scene.now, delays(setup));
@@ -67,6 +69,9 @@ impl ChannelAlarms {
         }
     }
 }
+
+/// What is said of a judgement and a limit in this unit.
+type Wording = fn(&Judgement, f64, &str) -> Said;
 
 fn correction_size(judgement: &Judgement, limit: f64, unit: &str) -> Said {
     let correction = readable(0.0 - judgement.error);

@@ -21,6 +21,7 @@ mod conformity;
 mod distrust;
 mod drafting;
 mod forecast;
+mod holding;
 mod judgement;
 mod ladder;
 mod levels;
@@ -161,11 +162,6 @@ impl Channel {
         self.wake
     }
 
-    /// Whether an indication only repeats what is kept out as stuck already.
-    pub(crate) fn is_stuck_at(&self, value: f64, setup: &ChannelSetup) -> bool {
-        self.checks.is_stuck_at(value, setup)
-    }
-
     /// Counts an indication that came in, before it is taken into its track; what does not pass is
     /// not taken.
     pub(crate) fn check_indication(&mut self, sample: &Sample, setup: &ChannelSetup) -> Flag {
@@ -175,7 +171,7 @@ impl Channel {
 
     /// Its own indication was kept out as stuck.
     pub(crate) fn keep_out(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
-        let stuck = self.checks.stuck(scene.setup);
+        let stuck = self.checks.stuck();
         self.alarms.stuck(stuck, scene, report);
     }
 
@@ -190,6 +186,7 @@ impl Channel {
         if scene.indications[scene.id.0 as usize].newest() == Some(sample.time) {
             self.alarms.heard(sample.time, scene, report);
         }
+        self.alarms.stuck(self.checks.stuck(), scene, report);
         if scene.setup.corrected_values
             && let Some(corrected) = self.publishing.correct(sample, scene)
         {
@@ -425,8 +422,7 @@ impl Channel {
         self.last_reference = self.last_reference.max(Some(pair.time));
         let scatter = self.stretch.scatter();
         let stuck = self.checks.take_pair(pair, scatter, scene.setup);
-        self.alarms
-            .stuck(self.checks.stuck(scene.setup), scene, report);
+        self.alarms.stuck(self.checks.stuck(), scene, report);
         if stuck.is_some() {
             telling::tell_fate(pair, stuck, scene, report);
             return;
@@ -437,7 +433,8 @@ impl Channel {
             let locked_out = self.stretch.is_locked_out();
             self.alarms
                 .screen(locked_out, innovation.value, scene, report);
-            self.checks.take_innovation(innovation, scene.setup);
+            self.checks
+                .take_innovation(innovation, taken.rejected.is_some(), scene.setup);
             self.alarms
                 .precision(self.checks.precision(), scene, report);
         }

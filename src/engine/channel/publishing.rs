@@ -18,16 +18,15 @@
 //! long when pairs stop. Young windows hold at least twice the mean time between pairs, so that a
 //! document outlives the wait for the next pair.
 
-use super::applying::{Acting, apply, at_level, judged_again};
+use super::applying::{Acting, apply, at_level};
 use super::drafting::Draft;
 use super::judgement::{Judgement, polynomial};
+use super::levels::Corner;
 use super::review::MOVED_PART;
-use super::{Scene, conformity, levels};
-use crate::event::{Cause, Corrected, Correction, Output, Rung, WindowSeen};
+use super::{Scene, levels};
+use crate::event::{Corrected, Correction, Output, WindowSeen};
 use crate::fit::Published;
-use crate::fit::basis::MAX_INFLUENCES;
 use crate::report::Report;
-use crate::setup::ChannelSetup;
 use crate::time::{Duration, Timestamp};
 use crate::track::Sample;
 use serde::{Deserialize, Serialize};
@@ -47,29 +46,26 @@ const NEGLIGIBLE: f64 = 1e-9;
 /// can't hide a difference of note between nine of them.
 const COMPARED: u32 = 8;
 
-/// While a correction is held, its u is looked at in as many parts of the time that is left.
-const HOLD_LOOKS: i64 = 16;
-
 /// The state of the station.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Publishing {
     /// Documents issued so far.
-    issued: u64,
+    pub(super) issued: u64,
     /// Whether the dead zone lets the correction through.
     applied: bool,
-    in_force: Option<InForce>,
+    pub(super) in_force: Option<InForce>,
 }
 
 /// The correction in force.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
-struct InForce {
-    correction: Box<Correction>,
+pub(super) struct InForce {
+    pub(super) correction: Box<Correction>,
     /// Part of u² that is the same at every instant.
-    rest_variance: f64,
+    pub(super) rest_variance: f64,
     /// What U has on top of k·u: |ĉ| while suppressed.
-    suppressed_size: f64,
+    pub(super) suppressed_size: f64,
     /// When to see next whether it should be renewed or withdrawn.
-    review: Timestamp,
+    pub(super) review: Timestamp,
 }
 
 impl Publishing {
@@ -152,13 +148,15 @@ impl Publishing {
         scene: &Scene<'_>,
         report: &mut Report<'_>,
     ) {
-        let size = levels::largest_significance(&judgement.published, judgement.rest_variance);
+        let published = &judgement.published;
+        let corners = levels::corners(published);
+        let size = levels::largest_significance(published, &corners, judgement.rest_variance);
         self.applied = size >= if self.applied { DROP_BELOW } else { APPLY_FROM };
-        let valid_until = valid_until(&judgement.published, scene);
+        let valid_until = valid_until(published, scene);
         let hidden = if self.applied {
             0.0
         } else {
-            largest(&judgement.published, scene.now, valid_until)
+            largest(published, &corners, scene.now, valid_until)
         };
         let candidate = Draft {
             issue_number: self.issued + 1,
@@ -171,7 +169,6 @@ impl Publishing {
         if candidate.valid_until <= scene.now {
             return;
         }
-        let corners = levels::corners(&judgement.published);
         if !self.differs(&candidate, hidden, &corners, scene) {
             return;
         }
@@ -200,51 +197,6 @@ impl Publishing {
             held.review = end;
         }
         now >= end
-    }
-
-    /// How long the correction in force may be held.
-    pub(crate) fn hold_limit(&self, setup: &ChannelSetup) -> Duration {
-        setup.hold_limit.unwrap_or_else(|| {
-            self.correction()
-                .map_or(Duration::ZERO, |document| horizon(&document.window, 4, 1.0))
-        })
-    }
-
-    /// Holds the correction in force until `until`: a document is issued when this begins, when its
-    /// cause changes, and each time that u has grown by a publish step.
-    pub(crate) fn hold(
-        &mut self,
-        until: Timestamp,
-        because: Cause,
-        scene: &Scene<'_>,
-        report: &mut Report<'_>,
-    ) {
-        let Some(held) = &mut self.in_force else {
-            return;
-        };
-        let candidate = held_correction(held, until, because, scene);
-        let before = &held.correction;
-        let u = candidate.standard_uncertainty;
-        let grown = u - before.standard_uncertainty > scene.setup.publish.step * u;
-        let outlived = scene.now >= renewal(before) && candidate.valid_until > before.valid_until;
-        let said = |document: &Correction| (document.rung, document.because);
-        let news = said(before) != said(&candidate) || grown || outlived;
-        if news && u.is_finite() {
-            self.issued += 1;
-            *held.correction = Correction {
-                issue_number: self.issued,
-                ..candidate
-            };
-            report.say(Output::Correction(held.correction.clone()));
-        }
-        let look = Duration(until.since(scene.now).0 / HOLD_LOOKS + 1);
-        let next = scene.now.plus(look).min(until);
-        let renewal = renewal(&held.correction);
-        held.review = if renewal > scene.now {
-            next.min(renewal)
-        } else {
-            next
-        };
     }
 
     /// Applies the correction in force to an indication.
@@ -281,7 +233,7 @@ impl Publishing {
         &self,
         candidate: &Correction,
         hidden: f64,
-        corners: &[(f64, [f64; MAX_INFLUENCES])],
+        corners: &[Corner],
         scene: &Scene<'_>,
     ) -> bool {
         let Some(in_force) = &self.in_force else {
@@ -321,57 +273,9 @@ impl Publishing {
 }
 
 /// When three quarters of a document's validity have passed.
-fn renewal(document: &Correction) -> Timestamp {
+pub(super) fn renewal(document: &Correction) -> Timestamp {
     let validity = document.valid_until.since(document.issued).0;
     document.issued.plus(Duration(validity / 4 * 3))
-}
-
-/// The correction in force as it is to be said while it is held: the same polynomial, with the
-/// uncertainty that it has by now. A polynomial's covariance grows with the distance from its
-/// pairs. A constant's does not; a slope of zero joins it, as uncertain as that of a straight line
-/// through the same window (12 u²/T², from the variance of evenly spread times).
-fn held_correction(
-    held: &InForce,
-    until: Timestamp,
-    because: Cause,
-    scene: &Scene<'_>,
-) -> Correction {
-    let mut document = (*held.correction).clone();
-    let covered = document.window.to.since(document.window.from).days();
-    if document.zero.len() == 1
-        && covered > 0.0
-        && let Some(variance) = document.covariance.first().and_then(|row| row.first())
-    {
-        let slope = 12.0 * variance / (covered * covered);
-        document.zero.push(0.0);
-        for row in &mut document.covariance {
-            row.insert(1, 0.0);
-        }
-        let mut row = vec![0.0; document.covariance.len() + 1];
-        row[1] = slope;
-        document.covariance.insert(1, row);
-    }
-    let (correction, variance) = judged_again(&document, scene.now);
-    let u = (variance + held.rest_variance).sqrt();
-    let expanded = document.coverage_factor * u + held.suppressed_size;
-    if !document.suppressed {
-        let conformity = conformity::state(correction, u, document.coverage_factor * u, scene);
-        document.zone = conformity.zone();
-        document.accepted = conformity.accepted();
-    }
-    Correction {
-        issued: scene.now,
-        valid_from: scene.now,
-        // A consumer that misses the next one must not hold it longer than permitted.
-        valid_until: until.min(scene.now.plus(scene.setup.publish.max_age)),
-        rung: Rung::Hold,
-        because: Some(because),
-        correction,
-        standard_uncertainty: u,
-        expanded_uncertainty: expanded,
-        corrected_zone: conformity::state(0.0, u, expanded, scene).zone(),
-        ..document
-    }
 }
 
 /// Which influence quantities are in a correction.
@@ -385,11 +289,7 @@ fn claimed(document: &Correction) -> Vec<bool> {
 
 /// Greatest difference of two corrections, from the issue of the second to the end of the first, at
 /// the ends and the centres of what the second has seen.
-fn greatest_difference(
-    held: &Correction,
-    candidate: &Correction,
-    corners: &[(f64, [f64; MAX_INFLUENCES])],
-) -> f64 {
+fn greatest_difference(held: &Correction, candidate: &Correction, corners: &[Corner]) -> f64 {
     instants(candidate.issued, held.valid_until)
         .flat_map(|time| {
             corners.iter().map(move |&(level, influences)| {
@@ -402,11 +302,10 @@ fn greatest_difference(
 
 /// Largest |ê| from `from` to `to`, and at the newest pair, at the ends and the centres of what the
 /// fit has seen.
-fn largest(published: &Published, from: Timestamp, to: Timestamp) -> f64 {
-    let corners = levels::corners(published);
+fn largest(published: &Published, corners: &[Corner], from: Timestamp, to: Timestamp) -> f64 {
     corners
-        .into_iter()
-        .map(|(level, influences)| published.at_level(level, influences))
+        .iter()
+        .map(|&(level, influences)| published.at_level(level, influences))
         .flat_map(|curve| {
             instants(from, to)
                 .chain([published.origin])
@@ -446,7 +345,7 @@ fn announced_share(published: &Published) -> f64 {
 }
 
 /// `share` of 1/`part` of the time covered, but at least twice the mean time between pairs.
-fn horizon(window: &WindowSeen, part: i64, share: f64) -> Duration {
+pub(super) fn horizon(window: &WindowSeen, part: i64, share: f64) -> Duration {
     let covered = window.to.since(window.from).0;
     let steps = i64::try_from(window.pairs.saturating_sub(1).max(1)).unwrap_or(i64::MAX);
     let between = covered / steps;

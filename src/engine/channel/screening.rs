@@ -13,6 +13,7 @@
 //!             as many fitting innovations in a row, or the window holds nothing from before
 //! ```
 
+use crate::median::upper_median;
 use crate::setup::ChannelSetup;
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
@@ -183,7 +184,7 @@ impl Screen {
         window_from: Option<Timestamp>,
         setup: &ChannelSetup,
     ) {
-        let centre = median(&mut self.noise.recent.clone());
+        let centre = upper_median(&mut self.noise.recent.clone());
         let scale = self.scale(centre, setup);
         let Some(locked) = &mut self.locked else {
             return;
@@ -206,7 +207,7 @@ impl Screen {
         }
         let recent = &self.noise.recent;
         let mut distances: Vec<f64> = recent.iter().map(|z| (z - centre).abs()).collect();
-        let robust = MAD_TO_SD * median(&mut distances);
+        let robust = MAD_TO_SD * upper_median(&mut distances);
         let scale = robust
             .max(setup.resolution / 12.0_f64.sqrt())
             .max(setup.noise);
@@ -231,15 +232,6 @@ impl Noise {
         self.recent.truncate(kept);
         self.place = 0;
     }
-}
-
-/// Middle value (the upper of two); 0 of nothing.
-fn median(values: &mut [f64]) -> f64 {
-    if values.is_empty() {
-        return 0.0;
-    }
-    let half = values.len() / 2;
-    *values.select_nth_unstable_by(half, f64::total_cmp).1
 }
 
 #[cfg(test)]
@@ -285,10 +277,10 @@ mod tests {
     #[test]
     fn hampel_score() {
         let values = [10.1, 10.2, 9.9, 10.0, 10.1, 14.0, 10.2];
-        let centre = median(&mut values.clone());
+        let centre = upper_median(&mut values.clone());
         assert_eq!(centre, 10.1);
         let mut distances = values.map(|value| (value - centre).abs());
-        let scale = MAD_TO_SD * median(&mut distances);
+        let scale = MAD_TO_SD * upper_median(&mut distances);
         assert!((scale / MAD_TO_SD - 0.1).abs() < 1e-12);
         assert!(((14.0 - centre) / scale - 26.3).abs() < 0.05);
         assert!((14.0 - centre) / scale > 3.0);

@@ -1,6 +1,7 @@
 //! What follows from a step: the stretch is closed, the step is told, an alarm is raised.
 
 use super::breaks::Finding;
+use super::closing::Closing;
 use super::screening::Innovation;
 use super::stretch::{Carries, Stretch};
 use super::{Channel, Scene};
@@ -54,13 +55,18 @@ impl Channel {
 
     fn take_step(&mut self, found: &Finding, scene: &Scene<'_>, report: &mut Report<'_>) {
         let ended_stretch = self.stretch.number();
-        let carries = Carries::Noise {
-            latest: found.pairs,
-        };
-        let why = "the sensor stepped";
         let mut ended = self.stretch.clone();
         ended.rewind(found.first_after, &self.recent, scene.setup);
-        let reentered = self.close_stretch(found.first_after, carries, why, scene, report);
+        let closing = Closing {
+            at: found.first_after,
+            from: found.first_after,
+            carries: Carries::Noise {
+                latest: found.pairs,
+            },
+            opening: &[],
+            why: "the sensor stepped",
+        };
+        let reentered = self.close_stretch(&closing, scene, report);
         let latest = found.latest;
         self.stepped = Some(Box::new(Stepped { ended, latest }));
         let step = Step {
@@ -95,7 +101,7 @@ impl Channel {
     }
 
     /// A service explains the step that began the present stretch: the one before goes on, for the
-    /// service to end. What came since waits in `recent` for the stretch that follows.
+    /// service to end. What came since the step waits in `recent` for the stretch that follows.
     pub(super) fn take_back_step(&mut self) {
         if let Some(step) = self.stepped.take() {
             self.stretch = self.stretch.taken_over_by(step.ended);

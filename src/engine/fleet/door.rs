@@ -194,17 +194,14 @@ impl Fleet {
         }))
     }
 
-    /// Whether an indication can be true: not a repetition of what counts as stuck, and no change
-    /// faster than the measurand makes.
+    /// Whether an indication can be true: no change faster than the measurand makes. (A repetition of
+    /// what counts as stuck is heard, and kept out afterwards.)
     fn admit_alive(&self, reading: &Reading) -> Result<(), RefusedReason> {
         let Source::Indication(id) = reading.source else {
             return Ok(());
         };
         let index = id.0 as usize;
         let setup = &self.setup.channels[index];
-        if self.channels[index].is_stuck_at(reading.value, setup) {
-            return Err(RefusedReason::Stuck);
-        }
         let limit = setup.screening.max_rate.filter(|_| setup.screening.enabled);
         let jumps = limit.and_then(|limit| {
             let track = &self.indications[index];

@@ -61,14 +61,24 @@ impl Chart {
 
     /// The arm above `h`; the longer-lasting of two.
     pub(super) fn signal(&self, h: f64) -> Option<Signal> {
-        [(true, self.up), (false, self.down)]
-            .into_iter()
-            .filter(|(_, arm)| arm.sum > h)
-            .map(|(up, arm)| Signal {
-                up,
-                readings: arm.readings,
-            })
+        let arms = [true, false].map(|up| self.signal_of(up, h));
+        arms.into_iter()
+            .flatten()
             .max_by_key(|signal| signal.readings)
+    }
+
+    /// The same of one arm.
+    pub(super) fn signal_of(&self, up: bool, h: f64) -> Option<Signal> {
+        let arm = if up { self.up } else { self.down };
+        (arm.sum > h).then_some(Signal {
+            up,
+            readings: arm.readings,
+        })
+    }
+
+    /// Starts one arm anew.
+    pub(super) fn forget(&mut self, up: bool) {
+        *(if up { &mut self.up } else { &mut self.down }) = Arm::default();
     }
 }
 

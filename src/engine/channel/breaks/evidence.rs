@@ -7,6 +7,7 @@ use crate::channel::recent::{Recent, Remembered};
 use crate::channel::stretch::{Stretch, row};
 use crate::fit::Row;
 use crate::fit::ahead::Ahead;
+use crate::median::upper_median;
 use crate::quantile;
 use crate::setup::ChannelSetup;
 use crate::time::Timestamp;
@@ -61,7 +62,9 @@ struct Rest {
     row: Row,
     /// As it is.
     raw: f64,
-    /// As far as it counts.
+    /// As far as it counts for when the step was: an outlier beyond both levels is clipped.
+    shape: f64,
+    /// As far as it counts for the level after the step.
     residual: f64,
 }
 
@@ -133,6 +136,7 @@ impl Question<'_> {
             Rest {
                 row,
                 raw: residual,
+                shape: residual,
                 residual,
             }
         };
@@ -143,9 +147,14 @@ impl Question<'_> {
         rests.reverse();
         let mut after: Vec<Rest> = after.iter().map(rest).collect();
         let reach = REACH * self.known.sd.max(ahead.residual_sd);
-        let centre = median(&after);
+        let mut levels: Vec<f64> = after.iter().map(|rest| rest.raw).collect();
+        let centre = upper_median(&mut levels);
         for rest in &mut after {
-            rest.residual = rest.residual.clamp(centre - reach, centre + reach);
+            rest.residual = rest.raw.clamp(centre - reach, centre + reach);
+            // Where the signal began early, pairs from before the step are among these. Drawn
+            // towards its level they would move it.
+            let levels = (centre.min(0.0), centre.max(0.0));
+            rest.shape = rest.raw.clamp(levels.0 - reach, levels.1 + reach);
         }
         rests.append(&mut after);
         rests
@@ -161,7 +170,7 @@ impl Question<'_> {
             .collect();
         let residuals: Vec<f64> = rests
             .iter()
-            .map(|rest| rest.residual * rest.row.weight.sqrt())
+            .map(|rest| rest.shape * rest.row.weight.sqrt())
             .collect();
         Series::new(times, &residuals, self.known.phi, self.known.unit)
     }
@@ -173,14 +182,4 @@ fn lasts(after: &[Rest], size: f64) -> bool {
     let is_there = |rest: &&Rest| rest.raw / size > 0.5;
     let there = after.iter().filter(is_there).count();
     3 * there >= 2 * after.len() && after.last().is_some_and(|newest| is_there(&newest))
-}
-
-/// Middle value (the upper of two); 0 of nothing.
-fn median(rests: &[Rest]) -> f64 {
-    let mut values: Vec<f64> = rests.iter().map(|rest| rest.residual).collect();
-    if values.is_empty() {
-        return 0.0;
-    }
-    let half = values.len() / 2;
-    *values.select_nth_unstable_by(half, f64::total_cmp).1
 }

@@ -6,8 +6,9 @@
 //!         ┌───────────────────── look (evidence): mean after the change against what the largest
 //!         │                      model from before it expects, and against a bend
 //!         ▼                               │
-//!   a step: the stretch is closed         ├─▶ not yet: look again with a fifth more pairs
-//!   at the change time                    └─▶ no: evidence of drift; the chart starts anew
+//!   a step: the stretch is closed         ├─▶ not yet: look again with a fifth more pairs, unless
+//!   at the change time                    │   the other arm signals or the screen locks out
+//!                                         └─▶ no: evidence of drift; the chart starts anew
 //! ```
 //!
 //! The chart costs the same for every pair; looks happen at signals only.
@@ -47,8 +48,6 @@ pub(super) struct Breaks {
     /// Times of the newest pairs that the chart took, to know where an arm left zero.
     times: VecDeque<Timestamp>,
     pending: Option<Pending>,
-    /// Signals that turned out to be drift, in this stretch.
-    drifts: u64,
 }
 
 /// A signal that waits for more pairs.
@@ -110,17 +109,19 @@ impl Breaks {
         found
     }
 
-    /// The signal that waits, with the newest pair counted; a new one if none does.
+    /// The signal that waits, with the newest pair counted; a new one if none does, or if what
+    /// happens meanwhile speaks louder: the screen locks out, or the other arm signals.
     fn follow(&mut self, locks_out: Option<(bool, u32)>) -> Option<Pending> {
-        if let Some(pending) = &mut self.pending {
-            pending.pairs += 1;
-        } else {
-            let signal = self.chart.signal(DECISION_INTERVAL);
-            let (up, pairs) = match (signal, locks_out) {
-                (Some(signal), _) => (signal.up, signal.readings.min(PATIENCE)),
-                (None, Some(run)) => run,
-                (None, None) => return None,
-            };
+        let waits = self.pending.map(|pending| pending.up);
+        let signal = match waits {
+            Some(up) => self.chart.signal_of(!up, DECISION_INTERVAL),
+            None => self.chart.signal(DECISION_INTERVAL),
+        };
+        let signal = signal.map(|signal| (signal.up, signal.readings.min(PATIENCE)));
+        if let Some((up, pairs)) = signal.or(locks_out) {
+            if waits == Some(!up) {
+                self.chart.forget(!up);
+            }
             let place = self.times.len().saturating_sub(pairs as usize);
             self.pending = Some(Pending {
                 up,
@@ -128,6 +129,8 @@ impl Breaks {
                 pairs,
                 next_look: pairs,
             });
+        } else if let Some(pending) = &mut self.pending {
+            pending.pairs += 1;
         }
         self.pending
     }
@@ -140,7 +143,6 @@ impl Breaks {
         if pending.pairs >= PATIENCE {
             self.pending = None;
             self.chart = Chart::default();
-            self.drifts += 1;
         } else {
             pending.next_look = pending.pairs + 1 + pending.pairs / MORE;
         }
@@ -161,5 +163,62 @@ impl Breaks {
             noise,
             ..Self::default()
         };
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::channel::Channel;
+    use crate::channel::pairing::Pair;
+    use crate::channel::testing::{Stage, channel_setup};
+    use crate::event::Output;
+    use crate::setup::WindowLength;
+    use crate::time::Duration;
+
+    /// Signs of the steps that are told, with the number of the pair that told it, of errors a
+    /// minute apart.
+    fn told(errors: impl IntoIterator<Item = f64>) -> Vec<(usize, bool)> {
+        let mut setup = channel_setup();
+        setup.fit.window = WindowLength::Pairs(512);
+        let mut stage = Stage::new(setup);
+        let mut channel = Channel::new(&stage.setup, 0);
+        let mut steps = Vec::new();
+        for (index, error) in errors.into_iter().enumerate() {
+            let minutes = i64::try_from(index).expect("few pairs");
+            let time = Timestamp(0).plus(Duration::from_seconds(60 * minutes));
+            let said = stage.act(time, |scene, report| {
+                channel.take_pair(&Pair::at(time, 7.0 + error, 7.0), scene, report);
+            });
+            steps.extend(said.iter().filter_map(|it| match it {
+                Output::Step(step) => Some((index, step.size > 0.0)),
+                _ => None,
+            }));
+        }
+        steps
+    }
+
+    /// Noise of about ±1 without a generator.
+    fn noise(index: u32) -> f64 {
+        2.0 * ((f64::from(index) * 0.618_033_988_749_895).fract() - 0.5)
+    }
+
+    /// A shift too small to be confirmed signals and waits; the step that follows on the other side
+    /// is found while it does.
+    #[test]
+    fn a_signal_that_waits_hides_no_step() {
+        let errors = (0..340_u32).map(|index| {
+            let level = match index {
+                0..280 => 0.0,
+                280..300 => 0.9,
+                _ => -4.0,
+            };
+            level + noise(index)
+        });
+        let steps = told(errors);
+        assert!(
+            matches!(steps[..], [(found, false)] if (302..312).contains(&found)),
+            "{steps:?}"
+        );
     }
 }

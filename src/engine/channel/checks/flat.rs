@@ -36,41 +36,49 @@ pub(super) struct Flat {
     newest: Option<(f64, Timestamp)>,
     /// Equal predecessors of it; counted no further than to failing.
     repeats: u32,
+    /// The repeats with which it failed, if it has.
+    failed: Option<u32>,
 }
 
 impl Flat {
-    /// Takes an indication. One that is older than the newest passes: it ends no run and begins
-    /// none.
+    /// Takes an indication. One that is not newer than the newest counts for nothing: it ends no
+    /// run and lengthens none. Told again, the newest has the flag that it had.
     pub(super) fn take(&mut self, time: Timestamp, value: f64, setup: &ChannelSetup) -> Flag {
-        let Some(limits) = limits(setup) else {
-            return Flag::Pass;
-        };
+        let equals = |held: f64| held.total_cmp(&value).is_eq();
         match self.newest {
-            Some((_, newest)) if time < newest => return Flag::Pass,
-            Some((held, _)) if held.total_cmp(&value).is_eq() => {
-                self.repeats = (self.repeats + 1).min(limits.fail);
-            }
+            Some((held, newest)) if time == newest && equals(held) => return self.flag(setup),
+            Some((_, newest)) if time <= newest => return Flag::Pass,
+            Some((held, _)) if equals(held) => self.repeats = self.repeats.saturating_add(1),
             _ => self.repeats = 0,
         }
         self.newest = Some((value, time));
-        flag(self.repeats, limits)
-    }
-
-    /// Whether this value would only repeat one that has failed.
-    pub(super) fn has_failed_at(&self, value: f64, setup: &ChannelSetup) -> bool {
-        let held = self.newest.map(|(held, _)| held);
-        self.failed(setup).is_some() && held.is_some_and(|held| held.total_cmp(&value).is_eq())
+        let flag = self.flag(setup);
+        self.failed = (flag == Flag::Fail).then(|| {
+            let fail = limits(setup).map_or(self.repeats, |limits| limits.fail);
+            self.repeats = self.repeats.min(fail);
+            fail
+        });
+        flag
     }
 
     /// What has failed, if the newest indication has.
-    pub(super) fn failed(&self, setup: &ChannelSetup) -> Option<Stuck> {
-        let limits = limits(setup)?;
+    pub(super) fn failed(&self) -> Option<Stuck> {
         let (value, _) = self.newest?;
-        (self.repeats >= limits.fail).then_some(Stuck::Repeats {
+        self.failed.map(|limit| Stuck::Repeats {
             value,
             times: self.repeats + 1,
-            limit: limits.fail + 1,
+            limit: limit + 1,
         })
+    }
+
+    /// The flag of the newest. The counts that hold cost hundreds of times what a comparison does,
+    /// and few values repeat their predecessor often enough to ask for them.
+    fn flag(&self, setup: &ChannelSetup) -> Flag {
+        let told = setup.screening.stuck.unwrap_or(LEAST);
+        if self.repeats < told.suspect.min(told.fail) {
+            return Flag::Pass;
+        }
+        limits(setup).map_or(Flag::Pass, |limits| flag(self.repeats, limits))
     }
 }
 
@@ -192,23 +200,22 @@ mod tests {
         let setup = setup(1.0, 0.1);
         let mut flat = Flat::default();
         for time in 0..8 {
-            assert!(flat.failed(&setup).is_none());
+            assert!(flat.failed().is_none());
             flat.take(Timestamp(time), 5.0, &setup);
         }
         let times = 8;
         let limit = 8;
         let value = 5.0;
         assert_eq!(
-            flat.failed(&setup),
+            flat.failed(),
             Some(Stuck::Repeats {
                 value,
                 times,
                 limit
             })
         );
-        assert!(flat.has_failed_at(5.0, &setup) && !flat.has_failed_at(5.1, &setup));
-        flat.take(Timestamp(7), 5.1, &setup);
-        assert!(flat.failed(&setup).is_none());
+        flat.take(Timestamp(8), 5.1, &setup);
+        assert!(flat.failed().is_none());
     }
 
     #[test]
@@ -220,6 +227,21 @@ mod tests {
         }
         let before = flat.clone();
         assert_eq!(flat.take(Timestamp(3), 9.0, &setup), Flag::Pass);
+        assert_eq!(flat, before);
+    }
+
+    /// The broker delivers again what was not acknowledged: one reading is one repeat.
+    #[test]
+    fn a_reading_told_again_counts_once() {
+        let setup = setup(1.0, 0.1);
+        let mut flat = Flat::default();
+        for time in 0..4 {
+            flat.take(Timestamp(time), 5.0, &setup);
+        }
+        let before = flat.clone();
+        for _ in 0..10 {
+            assert_eq!(flat.take(Timestamp(3), 5.0, &setup), Suspect);
+        }
         assert_eq!(flat, before);
     }
 }

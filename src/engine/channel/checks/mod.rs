@@ -48,12 +48,6 @@ pub(super) enum Stuck {
 }
 
 impl Checks {
-    /// Whether an indication only repeats what has been kept out as stuck already: taking it would
-    /// change nothing.
-    pub(super) fn is_stuck_at(&self, value: f64, setup: &ChannelSetup) -> bool {
-        setup.screening.enabled && self.flat.has_failed_at(value, setup)
-    }
-
     /// Takes an indication that came in; its flag by the count of equal values.
     pub(super) fn take_indication(
         &mut self,
@@ -81,14 +75,21 @@ impl Checks {
         self.still.take(pair, scatter, setup)
     }
 
-    /// Takes an innovation for the precision; whether the noise counts as grown.
-    pub(super) fn take_innovation(&mut self, innovation: Innovation, setup: &ChannelSetup) {
-        self.precision.take(innovation, setup);
+    /// Takes an innovation for the precision. What was `rejected` is an outlier, not noise.
+    pub(super) fn take_innovation(
+        &mut self,
+        innovation: Innovation,
+        rejected: bool,
+        setup: &ChannelSetup,
+    ) {
+        if !rejected {
+            self.precision.take(innovation, setup);
+        }
     }
 
     /// Why the sensor counts as stuck now, if it does.
-    pub(super) fn stuck(&self, setup: &ChannelSetup) -> Option<Stuck> {
-        self.flat.failed(setup).or_else(|| self.still.failed())
+    pub(super) fn stuck(&self) -> Option<Stuck> {
+        self.flat.failed().or_else(|| self.still.failed())
     }
 
     /// The noise's precision chart.

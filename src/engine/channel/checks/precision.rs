@@ -11,8 +11,9 @@
 //! other seeds than the tests', with a baseline known well, 2,000,000 pairs brought 14 false
 //! signals at h = 20, one at 24 and none at 28 (five and none in AR(1) noise of 0.9). *Baseline*:
 //! the mean of v; it goes on slowly, and not while the chart stands high. While it is young, k
-//! counts from two of its standard deviations up. One v counts at most as much as a spike may, so
-//! that outliers alone signal nothing unless they come in flocks.
+//! counts from two of its standard deviations up. Outliers, which the screen keeps out, are no
+//! noise and do not count at all; what passes counts at most as much as a spike may. (Noise that
+//! has doubled mostly passes the gate: at five scales, now two and a half standard deviations.)
 
 use super::super::screening::Innovation;
 use crate::setup::ChannelSetup;
@@ -48,7 +49,7 @@ pub(crate) struct Precision {
 }
 
 impl Precision {
-    /// Takes an innovation, whether or not its pair entered the fit.
+    /// Takes the innovation of a pair that entered the fit.
     pub(super) fn take(&mut self, innovation: Innovation, setup: &ChannelSetup) {
         let z = innovation.value / innovation.spread;
         let Some(before) = self.waiting.take() else {
@@ -66,6 +67,8 @@ impl Precision {
             return;
         }
         if self.baseline <= 0.0 {
+            // A sensor that showed one value all the time has told nothing about its noise.
+            *self = Self::default();
             return;
         }
         let relative = (v / self.baseline).min(CLIP);
@@ -202,6 +205,26 @@ mod tests {
             chart.take(innovation(noise.next() + outlier + drift), &setup);
             assert!(!chart.has_grown(), "{pair}");
         }
+    }
+
+    /// A sensor that showed one value at first has a baseline once it moves.
+    #[test]
+    fn a_quiet_start_disables_nothing() {
+        let setup = channel_setup();
+        let mut chart = Precision::default();
+        for _ in 0..300 {
+            chart.take(innovation(0.0), &setup);
+        }
+        let mut noise = Noise::new(11, 0.0);
+        for _ in 0..1_000 {
+            chart.take(innovation(noise.next()), &setup);
+            assert!(!chart.has_grown(), "what began is no growth");
+        }
+        let found = (0..200).find(|_| {
+            chart.take(innovation(3.0 * noise.next()), &setup);
+            chart.has_grown()
+        });
+        assert!(found.is_some());
     }
 
     #[test]

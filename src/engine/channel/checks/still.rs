@@ -3,7 +3,8 @@
 //! Needs no declared noise, and tells where equality of neighbours is normal (resolution coarser
 //! than the noise): a sensor that shows one and the same value over several pairs while the
 //! reference value moved by many standard deviations of their scatter does not measure. What counts
-//! is exact equality; the smallest movement of the indication begins anew.
+//! is exact equality; the smallest movement of the indication begins anew. One reference value
+//! alone proves no movement: it may be an outlier.
 
 use super::super::pairing::Pair;
 use super::Stuck;
@@ -33,15 +34,30 @@ struct Run {
     value: f64,
     newest: Timestamp,
     pairs: u32,
-    /// Lowest and highest reference value.
-    reference: (f64, f64),
+    /// The two lowest reference values, the lowest first, and the two highest, the highest first.
+    lowest: [f64; 2],
+    highest: [f64; 2],
     /// How far the reference must move, as known when the run began.
     limit: f64,
 }
 
 impl Run {
+    fn take(&mut self, pair: &Pair) {
+        self.newest = pair.time;
+        self.pairs = self.pairs.saturating_add(1);
+        let value = pair.reference;
+        let [lowest, second] = self.lowest;
+        self.lowest = [lowest.min(value), second.min(value.max(lowest))];
+        let [highest, second] = self.highest;
+        self.highest = [highest.max(value), second.max(value.min(highest))];
+    }
+
+    /// How far the reference has moved, whichever one of its values is left out: an outlier of the
+    /// reference is no movement.
     fn moved(&self) -> f64 {
-        self.reference.1 - self.reference.0
+        let without_highest = self.highest[1] - self.lowest[0];
+        let without_lowest = self.highest[0] - self.lowest[1];
+        without_highest.min(without_lowest).max(0.0)
     }
 }
 
@@ -59,10 +75,7 @@ impl Still {
         }
         let run = match self.run {
             Some(mut run) if run.value.total_cmp(&pair.indication).is_eq() => {
-                run.newest = pair.time;
-                run.pairs = run.pairs.saturating_add(1);
-                let (lowest, highest) = run.reference;
-                run.reference = (lowest.min(pair.reference), highest.max(pair.reference));
+                run.take(pair);
                 run
             }
             _ => {
@@ -72,7 +85,8 @@ impl Still {
                     value: pair.indication,
                     newest: pair.time,
                     pairs: 1,
-                    reference: (pair.reference, pair.reference),
+                    lowest: [pair.reference, f64::MAX],
+                    highest: [pair.reference, f64::MIN],
                     limit: (SCATTERS * noise).max(STEPS * setup.resolution),
                 }
             }
@@ -111,17 +125,30 @@ mod tests {
         let setup = channel_setup();
         let mut still = Still::default();
         let mut fates = Vec::new();
-        for (time, reference) in [(0, 1.0), (1, 3.0), (2, 6.0), (3, 7.5), (4, 1.0)] {
+        let moves = [1.0, 1.5, 6.0, 7.7, 8.0, 1.0];
+        for (time, reference) in (0..).zip(moves) {
             fates.push(still.take(&pair(time, 5.0, reference), Some(1.0), &setup));
         }
-        // 6 scatters are passed by the fourth pair; coming back proves nothing.
-        assert!(fates[..3].iter().all(Option::is_none), "{fates:?}");
-        let rejection = fates[3].expect("moved by 6.5");
+        // 6 scatters are passed by the fourth pair, and by a second value with the fifth: 8.0 − 1.5
+        // without the lowest, 7.7 − 1.0 without the highest. Coming back proves nothing.
+        assert!(fates[..4].iter().all(Option::is_none), "{fates:?}");
+        let rejection = fates[4].expect("moved by 6.5");
         assert_eq!(rejection.reason, RefusedReason::Stuck);
         assert!((rejection.value - 6.5).abs() < 1e-12 && (rejection.threshold - 6.0).abs() < 1e-12);
-        assert!(fates[4].is_some() && still.failed().is_some());
-        assert!(still.take(&pair(5, 5.1, 1.0), Some(1.0), &setup).is_none());
+        assert!(fates[5].is_some() && still.failed().is_some());
+        assert!(still.take(&pair(6, 5.1, 1.0), Some(1.0), &setup).is_none());
         assert!(still.failed().is_none());
+    }
+
+    #[test]
+    fn one_outlier_of_the_reference_proves_nothing() {
+        let setup = channel_setup();
+        let mut still = Still::default();
+        for (time, reference) in (0..).zip([1.0, 1.1, 50.0, 1.2, 0.9, -50.0, 1.0]) {
+            // The second outlier lies on the other side: now there are two.
+            let fate = still.take(&pair(time, 5.0, reference), Some(1.0), &setup);
+            assert_eq!(fate.is_some(), time >= 5, "{time}");
+        }
     }
 
     #[test]

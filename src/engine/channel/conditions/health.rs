@@ -23,13 +23,8 @@ impl ChannelAlarms {
         };
         let condition = condition(stuck.is_some());
         let step = self.stuck.evaluate(condition, scene.now, delays);
-        tell(
-            AlarmKind::Stuck,
-            step,
-            stuck_said(stuck, scene),
-            scene,
-            report,
-        );
+        let said = || stuck_said(stuck, scene);
+        tell(AlarmKind::Stuck, step, said, scene, report);
     }
 
     /// Evaluates the precision, after a pair. The chart is the delay.
@@ -42,10 +37,8 @@ impl ChannelAlarms {
         let delays = Delays { on: 1, off: 1 };
         let condition = condition(chart.has_grown());
         let step = self.noise_growth.evaluate(condition, scene.now, delays);
-        if step.is_some() {
-            let said = noise_said(chart, scene);
-            tell(AlarmKind::NoiseGrowth, step, said, scene, report);
-        }
+        let said = || noise_said(chart, scene);
+        tell(AlarmKind::NoiseGrowth, step, said, scene, report);
     }
 }
 

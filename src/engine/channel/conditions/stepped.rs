@@ -20,31 +20,14 @@ impl ChannelAlarms {
 
     /// Raises the alarm of a step.
     pub(crate) fn stepped(&mut self, step: &Step, scene: &Scene<'_>, report: &mut Report<'_>) {
-        let unit = &scene.setup.unit;
-        let expanded = readable(step.needed * step.size_u);
-        let (size, size_u) = (readable(step.size), readable(step.size_u));
-        let said = Said {
-            value: step.size,
-            limit: step.needed * step.size_u,
-            unit: unit.clone(),
-            raised: format!(
-                "the error stepped by {size} {unit} (u {size_u} {unit}; {expanded} {unit} make a \
-                 step) just before {}, from {} to {} {unit}: was the sensor serviced, knocked or \
-                 damaged, or did reference {} change? Corrections rest on what came since",
-                step.first_after,
-                readable(step.before),
-                readable(step.after),
-                scene.reference.name
-            ),
-            cleared: String::new(),
-        };
+        let said = || raised(step, scene);
         let moved = self.step.evaluate(Condition::Holds, scene.now, AT_ONCE);
         tell(AlarmKind::Step, moved, said, scene, report);
     }
 
     /// The stretch that a step began has ended, or fills its window.
     pub(crate) fn step_is_past(&mut self, why: &str, scene: &Scene<'_>, report: &mut Report<'_>) {
-        let said = Said {
+        let said = || Said {
             value: 0.0,
             limit: 0.0,
             unit: scene.setup.unit.clone(),
@@ -53,5 +36,26 @@ impl ChannelAlarms {
         };
         let moved = self.step.evaluate(Condition::Gone, scene.now, AT_ONCE);
         tell(AlarmKind::Step, moved, said, scene, report);
+    }
+}
+
+fn raised(step: &Step, scene: &Scene<'_>) -> Said {
+    let unit = &scene.setup.unit;
+    let expanded = readable(step.needed * step.size_u);
+    let (size, size_u) = (readable(step.size), readable(step.size_u));
+    Said {
+        value: step.size,
+        limit: step.needed * step.size_u,
+        unit: unit.clone(),
+        raised: format!(
+            "the error stepped by {size} {unit} (u {size_u} {unit}; {expanded} {unit} make a \
+             step) just before {}, from {} to {} {unit}: was the sensor serviced, knocked or \
+             damaged, or did reference {} change? Corrections rest on what came since",
+            step.first_after,
+            readable(step.before),
+            readable(step.after),
+            scene.reference.name
+        ),
+        cleared: String::new(),
     }
 }

@@ -5,6 +5,7 @@
 use super::look::{Look, look};
 use super::{Fate, Found, Pair, Scene, settles};
 use crate::event::RefusedReason;
+use crate::median::median;
 use crate::setup::ChannelId;
 use crate::time::Timestamp;
 use crate::track::Sample;
@@ -69,27 +70,10 @@ fn weight(present: usize, asked: usize) -> f64 {
     (1.0 + MEDIAN_PRICE / asked as f64) / (1.0 + MEDIAN_PRICE / present as f64)
 }
 
-/// Middle value, or mean of the two middle values. Not of nothing.
-fn median(values: &mut [f64]) -> f64 {
-    values.sort_by(f64::total_cmp);
-    let half = values.len() / 2;
-    if values.len() % 2 == 1 {
-        values[half]
-    } else {
-        0.5 * (values[half - 1] + values[half])
-    }
-}
-
 #[cfg(test)]
 #[allow(clippy::float_cmp, reason = "the expected values are exact in binary")]
 mod tests {
     use super::*;
-
-    #[test]
-    fn median_of_odd_and_even_counts() {
-        assert_eq!(median(&mut [3.0, 1.0, 2.0]), 2.0);
-        assert_eq!(median(&mut [4.0, 1.0, 2.0, 3.0]), 2.5);
-    }
 
     #[test]
     fn fewer_members_weigh_less() {

@@ -15,6 +15,7 @@ mod fouling;
 mod validation;
 
 use super::checks::Checks;
+use super::closing::Closing;
 use super::judgement::Judgement;
 use super::pairing::Pair;
 use super::stretch::Carries;
@@ -191,7 +192,8 @@ impl Channel {
         let Service {
             event, performed, ..
         } = service;
-        let ends = self.is_ended_by(performed);
+        let takes_from = self.is_ended_by(performed);
+        let ends = takes_from.is_some();
         let before = self.model_before(performed, scene).filter(|_| ends);
         let comparison = before.as_ref().and_then(|judgement| {
             validation::compare(judgement, performed, &event.as_found, scene)
@@ -211,10 +213,15 @@ impl Channel {
             fouling = self.service.note(service);
             self.propose_interval(service, scene);
         }
-        if ends {
-            let carries = self.carries(replaced, performed);
-            let why = format!("the sensor was {} at {performed}", event.act.word());
-            self.close_stretch_with(performed, carries, &opening, &why, scene, report);
+        if let Some(from) = takes_from {
+            let closing = Closing {
+                at: performed,
+                from,
+                carries: self.carries(replaced, from),
+                opening: &opening,
+                why: &format!("the sensor was {} at {performed}", event.act.word()),
+            };
+            self.close_stretch(&closing, scene, report);
             self.alarms
                 .serve(replaced, &why_cleared(service), scene, report);
         }
@@ -249,38 +256,46 @@ impl Channel {
         report: &mut Report<'_>,
     ) -> Option<u32> {
         let performed = service.performed;
-        if self.is_beyond_window(performed, scene.setup, scene.now) || !self.is_ended_by(performed)
-        {
+        if self.is_beyond_window(performed, scene.setup, scene.now) {
             return None;
         }
-        let carries = self.carries(false, performed);
-        let why = format!(
-            "reference {} was {} at {performed}",
-            scene.reference.name,
-            service.event.act.word()
-        );
-        self.close_stretch_with(performed, carries, &[], &why, scene, report);
+        let from = self.is_ended_by(performed)?;
+        let act = service.event.act.word();
+        let closing = Closing {
+            at: performed,
+            from,
+            carries: self.carries(false, from),
+            opening: &[],
+            why: &format!(
+                "reference {} was {act} at {performed}",
+                scene.reference.name
+            ),
+        };
+        self.close_stretch(&closing, scene, report);
         Some(self.stretch.number())
     }
 
-    /// Whether a service performed then ends the present stretch, rather than an earlier one. Where a
-    /// step that it caused was found before anybody told, the step is taken back first: the stretch
-    /// before it is the one that the service ends, and validates.
-    fn is_ended_by(&mut self, performed: Timestamp) -> bool {
+    /// From when on pairs belong to the stretch that a service performed then begins; `None` if it
+    /// ended an earlier one. Where a step that it caused was found before anybody told, the step is
+    /// taken back first: the stretch before it is the one that the service ends, and validates; and
+    /// what came between the two says nothing about the sensor as it was left.
+    fn is_ended_by(&mut self, performed: Timestamp) -> Option<Timestamp> {
+        let mut from = performed;
         if self.explains_step(performed) {
+            from = from.max(self.stretch.began().unwrap_or(performed));
             self.take_back_step();
         }
-        self.stretch.began() <= Some(performed)
+        (self.stretch.began() <= Some(performed)).then_some(from)
     }
 
     /// What the next stretch may know: of another sensor nothing, of the same one its noise, as it
-    /// was before what came since the service.
-    fn carries(&self, replaced: bool, performed: Timestamp) -> Carries {
+    /// was before what came since then.
+    fn carries(&self, replaced: bool, from: Timestamp) -> Carries {
         if replaced {
             return Carries::Nothing;
         }
         let recent = self.recent.iter();
-        let latest = recent.filter(|held| held.pair.time >= performed).count();
+        let latest = recent.filter(|held| held.pair.time >= from).count();
         Carries::Noise { latest }
     }
 

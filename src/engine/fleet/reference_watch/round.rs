@@ -2,6 +2,7 @@
 //! that did in the last one, until one votes a second time, or until the others had time enough.
 
 use super::Vote;
+use crate::median::median;
 use crate::time::{Duration, Timestamp};
 use serde::{Deserialize, Serialize};
 use std::collections::BTreeMap;
@@ -55,30 +56,5 @@ impl Round {
             from: times.clone().min()?,
             to: times.max()?,
         })
-    }
-}
-
-/// Middle value, the mean of the two middle ones of an even number; 0 of nothing.
-pub(super) fn median(values: &mut [f64]) -> f64 {
-    values.sort_unstable_by(f64::total_cmp);
-    let half = values.len() / 2;
-    match (values.get(half.wrapping_sub(1)), values.get(half)) {
-        (Some(below), Some(above)) if values.len().is_multiple_of(2) => 0.5 * (below + above),
-        (_, Some(middle)) => *middle,
-        _ => 0.0,
-    }
-}
-
-#[cfg(test)]
-#[allow(clippy::float_cmp, reason = "the expected values are exact in binary")]
-mod tests {
-    use super::*;
-
-    #[test]
-    fn the_middle_of_few_values() {
-        assert_eq!(median(&mut []), 0.0);
-        assert_eq!(median(&mut [3.0]), 3.0);
-        assert_eq!(median(&mut [4.0, 1.0]), 2.5);
-        assert_eq!(median(&mut [9.0, 1.0, 2.0]), 2.0);
     }
 }

@@ -8,7 +8,7 @@
 //! than the formula says, their frequency counts. What never varied is not judged.
 
 use super::Vote;
-use super::round::median;
+use crate::median::median;
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 use std::collections::{BTreeMap, VecDeque};

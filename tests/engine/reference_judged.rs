@@ -448,3 +448,38 @@ fn a_suspicion_that_nobody_can_judge_any_more_ends() {
         assert_eq!((channel.rung, channel.because), (Rung::Advise, None));
     }
 }
+
+/// A process that comes back to the repeated value agrees with it by chance: that ends nothing, and
+/// when it moves on, no second alarm is raised.
+#[test]
+fn a_stuck_reference_stays_suspect_until_it_varies() {
+    let (mut engine, mut outputs) = small(763, 120, |_, _| 0.0);
+    let repeated = process(0, 119);
+    let mut noise = Noise::new(764, 0.0);
+    let mut ended = None;
+    for hour in 120..220 {
+        let is_back = hour < 125 || (150..165).contains(&hour);
+        let level = if is_back { repeated } else { repeated + 20.0 };
+        let time = EVERY * f64::from(hour);
+        for id in 0..5 {
+            engine.step(&indication(id, time, level + noise.draw()), &mut outputs);
+        }
+        let shown = if hour < 190 {
+            repeated
+        } else {
+            level + 0.1 * noise.draw()
+        };
+        engine.step(&reference_value(0, time, shown), &mut outputs);
+        let trouble = engine.standing().references[0].trouble;
+        if hour == 140 {
+            assert_eq!(trouble, Some(Cause::ReferenceStuck));
+        } else if hour > 140 && ended.is_none() && trouble.is_none() {
+            ended = Some(hour);
+        }
+    }
+    assert!((192..200).contains(&ended.expect("it ends")), "{ended:?}");
+    let of_reference = alarms(&outputs).into_iter();
+    let of_reference = of_reference.filter(|it| it.kind == AlarmKind::ReferenceStuck);
+    let states: Vec<_> = of_reference.map(|alarm| alarm.state).collect();
+    assert_eq!(states, [AlarmState::Unacknowledged, AlarmState::Normal]);
+}

@@ -49,8 +49,8 @@ enum Command {
     #[command(
         after_help = "Example:\n  plant score --short\n  plant score --scenario step stuck \
         --seeds 100 --seed-base 5000 --json\n  \
-        plant score --study steps --seeds 100\n\nExit code: 0 all limits hold, 1 a limit is broken, \
-        2 wrong usage"
+        plant score --study steps --seeds 100\n\n\
+        Exit code: 0 all limits hold, 1 a limit is broken, 2 wrong usage"
     )]
     Score(score::Score),
 }

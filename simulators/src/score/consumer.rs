@@ -256,8 +256,8 @@ mod tests {
         assert_close(applied, 6.4, 0.25 - 0.09 + 0.45, 0.3);
     }
 
-    /// What a consumer makes of a document is what the engine itself says in corrected values, with a
-    /// span, an influence quantity, and while a correction is held.
+    /// What a consumer makes of a document is what the engine itself says in corrected values, with
+    /// a span, an influence quantity, and while a correction is held.
     #[test]
     fn a_consumer_and_the_engine_agree() {
         for name in ["span-ramp", "temperature-declared", "reference-stale"] {

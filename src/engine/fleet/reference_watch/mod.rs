@@ -14,7 +14,8 @@
 //!            it any more
 //! ```
 //!
-//! While doubted, pairs wait; while suspect, none enters a fit. What all channels have in common
+//! While doubted, pairs wait; while suspect, none enters a fit. One that is stuck stays suspect
+//! until its value varies: a process that passes the repeated value agrees with it by chance. What all channels have in common
 //! besides the reference (one supply, one bumped pipe) cannot be told from it, and is said of it.
 
 mod chart;
@@ -158,7 +159,7 @@ impl ReferenceWatch {
     /// that nobody is left to end ends by itself, and the channels begin to learn again.
     pub(super) fn take_value(&mut self, time: Timestamp, value: f64) {
         self.repetition.take(time, value);
-        if self.trouble().is_some() {
+        if self.trouble().is_some() && !self.still_stuck() {
             self.unheard = self.unheard.saturating_add(1);
             if self.unheard > UNHEARD {
                 self.strike_waiting();
@@ -324,12 +325,17 @@ impl ReferenceWatch {
     fn judge_suspect(&mut self, closed: Closed, stuck: bool) {
         self.unheard = 0;
         self.wait(closed);
-        if stuck || closed.size > AGREES {
+        if stuck || self.still_stuck() || closed.size > AGREES {
             self.strike_waiting();
         } else if self.waiting.len() >= AGREE_AGAIN {
             self.let_go();
             self.recover();
         }
+    }
+
+    /// Whether it is suspect because it repeats one value, and still does.
+    fn still_stuck(&self) -> bool {
+        self.trouble() == Some(Cause::ReferenceStuck) && self.repetition.is_odd()
     }
 
     /// Trusted again.

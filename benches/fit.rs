@@ -3,8 +3,9 @@
 
 use criterion::{BenchmarkId, Criterion, criterion_group, criterion_main};
 use holdtrue_benches::{Cholesky, DEGREES, Outputs, Stream, batch_qr, outputs};
+use holdtrue_engine::fit::Row;
 use holdtrue_engine::fit::basis::Columns;
-use holdtrue_engine::fit::window::{Cut, Window, WindowRow};
+use holdtrue_engine::fit::window::{Cut, Window};
 use holdtrue_engine::time::Timestamp;
 use std::hint::black_box;
 use std::time::Duration;
@@ -12,7 +13,7 @@ use std::time::Duration;
 const WINDOWS: [usize; 3] = [256, 1024, 4096];
 
 fn window_outputs(window: &mut Window, (time, error): (i64, f64)) -> Option<Outputs> {
-    let row = WindowRow {
+    let row = Row {
         time: Timestamp(time),
         error,
         weight: 1.0,

@@ -13,8 +13,9 @@
 )]
 
 use crate::support::batch;
+use holdtrue_engine::fit::Row;
 use holdtrue_engine::fit::basis::Columns;
-use holdtrue_engine::fit::window::{Cut, Window, WindowRow};
+use holdtrue_engine::fit::window::{Cut, Window};
 use holdtrue_engine::time::Timestamp;
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
@@ -96,7 +97,7 @@ fn run(segments: u32, total: usize) -> Worst {
         let noise: f64 = StandardNormal.sample(&mut rng);
         let days = (time - 1_700_000_000_000_000_000) as f64 / 86_400e9;
         let error = level + 0.02 * days + SIGMA * noise;
-        window.insert(&WindowRow {
+        window.insert(&Row {
             time: Timestamp(time),
             error,
             weight: 1.0,
@@ -158,7 +159,7 @@ fn a_quiet_sensor_with_a_gap_keeps_its_rss() {
             }
             let noise: f64 = StandardNormal.sample(&mut rng);
             let error = 5.0 + 1e-7 * noise;
-            window.insert(&WindowRow {
+            window.insert(&Row {
                 time: Timestamp(time),
                 error,
                 weight: 1.0,

@@ -9,9 +9,10 @@
 
 use crate::support::batch;
 use crate::support::double::Double;
+use holdtrue_engine::fit::Row;
 use holdtrue_engine::fit::basis::Columns;
 use holdtrue_engine::fit::factor::Factor;
-use holdtrue_engine::fit::window::{Cut, Window, WindowRow};
+use holdtrue_engine::fit::window::{Cut, Window};
 use holdtrue_engine::time::{Duration, Timestamp};
 use proptest::prelude::*;
 
@@ -200,8 +201,8 @@ proptest! {
     }
 }
 
-fn row(time: i64, error: f64) -> WindowRow {
-    WindowRow {
+fn row(time: i64, error: f64) -> Row {
+    Row {
         time: Timestamp(time),
         error,
         weight: 1.0,
@@ -306,7 +307,7 @@ proptest! {
         for (step, error, weight) in steps {
             time += step;
             let (x, influences) = (error.signum(), [time as f64, -1.0]);
-            window.insert(&WindowRow { time: Timestamp(time), error, weight, x, influences });
+            window.insert(&Row { time: Timestamp(time), error, weight, x, influences });
             let rss = window.total().nested_rss();
             for columns in 1..WIDEST {
                 prop_assert!(rss[columns] >= 0.0 && rss[columns] <= rss[columns - 1]);
@@ -335,7 +336,7 @@ proptest! {
         for (step, x, influences, noise) in steps {
             time += step * 1_000_000_000;
             let error = 3.0 + 0.1 * x + 0.3 * influences[1] + 0.01 * noise;
-            window.insert(&WindowRow { time: Timestamp(time), error, weight: 1.0, x, influences });
+            window.insert(&Row { time: Timestamp(time), error, weight: 1.0, x, influences });
             held.push((time, x, influences, error));
         }
         let rows = window.rows() as usize;

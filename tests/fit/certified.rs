@@ -10,13 +10,14 @@
 )]
 
 use crate::support::double::Double;
+use holdtrue_engine::fit::Row;
 use holdtrue_engine::fit::basis::Columns;
 use holdtrue_engine::fit::criterion;
-use holdtrue_engine::fit::window::{Cut, Window, WindowRow};
+use holdtrue_engine::fit::window::{Cut, Window};
 use holdtrue_engine::time::Timestamp;
 
-fn row(time: i64, error: f64) -> WindowRow {
-    WindowRow {
+fn row(time: i64, error: f64) -> Row {
+    Row {
         time: Timestamp(time),
         error,
         weight: 1.0,

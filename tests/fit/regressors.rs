@@ -1,8 +1,9 @@
 //! The regressors of span and influence terms: however far from zero they are, and wherever they
 //! go, they cost no digits.
 
+use holdtrue_engine::fit::Row;
 use holdtrue_engine::fit::basis::Columns;
-use holdtrue_engine::fit::window::{Cut, Window, WindowRow};
+use holdtrue_engine::fit::window::{Cut, Window};
 use holdtrue_engine::time::Timestamp;
 
 const DAY: i64 = 86_400_000_000_000;
@@ -18,7 +19,7 @@ fn window(rows: u32, x_of: impl Fn(f64) -> f64, q_of: impl Fn(f64) -> f64) -> Wi
     for i in 0..rows {
         let at = f64::from(i);
         let (x, q) = (x_of(at), q_of(at));
-        window.insert(&WindowRow {
+        window.insert(&Row {
             time: Timestamp(START + i64::from(i) * DAY),
             error: ZERO + SLOPE * x + EFFECT * q,
             weight: 1.0,
@@ -78,7 +79,7 @@ fn the_centre_stays_until_the_rows_are_far_off() {
 fn corrected(checks: &[(f64, f64)], indication: f64) -> f64 {
     let mut window = Window::new(Columns::new(0, 1, 0), Cut::rows(64, 64));
     for (day, &(reference, shown)) in (0..).zip(checks) {
-        window.insert(&WindowRow {
+        window.insert(&Row {
             time: Timestamp(START + day * DAY),
             error: shown - reference,
             weight: 1.0,

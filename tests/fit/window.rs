@@ -1,13 +1,14 @@
 //! The window holds the rows it says it holds, and fits them like a batch of just those rows.
 
 use crate::support::batch;
+use holdtrue_engine::fit::Row;
 use holdtrue_engine::fit::basis::Columns;
-use holdtrue_engine::fit::window::{Cut, Window, WindowRow};
+use holdtrue_engine::fit::window::{Cut, Window};
 use holdtrue_engine::time::{Duration, Timestamp};
 use proptest::prelude::*;
 
-fn row(time: i64, error: f64, weight: f64) -> WindowRow {
-    WindowRow {
+fn row(time: i64, error: f64, weight: f64) -> Row {
+    Row {
         time: Timestamp(time),
         error,
         weight,

@@ -56,7 +56,7 @@ fn forecast_once(noise: Noise, slope: f64, seed: u64) -> Foresight {
         newest = Some(row.time);
     }
     let mut foresight = Foresight::default();
-    let line = fit.recent_line(0.0).expect("two windows of segments");
+    let line = fit.recent_line(0.0, 0.0).expect("two windows of segments");
     assert_eq!(Some(line.origin), newest);
     let k = quantile::student(0.95, line.degrees_of_freedom);
     if !line.line.is_resolved(k) {

@@ -94,7 +94,7 @@ impl OutlookStation {
         if segments_closed {
             self.group = group;
             self.line = fit
-                .recent_line(declared_variance)
+                .recent_line(declared_variance, judgement.level)
                 .filter(RecentLine::is_finite);
         }
         let candidate = self.candidate(judgement, corrected_zone, scene);

@@ -9,7 +9,7 @@
 
 use crate::fit::correlation::lag_one;
 use crate::fit::factor::{Factor, MAX_COLUMNS};
-use crate::fit::gain::Rungs;
+use crate::fit::gain::Grades;
 use crate::fit::kernel::MAX_WIDTH;
 use crate::fit::segment::Segment;
 use crate::fit::window::{Cut, Window};
@@ -191,7 +191,7 @@ pub(crate) struct Between {
     /// How groups weigh.
     pub(crate) weighting: Weighting,
     /// Residual sums of squares for degrees 0 … `largest`.
-    pub(crate) rungs: Rungs,
+    pub(crate) grades: Grades,
     /// r₁ of the residuals of degree `largest` (raw).
     pub(crate) lag_one: f64,
     /// The rows, oldest first.
@@ -214,13 +214,13 @@ impl Between {
         let rows: Vec<MeanRow> = groups.iter().filter_map(|g| mean_row(g, level)).collect();
         let columns = groups.last()?.factor.columns();
         let segments = rows.len();
-        let counted = fitted(&rows, columns, |_| 1.0);
+        let counted = factor_of(&rows, columns, |_| 1.0);
         let independent = counted.independent();
         let largest = (0..=highest)
             .rev()
             .find(|&k| k < independent && can_bear(segments, k, forced))?;
         let weighting = plain_weighting(groups, &rows, &counted, largest);
-        let factor = fitted(&rows, columns, |weight| weighting.multiplier(weight));
+        let factor = factor_of(&rows, columns, |weight| weighting.multiplier(weight));
         let coefficients = factor.solve(largest + 1)?;
         let roots: Vec<f64> = rows
             .iter()
@@ -236,7 +236,7 @@ impl Between {
             segments,
             largest,
             weighting,
-            rungs: Rungs {
+            grades: Grades {
                 rss: nested.as_slice()[..=largest].to_vec(),
                 rounding: factor.weight_sum() * rounding(&rows, level),
                 least: 1,
@@ -249,17 +249,10 @@ impl Between {
         })
     }
 
-    /// `ln(RSS_{k−1}/RSS_k)`, both with their possible rounding; 0 where nothing is left to
-    /// compare.
-    pub(crate) fn ln_ratio_of(&self, degree: usize) -> f64 {
-        let higher = self.rungs.known(degree);
-        self.ln_ratio(degree - 1, higher).unwrap_or_default()
-    }
-
     /// ln(`RSS_k`/`rss`), `rss` with its possible rounding; `None` where nothing is left to
     /// compare.
     pub(crate) fn ln_ratio(&self, degree: usize, rss: f64) -> Option<f64> {
-        (rss > 0.0).then(|| math::ln(self.rungs.known(degree) / rss).min(LARGEST_LN_RATIO))
+        (rss > 0.0).then(|| math::ln(self.grades.known(degree) / rss).min(LARGEST_LN_RATIO))
     }
 
     /// σ̂² = RSS/(S − p) of the largest model: variance of a row of weight 1 as groups show it, so
@@ -267,7 +260,7 @@ impl Between {
     pub(crate) fn variance(&self) -> f64 {
         let freedom = self.degrees_of_freedom();
         if freedom > 0.0 {
-            self.rungs.rss[self.largest] / freedom
+            self.grades.rss[self.largest] / freedom
         } else {
             0.0
         }
@@ -330,7 +323,11 @@ impl MeanRow {
 }
 
 /// The factor of mean rows, each weighing the sum of its weights times `multiplier` of that sum.
-fn fitted(rows: &[MeanRow], columns: usize, multiplier: impl Fn(f64) -> f64) -> Factor {
+pub(crate) fn factor_of(
+    rows: &[MeanRow],
+    columns: usize,
+    multiplier: impl Fn(f64) -> f64,
+) -> Factor {
     let mut factor = Factor::new(columns);
     let mut scaled = [0.0; MAX_WIDTH];
     for row in rows {

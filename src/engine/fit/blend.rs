@@ -1,8 +1,8 @@
 //! The published mean where span terms or influence quantities are claimed: over degrees of the
 //! zero, degrees of the span, and with and without each influence quantity.
 //!
-//! As without them (see `mean`), all rows count, those of the open segment too, and models compete
-//! by Akaike weights. Mean rows weigh as in the between-segments problem and contrast rows are
+//! As without them (see `mean`), all rows count, those of the open segment too, and models weigh at
+//! two prices (see `weights`). Mean rows weigh as in the between-segments problem and contrast rows are
 //! scaled as there (see `joint`), so that every row of the factor has one long-run variance σ², and
 //! the covariance of a model's coefficients is σ²(RᵀR)⁻¹. What is left of a group beside its mean
 //! and its contrasts is time moving inside it, next to nothing; it counts as it is.
@@ -12,20 +12,23 @@
 
 use crate::event::{CriterionValues, WindowSeen};
 use crate::fit::basis::Columns;
-use crate::fit::between::{Group, Groups, LARGEST_LN_RATIO};
+use crate::fit::between::{Group, Groups};
 use crate::fit::contrast::Apart;
 use crate::fit::factor::Factor;
 use crate::fit::joint::{Joint, Worth};
 use crate::fit::kernel::MAX_WIDTH;
 use crate::fit::mean::{PUBLISHING, Scatter, normalised, rows_of};
 use crate::fit::model::Model;
+use crate::fit::weights::{Rival, Weights};
 use crate::fit::{Fit, ModelWeight, Published};
-use crate::math;
 use nalgebra::{DMatrix, DVector};
 
 /// One model's share in the mean, its coefficients at the places of the window's columns.
 struct Member {
+    /// In ê.
     weight: f64,
+    /// In u².
+    spread: f64,
     coefficients: DVector<f64>,
     covariance: DMatrix<f64>,
 }
@@ -42,48 +45,50 @@ impl Fit {
     pub(crate) fn blended(&self, groups: &Groups<'_>, row_variance: f64) -> Option<Published> {
         let columns = self.window.columns();
         let forced = self.setup.forced_degree;
-        let highest = usize::from(forced.unwrap_or(self.setup.max_degree));
-        let highest = highest.min(columns.time_degree());
-        let joint = Joint::of(&groups.closed, columns, highest, forced.is_some())?;
+        let joint = Joint::of(&groups.closed, columns, self.richest(), forced.is_some())?;
         let models = self.candidates(&joint);
         if models.iter().all(|model| model.is_zero_only()) {
             return None;
         }
         let worth = joint.worth(PUBLISHING);
-        let weights = akaike_weights(&joint.known_rss(&models, worth), &models, columns, worth);
+        let known = joint.known_rss(&models, worth);
+        let rivals: Vec<Rival> = models
+            .iter()
+            .zip(known)
+            .map(|(model, rss)| Rival {
+                rss,
+                coefficients: model.places(columns).len(),
+            })
+            .collect();
+        let weights = Weights::of(&rivals, worth.effective);
         let (mut factor, level) = weighted(groups, &joint, columns, worth)?;
         self.count_days_from(self.window.newest()?, &mut factor);
-        let scatter = Scatter {
-            variance: joint.variance,
-            degrees_of_freedom: joint.freedom,
-            inflation: worth.inflation,
-            effective: worth.effective,
-        }
-        .at_least(row_variance);
-        let members = models.iter().zip(&weights).map(|(model, &weight)| {
-            Member::of(
-                *model,
-                weight,
-                &factor,
-                columns,
-                scatter.variance * scatter.inflation,
-            )
-        });
+        let scatter = Scatter::of_joint(&joint, worth).at_least(row_variance);
+        let variance = scatter.variance * scatter.inflation;
+        let shares = weights.mean.iter().copied().zip(weights.spread);
+        let members = models
+            .iter()
+            .zip(shares)
+            .map(|(model, shares)| Member::of(*model, shares, &factor, columns, variance));
         let mut blend = Blend::of(&members.collect::<Option<Vec<_>>>()?, columns.count());
         blend.coefficients[0] += level;
         let with_span = models
             .iter()
-            .zip(&weights)
+            .zip(&weights.mean)
             .filter(|(model, _)| model.span.is_some());
         let span_weight: f64 = with_span.map(|(_, weight)| weight).sum();
         if span_weight > 0.0 {
-            let noise = joint.regressor_noise(self.setup.span_side(), self.setup.noise);
-            let share = joint
-                .span_noise(worth, noise)
-                .map_or(0.0, |found| found.share);
+            let share = self.noise_share(&joint, worth);
             blend.doubt_slope(share * span_weight, &factor, columns);
         }
-        self.assembled(groups, &joint, &scatter, (&models, &weights), &blend)
+        self.assembled(groups, &joint, &scatter, (&models, &weights.mean), &blend)
+    }
+
+    /// λ: by about so much noise in the level bends a slope on it.
+    pub(super) fn noise_share(&self, joint: &Joint, worth: Worth) -> f64 {
+        let noise = joint.regressor_noise(self.setup.span_side(), self.setup.noise);
+        let found = joint.span_noise(worth, noise);
+        found.map_or(0.0, |found| found.share)
     }
 
     /// The models that compete: every degree of the zero (the forced one alone), with no more than
@@ -162,10 +167,7 @@ impl Fit {
             None => joint
                 .zero_contest(&joint.sides())
                 .criterion_values(self.setup.criterion),
-            Some(_) => CriterionValues {
-                name: String::new(),
-                values: Vec::new(),
-            },
+            Some(_) => CriterionValues::default(),
         };
         let (from, to) = (self.window.oldest()?, self.window.newest()?);
         Some(Published {
@@ -198,29 +200,8 @@ impl Fit {
     }
 }
 
-/// Akaike weights exp(−½ n_eff ln(RSS/least RSS) − p), p coefficients, over their sum.
-fn akaike_weights(rss: &[f64], models: &[Model], columns: Columns, worth: Worth) -> Vec<f64> {
-    let least = rss.iter().copied().fold(f64::INFINITY, f64::min);
-    let logarithms: Vec<f64> = rss
-        .iter()
-        .zip(models)
-        .map(|(&rss, model)| {
-            let ln_ratio = if least > 0.0 {
-                math::ln(rss / least).min(LARGEST_LN_RATIO)
-            } else {
-                0.0
-            };
-            -0.5 * worth.effective * ln_ratio - model.places(columns).len() as f64
-        })
-        .collect();
-    let highest = logarithms.iter().copied().fold(f64::MIN, f64::max);
-    let weights: Vec<f64> = logarithms.iter().map(|l| math::exp(l - highest)).collect();
-    let sum: f64 = weights.iter().sum();
-    weights.iter().map(|weight| weight / sum).collect()
-}
-
 /// All rows, mean rows and contrast rows of each group at one variance, at the level returned.
-fn weighted(
+pub(super) fn weighted(
     groups: &Groups<'_>,
     joint: &Joint,
     columns: Columns,
@@ -267,7 +248,7 @@ impl Member {
     /// A model's fit, where its columns are independent.
     fn of(
         model: Model,
-        weight: f64,
+        (weight, spread): (f64, f64),
         factor: &Factor,
         columns: Columns,
         variance: f64,
@@ -288,6 +269,7 @@ impl Member {
         }
         Some(Self {
             weight,
+            spread,
             coefficients,
             covariance,
         })
@@ -295,7 +277,7 @@ impl Member {
 }
 
 impl Blend {
-    /// `β̄ = Σ w β` and `C = Σ w (C_m + (β_m − β̄)(β_m − β̄)ᵀ)`, as in `mean`.
+    /// `β̄ = Σ w β` and `C = Σ v (C_m + (β_m − β̄)(β_m − β̄)ᵀ)`, as in `mean`.
     fn of(members: &[Member], size: usize) -> Self {
         let mut coefficients = DVector::zeros(size);
         for member in members {
@@ -304,7 +286,7 @@ impl Blend {
         let mut covariance = DMatrix::zeros(size, size);
         for member in members {
             let apart = &member.coefficients - &coefficients;
-            covariance += (&member.covariance + &apart * apart.transpose()) * member.weight;
+            covariance += (&member.covariance + &apart * apart.transpose()) * member.spread;
         }
         Self {
             coefficients,

@@ -1,17 +1,17 @@
 //! Span terms and influence quantities: when they are announced, and when they are refused.
 //!
 //! A term is *claimed* once its gain, given everything else that can be told apart, has lasted (see
-//! `ladder`). Until then the correction is one of the zero only, valid near the levels that were
+//! `climb`). Until then the correction is one of the zero only, valid near the levels that were
 //! seen. The span is *refused*, and withdrawn if it was claimed, where the level does not vary, or
 //! where noise in the regressor would move its slope by more than half of the slope's uncertainty:
 //! a noisy reference that is taken from the indication and put on the axis as well makes a slope of
 //! nothing.
 
-use crate::fit::basis::MAX_INFLUENCES;
+use crate::fit::basis::{Columns, MAX_INFLUENCES};
 use crate::fit::between::Groups;
+use crate::fit::climb::{Climb, Verdict};
 use crate::fit::gain::{Contest, JUDGING};
 use crate::fit::joint::Joint;
-use crate::fit::ladder::{Ladder, Verdict};
 use crate::fit::model::Model;
 use crate::fit::{Change, Fit, SpanRefusal, Term};
 use serde::{Deserialize, Serialize};
@@ -20,17 +20,32 @@ use serde::{Deserialize, Serialize};
 const TOLERATED: f64 = 0.5;
 
 /// The claimed terms and what is on its way to change them.
-#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Claims {
     /// Span coefficients: none, one, two, three.
-    pub(crate) span: Ladder,
+    pub(crate) span: Climb,
     /// Without or with each influence quantity.
-    pub(crate) influences: [Ladder; MAX_INFLUENCES],
-    /// Why the span can't be claimed, as of the last judgement.
+    pub(crate) influences: [Climb; MAX_INFLUENCES],
+    /// Why the span can't be claimed, as of the last judgement; `None` where none is configured.
     pub(crate) refused: Option<SpanRefusal>,
 }
 
 impl Claims {
+    /// Nothing is claimed yet: for a span there are too few segments.
+    pub(crate) fn new(columns: Columns) -> Self {
+        Self {
+            span: Climb::default(),
+            influences: Default::default(),
+            refused: too_few(columns),
+        }
+    }
+
+    /// Forgets the runs that changes were on their way by.
+    pub(crate) fn forget_runs(&mut self) {
+        self.span.forget_runs();
+        self.influences.iter_mut().for_each(Climb::forget_runs);
+    }
+
     /// The announced model, with this degree of the zero.
     pub(crate) fn model(&self, degree: u8) -> Model {
         Model {
@@ -39,6 +54,11 @@ impl Claims {
             influences: std::array::from_fn(|j| self.influences[j].announced > 0),
         }
     }
+}
+
+/// Why a span can't be claimed while there are too few segments to judge.
+fn too_few(columns: Columns) -> Option<SpanRefusal> {
+    (columns.span_columns() > 0).then_some(SpanRefusal::FewSegments)
 }
 
 impl Joint {
@@ -66,14 +86,13 @@ impl Joint {
 pub(crate) fn decide(fit: &mut Fit, may_raise: bool) -> Option<Change> {
     let columns = fit.window.columns();
     let forced = fit.setup.forced_degree;
-    let highest = usize::from(forced.unwrap_or(fit.setup.max_degree)).min(columns.time_degree());
     let (joint, when_full) = {
         let groups = Groups::of(&fit.window);
-        let joint = Joint::of(&groups.closed, columns, highest, forced.is_some());
+        let joint = Joint::of(&groups.closed, columns, fit.richest(), forced.is_some());
         (joint, groups.when_full)
     };
     let Some(joint) = joint else {
-        fit.announced.claims.refused = Some(SpanRefusal::FewSegments);
+        fit.announced.claims.refused = too_few(columns);
         return None;
     };
     let sides = joint.sides();
@@ -112,8 +131,8 @@ pub(crate) fn decide(fit: &mut Fit, may_raise: bool) -> Option<Change> {
     }
     for influence in 0..columns.influence_columns() {
         let contest = joint.influence_contest(&sides, influence);
-        let ladder = &mut fit.announced.claims.influences[influence];
-        let verdict = ladder.note(&contest, criterion, when_full, may_raise);
+        let climb = &mut fit.announced.claims.influences[influence];
+        let verdict = climb.note(&contest, criterion, when_full, may_raise);
         if let (None, Some(verdict)) = (&change, verdict) {
             // Lossless: at most two.
             let term = Term::Influence(influence.to_le_bytes()[0]);
@@ -141,19 +160,19 @@ impl Fit {
     ) -> Change {
         let criterion = self.setup.criterion;
         let claims = &mut self.announced.claims;
-        let ladder = match term {
+        let climb = match term {
             Term::Zero => &mut self.announced.zero,
             Term::Span => &mut claims.span,
             Term::Influence(j) => &mut claims.influences[usize::from(j)],
         };
         let to = match refused {
-            _ if verdict.raises => ladder.announced + 1,
+            _ if verdict.raises => climb.announced + 1,
             Some(SpanRefusal::NoSpread | SpanRefusal::RegressorNoise) => 0,
-            _ => ladder.announced.saturating_sub(1),
+            _ => climb.announced.saturating_sub(1),
         };
         Change {
             term,
-            from: ladder.move_to(to),
+            from: climb.move_to(to),
             to,
             evidence: contest.evidence(criterion, verdict),
             refused,

@@ -44,12 +44,3 @@ impl Cut {
         }
     }
 }
-
-/// What an insertion did.
-#[derive(Clone, Copy, Debug, Default, PartialEq, Eq)]
-pub struct Inserted {
-    /// At least one segment closed, or a closed one changed: a decision is due.
-    pub closed: bool,
-    /// The row was older than everything in the window and was left out.
-    pub too_old: bool,
-}

@@ -1,14 +1,15 @@
 //! When the announced model changes.
 //!
 //! Each time a segment closes, the between-segments problem (see `between`) is judged by the
-//! channel's criterion on its effective sample size, and each term climbs or descends its `ladder`:
-//! the degree of the zero, and where they are configured the span terms and influence quantities
-//! (see `claim`).
+//! channel's criterion on its effective sample size, and each term climbs or descends (see
+//! `climb`): the degree of the zero, and where they are configured the span terms and influence
+//! quantities (see `claim`).
 
+use crate::fit::basis::Columns;
 use crate::fit::between::{Between, Groups, newest_group};
 use crate::fit::claim::{self, Claims};
+use crate::fit::climb::{Climb, Verdict};
 use crate::fit::gain::Contest;
-use crate::fit::ladder::{Ladder, Verdict};
 use crate::fit::{Change, Fit, Term};
 use serde::{Deserialize, Serialize};
 
@@ -16,7 +17,7 @@ use serde::{Deserialize, Serialize};
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Announced {
     /// The degree of the zero.
-    pub(crate) zero: Ladder,
+    pub(crate) zero: Climb,
     /// Span terms and influence quantities.
     pub(crate) claims: Claims,
     /// Newest group of segments that was judged; `None` before the first.
@@ -24,11 +25,22 @@ pub(crate) struct Announced {
 }
 
 impl Announced {
-    pub(crate) fn new(degree: u8) -> Self {
+    pub(crate) fn new(degree: u8, columns: Columns) -> Self {
         Self {
-            zero: Ladder::at(degree),
-            claims: Claims::default(),
+            zero: Climb::at(degree),
+            claims: Claims::new(columns),
             judged: None,
+        }
+    }
+
+    /// Rows were taken out of the window, whose newest complete group now is `newest`. If groups
+    /// that were judged went with them, what was gained by them is forgotten, and those that take
+    /// their place are judged in turn.
+    pub(crate) fn go_back(&mut self, newest: Option<i64>) {
+        if newest < self.judged {
+            self.judged = newest;
+            self.zero.forget_runs();
+            self.claims.forget_runs();
         }
     }
 }
@@ -49,7 +61,7 @@ impl Fit {
 
     /// Judges the announced model after a segment closed. `may_raise` is false while the screen is
     /// locked out or the reference is suspect; what was gained until then is forgotten. At most one
-    /// term changes, by one rung. A forced degree is not judged.
+    /// term changes, by one grade. A forced degree is not judged.
     ///
     /// Calls between two closings change nothing: every segment (group of segments, where a window
     /// is cut finer than 64) counts once.
@@ -67,7 +79,7 @@ impl Fit {
             return claim::decide(self, may_raise);
         }
         let groups = Groups::of(&self.window);
-        let highest = usize::from(self.setup.max_degree).min(self.window.columns().time_degree());
+        let highest = self.highest_degree();
         let when_full = groups.when_full;
         let contest = Contest::of(&Between::of(&groups.closed, highest, false)?);
         drop(groups);

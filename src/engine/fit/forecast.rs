@@ -32,8 +32,18 @@ impl Line {
     /// If the factor has a single column.
     #[must_use]
     pub fn through(factor: &Factor, variance: f64) -> Option<Self> {
-        let coefficients = factor.solve(2)?;
-        let root = factor.covariance_factor(2)?;
+        Self::among(factor, 2, variance)
+    }
+
+    /// The line in a model of the first `columns` columns, given all its other terms; `None` if
+    /// they are not independent.
+    ///
+    /// # Panics
+    /// If the factor has fewer columns, or the model fewer than two.
+    #[must_use]
+    pub(crate) fn among(factor: &Factor, columns: usize, variance: f64) -> Option<Self> {
+        let coefficients = factor.solve(columns)?;
+        let root = factor.covariance_factor(columns)?;
         let covariance = &root * root.transpose() * variance;
         Some(Self {
             level: coefficients[0] + 0.0,

@@ -1,16 +1,16 @@
 //! How much better the richer of nested models is: the gain that changes of the announced model are
 //! judged by.
 //!
-//! Nested models of one term stand on *rungs*: degrees 0, 1, 2 of the zero; no span terms, one,
-//! two; without and with an influence quantity. A gain is what a criterion says for a higher rung
+//! Nested models of one term are its *grades*: degrees 0, 1, 2 of the zero; no span terms, one,
+//! two; without and with an influence quantity. A gain is what a criterion says for a higher grade
 //! on the effective sample size: with all doubts when it is to be announced, without them when a
-//! lower rung is to be as good.
+//! lower grade is to be as good.
 
 use crate::event::{CriterionValues, Evidence};
 use crate::fit::between::Between;
+use crate::fit::climb::Verdict;
 use crate::fit::correlation::{Caution, cautious, effective_sample_size};
 use crate::fit::criterion::{aicc, bic};
-use crate::fit::ladder::Verdict;
 use crate::math;
 use crate::setup::Criterion;
 
@@ -37,7 +37,7 @@ type Formula = fn(f64, f64, usize) -> Option<f64>;
 
 /// Residual sums of squares of nested models, one coefficient apart, from the plainest up.
 #[derive(Clone, Debug)]
-pub(crate) struct Rungs {
+pub(crate) struct Grades {
     /// Residual sums of squares.
     pub(crate) rss: Vec<f64>,
     /// What of each may be rounding.
@@ -46,11 +46,11 @@ pub(crate) struct Rungs {
     pub(crate) least: usize,
 }
 
-impl Rungs {
+impl Grades {
     /// Residual sum of squares with its possible rounding: never says that less is left than can be
     /// known.
-    pub(crate) fn known(&self, rung: usize) -> f64 {
-        self.rss[rung] + self.rounding
+    pub(crate) fn known(&self, grade: usize) -> f64 {
+        self.rss[grade] + self.rounding
     }
 
     /// The richest model's place.
@@ -58,7 +58,7 @@ impl Rungs {
         self.rss.len().saturating_sub(1)
     }
 
-    /// By how much rung `to` is better than `from` on a sample of `size`: n ln(RSS/RSS′) less the
+    /// By how much grade `to` is better than `from` on a sample of `size`: n ln(RSS/RSS′) less the
     /// price of the coefficients. `None` where no residuals are left to compare.
     fn gain(&self, size: f64, from: usize, to: usize, price: impl Fn(f64) -> f64) -> Option<f64> {
         let (before, after) = (self.known(from), self.known(to));
@@ -66,19 +66,19 @@ impl Rungs {
             .then(|| size * math::ln(before / after) - price(size.max(1.0)))
     }
 
-    /// By how much BIC's penalty of rung `to` exceeds that of `from`.
+    /// By how much BIC's penalty of grade `to` exceeds that of `from`.
     fn bic_price(n: f64, from: usize, to: usize) -> f64 {
         (to - from) as f64 * math::ln(n)
     }
 
-    /// By how much the `AICc`'s penalty of rung `to` exceeds that of `from`, at most
+    /// By how much the `AICc`'s penalty of grade `to` exceeds that of `from`, at most
     /// [`HIGHEST_PRICE`] per coefficient. The criterion has a pole at n = K + 1, and
     /// means nothing below; a fit whose residuals are strongly correlated, such as a parabola
     /// through an exponential, lies there however much it explains.
     fn aicc_price(&self, n: f64, from: usize, to: usize) -> f64 {
-        let penalty = |rung: usize| {
+        let penalty = |grade: usize| {
             // The coefficients and the residual variance.
-            let k = (rung + self.least + 1) as f64;
+            let k = (grade + self.least + 1) as f64;
             (n > k + 1.0).then(|| 2.0 * k + 2.0 * k * (k + 1.0) / (n - k - 1.0))
         };
         let most = (to - from) as f64 * HIGHEST_PRICE;
@@ -89,13 +89,13 @@ impl Rungs {
     }
 }
 
-/// The rungs of one term with the sample sizes that they are judged on.
+/// The grades of one term with the sample sizes that they are judged on.
 #[derive(Clone, Debug)]
 pub(crate) struct Contest {
-    /// n_eff with caution, and the rungs as it weighs them.
-    pub(crate) cautious: (f64, Rungs),
+    /// n_eff with caution, and the grades as it weighs them.
+    pub(crate) cautious: (f64, Grades),
     /// n_eff by r₁ as it was found, likewise.
-    pub(crate) plain: (f64, Rungs),
+    pub(crate) plain: (f64, Grades),
     /// Closed segments.
     pub(crate) segments: usize,
     /// r₁.
@@ -111,62 +111,63 @@ impl Contest {
             effective_sample_size(between.segments as f64, r)
         };
         Self {
-            cautious: (size(JUDGING), between.rungs.clone()),
-            plain: (size(PLAIN), between.rungs.clone()),
+            cautious: (size(JUDGING), between.grades.clone()),
+            plain: (size(PLAIN), between.grades.clone()),
             segments: between.segments,
             lag_one: between.lag_one,
         }
     }
 
-    /// The largest gain of any rung above `from`, with all doubts: on a cautious sample size, and
+    /// The largest gain of any grade above `from`, with all doubts: on a cautious sample size, and
     /// while that is small, by the more sceptical of both criteria.
     pub(crate) fn cautious_gain(&self, criterion: Criterion, from: usize) -> Option<f64> {
-        let (size, rungs) = &self.cautious;
-        (from + 1..=rungs.highest())
+        let (size, grades) = &self.cautious;
+        (from + 1..=grades.highest())
             .filter_map(|to| {
-                rungs.gain(*size, from, to, |n| match criterion {
-                    _ if n < SMALL_SAMPLE => {
-                        f64::max(Rungs::bic_price(n, from, to), rungs.aicc_price(n, from, to))
-                    }
-                    Criterion::Bic => Rungs::bic_price(n, from, to),
-                    Criterion::Aicc => rungs.aicc_price(n, from, to),
+                grades.gain(*size, from, to, |n| match criterion {
+                    _ if n < SMALL_SAMPLE => f64::max(
+                        Grades::bic_price(n, from, to),
+                        grades.aicc_price(n, from, to),
+                    ),
+                    Criterion::Bic => Grades::bic_price(n, from, to),
+                    Criterion::Aicc => grades.aicc_price(n, from, to),
                 })
             })
             .reduce(f64::max)
     }
 
-    /// The largest gain of any rung above `from`, without doubts: on the sample size by r₁ as it
+    /// The largest gain of any grade above `from`, without doubts: on the sample size by r₁ as it
     /// was found.
     pub(crate) fn plain_gain(&self, criterion: Criterion, from: usize) -> Option<f64> {
-        let (size, rungs) = &self.plain;
-        (from + 1..=rungs.highest())
+        let (size, grades) = &self.plain;
+        (from + 1..=grades.highest())
             .filter_map(|to| {
-                rungs.gain(*size, from, to, |n| match criterion {
-                    Criterion::Bic => Rungs::bic_price(n, from, to),
-                    Criterion::Aicc => rungs.aicc_price(n, from, to),
+                grades.gain(*size, from, to, |n| match criterion {
+                    Criterion::Bic => Grades::bic_price(n, from, to),
+                    Criterion::Aicc => grades.aicc_price(n, from, to),
                 })
             })
             .reduce(f64::max)
     }
 
-    /// The criterion of each rung as far as it is defined.
+    /// The criterion of each grade as far as it is defined.
     pub(crate) fn criterion_values(&self, criterion: Criterion) -> CriterionValues {
         let (name, formula): (_, Formula) = match criterion {
             Criterion::Bic => ("BIC", bic),
             Criterion::Aicc => ("AICc", aicc),
         };
-        let (size, rungs) = &self.cautious;
+        let (size, grades) = &self.cautious;
         CriterionValues {
             name: name.to_owned(),
-            values: (0..=rungs.highest())
-                .map_while(|rung| formula(*size, rungs.known(rung), rung + rungs.least + 1))
+            values: (0..=grades.highest())
+                .map_while(|grade| formula(*size, grades.known(grade), grade + grades.least + 1))
                 .map(|value| value + 0.0)
                 .collect(),
         }
     }
 
     /// What a gain is judged by, in words: see [`Contest::cautious_gain`] and
-    /// [`Rungs::aicc_price`].
+    /// [`Grades::aicc_price`].
     fn judged_by(&self, criterion: Criterion, raises: bool) -> String {
         if raises && self.cautious.0 < SMALL_SAMPLE {
             return format!(
@@ -183,7 +184,7 @@ impl Contest {
 
     /// The numbers behind a verdict.
     pub(crate) fn evidence(&self, criterion: Criterion, verdict: Verdict) -> Evidence {
-        let (size, rungs) = &self.cautious;
+        let (size, grades) = &self.cautious;
         Evidence {
             criterion: self.criterion_values(criterion),
             gain: verdict.gain + 0.0,
@@ -194,7 +195,7 @@ impl Contest {
             segments: u32::try_from(self.segments).unwrap_or(u32::MAX),
             effective_sample_size: *size,
             lag_one: self.lag_one,
-            rss: rungs.rss.iter().map(|rss| rss + 0.0).collect(),
+            rss: grades.rss.iter().map(|rss| rss + 0.0).collect(),
         }
     }
 }

@@ -23,7 +23,7 @@
 
 use crate::fit::basis::Columns;
 use crate::fit::between::{
-    About, Group, MeanRow, Weighting, can_bear, inside, mean_row, rounding, weighting,
+    About, Group, MeanRow, Weighting, can_bear, factor_of, inside, mean_row, rounding, weighting,
 };
 use crate::fit::centre::Centre;
 use crate::fit::contrast::{Apart, Contrast, KINDS};
@@ -31,7 +31,7 @@ use crate::fit::correlation::{
     Caution, cautious, effective_sample_size, lag_one, variance_inflation,
 };
 use crate::fit::factor::{Factor, MAX_COLUMNS};
-use crate::fit::gain::{Contest, JUDGING, PLAIN, Rungs};
+use crate::fit::gain::{Contest, Grades, JUDGING, PLAIN};
 use crate::fit::kernel::MAX_WIDTH;
 use crate::fit::model::Model;
 
@@ -116,18 +116,17 @@ struct Pass {
 }
 
 impl Joint {
-    /// Sets up and solves the problem for degrees of the zero up to `highest`; `None` where the
-    /// groups leave no degree of freedom. With `forced`, `highest` is taken as soon as they leave
-    /// one.
+    /// Sets up and solves the problem for models up to `richest`; `None` where the groups leave no
+    /// degree of freedom. With `forced`, its degree is taken as soon as they leave one.
     pub(crate) fn of(
         groups: &[Group<'_>],
         columns: Columns,
-        highest: usize,
+        richest: Model,
         forced: bool,
     ) -> Option<Self> {
         let level = groups.last()?.level;
         let mut joint = Self::unsolved(groups, columns, level)?;
-        joint.choose_terms(highest, forced);
+        joint.choose_terms(richest, forced);
         let plain = joint.pass(joint.worth(JUDGING))?;
         let about = joint.about(&plain);
         joint.weighting = weighting(groups, &joint.means, &about);
@@ -180,13 +179,16 @@ impl Joint {
 
     /// The terms that there are rows enough for and that are independent, the most wanted first:
     /// x, the influence quantities, x·u, x·u², then degrees of the zero.
-    fn choose_terms(&mut self, highest: usize, forced: bool) {
+    fn choose_terms(&mut self, richest: Model, forced: bool) {
         let columns = self.columns;
         let rows = self.means.len() + self.contrasts.len();
         let factor = self.factor(self.worth(JUDGING));
-        let span =
-            |power: usize| (power < columns.span_columns()).then(|| columns.span_place(power));
-        let influence = |j| (j < columns.influence_columns()).then(|| columns.influence_place(j));
+        let spans = richest.span_terms().min(columns.span_columns());
+        let span = |power: usize| (power < spans).then(|| columns.span_place(power));
+        let influence = |j: usize| {
+            let is_wanted = j < columns.influence_columns() && richest.influences[j];
+            is_wanted.then(|| columns.influence_place(j))
+        };
         let wanted = [span(0), influence(0), influence(1), span(1), span(2)];
         for place in wanted.into_iter().flatten() {
             let is_higher_span = (place > columns.span_place(0))
@@ -204,7 +206,7 @@ impl Joint {
                 self.extras.push(place);
             }
         }
-        for degree in 1..=highest.min(columns.time_degree()) {
+        for degree in 1..=usize::from(richest.degree).min(columns.time_degree()) {
             let coefficients = self.extras.len() + degree + 1;
             let needed = if forced {
                 coefficients + 1
@@ -235,16 +237,9 @@ impl Joint {
     /// All rows in the window's columns, at one variance.
     pub(super) fn factor(&self, worth: Worth) -> Factor {
         let width = self.columns.count();
-        let mut factor = Factor::new(width);
+        let multiplier = |weight| self.weighting.multiplier(weight);
+        let mut factor = factor_of(&self.means, width, multiplier);
         let mut scaled = [0.0; MAX_WIDTH];
-        for row in &self.means {
-            let root = (row.weight * self.weighting.multiplier(row.weight)).sqrt();
-            for (to, phi) in scaled.iter_mut().zip(&row.phi[..width]) {
-                *to = root * phi;
-            }
-            scaled[width] = root * row.error;
-            factor.insert(&scaled[..=width]);
-        }
         for contrast in &self.contrasts {
             let scale = worth.scales[contrast.kind];
             for (to, entry) in scaled.iter_mut().zip(&contrast.row) {
@@ -441,18 +436,18 @@ impl Joint {
 
     /// The models of the first `least`, `least` + 1 … of these columns.
     fn contest(&self, sides: &Sides, order: &[usize], least: usize) -> Contest {
-        let rungs = |(effective, factor): &(f64, Factor)| {
+        let grades = |(effective, factor): &(f64, Factor)| {
             let rss = factor.choose(order).nested_rss();
-            let rungs = Rungs {
+            let grades = Grades {
                 rss: rss.as_slice()[least - 1..order.len()].to_vec(),
                 rounding: self.rounding,
                 least,
             };
-            (*effective, rungs)
+            (*effective, grades)
         };
         Contest {
-            cautious: rungs(&sides.cautious),
-            plain: rungs(&sides.plain),
+            cautious: grades(&sides.cautious),
+            plain: grades(&sides.plain),
             segments: self.segments(),
             lag_one: self.lag_one,
         }

@@ -5,11 +5,8 @@
 //! moves over gradually, and the disagreement of the degrees enters its uncertainty (Buckland,
 //! Burnham & Augustin, *Biometrics* 53 (1997) 603; from memory).
 //!
-//! **Two weights.** A degree that may be wrong costs the mean its noise, but leaving it out of the
-//! uncertainty costs an interval that misses the truth. So ê is the mean by weights that charge a
-//! coefficient `PRICE`, and u² gathers the disagreement with ê by Akaike's weights, which charge
-//! 2 and give the higher degrees their due sooner. What no degree can follow, a drift that turned
-//! within the window, is looked for besides (see `turn`).
+//! ê and u² weigh degrees at two prices (see `weights`). What no degree can follow, a drift that
+//! turned within the window, is looked for besides (see `turn`).
 //!
 //! All rows count, those of the open segment too: the newest say most about now. Segments weigh as
 //! in the between-segments problem, so with equal counts this *is* the plain fit of all rows. The
@@ -26,10 +23,11 @@ use crate::fit::between::{Between, Groups};
 use crate::fit::correlation::{Caution, cautious, effective_sample_size, variance_inflation};
 use crate::fit::factor::{Factor, PerColumn};
 use crate::fit::gain::Contest;
+use crate::fit::joint::{Joint, Worth};
 use crate::fit::model::Model;
 use crate::fit::turn::allowance;
+use crate::fit::weights::{Rival, Weights};
 use crate::fit::{Fit, ModelWeight, Published};
-use crate::math;
 use crate::time::Timestamp;
 use nalgebra::DMatrix;
 
@@ -41,14 +39,6 @@ pub(crate) const PUBLISHING: Caution = Caution {
     growth: 1.0,
     spread: 1.28,
 };
-/// What a coefficient costs a degree in the mean, as a penalty on −2 ln of the likelihood. It is
-/// Schwarz's ln n of n = 55, about a window of 64 segments in white noise; kept where correlation
-/// makes the sample smaller, since there too the mean must not wander with the noise. Simulated
-/// without drift: RMS error 0.039σ in white noise and 0.118σ in AR(1) 0.8, against 0.052σ and
-/// 0.151σ at Akaike's 2, where a degree 0 that knew would make 0.031σ and 0.094σ.
-const PRICE: f64 = 4.0;
-/// The same for the weights by which disagreement counts in u²: Akaike's.
-const SPREAD_PRICE: f64 = 2.0;
 /// Closed segments from which on their scatter is used.
 const LEAST_SEGMENTS: usize = 3;
 /// Degrees of freedom of a declared variance, if the rows' own are fewer: its root known to 25 %
@@ -99,6 +89,16 @@ impl Scatter {
             inflation: variance_inflation(r),
             effective: effective_sample_size(segments as f64, r),
         })
+    }
+
+    /// The same of a problem with span terms or influence quantities.
+    pub(super) fn of_joint(joint: &Joint, worth: Worth) -> Self {
+        Self {
+            variance: joint.variance,
+            degrees_of_freedom: joint.freedom,
+            inflation: worth.inflation,
+            effective: worth.effective,
+        }
     }
 
     /// The same, but no less than what is known beforehand of a row: values that happen to be equal
@@ -177,8 +177,7 @@ impl Fit {
             return None;
         }
         let forced = self.setup.forced_degree;
-        let highest = usize::from(forced.unwrap_or(self.setup.max_degree))
-            .min(self.window.columns().time_degree());
+        let highest = self.highest_degree();
         let groups = Groups::of(&self.window);
         if !self.model().is_zero_only()
             && let Some(blended) = self.blended(&groups, row_variance)
@@ -222,10 +221,7 @@ impl Fit {
             residual_sd: self.rows_sd(largest),
             criterion: match (&judged, forced) {
                 (Some(judged), None) => Contest::of(judged).criterion_values(self.setup.criterion),
-                _ => CriterionValues {
-                    name: String::new(),
-                    values: Vec::new(),
-                },
+                _ => CriterionValues::default(),
             },
             window: WindowSeen {
                 from,
@@ -297,8 +293,8 @@ pub(super) fn reweighted(groups: &Groups<'_>, between: Option<&Between>) -> Opti
     Some((merged, level))
 }
 
-/// The degrees 0 … `largest` with their weights `w_k ∝ exp(½ (n_eff ln(RSS_0/RSS_k) − price·k))`,
-/// or all weight on `largest` if `forced`; `None` if the rows are not at enough different times.
+/// The degrees 0 … `largest` with their weights, or all weight on `largest` if `forced`; `None` if
+/// the rows are not at enough different times.
 fn members(
     factor: &Factor,
     largest: usize,
@@ -306,32 +302,25 @@ fn members(
     scatter: &Scatter,
     judged: Option<&Between>,
 ) -> Option<Vec<Member>> {
-    let logarithms = |price: f64| -> Vec<f64> {
-        let mut logarithms = vec![0.0; largest + 1];
+    let weights = match judged {
+        Some(between) if !forced => {
+            let rival = |degree| Rival {
+                rss: between.grades.known(degree),
+                coefficients: degree + 1,
+            };
+            let rivals: Vec<Rival> = (0..=largest).map(rival).collect();
+            Weights::of(&rivals, scatter.effective)
+        }
         // With a forced degree the segments may bear fewer degrees than the rows: nothing is
         // weighed.
-        if let Some(between) = judged.filter(|_| !forced) {
-            for k in 1..=largest {
-                let step = 0.5 * (scatter.effective * between.ln_ratio_of(k) - price);
-                logarithms[k] = logarithms[k - 1] + step;
-            }
-        }
-        logarithms
-    };
-    let of_spread = logarithms(SPREAD_PRICE);
-    let (weights, spreads) = if forced {
-        let mut only = vec![0.0; largest + 1];
-        only[largest] = 1.0;
-        (only.clone(), only)
-    } else {
-        (normed(&logarithms(PRICE)), normed(&of_spread))
+        _ => Weights::all_on_last(largest + 1),
     };
     (0..=largest)
         .map(|k| {
             Some(Member {
-                weight: weights[k],
-                spread: spreads[k],
-                logarithm: of_spread[k],
+                weight: weights.mean[k],
+                spread: weights.spread[k],
+                logarithm: weights.logarithms[k],
                 coefficients: factor.solve(k + 1)?,
                 root: factor.covariance_factor(k + 1)?,
             })
@@ -352,17 +341,6 @@ fn zero_only(members: &[Member]) -> Vec<ModelWeight> {
             weight: member.weight,
         })
         .collect()
-}
-
-/// Weights that sum to 1, from their logarithms.
-fn normed(logarithms: &[f64]) -> Vec<f64> {
-    let highest = logarithms.iter().copied().fold(f64::MIN, f64::max);
-    let weights: Vec<f64> = logarithms
-        .iter()
-        .map(|logarithm| math::exp(logarithm - highest))
-        .collect();
-    let sum: f64 = weights.iter().sum();
-    weights.iter().map(|weight| weight / sum).collect()
 }
 
 /// What turns add to u² at scaled time `now`, the newest pair's, where ê is `mean`, counted from

@@ -1,10 +1,15 @@
-//! The levels and influence quantities that a stretch has seen: beyond them nothing was learned.
+//! The levels and influence quantities in a window: beyond them nothing was learned.
+//!
+//! Every segment knows the range of its own rows, so that what leaves the window, or is taken out
+//! of it, leaves the range as well.
 
-use crate::fit::Row;
 use crate::fit::basis::{Columns, MAX_INFLUENCES};
+use crate::fit::row::Row;
+use crate::fit::segment::Segment;
+use crate::fit::window::Window;
 use serde::{Deserialize, Serialize};
 
-/// Lowest and highest regressors that entered a stretch; `None` before the first row.
+/// Lowest and highest regressors of some rows; `None` without rows.
 #[derive(Clone, Copy, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Seen {
     /// Of x.
@@ -14,13 +19,46 @@ pub struct Seen {
 }
 
 impl Seen {
-    /// Takes a row that entered.
+    /// Takes a row that entered. The level counts even where no span is configured: the zero is
+    /// valid near the levels that it was seen at.
     pub(crate) fn take(&mut self, row: &Row, columns: Columns) {
         widen(&mut self.x, row.x);
         let influences = self.influences.iter_mut().zip(row.influences);
         for (range, value) in influences.take(columns.influence_columns()) {
             widen(range, value);
         }
+    }
+
+    /// Takes all that another has seen.
+    fn join(&mut self, other: &Self) {
+        let own = [&mut self.x].into_iter().chain(&mut self.influences);
+        let others = [&other.x].into_iter().chain(&other.influences);
+        for (range, other) in own.zip(others) {
+            if let Some((lowest, highest)) = *other {
+                widen(range, lowest);
+                widen(range, highest);
+            }
+        }
+    }
+}
+
+impl Window {
+    /// The levels and influence quantities of the rows in it.
+    #[must_use]
+    pub fn seen(&self) -> Seen {
+        let mut seen = Seen::default();
+        for segment in self.closed().chain(self.open()) {
+            seen.join(segment.seen());
+        }
+        seen
+    }
+}
+
+impl Segment {
+    /// The levels and influence quantities of its rows.
+    #[must_use]
+    pub fn seen(&self) -> &Seen {
+        &self.seen
     }
 }
 

@@ -1,9 +1,10 @@
 //! A slice of the window: the rows that enter and leave together, as one factor with its own level.
 
-use crate::fit::basis::{Columns, Frame};
+use crate::fit::basis::Columns;
 use crate::fit::factor::Factor;
 use crate::fit::kernel::MAX_WIDTH;
-use crate::fit::row::{WindowRow, scale_row};
+use crate::fit::row::{Coordinates, Row};
+use crate::fit::seen::Seen;
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
@@ -19,9 +20,22 @@ pub struct Segment {
     pub(crate) slice: i64,
     pub(crate) first: Timestamp,
     pub(crate) last: Timestamp,
+    pub(crate) seen: Seen,
 }
 
 impl Segment {
+    /// The segment that this row is to be the first of, with nothing in it yet but an empty factor.
+    pub(crate) fn beginning_with(row: &Row, slice: i64, factor: Factor) -> Self {
+        Self {
+            factor,
+            level: row.error,
+            slice,
+            first: row.time,
+            last: row.time,
+            seen: Seen::default(),
+        }
+    }
+
     /// Its rows in the window's frame, errors counted from [`Segment::level`]. To merge it with
     /// others at a common level L: [`Factor::merge_level`] with L − [`Segment::level`].
     #[must_use]
@@ -60,19 +74,21 @@ impl Segment {
         self.slice
     }
 
-    /// Widens its times to a row at `time`.
-    pub(crate) fn reach(&mut self, time: Timestamp) {
-        self.first = self.first.min(time);
-        self.last = self.last.max(time);
+    /// Widens its times and ranges to a row.
+    #[inline]
+    pub(crate) fn reach(&mut self, row: &Row, columns: Columns) {
+        self.first = self.first.min(row.time);
+        self.last = self.last.max(row.time);
+        self.seen.take(row, columns);
     }
 
-    /// Takes a row; the segment stands in `frame`.
-    pub(crate) fn take(&mut self, row: &WindowRow, columns: Columns, frame: Frame) {
+    /// Takes a row; the segment stands in these coordinates.
+    pub(crate) fn take(&mut self, row: &Row, coordinates: Coordinates) {
         let mut scaled = [0.0; MAX_WIDTH];
-        let count = columns.count();
-        let root = scale_row(columns, frame, row, &mut scaled);
+        let count = coordinates.columns.count();
+        let root = coordinates.fill_weighted(row, &mut scaled);
         scaled[count] = (row.error - self.level) * root;
         self.factor.insert(&scaled[..=count]);
-        self.reach(row.time);
+        self.reach(row, coordinates.columns);
     }
 }

@@ -140,7 +140,7 @@ impl Between {
                 let with = sums.residual + explained(k);
                 let coefficient = with / own;
                 let shift = coefficient * (reach - reached(k));
-                let rss = (self.rungs.rss[k] - coefficient * with).max(0.0) + self.rungs.rounding;
+                let rss = (self.grades.rss[k] - coefficient * with).max(0.0) + self.grades.rounding;
                 (own > LEAST_OWN * line && shift.is_finite()).then_some((k, shift, rss))
             })
             .collect()
@@ -239,7 +239,7 @@ mod tests {
             };
             let shift = value(&with, columns + 1) - value(&without, columns);
             assert_relative_eq!(turn.shift, shift, epsilon = 1e-9, max_relative = 1e-6);
-            let ratio = between.rungs.rss[0] / with.nested_rss()[columns];
+            let ratio = between.grades.rss[0] / with.nested_rss()[columns];
             let penalty = turn.degree as f64 + 1.0 + halving as f64 * std::f64::consts::LN_2;
             let expected = 32.0 * crate::math::ln(ratio) - penalty;
             assert_relative_eq!(turn.logarithm, expected, epsilon = 1e-6);

@@ -28,11 +28,10 @@
 
 use crate::fit::basis::{Columns, Frame};
 use crate::fit::centre::{Centre, FAR_OFF, SETTLED, shift_to_mean};
-pub use crate::fit::cut::{Cut, Inserted};
+pub use crate::fit::cut::Cut;
 use crate::fit::factor::Factor;
 use crate::fit::kernel::MAX_WIDTH;
-pub use crate::fit::row::WindowRow;
-use crate::fit::row::scale_row;
+use crate::fit::row::{Coordinates, Inserted, Row};
 use crate::fit::segment::Segment;
 use crate::fit::spare::Spare;
 use crate::time::{Duration, Timestamp};
@@ -49,15 +48,15 @@ const FAR: f64 = 2.0;
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Window {
     columns: Columns,
-    pub(super) cut: Cut,
-    frame: Frame,
-    centre: Centre,
+    cut: Cut,
+    pub(super) frame: Frame,
+    pub(super) centre: Centre,
     /// The centre is a mean of rows, no longer the first row's.
-    has_settled: bool,
+    pub(super) has_settled: bool,
     /// Newest phenomenon time ever inserted; `None` before the first row.
     pub(super) newest: Option<Timestamp>,
     /// Some rows have left.
-    has_dropped: bool,
+    pub(super) has_dropped: bool,
     /// Closed segments, oldest first.
     pub(super) closed: VecDeque<Segment>,
     pub(super) open: Option<Segment>,
@@ -121,6 +120,15 @@ impl Window {
     #[must_use]
     pub fn centre(&self) -> Centre {
         self.centre
+    }
+
+    /// What a row's entries are in every factor in the window, as of now.
+    pub(crate) fn coordinates(&self) -> Coordinates {
+        Coordinates {
+            columns: self.columns,
+            frame: self.frame,
+            centre: self.centre,
+        }
     }
 
     /// All rows in the window, errors counted from [`Window::level`].
@@ -192,16 +200,16 @@ impl Window {
         }
     }
 
-    /// Takes one row.
-    pub fn insert(&mut self, row: &WindowRow) -> Inserted {
+    /// Takes one row, which it must be able to compute with ([`crate::fit::Fit::insert`] looks).
+    pub fn insert(&mut self, row: &Row) -> Inserted {
         if self.columns.is_time_only() {
-            return self.insert_centred(row);
+            return self.enter(row);
         }
         if self.newest.is_none() {
             self.centre = row.centre();
         }
         let frame = self.frame;
-        let inserted = self.insert_centred(&row.counted_from(self.centre));
+        let inserted = self.enter(row);
         if !self.has_settled && self.closed.len() >= SETTLED {
             self.has_settled = true;
             self.move_centre(0.0);
@@ -211,7 +219,7 @@ impl Window {
         inserted
     }
 
-    fn insert_centred(&mut self, row: &WindowRow) -> Inserted {
+    fn enter(&mut self, row: &Row) -> Inserted {
         let Some(newest) = self.newest else {
             self.frame = self.frame_at(row.time);
             return self.insert_newest(row);
@@ -221,8 +229,8 @@ impl Window {
         }
         if self.is_too_old(row.time) {
             return Inserted {
-                closed: false,
                 too_old: true,
+                ..Inserted::default()
             };
         }
         match self.cut {
@@ -231,7 +239,7 @@ impl Window {
         }
     }
 
-    fn insert_newest(&mut self, row: &WindowRow) -> Inserted {
+    fn insert_newest(&mut self, row: &Row) -> Inserted {
         match self.cut {
             Cut::Time { slice, keep } => {
                 let number = row.time.0.div_euclid(slice.0);
@@ -240,7 +248,7 @@ impl Window {
                 self.insert_open(row, number);
                 Inserted {
                     closed,
-                    too_old: false,
+                    ..Inserted::default()
                 }
             }
             Cut::Rows { per_segment, keep } => {
@@ -265,7 +273,7 @@ impl Window {
     }
 
     /// Cut by rows: the row enters the open segment, which closes when it is full.
-    fn insert_counted(&mut self, row: &WindowRow, per_segment: u32, keep: u32) -> Inserted {
+    fn insert_counted(&mut self, row: &Row, per_segment: u32, keep: u32) -> Inserted {
         let rows = self.open.as_ref().map_or(0, Segment::rows);
         let closes = rows + 1 >= u64::from(per_segment);
         let drops = closes && self.closed.len() >= keep as usize;
@@ -288,12 +296,12 @@ impl Window {
         }
         Inserted {
             closed: closes,
-            too_old: false,
+            ..Inserted::default()
         }
     }
 
     /// Cut by time: a row older than the newest enters its own slice.
-    fn insert_late(&mut self, row: &WindowRow, slice: Duration) -> Inserted {
+    fn insert_late(&mut self, row: &Row, slice: Duration) -> Inserted {
         let number = row.time.0.div_euclid(slice.0);
         let open = self.open.as_ref().map_or(number, |open| open.slice);
         if number == open {
@@ -311,23 +319,23 @@ impl Window {
             let segment = self.new_segment(row, number);
             self.closed.insert(place, segment);
         }
-        let (columns, frame) = (self.columns, self.frame);
-        self.closed[place].take(row, columns, frame);
+        let coordinates = self.coordinates();
+        self.closed[place].take(row, coordinates);
         self.rebuild();
         Inserted {
             closed: true,
-            too_old: false,
+            ..Inserted::default()
         }
     }
 
     /// The row enters the open segment and the total.
-    fn insert_open(&mut self, row: &WindowRow, number: i64) {
+    fn insert_open(&mut self, row: &Row, number: i64) {
         if self.total.rows() == 0 {
             self.total_level = row.error;
         }
         let mut scaled = [0.0; MAX_WIDTH];
         let count = self.columns.count();
-        let root = scale_row(self.columns, self.frame, row, &mut scaled);
+        let root = self.coordinates().fill_weighted(row, &mut scaled);
         scaled[count] = (row.error - self.total_level) * root;
         if self.open.is_none() {
             self.open = Some(self.new_segment(row, number));
@@ -336,31 +344,25 @@ impl Window {
             let error = (row.error - open.level) * root;
             self.total
                 .insert_both(&mut open.factor, &scaled[..=count], error);
-            open.reach(row.time);
+            open.reach(row, self.columns);
         }
         self.newest = self.newest.max(Some(row.time));
     }
 
     /// The row enters the open segment only.
-    fn insert_segment(&mut self, row: &WindowRow, number: i64) {
+    fn insert_segment(&mut self, row: &Row, number: i64) {
         if self.open.is_none() {
             self.open = Some(self.new_segment(row, number));
         }
+        let coordinates = self.coordinates();
         if let Some(open) = &mut self.open {
-            open.take(row, self.columns, self.frame);
+            open.take(row, coordinates);
         }
         self.newest = self.newest.max(Some(row.time));
     }
 
-    fn new_segment(&mut self, row: &WindowRow, slice: i64) -> Segment {
-        let factor = self.spare.take(self.columns.count());
-        Segment {
-            factor,
-            level: row.error,
-            slice,
-            first: row.time,
-            last: row.time,
-        }
+    fn new_segment(&mut self, row: &Row, slice: i64) -> Segment {
+        Segment::beginning_with(row, slice, self.spare.take(self.columns.count()))
     }
 
     /// The open segment becomes the newest closed one.

@@ -6,7 +6,7 @@ use super::noise::Known;
 use crate::channel::recent::{Recent, Remembered};
 use crate::channel::stretch::{Stretch, row};
 use crate::fit::Row;
-use crate::fit::ahead::Ahead;
+use crate::fit::predict::Fitted;
 use crate::median::upper_median;
 use crate::quantile;
 use crate::setup::ChannelSetup;
@@ -129,7 +129,7 @@ impl Question<'_> {
     }
 
     /// The last [`BEFORE`] pairs that entered before `from`, and all since then, less the model.
-    fn rests(&self, pairs: &[&Remembered], ahead: &Ahead<'_>, from: Timestamp) -> Vec<Rest> {
+    fn rests(&self, pairs: &[&Remembered], ahead: &Fitted<'_>, from: Timestamp) -> Vec<Rest> {
         let rest = |held: &&Remembered| {
             let row = row(&held.pair, self.setup);
             let residual = ahead.residual(&row);

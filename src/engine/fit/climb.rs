@@ -1,6 +1,6 @@
-//! The ladder that one term of the announced model climbs: when a rung is raised and lowered.
+//! How one term of the announced model climbs from grade to grade, and comes down again.
 //!
-//! A higher rung must be better by a gain that lasts: the smaller the gain, the longer. A lower one
+//! A higher grade must be better by a gain that lasts: the smaller the gain, the longer. A lower one
 //! must be as good for half a window. So noise that looks like a drift for a while is waited out,
 //! and a plain drift is announced soon. Doubts about the sample always count for what is announced.
 //!
@@ -20,20 +20,20 @@ const LEAST_GAIN: f64 = 2.0;
 const GAIN_TIMES_HOLD: f64 = 1.7;
 /// However large the gain, it must last for this part of a full window.
 const SHORTEST_HOLD: f64 = 0.25;
-/// A lower rung is as good when the higher ones gain no more than this.
+/// A lower grade is as good when the higher ones gain no more than this.
 const AS_GOOD: f64 = 2.0;
-/// A lower rung must be as good for this part of a full window.
+/// A lower grade must be as good for this part of a full window.
 const HOLD_TO_LOWER: f64 = 0.5;
 
-/// The announced rung of one term and what is on its way to change it.
+/// The announced grade of one term and what is on its way to change it.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
-pub(crate) struct Ladder {
-    /// The announced rung.
+pub(crate) struct Climb {
+    /// The announced grade.
     pub(crate) announced: u8,
-    /// Gains of higher rungs over the announced one, group by group, newest last: an unbroken run
+    /// Gains of higher grades over the announced one, group by group, newest last: an unbroken run
     /// of at least [`LEAST_GAIN`] each. No longer than a window.
     gains: VecDeque<f64>,
-    /// For how many groups in a row the next lower rung has been as good.
+    /// For how many groups in a row the next lower grade has been as good.
     idle: u32,
 }
 
@@ -48,7 +48,7 @@ pub(crate) struct Verdict {
     pub(crate) raises: bool,
 }
 
-impl Ladder {
+impl Climb {
     pub(crate) fn at(announced: u8) -> Self {
         Self {
             announced,
@@ -68,14 +68,19 @@ impl Ladder {
             .or_else(|| self.falling(contest, criterion, when_full))
     }
 
-    /// Moves to another rung and begins to count anew; the rung before.
+    /// Forgets the runs that a change was on its way by.
+    pub(crate) fn forget_runs(&mut self) {
+        *self = Self::at(self.announced);
+    }
+
+    /// Moves to another grade and begins to count anew; the grade before.
     pub(crate) fn move_to(&mut self, to: u8) -> u8 {
         let from = self.announced;
         *self = Self::at(to);
         from
     }
 
-    /// Takes note of the gain of higher rungs; tells when it has lasted.
+    /// Takes note of the gain of higher grades; tells when it has lasted.
     fn rising(
         &mut self,
         contest: &Contest,
@@ -98,9 +103,9 @@ impl Ladder {
         lasting(&self.gains, when_full)
     }
 
-    /// Takes note of whether the next lower rung is as good; tells when it has been so for long
-    /// enough. Doubts about the sample count for the announced rung here: a drift that has been
-    /// seen is not taken back because its noise became harder to judge. A rung that the window's
+    /// Takes note of whether the next lower grade is as good; tells when it has been so for long
+    /// enough. Doubts about the sample count for the announced grade here: a drift that has been
+    /// seen is not taken back because its noise became harder to judge. A grade that the window's
     /// segments can no longer bear counts as not needed.
     fn falling(
         &mut self,

@@ -39,7 +39,7 @@ impl<'a> Topics<'a> {
         format!("holdtrue/{}/outlook/{channel}", self.node)
     }
 
-    /// The newest change of a channel's degree, with its evidence; retained.
+    /// The newest change of a channel's announced model, with its evidence; retained.
     #[must_use]
     pub fn degree(&self, channel: &str) -> String {
         format!("holdtrue/{}/degree/{channel}", self.node)

@@ -6,6 +6,7 @@ use crate::support::{
     since_start, span,
 };
 use holdtrue::document::correction::{CorrectedDocument, CorrectionDocument};
+use holdtrue::document::degree::DegreeDocument;
 use holdtrue_engine::event::{Corrected, Correction, Input, Output, RefusedReason, Source};
 use holdtrue_engine::setup::{
     ChannelInfluence, ChannelSetup, Clock, InfluenceId, InfluenceSetup, PairNoise, ReferenceId,
@@ -353,6 +354,128 @@ fn at_one_level_no_span_is_claimed() {
     let last = json(all.last().expect("one"), &setup);
     assert_eq!(last["span_refused"], "no-spread");
     assert_eq!(last["judged_at"], 20.0);
+}
+
+/// The documents of all changes of the announced model; people are told as well, though soon after
+/// another notice of the same code only by its count.
+fn changes(outputs: &[Output], setup: &Setup) -> Vec<Value> {
+    let codes = ["model-changed", "degree-raised", "degree-lowered"];
+    let told = outputs.iter().filter(
+        |output| matches!(output, Output::Notice(notice) if codes.contains(&notice.code.as_str())),
+    );
+    let each = outputs.iter().filter_map(|output| match output {
+        Output::Degree(change) => {
+            let document = DegreeDocument::new(change, &setup.channels[0]);
+            let text = serde_json::to_string(&document).expect("a document");
+            Some(follows(
+                &text,
+                include_str!("../../config/schemas/degree.json"),
+            ))
+        }
+        _ => None,
+    });
+    let changes: Vec<Value> = each.collect();
+    assert!((1..=changes.len()).contains(&told.count()));
+    changes
+}
+
+/// Every change states the numbers that decided it, whichever term it is of; also the withdrawal of
+/// a span whose level has stopped to vary.
+#[test]
+fn every_change_of_the_model_states_its_evidence() {
+    let noise = PairNoise {
+        reference: 0.005,
+        indication: 0.02,
+    };
+    let setup = setup(noise, |_| {});
+    let mut engine = engine(setup.clone());
+    let mut random = ChaCha12Rng::seed_from_u64(9_507);
+    let normal = Normal::new(0.0, 0.02).expect("a deviation");
+    let mut outputs = Vec::new();
+    for n in 0..2200 {
+        let (level, warmth, _) = world(n);
+        let level = if n < 1500 { level } else { 20.0 };
+        let seconds = STEP * f64::from(n);
+        let shown = level + error(level, warmth) + normal.sample(&mut random);
+        let inputs = [
+            temperature(seconds, warmth),
+            reference_value(0, seconds, level),
+            indication(0, seconds, shown),
+        ];
+        outputs.extend(feed(&mut engine, &inputs));
+    }
+    let changes = changes(&outputs, &setup);
+    let number = |change: &Value, key: &str| change[key].as_f64().expect("a number");
+    let of = |term: &str| -> Vec<&Value> {
+        let own = changes.iter().filter(|change| change["term"] == term);
+        own.collect()
+    };
+    let [claimed] = of("influence")[..] else {
+        panic!("the temperature is claimed once: {changes:?}");
+    };
+    assert_eq!(claimed["influence"], "temperature");
+    let [raised, withdrawn] = of("span")[..] else {
+        panic!("the span is claimed and withdrawn: {changes:?}");
+    };
+    for change in [claimed, raised] {
+        assert_eq!((number(change, "from"), number(change, "to")), (0.0, 1.0));
+        assert!(number(change, "gain") >= number(change, "needed"));
+        assert!(number(change, "held_segments") >= number(change, "needed_segments"));
+        assert_eq!(change["rss"].as_array().map(Vec::len), Some(2));
+        assert_eq!(change["refused"], Value::Null);
+    }
+    assert_eq!(raised["influence"], Value::Null);
+    assert_eq!(
+        (number(withdrawn, "from"), number(withdrawn, "to")),
+        (1.0, 0.0)
+    );
+    // What is left of the spread bends the slope before there is none.
+    assert_eq!(withdrawn["refused"], "regressor-noise");
+    assert!(of("zero").is_empty(), "nothing drifts: {changes:?}");
+}
+
+/// What is not configured is not refused either; what is, is refused from the first document on
+/// until there are segments enough to tell.
+#[test]
+fn a_span_is_refused_only_where_one_is_configured() {
+    let noise = (0.0, 0.02);
+    let without = setup(PairNoise::default(), |channel| {
+        channel.fit.max_span_degree = None;
+    });
+    let outputs = run(&without, 600, noise, 9_505);
+    let all = corrections(&outputs);
+    assert!(all.len() > 3);
+    for correction in all {
+        assert_eq!(json(correction, &without)["span_refused"], Value::Null);
+    }
+    let with = setup(PairNoise::default(), |_| {});
+    let outputs = run(&with, 6, noise, 9_506);
+    let first = *corrections(&outputs).first().expect("a correction");
+    assert_eq!(json(first, &with)["span_refused"], "few-segments");
+}
+
+/// A level that has left the window is no longer one that the correction was learned at.
+#[test]
+fn the_range_is_that_of_the_window() {
+    let setup = setup(PairNoise::default(), |channel| {
+        channel.fit.window = WindowLength::Pairs(128);
+    });
+    let mut engine = engine(setup);
+    let mut outputs = Vec::new();
+    for n in 0..600_u32 {
+        // High for a while, then low for good.
+        let level = if n < 100 { 40.0 } else { 20.0 } + f64::from(n % 7);
+        let seconds = STEP * f64::from(n);
+        let inputs = [
+            temperature(seconds, 15.0 + f64::from(n % 5)),
+            reference_value(0, seconds, level),
+            indication(0, seconds, level + 0.5 + 0.01 * f64::from(n % 3)),
+        ];
+        outputs.extend(feed(&mut engine, &inputs));
+    }
+    let ranges: Vec<_> = corrections(&outputs).iter().map(|it| it.range).collect();
+    assert!(ranges.contains(&(20.0, 46.0)), "{ranges:?}");
+    assert_eq!(ranges.last(), Some(&(20.0, 26.0)));
 }
 
 /// Zero and span checks alone, before and after each interval, correct as the two-point formula for

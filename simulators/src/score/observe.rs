@@ -6,6 +6,7 @@
 use super::world::Place;
 use crate::sensor::START;
 use holdtrue_engine::event::{AlarmKind, AlarmState, Correction, Output, Subject};
+use holdtrue_engine::fit::Term;
 use holdtrue_engine::setup::ChannelId;
 
 /// A step was confirmed.
@@ -105,7 +106,7 @@ impl Observer {
                     });
                 }
             }
-            Output::Degree(change) if change.to > change.from => {
+            Output::Degree(change) if change.term == Term::Zero && change.to > change.from => {
                 let sensor = Place::Sensor(index(change.channel));
                 self.say(DEGREE_RAISED.to_owned(), Some(sensor), day);
                 if let Some(said) = self.said.last_mut() {

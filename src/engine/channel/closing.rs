@@ -107,7 +107,7 @@ impl Channel {
             rejected: taken.rejected,
         });
         if let Some(change) = taken.change.take() {
-            telling::tell_degree(change, scene, report);
+            telling::tell_change(change, scene, report);
         }
         taken
     }

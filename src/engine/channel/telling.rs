@@ -1,9 +1,9 @@
-//! What a channel says of its pairs and of its degree.
+//! What a channel says of its pairs and of its announced model.
 
 use super::Scene;
 use super::pairing::Pair;
 use crate::event::{DegreeChange, Flag, Output, PairFate, RefusedReason, Rejection, Subject};
-use crate::fit::{Change, Term};
+use crate::fit::{Change, SpanRefusal, Term};
 use crate::report::Report;
 use crate::wording::readable;
 
@@ -79,56 +79,67 @@ fn fate(pair: &Pair, rejected: Option<Rejection>, scene: &Scene<'_>) -> Output {
     })
 }
 
-/// Says that the announced degree changed, with its evidence; a rise is also told to people.
-pub(super) fn tell_degree(change: Change, scene: &Scene<'_>, report: &mut Report<'_>) {
+/// Says that the announced model changed in one term, with its evidence; people are told as well.
+pub(super) fn tell_change(change: Change, scene: &Scene<'_>, report: &mut Report<'_>) {
+    let (code, text) = in_words(&change, scene);
+    report.say(Output::Degree(Box::new(DegreeChange {
+        channel: scene.id,
+        at: scene.now,
+        term: change.term,
+        from: change.from,
+        to: change.to,
+        evidence: change.evidence,
+        refused: change.refused,
+    })));
+    let subject = Subject::Channel(scene.id);
+    report.notice(scene.now, subject, code, || text);
+}
+
+/// The code of a change's notice, and its text.
+fn in_words(change: &Change, scene: &Scene<'_>) -> (&'static str, String) {
     let Change {
         term,
         from,
         to,
         evidence,
-        ..
+        refused,
     } = change;
-    if term != Term::Zero {
-        tell_term(term, (from, to), scene, report);
-        return;
-    }
-    let (code, word) = if to > from {
-        ("degree-raised", "raised")
-    } else {
-        ("degree-lowered", "lowered")
+    let (gain, judged_by) = (evidence.gain, &evidence.judged_by);
+    let segments = evidence.held_segments;
+    let decided = match refused {
+        Some(refusal) => format!("{} (it gains {gain:.1})", why_refused(*refusal)),
+        None => format!(
+            "the richer model gains {gain:.1} (judged by {judged_by}), held for {segments} segments"
+        ),
     };
-    let (gain, segments) = (evidence.gain, evidence.held_segments);
-    let judged_by = evidence.judged_by.clone();
-    report.say(Output::Degree(Box::new(DegreeChange {
-        channel: scene.id,
-        at: scene.now,
-        from,
-        to,
-        evidence,
-    })));
-    report.notice(scene.now, Subject::Channel(scene.id), code, || {
-        format!(
-            "{}: the degree of the drift was {word} from {from} to {to}: the higher one gains \
-             {gain:.1} (judged by {judged_by}), held for {segments} segments",
-            scene.setup.name
-        )
-    });
-}
-
-/// Says that span terms or an influence quantity came into use or went out of it.
-fn tell_term(term: Term, (from, to): (u8, u8), scene: &Scene<'_>, report: &mut Report<'_>) {
-    let what = match term {
-        Term::Zero => "zero".to_owned(),
-        Term::Span => "span".to_owned(),
+    let (code, what) = match term {
+        Term::Zero if to > from => (
+            "degree-raised",
+            format!("degree of the drift was raised from {from} to {to}"),
+        ),
+        Term::Zero => (
+            "degree-lowered",
+            format!("degree of the drift was lowered from {from} to {to}"),
+        ),
+        Term::Span => (
+            "model-changed",
+            format!("span now has {to} coefficients, before {from}"),
+        ),
         Term::Influence(place) => {
-            let named = scene.setup.influences.get(usize::from(place));
-            named.map_or_else(String::new, |it| format!("influence of {}", it.name))
+            let named = scene.setup.influences.get(usize::from(*place));
+            let name = named.map_or("", |influence| influence.name.as_str());
+            let taken = if to > from { "now in" } else { "no longer in" };
+            ("model-changed", format!("effect of {name} is {taken} use"))
         }
     };
-    report.notice(scene.now, Subject::Channel(scene.id), "model-changed", || {
-        format!(
-            "{}: the model of the error now has {to} coefficients for the {what}, before {from}",
-            scene.setup.name
-        )
-    });
+    (code, format!("{}: the {what}: {decided}", scene.setup.name))
+}
+
+/// Why a span was withdrawn, in words.
+fn why_refused(refusal: SpanRefusal) -> &'static str {
+    match refusal {
+        SpanRefusal::FewSegments => "there are too few segments",
+        SpanRefusal::NoSpread => "the level no longer varies",
+        SpanRefusal::RegressorNoise => "noise in the level would bend it",
+    }
 }

@@ -84,7 +84,7 @@ pub struct Correction {
     pub residual_sd: f64,
     /// Counts the channel's stretches from 1.
     pub stretch: u32,
-    /// Lowest and highest level in the stretch, on the side of the span: the correction was learned
+    /// Lowest and highest level in the window, on the side of the span: the correction was learned
     /// there.
     pub range: (f64, f64),
 }
@@ -120,7 +120,7 @@ pub struct WindowSeen {
 }
 
 /// The criterion of each degree; empty until it can be judged.
-#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct CriterionValues {
     /// `BIC` or `AICc`.
     pub name: String,
@@ -156,7 +156,7 @@ pub struct Corrected {
     pub corrected: f64,
     /// Its expanded uncertainty.
     pub expanded_uncertainty: f64,
-    /// The level or an influence quantity lies beyond what the fit has seen: nothing was learned
+    /// The level or an influence quantity lies beyond what the window holds: nothing was learned
     /// about the error there.
     pub beyond_range: bool,
     /// Influence quantities in force that were not told near this time, by their places: each was

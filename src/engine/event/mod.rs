@@ -93,7 +93,7 @@ pub enum Output {
     },
     /// An alarm changed its state.
     Alarm(AlarmChange),
-    /// The announced degree changed, with the evidence.
+    /// The announced model changed in one term, with the evidence.
     Degree(Box<DegreeChange>),
     /// The sensor stepped: its stretch is closed and a new one begins.
     Step(Box<Step>),

@@ -1,9 +1,15 @@
 //! A step of the sensor closes the stretch: what is told, what is taken back in, which alarms there
 //! are, and what must not happen.
 
-use crate::support::{Noise, at, channel, constant, engine, indication, node, reference};
-use holdtrue_engine::event::{AlarmKind, AlarmState, Output, Step};
-use holdtrue_engine::setup::{ChannelSetup, Clock, WindowLength};
+use crate::support::{
+    Noise, at, channel, constant, engine, feed, indication, node, reading, reference,
+    reference_value,
+};
+use holdtrue_engine::event::{AlarmKind, AlarmState, Output, Source, Step};
+use holdtrue_engine::setup::{
+    ChannelInfluence, ChannelSetup, Clock, InfluenceId, InfluenceSetup, PairNoise, ReferenceKind,
+    WindowLength,
+};
 
 /// Seconds between readings.
 const EVERY: f64 = 60.0;
@@ -179,4 +185,67 @@ fn nobody_looks_for_steps_where_they_are_switched_off() {
     let said = run(off, stepping(20.0, 800));
     assert!(steps(&said).is_empty());
     assert!(alarms(&said).contains(&(604, AlarmKind::ScreenLockedOut, true)));
+}
+
+/// A sensor that has lost 5 % of its span and has a temperature, at levels about 1000 and 20 °C,
+/// with white noise of standard deviation 1. What level and temperature do is no larger than that,
+/// so that the noise is soon known although they are claimed only later. It steps by `size` at the 600th pair.
+fn with_span_and_temperature(size: f64, pairs: u32) -> Vec<(usize, Output)> {
+    let mut channel = small();
+    channel.fit.max_span_degree = Some(0);
+    channel.fit.influences = 1;
+    channel.fit.noise = PairNoise {
+        reference: 0.001,
+        indication: 1.0,
+    };
+    channel.influences = vec![ChannelInfluence {
+        source: InfluenceId(0),
+        name: "temperature".to_owned(),
+        unit: Some("Cel".to_owned()),
+    }];
+    let references = vec![reference("lab", ReferenceKind::Measured)];
+    let mut setup = node(Clock::Readings, references, vec![channel]);
+    setup.influences = vec![InfluenceSetup {
+        name: "hall /t".to_owned(),
+    }];
+    let mut engine = engine(setup);
+    let (mut noise, mut levels) = (Noise::new(15, 0.0), Noise::new(16, 0.0));
+    let mut said = Vec::new();
+    for pair in 0..pairs {
+        let turn = std::f64::consts::TAU * f64::from(pair);
+        let level = 1000.0 + 15.0 * levels.draw();
+        let warmth = 20.0 + 4.0 * (turn / 61.0).cos();
+        let stepped = if pair >= 600 { size } else { 0.0 };
+        let error = -0.05 * level + 0.1 * warmth + stepped + noise.draw();
+        let seconds = EVERY * f64::from(pair);
+        let inputs = [
+            reading(Source::Influence(InfluenceId(0)), seconds, warmth),
+            reference_value(0, seconds, level),
+            indication(0, seconds, level + error),
+        ];
+        let outputs = feed(&mut engine, &inputs);
+        said.extend(outputs.into_iter().map(|output| (pair as usize, output)));
+    }
+    said
+}
+
+/// Level and temperature count from where the window counts them: a step is measured against what
+/// they explain, and what they do is none.
+#[test]
+fn a_step_is_told_from_what_level_and_temperature_do() {
+    let said = with_span_and_temperature(3.0, 800);
+    let steps = steps(&said);
+    let [(found_at, step)] = steps[..] else {
+        panic!("one step, not {steps:?}");
+    };
+    assert!((602..640).contains(&found_at), "{found_at}");
+    assert!((step.size - 3.0).abs() < 4.0 * step.size_u, "{step:?}");
+    assert!(step.size_u < 1.0, "{step:?}");
+    assert!(step.earliest <= at(EVERY * 600.0) && step.latest >= at(EVERY * 600.0));
+    let still = with_span_and_temperature(0.0, 1500);
+    let none: Vec<_> = still
+        .iter()
+        .filter(|(_, output)| matches!(output, Output::Step(_)))
+        .collect();
+    assert!(none.is_empty(), "{none:?}");
 }

@@ -2,9 +2,10 @@
 //! in turn, the fastest round of each counts, so that a busy machine disturbs little. Exit code 1
 //! if a target is missed.
 
-use holdtrue_benches::{Cholesky, DEGREES, Outputs, Stream, batch_qr, outputs};
+use holdtrue_benches::{Case, Cholesky, DEGREES, Outputs, Peers, Stream, batch_qr, outputs};
+use holdtrue_engine::fit::Row;
 use holdtrue_engine::fit::basis::Columns;
-use holdtrue_engine::fit::window::{Cut, Window, WindowRow};
+use holdtrue_engine::fit::window::{Cut, Window};
 use holdtrue_engine::time::Timestamp;
 use std::hint::black_box;
 use std::process::ExitCode;
@@ -15,6 +16,33 @@ const WINDOWS: [(usize, f64); 3] = [(256, 10.0), (1024, 40.0), (4096, 150.0)];
 /// At most so many times the Cholesky's time.
 const SEGMENTED: f64 = 1.4;
 const ONE_ROW: f64 = 3.0;
+/// All that is done with a pair costs at most so many times what the fit does, as configured by
+/// default.
+const CHANNEL: f64 = 3.0;
+const CASES: [Case; 4] = [
+    Case {
+        name: "default, a pair a minute",
+        spacing: 60,
+        beyond_default: false,
+    },
+    Case {
+        name: "default, a pair an hour",
+        spacing: 3600,
+        beyond_default: false,
+    },
+    Case {
+        name: "span 1 and one influence, a pair a minute",
+        spacing: 60,
+        beyond_default: true,
+    },
+    Case {
+        name: "span 1 and one influence, a pair an hour",
+        spacing: 3600,
+        beyond_default: true,
+    },
+];
+/// Pairs of all rounds of one case.
+const PAIRS: usize = 1 << 18;
 /// Rows of all rounds of one window.
 const ROWS: usize = 1 << 21;
 
@@ -36,11 +64,41 @@ fn main() -> ExitCode {
         );
         met &= ratios[0] <= SEGMENTED && ratios[1] <= ONE_ROW && ratios[2] >= faster;
     }
+    println!("us per pair   the fit alone   through the engine");
+    for case in CASES {
+        let [fit, engine] = measure_channel(case);
+        let ratio = engine / fit;
+        println!(
+            "{:<43} {:.2} and {:.2}, {ratio:.2} times",
+            case.name,
+            1e-3 * fit,
+            1e-3 * engine
+        );
+        met &= case.beyond_default || ratio <= CHANNEL;
+    }
     if met {
         ExitCode::SUCCESS
     } else {
         ExitCode::FAILURE
     }
+}
+
+/// Fastest rounds, ns per pair. A round is a window long, so that all segments close in it once.
+fn measure_channel(case: Case) -> [f64; 2] {
+    let mut peers = Peers::new(case);
+    let mut best = [f64::INFINITY; 2];
+    for round in 0..(PAIRS / case.pairs()).max(6) {
+        let (inputs, rows) = peers.pairs(case.pairs());
+        // The first rounds fill the window.
+        let counts = round >= 2;
+        time(counts.then_some(&mut best[0]), rows.len(), || {
+            peers.through_fit(&rows);
+        });
+        time(counts.then_some(&mut best[1]), rows.len(), || {
+            peers.through_engine(&inputs);
+        });
+    }
+    best
 }
 
 /// Fastest rounds, ns per row.
@@ -92,7 +150,7 @@ fn time(best: Option<&mut f64>, rows: usize, work: impl FnOnce()) {
 
 fn slide(window: &mut Window, (time, error): (i64, f64)) -> Option<Outputs> {
     let time = Timestamp(time);
-    window.insert(&WindowRow {
+    window.insert(&Row {
         time,
         error,
         weight: 1.0,

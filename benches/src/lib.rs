@@ -1,11 +1,13 @@
 //! What the benchmark of the fit compares: an irregular stream, the outputs wanted at every row,
-//! and the peers.
+//! and the peers; and a whole channel beside its fit alone.
 
+mod channel;
 mod cholesky;
 mod outputs;
 mod qr;
 mod stream;
 
+pub use channel::{Case, Peers};
 pub use cholesky::Cholesky;
 pub use outputs::{DEGREES, Outputs, outputs};
 pub use qr::batch_qr;

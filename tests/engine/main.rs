@@ -2,7 +2,6 @@
 
 mod alarms;
 mod clocks;
-mod cost;
 mod fail_safe_ladder;
 mod memory;
 mod order;

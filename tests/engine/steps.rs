@@ -249,3 +249,41 @@ fn a_step_is_told_from_what_level_and_temperature_do() {
         .collect();
     assert!(none.is_empty(), "{none:?}");
 }
+
+/// A smooth wander, as of a clock beside another: a season, a tide, and a rate that drifts at
+/// random.
+fn wander(seed: u64, readings: usize) -> Vec<f64> {
+    let mut noise = Noise::new(seed, 0.0);
+    let (mut rate, mut wandered) = (0.0, 0.0);
+    (0..readings)
+        .map(|index| {
+            rate += 3e-5 * noise.draw();
+            wandered += rate;
+            let turns = std::f64::consts::TAU * index as f64;
+            wandered + 0.03 * (turns / 365.0).sin() + 0.001 * (turns / 13.7).sin()
+        })
+        .collect()
+}
+
+/// Where the noise is slow, no mean over few pairs stands out from it; the leap between two pairs
+/// does. Every one is told, at its place to two readings, and the wander itself is none.
+#[test]
+fn every_leap_in_a_slow_wander_is_found() {
+    for seed in 40..50 {
+        let leaps: Vec<usize> = (500..3000).step_by(370).collect();
+        let smooth = wander(seed, 3000);
+        assert!(steps(&run(small(), smooth.iter().copied())).is_empty());
+        let leaping = smooth.iter().enumerate().map(|(index, error)| {
+            let before = leaps.iter().filter(|leap| index >= **leap).count();
+            error - before as f64
+        });
+        let said = run(small(), leaping);
+        let steps = steps(&said);
+        assert_eq!(steps.len(), leaps.len(), "seed {seed}: {steps:?}");
+        for ((_, step), leap) in steps.iter().zip(&leaps) {
+            let off = step.first_after.since(at(EVERY * *leap as f64)).seconds() / EVERY;
+            assert!(off.abs() <= 2.0, "seed {seed}: {off} readings: {step:?}");
+            assert!((step.size + 1.0).abs() < 0.05, "seed {seed}: {step:?}");
+        }
+    }
+}

@@ -27,6 +27,8 @@ pub(super) struct Place {
     pub(super) latest: usize,
     /// Its gain.
     pub(super) gain: f64,
+    /// Its size by generalised least squares; its standard uncertainty is size/√gain.
+    pub(super) size: f64,
 }
 
 /// Places that are behind the best by no more than this are not told from it: the 95 % point of
@@ -52,10 +54,12 @@ impl Series {
         let mut sum = 0.0;
         let mut squares = 0.0;
         let mut gains = vec![0.0; self.whitened.len()];
+        let mut sizes = vec![0.0; self.whitened.len()];
         for (place, &w) in self.whitened.iter().enumerate().rev() {
             let product: f64 = w + tail * sum;
             if (product > 0.0) == up {
-                gains[place] = product * product / (1.0 + squares) / self.variance;
+                sizes[place] = product / (1.0 + squares);
+                gains[place] = product * sizes[place] / self.variance;
             }
             sum += w;
             squares += tail * tail;
@@ -71,6 +75,7 @@ impl Series {
             earliest: (0..=first).rev().take_while(near).last()?,
             latest: (first..gains.len()).take_while(near).last()?,
             gain,
+            size: sizes[first],
         })
     }
 

@@ -20,6 +20,10 @@ const REACH: f64 = 4.0;
 /// A step must explain the pairs better than any bend by so much of twice the log likelihood:
 /// strong evidence, as for a degree (Kass & Raftery 1995, p. 777).
 pub(super) const BEND_MARGIN: f64 = 6.0;
+/// Where the noise is slow, no mean over few pairs stands out from it, but a leap between two pairs
+/// does: a step whose leap in the whitened residuals beats every bend by this many times what is
+/// asked of the mean is one, whatever the level before it may do.
+const LEAP: f64 = 2.0;
 
 /// A step.
 #[derive(Clone, Copy, Debug, PartialEq)]
@@ -30,7 +34,8 @@ pub(crate) struct Finding {
     /// The earliest and latest pair that may have been the first after it.
     pub(crate) earliest: Timestamp,
     pub(crate) latest: Timestamp,
-    /// Mean of the pairs after the change beyond the extrapolation, and its standard uncertainty.
+    /// Mean of the pairs after the change beyond the extrapolation, or the leap at the change where
+    /// that alone stands out; and its standard uncertainty.
     pub(crate) size: f64,
     pub(crate) u: f64,
     /// How many u are needed.
@@ -110,11 +115,20 @@ impl Question<'_> {
         let size = after.iter().map(|rest| rest.residual).sum::<f64>() / n;
         let outside = 2.0 * quantile::normal_below(-self.confirmation);
         let needed = quantile::student(1.0 - outside, self.known.degrees_of_freedom);
-        if after.len() < self.least || size.abs() < needed * u || !lasts(after, size) {
-            return None;
-        }
         let gain = place.gain - series.bend();
-        (gain >= BEND_MARGIN).then_some(Finding {
+        let (size, u) = if size.abs() >= needed * u && gain >= BEND_MARGIN {
+            (size, u)
+        } else if gain >= (LEAP * needed) * (LEAP * needed) {
+            let scale = 1.0 / first.row.weight.sqrt();
+            (
+                place.size * scale,
+                place.size.abs() / place.gain.sqrt() * scale,
+            )
+        } else {
+            return None;
+        };
+        let is_step = after.len() >= self.least && lasts(after, size);
+        is_step.then_some(Finding {
             last_before: before.last().map(|rest| rest.row.time),
             first_after,
             earliest: rests.get(place.earliest)?.row.time.min(first_after),

@@ -1,14 +1,12 @@
 //! The examples in config/ are sound, and one of them shows every setting that there is.
 
+use crate::support::NOW;
 use holdtrue::configuration::{self, Protocol};
 use holdtrue_engine::setup::{
     ChannelId, Clock, Criterion, ReferenceId, ReferenceKind, Stamped, WindowLength,
 };
 use holdtrue_engine::time::{Duration, Timestamp};
 use std::path::{Path, PathBuf};
-
-/// 2026-01-01T00:00:00Z.
-const NOW: Timestamp = Timestamp(1_767_225_600_000_000_000);
 
 fn example(name: &str) -> PathBuf {
     Path::new(env!("CARGO_MANIFEST_DIR"))

@@ -4,3 +4,4 @@ mod check_command;
 mod examples;
 mod problems;
 mod sources;
+mod support;

@@ -1,16 +1,10 @@
 //! A wrong configuration is refused with everything that is wrong, each with line, column, key,
 //! value and way out; what is only doubtful is a warning.
 
-use holdtrue::configuration::{self, Configuration, Problems, Severity};
+use crate::support::{Case, HEAD, one, problems, read};
+use holdtrue::configuration;
 use holdtrue_engine::setup::{ReferenceKind, WindowLength};
-use holdtrue_engine::time::{Duration, Timestamp};
-use std::path::Path;
-
-/// 2026-01-01T00:00:00Z.
-const NOW: Timestamp = Timestamp(1_767_225_600_000_000_000);
-
-/// A sound beginning, seven lines long.
-const HEAD: &str = "[node]\nname = \"n\"\n[broker]\nurl = \"mqtt://127.0.0.1\"\n\n";
+use holdtrue_engine::time::Duration;
 
 /// A sound channel `a`, whose first line is line 6 behind [`HEAD`].
 const CHANNEL: &str = r#"[[channel]]
@@ -20,47 +14,9 @@ indication = { topic = "works/a", value = "/v", time = "/t" }
 reference = { topic = "works/lab", value = "/v", time = "/t" }
 "#;
 
-/// A piece of configuration, how its one problem begins, and what its message says.
-type Case = (&'static str, &'static str, &'static [&'static str]);
-
 fn channel_without_reference() -> &'static str {
     let end = CHANNEL.find("reference").expect("the channel has one");
     &CHANNEL[..end]
-}
-
-fn read(text: &str) -> Result<Configuration, Problems> {
-    configuration::from_text(text, "f.toml", Path::new(""), NOW)
-}
-
-/// All problems as lines, errors and warnings.
-fn problems(text: &str) -> Vec<String> {
-    let list = match read(text) {
-        Ok(configuration) => configuration.warnings,
-        Err(problems) => {
-            assert!(
-                problems
-                    .list
-                    .iter()
-                    .any(|problem| problem.severity == Severity::Error)
-            );
-            problems.list
-        }
-    };
-    list.iter().map(|problem| problem.line_for("f")).collect()
-}
-
-/// Asserts that exactly one problem is found, and that its line begins and goes on like this.
-fn one(text: &str, begin: &str, parts: &[&str]) {
-    let found = problems(text);
-    assert_eq!(found.len(), 1, "{text}\n{}", found.join("\n"));
-    assert!(
-        found[0].starts_with(begin),
-        "{}\nbegins not with {begin}",
-        found[0]
-    );
-    for part in parts {
-        assert!(found[0].contains(part), "{}\nlacks {part}", found[0]);
-    }
 }
 
 #[test]

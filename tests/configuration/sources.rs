@@ -1,48 +1,9 @@
 //! What a channel may rest on is checked when the configuration is read: influence quantities,
 //! known values, groups, and what must not be corrected.
 
-use holdtrue::configuration::{self, Configuration, Problems};
+use crate::support::{Case, HEAD, one, problems, read};
 use holdtrue::payload::Target;
 use holdtrue_engine::setup::{InfluenceId, ReferenceId, ReferenceKind};
-use holdtrue_engine::time::Timestamp;
-use std::path::Path;
-
-/// 2026-01-01T00:00:00Z.
-const NOW: Timestamp = Timestamp(1_767_225_600_000_000_000);
-
-/// A sound beginning; its first line is the file's first.
-const HEAD: &str = r#"[node]
-name = "n"
-[broker]
-url = "mqtt://127.0.0.1"
-"#;
-
-fn read(text: &str) -> Result<Configuration, Problems> {
-    configuration::from_text(text, "f.toml", Path::new(""), NOW)
-}
-
-/// All problems as lines, errors and warnings.
-fn problems(text: &str) -> Vec<String> {
-    let list = match read(text) {
-        Ok(configuration) => configuration.warnings,
-        Err(problems) => problems.list,
-    };
-    list.iter().map(|problem| problem.line_for("f")).collect()
-}
-
-/// Asserts that exactly one problem is found, and that its line begins and goes on like this.
-fn one(text: &str, begin: &str, parts: &[&str]) {
-    let found = problems(text);
-    assert_eq!(found.len(), 1, "{text}\n{}", found.join("\n"));
-    assert!(
-        found[0].starts_with(begin),
-        "{}\nbegins not with {begin}",
-        found[0]
-    );
-    for part in parts {
-        assert!(found[0].contains(part), "{}\nlacks {part}", found[0]);
-    }
-}
 
 /// A channel of five lines, and more of them.
 fn channel(name: &str, reference: &str, more: &str) -> String {
@@ -109,52 +70,52 @@ fn another_channels_indication_may_act_on_a_sensor() {
     assert_eq!(read.intake.topics["hall"].len(), 2);
 }
 
-/// Influences of channel `a`, in line 10.
-const INFLUENCES: &[(&str, &str, &[&str])] = &[
+/// Influences of channel `a`, in line 11.
+const INFLUENCES: &[Case] = &[
     (
         "[{ name = \"t\" }]",
-        "f:10:15: error: channel[1].influences[1].value",
+        "f:11:15: error: channel[1].influences[1].value",
         &["JSON pointer"],
     ),
     (
         "[{ topic = \"hall\" }]",
-        "f:10:15: error: channel[1].influences[1].name",
+        "f:11:15: error: channel[1].influences[1].name",
         &["missing", "temperature"],
     ),
     (
         "[{ name = \"t\", topic = \"hall\", tiem = \"/at\" }]",
-        "f:10:45: error: channel[1].influences[1].tiem",
+        "f:11:45: error: channel[1].influences[1].tiem",
         &["time?"],
     ),
     (
         "[{ name = \"t\", topic = \"h\" }, { name = \"u\", topic = \"i\" }, \
          { name = \"v\", topic = \"j\" }]",
-        "f:10:14: error: channel[1].influences",
+        "f:11:14: error: channel[1].influences",
         &["3 influence", "at most 2"],
     ),
     (
         "[{ name = \"t\", topic = \"h\" }, { name = \"t\", topic = \"i\" }]",
-        "f:10:53: error: channel[1].influences[2].name",
+        "f:11:53: error: channel[1].influences[2].name",
         &["twice"],
     ),
     (
         "[{ name = \"t\", topic = \"h\" }, { name = \"u\", topic = \"h\" }]",
-        "f:10:44: error: channel[1].influences[2]",
+        "f:11:44: error: channel[1].influences[2]",
         &["same value"],
     ),
     (
         "[{ name = \"self\", value = \"/v\" }]",
-        "f:10:40: error: channel[1].influences[1].value",
+        "f:11:40: error: channel[1].influences[1].value",
         &["channel a", "span drift", "max_span_degree"],
     ),
     (
         "[{ name = \"self\", topic = \"works/lab\", value = \"/v\", time = \"/at\" }]",
-        "f:10:40: error: channel[1].influences[1].topic",
+        "f:11:40: error: channel[1].influences[1].topic",
         &["reference a", "max_span_degree"],
     ),
     (
         "[{ name = \"loop\", topic = \"holdtrue/n/corrected/b\" }]",
-        "f:10:40: error: channel[1].influences[1].topic",
+        "f:11:40: error: channel[1].influences[1].topic",
         &["own output"],
     ),
 ];
@@ -177,7 +138,7 @@ fn one_place_is_read_in_one_way() {
             channel("a", LAB, &format!("influences = [{TEMPERATURE}]\n")),
             channel("b", &lab2, &format!("influences = [{other}]\n")),
         ),
-        "f:16:15: error: channel[2].influences[1]",
+        "f:17:15: error: channel[2].influences[1]",
         &["influence on channel a", "alike"],
     );
 }
@@ -188,7 +149,7 @@ fn a_short_window_is_doubtful_unless_the_cause_of_the_cycle_is_declared() {
     let short = channel("a", LAB, "window = \"2 d\"\n");
     one(
         &format!("{HEAD}\n{short}"),
-        "f:11:10: warning: channel[1].window",
+        "f:12:10: warning: channel[1].window",
         &["three days", "influences"],
     );
     let told = format!("{HEAD}{short}influences = [{TEMPERATURE}]\n");
@@ -228,41 +189,41 @@ fn several_known_values_make_one_reference_with_the_largest_uncertainty() {
     assert_eq!(read.intake.filters, ["works/a", "works/valve"]);
 }
 
-/// The reference of channel `a`, in line 9.
-const CHECKS: &[(&str, &str, &[&str])] = &[
+/// The reference of channel `a`, in line 10.
+const CHECKS: &[Case] = &[
     (
         "{ checks = [\"zero\"] }",
-        "f:9:24: error: channel[1].reference.checks",
+        "f:10:24: error: channel[1].reference.checks",
         &["at least two"],
     ),
     (
         "{ checks = [\"zero\", \"zero\"] }",
-        "f:9:33: error: channel[1].reference.checks",
+        "f:10:33: error: channel[1].reference.checks",
         &["twice"],
     ),
     (
         "{ checks = [\"zero\", \"spam\"] }",
-        "f:9:33: error: channel[1].reference.checks",
+        "f:10:33: error: channel[1].reference.checks",
         &["no reference \"spam\"", "span"],
     ),
     (
         "{ checks = [\"zero\", \"always\"] }",
-        "f:9:33: error: channel[1].reference.checks",
+        "f:10:33: error: channel[1].reference.checks",
         &["\"always\"", "valid_when"],
     ),
     (
         "{ checks = [\"zero\", \"span\"], certificate = \"C\" }",
-        "f:9:56: error: channel[1].reference.certificate",
+        "f:10:56: error: channel[1].reference.certificate",
         &["each of the references"],
     ),
     (
         "{ checks = [\"zero\", \"span\"], constant = 3 }",
-        "f:9:13: error: channel[1].reference",
+        "f:10:13: error: channel[1].reference",
         &["several kinds"],
     ),
     (
         "{ checks = [\"zero\", \"span\"], stale_after = \"1 d\" }",
-        "f:9:56: error: channel[1].reference.stale_after",
+        "f:10:56: error: channel[1].reference.stale_after",
         &["measured"],
     ),
 ];
@@ -287,7 +248,7 @@ fn a_reference_that_nobody_names_is_doubtful() {
     let text = format!("{HEAD}{}{GASES}", channel("a", "\"zero\"", ""));
     one(
         &text,
-        "f:18:8: warning: reference[2].name",
+        "f:19:8: warning: reference[2].name",
         &["no channel is judged against", "remove"],
     );
 }
@@ -302,13 +263,13 @@ fn what_already_bears_a_correction_is_no_truth() {
         let reference = format!("{{ topic = \"{topic}\" }}");
         one(
             &format!("{HEAD}{}", channel("a", &reference, "")),
-            "f:9:23: error: channel[1].reference.topic",
+            "f:10:23: error: channel[1].reference.topic",
             &[part, "own topic"],
         );
         let corrected = channel("a", LAB, "").replace("works/a", topic);
         one(
             &format!("{HEAD}{corrected}"),
-            "f:8:24: error: channel[1].indication.topic",
+            "f:9:24: error: channel[1].indication.topic",
             &[part],
         );
     }
@@ -365,7 +326,7 @@ fn a_safety_measurement_is_monitored_and_never_corrected() {
             "{HEAD}{}",
             channel("a", LAB, "monitor_only = true\ncorrected_values = true\n")
         ),
-        "f:11:20: error: channel[1].corrected_values",
+        "f:12:20: error: channel[1].corrected_values",
         &["monitor_only", "remove"],
     );
     let group = |others: [&str; 3]| format!("{{ group = [\"{}\"] }}", others.join("\", \""));
@@ -381,7 +342,7 @@ fn a_safety_measurement_is_monitored_and_never_corrected() {
             "{HEAD}{}{others}",
             channel("a", &group(["b", "c", "d"]), "monitor_only = true\n")
         ),
-        "f:9:13: error: channel[1].reference",
+        "f:10:13: error: channel[1].reference",
         &["median of its neighbours", "reference of its own"],
     );
     let member = format!(

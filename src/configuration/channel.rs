@@ -15,25 +15,6 @@ use holdtrue_engine::setup::{
 };
 use holdtrue_engine::time::Duration;
 
-/// A day.
-const DAY: Duration = Duration::from_seconds(86_400);
-/// Default of `lateness`.
-const LATENESS: Duration = Duration::from_seconds(10);
-/// Default of `max_gap`.
-const MAX_GAP: Duration = Duration::from_seconds(15 * 60);
-/// Default of `decision_rule`: guard band w = U, the cautious one.
-const DECISION_RULE: DecisionRule = DecisionRule::GuardBand { multiple: 1.0 };
-/// Default of `service_horizon`: two weekly rounds of a technician (common practice).
-const SERVICE_HORIZON: Duration = Duration::from_seconds(14 * 86_400);
-/// Default of `coverage`.
-const COVERAGE: f64 = 0.95;
-/// Defaults of `publish`.
-const PUBLISH_STEP: f64 = 0.25;
-const PUBLISH_MAX_AGE: Duration = DAY;
-/// Defaults of `alarms` (common practice: three reference cycles, one standard uncertainty).
-const ALARM_DELAY: u32 = 3;
-const ALARM_DEADBAND: f64 = 1.0;
-
 /// Reads a channel and adds it, and its inline reference, to the draft.
 pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draft: &mut Draft) {
     let id = draft.next_channel();
@@ -53,9 +34,10 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
     if monitor_only {
         refuse_with_monitor_only(section, reference, corrected_values.as_ref(), draft);
     }
+    let default = ChannelSetup::new(name, unit, reference);
     let lateness = section
         .duration("lateness")
-        .map_or(LATENESS, |found| found.value);
+        .map_or(default.lateness, |found| found.value);
     let noise = not_negative(section, "noise");
     let resolution = not_negative(section, "resolution");
     let told = draft.references.get(reference.0 as usize);
@@ -67,25 +49,22 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
     fit::warn_about_window(section, &fit, lateness);
     let positive = |key| positive(section, key);
     let channel = ChannelSetup {
-        name: name.to_owned(),
-        unit,
-        reference,
         influences,
         lag: section
             .signed_duration("lag")
-            .map_or(Duration::ZERO, |found| found.value),
+            .map_or(default.lag, |found| found.value),
         lateness,
         max_gap: section
             .duration("max_gap")
-            .map_or(MAX_GAP, |found| found.value),
+            .map_or(default.max_gap, |found| found.value),
         fit,
         screening: screening::read(section),
-        steps: steps::read(section),
+        steps: steps::read(section, default.steps),
         max_permissible_error: positive("max_permissible_error"),
-        decision_rule: decision_rule(section),
+        decision_rule: decision_rule(section).unwrap_or_default(),
         service_horizon: section
             .positive_duration("service_horizon")
-            .map_or(SERVICE_HORIZON, |found| found.value),
+            .map_or(default.service_horizon, |found| found.value),
         resolution,
         noise,
         max_drift_rate: positive("max_drift_rate"),
@@ -94,11 +73,12 @@ pub(super) fn read(section: &Section<'_>, name: &str, readings_clock: bool, draf
         hold_limit: section
             .positive_duration("hold_limit")
             .map(|found| found.value),
-        coverage: coverage(section),
+        coverage: coverage(section).unwrap_or(default.coverage),
         publish: publish(section),
         alarms: alarms(section),
         corrected_values: corrected_values.is_some_and(|found| found.value),
         monitor_only,
+        ..default
     };
     section.finish();
     draft.channels.push(channel);
@@ -129,13 +109,13 @@ fn unit(section: &Section<'_>) -> String {
 }
 
 /// `coverage`: the probability that U is to have.
-fn coverage(section: &Section<'_>) -> f64 {
+fn coverage(section: &Section<'_>) -> Option<f64> {
     let coverage = section.number_in(
         "coverage",
         |p| (0.5..1.0).contains(&p),
         "a probability from 0.5 to below 1, as 0.95",
     );
-    coverage.map_or(COVERAGE, |found| found.value)
+    coverage.map(|found| found.value)
 }
 
 /// `indication`: where the sensor's values come in.
@@ -223,14 +203,12 @@ fn pair_noise(reference: Option<&ReferenceSetup>, noise: f64, resolution: f64) -
 }
 
 /// `decision_rule`: "simple", or `{ guard_band = r }`.
-fn decision_rule(section: &Section<'_>) -> DecisionRule {
+fn decision_rule(section: &Section<'_>) -> Option<DecisionRule> {
     if section.is_text("decision_rule") {
         let simple = section.choice("decision_rule", &[("simple", DecisionRule::Simple)]);
-        return simple.map_or(DECISION_RULE, |found| found.value);
+        return simple.map(|found| found.value);
     }
-    let Some(table) = section.section("decision_rule") else {
-        return DECISION_RULE;
-    };
+    let table = section.section("decision_rule")?;
     let wanted = "a multiple of U above 0 and at most 10, as 1.0";
     let multiple = table.number_in("guard_band", |r| r > 0.0 && r <= 10.0, wanted);
     if !table.has("guard_band") {
@@ -240,7 +218,7 @@ fn decision_rule(section: &Section<'_>) -> DecisionRule {
         );
     }
     table.finish();
-    multiple.map_or(DECISION_RULE, |found| DecisionRule::GuardBand {
+    multiple.map(|found| DecisionRule::GuardBand {
         multiple: found.value,
     })
 }
@@ -279,9 +257,10 @@ fn publish(section: &Section<'_>) -> PublishSetup {
     if let Some(table) = table {
         table.finish();
     }
+    let default = PublishSetup::default();
     PublishSetup {
-        step: step.map_or(PUBLISH_STEP, |found| found.value),
-        max_age: max_age.map_or(PUBLISH_MAX_AGE, |found| found.value),
+        step: step.map_or(default.step, |found| found.value),
+        max_age: max_age.map_or(default.max_age, |found| found.value),
     }
 }
 
@@ -295,9 +274,10 @@ fn alarms(section: &Section<'_>) -> AlarmSetup {
     if let Some(table) = table {
         table.finish();
     }
+    let default = AlarmSetup::default();
     AlarmSetup {
-        delay: delay.map_or(ALARM_DELAY, |found| found.value),
-        deadband: deadband.map_or(ALARM_DEADBAND, |found| found.value),
+        delay: delay.map_or(default.delay, |found| found.value),
+        deadband: deadband.map_or(default.deadband, |found| found.value),
         gap_after: gap_after.map(|found| found.value),
     }
 }

@@ -8,24 +8,19 @@ use holdtrue_engine::time::Duration;
 
 /// A day.
 const DAY: Duration = Duration::from_seconds(86_400);
-/// Default of `window`.
-const WINDOW: WindowLength = WindowLength::Time(Duration::from_seconds(30 * 86_400));
-/// Default of `segments`; with fewer pairs as many as there are pairs.
-const SEGMENTS: u32 = 64;
 /// Most segments.
 const SEGMENTS_MAX: u32 = 1024;
 /// Shortest slice of time that a window is cut into.
 const SEGMENT_MIN: Duration = Duration(1_000_000);
-/// Default of `max_degree`.
-const MAX_DEGREE: u8 = 2;
 /// Highest degree.
 const DEGREE_LIMIT: u8 = 5;
 
 /// Reads `window`, `segments`, `max_degree`, `max_span_degree`, `degree` and `criterion`; `noise`
 /// and the number of influence quantities come from elsewhere.
 pub(super) fn read(section: &Section<'_>, noise: PairNoise, influences: usize) -> FitSetup {
-    let (window, segments) = window(section);
-    let (max_degree, forced_degree) = degrees(section);
+    let default = FitSetup::default();
+    let (window, segments) = window(section, &default);
+    let (max_degree, forced_degree) = degrees(section, default.max_degree);
     let criterion = section.choice(
         "criterion",
         &[("bic", Criterion::Bic), ("aicc", Criterion::Aicc)],
@@ -35,15 +30,15 @@ pub(super) fn read(section: &Section<'_>, noise: PairNoise, influences: usize) -
         segments,
         max_degree,
         forced_degree,
-        criterion: criterion.map_or(Criterion::Bic, |found| found.value),
+        criterion: criterion.map_or(default.criterion, |found| found.value),
         max_span_degree: span_degree(section, max_degree),
         influences: u8::try_from(influences.min(MAX_INFLUENCES)).unwrap_or(MOST_INFLUENCES),
         noise,
     }
 }
 
-/// The window, and the number of its segments.
-fn window(section: &Section<'_>) -> (WindowLength, u32) {
+/// The window, and the number of its segments; of those, not told, no more than there are pairs.
+fn window(section: &Section<'_>, default: &FitSetup) -> (WindowLength, u32) {
     let window = section
         .text("window")
         .and_then(|found| match quantity::window(found.value) {
@@ -53,9 +48,9 @@ fn window(section: &Section<'_>) -> (WindowLength, u32) {
                 None
             }
         });
-    let window = window.unwrap_or(WINDOW);
+    let window = window.unwrap_or(default.window);
     let told = section.integer_in("segments", 1..=SEGMENTS_MAX);
-    let segments = told.as_ref().map_or(SEGMENTS, |found| found.value);
+    let segments = told.as_ref().map_or(default.segments, |found| found.value);
     let segments = match window {
         WindowLength::Pairs(pairs) if pairs < segments => {
             if let Some(found) = &told {
@@ -80,7 +75,7 @@ fn window(section: &Section<'_>) -> (WindowLength, u32) {
 }
 
 /// Highest degree, and the one that is told.
-fn degrees(section: &Section<'_>) -> (u8, Option<u8>) {
+fn degrees(section: &Section<'_>, default: u8) -> (u8, Option<u8>) {
     let max_degree = section.integer_in("max_degree", 0..=DEGREE_LIMIT);
     let forced = section.integer_in("degree", 0..=DEGREE_LIMIT);
     let forced_degree = forced.as_ref().map(|found| found.value);
@@ -92,9 +87,8 @@ fn degrees(section: &Section<'_>) -> (u8, Option<u8>) {
             format!("is above max_degree, which is {}", max.value),
         );
     }
-    let max_degree = max_degree.map_or(MAX_DEGREE.max(forced_degree.unwrap_or(0)), |found| {
-        found.value
-    });
+    let max_degree =
+        max_degree.map_or(default.max(forced_degree.unwrap_or(0)), |found| found.value);
     (max_degree, forced_degree)
 }
 

@@ -14,8 +14,6 @@ const DAY: Duration = Duration::from_seconds(86_400);
 const DATE_LENGTH: usize = 10;
 /// Fewest known values of a reference that is made of several.
 const POINTS_MIN: usize = 2;
-/// Default of `expiry_notice` (common practice: time to send a reference away).
-const EXPIRY_NOTICE: Duration = Duration::from_seconds(30 * 86_400);
 /// Fewest other members of a group.
 const OTHERS_MIN: usize = 3;
 
@@ -61,17 +59,17 @@ pub(super) fn read(
             }
         }
     }
+    let default = ReferenceSetup::new(name, kind);
     draft.references.push(ReferenceSetup {
-        name: name.to_owned(),
-        kind,
         uncertainty_each: each,
         uncertainty_common: common,
         certificate,
         expires,
-        expiry_notice: expiry_notice.map_or(EXPIRY_NOTICE, |found| found.value),
+        expiry_notice: expiry_notice.map_or(default.expiry_notice, |found| found.value),
         stale_after,
         stands_for,
         stamped,
+        ..default
     });
 }
 

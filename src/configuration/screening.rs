@@ -4,32 +4,21 @@ use super::reader::Section;
 use super::source::Found;
 use holdtrue_engine::setup::{RateLimit, Repeats, ScreeningSetup};
 
-/// Defaults of `screening`: width of the gate in robust standard deviations (common practice: 3.5
-/// to 5; white noise fails at 5 once in two million), and rejections in a row.
-const GATE: f64 = 5.0;
-const LOCK_OUT_AFTER: u32 = 5;
 /// Most repeats of one value that can be asked for.
 const REPEATS_MAX: u32 = 100_000;
 
 /// `screening`: "off", or a table.
 pub(super) fn read(section: &Section<'_>) -> ScreeningSetup {
-    let standard = ScreeningSetup {
-        enabled: true,
-        range: None,
-        gate: GATE,
-        lock_out_after: LOCK_OUT_AFTER,
-        stuck: None,
-        max_rate: None,
-    };
+    let default = ScreeningSetup::default();
     if section.is_text("screening") {
         let off = section.choice("screening", &[("off", false), ("on", true)]);
         return ScreeningSetup {
             enabled: off.is_none_or(|found| found.value),
-            ..standard
+            ..default
         };
     }
     let Some(table) = section.section("screening") else {
-        return standard;
+        return default;
     };
     let gate = table.number_in("gate", |gate| gate >= 1.0, "at least 1 standard deviation");
     let lock_out_after = table.integer_in("lock_out_after", 2..=1000);
@@ -38,12 +27,12 @@ pub(super) fn read(section: &Section<'_>) -> ScreeningSetup {
     let max_rate = max_rate(&table);
     table.finish();
     ScreeningSetup {
-        enabled: true,
         range,
-        gate: gate.map_or(GATE, |found| found.value),
-        lock_out_after: lock_out_after.map_or(LOCK_OUT_AFTER, |found| found.value),
+        gate: gate.map_or(default.gate, |found| found.value),
+        lock_out_after: lock_out_after.map_or(default.lock_out_after, |found| found.value),
         stuck,
         max_rate,
+        ..default
     }
 }
 

@@ -2,12 +2,8 @@
 
 use super::reader::Section;
 
-/// Standard uncertainties that make a step: one in 16 000 by chance, at each signal of a chart that
-/// signals once in 100 000 readings.
-const CONFIRMATION: f64 = 4.0;
-
 /// How many standard uncertainties make a step; `None` with `steps = false`.
-pub(super) fn read(section: &Section<'_>) -> Option<f64> {
+pub(super) fn read(section: &Section<'_>, default: Option<f64>) -> Option<f64> {
     let wanted = section.truth("steps");
     let confirmation = section.number_in(
         "step_confirmation",
@@ -21,5 +17,6 @@ pub(super) fn read(section: &Section<'_>) -> Option<f64> {
             "says nothing with steps = false; leave one of them out",
         );
     }
-    wanted.then(|| confirmation.map_or(CONFIRMATION, |found| found.value))
+    let confirmation = confirmation.map(|found| found.value).or(default);
+    confirmation.filter(|_| wanted)
 }

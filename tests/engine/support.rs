@@ -12,9 +12,8 @@
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Gate, Input, Output, Reading, Source};
 use holdtrue_engine::setup::{
-    AlarmSetup, ChannelId, ChannelSetup, Clock, Criterion, DecisionRule, FitSetup, PairNoise,
-    PublishSetup, ReferenceId, ReferenceKind, ReferenceSetup, ScreeningSetup, Setup, Stamped,
-    WindowLength,
+    ChannelId, ChannelSetup, Clock, FitSetup, PublishSetup, ReferenceId, ReferenceKind,
+    ReferenceSetup, Setup, WindowLength,
 };
 use holdtrue_engine::time::{Duration, Timestamp};
 use rand_chacha::rand_core::SeedableRng as _;
@@ -53,70 +52,25 @@ pub fn node(clock: Clock, references: Vec<ReferenceSetup>, channels: Vec<Channel
 /// A reference without uncertainty that never goes stale.
 pub fn reference(name: &str, kind: ReferenceKind) -> ReferenceSetup {
     ReferenceSetup {
-        name: name.to_owned(),
-        kind,
-        uncertainty_each: 0.0,
-        uncertainty_common: 0.0,
-        certificate: None,
-        expires: None,
         expiry_notice: Duration::ZERO,
-        stale_after: None,
-        stands_for: Duration::ZERO,
-        stamped: Stamped::End,
+        ..ReferenceSetup::new(name, kind)
     }
 }
 
-/// A channel against the reference of this position: window of 1024 pairs in 64 segments, screening
-/// on, no limits.
+/// A channel against the reference of this position: the configuration's defaults but for a window
+/// of 1024 pairs, a gap of two minutes, and documents that are renewed each hour or with half a u.
 pub fn channel(name: &str, reference: u32) -> ChannelSetup {
     ChannelSetup {
-        name: name.to_owned(),
-        unit: "pH".to_owned(),
-        reference: ReferenceId(reference),
-        influences: Vec::new(),
-        lag: Duration::ZERO,
-        lateness: span(10.0),
         max_gap: span(120.0),
         fit: FitSetup {
             window: WindowLength::Pairs(1024),
-            segments: 64,
-            max_degree: 2,
-            forced_degree: None,
-            criterion: Criterion::Bic,
-            max_span_degree: None,
-            influences: 0,
-            noise: PairNoise::default(),
+            ..FitSetup::default()
         },
-        screening: ScreeningSetup {
-            enabled: true,
-            range: None,
-            gate: 5.0,
-            lock_out_after: 5,
-            stuck: None,
-            max_rate: None,
-        },
-        steps: Some(4.0),
-        max_permissible_error: None,
-        decision_rule: DecisionRule::GuardBand { multiple: 1.0 },
-        service_horizon: span(14.0 * 86_400.0),
-        resolution: 0.0,
-        noise: 0.0,
-        max_drift_rate: None,
-        max_correction: None,
-        max_correction_rate: None,
-        hold_limit: None,
-        coverage: 0.95,
         publish: PublishSetup {
             step: 0.5,
             max_age: span(3600.0),
         },
-        alarms: AlarmSetup {
-            delay: 3,
-            deadband: 1.0,
-            gap_after: None,
-        },
-        corrected_values: false,
-        monitor_only: false,
+        ..ChannelSetup::new(name, "pH", ReferenceId(reference))
     }
 }
 

@@ -2,7 +2,7 @@
 
 use holdtrue_engine::fit::mean::Plain;
 use holdtrue_engine::fit::{Fit, Published, Row};
-use holdtrue_engine::setup::{Criterion, FitSetup, PairNoise, WindowLength};
+use holdtrue_engine::setup::{FitSetup, WindowLength};
 use holdtrue_engine::time::{Duration, Timestamp};
 use proptest::prelude::*;
 
@@ -13,12 +13,8 @@ fn setup(window: WindowLength, segments: u32, forced_degree: Option<u8>) -> FitS
     FitSetup {
         window,
         segments,
-        max_degree: 2,
         forced_degree,
-        criterion: Criterion::Bic,
-        max_span_degree: None,
-        influences: 0,
-        noise: PairNoise::default(),
+        ..FitSetup::default()
     }
 }
 

@@ -2,7 +2,7 @@
 
 use holdtrue_engine::fit::mean::Plain;
 use holdtrue_engine::fit::{Fit, Row};
-use holdtrue_engine::setup::{Criterion, FitSetup, PairNoise, WindowLength};
+use holdtrue_engine::setup::{FitSetup, WindowLength};
 use holdtrue_engine::time::{Duration, Timestamp};
 use jiff::civil::Date;
 
@@ -40,10 +40,7 @@ fn fit(window: WindowLength, max_degree: u8, forced_degree: Option<u8>) -> Fit {
         segments: 64,
         max_degree,
         forced_degree,
-        criterion: Criterion::Bic,
-        max_span_degree: None,
-        influences: 0,
-        noise: PairNoise::default(),
+        ..FitSetup::default()
     })
 }
 

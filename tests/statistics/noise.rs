@@ -1,7 +1,7 @@
 //! Invented noise and sampling for the tests of the degree: seeded, of known kind.
 
 use holdtrue_engine::fit::Row;
-use holdtrue_engine::setup::{Criterion, FitSetup, PairNoise, WindowLength};
+use holdtrue_engine::setup::{FitSetup, WindowLength};
 use holdtrue_engine::time::{Duration, Timestamp};
 use rand_chacha::ChaCha8Rng;
 use rand_chacha::rand_core::SeedableRng;
@@ -23,12 +23,7 @@ pub(crate) fn default_setup() -> FitSetup {
     FitSetup {
         window: WindowLength::Time(Duration::from_seconds(i64::from(WINDOW_SECONDS))),
         segments: SEGMENTS,
-        max_degree: 2,
-        forced_degree: None,
-        criterion: Criterion::Bic,
-        max_span_degree: None,
-        influences: 0,
-        noise: PairNoise::default(),
+        ..FitSetup::default()
     }
 }
 

@@ -9,7 +9,7 @@ use crate::range::{Draw, Duty};
 use holdtrue_engine::fit::basis::MAX_INFLUENCES;
 use holdtrue_engine::fit::{Fit, Published, Row};
 use holdtrue_engine::quantile;
-use holdtrue_engine::setup::{Criterion, FitSetup, PairNoise, WindowLength};
+use holdtrue_engine::setup::{FitSetup, WindowLength};
 use holdtrue_engine::time::{Duration, Timestamp};
 
 /// Slots for a row in a window of dense patterns; a segment has sixteen.
@@ -290,12 +290,8 @@ fn setup(forced_degree: Option<u8>) -> FitSetup {
     FitSetup {
         window: WindowLength::Time(Duration::from_seconds(i64::from(ROWS) * 60)),
         segments: SEGMENTS,
-        max_degree: 2,
         forced_degree,
-        criterion: Criterion::Bic,
-        max_span_degree: None,
-        influences: 0,
-        noise: PairNoise::default(),
+        ..FitSetup::default()
     }
 }
 

@@ -5,9 +5,8 @@ use super::chooser::Chooser;
 use super::world::{Delivery, Noise, Quantity, Reference, Sensor, World};
 use crate::behaviour::disturbance::Disturbance;
 use holdtrue_engine::setup::{
-    AlarmSetup, ChannelId, ChannelInfluence, ChannelSetup, Clock, Criterion, DecisionRule,
-    FitSetup, InfluenceId, InfluenceSetup, PairNoise, PublishSetup, ReferenceId, ReferenceKind,
-    ReferenceSetup, ScreeningSetup, Setup, Stamped, WindowLength,
+    ChannelId, ChannelInfluence, ChannelSetup, Clock, FitSetup, InfluenceId, InfluenceSetup,
+    PairNoise, ReferenceId, ReferenceKind, ReferenceSetup, Setup, WindowLength,
 };
 use holdtrue_engine::time::Duration;
 
@@ -165,76 +164,31 @@ fn sensor(quantity: usize, noise: Noise) -> Sensor {
     }
 }
 
+/// A reference that is measured, each value with this standard uncertainty.
 pub(super) fn reference_setup(name: String, each: f64) -> ReferenceSetup {
     ReferenceSetup {
-        name,
-        kind: ReferenceKind::Measured,
         uncertainty_each: each,
-        uncertainty_common: 0.0,
-        certificate: None,
-        expires: None,
-        expiry_notice: Duration::ZERO,
-        stale_after: None,
-        stands_for: Duration::ZERO,
-        stamped: Stamped::End,
+        ..ReferenceSetup::new(name, ReferenceKind::Measured)
     }
 }
 
-/// A channel with the configuration's defaults, a window of a week, and a permissible error of ten
-/// standard deviations of the noise.
+/// A channel with the configuration's defaults but for these: a window of a week, its noise
+/// declared, a permissible error of ten standard deviations of the noise, and corrections of any
+/// size, since planted errors run past the permissible one, to see the correction follow them.
 pub(super) fn channel_setup(name: String, reference: usize, deviation: f64) -> ChannelSetup {
     ChannelSetup {
-        name,
-        unit: "unit".to_owned(),
-        reference: reference_id(reference),
-        influences: Vec::new(),
-        lag: Duration::ZERO,
-        lateness: Duration::from_seconds(10),
-        max_gap: Duration::from_seconds(900),
         fit: FitSetup {
             window: WindowLength::Time(days(WINDOW_DAYS)),
-            segments: 64,
-            max_degree: 2,
-            forced_degree: None,
-            criterion: Criterion::Bic,
-            max_span_degree: None,
-            influences: 0,
             noise: PairNoise {
                 reference: REFERENCE_NOISE * deviation,
                 indication: deviation,
             },
+            ..FitSetup::default()
         },
-        screening: ScreeningSetup {
-            enabled: true,
-            range: None,
-            gate: 5.0,
-            lock_out_after: 5,
-            stuck: None,
-            max_rate: None,
-        },
-        steps: Some(4.0),
         max_permissible_error: Some(10.0 * deviation),
-        decision_rule: DecisionRule::GuardBand { multiple: 1.0 },
-        service_horizon: days(14.0),
-        resolution: 0.0,
         noise: deviation,
-        max_drift_rate: None,
-        // Planted errors run past the permissible one, to see the correction follow them.
         max_correction: Some(f64::MAX),
-        max_correction_rate: None,
-        hold_limit: None,
-        coverage: 0.95,
-        publish: PublishSetup {
-            step: 0.25,
-            max_age: Duration::from_seconds(86_400),
-        },
-        alarms: AlarmSetup {
-            delay: 3,
-            deadband: 1.0,
-            gap_after: None,
-        },
-        corrected_values: false,
-        monitor_only: false,
+        ..ChannelSetup::new(name, "unit", reference_id(reference))
     }
 }
 

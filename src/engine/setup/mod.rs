@@ -5,6 +5,7 @@
 //! known by their position; names travel only for documents.
 
 mod channel;
+mod defaults;
 mod fit;
 mod influence;
 mod reference;

@@ -290,7 +290,8 @@ mod tests {
             "valid_from":"2026-03-02T00:00:00Z",
             "valid_until":"2026-03-03T00:00:00Z","origin":"2026-03-02T00:00:00Z",
             "degree":1,"zero":{zero},
-            "span":{span},"span_centre":10.0,"span_side":"{side}","influences":[],"expanded_uncertainty":0.1,"zone":null,"more":[1]}}"#
+            "span":{span},"span_centre":10.0,"span_side":"{side}","influences":[],
+            "expanded_uncertainty":0.1,"zone":null,"more":[1]}}"#
         )
     }
 

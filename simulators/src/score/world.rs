@@ -202,8 +202,8 @@ pub struct Delivery {
 
 /// Something planted: it must be noticed, or makes words plausible that would be false without it.
 ///
-/// It explains one word of each of its kinds. A second step would close the history for nothing; any
-/// other second word is counted as a repetition.
+/// It explains one word of each of its kinds. A second step would close the history for nothing;
+/// any other second word is counted as a repetition.
 #[derive(Clone, Debug)]
 pub struct Fault {
     /// Any of these words answers it: an alarm's kind, `step`, or `degree-raised`.

@@ -9,8 +9,8 @@ const SEED: u64 = 31_000_000;
 /// They tell a coverage to ±0.5 % (two standard errors).
 const RUNS: u64 = 6000;
 
-/// The cases: check value V31's setting (30 points, σ = 0.05 known) with k = 2. A normal estimate is
-/// within 2u in 95.4 % of runs, and beyond it in one tail of 2.3 %. Service is planned on the
+/// The cases: check value V31's setting (30 points, σ = 0.05 known) with k = 2. A normal estimate
+/// is within 2u in 95.4 % of runs, and beyond it in one tail of 2.3 %. Service is planned on the
 /// earliest, so that a crossing before that is judged by itself. The drift is 19 of its u: it must
 /// be resolved in each run.
 pub(super) fn cases() -> Vec<Case> {

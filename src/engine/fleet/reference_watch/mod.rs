@@ -15,8 +15,9 @@
 //! ```
 //!
 //! While doubted, pairs wait; while suspect, none enters a fit. One that is stuck stays suspect
-//! until its value varies: a process that passes the repeated value agrees with it by chance. What all channels have in common
-//! besides the reference (one supply, one bumped pipe) cannot be told from it, and is said of it.
+//! until its value varies: a process that passes the repeated value agrees with it by chance. What
+//! all channels have in common besides the reference (one supply, one bumped pipe) cannot be told
+//! from it, and is said of it.
 
 mod chart;
 mod round;
@@ -38,9 +39,9 @@ const AGREES: f64 = 3.0;
 const AGREE_AGAIN: usize = 3;
 /// Most rounds that wait in doubt; the oldest of more is let go.
 const WAITING: usize = 16;
-/// Values of a suspect reference without a round that could judge them, after which nobody is left
-/// to speak against it.
-const UNHEARD: u32 = 2 * WAITING as u32;
+/// Values of a suspect reference without a round that could judge them (twice as many as rounds may
+/// wait), after which nobody is left to speak against it.
+const UNHEARD: u32 = 32;
 
 /// How far a pair lies from what its channel expected.
 #[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]

@@ -74,11 +74,11 @@ fn clock_step(chooser: Chooser) -> World {
     #[allow(clippy::cast_possible_truncation, reason = "an hour in seconds")]
     let seconds = world.chooser.signed("hours", "h", 1.0, 1.0) as i64 * 3600;
     world.sensors[0].delivery.clock_off = Some((from, to, seconds));
-    // The pairs do step when the clock does, and their errors swing in between.
+    // The pairs do step when the clock does, once each time, and their errors swing in between.
     let place = Place::Sensor(0);
     for at in [from, to] {
         let words = &[STEP, "screen-locked-out"];
-        world.faults.push(Fault::excuse(place, at, at + 1.0, words));
+        world.faults.push(Fault::excuse(place, at, to + 1.0, words));
     }
     world
         .faults

@@ -56,9 +56,14 @@ const fn scenario(
 /// The only sensor.
 const SENSOR: Place = Place::Sensor(0);
 
-/// Plants a jump of the only sensor. Five rejections in a row are a large step seen by the screen.
+/// Plants a jump of the only sensor; in the last day it need not be noticed any more. Five
+/// rejections in a row are a large step seen by the screen.
 fn plant_jump(world: &mut World, at: f64, size: f64) {
-    world.faults.push(Fault::jump(0, at, size));
+    let jump = Fault::jump(0, at, size);
+    world.faults.push(Fault {
+        required: jump.due < world.days,
+        ..jump
+    });
     let excuse = Fault::excuse(SENSOR, at, at + 1.0, &["screen-locked-out"]);
     world.faults.push(excuse);
 }
@@ -100,7 +105,7 @@ fn knee(chooser: Chooser) -> World {
 fn saw_tooth(chooser: Chooser) -> World {
     let mut world = one(chooser, WHITE);
     let (curve, height) = foul(&mut world, 7.0);
-    for at in curve.jumps(world.days - 1.5) {
+    for at in curve.jumps(world.days) {
         plant_jump(&mut world, at, -height);
     }
     world

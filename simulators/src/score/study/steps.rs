@@ -195,8 +195,8 @@ mod tests {
             Bound::AtMost(most) => most * readings as f64 * 1e-5,
             other => panic!("{other:?}"),
         };
-        // Poisson with mean 0.256: 0.774, 0.973; 0.512: 0.599, 0.906, 0.985; 1.536: 0.801 up to two,
-        // 0.929, 0.980.
+        // Poisson with mean 0.256: 0.774, 0.973; 0.512: 0.599, 0.906, 0.985; 1.536: 0.801 up to
+        // two, 0.929, 0.980.
         for (rate, readings, steps) in [
             (1.0, 25_600, 1.0),
             (1.0, 51_200, 2.0),

@@ -1,8 +1,12 @@
 //! The screen keeps outliers out, stops at a step, and leaves drift and correlated noise alone.
 
-use crate::support::{Noise, channel, constant, engine, indication, node, reference, span};
-use holdtrue_engine::event::{AlarmKind, AlarmState, Output, PairFate, RefusedReason};
-use holdtrue_engine::setup::{ChannelSetup, Clock, WindowLength};
+use crate::support::{
+    Noise, at, channel, constant, engine, indication, node, reference, reference_value, span,
+};
+use holdtrue_engine::event::{
+    AlarmKind, AlarmState, Input, Output, PairFate, RefusedReason, Subject,
+};
+use holdtrue_engine::setup::{ChannelId, ChannelSetup, Clock, ReferenceKind, WindowLength};
 
 /// Seconds between readings.
 const EVERY: f64 = 60.0;
@@ -169,4 +173,45 @@ fn pairs_from_before_the_window_do_not_drive_the_screen() {
     assert_eq!(fates, [RefusedReason::Late; 20]);
     assert!(!outputs.iter().any(|o| matches!(o, Output::Alarm(_))));
     assert!(!engine.standing().channels[0].locked_out);
+}
+
+/// One value again and again is a stuck sensor, and no silence of the node: it still reports. Once
+/// it moves it is believed again, before any reference value comes.
+#[test]
+fn a_stuck_sensor_is_one_alarm_until_it_moves() {
+    let mut alive = channel("a", 0);
+    alive.noise = 1.0;
+    alive.resolution = 0.1;
+    alive.alarms.gap_after = Some(span(600.0));
+    let lab = reference("lab", ReferenceKind::Measured);
+    let mut engine = engine(node(Clock::Live, vec![lab], vec![alive]));
+    let mut outputs = Vec::new();
+    engine.step(&reference_value(0, 0.0, 5.0), &mut outputs);
+    for minute in 0..60_u32 {
+        let seconds = EVERY * f64::from(minute);
+        engine.step(&indication(0, seconds, 5.0), &mut outputs);
+        engine.step(
+            &Input::Tick {
+                now: at(seconds + 30.0),
+            },
+            &mut outputs,
+        );
+    }
+    let alarms = |outputs: &mut Vec<Output>| -> Vec<(Subject, AlarmKind, AlarmState)> {
+        outputs
+            .drain(..)
+            .filter_map(|output| match output {
+                Output::Alarm(change) => Some((change.subject, change.kind, change.state)),
+                _ => None,
+            })
+            .collect()
+    };
+    let sensor = Subject::Channel(ChannelId(0));
+    let raised = (sensor, AlarmKind::Stuck, AlarmState::Unacknowledged);
+    assert_eq!(alarms(&mut outputs), [raised]);
+    for (minute, value) in [(60.0, 5.3), (61.0, 4.6), (62.0, 4.9)] {
+        engine.step(&indication(0, EVERY * minute, value), &mut outputs);
+    }
+    let cleared = (sensor, AlarmKind::Stuck, AlarmState::Normal);
+    assert_eq!(alarms(&mut outputs), [cleared]);
 }

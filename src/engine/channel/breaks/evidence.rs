@@ -17,6 +17,10 @@ const BEFORE: usize = 64;
 /// What a pair can contribute to the mean after the change, in standard deviations about their
 /// median: an outlier among them makes no step.
 const REACH: f64 = 4.0;
+/// Pairs before the change whose scatter counts as that of late.
+const LATEST: usize = 32;
+/// Φ⁻¹(0.8).
+const UPPER_QUINTILE: f64 = 0.841_621_233_572_914_2;
 /// A step must explain the pairs better than any bend by so much of twice the log likelihood:
 /// strong evidence, as for a degree (Kass & Raftery 1995, p. 777).
 pub(super) const BEND_MARGIN: f64 = 6.0;
@@ -109,6 +113,7 @@ impl Question<'_> {
         let n = after.len() as f64;
         let rows: Vec<Row> = after.iter().map(|rest| rest.row).collect();
         let sd = self.known.sd.max(ahead.residual_sd);
+        let sd = sd.max(scatter(before, after));
         let thin = rows.iter().map(|row| 1.0 / row.weight).sum::<f64>() / n;
         let variance = self.known.inflation * ahead.leverage(&rows)? + self.known.of_mean(n) * thin;
         let u = sd * variance.sqrt();
@@ -188,6 +193,29 @@ impl Question<'_> {
             .collect();
         Series::new(times, &residuals, self.known.phi, self.known.unit)
     }
+}
+
+/// Standard deviation of a pair of late, as far as it must be: noise that has grown is learned
+/// slowly, and a few pairs of it look like a step to who only knows the old. That of the pairs after
+/// the change about their mean, and that of these with the latest before it, each no larger than
+/// chance makes it in one of five: s·√(ν/χ²) with the upper quintile of χ² (Wilson & Hilferty 1931).
+fn scatter(before: &[Rest], after: &[Rest]) -> f64 {
+    let latest = &before[before.len().saturating_sub(LATEST)..];
+    let mean = after.iter().map(|rest| rest.residual).sum::<f64>() / after.len().max(1) as f64;
+    let square = |rest: &Rest, level: f64| {
+        let deviation = rest.residual - level;
+        deviation * deviation * rest.row.weight
+    };
+    let before: f64 = latest.iter().map(|rest| square(rest, 0.0)).sum();
+    let after_squares: f64 = after.iter().map(|rest| square(rest, mean)).sum();
+    let least = |squares: f64, count: usize| {
+        let freedom = count.saturating_sub(1).max(1) as f64;
+        let part = 2.0 / (9.0 * freedom);
+        let quotient = 1.0 - part + UPPER_QUINTILE * part.sqrt();
+        (squares / freedom / (quotient * quotient * quotient)).sqrt()
+    };
+    let both = least(before + after_squares, latest.len() + after.len());
+    least(after_squares, after.len()).max(both)
 }
 
 /// Whether the error stayed where it stepped to: two thirds of the pairs and the newest are nearer

@@ -112,22 +112,23 @@ impl Question<'_> {
         let first = after.first()?;
         let n = after.len() as f64;
         let rows: Vec<Row> = after.iter().map(|rest| rest.row).collect();
-        let sd = self.known.sd.max(ahead.residual_sd);
-        let sd = sd.max(scatter(before, after));
+        let learned = self.known.sd.max(ahead.residual_sd);
+        let grown = (scatter(before, after) / learned).max(1.0);
+        let sd = learned * grown;
         let thin = rows.iter().map(|row| 1.0 / row.weight).sum::<f64>() / n;
         let variance = self.known.inflation * ahead.leverage(&rows)? + self.known.of_mean(n) * thin;
         let u = sd * variance.sqrt();
         let size = after.iter().map(|rest| rest.residual).sum::<f64>() / n;
         let outside = 2.0 * quantile::normal_below(-self.confirmation);
         let needed = quantile::student(1.0 - outside, self.known.degrees_of_freedom);
-        let gain = place.gain - series.bend();
+        let gain = (place.gain - series.bend()) / (grown * grown);
         let (size, u) = if size.abs() >= needed * u && gain >= BEND_MARGIN {
             (size, u)
         } else if gain >= (LEAP * needed) * (LEAP * needed) {
             let scale = 1.0 / first.row.weight.sqrt();
             (
                 place.size * scale,
-                place.size.abs() / place.gain.sqrt() * scale,
+                place.size.abs() / place.gain.sqrt() * grown * scale,
             )
         } else {
             return None;

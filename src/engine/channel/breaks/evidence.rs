@@ -197,9 +197,10 @@ impl Question<'_> {
 }
 
 /// Standard deviation of a pair of late, as far as it must be: noise that has grown is learned
-/// slowly, and a few pairs of it look like a step to who only knows the old. That of the pairs after
-/// the change about their mean, and that of these with the latest before it, each no larger than
-/// chance makes it in one of five: s·√(ν/χ²) with the upper quintile of χ² (Wilson & Hilferty 1931).
+/// slowly, and a few pairs of it look like a step to who only knows the old. That of the pairs
+/// after the change about their mean, and that of these with the latest before it, each no larger
+/// than chance makes it in one of five: s·√(ν/χ²) with the upper quintile of χ² (Wilson & Hilferty
+/// 1931, from memory).
 fn scatter(before: &[Rest], after: &[Rest]) -> f64 {
     let latest = &before[before.len().saturating_sub(LATEST)..];
     let mean = after.iter().map(|rest| rest.residual).sum::<f64>() / after.len().max(1) as f64;

@@ -189,7 +189,8 @@ fn nobody_looks_for_steps_where_they_are_switched_off() {
 
 /// A sensor that has lost 5 % of its span and has a temperature, at levels about 1000 and 20 °C,
 /// with white noise of standard deviation 1. What level and temperature do is no larger than that,
-/// so that the noise is soon known although they are claimed only later. It steps by `size` at the 600th pair.
+/// so that the noise is soon known although they are claimed only later. It steps by `size` at the
+/// 600th pair.
 fn with_span_and_temperature(size: f64, pairs: u32) -> Vec<(usize, Output)> {
     let mut channel = small();
     channel.fit.max_span_degree = Some(0);

@@ -88,8 +88,8 @@ impl Channel {
         reentered
     }
 
-    /// Offers a pair to the present stretch and remembers it. Its fate is told, unless `entered` says
-    /// that it has been told already whether it entered, and that is still so.
+    /// Offers a pair to the present stretch and remembers it. Its fate is told, unless `entered`
+    /// says that it has been told already whether it entered, and that is still so.
     pub(super) fn offer_to_stretch(
         &mut self,
         pair: &Pair,

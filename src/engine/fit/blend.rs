@@ -2,10 +2,10 @@
 //! zero, degrees of the span, and with and without each influence quantity.
 //!
 //! As without them (see `mean`), all rows count, those of the open segment too, and models weigh at
-//! two prices (see `weights`). Mean rows weigh as in the between-segments problem and contrast rows are
-//! scaled as there (see `joint`), so that every row of the factor has one long-run variance σ², and
-//! the covariance of a model's coefficients is σ²(RᵀR)⁻¹. What is left of a group beside its mean
-//! and its contrasts is time moving inside it, next to nothing; it counts as it is.
+//! two prices (see `weights`). Mean rows weigh as in the between-segments problem and contrast rows
+//! are scaled as there (see `joint`), so that every row of the factor has one long-run variance σ²,
+//! and the covariance of a model's coefficients is σ²(RᵀR)⁻¹. What is left of a group beside its
+//! mean and its contrasts is time moving inside it, next to nothing; it counts as it is.
 //!
 //! The effect of noise in the level on the span, λ, is a bias that nobody knows better than by its
 //! size. It enters the covariance as a shift of the slope by λ about the mean level.

@@ -194,8 +194,8 @@ impl Fleet {
         }))
     }
 
-    /// Whether an indication can be true: no change faster than the measurand makes. (A repetition of
-    /// what counts as stuck is heard, and kept out afterwards.)
+    /// Whether an indication can be true: no change faster than the measurand makes. (A repetition
+    /// of what counts as stuck is heard, and kept out afterwards.)
     fn admit_alive(&self, reading: &Reading) -> Result<(), RefusedReason> {
         let Source::Indication(id) = reading.source else {
             return Ok(());

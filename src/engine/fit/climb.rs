@@ -1,8 +1,9 @@
 //! How one term of the announced model climbs from grade to grade, and comes down again.
 //!
-//! A higher grade must be better by a gain that lasts: the smaller the gain, the longer. A lower one
-//! must be as good for half a window. So noise that looks like a drift for a while is waited out,
-//! and a plain drift is announced soon. Doubts about the sample always count for what is announced.
+//! A higher grade must be better by a gain that lasts: the smaller the gain, the longer. A lower
+//! one must be as good for half a window. So noise that looks like a drift for a while is waited
+//! out, and a plain drift is announced soon. Doubts about the sample always count for what is
+//! announced.
 //!
 //! The constants were chosen by simulation, on other seeds than those of the tests:
 //! `tests/statistics/` (`false_raises`, `degree_power`) state what they achieve.

@@ -1,6 +1,7 @@
 //! The limits that the scorecard holds the engine to, each with its reason.
 
 use super::library::{Class, Scenario};
+use super::rare;
 use super::summary::{Figure, Summary};
 use serde::Serialize;
 use std::fmt;
@@ -98,10 +99,16 @@ const LIMITS: &[Limit] = &[
         "drifts of many sigma must be named as drift",
     ),
     limit(
-        Meant::Class(Class::Correctable, &[]),
+        Meant::Class(Class::Correctable, &["late-laboratory"]),
         Figure::Claimed,
         Bound::AtLeast(0.9),
         "coverage must not be bought by withdrawing",
+    ),
+    limit(
+        Meant::Only(&["late-laboratory"]),
+        Figure::Claimed,
+        Bound::AtLeast(0.8),
+        "nothing is known before the first values are back, and young corrections end before the next",
     ),
     limit(
         Meant::Class(Class::Stationary, &[]),
@@ -284,6 +291,22 @@ const LIMITS: &[Limit] = &[
     ),
 ];
 
+/// A limit that this version is known to break.
+struct Known {
+    scenario: &'static str,
+    figure: Figure,
+    /// It breaks it by no more.
+    bound: Bound,
+}
+
+/// Broken limits that are known, with what has been seen of them; DEVELOPERS.md says why. A row
+/// goes when its limit holds.
+const KNOWN: &[Known] = &[Known {
+    scenario: "span-ramp",
+    figure: Figure::Coverage,
+    bound: Bound::AtLeast(0.82),
+}];
+
 /// A limit held against a scenario's figures.
 #[derive(Clone, Debug, PartialEq, Serialize)]
 pub struct Verdict {
@@ -295,6 +318,8 @@ pub struct Verdict {
     pub bound: Bound,
     /// Whether it holds.
     pub holds: bool,
+    /// Whether it is known to be broken, and not worse than known.
+    pub known: bool,
     /// Why this bound.
     pub reason: &'static str,
 }
@@ -307,11 +332,23 @@ pub fn judge(scenario: &Scenario, summary: &Summary) -> Vec<Verdict> {
         .filter(|limit| is_meant(limit.meant, scenario))
         .map(|limit| {
             let value = summary.figures.get(&limit.figure).copied();
+            let bound = match (limit.figure, limit.bound) {
+                (Figure::FalseSteps | Figure::FalseAlarms, Bound::AtMost(rate)) if rate > 0.0 => {
+                    Bound::AtMost(rare::permitted(rate, summary.indications))
+                }
+                (_, bound) => bound,
+            };
+            let keeps = |bound: Bound| value.is_some_and(|value| bound.holds(value));
+            let holds = keeps(bound);
+            let known = KNOWN
+                .iter()
+                .filter(|known| known.scenario == scenario.name && known.figure == limit.figure);
             Verdict {
                 figure: limit.figure,
                 value,
-                bound: limit.bound,
-                holds: value.is_some_and(|value| limit.bound.holds(value)),
+                bound,
+                holds,
+                known: !holds && known.clone().any(|known| keeps(known.bound)),
                 reason: limit.reason,
             }
         })
@@ -339,11 +376,58 @@ mod tests {
                 assert!(library::find(name).is_some(), "{name}");
             }
         }
+        for known in KNOWN {
+            let scenario = library::find(known.scenario).expect(known.scenario);
+            let limited =
+                |limit: &&Limit| limit.figure == known.figure && is_meant(limit.meant, &scenario);
+            assert!(
+                LIMITS.iter().any(|limit| limited(&limit)),
+                "{}",
+                known.scenario
+            );
+        }
         for scenario in library::all() {
             let own = |limit: &&Limit| {
                 !matches!(limit.meant, Meant::All(_)) && is_meant(limit.meant, &scenario)
             };
             assert!(LIMITS.iter().any(|limit| own(&limit)), "{}", scenario.name);
+        }
+    }
+
+    /// What `figure` of a scenario comes to, from so many indications.
+    fn verdict(name: &str, figure: Figure, value: f64, indications: f64) -> Verdict {
+        let summary = Summary {
+            indications,
+            figures: [(figure, value)].into(),
+            ..Summary::default()
+        };
+        let scenario = library::find(name).unwrap();
+        let all = judge(&scenario, &summary);
+        all.into_iter().find(|it| it.figure == figure).unwrap()
+    }
+
+    #[test]
+    fn what_is_known_to_break_may_not_get_worse() {
+        for (value, holds, known) in [
+            (0.95, true, false),
+            (0.85, false, true),
+            (0.5, false, false),
+        ] {
+            let found = verdict("span-ramp", Figure::Coverage, value, 1e5);
+            assert_eq!((found.holds, found.known), (holds, known), "{value}");
+        }
+        let other = verdict("offset-ramp", Figure::Coverage, 0.85, 1e5);
+        assert!(!other.holds && !other.known);
+    }
+
+    /// One false step among 20 000 says nothing against one in 100 000; six of 300 000 do not yet,
+    /// seven do.
+    #[test]
+    fn rates_are_held_to_what_their_sample_can_tell() {
+        for (steps, indications, holds) in [(1.0, 2e4, true), (6.0, 3e5, true), (7.0, 3e5, false)] {
+            let value = steps / indications * 1e5;
+            let found = verdict("step", Figure::FalseSteps, value, indications);
+            assert_eq!(found.holds, holds, "{steps} of {indications}");
         }
     }
 

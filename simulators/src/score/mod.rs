@@ -25,6 +25,7 @@ pub mod trial;
 
 pub mod contest;
 pub mod limits;
+pub mod rare;
 pub mod summary;
 pub mod table;
 

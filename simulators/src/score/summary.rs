@@ -50,18 +50,20 @@ pub enum Figure {
     SpanClaims,
     /// Part of the corrected values beyond all that was learned that do not say so.
     Unflagged,
-    /// The most that a fault moved a correction, in u of the correction without the fault; missing
+    /// The most that a fault moved a correction, in the correction's own u as stated; missing
     /// if in any run nothing was claimed once the fault was there.
     Moved,
 }
 
 /// The runs of one scenario.
-#[derive(Clone, Debug, PartialEq, Serialize)]
+#[derive(Clone, Debug, Default, PartialEq, Serialize)]
 pub struct Summary {
     /// How many.
     pub runs: usize,
     /// Readings that the engine was given.
     pub readings: u64,
+    /// Indications among them, which rates count from.
+    pub indications: f64,
     /// Mean error of what a consumer sees without and with the correction, in σ.
     pub bias: (Option<f64>, Option<f64>),
     /// Its RMS, noise included.
@@ -94,6 +96,7 @@ pub fn of(runs: &[Timed]) -> Summary {
     Summary {
         runs: runs.len(),
         readings: tally.readings,
+        indications: tally.newest_before.count,
         bias: (tally.seen_before.mean(), tally.seen_after.mean()),
         seen: (tally.seen_before.rms(), tally.seen_after.rms()),
         newest: (tally.newest_before.rms(), tally.newest_after.rms()),
@@ -107,7 +110,7 @@ pub fn of(runs: &[Timed]) -> Summary {
 
 fn figures(runs: &[Timed], tally: &Tally, false_alarms: f64) -> BTreeMap<Figure, f64> {
     let indications = tally.newest_before.count;
-    let false_alarms = part(1e5 * false_alarms, indications);
+    let false_alarms = rate(false_alarms, indications);
     corrected(tally)
         .into_iter()
         .chain(words(runs, indications))
@@ -142,7 +145,7 @@ fn words(runs: &[Timed], indications: f64) -> [(Figure, Option<f64>); 6] {
     let graded = count(runs, |found| found.graded);
     let crossings = count(runs, |found| found.crossings);
     let foretold = sorted(runs, |found| &found.leads).len() as f64;
-    let false_steps = 1e5 * count(runs, |found| found.false_steps);
+    let false_steps = count(runs, |found| found.false_steps);
     [
         (
             Figure::FalseRaises,
@@ -152,7 +155,7 @@ fn words(runs: &[Timed], indications: f64) -> [(Figure, Option<f64>); 6] {
             Figure::MissedRaises,
             part(count(runs, |found| found.missed_raises), graded),
         ),
-        (Figure::FalseSteps, part(false_steps, indications)),
+        (Figure::FalseSteps, rate(false_steps, indications)),
         (Figure::Repeated, Some(count(runs, |found| found.repeated))),
         (
             Figure::FalseLimits,
@@ -207,6 +210,11 @@ fn claims(runs: &[Timed]) -> [(Figure, Option<f64>); 3] {
 /// `of` as a part of `all`; `None` of nothing.
 fn part(of: f64, all: f64) -> Option<f64> {
     (all > 0.0).then(|| of / all)
+}
+
+/// So many of so many indications, per 100 000; `None` of nothing.
+fn rate(of: f64, indications: f64) -> Option<f64> {
+    part(of, indications).map(|part| part * 1e5)
 }
 
 /// A count of all runs together.

@@ -66,15 +66,21 @@ impl Scorecard {
     /// The limits that are broken, one sentence each.
     #[must_use]
     pub fn broken(&self) -> Vec<String> {
-        self.scenarios
-            .iter()
-            .flat_map(|row| {
-                row.limits
-                    .iter()
-                    .filter(|verdict| !verdict.holds)
-                    .map(|verdict| sentence(row, verdict))
-            })
-            .collect()
+        self.sentences(|verdict| !verdict.holds)
+    }
+
+    /// Those of them that this version is not known to break, or not by so much.
+    #[must_use]
+    pub fn broken_anew(&self) -> Vec<String> {
+        self.sentences(|verdict| !verdict.holds && !verdict.known)
+    }
+
+    fn sentences(&self, which: fn(&Verdict) -> bool) -> Vec<String> {
+        let each = self.scenarios.iter().flat_map(|row| {
+            let told = row.limits.iter().filter(|verdict| which(verdict));
+            told.map(|verdict| sentence(row, verdict))
+        });
+        each.collect()
     }
 
     /// The text table.

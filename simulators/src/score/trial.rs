@@ -39,7 +39,7 @@ pub struct Trial {
     /// … and those that were not flagged so.
     pub unflagged: u64,
     /// Where there is a twin without the fault: the most that a correction differs from its twin's
-    /// once the fault is there, in its twin's u; `None` as well where nothing was claimed then.
+    /// once the fault is there, in its own u; `None` as well where nothing was claimed then.
     pub moved: Option<f64>,
 }
 
@@ -176,7 +176,7 @@ impl Pass {
     }
 }
 
-/// The most by which corrections from a day on differ from those of the twin, in the twin's u;
+/// The most by which corrections from a day on differ from those of the twin, in their own u;
 /// instants at which either makes no claim do not count.
 fn most_moved(
     from: f64,
@@ -189,7 +189,7 @@ fn most_moved(
         .filter(|((day, _), _)| *day >= from)
         .filter_map(|((_, ours), (_, twin))| {
             let (ours, twin) = ((*ours)?, (*twin)?);
-            Some((ours.correction - twin.correction).abs() / twin.u)
+            Some((ours.correction - twin.correction).abs() / ours.u)
         })
         .reduce(f64::max)
 }

@@ -53,8 +53,8 @@ pub struct Scenario {
     pub class: Class,
     /// Draws a run.
     pub build: fn(Chooser) -> World,
-    /// Takes the fault out again: then every run has a twin without it, and it is measured by how
-    /// much the fault moved the corrections.
+    /// Puts in the fault's place what does no harm: then every run has a twin with that, and it is
+    /// measured by how much the fault moved the corrections.
     pub twin: Option<fn(&mut World)>,
     /// Whether one run is so large that the short form makes do with one.
     pub large: bool,

@@ -27,7 +27,7 @@ pub(super) const SCENARIOS: &[Scenario] = &[
         drift,
     ),
     Scenario {
-        twin: Some(heal),
+        twin: Some(silence),
         ..Scenario::new(
             Class::Detection,
             "reference-step",
@@ -36,7 +36,7 @@ pub(super) const SCENARIOS: &[Scenario] = &[
         )
     },
     Scenario {
-        twin: Some(heal),
+        twin: Some(silence),
         ..Scenario::new(
             Class::Detection,
             "reference-stuck",
@@ -95,9 +95,14 @@ fn stuck(chooser: Chooser) -> World {
     world
 }
 
-fn heal(world: &mut World) {
-    world.references[0].error.clear();
-    world.references[0].stuck_from = None;
+/// In place of the fault the reference falls silent, which is told as soon as that is known.
+fn silence(world: &mut World) {
+    let at = world.faults.first().map_or(0.0, |fault| fault.at);
+    let reference = &mut world.references[0];
+    reference.error.clear();
+    reference.stuck_from = None;
+    reference.silent_from = Some(at);
+    world.setup.references[0].stale_after = Some(days(0.25));
 }
 
 /// Sensors on one reference.

@@ -4,15 +4,14 @@
 
 use super::{Case, Figure, held, reported};
 use crate::score::limits::Bound;
+use crate::score::rare;
 use crate::score::steps::{Drift, FalseSteps, Kind, Run, false_steps, found};
 use std::ops::Range;
 
 /// The first seed of every case: its runs differ from those of the others in what they ride on.
 const SEED: u64 = 7_000_000;
-/// Readings from which on a rate is held to its limit as it stands.
+/// Readings of a case without a step.
 const ENOUGH: u64 = 3_000_000;
-/// A smaller sample is held to what a true rate at the limit keeps with this probability.
-const KEPT: f64 = 0.95;
 /// Runs with a real step.
 const STEP_RUNS: u64 = 400;
 
@@ -125,20 +124,7 @@ fn without_step(name: String, run: Run, rate: f64) -> Case {
 
 /// What is permitted where so many false steps per 100 000 are promised.
 fn permitted(rate: f64, found: FalseSteps) -> Bound {
-    if found.readings >= ENOUGH {
-        return Bound::AtMost(rate);
-    }
-    let mean = rate * found.readings as f64 * 1e-5;
-    // Poisson.
-    let mut probability = libm::exp(-mean);
-    let mut kept = probability;
-    let mut steps = 0;
-    while kept < KEPT {
-        steps += 1;
-        probability *= mean / steps as f64;
-        kept += probability;
-    }
-    Bound::AtMost(FalseSteps { steps, ..found }.rate())
+    Bound::AtMost(rare::permitted(rate, found.readings as f64))
 }
 
 /// Figures of real steps. Three sigma in white noise and six in AR(1) 0.8 are held to what is
@@ -183,29 +169,4 @@ fn step_figures(run: Run, size: f64, rate: f64, seeds: Range<u64>) -> Vec<Figure
         },
     ]);
     figures
-}
-
-#[cfg(test)]
-mod tests {
-    use super::*;
-
-    #[test]
-    fn small_samples_are_held_to_what_the_promised_rate_keeps() {
-        let permitted = |rate, readings| match permitted(rate, FalseSteps { readings, steps: 0 }) {
-            Bound::AtMost(most) => most * readings as f64 * 1e-5,
-            other => panic!("{other:?}"),
-        };
-        // Poisson with mean 0.256: 0.774, 0.973; 0.512: 0.599, 0.906, 0.985; 1.536: 0.801 up to
-        // two, 0.929, 0.980.
-        for (rate, readings, steps) in [
-            (1.0, 25_600, 1.0),
-            (1.0, 51_200, 2.0),
-            (3.0, 51_200, 4.0),
-            (1.0, 3_000_000, 30.0),
-            (3.0, 6_000_000, 180.0),
-        ] {
-            let most = permitted(rate, readings);
-            assert!((most - steps).abs() < 1e-9, "{rate} {readings}: {most}");
-        }
-    }
 }

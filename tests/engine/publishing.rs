@@ -172,6 +172,8 @@ fn rounding_is_no_news() {
     let rounded = |index: u32| (f64::from(index) * 0.7 + 0.3) - f64::from(index) * 0.7;
     let errors: Vec<f64> = (0..1000).map(rounded).collect();
     let (_, outputs) = run(against_zero(setup), &errors);
+    let steps = outputs.iter().filter(|it| matches!(it, Output::Step(_)));
+    assert_eq!(steps.count(), 0, "the last digits do not step");
     let documents = corrections(&outputs);
     // A young window holds a document for a part of its own length only: about twenty renewals.
     assert!(documents.len() < 40, "{} documents", documents.len());

@@ -39,9 +39,9 @@ const DROP_BELOW: f64 = 1.0;
 const LEAST_SHARE: f64 = 0.25;
 /// A degree above 1 has weight from here on.
 const HAS_WEIGHT: f64 = 0.01;
-/// Part of a correction whose change is rounding, not news: keeps a noiseless stream (u = 0) from
+/// Part of an error whose change is rounding, not news: keeps a noiseless stream (u = 0) from
 /// issuing a document per pair.
-const NEGLIGIBLE: f64 = 1e-9;
+pub(super) const NEGLIGIBLE: f64 = 1e-9;
 /// Instants at which two polynomials are compared over the validity; polynomials of degree ≤ 5
 /// can't hide a difference of note between nine of them.
 const COMPARED: u32 = 8;

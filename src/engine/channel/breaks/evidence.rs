@@ -3,6 +3,7 @@
 
 use super::bend::Series;
 use super::noise::Known;
+use crate::channel::publishing::NEGLIGIBLE;
 use crate::channel::recent::{Recent, Remembered};
 use crate::channel::stretch::{Stretch, row};
 use crate::fit::Row;
@@ -133,7 +134,9 @@ impl Question<'_> {
         } else {
             return None;
         };
-        let is_step = after.len() >= self.least && lasts(after, size);
+        // In a stream without noise the last digits leap.
+        let is_news = size.abs() > NEGLIGIBLE * ahead.expected(&first.row).abs();
+        let is_step = is_news && after.len() >= self.least && lasts(after, size);
         is_step.then_some(Finding {
             last_before: before.last().map(|rest| rest.row.time),
             first_after,

@@ -224,8 +224,7 @@ fn decision_rule(section: &Section<'_>) -> Option<DecisionRule> {
 }
 
 /// What a safety, legal or custody measurement may not have: a value made of its correction, and
-/// the median of its neighbours as its judge (field-notes §3: such a member of a group may not be
-/// corrected from the group).
+/// the median of its neighbours as its judge.
 fn refuse_with_monitor_only(
     section: &Section<'_>,
     reference: ReferenceId,

@@ -83,7 +83,7 @@ fn equal_counts_and_a_forced_degree_are_the_plain_fit() {
 }
 
 /// The price of a degree: variance of the curve at its newest row in units of the rows' variance,
-/// for n even rows (textbook algebra of orthogonal polynomials; field notes 6.4).
+/// for n even rows (textbook algebra of orthogonal polynomials).
 #[test]
 fn each_degree_costs_what_the_closed_forms_say() {
     for rows in [10_u32, 64, 100] {

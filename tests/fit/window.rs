@@ -17,7 +17,7 @@ fn row(time: i64, error: f64, weight: f64) -> Row {
     }
 }
 
-/// Sliding window of three rows, degree 1 (recomputed by hand; field notes V14).
+/// Sliding window of three rows, degree 1 (recomputed by hand; check value V14).
 #[test]
 fn three_rows_slide_exactly() {
     let mut window = Window::new(Columns::time(1), Cut::rows(3, 3));

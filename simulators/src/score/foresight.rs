@@ -24,7 +24,7 @@ pub struct Watched {
 }
 
 /// ê = 0.10 + 0.02·t from 30 points at t = 0 … 29, σ = 0.05 known, limit 1.0: it is crossed at
-/// t = 45 (check value V31 of the field notes).
+/// t = 45 (check value V31).
 pub const EVEN_DRIFT: Watched = Watched {
     level: 0.10,
     rate: 0.02,

@@ -71,7 +71,7 @@ mod tests {
     use super::*;
     use approx::assert_relative_eq;
 
-    /// Recomputed from the formula (field notes, V29).
+    /// Recomputed from the formula (check value V29).
     #[test]
     fn a_correlated_sample_is_worth_less() {
         for (count, r, worth) in [

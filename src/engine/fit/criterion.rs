@@ -52,7 +52,7 @@ mod tests {
         }
     }
 
-    /// Recomputed by hand from the formulas (field notes, V12 and V13).
+    /// Recomputed by hand from the formulas (check values V12 and V13).
     #[test]
     fn small_invented_cases() {
         let rss = [10.0, 6.0, 5.5];

@@ -14,6 +14,10 @@ const SEEDS_SHORT: u64 = 4;
 
 /// Scores the engine.
 #[derive(Debug, Args)]
+#[allow(
+    clippy::struct_excessive_bools,
+    reason = "each is a flag of the command line"
+)]
 pub(super) struct Score {
     /// A study instead of scenarios: what only many seeded streams can show
     #[arg(long, value_enum, conflicts_with_all = ["scenarios", "short", "list", "but_known"])]

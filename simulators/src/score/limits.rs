@@ -108,7 +108,7 @@ const LIMITS: &[Limit] = &[
         Meant::Only(&["late-laboratory"]),
         Figure::Claimed,
         Bound::AtLeast(0.8),
-        "nothing is known before the first values are back, and young corrections end before the next",
+        "nothing is known before the first values are back, and young corrections end soon",
     ),
     limit(
         Meant::Class(Class::Stationary, &[]),

@@ -1,8 +1,8 @@
 //! Steps of a sensor: how seldom noise and drift are called one, and how soon and where a real one
 //! is found. A sample of `plant score --study steps`: with so few readings a rate of false steps is
 //! held to what a true rate at its limit keeps in 95 of 100 samples; ten times the limit breaks
-//! 51 200 readings nine times in ten, and 25 600 about three times in four. Real steps take all their
-//! runs: of 41, the third slowest would decide.
+//! 51 200 readings nine times in ten, and 25 600 about three times in four. Real steps take all
+//! their runs: of 41, the third slowest would decide.
 
 use crate::studies::assert_holds;
 use holdtrue_simulators::score::study::Study;

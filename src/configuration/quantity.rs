@@ -1,8 +1,8 @@
 //! Lengths of time and of windows, as a technician writes them: "10 s", "1.5 h", "1024 pairs".
 
-use crate::payload::literal::scaled_integer;
 use holdtrue_engine::setup::WindowLength;
 use holdtrue_engine::time::Duration;
+use holdtrue_text::decimal::scaled_integer;
 
 const NANOS_PER_SECOND: i128 = 1_000_000_000;
 /// Units of time with their seconds in nanoseconds. A day has 86 400 s. No months, no years: they

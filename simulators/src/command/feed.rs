@@ -4,10 +4,10 @@ use super::Failure;
 use super::broker::Target;
 use crate::feed::FeedError;
 use crate::feed::field::{Constant, Field, Kind};
-use crate::feed::instant::TimeForm;
 use crate::feed::rows::{Mapping, Rows};
 use crate::feed::table::{FileForm, Table};
 use clap::Args;
+use holdtrue_text::time_form::TimeForm;
 use std::path::PathBuf;
 
 /// Feeds a recording.

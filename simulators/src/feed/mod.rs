@@ -1,12 +1,10 @@
 //! A recording (CSV or JSON lines) as MQTT messages, row by row in the file's order.
 //!
 //! - [`field`]: which columns become which members of the payload
-//! - [`instant`]: how a column of times is read
 //! - [`table`]: the file as rows
 //! - [`rows`]: rows turned into messages; what is left out, with reasons
 
 pub mod field;
-pub mod instant;
 pub mod rows;
 pub mod table;
 

@@ -2,14 +2,16 @@
 
 use super::FeedError;
 use super::field::{Constant, Field, Kind};
-use super::instant::TimeForm;
 use super::table::Table;
 use crate::message::{Message, time_text};
-use holdtrue_engine::time::Timestamp;
+use holdtrue_engine::time::{Duration, Timestamp};
+use holdtrue_text::time_form::TimeForm;
 use serde_json::{Map, Number, Value};
 
 /// Reasons kept for the report; further ones are only counted.
 const REASONS_MAX: usize = 10;
+/// Times without an offset of their own are taken as UTC.
+const IN_UTC: Option<Duration> = Some(Duration::ZERO);
 
 /// How rows become messages.
 #[derive(Clone, Debug, Default, PartialEq)]
@@ -67,7 +69,7 @@ impl Mapping {
             payload = self.all_cells(cells);
             at = payload
                 .get("at")
-                .and_then(|at| TimeForm::Rfc3339.read(&text(at)));
+                .and_then(|at| TimeForm::Rfc3339.read(&text(at), IN_UTC).ok());
         }
         for field in &self.fields {
             let value = self.member(field, cells, &mut at)?;
@@ -116,7 +118,9 @@ impl Mapping {
                 .ok_or_else(|| unreadable("a number")),
             Kind::Time => {
                 let form = self.time_form.as_ref().unwrap_or(&TimeForm::Rfc3339);
-                let instant = form.read(&cell_text).ok_or_else(|| unreadable("a time"))?;
+                let read = form.read(&cell_text, IN_UTC);
+                let instant =
+                    read.map_err(|why| format!("{}: {cell_text:?} {why}", field.column))?;
                 at.get_or_insert(instant);
                 Ok(Value::String(time_text(instant)))
             }

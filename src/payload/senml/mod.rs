@@ -10,10 +10,11 @@ mod record;
 use crate::payload::fault::{Fault, excerpt};
 use crate::payload::intake::{Reader, Told};
 use crate::payload::json::{self, broken};
-use crate::payload::literal::{self, scaled_integer};
+use crate::payload::literal;
 use crate::payload::tables::{Scalar, SenmlPlace, Status, Target};
 use holdtrue_engine::event::RefusedReason;
 use holdtrue_engine::time::Timestamp;
+use holdtrue_text::decimal::scaled_integer;
 use record::{Record, label, nanoseconds};
 use std::borrow::Cow;
 

@@ -2,9 +2,9 @@
 
 use crate::payload::fault::{Fault, excerpt};
 use crate::payload::json::{is_number, number, text_of, wrong_type};
-use crate::payload::literal::scaled_integer;
 use holdtrue_engine::event::RefusedReason;
 use holdtrue_engine::time::Timestamp;
+use holdtrue_text::decimal::scaled_integer;
 use serde::de::{Deserialize, Deserializer, IgnoredAny, MapAccess, Visitor};
 use serde_json::value::RawValue;
 use std::borrow::Cow;

@@ -204,6 +204,7 @@ fn setup(case: Case) -> Setup {
         publish: PublishSetup {
             step: 0.25,
             max_age: seconds(DAY),
+            ..PublishSetup::default()
         },
         alarms: AlarmSetup {
             delay: 3,

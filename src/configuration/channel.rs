@@ -247,12 +247,13 @@ fn refuse_with_monitor_only(
     }
 }
 
-/// `publish = { step, max_age }`.
+/// `publish = { step, max_age, dead_zone }`.
 fn publish(section: &Section<'_>) -> PublishSetup {
     let table = section.section("publish");
     let table = table.as_ref();
     let step = table.and_then(|t| t.number_in("step", |x| x > 0.0, "greater than zero"));
     let max_age = table.and_then(|table| table.positive_duration("max_age"));
+    let dead_zone = table.and_then(|t| t.number_in("dead_zone", |x| x >= 0.0, "zero or more"));
     if let Some(table) = table {
         table.finish();
     }
@@ -260,6 +261,7 @@ fn publish(section: &Section<'_>) -> PublishSetup {
     PublishSetup {
         step: step.map_or(default.step, |found| found.value),
         max_age: max_age.map_or(default.max_age, |found| found.value),
+        dead_zone: dead_zone.map_or(default.dead_zone, |found| found.value + 0.0),
     }
 }
 

@@ -93,6 +93,41 @@ fn a_silent_reference_leads_to_hold_and_then_to_withdrawal() {
     assert_eq!(standing.status(), Status::OutOfSpecification);
 }
 
+/// The node hears nothing for ten hours of each twenty, which excuses the reference's silence each
+/// time; the correction that waits for it grows no younger by that. It is held for twenty hours
+/// after its first hold, and does not come back without a pair.
+#[test]
+fn silences_of_the_node_do_not_prolong_the_hold() {
+    let mut channel = setup();
+    channel.hold_limit = Some(span(20.0 * EVERY));
+    let mut lab = reference("lab", ReferenceKind::Measured);
+    lab.stale_after = Some(span(3.0 * EVERY));
+    let mut engine = engine(node(Clock::Readings, vec![lab], vec![channel]));
+    let mut noise = Noise::new(81, 0.0);
+    let mut outputs = Vec::new();
+    for hour in (0..400).filter(|hour| *hour < 100 || hour % 20 < 10) {
+        let time = EVERY * f64::from(hour);
+        let value = 9.0 + 0.1 * noise.draw();
+        engine.step(&indication(0, time, value), &mut outputs);
+        if hour < 100 || hour == 380 {
+            engine.step(&reference_value(0, time, 7.0), &mut outputs);
+        }
+    }
+    let resumed = |it: &&Output| matches!(it, Output::Notice(notice) if notice.code == "resumed");
+    assert!(outputs.iter().filter(resumed).count() > 10);
+    let withdrawn = withdrawals(&outputs);
+    assert!(
+        matches!(withdrawn[..], [first] if (119.0..=140.0).contains(&first)),
+        "{withdrawn:?}"
+    );
+    let issued = outputs.iter().filter_map(|output| match output {
+        Output::Correction(document) => Some(document.issued.since(at(0.0)).seconds() / EVERY),
+        _ => None,
+    });
+    let late: Vec<f64> = issued.filter(|hour| *hour > withdrawn[0]).collect();
+    assert_eq!(late.first(), Some(&380.0), "a pair brings it back");
+}
+
 #[test]
 fn a_reference_that_comes_back_in_time_ends_the_hold_without_a_gap() {
     let (engine, outputs) = run(setup(), 160, |_| 2.0, |hour| !(100..110).contains(&hour));

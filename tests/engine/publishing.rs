@@ -112,36 +112,46 @@ fn a_true_sensor_is_left_alone() {
     }
 }
 
-/// Applied from |ĉ| ≥ 2u, dropped below 1u: with a known common uncertainty of 1 the thresholds are
-/// 2 and 1.
+/// Which of the levels of an error are suppressed, each after 40 pairs without noise, with a known
+/// common uncertainty of 1 and this dead zone.
+fn suppressed_at(levels: &[f64], dead_zone: f64) -> Vec<bool> {
+    let mut setup = channel("a", 0);
+    setup.fit.window = WindowLength::Pairs(16);
+    setup.fit.segments = 16;
+    setup.fit.forced_degree = Some(0);
+    setup.screening.enabled = false;
+    setup.publish.dead_zone = dead_zone;
+    let mut setup = against_zero(setup);
+    setup.references[0].uncertainty_common = 1.0;
+    let errors: Vec<f64> = levels
+        .iter()
+        .flat_map(|level| std::iter::repeat_n(*level, 40))
+        .collect();
+    let (_, outputs) = run(setup, &errors);
+    let documents = corrections(&outputs);
+    let in_force = |block: usize| {
+        let end = at(EVERY * (40.0 * block as f64 + 39.5));
+        let last = documents.iter().rfind(|document| document.issued <= end);
+        last.expect("a document is in force").suppressed
+    };
+    (0..levels.len()).map(in_force).collect()
+}
+
+/// Applied from |ĉ| ≥ 2u, dropped below 1u: the thresholds are 2 and 1.
 #[test]
 fn the_dead_zone_has_two_edges() {
     let levels = [1.9, 2.1, 1.1, 0.9, 1.9, 2.1];
     let expected = [true, false, false, true, true, false];
-    let mut setup = channel("a", 0);
-    setup.fit.window = WindowLength::Pairs(1);
-    setup.fit.segments = 1;
-    let mut got = Vec::new();
-    let mut setup = {
-        setup.fit.window = WindowLength::Pairs(16);
-        setup.fit.segments = 16;
-        setup.fit.forced_degree = Some(0);
-        setup.screening.enabled = false;
-        against_zero(setup)
-    };
-    setup.references[0].uncertainty_common = 1.0;
-    let mut errors = Vec::new();
-    for level in levels {
-        errors.extend(std::iter::repeat_n(level, 40));
-    }
-    let (_, outputs) = run(setup, &errors);
-    for (block, _) in levels.iter().enumerate() {
-        let end = at(EVERY * (40.0 * block as f64 + 39.5));
-        let documents = corrections(&outputs);
-        let last = documents.iter().rfind(|document| document.issued <= end);
-        got.push(last.expect("a document is in force").suppressed);
-    }
-    assert_eq!(got, expected);
+    assert_eq!(suppressed_at(&levels, 2.0), expected);
+}
+
+/// Another multiple moves both edges; without a dead zone every correction is applied.
+#[test]
+fn the_dead_zone_is_as_wide_as_it_is_set() {
+    let levels = [3.9, 4.1, 3.0, 1.9, 3.9];
+    let expected = [true, false, false, true, true];
+    assert_eq!(suppressed_at(&levels, 4.0), expected);
+    assert_eq!(suppressed_at(&[0.1, 0.0, 1.1], 0.0), [false; 3]);
 }
 
 /// No new document without news: a steady sensor with a long validity issues few, a drifting one

@@ -69,6 +69,7 @@ pub fn channel(name: &str, reference: u32) -> ChannelSetup {
         publish: PublishSetup {
             step: 0.5,
             max_age: span(3600.0),
+            ..PublishSetup::default()
         },
         ..ChannelSetup::new(name, "pH", ReferenceId(reference))
     }

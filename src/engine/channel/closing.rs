@@ -54,6 +54,7 @@ impl Channel {
         let since = self.recent.take_for_next(from, self.stretch.number());
         self.stretch = self.stretch.next(carries, scene.setup);
         self.stepped = None;
+        self.unrenewed = None;
         self.breaks.begin_stretch(match carries {
             Carries::Noise { latest } => Some(latest),
             Carries::Nothing => None,

@@ -51,6 +51,17 @@ pub(super) enum Ladder {
     },
 }
 
+/// How long a correction has been held without a pair that would have renewed it.
+#[derive(Clone, Copy, Debug, PartialEq, Serialize, Deserialize)]
+pub(super) struct Unrenewed {
+    /// Since when.
+    since: Timestamp,
+    /// How long it may be.
+    until: Timestamp,
+    /// The newest pair that it rests on.
+    newest: Timestamp,
+}
+
 impl Ladder {
     /// Where a channel begins.
     pub(super) fn new(setup: &ChannelSetup) -> Self {
@@ -84,12 +95,20 @@ impl Ladder {
     }
 
     /// Trouble stands at `now`, with or without a correction in force that could be held for
-    /// `limit`.
-    fn suffer(self, because: Cause, in_force: bool, now: Timestamp, limit: Duration) -> Self {
+    /// `limit`; `unrenewed`: since when it was held before, if no pair has come since.
+    fn suffer(
+        self,
+        because: Cause,
+        in_force: bool,
+        (now, unrenewed): (Timestamp, Option<Timestamp>),
+        limit: Duration,
+    ) -> Self {
         let since = match self {
             Self::RawOnly { .. } if !in_force => return Self::RawOnly { because },
             Self::Hold { since, .. } => since,
-            Self::RawOnly { .. } | Self::Advise | Self::Withdrawn { .. } => now,
+            Self::RawOnly { .. } | Self::Advise | Self::Withdrawn { .. } => {
+                unrenewed.unwrap_or(now)
+            }
         };
         if in_force && now < since.plus(limit) {
             Self::Hold { since, because }
@@ -145,10 +164,18 @@ impl Channel {
         if let Some(because) = self.trouble(judgement, scene) {
             let in_force = present && self.publishing.correction().is_some();
             let limit = self.publishing.hold_limit(scene.setup);
-            self.ladder = self.ladder.suffer(because, in_force, scene.now, limit);
+            let newest = self.publishing.correction().map(|held| held.window.to);
+            let before = self.unrenewed.filter(|held| newest <= Some(held.newest));
+            let times = (scene.now, before.map(|held| held.since));
+            self.ladder = self.ladder.suffer(because, in_force, times, limit);
             match self.ladder {
                 Ladder::Hold { since, because } => {
                     let until = since.plus(limit);
+                    self.unrenewed = newest.map(|newest| Unrenewed {
+                        since,
+                        until,
+                        newest,
+                    });
                     self.publishing.hold(until, because, scene, report);
                 }
                 _ if present => self.take_back(because, scene, report),
@@ -156,7 +183,9 @@ impl Channel {
             }
             return;
         }
-        if let Some(judgement) = judgement {
+        if let Some(judgement) = judgement
+            && !self.is_spent(judgement, scene.now)
+        {
             let stretch = self.stretch.number();
             self.publishing.consider(judgement, stretch, scene, report);
         }
@@ -167,6 +196,13 @@ impl Channel {
         self.ladder = self
             .ladder
             .recover(in_force && self.rests_on_present_stretch());
+    }
+
+    /// Whether what the fit says was held as long as permitted, and no pair has come since.
+    fn is_spent(&self, judgement: &Judgement, now: Timestamp) -> bool {
+        let newest = judgement.published.window.to;
+        self.unrenewed
+            .is_some_and(|held| held.until <= now && newest <= held.newest)
     }
 
     /// Rows were taken back out of the fit: what is held from now on is to rest on the others.
@@ -288,7 +324,7 @@ mod tests {
 
     #[test]
     fn a_correction_is_held_for_as_long_as_permitted_and_no_longer() {
-        let held = Ladder::Advise.suffer(STALE, true, Timestamp(10), LIMIT);
+        let held = Ladder::Advise.suffer(STALE, true, (Timestamp(10), None), LIMIT);
         let since = Timestamp(10);
         assert_eq!(
             held,
@@ -299,12 +335,12 @@ mod tests {
         );
         // Another reason does not start the time anew.
         let because = Cause::ReferenceStep;
-        let still = held.suffer(because, true, Timestamp(109), LIMIT);
+        let still = held.suffer(because, true, (Timestamp(109), None), LIMIT);
         assert_eq!(still, Ladder::Hold { since, because });
-        let ended = still.suffer(STALE, true, Timestamp(110), LIMIT);
+        let ended = still.suffer(STALE, true, (Timestamp(110), None), LIMIT);
         assert_eq!(ended, Ladder::Withdrawn { because: STALE });
         // Trouble that goes on does not climb; only a new correction does.
-        let later = ended.suffer(STALE, false, Timestamp(500), LIMIT);
+        let later = ended.suffer(STALE, false, (Timestamp(500), None), LIMIT);
         assert_eq!(later.rung(), Rung::Withdrawn);
         assert_eq!(later.recover(false), later);
         assert_eq!(later.recover(true), Ladder::Advise);
@@ -314,10 +350,10 @@ mod tests {
     fn without_a_correction_there_is_nothing_to_hold() {
         let fresh = Ladder::new(&channel_setup());
         assert_eq!(fresh.because(), Some(Cause::NothingLearned));
-        let raw = fresh.suffer(STALE, false, Timestamp(10), LIMIT);
+        let raw = fresh.suffer(STALE, false, (Timestamp(10), None), LIMIT);
         assert_eq!((raw.rung(), raw.because()), (Rung::RawOnly, Some(STALE)));
         assert_eq!(raw.recover(false), fresh);
-        let fallen = Ladder::Advise.suffer(STALE, false, Timestamp(10), LIMIT);
+        let fallen = Ladder::Advise.suffer(STALE, false, (Timestamp(10), None), LIMIT);
         assert_eq!(fallen, Ladder::Withdrawn { because: STALE });
         assert_eq!(
             Ladder::Advise.recover(false).because(),
@@ -327,9 +363,9 @@ mod tests {
 
     #[test]
     fn a_clock_that_steps_back_does_not_prolong_the_hold() {
-        let mut held = Ladder::Advise.suffer(STALE, true, Timestamp(1000), LIMIT);
+        let mut held = Ladder::Advise.suffer(STALE, true, (Timestamp(1000), None), LIMIT);
         held.step_back(Timestamp(50));
-        let ended = held.suffer(STALE, true, Timestamp(150), LIMIT);
+        let ended = held.suffer(STALE, true, (Timestamp(150), None), LIMIT);
         assert_eq!(ended.rung(), Rung::Withdrawn);
     }
 }

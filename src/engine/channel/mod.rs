@@ -51,7 +51,7 @@ use breaks::Breaks;
 use checks::Checks;
 pub(crate) use checks::jumps;
 use conditions::ChannelAlarms;
-use ladder::{Ladder, tell_withdrawn};
+use ladder::{Ladder, Unrenewed, tell_withdrawn};
 use outlook::OutlookStation;
 pub(crate) use pairing::{Answer, Check, Holding, Rows, holding};
 use pairing::{Found, Pair, Pairing};
@@ -104,6 +104,9 @@ pub(crate) struct Channel {
     publishing: Publishing,
     outlook: OutlookStation,
     ladder: Ladder,
+    /// How long the correction was held, while no pair has renewed it: a silence of the whole node
+    /// excuses its reference's, but makes an old correction no younger.
+    unrenewed: Option<Unrenewed>,
     alarms: ChannelAlarms,
     service: ServiceBook,
     /// From when on the channel's silence counts while it has said nothing.
@@ -127,6 +130,7 @@ impl Channel {
             publishing: Publishing::new(issued),
             outlook: OutlookStation::default(),
             ladder: Ladder::new(setup),
+            unrenewed: None,
             alarms: ChannelAlarms::default(),
             service: ServiceBook::default(),
             began: None,
@@ -306,6 +310,7 @@ impl Channel {
         report: &mut Report<'_>,
     ) {
         self.ladder.step_back(to);
+        self.unrenewed = None;
         if self.publishing.step_back(to) {
             let why = "it was issued while the host's clock was wrong";
             tell_withdrawn(id, setup, to, why, report);

@@ -1,8 +1,9 @@
 //! Fifth station: when a new correction is issued and how long it holds. Whether it is issued at
 //! all, held or taken back is the ladder's to decide.
 //!
-//! *Dead zone*: a correction is applied from |ĉ| ≥ 2u and dropped below 1u; while it is suppressed
-//! the document's polynomial is zero and the largest |ĉ(t)| over its validity is inside U.
+//! *Dead zone*: a correction is applied from |ĉ| ≥ `dead_zone`·u (2u) and dropped below half of
+//! that; while it is suppressed the document's polynomial is zero and the largest |ĉ(t)| over its
+//! validity is inside U.
 //!
 //! *Publish step*: a new document when over its validity it would differ from the one in force by
 //! more than `step`·u, when u or U (or what is suppressed inside U) has changed by more than that
@@ -31,10 +32,8 @@ use crate::time::{Duration, Timestamp};
 use crate::track::Sample;
 use serde::{Deserialize, Serialize};
 
-/// A correction is applied from so many u on …
-const APPLY_FROM: f64 = 2.0;
-/// … and dropped below so many.
-const DROP_BELOW: f64 = 1.0;
+/// A correction is dropped below this part of what it is applied from.
+const DROPPED_BELOW: f64 = 0.5;
 /// Least part of the horizon that weight on unannounced degrees leaves.
 const LEAST_SHARE: f64 = 0.25;
 /// A degree above 1 has weight from here on.
@@ -151,7 +150,8 @@ impl Publishing {
         let published = &judgement.published;
         let corners = levels::corners(published);
         let size = levels::largest_significance(published, &corners, judgement.rest_variance);
-        self.applied = size >= if self.applied { DROP_BELOW } else { APPLY_FROM };
+        let edge = if self.applied { DROPPED_BELOW } else { 1.0 };
+        self.applied = size >= edge * scene.setup.publish.dead_zone;
         let valid_until = valid_until(published, scene);
         let hidden = if self.applied {
             0.0

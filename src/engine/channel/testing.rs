@@ -99,6 +99,7 @@ pub(crate) fn channel_setup() -> ChannelSetup {
         publish: PublishSetup {
             step: 0.5,
             max_age: Duration::from_seconds(3600),
+            ..PublishSetup::default()
         },
         ..ChannelSetup::new("hall/ph-1", "pH", ReferenceId(0))
     }

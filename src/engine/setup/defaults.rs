@@ -107,6 +107,7 @@ impl Default for PublishSetup {
         Self {
             step: 0.25,
             max_age: Duration::from_seconds(DAY),
+            dead_zone: 2.0,
         }
     }
 }

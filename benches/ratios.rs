@@ -1,6 +1,6 @@
 //! The ratios that the fit is held to, measured on whatever machine it is: short rounds of all ways
 //! in turn, the fastest round of each counts, so that a busy machine disturbs little. Exit code 1
-//! if a target is missed.
+//! if a target is missed. An argument picks the lines whose name contains it.
 
 use holdtrue_benches::{Case, Cholesky, DEGREES, Outputs, Peers, Stream, batch_qr, outputs};
 use holdtrue_engine::fit::Row;
@@ -47,9 +47,13 @@ const PAIRS: usize = 1 << 18;
 const ROWS: usize = 1 << 21;
 
 fn main() -> ExitCode {
+    let wanted = std::env::args().nth(1).unwrap_or_default();
     println!("ns per row   Cholesky   64 segments   one-row segments   batch QR");
     let mut met = true;
     for (rows, faster) in WINDOWS {
+        if !rows.to_string().contains(&wanted) {
+            continue;
+        }
         let [cholesky, segmented, one_row, qr] = measure(rows);
         let ratios = [
             segmented / cholesky,
@@ -65,7 +69,7 @@ fn main() -> ExitCode {
         met &= ratios[0] <= SEGMENTED && ratios[1] <= ONE_ROW && ratios[2] >= faster;
     }
     println!("us per pair   the fit alone   through the engine");
-    for case in CASES {
+    for case in CASES.into_iter().filter(|case| case.name.contains(&wanted)) {
         let [fit, engine] = measure_channel(case);
         let ratio = engine / fit;
         println!(

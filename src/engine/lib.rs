@@ -21,6 +21,7 @@
 //! - [`standing`]: how things stand, for the `state` document
 
 mod alarm;
+mod cached;
 mod channel;
 pub mod counters;
 pub mod engine;

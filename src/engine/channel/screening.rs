@@ -13,6 +13,7 @@
 //!             as many fitting innovations in a row, or the window holds nothing from before
 //! ```
 
+use crate::cached::Cached;
 use crate::median::upper_median;
 use crate::setup::ChannelSetup;
 use crate::time::Timestamp;
@@ -25,6 +26,9 @@ pub(crate) const MAD_TO_SD: f64 = 1.482_602_218_505_602;
 const RECENT: usize = 512;
 /// Fewest innovations that make a scale.
 const ENOUGH: usize = 16;
+
+/// The scale is found anew when 1/this of what it looks back on has changed; see [`Least`].
+const CHANGED_PART: usize = 8;
 
 /// The residual standard deviation of the fit may widen the gate to so many times the robust scale.
 /// In strongly correlated noise the latest innovations can all be small for a while; the whole
@@ -47,6 +51,19 @@ struct Noise {
     recent: Vec<f64>,
     /// Where the ring goes on.
     place: usize,
+    #[serde(skip)]
+    least: Cached<Least>,
+}
+
+/// What the median of the magnitudes can't fall below for a while. One change of the ring moves the
+/// median by at most one place in their order, so the magnitude that stands so many places below it
+/// bounds it for as many changes; nearly every pair passes by this bound alone, and a median need
+/// not be found for it. No verdict depends on when the bound was found.
+#[derive(Clone, Copy, Debug)]
+struct Least {
+    magnitude: f64,
+    /// For so many changes more.
+    holds_for: usize,
 }
 
 /// The screen has stopped rejecting.
@@ -152,6 +169,17 @@ impl Screen {
     }
 
     fn gate(&mut self, innovation: Innovation, setup: &ChannelSetup) -> Verdict {
+        if self.noise.least_magnitude().is_some_and(|least| {
+            let sure = setup.screening.gate * (MAD_TO_SD * least) * innovation.spread;
+            least > 0.0 && innovation.value.abs() <= sure
+        }) {
+            self.run = 0;
+            return Verdict::Pass;
+        }
+        self.gate_by_scale(innovation, setup)
+    }
+
+    fn gate_by_scale(&mut self, innovation: Innovation, setup: &ChannelSetup) -> Verdict {
         let Some(robust) = self.scale(0.0, setup) else {
             return Verdict::Pass;
         };
@@ -223,6 +251,29 @@ impl Noise {
             self.recent[self.place] = standardised;
             self.place = (self.place + 1) % RECENT;
         }
+        if let Some(least) = self.least.get_mut() {
+            match least.holds_for.checked_sub(1) {
+                Some(left) => least.holds_for = left,
+                None => self.least.forget(),
+            }
+        }
+    }
+
+    /// What the upper median of the magnitudes is no less than; `None` while there are too few.
+    fn least_magnitude(&self) -> Option<f64> {
+        if self.recent.len() < ENOUGH {
+            return None;
+        }
+        let least = self.least.get_or_find(|| {
+            let mut magnitudes: Vec<f64> = self.recent.iter().map(|z| z.abs()).collect();
+            let holds_for = magnitudes.len() / CHANGED_PART;
+            let place = magnitudes.len() / 2 - holds_for;
+            Least {
+                magnitude: *magnitudes.select_nth_unstable_by(place, f64::total_cmp).1,
+                holds_for,
+            }
+        });
+        Some(least.magnitude)
     }
 
     /// Forgets the latest so many.
@@ -231,6 +282,7 @@ impl Noise {
         self.recent.rotate_left(self.place);
         self.recent.truncate(kept);
         self.place = 0;
+        self.least.forget();
     }
 }
 
@@ -239,6 +291,9 @@ impl Noise {
 mod tests {
     use super::*;
     use crate::channel::testing::channel_setup;
+    use rand_chacha::ChaCha8Rng;
+    use rand_chacha::rand_core::SeedableRng as _;
+    use rand_distr::{Distribution as _, StandardNormal};
 
     fn setup() -> ChannelSetup {
         let mut setup = channel_setup();
@@ -247,14 +302,17 @@ mod tests {
         setup
     }
 
-    fn judge(screen: &mut Screen, value: f64) -> Verdict {
-        let innovation = Innovation {
+    fn innovation(value: f64) -> Innovation {
+        Innovation {
             time: Timestamp(0),
             value,
             spread: 1.0,
             residual_sd: 0.0,
-        };
-        screen.judge(innovation, None, &setup())
+        }
+    }
+
+    fn judge(screen: &mut Screen, value: f64) -> Verdict {
+        screen.judge(innovation(value), None, &setup())
     }
 
     /// A screen that has seen `count` innovations of ±1.
@@ -302,6 +360,42 @@ mod tests {
         assert_eq!(value, 9.0);
         assert!((threshold - 5.0 * MAD_TO_SD).abs() < 1e-12);
         assert_eq!(judge(&mut screen, 1.0), Verdict::Pass);
+    }
+
+    /// The bound that saves the median changes no verdict, through quiet and noisy times, outliers,
+    /// a step and zeros.
+    #[test]
+    fn what_passes_by_the_bound_passes_by_the_scale() {
+        let (mut rejected, mut bounded) = (0, 0);
+        for seed in 0..20 {
+            let mut source = ChaCha8Rng::seed_from_u64(4000 + seed);
+            let mut screen = Screen::default();
+            for index in 0..3000 {
+                let z: f64 = StandardNormal.sample(&mut source);
+                let value = match index {
+                    0..40 | 2000..2700 => 0.0,
+                    1000..1400 => 6.0 * z,
+                    1600..1700 => 20.0 + z,
+                    _ if index % 97 == 0 => 8.0 * z,
+                    _ => z,
+                };
+                let innovation = innovation(value);
+                if !screen.is_locked_out() {
+                    let (mut by_bound, mut by_scale) = (screen.clone(), screen.clone());
+                    let expected = by_scale.gate_by_scale(innovation, &setup());
+                    assert_eq!(
+                        by_bound.gate(innovation, &setup()),
+                        expected,
+                        "{seed}: {index}"
+                    );
+                    assert_eq!(by_bound, by_scale);
+                    bounded += u32::from(by_bound.noise.least.get_mut().is_some());
+                }
+                let verdict = screen.judge(innovation, None, &setup());
+                rejected += u32::from(matches!(verdict, Verdict::Reject { .. }));
+            }
+        }
+        assert!(rejected > 200 && bounded > 40_000, "{rejected}, {bounded}");
     }
 
     #[test]
@@ -413,12 +507,6 @@ mod tests {
         let mut with_floor = setup();
         with_floor.resolution = 0.1;
         let mut screen = Screen::default();
-        let innovation = |value| Innovation {
-            time: Timestamp(0),
-            value,
-            spread: 1.0,
-            residual_sd: 0.0,
-        };
         for _ in 0..50 {
             screen.judge(innovation(0.0), None, &with_floor);
         }

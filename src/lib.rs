@@ -4,6 +4,7 @@
 //! - [`configuration`]: one TOML file, or everything that is wrong with it
 //! - [`payload`]: from an MQTT message to input events
 //! - [`broker`]: the MQTT session
+//! - [`state`]: the engine's state as bytes
 //! - [`record`]: what the engine was told and said, on the disk
 //! - [`document`]: what is published
 //! - [`daemon`]: the loop around the engine
@@ -19,3 +20,4 @@ pub mod demo;
 pub mod document;
 pub mod payload;
 pub mod record;
+pub mod state;

@@ -18,6 +18,7 @@
 use crate::counters::Counters;
 use crate::event::{Input, Output};
 use crate::fleet::{Fleet, LeapWatch};
+use crate::kept::Kept;
 use crate::notice::NoticeLimiter;
 use crate::report::Report;
 use crate::setup::Clock;
@@ -28,10 +29,10 @@ use serde::{Deserialize, Serialize};
 /// The whole engine, a plain value.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Engine {
-    fleet: Fleet,
-    counters: Counters,
-    notices: NoticeLimiter,
-    leaps: LeapWatch,
+    pub(crate) fleet: Fleet,
+    pub(crate) counters: Kept<Counters>,
+    pub(crate) notices: Kept<NoticeLimiter>,
+    pub(crate) leaps: LeapWatch,
 }
 
 impl Engine {

@@ -11,6 +11,7 @@ mod door;
 mod known;
 mod leap;
 mod orders;
+mod parts;
 mod pulse;
 mod reference;
 mod reference_watch;
@@ -20,6 +21,7 @@ mod trust;
 use crate::channel::{Answer, Channel, Rows, Scene};
 use crate::counters::Counters;
 use crate::event::{Flag, Gate, Reading, Refused, RefusedReason, Source, Subject, Supplied};
+use crate::kept::Kept;
 use crate::report::Report;
 use crate::setup::{ChannelId, Clock, InfluenceId, ReferenceId, ReferenceKind, Setup};
 use crate::standing::{AlarmStanding, ReferenceStanding, Standing};
@@ -31,6 +33,7 @@ use agenda::{Agenda, Waiter};
 use known::known_values;
 pub(crate) use leap::LeapWatch;
 use orders::OrderBook;
+pub(crate) use parts::{FleetDraft, FleetPart};
 use pulse::Pulse;
 use reference::Reference;
 use reference_watch::QUORUM;
@@ -41,21 +44,21 @@ use std::collections::{BTreeMap, BTreeSet};
 /// Everything that a refused input must not change.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub struct Fleet {
-    setup: Setup,
+    setup: Kept<Setup>,
     routes: Routes,
     /// Newest time known, as the clock's kind says; `None` before the first accepted input.
     now: Option<Timestamp>,
     pulse: Pulse,
     /// Recent indications, by channel.
-    indications: Vec<Track>,
+    indications: Vec<Kept<Track>>,
     /// By reference.
-    references: Vec<Reference>,
+    references: Vec<Kept<Reference>>,
     /// Recent values of influence quantities, by source.
-    influences: Vec<Track>,
+    influences: Vec<Kept<Track>>,
     /// By channel.
-    channels: Vec<Channel>,
+    channels: Vec<Kept<Channel>>,
     agenda: Agenda,
-    orders: OrderBook,
+    orders: Kept<OrderBook>,
     /// References whose channels' votes came with the input at hand; none between two inputs.
     heard: BTreeSet<usize>,
     /// Last issue number of channels that were removed, by name: a number is never used twice.
@@ -361,6 +364,9 @@ impl Fleet {
     /// Writes into the agenda when a reference is next to be looked at.
     fn schedule_reference(&mut self, index: usize) {
         let time = self.watched_from(index);
+        if self.references[index].wake != time {
+            self.references[index].wake = time;
+        }
         self.agenda.put(Waiter::Reference(index), time);
     }
 

@@ -19,6 +19,8 @@
 //! - [`engine`]: the value that takes inputs and appends outputs; `report`, `notice`, [`counters`]:
 //!   how it says things; `wording`: numbers in texts
 //! - [`standing`]: how things stand, for the `state` document
+//! - [`state`]: the engine taken to pieces for the record, and put together again; `kept`: which
+//!   pieces have changed
 
 mod alarm;
 mod cached;
@@ -29,6 +31,7 @@ pub mod event;
 pub mod fit;
 pub mod fleet;
 mod gate;
+mod kept;
 pub mod math;
 mod median;
 mod notice;
@@ -36,6 +39,7 @@ pub mod quantile;
 mod report;
 pub mod setup;
 pub mod standing;
+pub mod state;
 pub mod time;
 mod track;
 mod wording;

@@ -4,14 +4,15 @@
 use crate::counters::Counters;
 use crate::event::{Output, RefusedReason, Subject};
 use crate::fleet::LeapWatch;
+use crate::kept::Kept;
 use crate::notice::NoticeLimiter;
 use crate::time::Timestamp;
 
 /// Collects what one step says.
 pub(crate) struct Report<'a> {
     pub(crate) outputs: &'a mut Vec<Output>,
-    pub(crate) counters: &'a mut Counters,
-    pub(crate) notices: &'a mut NoticeLimiter,
+    pub(crate) counters: &'a mut Kept<Counters>,
+    pub(crate) notices: &'a mut Kept<NoticeLimiter>,
     pub(crate) leaps: &'a mut LeapWatch,
 }
 

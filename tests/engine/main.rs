@@ -15,5 +15,7 @@ mod screening;
 mod service;
 mod setup;
 mod span_published;
+mod state_parts;
 mod steps;
+mod stream;
 mod support;

@@ -14,6 +14,7 @@
 
 mod applying;
 mod breaks;
+mod check;
 mod checks;
 mod closing;
 mod conditions;
@@ -42,6 +43,7 @@ pub(crate) mod testing;
 mod waiting;
 
 use crate::event::{Cause, Flag, Output, Subject};
+use crate::kept::Kept;
 use crate::report::Report;
 use crate::setup::{ChannelId, ChannelSetup, ReferenceSetup};
 use crate::standing::{AlarmStanding, ChannelStanding};
@@ -75,9 +77,9 @@ pub(crate) struct Scene<'a> {
     /// Recent values of its reference.
     pub(crate) values: &'a Track,
     /// Recent indications of all channels, by position.
-    pub(crate) indications: &'a [Track],
+    pub(crate) indications: &'a [Kept<Track>],
     /// Recent values of all influence quantities, by source.
-    pub(crate) influences: &'a [Track],
+    pub(crate) influences: &'a [Kept<Track>],
     pub(crate) now: Timestamp,
     /// Up to when the node is known to have been listening.
     pub(crate) alive: Timestamp,

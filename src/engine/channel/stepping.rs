@@ -25,6 +25,13 @@ pub(super) struct Stepped {
     latest: Timestamp,
 }
 
+impl Stepped {
+    /// The stretch that the step ended.
+    pub(super) fn ended(&self) -> &Stretch {
+        &self.ended
+    }
+}
+
 impl Channel {
     /// Looks whether the sensor stepped, after a pair; if so, closes the stretch. A lock-out of the
     /// screen is looked into at once: where it was a step, it ends with the stretch, and one event

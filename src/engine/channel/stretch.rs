@@ -101,6 +101,11 @@ impl Stretch {
         }
     }
 
+    /// Says what does not fit the setup or does not hold together, after it was stored.
+    pub(super) fn check(&self, setup: &ChannelSetup) -> Result<(), &'static str> {
+        self.fit.check(&setup.fit)
+    }
+
     /// Nothing older than this belongs to it.
     pub(super) fn begin_at(&mut self, at: Timestamp) {
         self.began = Some(at);

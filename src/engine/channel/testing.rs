@@ -4,6 +4,7 @@ use super::Scene;
 use crate::counters::Counters;
 use crate::event::Output;
 use crate::fleet::LeapWatch;
+use crate::kept::Kept;
 use crate::notice::NoticeLimiter;
 use crate::report::Report;
 use crate::setup::{
@@ -18,11 +19,11 @@ pub(crate) struct Stage {
     pub(crate) setup: ChannelSetup,
     reference: ReferenceSetup,
     values: Track,
-    indications: Vec<Track>,
+    indications: Vec<Kept<Track>>,
     /// Recent values of the influence quantities.
-    pub(crate) influences: Vec<Track>,
-    counters: Counters,
-    notices: NoticeLimiter,
+    pub(crate) influences: Vec<Kept<Track>>,
+    counters: Kept<Counters>,
+    notices: Kept<NoticeLimiter>,
     leaps: LeapWatch,
 }
 
@@ -47,10 +48,10 @@ impl Stage {
                 stamped: Stamped::End,
             },
             values: Track::default(),
-            indications: vec![Track::default()],
+            indications: vec![Kept::default()],
             influences: Vec::new(),
-            counters: Counters::default(),
-            notices: NoticeLimiter::default(),
+            counters: Kept::default(),
+            notices: Kept::default(),
             leaps: LeapWatch::default(),
         }
     }

@@ -70,6 +70,14 @@ impl Columns {
         }
     }
 
+    /// Whether they are some that [`Columns::new`] makes.
+    pub(crate) fn are_possible(self) -> bool {
+        self.highest_power <= MAX_TIME_DEGREE
+            && self.span_powers <= MAX_SPAN_DEGREE + 1
+            && self.span_powers <= self.highest_power + 1
+            && self.influences <= MOST_INFLUENCES
+    }
+
     /// Highest degree in time.
     #[must_use]
     pub fn time_degree(self) -> usize {
@@ -203,6 +211,11 @@ const MANTISSA_BITS: u32 = 52;
 const EXPONENT_BIAS: u64 = 1023;
 
 impl Frame {
+    /// Whether it is one that [`Frame::new`] makes.
+    pub(crate) fn is_possible(self) -> bool {
+        u32::from(self.unit_exponent) < u64::BITS
+    }
+
     /// The frame at `anchor` whose unit is the smallest power of two of nanoseconds not below
     /// `span`.
     #[must_use]

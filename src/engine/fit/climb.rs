@@ -69,6 +69,11 @@ impl Climb {
             .or_else(|| self.falling(contest, criterion, when_full))
     }
 
+    /// Whether it can be that of a term with grades up to `highest`.
+    pub(crate) fn is_possible(&self, highest: usize) -> bool {
+        usize::from(self.announced) <= highest
+    }
+
     /// Forgets the runs that a change was on its way by.
     pub(crate) fn forget_runs(&mut self) {
         *self = Self::at(self.announced);

@@ -9,7 +9,7 @@
 //! - [`cut`]: where segments close
 //! - [`segment`]: rows that enter and leave together
 //! - `spare`: used-up factors
-//! - [`window`]: the sliding window
+//! - [`window`]: the sliding window; `check`: whether a stored fit can be one
 //! - [`before`]: the window as it was before an instant
 //! - [`predict`]: a model fitted to all its rows, evaluated anywhere
 //! - [`criterion`]: information criteria as plain formulas
@@ -42,6 +42,7 @@ mod between;
 mod blend;
 pub mod cadence;
 mod centre;
+mod check;
 mod claim;
 mod climb;
 mod contrast;

@@ -23,8 +23,11 @@
 //!
 //! **Centre.** Regressors of span and influence terms count from a common centre; see `centre`.
 //!
-//! The state is stored whole, aggregates included: their last bits depend on the order in which
-//! rows came, and a restored window must go on with the same bits.
+//! A stored window goes on with the same bits (see `stored`): what depends on the order in which
+//! rows came is stored as it is.
+
+mod aggregates;
+mod stored;
 
 use crate::fit::basis::{Columns, Frame};
 use crate::fit::centre::{Centre, FAR_OFF, SETTLED, shift_to_mean};
@@ -35,8 +38,9 @@ use crate::fit::row::{Coordinates, Inserted, Row};
 use crate::fit::segment::Segment;
 use crate::fit::spare::Spare;
 use crate::time::{Duration, Timestamp};
-use serde::{Deserialize, Serialize};
+use serde::Deserialize;
 use std::collections::VecDeque;
+use stored::Stored;
 
 /// A row whose gap to the row before exceeds this part of the time that the window spans moves the
 /// frame. A quarter: a row is then at most about a window's spread from the origin until the flip.
@@ -45,7 +49,8 @@ const GAP_DIVISOR: i64 = 4;
 const FAR: f64 = 2.0;
 
 /// The window of one stretch; see the module's text.
-#[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
+#[derive(Clone, Debug, PartialEq, Deserialize)]
+#[serde(try_from = "Stored<'static>")]
 pub struct Window {
     columns: Columns,
     cut: Cut,
@@ -69,7 +74,6 @@ pub struct Window {
     /// Aggregate of everything.
     total: Factor,
     total_level: f64,
-    #[serde(skip)]
     spare: Spare,
 }
 
@@ -452,47 +456,6 @@ impl Window {
             }
             self.centre = self.centre.moved(shift);
             self.rebuild();
-        }
-    }
-
-    /// Builds all aggregates from the segments: every closed segment goes to the front.
-    pub(super) fn rebuild(&mut self) {
-        self.spare.keep_all(&mut self.front);
-        self.back.clear();
-        let Some(newest) = self.closed.back() else {
-            self.put_total_together();
-            return;
-        };
-        // The newest segment's level: then no suffix counts from a level that only older ones had.
-        self.front_level = newest.level;
-        for place in (0..self.closed.len()).rev() {
-            let mut suffix = self.spare.take(self.columns.count());
-            if let Some(shorter) = self.front.last() {
-                suffix.copy_from(shorter);
-            }
-            let segment = &self.closed[place];
-            suffix.merge_level(&segment.factor, self.front_level - segment.level);
-            self.front.push(suffix);
-        }
-        self.put_total_together();
-    }
-
-    /// Total = front's top, back, open segment.
-    fn put_total_together(&mut self) {
-        let open_level = self.open.as_ref().map(|open| open.level);
-        let back_level = (self.back.rows() > 0).then_some(self.back_level);
-        self.total_level = open_level.or(back_level).unwrap_or(self.front_level);
-        if let Some(top) = self.front.last() {
-            self.total.copy_from(top);
-            self.total.move_level(self.total_level - self.front_level);
-        } else {
-            self.total.clear();
-        }
-        self.total
-            .merge_level(&self.back, self.total_level - self.back_level);
-        if let Some(open) = &self.open {
-            self.total
-                .merge_level(&open.factor, self.total_level - open.level);
         }
     }
 }

@@ -1,11 +1,13 @@
 //! A new configuration takes effect: who listens to whom, who keeps its state, who starts anew.
 
 use super::agenda::Agenda;
+use super::orders::OrderBook;
 use super::pulse::Pulse;
 use super::reference::Reference;
 use super::{Fleet, trust};
 use crate::channel::Channel;
 use crate::event::{Source, Subject};
+use crate::kept::Kept;
 use crate::report::Report;
 use crate::setup::{
     ChannelId, ChannelSetup, InfluenceId, InfluenceSetup, ReferenceId, ReferenceKind,
@@ -55,7 +57,7 @@ pub(super) struct Routes {
 }
 
 impl Routes {
-    fn of(setup: &Setup) -> Self {
+    pub(super) fn of(setup: &Setup) -> Self {
         let mut routes = Self {
             group_users: vec![Vec::new(); setup.channels.len()],
             reference_users: vec![Vec::new(); setup.references.len()],
@@ -235,24 +237,26 @@ impl Fleet {
             if let Some(index) = kept {
                 taken[index] = true;
                 old.edit_channel(index, setup, channel, report);
-                channels.push(old.channels[index].clone());
-                indications.push(old.indications[index].clone());
+                channels.push(Kept::new(Channel::clone(&old.channels[index])));
+                indications.push(Kept::new(Track::clone(&old.indications[index])));
             } else {
-                channels.push(old.begin_anew(before, channel));
-                indications.push(Track::default());
+                channels.push(Kept::new(old.begin_anew(before, channel)));
+                indications.push(Kept::default());
             }
         }
         let (references, taken_references) = old.carry_references(setup, same_clock, report);
         let influences = setup.influences.iter().map(|influence| {
             let mut before = old.setup.influences.iter();
             let kept = before.position(|before| same_clock && before == influence);
-            kept.map_or_else(Track::default, |index| old.influences[index].clone())
+            kept.map_or_else(Kept::default, |index| {
+                Kept::new(Track::clone(&old.influences[index]))
+            })
         });
         *self = Self {
             influences: influences.collect(),
             references,
             routes: Routes::of(setup),
-            setup: setup.clone(),
+            setup: Kept::new(setup.clone()),
             now: old.now.filter(|_| same_clock),
             pulse: if same_clock {
                 old.pulse.clone()
@@ -263,7 +267,7 @@ impl Fleet {
             channels,
             retired: old.retire(setup),
             agenda: Agenda::default(),
-            orders: old.orders.clone(),
+            orders: Kept::new(OrderBook::clone(&old.orders)),
             heard: BTreeSet::new(),
         };
         report.leaps.settle();
@@ -284,17 +288,17 @@ impl Fleet {
         setup: &Setup,
         same_clock: bool,
         report: &mut Report<'_>,
-    ) -> (Vec<Reference>, Vec<bool>) {
+    ) -> (Vec<Kept<Reference>>, Vec<bool>) {
         let mut references = Vec::with_capacity(setup.references.len());
         let mut taken_references = vec![false; self.references.len()];
         for reference in &setup.references {
             let kept = self.setup.references.iter().position(|before| {
                 same_clock && same_reference(&self.setup, before, setup, reference)
             });
-            references.push(kept.map_or_else(Reference::default, |index| {
+            references.push(kept.map_or_else(Kept::default, |index| {
                 taken_references[index] = true;
                 self.edit_reference(index, setup, reference, report);
-                self.references[index].clone()
+                Kept::new(Reference::clone(&self.references[index]))
             }));
         }
         (references, taken_references)

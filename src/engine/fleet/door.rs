@@ -30,7 +30,7 @@ impl Fleet {
             Source::Indication(id) => {
                 let index = id.0 as usize;
                 (
-                    &self.indications[index],
+                    &*self.indications[index],
                     self.setup.channels[index].lateness,
                 )
             }
@@ -41,7 +41,7 @@ impl Fleet {
             Source::Influence(id) => {
                 let users = self.routes.influence_users(id);
                 let lateness = users.iter().map(|&user| self.setup.channels[user].lateness);
-                (&self.influences[id.0 as usize], longest(lateness))
+                (&*self.influences[id.0 as usize], longest(lateness))
             }
         };
         let ahead = self.ahead(track.newest(), now);

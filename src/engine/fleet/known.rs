@@ -2,12 +2,13 @@
 
 use super::Reference;
 use crate::channel::Check;
+use crate::kept::Kept;
 use crate::setup::{ReferenceId, ReferenceKind, Setup};
 
 /// Those of one reference; none if it is no gated constant and names none.
 pub(super) fn known_values<'a>(
     setup: &Setup,
-    references: &'a [Reference],
+    references: &'a [Kept<Reference>],
     id: ReferenceId,
 ) -> Vec<Check<'a>> {
     let of = |id: ReferenceId| {

@@ -177,7 +177,7 @@ impl Fleet {
             if channel.knows_after(edge) {
                 let why = "the host's clock was wrong while the last pairs came";
                 channel.dismiss(ChannelId(id), setup, to, why, report);
-                *channel = channel.anew(setup, true);
+                **channel = channel.anew(setup, true);
             } else {
                 channel.step_back(ChannelId(id), setup, to, report);
             }

@@ -28,6 +28,8 @@ pub(super) struct Reference {
     pub(super) end_told: bool,
     /// From when on its silence counts while it has said nothing.
     pub(super) began: Option<Timestamp>,
+    /// When it is next to be looked at, if nothing arrives.
+    pub(super) wake: Option<Timestamp>,
 }
 
 impl Reference {

@@ -5,6 +5,7 @@
 //! known by their position; names travel only for documents.
 
 mod channel;
+mod check;
 mod defaults;
 mod fit;
 mod influence;

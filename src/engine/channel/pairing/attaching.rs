@@ -301,7 +301,7 @@ mod tests {
             })
             .collect();
         let mut stage = Stage::new(setup);
-        stage.influences = tracks.iter().map(|rows| track(rows)).collect();
+        stage.influences = tracks.iter().map(|rows| track(rows).into()).collect();
         stage
     }
 

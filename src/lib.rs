@@ -7,6 +7,7 @@
 //! - [`state`]: the engine's state as bytes
 //! - [`record`]: what the engine was told and said, on the disk
 //! - [`document`]: what is published
+//! - [`keeper`]: the engine in step with its record and its outbox
 //! - [`daemon`]: the loop around the engine
 //! - `demo`: an invented plant held true on one machine
 //! - [`command`]: the command line
@@ -18,6 +19,7 @@ pub mod daemon;
 #[cfg(feature = "demo")]
 pub mod demo;
 pub mod document;
+pub mod keeper;
 pub mod payload;
 pub mod record;
 pub mod state;

@@ -1,6 +1,7 @@
 //! `holdtrue run`: the daemon, until SIGTERM or Ctrl-C.
 
 use super::Ending;
+use crate::keeper::RestoreError;
 use crate::{configuration, daemon};
 use std::io;
 use std::path::Path;
@@ -31,7 +32,7 @@ pub(super) fn run(path: &Path) -> Ending {
     });
     match ended {
         Ok(Ok(())) => Ending::Done,
-        Ok(Err(error @ daemon::Error::ReplayDiffers { .. })) => {
+        Ok(Err(error @ daemon::Error::Restore(RestoreError::Differs { .. }))) => {
             tracing::error!("{error}");
             Ending::No
         }

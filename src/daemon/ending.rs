@@ -1,5 +1,6 @@
 //! The orderly end: record, publish, wait for the broker, say goodbye.
 
+use super::now;
 use super::turn::Daemon;
 use crate::broker::Event;
 use crate::document::state::Doing;
@@ -27,7 +28,7 @@ impl Daemon {
         self.commit();
         let limit = Instant::now() + DRAIN_LIMIT;
         self.wait_for(limit, Documents::Go, |daemon| {
-            daemon.shell.outbox.len() == 0 && daemon.link.is_quiet()
+            daemon.shell.keeper.outbox().is_empty() && daemon.link.is_quiet()
         })
         .await;
         if self.say_stopped().await {
@@ -40,13 +41,23 @@ impl Daemon {
             self.link.cut();
         }
         self.commit();
-        if self.pause.is_some() {
+        if self.pause.is_none() {
+            self.seal();
+        } else {
             tracing::error!(
-                messages = self.tickets.len(),
+                messages = self.shell.keeper.owed(),
                 "ending without a record of the last messages; the broker still has them"
             );
         }
-        tracing::info!(outbox = self.shell.outbox.len(), "goodbye");
+        tracing::info!(outbox = self.shell.keeper.outbox().len(), "goodbye");
+    }
+
+    /// Brings the record to rest. What could not be sealed, the next start seals.
+    fn seal(&mut self) {
+        match self.shell.keeper.finish(now()) {
+            Ok(_) => {}
+            Err(error) => tracing::warn!(%error, "the record's newest file could not be sealed"),
+        }
     }
 
     /// Publishes that we stop; whether the broker has taken it.

@@ -6,6 +6,7 @@ use super::turn::Daemon;
 use crate::broker::{Answer, Publish, Token};
 use crate::document::state::{Doing, RefusedSubscription};
 use crate::document::topic::Topics;
+use crate::record::Settled;
 use holdtrue_engine::time::Timestamp;
 use tokio::time::Instant;
 
@@ -26,12 +27,12 @@ impl Daemon {
             return;
         }
         while self.link.room() > 0 {
-            let Some((number, document)) = self.shell.outbox.next_to_hand() else {
+            let Some((number, document)) = self.shell.keeper.outbox().next_to_hand() else {
                 return;
             };
             let expiry = match document.expires.map(seconds_until) {
                 Some(None) => {
-                    self.shell.settle(number);
+                    self.shell.keeper.settle(number, Settled::Expired);
                     continue;
                 }
                 Some(seconds) => seconds,
@@ -57,7 +58,7 @@ impl Daemon {
             if !self.link.publish(token, &publish) {
                 return;
             }
-            self.shell.outbox.set_handed(number);
+            self.shell.keeper.outbox_mut().set_handed(number);
         }
     }
 
@@ -79,9 +80,9 @@ impl Daemon {
             messages_dropped: self.held.dropped(),
             ..self.figures
         };
-        let (document, mut standing) = state_document(&self.shell, doing, why, figures, now());
+        let (document, mut standing) = state_document(&self.shell.keeper, doing, why, figures, now());
         standing.subscriptions_refused = self.refused_subscriptions();
-        let topic = Topics::new(&self.shell.setup.node).state();
+        let topic = Topics::new(&self.shell.keeper.setup().node).state();
         let mut payload = document.clone().with(standing.clone()).to_json();
         if !self.link.fits(&state_publish(&topic, &payload)) {
             standing.channels = None;
@@ -108,12 +109,12 @@ impl Daemon {
             Token::Document(number) => match answer {
                 Answer::Taken => {
                     self.hand_again_back_off.reset();
-                    self.shell.accepted(number);
+                    self.shell.keeper.accepted(number);
                 }
                 Answer::NotNow(why) => {
                     let wait = self.hand_again_back_off.next_pause();
                     self.hand_again = Some(Instant::now() + wait);
-                    self.shell.outbox.hand_again_from(number);
+                    self.shell.keeper.outbox_mut().hand_again_from(number);
                     tracing::warn!(why, next_try = ?wait, "the broker takes no documents now");
                 }
                 Answer::Never(why) => {
@@ -140,7 +141,7 @@ impl Daemon {
 
     fn refuse(&mut self, number: i64, why: &str, hint: &str) {
         self.figures.documents_refused += 1;
-        if let Some(document) = self.shell.settle(number) {
+        if let Some(document) = self.shell.keeper.settle(number, Settled::Refused) {
             self.refusals.tell(&document.topic, why, hint);
         }
     }

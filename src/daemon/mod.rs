@@ -5,9 +5,8 @@
 //! one polls the broker.
 //!
 //! Modules in reading order:
-//! - `shell`: the engine with its record and outbox; one input in
-//! - `outbox`: documents that the broker has not acknowledged
-//! - `restore`: from the record to the engine's state, at the start
+//! - `shell`: the engine with its record and outbox (`crate::keeper`), and what turns messages into
+//!   inputs
 //! - `turn`: the loop that everything happens in
 //! - `session`, `memory`: connections that come and go, and what a broker may have forgotten
 //! - `handing`, `refusals`: documents on their way, and what the broker says to them
@@ -20,10 +19,8 @@ mod ending;
 mod handing;
 mod held;
 mod memory;
-mod outbox;
 mod refusals;
 mod report;
-mod restore;
 mod session;
 mod settling;
 mod shell;
@@ -31,6 +28,7 @@ mod turn;
 
 use crate::broker::TlsError;
 use crate::configuration::Configuration;
+use crate::keeper::RestoreError;
 use crate::record::RecordError;
 use holdtrue_engine::time::Timestamp;
 use shell::Shell;
@@ -45,21 +43,9 @@ pub enum Error {
     /// The record can't be used.
     #[error(transparent)]
     Record(#[from] RecordError),
-    /// The engine says something else than it said when the record was written, though the version
-    /// is the same. Going on would make the record untrue.
-    #[error(
-        "replay of the record differs at input {position}: recorded {recorded}, now {now}. Another \
-         build of the same version wrote the record, or the record was changed or is damaged. \
-         Start the build that wrote it, or move the record folder aside to start anew, and keep it"
-    )]
-    ReplayDiffers {
-        /// Position of the input.
-        position: i64,
-        /// What the record says that followed.
-        recorded: String,
-        /// What follows now.
-        now: String,
-    },
+    /// The engine's state can't be restored.
+    #[error(transparent)]
+    Restore(#[from] RestoreError),
     /// Encryption can't be set up.
     #[error(transparent)]
     Tls(#[from] TlsError),
@@ -80,7 +66,7 @@ pub async fn run(
     let stopped = Arc::clone(&stop);
     // A thread of its own: reading a long record takes minutes, and being told to stop must work.
     let mut opening = tokio::task::spawn_blocking(move || {
-        let shell = Shell::start(&configuration, now(), &stopped)?;
+        let shell = Shell::start(&configuration, &stopped)?;
         Ok::<_, Error>(shell.map(|shell| (configuration, shell)))
     });
     let opened = tokio::select! {

@@ -1,8 +1,9 @@
 //! When and how the `state` document is published: on every change, and every half minute.
 
-use super::shell::Shell;
-use crate::document::state::{ChannelState, Doing, RefusedCount, Standing, StateDocument};
+use crate::broker::Ticket;
+use crate::document::state::{ChainHead, ChannelState, Doing, RefusedCount, Standing, StateDocument};
 use crate::document::topic::subject_name;
+use crate::keeper::Keeper;
 use holdtrue_engine::time::Timestamp;
 use std::time::Duration;
 use tokio::time::Instant;
@@ -62,19 +63,20 @@ impl StateRhythm {
 
 /// The state document as of now.
 pub(super) fn state_document(
-    shell: &Shell,
+    keeper: &Keeper<Ticket>,
     doing: Doing,
     why: Option<String>,
     figures: LoopFigures,
     now: Timestamp,
 ) -> (StateDocument, Standing) {
-    let engine = shell.engine.standing();
+    let engine = keeper.engine().standing();
+    let setup = keeper.setup();
     let refused = engine
         .counters
         .all()
         .iter()
         .filter_map(|count| {
-            let name = subject_name(count.subject, &shell.setup)?;
+            let name = subject_name(count.subject, setup)?;
             Some(RefusedCount::new(
                 count.subject,
                 name,
@@ -87,21 +89,30 @@ pub(super) fn state_document(
         .channels
         .iter()
         .filter_map(|channel| {
-            let setup = shell.setup.channels.get(channel.channel.0 as usize)?;
-            Some(ChannelState::new(channel, setup, &engine.alarms))
+            let channel_setup = setup.channels.get(channel.channel.0 as usize)?;
+            Some(ChannelState::new(
+                channel,
+                channel_setup,
+                &engine.alarms,
+            ))
         })
         .collect();
+    let (head, file) = keeper.head();
     let standing = Standing {
-        inputs: shell.record.next_input() - 1,
-        outbox: shell.outbox.len(),
-        documents_refused: figures.documents_refused + shell.outbox.pushed_out(),
+        inputs: keeper.inputs(),
+        chain: ChainHead {
+            batch: head.batch,
+            digest: head.digest.to_string(),
+            file: file.map(|name| name.to_string()),
+        },
+        outbox: keeper.outbox().len(),
+        documents_refused: figures.documents_refused + keeper.outbox().pushed_out(),
         messages_dropped: figures.messages_dropped,
         connections: figures.connections,
         subscriptions_refused: Vec::new(),
         refused,
         channels: Some(channels),
     };
-    let setup = &shell.setup;
     let document = StateDocument::new(&setup.node, &setup.fingerprint, doing, now).because(why);
     (document, standing)
 }

@@ -14,16 +14,13 @@ const SUSPICIOUS_FAILURES: u32 = 4;
 impl Daemon {
     pub(super) fn greet(&mut self, session_present: bool) {
         self.figures.connections += 1;
-        self.shell.outbox.note_here();
+        self.shell.keeper.outbox_mut().note_here();
         tracing::info!(session_present, "connected to the broker");
         if !session_present {
             self.memory.session_lost();
         }
         // Read before they become void: what is no longer wanted has to end.
-        let remembered = self.shell.record.subscriptions().unwrap_or_else(|error| {
-            tracing::warn!(%error, "earlier subscriptions unknown; none will be ended");
-            BTreeSet::new()
-        });
+        let remembered = self.shell.keeper.subscriptions().clone();
         // Before subscribing, so that a crash in between does not leave them standing.
         self.restore_memory();
         // Also at each start: whose session the broker kept is not certain (another broker at the
@@ -66,36 +63,50 @@ impl Daemon {
         while self.pause.is_none()
             && let Some(step) = self.memory.step(clock)
         {
-            let record = &mut self.shell.record;
             let done = match &step {
-                Step::Forget => record.set_subscriptions(&BTreeSet::new()),
-                Step::Note(filters) => record.set_subscriptions(filters),
-                Step::PublishStanding => self.shell.publish_standing(now()).map(|documents| {
-                    if documents > 0 {
-                        tracing::info!(
-                            documents,
-                            "the broker has lost our session; publishing all retained documents \
-                             again"
-                        );
-                    }
-                }),
+                Step::Forget => self.note_subscriptions(BTreeSet::new()),
+                Step::Note(filters) => self.note_subscriptions(filters.clone()),
+                Step::PublishStanding => self.publish_standing(),
             };
-            match done {
-                Ok(()) => self.memory.done(&step),
-                Err(error) => {
-                    tracing::warn!(%error, "what the broker's session is owed has to wait");
-                    self.memory.failed(clock);
-                }
+            if done {
+                self.memory.done(&step);
+            } else {
+                self.memory.failed(clock);
             }
             // With nothing to write there will be no commit.
-            if step == Step::PublishStanding && !self.shell.has_news() {
+            if step == Step::PublishStanding && !self.shell.keeper.has_news() {
                 self.memory.committed();
             }
         }
     }
 
+    /// Notes on the disk what the broker confirmed; whether that was possible.
+    fn note_subscriptions(&mut self, filters: BTreeSet<String>) -> bool {
+        self.shell.keeper.set_subscriptions(filters);
+        self.commit();
+        self.pause.is_none()
+    }
+
+    /// Puts the retained documents into the outbox again; whether that was possible.
+    fn publish_standing(&mut self) -> bool {
+        match self.shell.keeper.publish_standing(now()) {
+            Ok(0) => true,
+            Ok(documents) => {
+                tracing::info!(
+                    documents,
+                    "the broker has lost our session; publishing all retained documents again"
+                );
+                true
+            }
+            Err(error) => {
+                tracing::warn!(%error, "the retained documents can't be read; trying again");
+                false
+            }
+        }
+    }
+
     pub(super) fn note_lost(&mut self, lost: &Lost) {
-        self.shell.outbox.note_away();
+        self.shell.keeper.outbox_mut().note_away();
         self.held.forget_guaranteed();
         self.rhythm.answered();
         let next_try = lost.next_try;

@@ -1,38 +1,23 @@
-//! The engine with its record and its outbox: one input in, everything that follows from it noted
-//! for the next commit.
+//! The keeper with what turns messages into inputs.
 
-use super::Error;
-use super::outbox::Outbox;
-use super::restore::{self, Restored, Wanted, note_wanted};
-use crate::broker::Message;
+use super::now;
+use crate::broker::{Message, Ticket};
 use crate::configuration::Configuration;
 use crate::document::topic::Topics;
-use crate::document::{self, Document};
+use crate::keeper::{Keeper, RestoreError};
 use crate::payload::{Intake, OrderIntake, OrderMessage};
-use crate::record::{Batch, Record, RecordError};
-use holdtrue_engine::engine::Engine;
-use holdtrue_engine::event::{Input, Output, Source, Supplied};
-use holdtrue_engine::setup::Setup;
+use holdtrue_engine::event::Input;
 use holdtrue_engine::time::Timestamp;
 use std::sync::atomic::AtomicBool;
 
-/// Recorded rows given back to the engine at once, at most; the newest are left out.
-const SUPPLIED_MAX: usize = 100_000;
-
-/// The engine and what must stay in step with it.
+/// The keeper and what feeds it.
 pub(super) struct Shell {
-    pub(super) setup: Setup,
-    pub(super) engine: Engine,
-    pub(super) record: Record,
-    pub(super) outbox: Outbox,
+    pub(super) keeper: Keeper<Ticket>,
     intake: Intake,
     orders: OrderIntake,
     filters: Vec<String>,
-    batch: Batch,
-    wanted: Vec<Wanted>,
     /// Kept to save allocations.
     inputs: Vec<Input>,
-    outputs: Vec<Output>,
 }
 
 impl Shell {
@@ -40,64 +25,31 @@ impl Shell {
     /// `None` when `stop` was set meanwhile.
     pub(super) fn start(
         configuration: &Configuration,
-        now: Timestamp,
         stop: &AtomicBool,
-    ) -> Result<Option<Self>, Error> {
+    ) -> Result<Option<Self>, RestoreError> {
         let folder = &configuration.record.folder;
-        let Some((mut record, restored)) = restore::open(folder, now, stop)? else {
+        let Some(mut keeper) = Keeper::open(folder, now(), stop)? else {
             return Ok(None);
         };
-        record.begin_session(now, env!("CARGO_PKG_VERSION"))?;
-        let Restored {
-            engine,
-            setup,
-            wanted,
-            ..
-        } = restored;
-        let outbox = Outbox::new(record.outbox()?);
-        let unchanged = setup.as_ref() == Some(&configuration.setup);
-        let mut shell = Self {
-            setup: setup.unwrap_or_else(|| configuration.setup.clone()),
-            engine,
-            batch: record.batch(),
-            record,
-            outbox,
-            filters: filters(configuration),
+        if *keeper.setup() != configuration.setup {
+            tracing::info!(
+                channels = configuration.setup.channels.len(),
+                references = configuration.setup.references.len(),
+                fingerprint = %configuration.setup.fingerprint,
+                "configuration takes effect"
+            );
+            keeper.adopt(&configuration.setup)?;
+        }
+        // Nothing is owed yet.
+        keeper.commit(now())?;
+        keeper.answer_wanted()?;
+        Ok(Some(Self {
+            keeper,
             intake: Intake::new(&configuration.intake),
             orders: OrderIntake::new(&configuration.setup.node),
-            wanted,
+            filters: filters(configuration),
             inputs: Vec::new(),
-            outputs: Vec::new(),
-        };
-        if !unchanged {
-            shell.adopt(&configuration.setup)?;
-        }
-        shell.commit()?;
-        shell.answer_wanted()?;
-        Ok(Some(shell))
-    }
-
-    /// Lets a configuration take effect. What this says bears the old one's positions.
-    fn adopt(&mut self, setup: &Setup) -> Result<(), Error> {
-        tracing::info!(
-            channels = setup.channels.len(),
-            references = setup.references.len(),
-            fingerprint = %setup.fingerprint,
-            "configuration takes effect"
-        );
-        // From here on positions mean other channels: what was asked for by the old ones is
-        // answered first.
-        self.answer_wanted()?;
-        self.take(&Input::Setup(Box::new(setup.clone())), &[]);
-        self.setup = setup.clone();
-        let topics = Topics::new(&self.setup.node);
-        for standing in self.record.standing()? {
-            if topics.is_orphan(&standing.topic, &self.setup) {
-                self.outbox
-                    .add(document::cleared(standing.topic), &mut self.batch);
-            }
-        }
-        Ok(())
+        }))
     }
 
     /// What to subscribe to: the sources' topics, and orders.
@@ -105,7 +57,7 @@ impl Shell {
         &self.filters
     }
 
-    /// Decodes a message and takes what it holds.
+    /// Decodes a message and takes what it holds; its acknowledgement is owed from now on.
     pub(super) fn take_message(&mut self, message: &Message, received: Timestamp) {
         let mut inputs = std::mem::take(&mut self.inputs);
         inputs.clear();
@@ -128,103 +80,10 @@ impl Shell {
                 .take(topic, payload, *retained, received, &mut inputs);
         }
         for input in &inputs {
-            self.take(input, &[]);
+            self.keeper.take(input);
         }
+        self.keeper.owe(message.ticket);
         self.inputs = inputs;
-    }
-
-    /// Steps the engine and notes what followed. `positions`: of supplied rows.
-    pub(super) fn take(&mut self, input: &Input, positions: &[i64]) {
-        let mut outputs = std::mem::take(&mut self.outputs);
-        outputs.clear();
-        self.engine.step(input, &mut outputs);
-        self.batch.add(input, positions, &outputs);
-        note_wanted(input, &outputs, &mut self.wanted);
-        for output in &outputs {
-            if let Some(document) = document::render(output, &self.setup) {
-                if matches!(input, Input::Tick { .. }) {
-                    self.outbox.make_room_for(&document, &mut self.batch);
-                }
-                self.outbox.add(document, &mut self.batch);
-            }
-        }
-        self.outputs = outputs;
-    }
-
-    /// Writes what was noted since the last commit. Then its documents may go and its messages may
-    /// be acknowledged. On failure nothing is lost: the same will be tried again.
-    pub(super) fn commit(&mut self) -> Result<(), RecordError> {
-        if !self.batch.is_empty() {
-            self.record.commit(&self.batch)?;
-            self.batch = self.record.batch();
-        }
-        self.outbox.release();
-        Ok(())
-    }
-
-    /// Answers what the engine has asked for so far. Only that: an engine that asks again and again
-    /// must not stop the daemon. To be called right after a commit: the record can be searched only
-    /// for what is in it.
-    pub(super) fn answer_wanted(&mut self) -> Result<(), RecordError> {
-        for wanted in self.wanted.clone() {
-            self.supply(wanted)?;
-        }
-        Ok(())
-    }
-
-    /// Inputs noted since the last commit.
-    pub(super) fn uncommitted(&self) -> usize {
-        self.batch.inputs()
-    }
-
-    /// Whether a commit has something to write.
-    pub(super) fn has_news(&self) -> bool {
-        !self.batch.is_empty()
-    }
-
-    /// The broker has a document.
-    pub(super) fn accepted(&mut self, number: i64) {
-        self.outbox.accepted(number, &mut self.batch);
-    }
-
-    /// The broker will never take a document, or it is no longer worth sending.
-    pub(super) fn settle(&mut self, number: i64) -> Option<Document> {
-        self.outbox.remove(number, &mut self.batch)
-    }
-
-    /// Puts every retained document into the outbox again: the broker has lost its memory.
-    pub(super) fn publish_standing(&mut self, now: Timestamp) -> Result<usize, RecordError> {
-        let mut count = 0;
-        for document in self.record.standing()? {
-            let expired = document.expires.is_some_and(|expires| expires <= now);
-            if !expired && !self.outbox.holds_topic(&document.topic) {
-                self.outbox.add(document, &mut self.batch);
-                count += 1;
-            }
-        }
-        Ok(count)
-    }
-
-    /// Gives the engine recorded rows that it asked for.
-    fn supply(&mut self, wanted: Wanted) -> Result<(), RecordError> {
-        let Wanted { channel, from, to } = wanted;
-        let mut sources = vec![Source::Indication(channel)];
-        let setup = self.setup.channels.get(channel.0 as usize);
-        if let Some(setup) = setup {
-            sources.push(Source::Reference(setup.reference));
-            let influences = setup.influences.iter();
-            sources.extend(influences.map(|influence| Source::Influence(influence.source)));
-        }
-        let rows = self.record.readings(&sources, from, to, SUPPLIED_MAX)?;
-        let (positions, readings): (Vec<i64>, Vec<_>) = rows.into_iter().unzip();
-        let supplied = Supplied {
-            channel,
-            from,
-            to,
-            readings,
-        };
-        self.take(&Input::Supplied(supplied), &positions);
-        Ok(())
     }
 }
 

@@ -11,7 +11,7 @@ use super::report::{LoopFigures, StateRhythm};
 use super::settling::Settling;
 use super::shell::Shell;
 use super::{Error, now};
-use crate::broker::{BackOff, Event, Link, Message, Ticket, Will};
+use crate::broker::{BackOff, Event, Link, Message, Will};
 use crate::configuration::Configuration;
 use crate::document::state::{Doing, StateDocument};
 use crate::document::topic::Topics;
@@ -32,8 +32,6 @@ pub(super) struct Daemon {
     pub(super) link: Link,
     pub(super) client_id: String,
     pub(super) held: Held,
-    /// Messages taken since the last commit; their acknowledgements wait for it.
-    pub(super) tickets: Vec<Ticket>,
     pub(super) messages_max: usize,
     pub(super) commit_every: Duration,
     /// When the oldest thing came that the next commit will write.
@@ -64,7 +62,8 @@ pub(super) struct Pause {
 impl Daemon {
     /// Prepares the link for a restored engine.
     pub(super) fn start(configuration: Configuration, shell: Shell) -> Result<Self, Error> {
-        let (node, fingerprint) = (shell.setup.node.clone(), shell.setup.fingerprint.clone());
+        let setup = shell.keeper.setup();
+        let (node, fingerprint) = (setup.node.clone(), setup.fingerprint.clone());
         let client_id = configuration.broker.client_id.clone();
         tracing::info!(
             node,
@@ -80,12 +79,11 @@ impl Daemon {
                 payload: StateDocument::new(&node, &fingerprint, Doing::Lost, now()).to_json(),
             });
         let window = link.receive_window();
-        let remembered = !shell.record.subscriptions()?.is_empty();
+        let remembered = !shell.keeper.subscriptions().is_empty();
         Ok(Self {
             shell,
             client_id,
             held: Held::new(),
-            tickets: Vec::new(),
             messages_max: usize::from(window / 2).max(1),
             commit_every: configuration.record.commit,
             news_since: None,
@@ -138,7 +136,7 @@ impl Daemon {
     }
 
     fn may_take(&self) -> bool {
-        self.pause.is_none() && !self.shell.outbox.is_full()
+        self.pause.is_none() && !self.shell.keeper.outbox().is_full()
     }
 
     fn take_or_hold(&mut self, message: Message) {
@@ -153,9 +151,9 @@ impl Daemon {
 
     fn take(&mut self, message: &Message, received: Timestamp) {
         self.shell.take_message(message, received);
-        self.tickets.push(message.ticket);
         self.news_since.get_or_insert_with(Instant::now);
-        if self.tickets.len() >= self.messages_max || self.shell.uncommitted() >= BATCH_INPUTS_MAX {
+        let keeper = &self.shell.keeper;
+        if keeper.owed() >= self.messages_max || keeper.uncommitted() >= BATCH_INPUTS_MAX {
             self.commit();
         }
     }
@@ -188,7 +186,7 @@ impl Daemon {
             self.note_lost(&lost);
         }
         self.restore_memory();
-        if self.shell.has_news() {
+        if self.shell.keeper.has_news() {
             self.news_since.get_or_insert(clock);
         }
     }
@@ -202,13 +200,13 @@ impl Daemon {
         }
         let now = now();
         if self.next_tick.is_some_and(|wanted| wanted <= now) {
-            self.shell.take(&Input::Tick { now }, &[]);
+            self.shell.keeper.take(&Input::Tick { now });
             self.ask_tick();
         }
     }
 
     fn ask_tick(&mut self) {
-        self.next_tick = self.shell.engine.next_tick();
+        self.next_tick = self.shell.keeper.engine().next_tick();
         self.tick_asked = Instant::now();
     }
 
@@ -243,11 +241,11 @@ impl Daemon {
 
     /// Writes the batch; then its messages are acknowledged and its documents may go.
     pub(super) fn commit(&mut self) {
-        match self.shell.commit() {
-            Ok(()) => {
+        match self.shell.keeper.commit(now()) {
+            Ok(tickets) => {
                 self.news_since = None;
                 self.memory.committed();
-                for ticket in self.tickets.drain(..) {
+                for ticket in tickets {
                     self.link.acknowledge(ticket);
                 }
                 if let Some(pause) = self.pause.take() {
@@ -264,7 +262,7 @@ impl Daemon {
     /// Gives the engine what it asked for; after acknowledging, since searching takes time.
     fn answer_wanted(&mut self) {
         // Unanswered wants stay; the next commit is the next attempt.
-        if let Err(error) = self.shell.answer_wanted() {
+        if let Err(error) = self.shell.keeper.answer_wanted() {
             tracing::warn!(%error, "recorded rows can't be read for the engine; trying again");
         }
     }

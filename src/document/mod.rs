@@ -43,6 +43,12 @@ pub struct Document {
     pub correlation: Option<Vec<u8>>,
 }
 
+/// An instant as text: RFC 3339 in UTC, with all the nanoseconds that it has.
+#[must_use]
+pub fn time_text(instant: Timestamp) -> String {
+    word::time(instant)
+}
+
 /// The document that `output` is published as; `None` for what only the record keeps.
 ///
 /// `setup` is the one whose positions the output bears: the one in force, and for what a change of

@@ -44,6 +44,9 @@ pub struct StateDocument {
 pub struct Standing {
     /// Inputs in the record.
     pub inputs: i64,
+    /// The newest link of the record's hash chain. A copy kept elsewhere proves later that nothing
+    /// was cut off.
+    pub chain: ChainHead,
     /// Documents that the broker has not acknowledged.
     pub outbox: usize,
     /// Documents that the broker refused (no permission, too large) or that were dropped since
@@ -60,6 +63,18 @@ pub struct Standing {
     pub refused: Vec<RefusedCount>,
     /// Each channel; left out where the broker takes no document of that size.
     pub channels: Option<Vec<ChannelState>>,
+}
+
+/// The newest link of the record's hash chain.
+#[derive(Clone, Debug, Default, PartialEq, Eq, Serialize)]
+pub struct ChainHead {
+    /// Number of the batch; 0 before the first.
+    pub batch: i64,
+    /// Its SHA-256 digest, lower-case hexadecimal.
+    pub digest: String,
+    /// The record file that it is in.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub file: Option<String>,
 }
 
 /// A subscription that the broker refuses.

@@ -3,7 +3,7 @@
 //! JSON with exact floats: `serde_json` writes the shortest text that reads back to the same bits,
 //! and reads it back exactly with its `float_roundtrip` feature.
 
-use holdtrue_engine::event::{Input, Output, Reading, Source, Supplied, Wish};
+use holdtrue_engine::event::{Input, Output, Reading, Subject, Supplied};
 use holdtrue_engine::setup::ChannelId;
 use holdtrue_engine::time::Timestamp;
 use serde::{Deserialize, Serialize};
@@ -20,56 +20,41 @@ pub(super) struct SuppliedPositions {
     pub(super) from: Timestamp,
     /// As wanted: to (exclusive).
     pub(super) to: Timestamp,
-    /// Positions of the readings in `inputs`.
+    /// Positions of the readings.
     pub(super) positions: Vec<i64>,
 }
 
-/// The searchable columns of an input.
-pub(super) struct Columns {
-    pub(super) kind: &'static str,
-    pub(super) received: Option<Timestamp>,
-    pub(super) source: Option<String>,
-    pub(super) phenomenon: Option<Timestamp>,
+/// The kind column of an input, and when the daemon got it.
+pub(super) fn columns(input: &Input) -> (&'static str, Option<Timestamp>) {
+    match input {
+        Input::Setup(_) => ("setup", None),
+        Input::Reading(reading) => ("reading", Some(reading.received)),
+        Input::Gate(gate) => ("gate", Some(gate.received)),
+        Input::Refused(refused) => ("refused", Some(refused.received)),
+        Input::Tick { now } => ("tick", Some(*now)),
+        Input::Supplied(_) => ("supplied", None),
+        Input::Order(order) => ("order", Some(order.received)),
+    }
 }
 
-/// The columns of `input`.
-pub(super) fn columns(input: &Input) -> Columns {
-    let (kind, received, source, phenomenon) = match input {
-        Input::Setup(_) => ("setup", None, None, None),
-        Input::Reading(reading) => (
-            "reading",
-            Some(reading.received),
-            Some(source_text(reading.source)),
-            Some(reading.phenomenon),
-        ),
-        Input::Gate(gate) => (
-            "gate",
-            Some(gate.received),
-            Some(source_text(Source::Reference(gate.reference))),
-            Some(gate.phenomenon),
-        ),
-        Input::Refused(refused) => (
-            "refused",
-            Some(refused.received),
-            refused.source.map(source_text),
-            None,
-        ),
-        Input::Tick { now } => ("tick", Some(*now), None, None),
-        Input::Supplied(_) => ("supplied", None, None, None),
-        Input::Order(order) => {
-            let performed = match &order.wish {
-                Wish::Service(event) => event.at,
-                Wish::Unusable(_) => None,
-            };
-            ("order", Some(order.received), None, performed)
-        }
+/// What an output is about.
+pub(super) fn subject(output: &Output) -> Option<Subject> {
+    let channel = match output {
+        Output::Alarm(change) => return Some(change.subject),
+        Output::Notice(notice) => return Some(notice.subject),
+        Output::Answer(_) => return None,
+        Output::Correction(it) => it.channel,
+        Output::Corrected(it) => it.channel,
+        Output::Outlook(it) => it.channel,
+        Output::Degree(it) => it.channel,
+        Output::Step(it) => it.channel,
+        Output::Pair(it) => it.channel,
+        Output::Validation(it) => it.channel,
+        Output::Withdrawn { channel, .. }
+        | Output::OutlookWithdrawn { channel, .. }
+        | Output::Wanted { channel, .. } => *channel,
     };
-    Columns {
-        kind,
-        received,
-        source,
-        phenomenon,
-    }
+    Some(Subject::Channel(channel))
 }
 
 /// The kind column of an output.
@@ -88,15 +73,6 @@ pub(super) fn output_kind(output: &Output) -> &'static str {
         Output::Answer(_) => "answer",
         Output::Validation(_) => "validation",
         Output::Wanted { .. } => "wanted",
-    }
-}
-
-/// How a source is written in the record.
-pub(super) fn source_text(source: Source) -> String {
-    match source {
-        Source::Indication(channel) => format!("indication/{}", channel.0),
-        Source::Reference(reference) => format!("reference/{}", reference.0),
-        Source::Influence(influence) => format!("influence/{}", influence.0),
     }
 }
 
@@ -123,7 +99,7 @@ pub fn output_text(output: &Output) -> String {
     serde_json::to_string(output).expect(CAN_BE_TEXT)
 }
 
-/// Reads an input back; `reading_at` fetches the rows of a `supplied` input.
+/// Reads an input back that is no value; `reading_at` fetches the rows of a `supplied` input.
 pub(super) fn input_from_text<E: From<serde_json::Error>>(
     kind: &str,
     body: &str,
@@ -149,6 +125,7 @@ pub(super) fn input_from_text<E: From<serde_json::Error>>(
 #[cfg(test)]
 mod tests {
     use super::*;
+    use holdtrue_engine::event::Source;
     use holdtrue_engine::setup::ReferenceId;
 
     #[test]

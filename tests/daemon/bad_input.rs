@@ -4,7 +4,7 @@ use crate::live::holdtrue::Holdtrue;
 use crate::live::listener::Listener;
 use crate::live::mosquitto::Mosquitto;
 use crate::live::schemas::Schemas;
-use holdtrue::record::{Record, RecordError};
+use holdtrue::record::{Archive, RecordError};
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Input, Output, RefusedReason};
 use std::collections::{BTreeMap, BTreeSet};
@@ -124,7 +124,7 @@ fn each_kind_is_counted_with_its_reason_and_nothing_else_changes() {
     broker.publish("plant/one", good(999, start + 90).as_bytes());
     daemon.wait_count(
         &format!(
-            "SELECT count(*) FROM inputs WHERE kind = 'reading' AND phenomenon = {}000000000",
+            "SELECT count(*) FROM raw_readings WHERE phenomenon = {}000000000",
             start + 90
         ),
         2,
@@ -200,25 +200,25 @@ fn check_notices(listener: &Listener) {
 
 /// Feeds two engines from the record: one with everything, one without what is bad.
 fn compare_with_a_run_without(daemon: &Holdtrue, start: u64) {
-    let record = Record::open(&daemon.record()).unwrap();
+    let archive = Archive::open(&daemon.record()).unwrap();
     let in_time = |time: i64| {
         let start = i64::try_from(start).unwrap();
         (start..=start + 90).contains(&(time / 1_000_000_000))
     };
     let (mut all, mut clean) = (Engine::new(), Engine::new());
     let mut left_out = 0;
-    record
-        .replay::<RecordError>(|row| {
+    archive
+        .walk::<RecordError>(|row| {
             let (mut from_all, mut from_clean) = (Vec::new(), Vec::new());
-            all.step(&row.input, &mut from_all);
-            let bad = match &row.input {
+            all.step(row.input, &mut from_all);
+            let bad = match row.input {
                 Input::Refused(_) => true,
                 Input::Reading(reading) => !in_time(reading.phenomenon.0),
                 _ => false,
             };
             left_out += i32::from(bad);
             if !bad {
-                clean.step(&row.input, &mut from_clean);
+                clean.step(row.input, &mut from_clean);
             }
             from_all.retain(|output| !matches!(output, Output::Notice(_)));
             from_clean.retain(|output| !matches!(output, Output::Notice(_)));

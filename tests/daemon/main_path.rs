@@ -306,7 +306,7 @@ publish = { step = 1e-9 }
     let pairs = "SELECT count(*) FROM outputs WHERE kind = 'pair'";
     daemon.wait_count(pairs, i64::from(readings));
     assert!(daemon.stop().success());
-    let inputs = "SELECT count(*) FROM inputs WHERE kind = 'reading'";
+    let inputs = "SELECT count(*) FROM raw_readings";
     assert_eq!(
         daemon.count(inputs),
         2 * i64::from(readings),

@@ -94,7 +94,7 @@ fn a_lost_session_is_made_good_even_if_the_record_can_not_be_written_just_then()
     wait_for("the outbox is empty", || {
         (daemon.count(OUTBOX) == 0).then_some(())
     });
-    let lock = daemon.sqlite();
+    let lock = daemon.newest_file();
     lock.execute_batch("BEGIN IMMEDIATE").unwrap();
     broker.stop();
     broker.forget();

@@ -32,7 +32,7 @@ fn readings(from: u32, to: u32) -> Vec<String> {
 
 /// Holds the write lock of the record, as a copy tool or a full disk would keep it from writing.
 fn block(daemon: &Holdtrue) -> rusqlite::Connection {
-    let connection = daemon.sqlite();
+    let connection = daemon.newest_file();
     connection.execute_batch("BEGIN IMMEDIATE").unwrap();
     connection
 }

@@ -112,7 +112,7 @@ fn fed(channel: &str, time: [&str; 2]) -> Vec<Document> {
         holdtrue_simulators::command::Arguments::try_parse_from(words).expect("good words");
     holdtrue_simulators::command::run(arguments).expect("all rows acknowledged");
     // The configuration is the first input.
-    daemon.wait_count("SELECT count(*) FROM inputs", 1001);
+    daemon.wait_count("SELECT count(*) FROM raw_readings", 1000);
     assert!(daemon.stop().success());
     listener.wait_state("stopped");
     listener

@@ -187,10 +187,10 @@ fn a_record_that_was_changed_is_not_gone_on_with() {
     daemon.wait_count(PAIRS, 50);
     assert!(daemon.stop().success());
     let changed = daemon
-        .sqlite()
+        .newest_file()
         .execute(
-            "UPDATE inputs SET body = replace(body, '1.51', '1.61') WHERE position =
-             (SELECT min(position) FROM inputs WHERE body LIKE '%1.51%')",
+            "UPDATE raw_readings SET value = 1.61 WHERE position =
+             (SELECT min(position) FROM raw_readings WHERE value = 1.51)",
             [],
         )
         .unwrap();
@@ -206,8 +206,8 @@ fn a_record_that_was_changed_is_not_gone_on_with() {
     );
     // The same difference after another version wrote the record is told, and gone on with.
     daemon
-        .sqlite()
-        .execute("UPDATE sessions SET program = '0.0.1'", [])
+        .newest_file()
+        .execute("UPDATE day SET arithmetic = 0, program = '0.0.1'", [])
         .unwrap();
     daemon.launch();
     daemon.wait_log("another version of holdtrue wrote");

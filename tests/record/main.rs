@@ -1,3 +1,10 @@
 //! The record on disk.
 
+#![allow(
+    clippy::unwrap_used,
+    reason = "a test says what went wrong by panicking; the lint does not see helpers as tests"
+)]
+
+mod chain;
 mod keeps;
+mod support;

@@ -110,11 +110,46 @@ impl Holdtrue {
         });
     }
 
-    /// A reading connection to the record.
-    pub(crate) fn sqlite(&self) -> rusqlite::Connection {
-        let connection = rusqlite::Connection::open(self.record().join("holdtrue.sqlite")).unwrap();
+    /// A connection to the file that is written to, or was last.
+    pub(crate) fn newest_file(&self) -> rusqlite::Connection {
+        let connection = rusqlite::Connection::open(self.files().pop().unwrap()).unwrap();
         connection.busy_timeout(LIMIT).unwrap();
         connection
+    }
+
+    /// A reading connection to the whole record: its tables hold the rows of all files.
+    pub(crate) fn sqlite(&self) -> rusqlite::Connection {
+        let connection = rusqlite::Connection::open_in_memory().unwrap();
+        connection.busy_timeout(LIMIT).unwrap();
+        let files = self.files();
+        for (number, file) in files.iter().enumerate() {
+            let path = file.to_str().unwrap();
+            connection
+                .execute(&format!("ATTACH ?1 AS file{number}"), [path])
+                .unwrap();
+        }
+        for table in ["inputs", "raw_readings", "outputs", "documents", "settled"] {
+            let selects: Vec<String> = (0..files.len())
+                .map(|number| format!("SELECT * FROM file{number}.{table}"))
+                .collect();
+            let all = selects.join(" UNION ALL ");
+            connection
+                .execute_batch(&format!("CREATE TEMP VIEW {table} AS {all}"))
+                .unwrap();
+        }
+        connection
+            .execute_batch(
+                "CREATE TEMP VIEW outbox AS SELECT * FROM documents
+                 WHERE number NOT IN (SELECT number FROM settled)",
+            )
+            .unwrap();
+        connection
+    }
+
+    /// The record's files, oldest first.
+    fn files(&self) -> Vec<PathBuf> {
+        let archive = holdtrue::record::Archive::open(&self.record()).unwrap();
+        archive.days().iter().map(|day| archive.path(*day)).collect()
     }
 
     /// The one number that a query on the record gives.
@@ -127,8 +162,8 @@ impl Holdtrue {
     /// Waits until the record's file exists and a query gives at least this.
     pub(crate) fn wait_count(&self, query: &str, least: i64) {
         wait_for(&format!("{query} >= {least}"), || {
-            let file = self.record().join("holdtrue.sqlite");
-            let connection = file.exists().then(|| self.sqlite())?;
+            let made = self.record().exists() && !self.files().is_empty();
+            let connection = made.then(|| self.sqlite())?;
             let count: i64 = connection.query_row(query, [], |row| row.get(0)).ok()?;
             (count >= least).then_some(())
         });

@@ -3,7 +3,7 @@
 //! Mirrors the record's outbox: what is added or removed here goes into the batch as well.
 
 use crate::document::Document;
-use crate::record::{Batch, Numbered};
+use crate::record::{Batch, Numbered, Settled};
 use std::collections::BTreeMap;
 use std::ops::Bound;
 
@@ -14,9 +14,10 @@ use std::ops::Bound;
 const WAITING_MAX: usize = 4096;
 
 /// The outbox.
-pub(super) struct Outbox {
+pub struct Outbox {
     waiting: BTreeMap<i64, Document>,
-    next_number: i64,
+    /// Number of the newest document.
+    newest: i64,
     /// Documents up to this number are on the disk and may go.
     released: i64,
     /// Documents up to this number were handed to the present connection.
@@ -28,7 +29,8 @@ pub(super) struct Outbox {
 
 impl Outbox {
     /// From what the record holds.
-    pub(super) fn new(recorded: Vec<Numbered>) -> Self {
+    #[must_use]
+    pub fn new(recorded: Vec<Numbered>) -> Self {
         let waiting: BTreeMap<i64, Document> = recorded
             .into_iter()
             .map(|it| (it.number, it.document))
@@ -36,7 +38,7 @@ impl Outbox {
         let last = waiting.keys().next_back().copied().unwrap_or(0);
         Self {
             waiting,
-            next_number: last + 1,
+            newest: last,
             released: last,
             handed: 0,
             away: true,
@@ -45,21 +47,16 @@ impl Outbox {
     }
 
     /// Makes room for a document that time alone caused, if there is none and the broker is away.
-    pub(super) fn make_room_for(&mut self, document: &Document, batch: &mut Batch) {
+    pub fn make_room_for(&mut self, document: &Document, batch: &mut Batch) {
         if self.is_full() && self.away {
             self.push_out(document, batch);
         }
     }
 
     /// Adds a document, to the batch as well. It may go once [`Outbox::release`] was called.
-    pub(super) fn add(&mut self, document: Document, batch: &mut Batch) {
-        let number = self.next_number;
-        self.next_number += 1;
-        batch.add_document(Numbered {
-            number,
-            document: document.clone(),
-        });
-        self.waiting.insert(number, document);
+    pub fn add(&mut self, document: Document, batch: &mut Batch) {
+        self.newest = batch.add_document(document.clone());
+        self.waiting.insert(self.newest, document);
     }
 
     fn push_out(&mut self, newer: &Document, batch: &mut Batch) {
@@ -72,17 +69,18 @@ impl Outbox {
             .map(|(number, _)| *number);
         if let Some(number) = older {
             self.pushed_out += 1;
-            self.remove(number, batch);
+            self.remove(number, Settled::PushedOut, batch);
         }
     }
 
     /// The batch with everything added so far is on the disk.
-    pub(super) fn release(&mut self) {
-        self.released = self.next_number - 1;
+    pub fn release(&mut self) {
+        self.released = self.newest;
     }
 
     /// The oldest document that may go and was not handed over.
-    pub(super) fn next_to_hand(&self) -> Option<(i64, &Document)> {
+    #[must_use]
+    pub fn next_to_hand(&self) -> Option<(i64, &Document)> {
         let new = (Bound::Excluded(self.handed), Bound::Included(self.released));
         let (number, document) =
             (self.handed < self.released).then(|| self.waiting.range(new).next())??;
@@ -90,30 +88,30 @@ impl Outbox {
     }
 
     /// Everything up to this one was handed over.
-    pub(super) fn set_handed(&mut self, number: i64) {
+    pub fn set_handed(&mut self, number: i64) {
         self.handed = number;
     }
 
     /// There is a connection.
-    pub(super) fn note_here(&mut self) {
+    pub fn note_here(&mut self) {
         self.away = false;
     }
 
     /// The connection is gone: all must be handed over again.
-    pub(super) fn note_away(&mut self) {
+    pub fn note_away(&mut self) {
         self.handed = 0;
         self.away = true;
     }
 
     /// This one and all after it must be handed over again; all, so that an older document of a
     /// topic does not overtake a newer one.
-    pub(super) fn hand_again_from(&mut self, number: i64) {
+    pub fn hand_again_from(&mut self, number: i64) {
         self.handed = self.handed.min(number - 1);
     }
 
     /// The broker has this document; older ones that it would replace there are worth nothing now.
-    pub(super) fn accepted(&mut self, number: i64, batch: &mut Batch) {
-        let Some(accepted) = self.remove(number, batch).filter(|it| it.retain) else {
+    pub fn accepted(&mut self, number: i64, batch: &mut Batch) {
+        let Some(accepted) = self.remove(number, Settled::Taken, batch).filter(|it| it.retain) else {
             return;
         };
         let older: Vec<i64> = self
@@ -123,38 +121,64 @@ impl Outbox {
             .map(|(number, _)| *number)
             .collect();
         for number in older {
-            self.remove(number, batch);
+            self.remove(number, Settled::Overtaken, batch);
         }
     }
 
     /// Removes a document, from the record as well with the next commit.
-    pub(super) fn remove(&mut self, number: i64, batch: &mut Batch) -> Option<Document> {
+    pub fn remove(
+        &mut self,
+        number: i64,
+        how: Settled,
+        batch: &mut Batch,
+    ) -> Option<Document> {
         let removed = self.waiting.remove(&number);
         if removed.is_some() {
-            batch.remove_document(number);
+            batch.settle(number, how);
         }
         removed
     }
 
     /// Whether a document for this topic waits.
-    pub(super) fn holds_topic(&self, topic: &str) -> bool {
+    #[must_use]
+    pub fn holds_topic(&self, topic: &str) -> bool {
         self.waiting
             .values()
             .any(|document| document.topic == topic)
     }
 
+    /// All that wait, in order.
+    #[must_use]
+    pub fn all(&self) -> Vec<Numbered> {
+        let all = self.waiting.iter();
+        all.map(|(number, document)| Numbered {
+            number: *number,
+            document: document.clone(),
+        })
+        .collect()
+    }
+
     /// Documents waiting.
-    pub(super) fn len(&self) -> usize {
+    #[must_use]
+    pub fn len(&self) -> usize {
         self.waiting.len()
     }
 
     /// Whether no more should be caused by taking messages.
-    pub(super) fn is_full(&self) -> bool {
+    #[must_use]
+    pub fn is_full(&self) -> bool {
         self.waiting.len() >= WAITING_MAX
     }
 
+    /// Whether none waits.
+    #[must_use]
+    pub fn is_empty(&self) -> bool {
+        self.waiting.is_empty()
+    }
+
     /// How many were pushed out while it was full.
-    pub(super) fn pushed_out(&self) -> u64 {
+    #[must_use]
+    pub fn pushed_out(&self) -> u64 {
         self.pushed_out
     }
 }
@@ -162,7 +186,9 @@ impl Outbox {
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::record::Record;
+    use crate::record::{Record, Turn};
+    use holdtrue_engine::setup::Setup;
+    use holdtrue_engine::time::Timestamp;
 
     fn document(topic: &str, retain: bool) -> Document {
         Document {
@@ -174,21 +200,22 @@ mod tests {
         }
     }
 
-    fn batch() -> (tempfile::TempDir, Batch) {
+    fn record() -> (tempfile::TempDir, Record) {
         let folder = tempfile::tempdir().unwrap();
-        let batch = Record::open(folder.path()).unwrap().batch();
-        (folder, batch)
+        let record = Record::open(folder.path()).unwrap();
+        (folder, record)
     }
 
     #[test]
     fn nothing_goes_before_its_release_and_all_again_after_a_loss() {
-        let (_folder, mut batch) = batch();
+        let (_folder, mut record) = record();
+        let batch = record.batch();
         let mut outbox = Outbox::new(Vec::new());
         assert!(outbox.next_to_hand().is_none());
-        outbox.add(document("a", true), &mut batch);
+        outbox.add(document("a", true), batch);
         assert!(outbox.next_to_hand().is_none(), "not on the disk yet");
         outbox.release();
-        outbox.add(document("b", true), &mut batch);
+        outbox.add(document("b", true), batch);
         assert_eq!(outbox.next_to_hand().unwrap().0, 1);
         outbox.set_handed(1);
         assert!(outbox.next_to_hand().is_none());
@@ -196,25 +223,26 @@ mod tests {
         assert_eq!(outbox.next_to_hand().unwrap().1.topic, "b");
         outbox.note_away();
         assert_eq!(outbox.next_to_hand().unwrap().0, 1);
-        outbox.remove(1, &mut batch).unwrap();
+        outbox.remove(1, Settled::Taken, batch).unwrap();
         assert_eq!(outbox.next_to_hand().unwrap().0, 2);
-        assert!(outbox.remove(1, &mut batch).is_none());
+        assert!(outbox.remove(1, Settled::Taken, batch).is_none());
     }
 
     #[test]
     fn a_full_outbox_without_a_broker_pushes_out_the_older_of_the_topic_or_the_oldest_passing_one()
     {
-        let (_folder, mut batch) = batch();
+        let (_folder, mut record) = record();
+        let batch = record.batch();
         let mut outbox = Outbox::new(Vec::new());
-        outbox.add(document("kept", true), &mut batch);
-        outbox.add(document("alarm", true), &mut batch);
+        outbox.add(document("kept", true), batch);
+        outbox.add(document("alarm", true), batch);
         for _ in 2..WAITING_MAX {
-            outbox.add(document("notice", false), &mut batch);
+            outbox.add(document("notice", false), batch);
         }
         assert!(outbox.is_full());
         for newer in [document("alarm", true), document("notice", false)] {
-            outbox.make_room_for(&newer, &mut batch);
-            outbox.add(newer, &mut batch);
+            outbox.make_room_for(&newer, batch);
+            outbox.add(newer, batch);
         }
         assert_eq!((outbox.len(), outbox.pushed_out()), (WAITING_MAX, 2));
         outbox.release();
@@ -234,53 +262,70 @@ mod tests {
 
     #[test]
     fn nothing_is_pushed_out_by_a_message_or_while_the_broker_is_here() {
-        let (_folder, mut batch) = batch();
+        let (_folder, mut record) = record();
+        let batch = record.batch();
         let mut outbox = Outbox::new(Vec::new());
         for _ in 0..WAITING_MAX + 5000 {
-            outbox.add(document("corrected", false), &mut batch);
+            outbox.add(document("corrected", false), batch);
         }
         outbox.note_here();
         let notice = document("notice", false);
-        outbox.make_room_for(&notice, &mut batch);
+        outbox.make_room_for(&notice, batch);
         assert_eq!((outbox.len(), outbox.pushed_out()), (WAITING_MAX + 5000, 0));
         outbox.note_away();
-        outbox.make_room_for(&notice, &mut batch);
+        outbox.make_room_for(&notice, batch);
         assert_eq!(outbox.pushed_out(), 1);
     }
 
     #[test]
     fn what_the_broker_could_not_take_goes_again_in_order_unless_a_newer_one_arrived() {
-        let (_folder, mut batch) = batch();
+        let (_folder, mut record) = record();
+        let batch = record.batch();
         let mut outbox = Outbox::new(Vec::new());
         for topic in ["a", "b", "a"] {
-            outbox.add(document(topic, true), &mut batch);
+            outbox.add(document(topic, true), batch);
         }
         outbox.release();
         outbox.set_handed(3);
         outbox.hand_again_from(1);
         assert_eq!(outbox.next_to_hand().unwrap().0, 1);
         // The answer to the third comes in; the first would replace it by something older.
-        outbox.accepted(3, &mut batch);
+        outbox.accepted(3, batch);
         assert_eq!(outbox.next_to_hand().unwrap().0, 2);
         assert_eq!(outbox.len(), 1);
     }
 
     #[test]
     fn numbers_go_on_after_a_restart() {
-        let (_folder, mut batch) = batch();
-        let kept = Numbered {
-            number: 41,
-            document: document("a", true),
+        let folder = tempfile::tempdir().unwrap();
+        let mut record = Record::open(folder.path()).unwrap();
+        let turn = Turn {
+            now: Timestamp(0),
+            day: Timestamp(0),
+            setup: &Setup::default(),
+            state: Vec::new(),
+            waiting: Vec::new(),
         };
-        let mut outbox = Outbox::new(vec![kept]);
+        record.turn(turn).unwrap();
+        let mut outbox = Outbox::new(Vec::new());
+        for topic in ["a", "b"] {
+            outbox.add(document(topic, true), record.batch());
+        }
+        outbox.remove(1, Settled::Taken, record.batch()).unwrap();
+        record.commit(Timestamp(1)).unwrap();
+        drop(record);
+
+        let mut record = Record::open(folder.path()).unwrap();
+        let mut outbox = Outbox::new(record.outbox().unwrap());
+        assert_eq!(outbox.len(), 1);
         assert_eq!(
             outbox.next_to_hand().unwrap().0,
-            41,
+            2,
             "it is on the disk already"
         );
-        outbox.add(document("b", true), &mut batch);
+        outbox.add(document("c", true), record.batch());
         outbox.release();
-        outbox.set_handed(41);
-        assert_eq!(outbox.next_to_hand().unwrap().0, 42);
+        outbox.set_handed(2);
+        assert_eq!(outbox.next_to_hand().unwrap().0, 3);
     }
 }

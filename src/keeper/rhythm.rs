@@ -1,0 +1,103 @@
+//! When the engine's state is saved between the openings of days. A save costs disk, and spares the
+//! next start from taking the inputs before it again.
+
+use crate::record::State;
+use holdtrue_engine::engine::Engine;
+use holdtrue_engine::time::{Duration, Timestamp};
+
+/// In a recording a new file is begun once the one before has so many inputs.
+pub(super) const INPUTS_OF_A_FILE: i64 = 20_000;
+/// A save is due after so many inputs in any case: a start takes about as many in a second.
+const INPUTS_MAX: i64 = 1_000_000;
+/// Earlier a save is due only after this long …
+const SAVE_EVERY: Duration = Duration::from_seconds(600);
+/// … and when the inputs since the last one take as much disk as it will, at so many bytes each:
+/// so saving at most doubles what is written.
+const BYTES_OF_AN_INPUT: u64 = 50;
+/// A new file that could not be begun is tried again after this long.
+const TURN_AGAIN_AFTER: Duration = Duration::from_seconds(10);
+
+/// What was saved when.
+pub(super) struct Rhythm {
+    saved: Timestamp,
+    /// Position of the last input before the newest save.
+    saved_input: i64,
+    /// Looked at whether a save is worth it no earlier than this.
+    look_again: Timestamp,
+    /// Mean size of a part when all were saved last.
+    part_bytes: u64,
+    /// The batch at hand holds a save.
+    in_batch: bool,
+    turn_not_before: Timestamp,
+}
+
+impl Rhythm {
+    /// `saved_input`: position of the last input before the newest saved state.
+    pub(super) fn new(now: Timestamp, saved_input: i64) -> Self {
+        Self {
+            saved: now,
+            saved_input,
+            look_again: now.plus(SAVE_EVERY),
+            part_bytes: 0,
+            in_batch: false,
+            turn_not_before: Timestamp(i64::MIN),
+        }
+    }
+
+    /// Whether the state is to be saved with the batch at hand, which ends with input `last`.
+    pub(super) fn is_save_due(&mut self, now: Timestamp, last: i64, engine: &Engine) -> bool {
+        let inputs = last - self.saved_input;
+        if self.in_batch || inputs == 0 {
+            return false;
+        }
+        // Also when the clock went back.
+        if inputs < INPUTS_MAX && now < self.look_again && now >= self.saved {
+            return false;
+        }
+        self.look_again = now.plus(SAVE_EVERY);
+        let bytes = (engine.changed().len() as u64).saturating_mul(self.part_bytes);
+        let inputs = inputs.unsigned_abs();
+        inputs >= INPUTS_MAX.unsigned_abs() || inputs.saturating_mul(BYTES_OF_AN_INPUT) >= bytes
+    }
+
+    /// A save goes into the batch at hand.
+    pub(super) fn saving(&mut self, state: &State) {
+        self.in_batch = true;
+        self.note_size(state);
+    }
+
+    /// A save opens a file.
+    pub(super) fn opening(&mut self, state: &State) {
+        self.note_size(state);
+    }
+
+    fn note_size(&mut self, state: &State) {
+        let bytes: usize = state.iter().map(|(_, bytes)| bytes.len()).sum();
+        self.part_bytes = (bytes / state.len().max(1)) as u64;
+    }
+
+    /// The batch is on the disk; whether a save was in it.
+    pub(super) fn committed(&mut self, now: Timestamp, last: i64) -> bool {
+        let saved = std::mem::take(&mut self.in_batch);
+        if saved {
+            self.saved = now;
+            self.saved_input = last;
+        }
+        saved
+    }
+
+    /// A file was opened with the whole state.
+    pub(super) fn turned(&mut self, now: Timestamp, last: i64) {
+        self.saved = now;
+        self.saved_input = last;
+        self.look_again = now.plus(SAVE_EVERY);
+    }
+
+    pub(super) fn turn_failed(&mut self, now: Timestamp) {
+        self.turn_not_before = now.plus(TURN_AGAIN_AFTER);
+    }
+
+    pub(super) fn may_try_turn(&self, now: Timestamp) -> bool {
+        now >= self.turn_not_before
+    }
+}

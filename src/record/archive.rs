@@ -1,0 +1,113 @@
+//! The files of a record folder, read without the right to write: for replay, verification, export
+//! and the search for old readings.
+
+use super::row::ReadingRow;
+use super::{Day, DayName, RecordError, Told};
+use std::cell::RefCell;
+use std::path::{Path, PathBuf};
+
+/// A record folder.
+pub struct Archive {
+    folder: PathBuf,
+    days: Vec<DayName>,
+    /// The file that a row was last looked up in; the next is often in the same.
+    last: RefCell<Option<Day>>,
+}
+
+impl Archive {
+    /// Lists the record files in `folder`.
+    ///
+    /// # Errors
+    /// When the folder can't be read.
+    pub fn open(folder: &Path) -> Result<Self, RecordError> {
+        let failed = |source| RecordError::Folder {
+            folder: folder.to_path_buf(),
+            source,
+        };
+        let mut days = Vec::new();
+        for entry in std::fs::read_dir(folder).map_err(failed)? {
+            let entry = entry.map_err(failed)?;
+            if let Some(name) = DayName::of(&entry.path())
+                && entry.file_type().map_err(failed)?.is_file()
+            {
+                days.push(name);
+            }
+        }
+        days.sort_unstable();
+        Ok(Self {
+            folder: folder.to_path_buf(),
+            days,
+            last: RefCell::new(None),
+        })
+    }
+
+    /// Names of the files, oldest first.
+    #[must_use]
+    pub fn days(&self) -> &[DayName] {
+        &self.days
+    }
+
+    /// The folder.
+    #[must_use]
+    pub fn folder(&self) -> &Path {
+        &self.folder
+    }
+
+    /// Where a file is.
+    #[must_use]
+    pub fn path(&self, name: DayName) -> PathBuf {
+        self.folder.join(name.to_string())
+    }
+
+    /// Opens a file.
+    ///
+    /// # Errors
+    /// When it can't be read.
+    pub fn day(&self, name: DayName) -> Result<Day, RecordError> {
+        Day::open(&self.path(name))
+    }
+
+    /// Hands every input of all files to `take`, oldest first, each with its recorded outputs.
+    ///
+    /// # Errors
+    /// When a file can't be read, a row is missing or unreadable, or `take` refuses.
+    pub fn walk<E: From<RecordError>>(
+        &self,
+        mut take: impl FnMut(Told<'_>) -> Result<(), E>,
+    ) -> Result<(), E> {
+        for name in &self.days {
+            let day = self.day(*name)?;
+            day.walk(self, day.opening().first_input - 1, i64::MAX, &mut take)?;
+        }
+        Ok(())
+    }
+
+    /// The reading at a position in the files before `before`.
+    pub(super) fn reading_row(
+        &self,
+        position: i64,
+        before: DayName,
+    ) -> Result<ReadingRow, RecordError> {
+        if let Some(day) = &*self.last.borrow()
+            && let Some(row) = day.reading_row(position)?
+        {
+            return Ok(row);
+        }
+        for name in self.days.iter().rev().filter(|name| **name < before) {
+            let day = self.day(*name)?;
+            if day.opening().first_input > position {
+                continue;
+            }
+            let row = day.reading_row(position)?;
+            *self.last.borrow_mut() = Some(day);
+            if let Some(row) = row {
+                return Ok(row);
+            }
+            break;
+        }
+        Err(RecordError::Damaged {
+            path: self.folder.clone(),
+            what: format!("reading {position}, which a later input refers to, is not there"),
+        })
+    }
+}

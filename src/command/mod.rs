@@ -5,6 +5,7 @@
 //! - `run`: the daemon, until it is told to stop
 //! - `demo`: an invented plant held true on this machine
 //! - `tell`: an order to a running daemon
+//! - `verify`: whether a record is whole
 //! - `log`: what an operator reads while the daemon runs
 
 pub mod check;
@@ -14,8 +15,10 @@ mod commissioning;
 mod demo;
 
 mod log;
+mod progress;
 mod run;
 mod tell;
+mod verify;
 
 use clap::{Parser, Subcommand};
 use std::path::PathBuf;
@@ -101,6 +104,11 @@ enum Command {
     },
     /// Give a running daemon an order over the broker, and wait for its answer.
     Tell(Box<tell::Tell>),
+    /// Say whether a record is whole and as it was written: seals, links, missing files.
+    #[command(after_help = "Example:\n  holdtrue verify /var/lib/holdtrue\n\n\
+        Exit code: 0 whole, 1 not whole (the first broken link of each file is named), 2 wrong \
+        usage, 3 the folder can't be read.")]
+    Verify(verify::Verify),
 }
 
 impl Command {
@@ -129,5 +137,6 @@ pub fn run(arguments: Arguments) -> Ending {
         Command::Run { config } => run::run(&config),
         Command::Check { config, json } => check::run(&config, json, &mut std::io::stdout()),
         Command::Tell(tell) => tell.run(),
+        Command::Verify(verify) => verify.run(),
     }
 }

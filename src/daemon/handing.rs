@@ -80,7 +80,8 @@ impl Daemon {
             messages_dropped: self.held.dropped(),
             ..self.figures
         };
-        let (document, mut standing) = state_document(&self.shell.keeper, doing, why, figures, now());
+        let (document, mut standing) =
+            state_document(&self.shell.keeper, doing, why, figures, now());
         standing.subscriptions_refused = self.refused_subscriptions();
         let topic = Topics::new(&self.shell.keeper.setup().node).state();
         let mut payload = document.clone().with(standing.clone()).to_json();

@@ -1,7 +1,9 @@
 //! When and how the `state` document is published: on every change, and every half minute.
 
 use crate::broker::Ticket;
-use crate::document::state::{ChainHead, ChannelState, Doing, RefusedCount, Standing, StateDocument};
+use crate::document::state::{
+    ChainHead, ChannelState, Doing, RefusedCount, Standing, StateDocument,
+};
 use crate::document::topic::subject_name;
 use crate::keeper::Keeper;
 use holdtrue_engine::time::Timestamp;
@@ -90,11 +92,7 @@ pub(super) fn state_document(
         .iter()
         .filter_map(|channel| {
             let channel_setup = setup.channels.get(channel.channel.0 as usize)?;
-            Some(ChannelState::new(
-                channel,
-                channel_setup,
-                &engine.alarms,
-            ))
+            Some(ChannelState::new(channel, channel_setup, &engine.alarms))
         })
         .collect();
     let (head, file) = keeper.head();

@@ -71,6 +71,7 @@ impl Daemon {
             if done {
                 self.memory.done(&step);
             } else {
+                tracing::warn!("what the broker's session is owed has to wait");
                 self.memory.failed(clock);
             }
             // With nothing to write there will be no commit.
@@ -99,7 +100,7 @@ impl Daemon {
                 true
             }
             Err(error) => {
-                tracing::warn!(%error, "the retained documents can't be read; trying again");
+                tracing::warn!(%error, "the retained documents can't be read");
                 false
             }
         }

@@ -21,7 +21,7 @@ use crate::fleet::{Fleet, LeapWatch};
 use crate::kept::Kept;
 use crate::notice::NoticeLimiter;
 use crate::report::Report;
-use crate::setup::Clock;
+use crate::setup::{Clock, Setup};
 use crate::standing::Standing;
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
@@ -77,6 +77,18 @@ impl Engine {
     #[must_use]
     pub fn standing(&self) -> Standing {
         self.fleet.standing(&self.counters)
+    }
+
+    /// The configuration in force; without channels before the first.
+    #[must_use]
+    pub fn setup(&self) -> &Setup {
+        self.fleet.setup()
+    }
+
+    /// Newest time known, as the clock's kind says; `None` before the first accepted input.
+    #[must_use]
+    pub fn now(&self) -> Option<Timestamp> {
+        self.fleet.now()
     }
 
     /// Everything that a refused input must not change: the state without counters, held-back

@@ -66,6 +66,16 @@ pub struct Fleet {
 }
 
 impl Fleet {
+    /// The configuration in force.
+    pub(crate) fn setup(&self) -> &Setup {
+        &self.setup
+    }
+
+    /// Newest time known.
+    pub(crate) fn now(&self) -> Option<Timestamp> {
+        self.now
+    }
+
     /// What now is.
     pub(crate) fn clock(&self) -> Clock {
         self.setup.clock

@@ -111,7 +111,10 @@ impl Outbox {
 
     /// The broker has this document; older ones that it would replace there are worth nothing now.
     pub fn accepted(&mut self, number: i64, batch: &mut Batch) {
-        let Some(accepted) = self.remove(number, Settled::Taken, batch).filter(|it| it.retain) else {
+        let Some(accepted) = self
+            .remove(number, Settled::Taken, batch)
+            .filter(|it| it.retain)
+        else {
             return;
         };
         let older: Vec<i64> = self
@@ -126,12 +129,7 @@ impl Outbox {
     }
 
     /// Removes a document, from the record as well with the next commit.
-    pub fn remove(
-        &mut self,
-        number: i64,
-        how: Settled,
-        batch: &mut Batch,
-    ) -> Option<Document> {
+    pub fn remove(&mut self, number: i64, how: Settled, batch: &mut Batch) -> Option<Document> {
         let removed = self.waiting.remove(&number);
         if removed.is_some() {
             batch.settle(number, how);

@@ -59,8 +59,6 @@ pub(super) enum Event {
     Subscriptions(String),
     /// A finished file and its checksum.
     Sealed(String, Digest),
-    /// A file that was removed, and why.
-    Removed(String, String),
 }
 
 /// How far the positions of a record have come.
@@ -175,7 +173,6 @@ impl Batch {
             Event::Start(program) => ("start", program),
             Event::Subscriptions(filters) => ("subscriptions", filters),
             Event::Sealed(file, digest) => ("sealed", format!("{digest}  {file}")),
-            Event::Removed(file, why) => ("removed", format!("{file}: {why}")),
         };
         self.events.push(EventRow {
             batch: self.number_of_batch(),

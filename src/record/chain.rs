@@ -95,7 +95,8 @@ impl Link {
     }
 
     pub(super) fn float(&mut self, value: f64) {
-        self.buffer.extend_from_slice(&value.to_bits().to_le_bytes());
+        self.buffer
+            .extend_from_slice(&value.to_bits().to_le_bytes());
     }
 
     pub(super) fn bytes(&mut self, value: &[u8]) {

@@ -196,7 +196,9 @@ impl Day {
     /// What is needed to compute the digests of all batches: rows that are found by their batch.
     pub(super) fn by_batch(&self) -> Result<ByBatch, RecordError> {
         let read = || -> rusqlite::Result<BTreeSet<i64>> {
-            let mut statement = self.connection.prepare("SELECT DISTINCT batch FROM states")?;
+            let mut statement = self
+                .connection
+                .prepare("SELECT DISTINCT batch FROM states")?;
             statement.query_map([], |row| row.get(0))?.collect()
         };
         Ok(ByBatch {

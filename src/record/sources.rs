@@ -47,7 +47,9 @@ impl SourceBook {
 
     /// Names with numbers from `first` on.
     pub(super) fn since(&self, first: i64) -> impl Iterator<Item = (i64, &SourceName)> {
-        (1..).zip(&self.names).skip_while(move |(number, _)| *number < first)
+        (1..)
+            .zip(&self.names)
+            .skip_while(move |(number, _)| *number < first)
     }
 
     /// A configuration is in force from here on; its sources get numbers.

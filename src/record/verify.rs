@@ -7,8 +7,8 @@
 use super::archive::Archive;
 use super::batch::Place;
 use super::chain::{Digest, Head};
-use super::sealing;
 use super::day::ByBatch;
+use super::sealing;
 use super::{Day, DayName, RecordError};
 use holdtrue_engine::time::Timestamp;
 use std::collections::BTreeMap;
@@ -142,15 +142,15 @@ struct Walk<'a> {
     sought: Option<(Digest, bool)>,
 }
 
-/// Verifies a record. `kept`: a digest that was kept elsewhere and must be a link of it. `told` is
-/// called before each file with its place and how many there are.
+/// Verifies a record. `kept`: a digest that was kept elsewhere and must be a link of it. `looked` is
+/// called after each file.
 ///
 /// # Errors
 /// When the folder holds no record. What is wrong with a file is part of the verdict.
 pub fn verify(
     archive: &Archive,
     kept: Option<Digest>,
-    mut told: impl FnMut(usize, usize, DayName),
+    mut looked: impl FnMut(),
 ) -> Result<Verdict, RecordError> {
     if archive.days().is_empty() {
         return Err(RecordError::Empty {
@@ -170,9 +170,7 @@ pub fn verify(
     };
     walk.collect_notes();
     let mut before: Option<(DayName, Head)> = None;
-    let all = archive.days().len();
-    for (place, name) in archive.days().iter().enumerate() {
-        told(place, all, *name);
+    for name in archive.days() {
         walk.verdict.files += 1;
         let faults = walk.verdict.faults.len();
         match walk.file(*name, before) {
@@ -185,6 +183,7 @@ pub fn verify(
                 }
             }
         }
+        looked();
     }
     walk.look_for_kept();
     Ok(walk.verdict)
@@ -330,7 +329,9 @@ impl Walk<'_> {
         ] {
             if day.has_rows_beyond(table, last)? {
                 let file = day.path().to_path_buf();
-                self.verdict.faults.push(Fault::Beyond { file, table, last });
+                self.verdict
+                    .faults
+                    .push(Fault::Beyond { file, table, last });
                 return Ok(());
             }
         }

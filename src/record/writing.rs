@@ -273,12 +273,10 @@ impl Record {
             program: env!("CARGO_PKG_VERSION").to_owned(),
             arithmetic: ARITHMETIC_REVISION,
             state: STATE_REVISION,
-            setup: serde_json::to_string(turn.setup).map_err(|source| {
-                RecordError::Unreadable {
-                    path: self.path(name),
-                    position: self.place.last_input,
-                    source,
-                }
+            setup: serde_json::to_string(turn.setup).map_err(|source| RecordError::Unreadable {
+                path: self.path(name),
+                position: self.place.last_input,
+                source,
             })?,
             preceding,
             chain: self.place.head.digest,
@@ -517,9 +515,10 @@ impl Record {
 
     fn retained_rows(&self) -> Result<Vec<RetainedRow>, RecordError> {
         let rows = self.with_newest(|day| {
-            let mut own = day.prepare("SELECT expires, payload FROM documents WHERE number = ?1")?;
-            let mut earlier = day
-                .prepare("SELECT expires, payload FROM retained_at_opening WHERE topic = ?1")?;
+            let mut own =
+                day.prepare("SELECT expires, payload FROM documents WHERE number = ?1")?;
+            let mut earlier =
+                day.prepare("SELECT expires, payload FROM retained_at_opening WHERE topic = ?1")?;
             let mut rows = Vec::with_capacity(self.retained.len());
             for (topic, number) in &self.retained {
                 let read = |row: &rusqlite::Row<'_>| {

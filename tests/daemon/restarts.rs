@@ -39,6 +39,9 @@ fn payloads(count: usize) -> Vec<String> {
         .collect()
 }
 
+/// All inputs.
+const INPUTS: &str = "SELECT (SELECT count(*) FROM inputs) + (SELECT count(*) FROM raw_readings)";
+
 /// How often each reading made a pair, by its number, from the recorded outputs.
 fn pairs(daemon: &Holdtrue) -> BTreeMap<usize, usize> {
     let connection = daemon.sqlite();
@@ -158,17 +161,11 @@ async fn killed_without_warning_it_goes_on_where_it_was() {
         "readings stepped twice"
     );
     let killed = replayed(&daemon.record());
-    let inputs = daemon.count(
-        "SELECT (SELECT count(*) FROM inputs) + (SELECT count(*) FROM raw_readings)",
-    );
+    let inputs = daemon.count(INPUTS);
     daemon.launch();
     daemon.wait_log("connected to the broker");
     assert!(daemon.stop().success());
-    assert_eq!(
-        daemon.count("SELECT count(*) FROM inputs"),
-        inputs,
-        "the restart added inputs"
-    );
+    assert_eq!(daemon.count(INPUTS), inputs, "the restart added inputs");
     assert_eq!(replayed(&daemon.record()), killed);
 }
 
@@ -224,7 +221,7 @@ fn what_was_not_committed_when_told_to_end_is_committed_and_acknowledged() {
     daemon.launch();
     daemon.wait_log("connected to the broker");
     assert!(daemon.stop().success());
-    let refused = daemon.count("SELECT count(*) FROM inputs WHERE kind = 'reading'");
+    let refused = daemon.count("SELECT count(*) FROM raw_readings");
     assert_eq!(
         refused, 40,
         "20 indications and 20 references; more would have come twice"

@@ -128,7 +128,14 @@ impl Holdtrue {
                 .execute(&format!("ATTACH ?1 AS file{number}"), [path])
                 .unwrap();
         }
-        for table in ["inputs", "raw_readings", "outputs", "documents", "settled"] {
+        for table in [
+            "inputs",
+            "raw_readings",
+            "outputs",
+            "documents",
+            "settled",
+            "events",
+        ] {
             let selects: Vec<String> = (0..files.len())
                 .map(|number| format!("SELECT * FROM file{number}.{table}"))
                 .collect();
@@ -149,7 +156,11 @@ impl Holdtrue {
     /// The record's files, oldest first.
     fn files(&self) -> Vec<PathBuf> {
         let archive = holdtrue::record::Archive::open(&self.record()).unwrap();
-        archive.days().iter().map(|day| archive.path(*day)).collect()
+        archive
+            .days()
+            .iter()
+            .map(|day| archive.path(*day))
+            .collect()
     }
 
     /// The one number that a query on the record gives.

@@ -9,6 +9,7 @@
 //! - [`document`]: what is published
 //! - [`keeper`]: the engine in step with its record and its outbox
 //! - [`daemon`]: the loop around the engine
+//! - [`import`]: recordings as inputs of the engine
 //! - `demo`: an invented plant held true on one machine
 //! - [`command`]: the command line
 
@@ -19,6 +20,7 @@ pub mod daemon;
 #[cfg(feature = "demo")]
 pub mod demo;
 pub mod document;
+pub mod import;
 pub mod keeper;
 pub mod payload;
 pub mod record;

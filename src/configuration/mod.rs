@@ -27,11 +27,11 @@ mod influence;
 mod name;
 mod place;
 mod quantity;
-mod reader;
+pub(crate) mod reader;
 mod reference;
 mod screening;
 mod service;
-mod source;
+pub(crate) mod source;
 mod steps;
 
 use crate::payload::Tables;

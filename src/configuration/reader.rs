@@ -16,10 +16,10 @@ use toml::Spanned;
 use toml::de::{DeTable, DeValue};
 
 /// Two keys at least this much alike (Jaro-Winkler, 0 … 1) are taken for a slip of the pen.
-pub(super) const ALIKE: f64 = 0.82;
+pub(crate) const ALIKE: f64 = 0.82;
 
 /// One table of the file.
-pub(super) struct Section<'source> {
+pub(crate) struct Section<'source> {
     source: &'source Source<'source>,
     /// As it is shown: `channel[2].indication`.
     path: String,
@@ -34,7 +34,7 @@ pub(super) struct Section<'source> {
 
 impl<'source> Section<'source> {
     /// The whole file as one section.
-    pub(super) fn top(
+    pub(crate) fn top(
         source: &'source Source<'source>,
         table: &'source Spanned<DeTable<'source>>,
     ) -> Self {
@@ -50,31 +50,31 @@ impl<'source> Section<'source> {
     }
 
     /// Keys that are absent here are looked up there.
-    pub(super) fn with_defaults(mut self, defaults: Option<&'source Section<'source>>) -> Self {
+    pub(crate) fn with_defaults(mut self, defaults: Option<&'source Section<'source>>) -> Self {
         self.defaults = defaults;
         self
     }
 
-    pub(super) fn path(&self) -> &str {
+    pub(crate) fn path(&self) -> &str {
         &self.path
     }
 
-    pub(super) fn source(&self) -> &'source Source<'source> {
+    pub(crate) fn source(&self) -> &'source Source<'source> {
         self.source
     }
 
     /// Notes an error about the section as a whole.
-    pub(super) fn error(&self, message: impl Into<String>) {
+    pub(crate) fn error(&self, message: impl Into<String>) {
         self.source.error(&self.span, &self.path, message);
     }
 
     /// Notes an error about a value in it.
-    pub(super) fn wrong<T>(&self, found: &Found<T>, message: impl Into<String>) {
+    pub(crate) fn wrong<T>(&self, found: &Found<T>, message: impl Into<String>) {
         self.source.error(&found.span, &found.key, message);
     }
 
     /// Notes that a key should be there.
-    pub(super) fn missing(&self, key: &'static str, advice: &str) {
+    pub(crate) fn missing(&self, key: &'static str, advice: &str) {
         let path = self.path_of(key);
         let message = format!("is missing; {advice}");
         self.source
@@ -82,23 +82,23 @@ impl<'source> Section<'source> {
     }
 
     /// Whether the key is set here (or by default).
-    pub(super) fn has(&self, key: &'static str) -> bool {
+    pub(crate) fn has(&self, key: &'static str) -> bool {
         self.value(key).is_some()
     }
 
     /// The place of a key, for problems that come out later.
-    pub(super) fn place(&self, key: &'static str) -> Option<Found<()>> {
+    pub(crate) fn place(&self, key: &'static str) -> Option<Found<()>> {
         self.value(key).map(|found| found.with(()))
     }
 
-    pub(super) fn text(&self, key: &'static str) -> Option<Found<&'source str>> {
+    pub(crate) fn text(&self, key: &'static str) -> Option<Found<&'source str>> {
         let found = self.value(key)?;
         let text = found.value.as_str();
         self.typed(&found, text, "a text in quotes")
     }
 
     /// A text that must be there.
-    pub(super) fn need_text(&self, key: &'static str, advice: &str) -> Option<Found<&'source str>> {
+    pub(crate) fn need_text(&self, key: &'static str, advice: &str) -> Option<Found<&'source str>> {
         if !self.has(key) {
             self.missing(key, advice);
         }
@@ -106,12 +106,12 @@ impl<'source> Section<'source> {
     }
 
     /// Whether the key holds a text (and not a table, where both are allowed).
-    pub(super) fn is_text(&self, key: &'static str) -> bool {
+    pub(crate) fn is_text(&self, key: &'static str) -> bool {
         self.value(key).is_some_and(|found| found.value.is_str())
     }
 
     /// A date or date-time, as a TOML date or in quotes.
-    pub(super) fn date(&self, key: &'static str) -> Option<Found<String>> {
+    pub(crate) fn date(&self, key: &'static str) -> Option<Found<String>> {
         let found = self.value(key)?;
         let text = match found.value {
             DeValue::Datetime(date) => Some(date.to_string()),
@@ -120,19 +120,19 @@ impl<'source> Section<'source> {
         self.typed(&found, text, "a date, as \"2027-06-30\"")
     }
 
-    pub(super) fn truth(&self, key: &'static str) -> Option<Found<bool>> {
+    pub(crate) fn truth(&self, key: &'static str) -> Option<Found<bool>> {
         let found = self.value(key)?;
         self.typed(&found, found.value.as_bool(), "true or false")
     }
 
     /// A finite number, with or without a decimal point.
-    pub(super) fn number(&self, key: &'static str) -> Option<Found<f64>> {
+    pub(crate) fn number(&self, key: &'static str) -> Option<Found<f64>> {
         let found = self.value(key)?;
         self.typed(&found, number(found.value), "a finite number")
     }
 
     /// A number within bounds; `unit` explains them.
-    pub(super) fn number_in(
+    pub(crate) fn number_in(
         &self,
         key: &'static str,
         allowed: impl Fn(f64) -> bool,
@@ -146,7 +146,7 @@ impl<'source> Section<'source> {
         None
     }
 
-    pub(super) fn integer_in<N: TryFrom<i64> + std::fmt::Display + PartialOrd>(
+    pub(crate) fn integer_in<N: TryFrom<i64> + std::fmt::Display + PartialOrd>(
         &self,
         key: &'static str,
         allowed: RangeInclusive<N>,
@@ -164,7 +164,7 @@ impl<'source> Section<'source> {
     }
 
     /// A length of time, not negative.
-    pub(super) fn duration(&self, key: &'static str) -> Option<Found<Duration>> {
+    pub(crate) fn duration(&self, key: &'static str) -> Option<Found<Duration>> {
         let found = self.signed_duration(key)?;
         if found.value < Duration::ZERO {
             self.wrong(&found, "must not be negative");
@@ -174,7 +174,7 @@ impl<'source> Section<'source> {
     }
 
     /// A length of time longer than zero.
-    pub(super) fn positive_duration(&self, key: &'static str) -> Option<Found<Duration>> {
+    pub(crate) fn positive_duration(&self, key: &'static str) -> Option<Found<Duration>> {
         let found = self.duration(key)?;
         if found.value == Duration::ZERO {
             self.wrong(&found, "must be longer than zero");
@@ -183,7 +183,7 @@ impl<'source> Section<'source> {
         Some(found)
     }
 
-    pub(super) fn signed_duration(&self, key: &'static str) -> Option<Found<Duration>> {
+    pub(crate) fn signed_duration(&self, key: &'static str) -> Option<Found<Duration>> {
         let found = self.value(key)?;
         let text = found.value.as_str();
         let text = self.typed(
@@ -201,7 +201,7 @@ impl<'source> Section<'source> {
     }
 
     /// One of a few words.
-    pub(super) fn choice<T: Clone>(
+    pub(crate) fn choice<T: Clone>(
         &self,
         key: &'static str,
         choices: &[(&str, T)],
@@ -223,17 +223,17 @@ impl<'source> Section<'source> {
     }
 
     /// A list of texts.
-    pub(super) fn texts(&self, key: &'static str) -> Vec<Found<&'source str>> {
+    pub(crate) fn texts(&self, key: &'static str) -> Vec<Found<&'source str>> {
         self.list(key, "a list of texts", |value| value.as_str())
     }
 
     /// A list of numbers.
-    pub(super) fn numbers(&self, key: &'static str) -> Vec<Found<f64>> {
+    pub(crate) fn numbers(&self, key: &'static str) -> Vec<Found<f64>> {
         self.list(key, "a list of finite numbers", number)
     }
 
     /// A list of texts, numbers and truth values.
-    pub(super) fn scalars(&self, key: &'static str) -> Vec<Found<Scalar>> {
+    pub(crate) fn scalars(&self, key: &'static str) -> Vec<Found<Scalar>> {
         self.list(
             key,
             "a list of texts, numbers, true or false",
@@ -269,14 +269,14 @@ impl<'source> Section<'source> {
     }
 
     /// A table in it, `[key]` or `key = { … }`.
-    pub(super) fn section(&self, key: &'static str) -> Option<Section<'source>> {
+    pub(crate) fn section(&self, key: &'static str) -> Option<Section<'source>> {
         let found = self.value(key)?;
         let table = self.typed(&found, found.value.as_table(), "a table")?;
         Some(self.below(key, found.key.clone(), found.span, table.value))
     }
 
     /// All tables of a list of tables, `[[key]]`.
-    pub(super) fn sections(&self, key: &'static str) -> Vec<Section<'source>> {
+    pub(crate) fn sections(&self, key: &'static str) -> Vec<Section<'source>> {
         let Some(found) = self.value(key) else {
             return Vec::new();
         };
@@ -318,7 +318,7 @@ impl<'source> Section<'source> {
     }
 
     /// Notes every key that nobody has asked for.
-    pub(super) fn finish(&self) {
+    pub(crate) fn finish(&self) {
         let known = self.known.borrow();
         for name in self.table.keys() {
             let word = name.get_ref().as_ref();

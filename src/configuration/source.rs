@@ -6,8 +6,8 @@ use std::collections::BTreeSet;
 use std::ops::Range;
 
 /// The text of one file and everything noted while reading it.
-pub(super) struct Source<'text> {
-    pub(super) text: &'text str,
+pub(crate) struct Source<'text> {
+    pub(crate) text: &'text str,
     noted: RefCell<Vec<Noted>>,
     asked: RefCell<BTreeSet<String>>,
 }
@@ -20,14 +20,14 @@ struct Noted {
 
 /// A value with the place where it stands.
 #[derive(Clone, Debug)]
-pub(super) struct Found<T> {
-    pub(super) value: T,
-    pub(super) span: Range<usize>,
-    pub(super) key: String,
+pub(crate) struct Found<T> {
+    pub(crate) value: T,
+    pub(crate) span: Range<usize>,
+    pub(crate) key: String,
 }
 
 impl<'text> Source<'text> {
-    pub(super) fn new(text: &'text str) -> Self {
+    pub(crate) fn new(text: &'text str) -> Self {
         Self {
             text,
             noted: RefCell::default(),
@@ -35,15 +35,15 @@ impl<'text> Source<'text> {
         }
     }
 
-    pub(super) fn error(&self, span: &Range<usize>, key: &str, message: impl Into<String>) {
+    pub(crate) fn error(&self, span: &Range<usize>, key: &str, message: impl Into<String>) {
         self.note(Severity::Error, span, key, message.into(), false);
     }
 
-    pub(super) fn warn(&self, span: &Range<usize>, key: &str, message: impl Into<String>) {
+    pub(crate) fn warn(&self, span: &Range<usize>, key: &str, message: impl Into<String>) {
         self.note(Severity::Warning, span, key, message.into(), false);
     }
 
-    pub(super) fn note(
+    pub(crate) fn note(
         &self,
         severity: Severity,
         at: &Range<usize>,
@@ -56,18 +56,18 @@ impl<'text> Source<'text> {
     }
 
     /// Remembers that the parser looks for a key.
-    pub(super) fn ask(&self, key: String) {
+    pub(crate) fn ask(&self, key: String) {
         self.asked.borrow_mut().insert(key);
     }
 
     /// Every key that the parser asked for, without counts: `channel.window`.
-    pub(super) fn asked(&self) -> BTreeSet<String> {
+    pub(crate) fn asked(&self) -> BTreeSet<String> {
         self.asked.borrow().clone()
     }
 
     /// Everything noted, in file order, each thing once (a default is read by every channel).
     /// In a file with broken syntax what is missing may stand in the broken part: left out.
-    pub(super) fn into_problems(self, broken: bool) -> Vec<Problem> {
+    pub(crate) fn into_problems(self, broken: bool) -> Vec<Problem> {
         let noted = self.noted.into_inner().into_iter();
         let mut problems: Vec<Problem> = noted
             .filter(|noted| !(broken && noted.missing))
@@ -82,7 +82,7 @@ impl<'text> Source<'text> {
 
 impl<T> Found<T> {
     /// The same place with another value.
-    pub(super) fn with<U>(&self, value: U) -> Found<U> {
+    pub(crate) fn with<U>(&self, value: U) -> Found<U> {
         Found {
             value,
             span: self.span.clone(),

@@ -22,7 +22,7 @@ impl Fault {
 }
 
 /// The beginning of a text, in quotes, control characters made visible, shortened.
-pub(super) fn excerpt(text: &str) -> String {
+pub(crate) fn excerpt(text: &str) -> String {
     let shown: String = text
         .chars()
         .take(EXCERPT_MAX)

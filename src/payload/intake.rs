@@ -189,7 +189,7 @@ impl Content {
 
 impl Target {
     /// Whose value it is; a gate belongs to its reference.
-    pub(super) fn source(&self) -> Source {
+    pub(crate) fn source(&self) -> Source {
         match self {
             Self::Indication(channel) => Source::Indication(*channel),
             Self::Influence(influence) => Source::Influence(*influence),
@@ -202,7 +202,7 @@ impl Target {
 
 /// What a payload told for one target.
 #[derive(Clone, Debug, PartialEq)]
-pub(super) enum Told {
+pub(crate) enum Told {
     /// A value.
     Reading {
         phenomenon: Timestamp,

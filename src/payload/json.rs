@@ -144,7 +144,7 @@ fn integer(picked: &Picked<'_>, spot: &Spot) -> Result<i64, Fault> {
 }
 
 /// Whether a JSON value is one of these; a value of another type is none of them.
-pub(super) fn holds_one_of(raw: &str, wanted: &[Scalar]) -> bool {
+pub(crate) fn holds_one_of(raw: &str, wanted: &[Scalar]) -> bool {
     wanted.iter().any(|wanted| match wanted {
         Scalar::Text(word) => text_of(raw).is_some_and(|text| text == *word),
         Scalar::Number(number) => is_number(raw) && literal::number(raw) == Ok(*number),
@@ -153,7 +153,7 @@ pub(super) fn holds_one_of(raw: &str, wanted: &[Scalar]) -> bool {
 }
 
 /// The content of a JSON text, borrowed where it holds no escapes.
-pub(super) fn text_of(raw: &str) -> Option<Cow<'_, str>> {
+pub(crate) fn text_of(raw: &str) -> Option<Cow<'_, str>> {
     let inner = raw.strip_prefix('"')?.strip_suffix('"')?;
     if inner.contains('\\') {
         serde_json::from_str::<String>(raw).ok().map(Cow::Owned)
@@ -163,7 +163,7 @@ pub(super) fn text_of(raw: &str) -> Option<Cow<'_, str>> {
 }
 
 /// Whether a sound JSON value is a number: only numbers begin like this.
-pub(super) fn is_number(raw: &str) -> bool {
+pub(crate) fn is_number(raw: &str) -> bool {
     raw.starts_with(|first: char| first == '-' || first.is_ascii_digit())
 }
 

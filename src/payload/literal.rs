@@ -7,7 +7,7 @@ use holdtrue_engine::event::RefusedReason;
 ///
 /// The text may be a JSON number, and also what JSON does not allow but instruments send: a leading
 /// `+`, `.5` and `5.`.
-pub(super) fn number(text: &str) -> Result<f64, Fault> {
+pub(crate) fn number(text: &str) -> Result<f64, Fault> {
     let value: f64 = text.parse().map_err(|_| {
         let hint = if text.contains(',') {
             "; the decimal sign is a point"

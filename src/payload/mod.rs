@@ -19,13 +19,13 @@ pub mod order;
 pub mod pointer;
 pub mod tables;
 
-mod fault;
+pub(crate) mod fault;
 pub(crate) mod instant;
-mod json;
+pub(crate) mod json;
 pub(crate) mod literal;
-mod pick;
-mod plain;
-mod senml;
+pub(crate) mod pick;
+pub(crate) mod plain;
+pub(crate) mod senml;
 
 pub use intake::Intake;
 pub use order::{OrderIntake, OrderMessage};

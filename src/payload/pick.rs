@@ -11,18 +11,18 @@ use std::fmt;
 
 /// The wanted pointers of one topic.
 #[derive(Clone, Debug, Default)]
-pub(super) struct Picker {
+pub(crate) struct Picker {
     root: Node,
     slots: usize,
 }
 
 /// Number of a wanted value; equal pointers share one.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
-pub(super) struct Slot(usize);
+pub(crate) struct Slot(usize);
 
 /// What a document held, by slot; `None` where the pointer led nowhere.
 #[derive(Debug, Default)]
-pub(super) struct Picked<'text>(Vec<Option<&'text str>>);
+pub(crate) struct Picked<'text>(Vec<Option<&'text str>>);
 
 /// One level of the tree.
 #[derive(Clone, Debug, Default)]
@@ -33,7 +33,7 @@ struct Node {
 
 impl Picker {
     /// Wants the value that a pointer leads to.
-    pub(super) fn want(&mut self, pointer: &Pointer) -> Slot {
+    pub(crate) fn want(&mut self, pointer: &Pointer) -> Slot {
         let mut node = &mut self.root;
         for token in pointer.tokens() {
             let index = node.child(token).unwrap_or_else(|| {
@@ -49,7 +49,7 @@ impl Picker {
     }
 
     /// Walks through a document. Where an object names a key twice, the last one counts.
-    pub(super) fn pick<'text>(&self, text: &'text str) -> Result<Picked<'text>, serde_json::Error> {
+    pub(crate) fn pick<'text>(&self, text: &'text str) -> Result<Picked<'text>, serde_json::Error> {
         let mut found = Picked(vec![None; self.slots]);
         let mut document = serde_json::Deserializer::from_str(text);
         Walk {
@@ -64,7 +64,7 @@ impl Picker {
 
 impl<'text> Picked<'text> {
     /// The text of a wanted value, without blanks around it.
-    pub(super) fn get(&self, slot: Slot) -> Option<&'text str> {
+    pub(crate) fn get(&self, slot: Slot) -> Option<&'text str> {
         self.0[slot.0]
     }
 }

@@ -35,7 +35,7 @@ fn value(reader: &Reader<'_>, text: &str) -> Result<Told, Fault> {
 }
 
 /// Whether a bare word is what a gate waits for: `on`, `1`, `true`, also in the quotes of JSON.
-fn says(wanted: &Scalar, text: &str) -> bool {
+pub(crate) fn says(wanted: &Scalar, text: &str) -> bool {
     match wanted {
         Scalar::Text(word) => {
             word == text || serde_json::from_str(text).is_ok_and(|t: String| t == *word)

@@ -26,13 +26,25 @@ const VERSION_WITH_SECONDARY_UNITS: i128 = 26;
 
 /// Everything that one topic's packs carry.
 #[derive(Clone, Debug, Default)]
-pub(super) struct Pack {
+pub(crate) struct Pack {
     uses: Vec<(Target, SenmlPlace)>,
 }
 
+/// What one wanted record of a pack tells.
+pub(crate) struct Heard {
+    /// The record's place in the pack.
+    pub(crate) record: usize,
+    /// Position of the use among those wanted.
+    pub(crate) wanted: usize,
+    /// The record's time; the received time, if it can't be read.
+    at: Option<Timestamp>,
+    /// The value, or why there is none.
+    pub(crate) told: Result<Told, Fault>,
+}
+
 /// Base fields in force.
-#[derive(Default)]
-struct Base<'text> {
+#[derive(Clone, Debug, Default)]
+pub(crate) struct Base<'text> {
     name: Cow<'text, str>,
     /// Nanoseconds.
     time: i128,
@@ -53,50 +65,79 @@ struct Resolved<'text> {
 }
 
 impl Pack {
-    pub(super) fn want(&mut self, target: &Target, place: &SenmlPlace) {
+    pub(crate) fn want(&mut self, target: &Target, place: &SenmlPlace) {
         self.uses.push((target.clone(), place.clone()));
     }
 
     /// Reads all wanted records of one pack, in order of their times.
     pub(super) fn read(&self, reader: &mut Reader<'_>, text: &str) {
-        let resolved = match serde_json::from_str::<Vec<Record<'_>>>(text) {
-            Ok(records) => resolve(&records, reader.received),
-            Err(error) => Err(unsound(text, &error)),
-        };
-        let resolved = match resolved {
-            Ok(resolved) => resolved,
+        let received = reader.received;
+        let mut told = match self.hear(text, &mut Base::default(), Some(received)) {
+            Ok(heard) => heard,
             Err(fault) => return reader.refuse_message(fault),
         };
-        let mut told = Vec::new();
-        for (target, place) in &self.uses {
-            let before = told.len();
-            for record in resolved.iter().filter(|record| record.is(&place.name)) {
-                if let Some(result) = record.read(target, place, &resolved) {
-                    let at = record.time.as_ref().map_or(reader.received, |time| *time);
-                    told.push((at, target, result));
+        let missing = (0..self.uses.len())
+            .filter(|wanted| told.iter().all(|heard| heard.wanted != *wanted))
+            .map(|wanted| {
+                let name = &self.uses[wanted].1.name;
+                let detail = format!("the pack has no record {name} with a value");
+                Heard {
+                    record: 0,
+                    wanted,
+                    at: Some(received),
+                    told: Err(Fault::new(RefusedReason::Missing, detail)),
                 }
-            }
-            if told.len() == before {
-                let detail = format!("the pack has no record {} with a value", place.name);
-                let fault = Fault::new(RefusedReason::Missing, detail);
-                told.push((reader.received, target, Err(fault)));
-            }
-        }
+            });
+        let missing: Vec<Heard> = missing.collect();
+        told.extend(missing);
         // Resolved records are chronological (RFC 8428 section 4.6); the sort is stable, so that of
         // one instant gates come first, then references, then indications.
-        told.sort_by_key(|(at, _, _)| *at);
-        for (_, target, result) in told {
-            reader.tell(target, result);
+        told.sort_by_key(|heard| (heard.at.unwrap_or(received), heard.wanted));
+        for heard in told {
+            reader.tell(&self.uses[heard.wanted].0, heard.told);
         }
+    }
+
+    /// What all wanted records of a pack tell, in its order; of a piece of a pack, where `base`
+    /// holds the base fields that the pieces before it have left. Without a received time relative
+    /// times are refused.
+    pub(crate) fn hear(
+        &self,
+        text: &str,
+        base: &mut Base<'static>,
+        received: Option<Timestamp>,
+    ) -> Result<Vec<Heard>, Fault> {
+        let records =
+            serde_json::from_str::<Vec<Record<'_>>>(text).map_err(|error| unsound(text, &error))?;
+        let (resolved, left) = resolve(&records, base.clone(), received)?;
+        let mut heard = Vec::new();
+        for (record, place) in resolved.iter().enumerate() {
+            for (wanted, (target, wish)) in self.uses.iter().enumerate() {
+                if !place.is(&wish.name) {
+                    continue;
+                }
+                if let Some(told) = place.read(target, wish, &resolved) {
+                    heard.push(Heard {
+                        record,
+                        wanted,
+                        at: place.time.as_ref().ok().copied(),
+                        told,
+                    });
+                }
+            }
+        }
+        *base = left.into_owned();
+        Ok(heard)
     }
 }
 
-/// Works the base fields into every record that follows them (RFC 8428 section 4.6).
+/// Works the base fields into every record that follows them (RFC 8428 section 4.6); with the base
+/// fields that are in force at the end.
 fn resolve<'text>(
     records: &[Record<'text>],
-    received: Timestamp,
-) -> Result<Vec<Resolved<'text>>, Fault> {
-    let mut base = Base::default();
+    mut base: Base<'text>,
+    received: Option<Timestamp>,
+) -> Result<(Vec<Resolved<'text>>, Base<'text>), Fault> {
     let mut resolved = Vec::with_capacity(records.len());
     for record in records {
         base.take(record)?;
@@ -110,7 +151,20 @@ fn resolve<'text>(
             record: *record,
         });
     }
-    Ok(resolved)
+    Ok((resolved, base))
+}
+
+impl Base<'_> {
+    /// The same, independent of the text it came from.
+    fn into_owned(self) -> Base<'static> {
+        Base {
+            name: Cow::Owned(self.name.into_owned()),
+            time: self.time,
+            unit: self.unit.map(|unit| Cow::Owned(unit.into_owned())),
+            value: self.value,
+            sum: self.sum,
+        }
+    }
 }
 
 impl<'text> Base<'text> {

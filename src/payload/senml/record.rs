@@ -63,14 +63,19 @@ impl<'text> Record<'text> {
             .transpose()
     }
 
-    /// Base time plus time; absolute, or counted from now (RFC 8428 sections 4.5.3 and 4.6).
-    pub(super) fn time(&self, base: i128, received: Timestamp) -> Result<Timestamp, Fault> {
+    /// Base time plus time; absolute, or counted from now (RFC 8428 sections 4.5.3 and 4.6), which
+    /// is `received`, where that is known.
+    pub(super) fn time(&self, base: i128, received: Option<Timestamp>) -> Result<Timestamp, Fault> {
         let own = self.fields[label::T].map_or(Ok(0), |raw| nanoseconds(raw, "t"))?;
         let sum = base + own;
-        let absolute = if sum >= ABSOLUTE_FROM {
-            sum
-        } else {
-            i128::from(received.0) + sum
+        let absolute = match received {
+            _ if sum >= ABSOLUTE_FROM => sum,
+            Some(received) => i128::from(received.0) + sum,
+            None => {
+                let detail = "a time below 2^28 s counts from now (RFC 8428 section 4.5.3), and \
+                              a recording does not tell when that was; write times since 1970";
+                return Err(Fault::new(RefusedReason::BadTime, detail));
+            }
         };
         i64::try_from(absolute).map(Timestamp).map_err(|_| {
             let detail = format!("{absolute} ns is outside the years 1678 to 2261");

@@ -75,7 +75,7 @@ impl ChannelAlarms {
             // The slope is looked at after every pair, so that its own 95 % are left by chance
             // every few weeks. Only a drift that the degree has been raised for is one.
             let significant = judgement.published.degree > 0
-                && judgement.slope.abs() > judgement.slope_k * judgement.slope_u;
+                && judgement.slope.abs() > judgement.slope_expanded(setup.coverage);
             let condition = match beyond(judgement.slope, limit, deadband) {
                 Condition::Holds if !significant => Condition::Between,
                 other => other,

@@ -17,7 +17,7 @@ use crate::time::{Duration, Timestamp};
 const DAY: f64 = 86_400e9;
 /// How fast the error drifts.
 pub(crate) fn drift(line: &RecentLine, coverage: f64) -> Drift {
-    let k = coverage_factor(line, coverage);
+    let k = quantile::student(coverage, line.degrees_of_freedom);
     Drift {
         rate: line.line.slope,
         expanded_uncertainty: k * line.line.slope_variance.max(0.0).sqrt(),
@@ -30,10 +30,10 @@ pub(crate) fn drift(line: &RecentLine, coverage: f64) -> Drift {
     }
 }
 
-/// When the error reaches its limit. Judged are the line and its band, widened by what is common to
-/// all pairs.
+/// When the error reaches its limit. Judged are the line and its band with k, widened by what is
+/// common to all pairs.
 pub(crate) fn time_to_limit(
-    line: Option<&RecentLine>,
+    line: Option<(&RecentLine, f64)>,
     judgement: &Judgement,
     setup: &ChannelSetup,
     now: Timestamp,
@@ -44,10 +44,9 @@ pub(crate) fn time_to_limit(
     if judgement.error.abs() >= limit {
         return TimeToLimit::Reached;
     }
-    let Some(recent) = line else {
+    let Some((recent, k)) = line else {
         return TimeToLimit::NoLine;
     };
-    let k = coverage_factor(recent, setup.coverage);
     let line = recent.line.with_common(judgement.common_variance);
     let horizon = horizon(recent);
     let from = now.since(recent.origin).days().max(0.0);
@@ -124,11 +123,6 @@ fn drift_that_matters(setup: &ChannelSetup, window_days: f64) -> Option<f64> {
 /// As far ahead as the line reaches back.
 fn horizon(line: &RecentLine) -> Timestamp {
     line.origin.plus(line.length())
-}
-
-/// k of the line's own degrees of freedom.
-fn coverage_factor(line: &RecentLine, coverage: f64) -> f64 {
-    quantile::student(coverage, line.degrees_of_freedom)
 }
 
 /// The instant so many days after `origin`; `None` beyond the range of timestamps.

@@ -49,9 +49,6 @@ pub(crate) struct Judgement {
     pub(crate) slope: f64,
     /// Standard uncertainty of the slope.
     pub(crate) slope_u: f64,
-    /// k of the slope: on the fit's own degrees of freedom, since what is common to all pairs does
-    /// not move it (GUM H.3.6).
-    pub(crate) slope_k: f64,
     /// Where ê ± U stands against the maximum permissible error.
     pub(crate) conformity: Conformity,
     /// The fit.
@@ -92,8 +89,6 @@ impl Judgement {
         let (u, nu, k) = sure(&curve);
         let slope = curve.coefficients.get(1).copied().unwrap_or(0.0) + 0.0;
         let slope_u = slope_variance(&curve).max(0.0).sqrt();
-        let slope_k =
-            quantile::student(scene.setup.coverage, published.degrees_of_freedom.max(1.0));
         let judgement = Self {
             level,
             error,
@@ -104,11 +99,16 @@ impl Judgement {
             nu,
             slope,
             slope_u,
-            slope_k,
             conformity: conformity::state(error, u, k * u, scene),
             published,
         };
         judgement.is_finite().then_some(judgement)
+    }
+
+    /// Expanded uncertainty of the slope: k on the fit's own degrees of freedom, since what is
+    /// common to all pairs does not move it (GUM H.3.6).
+    pub(crate) fn slope_expanded(&self, coverage: f64) -> f64 {
+        quantile::student(coverage, self.published.degrees_of_freedom) * self.slope_u
     }
 
     fn is_finite(&self) -> bool {
@@ -120,7 +120,6 @@ impl Judgement {
             self.nu,
             self.slope,
             self.slope_u,
-            self.slope_k,
         ];
         let published = &self.published;
         numbers

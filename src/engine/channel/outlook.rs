@@ -10,8 +10,9 @@
 use super::judgement::Judgement;
 use super::publishing::valid_until;
 use super::{Scene, forecast};
+use crate::cached::Cached;
 use crate::event::{
-    AsFound, Cadence, Conformity, Outlook, Output, Recalibration, TimeToLimit, Zone,
+    AsFound, Cadence, Conformity, Drift, Outlook, Output, Recalibration, TimeToLimit, Zone,
 };
 use crate::fit::Fit;
 use crate::fit::line::RecentLine;
@@ -34,6 +35,9 @@ pub(crate) struct OutlookStation {
     /// When to look whether it should be renewed or withdrawn.
     review: Option<Timestamp>,
     line: Option<RecentLine>,
+    /// What the line says of the drift.
+    #[serde(skip)]
+    drift: Cached<Option<Drift>>,
     /// The newest group of segments that the line rests on.
     group: Option<i64>,
     /// The last result as found.
@@ -96,6 +100,7 @@ impl OutlookStation {
             self.line = fit
                 .recent_line(declared_variance, judgement.level)
                 .filter(RecentLine::is_finite);
+            self.drift.forget();
         }
         let candidate = self.candidate(judgement, corrected_zone, scene);
         let fresh = segments_closed.then_some(candidate.time_to_limit);
@@ -132,6 +137,7 @@ impl OutlookStation {
     /// A new stretch begins: what lay ahead of the old one does not lie ahead of this.
     pub(crate) fn leave_stretch(&mut self, scene: &Scene<'_>, report: &mut Report<'_>) {
         self.line = None;
+        self.drift.forget();
         self.group = None;
         self.withdraw(scene.id, scene.now, report);
     }
@@ -145,6 +151,7 @@ impl OutlookStation {
         now: Timestamp,
         report: &mut Report<'_>,
     ) {
+        self.drift.forget();
         if has_outlook(after) {
             self.review = self.in_force.as_ref().map(|_| Timestamp(i64::MIN));
         } else {
@@ -168,7 +175,11 @@ impl OutlookStation {
     ) -> Outlook {
         let setup = scene.setup;
         let line = self.line.as_ref();
-        let time_to_limit = forecast::time_to_limit(line, judgement, setup, scene.now);
+        let drift = *self
+            .drift
+            .get_or_find(|| line.map(|line| forecast::drift(line, setup.coverage)));
+        let factor = drift.map(|drift| drift.coverage_factor);
+        let time_to_limit = forecast::time_to_limit(line.zip(factor), judgement, setup, scene.now);
         Outlook {
             channel: scene.id,
             issued: scene.now,
@@ -181,7 +192,7 @@ impl OutlookStation {
             rule: setup.decision_rule,
             conformity: judgement.conformity,
             corrected_zone,
-            drift: line.map(|line| forecast::drift(line, setup.coverage)),
+            drift,
             time_to_limit,
             recalibration: Recalibration {
                 by: forecast::recalibrate_by(time_to_limit, scene.now),

@@ -107,7 +107,7 @@ impl Screen {
         self.locked.is_some()
     }
 
-    /// Judges a pair. `window_from`: oldest pair in the window, where known.
+    /// Judges a pair. `window_from`: oldest pair in the window; wanted while locked out.
     pub(crate) fn judge(
         &mut self,
         innovation: Innovation,

@@ -208,8 +208,9 @@ impl Stretch {
         }
         let verdict = match innovation {
             Some(innovation) if setup.screening.enabled => {
-                let oldest = self.fit.window().oldest();
-                self.screen.judge(innovation, oldest, setup)
+                let window = self.fit.window();
+                let from = self.screen.is_locked_out().then(|| window.oldest());
+                self.screen.judge(innovation, from.flatten(), setup)
             }
             _ => Verdict::Pass,
         };

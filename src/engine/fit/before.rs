@@ -4,6 +4,7 @@
 //! Nothing is ever subtracted. Segments wholly older than the instant stay; every segment from the
 //! first other one on goes as a whole, and its older rows are for the caller to put back.
 
+use crate::cached::Cached;
 use crate::fit::Fit;
 use crate::fit::between::newest_group;
 use crate::fit::cut::Cut;
@@ -81,6 +82,8 @@ impl Fit {
             setup: self.setup,
             window,
             announced,
+            settled: Cached::default(),
+            closed_mean: Cached::default(),
         };
         (fit, gone)
     }

@@ -53,15 +53,13 @@ pub(crate) struct Groups<'a> {
 impl<'a> Groups<'a> {
     /// The groups of a window's segments.
     pub(crate) fn of(window: &'a Window) -> Self {
-        let keep = match window.cut() {
-            Cut::Time { keep, .. } | Cut::Rows { keep, .. } => keep as usize,
-        };
+        let keep = keep(window);
         let size = group_size(keep);
         let next = next_slice(window);
         let complete_below = next.div_euclid(size);
         let mut groups = Self {
             closed: Vec::with_capacity(MOST_GROUPS + 1),
-            open: None,
+            open: open_group(window),
             newest: None,
             when_full: 0.0,
         };
@@ -69,8 +67,9 @@ impl<'a> Groups<'a> {
         for segment in window.closed() {
             let group = segment.slice().div_euclid(size);
             if group >= complete_below {
-                join(&mut groups.open, segment);
-            } else if number == Some(group) {
+                break;
+            }
+            if number == Some(group) {
                 if let Some(last) = groups.closed.last_mut() {
                     last.take(segment);
                 }
@@ -78,9 +77,6 @@ impl<'a> Groups<'a> {
                 groups.closed.push(Group::of(segment));
                 number = Some(group);
             }
-        }
-        if let Some(segment) = window.open() {
-            join(&mut groups.open, segment);
         }
         groups.newest = number;
         if let Some(oldest) = window.closed().next() {
@@ -92,18 +88,36 @@ impl<'a> Groups<'a> {
     }
 }
 
+/// What of a window is not in a complete group yet: [`Groups::open`], without building the others.
+pub(crate) fn open_group(window: &Window) -> Option<Group<'_>> {
+    let size = group_size(keep(window));
+    let complete_below = next_slice(window).div_euclid(size);
+    let is_open = |segment: &&Segment| segment.slice().div_euclid(size) >= complete_below;
+    let incomplete = window.closed().rev().take_while(is_open).count();
+    let complete = window.closed().len() - incomplete;
+    let mut open = None;
+    for segment in window.closed().skip(complete).chain(window.open()) {
+        join(&mut open, segment);
+    }
+    open
+}
+
 /// Number of the newest complete group of a window, without building the groups.
 pub(crate) fn newest_group(window: &Window) -> Option<i64> {
-    let keep = match window.cut() {
-        Cut::Time { keep, .. } | Cut::Rows { keep, .. } => keep as usize,
-    };
-    let size = group_size(keep);
+    let size = group_size(keep(window));
     let complete_below = next_slice(window).div_euclid(size);
     window
         .closed()
         .rev()
         .map(|segment| segment.slice().div_euclid(size))
         .find(|&group| group < complete_below)
+}
+
+/// How many closed segments a full window has.
+fn keep(window: &Window) -> usize {
+    match window.cut() {
+        Cut::Time { keep, .. } | Cut::Rows { keep, .. } => keep as usize,
+    }
 }
 
 /// How many segments make a group.
@@ -145,6 +159,7 @@ impl<'a> Group<'a> {
 }
 
 /// The mean row of a group.
+#[derive(Debug)]
 pub(crate) struct MeanRow {
     /// Sum of its rows' weights.
     pub(crate) weight: f64,
@@ -183,6 +198,7 @@ impl Weighting {
 }
 
 /// What closed segments, each taken as one row, say about the degree.
+#[derive(Debug)]
 pub(crate) struct Between {
     /// S, closed groups.
     pub(crate) segments: usize,

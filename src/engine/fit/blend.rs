@@ -42,7 +42,8 @@ struct Blend {
 impl Fit {
     /// The mean over models; `None` where none of the claimed terms can be had from the closed
     /// segments.
-    pub(crate) fn blended(&self, groups: &Groups<'_>, row_variance: f64) -> Option<Published> {
+    pub(crate) fn blended(&self, row_variance: f64) -> Option<Published> {
+        let groups = &Groups::of(&self.window);
         let columns = self.window.columns();
         let forced = self.setup.forced_degree;
         let joint = Joint::of(&groups.closed, columns, self.richest(), forced.is_some())?;

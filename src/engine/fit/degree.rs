@@ -6,7 +6,7 @@
 //! quantities (see `claim`).
 
 use crate::fit::basis::Columns;
-use crate::fit::between::{Between, Groups, newest_group};
+use crate::fit::between::newest_group;
 use crate::fit::claim::{self, Claims};
 use crate::fit::climb::{Climb, Verdict};
 use crate::fit::gain::Contest;
@@ -78,11 +78,9 @@ impl Fit {
         if !is_time_only {
             return claim::decide(self, may_raise);
         }
-        let groups = Groups::of(&self.window);
-        let highest = self.highest_degree();
-        let when_full = groups.when_full;
-        let contest = Contest::of(&Between::of(&groups.closed, highest, false)?);
-        drop(groups);
+        let settled = self.settled();
+        let when_full = settled.when_full;
+        let contest = Contest::of(settled.between.as_ref()?);
         let verdict =
             self.announced
                 .zero

@@ -17,19 +17,18 @@
 //! With fewer than three, the scatter of means says nothing yet and that of all rows stands in,
 //! inflated as for the highest correlation that is ever assumed: wide, but a number.
 
-use crate::event::{CriterionValues, WindowSeen};
+use crate::event::WindowSeen;
 use crate::fit::basis::MAX_INFLUENCES;
-use crate::fit::between::{Between, Groups};
+use crate::fit::between::{Between, Group, Groups, open_group};
 use crate::fit::correlation::{Caution, cautious, effective_sample_size, variance_inflation};
 use crate::fit::factor::{Factor, PerColumn};
-use crate::fit::gain::Contest;
 use crate::fit::joint::{Joint, Worth};
 use crate::fit::model::Model;
-use crate::fit::turn::allowance;
-use crate::fit::weights::{Rival, Weights};
+use crate::fit::weights::Weights;
 use crate::fit::{Fit, ModelWeight, Published};
 use crate::time::Timestamp;
 use nalgebra::DMatrix;
+use std::borrow::Cow;
 
 /// How cautiously r₁ is taken for the uncertainty: free of bias, and then its upper 90 % limit (the
 /// normal quantile 1.28). Simulated on other seeds than those of `tests/statistics/`: with one
@@ -64,6 +63,7 @@ pub struct Plain {
 }
 
 /// The scatter that the uncertainty rests on.
+#[derive(Clone, Copy, Debug)]
 pub(super) struct Scatter {
     /// Variance of a row of weight 1.
     pub(super) variance: f64,
@@ -122,8 +122,6 @@ struct Member {
     weight: f64,
     /// In u².
     spread: f64,
-    /// ln of `spread`, where degree 0's is 0.
-    logarithm: f64,
     coefficients: PerColumn,
     /// R⁻¹ of its columns.
     root: DMatrix<f64>,
@@ -171,63 +169,58 @@ impl Fit {
     /// (what was declared of noise and reference), in the unit of the errors squared.
     #[must_use]
     pub fn published_at_least(&self, row_variance: f64) -> Option<Published> {
-        let origin = self.window.newest()?;
-        let from = self.window.oldest()?;
         if self.window.rows() < 2 {
             return None;
         }
-        let forced = self.setup.forced_degree;
-        let highest = self.highest_degree();
-        let groups = Groups::of(&self.window);
-        if !self.model().is_zero_only()
-            && let Some(blended) = self.blended(&groups, row_variance)
-        {
-            return Some(blended);
-        }
-        let judged = Between::of(&groups.closed, highest, forced.is_some());
-        let (mut factor, level) = reweighted(&groups, judged.as_ref())?;
+        let is_plain = self.model().is_zero_only();
+        let blended = (!is_plain).then(|| self.blended(row_variance)).flatten();
+        blended.or_else(|| self.over_degrees(row_variance))
+    }
+
+    /// The mean where there is nothing but time.
+    fn over_degrees(&self, row_variance: f64) -> Option<Published> {
+        let origin = self.window.newest()?;
+        let settled = self.settled();
+        let closed = self.closed_mean();
+        let judged = settled.between.as_ref();
+        let open = open_group(&self.window);
+        let (mut factor, level) = with_open(closed.rows.clone(), open.as_ref(), judged)?;
         self.count_days_from(origin, &mut factor);
-        let scatter = self.scatter(judged.as_ref()).at_least(row_variance);
-        let largest = match (&judged, forced) {
-            (_, Some(_)) => self.bearable(highest),
-            (Some(judged), None) => judged.largest,
-            (None, None) => 0,
-        };
-        let members = members(
-            &factor,
-            largest,
-            forced.is_some(),
-            &scatter,
-            judged.as_ref(),
-        )?;
-        let (mut coefficients, covariance) = mixed(&members, largest + 1, &scatter);
-        let turn_variance = match (&judged, forced) {
-            (Some(between), None) => {
-                let now = self.window.frame().scaled(origin);
-                turn_variance(between, &members, coefficients[0], now, &scatter)
+        let scatter = closed.scatter.unwrap_or_else(|| self.plain_scatter());
+        let scatter = scatter.at_least(row_variance);
+        let (largest, weights) = match (&closed.weights, self.setup.forced_degree) {
+            (Some(weights), None) => (weights.mean.len() - 1, Cow::Borrowed(weights)),
+            (None, None) => (0, Cow::Owned(Weights::all_on_last(1))),
+            // The segments may bear fewer degrees than the rows: nothing is weighed.
+            (_, Some(_)) => {
+                let largest = self.bearable(self.highest_degree());
+                (largest, Cow::Owned(Weights::all_on_last(largest + 1)))
             }
-            _ => 0.0,
         };
+        let members = members(&factor, &weights)?;
+        let (mut coefficients, covariance) = mixed(&members, largest + 1, &scatter);
+        let curves: Vec<f64> = members.iter().map(|m| m.coefficients[0]).collect();
+        let now = self.window.frame().scaled(origin);
+        let turn_variance = judged.map_or(0.0, |between| {
+            between.allowance(&closed.turns, now, &curves, coefficients[0])
+        });
         coefficients[0] += level;
         Some(Published {
             origin,
             degree: self.degree(),
-            models: zero_only(&members),
-            weights: members.iter().map(|member| member.weight).collect(),
+            models: zero_only(&weights.mean),
+            weights: weights.mean.clone(),
             coefficients: normalised(&coefficients.as_slice()[..=largest]),
             covariance: rows_of(&covariance),
             turn_variance: turn_variance + 0.0,
             degrees_of_freedom: scatter.degrees_of_freedom,
             residual_sd: self.rows_sd(largest),
-            criterion: match (&judged, forced) {
-                (Some(judged), None) => Contest::of(judged).criterion_values(self.setup.criterion),
-                _ => CriterionValues::default(),
-            },
+            criterion: closed.criterion.clone(),
             window: WindowSeen {
-                from,
+                from: self.window.oldest()?,
                 to: origin,
                 pairs: self.window.rows(),
-                segments: u32::try_from(groups.closed.len()).unwrap_or(u32::MAX),
+                segments: u32::try_from(settled.segments).unwrap_or(u32::MAX),
                 effective_sample_size: scatter.effective,
                 lag_one: judged.map_or(0.0, |judged| judged.lag_one),
             },
@@ -262,11 +255,9 @@ impl Fit {
         (self.window.total().nested_rss()[degree] / freedom.max(1.0)).sqrt()
     }
 
-    fn scatter(&self, judged: Option<&Between>) -> Scatter {
-        let segments = judged.map_or(0, |judged| judged.segments);
-        if let Some(scatter) = judged.and_then(Scatter::of) {
-            return scatter;
-        }
+    /// The scatter to count with while segments say nothing yet.
+    fn plain_scatter(&self) -> Scatter {
+        let segments = self.settled().between.as_ref().map_or(0, |it| it.segments);
         let sd = self.rows_sd(0);
         let r = cautious(1.0, 1, segments, PUBLISHING);
         Scatter {
@@ -280,47 +271,58 @@ impl Fit {
 
 /// All groups merged, each weighted as the between-segments problem says, at the level returned.
 pub(super) fn reweighted(groups: &Groups<'_>, between: Option<&Between>) -> Option<(Factor, f64)> {
-    let newest = groups.open.as_ref().or(groups.closed.last())?;
-    let level = newest.level;
-    let mut merged = Factor::new(newest.factor.columns());
-    for group in groups.closed.iter().chain(&groups.open) {
-        let weight = group.factor.weight_sum();
-        let multiplier = between.map_or(1.0, |between| between.weighting.multiplier(weight));
-        let mut factor = group.factor.clone().into_owned();
-        factor.multiply(multiplier.sqrt());
-        merged.merge_level(&factor, level - group.level);
-    }
-    Some((merged, level))
+    let closed = closed_rows(&groups.closed, between);
+    with_open(closed, groups.open.as_ref(), between)
 }
 
-/// The degrees 0 … `largest` with their weights, or all weight on `largest` if `forced`; `None` if
-/// the rows are not at enough different times.
-fn members(
-    factor: &Factor,
-    largest: usize,
-    forced: bool,
-    scatter: &Scatter,
-    judged: Option<&Between>,
-) -> Option<Vec<Member>> {
-    let weights = match judged {
-        Some(between) if !forced => {
-            let rival = |degree| Rival {
-                rss: between.grades.known(degree),
-                coefficients: degree + 1,
-            };
-            let rivals: Vec<Rival> = (0..=largest).map(rival).collect();
-            Weights::of(&rivals, scatter.effective)
+/// The same of the closed groups, at the newest one's level; `None` without any.
+pub(super) fn closed_rows(
+    closed: &[Group<'_>],
+    between: Option<&Between>,
+) -> Option<(Factor, f64)> {
+    let newest = closed.last()?;
+    let mut merged = Factor::new(newest.factor.columns());
+    for group in closed {
+        merge_weighted(&mut merged, group, newest.level, between);
+    }
+    Some((merged, newest.level))
+}
+
+/// These with the open group.
+fn with_open(
+    closed: Option<(Factor, f64)>,
+    open: Option<&Group<'_>>,
+    between: Option<&Between>,
+) -> Option<(Factor, f64)> {
+    let Some(open) = open else { return closed };
+    let mut merged = match closed {
+        Some((mut merged, level)) => {
+            merged.move_level(open.level - level);
+            merged
         }
-        // With a forced degree the segments may bear fewer degrees than the rows: nothing is
-        // weighed.
-        _ => Weights::all_on_last(largest + 1),
+        None => Factor::new(open.factor.columns()),
     };
-    (0..=largest)
-        .map(|k| {
+    merge_weighted(&mut merged, open, open.level, between);
+    Some((merged, open.level))
+}
+
+/// Merges a group, weighted, into rows at this level.
+fn merge_weighted(merged: &mut Factor, group: &Group<'_>, level: f64, between: Option<&Between>) {
+    let weight = group.factor.weight_sum();
+    let multiplier = between.map_or(1.0, |between| between.weighting.multiplier(weight));
+    let mut factor = group.factor.as_ref().clone();
+    factor.multiply(multiplier.sqrt());
+    merged.merge_level(&factor, level - group.level);
+}
+
+/// The degrees with these weights, from 0 on; `None` if the rows are not at enough different times.
+fn members(factor: &Factor, weights: &Weights) -> Option<Vec<Member>> {
+    let shares = weights.mean.iter().zip(&weights.spread).enumerate();
+    shares
+        .map(|(k, (&weight, &spread))| {
             Some(Member {
-                weight: weights.mean[k],
-                spread: weights.spread[k],
-                logarithm: weights.logarithms[k],
+                weight,
+                spread,
                 coefficients: factor.solve(k + 1)?,
                 root: factor.covariance_factor(k + 1)?,
             })
@@ -329,33 +331,18 @@ fn members(
 }
 
 /// The weights by model.
-fn zero_only(members: &[Member]) -> Vec<ModelWeight> {
+fn zero_only(weights: &[f64]) -> Vec<ModelWeight> {
     (0_u8..)
-        .zip(members)
-        .map(|(degree, member)| ModelWeight {
+        .zip(weights)
+        .map(|(degree, &weight)| ModelWeight {
             model: Model {
                 degree,
                 span: None,
                 influences: [false; MAX_INFLUENCES],
             },
-            weight: member.weight,
+            weight,
         })
         .collect()
-}
-
-/// What turns add to u² at scaled time `now`, the newest pair's, where ê is `mean`, counted from
-/// the same level as the members.
-fn turn_variance(
-    between: &Between,
-    members: &[Member],
-    mean: f64,
-    now: f64,
-    scatter: &Scatter,
-) -> f64 {
-    let turns = between.turns(now, scatter.effective);
-    let curves: Vec<f64> = members.iter().map(|m| m.coefficients[0]).collect();
-    let logarithms: Vec<f64> = members.iter().map(|m| m.logarithm).collect();
-    allowance(&turns, &curves, &logarithms, mean)
 }
 
 /// `β̄ = Σ w_k β_k` and `C = Σ v_k (C_k + (β_k − β̄)(β_k − β̄)ᵀ)`, so that u²(t) = φᵀCφ is

@@ -21,6 +21,7 @@
 //! - [`published`]: the form of what is published
 //! - `curve`: the same at one level
 //! - `weights`: how much competing models weigh
+//! - `settled`: what closed segments say, kept until they change
 //! - [`mean`]: the published mean over degrees and its uncertainty
 //! - `turn`: what a drift that turned within the window would change
 //! - [`mod@line`]: the straight line of recent pairs that forecasts rest on
@@ -65,11 +66,13 @@ pub mod published;
 mod row;
 mod seen;
 pub mod segment;
+mod settled;
 mod spare;
 mod turn;
 mod weights;
 pub mod window;
 
+use crate::cached::Cached;
 use crate::event::Evidence;
 use crate::fit::basis::{Columns, MAX_SPAN_DEGREE, MAX_TIME_DEGREE, MOST_INFLUENCES};
 pub use crate::fit::centre::Centre;
@@ -79,6 +82,7 @@ pub use crate::fit::model::Model;
 pub use crate::fit::published::{ModelWeight, Published, SpanRefusal, Terms};
 pub use crate::fit::row::{Inserted, Row};
 pub use crate::fit::seen::Seen;
+use crate::fit::settled::{ClosedMean, Settled};
 use crate::fit::window::{Cut, Window};
 use crate::setup::{FitSetup, WindowLength};
 use serde::{Deserialize, Serialize};
@@ -89,6 +93,10 @@ pub struct Fit {
     setup: FitSetup,
     window: Window,
     announced: Announced,
+    #[serde(skip)]
+    settled: Cached<Settled>,
+    #[serde(skip)]
+    closed_mean: Cached<ClosedMean>,
 }
 
 /// One term of the announced model.
@@ -139,6 +147,8 @@ impl Fit {
                 setup.forced_degree.map_or(0, |forced| forced.min(highest)),
                 columns,
             ),
+            settled: Cached::default(),
+            closed_mean: Cached::default(),
         }
     }
 
@@ -146,6 +156,7 @@ impl Fit {
     pub fn edit(&mut self, setup: FitSetup) {
         debug_assert!(self.setup.has_same_rows(&setup), "rows that mean the same");
         self.setup = setup;
+        self.unsettle();
     }
 
     /// The window that the fit looks at.
@@ -156,14 +167,18 @@ impl Fit {
 
     /// Takes one pair.
     pub fn insert(&mut self, row: Row) -> Inserted {
-        if row.can_be_held(self.window.columns()) {
-            self.window.insert(&row)
-        } else {
-            Inserted {
+        if !row.can_be_held(self.window.columns()) {
+            return Inserted {
                 out_of_range: true,
                 ..Inserted::default()
-            }
+            };
         }
+        let coordinates = self.window.coordinates();
+        let inserted = self.window.insert(&row);
+        if inserted.closed || coordinates != self.window.coordinates() {
+            self.unsettle();
+        }
+        inserted
     }
 
     /// The forced degree, or the highest that may be announced.
@@ -188,7 +203,7 @@ impl Fit {
             announced: self.model(),
             span_side: self.setup.span_side(),
             centre: self.window.centre(),
-            learned: self.window.seen(),
+            learned: self.seen(),
             span_refused: self.announced.claims.refused,
         }
     }

@@ -63,7 +63,7 @@ impl Row {
 /// What the entries of a row are: which columns there are, and where time, the level and the
 /// influence quantities count from. The one way from a [`Row`] to numbers that a factor of the
 /// window, or coefficients solved from one, can be used with.
-#[derive(Clone, Copy, Debug)]
+#[derive(Clone, Copy, Debug, PartialEq)]
 pub(crate) struct Coordinates {
     pub(crate) columns: Columns,
     pub(crate) frame: Frame,

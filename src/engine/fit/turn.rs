@@ -12,7 +12,7 @@
 //! newest sixteenth is as much less likely beforehand as that is shorter.
 
 use crate::fit::between::Between;
-use crate::fit::factor::PerColumn;
+use crate::fit::factor::{MAX_COLUMNS, PerColumn};
 use crate::math;
 
 /// Highest degree that a turn is put on: a parabola with a line on top is too pliable to tell much.
@@ -27,14 +27,20 @@ const LEAST_SEGMENTS: usize = 12;
 const LEAST_OWN: f64 = 1e-9;
 
 /// One model with a turn, compared with its degree's curve.
-#[derive(Clone, Copy, Debug)]
+#[derive(Clone, Debug)]
 pub(crate) struct Turn {
     /// The degree that it stands on.
     pub(crate) degree: usize,
-    /// By how much it moves that degree's curve at the instant asked for.
-    pub(crate) shift: f64,
+    /// Scaled time at which the line on top starts.
+    start: f64,
+    /// Coefficient of that line.
+    coefficient: f64,
+    /// Of the line with the basis Q of the largest model.
+    basis: Vec<f64>,
     /// ln of its weight, where degree 0's is 0.
     pub(crate) logarithm: f64,
+    /// Its weight; those of all turns and degrees sum to 1.
+    weight: f64,
 }
 
 /// Sums over the groups after a turn, in units of their standard deviations, of the line x with
@@ -46,21 +52,14 @@ struct Sums {
 }
 
 impl Between {
-    /// Models with a turn, as they are at scaled time `now` on a sample of `effective`; none where
-    /// there are few segments or only degree 0 is looked at.
-    pub(crate) fn turns(&self, now: f64, effective: f64) -> Vec<Turn> {
+    /// Models with a turn on a sample of `effective`, beside degrees with these logarithms of their
+    /// weights; none where there are few segments or only degree 0 is looked at.
+    pub(crate) fn turns(&self, effective: f64, logarithms: &[f64]) -> Vec<Turn> {
         let mut turns = Vec::new();
         if self.segments < LEAST_SEGMENTS || self.largest == 0 {
             return turns;
         }
-        let powers: Vec<f64> = (0..=self.largest)
-            .scan(1.0, |power, _| {
-                let this = *power;
-                *power *= now;
-                Some(this)
-            })
-            .collect();
-        let (Some(basis), Some(here)) = (self.basis(), self.factor.whitened(&powers)) else {
+        let Some(basis) = self.basis() else {
             return turns;
         };
         for halving in 1..=HALVINGS {
@@ -72,21 +71,23 @@ impl Between {
             let start = 0.5 * (self.rows[first - 1].time() + self.rows[first].time());
             let sums = self.sums(first, start, &basis);
             let share = halving as f64 * std::f64::consts::LN_2;
-            turns.extend(
-                self.turned(&sums, now - start, here.as_slice())
-                    .into_iter()
-                    .filter_map(|(degree, shift, rss)| {
-                        let log_likelihood = 0.5 * effective * self.ln_ratio(0, rss)?;
-                        // The degree's coefficients beyond the constant, and the line's.
-                        let penalty = degree as f64 + 1.0 + share;
-                        Some(Turn {
-                            degree,
-                            shift,
-                            logarithm: log_likelihood - penalty,
-                        })
-                    }),
-            );
+            turns.extend(self.turned(&sums).into_iter().filter_map(
+                |(degree, coefficient, rss)| {
+                    let log_likelihood = 0.5 * effective * self.ln_ratio(0, rss)?;
+                    // The degree's coefficients beyond the constant, and the line's.
+                    let penalty = degree as f64 + 1.0 + share;
+                    Some(Turn {
+                        degree,
+                        start,
+                        coefficient,
+                        basis: sums.basis.clone(),
+                        logarithm: log_likelihood - penalty,
+                        weight: 0.0,
+                    })
+                },
+            ));
         }
+        weigh(&mut turns, logarithms);
         turns
     }
 
@@ -116,18 +117,14 @@ impl Between {
         sums
     }
 
-    /// For each degree: by how much the line on top moves its curve at an instant, and what
-    /// residual sum of squares it leaves. The line reaches `reach` there, and the basis `here`.
+    /// For each degree: the coefficient of the line on top, and what residual sum of squares it
+    /// leaves.
     ///
     /// For degree k, x° = x less its projections on the first k + 1 columns of Q; the line's
     /// coefficient is x°ᵀr/|x°|², and RSS falls by (x°ᵀr)²/|x°|². From one degree to the next
     /// lower, the projection on one column and what that column explains come back.
-    fn turned(&self, sums: &Sums, reach: f64, here: &[f64]) -> Vec<(usize, f64, f64)> {
+    fn turned(&self, sums: &Sums) -> Vec<(usize, f64, f64)> {
         let projected = |k: usize| sums.basis[..=k].iter().map(|q| q * q).sum::<f64>();
-        let reached = |k: usize| -> f64 {
-            let basis = sums.basis.iter().zip(here);
-            basis.take(k + 1).map(|(x, q)| x * q).sum()
-        };
         let explained = |k: usize| -> f64 {
             (k + 1..=self.largest)
                 .map(|j| sums.basis[j] * self.factor.entry(j, self.factor.columns()))
@@ -139,30 +136,52 @@ impl Between {
                 let own = line - projected(k);
                 let with = sums.residual + explained(k);
                 let coefficient = with / own;
-                let shift = coefficient * (reach - reached(k));
                 let rss = (self.grades.rss[k] - coefficient * with).max(0.0) + self.grades.rounding;
-                (own > LEAST_OWN * line && shift.is_finite()).then_some((k, shift, rss))
+                (own > LEAST_OWN * line && coefficient.is_finite()).then_some((k, coefficient, rss))
             })
             .collect()
     }
+
+    /// `Σ ω (ê_turn − ê)²`: what turns add to u² at scaled time `now`, where `curves` are the
+    /// degrees' values there and `mean` is ê.
+    pub(crate) fn allowance(&self, turns: &[Turn], now: f64, curves: &[f64], mean: f64) -> f64 {
+        let mut powers = [1.0; MAX_COLUMNS];
+        for place in 1..=self.largest {
+            powers[place] = powers[place - 1] * now;
+        }
+        let Some(here) = self.factor.whitened(&powers[..=self.largest]) else {
+            return 0.0;
+        };
+        turns
+            .iter()
+            .map(|turn| {
+                let apart = curves[turn.degree] + turn.shift(now, &here) - mean;
+                turn.weight * apart * apart
+            })
+            .sum()
+    }
 }
 
-/// `Σ ω (ê_turn − ê)²`: what turns add to u² where `curves` are the degrees' values, `logarithms`
-/// the logarithms of their weights and `mean` is ê; ω sum to 1 over degrees and turns together.
-pub(crate) fn allowance(turns: &[Turn], curves: &[f64], logarithms: &[f64], mean: f64) -> f64 {
+impl Turn {
+    /// By how much it moves its degree's curve at scaled time `now`, where Q's row is `here`.
+    fn shift(&self, now: f64, here: &PerColumn) -> f64 {
+        let basis = self.basis.iter().zip(here.iter());
+        let reached: f64 = basis.take(self.degree + 1).map(|(x, q)| x * q).sum();
+        self.coefficient * (now - self.start - reached)
+    }
+}
+
+/// Weighs turns and degrees together by the logarithms of their weights.
+fn weigh(turns: &mut [Turn], logarithms: &[f64]) {
     let all = logarithms
         .iter()
         .copied()
         .chain(turns.iter().map(|turn| turn.logarithm));
     let highest = all.clone().fold(f64::MIN, f64::max);
     let sum: f64 = all.map(|logarithm| math::exp(logarithm - highest)).sum();
-    turns
-        .iter()
-        .map(|turn| {
-            let apart = curves[turn.degree] + turn.shift - mean;
-            math::exp(turn.logarithm - highest) / sum * apart * apart
-        })
-        .sum()
+    for turn in turns {
+        turn.weight = math::exp(turn.logarithm - highest) / sum;
+    }
 }
 
 #[cfg(test)]
@@ -210,7 +229,11 @@ mod tests {
             .window()
             .frame()
             .scaled(fit.window().newest().expect("rows"));
-        let turns = between.turns(now, 64.0);
+        let turns = between.turns(64.0, &[0.0; 3]);
+        let powers: Vec<f64> = (0..3)
+            .map(|k| crate::math::pow(now, f64::from(k)))
+            .collect();
+        let here = between.factor.whitened(&powers).expect("independent");
         assert_eq!(turns.len(), HALVINGS * (HIGHEST_DEGREE + 1));
         for (place, turn) in turns.iter().enumerate() {
             let halving = 1 + place / (HIGHEST_DEGREE + 1);
@@ -238,7 +261,12 @@ mod tests {
                     }
             };
             let shift = value(&with, columns + 1) - value(&without, columns);
-            assert_relative_eq!(turn.shift, shift, epsilon = 1e-9, max_relative = 1e-6);
+            assert_relative_eq!(
+                turn.shift(now, &here),
+                shift,
+                epsilon = 1e-9,
+                max_relative = 1e-6
+            );
             let ratio = between.grades.rss[0] / with.nested_rss()[columns];
             let penalty = turn.degree as f64 + 1.0 + halving as f64 * std::f64::consts::LN_2;
             let expected = 32.0 * crate::math::ln(ratio) - penalty;

@@ -174,11 +174,11 @@ impl Window {
     /// Oldest phenomenon time in the window.
     #[must_use]
     pub fn oldest(&self) -> Option<Timestamp> {
-        self.closed
-            .iter()
-            .chain(&self.open)
-            .map(Segment::first)
-            .min()
+        let mut segments = self.closed.iter().chain(&self.open).map(Segment::first);
+        match self.cut {
+            Cut::Time { .. } => segments.next(),
+            Cut::Rows { .. } => segments.min(),
+        }
     }
 
     /// Newest phenomenon time in the window. (In a row-counted window fed with late rows only, that

@@ -31,7 +31,7 @@ pub(super) fn error_limit(judgement: &Judgement, limit: f64, setup: &ChannelSetu
 pub(super) fn drift_rate(judgement: &Judgement, limit: f64, setup: &ChannelSetup) -> Said {
     let unit = format!("{}/d", setup.unit);
     let slope = readable(judgement.slope);
-    let slope_u = readable(judgement.slope_k * judgement.slope_u);
+    let slope_u = readable(judgement.slope_expanded(setup.coverage));
     let limit_read = readable(limit);
     Said {
         value: judgement.slope,

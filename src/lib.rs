@@ -10,6 +10,7 @@
 //! - [`keeper`]: the engine in step with its record and its outbox
 //! - [`daemon`]: the loop around the engine
 //! - [`import`]: recordings as inputs of the engine
+//! - [`replay`]: a record run again, as an audit or with another configuration
 //! - `demo`: an invented plant held true on one machine
 //! - [`command`]: the command line
 
@@ -24,4 +25,5 @@ pub mod import;
 pub mod keeper;
 pub mod payload;
 pub mod record;
+pub mod replay;
 pub mod state;

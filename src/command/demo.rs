@@ -3,6 +3,7 @@
 use super::Ending;
 use crate::demo::{self, DemoError, DemoOptions};
 use clap::Args;
+use std::path::PathBuf;
 
 /// Arguments of the demo.
 #[derive(Debug, Args)]
@@ -14,6 +15,10 @@ pub(super) struct Demo {
     /// Decides everything that the plant does.
     #[arg(long, default_value_t = 1)]
     seed: u64,
+    /// Keep the record in this folder, which must be empty or not exist: to look into it, verify
+    /// and replay it. Without it the record goes with the demo.
+    #[arg(long, value_name = "FOLDER")]
+    record: Option<PathBuf>,
     /// The result as JSON.
     #[arg(long)]
     json: bool,
@@ -28,6 +33,7 @@ impl Demo {
         let options = DemoOptions {
             days: self.days,
             seed: self.seed,
+            record: self.record.clone(),
             json: self.json,
             expect_the_impossible: self.expect_the_impossible,
         };

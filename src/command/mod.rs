@@ -6,6 +6,7 @@
 //! - `demo`: an invented plant held true on this machine
 //! - `tell`: an order to a running daemon
 //! - `verify`: whether a record is whole
+//! - `replay`: a record run again, as an audit or with another configuration
 //! - `log`: what an operator reads while the daemon runs
 
 pub mod check;
@@ -16,9 +17,11 @@ mod demo;
 
 mod log;
 mod progress;
+mod replay;
 mod run;
 mod tell;
 mod verify;
+mod when;
 
 use clap::{Parser, Subcommand};
 use std::path::PathBuf;
@@ -109,6 +112,14 @@ enum Command {
         Exit code: 0 whole, 1 not whole (the first broken link of each file is named), 2 wrong \
         usage, 3 the folder can't be read.")]
     Verify(verify::Verify),
+    /// Run the engine again over a record and compare every output bit for bit; with --config, try
+    /// another configuration on the recorded readings.
+    #[command(after_help = "Examples:\n  holdtrue replay /var/lib/holdtrue\n  \
+        holdtrue replay /var/lib/holdtrue --from 2026-12-01 --to 2026-12-03\n  \
+        holdtrue replay /var/lib/holdtrue --config candidate.toml\n\n\
+        Exit code: 0 all identical (or tried), 1 different, or written by another arithmetic, 2 \
+        wrong\nusage or configuration, 3 the folder can't be read.")]
+    Replay(replay::Replay),
 }
 
 impl Command {
@@ -138,5 +149,6 @@ pub fn run(arguments: Arguments) -> Ending {
         Command::Check { config, json } => check::run(&config, json, &mut std::io::stdout()),
         Command::Tell(tell) => tell.run(),
         Command::Verify(verify) => verify.run(),
+        Command::Replay(replay) => replay.run(),
     }
 }

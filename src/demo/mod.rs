@@ -21,6 +21,7 @@ mod table;
 mod worker;
 
 use std::fmt;
+use std::path::PathBuf;
 
 pub use stage::run;
 
@@ -32,12 +33,14 @@ pub const DAYS: (f64, f64) = (20.0, 120.0);
 const SCENARIO: &str = "harrow-mere";
 
 /// What the demo is to do.
-#[derive(Clone, Copy, Debug, PartialEq)]
+#[derive(Clone, Debug, PartialEq)]
 pub struct DemoOptions {
     /// How long; `None`: until Ctrl-C, a day a second.
     pub days: Option<f64>,
     /// Decides everything the plant does.
     pub seed: u64,
+    /// Where the record is kept; `None`: nowhere.
+    pub record: Option<PathBuf>,
     /// The result as JSON.
     pub json: bool,
     /// Expect an alarm that nothing raises, to prove that the verdict can be "no".

@@ -17,7 +17,7 @@ use holdtrue_simulators::truth::{ExpectedAlarm, Subject, Truth};
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
 use std::io::IsTerminal;
 use std::net::SocketAddr;
-use std::path::Path;
+use std::path::{Path, PathBuf};
 use std::time::Duration;
 
 /// Length that the plant is laid out for when nobody says one.
@@ -43,7 +43,7 @@ pub fn run(options: &DemoOptions) -> Result<bool, DemoError> {
     let scenario = scenario::find(SCENARIO)
         .ok_or_else(|| DemoError::Part("plant", format!("no scenario {SCENARIO:?}")))?;
     let plant = Plant::new(scenario, options.seed, options.days.unwrap_or(LAYOUT_DAYS));
-    let (heard, end) = perform(&plant, options.days)?;
+    let (heard, end) = perform(&plant, options.days, options.record.as_deref())?;
 
     let endless = plant.clone().endless();
     let days = end.since(instant(0.0)).days();
@@ -86,10 +86,18 @@ fn expect_the_impossible(truth: &mut Truth) {
 }
 
 /// Runs all parts; returns what was heard, and the plant's time up to which it was published.
-fn perform(plant: &Plant, days: Option<f64>) -> Result<(Heard, Timestamp), DemoError> {
-    let folder = tempfile::tempdir().map_err(|error| failed("temporary folder", &error))?;
+fn perform(
+    plant: &Plant,
+    days: Option<f64>,
+    record: Option<&Path>,
+) -> Result<(Heard, Timestamp), DemoError> {
+    let passing = tempfile::tempdir().map_err(|error| failed("temporary folder", &error))?;
+    let record = match record {
+        Some(folder) => kept(folder)?,
+        None => passing.path().join("record"),
+    };
     let broker = Broker::start()?;
-    let settings = configure(plant, broker.address, folder.path())?;
+    let settings = configure(plant, broker.address, &record)?;
     let runtime = tokio::runtime::Builder::new_current_thread()
         .enable_all()
         .build()
@@ -109,16 +117,35 @@ fn perform(plant: &Plant, days: Option<f64>) -> Result<(Heard, Timestamp), DemoE
     })
 }
 
-/// The daemon's configuration, through the same door as an operator's file.
-fn configure(plant: &Plant, broker: SocketAddr, folder: &Path) -> Result<Configuration, DemoError> {
+/// Makes the folder for a record that is kept, if nothing is in it.
+fn kept(folder: &Path) -> Result<PathBuf, DemoError> {
+    let unusable = |error: &dyn std::fmt::Display| {
+        DemoError::Usage(format!("--record {}: {error}", folder.display()))
+    };
+    std::fs::create_dir_all(folder).map_err(|error| unusable(&error))?;
+    let mut entries = std::fs::read_dir(folder).map_err(|error| unusable(&error))?;
+    if entries.next().is_some() {
+        return Err(unusable(
+            &"the folder is not empty; name another, or one that does not exist",
+        ));
+    }
+    folder.canonicalize().map_err(|error| unusable(&error))
+}
+
+/// The daemon's configuration, through the same door as an operator's file. It stands beside the
+/// record, so that another can be made from it and tried.
+fn configure(plant: &Plant, broker: SocketAddr, record: &Path) -> Result<Configuration, DemoError> {
     let surroundings = Surroundings {
         broker_url: format!("mqtt://{broker}"),
-        record_folder: folder.join("record").display().to_string(),
+        record_folder: record.display().to_string(),
         commit: "100 ms",
         corrected: last_sensor(plant),
     };
     let text = text(&plant.scenario, plant.days, &surroundings);
-    configuration::from_text(&text, "demo.toml", folder, instant(0.0))
+    std::fs::create_dir_all(record)
+        .and_then(|()| std::fs::write(record.join("demo.toml"), &text))
+        .map_err(|error| failed("record folder", &error))?;
+    configuration::from_text(&text, "demo.toml", record, instant(0.0))
         .map_err(|problems| failed("configuration", &problems))
 }
 

@@ -65,6 +65,9 @@ impl<T> Keeper<T> {
     ///
     /// # Errors
     /// As [`Keeper::open`].
+    ///
+    /// # Panics
+    /// Never: nobody can set the flag to stop.
     pub fn open_on(
         folder: &Path,
         disk: Box<dyn Disk>,
@@ -101,7 +104,8 @@ impl<T> Keeper<T> {
             rhythm: Rhythm::new(now, saved_input),
             outputs: Vec::new(),
         };
-        if keeper.is_turn_due(now) {
+        // The first file waits for the first commit: which day it is of may not be known yet.
+        if !keeper.record.is_new() && keeper.is_turn_due(now) {
             keeper.turn(now)?;
         }
         keeper.record.note_start();
@@ -169,6 +173,14 @@ impl<T> Keeper<T> {
     /// # Errors
     /// When the record can't be written.
     pub fn commit(&mut self, now: Timestamp) -> Result<Vec<T>, RecordError> {
+        if self.record.is_new() {
+            // Nothing is lost with what was noted so far: it came from no message.
+            let day_is_unknown = self.setup.clock == Clock::Readings && self.engine.now().is_none();
+            if self.owed.is_empty() && day_is_unknown {
+                return Ok(Vec::new());
+            }
+            self.begin(now)?;
+        }
         self.save_if_due(now);
         self.record.commit(now)?;
         if self.rhythm.committed(now, self.record.last_input()) {
@@ -221,6 +233,19 @@ impl<T> Keeper<T> {
         }
     }
 
+    /// Begins the first file, with an engine that was told nothing.
+    fn begin(&mut self, now: Timestamp) -> Result<(), RecordError> {
+        let state = saved::whole(&Engine::new(), &[]);
+        self.rhythm.opening(&state);
+        self.record.turn(Turn {
+            now,
+            day: self.day_instant(now),
+            setup: &Setup::default(),
+            state,
+            waiting: Vec::new(),
+        })
+    }
+
     fn turn(&mut self, now: Timestamp) -> Result<(), RecordError> {
         let state = saved::whole(&self.engine, &self.wanted);
         self.rhythm.opening(&state);
@@ -271,7 +296,9 @@ impl<T> Keeper<T> {
     /// When the record can't be written.
     pub fn finish(&mut self, now: Timestamp) -> Result<Vec<T>, RecordError> {
         let owed = self.commit(now)?;
-        self.record.finish(now)?;
+        if !self.record.is_new() {
+            self.record.finish(now)?;
+        }
         Ok(owed)
     }
 
@@ -366,7 +393,8 @@ impl<T> Keeper<T> {
 }
 
 /// Whose rows can serve a channel.
-fn sources_of(channel: holdtrue_engine::setup::ChannelId, setup: &Setup) -> Vec<Source> {
+#[must_use]
+pub fn sources_of(channel: holdtrue_engine::setup::ChannelId, setup: &Setup) -> Vec<Source> {
     let mut sources = vec![Source::Indication(channel)];
     if let Some(setup) = setup.channels.get(channel.0 as usize) {
         sources.push(Source::Reference(setup.reference));

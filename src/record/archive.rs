@@ -2,7 +2,11 @@
 //! and the search for old readings.
 
 use super::row::ReadingRow;
+use super::search::Search;
 use super::{Day, DayName, RecordError, Told};
+use holdtrue_engine::event::{Reading, Source};
+use holdtrue_engine::setup::Setup;
+use holdtrue_engine::time::Timestamp;
 use std::cell::RefCell;
 use std::path::{Path, PathBuf};
 
@@ -65,6 +69,39 @@ impl Archive {
     /// When it can't be read.
     pub fn day(&self, name: DayName) -> Result<Day, RecordError> {
         Day::open(&self.path(name))
+    }
+
+    /// Readings of `sources` of the configuration `setup`, with phenomenon times in the half-open
+    /// interval `times`, in `until` and the files before it, as far as they had come by the input at
+    /// `position`; at most `limit`, in the order in which they came.
+    ///
+    /// # Errors
+    /// When a file can't be read.
+    pub fn readings(
+        &self,
+        until: &Day,
+        setup: &Setup,
+        sources: &[Source],
+        times: (Timestamp, Timestamp),
+        position: i64,
+        limit: usize,
+    ) -> Result<Vec<Reading>, RecordError> {
+        let mut book = until.book()?;
+        book.adopt(setup);
+        let search = Search {
+            sources: sources.iter().map(|it| (book.of(*it), *it)).collect(),
+            from: times.0,
+            to: times.1,
+            last: position,
+            limit,
+        };
+        let mut found = Vec::new();
+        for name in self.days.iter().filter(|name| **name <= until.name()) {
+            if search.concerns(name.day_end()) {
+                search.search(&self.day(*name)?, &mut found)?;
+            }
+        }
+        Ok(found.into_iter().map(|(_, reading)| reading).collect())
     }
 
     /// Hands every input of all files to `take`, oldest first, each with its recorded outputs.

@@ -4,10 +4,10 @@
 use super::body;
 use super::chain::{Digest, Head, Link};
 use super::row::{
-    DocumentRow, EventRow, InputRow, OutputRow, ReadingRow, SettledRow, SourceRow, StateRow,
-    TableRow,
+    DocumentRow, EventRow, InputRow, OutputRow, ReadingRow, SettledRow, SourceRow, TableRow,
 };
 use super::sources::SourceBook;
+use super::state_row::StateRow;
 use super::{RecordError, State};
 use crate::document::Document;
 use holdtrue_engine::event::{Input, Output, Source, Subject};
@@ -300,6 +300,11 @@ impl Batch {
         self.settled.clear();
         self.events.clear();
         self.states.clear();
+    }
+
+    /// The first file was opened; what was noted by then follows.
+    pub(super) fn follow(&mut self, opening: Place) {
+        self.place = opening;
     }
 
     /// The rows that an opening consists of.

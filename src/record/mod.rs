@@ -9,12 +9,13 @@
 //!
 //! Modules in reading order:
 //! - `name`, `layout`, `views`, `revision`: what the files are called and what stands in them
-//! - `row`, `body`, `sources`: rows as they are written, read and hashed
+//! - `row`, `state_row`, `body`, `sources`: rows as they are written, read and hashed
 //! - `chain`: the digests
 //! - `batch`: what is written together
 //! - `opening`: what a file opens with
-//! - `writing`: [`Record`], the one who writes; `sealing`, `lock`, `disk`: what that takes
-//! - `archive`, `day`: [`Archive`] and [`Day`], for those who read; `search`: old readings;
+//! - `writing`: [`Record`], the one who writes, with `turning`, `seals` and `recall`; `sealing`,
+//!   `lock`, `disk`: what that takes
+//! - `archive`, `day`, `links`: [`Archive`] and [`Day`], for those who read; `search`: old readings;
 //!   `verify`: whether all is as it was written
 
 mod archive;
@@ -25,14 +26,19 @@ mod day;
 mod disk;
 mod error;
 mod layout;
+mod links;
 mod lock;
 mod name;
 mod opening;
+mod recall;
 mod revision;
 mod row;
 mod sealing;
+mod seals;
 mod search;
 mod sources;
+mod state_row;
+mod turning;
 mod verify;
 mod views;
 mod writing;
@@ -48,9 +54,10 @@ pub use name::DayName;
 pub use opening::Opening;
 pub use revision::{ARITHMETIC_REVISION, FORMAT_VERSION, STATE_REVISION};
 pub use sources::SourceName;
+pub use turning::Turn;
 pub use verify::{Fault, Verdict, verify};
 pub use views::{VIEWS, View};
-pub use writing::{Record, Turn};
+pub use writing::Record;
 
 /// Parts of the engine's state: each with its name.
 pub type State = Vec<(String, Vec<u8>)>;

@@ -58,16 +58,16 @@ impl DayName {
         self.date
     }
 
+    /// The instant at which the day begins.
+    #[must_use]
+    pub fn day_begin(self) -> Timestamp {
+        midnight(Some(self.date)).unwrap_or(Timestamp(i64::MIN))
+    }
+
     /// The instant at which the day ends.
     #[must_use]
     pub fn day_end(self) -> Timestamp {
-        let end = self
-            .date
-            .tomorrow()
-            .ok()
-            .and_then(|date| Offset::UTC.to_timestamp(date.at(0, 0, 0, 0)).ok())
-            .and_then(|time| i64::try_from(time.as_nanosecond()).ok());
-        Timestamp(end.unwrap_or(i64::MAX))
+        midnight(self.date.tomorrow().ok()).unwrap_or(Timestamp(i64::MAX))
     }
 
     /// Name of the checksum file.
@@ -107,11 +107,16 @@ impl FromStr for DayName {
     }
 }
 
+/// The instant at which a day begins, UTC.
+fn midnight(date: Option<Date>) -> Option<Timestamp> {
+    let time = Offset::UTC.to_timestamp(date?.at(0, 0, 0, 0)).ok()?;
+    i64::try_from(time.as_nanosecond()).ok().map(Timestamp)
+}
+
 /// The day of an instant, UTC.
 fn date(instant: Timestamp) -> Date {
     jiff::Timestamp::from_nanosecond(i128::from(instant.0))
-        .map(|time| Offset::UTC.to_datetime(time).date())
-        .unwrap_or(Date::ZERO)
+        .map_or(Date::ZERO, |time| Offset::UTC.to_datetime(time).date())
 }
 
 #[cfg(test)]

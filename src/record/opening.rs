@@ -3,8 +3,9 @@
 
 use super::batch::{Event, Place, write_link};
 use super::chain::{Digest, Head, Link};
-use super::row::{EventRow, RetainedRow, SourceRow, StateRow, TableRow, WaitingRow};
+use super::row::{EventRow, SourceRow, TableRow};
 use super::sources::SourceBook;
+use super::state_row::{RetainedRow, StateRow, WaitingRow};
 use super::{DayName, RecordError, layout, views};
 use crate::record::batch::Batch;
 use holdtrue_engine::time::Timestamp;

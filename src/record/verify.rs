@@ -7,7 +7,7 @@
 use super::archive::Archive;
 use super::batch::Place;
 use super::chain::{Digest, Head};
-use super::day::ByBatch;
+use super::links::ByBatch;
 use super::sealing;
 use super::{Day, DayName, RecordError};
 use holdtrue_engine::time::Timestamp;

@@ -176,8 +176,9 @@ pub const VIEWS: &[View] = &[
 
 /// The statements that make all views.
 pub(super) fn statements() -> String {
-    VIEWS
-        .iter()
-        .map(|view| format!("CREATE VIEW {} AS {};\n", view.name, view.definition))
-        .collect()
+    use std::fmt::Write;
+    VIEWS.iter().fold(String::new(), |mut text, view| {
+        let _ = writeln!(text, "CREATE VIEW {} AS {};", view.name, view.definition);
+        text
+    })
 }

@@ -9,6 +9,7 @@ fn options(days: f64, seed: u64) -> DemoOptions {
     DemoOptions {
         days: Some(days),
         seed,
+        record: None,
         json: false,
         expect_the_impossible: false,
     }

@@ -7,4 +7,7 @@
 
 mod chain;
 mod keeps;
+mod replays;
+mod restores;
+mod station;
 mod support;

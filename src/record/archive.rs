@@ -72,8 +72,8 @@ impl Archive {
     }
 
     /// Readings of `sources` of the configuration `setup`, with phenomenon times in the half-open
-    /// interval `times`, in `until` and the files before it, as far as they had come by the input at
-    /// `position`; at most `limit`, in the order in which they came.
+    /// interval `times`, in `until` and the files before it, as far as they had come by the input
+    /// at `position`; at most `limit`, in the order in which they came.
     ///
     /// # Errors
     /// When a file can't be read.

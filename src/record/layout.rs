@@ -28,7 +28,7 @@ CREATE TABLE day (                   -- one row: what this file goes on from
     state        INTEGER NOT NULL,   -- revision of the saved state
     setup        TEXT NOT NULL,      -- configuration in force, as JSON
     preceding    TEXT,               -- name of the file before; NULL in the first
-    chain        BLOB NOT NULL,      -- digest of the last batch in the file before; 32 zero bytes in the first
+    chain        BLOB NOT NULL,      -- digest of the last batch before; zeros in the first
     first_batch  INTEGER NOT NULL,
     first_input  INTEGER NOT NULL,
     first_output INTEGER NOT NULL,
@@ -37,7 +37,7 @@ CREATE TABLE day (                   -- one row: what this file goes on from
 CREATE TABLE batches (               -- one row for each transaction
     number    INTEGER PRIMARY KEY,
     committed INTEGER NOT NULL,      -- when
-    last_input    INTEGER NOT NULL,  -- last position of its inputs (that of the batch before if it has none)
+    last_input    INTEGER NOT NULL,  -- last position up to here
     last_output   INTEGER NOT NULL,
     last_document INTEGER NOT NULL,
     digest    BLOB NOT NULL          -- SHA-256 over the digest before and this batch's rows
@@ -50,7 +50,7 @@ CREATE TABLE sources (               -- whose values readings are
     unit   TEXT NOT NULL
 ) STRICT;
 CREATE TABLE raw_readings (          -- inputs that are values; see the view readings
-    position   INTEGER PRIMARY KEY,  -- order in which the engine was told, from 1, shared with inputs
+    position   INTEGER PRIMARY KEY,  -- order in which the engine was told, with inputs
     source     INTEGER NOT NULL,     -- number in sources
     phenomenon INTEGER NOT NULL,     -- when it was sampled
     received   INTEGER NOT NULL,     -- when the daemon got it
@@ -67,7 +67,7 @@ CREATE TABLE inputs (                -- all other inputs
 CREATE TABLE outputs (
     position INTEGER PRIMARY KEY,    -- order in which the engine said it, from 1
     input    INTEGER NOT NULL,       -- position of the input that caused it
-    subject  INTEGER,                -- number in sources of the channel or reference that it is about
+    subject  INTEGER,                -- number in sources of what it is about
     kind     TEXT NOT NULL,          -- correction, withdrawn, alarm, degree, pair, answer …
     body     TEXT NOT NULL
 ) STRICT;
@@ -83,7 +83,7 @@ CREATE TABLE documents (             -- what is published, in the order of issue
 CREATE TABLE settled (               -- documents that wait no longer
     number INTEGER PRIMARY KEY,
     batch  INTEGER NOT NULL,
-    how    TEXT NOT NULL             -- taken (by the broker), overtaken, expired, refused, pushed-out
+    how    TEXT NOT NULL             -- taken, overtaken, expired, refused, pushed-out
 ) STRICT;
 CREATE TABLE events (                -- what happened to the record itself
     batch INTEGER NOT NULL,
@@ -96,7 +96,7 @@ CREATE TABLE states (                -- parts of the engine's state, as they wer
     digest BLOB NOT NULL,            -- SHA-256 of bytes
     bytes  BLOB NOT NULL
 ) STRICT;
-CREATE TABLE waiting_at_opening (    -- documents of earlier files that the broker had not acknowledged
+CREATE TABLE waiting_at_opening (    -- documents of earlier files that the broker did not have
     number  INTEGER PRIMARY KEY,
     expires INTEGER,
     retain  INTEGER NOT NULL,

@@ -15,8 +15,8 @@
 //! - `opening`: what a file opens with
 //! - `writing`: [`Record`], the one who writes, with `turning`, `seals` and `recall`; `sealing`,
 //!   `lock`, `disk`: what that takes
-//! - `archive`, `day`, `links`: [`Archive`] and [`Day`], for those who read; `search`: old readings;
-//!   `verify`: whether all is as it was written
+//! - `archive`, `day`, `links`: [`Archive`] and [`Day`], for those who read; `search`: old
+//!   readings; `verify`: whether all is as it was written
 
 mod archive;
 mod batch;

@@ -1,5 +1,5 @@
-//! What the record knows: documents that wait, documents that are retained, confirmed subscriptions,
-//! old readings.
+//! What the record knows: documents that wait, documents that are retained, confirmed
+//! subscriptions, old readings.
 
 use super::batch::Event;
 use super::row::document_of;

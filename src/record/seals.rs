@@ -68,7 +68,7 @@ impl Record {
         match worker.join() {
             Ok(Ok(digest)) => self.batch.note(Event::Sealed(name.to_string(), digest)),
             Ok(Err(error)) => {
-                tracing::warn!(%error, file = %name, "a finished file can't be sealed; later again");
+                tracing::warn!(%error, file = %name, "a finished file can't be sealed now");
                 self.sealer.due.push_back(name);
             }
             Err(panic) => std::panic::resume_unwind(panic),

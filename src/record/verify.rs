@@ -108,7 +108,10 @@ pub enum Fault {
         missing: String,
     },
     /// A file does not go on from the one before.
-    #[error("{} does not go on from {before}: its chain begins with another digest", file.display())]
+    #[error(
+        "{} does not go on from {before}: its chain begins with another digest",
+        file.display()
+    )]
     ChainBroken {
         /// The file.
         file: PathBuf,
@@ -142,8 +145,8 @@ struct Walk<'a> {
     sought: Option<(Digest, bool)>,
 }
 
-/// Verifies a record. `kept`: a digest that was kept elsewhere and must be a link of it. `looked` is
-/// called after each file.
+/// Verifies a record. `kept`: a digest that was kept elsewhere and must be a link of it. `looked`
+/// is called after each file.
 ///
 /// # Errors
 /// When the folder holds no record. What is wrong with a file is part of the verdict.

@@ -44,7 +44,8 @@ pub const VIEWS: &[View] = &[
             utc!("json_extract(body, '$.Pair.phenomenon')"),
             " AS sampled, json_extract(body, '$.Pair.indication') AS indication,
              json_extract(body, '$.Pair.reference') AS reference_value,
-             json_extract(body, '$.Pair.indication') - json_extract(body, '$.Pair.reference') AS error,
+             json_extract(body, '$.Pair.indication')
+             - json_extract(body, '$.Pair.reference') AS error,
              unit,
              json_extract(body, '$.Pair.flag') AS flag,
              json_extract(body, '$.Pair.rejected.reason') AS kept_out_by,
@@ -94,7 +95,8 @@ pub const VIEWS: &[View] = &[
         name: "alarms",
         shows: "every change of an alarm",
         definition: concat!(
-            "SELECT position, input, coalesce(sources.kind, 'node') AS subject_kind, name AS subject,
+            "SELECT position, input, coalesce(sources.kind, 'node') AS subject_kind,
+             name AS subject,
              json_extract(body, '$.Alarm.kind') AS alarm,
              json_extract(body, '$.Alarm.state') AS state, ",
             utc!("json_extract(body, '$.Alarm.at')"),

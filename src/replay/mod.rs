@@ -52,7 +52,8 @@ pub enum ReplayError {
     },
     /// Nothing of the record lies in the range.
     #[error(
-        "no file of the record holds anything of the time that was asked for; it goes from {from} to {to}"
+        "no file of the record holds anything of the time that was asked for; it goes from {from} \
+         to {to}"
     )]
     Nothing {
         /// The first file.

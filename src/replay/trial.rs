@@ -1,8 +1,8 @@
 //! The trial: what another configuration would have made of the recorded readings.
 //!
-//! The engine begins anew with it, makes its own ticks (deadlines fire at their own instants, before
-//! later input) and is supplied with what it asks for from the record, as far as that had come by
-//! then.
+//! The engine begins anew with it, makes its own ticks (deadlines fire at their own instants,
+//! before later input) and is supplied with what it asks for from the record, as far as that had
+//! come by then.
 
 use super::account::{Account, Accounts, AlarmAt};
 use super::feed::Feed;

@@ -4,6 +4,8 @@
 //! - [`check`]: everything that is wrong with a configuration
 //! - `run`: the daemon, until it is told to stop
 //! - `demo`: an invented plant held true on this machine
+//! - `import`: recordings become a record
+//! - `export`: a view of a record as CSV
 //! - `tell`: an order to a running daemon
 //! - `verify`: whether a record is whole
 //! - `replay`: a record run again, as an audit or with another configuration
@@ -15,6 +17,8 @@ mod commissioning;
 #[cfg(feature = "demo")]
 mod demo;
 
+mod export;
+mod import;
 mod log;
 mod progress;
 mod replay;
@@ -105,6 +109,22 @@ enum Command {
         #[arg(long)]
         json: bool,
     },
+    /// Make a record from recordings (CSV, JSON lines, SenML), so that a year of history can be tried
+    /// before going live.
+    #[command(
+        after_help = "Example:\n  holdtrue import 2025.csv lab.csv --config holdtrue.toml --record trial \\\n    \
+        --time at --map pH=intake/ph-1 --map \"lab pH=reference:lab/ph\"\n\n\
+        Exit code: 0 done, 1 done but rows were left out, 2 refused and nothing written, 3 a file\n\
+        or the record failed."
+    )]
+    Import(Box<import::Import>),
+    /// Write a view of a record as CSV: readings, pairs, corrections, alarms …
+    #[command(
+        after_help = "Example:\n  holdtrue export /var/lib/holdtrue corrections \
+        --channel intake/ph-1 --from 2026-03-01 --out ph-1.csv\n\n\
+        Exit code: 0 done, 2 wrong usage, 3 the record or the output failed."
+    )]
+    Export(export::Export),
     /// Give a running daemon an order over the broker, and wait for its answer.
     Tell(Box<tell::Tell>),
     /// Say whether a record is whole and as it was written: seals, links, missing files.
@@ -129,6 +149,7 @@ impl Command {
             // The demo plants faults; its table tells what became of them.
             #[cfg(feature = "demo")]
             Self::Demo(_) => "error",
+            Self::Import(_) => "warn",
             _ => log::DEFAULT,
         }
     }
@@ -147,6 +168,8 @@ pub fn run(arguments: Arguments) -> Ending {
         Command::Demo(demo) => demo.run(),
         Command::Run { config } => run::run(&config),
         Command::Check { config, json } => check::run(&config, json, &mut std::io::stdout()),
+        Command::Import(import) => import.run(),
+        Command::Export(export) => export.run(),
         Command::Tell(tell) => tell.run(),
         Command::Verify(verify) => verify.run(),
         Command::Replay(replay) => replay.run(),

@@ -6,6 +6,7 @@ use holdtrue_engine::setup::ChannelSetup;
 use holdtrue_engine::standing::{AlarmStanding, ChannelStanding};
 use holdtrue_engine::time::Timestamp;
 use serde::Serialize;
+use std::fmt;
 
 /// What the daemon is doing.
 #[derive(Clone, Copy, Debug, PartialEq, Eq)]
@@ -162,6 +163,18 @@ impl RefusedCount {
             reason: word::refused_reason(reason),
             count,
         }
+    }
+}
+
+impl fmt::Display for RefusedCount {
+    fn fmt(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
+        let Self {
+            subject,
+            name,
+            reason,
+            count,
+        } = self;
+        write!(out, "{subject} {name}: {count} {reason}")
     }
 }
 

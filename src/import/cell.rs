@@ -15,13 +15,13 @@ pub(super) fn number(text: &str, mapping: &Mapping) -> Result<f64, String> {
     };
     read.map_err(|fault| {
         if fault.reason == RefusedReason::NotFinite {
-            return "is no finite number; if it stands for no value, say so with missing"
+            return "is no finite number; if it stands for no value, name it with --missing"
                 .to_owned();
         }
         let hint = if !mapping.decimal_comma && text.contains(',') {
-            "; if its decimal sign is a comma, say decimal-comma"
+            "; if its decimal sign is a comma, say --decimal-comma"
         } else {
-            "; if it stands for no value, say so with missing"
+            "; if it stands for no value, name it with --missing"
         };
         format!("is not a number{hint}")
     })

@@ -48,7 +48,7 @@ impl JsonLines {
     pub(super) fn open(source: &Source, mapping: &Mapping) -> Result<Self, ImportError> {
         let file = source.name();
         if mapping.times.is_empty() {
-            let message = format!("{file}: say which member is the time, with time");
+            let message = format!("{file}: say which member is the time, with --time");
             return Err(ImportError::Misfit(message));
         }
         let mut picker = Picker::default();
@@ -212,7 +212,7 @@ impl Form {
         };
         if !is_number(raw) {
             return Err(bad(
-                "is not a JSON number; if it stands for no value, say so with missing",
+                "is not a JSON number; if it stands for no value, name it with --missing",
             ));
         }
         let value =

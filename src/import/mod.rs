@@ -17,8 +17,10 @@
 //!   times from their text
 //! - [`survey`]: the first reading
 //! - [`merge`]: the second, in the order of time; `ordered`: one file
+//! - [`mod@into_record`]: what comes of it into a record
 
 pub mod entry;
+pub mod into_record;
 pub mod mapping;
 pub mod merge;
 pub mod problem;
@@ -35,6 +37,8 @@ mod scan;
 mod table;
 mod words;
 
+use crate::keeper::RestoreError;
+use crate::record::RecordError;
 use std::path::PathBuf;
 
 pub use table::separator;
@@ -68,6 +72,12 @@ pub enum ImportError {
         /// By how much.
         seconds: f64,
     },
+    /// The record can't be used.
+    #[error(transparent)]
+    Record(#[from] RecordError),
+    /// The record can't be gone on with.
+    #[error(transparent)]
+    Restore(#[from] RestoreError),
     /// A file is not what it was when it was read first.
     #[error("{}: changed while it was imported; start again with a new record", path.display())]
     Changed {

@@ -49,7 +49,9 @@ impl Table {
             ImportError::Misfit(format!("{file}: {what}; it has: {known}{hint}"))
         };
         if mapping.times.is_empty() {
-            return Err(misfit("say which column is the time, with time".to_owned()));
+            return Err(misfit(
+                "say which column is the time, with --time".to_owned(),
+            ));
         }
         let mut times = mapping.times.iter().enumerate();
         let time = times

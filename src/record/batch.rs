@@ -36,6 +36,8 @@ pub enum Settled {
     Refused,
     /// It had to make room while the broker was away.
     PushedOut,
+    /// Nobody was to have it: it is of a recording that was imported.
+    NotSent,
 }
 
 impl Settled {
@@ -46,6 +48,7 @@ impl Settled {
             Self::Expired => "expired",
             Self::Refused => "refused",
             Self::PushedOut => "pushed-out",
+            Self::NotSent => "not-sent",
         }
     }
 }

@@ -83,7 +83,7 @@ CREATE TABLE documents (             -- what is published, in the order of issue
 CREATE TABLE settled (               -- documents that wait no longer
     number INTEGER PRIMARY KEY,
     batch  INTEGER NOT NULL,
-    how    TEXT NOT NULL             -- taken, overtaken, expired, refused, pushed-out
+    how    TEXT NOT NULL             -- taken, overtaken, expired, refused, pushed-out, not-sent
 ) STRICT;
 CREATE TABLE events (                -- what happened to the record itself
     batch INTEGER NOT NULL,

@@ -16,7 +16,7 @@
 //! - `writing`: [`Record`], the one who writes, with `turning`, `seals` and `recall`; `sealing`,
 //!   `lock`, `disk`: what that takes
 //! - `archive`, `day`, `links`: [`Archive`] and [`Day`], for those who read; `search`: old
-//!   readings; `verify`: whether all is as it was written
+//!   readings; `view_rows`: views for export; `verify`: whether all is as it was written
 
 mod archive;
 mod batch;
@@ -40,6 +40,7 @@ mod sources;
 mod state_row;
 mod turning;
 mod verify;
+mod view_rows;
 mod views;
 mod writing;
 
@@ -56,6 +57,7 @@ pub use revision::{ARITHMETIC_REVISION, FORMAT_VERSION, STATE_REVISION};
 pub use sources::SourceName;
 pub use turning::Turn;
 pub use verify::{Fault, Verdict, verify};
+pub use view_rows::Choice;
 pub use views::{VIEWS, View};
 pub use writing::Record;
 

@@ -128,11 +128,11 @@ impl fmt::Display for NotThatForm {
     fn fmt(&self, out: &mut fmt::Formatter<'_>) -> fmt::Result {
         match self {
             Self::NoOffset => out.write_str(
-                "has no offset from UTC; say which clock it is with utc-offset, as Z or +01:00",
+                "has no offset from UTC; say which clock it is with --utc-offset, as Z or +01:00",
             ),
             Self::Text(NoInstant::Shape) => out.write_str(
                 "is neither RFC 3339 nor a date; if the recording writes times otherwise, say how \
-                 with time-format",
+                 with --time-format",
             ),
             Self::Text(why) => why.fmt(out),
             Self::Date => out.write_str("is more than a date; its time format may be rfc3339"),

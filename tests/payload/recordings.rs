@@ -387,27 +387,27 @@ fn what_cannot_be_read_is_named_with_its_place_and_the_way_out() {
         (
             csv("at,v\n2026-01-01,\"7,25\"\n"),
             ph1(),
-            "a.csv:2: v: \"7,25\" is not a number; if its decimal sign is a comma, say decimal-comma",
+            "a.csv:2: v: \"7,25\" is not a number; if its decimal sign is a comma, say --decimal-comma",
         ),
         (
             csv("at,v\n2026-01-01,n/a\n"),
             ph1(),
-            "a.csv:2: v: \"n/a\" is not a number; if it stands for no value, say so with missing",
+            "a.csv:2: v: \"n/a\" is not a number; if it stands for no value, name it with --missing",
         ),
         (
             csv("at,v\n2026-01-01,NaN\n"),
             ph1(),
-            "a.csv:2: v: \"NaN\" is no finite number; if it stands for no value, say so with missing",
+            "a.csv:2: v: \"NaN\" is no finite number; if it stands for no value, name it with --missing",
         ),
         (
             csv("at,v\n01.02.2026,1\n"),
             ph1(),
-            "a.csv:2: at: \"01.02.2026\" is neither RFC 3339 nor a date; if the recording writes times otherwise, say how with time-format",
+            "a.csv:2: at: \"01.02.2026\" is neither RFC 3339 nor a date; if the recording writes times otherwise, say how with --time-format",
         ),
         (
             csv("at,v\n2026-01-01 12:00:00,1\n"),
             ph1(),
-            "a.csv:2: at: \"2026-01-01 12:00:00\" has no offset from UTC; say which clock it is with utc-offset, as Z or +01:00",
+            "a.csv:2: at: \"2026-01-01 12:00:00\" has no offset from UTC; say which clock it is with --utc-offset, as Z or +01:00",
         ),
         (
             csv("at,v\n2026-02-30,1\n"),
@@ -432,7 +432,7 @@ fn what_cannot_be_read_is_named_with_its_place_and_the_way_out() {
         (
             csv("at,v\n"),
             words(&["v=intake/ph-1"], &[]),
-            "say which column is the time, with time",
+            "say which column is the time, with --time",
         ),
         (
             csv("at,v\n"),
@@ -636,4 +636,31 @@ fn a_mapping_file_says_all_that_the_command_line_says() {
     };
     let file = Mapping::from_toml(text, "m.toml", &configuration()).unwrap();
     assert_eq!(Ok(file), Mapping::from_words(&told, &configuration()));
+}
+
+#[test]
+fn the_example_of_a_mapping_shows_every_setting_and_is_accepted() {
+    let folder = Path::new(env!("CARGO_MANIFEST_DIR")).join("config");
+    let configuration = configuration::load(&folder.join("every-setting.toml")).unwrap();
+    let text = std::fs::read_to_string(folder.join("import/columns.toml")).unwrap();
+    let mapping = Mapping::from_toml(&text, "columns.toml", &configuration);
+    let mapping = mapping.unwrap_or_else(|problems| panic!("{problems}"));
+    assert_eq!((mapping.times.len(), mapping.columns.len()), (2, 5));
+    for key in [
+        "separator",
+        "decimal_comma",
+        "missing",
+        "format",
+        "utc_offset",
+        "status",
+        "good",
+        "indication",
+        "reference",
+        "influence",
+        "valid_when",
+        "only_where",
+        "equals",
+    ] {
+        assert!(text.contains(&format!("{key} = ")), "{key} is not shown");
+    }
 }

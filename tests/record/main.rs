@@ -6,6 +6,7 @@
 )]
 
 mod chain;
+mod import;
 mod keeps;
 mod replays;
 mod restores;

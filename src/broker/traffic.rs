@@ -38,6 +38,8 @@ pub enum Token {
     Document(i64),
     /// The state document, which is not in the outbox.
     State,
+    /// The alarm that nothing can be recorded; not in the outbox either.
+    Alarm,
 }
 
 /// What is given back to acknowledge a message.

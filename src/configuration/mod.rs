@@ -35,6 +35,7 @@ pub(crate) mod source;
 mod steps;
 
 use crate::payload::Tables;
+use crate::record::Retention;
 use holdtrue_engine::setup::Setup;
 use std::path::PathBuf;
 use std::time::Duration;
@@ -136,6 +137,8 @@ pub struct Record {
     pub folder: PathBuf,
     /// Longest time between two commits; corrections wait for it.
     pub commit: Duration,
+    /// How much of it is kept.
+    pub retention: Retention,
 }
 
 /// The status page. Accepted and checked, not served by this version.

@@ -4,6 +4,7 @@ use super::name;
 use super::reader::Section;
 use super::source::Found;
 use super::{Broker, ClientCertificate, Login, Page, Protocol, Record, Tls};
+use crate::record::Retention;
 use holdtrue_engine::setup::Clock;
 use holdtrue_engine::time::Duration;
 use std::net::IpAddr;
@@ -135,6 +136,22 @@ pub(super) fn record(top: &Section<'_>, folder: &Path) -> Record {
             Duration(10_000_000)..=Duration::from_seconds(60),
         )
     });
+    let age = section.as_ref().and_then(|section| {
+        let century = Duration::from_seconds(36_525 * 86_400);
+        bounded(section, "keep", DAY..=century)
+    });
+    let bytes = section.as_ref().and_then(|section| {
+        let found = section.text("size_limit")?;
+        let bytes = size(found.value);
+        if bytes.is_none() {
+            let message = format!(
+                "\"{}\" is no size from 10 MB on; write it as \"50 GB\" (MB, GB or TB)",
+                found.value
+            );
+            section.wrong(&found, message);
+        }
+        bytes
+    });
     if let Some(section) = &section {
         section.finish();
     }
@@ -144,7 +161,21 @@ pub(super) fn record(top: &Section<'_>, folder: &Path) -> Record {
     Record {
         folder: folder.join(told.map_or("record", |found| found.value)),
         commit: standard(commit.unwrap_or(COMMIT)),
+        retention: Retention { age, bytes },
     }
+}
+
+/// A size like `50 GB`, bytes; decimal units, at least 10 MB.
+fn size(text: &str) -> Option<u64> {
+    let (number, unit) = text.trim().split_once(' ')?;
+    let unit: u64 = match unit.trim() {
+        "MB" => 1_000_000,
+        "GB" => 1_000_000_000,
+        "TB" => 1_000_000_000_000,
+        _ => return None,
+    };
+    let bytes = number.parse::<u64>().ok()?.checked_mul(unit)?;
+    (bytes >= 10_000_000).then_some(bytes)
 }
 
 /// `[page]`: checked, and said to be inactive.
@@ -372,6 +403,24 @@ fn standard(duration: Duration) -> std::time::Duration {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn sizes_have_a_decimal_unit_and_a_least() {
+        assert_eq!(size("50 GB"), Some(50_000_000_000));
+        assert_eq!(size("10 MB"), Some(10_000_000));
+        assert_eq!(size("2 TB"), Some(2_000_000_000_000));
+        for text in [
+            "",
+            "50",
+            "50 GiB",
+            "9 MB",
+            "-1 GB",
+            "1.5 GB",
+            "99999999999 TB",
+        ] {
+            assert_eq!(size(text), None, "{text}");
+        }
+    }
 
     #[test]
     fn urls_name_host_and_port() {

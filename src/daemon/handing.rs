@@ -19,6 +19,7 @@ impl Daemon {
         if self.rhythm.due().is_some_and(|due| due <= Instant::now()) {
             self.hand_over_state();
         }
+        self.hand_over_alarm();
         self.hand_over_documents();
     }
 
@@ -107,6 +108,7 @@ impl Daemon {
     pub(super) fn settle(&mut self, token: Token, answer: Answer) {
         match token {
             Token::State => self.settle_state(answer),
+            Token::Alarm => self.settle_alarm(&answer),
             Token::Document(number) => match answer {
                 Answer::Taken => {
                     self.hand_again_back_off.reset();

@@ -10,6 +10,7 @@
 //! - `turn`: the loop that everything happens in
 //! - `session`, `memory`: connections that come and go, and what a broker may have forgotten
 //! - `handing`, `refusals`: documents on their way, and what the broker says to them
+//! - `paused`: the record can't be written
 //! - `ending`: the orderly end
 //! - `settling`: no ticks before the broker has sent what it kept
 //! - `held`: messages that wait while nothing can be taken
@@ -19,6 +20,7 @@ mod ending;
 mod handing;
 mod held;
 mod memory;
+mod paused;
 mod refusals;
 mod report;
 mod session;

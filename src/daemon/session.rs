@@ -110,6 +110,7 @@ impl Daemon {
         self.shell.keeper.outbox_mut().note_away();
         self.held.forget_guaranteed();
         self.rhythm.answered();
+        self.note_alarm_lost();
         let next_try = lost.next_try;
         if lost.taken_over {
             tracing::error!(

@@ -31,6 +31,7 @@ impl Shell {
         let Some(mut keeper) = Keeper::open(folder, now(), stop)? else {
             return Ok(None);
         };
+        keeper.retain(configuration.record.retention);
         if *keeper.setup() != configuration.setup {
             tracing::info!(
                 channels = configuration.setup.channels.len(),

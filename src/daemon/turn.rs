@@ -6,6 +6,7 @@
 
 use super::held::Held;
 use super::memory::Memory;
+use super::paused::Pause;
 use super::refusals::Refusals;
 use super::report::{LoopFigures, StateRhythm};
 use super::settling::Settling;
@@ -15,7 +16,6 @@ use crate::broker::{BackOff, Event, Link, Message, Will};
 use crate::configuration::Configuration;
 use crate::document::state::{Doing, StateDocument};
 use crate::document::topic::Topics;
-use crate::record::RecordError;
 use holdtrue_engine::event::Input;
 use holdtrue_engine::time::Timestamp;
 use std::future::Future;
@@ -50,13 +50,6 @@ pub(super) struct Daemon {
     /// When the engine wants a tick, as of the last time it was asked.
     pub(super) next_tick: Option<Timestamp>,
     pub(super) tick_asked: Instant,
-}
-
-/// The record can't be written.
-pub(super) struct Pause {
-    pub(super) why: String,
-    back_off: BackOff,
-    retry: Instant,
 }
 
 impl Daemon {
@@ -248,10 +241,7 @@ impl Daemon {
                 for ticket in tickets {
                     self.link.acknowledge(ticket);
                 }
-                if let Some(pause) = self.pause.take() {
-                    tracing::info!(cause = pause.why, "record can be written again; going on");
-                    self.rhythm.change();
-                }
+                self.end_pause();
                 self.answer_wanted();
                 self.ask_tick();
             }
@@ -265,26 +255,5 @@ impl Daemon {
         if let Err(error) = self.shell.keeper.answer_wanted() {
             tracing::warn!(%error, "recorded rows can't be read for the engine; trying again");
         }
-    }
-
-    fn pause_for(&mut self, error: &RecordError) {
-        let why = error.to_string();
-        let pause = self.pause.get_or_insert_with(|| {
-            tracing::error!(
-                why,
-                "the record can't be written: nothing is taken or acknowledged until it can, the \
-                 broker queues. Is the disk full or read-only?"
-            );
-            self.rhythm.change();
-            Pause {
-                why: why.clone(),
-                back_off: BackOff::default(),
-                retry: Instant::now(),
-            }
-        });
-        pause.why = why;
-        let wait = pause.back_off.next_pause();
-        pause.retry = Instant::now() + wait;
-        tracing::debug!(next_try = ?wait, "record still can't be written");
     }
 }

@@ -1,7 +1,9 @@
-//! Alarm documents.
+//! Alarm documents: the engine's, and the one that it can't raise.
 
-use super::{SCHEMA_VERSION, word};
-use holdtrue_engine::event::AlarmChange;
+use super::topic::Topics;
+use super::{Document, SCHEMA_VERSION, word};
+use holdtrue_engine::event::{AlarmChange, AlarmState, Subject};
+use holdtrue_engine::time::Timestamp;
 use serde::Serialize;
 
 /// The state of one alarm, with the value that was judged and the limit it was judged against.
@@ -38,4 +40,44 @@ impl<'a> AlarmDocument<'a> {
             text: &change.text,
         }
     }
+}
+
+/// Kind of the alarm that nothing can be recorded, raised beside the engine, which is not asked
+/// anything then.
+pub const RECORD_PAUSED: &str = "record-paused";
+
+/// The alarm that nothing can be recorded since `since`, and why; without a reason, that it is over
+/// at `at`.
+#[must_use]
+pub fn record_paused(node: &str, why: Option<&str>, at: Timestamp, since: Timestamp) -> Document {
+    let (state, value, text) = match why {
+        Some(why) => (
+            AlarmState::Unacknowledged,
+            1.0,
+            format!(
+                "the record can't be written ({why}): nothing is taken or corrected until it can; \
+                 make room on the disk, or look whether it is read-only or broken"
+            ),
+        ),
+        None => (
+            AlarmState::Normal,
+            0.0,
+            "the record can be written again".to_owned(),
+        ),
+    };
+    let document = AlarmDocument {
+        schema_version: SCHEMA_VERSION,
+        subject: word::subject(Subject::Node),
+        name: node,
+        kind: RECORD_PAUSED,
+        state: word::alarm_state(state),
+        at: word::time(at),
+        since: word::time(since),
+        value,
+        limit: 0.0,
+        unit: "",
+        text: &text,
+    };
+    let topic = format!("{}/{RECORD_PAUSED}", Topics::new(node).node_alarms());
+    super::json(topic, &document, true, None)
 }

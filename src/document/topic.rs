@@ -57,7 +57,7 @@ impl<'a> Topics<'a> {
     pub fn alarm(&self, subject: Subject, name: &str, kind: AlarmKind) -> String {
         let kind = kind.code();
         match subject {
-            Subject::Node => format!("holdtrue/{}/alarm/node/{kind}", self.node),
+            Subject::Node => format!("{}/{kind}", self.node_alarms()),
             Subject::Channel(_) => format!("holdtrue/{}/alarm/channel/{name}/{kind}", self.node),
             Subject::Reference(_) => {
                 format!("holdtrue/{}/alarm/reference/{name}/{kind}", self.node)
@@ -66,6 +66,12 @@ impl<'a> Topics<'a> {
                 format!("holdtrue/{}/alarm/influence/{name}/{kind}", self.node)
             }
         }
+    }
+
+    /// Below which the alarms of the node itself stand.
+    #[must_use]
+    pub fn node_alarms(&self) -> String {
+        format!("holdtrue/{}/alarm/node", self.node)
     }
 
     /// The newest comparison of a channel's model with what a service found; retained.

@@ -7,7 +7,9 @@
 //! - `saved`: the engine's state as it stands in the record
 //! - `outbox`: documents that the broker has not acknowledged
 //! - `rhythm`: when the state is saved and when a day turns
+//! - `keeping`: old files go
 
+mod keeping;
 mod outbox;
 mod restore;
 mod rhythm;
@@ -19,7 +21,7 @@ pub use saved::{assemble, whole};
 
 use crate::document::topic::Topics;
 use crate::document::{self};
-use crate::record::{DayName, Disk, Head, Record, RecordError, Settled, Turn};
+use crate::record::{DayName, Disk, Head, Record, RecordError, Retention, Settled, Turn};
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Input, Output, Source, Supplied};
 use holdtrue_engine::setup::{Clock, Setup};
@@ -43,6 +45,9 @@ pub struct Keeper<T = ()> {
     /// What is to be acknowledged after the next commit, in the order in which it came.
     owed: Vec<T>,
     rhythm: Rhythm,
+    retention: Retention,
+    /// A file may have become too old, or the record too large.
+    may_be_old: bool,
     /// Kept to save allocations.
     outputs: Vec<Output>,
 }
@@ -102,6 +107,8 @@ impl<T> Keeper<T> {
             wanted,
             owed: Vec::new(),
             rhythm: Rhythm::new(now, saved_input),
+            retention: Retention::default(),
+            may_be_old: true,
             outputs: Vec::new(),
         };
         // The first file waits for the first commit: which day it is of may not be known yet.
@@ -182,6 +189,7 @@ impl<T> Keeper<T> {
             self.begin(now)?;
         }
         self.save_if_due(now);
+        self.remove_old(now);
         self.record.commit(now)?;
         if self.rhythm.committed(now, self.record.last_input()) {
             self.engine.mark_saved();
@@ -258,6 +266,7 @@ impl<T> Keeper<T> {
         })?;
         self.engine.mark_saved();
         self.rhythm.turned(now, self.record.last_input());
+        self.may_be_old = true;
         Ok(())
     }
 

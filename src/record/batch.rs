@@ -62,6 +62,8 @@ pub(super) enum Event {
     Subscriptions(String),
     /// A finished file and its checksum.
     Sealed(String, Digest),
+    /// A file that is removed, and why.
+    Removed(String, String),
 }
 
 /// How far the positions of a record have come.
@@ -176,6 +178,7 @@ impl Batch {
             Event::Start(program) => ("start", program),
             Event::Subscriptions(filters) => ("subscriptions", filters),
             Event::Sealed(file, digest) => ("sealed", format!("{digest}  {file}")),
+            Event::Removed(file, why) => ("removed", format!("{file}: {why}")),
         };
         self.events.push(EventRow {
             batch: self.number_of_batch(),

@@ -13,8 +13,8 @@
 //! - `chain`: the digests
 //! - `batch`: what is written together
 //! - `opening`: what a file opens with
-//! - `writing`: [`Record`], the one who writes, with `turning`, `seals` and `recall`; `sealing`,
-//!   `lock`, `disk`: what that takes
+//! - `writing`: [`Record`], the one who writes, with `turning`, `seals`, `retention` and
+//!   `recall`; `sealing`, `lock`, `disk`: what that takes
 //! - `archive`, `day`, `links`: [`Archive`] and [`Day`], for those who read; `search`: old
 //!   readings; `view_rows`: views for export; `verify`: whether all is as it was written
 
@@ -31,6 +31,7 @@ mod lock;
 mod name;
 mod opening;
 mod recall;
+mod retention;
 mod revision;
 mod row;
 mod sealing;
@@ -53,6 +54,7 @@ pub use disk::{Disk, Operation, RealDisk};
 pub use error::RecordError;
 pub use name::DayName;
 pub use opening::Opening;
+pub use retention::{Removal, Retention};
 pub use revision::{ARITHMETIC_REVISION, FORMAT_VERSION, STATE_REVISION};
 pub use sources::SourceName;
 pub use turning::Turn;

@@ -41,6 +41,8 @@ pub struct Record {
     pub(super) retained: BTreeMap<String, i64>,
     pub(super) subscriptions: BTreeSet<String>,
     pub(super) sealer: Sealer,
+    /// Files to be removed once that is noted.
+    pub(super) removing: Vec<DayName>,
 }
 
 impl Record {
@@ -90,6 +92,7 @@ impl Record {
             retained: BTreeMap::new(),
             subscriptions: BTreeSet::new(),
             sealer: Sealer::default(),
+            removing: Vec::new(),
             days,
         };
         if let Some(newest) = record.days.last().copied() {
@@ -244,6 +247,7 @@ impl Record {
         }
         self.place = after;
         self.batch.clear(after);
+        self.remove_noted();
         Ok(())
     }
 

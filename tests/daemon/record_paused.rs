@@ -3,6 +3,7 @@
 use crate::live::holdtrue::Holdtrue;
 use crate::live::listener::Listener;
 use crate::live::mosquitto::Mosquitto;
+use crate::live::schemas::Schemas;
 
 const CHANNEL: &str = r#"
 [[channel]]
@@ -14,6 +15,7 @@ window = "64 pairs"
 segments = 16
 "#;
 
+const ALARM: &str = "holdtrue/test/alarm/node/record-paused";
 const PAIRS: &str = "SELECT count(*) FROM outputs WHERE kind = 'pair'";
 const DISTINCT_PAIRS: &str = "SELECT count(DISTINCT json_extract(body, '$.Pair.phenomenon'))
                               FROM outputs WHERE kind = 'pair'";
@@ -65,16 +67,32 @@ fn it_pauses_says_so_and_goes_on_without_loss() {
         let unrecorded: Vec<_> = listener
             .all()
             .into_iter()
-            .filter(|it| !it.topic.ends_with("/state"))
+            .filter(|it| {
+                !it.topic.ends_with("/state")
+                    && it.topic != "holdtrue/test/alarm/node/record-paused"
+            })
             .collect();
         assert!(
             unrecorded.is_empty(),
             "published without a record: {unrecorded:?}"
         );
 
+        let retained = broker.retained(ALARM).expect("the alarm is retained");
+        let retained = String::from_utf8(retained).unwrap();
+        assert!(retained.contains("\"unacknowledged\""), "{retained}");
+
         lock.execute_batch("ROLLBACK").unwrap();
         listener.wait_state("running");
         daemon.wait_count(PAIRS, 400);
+        let cleared = listener.wait("the alarm is cleared", |it| {
+            it.topic == ALARM && it.payload.contains("\"normal\"")
+        });
+        Schemas::read().check(&cleared);
+        // What could not be recorded then is recorded now.
+        daemon.wait_count(
+            "SELECT count(*) FROM documents WHERE payload LIKE '%could not be written from%'",
+            1,
+        );
         assert!(daemon.stop().success());
         assert_eq!(
             (daemon.count(PAIRS), daemon.count(DISTINCT_PAIRS)),
@@ -91,13 +109,15 @@ fn told_to_end_while_paused_it_leaves_the_messages_with_the_broker() {
     let listener = Listener::start(broker.port, "holdtrue/#");
     daemon.launch();
     daemon.wait_log("subscribed");
+    broker.publish_lines("plant/one", &readings(0, 1));
+    daemon.wait_count(PAIRS, 1);
     let lock = block(&daemon);
-    broker.publish_lines("plant/one", &readings(0, 30));
+    broker.publish_lines("plant/one", &readings(1, 30));
     listener.wait_state("record-paused");
     assert!(daemon.stop().success());
     let stopped = listener.wait_state("stopped");
     assert!(stopped.json()["why"].is_string(), "{stopped:?}");
-    assert_eq!(daemon.count(PAIRS), 0);
+    assert_eq!(daemon.count(PAIRS), 1);
     lock.execute_batch("ROLLBACK").unwrap();
     daemon.launch();
     daemon.wait_count(PAIRS, 30);

@@ -10,5 +10,6 @@ mod import;
 mod keeps;
 mod replays;
 mod restores;
+mod retention;
 mod station;
 mod support;

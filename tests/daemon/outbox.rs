@@ -89,7 +89,7 @@ fn a_lost_session_is_made_good_even_if_the_record_can_not_be_written_just_then()
     broker.publish("plant/one", b"1.25");
     daemon.wait_count(GAP, 1);
     wait_for("the alarm is retained", || {
-        broker.all_retained("holdtrue/test/alarm/#").pop()
+        broker.all_retained("holdtrue/test/alarm/channel/#").pop()
     });
     wait_for("the outbox is empty", || {
         (daemon.count(OUTBOX) == 0).then_some(())
@@ -100,10 +100,14 @@ fn a_lost_session_is_made_good_even_if_the_record_can_not_be_written_just_then()
     broker.forget();
     broker.launch();
     daemon.wait_log("has to wait");
-    assert!(broker.all_retained("holdtrue/test/alarm/#").is_empty());
+    assert!(
+        broker
+            .all_retained("holdtrue/test/alarm/channel/#")
+            .is_empty()
+    );
     lock.execute_batch("ROLLBACK").unwrap();
     wait_for("the alarm is retained again", || {
-        broker.all_retained("holdtrue/test/alarm/#").pop()
+        broker.all_retained("holdtrue/test/alarm/channel/#").pop()
     });
     broker.publish("plant/one", b"1.25");
     daemon.wait_count("SELECT count(*) FROM outputs WHERE kind = 'pair'", 2);

@@ -1,11 +1,14 @@
 //! `holdtrue tell`: gives the daemon an order over the broker and waits for its answer.
 
+mod quarantine;
+
 use super::Ending;
 use crate::broker::{Answer, Event, Link, Message, Publish, Token};
 use crate::configuration::{self, Broker, Login, Protocol};
 use crate::document::topic::Topics;
 use crate::payload::order::WORD_MAX;
 use clap::{Args, Subcommand, ValueEnum};
+use quarantine::{Quarantine, Release};
 use serde_json::{Map, Value, json};
 use std::io::{self, Write};
 use std::path::{Path, PathBuf};
@@ -32,6 +35,19 @@ enum What {
         (k = 2) of the reference value; give the option again for further readings.\n\n\
         Exit code: 0 done, 1 refused, 2 wrong usage, 3 no broker or no answer.")]
     Service(Service),
+    /// What a source gave in an interval is bad: it is left out of every fit, also what comes.
+    #[command(after_help = "Example:\n  \
+        holdtrue tell quarantine --config /etc/holdtrue/holdtrue.toml --reference lab/ph \\\n    \
+        --by \"M. Ito\" --from 2026-03-03 --to 2026-03-04 --note \"buffer was spoilt\"\n\n\
+        Every fit that rests on these values is made anew from the record; the answer names them.\n\
+        Without --to the values stay out until `holdtrue tell release`.\n\n\
+        Exit code: 0 done, 1 refused, 2 wrong usage, 3 no broker or no answer.")]
+    Quarantine(Quarantine),
+    /// A quarantine is taken back: its values count again.
+    #[command(after_help = "Example:\n  \
+        holdtrue tell release --config /etc/holdtrue/holdtrue.toml q-17 --by \"M. Ito\"\n\n\
+        Exit code: 0 done, 1 refused, 2 wrong usage, 3 no broker or no answer.")]
+    Release(Release),
 }
 
 /// A service event.
@@ -155,48 +171,16 @@ impl Tell {
     pub(super) fn run(self) -> Ending {
         match self.what {
             What::Service(service) => service.run(),
+            What::Quarantine(it) => it.run(),
+            What::Release(it) => it.run(),
         }
     }
 }
 
 impl Service {
     fn run(self) -> Ending {
-        let (broker, node) = match self.way.resolve() {
-            Ok(found) => found,
-            Err(message) => {
-                eprintln!("{message}");
-                return Ending::Wrong;
-            }
-        };
         let id = self.id.clone().unwrap_or_else(own_id);
-        let topics = Topics::new(&node);
-        let answers_on = match broker.protocol {
-            Protocol::V5 => format!("{}/{}", topics.answer(), broker.client_id),
-            // There a request can't say where its answer is wanted.
-            Protocol::V311 => topics.answer(),
-        };
-        let order = Order {
-            topic: topics.order("service"),
-            payload: self.payload(&id),
-            id,
-            answers_on,
-        };
-        let runtime = tokio::runtime::Builder::new_current_thread()
-            .enable_all()
-            .build();
-        let place = format!("{}:{}", broker.host, broker.port);
-        let limit = Duration::from_secs(self.way.wait);
-        let answered = match runtime.map(|runtime| runtime.block_on(order.ask(broker, limit))) {
-            Ok(answered) => answered,
-            Err(error) => Err(error.to_string()),
-        };
-        match answered {
-            Ok(answer) => show(&answer, self.way.json),
-            Err(why) => {
-                eprintln!("error: {why} (broker {place}, node {node})");
-                Ending::Failed
-            }
-        }
+        tell(&self.way, "service", self.payload(&id), id)
     }
 
     fn payload(&self, id: &str) -> Vec<u8> {
@@ -232,6 +216,45 @@ impl Service {
             }
         }
         Value::Object(fields).to_string().into_bytes()
+    }
+}
+
+/// Tells an order, and writes the answer.
+fn tell(way: &Way, verb: &str, payload: Vec<u8>, id: String) -> Ending {
+    let (broker, node) = match way.resolve() {
+        Ok(found) => found,
+        Err(message) => {
+            eprintln!("{message}");
+            return Ending::Wrong;
+        }
+    };
+    let topics = Topics::new(&node);
+    let answers_on = match broker.protocol {
+        Protocol::V5 => format!("{}/{}", topics.answer(), broker.client_id),
+        // There a request can't say where its answer is wanted.
+        Protocol::V311 => topics.answer(),
+    };
+    let order = Order {
+        topic: topics.order(verb),
+        payload,
+        id,
+        answers_on,
+    };
+    let runtime = tokio::runtime::Builder::new_current_thread()
+        .enable_all()
+        .build();
+    let place = format!("{}:{}", broker.host, broker.port);
+    let limit = Duration::from_secs(way.wait);
+    let answered = match runtime.map(|runtime| runtime.block_on(order.ask(broker, limit))) {
+        Ok(answered) => answered,
+        Err(error) => Err(error.to_string()),
+    };
+    match answered {
+        Ok(answer) => show(&answer, way.json),
+        Err(why) => {
+            eprintln!("error: {why} (broker {place}, node {node})");
+            Ending::Failed
+        }
     }
 }
 

@@ -1,7 +1,7 @@
 //! Answers to orders.
 
 use super::{SCHEMA_VERSION, word};
-use holdtrue_engine::event::{About, Comparison, OrderAnswer, Problem, Serviced};
+use holdtrue_engine::event::{About, Comparison, OrderAnswer, Problem, Quarantined, Serviced};
 use serde::Serialize;
 
 /// What became of an order.
@@ -15,6 +15,7 @@ pub struct AnswerDocument<'a> {
     text: &'a str,
     problems: Vec<ProblemPart<'a>>,
     service: Option<ServicePart<'a>>,
+    quarantine: Option<QuarantinePart<'a>>,
 }
 
 /// One thing that stands in an order's way.
@@ -78,6 +79,20 @@ struct SawToothPart {
     mean_interval_days: Option<f64>,
 }
 
+/// What a quarantine or its release set going.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+struct QuarantinePart<'a> {
+    quarantine: &'a str,
+    channel: Option<&'a str>,
+    reference: Option<&'a str>,
+    influence: Option<&'a str>,
+    from: String,
+    to: Option<String>,
+    released: bool,
+    channels: &'a [String],
+    refitted: &'a [String],
+}
+
 impl<'a> AnswerDocument<'a> {
     /// Of one answer of the node with this name.
     #[must_use]
@@ -91,6 +106,7 @@ impl<'a> AnswerDocument<'a> {
             text: &answer.text,
             problems: answer.problems.iter().map(ProblemPart::new).collect(),
             service: answer.service.as_ref().map(ServicePart::new),
+            quarantine: answer.quarantine.as_ref().map(QuarantinePart::new),
         }
     }
 }
@@ -110,6 +126,7 @@ impl<'a> ServicePart<'a> {
         let (channel, reference) = match &serviced.about {
             About::Channel(name) => (Some(name.as_str()), None),
             About::Reference(name) => (None, Some(name.as_str())),
+            About::Influence(_) => (None, None),
         };
         let stretches = serviced
             .stretches
@@ -134,6 +151,27 @@ impl<'a> ServicePart<'a> {
                 mean_fouling: teeth.mean_fouling,
                 mean_interval_days: teeth.mean_interval_days,
             }),
+        }
+    }
+}
+
+impl<'a> QuarantinePart<'a> {
+    fn new(what: &'a Quarantined) -> Self {
+        let (channel, reference, influence) = match &what.about {
+            About::Channel(name) => (Some(name.as_str()), None, None),
+            About::Reference(name) => (None, Some(name.as_str()), None),
+            About::Influence(name) => (None, None, Some(name.as_str())),
+        };
+        Self {
+            quarantine: &what.quarantine,
+            channel,
+            reference,
+            influence,
+            from: word::time(what.interval.from),
+            to: what.interval.to.map(word::time),
+            released: what.released,
+            channels: &what.channels,
+            refitted: &what.refitted,
         }
     }
 }

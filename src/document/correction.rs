@@ -58,6 +58,14 @@ pub struct CorrectionDocument<'a> {
     certificate: Option<String>,
     certificate_expires: Option<String>,
     certificate_expired: bool,
+    supersedes: Option<Supersedes<'a>>,
+}
+
+/// Which documents one takes the place of because an order changed what they rest on.
+#[derive(Clone, Debug, PartialEq, Serialize)]
+struct Supersedes<'a> {
+    issue_number: u64,
+    order: &'a str,
 }
 
 /// What whoever uses a document must know about this kind of reference.
@@ -162,6 +170,10 @@ impl<'a> CorrectionDocument<'a> {
             certificate: joined(&references, |it| it.certificate.as_deref()),
             certificate_expires: expires.map(word::time),
             certificate_expired: expires.is_some_and(|expires| expires <= correction.issued),
+            supersedes: correction.supersedes.as_ref().map(|held| Supersedes {
+                issue_number: held.issue_number,
+                order: &held.order,
+            }),
         }
     }
 }

@@ -91,6 +91,7 @@ pub(super) fn cause(cause: Cause) -> &'static str {
         Cause::ScreenLockedOut => "screen-locked-out",
         Cause::CorrectionSize => "correction-size",
         Cause::CorrectionRate => "correction-rate",
+        Cause::Quarantined => "quarantined",
         Cause::NotRenewed => "not-renewed",
         Cause::StretchEnded => "stretch-ended",
         Cause::MonitorOnly => "monitor-only",
@@ -134,6 +135,7 @@ pub(super) fn refused_reason(reason: RefusedReason) -> &'static str {
         RefusedReason::TooFast => "too-fast",
         RefusedReason::NoInfluence => "no-influence",
         RefusedReason::ReferenceDoubted => "reference-doubted",
+        RefusedReason::Quarantined => "quarantined",
     }
 }
 

@@ -13,6 +13,7 @@ mod leap;
 mod orders;
 mod parts;
 mod pulse;
+mod quarantine;
 mod reference;
 mod reference_watch;
 mod silence;
@@ -35,6 +36,7 @@ pub(crate) use leap::LeapWatch;
 use orders::OrderBook;
 pub(crate) use parts::{FleetDraft, FleetPart};
 use pulse::Pulse;
+use quarantine::Quarantines;
 use reference::Reference;
 use reference_watch::QUORUM;
 pub(crate) use reference_watch::{Ruling, Vote};
@@ -59,6 +61,7 @@ pub struct Fleet {
     channels: Vec<Kept<Channel>>,
     agenda: Agenda,
     orders: Kept<OrderBook>,
+    quarantines: Kept<Quarantines>,
     /// References whose channels' votes came with the input at hand; none between two inputs.
     heard: BTreeSet<usize>,
     /// Last issue number of channels that were removed, by name: a number is never used twice.
@@ -105,10 +108,11 @@ impl Fleet {
         for reading in &supplied.readings {
             if !self.concerns(reading.source, supplied.channel) {
                 self.refuse_reading(reading, RefusedReason::UnknownTopic, report);
-            } else if self.may_be_supplied(reading) {
+            } else if self.may_be_supplied(reading) && !self.is_quarantined(reading) {
                 rows.add(supplied.channel, reading);
             }
         }
+        self.take_refit(supplied, report);
         let answer = Answer {
             from: supplied.from,
             to: supplied.to,
@@ -243,6 +247,11 @@ impl Fleet {
             value: reading.value,
             sequence: reading.sequence,
         };
+        if self.is_quarantined(reading) {
+            self.track_of(reading.source).insert_aside(sample);
+            self.refuse_reading(reading, RefusedReason::Quarantined, report);
+            return;
+        }
         match reading.source {
             Source::Indication(id) => {
                 let index = id.0 as usize;
@@ -326,8 +335,11 @@ impl Fleet {
             now,
             alive: self.pulse.alive(now, &self.routes),
             resumed: self.pulse.resumed(),
-            trouble: self.references[reference].trouble(),
+            trouble: self.references[reference]
+                .trouble()
+                .or_else(|| self.quarantined_now(ChannelId::at(index), now)),
             watched: self.routes.is_watched(reference),
+            barred: self.quarantines.of_constants(&self.setup, setup.reference),
         };
         let channel = &mut self.channels[index];
         act(channel, &scene);

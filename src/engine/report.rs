@@ -78,6 +78,7 @@ impl RefusedReason {
             Self::TooFast => "too-fast",
             Self::NoInfluence => "no-influence",
             Self::ReferenceDoubted => "reference-doubted",
+            Self::Quarantined => "quarantined",
         }
     }
 
@@ -127,6 +128,7 @@ impl RefusedReason {
             Self::ReferenceDoubted => {
                 "all channels of its reference disagree with that value; look at the reference"
             }
+            Self::Quarantined => "it is quarantined; release it if it is good after all",
         }
     }
 }

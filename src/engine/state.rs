@@ -30,7 +30,7 @@ pub enum PartId {
     Setup,
     /// What now is, and what is known of the node as a whole.
     Node,
-    /// Orders that were done.
+    /// Orders that were done, and the quarantines that stand.
     Orders,
     /// What was refused how often, and what was said about it.
     Counters,

@@ -54,6 +54,9 @@ impl Sample {
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
 pub(crate) struct Track {
     samples: VecDeque<Sample>,
+    /// Readings that nobody is to see, because they are quarantined: remembered so that a repeated
+    /// message is known, and until they are released.
+    aside: VecDeque<Sample>,
     /// Phenomenon time of the newest reading ever taken.
     newest: Option<Timestamp>,
     /// Phenomenon time of the newest forgotten reading.
@@ -93,29 +96,62 @@ impl Track {
 
     /// Whether the same message is remembered.
     pub(crate) fn holds(&self, reading: &Reading) -> bool {
-        self.at(reading.phenomenon)
-            .any(|sample| sample.repeats(reading.phenomenon, reading.sequence, reading.value))
+        range(
+            &self.aside,
+            reading.phenomenon,
+            reading.phenomenon.plus(Duration(1)),
+        )
+        .chain(self.at(reading.phenomenon))
+        .any(|sample| sample.repeats(reading.phenomenon, reading.sequence, reading.value))
     }
 
     /// Takes a reading.
     pub(crate) fn insert(&mut self, sample: Sample) {
-        let place = self
-            .samples
-            .partition_point(|held| held.order(&sample) != Ordering::Greater);
-        self.samples.insert(place, sample);
+        put(&mut self.samples, sample);
+        self.note(sample.time);
+    }
+
+    /// Takes the newest reading, however many there are.
+    pub(crate) fn append(&mut self, sample: Sample) {
+        self.samples.push_back(sample);
         self.newest = self.newest.max(Some(sample.time));
-        if self.samples.len() > CAPACITY {
+    }
+
+    /// Takes a reading that nobody is to see.
+    pub(crate) fn insert_aside(&mut self, sample: Sample) {
+        put(&mut self.aside, sample);
+        self.note(sample.time);
+    }
+
+    /// Sets aside the readings that are quarantined now, and puts those back that are no longer.
+    pub(crate) fn sort_out(&mut self, is_quarantined: impl Fn(Timestamp) -> bool) {
+        let all = std::mem::take(&mut self.samples);
+        let (aside, mut seen): (VecDeque<Sample>, VecDeque<Sample>) = all
+            .into_iter()
+            .partition(|sample| is_quarantined(sample.time));
+        let (mut still, back): (VecDeque<Sample>, VecDeque<Sample>) =
+            std::mem::take(&mut self.aside)
+                .into_iter()
+                .partition(|sample| is_quarantined(sample.time));
+        for sample in aside {
+            put(&mut still, sample);
+        }
+        for sample in back {
+            put(&mut seen, sample);
+        }
+        (self.samples, self.aside) = (seen, still);
+    }
+
+    fn note(&mut self, time: Timestamp) {
+        self.newest = self.newest.max(Some(time));
+        if self.samples.len() + self.aside.len() > CAPACITY {
             self.forget_oldest();
         }
     }
 
     /// Forgets what is older than `time`.
     pub(crate) fn forget_before(&mut self, time: Timestamp) {
-        while self
-            .samples
-            .front()
-            .is_some_and(|oldest| oldest.time < time)
-        {
+        while self.oldest().is_some_and(|oldest| oldest < time) {
             self.forget_oldest();
         }
     }
@@ -127,8 +163,12 @@ impl Track {
         }
         let keep = self.samples.partition_point(|held| held.time <= time);
         self.samples.truncate(keep);
+        let keep = self.aside.partition_point(|held| held.time <= time);
+        self.aside.truncate(keep);
         self.forgotten = self.forgotten.map(|edge| edge.min(time));
-        self.newest = self.samples.back().map(|held| held.time).or(self.forgotten);
+        let newest = [self.samples.back(), self.aside.back()];
+        let newest = newest.into_iter().flatten().map(|held| held.time).max();
+        self.newest = newest.or(self.forgotten);
     }
 
     /// A track of what is known of `[from, to)` once rows from the record have been added to those
@@ -141,6 +181,7 @@ impl Track {
         Self {
             newest: samples.last().map(|newest| newest.time),
             forgotten: None,
+            aside: VecDeque::new(),
             samples: samples.into(),
         }
     }
@@ -152,9 +193,12 @@ impl Track {
 
     /// All readings with `from <= time < to`, in order.
     pub(crate) fn range(&self, from: Timestamp, to: Timestamp) -> impl Iterator<Item = &Sample> {
-        let start = self.samples.partition_point(|held| held.time < from);
-        let end = self.samples.partition_point(|held| held.time < to);
-        self.samples.range(start..end.max(start))
+        range(&self.samples, from, to)
+    }
+
+    /// All readings, in order.
+    pub(crate) fn all(&self) -> impl Iterator<Item = &Sample> {
+        self.samples.iter()
     }
 
     /// The last reading at or before `time`.
@@ -169,11 +213,44 @@ impl Track {
         self.samples.get(start)
     }
 
+    /// Phenomenon time of the oldest reading remembered.
+    fn oldest(&self) -> Option<Timestamp> {
+        let oldest = [self.samples.front(), self.aside.front()];
+        oldest.into_iter().flatten().map(|held| held.time).min()
+    }
+
     fn forget_oldest(&mut self) {
-        if let Some(sample) = self.samples.pop_front() {
+        let (seen, aside) = (self.samples.front(), self.aside.front());
+        let hidden_first = match (seen, aside) {
+            (Some(seen), Some(aside)) => aside.time < seen.time,
+            (seen, _) => seen.is_none(),
+        };
+        let oldest = if hidden_first {
+            self.aside.pop_front()
+        } else {
+            self.samples.pop_front()
+        };
+        if let Some(sample) = oldest {
             self.forgotten = self.forgotten.max(Some(sample.time));
         }
     }
+}
+
+/// Puts a reading where it belongs.
+fn put(samples: &mut VecDeque<Sample>, sample: Sample) {
+    let place = samples.partition_point(|held| held.order(&sample) != Ordering::Greater);
+    samples.insert(place, sample);
+}
+
+/// All readings with `from <= time < to`, in order.
+fn range(
+    samples: &VecDeque<Sample>,
+    from: Timestamp,
+    to: Timestamp,
+) -> impl Iterator<Item = &Sample> {
+    let start = samples.partition_point(|held| held.time < from);
+    let end = samples.partition_point(|held| held.time < to);
+    samples.range(start..end.max(start))
 }
 
 /// Whether both are the same number: bit by bit, but zero has one sign.
@@ -291,6 +368,29 @@ mod tests {
         let seen: Vec<(i64, f64)> = joined.samples.iter().map(|s| (s.time.0, s.value)).collect();
         assert_eq!(seen, [(5, 2.0), (10, 1.0), (20, 1.0), (20, 3.0)]);
         assert_eq!(joined.newest(), Some(Timestamp(20)));
+    }
+
+    #[test]
+    fn what_is_set_aside_is_unseen_but_known_and_comes_back() {
+        let mut track = Track::default();
+        for time in [10, 20, 30] {
+            take(&mut track, time, 1.0, None);
+        }
+        let before = track.clone();
+        track.sort_out(|time| time.0 >= 20);
+        assert_eq!(track.all().count(), 1);
+        assert!(track.first_after(Timestamp(10)).is_none());
+        assert_eq!(track.newest(), Some(Timestamp(30)));
+        assert_eq!(
+            track.check(&reading(20, 1.0, None), Duration(100)),
+            Err(RefusedReason::Duplicate)
+        );
+        track.sort_out(|_| false);
+        assert_eq!(track, before);
+        track.sort_out(|time| time.0 == 10);
+        track.forget_before(Timestamp(20));
+        track.sort_out(|_| false);
+        assert_eq!(track.all().count(), 2, "what is aside grows old, too");
     }
 
     #[test]

@@ -24,7 +24,7 @@ use crate::document::{self};
 use crate::record::{DayName, Disk, Head, Record, RecordError, Retention, Settled, Turn};
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Input, Output, Source, Supplied};
-use holdtrue_engine::setup::{Clock, Setup};
+use holdtrue_engine::setup::{ChannelId, Clock, ReferenceKind, Setup};
 use holdtrue_engine::time::Timestamp;
 use rhythm::Rhythm;
 use std::collections::BTreeSet;
@@ -32,7 +32,7 @@ use std::path::Path;
 use std::sync::atomic::AtomicBool;
 
 /// Recorded rows given back to the engine at once, at most; the newest are left out.
-const SUPPLIED_MAX: usize = 100_000;
+const SUPPLIED_MAX: usize = 1_000_000;
 
 /// The engine and what must stay in step with it. `T` is what an acknowledgement needs.
 pub struct Keeper<T = ()> {
@@ -403,12 +403,18 @@ impl<T> Keeper<T> {
 
 /// Whose rows can serve a channel.
 #[must_use]
-pub fn sources_of(channel: holdtrue_engine::setup::ChannelId, setup: &Setup) -> Vec<Source> {
-    let mut sources = vec![Source::Indication(channel)];
-    if let Some(setup) = setup.channels.get(channel.0 as usize) {
-        sources.push(Source::Reference(setup.reference));
-        let influences = setup.influences.iter();
-        sources.extend(influences.map(|influence| Source::Influence(influence.source)));
+pub fn sources_of(id: ChannelId, setup: &Setup) -> Vec<Source> {
+    let mut sources = vec![Source::Indication(id)];
+    let Some(channel) = setup.channels.get(id.0 as usize) else {
+        return sources;
+    };
+    sources.push(Source::Reference(channel.reference));
+    let influences = channel.influences.iter();
+    sources.extend(influences.map(|influence| Source::Influence(influence.source)));
+    let reference = setup.references.get(channel.reference.0 as usize);
+    if let Some(ReferenceKind::Group { members }) = reference.map(|it| &it.kind) {
+        let others = members.iter().filter(|&&member| member != id);
+        sources.extend(others.copied().map(Source::Indication));
     }
     sources
 }

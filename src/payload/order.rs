@@ -6,7 +6,8 @@
 use super::fault::{excerpt, excerpt_bytes};
 use super::instant;
 use holdtrue_engine::event::{
-    About, Act, CheckPoint, Input, Order, Problem, ReplyTo, ServiceEvent, Wish,
+    About, Act, CheckPoint, Input, Interval, Order, Problem, Quarantine, Release, ReplyTo,
+    ServiceEvent, Wish,
 };
 use holdtrue_engine::time::Timestamp;
 use serde_json::{Map, Value};
@@ -136,14 +137,17 @@ fn read(message: &OrderMessage<'_>) -> (String, Wish) {
              topic) and publish it without",
         );
     }
-    let event = if message.verb == "service" {
-        service(&mut fields)
-    } else {
-        fields.unknown_verb(message.verb);
-        None
+    let wish = match message.verb {
+        "service" => service(&mut fields).map(Wish::Service),
+        "quarantine" => quarantine(&mut fields).map(Wish::Quarantine),
+        "release" => release(&mut fields).map(Wish::Release),
+        _ => {
+            fields.unknown_verb(message.verb);
+            None
+        }
     };
-    let wish = match (event, fields.finish()) {
-        (Some(event), problems) if problems.is_empty() => Wish::Service(event),
+    let wish = match (wish, fields.finish()) {
+        (Some(wish), problems) if problems.is_empty() => wish,
         (_, problems) => Wish::Unusable(problems),
     };
     (id, wish)
@@ -172,6 +176,66 @@ fn service(fields: &mut Fields<'_>) -> Option<ServiceEvent> {
         certificate,
         note,
     })
+}
+
+/// A quarantine; `None` as for a service event.
+fn quarantine(fields: &mut Fields<'_>) -> Option<Quarantine> {
+    let about = source(fields);
+    let by = fields.need_text("by", "the name of who says so");
+    let from = fields.need_time("from", "the first time at which its values are bad");
+    let to = fields.time("to");
+    let note = fields.text("note", NOTE_MAX).unwrap_or_default();
+    fields.refuse_unknown();
+    Some(Quarantine {
+        by: by?,
+        about: about?,
+        interval: Interval { from: from?, to },
+        note,
+    })
+}
+
+/// The release of a quarantine; `None` as for a service event.
+fn release(fields: &mut Fields<'_>) -> Option<Release> {
+    let quarantine = fields.need_text("quarantine", "the id of the order that began it");
+    let by = fields.need_text("by", "the name of who says so");
+    let note = fields.text("note", NOTE_MAX).unwrap_or_default();
+    fields.refuse_unknown();
+    Some(Release {
+        by: by?,
+        quarantine: quarantine?,
+        note,
+    })
+}
+
+/// Whose values a quarantine is about.
+fn source(fields: &mut Fields<'_>) -> Option<About> {
+    let named = [
+        fields.text("channel", WORD_MAX).map(About::Channel),
+        fields.text("reference", WORD_MAX).map(About::Reference),
+        fields.text("influence", WORD_MAX).map(About::Influence),
+    ];
+    let mut named = named.into_iter().flatten();
+    match (named.next(), named.next()) {
+        (Some(about), None) => Some(about),
+        (Some(about), Some(_)) => {
+            let way_out =
+                "name one of channel, reference and influence; for more, send more orders";
+            fields.problem("channel", about.name(), way_out);
+            None
+        }
+        (None, _) => {
+            // Where one is there and not a text, that has been told.
+            if !["channel", "reference", "influence"]
+                .iter()
+                .any(|name| fields.has(name))
+            {
+                let way_out = "missing; name whose values are bad, as it is configured \
+                               (or, for others, `reference` or `influence`)";
+                fields.problem("channel", "", way_out);
+            }
+            None
+        }
+    }
 }
 
 fn about(fields: &mut Fields<'_>) -> Option<About> {
@@ -272,6 +336,14 @@ impl<'a> Fields<'a> {
         found
     }
 
+    fn need_time(&mut self, name: &'static str, what: &str) -> Option<Timestamp> {
+        let found = self.time(name);
+        if found.is_none() && !self.has(name) {
+            self.problem(name, "", &format!("missing; {what}"));
+        }
+        found
+    }
+
     fn time(&mut self, name: &'static str) -> Option<Timestamp> {
         let text = self.text(name, WORD_MAX)?;
         match instant::from_text(&text) {
@@ -349,7 +421,8 @@ impl<'a> Fields<'a> {
     }
 
     fn unknown_verb(&mut self, verb: &str) {
-        let way_out = "no such order; this version takes order/service";
+        let way_out =
+            "no such order; this version takes order/service, order/quarantine and order/release";
         self.problem("", verb, way_out);
     }
 
@@ -414,7 +487,7 @@ mod tests {
                 .iter()
                 .map(|problem| (problem.field.as_str(), problem.value.as_str()))
                 .collect(),
-            Wish::Service(event) => panic!("taken: {event:?}"),
+            taken => panic!("taken: {taken:?}"),
         }
     }
 
@@ -578,5 +651,45 @@ mod tests {
             r#"{"id":"v-7","channel":null,"act":"cleaned","by":"night shift"}"#,
         );
         assert_eq!(problems(&order), [("channel", "")]);
+    }
+
+    #[test]
+    fn a_quarantine_and_its_release_are_read() {
+        let order = take(
+            "quarantine",
+            r#"{"id":"q-1","reference":"lab","from":"2026-03-01","by":"M. Ito","note":"spoilt"}"#,
+        );
+        let expected = Wish::Quarantine(Quarantine {
+            by: "M. Ito".to_owned(),
+            about: About::Reference("lab".to_owned()),
+            interval: Interval {
+                from: Timestamp(1_772_323_200_000_000_000),
+                to: None,
+            },
+            note: "spoilt".to_owned(),
+        });
+        assert_eq!((order.id.as_str(), order.wish), ("q-1", expected));
+        let order = take(
+            "release",
+            r#"{"id":"r-1","quarantine":"q-1","by":"M. Ito"}"#,
+        );
+        let expected = Wish::Release(Release {
+            by: "M. Ito".to_owned(),
+            quarantine: "q-1".to_owned(),
+            note: String::new(),
+        });
+        assert_eq!((order.id.as_str(), order.wish), ("r-1", expected));
+    }
+
+    #[test]
+    fn everything_wrong_with_a_quarantine_is_told() {
+        let order = take(
+            "quarantine",
+            r#"{"id":"q-1","reference":"lab","influence":"t","to":"tomorrow","at":"x"}"#,
+        );
+        let fields: Vec<&str> = problems(&order).iter().map(|(field, _)| *field).collect();
+        assert_eq!(fields, ["channel", "by", "from", "to", "at"]);
+        let order = take("release", r#"{"id":"r-1","by":"M. Ito"}"#);
+        assert_eq!(problems(&order), [("quarantine", "")]);
     }
 }

@@ -11,4 +11,4 @@ pub const ARITHMETIC_REVISION: i64 = 1;
 
 /// Revision of the saved state: raise it when a type of the engine's state changes. States of
 /// another revision are not read; the state is then built anew from the recorded inputs.
-pub const STATE_REVISION: i64 = 1;
+pub const STATE_REVISION: i64 = 2;

@@ -8,6 +8,7 @@ mod order;
 mod outlook;
 mod publishing;
 mod purity;
+mod quarantine;
 mod random;
 mod reference_judged;
 mod scenarios;

@@ -172,3 +172,36 @@ fn a_missing_part_is_told_by_name_and_one_too_many_is_passed_over() {
     more.insert(PartId::Channel(77), vec![1, 2, 3]);
     assert!(read(&more) == engine);
 }
+
+/// Whatever the disk makes of a part, reading it says so by its name, or makes an engine; it never
+/// fails otherwise.
+#[test]
+fn a_damaged_part_is_told_by_name() {
+    let engine = worked();
+    let stored = all(&engine);
+    let ids: Vec<PartId> = engine.parts().collect();
+    let mut random = ChaCha12Rng::seed_from_u64(3000);
+    let mut told = 0;
+    for turn in 0..1000 {
+        let id = ids[below(&mut random, u32::try_from(ids.len()).expect("few")) as usize];
+        let mut damaged = stored.clone();
+        let bytes = damaged.get_mut(&id).expect("stored");
+        let place = below(&mut random, u32::try_from(bytes.len()).expect("small")) as usize;
+        match turn % 4 {
+            0 => bytes.truncate(place),
+            1 => bytes.push(7),
+            2 => bytes[place] = 0xff,
+            _ => bytes[place] ^= 1 << below(&mut random, 8),
+        }
+        let parts = damaged.iter().map(|(id, bytes)| (*id, bytes.as_slice()));
+        match decode(parts) {
+            Err(error) => {
+                told += 1;
+                // A setup that says something else makes other parts unfit.
+                assert!(error.part == id || id == PartId::Setup, "{id}: {error}");
+            }
+            Ok(_) => assert!(turn % 4 > 1, "{id}: too short or too long, and taken"),
+        }
+    }
+    assert!(told > 500, "{told}");
+}

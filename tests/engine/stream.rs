@@ -14,6 +14,7 @@ use holdtrue_engine::setup::{
     ChannelId, ChannelInfluence, Clock, InfluenceId, InfluenceSetup, ReferenceId, ReferenceKind,
     Setup, WindowLength,
 };
+use holdtrue_engine::time::Timestamp;
 use rand_chacha::ChaCha12Rng;
 use rand_chacha::rand_core::{Rng as _, SeedableRng as _};
 use rand_distr::{Distribution as _, StandardNormal};
@@ -294,11 +295,32 @@ pub struct Shell {
 impl Shell {
     /// Feeds one input, and whatever rows it makes the engine ask for.
     pub fn step(&mut self, engine: &mut Engine, input: &Input) {
+        self.remember(input);
+        let seen = self.said.len();
+        engine.step(input, &mut self.said);
+        self.answer_since(seen, engine);
+    }
+
+    /// Keeps a reading that somebody else feeds.
+    pub fn remember(&mut self, input: &Input) {
         if let Input::Reading(reading) = input {
             self.readings.push(reading.clone());
         }
-        let mut seen = self.said.len();
-        engine.step(input, &mut self.said);
+    }
+
+    /// The record holds nothing older any more.
+    pub fn forget_before(&mut self, time: Timestamp) {
+        self.readings.retain(|reading| reading.phenomenon >= time);
+    }
+
+    /// Hands over what was wanted earlier.
+    pub fn answer(&mut self, engine: &mut Engine, wanted: &[Output]) {
+        let seen = self.said.len();
+        self.said.extend_from_slice(wanted);
+        self.answer_since(seen, engine);
+    }
+
+    fn answer_since(&mut self, mut seen: usize, engine: &mut Engine) {
         while let Some(output) = self.said.get(seen).cloned() {
             seen += 1;
             if let Output::Wanted { channel, from, to } = output {

@@ -205,6 +205,7 @@ mod tests {
             residual_sd: 0.1,
             stretch: 1,
             range: (8.0, 14.0),
+            supersedes: None,
         }
     }
 

@@ -60,6 +60,7 @@ impl Channel {
             Carries::Nothing => None,
         });
         self.stretch.begin_at(at);
+        self.stretch.open_with(opening, from);
         for pair in opening {
             self.offer_to_stretch(pair, None, scene, report);
         }

@@ -26,6 +26,9 @@ impl Channel {
         if !struck.is_empty() {
             self.stretch.forget_latest(&struck);
             self.breaks.forget_latest(struck.len());
+            for held in &struck {
+                self.struck.note(held.pair.time);
+            }
             for held in struck.iter().filter(|held| held.rejected.is_none()) {
                 telling::tell_struck(&held.pair, shift, scene, report);
             }

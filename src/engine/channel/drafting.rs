@@ -2,7 +2,7 @@
 
 use super::judgement::Judgement;
 use super::{Scene, conformity};
-use crate::event::{Correction, InfluenceTerm, Rung};
+use crate::event::{Correction, InfluenceTerm, Rung, Superseding};
 use crate::fit::Published;
 use crate::fit::basis::MAX_INFLUENCES;
 use crate::time::Timestamp;
@@ -16,6 +16,8 @@ pub(super) struct Draft {
     /// What is suppressed, to be inside U.
     pub(super) hidden: f64,
     pub(super) stretch: u32,
+    /// Why it takes the place of what was issued before.
+    pub(super) supersedes: Option<Superseding>,
 }
 
 impl Draft {
@@ -65,6 +67,7 @@ impl Draft {
             residual_sd: published.residual_sd,
             stretch: self.stretch,
             range: published.terms.learned.x.unwrap_or((0.0, 0.0)),
+            supersedes: self.supersedes.clone(),
         }
     }
 }

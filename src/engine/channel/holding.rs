@@ -103,6 +103,7 @@ fn held_correction(
         standard_uncertainty: u,
         expanded_uncertainty: expanded,
         corrected_zone: conformity::state(0.0, u, expanded, scene).zone(),
+        supersedes: None,
         ..document
     }
 }

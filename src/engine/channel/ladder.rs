@@ -254,7 +254,8 @@ impl Channel {
                 deadband,
             )
         });
-        scene.trouble.or(locked_out).or(size).or(rate)
+        let refits = self.refit.is_some().then_some(Cause::Quarantined);
+        scene.trouble.or(refits).or(locked_out).or(size).or(rate)
     }
 
     /// Whether a value is past its limit, or was and is not yet clear of it by the deadband.
@@ -294,6 +295,10 @@ fn why(because: Cause, reference: &str) -> String {
             "the correction was held as long as permitted and reference {reference} still gives \
              no value; look at the reference and its link"
         ),
+        Cause::Quarantined => {
+            "the correction was held as long as permitted and what it rests on is still quarantined"
+                .to_owned()
+        }
         Cause::ScreenLockedOut => format!(
             "the readings do not fit what was learned; look at the sensor and at reference \
              {reference}"

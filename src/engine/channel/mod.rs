@@ -31,7 +31,9 @@ mod outlook;
 mod pairing;
 mod publishing;
 mod recent;
+mod refit;
 mod review;
+mod scene;
 mod screening;
 mod service;
 mod status;
@@ -43,9 +45,8 @@ pub(crate) mod testing;
 mod waiting;
 
 use crate::event::{Cause, Flag, Output, Subject};
-use crate::kept::Kept;
 use crate::report::Report;
-use crate::setup::{ChannelId, ChannelSetup, ReferenceSetup};
+use crate::setup::{ChannelId, ChannelSetup};
 use crate::standing::{AlarmStanding, ChannelStanding};
 use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
@@ -55,10 +56,14 @@ pub(crate) use checks::jumps;
 use conditions::ChannelAlarms;
 use ladder::{Ladder, Unrenewed, tell_withdrawn};
 use outlook::OutlookStation;
-pub(crate) use pairing::{Answer, Check, Holding, Rows, holding};
-use pairing::{Found, Pair, Pairing};
+pub(crate) use pairing::Pair;
+pub(crate) use pairing::{Answer, Check, Holding, Rows, all_pairs, holding};
+use pairing::{Found, Pairing};
 use publishing::Publishing;
 use recent::{Recent, Remembered};
+pub(crate) use refit::Rebuilding;
+use refit::{Refit, Struck};
+pub(crate) use scene::Scene;
 pub(crate) use screening::MAD_TO_SD;
 use serde::{Deserialize, Serialize};
 use service::ServiceBook;
@@ -66,30 +71,6 @@ pub(crate) use service::{Effect, Service};
 use stepping::Stepped;
 use stretch::Stretch;
 use waiting::Waiting;
-
-/// What a channel can see while it acts: its own setup, and what others share with it.
-pub(crate) struct Scene<'a> {
-    pub(crate) id: ChannelId,
-    pub(crate) setup: &'a ChannelSetup,
-    pub(crate) reference: &'a ReferenceSetup,
-    /// The known values that its reference stands for while their gates are open.
-    pub(crate) checks: Vec<Check<'a>>,
-    /// Recent values of its reference.
-    pub(crate) values: &'a Track,
-    /// Recent indications of all channels, by position.
-    pub(crate) indications: &'a [Kept<Track>],
-    /// Recent values of all influence quantities, by source.
-    pub(crate) influences: &'a [Kept<Track>],
-    pub(crate) now: Timestamp,
-    /// Up to when the node is known to have been listening.
-    pub(crate) alive: Timestamp,
-    /// When the node began to listen again after it heard nothing from anywhere.
-    pub(crate) resumed: Option<Timestamp>,
-    /// What is wrong with its reference, if anything is.
-    pub(crate) trouble: Option<Cause>,
-    /// Whether its reference is judged by its channels before they take its values.
-    pub(crate) watched: bool,
-}
 
 /// The state of one channel.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
@@ -111,6 +92,9 @@ pub(crate) struct Channel {
     unrenewed: Option<Unrenewed>,
     alarms: ChannelAlarms,
     service: ServiceBook,
+    /// A refit that waits for rows from the record.
+    refit: Option<Box<Refit>>,
+    struck: Struck,
     /// From when on the channel's silence counts while it has said nothing.
     began: Option<Timestamp>,
     /// Phenomenon time of the newest pair made, whatever its fate.
@@ -135,6 +119,8 @@ impl Channel {
             unrenewed: None,
             alarms: ChannelAlarms::default(),
             service: ServiceBook::default(),
+            refit: None,
+            struck: Struck::default(),
             began: None,
             last_reference: None,
             wake: Some(Timestamp(i64::MIN)),
@@ -173,6 +159,22 @@ impl Channel {
     pub(crate) fn check_indication(&mut self, sample: &Sample, setup: &ChannelSetup) -> Flag {
         self.checks
             .take_indication(sample.time, sample.value, setup)
+    }
+
+    /// Those of a channel's indications, in order, that nothing speaks against when they are looked
+    /// at one by one: none came too fast, none was one of too many repetitions.
+    pub(crate) fn credible(indications: &Track, setup: &ChannelSetup) -> Track {
+        let mut checks = Checks::default();
+        let mut credible = Track::default();
+        let limit = setup.screening.max_rate.filter(|_| setup.screening.enabled);
+        for sample in indications.all() {
+            let leaps = limit.and_then(|limit| jumps(&credible, sample.time, sample.value, limit));
+            let flag = checks.take_indication(sample.time, sample.value, setup);
+            if leaps.is_none() && flag == Flag::Pass {
+                credible.append(*sample);
+            }
+        }
+        credible
     }
 
     /// Its own indication was kept out as stuck.
@@ -392,7 +394,7 @@ impl Channel {
         let subject = Subject::Channel(scene.id);
         for found in found {
             match found {
-                Found::Pair(pair) => self.offer(&pair, scene, report),
+                Found::Pair(pair) => self.offer_unless_refitted(&pair, scene, report),
                 Found::Missed { time, reason } => {
                     report.refuse(scene.now, subject, reason, || {
                         format!(

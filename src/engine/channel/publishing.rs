@@ -25,7 +25,7 @@ use super::judgement::{Judgement, polynomial};
 use super::levels::Corner;
 use super::review::MOVED_PART;
 use super::{Scene, levels};
-use crate::event::{Corrected, Correction, Output, WindowSeen};
+use crate::event::{Corrected, Correction, Output, Superseding, WindowSeen};
 use crate::fit::Published;
 use crate::report::Report;
 use crate::time::{Duration, Timestamp};
@@ -52,6 +52,8 @@ pub(crate) struct Publishing {
     pub(super) issued: u64,
     /// Whether the dead zone lets the correction through.
     applied: bool,
+    /// What the next document is to say of those before it.
+    superseding: Option<Superseding>,
     pub(super) in_force: Option<InForce>,
 }
 
@@ -73,6 +75,7 @@ impl Publishing {
         Self {
             issued,
             applied: false,
+            superseding: None,
             in_force: None,
         }
     }
@@ -106,6 +109,22 @@ impl Publishing {
         if let Some(held) = &mut self.in_force {
             held.review = Timestamp(i64::MIN);
         }
+    }
+
+    /// The next document takes the place of those before it, as this order demands, and is issued
+    /// whether it differs or not.
+    pub(crate) fn supersede(&mut self, order: &str) {
+        if self.issued > 0 {
+            self.superseding = Some(Superseding {
+                issue_number: self.issued,
+                order: order.to_owned(),
+            });
+        }
+    }
+
+    /// Whether the next document is to take the place of those before it.
+    pub(crate) fn is_to_supersede(&self) -> bool {
+        self.superseding.is_some()
     }
 
     /// A new stretch begins: the dead zone has not let its correction through yet.
@@ -164,14 +183,17 @@ impl Publishing {
             valid_until,
             hidden,
             stretch,
+            supersedes: self.superseding.clone(),
         }
         .of(judgement, scene);
         if candidate.valid_until <= scene.now {
             return;
         }
-        if !self.differs(&candidate, hidden, &corners, scene) {
+        let supersedes = self.superseding.is_some();
+        if !supersedes && !self.differs(&candidate, hidden, &corners, scene) {
             return;
         }
+        self.superseding = None;
         self.issued += 1;
         self.in_force = Some(InForce {
             rest_variance: judgement.rest_variance,

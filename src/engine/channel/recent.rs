@@ -57,6 +57,12 @@ impl Recent {
         })
     }
 
+    /// Forgets all pairs of this stretch.
+    pub(super) fn forget_stretch(&mut self, stretch: u32) {
+        self.pairs
+            .retain(|remembered| remembered.stretch != stretch);
+    }
+
     /// Takes out those that are not older than `at`, in the order in which they came.
     pub(super) fn take_since(&mut self, at: Timestamp) -> Vec<Remembered> {
         self.take(|held| held.pair.time >= at)

@@ -70,6 +70,7 @@ fn of_ladder(ladder: Ladder) -> Option<Status> {
             Cause::ReferenceStep
             | Cause::ReferenceStuck
             | Cause::ReferenceStale
+            | Cause::Quarantined
             | Cause::NotRenewed
             | Cause::StretchEnded
             | Cause::MonitorOnly

@@ -22,6 +22,10 @@ pub(super) struct Stretch {
     number: u32,
     /// When it began, if it follows on another: nothing older belongs to it.
     began: Option<Timestamp>,
+    /// Nothing older than this is taken, though it began earlier.
+    takes_from: Option<Timestamp>,
+    /// Pairs that it began with and nobody had measured: as-left readings.
+    opening: Vec<Pair>,
     screen: Screen,
     fit: Fit,
     residuals: Residuals,
@@ -68,6 +72,8 @@ impl Stretch {
         Self {
             number,
             began: None,
+            takes_from: None,
+            opening: Vec::new(),
             screen: Screen::default(),
             fit: Fit::new(setup.fit),
             residuals: Residuals::default(),
@@ -109,6 +115,22 @@ impl Stretch {
     /// Nothing older than this belongs to it.
     pub(super) fn begin_at(&mut self, at: Timestamp) {
         self.began = Some(at);
+    }
+
+    /// It begins with these pairs, and takes others from this instant on.
+    pub(super) fn open_with(&mut self, opening: &[Pair], from: Timestamp) {
+        self.opening = opening.to_vec();
+        self.takes_from = Some(from);
+    }
+
+    /// The pairs that it began with.
+    pub(super) fn opening(&self) -> &[Pair] {
+        &self.opening
+    }
+
+    /// From when on it takes pairs; `None` for a channel's first.
+    pub(super) fn takes_from(&self) -> Option<Timestamp> {
+        self.takes_from
     }
 
     /// When it began; `None` for a channel's first.
@@ -277,6 +299,22 @@ impl Stretch {
         self.last_pair = self.fit.window().newest();
         self.unjudged += left;
         self.judged = None;
+    }
+
+    /// This stretch with nothing in it, to take its pairs again.
+    pub(super) fn afresh(&self, setup: &ChannelSetup) -> Self {
+        Self {
+            began: self.began,
+            takes_from: self.takes_from,
+            opening: self.opening.clone(),
+            ..Self::new(self.number, setup)
+        }
+    }
+
+    /// The number of pairs that entered is known otherwise: some have left the window and were not
+    /// taken again.
+    pub(super) fn set_pairs(&mut self, pairs: u64) {
+        self.pairs = self.pairs.max(pairs);
     }
 
     /// Forgets what the latest pairs, which were struck, said of the noise.

@@ -68,6 +68,21 @@ pub(super) fn tell_struck(
     report.say(fate(pair, Some(rejection), scene));
 }
 
+/// Says what has become of a pair in the end, when many are told at once: a rejection is counted, but
+/// people are told once, of all of them.
+pub(super) fn tell_quietly(
+    pair: &Pair,
+    rejected: Option<Rejection>,
+    scene: &Scene<'_>,
+    report: &mut Report<'_>,
+) {
+    if let Some(rejection) = rejected {
+        let subject = Subject::Channel(scene.id);
+        report.counters.add(subject, rejection.reason);
+    }
+    report.say(fate(pair, rejected, scene));
+}
+
 fn fate(pair: &Pair, rejected: Option<Rejection>, scene: &Scene<'_>) -> Output {
     Output::Pair(PairFate {
         channel: scene.id,

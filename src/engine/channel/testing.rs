@@ -76,6 +76,7 @@ impl Stage {
             resumed: None,
             trouble: None,
             watched: false,
+            barred: Vec::new(),
         };
         let mut report = Report {
             outputs: &mut outputs,

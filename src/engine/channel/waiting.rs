@@ -9,6 +9,7 @@ use super::{Channel, Scene, telling};
 use crate::event::Cause;
 use crate::fleet::{Ruling, Vote};
 use crate::report::Report;
+use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
 /// Most pairs that wait; the oldest of more go on. Far above what a reference's doubt can last.
@@ -62,6 +63,17 @@ impl Channel {
         }
     }
 
+    /// Whether a pair of this time is still to come out of pairing, or waits for a judgement.
+    pub(super) fn waits(&self, time: Timestamp, scene: &Scene<'_>) -> bool {
+        let mut waiting = self.waiting.pairs.iter();
+        waiting.any(|waiter| waiter.pair.time == time) || self.pairing.is_making(time, scene)
+    }
+
+    /// Drops the pairs that wait and rest on something that no longer counts.
+    pub(super) fn drop_votes(&mut self, rests: impl Fn(&Pair) -> bool) {
+        self.waiting.pairs.retain(|waiter| !rests(&waiter.pair));
+    }
+
     /// Whether a vote has found no hearing yet.
     pub(crate) fn has_votes(&self) -> bool {
         let newest = self.waiting.pairs.iter().rev();
@@ -104,7 +116,10 @@ impl Channel {
     ) {
         match struck {
             None => self.take_pair(pair, scene, report),
-            Some(shift) => telling::tell_struck(pair, shift, scene, report),
+            Some(shift) => {
+                self.struck.note(pair.time);
+                telling::tell_struck(pair, shift, scene, report);
+            }
         }
     }
 }

@@ -1,6 +1,6 @@
 //! What became of an order.
 
-use crate::event::{About, Act, Problem, ReplyTo};
+use crate::event::{About, Act, Interval, Problem, ReplyTo};
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
@@ -21,6 +21,26 @@ pub struct OrderAnswer {
     pub problems: Vec<Problem>,
     /// What a service event led to, if accepted.
     pub service: Option<Serviced>,
+    /// What a quarantine or its release sets going.
+    pub quarantine: Option<Quarantined>,
+}
+
+/// What a quarantine, or its release, sets going.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Quarantined {
+    /// The id of the order that began the quarantine.
+    pub quarantine: String,
+    /// Whose values.
+    pub about: About,
+    /// The phenomenon times that are, or were, bad.
+    pub interval: Interval,
+    /// The values count again.
+    pub released: bool,
+    /// The channels that rest on these values, by name: corrections of theirs, from windows that
+    /// hold part of the interval, are to be looked at.
+    pub channels: Vec<String>,
+    /// Those of them whose present fit is made anew from the record; each holds until then.
+    pub refitted: Vec<String>,
 }
 
 /// What a service event led to.

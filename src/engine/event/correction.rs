@@ -87,6 +87,19 @@ pub struct Correction {
     /// Lowest and highest level in the window, on the side of the span: the correction was learned
     /// there.
     pub range: (f64, f64),
+    /// Why earlier documents no longer hold, where this one was made anew because of a quarantine
+    /// or its release.
+    pub supersedes: Option<Superseding>,
+}
+
+/// A correction made anew after an order changed which values count.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Superseding {
+    /// The newest document that it takes the place of; so it does of all before it whose windows
+    /// hold part of the order's interval.
+    pub issue_number: u64,
+    /// The order's id.
+    pub order: String,
 }
 
 /// What an influence quantity does to the correction.

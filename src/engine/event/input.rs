@@ -107,6 +107,8 @@ pub enum RefusedReason {
     NoInfluence,
     /// Its reference value is not to be trusted: all channels of the reference disagree with it.
     ReferenceDoubted,
+    /// Somebody declared the values of its source bad for that time.
+    Quarantined,
 }
 
 /// Rows from the record, given back: the answer to one

@@ -20,13 +20,20 @@ mod step;
 mod validation;
 
 pub use alarm::{AlarmChange, AlarmKind, AlarmState};
-pub use answer::{ComparedPoint, Comparison, Fouling, OrderAnswer, SawTooth, Serviced};
-pub use correction::{Corrected, Correction, CriterionValues, InfluenceTerm, WindowSeen, Zone};
+pub use answer::{
+    ComparedPoint, Comparison, Fouling, OrderAnswer, Quarantined, SawTooth, Serviced,
+};
+pub use correction::{
+    Corrected, Correction, CriterionValues, InfluenceTerm, Superseding, WindowSeen, Zone,
+};
 pub use degree::{DegreeChange, Evidence};
 pub use input::{Gate, Reading, Refused, RefusedReason, Source, Supplied};
 pub use ladder::{Cause, Rung, Status};
 pub use notice::Notice;
-pub use order::{About, Act, CheckPoint, Order, Problem, ReplyTo, ServiceEvent, Wish};
+pub use order::{
+    About, Act, CheckPoint, Interval, Order, Problem, Quarantine, Release, ReplyTo, ServiceEvent,
+    Wish,
+};
 pub use outlook::{
     AsFound, Cadence, Conformity, Drift, NoStatement, Outlook, Recalibration, Staircase,
     TimeToLimit,

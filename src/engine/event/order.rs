@@ -31,6 +31,10 @@ pub struct ReplyTo {
 pub enum Wish {
     /// Something was done to an instrument.
     Service(ServiceEvent),
+    /// What a source gave in an interval is declared bad after the fact.
+    Quarantine(Quarantine),
+    /// A quarantine is taken back.
+    Release(Release),
     /// The message can't be used; it is recorded and answered all the same.
     Unusable(Vec<Problem>),
 }
@@ -70,6 +74,47 @@ pub struct ServiceEvent {
     pub note: String,
 }
 
+/// What a source gave in an interval is not to be used: neither what has come nor what comes.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Quarantine {
+    /// Who says so.
+    pub by: String,
+    /// Whose values.
+    pub about: About,
+    /// The phenomenon times that are bad; without an end, until it is released.
+    pub interval: Interval,
+    /// Why.
+    pub note: String,
+}
+
+/// A span of phenomenon time.
+#[derive(Clone, Copy, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Interval {
+    /// Its first instant.
+    pub from: Timestamp,
+    /// The first instant after it; `None`: it has no end yet.
+    pub to: Option<Timestamp>,
+}
+
+impl Interval {
+    /// Whether an instant lies in it.
+    #[must_use]
+    pub fn holds(&self, time: Timestamp) -> bool {
+        self.from <= time && self.to.is_none_or(|to| time < to)
+    }
+}
+
+/// A quarantine is taken back: its values count again.
+#[derive(Clone, Debug, PartialEq, Eq, Serialize, Deserialize)]
+pub struct Release {
+    /// Who says so.
+    pub by: String,
+    /// The id of the order that began the quarantine.
+    pub quarantine: String,
+    /// Why.
+    pub note: String,
+}
+
 /// What an instrument is to the node, by its configured name.
 #[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord, Serialize, Deserialize)]
 pub enum About {
@@ -77,6 +122,8 @@ pub enum About {
     Channel(String),
     /// A reference.
     Reference(String),
+    /// A source of an influence quantity: its topic and place, or the name that channels give it.
+    Influence(String),
 }
 
 impl About {
@@ -84,7 +131,7 @@ impl About {
     #[must_use]
     pub fn name(&self) -> &str {
         match self {
-            Self::Channel(name) | Self::Reference(name) => name,
+            Self::Channel(name) | Self::Reference(name) | Self::Influence(name) => name,
         }
     }
 }

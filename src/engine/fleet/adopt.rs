@@ -3,6 +3,7 @@
 use super::agenda::Agenda;
 use super::orders::OrderBook;
 use super::pulse::Pulse;
+use super::quarantine::Quarantines;
 use super::reference::Reference;
 use super::{Fleet, trust};
 use crate::channel::Channel;
@@ -268,6 +269,7 @@ impl Fleet {
             retired: old.retire(setup),
             agenda: Agenda::default(),
             orders: Kept::new(OrderBook::clone(&old.orders)),
+            quarantines: Kept::new(Quarantines::clone(&old.quarantines)),
             heard: BTreeSet::new(),
         };
         report.leaps.settle();
@@ -276,6 +278,7 @@ impl Fleet {
         old.dismiss_references(&taken_references, report);
         let now = self.now.unwrap_or(Timestamp(0));
         self.pulse.edit(&self.routes, now, report);
+        self.move_quarantines(&old.setup);
         let new_place = |subject| self.moved(&old.setup, subject);
         report.counters.renumber(new_place);
         report.notices.renumber(new_place);
@@ -388,7 +391,7 @@ impl Fleet {
     }
 
     /// Where a subject of the old configuration stands now.
-    fn moved(&self, old: &Setup, subject: Subject) -> Option<Subject> {
+    pub(super) fn moved(&self, old: &Setup, subject: Subject) -> Option<Subject> {
         match subject {
             Subject::Node => Some(Subject::Node),
             Subject::Channel(id) => {

@@ -8,6 +8,7 @@ use super::adopt::Routes;
 use super::agenda::{Agenda, Waiter};
 use super::orders::OrderBook;
 use super::pulse::Pulse;
+use super::quarantine::Quarantines;
 use super::reference::Reference;
 use crate::channel::Channel;
 use crate::kept::Kept;
@@ -24,7 +25,7 @@ pub(crate) struct FleetPart<'a>(Piece<'a>);
 enum Piece<'a> {
     Setup(&'a Setup, &'a BTreeMap<String, u64>),
     Node(Option<Timestamp>, &'a Pulse, &'a BTreeSet<usize>),
-    Orders(&'a OrderBook),
+    Orders(&'a OrderBook, &'a Quarantines),
     Reference(&'a Reference),
     Influence(&'a Track),
     Channel(&'a Channel, &'a Track),
@@ -35,7 +36,7 @@ impl Serialize for FleetPart<'_> {
         match self.0 {
             Piece::Setup(setup, retired) => (setup, retired).serialize(to),
             Piece::Node(now, pulse, heard) => (now, pulse, heard).serialize(to),
-            Piece::Orders(orders) => orders.serialize(to),
+            Piece::Orders(orders, quarantines) => (orders, quarantines).serialize(to),
             Piece::Reference(reference) => reference.serialize(to),
             Piece::Influence(track) => track.serialize(to),
             Piece::Channel(channel, track) => (channel, track).serialize(to),
@@ -58,7 +59,7 @@ impl Fleet {
         let piece = match id {
             PartId::Setup => Piece::Setup(&self.setup, &self.retired),
             PartId::Node => Piece::Node(self.now, &self.pulse, &self.heard),
-            PartId::Orders => Piece::Orders(&self.orders),
+            PartId::Orders => Piece::Orders(&self.orders, &self.quarantines),
             PartId::Counters => return None,
             PartId::Reference(place) => Piece::Reference(self.references.get(place as usize)?),
             PartId::Influence(place) => Piece::Influence(self.influences.get(place as usize)?),
@@ -75,7 +76,7 @@ impl Fleet {
     pub(crate) fn has_changed(&self, id: PartId) -> bool {
         match id {
             PartId::Setup => self.setup.has_changed(),
-            PartId::Orders => self.orders.has_changed(),
+            PartId::Orders => self.orders.has_changed() || self.quarantines.has_changed(),
             PartId::Node | PartId::Counters => true,
             PartId::Reference(place) => has_changed(&self.references, place),
             PartId::Influence(place) => has_changed(&self.influences, place),
@@ -89,6 +90,7 @@ impl Fleet {
     pub(crate) fn mark_saved(&mut self) {
         self.setup.mark_saved();
         self.orders.mark_saved();
+        self.quarantines.mark_saved();
         self.references.iter_mut().for_each(Kept::mark_saved);
         self.influences.iter_mut().for_each(Kept::mark_saved);
         self.channels.iter_mut().for_each(Kept::mark_saved);
@@ -121,7 +123,7 @@ pub(crate) struct FleetDraft {
     setup: Setup,
     retired: BTreeMap<String, u64>,
     node: Option<Node>,
-    orders: Option<OrderBook>,
+    orders: Option<(OrderBook, Quarantines)>,
     references: Vec<Option<Reference>>,
     influences: Vec<Option<Track>>,
     channels: Vec<Option<(Channel, Track)>>,
@@ -169,7 +171,15 @@ impl FleetDraft {
             why: "is not one of this configuration".to_owned(),
         };
         match id {
-            PartId::Orders => self.orders = Some(read(id, stored)?),
+            PartId::Orders => {
+                let (orders, quarantines): (OrderBook, Quarantines) = read(id, stored)?;
+                let known = quarantines.fits(&self.setup);
+                fits(
+                    id,
+                    known.then_some(()).ok_or("quarantines what is not there"),
+                )?;
+                self.orders = Some((orders, quarantines));
+            }
             PartId::Reference(place) => {
                 let draft = self.references.get_mut(place as usize);
                 *draft.ok_or_else(unknown)? = Some(read(id, stored)?);
@@ -193,7 +203,7 @@ impl FleetDraft {
     /// The fleet, unless a part is missing.
     pub(crate) fn finish(self) -> Result<Fleet, StateError> {
         let Node(now, pulse, heard) = self.node.ok_or_else(|| missing(PartId::Node))?;
-        let orders = self.orders.ok_or_else(|| missing(PartId::Orders))?;
+        let (orders, quarantines) = self.orders.ok_or_else(|| missing(PartId::Orders))?;
         let channels = all(self.channels, PartId::Channel)?;
         let (channels, indications) = channels
             .into_iter()
@@ -210,6 +220,7 @@ impl FleetDraft {
             channels,
             agenda: Agenda::default(),
             orders: Kept::new(orders),
+            quarantines: Kept::new(quarantines),
             heard,
             retired: self.retired,
         };

@@ -97,6 +97,12 @@ impl Checks {
         &self.precision
     }
 
+    /// Begins anew with what is judged by pairs; the indications go on.
+    pub(super) fn forget_pairs(&mut self) {
+        self.still = Still::default();
+        self.precision = Precision::default();
+    }
+
     /// Screening was switched off.
     pub(super) fn forget_screens(&mut self) {
         self.flat = Flat::default();

@@ -87,6 +87,18 @@ impl Attaching {
         self.advance(scene, found);
     }
 
+    /// Drops the pairs that wait and rest on something that no longer counts.
+    pub(super) fn drop_waiting(&mut self, rests: impl Fn(&Pair) -> bool) {
+        self.waiting.retain(|waiting| !rests(&waiting.pair));
+        self.asked.retain(|waiting| !rests(&waiting.pair));
+    }
+
+    /// Whether a pair of this time waits.
+    pub(super) fn holds(&self, time: Timestamp) -> bool {
+        let mut pairs = self.waiting.iter().chain(&self.asked);
+        pairs.any(|waiting| waiting.pair.time == time)
+    }
+
     /// Rows that were asked for have come (or there are none).
     pub(super) fn take_supplied(
         &mut self,

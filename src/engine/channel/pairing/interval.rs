@@ -23,6 +23,11 @@ pub(super) fn span(stamp: Timestamp, scene: &Scene<'_>) -> (Timestamp, Timestamp
     (from, from.plus(length))
 }
 
+/// The time of the pair that an interval makes.
+pub(super) fn middle((from, to): (Timestamp, Timestamp)) -> Timestamp {
+    from.plus(Duration(to.since(from).0 / 2))
+}
+
 pub(super) fn resolve(
     sample: &Sample,
     sight: &Sight<'_>,

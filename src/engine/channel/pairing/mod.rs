@@ -27,6 +27,7 @@
 //! Bounded: at most [`PENDING_MAX`] readings wait; when it is full the oldest is let go (see
 //! `overflow`).
 
+mod all;
 mod attaching;
 mod gated;
 mod group;
@@ -41,6 +42,7 @@ use crate::event::{RefusedReason, Rejection};
 use crate::setup::ReferenceKind;
 use crate::time::{Duration, Timestamp};
 use crate::track::{Sample, Track};
+pub(crate) use all::all_pairs;
 use attaching::Attaching;
 pub(crate) use gated::{Check, Holding, holding};
 pub(crate) use pair::Pair;
@@ -140,6 +142,27 @@ impl Pairing {
     /// When time alone may bring a pair about.
     pub(crate) fn due(&self) -> Option<Timestamp> {
         self.due.into_iter().chain(self.attaching.due()).min()
+    }
+
+    /// Whether a pair of this time may still come of what waits here.
+    pub(crate) fn is_making(&self, time: Timestamp, scene: &Scene<'_>) -> bool {
+        let mut samples = self
+            .pending
+            .iter()
+            .map(|held| &held.sample)
+            .chain(self.requests.samples());
+        samples.any(|sample| pair_time(sample, scene) == time) || self.attaching.holds(time)
+    }
+
+    /// Drops the readings and pairs that wait and rest on something that no longer counts.
+    pub(crate) fn drop_waiting(
+        &mut self,
+        is_maker: impl Fn(Timestamp) -> bool,
+        rests: impl Fn(&Pair) -> bool,
+    ) {
+        self.pending.retain(|held| !is_maker(held.sample.time));
+        self.requests.drop_waiting(&is_maker);
+        self.attaching.drop_waiting(rests);
     }
 
     /// Has the pairs among what was found wait for their influence quantities, and lets those out
@@ -418,6 +441,15 @@ fn awaited(sample: &Sample, scene: &Scene<'_>) -> Timestamp {
         ReferenceKind::Group { .. }
         | ReferenceKind::Constant { .. }
         | ReferenceKind::Checks { .. } => sample.time.minus(scene.setup.lag),
+    }
+}
+
+/// The time of the pair that a waiting reading makes by itself.
+fn pair_time(sample: &Sample, scene: &Scene<'_>) -> Timestamp {
+    match scene.reference.kind {
+        ReferenceKind::Measured if is_instant(scene) => sample.time.plus(scene.setup.lag),
+        ReferenceKind::Measured => interval::middle(interval::span(sample.time, scene)),
+        _ => sample.time,
     }
 }
 

@@ -2,7 +2,7 @@
 //! meanwhile.
 
 use crate::fit::basis::MAX_INFLUENCES;
-use crate::time::{Duration, Timestamp};
+use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
 /// One reference value with the indication that belongs to it.
@@ -41,10 +41,9 @@ impl Pair {
         indication: f64,
         reference: f64,
     ) -> Self {
-        let middle = from.plus(Duration(to.since(from).0 / 2));
         Self {
             interval: (from, to),
-            ..Self::at(middle, indication, reference)
+            ..Self::at(super::interval::middle((from, to)), indication, reference)
         }
     }
 

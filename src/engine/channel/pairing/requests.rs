@@ -98,6 +98,17 @@ impl Requests {
         }
     }
 
+    /// Drops the reference values that wait and no longer count.
+    pub(super) fn drop_waiting(&mut self, is_maker: impl Fn(Timestamp) -> bool) {
+        self.waiting
+            .retain(|request| request.asker == Asker::Indication || !is_maker(request.sample.time));
+    }
+
+    /// The readings that wait.
+    pub(super) fn samples(&self) -> impl Iterator<Item = &Sample> {
+        self.waiting.iter().map(|request| &request.sample)
+    }
+
     /// Takes out those that asked for this; none if nobody did.
     pub(super) fn answered(&mut self, answer: &Answer) -> VecDeque<Request> {
         let (answered, waiting) = std::mem::take(&mut self.waiting)

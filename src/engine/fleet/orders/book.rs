@@ -1,6 +1,6 @@
 //! Orders that were done, so that one told again is answered alike and not done twice.
 
-use crate::event::{Order, OrderAnswer, Problem, ServiceEvent};
+use crate::event::{Order, OrderAnswer, Problem, Wish};
 use serde::{Deserialize, Serialize};
 use std::collections::VecDeque;
 
@@ -17,7 +17,7 @@ pub(in crate::fleet) struct OrderBook {
 /// An order that was done.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 struct Done {
-    event: ServiceEvent,
+    wish: Wish,
     answer: OrderAnswer,
 }
 
@@ -33,11 +33,11 @@ pub(super) enum Known {
 
 impl OrderBook {
     /// Looks an order up.
-    pub(super) fn look_up(&self, order: &Order, event: &ServiceEvent) -> Known {
+    pub(super) fn look_up(&self, order: &Order) -> Known {
         let Some(done) = self.done.iter().find(|done| done.answer.id == order.id) else {
             return Known::New;
         };
-        if done.event == *event {
+        if done.wish == order.wish {
             return Known::Done(Box::new(OrderAnswer {
                 reply_to: order.reply_to.clone(),
                 ..done.answer.clone()
@@ -54,12 +54,12 @@ impl OrderBook {
     }
 
     /// Takes note of an order that was done.
-    pub(super) fn note(&mut self, event: &ServiceEvent, answer: &OrderAnswer) {
+    pub(super) fn note(&mut self, wish: &Wish, answer: &OrderAnswer) {
         if self.done.len() == REMEMBERED {
             self.done.pop_front();
         }
         self.done.push_back(Done {
-            event: event.clone(),
+            wish: wish.clone(),
             answer: answer.clone(),
         });
     }

@@ -3,6 +3,7 @@
 //! may show that the clock was wrong (see `leap`).
 
 mod book;
+mod quarantine;
 mod wording;
 
 use super::Fleet;
@@ -23,11 +24,10 @@ const NAMES_SHOWN: usize = 8;
 impl Fleet {
     /// Does what an order says, or refuses it, and answers.
     pub(crate) fn take_order(&mut self, order: &Order, report: &mut Report<'_>) {
-        let event = match &order.wish {
-            Wish::Service(event) => event,
-            Wish::Unusable(problems) => return self.refuse_order(order, problems.clone(), report),
-        };
-        match self.orders.look_up(order, event) {
+        if let Wish::Unusable(problems) = &order.wish {
+            return self.refuse_order(order, problems.clone(), report);
+        }
+        match self.orders.look_up(order) {
             Known::Done(answer) => return report.say(Output::Answer(answer)),
             Known::Taken(problem) => return self.refuse_order(order, vec![problem], report),
             Known::New => {}
@@ -36,6 +36,21 @@ impl Fleet {
             self.watch_clock(order.received, report);
         }
         let now = self.order_time(order);
+        match &order.wish {
+            Wish::Service(event) => self.take_service(order, event, now, report),
+            Wish::Quarantine(quarantine) => self.quarantine(order, quarantine, now, report),
+            Wish::Release(release) => self.release(order, release, now, report),
+            Wish::Unusable(_) => {}
+        }
+    }
+
+    fn take_service(
+        &mut self,
+        order: &Order,
+        event: &ServiceEvent,
+        now: Timestamp,
+        report: &mut Report<'_>,
+    ) {
         // Where only the order's own arrival tells the time, it was done at the newest known time:
         // a recording is played at another.
         let performed = event.at.unwrap_or(now);
@@ -61,8 +76,9 @@ impl Fleet {
             text: wording::done(&serviced, self.unit_of(target)),
             problems: Vec::new(),
             service: Some(serviced),
+            quarantine: None,
         };
-        self.orders.note(event, &answer);
+        self.orders.note(&order.wish, &answer);
         report.say(Output::Answer(Box::new(answer)));
         self.pass_time(report);
     }
@@ -84,6 +100,7 @@ impl Fleet {
             text: wording::refused(&problems),
             problems,
             service: None,
+            quarantine: None,
         })));
     }
 
@@ -146,6 +163,10 @@ impl Fleet {
                 position(references.iter().map(|known| &known.name), name)
                     .map(|place| Target::Reference(ReferenceId(place))),
             ),
+            About::Influence(name) => {
+                let way_out = "an influence quantity is not served; name a channel or a reference";
+                return Err(problem("influence", name, way_out));
+            }
         };
         found.ok_or_else(|| {
             let way_out = if other {

@@ -4,13 +4,13 @@
 //! the same bits; words for machines are lower case with hyphens. Each document carries
 //! `schema_version`; its schema stands in `config/schemas/`. Modules in reading order: [`topic`],
 //! [`correction`], [`outlook`], [`alarm`], [`degree`], [`step`], [`notice`], [`answer`],
-//! [`validation`],
-//! [`state`].
+//! [`validation`], [`impact`], [`state`].
 
 pub mod alarm;
 pub mod answer;
 pub mod correction;
 pub mod degree;
+pub mod impact;
 pub mod notice;
 pub mod outlook;
 pub mod state;

@@ -74,6 +74,12 @@ impl<'a> Topics<'a> {
         format!("holdtrue/{}/alarm/node", self.node)
     }
 
+    /// What the newest quarantine means for a channel; retained.
+    #[must_use]
+    pub fn impact(&self, channel: &str) -> String {
+        format!("holdtrue/{}/impact/{channel}", self.node)
+    }
+
     /// The newest comparison of a channel's model with what a service found; retained.
     #[must_use]
     pub fn validation(&self, channel: &str) -> String {
@@ -120,6 +126,7 @@ impl<'a> Topics<'a> {
             .or(rest.strip_prefix("step/"))
             .or(rest.strip_prefix("outlook/"))
             .or(rest.strip_prefix("validation/"))
+            .or(rest.strip_prefix("impact/"))
         {
             !channel(name)
         } else if let Some(rest) = rest.strip_prefix("alarm/channel/") {

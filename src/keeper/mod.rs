@@ -8,7 +8,9 @@
 //! - `outbox`: documents that the broker has not acknowledged
 //! - `rhythm`: when the state is saved and when a day turns
 //! - `keeping`: old files go
+//! - `impact`: what a quarantine touches
 
+mod impact;
 mod keeping;
 mod outbox;
 mod restore;
@@ -148,6 +150,14 @@ impl<T> Keeper<T> {
     fn take_with(&mut self, input: &Input, positions: &[i64]) {
         let mut outputs = std::mem::take(&mut self.outputs);
         outputs.clear();
+        if Self::looks_back(input)
+            && !self.record.is_new()
+            && let Input::Order(order) = input
+            && let Err(error) = self.record.commit(order.received)
+        {
+            // The next commit tells of it; until then the list may lack the newest.
+            tracing::warn!(%error, "what was just said can't be committed before a quarantine");
+        }
         self.engine.step(input, &mut outputs);
         let batch = self.record.batch();
         batch.add(input, positions, &outputs);
@@ -160,6 +170,7 @@ impl<T> Keeper<T> {
                 self.outbox.add(document, batch);
             }
         }
+        self.list_impact(&outputs);
         self.outputs = outputs;
     }
 

@@ -9,6 +9,7 @@ use super::writing::Record;
 use super::{Day, Numbered, RecordError, layout};
 use crate::document::Document;
 use holdtrue_engine::event::{Reading, Source};
+use holdtrue_engine::setup::ChannelId;
 use holdtrue_engine::time::Timestamp;
 use rusqlite::Connection;
 use std::collections::{BTreeMap, BTreeSet};
@@ -123,6 +124,32 @@ impl Record {
 
     pub(super) fn subscriptions_text(&self) -> String {
         serde_json::json!(self.subscriptions).to_string()
+    }
+
+    /// Bodies of the committed corrections of a channel of the configuration in force, as far as they
+    /// are in files of the days from `from` on, in order.
+    ///
+    /// # Errors
+    /// When a file can't be read.
+    pub fn corrections(
+        &mut self,
+        channel: ChannelId,
+        from: Timestamp,
+    ) -> Result<Vec<String>, RecordError> {
+        let number = self.batch.book_mut().of(Source::Indication(channel));
+        let mut found = Vec::new();
+        for name in self.days.iter().filter(|name| name.day_end() > from) {
+            let day = Day::open(&self.path(*name))?;
+            let read = || -> rusqlite::Result<Vec<String>> {
+                let mut statement = day.connection.prepare(
+                    "SELECT body FROM outputs WHERE kind = 'correction' AND subject = ?1
+                     ORDER BY position",
+                )?;
+                statement.query_map([number], |row| row.get(0))?.collect()
+            };
+            found.extend(read().map_err(|error| RecordError::from(error).of(day.path()))?);
+        }
+        Ok(found)
     }
 
     /// Committed readings of any of `sources` with `from` ≤ phenomenon time < `to`, with their

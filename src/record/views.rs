@@ -163,6 +163,23 @@ pub const VIEWS: &[View] = &[
         ),
     },
     View {
+        name: "impacts",
+        shows: "the corrections that a quarantine touches",
+        definition: "SELECT documents.number AS position,
+             json_extract(CAST(payload AS TEXT), '$.quarantine') AS quarantine,
+             json_extract(CAST(payload AS TEXT), '$.channel') AS channel,
+             json_extract(value, '$.issue_number') AS issue_number,
+             json_extract(value, '$.issued') AS issued,
+             json_extract(value, '$.valid_until') AS valid_until,
+             json_extract(value, '$.correction') AS correction,
+             json_extract(value, '$.expanded_uncertainty') AS expanded_uncertainty,
+             json_extract(CAST(payload AS TEXT), '$.unit') AS unit,
+             json_extract(value, '$.window_from') AS window_from,
+             json_extract(value, '$.window_to') AS window_to
+             FROM documents, json_each(CAST(payload AS TEXT), '$.corrections')
+             WHERE topic LIKE 'holdtrue/%/impact/%' AND length(payload) > 0",
+    },
+    View {
         name: "notices",
         shows: "what a person should be able to read about, refusals among it",
         definition: concat!(

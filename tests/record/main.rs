@@ -6,6 +6,7 @@
 )]
 
 mod chain;
+mod impact;
 mod import;
 mod keeps;
 mod replays;

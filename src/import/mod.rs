@@ -13,8 +13,8 @@
 //!   a TOML file; `names`: what the configuration calls them
 //! - [`problem`]: what can't be read, with file, line and column
 //! - [`entry`]: one value of a recording
-//! - [`recording`]: a file row by row; `table`, `json_lines`, `packs`: its forms; `cell`: values and
-//!   times from their text
+//! - [`recording`]: a file row by row; `table`, `json_lines`, `packs` over
+//!   `scan`: its forms; `cell`: values and times from their text
 //! - [`survey`]: the first reading
 //! - [`merge`]: the second, in the order of time; `ordered`: one file
 //! - [`mod@into_record`]: what comes of it into a record

@@ -134,7 +134,9 @@ impl Import {
             append: self.append,
         });
         // Before a large recording is read for nothing.
-        place.map_or(Ok(()), |place| place.check())?;
+        if let Some(place) = place {
+            place.check()?;
+        }
         let mut sources = Vec::new();
         for path in &self.files {
             let form = self.format.map_or_else(|| Form::of(path), Ok);

@@ -72,7 +72,8 @@ struct Columns {
     /// Column of the time; of several, in each file the first that it has.
     #[arg(long = "time", value_name = "COLUMN")]
     times: Vec<String>,
-    /// How times are written: rfc3339, date, epoch, epoch-ms, or a pattern such as "%d.%m.%Y %H:%M".
+    /// How times are written: rfc3339, date, epoch, epoch-ms, or a pattern such as
+    /// "%d.%m.%Y %H:%M".
     #[arg(long, value_name = "FORMAT", default_value = "rfc3339")]
     time_format: TimeForm,
     /// Which clock times without an offset are told by: Z, or as +01:00.

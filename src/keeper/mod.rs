@@ -19,12 +19,11 @@ mod saved;
 
 pub use outbox::Outbox;
 pub use restore::{RestoreError, Restored, Wanted, note_wanted};
-pub use rhythm::Pace;
 pub use saved::{assemble, whole};
 
 use crate::document::topic::Topics;
 use crate::document::{self};
-use crate::record::{DayName, Disk, Head, Record, RecordError, Retention, Settled, State, Turn};
+use crate::record::{DayName, Disk, Head, Record, RecordError, Retention, Settled, Turn};
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Input, Output, Source, Supplied};
 use holdtrue_engine::setup::{ChannelId, Clock, ReferenceKind, Setup};
@@ -98,6 +97,7 @@ impl<T> Keeper<T> {
             setup,
             wanted,
             saved_input,
+            part_bytes,
             ..
         } = restored;
         record.adopt(&setup);
@@ -109,7 +109,7 @@ impl<T> Keeper<T> {
             setup,
             wanted,
             owed: Vec::new(),
-            rhythm: Rhythm::new(now, saved_input),
+            rhythm: Rhythm::new(now, saved_input, part_bytes),
             retention: Retention::default(),
             may_be_old: true,
             outputs: Vec::new(),
@@ -120,13 +120,6 @@ impl<T> Keeper<T> {
         }
         keeper.record.note_start();
         Ok(Some(keeper))
-    }
-
-    /// Saves the state and turns recordings' files at another pace than the default.
-    #[must_use]
-    pub fn at_pace(mut self, now: Timestamp, pace: Pace) -> Self {
-        self.rhythm.set_pace(now, pace);
-        self
     }
 
     /// Lets a configuration take effect. What this says bears the old one's positions.
@@ -255,7 +248,7 @@ impl<T> Keeper<T> {
             Clock::Readings => {
                 is_due
                     && (self.record.is_turn_due(Timestamp(i64::MIN))
-                        || self.record.live_inputs() >= self.rhythm.inputs_of_a_file())
+                        || self.record.live_inputs() >= rhythm::INPUTS_OF_A_FILE)
             }
         }
     }
@@ -274,7 +267,7 @@ impl<T> Keeper<T> {
     }
 
     fn turn(&mut self, now: Timestamp) -> Result<(), RecordError> {
-        let state = self.state();
+        let state = saved::whole(&self.engine, &self.wanted);
         self.rhythm.opening(&state);
         self.record.turn(Turn {
             now,
@@ -334,12 +327,6 @@ impl<T> Keeper<T> {
     #[must_use]
     pub fn engine(&self) -> &Engine {
         &self.engine
-    }
-
-    /// The whole state, as a day would open with it now.
-    #[must_use]
-    pub fn state(&self) -> State {
-        saved::whole(&self.engine, &self.wanted)
     }
 
     /// The configuration in force.

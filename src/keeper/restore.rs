@@ -55,6 +55,8 @@ pub struct Restored {
     pub wanted: Vec<Wanted>,
     /// Position of the last input before the saved state that it began from.
     pub saved_input: i64,
+    /// Mean size of a part of that state.
+    pub part_bytes: u64,
     /// Inputs after which another version of the program had said something else.
     differing: u64,
     /// The newest received time.
@@ -92,6 +94,8 @@ struct Beginning {
     day: usize,
     /// The position of the last input before.
     after: i64,
+    /// Mean size of a part of the saved state.
+    part_bytes: u64,
     /// Nothing saved can be used: the engine begins anew with the readings that are kept, and says
     /// other things at first than it said then.
     anew: bool,
@@ -113,6 +117,7 @@ pub(super) fn restore(
             setup: Setup::default(),
             wanted: Vec::new(),
             saved_input: 0,
+            part_bytes: 0,
             differing: 0,
             newest: None,
         }));
@@ -158,12 +163,14 @@ fn newest_state(archive: &Archive) -> Result<Option<Beginning>, RestoreError> {
         }
         for (batch, after) in day.saved_states()? {
             let assembled = match day.state_after(batch) {
-                Ok(state) => saved::assemble(&state),
+                Ok(state) => {
+                    saved::assemble(&state).map(|whole| (whole, saved::part_bytes(&state)))
+                }
                 Err(error) if error.is_damage() => Err(error.to_string()),
                 Err(error) => return Err(error.into()),
             };
             match assembled {
-                Ok((mut engine, wanted)) => {
+                Ok(((mut engine, wanted), part_bytes)) => {
                     // Only what is in the file that is written to can be built upon.
                     if place + 1 == archive.days().len() {
                         engine.mark_saved();
@@ -173,6 +180,7 @@ fn newest_state(archive: &Archive) -> Result<Option<Beginning>, RestoreError> {
                         wanted,
                         day: place,
                         after,
+                        part_bytes,
                         anew: false,
                     }));
                 }
@@ -203,6 +211,7 @@ fn anew(archive: &Archive) -> Result<Beginning, RestoreError> {
         wanted: Vec::new(),
         day: 0,
         after,
+        part_bytes: 0,
         anew: true,
     })
 }
@@ -219,6 +228,7 @@ fn go_on(
         engine: beginning.engine,
         wanted: beginning.wanted,
         saved_input: beginning.after,
+        part_bytes: beginning.part_bytes,
         differing: 0,
         newest: None,
     };

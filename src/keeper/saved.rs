@@ -31,6 +31,12 @@ fn of(engine: &Engine, wanted: &[Wanted], ids: impl IntoIterator<Item = PartId>)
     state
 }
 
+/// Mean size of a part.
+pub(super) fn part_bytes(state: &State) -> u64 {
+    let bytes: usize = state.iter().map(|(_, bytes)| bytes.len()).sum();
+    (bytes / state.len().max(1)) as u64
+}
+
 /// Puts an engine together again, with what it wanted.
 ///
 /// # Errors

@@ -131,6 +131,10 @@ CREATE INDEX IF NOT EXISTS outputs_by_input ON outputs (input);
 /// # Errors
 /// When the file can't be opened, is no record, or has another format.
 pub(super) fn open_to_write(path: &Path) -> Result<Connection, RecordError> {
+    connect_to_write(path).map_err(|error| error.of(path))
+}
+
+fn connect_to_write(path: &Path) -> Result<Connection, RecordError> {
     let connection = Connection::open(path)?;
     connection.busy_timeout(BUSY_WAIT)?;
     // The stamp first: a file that is not ours must not be touched.
@@ -152,6 +156,10 @@ pub(super) fn open_to_write(path: &Path) -> Result<Connection, RecordError> {
 /// # Errors
 /// When the file can't be opened, is no record, or has another format.
 pub(super) fn open_to_read(path: &Path) -> Result<Connection, RecordError> {
+    connect_to_read(path).map_err(|error| error.of(path))
+}
+
+fn connect_to_read(path: &Path) -> Result<Connection, RecordError> {
     let flags = OpenFlags::SQLITE_OPEN_READ_ONLY | OpenFlags::SQLITE_OPEN_NO_MUTEX;
     let connection = Connection::open_with_flags(path, flags)?;
     connection.busy_timeout(BUSY_WAIT)?;
@@ -165,16 +173,6 @@ pub(super) fn is_empty(connection: &Connection) -> Result<bool, RecordError> {
     let tables: i64 =
         connection.query_row("SELECT count(*) FROM sqlite_schema", [], |row| row.get(0))?;
     Ok(tables == 0 && version == 0)
-}
-
-/// Whether the file at `path` can be read and nothing was ever committed to it: its making was
-/// broken off.
-pub(super) fn is_unmade(path: &Path) -> bool {
-    let flags = OpenFlags::SQLITE_OPEN_READ_ONLY | OpenFlags::SQLITE_OPEN_NO_MUTEX;
-    Connection::open_with_flags(path, flags)
-        .map_err(RecordError::from)
-        .and_then(|connection| is_empty(&connection))
-        .unwrap_or(false)
 }
 
 /// Stamps a new file as ours; part of the transaction that fills it.

@@ -1,7 +1,7 @@
 //! The record as its one writer has it: opened, and batches committed to it. What else it does is
 //! in `turning` (a new file), `seals` (finished files) and `recall` (what it knows).
 
-use super::archive::{self, Archive};
+use super::archive::Archive;
 use super::batch::{Batch, Event, Place};
 use super::chain::Head;
 use super::disk::{Disk, Operation};
@@ -67,7 +67,7 @@ impl Record {
 
     fn open_over(folder: &Path, disk: Option<Box<dyn Disk>>) -> Result<Self, RecordError> {
         let lock = lock(folder)?;
-        let mut days = archive::list(folder)?;
+        let mut days = Archive::open(folder)?.days().to_vec();
         if let Some(newest) = days.last().copied()
             && discard_unmade(folder, newest)?
         {
@@ -274,9 +274,8 @@ pub(super) fn io(path: &Path) -> impl FnOnce(std::io::Error) -> RecordError + us
 /// Removes a file to which nothing was ever committed: its making was broken off.
 fn discard_unmade(folder: &Path, name: DayName) -> Result<bool, RecordError> {
     let path = folder.join(name.to_string());
-    let connection = Connection::open(&path)?;
-    let unmade = layout::is_empty(&connection).map_err(|error| error.of(&path))?;
-    drop(connection);
+    let look = || layout::is_empty(&Connection::open(&path)?);
+    let unmade = look().map_err(|error: RecordError| error.of(&path))?;
     if unmade {
         remove_files(&path);
     }

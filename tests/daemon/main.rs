@@ -9,6 +9,7 @@
 mod live;
 
 mod bad_input;
+mod killed;
 mod main_path;
 mod orders;
 mod outbox;

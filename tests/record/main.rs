@@ -6,6 +6,7 @@
 )]
 
 mod chain;
+mod damaged;
 mod impact;
 mod import;
 mod keeps;

@@ -86,6 +86,11 @@ impl Holdtrue {
         wait_for("the daemon ends", || process.try_wait().unwrap())
     }
 
+    /// Its process number.
+    pub(crate) fn process(&self) -> u32 {
+        self.process.as_ref().unwrap().id()
+    }
+
     /// The record's folder.
     pub(crate) fn record(&self) -> PathBuf {
         self.folder.path().join("record")

@@ -13,6 +13,7 @@
 
 pub(crate) mod holdtrue;
 pub(crate) mod listener;
+pub(crate) mod load;
 pub(crate) mod mosquitto;
 pub(crate) mod publisher;
 pub(crate) mod schemas;

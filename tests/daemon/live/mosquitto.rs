@@ -66,6 +66,13 @@ impl Mosquitto {
         process.wait().unwrap();
     }
 
+    /// Kills it without warning; it loses what it had not saved.
+    pub(crate) fn kill(&mut self) {
+        let mut process = self.process.take().unwrap();
+        process.kill().unwrap();
+        process.wait().unwrap();
+    }
+
     /// Loses everything that it kept; to be called while it does not run.
     pub(crate) fn forget(&self) {
         assert!(self.process.is_none(), "it runs");

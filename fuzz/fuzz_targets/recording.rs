@@ -1,5 +1,5 @@
-//! Any bytes as a recording: every value that is taken is finite, in the order of time, and counted;
-//! whatever else is in the file is named.
+//! Any bytes as a recording: every value that is taken is finite, in the order of time, and
+//! counted; whatever else is in the file is named.
 
 #![no_main]
 

@@ -1,10 +1,11 @@
 //! `holdtrue export`: a view of a record as CSV.
 
+use super::when::When;
 use super::{Ending, progress};
 use crate::record::{Archive, Choice, RecordError, VIEWS, View};
+use crate::replay::Range;
 use clap::Args;
 use holdtrue_engine::time::Timestamp;
-use holdtrue_text::instant;
 use rusqlite::types::ValueRef;
 use std::fs::File;
 use std::io::{self, BufWriter, Write};
@@ -27,12 +28,8 @@ pub(super) struct Export {
     /// Say which views there are.
     #[arg(long, conflicts_with_all = ["view", "from", "to", "channel", "out"])]
     list: bool,
-    /// The first instant that is wanted, RFC 3339 with an offset, or a date (UTC).
-    #[arg(long, value_name = "TIME")]
-    from: Option<String>,
-    /// The first instant that is not wanted any more.
-    #[arg(long, value_name = "TIME")]
-    to: Option<String>,
+    #[command(flatten)]
+    when: When,
     /// Only what is about this channel, reference or influence quantity.
     #[arg(long, value_name = "NAME")]
     channel: Option<String>,
@@ -118,12 +115,11 @@ impl Export {
                 Failure::Wrong(message)
             })
         };
-        let instant = |text: Option<&String>, flag: &str| -> Result<_, Failure> {
-            let Some(text) = text else {
+        let (range, all) = (self.when.range(), Range::default());
+        let bound = |at: Timestamp, open: Timestamp, flag: &str| -> Result<_, Failure> {
+            if at == open {
                 return Ok(None);
-            };
-            let read = instant::from_text(text);
-            let at = read.map_err(|why| Failure::Wrong(format!("{flag} {text}: {why}")))?;
+            }
             Ok(Some((column(&TIMES, flag)?, as_in_views(at))))
         };
         let equal = match &self.channel {
@@ -132,8 +128,8 @@ impl Export {
         };
         Ok(Choice {
             equal,
-            from: instant(self.from.as_ref(), "--from")?,
-            to: instant(self.to.as_ref(), "--to")?,
+            from: bound(range.from, all.from, "--from")?,
+            to: bound(range.to, all.to, "--to")?,
         })
     }
 }
@@ -217,7 +213,8 @@ mod tests {
         for nanos in [-1_500_000_000, -1, 0, 1, 999_999_999, 1_000_000_000] {
             let text = as_in_views(Timestamp(nanos));
             assert!(last < text, "{last} before {text}");
-            assert_eq!(instant::from_text(&text), Ok(Timestamp(nanos)), "{text}");
+            let back: jiff::Timestamp = text.parse().unwrap();
+            assert_eq!(back.as_nanosecond(), i128::from(nanos), "{text}");
             last = text;
         }
     }

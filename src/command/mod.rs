@@ -109,11 +109,11 @@ enum Command {
         #[arg(long)]
         json: bool,
     },
-    /// Make a record from recordings (CSV, JSON lines, SenML), so that a year of history can be tried
-    /// before going live.
+    /// Make a record from recordings (CSV, JSON lines, SenML), so that a year of history can be
+    /// tried before going live.
     #[command(
-        after_help = "Example:\n  holdtrue import 2025.csv lab.csv --config holdtrue.toml --record trial \\\n    \
-        --time at --map pH=intake/ph-1 --map \"lab pH=reference:lab/ph\"\n\n\
+        after_help = "Example:\n  holdtrue import 2025.csv lab.csv --config holdtrue.toml \\\n    \
+        --record trial --time at --map pH=intake/ph-1 --map \"lab pH=reference:lab/ph\"\n\n\
         Exit code: 0 done, 1 done but rows were left out, 2 refused and nothing written, 3 a file\n\
         or the record failed."
     )]

@@ -1,7 +1,8 @@
 //! What the broker's session may have forgotten and is owed: subscriptions and retained documents.
 //!
-//! The record keeps the confirmed subscriptions, and they stand there only while nothing is owed:
-//! an empty list tells the next start that the retained documents may be missing as well.
+//! The record keeps the confirmed subscriptions, and they stand there only while there is a
+//! connection and nothing is owed: an empty list tells the next start that the retained documents
+//! may be missing as well.
 
 use std::collections::{BTreeMap, BTreeSet};
 use std::time::Duration;
@@ -70,6 +71,13 @@ impl Memory {
                 confirmed: None,
             },
             not_before: Instant::now(),
+        }
+    }
+
+    /// The broker had our session: where nothing is to be asked, what it had confirmed holds on.
+    pub(super) fn session_kept(&mut self, confirmed: &BTreeSet<String>) {
+        if !self.must_subscribe && self.steps.confirmed.is_none() && !confirmed.is_empty() {
+            self.steps.confirmed = Some(confirmed.clone());
         }
     }
 
@@ -209,6 +217,23 @@ mod tests {
         memory.done(&noted);
         assert_eq!(memory.step(later), None);
         assert!(!memory.must_subscribe());
+    }
+
+    #[tokio::test]
+    async fn a_kept_session_is_noted_again_unless_it_is_asked_for_anyway() {
+        let all: BTreeSet<String> = filters(&["a"]).into_iter().collect();
+        let mut memory = Memory::new(true);
+        memory.session_kept(&all);
+        assert_eq!(
+            memory.step(Instant::now()),
+            None,
+            "the answer will be noted"
+        );
+        memory.subscribed(&filters(&["a"]), &[]);
+        memory.done(&Step::Note(all.clone()));
+        assert_eq!(memory.step(Instant::now()), None);
+        memory.session_kept(&all);
+        assert_eq!(memory.step(Instant::now()), Some(Step::Note(all)));
     }
 
     #[tokio::test]

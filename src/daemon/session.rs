@@ -12,24 +12,45 @@ use tokio::time::Instant;
 const SUSPICIOUS_FAILURES: u32 = 4;
 
 impl Daemon {
+    /// Before each connection: whether the broker kept the session is not known, so the note of it
+    /// becomes void until the broker has said so. Otherwise a crash between its word that the
+    /// session is gone and the record of that word would leave the note standing, the next start
+    /// would find a session (a new one), and the retained documents would never come again.
+    pub(super) fn doubt_session(&mut self) {
+        let noted = self.shell.keeper.subscriptions();
+        if noted.is_empty() {
+            return;
+        }
+        self.remembered = noted.clone();
+        self.shell.keeper.set_subscriptions(BTreeSet::new());
+        if self.pause.is_none() {
+            self.commit();
+        }
+    }
+
     pub(super) fn greet(&mut self, session_present: bool) {
         self.figures.connections += 1;
         self.shell.keeper.outbox_mut().note_here();
         tracing::info!(session_present, "connected to the broker");
-        if !session_present {
+        if session_present {
+            self.memory.session_kept(&self.remembered);
+        } else {
             self.memory.session_lost();
+            if self.pause.is_some() {
+                tracing::warn!("the broker has lost our session, and what it is owed has to wait");
+            }
         }
-        // Read before they become void: what is no longer wanted has to end.
-        let remembered = self.shell.keeper.subscriptions().clone();
-        // Before subscribing, so that a crash in between does not leave them standing.
         self.restore_memory();
         // Also at each start: whose session the broker kept is not certain (another broker at the
         // same address, a client name that was used before), and asking twice does no harm.
         if self.memory.must_subscribe() {
             let filters = self.shell.filters();
-            let old: Vec<String> = remembered
-                .into_iter()
+            // What is no longer wanted has to end.
+            let old: Vec<String> = self
+                .remembered
+                .iter()
                 .filter(|filter| session_present && !filters.contains(filter))
+                .cloned()
                 .collect();
             self.link.subscribe(filters, &old);
         }
@@ -111,6 +132,7 @@ impl Daemon {
         self.held.forget_guaranteed();
         self.rhythm.answered();
         self.note_alarm_lost();
+        self.doubt_session();
         let next_try = lost.next_try;
         if lost.taken_over {
             tracing::error!(

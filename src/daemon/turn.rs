@@ -18,6 +18,7 @@ use crate::document::state::{Doing, StateDocument};
 use crate::document::topic::Topics;
 use holdtrue_engine::event::Input;
 use holdtrue_engine::time::Timestamp;
+use std::collections::BTreeSet;
 use std::future::Future;
 use std::time::Duration;
 use tokio::time::Instant;
@@ -43,6 +44,8 @@ pub(super) struct Daemon {
     /// What the broker said when it last refused the state document.
     pub(super) state_refused: Option<String>,
     pub(super) memory: Memory,
+    /// The filters that the broker had confirmed before the present connection.
+    pub(super) remembered: BTreeSet<String>,
     pub(super) settling: Settling,
     /// The broker could not take a document; not before this instant again.
     pub(super) hand_again: Option<Instant>,
@@ -86,6 +89,7 @@ impl Daemon {
             refusals: Refusals::default(),
             state_refused: None,
             memory: Memory::new(remembered),
+            remembered: BTreeSet::new(),
             settling: Settling::new(Instant::now()),
             hand_again: None,
             hand_again_back_off: BackOff::default(),
@@ -98,6 +102,7 @@ impl Daemon {
     /// Works until `shutdown` completes.
     pub(super) async fn run(mut self, shutdown: impl Future<Output = ()>) {
         tokio::pin!(shutdown);
+        self.doubt_session();
         self.ask_tick();
         loop {
             self.hand_over();

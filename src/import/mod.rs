@@ -1,20 +1,20 @@
 //! Recordings become inputs of the engine, in the order of time: CSV, JSON lines, SenML.
 //!
-//! Every file is read twice. The first time nothing is kept but what is wrong, how much there is and
-//! how far the file is out of order; so a recording that does not fit is refused before anything is
-//! written. The second time the files are merged by time, each held back no longer than its own
-//! disorder needs. What a recording does not tell is when a value arrived: its received time is its
-//! phenomenon time.
+//! Every file is read twice. The first time nothing is kept but what is wrong, how much there is
+//! and how far the file is out of order; so a recording that does not fit is refused before
+//! anything is written. The second time the files are merged by time, each held back no longer than
+//! its own disorder needs. What a recording does not tell is when a value arrived: its received
+//! time is its phenomenon time.
 //!
 //! Not here: what the inputs lead to; the engine judges them like any others.
 //!
 //! Modules in reading order:
-//! - [`mapping`]: which column is whose value; `words`: told on the command line; `columns`: told in
-//!   a TOML file; `names`: what the configuration calls them
+//! - [`mapping`]: which column is whose value; `words`: told on the command line; `columns`: told
+//!   in a TOML file; `names`: what the configuration calls them
 //! - [`problem`]: what can't be read, with file, line and column
 //! - [`entry`]: one value of a recording
-//! - [`recording`]: a file row by row; `table`, `json_lines`, `packs`: its forms; `cell`: values and
-//!   times from their text
+//! - [`recording`]: a file row by row; `table`, `json_lines`, `packs` over `scan`: its forms;
+//!   `cell`: values and times from their text
 //! - [`survey`]: the first reading
 //! - [`merge`]: the second, in the order of time; `ordered`: one file
 //! - [`mod@into_record`]: what comes of it into a record

@@ -1,5 +1,5 @@
-//! JSON arrays cut into their elements while they are read: one array over a whole file, one a line,
-//! or one behind the other. Only one element is kept.
+//! JSON arrays cut into their elements while they are read: one array over a whole file, one a
+//! line, or one behind the other. Only one element is kept.
 
 use holdtrue_text::lines::LINE_MAX;
 use std::fs::File;

@@ -19,11 +19,12 @@ mod saved;
 
 pub use outbox::Outbox;
 pub use restore::{RestoreError, Restored, Wanted, note_wanted};
+pub use rhythm::Pace;
 pub use saved::{assemble, whole};
 
 use crate::document::topic::Topics;
 use crate::document::{self};
-use crate::record::{DayName, Disk, Head, Record, RecordError, Retention, Settled, Turn};
+use crate::record::{DayName, Disk, Head, Record, RecordError, Retention, Settled, State, Turn};
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Input, Output, Source, Supplied};
 use holdtrue_engine::setup::{ChannelId, Clock, ReferenceKind, Setup};
@@ -120,6 +121,13 @@ impl<T> Keeper<T> {
         }
         keeper.record.note_start();
         Ok(Some(keeper))
+    }
+
+    /// Saves the state and turns recordings' files at another pace than the default.
+    #[must_use]
+    pub fn at_pace(mut self, now: Timestamp, pace: Pace) -> Self {
+        self.rhythm.set_pace(now, pace);
+        self
     }
 
     /// Lets a configuration take effect. What this says bears the old one's positions.
@@ -248,7 +256,7 @@ impl<T> Keeper<T> {
             Clock::Readings => {
                 is_due
                     && (self.record.is_turn_due(Timestamp(i64::MIN))
-                        || self.record.live_inputs() >= rhythm::INPUTS_OF_A_FILE)
+                        || self.record.live_inputs() >= self.rhythm.inputs_of_a_file())
             }
         }
     }
@@ -267,7 +275,7 @@ impl<T> Keeper<T> {
     }
 
     fn turn(&mut self, now: Timestamp) -> Result<(), RecordError> {
-        let state = saved::whole(&self.engine, &self.wanted);
+        let state = self.state();
         self.rhythm.opening(&state);
         self.record.turn(Turn {
             now,
@@ -327,6 +335,12 @@ impl<T> Keeper<T> {
     #[must_use]
     pub fn engine(&self) -> &Engine {
         &self.engine
+    }
+
+    /// The whole state, as a day would open with it now.
+    #[must_use]
+    pub fn state(&self) -> State {
+        saved::whole(&self.engine, &self.wanted)
     }
 
     /// The configuration in force.

@@ -6,20 +6,39 @@ use crate::record::State;
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::time::{Duration, Timestamp};
 
-/// In a recording a new file is begun once the one before has so many inputs.
-pub(super) const INPUTS_OF_A_FILE: i64 = 20_000;
-/// A save is due after so many inputs in any case: a start takes about as many in a second.
-const INPUTS_MAX: i64 = 1_000_000;
-/// Earlier a save is due only after this long …
-const SAVE_EVERY: Duration = Duration::from_seconds(600);
-/// … and when the inputs since the last one take as much disk as it will, at so many bytes each:
-/// so saving at most doubles what is written.
-const BYTES_OF_AN_INPUT: u64 = 50;
 /// A new file that could not be begun is tried again after this long.
 const TURN_AGAIN_AFTER: Duration = Duration::from_seconds(10);
 
+/// How much work a start may find, and what that may cost. The default is the daemon's;
+/// simulations, whose days are short, save and turn more often.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub struct Pace {
+    /// In a recording a new file is begun once the one before has so many inputs.
+    pub inputs_of_a_file: i64,
+    /// A save is due after so many inputs in any case.
+    pub inputs_max: i64,
+    /// Earlier a save is due only after this long …
+    pub save_every: Duration,
+    /// … and when the inputs since the last one take as much disk as it will, at so many bytes
+    /// each: so saving at most doubles what is written.
+    pub bytes_of_an_input: u64,
+}
+
+impl Default for Pace {
+    fn default() -> Self {
+        Self {
+            inputs_of_a_file: 20_000,
+            // A start takes about as many in a second.
+            inputs_max: 1_000_000,
+            save_every: Duration::from_seconds(600),
+            bytes_of_an_input: 50,
+        }
+    }
+}
+
 /// What was saved when.
 pub(super) struct Rhythm {
+    pace: Pace,
     saved: Timestamp,
     /// Position of the last input before the newest save.
     saved_input: i64,
@@ -39,7 +58,9 @@ impl Rhythm {
     /// It is looked at once whether a save is worth it: a daemon that is killed again and again
     /// must not take longer from start to start.
     pub(super) fn new(now: Timestamp, saved_input: i64, part_bytes: u64) -> Self {
+        let pace = Pace::default();
         Self {
+            pace,
             saved: now,
             saved_input,
             look_again: now,
@@ -49,6 +70,17 @@ impl Rhythm {
         }
     }
 
+    /// Goes on at another pace.
+    pub(super) fn set_pace(&mut self, now: Timestamp, pace: Pace) {
+        self.pace = pace;
+        self.look_again = now.plus(pace.save_every);
+    }
+
+    /// Inputs after which a recording begins a new file.
+    pub(super) fn inputs_of_a_file(&self) -> i64 {
+        self.pace.inputs_of_a_file
+    }
+
     /// Whether the state is to be saved with the batch at hand, which ends with input `last`.
     pub(super) fn is_save_due(&mut self, now: Timestamp, last: i64, engine: &Engine) -> bool {
         let inputs = last - self.saved_input;
@@ -56,13 +88,16 @@ impl Rhythm {
             return false;
         }
         // Also when the clock went back.
-        if inputs < INPUTS_MAX && now < self.look_again && now >= self.saved {
+        if inputs < self.pace.inputs_max && now < self.look_again && now >= self.saved {
             return false;
         }
-        self.look_again = now.plus(SAVE_EVERY);
+        self.look_again = now.plus(self.pace.save_every);
         let bytes = (engine.changed().len() as u64).saturating_mul(self.part_bytes);
-        let inputs = inputs.unsigned_abs();
-        inputs >= INPUTS_MAX.unsigned_abs() || inputs.saturating_mul(BYTES_OF_AN_INPUT) >= bytes
+        let is_worth_it = inputs
+            .unsigned_abs()
+            .saturating_mul(self.pace.bytes_of_an_input)
+            >= bytes;
+        inputs >= self.pace.inputs_max || is_worth_it
     }
 
     /// A save goes into the batch at hand.
@@ -94,7 +129,7 @@ impl Rhythm {
     pub(super) fn turned(&mut self, now: Timestamp, last: i64) {
         self.saved = now;
         self.saved_input = last;
-        self.look_again = now.plus(SAVE_EVERY);
+        self.look_again = now.plus(self.pace.save_every);
     }
 
     pub(super) fn turn_failed(&mut self, now: Timestamp) {

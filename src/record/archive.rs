@@ -3,7 +3,7 @@
 
 use super::row::ReadingRow;
 use super::search::Search;
-use super::{Day, DayName, RecordError, Told};
+use super::{Day, DayName, RecordError, Told, layout};
 use holdtrue_engine::event::{Reading, Source};
 use holdtrue_engine::setup::Setup;
 use holdtrue_engine::time::Timestamp;
@@ -19,25 +19,18 @@ pub struct Archive {
 }
 
 impl Archive {
-    /// Lists the record files in `folder`.
+    /// Lists the record files in `folder`. A newest one whose making was broken off holds nothing
+    /// and is left out.
     ///
     /// # Errors
     /// When the folder can't be read.
     pub fn open(folder: &Path) -> Result<Self, RecordError> {
-        let failed = |source| RecordError::Folder {
-            folder: folder.to_path_buf(),
-            source,
-        };
-        let mut days = Vec::new();
-        for entry in std::fs::read_dir(folder).map_err(failed)? {
-            let entry = entry.map_err(failed)?;
-            if let Some(name) = DayName::of(&entry.path())
-                && entry.file_type().map_err(failed)?.is_file()
-            {
-                days.push(name);
-            }
+        let mut days = list(folder)?;
+        if let Some(newest) = days.last()
+            && layout::is_unmade(&folder.join(newest.to_string()))
+        {
+            days.pop();
         }
-        days.sort_unstable();
         Ok(Self {
             folder: folder.to_path_buf(),
             days,
@@ -147,4 +140,26 @@ impl Archive {
             what: format!("reading {position}, which a later input refers to, is not there"),
         })
     }
+}
+
+/// Names of all record files in `folder`, oldest first.
+///
+/// # Errors
+/// When the folder can't be read.
+pub(super) fn list(folder: &Path) -> Result<Vec<DayName>, RecordError> {
+    let failed = |source| RecordError::Folder {
+        folder: folder.to_path_buf(),
+        source,
+    };
+    let mut days = Vec::new();
+    for entry in std::fs::read_dir(folder).map_err(failed)? {
+        let entry = entry.map_err(failed)?;
+        if let Some(name) = DayName::of(&entry.path())
+            && entry.file_type().map_err(failed)?.is_file()
+        {
+            days.push(name);
+        }
+    }
+    days.sort_unstable();
+    Ok(days)
 }

@@ -175,6 +175,16 @@ pub(super) fn is_empty(connection: &Connection) -> Result<bool, RecordError> {
     Ok(tables == 0 && version == 0)
 }
 
+/// Whether the file at `path` can be read and nothing was ever committed to it: its making was
+/// broken off.
+pub(super) fn is_unmade(path: &Path) -> bool {
+    let flags = OpenFlags::SQLITE_OPEN_READ_ONLY | OpenFlags::SQLITE_OPEN_NO_MUTEX;
+    Connection::open_with_flags(path, flags)
+        .map_err(RecordError::from)
+        .and_then(|connection| is_empty(&connection))
+        .unwrap_or(false)
+}
+
 /// Stamps a new file as ours; part of the transaction that fills it.
 pub(super) fn stamp(connection: &Connection) -> Result<(), RecordError> {
     connection.pragma_update(None, "application_id", APPLICATION_ID)?;

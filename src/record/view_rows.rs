@@ -10,7 +10,7 @@ pub struct Choice {
     pub equal: Option<(String, String)>,
     /// Column of times with the first text that is wanted …
     pub from: Option<(String, String)>,
-    /// … and the first that is not any more.
+    /// … and the last.
     pub to: Option<(String, String)>,
 }
 
@@ -42,7 +42,7 @@ impl Day {
         let conditions = [
             (&choice.equal, "="),
             (&choice.from, ">="),
-            (&choice.to, "<"),
+            (&choice.to, "<="),
         ];
         let mut parameters = Vec::new();
         let mut wanted = Vec::new();

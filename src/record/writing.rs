@@ -1,7 +1,7 @@
 //! The record as its one writer has it: opened, and batches committed to it. What else it does is
 //! in `turning` (a new file), `seals` (finished files) and `recall` (what it knows).
 
-use super::archive::Archive;
+use super::archive::{self, Archive};
 use super::batch::{Batch, Event, Place};
 use super::chain::Head;
 use super::disk::{Disk, Operation};
@@ -67,7 +67,7 @@ impl Record {
 
     fn open_over(folder: &Path, disk: Option<Box<dyn Disk>>) -> Result<Self, RecordError> {
         let lock = lock(folder)?;
-        let mut days = Archive::open(folder)?.days().to_vec();
+        let mut days = archive::list(folder)?;
         if let Some(newest) = days.last().copied()
             && discard_unmade(folder, newest)?
         {

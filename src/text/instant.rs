@@ -1,5 +1,5 @@
-//! Instants from text, exact to the nanosecond: RFC 3339, full dates, times of day whose offset from
-//! UTC is known from elsewhere.
+//! Instants from text, exact to the nanosecond: RFC 3339, full dates, times of day whose offset
+//! from UTC is known from elsewhere.
 
 use holdtrue_engine::time::{Duration, Timestamp};
 use jiff::fmt::temporal::DateTimeParser;

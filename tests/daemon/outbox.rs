@@ -99,7 +99,8 @@ fn a_lost_session_is_made_good_even_if_the_record_can_not_be_written_just_then()
     broker.stop();
     broker.forget();
     broker.launch();
-    daemon.wait_log("has to wait");
+    daemon.wait_log("the record can't be written");
+    daemon.wait_log("has lost our session, and what it is owed has to wait");
     assert!(
         broker
             .all_retained("holdtrue/test/alarm/channel/#")

@@ -1,5 +1,5 @@
-//! Recordings become inputs: which column is whose value, the order of time over several files, what
-//! is refused and how it is said.
+//! Recordings become inputs: which column is whose value, the order of time over several files,
+//! what is refused and how it is said.
 
 use holdtrue::configuration::{self, Configuration};
 use holdtrue::import::mapping::Mapping;
@@ -200,7 +200,8 @@ fn files_of_different_forms_are_merged_by_time() {
             ),
             (
                 "lab.jsonl",
-                "{\"at\":1767225630,\"lab\":{\"ph\":7.2}}\n{\"at\":1767225700,\"lab\":{\"ph\":null}}\n",
+                "{\"at\":1767225630,\"lab\":{\"ph\":7.2}}\n\
+                 {\"at\":1767225700,\"lab\":{\"ph\":null}}\n",
             ),
             ("outlet.senml", senml),
         ],
@@ -387,27 +388,32 @@ fn what_cannot_be_read_is_named_with_its_place_and_the_way_out() {
         (
             csv("at,v\n2026-01-01,\"7,25\"\n"),
             ph1(),
-            "a.csv:2: v: \"7,25\" is not a number; if its decimal sign is a comma, say --decimal-comma",
+            "a.csv:2: v: \"7,25\" is not a number; if its decimal sign \
+             is a comma, say --decimal-comma",
         ),
         (
             csv("at,v\n2026-01-01,n/a\n"),
             ph1(),
-            "a.csv:2: v: \"n/a\" is not a number; if it stands for no value, name it with --missing",
+            "a.csv:2: v: \"n/a\" is not a number; if it stands for \
+             no value, name it with --missing",
         ),
         (
             csv("at,v\n2026-01-01,NaN\n"),
             ph1(),
-            "a.csv:2: v: \"NaN\" is no finite number; if it stands for no value, name it with --missing",
+            "a.csv:2: v: \"NaN\" is no finite number; if it stands for \
+             no value, name it with --missing",
         ),
         (
             csv("at,v\n01.02.2026,1\n"),
             ph1(),
-            "a.csv:2: at: \"01.02.2026\" is neither RFC 3339 nor a date; if the recording writes times otherwise, say how with --time-format",
+            "a.csv:2: at: \"01.02.2026\" is neither RFC 3339 nor a date; if the \
+             recording writes times otherwise, say how with --time-format",
         ),
         (
             csv("at,v\n2026-01-01 12:00:00,1\n"),
             ph1(),
-            "a.csv:2: at: \"2026-01-01 12:00:00\" has no offset from UTC; say which clock it is with --utc-offset, as Z or +01:00",
+            "a.csv:2: at: \"2026-01-01 12:00:00\" has no offset from UTC; say \
+             which clock it is with --utc-offset, as Z or +01:00",
         ),
         (
             csv("at,v\n2026-02-30,1\n"),

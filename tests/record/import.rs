@@ -243,8 +243,8 @@ fn views_come_out_as_they_went_in() {
     let some = desk.export(&[&["trial", "readings"], &hour[..]].concat());
     assert_eq!(
         some.len(),
-        1 + 60 + 1,
-        "an hour of minutes and one laboratory value"
+        1 + 61 + 2,
+        "an hour of minutes and what the laboratory says at both its ends"
     );
     let pairs = desk.export(&["trial", "pairs"]);
     assert_eq!(pairs.len() as i64, 1 + DAYS * 24);
@@ -369,6 +369,11 @@ fn a_dry_run_writes_nothing() {
 fn what_the_outside_lacks_is_told_apart_from_what_is_asked_wrongly() {
     let desk = Desk::new();
     assert_eq!(code(&desk.import(&["ph.csv", "none.csv"], "trial", &[])), 3);
+    desk.write("empty.csv", "at,pH,lab pH\n");
+    let empty = desk.import(&["empty.csv"], "empty", &[]);
+    assert_eq!(code(&empty), 2);
+    assert!(text(&empty.stderr).contains("none of the files has a value"));
+    assert!(!desk.path("empty").exists());
     desk.write("ph.data", "at,pH\n");
     let nameless = desk.import(&["ph.data"], "trial", &[]);
     assert_eq!(code(&nameless), 2);
@@ -385,7 +390,7 @@ fn what_the_outside_lacks_is_told_apart_from_what_is_asked_wrongly() {
         ),
         (
             &["trial", "readings", "--from", "noon"],
-            "--from noon: write RFC 3339",
+            "neither a day like",
         ),
         (&[".", "readings"], ". holds no record"),
         (

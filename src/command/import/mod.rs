@@ -72,7 +72,8 @@ struct Columns {
     /// Column of the time; of several, in each file the first that it has.
     #[arg(long = "time", value_name = "COLUMN")]
     times: Vec<String>,
-    /// How times are written: rfc3339, date, epoch, epoch-ms, or a pattern such as "%d.%m.%Y %H:%M".
+    /// How times are written: rfc3339, date, epoch, epoch-ms, or a pattern such as
+    /// "%d.%m.%Y %H:%M".
     #[arg(long, value_name = "FORMAT", default_value = "rfc3339")]
     time_format: TimeForm,
     /// Which clock times without an offset are told by: Z, or as +01:00.
@@ -134,7 +135,9 @@ impl Import {
             append: self.append,
         });
         // Before a large recording is read for nothing.
-        place.map_or(Ok(()), |place| place.check())?;
+        if let Some(place) = place {
+            place.check()?;
+        }
         let mut sources = Vec::new();
         for path in &self.files {
             let form = self.format.map_or_else(|| Form::of(path), Ok);

@@ -570,6 +570,69 @@ fn names_that_the_configuration_does_not_have_are_told_with_those_it_has() {
 }
 
 #[test]
+fn words_that_can_not_be_understood_are_all_told_at_once() {
+    let wrong = Words {
+        status: Some("q".to_owned()),
+        utc_offset: Some("CET".to_owned()),
+        ..words(&[], &["at"])
+    };
+    let told = Mapping::from_words(&wrong, &configuration()).unwrap_err();
+    for (told, message) in told.iter().zip([
+        "--status q: is not COLUMN=GOOD[,GOOD…], as flag=ok,0",
+        "--utc-offset: \"CET\" is no offset from UTC; write Z, or as +01:00 or -03:30",
+        "say what the columns are, with --map COLUMN=SOURCE or --columns FILE",
+    ]) {
+        assert_eq!(told, message);
+    }
+    assert_eq!(told.len(), 3);
+}
+
+#[test]
+fn a_cell_that_is_no_text_is_named_and_the_next_row_read() {
+    let folder = tempfile::tempdir().unwrap();
+    let path = folder.path().join("a.csv");
+    std::fs::write(&path, b"at,v\n2026-01-01,\xb5\n2026-01-02,2\n").unwrap();
+    let mapping = Mapping::from_words(&words(&["v=intake/ph-1"], &["at"]), &configuration());
+    let form = Form::Csv;
+    let survey = Survey::of(&[Source { path, form }], &mapping.unwrap(), &mut |_| {}).unwrap();
+    let told = survey.problems.to_string();
+    assert!(
+        told.ends_with("a.csv:2: v: \"\u{fffd}\" is not UTF-8; convert the file"),
+        "{told}"
+    );
+    assert_eq!((survey.problems.count, survey.extent().count), (1, 1));
+}
+
+#[test]
+fn a_pack_too_long_to_be_read_whole_is_refused_only_with_a_status() {
+    let records = vec!["{\"n\":\"p\",\"v\":1}"; 100_000].join(",");
+    let text = format!("[{{\"bt\":1767225600}},{records}]");
+    let files = [("a.senml", text.as_str())];
+    let plain = words(&["p=intake/ph-1"], &[]);
+    let with_status = Words {
+        status: Some("q=ok".to_owned()),
+        ..plain.clone()
+    };
+    let read = |words| {
+        Files {
+            files: &files,
+            words,
+        }
+        .import()
+        .unwrap()
+        .0
+    };
+    assert_eq!(read(plain).extent().count, 100_000);
+    let survey = read(with_status);
+    let told = survey.problems.to_string();
+    assert!(
+        told.contains("a pack of 100000 records or more can't be read with a status"),
+        "{told}"
+    );
+    assert_eq!((survey.problems.count, survey.extent().count), (1, 0));
+}
+
+#[test]
 fn a_mapping_file_is_refused_with_everything_that_is_wrong_with_it() {
     let text = "missing = [1]\nseparator = \"ab\"\ncolour = 1\n\n\
         [[time]]\ncolumn = \"at\"\nformat = \"american\"\nutc_offset = \"CET\"\n\n\

@@ -35,7 +35,7 @@ use std::path::Path;
 use std::sync::atomic::AtomicBool;
 
 /// Recorded rows given back to the engine at once, at most; the newest are left out.
-const SUPPLIED_MAX: usize = 1_000_000;
+pub(crate) const SUPPLIED_MAX: usize = 1_000_000;
 
 /// The engine and what must stay in step with it. `T` is what an acknowledgement needs.
 pub struct Keeper<T = ()> {

@@ -7,7 +7,7 @@
 use super::account::{Account, Accounts, AlarmAt};
 use super::feed::Feed;
 use super::{Range, ReplayError};
-use crate::keeper::{Wanted, note_wanted, sources_of};
+use crate::keeper::{SUPPLIED_MAX, Wanted, note_wanted, sources_of};
 use crate::record::{Archive, Day, RecordError, Told};
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Input, Output, Supplied};
@@ -15,8 +15,6 @@ use holdtrue_engine::setup::Setup;
 use holdtrue_engine::time::Timestamp;
 use std::collections::BTreeMap;
 
-/// Rows supplied at once, at most; as the daemon does.
-const SUPPLIED_MAX: usize = 100_000;
 /// Progress is told after so many inputs.
 const TELL_EVERY: u64 = 1000;
 

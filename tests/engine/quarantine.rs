@@ -371,6 +371,35 @@ fn between_order_and_rows_it_holds_also_across_a_restart() {
     }
 }
 
+/// Rows asked for by a first order come after a second one: they answer nothing any more.
+#[test]
+fn a_second_order_before_the_rows_have_come_asks_again() {
+    let (mut node, mut clean) = both(LONG, is_bad);
+    let next = hours(END..END + 2, |_| true);
+    let mut said = Vec::new();
+    let first = quarantine("q-1", lab(), between(GOOD, GOOD + 16));
+    node.engine.step(&first, &mut said);
+    for input in &next {
+        node.shell.remember(input);
+        node.engine.step(input, &mut said);
+    }
+    let second = quarantine("q-2", lab(), between(GOOD + 8, GOOD + BAD));
+    node.engine.step(&second, &mut said);
+    let wanted: Vec<Output> = said
+        .iter()
+        .filter(|output| matches!(output, Output::Wanted { .. }))
+        .cloned()
+        .collect();
+    assert_eq!(wanted.len(), 4);
+    node.shell.answer(&mut node.engine, &wanted);
+    clean.take(&next);
+    for id in [0, 1] {
+        let found = node.correction(id);
+        assert_alike(&found, &clean.correction(id), 0.0);
+        assert_eq!(found.supersedes.expect("said").order, "q-2");
+    }
+}
+
 #[test]
 fn without_an_end_it_holds_what_comes_until_it_is_released() {
     let mut node = Node::new(LONG);

@@ -45,6 +45,14 @@ pub(super) struct Refit {
     meanwhile: Vec<Pair>,
 }
 
+impl Refit {
+    /// The time of the newest pair made, until it was asked for and since.
+    fn newest(&self) -> Timestamp {
+        let times = self.meanwhile.iter().map(|pair| pair.time);
+        times.fold(self.until, Timestamp::max)
+    }
+}
+
 /// Times of the newest pairs that were kept out because their reference was doubted: what its
 /// channels decided together cannot be decided again by one of them.
 #[derive(Clone, Debug, Default, PartialEq, Serialize, Deserialize)]
@@ -82,9 +90,14 @@ impl Channel {
             return false;
         };
         self.drop_waiting(source, interval, scene);
-        let (from, before) = match self.refit.take() {
-            Some(earlier) => (from.min(earlier.from), earlier.before),
-            None => (from, before.to_vec()),
+        let (from, until, before) = match self.refit.take() {
+            // Pairs that wait for it are made again with the others.
+            Some(earlier) => (
+                from.min(earlier.from),
+                earlier.newest().max(until),
+                earlier.before,
+            ),
+            None => (from, until, before.to_vec()),
         };
         self.ask(
             Refit {
@@ -202,8 +215,7 @@ impl Channel {
         if refit.meanwhile.len() > MEANWHILE_MAX
             && let Some(refit) = self.refit.take()
         {
-            let newest = refit.meanwhile.iter().map(|pair| pair.time).max();
-            let until = newest.map_or(refit.until, |newest| newest.max(refit.until));
+            let until = refit.newest();
             let again = Refit {
                 until,
                 to: until.plus(margin(scene)).plus(Duration(1)),

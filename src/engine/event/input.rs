@@ -115,8 +115,10 @@ pub enum RefusedReason {
 /// [`Output::Wanted`](crate::event::Output::Wanted). The shell answers each once, with whatever the
 /// record holds (maybe nothing), and before the next [`Input::Setup`](crate::event::Input::Setup).
 ///
-/// They serve the reading on whose behalf they were asked for, however late they are, and nothing
-/// else: time does not move, and what was refused when it first came is passed over.
+/// They serve the reading on whose behalf they were asked for, or the refit that a quarantine set
+/// going, however late they are, and nothing else: time does not move, and what was refused when it
+/// first came is passed over. All sources that a channel rests on belong to its rows: its
+/// indications, its reference's values, its influence quantities', its group's indications.
 #[derive(Clone, Debug, PartialEq, Serialize, Deserialize)]
 pub struct Supplied {
     /// Whose rows.

@@ -66,7 +66,7 @@ fn as_text(verdict: &Verdict) -> String {
         _ => String::new(),
     };
     lines.push(format!(
-        "{} files ({range}), {} links hold, {} inputs",
+        "files: {} ({range}), links that hold: {}, inputs: {}",
         verdict.files, verdict.links, verdict.inputs
     ));
     if verdict.removed > 0 {
@@ -82,10 +82,10 @@ fn as_text(verdict: &Verdict) -> String {
         "newest link: number {}, {}",
         verdict.head.batch, verdict.head.digest
     ));
-    lines.push(if verdict.faults.is_empty() {
-        "the record is whole".to_owned()
-    } else {
-        format!("{} things are wrong", verdict.faults.len())
+    lines.push(match verdict.faults.len() {
+        0 => "the record is whole".to_owned(),
+        1 => "the record is not whole".to_owned(),
+        faults => format!("the record is not whole: {faults} things are wrong"),
     });
     lines.join("\n") + "\n"
 }

@@ -118,7 +118,7 @@ impl Peers {
     }
 }
 
-fn reading(source: Source, time: Timestamp, value: f64) -> Input {
+pub(crate) fn reading(source: Source, time: Timestamp, value: f64) -> Input {
     Input::Reading(Reading {
         source,
         received: time,
@@ -130,7 +130,7 @@ fn reading(source: Source, time: Timestamp, value: f64) -> Input {
 }
 
 /// The defaults of the configuration, with a limit so that there is an outlook.
-fn setup(case: Case) -> Setup {
+pub(crate) fn setup(case: Case) -> Setup {
     let seconds = Duration::from_seconds;
     let kind = if case.beyond_default {
         ReferenceKind::Measured

@@ -210,16 +210,22 @@ fn expected(published: &Published, held: &Accepted) -> f64 {
 impl Residuals {
     /// Remembers a pair that entered the fit, in order of time however it came.
     pub(crate) fn push(&mut self, row: &Row) {
-        let place = self.recent.partition_point(|held| {
+        let goes_before = |held: &Accepted| {
             (held.time, held.error.total_cmp(&row.error)) <= (row.time, Ordering::Equal)
-        });
+        };
         let accepted = Accepted {
             time: row.time,
             error: row.error,
             x: row.x,
             influences: row.influences,
         };
-        self.recent.insert(place, accepted);
+        // Nearly all come in order.
+        if self.recent.back().is_none_or(goes_before) {
+            self.recent.push_back(accepted);
+        } else {
+            let place = self.recent.partition_point(goes_before);
+            self.recent.insert(place, accepted);
+        }
         if self.recent.len() > RECENT {
             self.recent.pop_front();
         }

@@ -8,10 +8,10 @@ use crate::report::Report;
 use crate::time::Timestamp;
 use serde::{Deserialize, Serialize};
 
-/// A judgement merges the window's segments and costs a hundred times what a pair's insertion does.
-/// It is due when this part of the window is new since the last (in windows up to this size: every
-/// pair), when segments closed on which the degrees' weights rest, while an alarm is on its way to
-/// another state (its delay counts pairs) …
+/// A judgement solves and weighs all degrees and drafts a document, and so costs tens of times what
+/// a pair's insertion does. It is due when this part of the window is new since the last (in
+/// windows up to this size: every pair), when segments closed on which the degrees' weights rest,
+/// while an alarm is on its way to another state (its delay counts pairs) …
 const JUDGED_PART: u64 = 64;
 /// … or when the plain fit at its newest pair has moved by this part of a publish step, or away
 /// from where the correction in force went meanwhile. (The
@@ -78,8 +78,7 @@ impl Channel {
     /// What the plain fit of this degree says at the newest pair.
     fn plain(&self, degree: usize) -> Option<f64> {
         let window = self.stretch.fit().window();
-        let prediction = window.predict(degree, window.newest()?)?;
-        Some(prediction.error)
+        window.expected(degree, window.newest()?)
     }
 
     /// Judges the fit as it is now; publishes and alarms as needed.

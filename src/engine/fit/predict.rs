@@ -93,14 +93,39 @@ impl Window {
             degree <= self.columns().time_degree(),
             "a degree of this window"
         );
-        let row = Row {
-            time,
-            error: 0.0,
-            weight: 1.0,
-            x: 0.0,
-            influences: [0.0; MAX_INFLUENCES],
-        };
-        Fitted::first(self, degree + 1, LEAST_FREEDOM)?.prediction(&row)
+        Fitted::first(self, degree + 1, LEAST_FREEDOM)?.prediction(&row_at(time))
+    }
+
+    /// The error that [`Window::predict`] expects, alone: a third of the work.
+    ///
+    /// # Panics
+    /// If the window has no such degree.
+    #[must_use]
+    pub fn expected(&self, degree: usize, time: Timestamp) -> Option<f64> {
+        assert!(
+            degree <= self.columns().time_degree(),
+            "a degree of this window"
+        );
+        if freedom(self, degree + 1) < LEAST_FREEDOM {
+            return None;
+        }
+        let coefficients = self.total().solve(degree + 1)?;
+        let mut entries = [0.0; MAX_WIDTH];
+        self.coordinates().fill(&row_at(time), &mut entries);
+        let pairs = entries[..=degree].iter().zip(&coefficients);
+        let relative: f64 = pairs.map(|(entry, coefficient)| entry * coefficient).sum();
+        Some(self.level() + relative + 0.0)
+    }
+}
+
+/// A row of which only the time counts.
+fn row_at(time: Timestamp) -> Row {
+    Row {
+        time,
+        error: 0.0,
+        weight: 1.0,
+        x: 0.0,
+        influences: [0.0; MAX_INFLUENCES],
     }
 }
 

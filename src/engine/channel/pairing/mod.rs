@@ -361,6 +361,9 @@ impl Pairing {
     /// Has those looked at again that wait for something beside the instant `time`: a reading came
     /// there, and `track` holds it. Beyond the next readings on both sides it changes nothing.
     fn touch_beside(&mut self, time: Timestamp, track: &Track, scene: &Scene<'_>) {
+        if self.pending.is_empty() {
+            return;
+        }
         let before = track
             .last_until(time.minus(Duration(1)))
             .map(|held| held.time);

@@ -1,5 +1,6 @@
-//! One life of the daemon: its loop in the same order (`src/daemon/turn.rs`), in simulated time, over
-//! a simulated broker and disk. And, for tests of the tests, the same loop with one fault in it.
+//! One life of the daemon: its loop in the same order (`src/daemon/turn.rs`), in simulated time,
+//! over a simulated broker and disk. And, for tests of the tests, the same loop with one fault in
+//! it.
 
 use crate::broker::{Broker, Down, Up};
 use crate::chance::Chance;

@@ -234,9 +234,18 @@ fn measure(shape: Shape, met: &mut bool) {
             rates[1] / rates[0]
         );
     }
-    let [bare, holdtrue] = &sides;
+    compare(shape, &sides, met);
+    let bytes = (size(&daemon) - opened) as f64 / inputs() as f64;
+    let what = format!("{bytes:.1} bytes per reading in the live file (at most {BYTES})");
+    judge(&what, bytes <= BYTES, met);
+}
+
+/// Both sides over all rounds.
+fn compare(shape: Shape, sides: &[Side<'_>; 2], met: &mut bool) {
+    let [bare, holdtrue] = sides;
     println!(
-        "  all rounds: bare {:.0} ({:.2} us of the processor per reading), holdtrue {:.0} ({:.2} us)",
+        "  all rounds: bare {:.0} ({:.2} us of the processor per reading), holdtrue {:.0} \
+         ({:.2} us)",
         bare.rate(),
         bare.cpu_per_reading(),
         holdtrue.rate(),
@@ -253,9 +262,6 @@ fn measure(shape: Shape, met: &mut bool) {
             judge(&what, holdtrue.rate() >= PACKED, met);
         }
     }
-    let bytes = (size(&daemon) - opened) as f64 / inputs() as f64;
-    let what = format!("{bytes:.1} bytes per reading in the live file (at most {BYTES})");
-    judge(&what, bytes <= BYTES, met);
 }
 
 /// Size of the record's newest file without its log, whose pages are written to the file later.

@@ -120,7 +120,8 @@ fn main() -> ExitCode {
     let (mut keeper, seconds, cpu) = start(folder.path(), last);
     judge(
         &format!(
-            "after a clean stop: ready after {seconds:.2} s (at most {START}), {cpu:.2} s of the processor"
+            "after a clean stop: ready after {seconds:.2} s (at most {START}), {cpu:.2} s of the \
+             processor"
         ),
         seconds <= START,
         &mut met,

@@ -32,14 +32,13 @@ const REFERENCE_EVERY: i64 = 60;
 const BEGIN: Timestamp = Timestamp(1_772_323_200_000_000_000);
 
 fn configuration() -> String {
-    let channels: String = (0..CHANNELS)
-        .map(|place| {
-            format!(
-                "[[channel]]\nname = \"c{place}\"\nunit = \"V\"\nindication = {{ topic = \
-                 \"c{place}\" }}\nreference = \"lab\"\n"
-            )
-        })
-        .collect();
+    let one = |place| {
+        format!(
+            "[[channel]]\nname = \"c{place}\"\nunit = \"V\"\nindication = {{ topic = \
+             \"c{place}\" }}\nreference = \"lab\"\n"
+        )
+    };
+    let channels: String = (0..CHANNELS).map(one).collect();
     format!(
         "[node]\nname = \"n\"\n[broker]\nurl = \"mqtt://127.0.0.1\"\n\
          [[reference]]\nname = \"lab\"\ntopic = \"lab\"\n{channels}"

@@ -51,11 +51,12 @@ fn parse(
     text: &str,
     of_day: impl FnOnce(Date) -> Result<Date, String>,
 ) -> Result<Timestamp, String> {
+    let outside = || format!("\"{text}\" is outside the years 1678 to 2261");
     let instant = match (text.parse::<jiff::Timestamp>(), text.parse::<Date>()) {
         (Ok(instant), _) => instant,
         (_, Ok(date)) => Offset::UTC
             .to_timestamp(of_day(date)?.at(0, 0, 0, 0))
-            .map_err(|error| error.to_string())?,
+            .map_err(|_| outside())?,
         _ => {
             return Err(format!(
                 "\"{text}\" is neither a day like 2026-12-01 nor an instant like \
@@ -65,7 +66,7 @@ fn parse(
     };
     i64::try_from(instant.as_nanosecond())
         .map(Timestamp)
-        .map_err(|_| format!("\"{text}\" is outside the years 1678 to 2261"))
+        .map_err(|_| outside())
 }
 
 #[cfg(test)]

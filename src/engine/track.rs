@@ -318,8 +318,8 @@ mod tests {
             let held: Vec<(i64, f64)> = track.samples.iter().map(|s| (s.time.0, s.value)).collect();
             let in_order = (0..count).flat_map(|place| [(10 * place, 0.0), (10 * place, 1.0)]);
             assert_eq!(held, in_order.collect::<Vec<_>>());
-            for time in -1..10 * count + 1 {
-                let until = held.iter().filter(|(at, _)| *at <= time).next_back();
+            for time in -1..=10 * count {
+                let until = held.iter().rfind(|(at, _)| *at <= time);
                 let after = held.iter().find(|(at, _)| *at > time);
                 let told = |s: &Sample| (s.time.0, s.value);
                 let asked = Timestamp(time);

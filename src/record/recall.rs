@@ -126,8 +126,8 @@ impl Record {
         serde_json::json!(self.subscriptions).to_string()
     }
 
-    /// Bodies of the committed corrections of a channel of the configuration in force, as far as they
-    /// are in files of the days from `from` on, in order.
+    /// Bodies of the committed corrections of a channel of the configuration in force, as far as
+    /// they are in files of the days from `from` on, in order.
     ///
     /// # Errors
     /// When a file can't be read.

@@ -226,7 +226,7 @@ fn views_come_out_as_they_went_in() {
     let desk = Desk::new();
     desk.import(&["ph.csv", "lab.csv"], "trial", &[]);
     let readings = desk.export(&["trial", "readings", "--channel", "intake/ph-1"]);
-    assert_eq!(readings.len() as i64, 1 + DAYS * 1440);
+    assert_eq!(i64::try_from(readings.len()), Ok(1 + DAYS * 1440));
     let column = |name: &str| readings[0].iter().position(|it| it == name).unwrap();
     for (minute, row) in (0..).zip(&readings[1..]) {
         let sampled: jiff::Timestamp = row[column("sampled")].parse().unwrap();
@@ -247,7 +247,7 @@ fn views_come_out_as_they_went_in() {
         "an hour of minutes and what the laboratory says at both its ends"
     );
     let pairs = desk.export(&["trial", "pairs"]);
-    assert_eq!(pairs.len() as i64, 1 + DAYS * 24);
+    assert_eq!(i64::try_from(pairs.len()), Ok(1 + DAYS * 24));
     let corrections = desk.export(&["trial", "corrections"]);
     assert!(corrections.len() > 5, "{}", corrections.len());
     let number = corrections[0]
@@ -257,13 +257,14 @@ fn views_come_out_as_they_went_in() {
     let numbers = corrections[1..]
         .iter()
         .map(|row| row[number].parse::<i64>().unwrap());
-    assert!(numbers.eq(1..corrections.len() as i64));
+    let count = i64::try_from(corrections.len()).unwrap();
+    assert!(numbers.eq(1..count));
     let published = desk.export(&["trial", "published"]);
     assert!(published.len() >= corrections.len());
     assert!(
         published[1..]
             .iter()
-            .all(|row| row.iter().last() == Some("not-sent"))
+            .all(|row| row.iter().next_back() == Some("not-sent"))
     );
     let written = desk.holdtrue(&["export", "trial", "pairs", "--out", "pairs.csv"]);
     assert_eq!((code(&written), written.stdout.len()), (0, 0));
@@ -340,7 +341,10 @@ fn nothing_is_written_where_something_cannot_be_read_unless_that_is_left_out() {
         said.contains("left out, 1 in all:\nph.csv:5: at: \"noon\""),
         "{said}"
     );
-    assert_eq!(told(&desk.path("trial")).len() as i64, DAYS * (1440 + 24));
+    assert_eq!(
+        i64::try_from(told(&desk.path("trial")).len()),
+        Ok(DAYS * (1440 + 24))
+    );
 }
 
 #[test]

@@ -7,6 +7,7 @@
 
 mod chain;
 mod damaged;
+mod golden;
 mod impact;
 mod import;
 mod keeps;

@@ -11,7 +11,7 @@ use std::time::Duration;
 /// A subscriber in a thread of its own.
 pub(crate) struct Bare {
     count: Arc<AtomicU64>,
-    /// Microseconds of the processor.
+    /// Seconds of the processor, as the bits of an f64.
     cpu: Arc<AtomicU64>,
 }
 
@@ -42,7 +42,7 @@ impl Bare {
 
     /// Seconds of the processor so far.
     pub(crate) fn cpu(&self) -> f64 {
-        1e-6 * self.cpu.load(Ordering::Relaxed) as f64
+        f64::from_bits(self.cpu.load(Ordering::Relaxed))
     }
 }
 
@@ -61,9 +61,9 @@ async fn listen(port: u16, count: &AtomicU64, cpu: &AtomicU64, ready: &AtomicBoo
         match events.poll().await.unwrap() {
             Event::Incoming(Packet::Publish(publish)) => {
                 client.try_ack(&publish).unwrap();
-                if count.fetch_add(1, Ordering::Relaxed) % 1000 == 0 {
-                    let used = 1e6 * cpu_seconds("/proc/thread-self/stat");
-                    cpu.store(used as u64, Ordering::Relaxed);
+                if count.fetch_add(1, Ordering::Relaxed).is_multiple_of(1000) {
+                    let used = cpu_seconds("/proc/thread-self/stat");
+                    cpu.store(used.to_bits(), Ordering::Relaxed);
                 }
             }
             Event::Incoming(Packet::SubAck(_)) => ready.store(true, Ordering::Relaxed),

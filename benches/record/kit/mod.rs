@@ -20,7 +20,7 @@ pub(crate) fn cpu_seconds(stat: &str) -> f64 {
     0.01 * (field(14) + field(15))
 }
 
-/// Bytes that a process has sent to the disk so far (`write_bytes` in proc_pid_io(5)).
+/// Bytes that a process has sent to the disk so far (`write_bytes` in `proc_pid_io(5)`).
 pub(crate) fn written_bytes(process: &str) -> u64 {
     let text = std::fs::read_to_string(format!("/proc/{process}/io")).unwrap();
     let line = text.lines().find(|line| line.starts_with("write_bytes"));

@@ -1,16 +1,16 @@
 //! A stretch fitted anew from the record, because a quarantine or its release changed which values
 //! count.
 //!
-//! The rows are asked for; until they come the correction is held, and pairs that are made meanwhile
-//! wait. Then the stretch begins again with nothing and takes its pairs in the order of their time,
-//! through screen and fit as they did the first time, without being told again: only those that are
-//! out now, or in again, are. Steps and services stand, since nothing reaches across the beginning of
-//! the stretch.
+//! The rows are asked for; until they come the correction is held, and pairs that are made
+//! meanwhile wait. Then the stretch begins again with nothing and takes its pairs in the order of
+//! their time, through screen and fit as they did the first time, without being told again: only
+//! those that are out now, or in again, are. Steps and services stand, since nothing reaches across
+//! the beginning of the stretch.
 //!
 //! A stretch that has filled its window begins two windows back: what leaves the window again
 //! taught the screen and the announced model. So its numbers may differ in the last digits from
-//! those of a history that never held the bad rows, and where segments are counted in pairs they may
-//! begin at other pairs; those of a shorter stretch do not differ at all.
+//! those of a history that never held the bad rows, and where segments are counted in pairs they
+//! may begin at other pairs; those of a shorter stretch do not differ at all.
 
 use super::pairing::Pair;
 use super::{Breaks, Channel, Scene, telling};
@@ -165,8 +165,8 @@ impl Channel {
         concerned.then(|| (first.minus(margin), until))
     }
 
-    /// What waits and rests on values of the interval is dropped: the refit makes it again, if it is
-    /// to be made.
+    /// What waits and rests on values of the interval is dropped: the refit makes it again, if it
+    /// is to be made.
     fn drop_waiting(&mut self, source: Source, interval: Interval, scene: &Scene<'_>) {
         let own = source == Source::Indication(scene.id);
         let lag = scene.setup.lag;

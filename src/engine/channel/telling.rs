@@ -68,8 +68,8 @@ pub(super) fn tell_struck(
     report.say(fate(pair, Some(rejection), scene));
 }
 
-/// Says what has become of a pair in the end, when many are told at once: a rejection is counted, but
-/// people are told once, of all of them.
+/// Says what has become of a pair in the end, when many are told at once: a rejection is counted,
+/// but people are told once, of all of them.
 pub(super) fn tell_quietly(
     pair: &Pair,
     rejected: Option<Rejection>,

@@ -23,7 +23,8 @@ pub enum Cause {
     ReferenceStep,
     /// The reference repeats one value while its channels move.
     ReferenceStuck,
-    /// What it rests on is quarantined at present, or it is being fitted anew because of a quarantine.
+    /// What it rests on is quarantined at present, or it is being fitted anew because of a
+    /// quarantine.
     Quarantined,
     /// The reference has given no value for too long.
     ReferenceStale,

@@ -1,8 +1,8 @@
 //! Quarantines: what a source gave in an interval is declared bad after the fact, and perhaps good
 //! again.
 //!
-//! Readings of the interval are set aside: those in memory at once, those still to come as they come
-//! (they are counted and remembered, but nobody sees them). Every channel whose present fit is
+//! Readings of the interval are set aside: those in memory at once, those still to come as they
+//! come (they are counted and remembered, but nobody sees them). Every channel whose present fit is
 //! concerned is made anew from the record (see `channel::refit`).
 //!
 //! A quarantine stands until it is released, or until nothing here looks back on its interval any
@@ -167,8 +167,8 @@ impl Fleet {
         users
     }
 
-    /// What is quarantined has changed in an interval of a source: sorts the readings in memory out,
-    /// and has every channel that is concerned fitted anew. Which those are.
+    /// What is quarantined has changed in an interval of a source: sorts the readings in memory
+    /// out, and has every channel that is concerned fitted anew. Which those are.
     pub(super) fn refit_for(
         &mut self,
         order: &str,

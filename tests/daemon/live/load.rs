@@ -18,16 +18,16 @@ pub(crate) fn channel(place: usize) -> String {
 
 /// One configured channel for each place, with a constant reference.
 pub(crate) fn channels(count: usize, rest: &str) -> String {
-    (0..count)
-        .map(|place| {
-            format!(
-                "[[channel]]\nname = \"{}\"\nunit = \"V\"\nreference = {{ constant = 1.0, uncertainty = {{ each = 0.001 }} }}\n\
-                 indication = {{ topic = \"plant/{place}\", value = \"/v\", time = \"/t\", \
-                 time_unit = \"us\", sequence = \"/n\" }}\n{rest}\n",
-                channel(place)
-            )
-        })
-        .collect()
+    let one = |place| {
+        format!(
+            "[[channel]]\nname = \"{}\"\nunit = \"V\"\n\
+             reference = {{ constant = 1.0, uncertainty = {{ each = 0.001 }} }}\n\
+             indication = {{ topic = \"plant/{place}\", value = \"/v\", time = \"/t\", \
+             time_unit = \"us\", sequence = \"/n\" }}\n{rest}\n",
+            channel(place)
+        )
+    };
+    (0..count).map(one).collect()
 }
 
 /// A reading as it was published.

@@ -110,7 +110,12 @@ impl Outbox {
     }
 
     /// The broker has this document; older ones that it would replace there are worth nothing now.
+    /// Unless one of them was handed over once more meanwhile: that will replace this one there, so
+    /// this one must go again, too.
     pub fn accepted(&mut self, number: i64, batch: &mut Batch) {
+        if self.is_to_be_replaced(number) {
+            return;
+        }
         let Some(accepted) = self
             .remove(number, Settled::Taken, batch)
             .filter(|it| it.retain)
@@ -126,6 +131,16 @@ impl Outbox {
         for number in older {
             self.remove(number, Settled::Overtaken, batch);
         }
+    }
+
+    /// Whether this one is to go again, and an older one of its topic already went again.
+    fn is_to_be_replaced(&self, number: i64) -> bool {
+        let Some(document) = self.waiting.get(&number).filter(|it| it.retain) else {
+            return false;
+        };
+        let mut under_way = self.waiting.range(..=self.handed);
+        number > self.handed
+            && under_way.any(|(_, older)| older.retain && older.topic == document.topic)
     }
 
     /// Removes a document, from the record as well with the next commit.
@@ -291,6 +306,28 @@ mod tests {
         outbox.accepted(3, batch);
         assert_eq!(outbox.next_to_hand().unwrap().0, 2);
         assert_eq!(outbox.len(), 1);
+    }
+
+    #[test]
+    fn a_late_answer_does_not_end_what_an_older_one_will_replace_at_the_broker() {
+        let (_folder, mut record) = record();
+        let batch = record.batch();
+        let mut outbox = Outbox::new(Vec::new());
+        for topic in ["a", "b", "a"] {
+            outbox.add(document(topic, true), batch);
+        }
+        outbox.release();
+        outbox.set_handed(3);
+        outbox.hand_again_from(1);
+        outbox.set_handed(1);
+        // The first goes again, and only then comes the answer to the third, which must follow it.
+        outbox.accepted(3, batch);
+        outbox.accepted(1, batch);
+        outbox.set_handed(2);
+        assert_eq!(outbox.next_to_hand().unwrap().0, 3);
+        outbox.set_handed(3);
+        outbox.accepted(3, batch);
+        assert_eq!(outbox.len(), 1, "only the second waits for its answer");
     }
 
     #[test]

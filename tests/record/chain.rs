@@ -1,7 +1,7 @@
 //! Whatever is changed in a record afterwards, `verify` finds it and names where.
 
 use super::support::{document, live, notice, open, reading, turn};
-use holdtrue::record::{Archive, Digest, Fault, Record, Settled, Verdict, verify};
+use holdtrue::record::{Archive, Digest, Fault, RealDisk, Record, Settled, Verdict, verify};
 use holdtrue_engine::event::Input;
 use holdtrue_engine::time::Timestamp;
 use std::path::{Path, PathBuf};
@@ -89,6 +89,36 @@ fn an_untouched_record_is_whole_open_or_sealed() {
 }
 
 /// Check value V50: alter one byte of record i, and verification fails at i and names i.
+/// Its checksum was told to the world.
+#[test]
+fn a_sealed_file_keeps_its_bytes_when_the_next_one_notes_its_seal() {
+    let folder = tempfile::tempdir().unwrap();
+    sealed(folder.path());
+    let newest = files(folder.path()).pop().unwrap();
+    let before = std::fs::read(&newest).unwrap();
+    let mut record = Record::open_on(folder.path(), Box::new(RealDisk)).unwrap();
+    turn(&mut record, Timestamp(1000));
+    record.note_start();
+    record.commit(Timestamp(1001)).unwrap();
+    let notes = live(folder.path()).query_row(
+        "SELECT count(*) FROM events WHERE kind = 'sealed'",
+        [],
+        |row| row.get::<_, i64>(0),
+    );
+    assert_eq!(notes.unwrap(), 1);
+    assert!(std::fs::read(&newest).unwrap() == before);
+}
+
+#[test]
+fn a_newest_file_whose_making_was_broken_off_is_no_fault() {
+    let folder = tempfile::tempdir().unwrap();
+    sealed(folder.path());
+    let whole = check(folder.path());
+    std::fs::write(folder.path().join("1970-01-02.0001.sqlite"), b"").unwrap();
+    assert_eq!(check(folder.path()), whole);
+    assert!(whole.faults.is_empty());
+}
+
 #[test]
 fn a_changed_row_breaks_its_own_link_and_no_earlier_one() {
     let changes = [

@@ -88,7 +88,6 @@ fn an_untouched_record_is_whole_open_or_sealed() {
     );
 }
 
-/// Check value V50: alter one byte of record i, and verification fails at i and names i.
 /// Its checksum was told to the world.
 #[test]
 fn a_sealed_file_keeps_its_bytes_when_the_next_one_notes_its_seal() {
@@ -119,6 +118,7 @@ fn a_newest_file_whose_making_was_broken_off_is_no_fault() {
     assert!(whole.faults.is_empty());
 }
 
+/// Check value V50: alter one byte of record i, and verification fails at i and names i.
 #[test]
 fn a_changed_row_breaks_its_own_link_and_no_earlier_one() {
     let changes = [

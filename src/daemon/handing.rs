@@ -33,7 +33,7 @@ impl Daemon {
             };
             let expiry = match document.expires.map(seconds_until) {
                 Some(None) => {
-                    self.shell.keeper.settle(number, Settled::Expired);
+                    self.shell.keeper.expire(number);
                     continue;
                 }
                 Some(seconds) => seconds,

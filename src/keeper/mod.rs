@@ -405,6 +405,17 @@ impl<T> Keeper<T> {
         self.outbox.remove(number, how, self.record.batch())
     }
 
+    /// A document is too old to be handed over. What it would have replaced at the broker must not
+    /// stand in its stead: an older correction can hold longer than the one that followed it.
+    pub fn expire(&mut self, number: i64) {
+        let expired = self.settle(number, Settled::Expired);
+        if let Some(document) = expired.filter(|it| it.retain)
+            && !self.outbox.holds_topic(&document.topic)
+        {
+            self.publish(document::cleared(document.topic));
+        }
+    }
+
     /// Puts every retained document into the outbox again: the broker has lost its memory.
     ///
     /// # Errors

@@ -8,7 +8,6 @@ use crate::disk::SimulatedDisk;
 use crate::memory::{Memory, Step};
 use crate::plant::{Content, Message, Named, Plant, minutes};
 use holdtrue::keeper::{Keeper, Pace};
-use holdtrue::record::Settled;
 use holdtrue_engine::event::{Gate, Input, Order, Reading, Refused, RefusedReason, Source};
 use holdtrue_engine::setup::{ChannelId, ReferenceId, Setup};
 use holdtrue_engine::time::{Duration, Timestamp};
@@ -332,7 +331,7 @@ impl Daemon {
             };
             let document = document.clone();
             if document.expires.is_some_and(|expires| expires <= now) {
-                self.keeper.settle(number, Settled::Expired);
+                self.keeper.expire(number);
                 continue;
             }
             broker.send(Up::Publish { number, document });

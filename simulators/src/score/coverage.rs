@@ -299,8 +299,7 @@ fn setup(forced_degree: Option<u8>) -> FitSetup {
 /// declares beside (the reference's common part, resolution) is zero here; what recent residuals
 /// say of a lack of fit can only widen U and is left out.
 fn interval(published: &Published) -> (f64, f64, f64) {
-    let variance =
-        published.covariance[0][0] + published.turn_variance + published.unclaimed_variance;
+    let variance = published.covariance[0][0] + published.turn_variance;
     let u = libm::sqrt(variance.max(0.0));
     let k = quantile::student(COVERAGE, published.degrees_of_freedom);
     (published.coefficients[0], u, k * u)

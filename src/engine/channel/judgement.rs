@@ -67,8 +67,7 @@ impl Judgement {
         let resolution = scene.setup.resolution;
         let common_variance = common * common + resolution * resolution / 12.0 + lack.variance;
         // Both say that the curve misses the newest pairs: the larger counts.
-        let unseen = published.turn_variance + published.unclaimed_variance;
-        let turn = (unseen - lack.variance).max(0.0);
+        let turn = (published.turn_variance - lack.variance).max(0.0);
         let rest_variance = common_variance + turn;
         // What is known of the error at one level: u, ν and k.
         let sure = |curve: &Curve| {
@@ -293,7 +292,6 @@ pub(super) mod tests {
             influences: Vec::new(),
             covariance: vec![vec![0.0; coefficients.len()]; coefficients.len()],
             turn_variance: 0.0,
-            unclaimed_variance: 0.0,
             degrees_of_freedom: 10.0,
             residual_sd: 1.0,
             criterion: CriterionValues {

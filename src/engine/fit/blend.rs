@@ -11,7 +11,7 @@
 //! size. It enters the covariance as a shift of the slope by λ about the mean level.
 
 use crate::event::{CriterionValues, WindowSeen};
-use crate::fit::basis::{Columns, MAX_INFLUENCES};
+use crate::fit::basis::Columns;
 use crate::fit::between::{Group, Groups};
 use crate::fit::contrast::Apart;
 use crate::fit::factor::Factor;
@@ -92,14 +92,37 @@ impl Fit {
         found.map_or(0.0, |found| found.share)
     }
 
-    /// The models that compete: every degree of the zero (the forced one alone), with or without
-    /// the claimed influence quantities, and every degree of the span that the problem holds, once
-    /// there is a span.
+    /// The models that compete: every degree of the zero (the forced one alone), with no more than
+    /// the claimed span terms and influence quantities that the problem holds.
     fn candidates(&self, joint: &Joint) -> Vec<Model> {
         let announced = self.model();
-        let spans = announced.span.map_or(0, |_| joint.span_columns());
+        let spans =
+            usize::from(announced.span.map_or(0, |degree| degree + 1)).min(joint.span_columns());
         let least = self.setup.forced_degree.map_or(0, |_| joint.largest);
-        models(least, joint, spans, announced.influences)
+        let used = |j: usize| announced.influences[j] && joint.has_influence(j);
+        let choices = |j: usize| {
+            if used(j) {
+                &[false, true][..]
+            } else {
+                &[false][..]
+            }
+        };
+        let mut models = Vec::new();
+        for degree in (least..=joint.largest).filter_map(|k| u8::try_from(k).ok()) {
+            for span in (0..=spans).filter_map(|count| u8::try_from(count).ok()) {
+                let span = span.checked_sub(1);
+                for &first in choices(0) {
+                    for &second in choices(1) {
+                        models.push(Model {
+                            degree,
+                            span,
+                            influences: [first, second],
+                        });
+                    }
+                }
+            }
+        }
+        models
     }
 
     fn assembled(
@@ -157,7 +180,6 @@ impl Fit {
             influences: pick(&influence),
             covariance: rows_of(&covariance),
             turn_variance: 0.0,
-            unclaimed_variance: 0.0,
             degrees_of_freedom: scatter.degrees_of_freedom,
             residual_sd: joint.rows_sd(),
             criterion,
@@ -177,39 +199,6 @@ impl Fit {
             terms: self.terms(),
         })
     }
-}
-
-/// Every degree of the zero from `least` on with up to so many span coefficients, without and with
-/// each influence quantity in `used`, as far as the problem holds them.
-pub(super) fn models(
-    least: usize,
-    joint: &Joint,
-    spans: usize,
-    used: [bool; MAX_INFLUENCES],
-) -> Vec<Model> {
-    let choices = |j: usize| {
-        if used[j] && joint.has_influence(j) {
-            &[false, true][..]
-        } else {
-            &[false][..]
-        }
-    };
-    let mut models = Vec::new();
-    for degree in (least..=joint.largest).filter_map(|k| u8::try_from(k).ok()) {
-        for span in (0..=spans).filter_map(|count| u8::try_from(count).ok()) {
-            let span = span.checked_sub(1);
-            for &first in choices(0) {
-                for &second in choices(1) {
-                    models.push(Model {
-                        degree,
-                        span,
-                        influences: [first, second],
-                    });
-                }
-            }
-        }
-    }
-    models
 }
 
 /// All rows, mean rows and contrast rows of each group at one variance, at the level returned.

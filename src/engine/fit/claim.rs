@@ -28,8 +28,6 @@ pub(crate) struct Claims {
     pub(crate) influences: [Climb; MAX_INFLUENCES],
     /// Why the span can't be claimed, as of the last judgement; `None` where none is configured.
     pub(crate) refused: Option<SpanRefusal>,
-    /// What terms that are not claimed add to u², as of the last judgement.
-    pub(crate) unclaimed: f64,
 }
 
 impl Claims {
@@ -39,7 +37,6 @@ impl Claims {
             span: Climb::default(),
             influences: Default::default(),
             refused: too_few(columns),
-            unclaimed: 0.0,
         }
     }
 
@@ -88,29 +85,20 @@ impl Joint {
 /// Judges the whole announced model after a group of segments closed.
 pub(crate) fn decide(fit: &mut Fit, may_raise: bool) -> Option<Change> {
     let columns = fit.window.columns();
-    let forced = fit.setup.forced_degree.is_some();
+    let forced = fit.setup.forced_degree;
     let (joint, when_full) = {
         let groups = Groups::of(&fit.window);
-        let joint = Joint::of(&groups.closed, columns, fit.richest(), forced);
+        let joint = Joint::of(&groups.closed, columns, fit.richest(), forced.is_some());
         (joint, groups.when_full)
     };
     let Some(joint) = joint else {
         fit.announced.claims.refused = too_few(columns);
-        fit.announced.claims.unclaimed = 0.0;
         return None;
     };
-    let change = judge(fit, &joint, when_full, may_raise);
-    fit.announced.claims.unclaimed = fit.unclaimed_variance(&joint);
-    change
-}
-
-/// Judges all terms on the problem of now; the first change that is due.
-fn judge(fit: &mut Fit, joint: &Joint, when_full: f64, may_raise: bool) -> Option<Change> {
-    let columns = fit.window.columns();
     let sides = joint.sides();
     let criterion = fit.setup.criterion;
     let mut change = None;
-    if fit.setup.forced_degree.is_none() {
+    if forced.is_none() {
         let contest = joint.zero_contest(&sides);
         let verdict = fit
             .announced

@@ -169,13 +169,6 @@ impl Fit {
     /// (what was declared of noise and reference), in the unit of the errors squared.
     #[must_use]
     pub fn published_at_least(&self, row_variance: f64) -> Option<Published> {
-        let mut published = self.mean(row_variance)?;
-        published.unclaimed_variance = self.announced.claims.unclaimed;
-        Some(published)
-    }
-
-    /// The same without what unclaimed terms add.
-    pub(super) fn mean(&self, row_variance: f64) -> Option<Published> {
         if self.window.rows() < 2 {
             return None;
         }
@@ -220,7 +213,6 @@ impl Fit {
             coefficients: normalised(&coefficients.as_slice()[..=largest]),
             covariance: rows_of(&covariance),
             turn_variance: turn_variance + 0.0,
-            unclaimed_variance: 0.0,
             degrees_of_freedom: scatter.degrees_of_freedom,
             residual_sd: self.rows_sd(largest),
             criterion: closed.criterion.clone(),

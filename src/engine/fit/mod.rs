@@ -36,7 +36,6 @@
 //! - `level_noise`: how much of what varies in the level is noise
 //! - `claim`: when span terms and influence quantities are announced, and when refused
 //! - `blend`: the published mean over all these models
-//! - `unclaimed`: what terms that are not claimed yet add to its uncertainty
 
 pub mod basis;
 pub mod before;
@@ -70,7 +69,6 @@ pub mod segment;
 mod settled;
 mod spare;
 mod turn;
-mod unclaimed;
 mod weights;
 pub mod window;
 

@@ -74,9 +74,6 @@ pub struct Published {
     /// What a drift that turned within the window adds to u² at the newest pair, beyond φᵀCφ: see
     /// `turn`. Zero with a forced degree, and where span terms or influence quantities are claimed.
     pub turn_variance: f64,
-    /// What terms that are not claimed may add to u² at the newest pair, beyond φᵀCφ, where they
-    /// would matter most: see `unclaimed`.
-    pub unclaimed_variance: f64,
     /// Degrees of freedom of the fit's part of u.
     pub degrees_of_freedom: f64,
     /// Residual standard deviation of the rows under the largest model.

@@ -199,5 +199,18 @@ pub(super) fn create(
     RetainedRow::write_all(&retained, &transaction)?;
     write_link(&transaction, &place, opening.opened)?;
     transaction.commit()?;
+    fold(&connection)?;
     Ok((connection, place))
+}
+
+/// Folds the write-ahead log into a new file, so that a file with an opening never looks as if
+/// its making had been broken off, whatever happens to its log later.
+fn fold(connection: &Connection) -> Result<(), RecordError> {
+    let is_busy: bool =
+        connection.query_row("PRAGMA wal_checkpoint(TRUNCATE)", [], |row| row.get(0))?;
+    if is_busy {
+        let busy = rusqlite::ffi::Error::new(rusqlite::ffi::SQLITE_BUSY);
+        return Err(rusqlite::Error::SqliteFailure(busy, None).into());
+    }
+    Ok(())
 }

@@ -253,3 +253,26 @@ fn a_file_whose_making_was_broken_off_is_taken_away() {
     assert!(!unmade.exists());
     assert!(record.live().is_some(), "the one before goes on");
 }
+
+/// The log beside a file is all that a young file's rows stand in. What is lost with it is lost,
+/// but the file must not look as if it had never been made.
+#[test]
+fn a_file_whose_log_is_damaged_is_not_taken_away() {
+    let (folder, other) = (tempfile::tempdir().unwrap(), tempfile::tempdir().unwrap());
+    let mut record = open(folder.path());
+    record.batch().add(&reading(1, 1.0), &[], &[]);
+    record.commit(Timestamp(4)).unwrap();
+    let name = "1970-01-01.0001.sqlite";
+    std::fs::copy(folder.path().join(name), other.path().join(name)).unwrap();
+    let log = format!("{name}-wal");
+    let mut bytes = std::fs::read(folder.path().join(&log)).unwrap();
+    assert!(bytes.len() > 1000, "the reading is in the log");
+    bytes[..32].fill(0x5a);
+    std::fs::write(other.path().join(&log), bytes).unwrap();
+    let record = Record::open(other.path()).unwrap();
+    assert!(
+        record.live().is_some(),
+        "it was taken for one that was never made"
+    );
+    assert!(other.path().join(name).exists());
+}

@@ -2,17 +2,23 @@
 //! Nothing of them is deleted; whoever used them must look.
 
 use super::Keeper;
+use crate::document;
 use crate::document::impact::{Affected, ImpactDocument, LISTED};
-use crate::document::{self};
 use crate::record::RecordError;
 use holdtrue_engine::event::{Correction, Input, Output, Quarantined, Wish};
 use holdtrue_engine::setup::ChannelId;
+use holdtrue_engine::time::Timestamp;
 
 impl<T> Keeper<T> {
-    /// Whether an input asks for what has been published so far: all of that must then be in the
-    /// record.
-    pub(super) fn looks_back(input: &Input) -> bool {
-        matches!(input, Input::Order(order) if matches!(order.wish, Wish::Quarantine(_)))
+    /// When an input came that asks for what has been published so far: all of that must then be
+    /// in the record.
+    pub(super) fn looks_back(input: &Input) -> Option<Timestamp> {
+        match input {
+            Input::Order(order) if matches!(order.wish, Wish::Quarantine(_)) => {
+                Some(order.received)
+            }
+            _ => None,
+        }
     }
 
     /// Adds the impact lists of a quarantine that was just accepted, one for each channel that

@@ -18,17 +18,18 @@ mod rhythm;
 mod saved;
 
 pub use outbox::Outbox;
-pub use restore::{RestoreError, Restored, Wanted, note_wanted};
+pub use restore::{RestoreError, Wanted, note_wanted};
 pub use rhythm::Pace;
-pub use saved::{assemble, whole};
+pub use saved::{assemble, part_of, whole};
 
 use crate::document::topic::Topics;
-use crate::document::{self};
+use crate::document::{self, Document};
 use crate::record::{DayName, Disk, Head, Record, RecordError, Retention, Settled, State, Turn};
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::{Input, Output, Source, Supplied};
 use holdtrue_engine::setup::{ChannelId, Clock, ReferenceKind, Setup};
 use holdtrue_engine::time::Timestamp;
+use restore::Restored;
 use rhythm::Rhythm;
 use std::collections::BTreeSet;
 use std::path::Path;
@@ -157,16 +158,16 @@ impl<T> Keeper<T> {
 
     /// `positions`: of supplied rows.
     fn take_with(&mut self, input: &Input, positions: &[i64]) {
+        if let Some(received) = Self::looks_back(input) {
+            match self.commit(received) {
+                // What is owed goes with the caller's next commit, in its order.
+                Ok(owed) => self.owed = owed,
+                // The next commit tells of it; until then the list may lack the newest.
+                Err(error) => tracing::warn!(%error, "a quarantine comes before a commit"),
+            }
+        }
         let mut outputs = std::mem::take(&mut self.outputs);
         outputs.clear();
-        if Self::looks_back(input)
-            && !self.record.is_new()
-            && let Input::Order(order) = input
-            && let Err(error) = self.record.commit(order.received)
-        {
-            // The next commit tells of it; until then the list may lack the newest.
-            tracing::warn!(%error, "what was just said can't be committed before a quarantine");
-        }
         self.engine.step(input, &mut outputs);
         let batch = self.record.batch();
         batch.add(input, positions, &outputs);
@@ -401,7 +402,7 @@ impl<T> Keeper<T> {
     }
 
     /// A document waits no longer.
-    pub fn settle(&mut self, number: i64, how: Settled) -> Option<document::Document> {
+    pub fn settle(&mut self, number: i64, how: Settled) -> Option<Document> {
         self.outbox.remove(number, how, self.record.batch())
     }
 
@@ -433,7 +434,7 @@ impl<T> Keeper<T> {
     }
 
     /// Adds a document that the engine did not cause.
-    pub fn publish(&mut self, document: document::Document) {
+    pub fn publish(&mut self, document: Document) {
         self.outbox.add(document, self.record.batch());
     }
 }

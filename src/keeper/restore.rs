@@ -46,17 +46,17 @@ pub enum RestoreError {
 }
 
 /// What the record leads to.
-pub struct Restored {
+pub(super) struct Restored {
     /// The engine in the state in which it was.
-    pub engine: Engine,
+    pub(super) engine: Engine,
     /// The configuration in force; without channels if the record is empty.
-    pub setup: Setup,
+    pub(super) setup: Setup,
     /// Recorded rows that the engine asked for and has not been given.
-    pub wanted: Vec<Wanted>,
+    pub(super) wanted: Vec<Wanted>,
     /// Position of the last input before the saved state that it began from.
-    pub saved_input: i64,
+    pub(super) saved_input: i64,
     /// Mean size of a part of that state.
-    pub part_bytes: u64,
+    pub(super) part_bytes: u64,
     /// Inputs after which another version of the program had said something else.
     differing: u64,
     /// The newest received time.

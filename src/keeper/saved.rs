@@ -26,9 +26,21 @@ fn of(engine: &Engine, wanted: &[Wanted], ids: impl IntoIterator<Item = PartId>)
     let mut state: State = parts
         .filter_map(|id| Some((id.to_string(), state::encode(engine, id)?)))
         .collect();
-    let wanted = postcard::to_stdvec(wanted).expect("a list of numbers can be held in bytes");
-    state.push((WANTED.to_owned(), wanted));
+    state.push((WANTED.to_owned(), wanted_bytes(wanted)));
     state
+}
+
+/// One part by its name; `None` if there is none of this name.
+#[must_use]
+pub fn part_of(engine: &Engine, wanted: &[Wanted], name: &str) -> Option<Vec<u8>> {
+    if name == WANTED {
+        return Some(wanted_bytes(wanted));
+    }
+    state::encode(engine, name.parse().ok()?)
+}
+
+fn wanted_bytes(wanted: &[Wanted]) -> Vec<u8> {
+    postcard::to_stdvec(wanted).expect("a list of numbers can be held in bytes")
 }
 
 /// Mean size of a part.

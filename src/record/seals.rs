@@ -79,10 +79,7 @@ impl Record {
     fn seal_all(&mut self) -> Result<(), RecordError> {
         self.join_sealer();
         while let Some(name) = self.sealer.due.front().copied() {
-            let digest = match &mut self.disk {
-                Some(disk) => sealing::seal(&self.folder, name, disk.as_mut()),
-                None => sealing::seal(&self.folder, name, &mut RealDisk),
-            }?;
+            let digest = self.seal(name)?;
             self.sealer.due.pop_front();
             self.batch.note(Event::Sealed(name.to_string(), digest));
         }
@@ -104,11 +101,15 @@ impl Record {
         if size > SEAL_AT_STOP_MAX {
             return Ok(());
         }
-        match &mut self.disk {
-            Some(disk) => sealing::seal(&self.folder, live.name, disk.as_mut()),
-            None => sealing::seal(&self.folder, live.name, &mut RealDisk),
-        }?;
+        self.seal(live.name)?;
         Ok(())
+    }
+
+    fn seal(&mut self, name: DayName) -> Result<Digest, RecordError> {
+        match &mut self.disk {
+            Some(disk) => sealing::seal(&self.folder, name, disk.as_mut()),
+            None => sealing::seal(&self.folder, name, &mut RealDisk),
+        }
     }
 }
 

@@ -222,11 +222,9 @@ impl Record {
             return Ok(());
         }
         let after = self.batch.place_after(now);
+        let path = self.live.as_ref().expect("a file is open").path.clone();
+        self.before(Operation::Commit, &path)?;
         let live = self.live.as_mut().expect("a file is open");
-        let path = live.path.clone();
-        if let Some(disk) = &mut self.disk {
-            disk.before(Operation::Commit, &path).map_err(io(&path))?;
-        }
         let written = (|| {
             let transaction = live.connection.transaction()?;
             self.batch.write(&transaction, &after, now)?;

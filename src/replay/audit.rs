@@ -2,7 +2,7 @@
 //! every output and every saved state is compared bit for bit.
 
 use super::{Range, ReplayError};
-use crate::keeper::{Wanted, assemble, note_wanted, whole};
+use crate::keeper::{Wanted, assemble, note_wanted, part_of};
 use crate::record::{ARITHMETIC_REVISION, Archive, Day, RecordError, Said, State, Told};
 use holdtrue_engine::engine::Engine;
 use holdtrue_engine::event::Output;
@@ -211,11 +211,9 @@ impl Comparing<'_> {
 
     /// Whether the parts of a saved state are those of the engine.
     fn same_state(&mut self, replica: &Replica, saved: &State, input: i64) -> bool {
-        let now: BTreeMap<String, Vec<u8>> = whole(&replica.engine, &replica.wanted)
-            .into_iter()
-            .collect();
         for (part, bytes) in saved {
-            if now.get(part) != Some(bytes) {
+            let now = part_of(&replica.engine, &replica.wanted, part);
+            if now.as_ref() != Some(bytes) {
                 self.audit.difference = Some(Difference::State {
                     file: self.file.clone(),
                     input,

@@ -1,11 +1,12 @@
 //! `holdtrue export`: a view of a record as CSV.
 
+use super::Ending;
 use super::when::When;
-use super::{Ending, progress};
 use crate::record::{Archive, Choice, RecordError, VIEWS, View};
 use crate::replay::Range;
 use clap::Args;
 use holdtrue_engine::time::Timestamp;
+use holdtrue_simulators::command::progress;
 use rusqlite::types::ValueRef;
 use std::fs::File;
 use std::io::{self, BufWriter, Write};

@@ -20,7 +20,6 @@ mod demo;
 mod export;
 mod import;
 mod log;
-mod progress;
 mod replay;
 mod run;
 mod tell;

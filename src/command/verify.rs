@@ -1,9 +1,9 @@
 //! `holdtrue verify`: is a record whole and as it was written?
 
 use super::Ending;
-use super::progress;
 use crate::record::{Archive, Digest, Verdict, verify};
 use clap::Args;
+use holdtrue_simulators::command::progress;
 use serde_json::json;
 use std::io::Write;
 use std::path::PathBuf;

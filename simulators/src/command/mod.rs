@@ -6,7 +6,7 @@
 mod broker;
 mod feed;
 mod list;
-mod progress;
+pub mod progress;
 mod publish;
 mod run;
 mod score;

@@ -4,7 +4,8 @@ use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
 use std::io::IsTerminal;
 
 /// A bar on standard error; hidden unless that is a terminal. Without a `length` it only counts.
-pub(super) fn bar(length: Option<u64>, what: &str) -> ProgressBar {
+#[must_use]
+pub fn bar(length: Option<u64>, what: &str) -> ProgressBar {
     let target = if std::io::stderr().is_terminal() {
         ProgressDrawTarget::stderr()
     } else {

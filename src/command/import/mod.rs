@@ -2,7 +2,7 @@
 
 mod answer;
 
-use super::{Ending, progress};
+use super::Ending;
 use crate::configuration::{self, Configuration};
 use crate::import::into_record::{Imported, Place, into_record};
 use crate::import::mapping::Mapping;
@@ -12,6 +12,7 @@ use crate::import::survey::Survey;
 use crate::import::{ImportError, Words};
 use crate::keeper::RestoreError;
 use clap::Args;
+use holdtrue_simulators::command::progress;
 use holdtrue_text::time_form::TimeForm;
 use std::io;
 use std::path::PathBuf;

@@ -3,12 +3,13 @@
 
 mod side_by_side;
 
+use super::Ending;
 use super::when::When;
-use super::{Ending, progress};
 use crate::configuration;
 use crate::record::Archive;
 use crate::replay::{Audit, Difference, ReplayError, audit, trial};
 use clap::Args;
+use holdtrue_simulators::command::progress;
 use indicatif::ProgressBar;
 use serde_json::json;
 use std::io::Write;

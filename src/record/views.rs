@@ -111,16 +111,22 @@ pub const VIEWS: &[View] = &[
     View {
         name: "degrees",
         shows: "every change of the announced model, with its evidence",
-        definition: "SELECT position, input, name AS channel, body
-             FROM outputs LEFT JOIN sources ON sources.number = subject
-             WHERE outputs.kind = 'degree'",
+        definition: concat!(
+            "SELECT position, input, name AS channel, ",
+            utc!("json_extract(body, '$.Degree.at')"),
+            " AS at, body FROM outputs LEFT JOIN sources ON sources.number = subject
+             WHERE outputs.kind = 'degree'"
+        ),
     },
     View {
         name: "steps",
         shows: "every step of a sensor",
-        definition: "SELECT position, input, name AS channel, body
-             FROM outputs LEFT JOIN sources ON sources.number = subject
-             WHERE outputs.kind = 'step'",
+        definition: concat!(
+            "SELECT position, input, name AS channel, ",
+            utc!("json_extract(body, '$.Step.at')"),
+            " AS at, body FROM outputs LEFT JOIN sources ON sources.number = subject
+             WHERE outputs.kind = 'step'"
+        ),
     },
     View {
         name: "orders",
@@ -130,7 +136,8 @@ pub const VIEWS: &[View] = &[
             utc!("inputs.received"),
             " AS received, json_extract(inputs.body, '$.Order.id') AS id,
              coalesce(json_extract(inputs.body, '$.Order.wish.Service.by'),
-                      json_extract(inputs.body, '$.Order.wish.Quarantine.by')) AS told_by,
+                      json_extract(inputs.body, '$.Order.wish.Quarantine.by'),
+                      json_extract(inputs.body, '$.Order.wish.Release.by')) AS told_by,
              json_extract(inputs.body, '$.Order.wish') AS wish,
              json_extract(outputs.body, '$.Answer.accepted') AS accepted,
              json_extract(outputs.body, '$.Answer.text') AS answer
@@ -153,7 +160,7 @@ pub const VIEWS: &[View] = &[
     },
     View {
         name: "published",
-        shows: "every document as it went to the broker, and whether the broker has it",
+        shows: "every document in the order of issue, and what became of it",
         definition: concat!(
             "SELECT documents.number AS position, input, topic, retain, ",
             utc!("expires"),
